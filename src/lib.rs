@@ -1,0 +1,35 @@
+//! Infall velocities from pairs of millimetre spectral lines.
+//!
+//! An optically thick and an optically thin line toward a star-forming clump go in; an infall
+//! velocity with its errors, the asymmetry measures of the literature, tables and figures come out.
+//!
+//! Data flow one way, and the modules are listed in that order: a module uses only what stands
+//! above it (`tests/layering.rs` holds that as a table).
+//!
+//! | module | turns |
+//! | --- | --- |
+//! | [`constants`] | nothing: physical constants with uncertainty and source |
+//! | [`line`] | a name into a transition with its rest frequency and multiplet |
+//! | [`numeric`] | numbers into numbers: exponentials, least squares, noise processes; no astronomy |
+//! | [`model`] | parameters into a line profile and its Jacobian |
+//! | [`spectrum`] | arrays into one checked spectrum with noise and windows |
+//! | [`read`] | files into spectra as the file states them |
+//! | [`prepare`] | those into calibrated, baseline-free spectra with measured noise |
+//! | [`measure`] | a prepared pair into asymmetry measures, without a model |
+//! | [`fit`] | models and a prepared pair into parameters, errors and cautions |
+//! | [`simulate`] | a truth into spectra |
+//! | [`report`] | results into tables, FITS and figures |
+//! | [`run`] | a run sheet into all of the above |
+
+pub mod constants;
+pub mod fit;
+pub mod line;
+pub mod measure;
+pub mod model;
+pub mod numeric;
+pub mod prepare;
+pub mod read;
+pub mod report;
+pub mod run;
+pub mod simulate;
+pub mod spectrum;

@@ -1,0 +1,1 @@
+//! Run-time choice of vector instructions.

@@ -1,0 +1,1 @@
+//! Bounded nonlinear least squares.

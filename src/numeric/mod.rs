@@ -1,0 +1,18 @@
+//! Numbers into numbers: exponentials over slices, least squares, noise processes, robust
+//! statistics. No astronomy here.
+
+pub mod autoregression;
+pub mod dispatch;
+pub mod least_squares;
+pub mod robust;
+
+pub use autoregression::Autoregression;
+
+/// A value with its standard error, in the same unit.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Estimate {
+    /// The value.
+    pub value: f64,
+    /// Its standard error.
+    pub err: f64,
+}

@@ -1,0 +1,1 @@
+//! Files into spectra, one file per format.
