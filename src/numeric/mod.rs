@@ -3,6 +3,7 @@
 
 pub mod autoregression;
 pub mod dispatch;
+pub mod exponential;
 pub mod least_squares;
 pub mod robust;
 
