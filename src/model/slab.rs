@@ -1,0 +1,350 @@
+//! What the slab models share: two halves that approach each other, each with a Gaussian optical
+//! depth (or a sum over a multiplet), and a brightness that is linear in two amplitudes.
+//!
+//! With E = e^-tau of the front (f) and rear (r) half, every slab model here is
+//!
+//! T(v) = A F(tau_f, tau_r) + B (1 - `E_f` `E_r`)
+//!
+//! | model | F | A | B |
+//! | --- | --- | --- | --- |
+//! | two-layer | 1 - `E_f` | J(`T_f`) - J(`T_r`) | J(`T_r`) - J(`T_bg`) |
+//! | with a continuum source | 1 - `E_f` | J(`T_f`) - `J_cr` | (1 - Phi)(J(`T_r`) - J(`T_bg`)) |
+//! | hill | g(`tau_f`) - `E_f` g(`tau_r`), g(x) = (1 - e^-x)/x | J(`T_p`) - J(`T_0`) | J(`T_0`) - J(`T_bg`) |
+#![allow(
+    clippy::inline_always,
+    reason = "has to be compiled inside each instruction-set copy"
+)]
+
+use super::Sampling;
+use crate::line::Component;
+use crate::numeric::dispatch::{Arithmetic, Kernel, dispatch};
+use crate::numeric::exponential::{escape_and_slope, exp_negative};
+
+/// The function F of a slab model and its partial derivatives.
+pub(super) trait Shape {
+    /// (F, dF/d`tau_f`, dF/d`tau_r`) of the two optical depths and their e^-tau.
+    fn value_and_slopes<A: Arithmetic>(
+        tau_f: f64,
+        tau_r: f64,
+        e_f: f64,
+        e_r: f64,
+    ) -> (f64, f64, f64);
+}
+
+/// F = 1 - `E_f`: each half at one temperature.
+pub(super) struct Uniform;
+
+impl Shape for Uniform {
+    #[inline(always)]
+    fn value_and_slopes<A: Arithmetic>(_: f64, _: f64, e_f: f64, _: f64) -> (f64, f64, f64) {
+        (1.0 - e_f, e_f, 0.0)
+    }
+}
+
+/// F = g(`tau_f`) - `E_f` g(`tau_r`): temperature rising linearly with optical depth to the middle.
+pub(super) struct Peaked;
+
+impl Shape for Peaked {
+    #[inline(always)]
+    fn value_and_slopes<A: Arithmetic>(
+        tau_f: f64,
+        tau_r: f64,
+        e_f: f64,
+        e_r: f64,
+    ) -> (f64, f64, f64) {
+        let (g_f, slope_f) = escape_and_slope::<A>(tau_f, e_f);
+        let (g_r, slope_r) = escape_and_slope::<A>(tau_r, e_r);
+        (
+            g_f - e_f * g_r,
+            A::mul_add(e_f, g_r, slope_f),
+            -e_f * slope_r,
+        )
+    }
+}
+
+/// Kinematics and optical depth of the two halves, and the two amplitudes.
+#[derive(Clone, Copy, Debug)]
+pub(super) struct Slab {
+    pub v_lsr_km_s: f64,
+    pub sigma_km_s: f64,
+    pub v_in_km_s: f64,
+    pub tau: f64,
+    /// A, K.
+    pub contrast_k: f64,
+    /// B, K.
+    pub excess_k: f64,
+}
+
+/// What a pass over the channels writes.
+pub(super) enum Output<'a> {
+    /// T only.
+    Value(&'a mut [f64]),
+    /// F and 1 - `E_f` `E_r`, the two functions that T is linear in.
+    Basis(&'a mut [f64], &'a mut [f64]),
+    /// T, and dT by `v_lsr`, sigma, `v_in`, tau, A and, where wanted, B: columns of one length.
+    Slopes {
+        value: &'a mut [f64],
+        columns: [&'a mut [f64]; 5],
+        by_excess: Option<&'a mut [f64]>,
+    },
+}
+
+/// Evaluates a slab on all channels, averaged over each.
+pub(super) fn evaluate<S: Shape>(
+    slab: Slab,
+    components: &[Component],
+    sampling: &Sampling,
+    output: Output<'_>,
+) {
+    dispatch(SlabKernel::<S> {
+        slab,
+        components,
+        sampling,
+        output,
+        shape: std::marker::PhantomData,
+    });
+}
+
+struct SlabKernel<'a, S> {
+    slab: Slab,
+    components: &'a [Component],
+    sampling: &'a Sampling,
+    output: Output<'a>,
+    shape: std::marker::PhantomData<S>,
+}
+
+/// Channels that are worked on at a time; their optical depths stay in the first-level cache.
+const BLOCK: usize = 64;
+
+/// Optical depth per unit tau of one half in a block of channels, and its slopes.
+struct Half {
+    phi: [f64; BLOCK],
+    by_velocity: [f64; BLOCK],
+    by_sigma: [f64; BLOCK],
+}
+
+impl Half {
+    #[inline(always)]
+    fn fill<A: Arithmetic>(
+        &mut self,
+        velocity: &[f64],
+        centre: f64,
+        sigma: f64,
+        components: &[Component],
+    ) {
+        let channels = velocity.len().min(BLOCK);
+        let inverse = 1.0 / sigma;
+        let (phi, by_velocity, by_sigma) = (
+            &mut self.phi[..channels],
+            &mut self.by_velocity[..channels],
+            &mut self.by_sigma[..channels],
+        );
+        for (index, component) in components.iter().enumerate() {
+            let centre = centre + component.offset_km_s;
+            if index == 0 {
+                for i in 0..channels {
+                    let z = (velocity[i] - centre) * inverse;
+                    let gauss = component.weight * exp_negative::<A>(0.5 * z * z);
+                    phi[i] = gauss;
+                    by_velocity[i] = gauss * z * inverse;
+                    by_sigma[i] = gauss * z * z * inverse;
+                }
+            } else {
+                for i in 0..channels {
+                    let z = (velocity[i] - centre) * inverse;
+                    let gauss = component.weight * exp_negative::<A>(0.5 * z * z);
+                    phi[i] += gauss;
+                    by_velocity[i] += gauss * z * inverse;
+                    by_sigma[i] += gauss * z * z * inverse;
+                }
+            }
+        }
+    }
+}
+
+/// T and its partial derivatives in one channel.
+struct Point {
+    value: f64,
+    front: f64,
+    rear: f64,
+    shape: f64,
+    absorbed: f64,
+}
+
+#[inline(always)]
+fn point<S: Shape, A: Arithmetic>(slab: &Slab, phi_f: f64, phi_r: f64) -> Point {
+    let (tau_f, tau_r) = (slab.tau * phi_f, slab.tau * phi_r);
+    let (e_f, e_r) = (exp_negative::<A>(tau_f), exp_negative::<A>(tau_r));
+    let (shape, shape_f, shape_r) = S::value_and_slopes::<A>(tau_f, tau_r, e_f, e_r);
+    let through = e_f * e_r;
+    let absorbed = 1.0 - through;
+    Point {
+        value: A::mul_add(slab.contrast_k, shape, slab.excess_k * absorbed),
+        front: A::mul_add(slab.contrast_k, shape_f, slab.excess_k * through),
+        rear: A::mul_add(slab.contrast_k, shape_r, slab.excess_k * through),
+        shape,
+        absorbed,
+    }
+}
+
+impl<S: Shape> SlabKernel<'_, S> {
+    /// Calls `write(first channel, channels, weight, is first node, front, rear)` for each block
+    /// of channels and quadrature node.
+    #[inline(always)]
+    fn blocks<A: Arithmetic>(
+        slab: &Slab,
+        components: &[Component],
+        sampling: &Sampling,
+        mut write: impl FnMut(usize, usize, f64, bool, &Half, &Half),
+    ) {
+        let (all_velocities, all_widths) = (sampling.velocity_km_s(), sampling.width_km_s());
+        let mut front = Half {
+            phi: [0.0; BLOCK],
+            by_velocity: [0.0; BLOCK],
+            by_sigma: [0.0; BLOCK],
+        };
+        let mut rear = Half {
+            phi: [0.0; BLOCK],
+            by_velocity: [0.0; BLOCK],
+            by_sigma: [0.0; BLOCK],
+        };
+        let mut velocity = [0.0; BLOCK];
+        for first in (0..all_velocities.len()).step_by(BLOCK) {
+            let last = (first + BLOCK).min(all_velocities.len());
+            let channels = last - first;
+            let (centres, widths) = (&all_velocities[first..last], &all_widths[first..last]);
+            for (index, (node, weight)) in sampling.nodes().iter().enumerate() {
+                for i in 0..channels {
+                    velocity[i] = A::mul_add(*node, widths[i], centres[i]);
+                }
+                let velocity = &velocity[..channels];
+                front.fill::<A>(
+                    velocity,
+                    slab.v_lsr_km_s + slab.v_in_km_s,
+                    slab.sigma_km_s,
+                    components,
+                );
+                rear.fill::<A>(
+                    velocity,
+                    slab.v_lsr_km_s - slab.v_in_km_s,
+                    slab.sigma_km_s,
+                    components,
+                );
+                write(first, channels, *weight, index == 0, &front, &rear);
+            }
+        }
+    }
+}
+
+/// Sets on the first quadrature node, adds on the others.
+#[inline(always)]
+fn put(target: &mut f64, first: bool, value: f64) {
+    *target = if first { value } else { *target + value };
+}
+
+impl<S: Shape> Kernel for SlabKernel<'_, S> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        let Self {
+            slab,
+            components,
+            sampling,
+            output,
+            ..
+        } = self;
+        match output {
+            Output::Value(value) => {
+                Self::blocks::<A>(
+                    &slab,
+                    components,
+                    sampling,
+                    |start, channels, weight, first, front, rear| {
+                        let value = &mut value[start..start + channels];
+                        for i in 0..channels {
+                            let point = point::<S, A>(&slab, front.phi[i], rear.phi[i]);
+                            put(&mut value[i], first, weight * point.value);
+                        }
+                    },
+                );
+            }
+            Output::Basis(shape, absorbed) => {
+                Self::blocks::<A>(
+                    &slab,
+                    components,
+                    sampling,
+                    |start, channels, weight, first, front, rear| {
+                        let shape = &mut shape[start..start + channels];
+                        let absorbed = &mut absorbed[start..start + channels];
+                        for i in 0..channels {
+                            let point = point::<S, A>(&slab, front.phi[i], rear.phi[i]);
+                            put(&mut shape[i], first, weight * point.shape);
+                            put(&mut absorbed[i], first, weight * point.absorbed);
+                        }
+                    },
+                );
+            }
+            Output::Slopes {
+                value,
+                columns: [by_v, by_sigma, by_v_in, by_tau, by_a],
+                mut by_excess,
+            } => {
+                Self::blocks::<A>(
+                    &slab,
+                    components,
+                    sampling,
+                    |start, channels, weight, first, front, rear| {
+                        let range = start..start + channels;
+                        let (value, by_v) = (&mut value[range.clone()], &mut by_v[range.clone()]);
+                        let (by_sigma, by_v_in) =
+                            (&mut by_sigma[range.clone()], &mut by_v_in[range.clone()]);
+                        let (by_tau, by_a) = (&mut by_tau[range.clone()], &mut by_a[range.clone()]);
+                        let mut absorbed = [0.0; BLOCK];
+                        for i in 0..channels {
+                            let point = point::<S, A>(&slab, front.phi[i], rear.phi[i]);
+                            let (f, r) = (weight * point.front, weight * point.rear);
+                            let (tau_f, tau_r) = (slab.tau * f, slab.tau * r);
+                            put(&mut value[i], first, weight * point.value);
+                            put(
+                                &mut by_v[i],
+                                first,
+                                A::mul_add(
+                                    tau_f,
+                                    front.by_velocity[i],
+                                    tau_r * rear.by_velocity[i],
+                                ),
+                            );
+                            put(
+                                &mut by_sigma[i],
+                                first,
+                                A::mul_add(tau_f, front.by_sigma[i], tau_r * rear.by_sigma[i]),
+                            );
+                            put(
+                                &mut by_v_in[i],
+                                first,
+                                A::mul_add(
+                                    tau_f,
+                                    front.by_velocity[i],
+                                    -tau_r * rear.by_velocity[i],
+                                ),
+                            );
+                            put(
+                                &mut by_tau[i],
+                                first,
+                                A::mul_add(f, front.phi[i], r * rear.phi[i]),
+                            );
+                            put(&mut by_a[i], first, weight * point.shape);
+                            absorbed[i] = weight * point.absorbed;
+                        }
+                        if let Some(by_excess) = &mut by_excess {
+                            for (target, value) in by_excess[range].iter_mut().zip(&absorbed) {
+                                put(target, first, *value);
+                            }
+                        }
+                    },
+                );
+            }
+        }
+    }
+}

@@ -1,0 +1,298 @@
+//! The two-layer and hill models: their temperatures as the two amplitudes of a [`Slab`].
+
+use super::slab::{Output, Peaked, Slab, Uniform, evaluate};
+use super::{LineShape, Model, Sampling, columns};
+
+fn slab(parameters: &[f64], contrast_k: f64, excess_k: f64) -> Slab {
+    Slab {
+        v_lsr_km_s: parameters[0],
+        sigma_km_s: parameters[1],
+        v_in_km_s: parameters[2],
+        tau: parameters[3],
+        contrast_k,
+        excess_k,
+    }
+}
+
+/// Replaces the columns of A and B by those of two parameters that both depend on.
+fn recombine(by_a: &mut [f64], by_b: &mut [f64], first: (f64, f64), second: (f64, f64)) {
+    for (a, b) in by_a.iter_mut().zip(by_b) {
+        let (by_contrast, by_excess) = (*a, *b);
+        *a = first.0 * by_contrast + first.1 * by_excess;
+        *b = second.0 * by_contrast + second.1 * by_excess;
+    }
+}
+
+fn scale(column: &mut [f64], factor: f64) {
+    for value in column {
+        *value *= factor;
+    }
+}
+
+/// Two layers; parameters `v_lsr`, sigma, `v_in`, tau, `T_f`, `T_r`.
+///
+/// T = J(`T_f`)(1 - `E_f`) + J(`T_r`)(1 - `E_r`)`E_f` - J(`T_bg`)(1 - `E_r` `E_f`)
+/// (Myers et al. 1996, eq. 2, doi:10.1086/310146).
+pub(super) fn two_layer(
+    line: &LineShape,
+    sampling: &Sampling,
+    parameters: &[f64],
+    value: &mut [f64],
+    jacobian: Option<&mut [f64]>,
+) {
+    let scale_j = &line.radiation;
+    let (front, rear) = (scale_j.at(parameters[4]), scale_j.at(parameters[5]));
+    let slab = slab(parameters, front - rear, rear - scale_j.background());
+    let Some(jacobian) = jacobian else {
+        return evaluate::<Uniform>(slab, &line.components, sampling, Output::Value(value));
+    };
+    let [by_v, by_sigma, by_v_in, by_tau, by_front, by_rear] = columns(jacobian, value.len());
+    evaluate::<Uniform>(
+        slab,
+        &line.components,
+        sampling,
+        Output::Slopes {
+            value,
+            columns: [by_v, by_sigma, by_v_in, by_tau, by_front],
+            by_excess: Some(by_rear),
+        },
+    );
+    let (slope_front, slope_rear) = (scale_j.slope(parameters[4]), scale_j.slope(parameters[5]));
+    recombine(
+        by_front,
+        by_rear,
+        (slope_front, 0.0),
+        (-slope_rear, slope_rear),
+    );
+}
+
+/// Two layers with an opaque continuum source of beam filling Phi and temperature `T_c` between
+/// them; parameters `v_lsr`, sigma, `v_in`, tau, `T_f`, `T_r`, Phi, `T_c`.
+///
+/// T = (J(`T_f`) - `J_cr`)(1 - `E_f`) + (1 - Phi)(J(`T_r`) - J(`T_bg`))(1 - `E_r` `E_f`),
+/// `J_cr` = Phi J(`T_c`) + (1 - Phi) J(`T_r`), above the continuum level
+/// (Di Francesco et al. 2001, doi:10.1086/323854).
+pub(super) fn two_layer_continuum(
+    line: &LineShape,
+    sampling: &Sampling,
+    parameters: &[f64],
+    value: &mut [f64],
+    jacobian: Option<&mut [f64]>,
+) {
+    let scale_j = &line.radiation;
+    let (filling, open) = (parameters[6], 1.0 - parameters[6]);
+    let (front, rear, source) = (
+        scale_j.at(parameters[4]),
+        scale_j.at(parameters[5]),
+        scale_j.at(parameters[7]),
+    );
+    let background = scale_j.background();
+    let slab = slab(
+        parameters,
+        front - filling * source - open * rear,
+        open * (rear - background),
+    );
+    let Some(jacobian) = jacobian else {
+        return evaluate::<Uniform>(slab, &line.components, sampling, Output::Value(value));
+    };
+    let [
+        by_v,
+        by_sigma,
+        by_v_in,
+        by_tau,
+        by_front,
+        by_rear,
+        by_filling,
+        by_source,
+    ] = columns(jacobian, value.len());
+    evaluate::<Uniform>(
+        slab,
+        &line.components,
+        sampling,
+        Output::Slopes {
+            value,
+            columns: [by_v, by_sigma, by_v_in, by_tau, by_front],
+            by_excess: Some(by_rear),
+        },
+    );
+    by_filling.copy_from_slice(by_front);
+    by_source.copy_from_slice(by_front);
+    for (target, by_excess) in by_filling.iter_mut().zip(&*by_rear) {
+        *target = (rear - source) * *target - (rear - background) * by_excess;
+    }
+    scale(by_source, -filling * scale_j.slope(parameters[7]));
+    let (slope_front, slope_rear) = (
+        scale_j.slope(parameters[4]),
+        open * scale_j.slope(parameters[5]),
+    );
+    recombine(
+        by_front,
+        by_rear,
+        (slope_front, 0.0),
+        (-slope_rear, slope_rear),
+    );
+}
+
+/// J linear in optical depth from J(`T_bg`) at both surfaces to J(`T_p`) at the middle; parameters
+/// `v_lsr`, sigma, `v_in`, tau, `T_p` (De Vries & Myers 2005, doi:10.1086/427141).
+pub(super) fn hill(
+    line: &LineShape,
+    sampling: &Sampling,
+    parameters: &[f64],
+    value: &mut [f64],
+    jacobian: Option<&mut [f64]>,
+) {
+    let scale_j = &line.radiation;
+    let slab = slab(
+        parameters,
+        scale_j.at(parameters[4]) - scale_j.background(),
+        0.0,
+    );
+    let Some(jacobian) = jacobian else {
+        return evaluate::<Peaked>(slab, &line.components, sampling, Output::Value(value));
+    };
+    let [by_v, by_sigma, by_v_in, by_tau, by_peak] = columns(jacobian, value.len());
+    evaluate::<Peaked>(
+        slab,
+        &line.components,
+        sampling,
+        Output::Slopes {
+            value,
+            columns: [by_v, by_sigma, by_v_in, by_tau, by_peak],
+            by_excess: None,
+        },
+    );
+    scale(by_peak, scale_j.slope(parameters[4]));
+}
+
+/// The hill with a free surface temperature; parameters `v_lsr`, sigma, `v_in`, tau, `T_p`, `T_0`.
+///
+/// T = (J(`T_p`) - J(`T_0`)) [(1 - `E_f`)/`tau_f` - `E_f` (1 - `E_r`)/`tau_r`]
+///     + (J(`T_0`) - J(`T_bg`))(1 - `E_r` `E_f`) (De Vries & Myers 2005, doi:10.1086/427141).
+pub(super) fn hill_surface(
+    line: &LineShape,
+    sampling: &Sampling,
+    parameters: &[f64],
+    value: &mut [f64],
+    jacobian: Option<&mut [f64]>,
+) {
+    let scale_j = &line.radiation;
+    let (peak, surface) = (scale_j.at(parameters[4]), scale_j.at(parameters[5]));
+    let slab = slab(parameters, peak - surface, surface - scale_j.background());
+    let Some(jacobian) = jacobian else {
+        return evaluate::<Peaked>(slab, &line.components, sampling, Output::Value(value));
+    };
+    let [by_v, by_sigma, by_v_in, by_tau, by_peak, by_surface] = columns(jacobian, value.len());
+    evaluate::<Peaked>(
+        slab,
+        &line.components,
+        sampling,
+        Output::Slopes {
+            value,
+            columns: [by_v, by_sigma, by_v_in, by_tau, by_peak],
+            by_excess: Some(by_surface),
+        },
+    );
+    let (slope_peak, slope_surface) = (scale_j.slope(parameters[4]), scale_j.slope(parameters[5]));
+    recombine(
+        by_peak,
+        by_surface,
+        (slope_peak, 0.0),
+        (-slope_surface, slope_surface),
+    );
+}
+
+/// The two functions of velocity that a slab model's profile is linear in, at the first four
+/// parameters `v_lsr`, sigma, `v_in`, tau: for finding starts without iterating over temperatures.
+///
+/// `first` multiplies A, `second` multiplies B (see [`amplitudes`]); one number a channel each.
+///
+/// # Panics
+///
+/// For a model without an inward speed.
+pub fn basis(
+    model: Model,
+    line: &LineShape,
+    sampling: &Sampling,
+    kinematics: [f64; 4],
+    first: &mut [f64],
+    second: &mut [f64],
+) {
+    let slab = slab(&kinematics, 0.0, 0.0);
+    let output = Output::Basis(first, second);
+    match model {
+        Model::TwoLayer | Model::TwoLayerContinuum => {
+            evaluate::<Uniform>(slab, &line.components, sampling, output);
+        }
+        Model::Hill | Model::HillSurface => {
+            evaluate::<Peaked>(slab, &line.components, sampling, output);
+        }
+        Model::Gaussian | Model::TwoGaussians | Model::Layer => {
+            panic!("{} has no inward speed", model.name())
+        }
+    }
+}
+
+/// The amplitudes A and B (K) of a slab model's parameters.
+///
+/// # Panics
+///
+/// For a model without an inward speed.
+#[must_use]
+pub fn amplitudes(model: Model, line: &LineShape, parameters: &[f64]) -> (f64, f64) {
+    let j = |index: usize| line.radiation.at(parameters[index]);
+    let background = line.radiation.background();
+    match model {
+        Model::TwoLayer => (j(4) - j(5), j(5) - background),
+        Model::TwoLayerContinuum => {
+            let open = 1.0 - parameters[6];
+            (
+                j(4) - parameters[6] * j(7) - open * j(5),
+                open * (j(5) - background),
+            )
+        }
+        Model::Hill => (j(4) - background, 0.0),
+        Model::HillSurface => (j(4) - j(5), j(5) - background),
+        Model::Gaussian | Model::TwoGaussians | Model::Layer => {
+            panic!("{} has no inward speed", model.name())
+        }
+    }
+}
+
+/// The temperatures that give amplitudes A and B (K), as the model's parameters from the fifth on.
+///
+/// `source` is Phi and `T_c` of the continuum source, used by that model alone. Temperatures
+/// below the background come out where the amplitudes ask for them: the caller clamps.
+///
+/// # Panics
+///
+/// For a model without an inward speed.
+#[must_use]
+pub fn temperatures(
+    model: Model,
+    line: &LineShape,
+    a_k: f64,
+    b_k: f64,
+    source: (f64, f64),
+) -> (f64, f64) {
+    let background = line.radiation.background();
+    let t = |radiation: f64| line.radiation.inverse(radiation);
+    match model {
+        Model::TwoLayer | Model::HillSurface => {
+            let second = background + b_k;
+            (t(second + a_k), t(second))
+        }
+        Model::TwoLayerContinuum => {
+            let open = (1.0 - source.0).max(1e-6);
+            let rear = background + b_k / open;
+            (
+                t(a_k + source.0 * line.radiation.at(source.1) + open * rear),
+                t(rear),
+            )
+        }
+        Model::Hill => (t(background + a_k), f64::NAN),
+        Model::Gaussian | Model::TwoGaussians | Model::Layer => {
+            panic!("{} has no inward speed", model.name())
+        }
+    }
+}
