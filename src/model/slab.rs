@@ -75,18 +75,33 @@ pub(super) struct Slab {
     pub excess_k: f64,
 }
 
-/// What a pass over the channels writes.
-pub(super) enum Output<'a> {
-    /// T only.
-    Value(&'a mut [f64]),
-    /// F and 1 - `E_f` `E_r`, the two functions that T is linear in.
-    Basis(&'a mut [f64], &'a mut [f64]),
-    /// T, and dT by `v_lsr`, sigma, `v_in`, tau, A and, where wanted, B: columns of one length.
-    Slopes {
-        value: &'a mut [f64],
-        columns: [&'a mut [f64]; 5],
-        by_excess: Option<&'a mut [f64]>,
-    },
+/// What a pass over the channels writes: one block of channels at one quadrature node at a time.
+///
+/// `block` has to be `#[inline(always)]` (and no closure), to be compiled for each instruction set.
+pub(super) trait Sink {
+    fn block<S: Shape, A: Arithmetic>(
+        &mut self,
+        slab: &Slab,
+        block: &Block,
+        front: &Half,
+        rear: &Half,
+    );
+}
+
+/// T only.
+pub(super) struct Value<'a>(pub &'a mut [f64]);
+
+/// F and 1 - `E_f` `E_r`, the two functions that T is linear in.
+pub(super) struct Basis<'a> {
+    pub shape: &'a mut [f64],
+    pub absorbed: &'a mut [f64],
+}
+
+/// T, and dT by `v_lsr`, sigma, `v_in`, tau, A and, where wanted, B: columns of one length.
+pub(super) struct Slopes<'a> {
+    pub value: &'a mut [f64],
+    pub columns: [&'a mut [f64]; 5],
+    pub by_excess: Option<&'a mut [f64]>,
 }
 
 /// Evaluates a slab on all channels, averaged over each.
@@ -94,30 +109,103 @@ pub(super) fn evaluate<S: Shape>(
     slab: Slab,
     components: &[Component],
     sampling: &Sampling,
-    output: Output<'_>,
+    sink: impl Sink,
 ) {
-    dispatch(SlabKernel::<S> {
+    dispatch(SlabKernel::<S, _> {
         slab,
         components,
         sampling,
-        output,
+        sink,
         shape: std::marker::PhantomData,
     });
 }
 
-struct SlabKernel<'a, S> {
+struct SlabKernel<'a, S, T> {
     slab: Slab,
     components: &'a [Component],
     sampling: &'a Sampling,
-    output: Output<'a>,
+    sink: T,
     shape: std::marker::PhantomData<S>,
+}
+
+impl<S: Shape, T: Sink> Kernel for SlabKernel<'_, S, T> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        let Self {
+            slab,
+            components,
+            sampling,
+            mut sink,
+            ..
+        } = self;
+        let (all_velocities, all_widths) = (sampling.velocity_km_s(), sampling.width_km_s());
+        let mut front = Half {
+            phi: [0.0; BLOCK],
+            by_velocity: [0.0; BLOCK],
+            by_sigma: [0.0; BLOCK],
+        };
+        let mut rear = Half {
+            phi: [0.0; BLOCK],
+            by_velocity: [0.0; BLOCK],
+            by_sigma: [0.0; BLOCK],
+        };
+        let mut velocity = [0.0; BLOCK];
+        for start in (0..all_velocities.len()).step_by(BLOCK) {
+            let end = (start + BLOCK).min(all_velocities.len());
+            let channels = end - start;
+            let (centres, widths) = (&all_velocities[start..end], &all_widths[start..end]);
+            for (index, (node, weight)) in sampling.nodes().iter().enumerate() {
+                for i in 0..channels {
+                    velocity[i] = A::mul_add(*node, widths[i], centres[i]);
+                }
+                let velocity = &velocity[..channels];
+                front.fill::<A>(
+                    velocity,
+                    slab.v_lsr_km_s + slab.v_in_km_s,
+                    slab.sigma_km_s,
+                    components,
+                );
+                rear.fill::<A>(
+                    velocity,
+                    slab.v_lsr_km_s - slab.v_in_km_s,
+                    slab.sigma_km_s,
+                    components,
+                );
+                let block = Block {
+                    start,
+                    channels,
+                    weight: *weight,
+                    first: index == 0,
+                };
+                sink.block::<S, A>(&slab, &block, &front, &rear);
+            }
+        }
+    }
+}
+
+/// A run of channels at one quadrature node.
+pub(super) struct Block {
+    start: usize,
+    channels: usize,
+    weight: f64,
+    /// Whether this is the first node: values are set, at the others added.
+    first: bool,
+}
+
+impl Block {
+    #[inline(always)]
+    fn put(&self, target: &mut f64, value: f64) {
+        *target = if self.first { value } else { *target + value };
+    }
 }
 
 /// Channels that are worked on at a time; their optical depths stay in the first-level cache.
 const BLOCK: usize = 64;
 
 /// Optical depth per unit tau of one half in a block of channels, and its slopes.
-struct Half {
+pub(super) struct Half {
     phi: [f64; BLOCK],
     by_velocity: [f64; BLOCK],
     by_sigma: [f64; BLOCK],
@@ -187,163 +275,83 @@ fn point<S: Shape, A: Arithmetic>(slab: &Slab, phi_f: f64, phi_r: f64) -> Point 
     }
 }
 
-impl<S: Shape> SlabKernel<'_, S> {
-    /// Calls `write(first channel, channels, weight, is first node, front, rear)` for each block
-    /// of channels and quadrature node.
+impl Sink for Value<'_> {
     #[inline(always)]
-    fn blocks<A: Arithmetic>(
+    fn block<S: Shape, A: Arithmetic>(
+        &mut self,
         slab: &Slab,
-        components: &[Component],
-        sampling: &Sampling,
-        mut write: impl FnMut(usize, usize, f64, bool, &Half, &Half),
+        block: &Block,
+        front: &Half,
+        rear: &Half,
     ) {
-        let (all_velocities, all_widths) = (sampling.velocity_km_s(), sampling.width_km_s());
-        let mut front = Half {
-            phi: [0.0; BLOCK],
-            by_velocity: [0.0; BLOCK],
-            by_sigma: [0.0; BLOCK],
-        };
-        let mut rear = Half {
-            phi: [0.0; BLOCK],
-            by_velocity: [0.0; BLOCK],
-            by_sigma: [0.0; BLOCK],
-        };
-        let mut velocity = [0.0; BLOCK];
-        for first in (0..all_velocities.len()).step_by(BLOCK) {
-            let last = (first + BLOCK).min(all_velocities.len());
-            let channels = last - first;
-            let (centres, widths) = (&all_velocities[first..last], &all_widths[first..last]);
-            for (index, (node, weight)) in sampling.nodes().iter().enumerate() {
-                for i in 0..channels {
-                    velocity[i] = A::mul_add(*node, widths[i], centres[i]);
-                }
-                let velocity = &velocity[..channels];
-                front.fill::<A>(
-                    velocity,
-                    slab.v_lsr_km_s + slab.v_in_km_s,
-                    slab.sigma_km_s,
-                    components,
-                );
-                rear.fill::<A>(
-                    velocity,
-                    slab.v_lsr_km_s - slab.v_in_km_s,
-                    slab.sigma_km_s,
-                    components,
-                );
-                write(first, channels, *weight, index == 0, &front, &rear);
-            }
+        let value = &mut self.0[block.start..block.start + block.channels];
+        for i in 0..block.channels {
+            let point = point::<S, A>(slab, front.phi[i], rear.phi[i]);
+            block.put(&mut value[i], block.weight * point.value);
         }
     }
 }
 
-/// Sets on the first quadrature node, adds on the others.
-#[inline(always)]
-fn put(target: &mut f64, first: bool, value: f64) {
-    *target = if first { value } else { *target + value };
+impl Sink for Basis<'_> {
+    #[inline(always)]
+    fn block<S: Shape, A: Arithmetic>(
+        &mut self,
+        slab: &Slab,
+        block: &Block,
+        front: &Half,
+        rear: &Half,
+    ) {
+        let shape = &mut self.shape[block.start..block.start + block.channels];
+        let absorbed = &mut self.absorbed[block.start..block.start + block.channels];
+        for i in 0..block.channels {
+            let point = point::<S, A>(slab, front.phi[i], rear.phi[i]);
+            block.put(&mut shape[i], block.weight * point.shape);
+            block.put(&mut absorbed[i], block.weight * point.absorbed);
+        }
+    }
 }
 
-impl<S: Shape> Kernel for SlabKernel<'_, S> {
-    type Output = ();
-
+impl Sink for Slopes<'_> {
     #[inline(always)]
-    fn run<A: Arithmetic>(self) {
-        let Self {
-            slab,
-            components,
-            sampling,
-            output,
-            ..
-        } = self;
-        match output {
-            Output::Value(value) => {
-                Self::blocks::<A>(
-                    &slab,
-                    components,
-                    sampling,
-                    |start, channels, weight, first, front, rear| {
-                        let value = &mut value[start..start + channels];
-                        for i in 0..channels {
-                            let point = point::<S, A>(&slab, front.phi[i], rear.phi[i]);
-                            put(&mut value[i], first, weight * point.value);
-                        }
-                    },
-                );
-            }
-            Output::Basis(shape, absorbed) => {
-                Self::blocks::<A>(
-                    &slab,
-                    components,
-                    sampling,
-                    |start, channels, weight, first, front, rear| {
-                        let shape = &mut shape[start..start + channels];
-                        let absorbed = &mut absorbed[start..start + channels];
-                        for i in 0..channels {
-                            let point = point::<S, A>(&slab, front.phi[i], rear.phi[i]);
-                            put(&mut shape[i], first, weight * point.shape);
-                            put(&mut absorbed[i], first, weight * point.absorbed);
-                        }
-                    },
-                );
-            }
-            Output::Slopes {
-                value,
-                columns: [by_v, by_sigma, by_v_in, by_tau, by_a],
-                mut by_excess,
-            } => {
-                Self::blocks::<A>(
-                    &slab,
-                    components,
-                    sampling,
-                    |start, channels, weight, first, front, rear| {
-                        let range = start..start + channels;
-                        let (value, by_v) = (&mut value[range.clone()], &mut by_v[range.clone()]);
-                        let (by_sigma, by_v_in) =
-                            (&mut by_sigma[range.clone()], &mut by_v_in[range.clone()]);
-                        let (by_tau, by_a) = (&mut by_tau[range.clone()], &mut by_a[range.clone()]);
-                        let mut absorbed = [0.0; BLOCK];
-                        for i in 0..channels {
-                            let point = point::<S, A>(&slab, front.phi[i], rear.phi[i]);
-                            let (f, r) = (weight * point.front, weight * point.rear);
-                            let (tau_f, tau_r) = (slab.tau * f, slab.tau * r);
-                            put(&mut value[i], first, weight * point.value);
-                            put(
-                                &mut by_v[i],
-                                first,
-                                A::mul_add(
-                                    tau_f,
-                                    front.by_velocity[i],
-                                    tau_r * rear.by_velocity[i],
-                                ),
-                            );
-                            put(
-                                &mut by_sigma[i],
-                                first,
-                                A::mul_add(tau_f, front.by_sigma[i], tau_r * rear.by_sigma[i]),
-                            );
-                            put(
-                                &mut by_v_in[i],
-                                first,
-                                A::mul_add(
-                                    tau_f,
-                                    front.by_velocity[i],
-                                    -tau_r * rear.by_velocity[i],
-                                ),
-                            );
-                            put(
-                                &mut by_tau[i],
-                                first,
-                                A::mul_add(f, front.phi[i], r * rear.phi[i]),
-                            );
-                            put(&mut by_a[i], first, weight * point.shape);
-                            absorbed[i] = weight * point.absorbed;
-                        }
-                        if let Some(by_excess) = &mut by_excess {
-                            for (target, value) in by_excess[range].iter_mut().zip(&absorbed) {
-                                put(target, first, *value);
-                            }
-                        }
-                    },
-                );
+    fn block<S: Shape, A: Arithmetic>(
+        &mut self,
+        slab: &Slab,
+        block: &Block,
+        front: &Half,
+        rear: &Half,
+    ) {
+        let channels = block.channels;
+        let range = block.start..block.start + channels;
+        let value = &mut self.value[range.clone()];
+        let [by_v, by_sigma, by_v_in, by_tau, by_a] = self
+            .columns
+            .each_mut()
+            .map(|column| &mut column[range.clone()]);
+        let mut absorbed = [0.0; BLOCK];
+        for i in 0..channels {
+            let point = point::<S, A>(slab, front.phi[i], rear.phi[i]);
+            let (f, r) = (block.weight * point.front, block.weight * point.rear);
+            let (tau_f, tau_r) = (slab.tau * f, slab.tau * r);
+            block.put(&mut value[i], block.weight * point.value);
+            block.put(
+                &mut by_v[i],
+                A::mul_add(tau_f, front.by_velocity[i], tau_r * rear.by_velocity[i]),
+            );
+            block.put(
+                &mut by_sigma[i],
+                A::mul_add(tau_f, front.by_sigma[i], tau_r * rear.by_sigma[i]),
+            );
+            block.put(
+                &mut by_v_in[i],
+                A::mul_add(tau_f, front.by_velocity[i], -tau_r * rear.by_velocity[i]),
+            );
+            block.put(&mut by_tau[i], A::mul_add(f, front.phi[i], r * rear.phi[i]));
+            block.put(&mut by_a[i], block.weight * point.shape);
+            absorbed[i] = block.weight * point.absorbed;
+        }
+        if let Some(by_excess) = &mut self.by_excess {
+            for (target, value) in by_excess[range].iter_mut().zip(&absorbed) {
+                block.put(target, *value);
             }
         }
     }

@@ -1,6 +1,6 @@
 //! The two-layer and hill models: their temperatures as the two amplitudes of a [`Slab`].
 
-use super::slab::{Output, Peaked, Slab, Uniform, evaluate};
+use super::slab::{Basis, Peaked, Slab, Slopes, Uniform, Value, evaluate};
 use super::{LineShape, Model, Sampling, columns};
 
 fn slab(parameters: &[f64], contrast_k: f64, excess_k: f64) -> Slab {
@@ -44,14 +44,14 @@ pub(super) fn two_layer(
     let (front, rear) = (scale_j.at(parameters[4]), scale_j.at(parameters[5]));
     let slab = slab(parameters, front - rear, rear - scale_j.background());
     let Some(jacobian) = jacobian else {
-        return evaluate::<Uniform>(slab, &line.components, sampling, Output::Value(value));
+        return evaluate::<Uniform>(slab, &line.components, sampling, Value(value));
     };
     let [by_v, by_sigma, by_v_in, by_tau, by_front, by_rear] = columns(jacobian, value.len());
     evaluate::<Uniform>(
         slab,
         &line.components,
         sampling,
-        Output::Slopes {
+        Slopes {
             value,
             columns: [by_v, by_sigma, by_v_in, by_tau, by_front],
             by_excess: Some(by_rear),
@@ -93,7 +93,7 @@ pub(super) fn two_layer_continuum(
         open * (rear - background),
     );
     let Some(jacobian) = jacobian else {
-        return evaluate::<Uniform>(slab, &line.components, sampling, Output::Value(value));
+        return evaluate::<Uniform>(slab, &line.components, sampling, Value(value));
     };
     let [
         by_v,
@@ -109,7 +109,7 @@ pub(super) fn two_layer_continuum(
         slab,
         &line.components,
         sampling,
-        Output::Slopes {
+        Slopes {
             value,
             columns: [by_v, by_sigma, by_v_in, by_tau, by_front],
             by_excess: Some(by_rear),
@@ -149,14 +149,14 @@ pub(super) fn hill(
         0.0,
     );
     let Some(jacobian) = jacobian else {
-        return evaluate::<Peaked>(slab, &line.components, sampling, Output::Value(value));
+        return evaluate::<Peaked>(slab, &line.components, sampling, Value(value));
     };
     let [by_v, by_sigma, by_v_in, by_tau, by_peak] = columns(jacobian, value.len());
     evaluate::<Peaked>(
         slab,
         &line.components,
         sampling,
-        Output::Slopes {
+        Slopes {
             value,
             columns: [by_v, by_sigma, by_v_in, by_tau, by_peak],
             by_excess: None,
@@ -180,14 +180,14 @@ pub(super) fn hill_surface(
     let (peak, surface) = (scale_j.at(parameters[4]), scale_j.at(parameters[5]));
     let slab = slab(parameters, peak - surface, surface - scale_j.background());
     let Some(jacobian) = jacobian else {
-        return evaluate::<Peaked>(slab, &line.components, sampling, Output::Value(value));
+        return evaluate::<Peaked>(slab, &line.components, sampling, Value(value));
     };
     let [by_v, by_sigma, by_v_in, by_tau, by_peak, by_surface] = columns(jacobian, value.len());
     evaluate::<Peaked>(
         slab,
         &line.components,
         sampling,
-        Output::Slopes {
+        Slopes {
             value,
             columns: [by_v, by_sigma, by_v_in, by_tau, by_peak],
             by_excess: Some(by_surface),
@@ -219,7 +219,10 @@ pub fn basis(
     second: &mut [f64],
 ) {
     let slab = slab(&kinematics, 0.0, 0.0);
-    let output = Output::Basis(first, second);
+    let output = Basis {
+        shape: first,
+        absorbed: second,
+    };
     match model {
         Model::TwoLayer | Model::TwoLayerContinuum => {
             evaluate::<Uniform>(slab, &line.components, sampling, output);
