@@ -1,1 +1,0 @@
-//! Bounded nonlinear least squares.

@@ -1,0 +1,225 @@
+//! Linear algebra on a tall matrix of few columns and on small square ones.
+//!
+//! Tall matrices are column by column in plain slices; small ones are fixed-size arrays on the stack.
+
+/// Most parameters a problem may have.
+pub const MAX_PARAMETERS: usize = 16;
+
+/// One number a parameter.
+pub(super) type Vector = [f64; MAX_PARAMETERS];
+/// A small square matrix, `matrix[row][column]`.
+pub(super) type Matrix = [Vector; MAX_PARAMETERS];
+
+/// Independent partial sums of a dot product: enough for the compiler to fill vector registers.
+const LANES: usize = 8;
+/// Rows of a block: 256 rows of 9 columns take 18 kB, so that a block stays in the first cache.
+const BLOCK: usize = 256;
+
+/// sum_i a_i b_i.
+pub(super) fn dot(a: &[f64], b: &[f64]) -> f64 {
+    let [sum] = dot_with(a, [b]);
+    sum
+}
+
+/// sum_i r_i^2, block by block.
+pub(super) fn sum_of_squares(values: &[f64]) -> f64 {
+    values.chunks(BLOCK).map(|block| dot(block, block)).sum()
+}
+
+/// The dot products of `a` with `N` others, in one pass over `a`.
+#[inline]
+fn dot_with<const N: usize>(a: &[f64], others: [&[f64]; N]) -> [f64; N] {
+    let others = others.map(|other| &other[..a.len()]);
+    let mut sums = [[0.0; LANES]; N];
+    let whole = a.len() - a.len() % LANES;
+    let mut start = 0;
+    while start < whole {
+        let left = &a[start..start + LANES];
+        for (sum, other) in sums.iter_mut().zip(others) {
+            let right = &other[start..start + LANES];
+            for lane in 0..LANES {
+                sum[lane] += left[lane] * right[lane];
+            }
+        }
+        start += LANES;
+    }
+    let mut totals = [0.0; N];
+    for ((total, sum), other) in totals.iter_mut().zip(sums).zip(others) {
+        let rest: f64 = (whole..a.len()).map(|i| a[i] * other[i]).sum();
+        *total = sum.iter().sum::<f64>() + rest;
+    }
+    totals
+}
+
+/// J^T J and J^T r of `columns` columns of `rows` rows each.
+pub(super) fn normal_equations(
+    jacobian: &[f64],
+    residuals: &[f64],
+    rows: usize,
+    columns: usize,
+) -> (Matrix, Vector) {
+    let mut gram = [[0.0; MAX_PARAMETERS]; MAX_PARAMETERS];
+    let mut gradient = [0.0; MAX_PARAMETERS];
+    for start in (0..rows).step_by(BLOCK) {
+        let end = rows.min(start + BLOCK);
+        let column = |j: usize| &jacobian[j * rows + start..j * rows + end];
+        let block_residuals = &residuals[start..end];
+        for i in 0..columns {
+            let left = column(i);
+            gradient[i] += dot(left, block_residuals);
+            let mut j = i;
+            while j + 2 <= columns {
+                let sums = dot_with(left, [column(j), column(j + 1)]);
+                gram[i][j] += sums[0];
+                gram[i][j + 1] += sums[1];
+                j += 2;
+            }
+            if j < columns {
+                gram[i][j] += dot(left, column(j));
+            }
+        }
+    }
+    for i in 0..columns {
+        for j in 0..i {
+            gram[i][j] = gram[j][i];
+        }
+    }
+    (gram, gradient)
+}
+
+/// Replaces the upper left `size` x `size` lower triangle of a symmetric matrix by its Cholesky
+/// factor. Returns the smallest pivot relative to the diagonal element it came from: about the
+/// inverse condition number when the diagonal is near one; zero or less when the matrix is not
+/// positive definite, and the factor is then unfinished.
+pub(super) fn cholesky(matrix: &mut Matrix, size: usize) -> f64 {
+    let mut smallest = f64::INFINITY;
+    for k in 0..size {
+        let diagonal = matrix[k][k];
+        let pivot = (0..k).fold(diagonal, |rest, i| rest - matrix[k][i] * matrix[k][i]);
+        let relative = pivot / diagonal;
+        if relative.is_nan() || relative <= 0.0 {
+            return 0.0;
+        }
+        smallest = smallest.min(relative);
+        let root = pivot.sqrt();
+        matrix[k][k] = root;
+        for row in k + 1..size {
+            let sum = (0..k).fold(matrix[row][k], |rest, i| {
+                rest - matrix[row][i] * matrix[k][i]
+            });
+            matrix[row][k] = sum / root;
+        }
+    }
+    smallest
+}
+
+/// Solves L L^T x = b in place for the factor of [`cholesky`].
+pub(super) fn cholesky_solve(factor: &Matrix, size: usize, x: &mut Vector) {
+    for k in 0..size {
+        x[k] = (0..k).fold(x[k], |rest, i| rest - factor[k][i] * x[i]) / factor[k][k];
+    }
+    for k in (0..size).rev() {
+        x[k] = (k + 1..size).fold(x[k], |rest, i| rest - factor[i][k] * x[i]) / factor[k][k];
+    }
+}
+
+/// Householder triangularisation of `columns` columns of `rows` rows each, in place: R in the upper
+/// triangle (below it stay reflectors), Q^T b in `right`.
+pub(super) fn triangularise(matrix: &mut [f64], rows: usize, columns: usize, right: &mut [f64]) {
+    for k in 0..columns.min(rows) {
+        let (head, tail) = matrix.split_at_mut((k + 1) * rows);
+        let reflector = &mut head[k * rows + k..];
+        let norm = sum_of_squares(reflector).sqrt();
+        if norm == 0.0 {
+            continue;
+        }
+        let diagonal = -norm.copysign(reflector[0]);
+        reflector[0] -= diagonal;
+        // The squared length of the reflector, without cancellation.
+        let half_square = norm * reflector[0].abs();
+        let reflect = |values: &mut [f64]| {
+            let factor = -dot(reflector, values) / half_square;
+            for (value, element) in values.iter_mut().zip(reflector.iter()) {
+                *value += factor * element;
+            }
+        };
+        for column in tail.chunks_exact_mut(rows).take(columns - k - 1) {
+            reflect(&mut column[k..]);
+        }
+        reflect(&mut right[k..rows]);
+        head[k * rows + k] = diagonal;
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    fn sample(count: usize, phase: f64) -> Vec<f64> {
+        (0..count)
+            .map(|i| (phase + 1.7 * i as f64).sin() + 0.1 * phase)
+            .collect()
+    }
+
+    #[test]
+    fn normal_equations_are_the_plain_sums() {
+        for (rows, columns) in [(3, 1), (17, 4), (256, 5), (700, 9), (1031, 16)] {
+            let jacobian: Vec<f64> = (0..columns).flat_map(|j| sample(rows, j as f64)).collect();
+            let residuals = sample(rows, 0.5);
+            let (gram, gradient) = normal_equations(&jacobian, &residuals, rows, columns);
+            for i in 0..columns {
+                let column = |j: usize| &jacobian[j * rows..(j + 1) * rows];
+                for j in 0..columns {
+                    let plain: f64 = (column(i).iter().zip(column(j))).map(|(a, b)| a * b).sum();
+                    assert!((gram[i][j] - plain).abs() < 1e-11 * rows as f64);
+                }
+                let plain: f64 = (column(i).iter().zip(&residuals)).map(|(a, b)| a * b).sum();
+                assert!((gradient[i] - plain).abs() < 1e-11 * rows as f64);
+            }
+        }
+    }
+
+    #[test]
+    fn triangle_has_the_gram_matrix_of_its_columns() {
+        let (rows, columns) = (40, 6);
+        let jacobian: Vec<f64> = (0..columns).flat_map(|j| sample(rows, j as f64)).collect();
+        let right = sample(rows, 0.5);
+        let (gram, gradient) = normal_equations(&jacobian, &right, rows, columns);
+        let (mut reduced, mut rotated) = (jacobian, right);
+        triangularise(&mut reduced, rows, columns, &mut rotated);
+        let triangle = |row: usize, column: usize| {
+            if row <= column {
+                reduced[column * rows + row]
+            } else {
+                0.0
+            }
+        };
+        for i in 0..columns {
+            for j in 0..columns {
+                let product: f64 = (0..columns).map(|k| triangle(k, i) * triangle(k, j)).sum();
+                assert!((product - gram[i][j]).abs() < 1e-12);
+            }
+            let product: f64 = (0..columns).map(|k| triangle(k, i) * rotated[k]).sum();
+            assert!((product - gradient[i]).abs() < 1e-12);
+        }
+    }
+
+    #[test]
+    fn cholesky_solves_the_hilbert_matrix_and_sees_its_condition() {
+        // The Hilbert matrix of order 5 has condition number 4.8e5 (common knowledge).
+        let mut matrix = [[0.0; MAX_PARAMETERS]; MAX_PARAMETERS];
+        let mut x = [0.0; MAX_PARAMETERS];
+        for i in 0..5 {
+            for j in 0..5 {
+                matrix[i][j] = 1.0 / (i + j + 1) as f64;
+                x[i] += matrix[i][j];
+            }
+        }
+        let smallest = cholesky(&mut matrix, 5);
+        assert!(smallest > 1e-7 && smallest < 1e-4);
+        cholesky_solve(&matrix, 5, &mut x);
+        assert!(x[..5].iter().all(|x| (x - 1.0).abs() < 1e-10));
+        let mut singular = [[1.0; MAX_PARAMETERS]; MAX_PARAMETERS];
+        assert_eq!(cholesky(&mut singular, 2), 0.0);
+    }
+}

@@ -1,0 +1,629 @@
+//! The state of a search and its step.
+//!
+//! A step solves (J^T J + lambda D^2) d = -J^T r inside the box: a parameter on a bound whose gradient
+//! points outward is held; one that the step would carry past a bound is set to the bound and the
+//! others are solved for again. D holds the largest column norms met so far. The normal equations
+//! are used while they keep eight digits, the Householder triangle of J after that.
+
+use super::dense::{self, MAX_PARAMETERS, Matrix, Vector};
+use super::minimum::Curvature;
+use super::{Interval, LeastSquares, LeastSquaresError, Minimum, Settings, Side, Termination};
+
+/// Smallest relative pivot of the normal equations: rounding (2e-16) over this is below 1e-8.
+const SMALLEST_PIVOT: f64 = 1e-7;
+/// Damping of a step that counts as undamped; keeps directions without influence at rest.
+const UNDAMPED: f64 = 1e-15;
+/// Damping at which a step follows the gradient so closely that a longer wait is pointless.
+const LARGEST_DAMPING: f64 = 1e12;
+/// Smallest ratio of actual to predicted decrease for which a step is kept.
+const LEAST_GAIN: f64 = 1e-4;
+/// Strongest reduction of the damping after a step.
+const STRONGEST_RELIEF: f64 = 0.1;
+/// Expected decrease relative to chi2 that rounding inside a model can hide.
+const ROUNDING: f64 = 1e-9;
+
+/// Buffers for residuals and Jacobians, kept from fit to fit; they grow and never shrink.
+#[derive(Clone, Debug, Default)]
+pub struct Workspace {
+    residuals: Vec<f64>,
+    jacobian: Vec<f64>,
+    trial_residuals: Vec<f64>,
+    trial_jacobian: Vec<f64>,
+}
+
+impl Workspace {
+    /// Empty buffers.
+    #[must_use]
+    pub fn new() -> Self {
+        Self::default()
+    }
+
+    fn reserve(&mut self, rows: usize, columns: usize) {
+        for buffer in [&mut self.residuals, &mut self.trial_residuals] {
+            if buffer.len() < rows {
+                buffer.resize(rows, 0.0);
+            }
+        }
+        for buffer in [&mut self.jacobian, &mut self.trial_jacobian] {
+            if buffer.len() < rows * columns {
+                buffer.resize(rows * columns, 0.0);
+            }
+        }
+    }
+
+    /// Makes the trial the current point.
+    fn keep_trial(&mut self) {
+        std::mem::swap(&mut self.residuals, &mut self.trial_residuals);
+        std::mem::swap(&mut self.jacobian, &mut self.trial_jacobian);
+    }
+}
+
+/// A search under way.
+#[derive(Clone, Debug)]
+pub struct Descent {
+    rows: usize,
+    columns: usize,
+    parameters: Vector,
+    chi2: f64,
+    degrees_of_freedom: f64,
+    linear: Linearisation,
+    scale: Vector,
+    damping: f64,
+    growth: f64,
+    gain: f64,
+    evaluations: usize,
+    iterations: usize,
+}
+
+impl Descent {
+    /// Evaluates the start.
+    ///
+    /// # Errors
+    /// [`LeastSquaresError`] for sizes, bounds, settings or a start that cannot be used.
+    pub fn begin<P: LeastSquares + ?Sized>(
+        problem: &mut P,
+        start: &[f64],
+        bounds: &[Interval],
+        settings: &Settings,
+        workspace: &mut Workspace,
+    ) -> Result<Self, LeastSquaresError> {
+        let (rows, columns) = (problem.residuals(), problem.parameters());
+        settings.validate()?;
+        let free = check_start(rows, columns, start, bounds)?;
+        workspace.reserve(rows, columns);
+        let residuals = &mut workspace.residuals[..rows];
+        let jacobian = &mut workspace.jacobian[..rows * columns];
+        problem.evaluate(start, residuals, Some(jacobian));
+        check_values(residuals, jacobian)?;
+        let mut parameters = [0.0; MAX_PARAMETERS];
+        parameters[..columns].copy_from_slice(start);
+        let linear = Linearisation::new(jacobian, residuals, rows, columns);
+        let mut descent = Self {
+            rows,
+            columns,
+            parameters,
+            chi2: dense::sum_of_squares(residuals),
+            degrees_of_freedom: rows.saturating_sub(free).max(1) as f64,
+            linear,
+            scale: [0.0; MAX_PARAMETERS],
+            damping: settings.initial_damping.max(UNDAMPED),
+            growth: 2.0,
+            gain: f64::NAN,
+            evaluations: 1,
+            iterations: 0,
+        };
+        descent.update_scale();
+        Ok(descent)
+    }
+
+    /// The best parameters so far.
+    #[must_use]
+    pub fn parameters(&self) -> &[f64] {
+        &self.parameters[..self.columns]
+    }
+
+    /// sum r_i^2 there.
+    #[must_use]
+    pub const fn chi2(&self) -> f64 {
+        self.chi2
+    }
+
+    /// Damping of the next step, relative to the squared column norms.
+    #[must_use]
+    pub const fn damping(&self) -> f64 {
+        self.damping
+    }
+
+    /// Actual over predicted decrease of chi2 in the last step tried; `NaN` before the first and where
+    /// the model was not finite.
+    #[must_use]
+    pub const fn gain(&self) -> f64 {
+        self.gain
+    }
+
+    /// Calls of the model so far.
+    #[must_use]
+    pub const fn evaluations(&self) -> usize {
+        self.evaluations
+    }
+
+    /// Tries one step: one call of the model, or none when the search ends. Returns why it ended,
+    /// `None` while it goes on. `problem`, `bounds`, `settings` and `workspace` are those of `begin`.
+    pub fn step<P: LeastSquares + ?Sized>(
+        &mut self,
+        problem: &mut P,
+        bounds: &[Interval],
+        settings: &Settings,
+        workspace: &mut Workspace,
+    ) -> Option<Termination> {
+        if self.gradient_vanishes(bounds, settings) {
+            return Some(Termination::Gradient);
+        }
+        let step = self.solve(self.damping, bounds, workspace);
+        let stuck = self.damping > LARGEST_DAMPING || self.is_lost(&step, bounds);
+        if stuck || self.small_enough(&step, settings).is_some() {
+            // A damped step may be small only because it is damped.
+            let full = self.solve(UNDAMPED, bounds, workspace);
+            let reason = self.small_enough(&full, settings);
+            if reason.is_some() {
+                return reason;
+            }
+            if stuck && full.decrease <= ROUNDING * self.chi2 {
+                return Some(Termination::Rounding);
+            }
+            if stuck {
+                return Some(Termination::Stalled);
+            }
+        }
+        if self.evaluations >= settings.max_evaluations {
+            return Some(Termination::Evaluations);
+        }
+        self.iterations += 1;
+        self.evaluations += 1;
+        if self.try_step(problem, &step, bounds, workspace) {
+            self.update_scale();
+            let relief = 1.0 - (2.0 * self.gain - 1.0).powi(3);
+            self.damping = (self.damping * relief.max(STRONGEST_RELIEF)).max(UNDAMPED);
+            self.growth = 2.0;
+        } else {
+            self.damping *= self.growth;
+            self.growth *= 2.0;
+        }
+        None
+    }
+
+    /// The result, with the curvature at the best parameters.
+    #[must_use]
+    pub fn finish(
+        &self,
+        termination: Termination,
+        bounds: &[Interval],
+        workspace: &mut Workspace,
+    ) -> Minimum {
+        let at_bound: Vec<Option<Side>> = (self.parameters().iter().zip(bounds))
+            .map(|(&value, interval)| interval.side(value))
+            .collect();
+        let free: Vec<usize> = (0..self.columns)
+            .filter(|&j| at_bound[j].is_none())
+            .collect();
+        let triangle = self.linear.free_triangle(&free, workspace, self.rows);
+        Minimum {
+            parameters: self.parameters().to_vec(),
+            chi2: self.chi2,
+            evaluations: self.evaluations,
+            iterations: self.iterations,
+            termination,
+            at_bound,
+            residuals: self.rows,
+            curvature: Curvature { free, triangle },
+        }
+    }
+
+    /// Evaluates the trial and keeps it where chi2 falls as it should.
+    fn try_step<P: LeastSquares + ?Sized>(
+        &mut self,
+        problem: &mut P,
+        step: &Step,
+        bounds: &[Interval],
+        workspace: &mut Workspace,
+    ) -> bool {
+        let trial = self.moved(step, bounds);
+        let residuals = &mut workspace.trial_residuals[..self.rows];
+        let jacobian = &mut workspace.trial_jacobian[..self.rows * self.columns];
+        problem.evaluate(&trial[..self.columns], residuals, Some(jacobian));
+        let chi2 = dense::sum_of_squares(residuals);
+        self.gain = if chi2.is_finite() {
+            (self.chi2 - chi2) / step.decrease
+        } else {
+            f64::NAN
+        };
+        if self.gain.is_nan() || self.gain < LEAST_GAIN || step.decrease <= 0.0 {
+            return false;
+        }
+        let linear = Linearisation::new(jacobian, residuals, self.rows, self.columns);
+        if !linear.is_finite() {
+            return false;
+        }
+        self.linear = linear;
+        self.parameters = trial;
+        self.chi2 = chi2;
+        workspace.keep_trial();
+        true
+    }
+
+    fn moved(&self, step: &Step, bounds: &[Interval]) -> Vector {
+        let mut moved = self.parameters;
+        for (j, interval) in bounds.iter().enumerate() {
+            moved[j] = match step.held[j] {
+                Held::At(side) => side,
+                Held::Free => interval.nearest(moved[j] + step.shift[j]),
+            };
+        }
+        moved
+    }
+
+    /// Whether the step is too short to change any parameter.
+    fn is_lost(&self, step: &Step, bounds: &[Interval]) -> bool {
+        self.moved(step, bounds) == self.parameters
+    }
+
+    fn update_scale(&mut self) {
+        for j in 0..self.columns {
+            let largest = self.scale[j].max(self.linear.gram[j][j].sqrt());
+            self.scale[j] = if largest > 0.0 { largest } else { 1.0 };
+        }
+    }
+
+    /// Which criterion the step meets, if any.
+    fn small_enough(&self, step: &Step, settings: &Settings) -> Option<Termination> {
+        if step.decrease <= settings.chi2_tolerance * self.chi2 / self.degrees_of_freedom {
+            return Some(Termination::Chi2);
+        }
+        let scaled_square = |vector: &Vector| -> f64 {
+            (0..self.columns)
+                .map(|j| (self.scale[j] * vector[j]).powi(2))
+                .sum()
+        };
+        let tolerance = settings.step_tolerance * settings.step_tolerance;
+        (scaled_square(&step.shift) <= tolerance * scaled_square(&self.parameters))
+            .then_some(Termination::Step)
+    }
+
+    fn gradient_vanishes(&self, bounds: &[Interval], settings: &Settings) -> bool {
+        let limit = settings.gradient_tolerance * self.chi2.sqrt();
+        (0..self.columns)
+            .filter(|&j| !self.is_pressed(j, bounds))
+            .all(|j| self.linear.gradient[j].abs() <= limit * self.linear.gram[j][j].sqrt())
+    }
+
+    /// Whether the parameter is fixed, or on a bound with chi2 falling beyond it.
+    fn is_pressed(&self, parameter: usize, bounds: &[Interval]) -> bool {
+        let slope = self.linear.gradient[parameter];
+        match bounds[parameter].side(self.parameters[parameter]) {
+            Some(Side::Fixed) => true,
+            Some(Side::Lower) => slope >= 0.0,
+            Some(Side::Upper) => slope <= 0.0,
+            None => false,
+        }
+    }
+
+    /// The damped Gauss-Newton step inside the box.
+    fn solve(&mut self, damping: f64, bounds: &[Interval], workspace: &mut Workspace) -> Step {
+        let mut step = Step {
+            shift: [0.0; MAX_PARAMETERS],
+            held: [Held::Free; MAX_PARAMETERS],
+            decrease: 0.0,
+        };
+        for j in 0..self.columns {
+            if self.is_pressed(j, bounds) {
+                step.held[j] = Held::At(self.parameters[j]);
+            }
+        }
+        loop {
+            self.linear
+                .solve(damping, &self.scale, &mut step, workspace, self.rows);
+            let mut inside = true;
+            for (j, interval) in bounds.iter().enumerate() {
+                let target = self.parameters[j] + step.shift[j];
+                if matches!(step.held[j], Held::Free) && !interval.contains(target) {
+                    let side = interval.nearest(target);
+                    step.held[j] = Held::At(side);
+                    step.shift[j] = side - self.parameters[j];
+                    inside = false;
+                }
+            }
+            if inside {
+                step.decrease = self.linear.decrease(&step.shift);
+                return step;
+            }
+        }
+    }
+}
+
+/// A step and what the linearised residuals promise of it.
+struct Step {
+    shift: Vector,
+    held: [Held; MAX_PARAMETERS],
+    /// Predicted decrease of chi2.
+    decrease: f64,
+}
+
+/// Whether a parameter of a step is solved for.
+#[derive(Clone, Copy)]
+enum Held {
+    Free,
+    /// Set to this value, a bound.
+    At(f64),
+}
+
+/// The residuals near a point: r + J d.
+#[derive(Clone, Debug)]
+struct Linearisation {
+    columns: usize,
+    /// J^T J.
+    gram: Matrix,
+    /// J^T r.
+    gradient: Vector,
+    /// Formed when the normal equations lose too many digits.
+    triangle: Option<Triangle>,
+}
+
+/// J = Q R.
+#[derive(Clone, Debug)]
+struct Triangle {
+    /// R, `upper[row][column]`.
+    upper: Matrix,
+    /// The leading part of Q^T r.
+    right: Vector,
+}
+
+impl Linearisation {
+    fn new(jacobian: &[f64], residuals: &[f64], rows: usize, columns: usize) -> Self {
+        let (gram, gradient) = dense::normal_equations(jacobian, residuals, rows, columns);
+        Self {
+            columns,
+            gram,
+            gradient,
+            triangle: None,
+        }
+    }
+
+    fn is_finite(&self) -> bool {
+        (0..self.columns).all(|j| self.gram[j][j].is_finite() && self.gradient[j].is_finite())
+    }
+
+    /// 2 g.d + d.J^T J d with its sign turned.
+    fn decrease(&self, shift: &Vector) -> f64 {
+        let n = self.columns;
+        match &self.triangle {
+            Some(triangle) => -(0..n)
+                .map(|row| {
+                    let change = dense::dot(&triangle.upper[row][row..n], &shift[row..n]);
+                    change * (2.0 * triangle.right[row] + change)
+                })
+                .sum::<f64>(),
+            None => -(0..n)
+                .map(|row| {
+                    let change = dense::dot(&self.gram[row][..n], &shift[..n]);
+                    shift[row] * (2.0 * self.gradient[row] + change)
+                })
+                .sum::<f64>(),
+        }
+    }
+
+    /// Solves for the free shifts of `step`, the held ones given.
+    fn solve(
+        &mut self,
+        damping: f64,
+        scale: &Vector,
+        step: &mut Step,
+        workspace: &mut Workspace,
+        rows: usize,
+    ) {
+        let mut free = [0; MAX_PARAMETERS];
+        let mut count = 0;
+        for j in 0..self.columns {
+            if matches!(step.held[j], Held::Free) {
+                free[count] = j;
+                count += 1;
+                step.shift[j] = 0.0;
+            }
+        }
+        let free = &free[..count];
+        if self.triangle.is_none() && self.solve_normal(damping, scale, free, &mut step.shift) {
+            return;
+        }
+        if self.triangle.is_none() {
+            self.triangle = Some(Triangle::new(workspace, rows, self.columns));
+        }
+        if let Some(triangle) = &self.triangle {
+            triangle.solve(self.columns, damping, scale, free, &mut step.shift);
+        }
+    }
+
+    /// By Cholesky; `false`, with the shifts untouched, where that loses too many digits.
+    fn solve_normal(
+        &self,
+        damping: f64,
+        scale: &Vector,
+        free: &[usize],
+        shift: &mut Vector,
+    ) -> bool {
+        let mut matrix = [[0.0; MAX_PARAMETERS]; MAX_PARAMETERS];
+        let mut x = [0.0; MAX_PARAMETERS];
+        for (row, &i) in free.iter().enumerate() {
+            for (column, &j) in free[..=row].iter().enumerate() {
+                matrix[row][column] = self.gram[i][j] / (scale[i] * scale[j]);
+            }
+            matrix[row][row] += damping;
+            let moved = dense::dot(&self.gram[i][..self.columns], &shift[..self.columns]);
+            x[row] = -(self.gradient[i] + moved) / scale[i];
+        }
+        if dense::cholesky(&mut matrix, free.len()) < SMALLEST_PIVOT {
+            return false;
+        }
+        dense::cholesky_solve(&matrix, free.len(), &mut x);
+        for (row, &i) in free.iter().enumerate() {
+            shift[i] = x[row] / scale[i];
+        }
+        true
+    }
+
+    /// R of the `free` columns alone, column by column.
+    fn free_triangle(&self, free: &[usize], workspace: &mut Workspace, rows: usize) -> Vec<f64> {
+        let size = free.len();
+        let mut triangle = vec![0.0; size * size];
+        let mut matrix = [[0.0; MAX_PARAMETERS]; MAX_PARAMETERS];
+        for (row, &i) in free.iter().enumerate() {
+            for (column, &j) in free.iter().enumerate() {
+                matrix[row][column] = self.gram[i][j];
+            }
+        }
+        if dense::cholesky(&mut matrix, size) >= SMALLEST_PIVOT {
+            for column in 0..size {
+                for row in 0..=column {
+                    triangle[column * size + row] = matrix[column][row];
+                }
+            }
+            return triangle;
+        }
+        let full = match &self.triangle {
+            Some(full) => full.clone(),
+            None => Triangle::new(workspace, rows, self.columns),
+        };
+        let n = self.columns;
+        let mut reduced = [0.0; MAX_PARAMETERS * MAX_PARAMETERS];
+        for (column, &j) in free.iter().enumerate() {
+            for row in 0..=j {
+                reduced[column * n + row] = full.upper[row][j];
+            }
+        }
+        dense::triangularise(&mut reduced, n, size, &mut [0.0; MAX_PARAMETERS]);
+        for column in 0..size {
+            for row in 0..=column {
+                triangle[column * size + row] = reduced[column * n + row];
+            }
+        }
+        triangle
+    }
+}
+
+impl Triangle {
+    /// Of the current Jacobian and residuals; works in the trial buffers.
+    fn new(workspace: &mut Workspace, rows: usize, columns: usize) -> Self {
+        let matrix = &mut workspace.trial_jacobian[..rows * columns];
+        let rotated = &mut workspace.trial_residuals[..rows];
+        matrix.copy_from_slice(&workspace.jacobian[..rows * columns]);
+        rotated.copy_from_slice(&workspace.residuals[..rows]);
+        dense::triangularise(matrix, rows, columns, rotated);
+        let mut upper = [[0.0; MAX_PARAMETERS]; MAX_PARAMETERS];
+        let mut right = [0.0; MAX_PARAMETERS];
+        for row in 0..columns.min(rows) {
+            right[row] = rotated[row];
+            for column in row..columns {
+                upper[row][column] = matrix[column * rows + row];
+            }
+        }
+        Self { upper, right }
+    }
+
+    /// Least squares of R d + Q^T r stacked on sqrt(damping) D d.
+    fn solve(
+        &self,
+        columns: usize,
+        damping: f64,
+        scale: &Vector,
+        free: &[usize],
+        shift: &mut Vector,
+    ) {
+        let size = free.len();
+        let rows = columns + size;
+        let mut matrix = [0.0; 2 * MAX_PARAMETERS * MAX_PARAMETERS];
+        let mut right = [0.0; 2 * MAX_PARAMETERS];
+        for row in 0..columns {
+            let moved = dense::dot(&self.upper[row][row..columns], &shift[row..columns]);
+            right[row] = -(self.right[row] + moved);
+        }
+        for (column, &j) in free.iter().enumerate() {
+            for row in 0..=j {
+                matrix[column * rows + row] = self.upper[row][j] / scale[j];
+            }
+            matrix[column * rows + columns + column] = damping.sqrt();
+        }
+        dense::triangularise(&mut matrix, rows, size, &mut right);
+        for k in (0..size).rev() {
+            let sum: f64 = (k + 1..size).map(|i| matrix[i * rows + k] * right[i]).sum();
+            right[k] = (right[k] - sum) / matrix[k * rows + k];
+            shift[free[k]] = right[k] / scale[free[k]];
+        }
+    }
+}
+
+/// Checks sizes, bounds and start; returns the number of parameters to fit.
+fn check_start(
+    rows: usize,
+    columns: usize,
+    start: &[f64],
+    bounds: &[Interval],
+) -> Result<usize, LeastSquaresError> {
+    if columns == 0 || columns > MAX_PARAMETERS {
+        return Err(LeastSquaresError::ParameterCount { found: columns });
+    }
+    for (name, found) in [("start", start.len()), ("bounds", bounds.len())] {
+        if found != columns {
+            return Err(LeastSquaresError::Length {
+                name,
+                found,
+                expected: columns,
+            });
+        }
+    }
+    for (parameter, (&found, &Interval { lower, upper })) in start.iter().zip(bounds).enumerate() {
+        if lower.is_nan() || upper.is_nan() || lower > upper {
+            return Err(LeastSquaresError::Bounds {
+                parameter,
+                lower,
+                upper,
+            });
+        }
+        if !(found.is_finite() && lower <= found && found <= upper) {
+            return Err(LeastSquaresError::Start {
+                parameter,
+                found,
+                lower,
+                upper,
+            });
+        }
+    }
+    let free = bounds
+        .iter()
+        .filter(|interval| !interval.is_fixed())
+        .count();
+    if rows < free || rows == 0 {
+        return Err(LeastSquaresError::TooFewResiduals {
+            residuals: rows,
+            parameters: free,
+        });
+    }
+    Ok(free)
+}
+
+/// Checks that the values at the start can be squared.
+fn check_values(residuals: &[f64], jacobian: &[f64]) -> Result<(), LeastSquaresError> {
+    let rows = residuals.len();
+    let unusable = |value: &f64| !(value * value * rows as f64).is_finite();
+    if let Some(residual) = residuals.iter().position(unusable) {
+        return Err(LeastSquaresError::StartResidual {
+            residual,
+            found: residuals[residual],
+        });
+    }
+    if let Some(index) = jacobian.iter().position(unusable) {
+        return Err(LeastSquaresError::StartJacobian {
+            residual: index % rows,
+            parameter: index / rows,
+            found: jacobian[index],
+        });
+    }
+    Ok(())
+}
