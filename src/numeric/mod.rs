@@ -4,6 +4,7 @@
 pub mod autoregression;
 pub mod dispatch;
 pub mod least_squares;
+pub mod polynomial;
 pub mod robust;
 
 pub use autoregression::Autoregression;
