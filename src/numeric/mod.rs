@@ -5,6 +5,7 @@ pub mod autoregression;
 pub mod dispatch;
 pub mod exponential;
 pub mod least_squares;
+pub mod polynomial;
 pub mod robust;
 
 pub use autoregression::Autoregression;
