@@ -1,0 +1,153 @@
+//! One line's channels in units of its noise, made white: what chi2 is a sum over.
+
+use crate::model::{LineShape, Model, Sampling};
+use crate::numeric::autoregression::Whitener;
+use crate::prepare::Prepared;
+use crate::spectrum::Window;
+use std::ops::Range;
+
+/// How a model's value in a channel is formed.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
+pub enum Averaging {
+    /// The mean over the channel, with as many quadrature points as keep the error below 1 % of
+    /// the noise.
+    #[default]
+    Channel,
+    /// The value at the channel's centre.
+    Centre,
+}
+
+/// Largest error of the mean over a channel, in units of the channel's noise.
+const AVERAGING_TOLERANCE: f64 = 0.01;
+
+/// Usable channels of one line inside the fitted range, whitened.
+#[derive(Clone, Debug)]
+pub struct Channels {
+    line: LineShape,
+    sampling: Sampling,
+    whitened_data: Vec<f64>,
+    segments: Vec<Range<usize>>,
+    whitener: Option<Whitener>,
+    inverse_noise: f64,
+}
+
+impl Channels {
+    /// Takes the usable channels inside `range` (all where it is `None`).
+    ///
+    /// `narrowest_km_s` is the dispersion of the sharpest feature that a model will show, for the
+    /// number of quadrature points.
+    #[must_use]
+    pub fn new(
+        prepared: &Prepared,
+        line: LineShape,
+        range: Option<Window>,
+        averaging: Averaging,
+        narrowest_km_s: f64,
+    ) -> Self {
+        let spectrum = &prepared.spectrum;
+        let mut velocity = Vec::new();
+        let mut width = Vec::new();
+        let mut data = Vec::new();
+        let mut segments: Vec<Range<usize>> = Vec::new();
+        let mut previous = None;
+        let inverse_noise = 1.0 / prepared.noise.rms_k;
+        let mut brightest = 0.0f64;
+        for channel in 0..spectrum.len() {
+            let v = spectrum.velocity_km_s()[channel];
+            if !spectrum.is_usable(channel) || range.is_some_and(|range| !range.contains(v)) {
+                continue;
+            }
+            let index = data.len();
+            match segments.last_mut() {
+                Some(segment) if previous == channel.checked_sub(1) => segment.end = index + 1,
+                _ => segments.push(index..index + 1),
+            }
+            previous = Some(channel);
+            velocity.push(v);
+            width.push(spectrum.width_km_s()[channel]);
+            data.push(spectrum.temperature_k()[channel] * inverse_noise);
+            brightest = brightest.max(data[index].abs());
+        }
+        let points = match averaging {
+            Averaging::Centre => 1,
+            Averaging::Channel => {
+                let widest = width.iter().copied().fold(0.0, f64::max);
+                Sampling::points_needed(widest, narrowest_km_s, brightest, AVERAGING_TOLERANCE)
+            }
+        };
+        let process = &prepared.noise.process;
+        let whitener = (!process.is_white()).then(|| process.whitener());
+        if let Some(whitener) = &whitener {
+            whitener.whiten(&segments, &mut data);
+        }
+        Self {
+            line,
+            sampling: Sampling::new(velocity, width, points),
+            whitened_data: data,
+            segments,
+            whitener,
+            inverse_noise,
+        }
+    }
+
+    /// Number of channels.
+    #[must_use]
+    pub fn len(&self) -> usize {
+        self.whitened_data.len()
+    }
+
+    /// Whether there is none.
+    #[must_use]
+    pub fn is_empty(&self) -> bool {
+        self.whitened_data.is_empty()
+    }
+
+    /// Where models are evaluated.
+    #[must_use]
+    pub fn sampling(&self) -> &Sampling {
+        &self.sampling
+    }
+
+    /// The line.
+    #[must_use]
+    pub fn line(&self) -> &LineShape {
+        &self.line
+    }
+
+    /// The data in units of the noise, white.
+    #[must_use]
+    pub fn whitened_data(&self) -> &[f64] {
+        &self.whitened_data
+    }
+
+    /// Turns a column of temperatures (K, one a channel) into units of the noise and makes it white
+    /// as the data are.
+    pub fn whiten(&self, column: &mut [f64]) {
+        for value in column.iter_mut() {
+            *value *= self.inverse_noise;
+        }
+        if let Some(whitener) = &self.whitener {
+            whitener.whiten(&self.segments, column);
+        }
+    }
+
+    /// Residuals and, where wanted, their Jacobian of a model: buffers as in [`Model::evaluate`].
+    pub fn residuals(
+        &self,
+        model: Model,
+        parameters: &[f64],
+        residuals: &mut [f64],
+        mut jacobian: Option<&mut [f64]>,
+    ) {
+        model.evaluate(&self.line, &self.sampling, parameters, residuals, jacobian.as_deref_mut());
+        self.whiten(residuals);
+        for (residual, datum) in residuals.iter_mut().zip(&self.whitened_data) {
+            *residual -= datum;
+        }
+        if let Some(jacobian) = jacobian {
+            for column in jacobian.chunks_exact_mut(self.len()) {
+                self.whiten(column);
+            }
+        }
+    }
+}

@@ -1,0 +1,312 @@
+//! Several lines fitted together: which of a line's parameters are shared, linked, held or bounded,
+//! and the residuals of them all as one least-squares problem.
+
+use super::channels::Channels;
+use super::{FitError, FitSettings};
+use crate::model::{Model, Parameter};
+use crate::numeric::Estimate;
+use crate::numeric::least_squares::{Interval, LeastSquares, MAX_PARAMETERS};
+
+/// A parameter of a joint fit.
+#[derive(Clone, Debug, PartialEq)]
+pub struct JointParameter {
+    /// Name with unit, as in the tables.
+    pub name: &'static str,
+    /// Unit; empty for a pure number.
+    pub unit: &'static str,
+    /// Where it may lie; one point where it is held.
+    pub interval: Interval,
+    /// A Gaussian prior given by the user.
+    pub prior: Option<Estimate>,
+}
+
+/// How the thin line's parameters relate to the thick line's.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Layout {
+    parameters: Vec<JointParameter>,
+    thick: (Model, Vec<usize>),
+    thin: (Model, Vec<usize>),
+    /// Positions of tau and of the isotope ratio where the optical depths are linked.
+    link: Option<(usize, usize)>,
+}
+
+/// Thin-line names of parameters that the thick line has too.
+fn thin_name(name: &str) -> &'static str {
+    match name {
+        "v_lsr_km_s" => "v_thin_km_s",
+        "sigma_km_s" => "sigma_thin_km_s",
+        "peak_k" => "peak_thin_k",
+        "v_second_km_s" => "v_second_thin_km_s",
+        "sigma_second_km_s" => "sigma_second_thin_km_s",
+        "peak_second_k" => "peak_second_thin_k",
+        "tau_total" => "tau_thin",
+        _ => "t_ex_thin_k",
+    }
+}
+
+const ISOTOPE_RATIO: Parameter =
+    Parameter { name: "isotope_ratio", unit: "", low: 1.0, high: 10_000.0 };
+
+impl Layout {
+    /// A thick line of `thick_model` and a thin line of `thin_model`, which share the velocity and the
+    /// dispersion unless the settings free them.
+    ///
+    /// `reach` bounds the velocities: the range that is fitted.
+    ///
+    /// # Errors
+    ///
+    /// [`FitError`] where a held value or a bound names no parameter of any model, where bounds are
+    /// empty, or where linked optical depths have no optical depth to link.
+    pub fn new(
+        thick_model: Model,
+        thin_model: Model,
+        settings: &FitSettings,
+        reach: Interval,
+    ) -> Result<Self, FitError> {
+        let mut layout = Self {
+            parameters: Vec::new(),
+            thick: (thick_model, Vec::new()),
+            thin: (thin_model, Vec::new()),
+            link: None,
+        };
+        for parameter in thick_model.parameters() {
+            let index = layout.push(*parameter, parameter.name, settings, reach)?;
+            layout.thick.1.push(index);
+        }
+        if let Some(ratio) = settings.isotope_ratio {
+            let Some(tau) = layout.position("tau").filter(|_| thin_model == Model::Layer) else {
+                return Err(FitError::NothingToLink { model: thick_model.name() });
+            };
+            let index = layout.push(ISOTOPE_RATIO, ISOTOPE_RATIO.name, settings, reach)?;
+            let parameter = &mut layout.parameters[index];
+            if ratio.err > 0.0 {
+                parameter.prior = Some(ratio);
+            } else {
+                parameter.interval = Interval::fixed(ratio.value);
+            }
+            layout.link = Some((tau, index));
+        }
+        for parameter in thin_model.parameters() {
+            let shared = match parameter.name {
+                "v_lsr_km_s" | "v_second_km_s" => !settings.free_thin_velocity,
+                "sigma_km_s" | "sigma_second_km_s" => !settings.free_thin_sigma,
+                _ => false,
+            };
+            let index = match (shared, layout.position(parameter.name), layout.link) {
+                (true, Some(index), _) => index,
+                (_, _, Some((tau, _))) if parameter.name == "tau_total" => tau,
+                _ => layout.push(*parameter, thin_name(parameter.name), settings, reach)?,
+            };
+            layout.thin.1.push(index);
+        }
+        Ok(layout)
+    }
+
+    /// The thin line alone.
+    ///
+    /// # Errors
+    ///
+    /// As for [`Layout::new`].
+    pub fn thin_alone(thin_model: Model, settings: &FitSettings, reach: Interval) -> Result<Self, FitError> {
+        let mut layout = Self {
+            parameters: Vec::new(),
+            thick: (thin_model, Vec::new()),
+            thin: (thin_model, Vec::new()),
+            link: None,
+        };
+        for parameter in thin_model.parameters() {
+            let index = layout.push(*parameter, parameter.name, settings, reach)?;
+            layout.thin.1.push(index);
+        }
+        Ok(layout)
+    }
+
+    fn push(
+        &mut self,
+        parameter: Parameter,
+        name: &'static str,
+        settings: &FitSettings,
+        reach: Interval,
+    ) -> Result<usize, FitError> {
+        let (mut low, mut high) = (parameter.low, parameter.high);
+        if name.starts_with("v_") && name != "v_in_km_s" {
+            (low, high) = (reach.lower, reach.upper);
+        }
+        if let Some((lower, upper)) = settings.bounds.get(name) {
+            if !(lower < upper) {
+                return Err(FitError::EmptyBounds { name: name.to_owned(), lower: *lower, upper: *upper });
+            }
+            (low, high) = (*lower, *upper);
+        }
+        let mut joint = JointParameter {
+            name,
+            unit: parameter.unit,
+            interval: Interval::new(low, high),
+            prior: None,
+        };
+        if let Some(given) = settings.given.get(name) {
+            if !(given.value >= low && given.value <= high) {
+                return Err(FitError::GivenOutside { name: name.to_owned(), value: given.value, lower: low, upper: high });
+            }
+            if given.err > 0.0 {
+                joint.prior = Some(*given);
+            } else {
+                joint.interval = Interval::fixed(given.value);
+            }
+        }
+        self.parameters.push(joint);
+        Ok(self.parameters.len() - 1)
+    }
+
+    /// The parameters, in the order of every joint parameter slice.
+    #[must_use]
+    pub fn parameters(&self) -> &[JointParameter] {
+        &self.parameters
+    }
+
+    /// Position of a parameter by name.
+    #[must_use]
+    pub fn position(&self, name: &str) -> Option<usize> {
+        self.parameters.iter().position(|parameter| parameter.name == name)
+    }
+
+    /// The model and local parameters of the thick line.
+    #[must_use]
+    pub fn thick(&self, joint: &[f64]) -> (Model, Vec<f64>) {
+        (self.thick.0, self.thick.1.iter().map(|index| joint[*index]).collect())
+    }
+
+    /// The model and local parameters of the thin line.
+    #[must_use]
+    pub fn thin(&self, joint: &[f64]) -> (Model, Vec<f64>) {
+        let mut local = vec![0.0; self.thin.1.len()];
+        self.thin_local(joint, &mut local);
+        (self.thin.0, local)
+    }
+
+    fn thin_local(&self, joint: &[f64], local: &mut [f64]) {
+        for (value, index) in local.iter_mut().zip(&self.thin.1) {
+            *value = joint[*index];
+        }
+        if let Some((tau, ratio)) = self.link {
+            // both halves of the thick line together have twice tau
+            local[2] = 2.0 * joint[tau] / joint[ratio];
+        }
+    }
+}
+
+/// The joint residuals of a pair, or of the thin line alone.
+#[derive(Debug)]
+pub struct JointProblem<'a> {
+    layout: &'a Layout,
+    thick: Option<&'a Channels>,
+    thin: &'a Channels,
+    priors: Vec<(usize, Estimate)>,
+    scratch: Vec<f64>,
+}
+
+impl<'a> JointProblem<'a> {
+    /// The residuals of a pair under a layout; of the thin line alone where `thick` is `None`.
+    #[must_use]
+    pub fn new(layout: &'a Layout, thick: Option<&'a Channels>, thin: &'a Channels) -> Self {
+        let priors = layout
+            .parameters
+            .iter()
+            .enumerate()
+            .filter_map(|(index, parameter)| Some((index, parameter.prior?)))
+            .collect();
+        let most = thin.len().max(thick.map_or(0, Channels::len));
+        Self { layout, thick, thin, priors, scratch: vec![0.0; most * Model::MOST_PARAMETERS] }
+    }
+}
+
+/// Adds a local Jacobian to the rows from `first` on of the joint one; a local parameter's column goes
+/// to its joint parameter, times a factor.
+fn scatter(
+    local: &[f64],
+    channels: usize,
+    targets: impl Iterator<Item = (usize, usize, f64)>,
+    joint: &mut [f64],
+    rows: usize,
+    first: usize,
+) {
+    for (column, target, factor) in targets {
+        let from = &local[column * channels..(column + 1) * channels];
+        let to = &mut joint[target * rows + first..target * rows + first + channels];
+        for (to, from) in to.iter_mut().zip(from) {
+            *to += factor * from;
+        }
+    }
+}
+
+impl LeastSquares for JointProblem<'_> {
+    fn parameters(&self) -> usize {
+        self.layout.parameters.len()
+    }
+
+    fn residuals(&self) -> usize {
+        self.thin.len() + self.thick.map_or(0, Channels::len) + self.priors.len()
+    }
+
+    fn evaluate(&mut self, parameters: &[f64], residuals: &mut [f64], mut jacobian: Option<&mut [f64]>) {
+        let layout = self.layout;
+        let rows = residuals.len();
+        if let Some(jacobian) = jacobian.as_deref_mut() {
+            jacobian.fill(0.0);
+        }
+        let mut local = [0.0; MAX_PARAMETERS];
+        let mut first = 0;
+        if let Some(thick) = self.thick {
+            let (model, map) = (layout.thick.0, &layout.thick.1);
+            for (value, index) in local.iter_mut().zip(map) {
+                *value = parameters[*index];
+            }
+            let scratch = &mut self.scratch[..map.len() * thick.len()];
+            let wanted = jacobian.is_some();
+            thick.residuals(
+                model,
+                &local[..map.len()],
+                &mut residuals[..thick.len()],
+                wanted.then_some(&mut *scratch),
+            );
+            if let Some(jacobian) = jacobian.as_deref_mut() {
+                let targets = map.iter().enumerate().map(|(column, target)| (column, *target, 1.0));
+                scatter(scratch, thick.len(), targets, jacobian, rows, 0);
+            }
+            first = thick.len();
+        }
+        let (model, map) = (layout.thin.0, &layout.thin.1);
+        layout.thin_local(parameters, &mut local[..map.len()]);
+        let channels = self.thin.len();
+        let scratch = &mut self.scratch[..map.len() * channels];
+        let wanted = jacobian.is_some();
+        self.thin.residuals(
+            model,
+            &local[..map.len()],
+            &mut residuals[first..first + channels],
+            wanted.then_some(&mut *scratch),
+        );
+        if let Some(jacobian) = jacobian.as_deref_mut() {
+            let linked = layout.link.map(|(tau, ratio)| (2.0 / parameters[ratio], parameters[tau], ratio));
+            let targets = map.iter().enumerate().map(|(column, target)| {
+                let factor = match linked {
+                    Some((by_tau, _, _)) if column == 2 => by_tau,
+                    _ => 1.0,
+                };
+                (column, *target, factor)
+            });
+            scatter(scratch, channels, targets, jacobian, rows, first);
+            if let Some((by_tau, tau, ratio)) = linked {
+                let by_ratio = -by_tau * tau / parameters[ratio];
+                scatter(scratch, channels, std::iter::once((2, ratio, by_ratio)), jacobian, rows, first);
+            }
+        }
+        for (offset, (index, prior)) in self.priors.iter().enumerate() {
+            let row = first + channels + offset;
+            residuals[row] = (parameters[*index] - prior.value) / prior.err;
+            if let Some(jacobian) = jacobian.as_deref_mut() {
+                jacobian[*index * rows + row] = 1.0 / prior.err;
+            }
+        }
+    }
+}

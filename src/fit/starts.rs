@@ -1,0 +1,359 @@
+//! Where searches start: cheap candidates over the kinematics and the optical depth, each with the
+//! best amplitudes from a linear solution, ranked by chi2.
+
+use super::channels::Channels;
+use super::joint::Layout;
+use crate::measure::ThinLine;
+use crate::model::{Model, Sampling, basis, temperatures};
+use crate::constants::FWHM_PER_SIGMA;
+
+/// Centre and dispersion that a search may begin with, km/s.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(super) struct Kinematics {
+    pub v_km_s: f64,
+    pub sigma_km_s: f64,
+}
+
+/// Kinematics that the data suggest: those of the thin line where it is detected, else those of the
+/// thick line's intensity in `window`.
+pub(super) fn kinematics(thin_line: Option<&ThinLine>, thick: Kinematics) -> Vec<Kinematics> {
+    match thin_line {
+        Some(thin) => {
+            let v_km_s = thin.v_km_s.value;
+            let sigma = thin.fwhm_km_s.value / FWHM_PER_SIGMA;
+            [1.0, 0.75]
+                .into_iter()
+                .map(|factor| Kinematics { v_km_s, sigma_km_s: factor * sigma })
+                .collect()
+        }
+        None => [-0.4, 0.0, 0.4]
+            .into_iter()
+            .flat_map(|shift| {
+                [0.4, 0.7].into_iter().map(move |factor| Kinematics {
+                    v_km_s: thick.v_km_s + shift * thick.sigma_km_s,
+                    sigma_km_s: factor * thick.sigma_km_s,
+                })
+            })
+            .collect(),
+    }
+}
+
+const INWARD_SPEEDS: [f64; 12] = [-1.8, -1.2, -0.8, -0.5, -0.25, -0.08, 0.08, 0.25, 0.5, 0.8, 1.2, 1.8];
+const OPTICAL_DEPTHS: [f64; 6] = [0.5, 1.5, 4.0, 10.0, 30.0, 80.0];
+
+/// Candidates of each sign of the inward speed that are polished.
+const POLISHED: usize = 3;
+
+/// A start with the chi2 that its candidate reached.
+struct Candidate {
+    chi2: f64,
+    parameters: Vec<f64>,
+}
+
+/// Joint starting parameters for a model, most promising first.
+pub(super) fn starts(
+    layout: &Layout,
+    thick: &Channels,
+    thin: &Channels,
+    kinematics: &[Kinematics],
+) -> Vec<Vec<f64>> {
+    let (model, _) = layout.thick(&vec![1.0; layout.parameters().len()]);
+    let mut candidates = Vec::new();
+    let mut scan = Scan::new(thick, thin);
+    for kinematics in kinematics {
+        let (thin_chi2, thin_peak) = scan.thin(*kinematics);
+        match model {
+            Model::Gaussian | Model::Layer => {
+                for sigma_factor in [0.8, 1.0, 1.5, 2.2] {
+                    let widened = Kinematics { sigma_km_s: sigma_factor * kinematics.sigma_km_s, ..*kinematics };
+                    let (chi2, peak) = scan.gaussian(widened);
+                    let parameters = layout_start(layout, thin, widened, thin_peak, |name| match name {
+                        "peak_k" => Some(peak),
+                        "tau_total" => Some(2.0),
+                        "t_ex_k" => Some(thick.line().radiation.inverse(thick.line().radiation.background() + 1.2 * peak.max(0.1))),
+                        _ => None,
+                    });
+                    candidates.push(Candidate { chi2: chi2 + thin_chi2, parameters });
+                }
+            }
+            Model::TwoGaussians => {
+                for first in [-2.0, -1.3, -0.8, -0.4] {
+                    for second in [0.4, 0.8, 1.3, 2.0] {
+                        for factor in [0.5, 0.9] {
+                            let sigma = factor * kinematics.sigma_km_s;
+                            let (one, two) = (
+                                Kinematics { v_km_s: kinematics.v_km_s + first * kinematics.sigma_km_s, sigma_km_s: sigma },
+                                Kinematics { v_km_s: kinematics.v_km_s + second * kinematics.sigma_km_s, sigma_km_s: sigma },
+                            );
+                            let (chi2, peaks) = scan.two_gaussians(one, two);
+                            let parameters = layout_start(layout, thin, one, 0.5 * thin_peak, |name| match name {
+                                "peak_k" => Some(peaks.0),
+                                "peak_second_k" => Some(peaks.1),
+                                "peak_second_thin_k" => Some(0.5 * thin_peak),
+                                "v_second_km_s" | "v_second_thin_km_s" => Some(two.v_km_s),
+                                "sigma_second_km_s" | "sigma_second_thin_km_s" => Some(sigma),
+                                _ => None,
+                            });
+                            candidates.push(Candidate { chi2, parameters });
+                        }
+                    }
+                }
+            }
+            Model::TwoLayer | Model::TwoLayerContinuum | Model::Hill | Model::HillSurface => {
+                let source = source(layout);
+                for speed in INWARD_SPEEDS {
+                    for tau in OPTICAL_DEPTHS {
+                        let v_in = speed * kinematics.sigma_km_s;
+                        let (chi2, a, b) = scan.slab(model, *kinematics, v_in, tau, source);
+                        let (fifth, sixth) = temperatures(model, thick.line(), a, b, source);
+                        let parameters = layout_start(layout, thin, *kinematics, thin_peak, |name| match name {
+                            "v_in_km_s" => Some(v_in),
+                            "tau" => Some(tau),
+                            "t_front_k" | "t_peak_k" => Some(fifth),
+                            "t_rear_k" | "t_surface_k" => Some(sixth),
+                            "filling" => Some(source.0),
+                            "t_continuum_k" => Some(source.1),
+                            _ => None,
+                        });
+                        candidates.push(Candidate { chi2: chi2 + thin_chi2, parameters });
+                    }
+                }
+            }
+        }
+    }
+    candidates.sort_by(|one, other| one.chi2.total_cmp(&other.chi2));
+    let v_in = layout.position("v_in_km_s");
+    let positive = |candidate: &Candidate| v_in.is_some_and(|index| candidate.parameters[index] > 0.0);
+    let (infall, other): (Vec<Candidate>, Vec<Candidate>) = candidates.into_iter().partition(positive);
+    let mut kept: Vec<Candidate> =
+        infall.into_iter().take(POLISHED).chain(other.into_iter().take(POLISHED)).collect();
+    kept.sort_by(|one, other| one.chi2.total_cmp(&other.chi2));
+    kept.into_iter().map(|candidate| candidate.parameters).collect()
+}
+
+/// Filling and temperature of the continuum source, as held or given; a weak one otherwise.
+fn source(layout: &Layout) -> (f64, f64) {
+    let given = |name: &str, otherwise: f64| {
+        layout.position(name).map_or(otherwise, |index| {
+            let parameter = &layout.parameters()[index];
+            let held = parameter.interval.is_fixed().then_some(parameter.interval.lower);
+            held.or(parameter.prior.map(|prior| prior.value)).unwrap_or(otherwise)
+        })
+    };
+    (given("filling", 0.1), given("t_continuum_k", 50.0))
+}
+
+/// Joint parameters: the model's own from `own`, shared and thin ones from the kinematics and the
+/// thin line's peak, all moved inside their intervals.
+fn layout_start(
+    layout: &Layout,
+    thin: &Channels,
+    kinematics: Kinematics,
+    thin_peak_k: f64,
+    own: impl Fn(&str) -> Option<f64>,
+) -> Vec<f64> {
+    const THIN_TAU: f64 = 0.5;
+    let radiation = &thin.line().radiation;
+    let ratio = layout
+        .position("isotope_ratio")
+        .map(|index| &layout.parameters()[index])
+        .map_or(50.0, |parameter| {
+            parameter.prior.map_or(parameter.interval.nearest(50.0), |prior| prior.value)
+        });
+    let thin_tau = match (layout.position("isotope_ratio"), own("tau")) {
+        (Some(_), Some(tau)) => 2.0 * tau / ratio,
+        _ => THIN_TAU,
+    };
+    let strongest = thin.line().components.iter().map(|component| component.weight).fold(0.0, f64::max);
+    layout
+        .parameters()
+        .iter()
+        .map(|parameter| {
+            let value = own(parameter.name).unwrap_or_else(|| match parameter.name {
+                "v_lsr_km_s" | "v_thin_km_s" => kinematics.v_km_s,
+                "sigma_km_s" | "sigma_thin_km_s" => kinematics.sigma_km_s,
+                "tau_thin" => THIN_TAU,
+                "isotope_ratio" => ratio,
+                "t_ex_thin_k" => {
+                    let absorbed = -(-thin_tau * strongest).exp_m1();
+                    radiation.inverse(radiation.background() + thin_peak_k.max(0.0) / absorbed)
+                }
+                _ => thin_peak_k,
+            });
+            let value = if let Some(prior) = parameter.prior { prior.value } else { value };
+            parameter.interval.nearest(value)
+        })
+        .collect()
+}
+
+/// Scratch columns for the linear solutions.
+struct Scan<'a> {
+    thick: &'a Channels,
+    thin: &'a Channels,
+    first: Vec<f64>,
+    second: Vec<f64>,
+}
+
+fn dot(one: &[f64], other: &[f64]) -> f64 {
+    one.iter().zip(other).map(|(a, b)| a * b).sum()
+}
+
+impl<'a> Scan<'a> {
+    fn new(thick: &'a Channels, thin: &'a Channels) -> Self {
+        let most = thick.len().max(thin.len());
+        Self { thick, thin, first: vec![0.0; most], second: vec![0.0; most] }
+    }
+
+    /// chi2 of the thin line with the best amplitude, and that amplitude.
+    fn thin(&mut self, kinematics: Kinematics) -> (f64, f64) {
+        one_gaussian(self.thin, kinematics, &mut self.first)
+    }
+
+    /// The same of the thick line.
+    fn gaussian(&mut self, kinematics: Kinematics) -> (f64, f64) {
+        one_gaussian(self.thick, kinematics, &mut self.first)
+    }
+
+    /// chi2 of the thick line with two Gaussians of the best amplitudes.
+    fn two_gaussians(&mut self, one: Kinematics, two: Kinematics) -> (f64, (f64, f64)) {
+        let channels = self.thick.len();
+        unit_gaussian(self.thick, one, &mut self.first[..channels]);
+        unit_gaussian(self.thick, two, &mut self.second[..channels]);
+        let solution = Amplitudes::of(self.thick, &self.first[..channels], &self.second[..channels]);
+        let (a, b) = solution.non_negative();
+        (solution.chi2(a, b), (a, b))
+    }
+
+    /// chi2 of the thick line's slab with the best amplitudes that temperatures allow, and those.
+    fn slab(&mut self, model: Model, kinematics: Kinematics, v_in: f64, tau: f64, source: (f64, f64)) -> (f64, f64, f64) {
+        let channels = self.thick.len();
+        let (first, second) = (&mut self.first[..channels], &mut self.second[..channels]);
+        let line = self.thick.line();
+        basis(model, line, self.thick.sampling(), [kinematics.v_km_s, kinematics.sigma_km_s, v_in, tau], first, second);
+        self.thick.whiten(first);
+        self.thick.whiten(second);
+        let solution = Amplitudes::of(self.thick, first, second);
+        let (a, b) = match model {
+            Model::Hill => (solution.first_alone().max(0.0), 0.0),
+            Model::TwoLayerContinuum => {
+                let radiation = &line.radiation;
+                let shadow = source.0 * (radiation.at(source.1) - radiation.background());
+                solution.with_sum_above(-shadow.max(0.0))
+            }
+            _ => solution.with_sum_above(0.0),
+        };
+        (solution.chi2(a, b), a, b)
+    }
+}
+
+fn unit_gaussian(channels: &Channels, kinematics: Kinematics, column: &mut [f64]) {
+    Model::Gaussian.evaluate(
+        channels.line(),
+        channels.sampling(),
+        &[kinematics.v_km_s, kinematics.sigma_km_s, 1.0],
+        column,
+        None,
+    );
+    channels.whiten(column);
+}
+
+fn one_gaussian(channels: &Channels, kinematics: Kinematics, scratch: &mut [f64]) -> (f64, f64) {
+    let column = &mut scratch[..channels.len()];
+    unit_gaussian(channels, kinematics, column);
+    let data = channels.whitened_data();
+    let (square, product) = (dot(column, column), dot(column, data));
+    if square == 0.0 {
+        return (dot(data, data), 0.0);
+    }
+    (dot(data, data) - product * product / square, product / square)
+}
+
+/// Normal equations of data = a first + b second.
+struct Amplitudes {
+    data: f64,
+    first: f64,
+    second: f64,
+    both: f64,
+    by_first: f64,
+    by_second: f64,
+}
+
+impl Amplitudes {
+    fn of(channels: &Channels, first: &[f64], second: &[f64]) -> Self {
+        let data = channels.whitened_data();
+        Self {
+            data: dot(data, data),
+            first: dot(first, first),
+            second: dot(second, second),
+            both: dot(first, second),
+            by_first: dot(first, data),
+            by_second: dot(second, data),
+        }
+    }
+
+    fn chi2(&self, a: f64, b: f64) -> f64 {
+        self.data - 2.0 * (a * self.by_first + b * self.by_second)
+            + a * a * self.first
+            + 2.0 * a * b * self.both
+            + b * b * self.second
+    }
+
+    fn first_alone(&self) -> f64 {
+        if self.first > 0.0 { self.by_first / self.first } else { 0.0 }
+    }
+
+    fn unconstrained(&self) -> Option<(f64, f64)> {
+        let determinant = self.first * self.second - self.both * self.both;
+        (determinant > 1e-12 * self.first * self.second).then(|| {
+            (
+                (self.by_first * self.second - self.by_second * self.both) / determinant,
+                (self.by_second * self.first - self.by_first * self.both) / determinant,
+            )
+        })
+    }
+
+    fn best(&self, candidates: [(f64, f64); 2]) -> (f64, f64) {
+        let [one, other] = candidates;
+        if self.chi2(one.0, one.1) <= self.chi2(other.0, other.1) { one } else { other }
+    }
+
+    /// The best a, b >= 0.
+    fn non_negative(&self) -> (f64, f64) {
+        if let Some((a, b)) = self.unconstrained().filter(|(a, b)| *a >= 0.0 && *b >= 0.0) {
+            return (a, b);
+        }
+        let second_alone = if self.second > 0.0 { self.by_second / self.second } else { 0.0 };
+        self.best([(self.first_alone().max(0.0), 0.0), (0.0, second_alone.max(0.0))])
+    }
+
+    /// The best b >= 0 and a + b >= `least` (`least` <= 0).
+    fn with_sum_above(&self, least: f64) -> (f64, f64) {
+        if let Some((a, b)) = self.unconstrained().filter(|(a, b)| *b >= 0.0 && a + b >= least) {
+            return (a, b);
+        }
+        // on the edge a = least - b
+        let square = self.first - 2.0 * self.both + self.second;
+        let product = self.by_second - self.by_first + least * (self.first - self.both);
+        let b = if square > 0.0 { (product / square).max(0.0) } else { 0.0 };
+        self.best([(self.first_alone().max(least), 0.0), (least - b, b)])
+    }
+}
+
+/// Centroid and dispersion of the intensity above zero inside a window of a line's channels.
+pub(super) fn intensity_moments(sampling: &Sampling, temperature_k: &[f64], low: f64, high: f64) -> Kinematics {
+    let mut sums = [0.0; 3];
+    for ((v, width), t) in sampling.velocity_km_s().iter().zip(sampling.width_km_s()).zip(temperature_k) {
+        if *v >= low && *v <= high && *t > 0.0 {
+            let weight = t * width;
+            sums[0] += weight;
+            sums[1] += weight * v;
+            sums[2] += weight * v * v;
+        }
+    }
+    if sums[0] <= 0.0 {
+        return Kinematics { v_km_s: 0.5 * (low + high), sigma_km_s: 0.15 * (high - low) };
+    }
+    let mean = sums[1] / sums[0];
+    let variance = (sums[2] / sums[0] - mean * mean).max((0.02 * (high - low)).powi(2));
+    Kinematics { v_km_s: mean, sigma_km_s: variance.sqrt() }
+}
