@@ -8,6 +8,7 @@ use inrush::constants::{
 };
 use inrush::line::{Line, find};
 use statrs::distribution::{Binomial, DiscreteCDF};
+use statrs::statistics::Distribution;
 
 /// Two roundings of a double.
 const ROUNDING: f64 = 4.5e-16;
@@ -105,6 +106,15 @@ fn chances_of_a_blue_majority_are_those_of_scipy() {
         let found = binomial.sf(blue - 1);
         assert!((found - expected).abs() < 1e-13, "{blue}, {red}: {found}");
     }
+}
+
+/// Jackson et al. 2019 (abstract, arXiv:1811.05545): of 1093 clumps a fraction of 0.607 +- 0.015 has a
+/// positive asymmetry; sqrt(p(1-p)/N) is 0.01477.
+#[test]
+fn a_published_fraction_has_its_published_error() {
+    let binomial = Binomial::new(0.607, 1093).expect("a probability");
+    let error = binomial.std_dev().expect("finite") / 1093.0;
+    assert!((error - 0.014_77).abs() < 5e-6, "{error}");
 }
 
 /// Frequencies (MHz) as published and offsets from F = 2-1 worked out from them: LAMDA's

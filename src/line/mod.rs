@@ -141,7 +141,8 @@ impl Line {
         SPEED_OF_LIGHT_KM_S * self.rest_frequency_err_ghz / self.rest_frequency_ghz
     }
 
-    /// The built-in transition of this line's name; `None` for a line of the user's own.
+    /// The built-in transition of this line's name, whatever its rest frequency; `None` for a name
+    /// of the user's own.
     pub fn transition(&self) -> Option<&'static Transition> {
         names::transition_named(&self.name)
     }
