@@ -1,7 +1,7 @@
 //! Polynomial baselines: a start that no line can pull, and clipped least squares on line-free channels.
 
 use crate::numeric::polynomial::{Factor, Polynomial, ScaledAxis};
-use crate::numeric::robust::core_scale;
+use crate::numeric::robust::{clipped_scale, core_scale};
 
 /// Share of the channels that the robust start rests on: less than what the widest line that is to
 /// be survived leaves free.
@@ -64,6 +64,14 @@ impl Channels {
         Some(factor.fit(chosen.iter().map(|&i| (self.velocity[i], self.value[i]))))
     }
 
+    /// Variance in each channel of a baseline fitted on chosen channels of unit variance.
+    pub fn leverage(&self, order: usize, chosen: &[usize]) -> Vec<f64> {
+        Factor::new(self.axis, order, chosen.iter().map(|&i| self.velocity[i])).map_or_else(
+            || vec![0.0; self.len()],
+            |factor| self.velocity.iter().map(|&v| factor.leverage(v)).collect(),
+        )
+    }
+
     /// Indices of runs of channels that neighbour each other in the spectrum and are all kept.
     pub fn segments(&self, keep: impl Fn(usize) -> bool) -> Vec<std::ops::Range<usize>> {
         let mut segments = Vec::new();
@@ -91,7 +99,7 @@ impl Channels {
 ///
 /// Least trimmed squares (Rousseeuw 1984, doi:10.1080/01621459.1984.10477105): from lines through
 /// every pair of blocks of the band, refit to the channels nearest, keep the best.
-pub(super) fn robust_start(channels: &Channels, order: usize) -> Option<(Polynomial, f64)> {
+pub(super) fn robust_start(channels: &Channels, order: usize) -> Option<Clipped> {
     let count = channels.len();
     let core = ((count as f64 * CORE_SHARE) as usize)
         .max(order + 3)
@@ -115,8 +123,36 @@ pub(super) fn robust_start(channels: &Channels, order: usize) -> Option<(Polynom
         .filter_map(|(_, line)| concentrate(channels, line, order, core, 12))
         .min_by(|a, b| a.0.total_cmp(&b.0))?
         .1;
-    let scale = core_scale(&channels.residuals(&best), CORE_CLIP);
-    Some((best, scale))
+    // The usual last step: least squares on all that the start does not call outliers.
+    let residuals = channels.residuals(&best);
+    let scale = core_scale(&residuals, CORE_CLIP);
+    let near: Vec<usize> = (0..channels.len())
+        .filter(|&i| residuals[i].abs() <= CORE_CLIP * scale)
+        .collect();
+    let baseline = channels.fit(order, &near)?;
+    let residuals = channels.residuals(&baseline);
+    let scale = core_scale(&residuals, CORE_CLIP).min(difference_scale(&residuals));
+    Some(Clipped {
+        baseline,
+        scale,
+        kept: near,
+    })
+}
+
+/// Noise from differences of channels 1 to 4 apart, the largest: broad lines hardly enter, and noise
+/// that is smoothed over a few channels is not taken for smaller than it is.
+fn difference_scale(residuals: &[f64]) -> f64 {
+    (1..=4)
+        .filter(|&lag| lag < residuals.len())
+        .map(|lag| {
+            let differences: Vec<f64> = residuals
+                .iter()
+                .zip(&residuals[lag..])
+                .map(|(a, b)| (b - a) / std::f64::consts::SQRT_2)
+                .collect();
+            clipped_scale(&differences, CORE_CLIP)
+        })
+        .fold(0.0, f64::max)
 }
 
 /// Refits to the `core` channels nearest to the baseline, `steps` times; the sum of their squared
@@ -169,7 +205,7 @@ pub(super) fn clipped_fit(
         let baseline = channels.fit(order, &kept)?;
         let residuals = channels.residuals(&baseline);
         let on_free: Vec<f64> = free.iter().map(|&i| residuals[i]).collect();
-        let scale = core_scale(&on_free, CORE_CLIP);
+        let scale = clipped_scale(&on_free, CORE_CLIP);
         let next: Vec<usize> = free
             .iter()
             .copied()
@@ -188,7 +224,7 @@ pub(super) fn clipped_fit(
     let residuals = channels.residuals(&baseline);
     let on_free: Vec<f64> = free.iter().map(|&i| residuals[i]).collect();
     Some(Clipped {
-        scale: core_scale(&on_free, CORE_CLIP),
+        scale: clipped_scale(&on_free, CORE_CLIP),
         baseline,
         kept,
     })

@@ -13,7 +13,8 @@ pub use rebin::rebin;
 use crate::line::Component;
 use crate::numeric::Autoregression;
 use crate::spectrum::{Noise, Spectrum, SpectrumError, Window};
-use baseline::{Channels, Clipped, clipped_fit, robust_start};
+use crate::numeric::robust::clipped_scale;
+use baseline::{CORE_CLIP, Channels, Clipped, clipped_fit, robust_start};
 use regions::{Boxes, Region};
 
 /// A spectrum ready to be measured and fitted.
@@ -454,55 +455,101 @@ impl Search<'_> {
     /// Rounds of window, baseline and noise until the excluded channels no longer change.
     fn run(&self) -> Result<Found, PrepareError> {
         let channels = self.channels;
-        let (mut baseline, mut scale) =
-            robust_start(channels, self.order).ok_or(PrepareError::TooFewLineFree {
-                found: channels.len(),
-                usable: channels.len(),
-                needed: self.needed,
-            })?;
-        let mut excluded = vec![false; channels.len()];
+        let count = channels.len();
+        let mut fit =
+            robust_start(channels, self.order).ok_or_else(|| self.too_few(count))?;
+        let mut excluded = vec![false; count];
+        let mut line: Option<Region> = None;
         let mut round = 0;
         loop {
-            let residuals = channels.residuals(&baseline);
-            self.check_scale(scale)?;
-            let process = self.process(&residuals, scale, &excluded);
-            let boxes = Boxes::new(&residuals, scale, &process);
-            let (line, window, next, significance) = self.exclude(&boxes);
-            let free: Vec<usize> = (0..channels.len()).filter(|&i| !next[i]).collect();
-            if free.len() < self.needed {
-                return Err(PrepareError::TooFewLineFree {
-                    found: free.len(),
-                    usable: channels.len(),
-                    needed: self.needed,
-                });
-            }
-            let fit = clipped_fit(channels, self.order, &free, self.settings.clip_sigma).ok_or(
-                PrepareError::TooFewLineFree {
-                    found: free.len(),
-                    usable: channels.len(),
-                    needed: self.needed,
-                },
-            )?;
             self.check_scale(fit.scale)?;
-            let residuals = channels.residuals(&fit.baseline);
-            let process = self.process(&residuals, fit.scale, &next);
-            let corrected = corrected_scale(fit.scale, self.order + 1, free.len(), &process);
+            let (scale, process) = if round == 0 {
+                // The line is still in the residuals and would count as correlated noise.
+                (fit.scale, Autoregression::white())
+            } else {
+                self.noise(&fit, &self.far(&excluded, line))
+            };
+            let boxes = self.boxes(&fit, scale, &process);
+            let (next_line, window, next, significance) = self.exclude(&boxes);
+            if std::env::var("DBG").is_ok() { eprintln!("round {round} scale {scale:.4} fit.scale {:.4} kept {} order {} p0 {:.2} line {next_line:?} nfree {}", fit.scale, fit.kept.len(), process.order(), process.power_at_zero(), next.iter().filter(|&&x|!x).count()); for r in boxes.regions(4.5,None){eprintln!("   {r:?}");} }
+            let free: Vec<usize> = (0..count).filter(|&i| !next[i]).collect();
+            if free.len() < self.needed {
+                return Err(self.too_few(free.len()));
+            }
+            fit = clipped_fit(channels, self.order, &free, self.settings.clip_sigma)
+                .ok_or_else(|| self.too_few(free.len()))?;
             round += 1;
             if next == excluded || round == MOST_ROUNDS {
+                self.check_scale(fit.scale)?;
+                let (scale, process) = self.noise(&fit, &next);
                 return Ok(Found {
-                    scale: corrected,
-                    process: process.before_subtraction(self.order + 1, free.len()),
+                    scale,
+                    process,
                     fit,
-                    line,
+                    line: next_line,
                     window,
                     excluded: next,
                     significance,
                 });
             }
-            baseline = fit.baseline;
-            scale = corrected;
+            line = next_line;
             excluded = next;
         }
+    }
+
+    fn too_few(&self, found: usize) -> PrepareError {
+        PrepareError::TooFewLineFree {
+            found,
+            usable: self.channels.len(),
+            needed: self.needed,
+        }
+    }
+
+    /// The excluded channels and, where enough others are left, as many again beside the line: a
+    /// faint part that is not seen yet must not count as correlated noise.
+    fn far(&self, excluded: &[bool], line: Option<Region>) -> Vec<bool> {
+        let mut far = excluded.to_vec();
+        let Some(line) = line else {
+            return far;
+        };
+        let low = line.low.saturating_sub(line.width());
+        let high = (line.high + line.width()).min(far.len() - 1);
+        far[low..=high].fill(true);
+        let left = |mask: &[bool]| mask.iter().filter(|&&is_excluded| !is_excluded).count();
+        if left(&far) >= (left(excluded) * 2 / 5).max(2 * self.needed) {
+            far
+        } else {
+            excluded.to_vec()
+        }
+    }
+
+    /// Noise and its process on channels that are not excluded, corrected for what the baseline took.
+    fn noise(&self, fit: &Clipped, excluded: &[bool]) -> (f64, Autoregression) {
+        let residuals = self.channels.residuals(&fit.baseline);
+        let free: Vec<f64> = (0..residuals.len())
+            .filter(|&i| !excluded[i])
+            .map(|i| residuals[i])
+            .collect();
+        let scale = clipped_scale(&free, CORE_CLIP);
+        let process = self.process(&residuals, scale, excluded);
+        let terms = self.order + 1;
+        let process = process.before_subtraction(terms, free.len());
+        (
+            corrected_scale(scale, terms, free.len(), &process),
+            process,
+        )
+    }
+
+    fn boxes(&self, fit: &Clipped, scale: f64, process: &Autoregression) -> Boxes {
+        let power = scale * scale * process.power_at_zero();
+        let variance = self
+            .channels
+            .leverage(self.order, &fit.kept)
+            .iter()
+            .map(|leverage| leverage * power)
+            .collect();
+        let residuals = self.channels.residuals(&fit.baseline);
+        Boxes::new(&residuals, scale, process, variance)
     }
 
     fn check_scale(&self, scale: f64) -> Result<(), PrepareError> {
@@ -681,8 +728,7 @@ impl Search<'_> {
 
     fn finish(&self, spectrum: &Spectrum, found: &Found) -> Outcome {
         let channels = self.channels;
-        let residuals = channels.residuals(&found.fit.baseline);
-        let boxes = Boxes::new(&residuals, found.scale, &found.process);
+        let boxes = self.boxes(&found.fit, found.scale, &found.process);
         let last = channels.len() - 1;
         let range = found.window.unwrap_or((0, last));
         let edge = |i: usize, side: f64| {

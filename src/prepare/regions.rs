@@ -40,7 +40,7 @@ impl Region {
 const MOST_REGIONS: usize = 16;
 
 /// A region grows while the next channels stand out by this many standard deviations.
-const GROW_AT: f64 = 1.5;
+const GROW_AT: f64 = 2.0;
 
 /// A channel that stands out from both neighbours by more than this many standard deviations counts
 /// only as much: interference in a single channel is no line.
@@ -49,13 +49,21 @@ const SPIKE_AT: f64 = 3.0;
 /// Sums of residuals over boxes, in units of their noise.
 pub(super) struct Boxes {
     sums: Vec<f64>,
-    /// Standard deviation of a sum over 0, 1, 2, ... channels, K.
-    noise_of_sum: Vec<f64>,
+    /// Variance of the noise's sum over 0, 1, 2, ... channels, K^2.
+    variance_of_sum: Vec<f64>,
+    /// Variance of the baseline in each channel, K^2.
+    baseline_variance: Vec<f64>,
 }
 
 impl Boxes {
-    /// Sums of `residuals` (K) whose noise has a scale (K) and a process.
-    pub fn new(residuals: &[f64], scale: f64, process: &Autoregression) -> Self {
+    /// Sums of `residuals` (K) whose noise has a scale (K) and a process, on a baseline of a known
+    /// variance in each channel (K^2): far from where it was fitted, wide boxes prove little.
+    pub fn new(
+        residuals: &[f64],
+        scale: f64,
+        process: &Autoregression,
+        baseline_variance: Vec<f64>,
+    ) -> Self {
         let count = residuals.len();
         let limit = SPIKE_AT * scale;
         let mut sums = Vec::with_capacity(count + 1);
@@ -68,16 +76,20 @@ impl Boxes {
             sums.push(sum);
         }
         let correlation = process.autocorrelation(count.max(1));
-        let mut noise_of_sum = vec![0.0];
-        let (mut variance, mut step) = (0.0_f64, 1.0);
+        let mut variance_of_sum = vec![0.0];
+        let (mut variance, mut step) = (0.0, 1.0);
         for lag in 1..=count {
             variance += step;
-            noise_of_sum.push(scale * variance.sqrt());
+            variance_of_sum.push(scale * scale * variance);
             if lag < count {
                 step += 2.0 * correlation[lag];
             }
         }
-        Self { sums, noise_of_sum }
+        Self {
+            sums,
+            variance_of_sum,
+            baseline_variance,
+        }
     }
 
     fn len(&self) -> usize {
@@ -86,7 +98,10 @@ impl Boxes {
 
     /// Significance of the sum over `low..low + width`.
     pub fn significance(&self, low: usize, width: usize) -> f64 {
-        (self.sums[low + width] - self.sums[low]) / self.noise_of_sum[width]
+        let sum = self.sums[low + width] - self.sums[low];
+        let channels = width as f64;
+        let baseline = channels * channels * self.baseline_variance[low + width / 2];
+        sum / (self.variance_of_sum[width] + baseline).sqrt()
     }
 
     /// Box widths that are tried: 1, 2, 3, 4, 6, 8, 12, ... up to a third of the band.
@@ -126,13 +141,16 @@ impl Boxes {
         best
     }
 
-    /// Extends a box into its wings.
+    /// Extends a box into its wings, on either side by at most its own width.
     fn grow(&self, mut region: Region, taken: &[bool]) -> Region {
         let sign = region.significance.signum();
         let half = region.width() / 2;
-        let looks = [2, 3, 5, 8, half];
+        let looks = [2, 5, half];
+        let reach = region.width().max(4);
+        let lowest = region.low.saturating_sub(reach);
+        let highest = (region.high + reach).min(self.len() - 1);
         let goes_on = |low: usize, width: usize| sign * self.significance(low, width) > GROW_AT;
-        while region.low > 0
+        while region.low > lowest
             && !taken[region.low - 1]
             && looks.iter().any(|&width| {
                 width >= 2 && width <= region.low && goes_on(region.low - width, width)
@@ -140,7 +158,7 @@ impl Boxes {
         {
             region.low -= 1;
         }
-        while region.high + 1 < self.len()
+        while region.high < highest
             && !taken[region.high + 1]
             && looks.iter().any(|&width| {
                 width >= 2
