@@ -97,6 +97,14 @@ impl Factor {
         solution
     }
 
+    /// Variance of the fitted polynomial at x for values of unit variance, b^T (B^T B)^-1 b.
+    #[must_use]
+    pub fn leverage(&self, x: f64) -> f64 {
+        let basis = self.axis.basis(x);
+        let solution = self.solve(basis);
+        (0..self.terms).map(|k| basis[k] * solution[k]).sum()
+    }
+
     /// The axis scale.
     #[must_use]
     pub fn axis(&self) -> ScaledAxis {

@@ -139,6 +139,23 @@ impl Spectrum {
         crate::numeric::robust::median(&self.width_km_s)
     }
 
+    /// The same spectrum with each temperature (K) changed by a function of channel and value;
+    /// masked channels stay masked.
+    #[must_use]
+    pub fn map_temperature_k(&self, change: impl Fn(usize, f64) -> f64) -> Self {
+        let temperature_k = self
+            .temperature_k
+            .iter()
+            .enumerate()
+            .map(|(channel, &value)| change(channel, value))
+            .collect();
+        Self {
+            velocity_km_s: self.velocity_km_s.clone(),
+            width_km_s: self.width_km_s.clone(),
+            temperature_k,
+        }
+    }
+
     /// The same axis with other temperatures (K, one a channel, `NaN` where masked).
     ///
     /// # Errors

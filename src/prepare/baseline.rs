@@ -1,0 +1,231 @@
+//! Polynomial baselines: a start that no line can pull, and clipped least squares on line-free channels.
+
+use crate::numeric::polynomial::{Factor, Polynomial, ScaledAxis};
+use crate::numeric::robust::{clipped_scale, core_scale};
+
+/// Share of the channels that the robust start rests on: less than what the widest line that is to
+/// be survived leaves free.
+const CORE_SHARE: f64 = 0.35;
+
+/// The band is cut into this many blocks; every pair of them gives a start.
+const BLOCKS: usize = 6;
+
+/// Clip of the core scale, in standard deviations.
+pub(super) const CORE_CLIP: f64 = 3.0;
+
+/// Channels of one spectrum that hold a number, in order.
+pub(super) struct Channels {
+    /// Velocities, km/s.
+    pub velocity: Vec<f64>,
+    /// Values, K.
+    pub value: Vec<f64>,
+    /// Index of each in the spectrum.
+    pub index: Vec<usize>,
+    /// Axis scale for polynomials.
+    pub axis: ScaledAxis,
+}
+
+impl Channels {
+    /// The usable channels of a spectrum.
+    pub fn of(spectrum: &crate::spectrum::Spectrum) -> Self {
+        let index: Vec<usize> = (0..spectrum.len())
+            .filter(|&channel| spectrum.is_usable(channel))
+            .collect();
+        let velocity: Vec<f64> = index.iter().map(|&i| spectrum.velocity_km_s()[i]).collect();
+        let value: Vec<f64> = index.iter().map(|&i| spectrum.temperature_k()[i]).collect();
+        let axis = ScaledAxis::new(
+            velocity.first().copied().unwrap_or(0.0),
+            velocity.last().copied().unwrap_or(1.0),
+        );
+        Self {
+            velocity,
+            value,
+            index,
+            axis,
+        }
+    }
+
+    pub fn len(&self) -> usize {
+        self.velocity.len()
+    }
+
+    /// Values minus a baseline.
+    pub fn residuals(&self, baseline: &Polynomial) -> Vec<f64> {
+        self.velocity
+            .iter()
+            .zip(&self.value)
+            .map(|(v, t)| t - baseline.evaluate(*v))
+            .collect()
+    }
+
+    /// Least squares on chosen channels; `None` where they do not determine the order.
+    fn fit(&self, order: usize, chosen: &[usize]) -> Option<Polynomial> {
+        let factor = Factor::new(self.axis, order, chosen.iter().map(|&i| self.velocity[i]))?;
+        Some(factor.fit(chosen.iter().map(|&i| (self.velocity[i], self.value[i]))))
+    }
+
+    /// Variance in each channel of a baseline fitted on chosen channels of unit variance.
+    pub fn leverage(&self, order: usize, chosen: &[usize]) -> Vec<f64> {
+        Factor::new(self.axis, order, chosen.iter().map(|&i| self.velocity[i])).map_or_else(
+            || vec![0.0; self.len()],
+            |factor| self.velocity.iter().map(|&v| factor.leverage(v)).collect(),
+        )
+    }
+
+    /// Indices of runs of channels that neighbour each other in the spectrum and are all kept.
+    pub fn segments(&self, keep: impl Fn(usize) -> bool) -> Vec<std::ops::Range<usize>> {
+        let mut segments = Vec::new();
+        let mut start = None;
+        for i in 0..self.len() {
+            let follows = i > 0 && self.index[i] == self.index[i - 1] + 1;
+            if let Some(first) = start
+                && (!keep(i) || !follows)
+            {
+                segments.push(first..i);
+                start = None;
+            }
+            if keep(i) && start.is_none() {
+                start = Some(i);
+            }
+        }
+        if let Some(first) = start {
+            segments.push(first..self.len());
+        }
+        segments
+    }
+}
+
+/// A baseline that holds although up to about 60 % of the band is line, and the noise about it.
+///
+/// Least trimmed squares (Rousseeuw 1984, doi:10.1080/01621459.1984.10477105): from lines through
+/// every pair of blocks of the band, refit to the channels nearest, keep the best.
+pub(super) fn robust_start(channels: &Channels, order: usize) -> Option<Clipped> {
+    let count = channels.len();
+    let core = ((count as f64 * CORE_SHARE) as usize)
+        .max(order + 3)
+        .min(count);
+    let block = |b: usize| (b * count / BLOCKS)..((b + 1) * count / BLOCKS);
+    let mut starts: Vec<(f64, Polynomial)> = Vec::new();
+    for first in 0..BLOCKS {
+        for second in first..BLOCKS {
+            let chosen: Vec<usize> = block(first).chain(block(second)).collect();
+            let degree = if first == second { 0 } else { order.min(1) };
+            let Some(line) = channels.fit(degree, &chosen) else {
+                continue;
+            };
+            starts.extend(concentrate(channels, line, order.min(1), core, 3));
+        }
+    }
+    starts.sort_by(|a, b| a.0.total_cmp(&b.0));
+    let best = starts
+        .into_iter()
+        .take(3)
+        .filter_map(|(_, line)| concentrate(channels, line, order, core, 12))
+        .min_by(|a, b| a.0.total_cmp(&b.0))?
+        .1;
+    // The usual last step: least squares on all that the start does not call outliers.
+    let residuals = channels.residuals(&best);
+    let scale = core_scale(&residuals, CORE_CLIP);
+    let near: Vec<usize> = (0..channels.len())
+        .filter(|&i| residuals[i].abs() <= CORE_CLIP * scale)
+        .collect();
+    let baseline = channels.fit(order, &near)?;
+    let residuals = channels.residuals(&baseline);
+    let scale = core_scale(&residuals, CORE_CLIP).min(difference_scale(&residuals));
+    Some(Clipped {
+        baseline,
+        scale,
+        kept: near,
+    })
+}
+
+/// Noise from differences of channels 1 to 4 apart, the largest: broad lines hardly enter, and noise
+/// that is smoothed over a few channels is not taken for smaller than it is.
+fn difference_scale(residuals: &[f64]) -> f64 {
+    (1..=4)
+        .filter(|&lag| lag < residuals.len())
+        .map(|lag| {
+            let differences: Vec<f64> = residuals
+                .iter()
+                .zip(&residuals[lag..])
+                .map(|(a, b)| (b - a) / std::f64::consts::SQRT_2)
+                .collect();
+            clipped_scale(&differences, CORE_CLIP)
+        })
+        .fold(0.0, f64::max)
+}
+
+/// Refits to the `core` channels nearest to the baseline, `steps` times; the sum of their squared
+/// residuals with it.
+fn concentrate(
+    channels: &Channels,
+    mut baseline: Polynomial,
+    order: usize,
+    core: usize,
+    steps: usize,
+) -> Option<(f64, Polynomial)> {
+    let mut last = f64::INFINITY;
+    for _ in 0..steps {
+        let residuals = channels.residuals(&baseline);
+        let mut nearest: Vec<usize> = (0..channels.len()).collect();
+        nearest.select_nth_unstable_by(core - 1, |&a, &b| {
+            residuals[a].abs().total_cmp(&residuals[b].abs())
+        });
+        nearest.truncate(core);
+        nearest.sort_unstable();
+        let sum: f64 = nearest.iter().map(|&i| residuals[i] * residuals[i]).sum();
+        if sum >= last {
+            break;
+        }
+        last = sum;
+        baseline = channels.fit(order, &nearest)?;
+    }
+    Some((last, baseline))
+}
+
+/// A baseline fitted on line-free channels with outliers left out.
+pub(super) struct Clipped {
+    pub baseline: Polynomial,
+    /// Core scale of the residuals on line-free channels, not yet corrected for what the fit took.
+    pub scale: f64,
+    /// Line-free channels within the clip.
+    pub kept: Vec<usize>,
+}
+
+/// Least squares on `free` channels, leaving out those beyond `clip` standard deviations until the
+/// set no longer changes.
+pub(super) fn clipped_fit(
+    channels: &Channels,
+    order: usize,
+    free: &[usize],
+    clip: f64,
+) -> Option<Clipped> {
+    let mut kept = free.to_vec();
+    for _ in 0..30 {
+        let baseline = channels.fit(order, &kept)?;
+        let residuals = channels.residuals(&baseline);
+        let on_free: Vec<f64> = free.iter().map(|&i| residuals[i]).collect();
+        let scale = clipped_scale(&on_free, CORE_CLIP);
+        let next: Vec<usize> = free
+            .iter()
+            .copied()
+            .filter(|&i| residuals[i].abs() <= clip * scale)
+            .collect();
+        if next == kept || next.len() <= order + 1 {
+            return Some(Clipped {
+                baseline,
+                scale,
+                kept,
+            });
+        }
+        kept = next;
+    }
+    let baseline = channels.fit(order, &kept)?;
+    let residuals = channels.residuals(&baseline);
+    let on_free: Vec<f64> = free.iter().map(|&i| residuals[i]).collect();
+    Some(Clipped {
+        scale: clipped_scale(&on_free, CORE_CLIP),
+        baseline,
+        kept,
+    })
+}

@@ -1,0 +1,199 @@
+//! Runs of channels with significant signal: boxes of many widths, grown into the wings.
+
+use crate::numeric::Autoregression;
+
+/// A run of channels with signal, ends included.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(super) struct Region {
+    pub low: usize,
+    pub high: usize,
+    /// Significance of the best box in it, in standard deviations; negative for absorption.
+    pub significance: f64,
+}
+
+impl Region {
+    pub fn width(&self) -> usize {
+        self.high - self.low + 1
+    }
+
+    /// Channels between two regions; 0 where they touch or overlap.
+    pub fn gap(&self, other: &Region) -> usize {
+        let between = |a: &Region, b: &Region| b.low.saturating_sub(a.high + 1);
+        between(self, other).max(between(other, self))
+    }
+
+    pub fn join(&self, other: &Region) -> Region {
+        let significance = if self.significance.abs() >= other.significance.abs() {
+            self.significance
+        } else {
+            other.significance
+        };
+        Region {
+            low: self.low.min(other.low),
+            high: self.high.max(other.high),
+            significance,
+        }
+    }
+}
+
+/// Most regions that are looked for in one spectrum.
+const MOST_REGIONS: usize = 16;
+
+/// A region grows while the next channels stand out by this many standard deviations.
+const GROW_AT: f64 = 2.0;
+
+/// A channel that stands out from both neighbours by more than this many standard deviations counts
+/// only as much: interference in a single channel is no line.
+const SPIKE_AT: f64 = 3.0;
+
+/// Sums of residuals over boxes, in units of their noise.
+pub(super) struct Boxes {
+    sums: Vec<f64>,
+    /// Variance of the noise's sum over 0, 1, 2, ... channels, K^2.
+    variance_of_sum: Vec<f64>,
+    /// Variance of the baseline in each channel, K^2.
+    baseline_variance: Vec<f64>,
+}
+
+impl Boxes {
+    /// Sums of `residuals` (K) whose noise has a scale (K) and a process, on a baseline of a known
+    /// variance in each channel (K^2): far from where it was fitted, wide boxes prove little.
+    pub fn new(
+        residuals: &[f64],
+        scale: f64,
+        process: &Autoregression,
+        baseline_variance: Vec<f64>,
+    ) -> Self {
+        let count = residuals.len();
+        let limit = SPIKE_AT * scale;
+        let mut sums = Vec::with_capacity(count + 1);
+        let mut sum = 0.0;
+        sums.push(0.0);
+        for (i, &value) in residuals.iter().enumerate() {
+            let before = if i > 0 { residuals[i - 1] } else { 0.0 };
+            let after = if i + 1 < count { residuals[i + 1] } else { 0.0 };
+            sum += value.clamp(before.min(after) - limit, before.max(after) + limit);
+            sums.push(sum);
+        }
+        let correlation = process.autocorrelation(count.max(1));
+        let mut variance_of_sum = vec![0.0];
+        let (mut variance, mut step) = (0.0, 1.0);
+        for lag in 1..=count {
+            variance += step;
+            variance_of_sum.push(scale * scale * variance);
+            if lag < count {
+                step += 2.0 * correlation[lag];
+            }
+        }
+        Self {
+            sums,
+            variance_of_sum,
+            baseline_variance,
+        }
+    }
+
+    fn len(&self) -> usize {
+        self.sums.len() - 1
+    }
+
+    /// Significance of the sum over `low..low + width`.
+    pub fn significance(&self, low: usize, width: usize) -> f64 {
+        let sum = self.sums[low + width] - self.sums[low];
+        let channels = width as f64;
+        let baseline = channels * channels * self.baseline_variance[low + width / 2];
+        sum / (self.variance_of_sum[width] + baseline).sqrt()
+    }
+
+    /// Box widths that are tried: 1, 2, 3, 4, 6, 8, 12, ... up to a third of the band.
+    fn widths(&self) -> Vec<usize> {
+        let largest = (self.len() / 3).max(1);
+        let mut widths = vec![1, 2, 3];
+        let mut width = 4;
+        while width <= largest {
+            widths.push(width);
+            if width + width / 2 <= largest {
+                widths.push(width + width / 2);
+            }
+            width *= 2;
+        }
+        widths.retain(|&width| width <= largest);
+        widths
+    }
+
+    /// The most significant box that touches no taken channel.
+    fn best(&self, taken: &[bool], widths: &[usize]) -> Option<Region> {
+        let mut best: Option<Region> = None;
+        let mut free_run = 0;
+        for high in 0..self.len() {
+            free_run = if taken[high] { 0 } else { free_run + 1 };
+            for &width in widths.iter().take_while(|&&width| width <= free_run) {
+                let low = high + 1 - width;
+                let significance = self.significance(low, width);
+                if best.is_none_or(|found| significance.abs() > found.significance.abs()) {
+                    best = Some(Region {
+                        low,
+                        high,
+                        significance,
+                    });
+                }
+            }
+        }
+        best
+    }
+
+    /// Extends a box into its wings, on either side by at most its own width.
+    fn grow(&self, mut region: Region, taken: &[bool]) -> Region {
+        let sign = region.significance.signum();
+        let half = region.width() / 2;
+        let looks = [2, 5, half];
+        let reach = region.width().max(4);
+        let lowest = region.low.saturating_sub(reach);
+        let highest = (region.high + reach).min(self.len() - 1);
+        let goes_on = |low: usize, width: usize| sign * self.significance(low, width) > GROW_AT;
+        while region.low > lowest
+            && !taken[region.low - 1]
+            && looks.iter().any(|&width| {
+                width >= 2 && width <= region.low && goes_on(region.low - width, width)
+            })
+        {
+            region.low -= 1;
+        }
+        while region.high < highest
+            && !taken[region.high + 1]
+            && looks.iter().any(|&width| {
+                width >= 2
+                    && region.high + 1 + width <= self.len()
+                    && goes_on(region.high + 1, width)
+            })
+        {
+            region.high += 1;
+        }
+        region
+    }
+
+    /// All regions whose best box reaches `threshold` standard deviations, most significant first.
+    ///
+    /// `favoured` channels need one standard deviation less: a line is expected there.
+    pub fn regions(&self, threshold: f64, favoured: Option<(usize, usize)>) -> Vec<Region> {
+        let widths = self.widths();
+        let mut taken = vec![false; self.len()];
+        let mut regions = Vec::new();
+        while regions.len() < MOST_REGIONS {
+            let Some(found) = self.best(&taken, &widths) else {
+                break;
+            };
+            let expected =
+                favoured.is_some_and(|(low, high)| found.low <= high && found.high >= low);
+            let needed = if expected { threshold - 1.0 } else { threshold };
+            if found.significance.abs() < threshold - 1.0 {
+                break;
+            }
+            let grown = self.grow(found, &taken);
+            taken[grown.low..=grown.high].fill(true);
+            if found.significance.abs() >= needed {
+                regions.push(grown);
+            }
+        }
+        regions
+    }
+}
