@@ -1,9 +1,10 @@
 //! The state of a search and its step.
 //!
-//! A step solves (J^T J + lambda D^2) d = -J^T r inside the box: a parameter on a bound whose gradient
-//! points outward is held; one that the step would carry past a bound is set to the bound and the
-//! others are solved for again. D holds the largest column norms met so far. The normal equations
-//! are used while they keep eight digits, the Householder triangle of J after that.
+//! A step solves (J^T J + lambda D^2) d = -J^T r inside the box: a parameter on a bound beyond which
+//! chi2 falls is held; one that the step would carry past a bound is set to the bound and the others
+//! are solved for again. D holds the largest column norms met so far. lambda is zero while the step
+//! is no longer than the trusted radius, |D d| <= radius, else what makes it so (Moré 1978). The normal
+//! equations are used while they keep eight digits, the Householder triangle of J after that.
 
 use super::dense::{self, MAX_PARAMETERS, Matrix, Vector};
 use super::minimum::Curvature;
@@ -11,14 +12,16 @@ use super::{Interval, LeastSquares, LeastSquaresError, Minimum, Settings, Side, 
 
 /// Smallest relative pivot of the normal equations: rounding (2e-16) over this is below 1e-8.
 const SMALLEST_PIVOT: f64 = 1e-7;
-/// Damping of a step that counts as undamped; keeps directions without influence at rest.
+/// Damping of a step that counts as undamped; keeps parameters without influence at rest.
 const UNDAMPED: f64 = 1e-15;
-/// Damping at which a step follows the gradient so closely that a longer wait is pointless.
-const LARGEST_DAMPING: f64 = 1e12;
+/// How far from the radius, relative to it, a shortened step may end.
+const RADIUS_TOLERANCE: f64 = 0.1;
+/// Most dampings tried for one step; two or three are usual.
+const MAX_DAMPINGS: usize = 20;
 /// Smallest ratio of actual to predicted decrease for which a step is kept.
 const LEAST_GAIN: f64 = 1e-4;
-/// Strongest reduction of the damping after a step.
-const STRONGEST_RELIEF: f64 = 0.1;
+/// Predicted decrease relative to chi2 below which a failed step is not shortened further.
+const RESOLUTION: f64 = 16.0 * f64::EPSILON;
 /// Expected decrease relative to chi2 that rounding inside a model can hide.
 const ROUNDING: f64 = 1e-9;
 
@@ -68,8 +71,9 @@ pub struct Descent {
     degrees_of_freedom: f64,
     linear: Linearisation,
     scale: Vector,
+    /// Longest step that is trusted, |D d|.
+    radius: f64,
     damping: f64,
-    growth: f64,
     gain: f64,
     evaluations: usize,
     iterations: usize,
@@ -106,13 +110,20 @@ impl Descent {
             degrees_of_freedom: rows.saturating_sub(free).max(1) as f64,
             linear,
             scale: [0.0; MAX_PARAMETERS],
-            damping: settings.initial_damping.max(UNDAMPED),
-            growth: 2.0,
+            radius: f64::INFINITY,
+            damping: UNDAMPED,
             gain: f64::NAN,
             evaluations: 1,
             iterations: 0,
         };
         descent.update_scale();
+        let size = descent.scaled_norm(&descent.parameters);
+        let size = if size > 0.0 {
+            size
+        } else {
+            descent.chi2.sqrt()
+        };
+        descent.radius = settings.initial_radius * size;
         Ok(descent)
     }
 
@@ -128,7 +139,7 @@ impl Descent {
         self.chi2
     }
 
-    /// Damping of the next step, relative to the squared column norms.
+    /// Damping lambda of the last step tried; 1e-15 for a full Gauss-Newton step.
     #[must_use]
     pub const fn damping(&self) -> f64 {
         self.damping
@@ -159,35 +170,34 @@ impl Descent {
         if self.gradient_vanishes(bounds, settings) {
             return Some(Termination::Gradient);
         }
-        let step = self.solve(self.damping, bounds, workspace);
-        let stuck = self.damping > LARGEST_DAMPING || self.is_lost(&step, bounds);
-        if stuck || self.small_enough(&step, settings).is_some() {
-            // A damped step may be small only because it is damped.
-            let full = self.solve(UNDAMPED, bounds, workspace);
-            let reason = self.small_enough(&full, settings);
-            if reason.is_some() {
-                return reason;
-            }
-            if stuck && full.decrease <= ROUNDING * self.chi2 {
-                return Some(Termination::Rounding);
-            }
-            if stuck {
-                return Some(Termination::Stalled);
-            }
+        let full = self.solve(UNDAMPED, bounds, workspace);
+        let ended = self.small_enough(&full, settings);
+        if ended.is_some() {
+            return ended;
         }
         if self.evaluations >= settings.max_evaluations {
             return Some(Termination::Evaluations);
         }
+        let (promise, length) = (full.decrease, self.scaled_norm(&full.shift));
+        let step = if length <= (1.0 + RADIUS_TOLERANCE) * self.radius {
+            self.damping = UNDAMPED;
+            full
+        } else {
+            self.shorten(length, bounds, workspace)
+        };
         self.iterations += 1;
         self.evaluations += 1;
-        if self.try_step(problem, &step, bounds, workspace) {
+        let kept = self.try_step(problem, &step, bounds, workspace);
+        self.update_radius(&step, kept);
+        if kept {
             self.update_scale();
-            let relief = 1.0 - (2.0 * self.gain - 1.0).powi(3);
-            self.damping = (self.damping * relief.max(STRONGEST_RELIEF)).max(UNDAMPED);
-            self.growth = 2.0;
-        } else {
-            self.damping *= self.growth;
-            self.growth *= 2.0;
+        } else if step.decrease <= RESOLUTION * self.chi2 {
+            let hidden = promise <= ROUNDING * self.chi2;
+            return Some(if hidden {
+                Termination::Rounding
+            } else {
+                Termination::Stalled
+            });
         }
         None
     }
@@ -262,14 +272,42 @@ impl Descent {
         moved
     }
 
-    /// Whether the step is too short to change any parameter.
-    fn is_lost(&self, step: &Step, bounds: &[Interval]) -> bool {
-        self.moved(step, bounds) == self.parameters
+    /// Trusts longer steps after a good one, shorter ones after a bad one.
+    fn update_radius(&mut self, step: &Step, kept: bool) {
+        let length = self.scaled_norm(&step.shift);
+        if self.iterations == 1 {
+            self.radius = self.radius.min(length);
+        }
+        if !kept {
+            // The lowest point along the step, of the parabola through slope and both values.
+            let shorter = 1.0 / (2.0 - self.gain);
+            self.radius = if self.gain.is_finite() {
+                length * shorter.clamp(0.1, 0.5)
+            } else {
+                length * 0.1
+            };
+        } else if self.gain < 0.25 {
+            self.radius = 0.5 * length;
+        } else if self.gain > 0.75 || self.damping == UNDAMPED {
+            self.radius = 2.0 * length;
+        }
+    }
+
+    /// |D v|.
+    fn scaled_norm(&self, vector: &Vector) -> f64 {
+        (0..self.columns)
+            .map(|j| (self.scale[j] * vector[j]).powi(2))
+            .sum::<f64>()
+            .sqrt()
     }
 
     fn update_scale(&mut self) {
         for j in 0..self.columns {
-            let largest = self.scale[j].max(self.linear.gram[j][j].sqrt());
+            let largest = if std::env::var("CUR").is_ok() {
+                self.linear.gram[j][j].sqrt()
+            } else {
+                self.scale[j].max(self.linear.gram[j][j].sqrt())
+            };
             self.scale[j] = if largest > 0.0 { largest } else { 1.0 };
         }
     }
@@ -279,14 +317,8 @@ impl Descent {
         if step.decrease <= settings.chi2_tolerance * self.chi2 / self.degrees_of_freedom {
             return Some(Termination::Chi2);
         }
-        let scaled_square = |vector: &Vector| -> f64 {
-            (0..self.columns)
-                .map(|j| (self.scale[j] * vector[j]).powi(2))
-                .sum()
-        };
-        let tolerance = settings.step_tolerance * settings.step_tolerance;
-        (scaled_square(&step.shift) <= tolerance * scaled_square(&self.parameters))
-            .then_some(Termination::Step)
+        let limit = settings.step_tolerance * self.scaled_norm(&self.parameters);
+        (self.scaled_norm(&step.shift) <= limit).then_some(Termination::Step)
     }
 
     fn gradient_vanishes(&self, bounds: &[Interval], settings: &Settings) -> bool {
@@ -305,6 +337,44 @@ impl Descent {
             Some(Side::Upper) => slope <= 0.0,
             None => false,
         }
+    }
+
+    /// The step damped until it is about as long as the radius; an undamped one has the length `full`.
+    ///
+    /// 1 / |D d| is nearly linear in lambda, and |D d| <= |D^-1 g| / lambda.
+    fn shorten(&mut self, full: f64, bounds: &[Interval], workspace: &mut Workspace) -> Step {
+        let steepness = (0..self.columns)
+            .filter(|&j| !self.is_pressed(j, bounds))
+            .map(|j| (self.linear.gradient[j] / self.scale[j]).powi(2))
+            .sum::<f64>()
+            .sqrt();
+        let (mut low, mut high) = (UNDAMPED, steepness / self.radius);
+        let mut before = (UNDAMPED, 1.0 / full);
+        let mut damping = self.damping.clamp(1e-3 * high, high);
+        for _ in 0..MAX_DAMPINGS {
+            let step = self.solve(damping, bounds, workspace);
+            let length = self.scaled_norm(&step.shift);
+            if (length - self.radius).abs() <= RADIUS_TOLERANCE * self.radius {
+                self.damping = damping;
+                return step;
+            }
+            if length > self.radius {
+                low = damping;
+            } else {
+                high = damping;
+            }
+            let here = (damping, 1.0 / length);
+            let slope = (here.1 - before.1) / (here.0 - before.0);
+            let secant = here.0 + (1.0 / self.radius - here.1) / slope;
+            before = here;
+            damping = if low < secant && secant < high {
+                secant
+            } else {
+                (low.max(1e-6 * high) * high).sqrt()
+            };
+        }
+        self.damping = high;
+        self.solve(high, bounds, workspace)
     }
 
     /// The damped Gauss-Newton step inside the box.

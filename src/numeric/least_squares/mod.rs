@@ -2,10 +2,11 @@
 //!
 //! A [`LeastSquares`] problem (1 to [`MAX_PARAMETERS`] parameters, any number of residuals), a start
 //! and a box go in; the [`Minimum`] of chi2 = sum r_i^2 inside the box comes out, with the curvature
-//! from which [`Minimum::covariance`] follows. Damped Gauss-Newton steps after Levenberg (1944),
-//! Marquardt (1963), Moré (1978, Lecture Notes in Mathematics 630, 105; column scaling) and Nielsen
-//! (1999, IMM-REP-1999-05; damping update). [`minimize`] is the direct call; [`LevenbergMarquardt`] is
-//! the same steps as an argmin `Solver`. No multi-start, no robust loss, no numerical derivatives.
+//! from which [`Minimum::covariance`] follows. Damped Gauss-Newton steps after Levenberg (1944,
+//! Quart. Appl. Math. 2, 164) and Marquardt (1963, J. SIAM 11, 431), the damping set by a trusted radius
+//! and the parameters scaled by column norms after Moré (1978, Lecture Notes in Mathematics 630, 105).
+//! [`minimize`] is the direct call; [`LevenbergMarquardt`] is the same steps as an argmin `Solver`. No
+//! multi-start, no robust loss, no numerical derivatives.
 
 mod bounds;
 mod check;

@@ -5,7 +5,7 @@ use super::LeastSquaresError;
 /// Limits of a search. The defaults suit residuals with noise in them.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct Settings {
-    /// Most calls of the model, the start included. Default 500.
+    /// Most calls of the model, the start included. Default 1000.
     pub max_evaluations: usize,
     /// Converged when a full Gauss-Newton step is expected to lower chi2 by no more than this times
     /// chi2 / (degrees of freedom). The ratio is the sum of squares of the remaining parameter
@@ -19,18 +19,19 @@ pub struct Settings {
     /// Converged when the cosine of the angle between the residuals and every Jacobian column of a
     /// parameter free to move is no larger than this. Default 1e-12.
     pub gradient_tolerance: f64,
-    /// First damping, relative to the squared column norms. Default 1e-3.
-    pub initial_damping: f64,
+    /// Length of the first step at most, in units of the start's length, both with each parameter
+    /// multiplied by the norm of its Jacobian column. Default 1.
+    pub initial_radius: f64,
 }
 
 impl Default for Settings {
     fn default() -> Self {
         Self {
-            max_evaluations: 500,
+            max_evaluations: 1000,
             chi2_tolerance: 1e-8,
             step_tolerance: 1e-12,
             gradient_tolerance: 1e-12,
-            initial_damping: 1e-3,
+            initial_radius: 1.0,
         }
     }
 }
@@ -41,7 +42,7 @@ impl Settings {
             ("chi2_tolerance", self.chi2_tolerance),
             ("step_tolerance", self.step_tolerance),
             ("gradient_tolerance", self.gradient_tolerance),
-            ("initial_damping", self.initial_damping),
+            ("initial_radius", self.initial_radius),
         ];
         for (name, found) in settings {
             if !(found.is_finite() && found >= 0.0) {
