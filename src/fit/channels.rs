@@ -139,7 +139,13 @@ impl Channels {
         residuals: &mut [f64],
         mut jacobian: Option<&mut [f64]>,
     ) {
-        model.evaluate(&self.line, &self.sampling, parameters, residuals, jacobian.as_deref_mut());
+        model.evaluate(
+            &self.line,
+            &self.sampling,
+            parameters,
+            residuals,
+            jacobian.as_deref_mut(),
+        );
         self.whiten(residuals);
         for (residual, datum) in residuals.iter_mut().zip(&self.whitened_data) {
             *residual -= datum;

@@ -44,8 +44,12 @@ fn thin_name(name: &str) -> &'static str {
     }
 }
 
-const ISOTOPE_RATIO: Parameter =
-    Parameter { name: "isotope_ratio", unit: "", low: 1.0, high: 10_000.0 };
+const ISOTOPE_RATIO: Parameter = Parameter {
+    name: "isotope_ratio",
+    unit: "",
+    low: 1.0,
+    high: 10_000.0,
+};
 
 impl Layout {
     /// A thick line of `thick_model` and a thin line of `thin_model`, which share the velocity and the
@@ -74,8 +78,13 @@ impl Layout {
             layout.thick.1.push(index);
         }
         if let Some(ratio) = settings.isotope_ratio {
-            let Some(tau) = layout.position("tau").filter(|_| thin_model == Model::Layer) else {
-                return Err(FitError::NothingToLink { model: thick_model.name() });
+            let Some(tau) = layout
+                .position("tau")
+                .filter(|_| thin_model == Model::Layer)
+            else {
+                return Err(FitError::NothingToLink {
+                    model: thick_model.name(),
+                });
             };
             let index = layout.push(ISOTOPE_RATIO, ISOTOPE_RATIO.name, settings, reach)?;
             let parameter = &mut layout.parameters[index];
@@ -107,7 +116,11 @@ impl Layout {
     /// # Errors
     ///
     /// As for [`Layout::new`].
-    pub fn thin_alone(thin_model: Model, settings: &FitSettings, reach: Interval) -> Result<Self, FitError> {
+    pub fn thin_alone(
+        thin_model: Model,
+        settings: &FitSettings,
+        reach: Interval,
+    ) -> Result<Self, FitError> {
         let mut layout = Self {
             parameters: Vec::new(),
             thick: (thin_model, Vec::new()),
@@ -134,7 +147,11 @@ impl Layout {
         }
         if let Some((lower, upper)) = settings.bounds.get(name) {
             if !(lower < upper) {
-                return Err(FitError::EmptyBounds { name: name.to_owned(), lower: *lower, upper: *upper });
+                return Err(FitError::EmptyBounds {
+                    name: name.to_owned(),
+                    lower: *lower,
+                    upper: *upper,
+                });
             }
             (low, high) = (*lower, *upper);
         }
@@ -146,7 +163,12 @@ impl Layout {
         };
         if let Some(given) = settings.given.get(name) {
             if !(given.value >= low && given.value <= high) {
-                return Err(FitError::GivenOutside { name: name.to_owned(), value: given.value, lower: low, upper: high });
+                return Err(FitError::GivenOutside {
+                    name: name.to_owned(),
+                    value: given.value,
+                    lower: low,
+                    upper: high,
+                });
             }
             if given.err > 0.0 {
                 joint.prior = Some(*given);
@@ -167,13 +189,18 @@ impl Layout {
     /// Position of a parameter by name.
     #[must_use]
     pub fn position(&self, name: &str) -> Option<usize> {
-        self.parameters.iter().position(|parameter| parameter.name == name)
+        self.parameters
+            .iter()
+            .position(|parameter| parameter.name == name)
     }
 
     /// The model and local parameters of the thick line.
     #[must_use]
     pub fn thick(&self, joint: &[f64]) -> (Model, Vec<f64>) {
-        (self.thick.0, self.thick.1.iter().map(|index| joint[*index]).collect())
+        (
+            self.thick.0,
+            self.thick.1.iter().map(|index| joint[*index]).collect(),
+        )
     }
 
     /// The model and local parameters of the thin line.
@@ -216,7 +243,13 @@ impl<'a> JointProblem<'a> {
             .filter_map(|(index, parameter)| Some((index, parameter.prior?)))
             .collect();
         let most = thin.len().max(thick.map_or(0, Channels::len));
-        Self { layout, thick, thin, priors, scratch: vec![0.0; most * Model::MOST_PARAMETERS] }
+        Self {
+            layout,
+            thick,
+            thin,
+            priors,
+            scratch: vec![0.0; most * Model::MOST_PARAMETERS],
+        }
     }
 }
 
@@ -248,7 +281,12 @@ impl LeastSquares for JointProblem<'_> {
         self.thin.len() + self.thick.map_or(0, Channels::len) + self.priors.len()
     }
 
-    fn evaluate(&mut self, parameters: &[f64], residuals: &mut [f64], mut jacobian: Option<&mut [f64]>) {
+    fn evaluate(
+        &mut self,
+        parameters: &[f64],
+        residuals: &mut [f64],
+        mut jacobian: Option<&mut [f64]>,
+    ) {
         let layout = self.layout;
         let rows = residuals.len();
         if let Some(jacobian) = jacobian.as_deref_mut() {
@@ -270,7 +308,10 @@ impl LeastSquares for JointProblem<'_> {
                 wanted.then_some(&mut *scratch),
             );
             if let Some(jacobian) = jacobian.as_deref_mut() {
-                let targets = map.iter().enumerate().map(|(column, target)| (column, *target, 1.0));
+                let targets = map
+                    .iter()
+                    .enumerate()
+                    .map(|(column, target)| (column, *target, 1.0));
                 scatter(scratch, thick.len(), targets, jacobian, rows, 0);
             }
             first = thick.len();
@@ -287,7 +328,9 @@ impl LeastSquares for JointProblem<'_> {
             wanted.then_some(&mut *scratch),
         );
         if let Some(jacobian) = jacobian.as_deref_mut() {
-            let linked = layout.link.map(|(tau, ratio)| (2.0 / parameters[ratio], parameters[tau], ratio));
+            let linked = layout
+                .link
+                .map(|(tau, ratio)| (2.0 / parameters[ratio], parameters[tau], ratio));
             let targets = map.iter().enumerate().map(|(column, target)| {
                 let factor = match linked {
                     Some((by_tau, _, _)) if column == 2 => by_tau,
@@ -298,7 +341,14 @@ impl LeastSquares for JointProblem<'_> {
             scatter(scratch, channels, targets, jacobian, rows, first);
             if let Some((by_tau, tau, ratio)) = linked {
                 let by_ratio = -by_tau * tau / parameters[ratio];
-                scatter(scratch, channels, std::iter::once((2, ratio, by_ratio)), jacobian, rows, first);
+                scatter(
+                    scratch,
+                    channels,
+                    std::iter::once((2, ratio, by_ratio)),
+                    jacobian,
+                    rows,
+                    first,
+                );
             }
         }
         for (offset, (index, prior)) in self.priors.iter().enumerate() {

@@ -3,9 +3,9 @@
 
 use super::channels::Channels;
 use super::joint::Layout;
-use crate::measure::ThinLine;
-use crate::model::{Model, Sampling, basis, temperatures};
 use crate::constants::FWHM_PER_SIGMA;
+use crate::measure::ThinLine;
+use crate::model::{LineShape, Model, Sampling, basis, temperatures};
 
 /// Centre and dispersion that a search may begin with, km/s.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -21,9 +21,12 @@ pub(super) fn kinematics(thin_line: Option<&ThinLine>, thick: Kinematics) -> Vec
         Some(thin) => {
             let v_km_s = thin.v_km_s.value;
             let sigma = thin.fwhm_km_s.value / FWHM_PER_SIGMA;
-            [1.0, 0.75]
+            [1.0, 0.7, 0.45]
                 .into_iter()
-                .map(|factor| Kinematics { v_km_s, sigma_km_s: factor * sigma })
+                .map(|factor| Kinematics {
+                    v_km_s,
+                    sigma_km_s: factor * sigma,
+                })
                 .collect()
         }
         None => [-0.4, 0.0, 0.4]
@@ -38,11 +41,13 @@ pub(super) fn kinematics(thin_line: Option<&ThinLine>, thick: Kinematics) -> Vec
     }
 }
 
-const INWARD_SPEEDS: [f64; 12] = [-1.8, -1.2, -0.8, -0.5, -0.25, -0.08, 0.08, 0.25, 0.5, 0.8, 1.2, 1.8];
+const INWARD_SPEEDS: [f64; 12] = [
+    -1.8, -1.2, -0.8, -0.5, -0.25, -0.08, 0.08, 0.25, 0.5, 0.8, 1.2, 1.8,
+];
 const OPTICAL_DEPTHS: [f64; 6] = [0.5, 1.5, 4.0, 10.0, 30.0, 80.0];
 
 /// Candidates of each sign of the inward speed that are polished.
-const POLISHED: usize = 3;
+const POLISHED: usize = 4;
 
 /// A start with the chi2 that its candidate reached.
 struct Candidate {
@@ -65,15 +70,22 @@ pub(super) fn starts(
         match model {
             Model::Gaussian | Model::Layer => {
                 for sigma_factor in [0.8, 1.0, 1.5, 2.2] {
-                    let widened = Kinematics { sigma_km_s: sigma_factor * kinematics.sigma_km_s, ..*kinematics };
+                    let widened = Kinematics {
+                        sigma_km_s: sigma_factor * kinematics.sigma_km_s,
+                        ..*kinematics
+                    };
                     let (chi2, peak) = scan.gaussian(widened);
-                    let parameters = layout_start(layout, thin, widened, thin_peak, |name| match name {
-                        "peak_k" => Some(peak),
-                        "tau_total" => Some(2.0),
-                        "t_ex_k" => Some(thick.line().radiation.inverse(thick.line().radiation.background() + 1.2 * peak.max(0.1))),
-                        _ => None,
+                    let parameters =
+                        layout_start(layout, thin, widened, thin_peak, |name| match name {
+                            "peak_k" => Some(peak),
+                            "tau_total" => Some(2.0),
+                            "t_ex_k" => Some(excitation_k(thick.line(), 2.0, peak.max(0.1))),
+                            _ => None,
+                        });
+                    candidates.push(Candidate {
+                        chi2: chi2 + thin_chi2,
+                        parameters,
                     });
-                    candidates.push(Candidate { chi2: chi2 + thin_chi2, parameters });
                 }
             }
             Model::TwoGaussians => {
@@ -82,18 +94,30 @@ pub(super) fn starts(
                         for factor in [0.5, 0.9] {
                             let sigma = factor * kinematics.sigma_km_s;
                             let (one, two) = (
-                                Kinematics { v_km_s: kinematics.v_km_s + first * kinematics.sigma_km_s, sigma_km_s: sigma },
-                                Kinematics { v_km_s: kinematics.v_km_s + second * kinematics.sigma_km_s, sigma_km_s: sigma },
+                                Kinematics {
+                                    v_km_s: kinematics.v_km_s + first * kinematics.sigma_km_s,
+                                    sigma_km_s: sigma,
+                                },
+                                Kinematics {
+                                    v_km_s: kinematics.v_km_s + second * kinematics.sigma_km_s,
+                                    sigma_km_s: sigma,
+                                },
                             );
                             let (chi2, peaks) = scan.two_gaussians(one, two);
-                            let parameters = layout_start(layout, thin, one, 0.5 * thin_peak, |name| match name {
-                                "peak_k" => Some(peaks.0),
-                                "peak_second_k" => Some(peaks.1),
-                                "peak_second_thin_k" => Some(0.5 * thin_peak),
-                                "v_second_km_s" | "v_second_thin_km_s" => Some(two.v_km_s),
-                                "sigma_second_km_s" | "sigma_second_thin_km_s" => Some(sigma),
-                                _ => None,
-                            });
+                            let parameters = layout_start(
+                                layout,
+                                thin,
+                                one,
+                                0.5 * thin_peak,
+                                |name| match name {
+                                    "peak_k" => Some(peaks.0),
+                                    "peak_second_k" => Some(peaks.1),
+                                    "peak_second_thin_k" => Some(0.5 * thin_peak),
+                                    "v_second_km_s" | "v_second_thin_km_s" => Some(two.v_km_s),
+                                    "sigma_second_km_s" | "sigma_second_thin_km_s" => Some(sigma),
+                                    _ => None,
+                                },
+                            );
                             candidates.push(Candidate { chi2, parameters });
                         }
                     }
@@ -106,38 +130,83 @@ pub(super) fn starts(
                         let v_in = speed * kinematics.sigma_km_s;
                         let (chi2, a, b) = scan.slab(model, *kinematics, v_in, tau, source);
                         let (fifth, sixth) = temperatures(model, thick.line(), a, b, source);
-                        let parameters = layout_start(layout, thin, *kinematics, thin_peak, |name| match name {
-                            "v_in_km_s" => Some(v_in),
-                            "tau" => Some(tau),
-                            "t_front_k" | "t_peak_k" => Some(fifth),
-                            "t_rear_k" | "t_surface_k" => Some(sixth),
-                            "filling" => Some(source.0),
-                            "t_continuum_k" => Some(source.1),
-                            _ => None,
+                        let parameters =
+                            layout_start(layout, thin, *kinematics, thin_peak, |name| match name {
+                                "v_in_km_s" => Some(v_in),
+                                "tau" => Some(tau),
+                                "t_front_k" | "t_peak_k" => Some(fifth),
+                                "t_rear_k" | "t_surface_k" => Some(sixth),
+                                "filling" => Some(source.0),
+                                "t_continuum_k" => Some(source.1),
+                                _ => None,
+                            });
+                        candidates.push(Candidate {
+                            chi2: chi2 + thin_chi2,
+                            parameters,
                         });
-                        candidates.push(Candidate { chi2: chi2 + thin_chi2, parameters });
                     }
                 }
             }
         }
     }
     candidates.sort_by(|one, other| one.chi2.total_cmp(&other.chi2));
-    let v_in = layout.position("v_in_km_s");
-    let positive = |candidate: &Candidate| v_in.is_some_and(|index| candidate.parameters[index] > 0.0);
-    let (infall, other): (Vec<Candidate>, Vec<Candidate>) = candidates.into_iter().partition(positive);
-    let mut kept: Vec<Candidate> =
-        infall.into_iter().take(POLISHED).chain(other.into_iter().take(POLISHED)).collect();
-    kept.sort_by(|one, other| one.chi2.total_cmp(&other.chi2));
-    kept.into_iter().map(|candidate| candidate.parameters).collect()
+    distinct(candidates, layout)
 }
+
+/// The best candidates that differ: neighbours of a better one would end in the same minimum. Both
+/// signs of the inward speed are kept.
+fn distinct(sorted: Vec<Candidate>, layout: &Layout) -> Vec<Vec<f64>> {
+    let position = |name: &str| layout.position(name);
+    let (sigma, v_in, tau) = (
+        position("sigma_km_s"),
+        position("v_in_km_s"),
+        position("tau"),
+    );
+    let value = |candidate: &Candidate, index: Option<usize>| {
+        index.map_or(1.0, |index| candidate.parameters[index])
+    };
+    let same_sign =
+        |one: &Candidate, other: &Candidate| (value(one, v_in) > 0.0) == (value(other, v_in) > 0.0);
+    let near = |one: &Candidate, other: &Candidate| {
+        let scale = value(one, sigma).max(value(other, sigma));
+        same_sign(one, other)
+            && (value(one, v_in) - value(other, v_in)).abs() < NEAR_SPEED * scale
+            && (value(one, tau) / value(other, tau)).ln().abs() < NEAR_LOG
+            && (value(one, sigma) / value(other, sigma)).ln().abs() < NEAR_LOG_SIGMA
+    };
+    let mut kept: Vec<Candidate> = Vec::new();
+    for candidate in sorted {
+        let of_its_sign = kept
+            .iter()
+            .filter(|other| same_sign(&candidate, other))
+            .count();
+        if of_its_sign < POLISHED
+            && !(v_in.is_some() && kept.iter().any(|other| near(&candidate, other)))
+        {
+            kept.push(candidate);
+        }
+    }
+    kept.into_iter()
+        .map(|candidate| candidate.parameters)
+        .collect()
+}
+
+/// Candidates closer than this in `v_in`/sigma, ln tau and ln sigma are neighbours.
+const NEAR_SPEED: f64 = 0.45;
+const NEAR_LOG: f64 = 1.3;
+const NEAR_LOG_SIGMA: f64 = 0.5;
 
 /// Filling and temperature of the continuum source, as held or given; a weak one otherwise.
 fn source(layout: &Layout) -> (f64, f64) {
     let given = |name: &str, otherwise: f64| {
         layout.position(name).map_or(otherwise, |index| {
             let parameter = &layout.parameters()[index];
-            let held = parameter.interval.is_fixed().then_some(parameter.interval.lower);
-            held.or(parameter.prior.map(|prior| prior.value)).unwrap_or(otherwise)
+            let held = parameter
+                .interval
+                .is_fixed()
+                .then_some(parameter.interval.lower);
+            held.or(parameter.prior.map(|prior| prior.value))
+                .unwrap_or(otherwise)
         })
     };
     (given("filling", 0.1), given("t_continuum_k", 50.0))
@@ -145,7 +214,7 @@ fn source(layout: &Layout) -> (f64, f64) {
 
 /// Joint parameters: the model's own from `own`, shared and thin ones from the kinematics and the
 /// thin line's peak, all moved inside their intervals.
-fn layout_start(
+pub(super) fn layout_start(
     layout: &Layout,
     thin: &Channels,
     kinematics: Kinematics,
@@ -153,18 +222,18 @@ fn layout_start(
     own: impl Fn(&str) -> Option<f64>,
 ) -> Vec<f64> {
     const THIN_TAU: f64 = 0.5;
-    let radiation = &thin.line().radiation;
     let ratio = layout
         .position("isotope_ratio")
         .map(|index| &layout.parameters()[index])
         .map_or(50.0, |parameter| {
-            parameter.prior.map_or(parameter.interval.nearest(50.0), |prior| prior.value)
+            parameter
+                .prior
+                .map_or(parameter.interval.nearest(50.0), |prior| prior.value)
         });
     let thin_tau = match (layout.position("isotope_ratio"), own("tau")) {
         (Some(_), Some(tau)) => 2.0 * tau / ratio,
         _ => THIN_TAU,
     };
-    let strongest = thin.line().components.iter().map(|component| component.weight).fold(0.0, f64::max);
     layout
         .parameters()
         .iter()
@@ -174,20 +243,34 @@ fn layout_start(
                 "sigma_km_s" | "sigma_thin_km_s" => kinematics.sigma_km_s,
                 "tau_thin" => THIN_TAU,
                 "isotope_ratio" => ratio,
-                "t_ex_thin_k" => {
-                    let absorbed = -(-thin_tau * strongest).exp_m1();
-                    radiation.inverse(radiation.background() + thin_peak_k.max(0.0) / absorbed)
-                }
+                "t_ex_thin_k" => excitation_k(thin.line(), thin_tau, thin_peak_k),
                 _ => thin_peak_k,
             });
-            let value = if let Some(prior) = parameter.prior { prior.value } else { value };
+            let value = if let Some(prior) = parameter.prior {
+                prior.value
+            } else {
+                value
+            };
             parameter.interval.nearest(value)
         })
         .collect()
 }
 
+/// Excitation temperature of a layer of total optical depth `tau` whose strongest component is
+/// `peak_k` high.
+pub(super) fn excitation_k(line: &LineShape, tau: f64, peak_k: f64) -> f64 {
+    let strongest = line
+        .components
+        .iter()
+        .map(|component| component.weight)
+        .fold(0.0, f64::max);
+    let absorbed = -(-tau * strongest).exp_m1();
+    line.radiation
+        .inverse(line.radiation.background() + peak_k.max(0.0) / absorbed)
+}
+
 /// Scratch columns for the linear solutions.
-struct Scan<'a> {
+pub(super) struct Scan<'a> {
     thick: &'a Channels,
     thin: &'a Channels,
     first: Vec<f64>,
@@ -199,13 +282,18 @@ fn dot(one: &[f64], other: &[f64]) -> f64 {
 }
 
 impl<'a> Scan<'a> {
-    fn new(thick: &'a Channels, thin: &'a Channels) -> Self {
+    pub(super) fn new(thick: &'a Channels, thin: &'a Channels) -> Self {
         let most = thick.len().max(thin.len());
-        Self { thick, thin, first: vec![0.0; most], second: vec![0.0; most] }
+        Self {
+            thick,
+            thin,
+            first: vec![0.0; most],
+            second: vec![0.0; most],
+        }
     }
 
     /// chi2 of the thin line with the best amplitude, and that amplitude.
-    fn thin(&mut self, kinematics: Kinematics) -> (f64, f64) {
+    pub(super) fn thin(&mut self, kinematics: Kinematics) -> (f64, f64) {
         one_gaussian(self.thin, kinematics, &mut self.first)
     }
 
@@ -219,17 +307,35 @@ impl<'a> Scan<'a> {
         let channels = self.thick.len();
         unit_gaussian(self.thick, one, &mut self.first[..channels]);
         unit_gaussian(self.thick, two, &mut self.second[..channels]);
-        let solution = Amplitudes::of(self.thick, &self.first[..channels], &self.second[..channels]);
+        let solution = Amplitudes::of(
+            self.thick,
+            &self.first[..channels],
+            &self.second[..channels],
+        );
         let (a, b) = solution.non_negative();
         (solution.chi2(a, b), (a, b))
     }
 
     /// chi2 of the thick line's slab with the best amplitudes that temperatures allow, and those.
-    fn slab(&mut self, model: Model, kinematics: Kinematics, v_in: f64, tau: f64, source: (f64, f64)) -> (f64, f64, f64) {
+    fn slab(
+        &mut self,
+        model: Model,
+        kinematics: Kinematics,
+        v_in: f64,
+        tau: f64,
+        source: (f64, f64),
+    ) -> (f64, f64, f64) {
         let channels = self.thick.len();
         let (first, second) = (&mut self.first[..channels], &mut self.second[..channels]);
         let line = self.thick.line();
-        basis(model, line, self.thick.sampling(), [kinematics.v_km_s, kinematics.sigma_km_s, v_in, tau], first, second);
+        basis(
+            model,
+            line,
+            self.thick.sampling(),
+            [kinematics.v_km_s, kinematics.sigma_km_s, v_in, tau],
+            first,
+            second,
+        );
         self.thick.whiten(first);
         self.thick.whiten(second);
         let solution = Amplitudes::of(self.thick, first, second);
@@ -265,7 +371,10 @@ fn one_gaussian(channels: &Channels, kinematics: Kinematics, scratch: &mut [f64]
     if square == 0.0 {
         return (dot(data, data), 0.0);
     }
-    (dot(data, data) - product * product / square, product / square)
+    (
+        dot(data, data) - product * product / square,
+        product / square,
+    )
 }
 
 /// Normal equations of data = a first + b second.
@@ -299,7 +408,11 @@ impl Amplitudes {
     }
 
     fn first_alone(&self) -> f64 {
-        if self.first > 0.0 { self.by_first / self.first } else { 0.0 }
+        if self.first > 0.0 {
+            self.by_first / self.first
+        } else {
+            0.0
+        }
     }
 
     fn unconstrained(&self) -> Option<(f64, f64)> {
@@ -314,7 +427,11 @@ impl Amplitudes {
 
     fn best(&self, candidates: [(f64, f64); 2]) -> (f64, f64) {
         let [one, other] = candidates;
-        if self.chi2(one.0, one.1) <= self.chi2(other.0, other.1) { one } else { other }
+        if self.chi2(one.0, one.1) <= self.chi2(other.0, other.1) {
+            one
+        } else {
+            other
+        }
     }
 
     /// The best a, b >= 0.
@@ -322,27 +439,51 @@ impl Amplitudes {
         if let Some((a, b)) = self.unconstrained().filter(|(a, b)| *a >= 0.0 && *b >= 0.0) {
             return (a, b);
         }
-        let second_alone = if self.second > 0.0 { self.by_second / self.second } else { 0.0 };
-        self.best([(self.first_alone().max(0.0), 0.0), (0.0, second_alone.max(0.0))])
+        let second_alone = if self.second > 0.0 {
+            self.by_second / self.second
+        } else {
+            0.0
+        };
+        self.best([
+            (self.first_alone().max(0.0), 0.0),
+            (0.0, second_alone.max(0.0)),
+        ])
     }
 
     /// The best b >= 0 and a + b >= `least` (`least` <= 0).
     fn with_sum_above(&self, least: f64) -> (f64, f64) {
-        if let Some((a, b)) = self.unconstrained().filter(|(a, b)| *b >= 0.0 && a + b >= least) {
+        if let Some((a, b)) = self
+            .unconstrained()
+            .filter(|(a, b)| *b >= 0.0 && a + b >= least)
+        {
             return (a, b);
         }
         // on the edge a = least - b
         let square = self.first - 2.0 * self.both + self.second;
         let product = self.by_second - self.by_first + least * (self.first - self.both);
-        let b = if square > 0.0 { (product / square).max(0.0) } else { 0.0 };
+        let b = if square > 0.0 {
+            (product / square).max(0.0)
+        } else {
+            0.0
+        };
         self.best([(self.first_alone().max(least), 0.0), (least - b, b)])
     }
 }
 
 /// Centroid and dispersion of the intensity above zero inside a window of a line's channels.
-pub(super) fn intensity_moments(sampling: &Sampling, temperature_k: &[f64], low: f64, high: f64) -> Kinematics {
+pub(super) fn intensity_moments(
+    sampling: &Sampling,
+    temperature_k: &[f64],
+    low: f64,
+    high: f64,
+) -> Kinematics {
     let mut sums = [0.0; 3];
-    for ((v, width), t) in sampling.velocity_km_s().iter().zip(sampling.width_km_s()).zip(temperature_k) {
+    for ((v, width), t) in sampling
+        .velocity_km_s()
+        .iter()
+        .zip(sampling.width_km_s())
+        .zip(temperature_k)
+    {
         if *v >= low && *v <= high && *t > 0.0 {
             let weight = t * width;
             sums[0] += weight;
@@ -351,9 +492,15 @@ pub(super) fn intensity_moments(sampling: &Sampling, temperature_k: &[f64], low:
         }
     }
     if sums[0] <= 0.0 {
-        return Kinematics { v_km_s: 0.5 * (low + high), sigma_km_s: 0.15 * (high - low) };
+        return Kinematics {
+            v_km_s: 0.5 * (low + high),
+            sigma_km_s: 0.15 * (high - low),
+        };
     }
     let mean = sums[1] / sums[0];
     let variance = (sums[2] / sums[0] - mean * mean).max((0.02 * (high - low)).powi(2));
-    Kinematics { v_km_s: mean, sigma_km_s: variance.sqrt() }
+    Kinematics {
+        v_km_s: mean,
+        sigma_km_s: variance.sqrt(),
+    }
 }

@@ -12,8 +12,8 @@ pub use rebin::rebin;
 
 use crate::line::Component;
 use crate::numeric::Autoregression;
-use crate::spectrum::{Noise, Spectrum, SpectrumError, Window};
 use crate::numeric::robust::clipped_scale;
+use crate::spectrum::{Noise, Spectrum, SpectrumError, Window};
 use baseline::{CORE_CLIP, Channels, Clipped, clipped_fit, robust_start};
 use regions::{Boxes, Region};
 
@@ -456,8 +456,7 @@ impl Search<'_> {
     fn run(&self) -> Result<Found, PrepareError> {
         let channels = self.channels;
         let count = channels.len();
-        let mut fit =
-            robust_start(channels, self.order).ok_or_else(|| self.too_few(count))?;
+        let mut fit = robust_start(channels, self.order).ok_or_else(|| self.too_few(count))?;
         let mut excluded = vec![false; count];
         let mut line: Option<Region> = None;
         let mut round = 0;
@@ -471,7 +470,19 @@ impl Search<'_> {
             };
             let boxes = self.boxes(&fit, scale, &process);
             let (next_line, window, next, significance) = self.exclude(&boxes);
-            if std::env::var("DBG").is_ok() { eprintln!("round {round} scale {scale:.4} fit.scale {:.4} kept {} order {} p0 {:.2} line {next_line:?} nfree {}", fit.scale, fit.kept.len(), process.order(), process.power_at_zero(), next.iter().filter(|&&x|!x).count()); for r in boxes.regions(4.5,None){eprintln!("   {r:?}");} }
+            if std::env::var("DBG").is_ok() {
+                eprintln!(
+                    "round {round} scale {scale:.4} fit.scale {:.4} kept {} order {} p0 {:.2} line {next_line:?} nfree {}",
+                    fit.scale,
+                    fit.kept.len(),
+                    process.order(),
+                    process.power_at_zero(),
+                    next.iter().filter(|&&x| !x).count()
+                );
+                for r in boxes.regions(4.5, None) {
+                    eprintln!("   {r:?}");
+                }
+            }
             let free: Vec<usize> = (0..count).filter(|&i| !next[i]).collect();
             if free.len() < self.needed {
                 return Err(self.too_few(free.len()));
@@ -534,10 +545,7 @@ impl Search<'_> {
         let process = self.process(&residuals, scale, excluded);
         let terms = self.order + 1;
         let process = process.before_subtraction(terms, free.len());
-        (
-            corrected_scale(scale, terms, free.len(), &process),
-            process,
-        )
+        (corrected_scale(scale, terms, free.len(), &process), process)
     }
 
     fn boxes(&self, fit: &Clipped, scale: f64, process: &Autoregression) -> Boxes {

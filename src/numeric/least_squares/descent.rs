@@ -171,7 +171,8 @@ impl Descent {
             return Some(Termination::Gradient);
         }
         let full = self.solve(UNDAMPED, bounds, workspace);
-        let ended = self.small_enough(&full, settings);
+        let beyond = self.unbounded_step(bounds, workspace);
+        let ended = self.small_enough(&beyond, settings);
         if ended.is_some() {
             return ended;
         }
@@ -191,7 +192,7 @@ impl Descent {
         self.update_radius(&step, kept);
         if kept {
             self.update_scale();
-        } else if step.decrease <= RESOLUTION * self.chi2 {
+        } else if step.decrease > 0.0 && step.decrease <= RESOLUTION * self.chi2 {
             let hidden = promise <= ROUNDING * self.chi2;
             return Some(if hidden {
                 Termination::Rounding
@@ -375,6 +376,23 @@ impl Descent {
         }
         self.damping = high;
         self.solve(high, bounds, workspace)
+    }
+
+    fn unbounded_step(&mut self, bounds: &[Interval], workspace: &mut Workspace) -> Step {
+        let mut step = Step {
+            shift: [0.0; MAX_PARAMETERS],
+            held: [Held::Free; MAX_PARAMETERS],
+            decrease: 0.0,
+        };
+        for j in 0..self.columns {
+            if self.is_pressed(j, bounds) {
+                step.held[j] = Held::At(self.parameters[j]);
+            }
+        }
+        self.linear
+            .solve(UNDAMPED, &self.scale, &mut step, workspace, self.rows);
+        step.decrease = self.linear.decrease(&step.shift);
+        step
     }
 
     /// The damped Gauss-Newton step inside the box.

@@ -1,0 +1,236 @@
+//! The thin line alone: the velocity and width that asymmetries are measured against.
+
+use super::channels::Channels;
+use super::joint::Layout;
+use super::starts::{self, Kinematics};
+use super::{Averaging, FitError, FitSettings, FittedParameter, fitted, search};
+use crate::constants::FWHM_PER_SIGMA;
+use crate::line::Line;
+use crate::measure::ThinLine;
+use crate::model::{LineShape, Model, Sampling};
+use crate::numeric::Estimate;
+use crate::numeric::least_squares::{Interval, Minimum, Termination, Workspace};
+use crate::prepare::Prepared;
+
+/// Height over its formal error from which the thin line counts as detected.
+const DETECTION: f64 = 5.0;
+
+/// The fit of the thin line alone.
+#[derive(Clone, Debug, PartialEq)]
+pub struct ThinFit {
+    /// Model: a Gaussian, or a layer where the line is a multiplet.
+    pub model: Model,
+    /// Parameters at the best minimum.
+    pub parameters: Vec<FittedParameter>,
+    /// chi2 over the channels that count.
+    pub chi2: f64,
+    /// Channels less free parameters.
+    pub degrees_of_freedom: usize,
+    /// Why the search ended.
+    pub termination: Termination,
+    /// Height over its error.
+    pub significance: f64,
+    /// Velocity, width and height where the line is detected (5 standard errors).
+    pub line: Option<ThinLine>,
+}
+
+/// Fits the thin line alone: a Gaussian, or a layer with its multiplet.
+///
+/// # Errors
+///
+/// [`FitError`] where there are fewer channels than parameters.
+pub fn fit_thin(thin: &Prepared, line: &Line, settings: &FitSettings) -> Result<ThinFit, FitError> {
+    let model = if line.components.len() > 1 {
+        Model::Layer
+    } else {
+        Model::Gaussian
+    };
+    let shape = LineShape::new(line.rest_frequency_ghz, line.components.clone());
+    let margin = thin.window.high_km_s - thin.window.low_km_s;
+    let mut range = thin.window;
+    range.low_km_s -= margin;
+    range.high_km_s += margin;
+    let spectrum = &thin.spectrum;
+    let everywhere = Sampling::new(
+        spectrum.velocity_km_s().to_vec(),
+        spectrum.width_km_s().to_vec(),
+        1,
+    );
+    let intensity = starts::intensity_moments(
+        &everywhere,
+        spectrum.temperature_k(),
+        thin.window.low_km_s,
+        thin.window.high_km_s,
+    );
+    let narrowest = 0.7 * intensity.sigma_km_s;
+    let channels = Channels::new(thin, shape, Some(range), settings.averaging, narrowest);
+    let reach = Interval::new(range.low_km_s, range.high_km_s);
+    let plain = FitSettings {
+        averaging: Averaging::Channel,
+        ..FitSettings::default()
+    };
+    let layout = Layout::thin_alone(model, &plain, reach)?;
+    if channels.len() <= layout.parameters().len() {
+        return Err(FitError::TooFewChannels {
+            channels: channels.len(),
+            parameters: layout.parameters().len(),
+            model: model.name(),
+        });
+    }
+    let mut best: Option<Minimum> = None;
+    let mut workspace = Workspace::new();
+    for start in thin_starts(&layout, &channels, intensity, thin) {
+        let minimum;
+        (minimum, workspace) = search(&layout, None, &channels, &start, workspace)?;
+        if best.as_ref().is_none_or(|best| minimum.chi2 < best.chi2) {
+            best = Some(minimum);
+        }
+    }
+    let best = best.ok_or_else(|| FitError::Search("no start for the thin line".to_owned()))?;
+    let peak = peak(model, &channels, &best);
+    let significance = peak.map_or(0.0, |peak| peak.value / peak.err);
+    let line = peak
+        .filter(|_| significance >= DETECTION)
+        .and_then(|peak_k| {
+            let covariance = best.covariance().ok()?;
+            let sigma = best.parameters[1];
+            Some(ThinLine {
+                v_km_s: Estimate {
+                    value: best.parameters[0],
+                    err: covariance.standard_error(0)?,
+                },
+                fwhm_km_s: Estimate {
+                    value: FWHM_PER_SIGMA * sigma,
+                    err: FWHM_PER_SIGMA * covariance.standard_error(1)?,
+                },
+                covariance_v_fwhm: FWHM_PER_SIGMA * covariance.get(0, 1)?,
+                peak_k,
+            })
+        });
+    Ok(ThinFit {
+        model,
+        parameters: fitted(&layout, &best),
+        chi2: best.chi2,
+        degrees_of_freedom: best.degrees_of_freedom(),
+        termination: best.termination,
+        significance,
+        line,
+    })
+}
+
+/// Starts over the window's velocities and a few widths, the best four by their linear amplitude.
+fn thin_starts(
+    layout: &Layout,
+    channels: &Channels,
+    intensity: Kinematics,
+    thin: &Prepared,
+) -> Vec<Vec<f64>> {
+    let window = thin.window;
+    let width = window.high_km_s - window.low_km_s;
+    let mut candidates = Vec::new();
+    let mut scan = starts::Scan::new(channels, channels);
+    let centres = (0..=40)
+        .map(|step| window.low_km_s + width * f64::from(step) / 40.0)
+        .chain(std::iter::once(intensity.v_km_s));
+    for v_km_s in centres {
+        for sigma_km_s in [0.05 * width, 0.1 * width, 0.2 * width, intensity.sigma_km_s] {
+            let (chi2, peak) = scan.thin(Kinematics { v_km_s, sigma_km_s });
+            if peak > 0.0 {
+                candidates.push((chi2, v_km_s, sigma_km_s, peak));
+            }
+        }
+    }
+    candidates.sort_by(|a, b| a.0.total_cmp(&b.0));
+    candidates.truncate(4);
+    if candidates.is_empty() {
+        candidates.push((
+            0.0,
+            intensity.v_km_s,
+            intensity.sigma_km_s,
+            thin.noise.rms_k,
+        ));
+    }
+    candidates
+        .into_iter()
+        .map(|(_, v_km_s, sigma_km_s, peak)| {
+            starts::layout_start(
+                layout,
+                channels,
+                Kinematics { v_km_s, sigma_km_s },
+                peak,
+                |name| match name {
+                    "peak_k" => Some(peak),
+                    "tau_total" => Some(1.0),
+                    "t_ex_k" => Some(starts::excitation_k(channels.line(), 1.0, peak)),
+                    _ => None,
+                },
+            )
+        })
+        .collect()
+}
+
+/// Height of the line (of the brightest point of a multiplet) with its formal error, K.
+///
+/// A layer's height is (J(T_ex) - J(T_bg))(1 - e^-tau): its error follows from that of both, which are
+/// strongly correlated for a thin line.
+fn peak(model: Model, channels: &Channels, minimum: &Minimum) -> Option<Estimate> {
+    let covariance = minimum.covariance().ok();
+    if model == Model::Gaussian {
+        return Some(Estimate {
+            value: minimum.parameters[2],
+            err: covariance?.standard_error(2)?,
+        });
+    }
+    let line = channels.line();
+    let reference = line
+        .components
+        .iter()
+        .max_by(|a, b| a.weight.total_cmp(&b.weight))?;
+    let at = Sampling::at(vec![minimum.parameters[0] + reference.offset_km_s]);
+    let mut value = [0.0];
+    let mut jacobian = [0.0; 4];
+    model.evaluate(
+        line,
+        &at,
+        &minimum.parameters,
+        &mut value,
+        Some(&mut jacobian),
+    );
+    let variance = match covariance {
+        Some(covariance) => (0..4)
+            .flat_map(|i| (0..4).map(move |j| (i, j)))
+            .map(|(i, j)| jacobian[i] * jacobian[j] * covariance.get(i, j).unwrap_or(0.0))
+            .sum::<f64>(),
+        // tau and T_ex of a thin line cannot be told apart: the height alone still can
+        None => return linear_peak(channels, minimum),
+    };
+    Some(Estimate {
+        value: value[0],
+        err: variance.sqrt(),
+    })
+    .filter(|peak| peak.err > 0.0)
+}
+
+/// The height with centre and width held.
+fn linear_peak(channels: &Channels, minimum: &Minimum) -> Option<Estimate> {
+    let mut column = vec![0.0; channels.len()];
+    let held = [minimum.parameters[0], minimum.parameters[1], 1.0];
+    Model::Gaussian.evaluate(
+        channels.line(),
+        channels.sampling(),
+        &held,
+        &mut column,
+        None,
+    );
+    channels.whiten(&mut column);
+    let square: f64 = column.iter().map(|value| value * value).sum();
+    let product: f64 = column
+        .iter()
+        .zip(channels.whitened_data())
+        .map(|(a, b)| a * b)
+        .sum();
+    (square > 0.0).then(|| Estimate {
+        value: product / square,
+        err: 1.0 / square.sqrt(),
+    })
+}
