@@ -15,6 +15,17 @@ pub enum AxisKind {
     RadialVelocity,
 }
 
+impl std::fmt::Display for AxisKind {
+    fn fmt(&self, formatter: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        formatter.write_str(match self {
+            AxisKind::Frequency => "frequency",
+            AxisKind::RadioVelocity => "radio-convention velocity",
+            AxisKind::OpticalVelocity => "optical-convention velocity",
+            AxisKind::RadialVelocity => "apparent radial (relativistic) velocity",
+        })
+    }
+}
+
 /// Frame of rest of the spectral axis (FITS standard 4.0, table 27 names).
 #[derive(Clone, Debug, PartialEq, Eq)]
 pub enum Frame {
@@ -22,6 +33,17 @@ pub enum Frame {
     Lsrk,
     /// Any other frame, by the name that the file gives it.
     Other(String),
+}
+
+impl Frame {
+    /// The frame that a file names; `LSRK`, and `LSR` as older files write it, are the kinematic
+    /// one.
+    pub fn from_name(name: &str) -> Self {
+        match name.trim().to_ascii_uppercase().as_str() {
+            "LSRK" | "LSR" => Frame::Lsrk,
+            _ => Frame::Other(name.trim().to_string()),
+        }
+    }
 }
 
 /// Unit and scale of the values.
@@ -60,6 +82,9 @@ pub struct Origin {
 pub struct RawSpectrum {
     /// What the axis counts.
     pub axis_kind: AxisKind,
+    /// Whether the file states the velocity convention; where not, [`RawSpectrum::axis_kind`] is
+    /// what the format's rules take it for.
+    pub convention_stated: bool,
     /// Axis values at channel centres, Hz or m/s, in file order (ascending or descending).
     pub axis: Vec<f64>,
     /// Values in [`RawSpectrum::unit`] (milli- and other prefixes already applied), `NaN` where blank.
