@@ -1,5 +1,7 @@
 //! Raw spectra into calibrated, baseline-free spectra with a line window and measured noise.
 
+pub mod scale;
+
 use crate::spectrum::{Noise, Spectrum, Window};
 
 /// A spectrum ready to be measured and fitted.
