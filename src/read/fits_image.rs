@@ -61,7 +61,7 @@ fn spectral_axis_number(path: &Path, unit: &Unit<'_>) -> Result<usize, ReadError
     }
 }
 
-/// The axis from the keywords CTYPEn, CRVALn, CDELTn or CDn_n, CRPIXn and CUNITn.
+/// The axis n from the keywords `CTYPEn`, `CRVALn`, `CDELTn` or `CDn_n`, `CRPIXn` and `CUNITn`.
 fn image_axis(
     path: &Path,
     unit: &Unit<'_>,
@@ -78,12 +78,11 @@ fn image_axis(
         return Err(axis_type(path, unit, &name("CTYPE"), &kind));
     }
     let diagonal = format!("CD{number}_{number}");
-    let increment = match unit.number(path, &diagonal)? {
-        Some(increment) => increment,
-        None => {
-            let scale = unit.number(path, &format!("PC{number}_{number}"))?;
-            needed(&name("CDELT"))? * scale.unwrap_or(1.0)
-        }
+    let increment = if let Some(increment) = unit.number(path, &diagonal)? {
+        increment
+    } else {
+        let scale = unit.number(path, &format!("PC{number}_{number}"))?;
+        needed(&name("CDELT"))? * scale.unwrap_or(1.0)
     };
     refuse_rotation(path, unit, number)?;
     let factor = axis_factor(
@@ -101,10 +100,28 @@ fn image_axis(
             Some(rest) => Some(rest),
             None => unit.number(path, "RESTFREQ")?,
         },
-        velocity_reference: unit.header.get_int("VELREF"),
+        velocity_reference: velocity_reference(path, unit, unit.number(path, "VELREF")?)?,
     };
     spectral_axis::decode(channels, &keywords)
         .map_err(|problem| axis_problem(path, unit, &name("CTYPE"), &kind, problem))
+}
+
+/// A VELREF, which is a small whole number.
+pub(super) fn velocity_reference(
+    path: &Path,
+    unit: &Unit<'_>,
+    stated: Option<f64>,
+) -> Result<Option<u16>, ReadError> {
+    let Some(stated) = stated else {
+        return Ok(None);
+    };
+    (0..512_u16)
+        .find(|code| f64::from(*code) == stated)
+        .map(Some)
+        .ok_or_else(|| {
+            let expected = "a whole number from 0 to 511 (1 is LSRK, plus 256 for radio)";
+            unit.wrong_card(path, "VELREF", stated.to_string(), expected)
+        })
 }
 
 /// An axis that turns with another one is none of a single spectrum.

@@ -1,8 +1,8 @@
 //! FITS binary tables: one channel a row, or one spectrum a row in a vector column.
 //!
 //! A keyword of a row's spectrum is looked up as a column of that name first, then as a card of the
-//! header; the axis of a vector column n also as 1CTYPn, 1CRVLn, 1CDLTn, 1CRPXn, 1CUNIn, RFRQna and
-//! SPECna (FITS standard 4.0, section 8.2 and table 22).
+//! header; the axis of a vector column n also as 1CTYPn, 1CRVLn, 1CDLTn, 1CRPXn, 1CUNIn, `RFRQna` and
+//! `SPECna` (FITS standard 4.0, section 8.2 and table 22).
 
 use std::path::Path;
 
@@ -11,7 +11,7 @@ use fitskit::{BinCellValue, BinColumnType, BinTable};
 use super::columns::{self, Column, ColumnChoice, Part};
 use super::error::{Place, ReadError};
 use super::fits::{Unit, base_unit, value_unit, whole};
-use super::fits_image::{axis_factor, axis_problem};
+use super::fits_image::{axis_factor, axis_problem, velocity_reference};
 use super::spectral_axis::{self, Keywords};
 use super::unit::{AxisUnit, ValueUnit, nearest};
 use super::{Draft, ReadOptions, RowChoice};
@@ -25,7 +25,7 @@ struct Table<'u, 'a> {
     path: &'u Path,
     unit: &'u Unit<'a>,
     columns: Vec<Column>,
-    table: BinTable,
+    cells: BinTable,
 }
 
 /// Reads the spectrum of a table.
@@ -97,12 +97,12 @@ impl<'u, 'a> Table<'u, 'a> {
             path,
             unit,
             columns,
-            table,
+            cells: table,
         })
     }
 
     fn rows(&self) -> usize {
-        self.table.nrows
+        self.cells.nrows
     }
 
     fn card(&self, stem: &str, column: usize) -> Place {
@@ -111,7 +111,7 @@ impl<'u, 'a> Table<'u, 'a> {
 
     /// Elements of a column's cell; 1 for text and for what holds no numbers.
     fn elements(&self, column: usize) -> usize {
-        match self.table.columns[column].format {
+        match self.cells.columns[column].format {
             BinColumnType::Byte(n)
             | BinColumnType::I16(n)
             | BinColumnType::J32(n)
@@ -124,7 +124,7 @@ impl<'u, 'a> Table<'u, 'a> {
 
     fn is_variable(&self, column: usize) -> bool {
         matches!(
-            self.table.columns[column].format,
+            self.cells.columns[column].format,
             BinColumnType::VarP(_) | BinColumnType::VarQ(_)
         )
     }
@@ -403,9 +403,11 @@ impl<'u, 'a> Table<'u, 'a> {
             increment: needed("CDELT1", "CDLT")? * factor,
             reference_channel: needed("CRPIX1", "CRPX")?,
             rest_frequency_hz: self.rest_frequency(row, value)?,
-            velocity_reference: self
-                .keyword_number(row, &["VELREF"])?
-                .map(|reference| reference.round() as i64),
+            velocity_reference: velocity_reference(
+                self.path,
+                self.unit,
+                self.keyword_number(row, &["VELREF"])?,
+            )?,
         };
         let axis = spectral_axis::decode(channels, &keywords)
             .map_err(|problem| axis_problem(self.path, self.unit, "CTYPE1", &kind, problem))?;
@@ -483,8 +485,8 @@ impl<'u, 'a> Table<'u, 'a> {
 
     /// A cell of one element as text; none where it is a vector or cannot be shown.
     fn cell_text(&self, row: usize, column: usize) -> Option<String> {
-        if let BinColumnType::Char(_) = self.table.columns[column].format {
-            let bytes = self.table.cell_bytes(row, column).ok()?;
+        if let BinColumnType::Char(_) = self.cells.columns[column].format {
+            let bytes = self.cells.cell_bytes(row, column).ok()?;
             let text = bytes.split(|byte| *byte == 0).next()?;
             return Some(String::from_utf8_lossy(text).trim().to_string());
         }
@@ -497,7 +499,7 @@ impl<'u, 'a> Table<'u, 'a> {
 
     /// The numbers of a cell, scaled by TSCAL and TZERO; `NaN` where an integer is TNULL.
     fn numbers(&self, row: usize, column: usize) -> Result<Vec<f64>, ReadError> {
-        let described = &self.table.columns[column];
+        let described = &self.cells.columns[column];
         let null = self.unit.header.get_int(&format!("TNULL{}", column + 1));
         let scale = |value: f64| described.tzero + described.tscal * value;
         let integer = |value: i64| {
@@ -509,7 +511,7 @@ impl<'u, 'a> Table<'u, 'a> {
         };
         let cell = match described.format {
             BinColumnType::VarP(_) | BinColumnType::VarQ(_) => None,
-            _ => self.table.get_cell(row, column).ok(),
+            _ => self.cells.get_cell(row, column).ok(),
         };
         match cell {
             Some(BinCellValue::Bytes(cell)) => {

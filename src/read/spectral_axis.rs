@@ -24,7 +24,7 @@ pub(super) struct Keywords {
     /// Rest frequency, Hz.
     pub rest_frequency_hz: Option<f64>,
     /// VELREF.
-    pub velocity_reference: Option<i64>,
+    pub velocity_reference: Option<u16>,
 }
 
 /// A decoded axis.
@@ -103,7 +103,7 @@ pub(super) fn decode(channels: usize, keywords: &Keywords) -> Result<SpectralAxi
     })
 }
 
-fn parse_type(text: &str, velocity_reference: Option<i64>) -> Result<Type, AxisProblem> {
+fn parse_type(text: &str, velocity_reference: Option<u16>) -> Result<Type, AxisProblem> {
     let text = text.trim().to_ascii_uppercase();
     let (name, code) = match text.split_once('-') {
         Some((name, code)) => (name.trim_end_matches('-'), code.trim_matches('-')),
@@ -116,8 +116,7 @@ fn parse_type(text: &str, velocity_reference: Option<i64>) -> Result<Type, AxisP
     let (kind, convention_stated) = match name {
         "FREQ" => (AxisKind::Frequency, true),
         "VRAD" => (AxisKind::RadioVelocity, true),
-        "VOPT" => (AxisKind::OpticalVelocity, true),
-        "FELO" => (AxisKind::OpticalVelocity, true),
+        "VOPT" | "FELO" => (AxisKind::OpticalVelocity, true),
         "VELO" if referred_radio => (AxisKind::RadioVelocity, true),
         // Greisen et al. 2006, section 3.5: optical without 256, but only in the older form.
         "VELO" if reference > 0 => (AxisKind::OpticalVelocity, true),
@@ -168,7 +167,7 @@ fn old_frame(code: &str) -> Option<Frame> {
     }
 }
 
-fn frame_of_reference(velocity_reference: i64) -> Option<Frame> {
+fn frame_of_reference(velocity_reference: u16) -> Option<Frame> {
     let name = match velocity_reference % 256 {
         1 => return Some(Frame::Lsrk),
         2 => "BARYCENT",
@@ -222,10 +221,11 @@ impl Algorithm {
     /// S of a channel whose linear offset from the reference is `linear` (Hz or m/s).
     fn value(&self, linear: f64) -> f64 {
         let ratio = ratio_of_variable(self.variable, self.reference + self.slope * linear);
-        if !(ratio > 0.0) {
-            return f64::NAN;
+        if ratio > 0.0 {
+            value_of(self.kind, ratio, self.unit_frequency_hz)
+        } else {
+            f64::NAN
         }
-        value_of(self.kind, ratio, self.unit_frequency_hz)
     }
 }
 

@@ -65,7 +65,7 @@ impl AxisUnit {
                 convention_stated: true,
             });
         }
-        let convention = qualifier.map(|word| word.to_ascii_lowercase());
+        let convention = qualifier.map(str::to_ascii_lowercase);
         let kind = match convention.as_deref() {
             None | Some("radio") => Some(AxisKind::RadioVelocity),
             Some("optical") => Some(AxisKind::OpticalVelocity),
@@ -130,7 +130,7 @@ fn scale_of(word: &str) -> Option<BrightnessUnit> {
     let plain: String = word
         .to_ascii_lowercase()
         .chars()
-        .filter(|letter| letter.is_ascii_alphanumeric())
+        .filter(char::is_ascii_alphanumeric)
         .collect();
     match plain.as_str() {
         "tmb" => Some(BrightnessUnit::MainBeamKelvin),

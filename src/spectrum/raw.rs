@@ -51,7 +51,7 @@ impl Frame {
 pub enum BrightnessUnit {
     /// Main-beam temperature, K.
     MainBeamKelvin,
-    /// Antenna temperature corrected for the atmosphere, T_A*, K.
+    /// Antenna temperature corrected for the atmosphere, `T_A`*, K.
     AntennaKelvin,
     /// K without a statement of the scale.
     Kelvin,
