@@ -7,6 +7,7 @@
 mod baseline;
 mod rebin;
 mod regions;
+pub mod scale;
 
 pub use rebin::rebin;
 

@@ -3,6 +3,7 @@
 //! Everything downstream of [`crate::prepare`] sees [`Spectrum`] only: ascending radio-convention
 //! LSRK velocities in km/s and main-beam temperatures in K. It does no I/O and fits nothing.
 
+pub mod doppler;
 mod raw;
 
 pub use raw::{AxisKind, BeamArcsec, BrightnessUnit, Frame, Origin, RawSpectrum};

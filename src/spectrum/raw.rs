@@ -15,6 +15,17 @@ pub enum AxisKind {
     RadialVelocity,
 }
 
+impl std::fmt::Display for AxisKind {
+    fn fmt(&self, formatter: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        formatter.write_str(match self {
+            AxisKind::Frequency => "frequency",
+            AxisKind::RadioVelocity => "radio-convention velocity",
+            AxisKind::OpticalVelocity => "optical-convention velocity",
+            AxisKind::RadialVelocity => "apparent radial (relativistic) velocity",
+        })
+    }
+}
+
 /// Frame of rest of the spectral axis (FITS standard 4.0, table 27 names).
 #[derive(Clone, Debug, PartialEq, Eq)]
 pub enum Frame {
@@ -24,12 +35,23 @@ pub enum Frame {
     Other(String),
 }
 
+impl Frame {
+    /// The frame that a file names; `LSRK`, and `LSR` as older files write it, are the kinematic
+    /// one.
+    pub fn from_name(name: &str) -> Self {
+        match name.trim().to_ascii_uppercase().as_str() {
+            "LSRK" | "LSR" => Frame::Lsrk,
+            _ => Frame::Other(name.trim().to_string()),
+        }
+    }
+}
+
 /// Unit and scale of the values.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub enum BrightnessUnit {
     /// Main-beam temperature, K.
     MainBeamKelvin,
-    /// Antenna temperature corrected for the atmosphere, T_A*, K.
+    /// Antenna temperature corrected for the atmosphere, `T_A`*, K.
     AntennaKelvin,
     /// K without a statement of the scale.
     Kelvin,
@@ -60,6 +82,9 @@ pub struct Origin {
 pub struct RawSpectrum {
     /// What the axis counts.
     pub axis_kind: AxisKind,
+    /// Whether the file states the velocity convention; where not, [`RawSpectrum::axis_kind`] is
+    /// what the format's rules take it for.
+    pub convention_stated: bool,
     /// Axis values at channel centres, Hz or m/s, in file order (ascending or descending).
     pub axis: Vec<f64>,
     /// Values in [`RawSpectrum::unit`] (milli- and other prefixes already applied), `NaN` where blank.

@@ -1,0 +1,403 @@
+//! FITS files (standard 4.0): finds the header-data units, checks every size that a header states
+//! against the file before anything is allocated, and chooses the unit that holds the spectrum.
+
+use std::path::Path;
+
+use fitskit::Header;
+
+use super::error::{Place, ReadError};
+use super::unit::{AxisUnit, ValueUnit};
+use super::{Draft, ReadOptions, fits_image, fits_table};
+use crate::spectrum::{AxisKind, BeamArcsec, Frame, RawSpectrum};
+
+/// First bytes of every FITS file.
+pub(super) const MAGIC: &[u8] = b"SIMPLE  =";
+
+const BLOCK_BYTES: usize = 2880;
+const CARD_BYTES: usize = 80;
+/// Most axes, and most table columns, that the standard allows.
+const LIMIT_AXES: i64 = 999;
+
+/// One header-data unit whose stated sizes lie within the file.
+pub(super) struct Unit<'a> {
+    /// Number from 0.
+    pub number: usize,
+    /// Cards.
+    pub header: Header,
+    /// Lengths of the axes.
+    pub axes: Vec<usize>,
+    /// The data, without padding.
+    pub data: &'a [u8],
+}
+
+/// What a unit is.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+enum Content {
+    Empty,
+    Image,
+    Table,
+    TileCompressed,
+    Other,
+}
+
+/// Reads the spectrum of a FITS file.
+pub(super) fn read(
+    path: &Path,
+    bytes: &[u8],
+    options: &ReadOptions,
+) -> Result<RawSpectrum, ReadError> {
+    let units = units(path, bytes)?;
+    let unit = choose(path, &units, options)?;
+    match unit.content() {
+        Content::Image => {
+            if let Some(choice) = &options.select {
+                return Err(ReadError::RowChoiceUnused {
+                    path: path.to_path_buf(),
+                    wanted: choice.to_string(),
+                });
+            }
+            fits_image::read(path, unit, options)
+        }
+        Content::Table => fits_table::read(path, unit, options),
+        Content::TileCompressed => Err(ReadError::FitsTileCompressed {
+            path: path.to_path_buf(),
+            unit: unit.number,
+        }),
+        Content::Empty | Content::Other => Err(no_spectrum(path, &units)),
+    }
+}
+
+impl Unit<'_> {
+    fn content(&self) -> Content {
+        let extension = self.header.get_string("XTENSION").map(str::trim);
+        match extension {
+            _ if self.data.is_empty() => Content::Empty,
+            None | Some("IMAGE") => Content::Image,
+            Some("BINTABLE") if self.header.get_bool("ZIMAGE") == Some(true) => {
+                Content::TileCompressed
+            }
+            Some("BINTABLE") => Content::Table,
+            Some(_) => Content::Other,
+        }
+    }
+
+    fn describe(&self) -> String {
+        let what = match self.content() {
+            Content::Empty => "no data".to_string(),
+            Content::Image => {
+                let axes: Vec<String> = self.axes.iter().map(ToString::to_string).collect();
+                format!("image of {}", axes.join(" x "))
+            }
+            Content::Table => format!("table of {} rows", self.axes.get(1).unwrap_or(&0)),
+            Content::TileCompressed => "tile-compressed image".to_string(),
+            Content::Other => format!(
+                "extension of type {}",
+                self.header.get_string("XTENSION").unwrap_or("?").trim()
+            ),
+        };
+        format!("HDU {}: {what}", self.number)
+    }
+
+    /// A keyword of this unit as a place.
+    pub fn card(&self, keyword: &str) -> Place {
+        Place::Card {
+            unit: self.number,
+            keyword: keyword.to_string(),
+        }
+    }
+
+    /// A text keyword without trailing blanks; none where it is empty.
+    pub fn text(&self, keyword: &str) -> Option<String> {
+        let text = self.header.get_string(keyword)?.trim();
+        (!text.is_empty()).then(|| text.to_string())
+    }
+
+    /// The value of a number card, if the card is there.
+    ///
+    /// # Errors
+    ///
+    /// The card holds something else.
+    pub fn number(&self, path: &Path, keyword: &str) -> Result<Option<f64>, ReadError> {
+        let Some(card) = self.header.find(keyword) else {
+            return Ok(None);
+        };
+        match self.header.get_float(keyword) {
+            Some(value) if value.is_finite() => Ok(Some(value)),
+            _ => Err(self.wrong_card(path, keyword, shown(card), "a number")),
+        }
+    }
+
+    pub fn wrong_card(
+        &self,
+        path: &Path,
+        keyword: &str,
+        found: String,
+        expected: &str,
+    ) -> ReadError {
+        ReadError::FitsCard {
+            path: path.to_path_buf(),
+            unit: self.number,
+            keyword: keyword.to_string(),
+            found,
+            expected: expected.to_string(),
+        }
+    }
+
+    /// A draft with what the header states of beam, object and rest frequency.
+    pub fn draft(
+        &self,
+        path: &Path,
+        format: &str,
+        axis_unit: AxisUnit,
+        value_unit: ValueUnit,
+    ) -> Result<Draft, ReadError> {
+        let rest = match self.number(path, "RESTFRQ")? {
+            Some(rest) => Some(rest),
+            None => self.number(path, "RESTFREQ")?,
+        };
+        let major = self.number(path, "BMAJ")?;
+        let minor = self.number(path, "BMIN")?;
+        Ok(Draft {
+            format: format.to_string(),
+            axis_unit,
+            value_unit,
+            rest_frequency_hz: rest.filter(|rest| *rest != 0.0),
+            frame: self.text("SPECSYS").map(|name| Frame::from_name(&name)),
+            beam: major.map(|major| BeamArcsec {
+                major: major * 3600.0,
+                minor: minor.unwrap_or(major) * 3600.0,
+            }),
+            object: self.text("OBJECT"),
+        })
+    }
+}
+
+/// Unit of an axis that is already in Hz or m/s.
+pub(super) fn base_unit(kind: AxisKind, convention_stated: bool) -> AxisUnit {
+    AxisUnit {
+        kind,
+        factor: 1.0,
+        convention_stated,
+    }
+}
+
+/// Unit of values that a caller gives, or a text states; `None` where neither does.
+pub(super) fn value_unit(
+    path: &Path,
+    place: &Place,
+    stated: Option<&str>,
+    options: &ReadOptions,
+) -> Result<ValueUnit, ReadError> {
+    match (options.value_unit, stated) {
+        (Some(unit), _) => Ok(unit),
+        (None, Some(text)) => {
+            ValueUnit::parse(text).map_err(|error| super::columns::unknown_unit(path, place, error))
+        }
+        (None, None) => Err(ReadError::NoUnit {
+            path: path.to_path_buf(),
+            place: place.clone(),
+            role: "values",
+            expected: "K, mK, K (TA*), Jy/beam",
+        }),
+    }
+}
+
+/// A card's value for a message.
+pub(super) fn shown(card: &fitskit::Keyword) -> String {
+    match &card.value {
+        Some(value) => value.to_string(),
+        None => "nothing".to_string(),
+    }
+}
+
+/// The unit to read: the caller's, or the only one with data.
+fn choose<'u, 'a>(
+    path: &Path,
+    units: &'u [Unit<'a>],
+    options: &ReadOptions,
+) -> Result<&'u Unit<'a>, ReadError> {
+    if let Some(number) = options.hdu {
+        return units.get(number).ok_or_else(|| no_spectrum(path, units));
+    }
+    let with_data: Vec<&Unit> = units
+        .iter()
+        .filter(|unit| unit.content() != Content::Empty)
+        .collect();
+    match with_data.as_slice() {
+        [one] => Ok(one),
+        [] => Err(no_spectrum(path, units)),
+        several => Err(ReadError::FitsSeveralUnits {
+            path: path.to_path_buf(),
+            units: several
+                .iter()
+                .map(|unit| unit.describe())
+                .collect::<Vec<_>>()
+                .join("; "),
+        }),
+    }
+}
+
+fn no_spectrum(path: &Path, units: &[Unit<'_>]) -> ReadError {
+    ReadError::FitsNoSpectrum {
+        path: path.to_path_buf(),
+        units: units
+            .iter()
+            .map(Unit::describe)
+            .collect::<Vec<_>>()
+            .join("; "),
+    }
+}
+
+/// All header-data units, each checked against the length of the file.
+fn units<'a>(path: &Path, bytes: &'a [u8]) -> Result<Vec<Unit<'a>>, ReadError> {
+    let mut units = Vec::new();
+    let mut start = 0;
+    // What follows the last unit without starting an extension is no part of the standard's files.
+    while start == 0
+        || bytes
+            .get(start..)
+            .is_some_and(|rest| rest.starts_with(b"XTENSION"))
+    {
+        let number = units.len();
+        let data_start = start + header_bytes(path, number, &bytes[start..])?;
+        let header = Header::read_from(&mut &bytes[start..data_start]).map_err(|error| {
+            ReadError::FitsCard {
+                path: path.to_path_buf(),
+                unit: number,
+                keyword: "(any)".into(),
+                found: error.to_string(),
+                expected: "cards as FITS writes them".into(),
+            }
+        })?;
+        let axes = axes(path, number, &header)?;
+        let needed = data_bytes(path, number, &header, &axes)?;
+        let left = bytes.len() - data_start;
+        let length = usize::try_from(needed)
+            .ok()
+            .filter(|length| *length <= left)
+            .ok_or_else(|| truncated(path, number, &header, needed, left))?;
+        units.push(Unit {
+            number,
+            header,
+            axes,
+            data: &bytes[data_start..data_start + length],
+        });
+        start = data_start + length.div_ceil(BLOCK_BYTES) * BLOCK_BYTES;
+    }
+    Ok(units)
+}
+
+/// Length of a header in whole blocks: up to END, printable ASCII throughout.
+fn header_bytes(path: &Path, unit: usize, bytes: &[u8]) -> Result<usize, ReadError> {
+    let mut cards = 0;
+    for block in bytes.chunks_exact(BLOCK_BYTES) {
+        for card in block.chunks_exact(CARD_BYTES) {
+            cards += 1;
+            if let Some(&found) = card.iter().find(|byte| !matches!(byte, b' '..=b'~')) {
+                return Err(ReadError::FitsHeaderByte {
+                    path: path.to_path_buf(),
+                    unit,
+                    card: cards,
+                    found,
+                });
+            }
+            if card.starts_with(b"END     ") {
+                return Ok(usize::div_ceil(cards * CARD_BYTES, BLOCK_BYTES) * BLOCK_BYTES);
+            }
+        }
+    }
+    Err(ReadError::FitsNoEnd {
+        path: path.to_path_buf(),
+        unit,
+        cards,
+    })
+}
+
+/// A whole number from a card, within limits.
+pub(super) fn whole(
+    path: &Path,
+    unit: usize,
+    header: &Header,
+    keyword: &str,
+    (low, high): (i64, i64),
+) -> Result<usize, ReadError> {
+    let wrong = |found: String| ReadError::FitsCard {
+        path: path.to_path_buf(),
+        unit,
+        keyword: keyword.to_string(),
+        found,
+        expected: match high {
+            i64::MAX => format!("a whole number from {low}"),
+            _ => format!("a whole number from {low} to {high}"),
+        },
+    };
+    let card = header
+        .find(keyword)
+        .ok_or_else(|| wrong("no such card".into()))?;
+    header
+        .get_int(keyword)
+        .filter(|value| (low..=high).contains(value))
+        .and_then(|value| usize::try_from(value).ok())
+        .ok_or_else(|| wrong(shown(card)))
+}
+
+fn axes(path: &Path, unit: usize, header: &Header) -> Result<Vec<usize>, ReadError> {
+    let count = whole(path, unit, header, "NAXIS", (0, LIMIT_AXES))?;
+    (1..=count)
+        .map(|axis| whole(path, unit, header, &format!("NAXIS{axis}"), (0, i64::MAX)))
+        .collect()
+}
+
+/// Bytes of data that a header states (FITS 4.0, equation 2).
+fn data_bytes(
+    path: &Path,
+    unit: usize,
+    header: &Header,
+    axes: &[usize],
+) -> Result<u128, ReadError> {
+    let bits = header.get_int("BITPIX");
+    if !matches!(bits, Some(8 | 16 | 32 | 64 | -32 | -64)) {
+        return Err(ReadError::FitsCard {
+            path: path.to_path_buf(),
+            unit,
+            keyword: "BITPIX".into(),
+            found: header
+                .find("BITPIX")
+                .map_or_else(|| "no such card".into(), shown),
+            expected: "8, 16, 32, 64, -32 or -64".into(),
+        });
+    }
+    let optional = |keyword: &str, missing: usize| match header.find(keyword) {
+        None => Ok(missing),
+        Some(_) => whole(path, unit, header, keyword, (0, i64::MAX)),
+    };
+    let parameters = optional("PCOUNT", 0)? as u128;
+    let groups = optional("GCOUNT", 1)? as u128;
+    if axes.is_empty() {
+        return Ok(0);
+    }
+    let elements = axes.iter().fold(1_u128, |product, &axis| {
+        product.saturating_mul(axis as u128)
+    });
+    let bytes = u128::from(bits.unwrap_or(8).unsigned_abs() / 8);
+    Ok(bytes
+        .saturating_mul(groups)
+        .saturating_mul(elements.saturating_add(parameters)))
+}
+
+fn truncated(path: &Path, unit: usize, header: &Header, needed: u128, left: usize) -> ReadError {
+    let shape: Vec<String> = header
+        .iter()
+        .filter(|card| {
+            card.name == "BITPIX" || card.name.starts_with("NAXIS") || card.name == "PCOUNT"
+        })
+        .map(|card| format!("{} = {}", card.name, shown(card)))
+        .collect();
+    ReadError::FitsTruncated {
+        path: path.to_path_buf(),
+        unit,
+        shape: shape.join(", "),
+        needed_bytes: needed,
+        found_bytes: left,
+    }
+}
