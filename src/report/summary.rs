@@ -3,7 +3,7 @@
 use std::fmt::Write as _;
 
 use super::columns::{Group, QUANTITIES, Quantity, Uncertainty};
-use super::{ReportError, Row, Value, rounded, rounded_interval, rounded_plain};
+use super::{Row, Value, rounded, rounded_interval, rounded_plain};
 
 /// Columns that the text is wrapped at.
 const WIDTH: usize = 78;
@@ -15,17 +15,14 @@ const LABEL: usize = 30;
 /// `row` has columns of [`super::columns`]; groups and quantities without a value are left out.
 /// `cautions` are sentences. Inward speeds read `0.48 +- 0.03 km/s`, intervals `0.48 -0.03 +0.05`.
 ///
-/// # Errors
-///
-/// None now; [`ReportError::UnknownColumn`] is possible only if a row loses half a quantity.
-pub fn summary(row: &Row, cautions: &[String]) -> Result<String, ReportError> {
+pub fn summary(row: &Row, cautions: &[String]) -> String {
     let mut text = title(row);
     let mut heading = None;
     for quantity in QUANTITIES {
         if matches!(quantity.group, Group::Identity | Group::Cautions) {
             continue;
         }
-        let Some(shown) = shown(quantity, row)? else {
+        let Some(shown) = shown(quantity, row) else {
             continue;
         };
         if heading != Some(quantity.group) {
@@ -40,7 +37,7 @@ pub fn summary(row: &Row, cautions: &[String]) -> Result<String, ReportError> {
             text.push_str(&wrapped(caution));
         }
     }
-    Ok(text)
+    text
 }
 
 /// `clump: HCO+ 1-0 (thick) and H13CO+ 1-0 (thin)`.
@@ -62,24 +59,25 @@ fn title(row: &Row) -> String {
 }
 
 /// Value, error and unit; `None` where there is no value or the row has no such column.
-fn shown(quantity: &Quantity, row: &Row) -> Result<Option<String>, ReportError> {
+fn shown(quantity: &Quantity, row: &Row) -> Option<String> {
     let number = match row.get(quantity.name) {
-        Err(_) | Ok(Value::Empty) => return Ok(None),
-        Ok(Value::Text(text)) => return Ok(Some(one_line(text))),
+        Err(_) | Ok(Value::Empty) => return None,
+        Ok(Value::Text(text)) => return Some(one_line(text)),
         Ok(Value::Real(number)) => *number,
-        Ok(Value::Integer(number)) => return Ok(Some(number.to_string())),
+        Ok(Value::Integer(number)) => return Some(number.to_string()),
     };
-    let further = |suffix: &str| -> Result<Option<f64>, ReportError> {
-        Ok(row.get(&format!("{}{suffix}", quantity.name))?.number())
+    let further = |suffix: &str| {
+        let cell = row.get(&format!("{}{suffix}", quantity.name));
+        cell.ok().and_then(Value::number)
     };
     let interval = match quantity.uncertainty {
         Uncertainty::Intervals | Uncertainty::ErrorAndIntervals => {
-            further("_lo68")?.zip(further("_hi68")?)
+            further("_lo68").zip(further("_hi68"))
         }
         _ => None,
     };
     let error = match quantity.uncertainty {
-        Uncertainty::Error | Uncertainty::ErrorAndIntervals => further("_err")?,
+        Uncertainty::Error | Uncertainty::ErrorAndIntervals => further("_err"),
         _ => None,
     };
     let value = match (interval, error) {
@@ -89,7 +87,7 @@ fn shown(quantity: &Quantity, row: &Row) -> Result<Option<String>, ReportError> 
         (None, None) => rounded_plain(number),
     };
     let unit = quantity.unit.map(|unit| format!(" {}", spoken(unit)));
-    Ok(Some(value + &unit.unwrap_or_default()))
+    Some(value + &unit.unwrap_or_default())
 }
 
 /// A unit as people write it.
