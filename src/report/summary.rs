@@ -1,0 +1,124 @@
+//! One pair's results as plain text for a terminal, values rounded to their errors.
+
+use std::fmt::Write as _;
+
+use super::columns::{Group, QUANTITIES, Quantity, Uncertainty};
+use super::{Row, Value, rounded, rounded_interval, rounded_plain};
+
+/// Columns that the text is wrapped at.
+const WIDTH: usize = 78;
+/// Columns of the names on the left.
+const LABEL: usize = 30;
+
+/// A readable summary of one pair: headings, one result a line, cautions in words.
+///
+/// `row` has columns of [`super::columns`]; groups and quantities without a value are left out.
+/// `cautions` are sentences. Inward speeds read `0.48 +- 0.03 km/s`, intervals `0.48 -0.03 +0.05`.
+///
+pub fn summary(row: &Row, cautions: &[String]) -> String {
+    let mut text = title(row);
+    let mut heading = None;
+    for quantity in QUANTITIES {
+        if matches!(quantity.group, Group::Identity | Group::Cautions) {
+            continue;
+        }
+        let Some(shown) = shown(quantity, row) else {
+            continue;
+        };
+        if heading != Some(quantity.group) {
+            heading = Some(quantity.group);
+            let _ = write!(text, "\n{}\n", quantity.group.heading());
+        }
+        let _ = writeln!(text, "  {:<LABEL$}{shown}", quantity.label);
+    }
+    if !cautions.is_empty() {
+        let _ = write!(text, "\n{}\n", Group::Cautions.heading());
+        for caution in cautions {
+            text.push_str(&wrapped(caution));
+        }
+    }
+    text
+}
+
+/// `clump: HCO+ 1-0 (thick) and H13CO+ 1-0 (thin)`.
+fn title(row: &Row) -> String {
+    let cell = |name| row.get(name).ok().and_then(Value::text).unwrap_or("?");
+    let offset = |name| row.get(name).ok().and_then(Value::number);
+    let place = match (offset("dx_arcsec"), offset("dy_arcsec")) {
+        (Some(dx), Some(dy)) => {
+            format!(" at ({}, {}) arcsec", rounded_plain(dx), rounded_plain(dy))
+        }
+        _ => String::new(),
+    };
+    format!(
+        "{}{place}: {} (thick) and {} (thin)\n",
+        one_line(cell("id")),
+        one_line(cell("thick_line")),
+        one_line(cell("thin_line"))
+    )
+}
+
+/// Value, error and unit; `None` where there is no value or the row has no such column.
+fn shown(quantity: &Quantity, row: &Row) -> Option<String> {
+    let number = match row.get(quantity.name) {
+        Err(_) | Ok(Value::Empty) => return None,
+        Ok(Value::Text(text)) => return Some(one_line(text)),
+        Ok(Value::Real(number)) => *number,
+        Ok(Value::Integer(number)) => return Some(number.to_string()),
+    };
+    let further = |suffix: &str| {
+        let cell = row.get(&format!("{}{suffix}", quantity.name));
+        cell.ok().and_then(Value::number)
+    };
+    let interval = match quantity.uncertainty {
+        Uncertainty::Intervals | Uncertainty::ErrorAndIntervals => {
+            further("_lo68").zip(further("_hi68"))
+        }
+        _ => None,
+    };
+    let error = match quantity.uncertainty {
+        Uncertainty::Error | Uncertainty::ErrorAndIntervals => further("_err"),
+        _ => None,
+    };
+    let value = match (interval, error) {
+        (Some((low, high)), _) => rounded_interval(number, low, high),
+        (None, Some(err)) => rounded(number, err),
+        (None, None) if quantity.group == Group::Hypotheses => format!("{number:.3}"),
+        (None, None) => rounded_plain(number),
+    };
+    let unit = quantity.unit.map(|unit| format!(" {}", spoken(unit)));
+    Some(value + &unit.unwrap_or_default())
+}
+
+/// A unit as people write it.
+fn spoken(unit: &str) -> String {
+    unit.replace("solMass", "Msun").replace('.', " ")
+}
+
+/// Control characters as visible escapes, so that a name cannot break the layout.
+fn one_line(text: &str) -> String {
+    text.chars()
+        .map(|character| {
+            if character.is_control() {
+                character.escape_default().to_string()
+            } else {
+                character.to_string()
+            }
+        })
+        .collect()
+}
+
+/// A sentence behind a dash, wrapped and indented.
+fn wrapped(sentence: &str) -> String {
+    let mut text = String::new();
+    let mut line = String::from("  -");
+    for word in sentence.split_whitespace() {
+        if line.chars().count() + 1 + word.chars().count() > WIDTH && line.len() > 3 {
+            let _ = writeln!(text, "{line}");
+            line = String::from("   ");
+        }
+        let _ = write!(line, " {word}");
+    }
+    let _ = writeln!(text, "{line}");
+    text
+}
