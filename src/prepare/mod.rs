@@ -13,8 +13,8 @@ pub use rebin::rebin;
 
 use crate::line::Component;
 use crate::numeric::Autoregression;
-use crate::numeric::robust::clipped_scale;
 use crate::spectrum::{Noise, Spectrum, SpectrumError, Window};
+use crate::numeric::robust::clipped_scale;
 use baseline::{CORE_CLIP, Channels, Clipped, clipped_fit, robust_start};
 use regions::{Boxes, Region};
 
@@ -233,6 +233,9 @@ const MOST_ROUNDS: usize = 12;
 /// Share of a line's width that is added to its window on either side.
 const MARGIN_SHARE: f64 = 0.2;
 
+/// A line seen over a straight baseline is kept if it takes at most this share of the band.
+const WIDEST_KEPT: f64 = 0.5;
+
 /// Significance of signal just outside a window from which the window cuts the line.
 const CUT_SIGMA: f64 = 4.0;
 
@@ -418,14 +421,25 @@ fn attempt(
     if let Some(window) = settings.window {
         check_window(window, &channels)?;
     }
-    let search = Search {
+    let mut search = Search {
         channels: &channels,
         settings,
         expected,
-        order,
+        order: order.min(1),
         needed,
         step_km_s: spectrum.channel_width_km_s(),
+        at_least: None,
     };
+    if order > 1 {
+        // A parabola or cubic can follow the faint side of a line: what a straight baseline shows
+        // as line stays in the window.
+        search.at_least = search
+            .run()
+            .ok()
+            .and_then(|found| found.line)
+            .filter(|line| line.width() as f64 <= WIDEST_KEPT * channels.len() as f64);
+        search.order = order;
+    }
     let found = search.run()?;
     Ok(search.finish(spectrum, &found))
 }
@@ -450,6 +464,8 @@ struct Search<'a> {
     order: usize,
     needed: usize,
     step_km_s: f64,
+    /// A line seen before, which the line contains if it overlaps it.
+    at_least: Option<Region>,
 }
 
 impl Search<'_> {
@@ -457,7 +473,8 @@ impl Search<'_> {
     fn run(&self) -> Result<Found, PrepareError> {
         let channels = self.channels;
         let count = channels.len();
-        let mut fit = robust_start(channels, self.order).ok_or_else(|| self.too_few(count))?;
+        let mut fit =
+            robust_start(channels, self.order).ok_or_else(|| self.too_few(count))?;
         let mut excluded = vec![false; count];
         let mut line: Option<Region> = None;
         let mut round = 0;
@@ -471,19 +488,6 @@ impl Search<'_> {
             };
             let boxes = self.boxes(&fit, scale, &process);
             let (next_line, window, next, significance) = self.exclude(&boxes);
-            if std::env::var("DBG").is_ok() {
-                eprintln!(
-                    "round {round} scale {scale:.4} fit.scale {:.4} kept {} order {} p0 {:.2} line {next_line:?} nfree {}",
-                    fit.scale,
-                    fit.kept.len(),
-                    process.order(),
-                    process.power_at_zero(),
-                    next.iter().filter(|&&x| !x).count()
-                );
-                for r in boxes.regions(4.5, None) {
-                    eprintln!("   {r:?}");
-                }
-            }
             let free: Vec<usize> = (0..count).filter(|&i| !next[i]).collect();
             if free.len() < self.needed {
                 return Err(self.too_few(free.len()));
@@ -546,7 +550,10 @@ impl Search<'_> {
         let process = self.process(&residuals, scale, excluded);
         let terms = self.order + 1;
         let process = process.before_subtraction(terms, free.len());
-        (corrected_scale(scale, terms, free.len(), &process), process)
+        (
+            corrected_scale(scale, terms, free.len(), &process),
+            process,
+        )
     }
 
     fn boxes(&self, fit: &Clipped, scale: f64, process: &Autoregression) -> Boxes {
@@ -642,6 +649,11 @@ impl Search<'_> {
                 .min_by(|a, b| a.significance.total_cmp(&b.significance))
         })?;
         let mut line = *main;
+        if let Some(seen) = self.at_least
+            && seen.gap(main) == 0
+        {
+            line = line.join(&seen);
+        }
         if self.expected.components.len() > 1 {
             line = self.with_satellites(line, regions);
         }
