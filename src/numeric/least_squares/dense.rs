@@ -15,13 +15,13 @@ const LANES: usize = 8;
 /// Rows of a block: 256 rows of 9 columns take 18 kB, so that a block stays in the first cache.
 const BLOCK: usize = 256;
 
-/// sum_i a_i b_i.
+/// `sum_i a_i b_i`.
 pub(super) fn dot(a: &[f64], b: &[f64]) -> f64 {
     let [sum] = dot_with(a, [b]);
     sum
 }
 
-/// sum_i r_i^2, block by block.
+/// `sum_i r_i^2`, block by block.
 pub(super) fn sum_of_squares(values: &[f64]) -> f64 {
     values.chunks(BLOCK).map(|block| dot(block, block)).sum()
 }
@@ -79,9 +79,10 @@ pub(super) fn normal_equations(
             }
         }
     }
-    for i in 0..columns {
-        for j in 0..i {
-            gram[i][j] = gram[j][i];
+    let upper = gram;
+    for (i, row) in gram.iter_mut().enumerate().take(columns) {
+        for (element, source) in row.iter_mut().zip(&upper).take(i) {
+            *element = source[i];
         }
     }
     (gram, gradient)

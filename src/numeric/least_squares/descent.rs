@@ -133,7 +133,7 @@ impl Descent {
         &self.parameters[..self.columns]
     }
 
-    /// sum r_i^2 there.
+    /// chi2 there.
     #[must_use]
     pub const fn chi2(&self) -> f64 {
         self.chi2
