@@ -116,3 +116,6 @@ pub fn minimize<P: LeastSquares + ?Sized>(
         }
     }
 }
+
+#[cfg(test)]
+mod tests;
