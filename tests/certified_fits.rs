@@ -2,6 +2,8 @@
 //! Datasets (`tests/data/nist`), all 27, from both starts: parameters to six digits, residual-scaled
 //! standard deviations to four.
 
+#![allow(clippy::unwrap_used)]
+
 use inrush::numeric::least_squares::{
     LeastSquares, Minimum, Settings, Workspace, check_jacobian, minimize, unbounded,
 };

@@ -153,6 +153,7 @@ pub(super) fn triangularise(matrix: &mut [f64], rows: usize, columns: usize, rig
 }
 
 #[cfg(test)]
+#[allow(clippy::needless_range_loop)]
 mod tests {
     use super::*;
 

@@ -165,6 +165,7 @@ fn powell_singular_function_comes_down_to_the_origin() {
 }
 
 #[test]
+#[allow(clippy::unreadable_literal)]
 fn gaussian_agrees_with_scipy() {
     // scipy.optimize.least_squares(method="lm", all tolerances 1e-15) on the same numbers; errors from
     // numpy's inverse of J^T J.
@@ -215,8 +216,8 @@ fn units_of_parameters_and_residuals_do_not_change_the_path() {
     let scaled = fit(&mut scaled, &start, &unbounded(3));
     assert_eq!(scaled.evaluations, plain.evaluations);
     assert_eq!(scaled.chi2, plain.chi2 * 2.0_f64.powi(24));
-    for j in 0..3 {
-        assert_eq!(scaled.parameters[j] * units[j], plain.parameters[j]);
+    for (j, unit) in units.into_iter().enumerate() {
+        assert_eq!(scaled.parameters[j] * unit, plain.parameters[j]);
     }
 }
 
