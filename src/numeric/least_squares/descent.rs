@@ -133,7 +133,7 @@ impl Descent {
         &self.parameters[..self.columns]
     }
 
-    /// sum r_i^2 there.
+    /// chi2 there.
     #[must_use]
     pub const fn chi2(&self) -> f64 {
         self.chi2
@@ -171,8 +171,7 @@ impl Descent {
             return Some(Termination::Gradient);
         }
         let full = self.solve(UNDAMPED, bounds, workspace);
-        let beyond = self.unbounded_step(bounds, workspace);
-        let ended = self.small_enough(&beyond, settings);
+        let ended = self.small_enough(&full, settings);
         if ended.is_some() {
             return ended;
         }
@@ -192,7 +191,7 @@ impl Descent {
         self.update_radius(&step, kept);
         if kept {
             self.update_scale();
-        } else if step.decrease > 0.0 && step.decrease <= RESOLUTION * self.chi2 {
+        } else if step.decrease <= RESOLUTION * self.chi2 {
             let hidden = promise <= ROUNDING * self.chi2;
             return Some(if hidden {
                 Termination::Rounding
@@ -266,8 +265,8 @@ impl Descent {
         let mut moved = self.parameters;
         for (j, interval) in bounds.iter().enumerate() {
             moved[j] = match step.held[j] {
-                Held::At(side) => side,
-                Held::Free => interval.nearest(moved[j] + step.shift[j]),
+                Some(side) => side,
+                None => interval.nearest(moved[j] + step.shift[j]),
             };
         }
         moved
@@ -296,8 +295,12 @@ impl Descent {
 
     /// |D v|.
     fn scaled_norm(&self, vector: &Vector) -> f64 {
+        self.length(&self.scale, vector)
+    }
+
+    fn length(&self, scale: &Vector, vector: &Vector) -> f64 {
         (0..self.columns)
-            .map(|j| (self.scale[j] * vector[j]).powi(2))
+            .map(|j| (scale[j] * vector[j]).powi(2))
             .sum::<f64>()
             .sqrt()
     }
@@ -318,8 +321,10 @@ impl Descent {
         if step.decrease <= settings.chi2_tolerance * self.chi2 / self.degrees_of_freedom {
             return Some(Termination::Chi2);
         }
-        let limit = settings.step_tolerance * self.scaled_norm(&self.parameters);
-        (self.scaled_norm(&step.shift) <= limit).then_some(Termination::Step)
+        let norms = self.linear.column_norms();
+        let length = |vector: &Vector| self.length(&norms, vector);
+        let limit = settings.step_tolerance * length(&self.parameters);
+        (length(&step.shift) <= limit).then_some(Termination::Step)
     }
 
     fn gradient_vanishes(&self, bounds: &[Interval], settings: &Settings) -> bool {
@@ -378,70 +383,73 @@ impl Descent {
         self.solve(high, bounds, workspace)
     }
 
-    fn unbounded_step(&mut self, bounds: &[Interval], workspace: &mut Workspace) -> Step {
-        let mut step = Step {
-            shift: [0.0; MAX_PARAMETERS],
-            held: [Held::Free; MAX_PARAMETERS],
-            decrease: 0.0,
-        };
-        for j in 0..self.columns {
-            if self.is_pressed(j, bounds) {
-                step.held[j] = Held::At(self.parameters[j]);
-            }
-        }
-        self.linear
-            .solve(UNDAMPED, &self.scale, &mut step, workspace, self.rows);
-        step.decrease = self.linear.decrease(&step.shift);
-        step
-    }
-
-    /// The damped Gauss-Newton step inside the box.
+    /// The damped Gauss-Newton step inside the box: from the present point toward the minimum over the
+    /// free parameters, up to the first bound on the way, which is then held; again from there. Every
+    /// leg lowers the damped quadratic, so that the promised decrease is never negative.
     fn solve(&mut self, damping: f64, bounds: &[Interval], workspace: &mut Workspace) -> Step {
         let mut step = Step {
             shift: [0.0; MAX_PARAMETERS],
-            held: [Held::Free; MAX_PARAMETERS],
+            held: [None; MAX_PARAMETERS],
             decrease: 0.0,
         };
         for j in 0..self.columns {
             if self.is_pressed(j, bounds) {
-                step.held[j] = Held::At(self.parameters[j]);
+                step.held[j] = Some(self.parameters[j]);
             }
         }
+        let scale = if damping == UNDAMPED {
+            self.linear.column_norms()
+        } else {
+            self.scale
+        };
         loop {
-            self.linear
-                .solve(damping, &self.scale, &mut step, workspace, self.rows);
-            let mut inside = true;
-            for (j, interval) in bounds.iter().enumerate() {
-                let target = self.parameters[j] + step.shift[j];
-                if matches!(step.held[j], Held::Free) && !interval.contains(target) {
-                    let side = interval.nearest(target);
-                    step.held[j] = Held::At(side);
-                    step.shift[j] = side - self.parameters[j];
-                    inside = false;
-                }
-            }
-            if inside {
+            let (linear, rows) = (&mut self.linear, self.rows);
+            let target = linear.solve(damping, &scale, &step, workspace, rows);
+            let Some((fraction, blocking, side)) = self.first_bound(&step, &target, bounds) else {
+                step.shift = target;
                 step.decrease = self.linear.decrease(&step.shift);
                 return step;
+            };
+            for (shift, target) in step.shift.iter_mut().zip(target) {
+                *shift += fraction * (target - *shift);
+            }
+            step.shift[blocking] = side - self.parameters[blocking];
+            step.held[blocking] = Some(side);
+        }
+    }
+
+    /// The bound met first between the step and its target: after what fraction of the way, by which
+    /// parameter, and its value.
+    fn first_bound(
+        &self,
+        step: &Step,
+        target: &Vector,
+        bounds: &[Interval],
+    ) -> Option<(f64, usize, f64)> {
+        let mut first: Option<(f64, usize, f64)> = None;
+        for (j, interval) in bounds.iter().enumerate() {
+            let end = self.parameters[j] + target[j];
+            if step.held[j].is_some() || interval.contains(end) {
+                continue;
+            }
+            let side = interval.nearest(end);
+            let room = side - self.parameters[j] - step.shift[j];
+            let fraction = (room / (target[j] - step.shift[j])).clamp(0.0, 1.0);
+            if first.is_none_or(|(smallest, ..)| fraction < smallest) {
+                first = Some((fraction, j, side));
             }
         }
+        first
     }
 }
 
 /// A step and what the linearised residuals promise of it.
 struct Step {
     shift: Vector,
-    held: [Held; MAX_PARAMETERS],
+    /// Values of the parameters that are not solved for, each on a bound.
+    held: [Option<f64>; MAX_PARAMETERS],
     /// Predicted decrease of chi2.
     decrease: f64,
-}
-
-/// Whether a parameter of a step is solved for.
-#[derive(Clone, Copy)]
-enum Held {
-    Free,
-    /// Set to this value, a bound.
-    At(f64),
 }
 
 /// The residuals near a point: r + J d.
@@ -499,34 +507,45 @@ impl Linearisation {
         }
     }
 
-    /// Solves for the free shifts of `step`, the held ones given.
+    /// The norm of each column of J; one for a column of zeros.
+    fn column_norms(&self) -> Vector {
+        let mut norms = [1.0; MAX_PARAMETERS];
+        for (j, norm) in norms.iter_mut().enumerate().take(self.columns) {
+            if self.gram[j][j] > 0.0 {
+                *norm = self.gram[j][j].sqrt();
+            }
+        }
+        norms
+    }
+
+    /// The shifts that minimise |r + J d|^2 + damping |D d|^2, those of held parameters given.
     fn solve(
         &mut self,
         damping: f64,
         scale: &Vector,
-        step: &mut Step,
+        step: &Step,
         workspace: &mut Workspace,
         rows: usize,
-    ) {
+    ) -> Vector {
+        let mut shift = step.shift;
         let mut free = [0; MAX_PARAMETERS];
         let mut count = 0;
-        for j in 0..self.columns {
-            if matches!(step.held[j], Held::Free) {
+        for (j, held) in step.held.iter().enumerate().take(self.columns) {
+            if held.is_none() {
                 free[count] = j;
                 count += 1;
-                step.shift[j] = 0.0;
+                shift[j] = 0.0;
             }
         }
         let free = &free[..count];
-        if self.triangle.is_none() && self.solve_normal(damping, scale, free, &mut step.shift) {
-            return;
+        if self.triangle.is_none() && self.solve_normal(damping, scale, free, &mut shift) {
+            return shift;
         }
-        if self.triangle.is_none() {
-            self.triangle = Some(Triangle::new(workspace, rows, self.columns));
-        }
-        if let Some(triangle) = &self.triangle {
-            triangle.solve(self.columns, damping, scale, free, &mut step.shift);
-        }
+        let columns = self.columns;
+        self.triangle
+            .get_or_insert_with(|| Triangle::new(workspace, rows, columns))
+            .solve(columns, damping, scale, free, &mut shift);
+        shift
     }
 
     /// By Cholesky; `false`, with the shifts untouched, where that loses too many digits.

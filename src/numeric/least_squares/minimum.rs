@@ -12,7 +12,7 @@ const DEPENDENCE: f64 = 1e-12;
 pub struct Minimum {
     /// The best parameters found, in the units of the problem.
     pub parameters: Vec<f64>,
-    /// sum r_i^2 there.
+    /// chi2 there, the sum of squares of the residuals.
     pub chi2: f64,
     /// Calls of the model.
     pub evaluations: usize,

@@ -1,7 +1,7 @@
 //! Bounded nonlinear least squares for small dense problems.
 //!
 //! A [`LeastSquares`] problem (1 to [`MAX_PARAMETERS`] parameters, any number of residuals), a start
-//! and a box go in; the [`Minimum`] of chi2 = sum r_i^2 inside the box comes out, with the curvature
+//! and a box go in; the [`Minimum`] of chi2 = `sum_i r_i^2` inside the box comes out, with the curvature
 //! from which [`Minimum::covariance`] follows. Damped Gauss-Newton steps after Levenberg (1944,
 //! Quart. Appl. Math. 2, 164) and Marquardt (1963, J. SIAM 11, 431), the damping set by a trusted radius
 //! and the parameters scaled by column norms after Moré (1978, Lecture Notes in Mathematics 630, 105).
@@ -40,8 +40,9 @@ pub trait LeastSquares {
     /// Number of residuals m.
     fn residuals(&self) -> usize;
 
-    /// r_i(p) into `residuals` (length m) and, when asked for, d r_i / d p_j into `jacobian`
-    /// (length n m, column by column: d r_i / d p_j is `jacobian[j * m + i]`).
+    /// The residuals into `residuals` (length m) and, when asked for, their derivatives into
+    /// `jacobian` (length n m, column by column: that of residual i by parameter j is
+    /// `jacobian[j * m + i]`).
     ///
     /// Every element must be written; the buffers hold old numbers.
     fn evaluate(&mut self, parameters: &[f64], residuals: &mut [f64], jacobian: Option<&mut [f64]>);
@@ -66,7 +67,7 @@ impl<P: LeastSquares + ?Sized> LeastSquares for &mut P {
     }
 }
 
-/// The minimum of chi2 = sum r_i^2 reached from `start` inside `bounds` (one interval a parameter).
+/// The minimum of chi2 = `sum_i r_i^2` reached from `start` inside `bounds` (one interval a parameter).
 ///
 /// Allocates only the returned value, and buffers where `workspace` is too small. Whether the
 /// search converged stands in [`Minimum::termination`].
@@ -115,3 +116,6 @@ pub fn minimize<P: LeastSquares + ?Sized>(
         }
     }
 }
+
+#[cfg(test)]
+mod tests;
