@@ -14,6 +14,8 @@ use super::{Interval, LeastSquares, LeastSquaresError, Minimum, Settings, Side, 
 const SMALLEST_PIVOT: f64 = 1e-7;
 /// Damping of a step that counts as undamped; keeps parameters without influence at rest.
 const UNDAMPED: f64 = 1e-15;
+/// The first radius is at least this times the norm of the residuals, for starts near the origin.
+const LEAST_RADIUS: f64 = 0.03;
 /// How far from the radius, relative to it, a shortened step may end.
 const RADIUS_TOLERANCE: f64 = 0.1;
 /// Most dampings tried for one step; two or three are usual.
@@ -118,13 +120,9 @@ impl Descent {
             iterations: 0,
         };
         descent.update_scale();
-        let size = descent.scaled_norm(&descent.parameters);
-        let size = if size > 0.0 {
-            size
-        } else {
-            descent.chi2.sqrt()
-        };
-        descent.radius = settings.initial_radius * size;
+        let length = descent.scaled_norm(&descent.parameters);
+        let least = LEAST_RADIUS * descent.chi2.sqrt();
+        descent.radius = settings.initial_radius * length.max(least);
         Ok(descent)
     }
 

@@ -465,24 +465,53 @@ fn unusable_starts_are_refused_with_the_evidence() {
             ..
         }
     ));
-    let settings = Settings {
-        chi2_tolerance: -1.0,
-        ..Settings::default()
-    };
-    let refused = minimize(
-        &mut line(),
-        &[0.0; 2],
-        &free,
-        &settings,
-        &mut Workspace::new(),
-    );
-    assert!(matches!(
-        refused,
-        Err(E::Setting {
-            name: "chi2_tolerance",
-            ..
-        })
-    ));
+    let settings = [
+        Settings {
+            chi2_tolerance: -1.0,
+            ..Settings::default()
+        },
+        Settings {
+            initial_radius: 0.0,
+            ..Settings::default()
+        },
+        Settings {
+            step_tolerance: f64::NAN,
+            ..Settings::default()
+        },
+    ];
+    for (settings, expected) in
+        (settings.iter()).zip(["chi2_tolerance", "initial_radius", "step_tolerance"])
+    {
+        let refused = minimize(
+            &mut line(),
+            &[0.0; 2],
+            &free,
+            settings,
+            &mut Workspace::new(),
+        );
+        assert!(matches!(refused, Err(E::Setting { name, .. }) if name == expected));
+    }
+}
+
+#[test]
+fn a_line_is_found_from_amplitudes_of_any_size() {
+    for amplitude in [0.0, 1e-12, 1e-3, 0.1, 10.0, 1e4] {
+        let bounds = [
+            Interval::at_least(0.0),
+            Interval::new(-5.0, 5.0),
+            Interval::new(0.1, 5.0),
+        ];
+        let minimum = fit(&mut gaussian(), &[amplitude, 0.8, 1.0], &bounds);
+        assert!(
+            (minimum.chi2 - 45.341).abs() < 1e-3,
+            "{amplitude}: {minimum:?}"
+        );
+        assert!(
+            minimum.evaluations <= 30,
+            "{amplitude}: {}",
+            minimum.evaluations
+        );
+    }
 }
 
 #[test]
