@@ -633,6 +633,8 @@ fn beam_solid_angle(
 }
 
 #[cfg(test)]
+// Reference values stand as their source prints them.
+#[allow(clippy::unreadable_literal)]
 mod tests {
     use super::*;
     use crate::spectrum::Origin;
