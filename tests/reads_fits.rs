@@ -357,6 +357,24 @@ fn other_axes_and_shapes_are_refused() {
             ],
         );
     }
+    let (message, _) = refused(&image_with(
+        &["CTYPE1  = 'FREQ-V2F'", "CUNIT1  = 'Hz'", "CRVAL1  = 89E9"],
+        &["RESTFRQ"],
+    ));
+    assert_says(
+        &message,
+        &[
+            "HDU 0, card RESTFRQ: no such card, expected a rest frequency, which the axis type FREQ-V2F needs",
+        ],
+    );
+    let (message, _) = refused(&image_with(
+        &["CTYPE1  = 'VOPT-F2W'", "CDELT1  =                1.5E8"],
+        &[],
+    ));
+    assert_says(
+        &message,
+        &["card CTYPE1: VOPT-F2W with channels at no possible frequency"],
+    );
     let square = [
         "NAXIS   =                    2",
         "NAXIS1  =                    2",
@@ -403,6 +421,33 @@ fn a_file_without_a_spectrum_or_with_several_lists_its_units() {
     );
     let (message, _) = refused_with(&twice, &chosen(2));
     assert_says(&message, &["no spectrum among HDU 0"]);
+}
+
+#[test]
+fn cells_with_several_axes_are_refused() {
+    let vector = [
+        "NAXIS1  =                   20",
+        "NAXIS2  =                    1",
+        "TFORM2  = '4E      '",
+        "CTYPE1  = 'VRAD    '",
+        "CRVAL1  =                  1.0",
+        "CDELT1  =                  1.0",
+        "CRPIX1  =                  1.0",
+    ];
+    let with_shape = |shape: &'static str| table_with(&[&vector[..], &[shape]].concat());
+    let raw = read(&with_shape("TDIM2   = '(4,1,1) '"));
+    assert_eq!(raw.axis, [1.0, 2.0, 3.0, 4.0]);
+    assert_eq!(raw.values, [0.5, 2.0, 1.5, 3.0]);
+    for shape in ["TDIM2   = '(2,2)   '", "TDIM2   = '(1,4)   '"] {
+        let (message, _) = refused(&with_shape(shape));
+        assert_says(
+            &message,
+            &[
+                "HDU 1, card TDIM2: cells of (",
+                "expected one axis longer than 1",
+            ],
+        );
+    }
 }
 
 #[test]

@@ -352,6 +352,38 @@ fn a_choice_of_a_row_is_refused_for_text() {
 }
 
 #[test]
+fn text_in_another_encoding_is_named_with_its_line() {
+    let error = spectrum_from_bytes(
+        Path::new("clump.csv"),
+        b"velocity_km_s,tmb_k\n# \xb1 5 %\n1,2\n2,3\n",
+        &ReadOptions::default(),
+    )
+    .unwrap_err();
+    assert_eq!(
+        error.to_string(),
+        "clump.csv:2: byte 0xb1, expected text in UTF-8"
+    );
+    assert!(error.hint().unwrap().contains("UTF-8"));
+}
+
+#[test]
+fn text_under_a_fits_name_is_not_read_as_text() {
+    for name in ["clump.fits", "clump.FITS.gz"] {
+        let error = spectrum_from_bytes(
+            Path::new(name),
+            b"<!DOCTYPE html><html>not found</html>",
+            &ReadOptions::default(),
+        )
+        .unwrap_err();
+        let message = error.to_string();
+        assert!(
+            message.contains("starts with `<!DOCTYPE html><html`"),
+            "{message}"
+        );
+    }
+}
+
+#[test]
 fn random_bytes_are_recognised_as_nothing() {
     let bytes: Vec<u8> = (0..4000_u32)
         .map(|index| index.wrapping_mul(2_654_435_761).to_be_bytes()[1])

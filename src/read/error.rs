@@ -93,6 +93,16 @@ pub enum ReadError {
         /// The first bytes, in words.
         found: String,
     },
+    /// Text in another encoding than UTF-8.
+    #[error("{}:{line}: byte {found:#04x}, expected text in UTF-8", path.display())]
+    NotUtf8 {
+        /// The file.
+        path: PathBuf,
+        /// The line.
+        line: usize,
+        /// The first byte that is no UTF-8.
+        found: u8,
+    },
     /// The text holds no rows of data.
     #[error("{}: no rows of data, expected at least two channels", path.display())]
     NoRows {
@@ -397,6 +407,21 @@ pub enum ReadError {
         /// The axes, in words.
         shape: String,
     },
+    /// A vector column whose cells have more than one axis longer than 1, or a first axis of 1.
+    #[error(
+        "{}: HDU {unit}, card {keyword}: cells of {shape}, expected one axis longer than 1, the first",
+        path.display()
+    )]
+    FitsCellAxes {
+        /// The file.
+        path: PathBuf,
+        /// Header-data unit, from 0.
+        unit: usize,
+        /// Keyword.
+        keyword: String,
+        /// Its value.
+        shape: String,
+    },
     /// A spectral axis of a kind that is not read.
     #[error("{}: HDU {unit}, card {keyword}: axis type `{found}`, expected FREQ, VRAD, VOPT or VELO", path.display())]
     FitsAxisType {
@@ -485,6 +510,9 @@ impl ReadError {
             ReadError::Unrecognised { .. } => {
                 "give CSV, ECSV, plain columns or FITS, or one of these as .gz".into()
             }
+            ReadError::NotUtf8 { .. } => {
+                "save the file as UTF-8, or use plain ASCII in names and comments".into()
+            }
             ReadError::NoRows { .. } => "check that the data are not all behind `#`".into(),
             ReadError::OneColumn { .. } => {
                 "separate columns by commas, `;`, tabs or blanks, and name the units".into()
@@ -528,6 +556,7 @@ impl ReadError {
             ReadError::FitsCard { .. } => "correct the card".into(),
             ReadError::FitsNoSpectrum { .. } => "check that this is the file that you meant".into(),
             ReadError::FitsSeveralUnits { .. } => "choose one by its number (0 is the primary HDU)".into(),
+            ReadError::FitsCellAxes { .. } => "write one spectrum a cell".into(),
             ReadError::FitsManyAxes { .. } => "cut out the spectrum of one position".into(),
             ReadError::FitsAxisType { .. } => "convert the axis to frequency or velocity".into(),
             ReadError::FitsTileCompressed { .. } => "uncompress the image first".into(),

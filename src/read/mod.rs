@@ -132,6 +132,12 @@ fn from_bytes(
         return fits::read(path, content, options);
     }
     let text = text::decode(path, content)?;
+    if is_named_fits(path) {
+        return Err(ReadError::Unrecognised {
+            path: path.to_path_buf(),
+            found: format!("`{}`", text.trim().chars().take(20).collect::<String>()),
+        });
+    }
     let lines = text::lines(text);
     let rows = text::data_lines(&lines);
     let Some(&first) = rows.first() else {
@@ -162,6 +168,15 @@ fn from_bytes(
     draft.finish(path, channels.axis, channels.values, |channel| {
         Place::Line(lines[channel])
     })
+}
+
+/// Whether a name promises FITS, so that text in the file is something else gone wrong.
+fn is_named_fits(path: &Path) -> bool {
+    let name = path.to_string_lossy().to_ascii_lowercase();
+    let name = name.strip_suffix(".gz").unwrap_or(&name);
+    [".fits", ".fit", ".fts"]
+        .iter()
+        .any(|ending| name.ends_with(ending))
 }
 
 /// A spectrum whose arrays are not checked yet.
