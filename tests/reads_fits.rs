@@ -246,6 +246,10 @@ fn impossible_cards_are_named_with_what_was_expected() {
             "NAXIS   =                    2",
             ["card NAXIS2: no such card", "a whole number"],
         ),
+        (
+            "BUNIT   = 'K",
+            ["card BUNIT: `BUNIT   = 'K`", "a card such as"],
+        ),
         ("CRVAL1  = 'zero    '", ["card CRVAL1: 'zero'", "a number"]),
         (
             "CRVAL1  =                1E999",

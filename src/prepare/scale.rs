@@ -305,6 +305,20 @@ impl ScaleError {
 /// # Errors
 ///
 /// [`ScaleError`] where efficiency, beam, frame, rest frequency or axis do not allow it.
+///
+/// ```
+/// use inrush::prepare::scale::{ScaleSettings, to_spectrum};
+/// use inrush::read::{ReadOptions, spectrum_from_bytes};
+/// let text = b"frequency_ghz,ta_k\n89.185,0.4\n89.2,0.8\n";
+/// let raw = spectrum_from_bytes("clump.csv".as_ref(), text, &ReadOptions::default())?;
+/// let mut settings = ScaleSettings::for_line(89.1885247e9);
+/// settings.eta_mb = Some(0.8);
+/// let spectrum = to_spectrum(&raw, &settings)?.spectrum;
+/// // astropy 8.0.2, doppler_radio
+/// assert!((spectrum.velocity_km_s()[1] - 11.847695432433614).abs() < 1e-9);
+/// assert_eq!(spectrum.temperature_k(), [1.0, 0.5]);
+/// # Ok::<(), Box<dyn std::error::Error>>(())
+/// ```
 pub fn to_spectrum(raw: &RawSpectrum, settings: &ScaleSettings) -> Result<Scaled, ScaleError> {
     let mut notes = Vec::new();
     check_settings(raw, settings)?;

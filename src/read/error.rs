@@ -3,7 +3,8 @@
 use std::fmt;
 use std::path::PathBuf;
 
-/// Where in a file something stands.
+/// Where in a file something stands; `Display` continues the file's name, as in `:12` and
+/// `: HDU 1, row 3`.
 #[derive(Clone, Debug, PartialEq, Eq)]
 pub enum Place {
     /// A line of text, from 1.
@@ -29,18 +30,17 @@ pub enum Place {
         /// Keyword.
         keyword: String,
     },
-    /// An option of the caller's.
-    Option(&'static str),
 }
 
 impl fmt::Display for Place {
     fn fmt(&self, formatter: &mut fmt::Formatter<'_>) -> fmt::Result {
         match self {
-            Place::Line(line) => write!(formatter, "{line}"),
-            Place::Row { unit, row } => write!(formatter, "HDU {unit}, row {row}"),
-            Place::Channel { unit, channel } => write!(formatter, "HDU {unit}, channel {channel}"),
-            Place::Card { unit, keyword } => write!(formatter, "HDU {unit}, card {keyword}"),
-            Place::Option(name) => write!(formatter, "option `{name}`"),
+            Place::Line(line) => write!(formatter, ":{line}"),
+            Place::Row { unit, row } => write!(formatter, ": HDU {unit}, row {row}"),
+            Place::Channel { unit, channel } => {
+                write!(formatter, ": HDU {unit}, channel {channel}")
+            }
+            Place::Card { unit, keyword } => write!(formatter, ": HDU {unit}, card {keyword}"),
         }
     }
 }
@@ -132,7 +132,7 @@ pub enum ReadError {
         expected: usize,
     },
     /// Text in a number's place.
-    #[error("{}:{place}: `{found}` in column `{column}`, expected a number", path.display())]
+    #[error("{}{place}: `{found}` in column `{column}`, expected a number", path.display())]
     NotANumber {
         /// The file.
         path: PathBuf,
@@ -186,7 +186,7 @@ pub enum ReadError {
         nearest: Option<String>,
     },
     /// No column plays a needed part.
-    #[error("{}:{place}: no {role} column among {columns}, expected one such as {expected}", path.display())]
+    #[error("{}{place}: no {role} column among {columns}, expected one such as {expected}", path.display())]
     NoColumnFor {
         /// The file.
         path: PathBuf,
@@ -202,7 +202,7 @@ pub enum ReadError {
         nearest: Option<String>,
     },
     /// More than one column could play a part.
-    #[error("{}:{place}: several {role} columns ({columns}), expected one", path.display())]
+    #[error("{}{place}: several {role} columns ({columns}), expected one", path.display())]
     SeveralColumnsFor {
         /// The file.
         path: PathBuf,
@@ -214,7 +214,7 @@ pub enum ReadError {
         columns: String,
     },
     /// A unit that is not known.
-    #[error("{}:{place}: unknown unit `{found}`, expected one of {expected}", path.display())]
+    #[error("{}{place}: unknown unit `{found}`, expected one of {expected}", path.display())]
     UnknownUnit {
         /// The file.
         path: PathBuf,
@@ -228,7 +228,7 @@ pub enum ReadError {
         nearest: Option<String>,
     },
     /// A unit that is not stated.
-    #[error("{}:{place}: no unit for the {role}, expected one of {expected}", path.display())]
+    #[error("{}{place}: no unit for the {role}, expected one of {expected}", path.display())]
     NoUnit {
         /// The file.
         path: PathBuf,
@@ -240,7 +240,7 @@ pub enum ReadError {
         expected: &'static str,
     },
     /// A column's name and its unit disagree.
-    #[error("{}:{place}: column `{column}` has the unit `{unit}`, expected the one in its name", path.display())]
+    #[error("{}{place}: column `{column}` has the unit `{unit}`, expected the one in its name", path.display())]
     UnitContradictsName {
         /// The file.
         path: PathBuf,
@@ -264,7 +264,7 @@ pub enum ReadError {
         expected: &'static str,
     },
     /// A velocity or frequency that is blank or not finite.
-    #[error("{}:{place}: blank velocity or frequency, expected a number in every channel", path.display())]
+    #[error("{}{place}: blank velocity or frequency, expected a number in every channel", path.display())]
     BlankAxis {
         /// The file.
         path: PathBuf,
@@ -272,7 +272,7 @@ pub enum ReadError {
         place: Place,
     },
     /// A velocity or frequency twice in a row.
-    #[error("{}:{place}: {value} repeats the channel before, expected strictly ascending or descending velocities or frequencies", path.display())]
+    #[error("{}{place}: {value} repeats the channel before, expected strictly ascending or descending velocities or frequencies", path.display())]
     RepeatedAxis {
         /// The file.
         path: PathBuf,
@@ -282,7 +282,7 @@ pub enum ReadError {
         value: f64,
     },
     /// Velocities or frequencies out of order.
-    #[error("{}:{place}: {value} after {previous}, expected strictly ascending or descending velocities or frequencies", path.display())]
+    #[error("{}{place}: {value} after {previous}, expected strictly ascending or descending velocities or frequencies", path.display())]
     UnsortedAxis {
         /// The file.
         path: PathBuf,
@@ -302,7 +302,7 @@ pub enum ReadError {
         channels: usize,
     },
     /// Axis and values differ in length.
-    #[error("{}:{place}: {axis} axis values for {values} channels, expected as many", path.display())]
+    #[error("{}{place}: {axis} axis values for {values} channels, expected as many", path.display())]
     LengthMismatch {
         /// The file.
         path: PathBuf,

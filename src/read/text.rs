@@ -71,7 +71,7 @@ pub(super) fn decode<'a>(path: &Path, bytes: &'a [u8]) -> Result<&'a str, ReadEr
         }
         ReadError::NotUtf8 {
             path: path.to_path_buf(),
-            line: 1 + before.iter().filter(|byte| **byte == b'\n').count(),
+            line: before.split(|byte| *byte == b'\n').count(),
             found: bytes[error.valid_up_to()],
         }
     })
