@@ -165,12 +165,10 @@ impl Canvas<'_> {
         align: Align,
         look: Look,
     ) -> Result<(), ReportError> {
-        let mut x = at.0 - self::shift(spans, align, look);
-        for (script, text) in spans {
-            let size_pt = look.size_pt * script.size();
-            let y = at.1 - script.rise() * look.size_pt * POINT_MM;
-            self.span(text, (x, y), size_pt, look, FontTransform::None)?;
-            x += text::span_width_mm(text, size_pt, look.weight);
+        let start = at.0 - shift(spans, align, look);
+        for span in placed(spans, look) {
+            let place = (start + span.along_mm, at.1 - span.rise_mm);
+            self.span(span.text, place, span.size_pt, look, FontTransform::None)?;
         }
         Ok(())
     }
@@ -182,12 +180,16 @@ impl Canvas<'_> {
         at: (f64, f64),
         look: Look,
     ) -> Result<(), ReportError> {
-        let mut y = at.1 + self::shift(spans, Align::Middle, look);
-        for (script, text) in spans {
-            let size_pt = look.size_pt * script.size();
-            let x = at.0 - script.rise() * look.size_pt * POINT_MM;
-            self.span(text, (x, y), size_pt, look, FontTransform::Rotate270)?;
-            y -= text::span_width_mm(text, size_pt, look.weight);
+        let start = at.1 + shift(spans, Align::Middle, look);
+        for span in placed(spans, look) {
+            let place = (at.0 - span.rise_mm, start - span.along_mm);
+            self.span(
+                span.text,
+                place,
+                span.size_pt,
+                look,
+                FontTransform::Rotate270,
+            )?;
         }
         Ok(())
     }
@@ -214,6 +216,34 @@ impl Canvas<'_> {
             .draw(&Text::new(text, place(at), style))
             .map_err(|error| failed(&error))
     }
+}
+
+/// One span of a text, without blanks at its ends, which SVG drops.
+struct PlacedSpan<'a> {
+    text: &'a str,
+    size_pt: f64,
+    /// From the start of the text, and above its baseline.
+    along_mm: f64,
+    rise_mm: f64,
+}
+
+fn placed(spans: &Spans, look: Look) -> Vec<PlacedSpan<'_>> {
+    let mut along_mm = 0.0;
+    let mut placed = Vec::with_capacity(spans.len());
+    for (script, text) in spans {
+        let size_pt = look.size_pt * script.size();
+        let width = |text: &str| text::span_width_mm(text, size_pt, look.weight);
+        let trimmed = text.trim_start();
+        let blanks = &text[..text.len() - trimmed.len()];
+        placed.push(PlacedSpan {
+            text: trimmed.trim_end(),
+            size_pt,
+            along_mm: along_mm + width(blanks),
+            rise_mm: script.rise() * look.size_pt * POINT_MM,
+        });
+        along_mm += width(text);
+    }
+    placed
 }
 
 fn shift(spans: &Spans, align: Align, look: Look) -> f64 {

@@ -119,9 +119,9 @@ struct Layout {
     /// Names of the models in the order of their strokes.
     models: Vec<String>,
     notes: Vec<PlacedNote>,
-    /// Baseline of the first row of numbers.
+    /// Top of the block of numbers.
     numbers_top: f64,
-    number_rows: Vec<NumberRow>,
+    numbers: Numbers,
     cautions_top: f64,
     cautions: Vec<Vec<String>>,
     height_mm: f64,
@@ -139,12 +139,11 @@ impl Layout {
         let notes = placed_notes(figure, axis_end + leading_mm(NOTE));
         let notes_end = notes.last().map_or(axis_end, |note| note.at.1) + 1.6;
 
-        let number_rows = number_rows(&figure.numbers);
+        let numbers = Numbers::of(&figure.numbers);
         let numbers_top = notes_end;
-        let rows: usize = number_rows.iter().map(NumberRow::lines).sum();
         let mut end = numbers_top;
-        if rows > 0 {
-            end += 1.2 + leading_mm(LABEL) * rows as f64 + 0.8;
+        if numbers.lines() > 0 {
+            end += 1.2 + leading_mm(LABEL) * numbers.lines() as f64 + 0.8;
         }
         let cautions = caution_lines(&figure.cautions);
         let cautions_top = end;
@@ -155,13 +154,13 @@ impl Layout {
         Self {
             title,
             velocity,
-            velocity_ticks: Ticks::between(velocity.low, velocity.high, 7),
+            velocity_ticks: Ticks::between(velocity.low, velocity.high, 8),
             thick,
             thin,
             models: model_names(figure),
             notes,
             numbers_top,
-            number_rows,
+            numbers,
             cautions_top,
             cautions,
             height_mm: end + MARGIN_MM,
@@ -241,7 +240,10 @@ impl Note {
     }
 
     fn mark_mm(self) -> f64 {
-        if self == Self::Thin { 2.0 } else { 4.0 }
+        match self {
+            Self::Data | Self::Window => 4.0,
+            Self::Systemic | Self::Thin => 2.0,
+        }
     }
 }
 
@@ -252,7 +254,7 @@ struct PlacedNote {
 }
 
 fn placed_notes(figure: &PairFigure, first_baseline: f64) -> Vec<PlacedNote> {
-    const BETWEEN_MM: f64 = 3.2;
+    const BETWEEN_MM: f64 = 2.4;
     let mut shown = vec![Note::Data, Note::Window];
     if figure.v_lsr_km_s.is_some() {
         shown.push(Note::Systemic);
@@ -274,51 +276,80 @@ fn placed_notes(figure: &PairFigure, first_baseline: f64) -> Vec<PlacedNote> {
     placed
 }
 
-/// One row of the block of numbers: two entries side by side, one, or one on two lines.
-struct NumberRow {
+/// The block of numbers: two columns, the second after the first, where both fit, else one.
+struct Numbers {
     entries: Vec<(Spans, Spans)>,
-    value_below: bool,
+    /// Entries of one column.
+    rows: usize,
+    /// Where labels and values of each column begin on the page.
+    places: Vec<(f64, f64)>,
+    /// Whether values stand below their labels.
+    values_below: bool,
 }
 
-impl NumberRow {
-    fn lines(&self) -> usize {
-        if self.value_below { 2 } else { 1 }
-    }
-}
+const COLUMN_GAP_MM: f64 = 6.0;
+const NUMBERS_LEFT_MM: f64 = MARGIN_MM + 0.5;
+const NUMBERS_ROOM_MM: f64 = PAGE_MM - 2.0 * NUMBERS_LEFT_MM;
+/// Entries that are few enough for one column even where two would fit.
+const ONE_COLUMN: usize = 3;
 
-const COLUMN_GAP_MM: f64 = 5.0;
-
-fn number_rows(numbers: &[(String, String)]) -> Vec<NumberRow> {
-    const BETWEEN_MM: f64 = 2.0;
-    let room = PAGE_MM - 2.0 * MARGIN_MM - 1.0;
-    let half = (room - COLUMN_GAP_MM) / 2.0;
-    let entries: Vec<_> = numbers
-        .iter()
-        .map(|(label, value)| {
-            let (label, value) = (text::markup(label), text::number(value));
-            let width = text::width_mm(&label, LABEL.size_pt, LABEL.weight)
-                + BETWEEN_MM
-                + text::width_mm(&value, VALUE.size_pt, VALUE.weight);
-            (width, (label, value))
-        })
-        .collect();
-    let mut rows: Vec<NumberRow> = Vec::new();
-    let mut open = false;
-    for (width, entry) in entries {
-        if open && width <= half {
-            if let Some(row) = rows.last_mut() {
-                row.entries.push(entry);
-            }
-            open = false;
-            continue;
+impl Numbers {
+    fn of(numbers: &[(String, String)]) -> Self {
+        let entries: Vec<_> = numbers
+            .iter()
+            .map(|(label, value)| (text::markup(label), text::number(value)))
+            .collect();
+        let half = entries.len().div_ceil(2);
+        let (two, two_width) = number_places(&entries, half);
+        if entries.len() > ONE_COLUMN && two_width <= NUMBERS_ROOM_MM {
+            return Self {
+                entries,
+                rows: half,
+                places: two,
+                values_below: false,
+            };
         }
-        open = width <= half;
-        rows.push(NumberRow {
-            entries: vec![entry],
-            value_below: width > room,
-        });
+        let (one, width) = number_places(&entries, entries.len());
+        let values_below = width > NUMBERS_ROOM_MM;
+        Self {
+            rows: entries.len(),
+            entries,
+            places: if values_below {
+                vec![(NUMBERS_LEFT_MM, NUMBERS_LEFT_MM + COLUMN_GAP_MM)]
+            } else {
+                one
+            },
+            values_below,
+        }
     }
-    rows
+
+    fn lines(&self) -> usize {
+        if self.values_below {
+            2 * self.rows
+        } else {
+            self.rows
+        }
+    }
+}
+
+/// Where labels and values begin in columns of so many rows, and the width of all columns.
+fn number_places(entries: &[(Spans, Spans)], rows: usize) -> (Vec<(f64, f64)>, f64) {
+    const BETWEEN_MM: f64 = 2.4;
+    let mut places = Vec::new();
+    let mut left = NUMBERS_LEFT_MM;
+    for column in entries.chunks(rows.max(1)) {
+        let label = widest(column.iter().map(|(label, _)| label), LABEL);
+        let value = widest(column.iter().map(|(_, value)| value), VALUE);
+        places.push((left, left + label + BETWEEN_MM));
+        left += label + BETWEEN_MM + value + COLUMN_GAP_MM;
+    }
+    (places, left - COLUMN_GAP_MM - NUMBERS_LEFT_MM)
+}
+
+fn widest<'a>(texts: impl Iterator<Item = &'a Spans>, look: Look) -> f64 {
+    texts
+        .map(|spans| text::width_mm(spans, look.size_pt, look.weight))
+        .fold(0.0, f64::max)
 }
 
 fn caution_lines(cautions: &[String]) -> Vec<Vec<String>> {
@@ -347,10 +378,13 @@ struct Sheet<'a, 'svg> {
 
 impl Sheet<'_, '_> {
     fn panel(&self, panel: &Panel, place: &PanelPlace, with_key: bool) -> Drawn {
-        let key = Key::of(if with_key { &self.layout.models } else { &[] });
+        let name = self.name(panel);
+        let name_width = text::width_mm(&name, NAME.size_pt, NAME.weight);
+        let key = Key::of(if with_key { &self.layout.models } else { &[] }, name_width);
         let (temperature, key_left) = self.temperature_axis(panel, place, &key);
         self.backdrop(panel, place.top, place.bottom)?;
         self.level(&temperature, 0.0, solid(ZERO, 0.16))?;
+        self.systemic(place.top, place.bottom)?;
         let data = steps(panel, &panel.temperature_k);
         self.draw_steps(&data, &temperature, solid(DATA, 0.26))?;
         for curve in panel.curves.iter().rev() {
@@ -373,7 +407,6 @@ impl Sheet<'_, '_> {
         self.canvas
             .upward_text(&label, (MARGIN_MM + 2.4, middle), LABEL)?;
 
-        let name = self.name(panel);
         let at = (PLOT_LEFT_MM + 1.4, place.top + NAME_DEPTH_MM);
         self.canvas.text(&name, at, Align::Start, NAME)?;
         self.key(&key, key_left, place.top)?;
@@ -472,7 +505,7 @@ impl Sheet<'_, '_> {
         extent(data.chain(models))
     }
 
-    /// Window, guides at the ticks, and the systemic velocity with its error.
+    /// The window, and guides at the ticks.
     fn backdrop(&self, panel: &Panel, top: f64, bottom: f64) -> Drawn {
         let axis = &self.layout.velocity;
         self.strip(
@@ -487,6 +520,12 @@ impl Sheet<'_, '_> {
             self.canvas
                 .line(&[(x, top), (x, bottom)], solid(GUIDE, 0.14))?;
         }
+        Ok(())
+    }
+
+    /// The systemic velocity with its error as a band.
+    fn systemic(&self, top: f64, bottom: f64) -> Drawn {
+        let axis = &self.layout.velocity;
         if let Some(v_lsr) = self.figure.v_lsr_km_s {
             if v_lsr.err.is_finite() {
                 let (low, high) = (v_lsr.value - v_lsr.err, v_lsr.value + v_lsr.err);
@@ -641,6 +680,7 @@ impl Sheet<'_, '_> {
             self.level(&axis, value, solid(GUIDE, 0.14))?;
         }
         self.level(&axis, 0.0, solid(ZERO, 0.16))?;
+        self.systemic(top, bottom)?;
         for (index, curve) in panel.curves.iter().enumerate().rev() {
             let width_mm = if index == 0 { 0.24 } else { 0.16 };
             let stroke = solid(self.stroke(curve).color, width_mm);
@@ -762,34 +802,23 @@ impl Sheet<'_, '_> {
     }
 
     fn numbers(&self) -> Drawn {
-        if self.layout.number_rows.is_empty() {
+        let numbers = &self.layout.numbers;
+        if numbers.entries.is_empty() {
             return Ok(());
         }
-        let mut baseline = self.rule(self.layout.numbers_top)? + leading_mm(LABEL) * 0.8;
-        let left = MARGIN_MM + 0.5;
-        let room = PAGE_MM - 2.0 * left;
-        let half = (room - COLUMN_GAP_MM) / 2.0;
-        for row in &self.layout.number_rows {
-            for (column, (label, value)) in row.entries.iter().enumerate() {
-                let x = left + column as f64 * (half + COLUMN_GAP_MM);
-                let is_half = row.entries.len() == 2 || self.fits(label, value, half);
-                let end = x + if is_half { half } else { room };
-                self.canvas
-                    .text(label, (x, baseline), Align::Start, SOFT_LABEL)?;
-                if row.value_below {
-                    baseline += leading_mm(LABEL);
-                }
-                self.canvas
-                    .text(value, (end, baseline), Align::End, VALUE)?;
-            }
-            baseline += leading_mm(LABEL);
+        let first = self.rule(self.layout.numbers_top)? + leading_mm(LABEL) * 0.8;
+        let lines_per_row = if numbers.values_below { 2.0 } else { 1.0 };
+        for (index, (label, value)) in numbers.entries.iter().enumerate() {
+            let (column, row) = (index / numbers.rows, index % numbers.rows);
+            let (label_x, value_x) = numbers.places[column];
+            let label_y = first + leading_mm(LABEL) * lines_per_row * row as f64;
+            let value_y = label_y + leading_mm(LABEL) * (lines_per_row - 1.0);
+            self.canvas
+                .text(label, (label_x, label_y), Align::Start, SOFT_LABEL)?;
+            self.canvas
+                .text(value, (value_x, value_y), Align::Start, VALUE)?;
         }
         Ok(())
-    }
-
-    fn fits(&self, label: &Spans, value: &Spans, room: f64) -> bool {
-        let label = text::width_mm(label, LABEL.size_pt, LABEL.weight);
-        label + 2.0 + text::width_mm(value, VALUE.size_pt, VALUE.weight) <= room
     }
 
     fn cautions(&self) -> Drawn {
@@ -832,8 +861,9 @@ struct Key {
 }
 
 impl Key {
-    fn of(models: &[String]) -> Self {
-        let room = 0.42 * (PLOT_RIGHT_MM - PLOT_LEFT_MM) - SAMPLE_MM - SAMPLE_GAP_MM;
+    fn of(models: &[String], name_width: f64) -> Self {
+        // The key may stand beside the line's name.
+        let room = PLOT_RIGHT_MM - PLOT_LEFT_MM - name_width - 6.0 - SAMPLE_MM - SAMPLE_GAP_MM;
         let labels: Vec<_> = models
             .iter()
             .map(|name| text::shortened(name, room, TICK.size_pt, TICK.weight))

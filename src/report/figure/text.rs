@@ -176,9 +176,10 @@ fn formula(word: &str) -> Option<Spans> {
     const ISOTOPES: [&str; 8] = ["13C", "18O", "17O", "15N", "34S", "33S", "29Si", "30Si"];
     let mut spans = Spans::new();
     let mut rest = word;
-    if let Some(cyclic) = rest.strip_prefix("c-") {
-        push(&mut spans, Script::Normal, "c-");
-        rest = cyclic;
+    // Cyclic, ortho, para, linear.
+    if let Some((prefix @ ("c" | "o" | "p" | "l"), molecule)) = rest.split_once('-') {
+        push(&mut spans, Script::Normal, &format!("{prefix}-"));
+        rest = molecule;
     }
     let mut elements = 0;
     while !rest.is_empty() {
@@ -319,6 +320,10 @@ mod tests {
             ("H2CO 2(1,2)-1(1,1)", "H_{2}CO 2(1,2)\u{2013}1(1,1)"),
             ("C34S 2-1", "C^{34}S 2\u{2013}1"),
             ("my line-5", "my line-5"),
+            (
+                "o-H2C18O 2(1,2)-1(1,1)",
+                "o-H_{2}C^{18}O 2(1,2)\u{2013}1(1,1)",
+            ),
             ("CS", "CS"),
             ("", ""),
         ] {
