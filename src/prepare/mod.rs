@@ -12,8 +12,8 @@ pub use rebin::rebin;
 
 use crate::line::Component;
 use crate::numeric::Autoregression;
-use crate::spectrum::{Noise, Spectrum, SpectrumError, Window};
 use crate::numeric::robust::clipped_scale;
+use crate::spectrum::{Noise, Spectrum, SpectrumError, Window};
 use baseline::{CORE_CLIP, Channels, Clipped, clipped_fit, robust_start};
 use regions::{Boxes, Region};
 
@@ -472,8 +472,7 @@ impl Search<'_> {
     fn run(&self) -> Result<Found, PrepareError> {
         let channels = self.channels;
         let count = channels.len();
-        let mut fit =
-            robust_start(channels, self.order).ok_or_else(|| self.too_few(count))?;
+        let mut fit = robust_start(channels, self.order).ok_or_else(|| self.too_few(count))?;
         let mut excluded = vec![false; count];
         let mut line: Option<Region> = None;
         let mut round = 0;
@@ -549,10 +548,7 @@ impl Search<'_> {
         let process = self.process(&residuals, scale, excluded);
         let terms = self.order + 1;
         let process = process.before_subtraction(terms, free.len());
-        (
-            corrected_scale(scale, terms, free.len(), &process),
-            process,
-        )
+        (corrected_scale(scale, terms, free.len(), &process), process)
     }
 
     fn boxes(&self, fit: &Clipped, scale: f64, process: &Autoregression) -> Boxes {
