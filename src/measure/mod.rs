@@ -125,6 +125,9 @@ impl Default for MeasureSettings {
 /// half of a self-absorbed line's peak.
 const REACH_PER_FWHM: f64 = 0.45;
 
+/// Reach of the kernel that measures a dip, in distances between the peaks, where that is more.
+const DIP_REACH: f64 = 0.5;
+
 /// A component is measured alone if its neighbours are at least this many thin line widths away.
 const ISOLATED_FROM: f64 = 3.0;
 
@@ -159,11 +162,13 @@ pub fn measure(
         .map(|peak| estimate(peak.value_k, peak.value_err(&thick_noise)))
         .filter(|peak| peak.value >= settings.detection_sigma * peak.err);
     let profile = Profile {
+        spectrum: &thick.spectrum,
         noise: &thick_noise,
         extrema: span
             .filter(|_| peak_of_all.is_some())
             .map(|span| smoothed.extrema(span.low_km_s, span.high_km_s))
             .unwrap_or_default(),
+        reach_km_s: smoothed.reach_km_s(),
         dip_sigma: settings.dip_sigma,
     };
     let v_thick_km_s = span.and_then(|span| {
@@ -299,8 +304,10 @@ fn thin_two_peaked(
     };
     let smoothed = Smoothed::new(&thin.spectrum, REACH_PER_FWHM * line.fwhm_km_s.value);
     let profile = Profile {
+        spectrum: &thin.spectrum,
         noise,
         extrema: smoothed.extrema(span.low_km_s, span.high_km_s),
+        reach_km_s: smoothed.reach_km_s(),
         dip_sigma: settings.dip_sigma,
     };
     profile.two_peaks().is_some()
@@ -350,15 +357,17 @@ impl Span {
 
 /// Extrema of a smoothed line.
 struct Profile<'a> {
+    spectrum: &'a Spectrum,
     noise: &'a ChannelNoise<'a>,
     extrema: Vec<Extremum>,
+    reach_km_s: f64,
     dip_sigma: f64,
 }
 
 /// Two peaks and the dip between them.
 struct Peaks<'a> {
     blue: &'a Extremum,
-    dip: &'a Extremum,
+    dip: Extremum,
     red: &'a Extremum,
 }
 
@@ -431,10 +440,21 @@ impl Profile<'_> {
                 && stands_out
                 && best.as_ref().is_none_or(|found| significance > found.0)
             {
+                let dip = self.whole_dip(blue, red).unwrap_or_else(|| dip.clone());
                 best = Some((significance, Peaks { blue, dip, red }));
             }
         }
         best.map(|found| found.1)
+    }
+
+    /// The dip smoothed over its own extent: in a wide one, noise makes several minima.
+    fn whole_dip(&self, blue: &Extremum, red: &Extremum) -> Option<Extremum> {
+        let reach = DIP_REACH * (red.v_km_s - blue.v_km_s);
+        Smoothed::new(self.spectrum, reach.max(self.reach_km_s))
+            .extrema(blue.v_km_s, red.v_km_s)
+            .into_iter()
+            .filter(|extremum| !extremum.is_maximum)
+            .min_by(|a, b| a.value_k.total_cmp(&b.value_k))
     }
 }
 
@@ -445,10 +465,10 @@ impl Peaks<'_> {
         TwoPeaks {
             v_blue_km_s: v(self.blue),
             v_red_km_s: v(self.red),
-            v_dip_km_s: v(self.dip),
+            v_dip_km_s: v(&self.dip),
             blue_k: k(self.blue),
             red_k: k(self.red),
-            dip_k: k(self.dip),
+            dip_k: k(&self.dip),
         }
     }
 

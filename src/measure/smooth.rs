@@ -41,6 +41,11 @@ impl<'a> Smoothed<'a> {
         }
     }
 
+    /// Reach of the kernel to either side, km/s.
+    pub fn reach_km_s(&self) -> f64 {
+        self.reach_km_s
+    }
+
     /// Calls `take` with every channel near v and its weight; `None` where too few are usable.
     fn weigh(&self, v: f64, mut take: impl FnMut(usize, f64)) -> Option<()> {
         let velocity = self.spectrum.velocity_km_s();
