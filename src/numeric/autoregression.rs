@@ -17,9 +17,9 @@ pub struct Autoregression {
 const WINSORISE_AT: f64 = 3.5;
 
 /// Improvement of -2 ln(likelihood) that an order must bring, each, before noise counts as
-/// correlated: white noise passes in under 5 % of cases (chi-square with m degrees of freedom above
-/// 5 m for some m: 3.5 %).
-const WHITE_PENALTY: f64 = 5.0;
+/// correlated, where the logarithm of the number of values is not more (chi-square with m degrees of
+/// freedom above 6 m for some m: 1.7 % of white noise, and line wings add to it).
+const WHITE_PENALTY: f64 = 6.0;
 
 /// Improvement that each order must bring once noise counts as correlated (between Akaike's 2 and
 /// the logarithm of the number of values).

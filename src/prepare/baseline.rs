@@ -10,6 +10,9 @@ const CORE_SHARE: f64 = 0.35;
 /// The band is cut into this many blocks; every pair of them gives a start.
 const BLOCKS: usize = 6;
 
+/// The starts are tried on about this many channels, evenly taken from the band.
+const START_CHANNELS: usize = 120;
+
 /// Clip of the core scale, in standard deviations.
 pub(super) const CORE_CLIP: f64 = 3.0;
 
@@ -42,6 +45,17 @@ impl Channels {
             value,
             index,
             axis,
+        }
+    }
+
+    /// Every `stride`-th channel.
+    fn every(&self, stride: usize) -> Self {
+        let take = |values: &[f64]| values.iter().copied().step_by(stride).collect();
+        Self {
+            velocity: take(&self.velocity),
+            value: take(&self.value),
+            index: self.index.iter().copied().step_by(stride).collect(),
+            axis: self.axis,
         }
     }
 
@@ -100,27 +114,30 @@ impl Channels {
 /// Least trimmed squares (Rousseeuw 1984, doi:10.1080/01621459.1984.10477105): from lines through
 /// every pair of blocks of the band, refit to the channels nearest, keep the best.
 pub(super) fn robust_start(channels: &Channels, order: usize) -> Option<Clipped> {
-    let count = channels.len();
-    let core = ((count as f64 * CORE_SHARE) as usize)
-        .max(order + 3)
-        .min(count);
+    let coarse = channels.every(channels.len() / START_CHANNELS + 1);
+    let count = coarse.len();
+    let core = |count: usize| {
+        ((count as f64 * CORE_SHARE) as usize)
+            .max(order + 3)
+            .min(count)
+    };
     let block = |b: usize| (b * count / BLOCKS)..((b + 1) * count / BLOCKS);
     let mut starts: Vec<(f64, Polynomial)> = Vec::new();
     for first in 0..BLOCKS {
         for second in first..BLOCKS {
             let chosen: Vec<usize> = block(first).chain(block(second)).collect();
             let degree = if first == second { 0 } else { order.min(1) };
-            let Some(line) = channels.fit(degree, &chosen) else {
+            let Some(line) = coarse.fit(degree, &chosen) else {
                 continue;
             };
-            starts.extend(concentrate(channels, line, order.min(1), core, 3));
+            starts.extend(concentrate(&coarse, line, order.min(1), core(count), 3));
         }
     }
     starts.sort_by(|a, b| a.0.total_cmp(&b.0));
     let best = starts
         .into_iter()
         .take(3)
-        .filter_map(|(_, line)| concentrate(channels, line, order, core, 12))
+        .filter_map(|(_, line)| concentrate(channels, line, order, core(channels.len()), 12))
         .min_by(|a, b| a.0.total_cmp(&b.0))?
         .1;
     // The usual last step: least squares on all that the start does not call outliers.
