@@ -173,15 +173,18 @@ impl Boxes {
 
     /// All regions whose best box reaches `threshold` standard deviations, most significant first.
     ///
-    /// `favoured` channels need one standard deviation less: a line is expected there.
-    pub fn regions(&self, threshold: f64, favoured: Option<(usize, usize)>) -> Vec<Region> {
+    /// `favoured` channels need one standard deviation less: a line is expected there. The significance
+    /// of the strongest box comes with them, found or not.
+    pub fn regions(&self, threshold: f64, favoured: Option<(usize, usize)>) -> (Vec<Region>, f64) {
         let widths = self.widths();
         let mut taken = vec![false; self.len()];
         let mut regions = Vec::new();
+        let mut strongest = 0.0_f64;
         while regions.len() < MOST_REGIONS {
             let Some(found) = self.best(&taken, &widths) else {
                 break;
             };
+            strongest = strongest.max(found.significance.abs());
             let expected =
                 favoured.is_some_and(|(low, high)| found.low <= high && found.high >= low);
             let needed = if expected { threshold - 1.0 } else { threshold };
@@ -194,6 +197,6 @@ impl Boxes {
                 regions.push(grown);
             }
         }
-        regions
+        (regions, strongest)
     }
 }
