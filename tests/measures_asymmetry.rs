@@ -2,6 +2,8 @@
 //!
 //! Profiles are two-layer ones (Myers et al. 1996, doi:10.1086/310146), written out here.
 
+#![allow(clippy::unwrap_used, clippy::print_stdout)]
+
 use inrush::constants::{FWHM_PER_SIGMA, photon_temperature_k};
 use inrush::measure::{MeasureSettings, Measures, ProfileClass, ThinLine, TwoPeaks, measure};
 use inrush::numeric::{Autoregression, Estimate};

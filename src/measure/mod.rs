@@ -13,7 +13,7 @@ use crate::constants::FWHM_PER_SIGMA;
 use crate::line::Component;
 use crate::numeric::Estimate;
 use crate::prepare::Prepared;
-use crate::spectrum::Spectrum;
+use crate::spectrum::{Spectrum, Window};
 use noise::ChannelNoise;
 use smooth::{Extremum, Smoothed, difference};
 use statrs::distribution::{ContinuousCDF, Normal};
@@ -166,7 +166,7 @@ pub fn measure(
         noise: &thick_noise,
         extrema: span
             .filter(|_| peak_of_all.is_some())
-            .map(|span| smoothed.extrema(span.low_km_s, span.high_km_s))
+            .map(|span| smoothed.extrema(span.window.low_km_s, span.window.high_km_s))
             .unwrap_or_default(),
         reach_km_s: smoothed.reach_km_s(),
         dip_sigma: settings.dip_sigma,
@@ -306,7 +306,7 @@ fn thin_two_peaked(
     let profile = Profile {
         spectrum: &thin.spectrum,
         noise,
-        extrema: smoothed.extrema(span.low_km_s, span.high_km_s),
+        extrema: smoothed.extrema(span.window.low_km_s, span.window.high_km_s),
         reach_km_s: smoothed.reach_km_s(),
         dip_sigma: settings.dip_sigma,
     };
@@ -316,8 +316,7 @@ fn thin_two_peaked(
 /// The range in which one component stands alone.
 #[derive(Clone, Copy, Debug)]
 struct Span {
-    low_km_s: f64,
-    high_km_s: f64,
+    window: Window,
     /// Offset of that component from the line's rest frequency.
     offset_km_s: f64,
 }
@@ -327,8 +326,7 @@ impl Span {
     fn of(prepared: &Prepared, components: &[Component], line: Option<&ThinLine>) -> Option<Self> {
         let window = prepared.window;
         let whole = Self {
-            low_km_s: window.low_km_s,
-            high_km_s: window.high_km_s,
+            window,
             offset_km_s: components.first().map_or(0.0, |one| one.offset_km_s),
         };
         if components.len() < 2 {
@@ -348,8 +346,10 @@ impl Span {
         }
         let centre = line.v_km_s.value + main.offset_km_s;
         Some(Self {
-            low_km_s: window.low_km_s.max(centre - 0.5 * gap),
-            high_km_s: window.high_km_s.min(centre + 0.5 * gap),
+            window: Window {
+                low_km_s: window.low_km_s.max(centre - 0.5 * gap),
+                high_km_s: window.high_km_s.min(centre + 0.5 * gap),
+            },
             offset_km_s: main.offset_km_s,
         })
     }
@@ -541,13 +541,13 @@ impl<'a> About<'a> {
         detection_sigma: f64,
     ) -> Option<Self> {
         let centre_km_s = line.v_km_s.value + span.offset_km_s;
-        if centre_km_s <= span.low_km_s || centre_km_s >= span.high_km_s {
+        if centre_km_s <= span.window.low_km_s || centre_km_s >= span.window.high_km_s {
             return None;
         }
         let channels: Vec<usize> = (0..spectrum.len())
             .filter(|&channel| {
-                let v = spectrum.velocity_km_s()[channel];
-                spectrum.is_usable(channel) && v >= span.low_km_s && v <= span.high_km_s
+                spectrum.is_usable(channel)
+                    && span.window.contains(spectrum.velocity_km_s()[channel])
             })
             .collect();
         let mut weights = vec![0.0; spectrum.len()];

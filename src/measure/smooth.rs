@@ -103,12 +103,14 @@ impl<'a> Smoothed<'a> {
 
     /// All extrema within a range, ascending in velocity; maxima and minima alternate.
     pub fn extrema(&self, low: f64, high: f64) -> Vec<Extremum> {
-        let steps = ((high - low) / (self.reach_km_s / 8.0)).ceil().max(2.0);
-        let at = |k: f64| low + (high - low) * k / steps;
+        let step = self.reach_km_s / 8.0;
         let mut found = Vec::new();
         let mut before: Option<(f64, f64)> = None;
-        for k in 0..=(steps as usize) {
-            let v = at(k as f64);
+        let mut steps = 0_u32;
+        let mut v = low;
+        while v < high {
+            v = (low + step * f64::from(steps)).min(high);
+            steps += 1;
             let Some(slope) = self.slope(v) else {
                 before = None;
                 continue;

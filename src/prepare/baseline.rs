@@ -3,9 +3,9 @@
 use crate::numeric::polynomial::{Factor, Polynomial, ScaledAxis};
 use crate::numeric::robust::{clipped_scale, core_scale};
 
-/// Share of the channels that the robust start rests on: less than what the widest line that is to
+/// Per cent of the channels that the robust start rests on: less than what the widest line that is to
 /// be survived leaves free.
-const CORE_SHARE: f64 = 0.35;
+const CORE_PERCENT: usize = 35;
 
 /// The band is cut into this many blocks; every pair of them gives a start.
 const BLOCKS: usize = 6;
@@ -15,6 +15,10 @@ const START_CHANNELS: usize = 120;
 
 /// Clip of the core scale, in standard deviations.
 pub(super) const CORE_CLIP: f64 = 3.0;
+
+/// Clip of the noise on line-free channels, in standard deviations: wider, so that few channels bias
+/// it less.
+pub(super) const NOISE_CLIP: f64 = 3.5;
 
 /// Channels of one spectrum that hold a number, in order.
 pub(super) struct Channels {
@@ -116,11 +120,7 @@ impl Channels {
 pub(super) fn robust_start(channels: &Channels, order: usize) -> Option<Clipped> {
     let coarse = channels.every(channels.len() / START_CHANNELS + 1);
     let count = coarse.len();
-    let core = |count: usize| {
-        ((count as f64 * CORE_SHARE) as usize)
-            .max(order + 3)
-            .min(count)
-    };
+    let core = |count: usize| (count * CORE_PERCENT / 100).max(order + 3).min(count);
     let block = |b: usize| (b * count / BLOCKS)..((b + 1) * count / BLOCKS);
     let mut starts: Vec<(f64, Polynomial)> = Vec::new();
     for first in 0..BLOCKS {
@@ -222,7 +222,7 @@ pub(super) fn clipped_fit(
         let baseline = channels.fit(order, &kept)?;
         let residuals = channels.residuals(&baseline);
         let on_free: Vec<f64> = free.iter().map(|&i| residuals[i]).collect();
-        let scale = clipped_scale(&on_free, CORE_CLIP);
+        let scale = clipped_scale(&on_free, NOISE_CLIP);
         let next: Vec<usize> = free
             .iter()
             .copied()
@@ -241,7 +241,7 @@ pub(super) fn clipped_fit(
     let residuals = channels.residuals(&baseline);
     let on_free: Vec<f64> = free.iter().map(|&i| residuals[i]).collect();
     Some(Clipped {
-        scale: clipped_scale(&on_free, CORE_CLIP),
+        scale: clipped_scale(&on_free, NOISE_CLIP),
         baseline,
         kept,
     })

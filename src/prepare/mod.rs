@@ -14,7 +14,7 @@ use crate::line::Component;
 use crate::numeric::Autoregression;
 use crate::numeric::robust::clipped_scale;
 use crate::spectrum::{Noise, Spectrum, SpectrumError, Window};
-use baseline::{CORE_CLIP, Channels, Clipped, clipped_fit, robust_start};
+use baseline::{Channels, Clipped, NOISE_CLIP, clipped_fit, robust_start};
 use regions::{Boxes, Region};
 
 /// A spectrum ready to be measured and fitted.
@@ -233,8 +233,8 @@ const MOST_ROUNDS: usize = 12;
 /// significant: smoothed noise must not be sorted into line-free and not.
 const FIRST_ROUND: f64 = 2.0;
 
-/// Share of a line's width that is added to its window on either side.
-const MARGIN_SHARE: f64 = 0.2;
+/// Per cent of a line's width that are added to its window on either side.
+const MARGIN_PERCENT: usize = 20;
 
 /// A line seen over a straight baseline is kept if it takes at most this share of the band.
 const WIDEST_KEPT: f64 = 0.5;
@@ -515,9 +515,9 @@ impl Search<'_> {
         }
         let (scale, process) = self.noise(&fit, &exclusion.channels);
         Ok(Found {
+            fit,
             scale,
             process,
-            fit,
             exclusion,
         })
     }
@@ -556,7 +556,7 @@ impl Search<'_> {
             .filter(|&i| !excluded[i])
             .map(|i| residuals[i])
             .collect();
-        let scale = clipped_scale(&free, CORE_CLIP);
+        let scale = clipped_scale(&free, NOISE_CLIP);
         let process = self.process(&residuals, scale, excluded);
         let terms = self.order + 1;
         let process = process.before_subtraction(terms, free.len());
@@ -742,8 +742,7 @@ impl Search<'_> {
         let last = self.channels.len() - 1;
         let free = excluded.iter().filter(|&&is_excluded| !is_excluded).count();
         let spare = free.saturating_sub(self.needed.max(self.channels.len() / 5)) / 2;
-        let wanted =
-            ((line.width().min(2 * main_width) as f64 * MARGIN_SHARE).round() as usize).max(2);
+        let wanted = (line.width().min(2 * main_width) * MARGIN_PERCENT / 100).max(2);
         let margin = wanted.min(spare);
         (
             line.low.saturating_sub(margin),
