@@ -1,6 +1,6 @@
 //! Damaged copies of small valid files of every format: each is read or refused with a message,
 //! none panics, and memory stays within bounds.
-#![allow(clippy::unwrap_used)] // A failed helper fails its test.
+#![allow(clippy::unwrap_used)] // What fails below a test fails the test.
 #![allow(clippy::cast_possible_truncation)] // Random numbers are cut on purpose.
 
 use std::fs;

@@ -1,5 +1,5 @@
 //! FITS images and tables that are damaged, incomplete or not of one spectrum: what they are told.
-#![allow(clippy::unwrap_used)] // A failed helper fails its test.
+#![allow(clippy::unwrap_used)] // What fails below a test fails the test.
 
 use std::path::Path;
 

@@ -1,5 +1,5 @@
 //! CSV, ECSV and plain columns: what is accepted, and what a bad file is told.
-#![allow(clippy::unwrap_used)] // A failed helper fails its test.
+#![allow(clippy::unwrap_used)] // What fails below a test fails the test.
 
 use std::path::Path;
 

@@ -1,6 +1,6 @@
 //! Files written by astropy, with velocities and temperatures worked out by astropy 8.0.2 and
 //! wcslib 8.6. `.ci/interop/reads_astropy.py --data tests/data/read` made both.
-#![allow(clippy::unwrap_used)] // A failed helper fails its test.
+#![allow(clippy::unwrap_used)] // What fails below a test fails the test.
 
 use std::path::Path;
 
