@@ -1,6 +1,6 @@
 //! What a reader of a result has to know: typed, with a short code and a sentence.
 
-use super::{FitSettings, PairFit, ThinFit};
+use super::{PairFit, ThinFit};
 use crate::constants::FWHM_PER_SIGMA;
 use crate::measure::Measures;
 use crate::model::Model;
@@ -202,8 +202,6 @@ pub struct PairFacts<'a> {
     pub measures: &'a Measures,
     /// Joint fits.
     pub fit: &'a PairFit,
-    /// The settings of the fits.
-    pub settings: &'a FitSettings,
 }
 
 /// All cautions of a pair, the gravest first.
