@@ -9,7 +9,7 @@
 //! | module | turns |
 //! | --- | --- |
 //! | [`constants`] | nothing: physical constants with uncertainty and source |
-//! | [`line`] | a name into a transition with its rest frequency and multiplet |
+//! | [`mod@line`] | a name into a transition with its rest frequency and multiplet |
 //! | [`numeric`] | numbers into numbers: exponentials, least squares, noise processes; no astronomy |
 //! | [`model`] | parameters into a line profile and its Jacobian |
 //! | [`spectrum`] | arrays into one checked spectrum with noise and windows |

@@ -1,2 +1,7 @@
-//! The command line.
-fn main() {}
+//! The command line: see `inrush --help`.
+
+mod cli;
+
+fn main() -> std::process::ExitCode {
+    cli::main()
+}

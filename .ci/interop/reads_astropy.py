@@ -96,6 +96,11 @@ class Cases:
     def path(self, name):
         return self.folder / name
 
+    def pack(self, name, packed):
+        """The same bytes every time: no date, no name in the stream."""
+        content = self.path(name).read_bytes()
+        self.path(packed).write_bytes(gzip.compress(content, mtime=0))
+
     def image(self, name, data, header, expected=None, **settings):
         fits.PrimaryHDU(data, header).writeto(self.path(name), overwrite=True)
         channels = max(np.shape(data))
@@ -193,8 +198,7 @@ class Cases:
         hdus = fits.HDUList([fits.PrimaryHDU(), fits.ImageHDU(t, base)])
         hdus.writeto(self.path("image_extension.fits"), overwrite=True)
         self.add("image_extension.fits", axis_by_wcslib(base, n), t)
-        with gzip.open(self.path("image.fits.gz"), "wb") as packed:
-            packed.write(self.path("image_double.fits").read_bytes())
+        self.pack("image_double.fits", "image.fits.gz")
         self.add("image.fits.gz", axis_by_wcslib(base, n), profile(n))
 
         # Units of the values.
@@ -243,11 +247,13 @@ class Cases:
         single = (1000 * t).astype("f4")
         table = QTable({"flag": np.arange(n, dtype="i2"), "freq": frequency[::-1], "ta": single * u.mK})
         table.meta.update(RESTFRQ=LINE.to_value(u.Hz), SPECSYS="LSRK", OBJECT="invented")
-        table.write(self.path("table_frequency.fits.gz"), overwrite=True)
+        table.write(self.path("table_frequency.fits"), overwrite=True)
+        self.pack("table_frequency.fits", "table_frequency.fits.gz")
+        self.path("table_frequency.fits").unlink()
         self.add("table_frequency.fits.gz", velocity[::-1], single.astype(float) / 1000 / 0.8, eta="0.8")
         masked = MaskedColumn(np.arange(100, 100 + n), dtype="i4", unit="mK", name="tmb")
         masked.mask = np.arange(n) % 5 == 1
-        Table([MaskedColumn(velocity, name="velo", unit="km s-1"), masked]).write(
+        Table([MaskedColumn(velocity, name="v relativistic", unit="km s-1"), masked]).write(
             self.path("table_masked.fits"), overwrite=True
         )
         relativistic = (velocity * u.km / u.s).to(u.Hz, equivalencies=u.doppler_relativistic(LINE))
@@ -336,8 +342,7 @@ class Cases:
         self.add("text_tab.csv", velocity[::-1], t / 0.5, eta="0.5")
         table.write(self.path("text_columns.txt"), format="ascii.no_header", overwrite=True)
         self.add("text_columns.txt", velocity[::-1], t, columns="1:MHz,2:mK (Tmb)")
-        with gzip.open(self.path("text.csv.gz"), "wb") as packed:
-            packed.write(self.path("text.csv").read_bytes())
+        self.pack("text.csv", "text.csv.gz")
         self.add("text.csv.gz", velocity, masked)
 
         table = QTable({"velocity": velocity * u.km / u.s, "Ta*": 1000 * t * u.mK})

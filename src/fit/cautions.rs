@@ -1,30 +1,12 @@
 //! What a reader of a result has to know: typed, with a short code and a sentence.
 
-use super::{FitSettings, PairFit, ThinFit};
+use super::{PairFit, ThinFit};
 use crate::constants::FWHM_PER_SIGMA;
 use crate::measure::Measures;
 use crate::model::Model;
 use crate::numeric::least_squares::Side;
-use crate::prepare::Prepared;
+use crate::prepare::{PairLine, Prepared};
 use statrs::distribution::{ChiSquared, ContinuousCDF};
-
-/// Which line of the pair.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub enum PairLine {
-    /// The optically thick one.
-    Thick,
-    /// The optically thin one.
-    Thin,
-}
-
-impl PairLine {
-    fn word(self) -> &'static str {
-        match self {
-            Self::Thick => "thick",
-            Self::Thin => "thin",
-        }
-    }
-}
 
 /// A reason to take a result with care.
 #[derive(Clone, Debug, PartialEq)]
@@ -110,6 +92,13 @@ pub enum Caution {
     MaybeSwapped,
 }
 
+fn word(line: PairLine) -> &'static str {
+    match line {
+        PairLine::Thick => "thick",
+        PairLine::Thin => "thin",
+    }
+}
+
 impl Caution {
     /// The short code of the tables.
     #[must_use]
@@ -171,14 +160,14 @@ impl Caution {
             ),
             Self::WideChannels { line, width_over_sigma } => format!(
                 "{} line's channels are {width_over_sigma:.1} dispersions wide: they blur the profile",
-                line.word()
+                word(*line)
             ),
             Self::WindowCutsLine { line } => {
-                format!("the {} line goes on beyond its window or the band", line.word())
+                format!("the {} line goes on beyond its window or the band", word(*line))
             }
             Self::CorrelatedNoise { line, adjacent } => format!(
                 "{} line's noise is correlated from channel to channel ({adjacent:.2} between neighbours): taken into account",
-                line.word()
+                word(*line)
             ),
             Self::MaybeSwapped => {
                 "the thick line is fainter than the thin one: are the two files swapped?".to_owned()
@@ -213,8 +202,6 @@ pub struct PairFacts<'a> {
     pub measures: &'a Measures,
     /// Joint fits.
     pub fit: &'a PairFit,
-    /// The settings of the fits.
-    pub settings: &'a FitSettings,
 }
 
 /// All cautions of a pair, the gravest first.

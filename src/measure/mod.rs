@@ -1,6 +1,22 @@
 //! Asymmetry measures of a pair, straight from the channels: no model here.
+//!
+//! Sums run over the thick line's window; peaks and dips are extrema of the profile smoothed over
+//! 0.45 `FWHM_thin` to either side. Every error follows to first order from channel noise, its
+//! correlation, the baseline, and the thin line's velocity and width with their covariance.
+//! Sources: Mardones et al. 1997 (doi:10.1086/304812), Jackson et al. 2019
+//! (doi:10.3847/1538-4357/aaef84), Myers et al. 1996 (doi:10.1086/310146), eq. 9 from memory.
 
+mod noise;
+mod smooth;
+
+use crate::constants::FWHM_PER_SIGMA;
+use crate::line::Component;
 use crate::numeric::Estimate;
+use crate::prepare::Prepared;
+use crate::spectrum::{Spectrum, Window};
+use noise::ChannelNoise;
+use smooth::{Extremum, Smoothed, difference};
+use statrs::distribution::{ContinuousCDF, Normal};
 
 /// The thin line's velocity and width that every measure is relative to, from its fit.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -24,7 +40,8 @@ pub enum ProfileClass {
     Red,
     /// In between.
     Neither,
-    /// One of the lines is not detected.
+    /// One of the lines is not detected, or the thick line's components overlap and it has no
+    /// velocity of its own.
     Undetected,
 }
 
@@ -76,4 +93,545 @@ pub struct Measures {
     pub profile: ProfileClass,
     /// Closed-form infall velocity of a two-peak line (Myers et al. 1996, eq. 9), km/s.
     pub v_closed_form_km_s: Option<Estimate>,
+}
+
+/// What counts as detected, and the lines' multiplets.
+#[derive(Clone, Debug, PartialEq)]
+pub struct MeasureSettings {
+    /// Significance of a smoothed peak or an integral from which a line is measured.
+    pub detection_sigma: f64,
+    /// Significance of the dip below the lower peak from which a line has two peaks.
+    pub dip_sigma: f64,
+    /// Components of the thick line; empty or one for a line without structure. Of a multiplet the
+    /// main component alone is measured, and only if its nearest neighbour is at least three thin
+    /// line widths away; otherwise there is no more than peak and integral.
+    pub thick_components: Vec<Component>,
+    /// Components of the thin line: whether it shows two peaks is asked of its main component.
+    pub thin_components: Vec<Component>,
+}
+
+impl Default for MeasureSettings {
+    fn default() -> Self {
+        Self {
+            detection_sigma: 5.0,
+            dip_sigma: 3.0,
+            thick_components: Vec::new(),
+            thin_components: Vec::new(),
+        }
+    }
+}
+
+/// Reach of the smoothing kernel to either side, in widths of the thin line: half of it is about
+/// half of a self-absorbed line's peak.
+const REACH_PER_FWHM: f64 = 0.45;
+
+/// Reach of the kernel that measures a dip, in distances between the peaks, where that is more.
+const DIP_REACH: f64 = 0.5;
+
+/// A component is measured alone if its neighbours are at least this many thin line widths away.
+const ISOLATED_FROM: f64 = 3.0;
+
+/// Significance of the thin line's peak from which it counts as detected.
+const THIN_DETECTED: f64 = 3.0;
+
+/// Normalised velocity difference beyond which a profile is blue or red (Mardones et al. 1997).
+const CLASS_LIMIT: f64 = 0.25;
+
+/// All measures of a pair.
+///
+/// `thin_line` is the fitted thin line (of its main component's velocity scale); without it there is
+/// nothing to be blue or red of. `rest_frequency_systematic_km_s` is the combined uncertainty of
+/// both rest frequencies.
+pub fn measure(
+    thick: &Prepared,
+    thin: &Prepared,
+    thin_line: Option<&ThinLine>,
+    rest_frequency_systematic_km_s: f64,
+    settings: &MeasureSettings,
+) -> Measures {
+    let thick_noise = ChannelNoise::of(thick);
+    let thin_noise = ChannelNoise::of(thin);
+    let fwhm_km_s = thin_line.map_or_else(
+        || 0.5 * equivalent_width_km_s(thick),
+        |line| line.fwhm_km_s.value,
+    );
+    let detected = thin_line.filter(|line| line.peak_k.value >= THIN_DETECTED * line.peak_k.err);
+    let span = Span::of(thick, &settings.thick_components, thin_line);
+    let smoothed = Smoothed::new(&thick.spectrum, REACH_PER_FWHM * fwhm_km_s);
+    let peak_of_all = highest(&smoothed.extrema(thick.window.low_km_s, thick.window.high_km_s))
+        .map(|peak| estimate(peak.value_k, peak.value_err(&thick_noise)))
+        .filter(|peak| peak.value >= settings.detection_sigma * peak.err);
+    let profile = Profile {
+        spectrum: &thick.spectrum,
+        noise: &thick_noise,
+        extrema: span
+            .filter(|_| peak_of_all.is_some())
+            .map(|span| smoothed.extrema(span.window.low_km_s, span.window.high_km_s))
+            .unwrap_or_default(),
+        reach_km_s: smoothed.reach_km_s(),
+        dip_sigma: settings.dip_sigma,
+    };
+    let v_thick_km_s = span.and_then(|span| {
+        let v = profile.velocity()?;
+        Some(estimate(v.value - span.offset_km_s, v.err))
+    });
+    let two = profile.two_peaks();
+    let about = span.zip(thin_line).and_then(|(span, line)| {
+        About::new(
+            &thick.spectrum,
+            &thick_noise,
+            &smoothed,
+            span,
+            line,
+            settings.detection_sigma,
+        )
+    });
+    let delta_v = v_thick_km_s
+        .zip(detected)
+        .map(|(v, line)| normalised_difference(v, line));
+    Measures {
+        peak_thick_k: peak_of_all,
+        peak_thin_k: thin_peak(thin, &thin_noise, fwhm_km_s, settings),
+        integral_thick_k_km_s: integral(thick, &thick_noise),
+        integral_thin_k_km_s: integral(thin, &thin_noise),
+        v_thick_km_s,
+        delta_v,
+        delta_v_systematic: delta_v.map(|_| rest_frequency_systematic_km_s / fwhm_km_s),
+        peak_ratio: two.as_ref().map(|two| two.ratio(&thick_noise)),
+        two_peaks: two.as_ref().map(|two| two.estimates(&thick_noise)),
+        thin_two_peaked: thin_two_peaked(thin, &thin_noise, thin_line, settings),
+        asymmetry: about.as_ref().and_then(About::asymmetry),
+        skewness: about.as_ref().and_then(About::skewness),
+        profile: class(delta_v),
+        v_closed_form_km_s: two
+            .as_ref()
+            .zip(detected)
+            .and_then(|(two, line)| two.closed_form(line, &thick_noise)),
+    }
+}
+
+fn estimate(value: f64, err: f64) -> Estimate {
+    Estimate { value, err }
+}
+
+fn class(delta_v: Option<Estimate>) -> ProfileClass {
+    match delta_v {
+        None => ProfileClass::Undetected,
+        Some(delta_v) if delta_v.value < -CLASS_LIMIT => ProfileClass::Blue,
+        Some(delta_v) if delta_v.value > CLASS_LIMIT => ProfileClass::Red,
+        Some(_) => ProfileClass::Neither,
+    }
+}
+
+/// dV = (`v_thick` - v)/F with v and F of the thin line: the variance is
+/// (`s_thick`^2 + `s_v`^2 + dV^2 `s_F`^2 + 2 dV cov(v, F))/F^2.
+fn normalised_difference(v_thick: Estimate, line: &ThinLine) -> Estimate {
+    let fwhm = line.fwhm_km_s.value;
+    let difference = (v_thick.value - line.v_km_s.value) / fwhm;
+    let variance = v_thick.err.powi(2)
+        + line.v_km_s.err.powi(2)
+        + (difference * line.fwhm_km_s.err).powi(2)
+        + 2.0 * difference * line.covariance_v_fwhm;
+    estimate(difference, variance.max(0.0).sqrt() / fwhm)
+}
+
+/// Channels of the window with a number.
+fn window_channels(prepared: &Prepared) -> impl Iterator<Item = usize> + '_ {
+    let spectrum = &prepared.spectrum;
+    (0..spectrum.len()).filter(|&channel| {
+        spectrum.is_usable(channel) && prepared.window.contains(spectrum.velocity_km_s()[channel])
+    })
+}
+
+/// Integrated intensity over the window, K km/s.
+fn integral(prepared: &Prepared, noise: &ChannelNoise) -> Estimate {
+    let spectrum = &prepared.spectrum;
+    let mut weights = vec![0.0; spectrum.len()];
+    let mut sum = 0.0;
+    for channel in window_channels(prepared) {
+        weights[channel] = spectrum.width_km_s()[channel];
+        sum += weights[channel] * spectrum.temperature_k()[channel];
+    }
+    estimate(sum, noise.error(&weights))
+}
+
+/// Integral over peak channel, km/s: a width where there is no thin line.
+fn equivalent_width_km_s(prepared: &Prepared) -> f64 {
+    let spectrum = &prepared.spectrum;
+    let (sum, peak) = window_channels(prepared).fold((0.0, 0.0_f64), |(sum, peak), channel| {
+        let value = spectrum.temperature_k()[channel];
+        (
+            sum + value * spectrum.width_km_s()[channel],
+            peak.max(value),
+        )
+    });
+    if sum > 0.0 && peak > 0.0 {
+        sum / peak
+    } else {
+        0.0
+    }
+}
+
+fn highest(extrema: &[Extremum]) -> Option<&Extremum> {
+    extrema
+        .iter()
+        .filter(|extremum| extremum.is_maximum)
+        .max_by(|a, b| a.value_k.total_cmp(&b.value_k))
+}
+
+fn thin_peak(
+    thin: &Prepared,
+    noise: &ChannelNoise,
+    fwhm_km_s: f64,
+    settings: &MeasureSettings,
+) -> Option<Estimate> {
+    let smoothed = Smoothed::new(&thin.spectrum, REACH_PER_FWHM * fwhm_km_s);
+    let extrema = smoothed.extrema(thin.window.low_km_s, thin.window.high_km_s);
+    let peak = highest(&extrema)?;
+    let peak = estimate(peak.value_k, peak.value_err(noise));
+    // Faint thin lines are common: their peak is given from 3 sigma.
+    (peak.value >= settings.detection_sigma.min(THIN_DETECTED) * peak.err).then_some(peak)
+}
+
+fn thin_two_peaked(
+    thin: &Prepared,
+    noise: &ChannelNoise,
+    line: Option<&ThinLine>,
+    settings: &MeasureSettings,
+) -> bool {
+    let (Some(line), Some(span)) = (line, Span::of(thin, &settings.thin_components, line)) else {
+        return false;
+    };
+    let smoothed = Smoothed::new(&thin.spectrum, REACH_PER_FWHM * line.fwhm_km_s.value);
+    let profile = Profile {
+        spectrum: &thin.spectrum,
+        noise,
+        extrema: smoothed.extrema(span.window.low_km_s, span.window.high_km_s),
+        reach_km_s: smoothed.reach_km_s(),
+        dip_sigma: settings.dip_sigma,
+    };
+    profile.two_peaks().is_some()
+}
+
+/// The range in which one component stands alone.
+#[derive(Clone, Copy, Debug)]
+struct Span {
+    window: Window,
+    /// Offset of that component from the line's rest frequency.
+    offset_km_s: f64,
+}
+
+impl Span {
+    /// The window, or its part around a multiplet's main component; `None` where that is blended.
+    fn of(prepared: &Prepared, components: &[Component], line: Option<&ThinLine>) -> Option<Self> {
+        let window = prepared.window;
+        let whole = Self {
+            window,
+            offset_km_s: components.first().map_or(0.0, |one| one.offset_km_s),
+        };
+        if components.len() < 2 {
+            return Some(whole);
+        }
+        let main = components
+            .iter()
+            .max_by(|a, b| a.weight.total_cmp(&b.weight))?;
+        let line = line?;
+        let gap = components
+            .iter()
+            .map(|other| (other.offset_km_s - main.offset_km_s).abs())
+            .filter(|&gap| gap > 0.0)
+            .fold(f64::INFINITY, f64::min);
+        if gap < ISOLATED_FROM * line.fwhm_km_s.value {
+            return None;
+        }
+        let centre = line.v_km_s.value + main.offset_km_s;
+        Some(Self {
+            window: Window {
+                low_km_s: window.low_km_s.max(centre - 0.5 * gap),
+                high_km_s: window.high_km_s.min(centre + 0.5 * gap),
+            },
+            offset_km_s: main.offset_km_s,
+        })
+    }
+}
+
+/// Extrema of a smoothed line.
+struct Profile<'a> {
+    spectrum: &'a Spectrum,
+    noise: &'a ChannelNoise<'a>,
+    extrema: Vec<Extremum>,
+    reach_km_s: f64,
+    dip_sigma: f64,
+}
+
+/// Two peaks and the dip between them.
+struct Peaks<'a> {
+    blue: &'a Extremum,
+    dip: Extremum,
+    red: &'a Extremum,
+}
+
+impl Profile<'_> {
+    /// Velocity of the highest peak.
+    ///
+    /// Its error holds what noise moves it by and what noise would have moved it to another peak:
+    /// of a peak j lower by D with standard error s, that is the share Phi(-D/s) of repeated
+    /// observations.
+    fn velocity(&self) -> Option<Estimate> {
+        let top = highest(&self.extrema)?;
+        let own = top.velocity_err(self.noise).powi(2);
+        let normal = Normal::standard();
+        let rivals: Vec<(f64, f64, f64)> = self
+            .extrema
+            .iter()
+            .filter(|other| other.is_maximum && other.v_km_s != top.v_km_s)
+            .map(|other| {
+                let weights = difference(&top.value_weights, &other.value_weights);
+                let standing = (top.value_k - other.value_k) / self.noise.error(&weights);
+                (
+                    normal.cdf(-standing),
+                    other.v_km_s,
+                    other.velocity_err(self.noise).powi(2),
+                )
+            })
+            .filter(|rival| rival.0 > 1e-6)
+            .collect();
+        let top_share = (1.0 - rivals.iter().map(|rival| rival.0).sum::<f64>()).max(0.5);
+        let total = top_share + rivals.iter().map(|rival| rival.0).sum::<f64>();
+        let all = || {
+            std::iter::once((top_share, top.v_km_s, own))
+                .chain(rivals.iter().copied())
+                .map(|(share, v, variance)| (share / total, v, variance))
+        };
+        let mean: f64 = all().map(|(share, v, _)| share * v).sum();
+        let variance: f64 = all()
+            .map(|(share, v, variance)| share * (variance + (v - mean).powi(2)))
+            .sum();
+        Some(estimate(top.v_km_s, variance.sqrt()))
+    }
+
+    /// The highest peak and the one that the most significant dip parts from it.
+    fn two_peaks(&self) -> Option<Peaks<'_>> {
+        let top = highest(&self.extrema)?;
+        let mut best: Option<(f64, Peaks)> = None;
+        for other in self.extrema.iter().filter(|other| other.is_maximum) {
+            let (blue, red) = if other.v_km_s < top.v_km_s {
+                (other, top)
+            } else {
+                (top, other)
+            };
+            let Some(dip) = self
+                .extrema
+                .iter()
+                .filter(|dip| {
+                    !dip.is_maximum && dip.v_km_s > blue.v_km_s && dip.v_km_s < red.v_km_s
+                })
+                .min_by(|a, b| a.value_k.total_cmp(&b.value_k))
+            else {
+                continue;
+            };
+            let depth = other.value_k - dip.value_k;
+            let depth_err = self
+                .noise
+                .error(&difference(&other.value_weights, &dip.value_weights));
+            let significance = depth / depth_err;
+            let stands_out = other.value_k >= self.dip_sigma * other.value_err(self.noise);
+            if significance >= self.dip_sigma
+                && stands_out
+                && best.as_ref().is_none_or(|found| significance > found.0)
+            {
+                let dip = self.whole_dip(blue, red).unwrap_or_else(|| dip.clone());
+                best = Some((significance, Peaks { blue, dip, red }));
+            }
+        }
+        best.map(|found| found.1)
+    }
+
+    /// The dip smoothed over its own extent: in a wide one, noise makes several minima.
+    fn whole_dip(&self, blue: &Extremum, red: &Extremum) -> Option<Extremum> {
+        let reach = DIP_REACH * (red.v_km_s - blue.v_km_s);
+        Smoothed::new(self.spectrum, reach.max(self.reach_km_s))
+            .extrema(blue.v_km_s, red.v_km_s)
+            .into_iter()
+            .filter(|extremum| !extremum.is_maximum)
+            .min_by(|a, b| a.value_k.total_cmp(&b.value_k))
+    }
+}
+
+impl Peaks<'_> {
+    fn estimates(&self, noise: &ChannelNoise) -> TwoPeaks {
+        let v = |at: &Extremum| estimate(at.v_km_s, at.velocity_err(noise));
+        let k = |at: &Extremum| estimate(at.value_k, at.value_err(noise));
+        TwoPeaks {
+            v_blue_km_s: v(self.blue),
+            v_red_km_s: v(self.red),
+            v_dip_km_s: v(&self.dip),
+            blue_k: k(self.blue),
+            red_k: k(self.red),
+            dip_k: k(&self.dip),
+        }
+    }
+
+    /// `T_blue`/`T_red`.
+    fn ratio(&self, noise: &ChannelNoise) -> Estimate {
+        let ratio = self.blue.value_k / self.red.value_k;
+        let weights: Vec<f64> = self
+            .blue
+            .value_weights
+            .iter()
+            .zip(&self.red.value_weights)
+            .map(|(blue, red)| (blue - ratio * red) / self.red.value_k)
+            .collect();
+        estimate(ratio, noise.error(&weights))
+    }
+
+    /// v = s^2/(`v_red` - `v_blue`) ln[(1 + e `T_BD`/`T_D`)/(1 + e `T_RD`/`T_D`)], s = FWHM/sqrt(8 ln 2) of the
+    /// thin line, `T_D` the dip's temperature, `T_BD` and `T_RD` the peaks' heights above it (Myers et
+    /// al. 1996, eq. 9, from memory). `None` where the dip is not above zero.
+    fn closed_form(&self, line: &ThinLine, noise: &ChannelNoise) -> Option<Estimate> {
+        use std::f64::consts::E;
+        let (dip, blue, red) = (self.dip.value_k, self.blue.value_k, self.red.value_k);
+        if dip <= self.dip.value_err(noise) {
+            return None;
+        }
+        let sigma = line.fwhm_km_s.value / FWHM_PER_SIGMA;
+        let apart = self.red.v_km_s - self.blue.v_km_s;
+        let (above_blue, above_red) = (1.0 + E * (blue - dip) / dip, 1.0 + E * (red - dip) / dip);
+        let scale = sigma * sigma / apart;
+        let v = scale * (above_blue / above_red).ln();
+        // d/dT_B, d/dT_R, d/dT_D of the logarithm, with d(above)/dT_D = -e T/T_D^2.
+        let by_blue = scale * E / (dip * above_blue);
+        let by_red = -scale * E / (dip * above_red);
+        let by_dip = -(by_blue * blue + by_red * red) / dip;
+        let by_apart = -v / apart;
+        let weights: Vec<f64> = (0..self.blue.value_weights.len())
+            .map(|channel| {
+                by_blue * self.blue.value_weights[channel]
+                    + by_red * self.red.value_weights[channel]
+                    + by_dip * self.dip.value_weights[channel]
+                    + by_apart
+                        * (self.red.velocity_weights[channel] - self.blue.velocity_weights[channel])
+            })
+            .collect();
+        let by_width = 2.0 * v / line.fwhm_km_s.value * line.fwhm_km_s.err;
+        Some(estimate(v, noise.error(&weights).hypot(by_width)))
+    }
+}
+
+/// Sums of the thick line about the thin line's velocity.
+struct About<'a> {
+    spectrum: &'a Spectrum,
+    noise: &'a ChannelNoise<'a>,
+    channels: Vec<usize>,
+    centre_km_s: f64,
+    centre_err_km_s: f64,
+    /// Temperature at the centre, K.
+    at_centre_k: f64,
+    integral: f64,
+}
+
+impl<'a> About<'a> {
+    /// `None` where the centre is outside the span or the integral is not significant.
+    fn new(
+        spectrum: &'a Spectrum,
+        noise: &'a ChannelNoise<'a>,
+        smoothed: &Smoothed,
+        span: Span,
+        line: &ThinLine,
+        detection_sigma: f64,
+    ) -> Option<Self> {
+        let centre_km_s = line.v_km_s.value + span.offset_km_s;
+        if centre_km_s <= span.window.low_km_s || centre_km_s >= span.window.high_km_s {
+            return None;
+        }
+        let channels: Vec<usize> = (0..spectrum.len())
+            .filter(|&channel| {
+                spectrum.is_usable(channel)
+                    && span.window.contains(spectrum.velocity_km_s()[channel])
+            })
+            .collect();
+        let mut weights = vec![0.0; spectrum.len()];
+        let mut integral = 0.0;
+        for &channel in &channels {
+            weights[channel] = spectrum.width_km_s()[channel];
+            integral += weights[channel] * spectrum.temperature_k()[channel];
+        }
+        if integral < detection_sigma * noise.error(&weights) {
+            return None;
+        }
+        Some(Self {
+            spectrum,
+            noise,
+            channels,
+            centre_km_s,
+            centre_err_km_s: line.v_km_s.err,
+            at_centre_k: smoothed.value(centre_km_s)?,
+            integral,
+        })
+    }
+
+    /// Sum over channels of a function of velocity from the centre, times T dv.
+    fn sum(&self, of: impl Fn(usize) -> f64) -> f64 {
+        self.channels
+            .iter()
+            .map(|&channel| {
+                of(channel)
+                    * self.spectrum.temperature_k()[channel]
+                    * self.spectrum.width_km_s()[channel]
+            })
+            .sum()
+    }
+
+    /// Error from the channels' weights and from the centre's uncertainty.
+    fn error(&self, weight: impl Fn(usize) -> f64, by_centre: f64) -> f64 {
+        let mut weights = vec![0.0; self.spectrum.len()];
+        for &channel in &self.channels {
+            weights[channel] = weight(channel) * self.spectrum.width_km_s()[channel];
+        }
+        self.noise
+            .error(&weights)
+            .hypot(by_centre * self.centre_err_km_s)
+    }
+
+    /// Share of a channel that is blue of the centre minus the share that is red of it.
+    fn side(&self, channel: usize) -> f64 {
+        let from_centre = self.spectrum.velocity_km_s()[channel] - self.centre_km_s;
+        (-2.0 * from_centre / self.spectrum.width_km_s()[channel]).clamp(-1.0, 1.0)
+    }
+
+    /// A = (`I_blue` - `I_red`)/(`I_blue` + `I_red`); dA/dv = 2 T(v)/I (Jackson et al. 2019).
+    fn asymmetry(&self) -> Option<Estimate> {
+        let value = self.sum(|channel| self.side(channel)) / self.integral;
+        let err = self.error(
+            |channel| (self.side(channel) - value) / self.integral,
+            2.0 * self.at_centre_k / self.integral,
+        );
+        err.is_finite().then_some(estimate(value, err))
+    }
+
+    /// `m_3`/`m_2`^(3/2) with `m_k` = `sum_i` `T_i` `dv_i` (`v_i` - v)^k/`sum_i` `T_i` `dv_i`, v the thin line's velocity
+    /// (not the mean): `None` where noise leaves no positive second moment.
+    fn skewness(&self) -> Option<Estimate> {
+        let from_centre =
+            |channel: usize| self.spectrum.velocity_km_s()[channel] - self.centre_km_s;
+        let moment = |k: i32| self.sum(|channel| from_centre(channel).powi(k)) / self.integral;
+        let (m1, m2, m3) = (moment(1), moment(2), moment(3));
+        let m2_err = self.error(
+            |channel| (from_centre(channel).powi(2) - m2) / self.integral,
+            0.0,
+        );
+        if m2 <= 3.0 * m2_err {
+            return None;
+        }
+        let width = m2.sqrt();
+        let value = m3 / (m2 * width);
+        let err = self.error(
+            |channel| {
+                let u = from_centre(channel);
+                ((u.powi(3) - m3) / (m2 * width) - 1.5 * value * (u * u - m2) / m2) / self.integral
+            },
+            -3.0 / width + 3.0 * value * m1 / m2,
+        );
+        Some(estimate(value, err))
+    }
 }

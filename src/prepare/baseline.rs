@@ -3,15 +3,22 @@
 use crate::numeric::polynomial::{Factor, Polynomial, ScaledAxis};
 use crate::numeric::robust::{clipped_scale, core_scale};
 
-/// Share of the channels that the robust start rests on: less than what the widest line that is to
+/// Per cent of the channels that the robust start rests on: less than what the widest line that is to
 /// be survived leaves free.
-const CORE_SHARE: f64 = 0.35;
+const CORE_PERCENT: usize = 35;
 
 /// The band is cut into this many blocks; every pair of them gives a start.
 const BLOCKS: usize = 6;
 
+/// The starts are tried on about this many channels, evenly taken from the band.
+const START_CHANNELS: usize = 120;
+
 /// Clip of the core scale, in standard deviations.
 pub(super) const CORE_CLIP: f64 = 3.0;
+
+/// Clip of the noise on line-free channels, in standard deviations: wider, so that few channels bias
+/// it less.
+pub(super) const NOISE_CLIP: f64 = 3.5;
 
 /// Channels of one spectrum that hold a number, in order.
 pub(super) struct Channels {
@@ -42,6 +49,17 @@ impl Channels {
             value,
             index,
             axis,
+        }
+    }
+
+    /// Every `stride`-th channel.
+    fn every(&self, stride: usize) -> Self {
+        let take = |values: &[f64]| values.iter().copied().step_by(stride).collect();
+        Self {
+            velocity: take(&self.velocity),
+            value: take(&self.value),
+            index: self.index.iter().copied().step_by(stride).collect(),
+            axis: self.axis,
         }
     }
 
@@ -100,27 +118,26 @@ impl Channels {
 /// Least trimmed squares (Rousseeuw 1984, doi:10.1080/01621459.1984.10477105): from lines through
 /// every pair of blocks of the band, refit to the channels nearest, keep the best.
 pub(super) fn robust_start(channels: &Channels, order: usize) -> Option<Clipped> {
-    let count = channels.len();
-    let core = ((count as f64 * CORE_SHARE) as usize)
-        .max(order + 3)
-        .min(count);
+    let coarse = channels.every(channels.len() / START_CHANNELS + 1);
+    let count = coarse.len();
+    let core = |count: usize| (count * CORE_PERCENT / 100).max(order + 3).min(count);
     let block = |b: usize| (b * count / BLOCKS)..((b + 1) * count / BLOCKS);
     let mut starts: Vec<(f64, Polynomial)> = Vec::new();
     for first in 0..BLOCKS {
         for second in first..BLOCKS {
             let chosen: Vec<usize> = block(first).chain(block(second)).collect();
             let degree = if first == second { 0 } else { order.min(1) };
-            let Some(line) = channels.fit(degree, &chosen) else {
+            let Some(line) = coarse.fit(degree, &chosen) else {
                 continue;
             };
-            starts.extend(concentrate(channels, line, order.min(1), core, 3));
+            starts.extend(concentrate(&coarse, line, order.min(1), core(count), 3));
         }
     }
     starts.sort_by(|a, b| a.0.total_cmp(&b.0));
     let best = starts
         .into_iter()
         .take(3)
-        .filter_map(|(_, line)| concentrate(channels, line, order, core, 12))
+        .filter_map(|(_, line)| concentrate(channels, line, order, core(channels.len()), 12))
         .min_by(|a, b| a.0.total_cmp(&b.0))?
         .1;
     // The usual last step: least squares on all that the start does not call outliers.
@@ -205,7 +222,7 @@ pub(super) fn clipped_fit(
         let baseline = channels.fit(order, &kept)?;
         let residuals = channels.residuals(&baseline);
         let on_free: Vec<f64> = free.iter().map(|&i| residuals[i]).collect();
-        let scale = clipped_scale(&on_free, CORE_CLIP);
+        let scale = clipped_scale(&on_free, NOISE_CLIP);
         let next: Vec<usize> = free
             .iter()
             .copied()
@@ -224,7 +241,7 @@ pub(super) fn clipped_fit(
     let residuals = channels.residuals(&baseline);
     let on_free: Vec<f64> = free.iter().map(|&i| residuals[i]).collect();
     Some(Clipped {
-        scale: clipped_scale(&on_free, CORE_CLIP),
+        scale: clipped_scale(&on_free, NOISE_CLIP),
         baseline,
         kept,
     })

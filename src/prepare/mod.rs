@@ -15,7 +15,7 @@ use crate::line::Component;
 use crate::numeric::Autoregression;
 use crate::numeric::robust::clipped_scale;
 use crate::spectrum::{Noise, Spectrum, SpectrumError, Window};
-use baseline::{CORE_CLIP, Channels, Clipped, clipped_fit, robust_start};
+use baseline::{Channels, Clipped, NOISE_CLIP, clipped_fit, robust_start};
 use regions::{Boxes, Region};
 
 /// A spectrum ready to be measured and fitted.
@@ -104,7 +104,7 @@ pub enum PrepareError {
     /// The given window holds no channel, or its ends are not in order.
     #[error(
         "line window {low_km_s} to {high_km_s} km/s, expected a range within the band \
-         {band_low_km_s} to {band_high_km_s} km/s"
+         {band_low_km_s:.3} to {band_high_km_s:.3} km/s"
     )]
     WindowOutsideBand {
         /// Lower end of the window, km/s.
@@ -124,7 +124,7 @@ pub enum PrepareError {
     },
     /// Smoothing asks for channels narrower than there are.
     #[error(
-        "smoothing to {asked_km_s} km/s, expected at least the channel width {channel_km_s} km/s"
+        "smoothing to {asked_km_s} km/s, expected at least the channel width {channel_km_s:.4} km/s"
     )]
     SmoothingTooFine {
         /// Width asked for, km/s.
@@ -133,7 +133,7 @@ pub enum PrepareError {
         channel_km_s: f64,
     },
     /// Smoothing asks for a channel wider than the band.
-    #[error("smoothing to {asked_km_s} km/s, expected less than the band of {band_km_s} km/s")]
+    #[error("smoothing to {asked_km_s} km/s, expected less than the band of {band_km_s:.3} km/s")]
     SmoothingTooCoarse {
         /// Width asked for, km/s.
         asked_km_s: f64,
@@ -230,8 +230,12 @@ const LINE_FREE_NEEDED: usize = 12;
 /// Rounds of window, baseline and noise; they mostly settle in two or three.
 const MOST_ROUNDS: usize = 12;
 
-/// Share of a line's width that is added to its window on either side.
-const MARGIN_SHARE: f64 = 0.2;
+/// In the first round, which takes noise as white, regions beside the line must be this much more
+/// significant: smoothed noise must not be sorted into line-free and not.
+const FIRST_ROUND: f64 = 2.0;
+
+/// Per cent of a line's width that are added to its window on either side.
+const MARGIN_PERCENT: usize = 20;
 
 /// A line seen over a straight baseline is kept if it takes at most this share of the band.
 const WIDEST_KEPT: f64 = 0.5;
@@ -436,7 +440,7 @@ fn attempt(
         search.at_least = search
             .run()
             .ok()
-            .and_then(|found| found.line)
+            .and_then(|found| found.exclusion.line)
             .filter(|line| line.width() as f64 <= WIDEST_KEPT * channels.len() as f64);
         search.order = order;
     }
@@ -449,12 +453,27 @@ struct Found {
     fit: Clipped,
     scale: f64,
     process: Autoregression,
+    exclusion: Exclusion,
+}
+
+/// The channels that are not line-free, and why.
+struct Exclusion {
     /// The line without margin; `None` where nothing stands out.
     line: Option<Region>,
     /// First and last channel of the window.
     window: Option<(usize, usize)>,
-    excluded: Vec<bool>,
+    channels: Vec<bool>,
+    /// Significance of the strongest signal.
     significance: f64,
+}
+
+impl Exclusion {
+    /// Channels that are line-free.
+    fn free(&self) -> Vec<usize> {
+        (0..self.channels.len())
+            .filter(|&i| !self.channels[i])
+            .collect()
+    }
 }
 
 struct Search<'a> {
@@ -474,42 +493,34 @@ impl Search<'_> {
         let channels = self.channels;
         let count = channels.len();
         let mut fit = robust_start(channels, self.order).ok_or_else(|| self.too_few(count))?;
-        let mut excluded = vec![false; count];
-        let mut line: Option<Region> = None;
-        let mut round = 0;
-        loop {
-            self.check_scale(fit.scale)?;
-            let (scale, process) = if round == 0 {
-                // The line is still in the residuals and would count as correlated noise.
-                (fit.scale, Autoregression::white())
-            } else {
-                self.noise(&fit, &self.far(&excluded, line))
-            };
-            let boxes = self.boxes(&fit, scale, &process);
-            let (next_line, window, next, significance) = self.exclude(&boxes);
-            let free: Vec<usize> = (0..count).filter(|&i| !next[i]).collect();
+        let residual_scale = fit.scale;
+        self.check_scale(residual_scale)?;
+        // The line is still in the residuals and would count as correlated noise: white at first.
+        let boxes = self.boxes(&fit, residual_scale, &Autoregression::white());
+        let mut exclusion = self.exclude(&boxes, FIRST_ROUND * self.settings.detection_sigma);
+        for round in 1..=MOST_ROUNDS {
+            let free = exclusion.free();
             if free.len() < self.needed {
                 return Err(self.too_few(free.len()));
             }
             fit = clipped_fit(channels, self.order, &free, self.settings.clip_sigma)
                 .ok_or_else(|| self.too_few(free.len()))?;
-            round += 1;
-            if next == excluded || round == MOST_ROUNDS {
-                self.check_scale(fit.scale)?;
-                let (scale, process) = self.noise(&fit, &next);
-                return Ok(Found {
-                    scale,
-                    process,
-                    fit,
-                    line: next_line,
-                    window,
-                    excluded: next,
-                    significance,
-                });
+            self.check_scale(fit.scale)?;
+            let (scale, process) = self.noise(&fit, &self.far(&exclusion));
+            let boxes = self.boxes(&fit, scale, &process);
+            let next = self.exclude(&boxes, self.settings.detection_sigma);
+            if next.channels == exclusion.channels || round == MOST_ROUNDS {
+                break;
             }
-            line = next_line;
-            excluded = next;
+            exclusion = next;
         }
+        let (scale, process) = self.noise(&fit, &exclusion.channels);
+        Ok(Found {
+            fit,
+            scale,
+            process,
+            exclusion,
+        })
     }
 
     fn too_few(&self, found: usize) -> PrepareError {
@@ -522,9 +533,10 @@ impl Search<'_> {
 
     /// The excluded channels and, where enough others are left, as many again beside the line: a
     /// faint part that is not seen yet must not count as correlated noise.
-    fn far(&self, excluded: &[bool], line: Option<Region>) -> Vec<bool> {
-        let mut far = excluded.to_vec();
-        let Some(line) = line else {
+    fn far(&self, exclusion: &Exclusion) -> Vec<bool> {
+        let excluded = &exclusion.channels;
+        let mut far = excluded.clone();
+        let Some(line) = exclusion.line else {
             return far;
         };
         let low = line.low.saturating_sub(line.width());
@@ -534,7 +546,7 @@ impl Search<'_> {
         if left(&far) >= (left(excluded) * 2 / 5).max(2 * self.needed) {
             far
         } else {
-            excluded.to_vec()
+            excluded.clone()
         }
     }
 
@@ -545,7 +557,7 @@ impl Search<'_> {
             .filter(|&i| !excluded[i])
             .map(|i| residuals[i])
             .collect();
-        let scale = clipped_scale(&free, CORE_CLIP);
+        let scale = clipped_scale(&free, NOISE_CLIP);
         let process = self.process(&residuals, scale, excluded);
         let terms = self.order + 1;
         let process = process.before_subtraction(terms, free.len());
@@ -602,34 +614,45 @@ impl Search<'_> {
         (low < high).then(|| (low, high - 1))
     }
 
-    /// The line, its window and the channels that are not line-free, from significant regions.
-    #[allow(clippy::type_complexity)]
-    fn exclude(&self, boxes: &Boxes) -> (Option<Region>, Option<(usize, usize)>, Vec<bool>, f64) {
+    /// The line, its window and the channels that are not line-free.
+    ///
+    /// Regions beyond the line are left out from `other_sigma` standard deviations.
+    fn exclude(&self, boxes: &Boxes, other_sigma: f64) -> Exclusion {
         let given = self.settings.window.and_then(|w| self.channel_range(w));
         let favoured = given.or_else(|| self.expected.window.and_then(|w| self.channel_range(w)));
-        let regions = boxes.regions(self.settings.detection_sigma, favoured);
-        let significance = regions
-            .iter()
-            .map(|region| region.significance)
-            .fold(0.0, |a: f64, b| if b.abs() > a.abs() { b } else { a });
-        let line = self.line(&regions, favoured);
-        let mut excluded = vec![false; self.channels.len()];
+        let (regions, significance) = boxes.regions(self.settings.detection_sigma, favoured);
+        let found = self.line(&regions, favoured);
+        let line = found.map(|(line, _)| line);
+        let mut channels = vec![false; self.channels.len()];
         for region in &regions {
-            let low = region.low.saturating_sub(1);
-            let high = (region.high + 1).min(self.channels.len() - 1);
-            excluded[low..=high].fill(true);
+            let of_line = line.is_some_and(|line| line.gap(region) == 0);
+            if of_line || region.significance.abs() >= other_sigma {
+                let low = region.low.saturating_sub(1);
+                let high = (region.high + 1).min(self.channels.len() - 1);
+                channels[low..=high].fill(true);
+            }
         }
         let window = given
-            .or_else(|| line.map(|line| self.with_margin(line, &excluded)))
+            .or_else(|| found.map(|(line, width)| self.with_margin(line, width, &channels)))
             .or(favoured);
         if let Some((low, high)) = window {
-            excluded[low..=high].fill(true);
+            channels[low..=high].fill(true);
         }
-        (line, window, excluded, significance)
+        Exclusion {
+            line,
+            window,
+            channels,
+            significance,
+        }
     }
 
-    /// The line among the regions, its satellites and companions joined.
-    fn line(&self, regions: &[Region], favoured: Option<(usize, usize)>) -> Option<Region> {
+    /// The line among the regions, its satellites and companions joined, and the width in channels of
+    /// its main part.
+    fn line(
+        &self,
+        regions: &[Region],
+        favoured: Option<(usize, usize)>,
+    ) -> Option<(Region, usize)> {
         let inside = |region: &&Region| {
             favoured.is_none_or(|(low, high)| region.low <= high && region.high >= low)
         };
@@ -662,7 +685,7 @@ impl Search<'_> {
                 .filter(|region| region.gap(&line) <= reach)
                 .fold(line, |line, region| line.join(region));
             if joined.low == line.low && joined.high == line.high {
-                return Some(line);
+                return Some((line, main.width()));
             }
             line = joined;
         }
@@ -714,12 +737,13 @@ impl Search<'_> {
         })
     }
 
-    /// The line's channels with a margin, which leaves enough line-free channels.
-    fn with_margin(&self, line: Region, excluded: &[bool]) -> (usize, usize) {
+    /// The line's channels with a margin of a share of its main part's width, or of its own if that is
+    /// not much more, which leaves enough line-free channels.
+    fn with_margin(&self, line: Region, main_width: usize, excluded: &[bool]) -> (usize, usize) {
         let last = self.channels.len() - 1;
         let free = excluded.iter().filter(|&&is_excluded| !is_excluded).count();
         let spare = free.saturating_sub(self.needed.max(self.channels.len() / 5)) / 2;
-        let wanted = ((line.width() as f64 * MARGIN_SHARE).round() as usize).max(2);
+        let wanted = (line.width().min(2 * main_width) * MARGIN_PERCENT / 100).max(2);
         let margin = wanted.min(spare);
         (
             line.low.saturating_sub(margin),
@@ -731,6 +755,7 @@ impl Search<'_> {
     fn cuts(&self, found: &Found, boxes: &Boxes, window: (usize, usize)) -> bool {
         let last = self.channels.len() - 1;
         let at_band_edge = found
+            .exclusion
             .line
             .is_some_and(|line| line.low <= 1 || line.high + 1 >= last);
         let outside = [3, 6, 12].iter().any(|&width| {
@@ -747,7 +772,7 @@ impl Search<'_> {
         let channels = self.channels;
         let boxes = self.boxes(&found.fit, found.scale, &found.process);
         let last = channels.len() - 1;
-        let range = found.window.unwrap_or((0, last));
+        let range = found.exclusion.window.unwrap_or((0, last));
         let edge = |i: usize, side: f64| {
             channels.velocity[i] + side * 0.5 * spectrum.width_km_s()[channels.index[i]]
         };
@@ -765,12 +790,12 @@ impl Search<'_> {
             vec![0.0; spectrum.len()]
         };
         let subtracted = spectrum.map_temperature_k(|channel, t| t - values_k[channel]);
-        let free = found.excluded.iter().filter(|&&excluded| !excluded).count();
+        let free = found.exclusion.free().len();
         let kept = found.fit.kept.len();
         Outcome {
-            detected: found.line.is_some(),
-            has_window: found.window.is_some(),
-            significance: found.significance,
+            detected: found.exclusion.line.is_some(),
+            has_window: found.exclusion.window.is_some(),
+            significance: found.exclusion.significance,
             needed: self.settings.detection_sigma,
             prepared: Prepared {
                 window_cuts_line: self.cuts(found, &boxes, range),

@@ -31,54 +31,51 @@ pub fn rebin(spectrum: &Spectrum, width_km_s: f64) -> Result<Spectrum, PrepareEr
     if width_km_s <= spectrum.channel_width_km_s() * (1.0 + SAME_WIDTH) {
         return Ok(spectrum.clone());
     }
-    let last = spectrum.len() - 1;
-    let edges = |i: usize| {
-        let half = 0.5 * spectrum.width_km_s()[i];
-        (
-            spectrum.velocity_km_s()[i] - half,
-            spectrum.velocity_km_s()[i] + half,
-        )
-    };
-    let (start, end) = (edges(0).0, edges(last).1);
-    let count = ((end - start) / width_km_s * (1.0 + SAME_WIDTH)).floor() as usize;
-    if count < 1 {
+    let edges: Vec<(f64, f64)> = spectrum
+        .velocity_km_s()
+        .iter()
+        .zip(spectrum.width_km_s())
+        .map(|(v, width)| (v - 0.5 * width, v + 0.5 * width))
+        .collect();
+    let (start, end) = (edges[0].0, edges[edges.len() - 1].1);
+    let mut velocity = Vec::new();
+    let mut temperature = Vec::new();
+    let mut first = 0;
+    loop {
+        let low = start + velocity.len() as f64 * width_km_s;
+        let high = low + width_km_s;
+        // Rounding of the edges must not cost the last channel.
+        if high > end + SAME_WIDTH * width_km_s {
+            break;
+        }
+        while edges[first].1 <= low {
+            first += 1;
+        }
+        let (mut sum, mut covered) = (0.0, 0.0);
+        for (channel, edge) in edges.iter().enumerate().skip(first) {
+            if edge.0 >= high {
+                break;
+            }
+            let overlap = edge.1.min(high) - edge.0.max(low);
+            if spectrum.is_usable(channel) && overlap > SAME_WIDTH * width_km_s {
+                sum += overlap * spectrum.temperature_k()[channel];
+                covered += overlap;
+            }
+        }
+        velocity.push(0.5 * (low + high));
+        temperature.push(if covered >= COVERED_SHARE * width_km_s {
+            sum / covered
+        } else {
+            f64::NAN
+        });
+    }
+    if velocity.is_empty() {
         return Err(PrepareError::SmoothingTooCoarse {
             asked_km_s: width_km_s,
             band_km_s: end - start,
         });
     }
-    let mut sum = vec![0.0; count];
-    let mut covered = vec![0.0; count];
-    for i in (0..=last).filter(|&i| spectrum.is_usable(i)) {
-        let (low, high) = edges(i);
-        let first = ((low - start) / width_km_s).floor().max(0.0) as usize;
-        for (bin, (sum, covered)) in sum.iter_mut().zip(&mut covered).enumerate().skip(first) {
-            let bin_low = start + bin as f64 * width_km_s;
-            if bin_low >= high {
-                break;
-            }
-            let overlap = high.min(bin_low + width_km_s) - low.max(bin_low);
-            // Less than rounding of the edges is no overlap.
-            if overlap > SAME_WIDTH * width_km_s {
-                *sum += overlap * spectrum.temperature_k()[i];
-                *covered += overlap;
-            }
-        }
-    }
-    let velocity = (0..count)
-        .map(|bin| start + (bin as f64 + 0.5) * width_km_s)
-        .collect();
-    let temperature = sum
-        .iter()
-        .zip(&covered)
-        .map(|(sum, covered)| {
-            if *covered >= COVERED_SHARE * width_km_s {
-                sum / covered
-            } else {
-                f64::NAN
-            }
-        })
-        .collect();
+    let count = velocity.len();
     Ok(Spectrum::new(
         velocity,
         vec![width_km_s; count],

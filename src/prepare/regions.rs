@@ -75,15 +75,13 @@ impl Boxes {
             sum += value.clamp(before.min(after) - limit, before.max(after) + limit);
             sums.push(sum);
         }
-        let correlation = process.autocorrelation(count.max(1));
+        // Var(x_1 + ... + x_n) grows by 1 + 2 (rho_1 + ... + rho_(n-1)) with every value.
         let mut variance_of_sum = vec![0.0];
-        let (mut variance, mut step) = (0.0, 1.0);
-        for lag in 1..=count {
+        let (mut variance, mut step) = (0.0, -1.0);
+        for rho in process.autocorrelation(count) {
+            step += 2.0 * rho;
             variance += step;
             variance_of_sum.push(scale * scale * variance);
-            if lag < count {
-                step += 2.0 * correlation[lag];
-            }
         }
         Self {
             sums,
@@ -124,8 +122,8 @@ impl Boxes {
     fn best(&self, taken: &[bool], widths: &[usize]) -> Option<Region> {
         let mut best: Option<Region> = None;
         let mut free_run = 0;
-        for high in 0..self.len() {
-            free_run = if taken[high] { 0 } else { free_run + 1 };
+        for (high, &is_taken) in taken.iter().enumerate() {
+            free_run = if is_taken { 0 } else { free_run + 1 };
             for &width in widths.iter().take_while(|&&width| width <= free_run) {
                 let low = high + 1 - width;
                 let significance = self.significance(low, width);
@@ -173,15 +171,18 @@ impl Boxes {
 
     /// All regions whose best box reaches `threshold` standard deviations, most significant first.
     ///
-    /// `favoured` channels need one standard deviation less: a line is expected there.
-    pub fn regions(&self, threshold: f64, favoured: Option<(usize, usize)>) -> Vec<Region> {
+    /// `favoured` channels need one standard deviation less: a line is expected there. The significance
+    /// of the strongest box comes with them, found or not.
+    pub fn regions(&self, threshold: f64, favoured: Option<(usize, usize)>) -> (Vec<Region>, f64) {
         let widths = self.widths();
         let mut taken = vec![false; self.len()];
         let mut regions = Vec::new();
+        let mut strongest = 0.0_f64;
         while regions.len() < MOST_REGIONS {
             let Some(found) = self.best(&taken, &widths) else {
                 break;
             };
+            strongest = strongest.max(found.significance.abs());
             let expected =
                 favoured.is_some_and(|(low, high)| found.low <= high && found.high >= low);
             let needed = if expected { threshold - 1.0 } else { threshold };
@@ -194,6 +195,6 @@ impl Boxes {
                 regions.push(grown);
             }
         }
-        regions
+        (regions, strongest)
     }
 }

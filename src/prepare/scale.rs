@@ -240,6 +240,20 @@ pub enum ScaleError {
         /// Velocity of the channel nearest to the line, km/s.
         nearest_km_s: f64,
     },
+    /// The velocities are those of another line.
+    #[error(
+        "{file}: velocities of a line at {stated_ghz:.6} GHz (RESTFRQ), {shift_km_s:+.0} km/s from the line at {line_ghz:.6} GHz, expected the line inside the band"
+    )]
+    OtherLine {
+        /// The file.
+        file: String,
+        /// Rest frequency of the file, GHz.
+        stated_ghz: f64,
+        /// Rest frequency of the line, GHz.
+        line_ghz: f64,
+        /// Velocity of the file's line in velocities of the wanted one, km/s.
+        shift_km_s: f64,
+    },
     /// The arrays make no spectrum.
     #[error("{file}: {source}")]
     Spectrum {
@@ -268,7 +282,7 @@ impl ScaleError {
                 ScaleError::Offset { .. } => "the offset is in km/s",
                 ScaleError::RestFrequency { .. } => "rest frequencies are in Hz here, RESTFRQ too",
                 ScaleError::ImpossibleChannel { .. } => "check the axis's unit and its keywords",
-                ScaleError::LineOutsideBand { .. } => {
+                ScaleError::LineOutsideBand { .. } | ScaleError::OtherLine { .. } => {
                     "check the line's name, and thick and thin for a swap"
                 }
                 ScaleError::Spectrum { .. } => return None,
@@ -291,6 +305,20 @@ impl ScaleError {
 /// # Errors
 ///
 /// [`ScaleError`] where efficiency, beam, frame, rest frequency or axis do not allow it.
+///
+/// ```
+/// use inrush::prepare::scale::{ScaleSettings, to_spectrum};
+/// use inrush::read::{ReadOptions, spectrum_from_bytes};
+/// let text = b"frequency_ghz,ta_k\n89.185,0.4\n89.2,0.8\n";
+/// let raw = spectrum_from_bytes("clump.csv".as_ref(), text, &ReadOptions::default())?;
+/// let mut settings = ScaleSettings::for_line(89.1885247e9);
+/// settings.eta_mb = Some(0.8);
+/// let spectrum = to_spectrum(&raw, &settings)?.spectrum;
+/// // astropy 8.0.2, doppler_radio
+/// assert!((spectrum.velocity_km_s()[1] - 11.847695432433614).abs() < 1e-9);
+/// assert_eq!(spectrum.temperature_k(), [1.0, 0.5]);
+/// # Ok::<(), Box<dyn std::error::Error>>(())
+/// ```
 pub fn to_spectrum(raw: &RawSpectrum, settings: &ScaleSettings) -> Result<Scaled, ScaleError> {
     let mut notes = Vec::new();
     check_settings(raw, settings)?;
@@ -520,6 +548,17 @@ fn check_band(
         return Ok(());
     }
     let line_hz = settings.rest_frequency_hz;
+    if let (Some(stated_hz), true) = (
+        raw.rest_frequency_hz.filter(|stated| *stated != line_hz),
+        raw.axis_kind != AxisKind::Frequency,
+    ) {
+        return Err(ScaleError::OtherLine {
+            file: file_of(raw),
+            stated_ghz: stated_hz * 1e-9,
+            line_ghz: line_hz * 1e-9,
+            shift_km_s: radio_with_other_rest_km_s(0.0, stated_hz, line_hz),
+        });
+    }
     Err(ScaleError::LineOutsideBand {
         file: file_of(raw),
         low_ghz: frequency_from_radio_hz(high, line_hz) * 1e-9,
@@ -633,6 +672,8 @@ fn beam_solid_angle(
 }
 
 #[cfg(test)]
+// Reference values stand as their source prints them.
+#[allow(clippy::unreadable_literal)]
 mod tests {
     use super::*;
     use crate::spectrum::Origin;
@@ -895,6 +936,19 @@ mod tests {
         assert!(text.contains("86.700000 to 86.800000 GHz"), "{text}");
         assert!(text.contains("+8029 km/s"), "{text}");
         assert!(text.contains("line at 89.188525 GHz"), "{text}");
+        assert!(error.hint().unwrap().contains("swap"));
+    }
+
+    #[test]
+    fn velocities_of_another_line_are_refused() {
+        let mut raw = main_beam(AxisKind::RadioVelocity, &[-1e3, 0.0, 1e3]);
+        raw.rest_frequency_hz = Some(86.754_288_4e9);
+        let error = refused(&raw, &ScaleSettings::for_line(HCO_PLUS_HZ));
+        let text = error.to_string();
+        // c (89.1885247 - 86.7542884)/89.1885247 = 8182 km/s, by hand.
+        for part in ["86.754288 GHz (RESTFRQ)", "+8182 km/s", "89.188525 GHz"] {
+            assert!(text.contains(part), "{text}");
+        }
         assert!(error.hint().unwrap().contains("swap"));
     }
 

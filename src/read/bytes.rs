@@ -22,7 +22,7 @@ pub(super) const GZIP_MAGIC: [u8; 2] = [0x1f, 0x8b];
 /// The file is missing, unreadable or too large.
 pub(super) fn load(path: &Path) -> Result<Vec<u8>, ReadError> {
     let file = File::open(path).map_err(|error| unreadable(path, &error))?;
-    take(path, file).map_err(|error| unreadable(path, &error))?
+    take(path, file, LIMIT_BYTES).map_err(|error| unreadable(path, &error))?
 }
 
 /// Unpacks a gzip stream.
@@ -31,11 +31,12 @@ pub(super) fn load(path: &Path) -> Result<Vec<u8>, ReadError> {
 ///
 /// The stream is damaged, or too large or empty when unpacked.
 pub(super) fn unpack(path: &Path, packed: &[u8]) -> Result<Vec<u8>, ReadError> {
-    let bytes =
-        take(path, MultiGzDecoder::new(packed)).map_err(|error| ReadError::DamagedGzip {
+    let bytes = take(path, MultiGzDecoder::new(packed), LIMIT_BYTES).map_err(|error| {
+        ReadError::DamagedGzip {
             path: path.to_path_buf(),
             reason: error.to_string(),
-        })??;
+        }
+    })??;
     if bytes.is_empty() {
         return Err(ReadError::Empty {
             path: path.to_path_buf(),
@@ -44,13 +45,18 @@ pub(super) fn unpack(path: &Path, packed: &[u8]) -> Result<Vec<u8>, ReadError> {
     Ok(bytes)
 }
 
-fn take(path: &Path, source: impl Read) -> std::io::Result<Result<Vec<u8>, ReadError>> {
+/// All bytes of a source, if they are no more than the limit.
+fn take(
+    path: &Path,
+    source: impl Read,
+    limit_bytes: u64,
+) -> std::io::Result<Result<Vec<u8>, ReadError>> {
     let mut bytes = Vec::new();
-    source.take(LIMIT_BYTES + 1).read_to_end(&mut bytes)?;
-    if bytes.len() as u64 > LIMIT_BYTES {
+    source.take(limit_bytes + 1).read_to_end(&mut bytes)?;
+    if bytes.len() as u64 > limit_bytes {
         return Ok(Err(ReadError::TooLarge {
             path: path.to_path_buf(),
-            limit_bytes: LIMIT_BYTES,
+            limit_bytes,
         }));
     }
     Ok(Ok(bytes))
@@ -65,5 +71,22 @@ fn unreadable(path: &Path, error: &std::io::Error) -> ReadError {
     ReadError::Unreadable {
         path: path.to_path_buf(),
         reason: error.to_string(),
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn a_source_beyond_the_limit_is_refused_without_reading_on() {
+        let endless = std::io::repeat(b' ');
+        let error = take(Path::new("f"), endless, 1000).unwrap().unwrap_err();
+        assert!(
+            error.to_string().contains("more than 1000 bytes"),
+            "{error}"
+        );
+        let whole = take(Path::new("f"), &[7_u8; 1000][..], 1000).unwrap();
+        assert_eq!(whole.unwrap().len(), 1000);
     }
 }

@@ -383,7 +383,7 @@ fn on_convention_of(unit: AxisUnit, name: &str) -> AxisUnit {
         AxisKind::RadioVelocity
     } else if name.contains("optical") || name == "vopt" {
         AxisKind::OpticalVelocity
-    } else if name.contains("relativistic") || name == "velo" {
+    } else if name.contains("relativistic") {
         AxisKind::RadialVelocity
     } else {
         return unit;

@@ -3,7 +3,8 @@
 use std::fmt;
 use std::path::PathBuf;
 
-/// Where in a file something stands.
+/// Where in a file something stands; `Display` continues the file's name, as in `:12` and
+/// `: HDU 1, row 3`.
 #[derive(Clone, Debug, PartialEq, Eq)]
 pub enum Place {
     /// A line of text, from 1.
@@ -29,18 +30,17 @@ pub enum Place {
         /// Keyword.
         keyword: String,
     },
-    /// An option of the caller's.
-    Option(&'static str),
 }
 
 impl fmt::Display for Place {
     fn fmt(&self, formatter: &mut fmt::Formatter<'_>) -> fmt::Result {
         match self {
-            Place::Line(line) => write!(formatter, "{line}"),
-            Place::Row { unit, row } => write!(formatter, "HDU {unit}, row {row}"),
-            Place::Channel { unit, channel } => write!(formatter, "HDU {unit}, channel {channel}"),
-            Place::Card { unit, keyword } => write!(formatter, "HDU {unit}, card {keyword}"),
-            Place::Option(name) => write!(formatter, "option `{name}`"),
+            Place::Line(line) => write!(formatter, ":{line}"),
+            Place::Row { unit, row } => write!(formatter, ": HDU {unit}, row {row}"),
+            Place::Channel { unit, channel } => {
+                write!(formatter, ": HDU {unit}, channel {channel}")
+            }
+            Place::Card { unit, keyword } => write!(formatter, ": HDU {unit}, card {keyword}"),
         }
     }
 }
@@ -93,6 +93,16 @@ pub enum ReadError {
         /// The first bytes, in words.
         found: String,
     },
+    /// Text in another encoding than UTF-8.
+    #[error("{}:{line}: byte {found:#04x}, expected text in UTF-8", path.display())]
+    NotUtf8 {
+        /// The file.
+        path: PathBuf,
+        /// The line.
+        line: usize,
+        /// The first byte that is no UTF-8.
+        found: u8,
+    },
     /// The text holds no rows of data.
     #[error("{}: no rows of data, expected at least two channels", path.display())]
     NoRows {
@@ -122,7 +132,7 @@ pub enum ReadError {
         expected: usize,
     },
     /// Text in a number's place.
-    #[error("{}:{place}: `{found}` in column `{column}`, expected a number", path.display())]
+    #[error("{}{place}: `{found}` in column `{column}`, expected a number", path.display())]
     NotANumber {
         /// The file.
         path: PathBuf,
@@ -176,7 +186,7 @@ pub enum ReadError {
         nearest: Option<String>,
     },
     /// No column plays a needed part.
-    #[error("{}:{place}: no {role} column among {columns}, expected one such as {expected}", path.display())]
+    #[error("{}{place}: no {role} column among {columns}, expected one such as {expected}", path.display())]
     NoColumnFor {
         /// The file.
         path: PathBuf,
@@ -192,7 +202,7 @@ pub enum ReadError {
         nearest: Option<String>,
     },
     /// More than one column could play a part.
-    #[error("{}:{place}: several {role} columns ({columns}), expected one", path.display())]
+    #[error("{}{place}: several {role} columns ({columns}), expected one", path.display())]
     SeveralColumnsFor {
         /// The file.
         path: PathBuf,
@@ -204,7 +214,7 @@ pub enum ReadError {
         columns: String,
     },
     /// A unit that is not known.
-    #[error("{}:{place}: unknown unit `{found}`, expected one of {expected}", path.display())]
+    #[error("{}{place}: unknown unit `{found}`, expected one of {expected}", path.display())]
     UnknownUnit {
         /// The file.
         path: PathBuf,
@@ -218,7 +228,7 @@ pub enum ReadError {
         nearest: Option<String>,
     },
     /// A unit that is not stated.
-    #[error("{}:{place}: no unit for the {role}, expected one of {expected}", path.display())]
+    #[error("{}{place}: no unit for the {role}, expected one of {expected}", path.display())]
     NoUnit {
         /// The file.
         path: PathBuf,
@@ -230,7 +240,7 @@ pub enum ReadError {
         expected: &'static str,
     },
     /// A column's name and its unit disagree.
-    #[error("{}:{place}: column `{column}` has the unit `{unit}`, expected the one in its name", path.display())]
+    #[error("{}{place}: column `{column}` has the unit `{unit}`, expected the one in its name", path.display())]
     UnitContradictsName {
         /// The file.
         path: PathBuf,
@@ -254,7 +264,7 @@ pub enum ReadError {
         expected: &'static str,
     },
     /// A velocity or frequency that is blank or not finite.
-    #[error("{}:{place}: blank velocity or frequency, expected a number in every channel", path.display())]
+    #[error("{}{place}: blank velocity or frequency, expected a number in every channel", path.display())]
     BlankAxis {
         /// The file.
         path: PathBuf,
@@ -262,7 +272,7 @@ pub enum ReadError {
         place: Place,
     },
     /// A velocity or frequency twice in a row.
-    #[error("{}:{place}: {value} repeats the channel before, expected strictly ascending or descending velocities or frequencies", path.display())]
+    #[error("{}{place}: {value} repeats the channel before, expected strictly ascending or descending velocities or frequencies", path.display())]
     RepeatedAxis {
         /// The file.
         path: PathBuf,
@@ -272,7 +282,7 @@ pub enum ReadError {
         value: f64,
     },
     /// Velocities or frequencies out of order.
-    #[error("{}:{place}: {value} after {previous}, expected strictly ascending or descending velocities or frequencies", path.display())]
+    #[error("{}{place}: {value} after {previous}, expected strictly ascending or descending velocities or frequencies", path.display())]
     UnsortedAxis {
         /// The file.
         path: PathBuf,
@@ -292,7 +302,7 @@ pub enum ReadError {
         channels: usize,
     },
     /// Axis and values differ in length.
-    #[error("{}:{place}: {axis} axis values for {values} channels, expected as many", path.display())]
+    #[error("{}{place}: {axis} axis values for {values} channels, expected as many", path.display())]
     LengthMismatch {
         /// The file.
         path: PathBuf,
@@ -397,6 +407,21 @@ pub enum ReadError {
         /// The axes, in words.
         shape: String,
     },
+    /// A vector column whose cells have more than one axis longer than 1, or a first axis of 1.
+    #[error(
+        "{}: HDU {unit}, card {keyword}: cells of {shape}, expected one axis longer than 1, the first",
+        path.display()
+    )]
+    FitsCellAxes {
+        /// The file.
+        path: PathBuf,
+        /// Header-data unit, from 0.
+        unit: usize,
+        /// Keyword.
+        keyword: String,
+        /// Its value.
+        shape: String,
+    },
     /// A spectral axis of a kind that is not read.
     #[error("{}: HDU {unit}, card {keyword}: axis type `{found}`, expected FREQ, VRAD, VOPT or VELO", path.display())]
     FitsAxisType {
@@ -485,6 +510,9 @@ impl ReadError {
             ReadError::Unrecognised { .. } => {
                 "give CSV, ECSV, plain columns or FITS, or one of these as .gz".into()
             }
+            ReadError::NotUtf8 { .. } => {
+                "save the file as UTF-8, or use plain ASCII in names and comments".into()
+            }
             ReadError::NoRows { .. } => "check that the data are not all behind `#`".into(),
             ReadError::OneColumn { .. } => {
                 "separate columns by commas, `;`, tabs or blanks, and name the units".into()
@@ -528,6 +556,7 @@ impl ReadError {
             ReadError::FitsCard { .. } => "correct the card".into(),
             ReadError::FitsNoSpectrum { .. } => "check that this is the file that you meant".into(),
             ReadError::FitsSeveralUnits { .. } => "choose one by its number (0 is the primary HDU)".into(),
+            ReadError::FitsCellAxes { .. } => "write one spectrum a cell".into(),
             ReadError::FitsManyAxes { .. } => "cut out the spectrum of one position".into(),
             ReadError::FitsAxisType { .. } => "convert the axis to frequency or velocity".into(),
             ReadError::FitsTileCompressed { .. } => "uncompress the image first".into(),

@@ -127,6 +127,15 @@ impl Unit<'_> {
         }
     }
 
+    /// RESTFRQ or, older, RESTFREQ; zero stands for none.
+    pub fn rest_frequency_hz(&self, path: &Path) -> Result<Option<f64>, ReadError> {
+        let rest = match self.number(path, "RESTFRQ")? {
+            Some(rest) => Some(rest),
+            None => self.number(path, "RESTFREQ")?,
+        };
+        Ok(rest.filter(|rest| *rest != 0.0))
+    }
+
     pub fn wrong_card(
         &self,
         path: &Path,
@@ -151,17 +160,13 @@ impl Unit<'_> {
         axis_unit: AxisUnit,
         value_unit: ValueUnit,
     ) -> Result<Draft, ReadError> {
-        let rest = match self.number(path, "RESTFRQ")? {
-            Some(rest) => Some(rest),
-            None => self.number(path, "RESTFREQ")?,
-        };
         let major = self.number(path, "BMAJ")?;
         let minor = self.number(path, "BMIN")?;
         Ok(Draft {
             format: format.to_string(),
             axis_unit,
             value_unit,
-            rest_frequency_hz: rest.filter(|rest| *rest != 0.0),
+            rest_frequency_hz: self.rest_frequency_hz(path)?,
             frame: self.text("SPECSYS").map(|name| Frame::from_name(&name)),
             beam: major.map(|major| BeamArcsec {
                 major: major * 3600.0,
@@ -260,15 +265,8 @@ fn units<'a>(path: &Path, bytes: &'a [u8]) -> Result<Vec<Unit<'a>>, ReadError> {
     {
         let number = units.len();
         let data_start = start + header_bytes(path, number, &bytes[start..])?;
-        let header = Header::read_from(&mut &bytes[start..data_start]).map_err(|error| {
-            ReadError::FitsCard {
-                path: path.to_path_buf(),
-                unit: number,
-                keyword: "(any)".into(),
-                found: error.to_string(),
-                expected: "cards as FITS writes them".into(),
-            }
-        })?;
+        let header = Header::read_from(&mut &bytes[start..data_start])
+            .map_err(|_| damaged_card(path, number, &bytes[start..data_start]))?;
         let axes = axes(path, number, &header)?;
         let needed = data_bytes(path, number, &header, &axes)?;
         let left = bytes.len() - data_start;
@@ -311,6 +309,23 @@ fn header_bytes(path: &Path, unit: usize, bytes: &[u8]) -> Result<usize, ReadErr
         unit,
         cards,
     })
+}
+
+/// The first card that cannot be understood.
+fn damaged_card(path: &Path, unit: usize, header: &[u8]) -> ReadError {
+    let (cards, _) = header.as_chunks::<CARD_BYTES>();
+    let damaged = cards
+        .iter()
+        .find(|card| fitskit::Keyword::parse(card).is_err())
+        .map(|card| String::from_utf8_lossy(card).trim_end().to_string())
+        .unwrap_or_default();
+    ReadError::FitsCard {
+        path: path.to_path_buf(),
+        unit,
+        keyword: damaged.chars().take(8).collect::<String>().trim().into(),
+        found: format!("`{damaged}`"),
+        expected: "a card such as KEYWORD = 'text' or KEYWORD = 1.5".into(),
+    }
 }
 
 /// A whole number from a card, within limits.

@@ -96,10 +96,7 @@ fn image_axis(
         reference_value: needed(&name("CRVAL"))? * factor,
         increment: increment * factor,
         reference_channel: needed(&name("CRPIX"))?,
-        rest_frequency_hz: match unit.number(path, "RESTFRQ")? {
-            Some(rest) => Some(rest),
-            None => unit.number(path, "RESTFREQ")?,
-        },
+        rest_frequency_hz: unit.rest_frequency_hz(path)?,
         velocity_reference: velocity_reference(path, unit, unit.number(path, "VELREF")?)?,
     };
     spectral_axis::decode(channels, &keywords)

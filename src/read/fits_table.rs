@@ -213,6 +213,7 @@ impl<'u, 'a> Table<'u, 'a> {
         options: &ReadOptions,
     ) -> Result<RawSpectrum, ReadError> {
         let row = self.choose_row(options)?;
+        self.check_cell_axes(value)?;
         let values = self.numbers(row, value)?;
         let value_unit = self.vector_unit(value, options)?;
         let (axis, axis_unit, axis_frame) =
@@ -241,6 +242,25 @@ impl<'u, 'a> Table<'u, 'a> {
             object: self.keyword_text(row, &["OBJECT", "SOURCE"]),
         };
         draft.finish(self.path, axis, values, |_| self.row_place(row))
+    }
+
+    /// Where TDIM gives a cell axes, only the first may be longer than 1.
+    fn check_cell_axes(&self, column: usize) -> Result<(), ReadError> {
+        let keyword = format!("TDIM{}", column + 1);
+        let Some(shape) = self.unit.text(&keyword) else {
+            return Ok(());
+        };
+        let mut axes = shape.trim_matches(['(', ')']).split(',');
+        let first = axes.next();
+        if first.map(str::trim) != Some("1") && axes.all(|axis| axis.trim() == "1") {
+            return Ok(());
+        }
+        Err(ReadError::FitsCellAxes {
+            path: self.path.to_path_buf(),
+            unit: self.unit.number,
+            keyword,
+            shape,
+        })
     }
 
     fn row_place(&self, row: usize) -> Place {

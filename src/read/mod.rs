@@ -98,6 +98,12 @@ impl FromStr for RowChoice {
 /// # Errors
 ///
 /// [`ReadError`] names the file, the line, row or card, what was found and what was expected.
+///
+/// ```
+/// use inrush::read::{ReadOptions, read_spectrum};
+/// let error = read_spectrum("missing.fits".as_ref(), &ReadOptions::default()).unwrap_err();
+/// assert_eq!(error.to_string(), "missing.fits: no such file");
+/// ```
 pub fn read_spectrum(path: &Path, options: &ReadOptions) -> Result<RawSpectrum, ReadError> {
     spectrum_from_bytes(path, &bytes::load(path)?, options)
 }
@@ -107,6 +113,15 @@ pub fn read_spectrum(path: &Path, options: &ReadOptions) -> Result<RawSpectrum, 
 /// # Errors
 ///
 /// As [`read_spectrum`].
+///
+/// ```
+/// use inrush::read::{ReadOptions, spectrum_from_bytes};
+/// let text = b"frequency_ghz,ta_mk\n89.188,120\n89.189,80\n";
+/// let raw = spectrum_from_bytes("clump.csv".as_ref(), text, &ReadOptions::default())?;
+/// assert_eq!(raw.axis, [89.188e9, 89.189e9]);
+/// assert_eq!(raw.values, [0.12, 0.08]);
+/// # Ok::<(), inrush::read::ReadError>(())
+/// ```
 pub fn spectrum_from_bytes(
     path: &Path,
     content: &[u8],
@@ -132,6 +147,12 @@ fn from_bytes(
         return fits::read(path, content, options);
     }
     let text = text::decode(path, content)?;
+    if is_named_fits(path) {
+        return Err(ReadError::Unrecognised {
+            path: path.to_path_buf(),
+            found: format!("`{}`", text.trim().chars().take(20).collect::<String>()),
+        });
+    }
     let lines = text::lines(text);
     let rows = text::data_lines(&lines);
     let Some(&first) = rows.first() else {
@@ -162,6 +183,15 @@ fn from_bytes(
     draft.finish(path, channels.axis, channels.values, |channel| {
         Place::Line(lines[channel])
     })
+}
+
+/// Whether a name promises FITS, so that text in the file is something else gone wrong.
+fn is_named_fits(path: &Path) -> bool {
+    let name = path.to_string_lossy().to_ascii_lowercase();
+    let name = name.strip_suffix(".gz").unwrap_or(&name);
+    [".fits", ".fit", ".fts"]
+        .iter()
+        .any(|ending| name.ends_with(ending))
 }
 
 /// A spectrum whose arrays are not checked yet.

@@ -292,6 +292,8 @@ fn ratio_of_variable(variable: Variable, x: f64) -> f64 {
 }
 
 #[cfg(test)]
+// Reference values stand as their source prints them.
+#[allow(clippy::unreadable_literal)]
 mod tests {
     use super::*;
 

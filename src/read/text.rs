@@ -53,21 +53,28 @@ impl Separator {
 ///
 /// # Errors
 ///
-/// The bytes are no text.
+/// The bytes are no text, or not in UTF-8.
 pub(super) fn decode<'a>(path: &Path, bytes: &'a [u8]) -> Result<&'a str, ReadError> {
     let bytes = bytes.strip_prefix(b"\xef\xbb\xbf").unwrap_or(bytes);
-    let is_text = |text: &str| {
-        !text
-            .chars()
-            .any(|letter| letter.is_control() && !matches!(letter, '\t' | '\n' | '\r' | '\x0c'))
+    let unrecognised = || ReadError::Unrecognised {
+        path: path.to_path_buf(),
+        found: describe(bytes),
     };
-    match std::str::from_utf8(bytes) {
-        Ok(text) if is_text(text) => Ok(text),
-        _ => Err(ReadError::Unrecognised {
-            path: path.to_path_buf(),
-            found: describe(bytes),
-        }),
+    let is_binary = |byte: &u8| byte.is_ascii_control() && !b"\t\n\r\x0c".contains(byte);
+    if bytes.iter().any(is_binary) {
+        return Err(unrecognised());
     }
+    std::str::from_utf8(bytes).map_err(|error| {
+        let before = &bytes[..error.valid_up_to()];
+        if before.is_empty() {
+            return unrecognised();
+        }
+        ReadError::NotUtf8 {
+            path: path.to_path_buf(),
+            line: before.split(|byte| *byte == b'\n').count(),
+            found: bytes[error.valid_up_to()],
+        }
+    })
 }
 
 /// The first bytes of a file in words.

@@ -1,1 +1,27 @@
-//! (being built)
+//! The one place that joins the stages: a run sheet in, results and products out.
+
+mod check;
+mod error;
+mod pair;
+mod products;
+mod sheet;
+pub mod simulate;
+
+pub use check::{FileCheck, check_file};
+pub use error::RunError;
+pub use pair::{LineOutcome, PairOutcome, fit_pair};
+pub use products::{pair_row, pair_summary, write_products};
+pub use sheet::{
+    Beam, FitSection, Given, LineSection, NumberOrWord, OutputSection, PrepareSection, RangeOrWord,
+    Record, RunSheet, SourceSection,
+};
+
+/// The name most like a text, where one is like it at all.
+pub(crate) fn nearest<'a>(text: &str, names: impl Iterator<Item = &'a str>) -> Option<&'a str> {
+    const ALIKE: f64 = 0.7;
+    names
+        .map(|name| (strsim::jaro_winkler(name, text), name))
+        .filter(|(likeness, _)| *likeness >= ALIKE)
+        .max_by(|a, b| a.0.total_cmp(&b.0))
+        .map(|(_, name)| name)
+}

@@ -78,6 +78,8 @@ pub fn radio_with_other_rest_km_s(
 }
 
 #[cfg(test)]
+// Reference values stand as their source prints them.
+#[allow(clippy::unreadable_literal)]
 mod tests {
     use super::*;
 

@@ -11,7 +11,7 @@ pub(super) type Vector = [f64; MAX_PARAMETERS];
 pub(super) type Matrix = [Vector; MAX_PARAMETERS];
 
 /// Independent partial sums of a dot product: enough for the compiler to fill vector registers.
-const LANES: usize = 8;
+const LANES: usize = 4;
 /// Rows of a block: 256 rows of 9 columns take 18 kB, so that a block stays in the first cache.
 const BLOCK: usize = 256;
 

@@ -14,6 +14,8 @@ use super::{Interval, LeastSquares, LeastSquaresError, Minimum, Settings, Side, 
 const SMALLEST_PIVOT: f64 = 1e-7;
 /// Damping of a step that counts as undamped; keeps parameters without influence at rest.
 const UNDAMPED: f64 = 1e-15;
+/// The first radius is at least this times the norm of the residuals, for starts near the origin.
+const LEAST_RADIUS: f64 = 0.03;
 /// How far from the radius, relative to it, a shortened step may end.
 const RADIUS_TOLERANCE: f64 = 0.1;
 /// Most dampings tried for one step; two or three are usual.
@@ -70,7 +72,8 @@ pub struct Descent {
     chi2: f64,
     degrees_of_freedom: f64,
     linear: Linearisation,
-    scale: Vector,
+    /// Largest norm so far of each column of J, the diagonal of D; zero where a column was always zero.
+    largest_norms: Vector,
     /// Longest step that is trusted, |D d|.
     radius: f64,
     damping: f64,
@@ -109,7 +112,7 @@ impl Descent {
             chi2: dense::sum_of_squares(residuals),
             degrees_of_freedom: rows.saturating_sub(free).max(1) as f64,
             linear,
-            scale: [0.0; MAX_PARAMETERS],
+            largest_norms: [0.0; MAX_PARAMETERS],
             radius: f64::INFINITY,
             damping: UNDAMPED,
             gain: f64::NAN,
@@ -117,13 +120,9 @@ impl Descent {
             iterations: 0,
         };
         descent.update_scale();
-        let size = descent.scaled_norm(&descent.parameters);
-        let size = if size > 0.0 {
-            size
-        } else {
-            descent.chi2.sqrt()
-        };
-        descent.radius = settings.initial_radius * size;
+        let length = descent.scaled_norm(&descent.parameters);
+        let least = LEAST_RADIUS * descent.chi2.sqrt();
+        descent.radius = settings.initial_radius * length.max(least);
         Ok(descent)
     }
 
@@ -295,7 +294,7 @@ impl Descent {
 
     /// |D v|.
     fn scaled_norm(&self, vector: &Vector) -> f64 {
-        self.length(&self.scale, vector)
+        self.length(&self.largest_norms, vector)
     }
 
     fn length(&self, scale: &Vector, vector: &Vector) -> f64 {
@@ -306,13 +305,12 @@ impl Descent {
     }
 
     fn update_scale(&mut self) {
-        for j in 0..self.columns {
-            let largest = if std::env::var("CUR").is_ok() {
-                self.linear.gram[j][j].sqrt()
-            } else {
-                self.scale[j].max(self.linear.gram[j][j].sqrt())
-            };
-            self.scale[j] = if largest > 0.0 { largest } else { 1.0 };
+        for (largest, norm) in self
+            .largest_norms
+            .iter_mut()
+            .zip(self.linear.column_norms())
+        {
+            *largest = largest.max(norm);
         }
     }
 
@@ -349,9 +347,10 @@ impl Descent {
     ///
     /// 1 / |D d| is nearly linear in lambda, and |D d| <= |D^-1 g| / lambda.
     fn shorten(&mut self, full: f64, bounds: &[Interval], workspace: &mut Workspace) -> Step {
+        let scale = without_zeros(self.largest_norms);
         let steepness = (0..self.columns)
             .filter(|&j| !self.is_pressed(j, bounds))
-            .map(|j| (self.linear.gradient[j] / self.scale[j]).powi(2))
+            .map(|j| (self.linear.gradient[j] / scale[j]).powi(2))
             .sum::<f64>()
             .sqrt();
         let (mut low, mut high) = (UNDAMPED, steepness / self.radius);
@@ -397,11 +396,11 @@ impl Descent {
                 step.held[j] = Some(self.parameters[j]);
             }
         }
-        let scale = if damping == UNDAMPED {
+        let scale = without_zeros(if damping == UNDAMPED {
             self.linear.column_norms()
         } else {
-            self.scale
-        };
+            self.largest_norms
+        });
         loop {
             let (linear, rows) = (&mut self.linear, self.rows);
             let target = linear.solve(damping, &scale, &step, workspace, rows);
@@ -507,15 +506,9 @@ impl Linearisation {
         }
     }
 
-    /// The norm of each column of J; one for a column of zeros.
+    /// The norm of each column of J.
     fn column_norms(&self) -> Vector {
-        let mut norms = [1.0; MAX_PARAMETERS];
-        for (j, norm) in norms.iter_mut().enumerate().take(self.columns) {
-            if self.gram[j][j] > 0.0 {
-                *norm = self.gram[j][j].sqrt();
-            }
-        }
-        norms
+        std::array::from_fn(|j| self.gram[j][j].sqrt())
     }
 
     /// The shifts that minimise |r + J d|^2 + damping |D d|^2, those of held parameters given.
@@ -664,6 +657,11 @@ impl Triangle {
             shift[free[k]] = right[k] / scale[free[k]];
         }
     }
+}
+
+/// The scale with one for zero: a column of zeros gives a gradient of zero, and so a shift of zero.
+fn without_zeros(scale: Vector) -> Vector {
+    scale.map(|norm| if norm > 0.0 { norm } else { 1.0 })
 }
 
 /// Checks sizes, bounds and start; returns the number of parameters to fit.

@@ -78,7 +78,9 @@ pub enum LeastSquaresError {
         found: f64,
     },
     /// A setting that is negative or not finite.
-    #[error("found {name} = {found}, expected a finite number of at least 0")]
+    #[error(
+        "found {name} = {found}, expected a finite number of at least 0, the radius more than 0"
+    )]
     Setting {
         /// Field of `Settings`.
         name: &'static str,

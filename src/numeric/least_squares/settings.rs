@@ -19,8 +19,9 @@ pub struct Settings {
     /// Converged when the cosine of the angle between the residuals and every Jacobian column of a
     /// parameter free to move is no larger than this. Default 1e-12.
     pub gradient_tolerance: f64,
-    /// Length of the first step at most, in units of the start's length, both with each parameter
-    /// multiplied by the norm of its Jacobian column. Default 1.
+    /// Length of the first step at most, in units of the start's length (or of 0.03 of the residuals'
+    /// norm where that is more), both with each parameter multiplied by the norm of its Jacobian
+    /// column. Default 1; more than 0.
     pub initial_radius: f64,
 }
 
@@ -45,7 +46,8 @@ impl Settings {
             ("initial_radius", self.initial_radius),
         ];
         for (name, found) in settings {
-            if !(found.is_finite() && found >= 0.0) {
+            let usable = found > 0.0 || (found == 0.0 && name != "initial_radius");
+            if !(found.is_finite() && usable) {
                 return Err(LeastSquaresError::Setting { name, found });
             }
         }

@@ -1,6 +1,7 @@
 use super::*;
 use argmin::core::observers::{Observe, ObserverMode};
 use argmin::core::{Executor, IterState, KV, State, TerminationReason, TerminationStatus};
+use proptest::prelude::*;
 use std::sync::{Arc, Mutex};
 
 /// A problem given by a closure that writes residuals and, column by column, the Jacobian.
@@ -464,24 +465,53 @@ fn unusable_starts_are_refused_with_the_evidence() {
             ..
         }
     ));
-    let settings = Settings {
-        chi2_tolerance: -1.0,
-        ..Settings::default()
-    };
-    let refused = minimize(
-        &mut line(),
-        &[0.0; 2],
-        &free,
-        &settings,
-        &mut Workspace::new(),
-    );
-    assert!(matches!(
-        refused,
-        Err(E::Setting {
-            name: "chi2_tolerance",
-            ..
-        })
-    ));
+    let settings = [
+        Settings {
+            chi2_tolerance: -1.0,
+            ..Settings::default()
+        },
+        Settings {
+            initial_radius: 0.0,
+            ..Settings::default()
+        },
+        Settings {
+            step_tolerance: f64::NAN,
+            ..Settings::default()
+        },
+    ];
+    for (settings, expected) in
+        (settings.iter()).zip(["chi2_tolerance", "initial_radius", "step_tolerance"])
+    {
+        let refused = minimize(
+            &mut line(),
+            &[0.0; 2],
+            &free,
+            settings,
+            &mut Workspace::new(),
+        );
+        assert!(matches!(refused, Err(E::Setting { name, .. }) if name == expected));
+    }
+}
+
+#[test]
+fn a_line_is_found_from_amplitudes_of_any_size() {
+    for amplitude in [0.0, 1e-12, 1e-3, 0.1, 10.0, 1e4] {
+        let bounds = [
+            Interval::at_least(0.0),
+            Interval::new(-5.0, 5.0),
+            Interval::new(0.1, 5.0),
+        ];
+        let minimum = fit(&mut gaussian(), &[amplitude, 0.8, 1.0], &bounds);
+        assert!(
+            (minimum.chi2 - 45.341).abs() < 1e-3,
+            "{amplitude}: {minimum:?}"
+        );
+        assert!(
+            minimum.evaluations <= 30,
+            "{amplitude}: {}",
+            minimum.evaluations
+        );
+    }
 }
 
 #[test]
@@ -565,6 +595,99 @@ fn one_workspace_serves_fits_of_all_sizes_and_repeats_them_exactly() {
         run(&mut line(), &[0.0, 0.0]);
         run(&mut rosenbrock(), &[-1.2, 1.0]);
     }
+}
+
+/// How far `p` is from a minimum inside the box: the largest cosine between the residuals and a
+/// Jacobian column along which chi2 still falls.
+fn violation(problem: &mut impl LeastSquares, p: &[f64], bounds: &[Interval]) -> f64 {
+    let rows = problem.residuals();
+    let mut residuals = vec![0.0; rows];
+    let mut jacobian = vec![0.0; rows * p.len()];
+    problem.evaluate(p, &mut residuals, Some(&mut jacobian));
+    let norm = |values: &[f64]| values.iter().map(|x| x * x).sum::<f64>().sqrt();
+    (jacobian.chunks_exact(rows).enumerate())
+        .map(|(j, column)| {
+            let slope: f64 = column.iter().zip(&residuals).map(|(a, b)| a * b).sum();
+            let falling = match bounds[j].side(p[j]) {
+                None => slope.abs(),
+                Some(Side::Lower) => -slope,
+                Some(Side::Upper) => slope,
+                Some(Side::Fixed) => 0.0,
+            };
+            falling / (norm(column) * norm(&residuals))
+        })
+        .fold(0.0, f64::max)
+}
+
+/// Bounds around numbers of order one: open, half open, closed or fixed.
+fn interval() -> impl Strategy<Value = Interval> {
+    (-2.0..2.0, 0.0..3.0, 0..5).prop_map(|(lower, width, kind): (f64, f64, i32)| match kind {
+        0 => Interval::UNBOUNDED,
+        1 => Interval::at_least(lower),
+        2 => Interval::at_most(lower),
+        3 => Interval::fixed(lower),
+        _ => Interval::new(lower, lower + width),
+    })
+}
+
+proptest! {
+    #[test]
+    fn linear_problems_end_at_the_minimum_of_their_box(
+        bounds in prop::collection::vec(interval(), 1..7),
+        numbers in prop::collection::vec(-1.0..1.0, 80),
+        starts in prop::collection::vec(-4.0..4.0, 7),
+    ) {
+        // Neighbouring columns share most of their numbers, so that they are correlated.
+        let columns = bounds.len();
+        let mut linear = problem(columns, 10, |p: &[f64], r: &mut [f64], j: &mut [f64]| {
+            for i in 0..10 {
+                r[i] = 3.0 * numbers[70 + i];
+                for (k, p) in p.iter().enumerate() {
+                    j[k * 10 + i] = numbers[i] + 0.3 * numbers[10 + 10 * k + i - if k == 6 { 10 } else { 0 }];
+                    r[i] += j[k * 10 + i] * p;
+                }
+            }
+        });
+        let start: Vec<f64> = bounds.iter().zip(&starts).map(|(b, &p)| b.nearest(p)).collect();
+        let exact = Settings { chi2_tolerance: 1e-18, ..Settings::default() };
+        let minimum =
+            minimize(&mut linear, &start, &bounds, &exact, &mut Workspace::new()).unwrap();
+        prop_assert!(minimum.termination.converged(), "{}", minimum.termination);
+        let violation = violation(&mut linear, &minimum.parameters, &bounds);
+        prop_assert!(violation < 1e-8, "{violation:e} {minimum:?}");
+    }
+
+    #[test]
+    fn lines_end_at_a_minimum_of_their_box(
+        amplitude in 0.3..3.0, centre in -1.0..1.5, width in 0.3..2.0,
+        room in prop::collection::vec(0.0..1.0, 6),
+    ) {
+        let start = [amplitude, centre, width];
+        let bounds: Vec<Interval> = (0..3)
+            .map(|j| Interval::new(start[j] - 0.25 * room[j], start[j] + room[3 + j]))
+            .collect();
+        let exact = Settings { chi2_tolerance: 1e-16, ..Settings::default() };
+        let minimum =
+            minimize(&mut gaussian(), &start, &bounds, &exact, &mut Workspace::new()).unwrap();
+        prop_assert!(minimum.termination.converged(), "{}", minimum.termination);
+        let violation = violation(&mut gaussian(), &minimum.parameters, &bounds);
+        prop_assert!(violation < 1e-6, "{violation:e} {minimum:?}");
+    }
+}
+
+#[test]
+fn a_parameter_without_influence_at_the_start_is_found_later() {
+    // The second parameter only matters once the first is positive, in units 1e-12 times smaller.
+    let mut late = problem(2, 3, |p: &[f64], r: &mut [f64], j: &mut [f64]| {
+        let (a, b) = (p[0].max(0.0), 1e-12 * p[1]);
+        let gate = if p[0] > 0.0 { 1.0 } else { 0.0 };
+        r.copy_from_slice(&[p[0] - 2.0, a * b - 6.0, 0.0]);
+        j.copy_from_slice(&[1.0, gate * b, 0.0, 0.0, 1e-12 * a, 0.0]);
+    });
+    let minimum = fit(&mut late, &[-1.0, 1e12], &unbounded(2));
+    assert!(minimum.termination.converged());
+    assert!((minimum.parameters[0] - 2.0).abs() < 1e-9, "{minimum:?}");
+    assert!((minimum.parameters[1] * 1e-12 - 3.0).abs() < 1e-9);
 }
 
 #[test]

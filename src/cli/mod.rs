@@ -1,0 +1,99 @@
+//! Arguments in, messages out. Results go to stdout, everything else to stderr.
+
+mod check;
+mod fit;
+mod lines;
+mod output;
+
+use clap::{Parser, Subcommand};
+use inrush::run::RunError;
+use output::Output;
+use std::process::ExitCode;
+
+/// How a run ended.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Exit {
+    /// All done.
+    Done,
+    /// Finished, some spectra unusable.
+    SomeUnusable,
+    /// Bad usage, input or setting.
+    Unusable,
+}
+
+impl From<Exit> for ExitCode {
+    fn from(exit: Exit) -> Self {
+        Self::from(match exit {
+            Exit::Done => 0,
+            Exit::SomeUnusable => 1,
+            Exit::Unusable => 2,
+        })
+    }
+}
+
+/// Infall velocities from an optically thick and an optically thin line.
+///
+/// Example:
+///
+///   inrush fit demo-spectra/lantern7.toml --out results
+#[derive(Debug, Parser)]
+#[command(
+    name = "inrush",
+    version,
+    arg_required_else_help = true,
+    verbatim_doc_comment
+)]
+struct Arguments {
+    #[command(subcommand)]
+    command: Command,
+
+    /// Say only what went wrong.
+    #[arg(short, long, global = true)]
+    quiet: bool,
+
+    /// Threads to use; results are the same for any number.
+    #[arg(long, global = true, value_name = "N", value_parser = clap::value_parser!(u16).range(1..))]
+    threads: Option<u16>,
+}
+
+#[derive(Debug, Subcommand)]
+enum Command {
+    Check(check::CheckArguments),
+    Fit(Box<fit::FitArguments>),
+    Lines(lines::LinesArguments),
+}
+
+/// Runs the command line and returns its exit code.
+pub fn main() -> ExitCode {
+    let arguments = match Arguments::try_parse() {
+        Ok(arguments) => arguments,
+        Err(error) => {
+            // help and version go to stdout with code 0, usage errors to stderr with code 2
+            let code = if error.use_stderr() {
+                Exit::Unusable
+            } else {
+                Exit::Done
+            };
+            let _ = error.print();
+            return code.into();
+        }
+    };
+    let output = Output::new(arguments.quiet);
+    let result = match &arguments.command {
+        Command::Check(check) => check::run(check, &output),
+        Command::Fit(fit) => fit::run(fit, &output),
+        Command::Lines(lines) => lines::run(lines, &output),
+    };
+    match result {
+        Ok(exit) => exit.into(),
+        Err(error) => {
+            report(&error, &output);
+            Exit::Unusable.into()
+        }
+    }
+}
+
+/// An error with what to do about it.
+fn report(error: &RunError, output: &Output) {
+    output.error(&error.to_string(), error.hint().as_deref());
+}

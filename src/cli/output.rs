@@ -1,0 +1,47 @@
+//! The two streams: data on stdout, messages on stderr. A reader that closes stdout early ends the
+//! program quietly.
+
+use std::io::{ErrorKind, Write};
+
+/// Where messages go, and which of them.
+#[derive(Clone, Copy, Debug)]
+pub struct Output {
+    quiet: bool,
+}
+
+impl Output {
+    /// Messages below errors are left out where `quiet`.
+    pub fn new(quiet: bool) -> Self {
+        Self { quiet }
+    }
+
+    /// Data.
+    pub fn data(&self, text: &str) -> std::io::Result<()> {
+        let mut stdout = std::io::stdout().lock();
+        match stdout
+            .write_all(text.as_bytes())
+            .and_then(|()| stdout.flush())
+        {
+            Err(error) if error.kind() == ErrorKind::BrokenPipe => Ok(()),
+            result => result,
+        }
+    }
+
+    /// What was assumed or done.
+    pub fn note(&self, text: &str) {
+        if !self.quiet {
+            Self::message(&format!("note: {text}\n"));
+        }
+    }
+
+    /// What went wrong, and what to do about it.
+    pub fn error(&self, text: &str, hint: Option<&str>) {
+        let hint = hint.map_or(String::new(), |hint| format!("\nhint: {hint}\n"));
+        Self::message(&format!("error: {text}\n{hint}"));
+    }
+
+    fn message(text: &str) {
+        // a closed stderr leaves nobody to tell
+        let _ = std::io::stderr().lock().write_all(text.as_bytes());
+    }
+}

@@ -1,0 +1,952 @@
+//! Where everything of a pair's figure stands, and its drawing.
+
+use super::axis::{Axis, Ticks, extent};
+use super::canvas::{Align, Canvas, Look, page};
+use super::style::{
+    self, CAUTION, DATA, GUIDE, INK, LABEL_PT, NAME_PT, PAPER, POINT_MM, SOFT_INK, Stroke, TICK_PT,
+    TITLE_PT, V_LSR, V_LSR_BAND, WINDOW, ZERO, solid,
+};
+use super::text::{self, Spans, Weight};
+use super::{Curve, PairFigure, Panel};
+use crate::report::ReportError;
+use crate::spectrum::Window;
+
+type Drawn = Result<(), ReportError>;
+
+/// Width of the page: one column of a journal.
+const PAGE_MM: f64 = 88.0;
+const MARGIN_MM: f64 = 1.5;
+/// Left and right ends of the velocity axis.
+const PLOT_LEFT_MM: f64 = 12.6;
+const PLOT_RIGHT_MM: f64 = 85.8;
+const THICK_MM: f64 = 41.0;
+const THIN_MM: f64 = 25.0;
+const RESIDUAL_MM: f64 = 9.5;
+/// Gaps between a line and its residuals, and between the two lines.
+const INNER_GAP_MM: f64 = 1.4;
+const OUTER_GAP_MM: f64 = 3.0;
+const TICK_MM: f64 = 0.9;
+/// Baseline to baseline, in units of the text's size.
+const LEADING: f64 = 1.32;
+/// Length of a line's sample in the key, and the blank behind it.
+const SAMPLE_MM: f64 = 6.4;
+const SAMPLE_GAP_MM: f64 = 1.2;
+/// Baselines of the line's name and of the key below the top of a panel, and the key's spacing.
+const NAME_DEPTH_MM: f64 = 4.2;
+const KEY_LEADING_MM: f64 = 3.1;
+/// Cautions beyond this many are counted, not shown.
+const MOST_CAUTIONS: usize = 8;
+/// Part of the window's width that is shown on either side of it.
+const VIEW_MARGIN: f64 = 0.6;
+
+const TITLE: Look = look(TITLE_PT, Weight::SemiBold, INK);
+const NAME: Look = look(NAME_PT, Weight::SemiBold, INK);
+const LABEL: Look = look(LABEL_PT, Weight::Regular, INK);
+const SOFT_LABEL: Look = look(LABEL_PT, Weight::Regular, SOFT_INK);
+const VALUE: Look = look(LABEL_PT, Weight::SemiBold, INK);
+const TICK: Look = look(TICK_PT, Weight::Regular, INK);
+const NOTE: Look = look(TICK_PT, Weight::Regular, SOFT_INK);
+const CAUTION_HEADING: Look = look(LABEL_PT, Weight::SemiBold, CAUTION);
+
+const fn look(size_pt: f64, weight: Weight, color: plotters::style::RGBColor) -> Look {
+    Look {
+        size_pt,
+        weight,
+        color,
+    }
+}
+
+fn leading_mm(look: Look) -> f64 {
+    look.size_pt * POINT_MM * LEADING
+}
+
+/// Draws the figure; the arrays have been checked.
+pub(super) fn draw(figure: &PairFigure) -> Result<String, ReportError> {
+    let layout = Layout::of(figure);
+    let title = format!(
+        "{}: {} and {}",
+        figure.source, figure.thick.line_name, figure.thin.line_name
+    );
+    page(PAGE_MM, layout.height_mm, &title, |canvas| {
+        canvas.rectangle((0.0, 0.0), (PAGE_MM, layout.height_mm), PAPER)?;
+        for (index, line) in layout.title.iter().enumerate() {
+            let y = MARGIN_MM + leading_mm(TITLE) * (index as f64 + 0.8);
+            canvas.text(&text::plain(line), (PLOT_LEFT_MM, y), Align::Start, TITLE)?;
+        }
+        let sheet = Sheet {
+            canvas,
+            figure,
+            layout: &layout,
+        };
+        sheet.panel(&figure.thick, &layout.thick, true)?;
+        sheet.panel(&figure.thin, &layout.thin, false)?;
+        sheet.velocity_axis()?;
+        sheet.notes()?;
+        sheet.numbers()?;
+        sheet.cautions()
+    })
+}
+
+/// Top and bottom of a line's axes and of its residuals', mm.
+struct PanelPlace {
+    top: f64,
+    bottom: f64,
+    residuals: Option<(f64, f64)>,
+}
+
+impl PanelPlace {
+    fn of(panel: &Panel, top: f64, height: f64) -> Self {
+        let bottom = top + height;
+        let from = bottom + INNER_GAP_MM;
+        Self {
+            top,
+            bottom,
+            residuals: (!panel.curves.is_empty()).then_some((from, from + RESIDUAL_MM)),
+        }
+    }
+
+    fn end(&self) -> f64 {
+        self.residuals.map_or(self.bottom, |(_, bottom)| bottom)
+    }
+}
+
+struct Layout {
+    title: Vec<String>,
+    velocity: Axis,
+    velocity_ticks: Ticks,
+    thick: PanelPlace,
+    thin: PanelPlace,
+    /// Names of the models in the order of their strokes.
+    models: Vec<String>,
+    notes: Vec<PlacedNote>,
+    /// Top of the block of numbers.
+    numbers_top: f64,
+    numbers: Numbers,
+    cautions_top: f64,
+    cautions: Vec<Vec<String>>,
+    height_mm: f64,
+}
+
+impl Layout {
+    fn of(figure: &PairFigure) -> Self {
+        let velocity = velocity_axis(figure);
+        let title = title_lines(&figure.source);
+        let top = MARGIN_MM + leading_mm(TITLE) * title.len() as f64 + 1.4;
+        let thick = PanelPlace::of(&figure.thick, top, THICK_MM);
+        let thin = PanelPlace::of(&figure.thin, thick.end() + OUTER_GAP_MM, THIN_MM);
+
+        let axis_end = thin.end() + TICK_MM + leading_mm(TICK) + leading_mm(LABEL) + 0.4;
+        let notes = placed_notes(figure, axis_end + leading_mm(NOTE));
+        let notes_end = notes.last().map_or(axis_end, |note| note.at.1) + 1.6;
+
+        let numbers = Numbers::of(&figure.numbers);
+        let numbers_top = notes_end;
+        let mut end = numbers_top;
+        if numbers.lines() > 0 {
+            end += 1.2 + leading_mm(LABEL) * numbers.lines() as f64 + 0.8;
+        }
+        let cautions = caution_lines(&figure.cautions);
+        let cautions_top = end;
+        if !cautions.is_empty() {
+            let lines = cautions.iter().map(Vec::len).sum::<usize>();
+            end += 1.2 + leading_mm(CAUTION_HEADING) + leading_mm(LABEL) * lines as f64 + 0.8;
+        }
+        Self {
+            title,
+            velocity,
+            velocity_ticks: Ticks::between(velocity.low, velocity.high, 8),
+            thick,
+            thin,
+            models: model_names(figure),
+            notes,
+            numbers_top,
+            numbers,
+            cautions_top,
+            cautions,
+            height_mm: end + MARGIN_MM,
+        }
+    }
+}
+
+/// The source's name on at most two lines.
+fn title_lines(source: &str) -> Vec<String> {
+    let room = PLOT_RIGHT_MM - PLOT_LEFT_MM;
+    let mut lines = text::wrap(source, room, TITLE.size_pt, TITLE.weight);
+    if lines.len() > 2 {
+        let rest = lines.split_off(1).join(" ");
+        lines.push(text::shortened(&rest, room, TITLE.size_pt, TITLE.weight));
+    }
+    lines
+}
+
+/// The windows of both lines with a margin, as far as there are data.
+fn velocity_axis(figure: &PairFigure) -> Axis {
+    let panels = [&figure.thick, &figure.thin];
+    let band = extent(panels.iter().flat_map(|panel| edges_of(panel))).unwrap_or((-1.0, 1.0));
+    let windows = panels
+        .iter()
+        .flat_map(|panel| [panel.window.low_km_s, panel.window.high_km_s])
+        .chain(figure.v_lsr_km_s.map(|v_lsr| v_lsr.value));
+    let (low, high) = extent(windows).unwrap_or(band);
+    let channel = panels
+        .iter()
+        .flat_map(|panel| panel.width_km_s.iter().copied())
+        .fold(0.0, f64::max);
+    let margin = (VIEW_MARGIN * (high - low)).max(8.0 * channel);
+    let (mut low, mut high) = ((low - margin).max(band.0), (high + margin).min(band.1));
+    if high <= low {
+        (low, high) = band;
+    }
+    Axis {
+        low,
+        high,
+        start_mm: PLOT_LEFT_MM,
+        end_mm: PLOT_RIGHT_MM,
+    }
+}
+
+fn edges_of(panel: &Panel) -> impl Iterator<Item = f64> {
+    let channels = panel.velocity_km_s.iter().zip(&panel.width_km_s);
+    channels.flat_map(|(velocity, width)| [velocity - width / 2.0, velocity + width / 2.0])
+}
+
+fn model_names(figure: &PairFigure) -> Vec<String> {
+    let mut names: Vec<String> = Vec::new();
+    for curve in figure.thick.curves.iter().chain(&figure.thin.curves) {
+        if !names.contains(&curve.label) {
+            names.push(curve.label.clone());
+        }
+    }
+    names
+}
+
+/// What the marks mean, in words below the axis.
+#[derive(Clone, Copy, PartialEq)]
+enum Note {
+    Data,
+    Window,
+    Systemic,
+    Thin,
+}
+
+impl Note {
+    fn words(self) -> &'static str {
+        match self {
+            Self::Data => "data",
+            Self::Window => "line window",
+            Self::Systemic => "systemic velocity \u{b1} error",
+            Self::Thin => "thin line's velocity",
+        }
+    }
+
+    fn mark_mm(self) -> f64 {
+        match self {
+            Self::Data | Self::Window => 4.0,
+            Self::Systemic | Self::Thin => 2.0,
+        }
+    }
+}
+
+struct PlacedNote {
+    note: Note,
+    /// Left end of the mark, and baseline.
+    at: (f64, f64),
+}
+
+fn placed_notes(figure: &PairFigure, first_baseline: f64) -> Vec<PlacedNote> {
+    const BETWEEN_MM: f64 = 2.4;
+    let mut shown = vec![Note::Data, Note::Window];
+    if figure.v_lsr_km_s.is_some() {
+        shown.push(Note::Systemic);
+    }
+    if figure.v_thin_km_s.is_some() {
+        shown.push(Note::Thin);
+    }
+    let (mut x, mut y) = (MARGIN_MM + 0.5, first_baseline);
+    let mut placed = Vec::new();
+    for note in shown {
+        let words = text::span_width_mm(note.words(), NOTE.size_pt, NOTE.weight);
+        let width = note.mark_mm() + 0.9 + words;
+        if x + width > PAGE_MM - MARGIN_MM {
+            (x, y) = (MARGIN_MM + 0.5, y + leading_mm(NOTE));
+        }
+        placed.push(PlacedNote { note, at: (x, y) });
+        x += width + BETWEEN_MM;
+    }
+    placed
+}
+
+/// The block of numbers: two columns, the second after the first, where both fit, else one.
+struct Numbers {
+    entries: Vec<(Spans, Spans)>,
+    /// Entries of one column.
+    rows: usize,
+    /// Where labels and values of each column begin on the page.
+    places: Vec<(f64, f64)>,
+    /// Whether values stand below their labels.
+    values_below: bool,
+}
+
+const COLUMN_GAP_MM: f64 = 6.0;
+const NUMBERS_LEFT_MM: f64 = MARGIN_MM + 0.5;
+const NUMBERS_ROOM_MM: f64 = PAGE_MM - 2.0 * NUMBERS_LEFT_MM;
+/// Entries that are few enough for one column even where two would fit.
+const ONE_COLUMN: usize = 3;
+
+impl Numbers {
+    fn of(numbers: &[(String, String)]) -> Self {
+        let entries: Vec<_> = numbers
+            .iter()
+            .map(|(label, value)| (text::markup(label), text::number(value)))
+            .collect();
+        let half = entries.len().div_ceil(2);
+        let (two, two_width) = number_places(&entries, half);
+        if entries.len() > ONE_COLUMN && two_width <= NUMBERS_ROOM_MM {
+            return Self {
+                entries,
+                rows: half,
+                places: two,
+                values_below: false,
+            };
+        }
+        let (one, width) = number_places(&entries, entries.len());
+        let values_below = width > NUMBERS_ROOM_MM;
+        Self {
+            rows: entries.len(),
+            entries,
+            places: if values_below {
+                vec![(NUMBERS_LEFT_MM, NUMBERS_LEFT_MM + COLUMN_GAP_MM)]
+            } else {
+                one
+            },
+            values_below,
+        }
+    }
+
+    fn lines(&self) -> usize {
+        if self.values_below {
+            2 * self.rows
+        } else {
+            self.rows
+        }
+    }
+}
+
+/// Where labels and values begin in columns of so many rows, and the width of all columns.
+fn number_places(entries: &[(Spans, Spans)], rows: usize) -> (Vec<(f64, f64)>, f64) {
+    const BETWEEN_MM: f64 = 2.4;
+    let mut places = Vec::new();
+    let mut left = NUMBERS_LEFT_MM;
+    for column in entries.chunks(rows.max(1)) {
+        let label = widest(column.iter().map(|(label, _)| label), LABEL);
+        let value = widest(column.iter().map(|(_, value)| value), VALUE);
+        places.push((left, left + label + BETWEEN_MM));
+        left += label + BETWEEN_MM + value + COLUMN_GAP_MM;
+    }
+    (places, left - COLUMN_GAP_MM - NUMBERS_LEFT_MM)
+}
+
+fn widest<'a>(texts: impl Iterator<Item = &'a Spans>, look: Look) -> f64 {
+    texts
+        .map(|spans| text::width_mm(spans, look.size_pt, look.weight))
+        .fold(0.0, f64::max)
+}
+
+fn caution_lines(cautions: &[String]) -> Vec<Vec<String>> {
+    let room = PAGE_MM - 2.0 * MARGIN_MM - 3.4;
+    let wrapped = |caution: &str| text::wrap(caution, room, LABEL.size_pt, LABEL.weight);
+    let shown = if cautions.len() > MOST_CAUTIONS {
+        MOST_CAUTIONS - 1
+    } else {
+        cautions.len()
+    };
+    let mut lines: Vec<_> = cautions[..shown].iter().map(|c| wrapped(c)).collect();
+    if shown < cautions.len() {
+        lines.push(wrapped(&format!(
+            "{} more, listed in the tables.",
+            cautions.len() - shown
+        )));
+    }
+    lines
+}
+
+struct Sheet<'a, 'svg> {
+    canvas: &'a Canvas<'svg>,
+    figure: &'a PairFigure,
+    layout: &'a Layout,
+}
+
+impl Sheet<'_, '_> {
+    fn panel(&self, panel: &Panel, place: &PanelPlace, with_key: bool) -> Drawn {
+        let name = self.name(panel);
+        let name_width = text::width_mm(&name, NAME.size_pt, NAME.weight);
+        let key = Key::of(if with_key { &self.layout.models } else { &[] }, name_width);
+        let (temperature, key_left) = self.temperature_axis(panel, place, &key);
+        self.backdrop(panel, place.top, place.bottom)?;
+        self.level(&temperature, 0.0, solid(ZERO, 0.16))?;
+        self.systemic(place.top, place.bottom)?;
+        let data = steps(panel, &panel.temperature_k);
+        self.draw_steps(&data, &temperature, solid(DATA, 0.26))?;
+        for curve in panel.curves.iter().rev() {
+            self.curve(curve, &temperature)?;
+        }
+        self.window_bracket(panel.window, place.top)?;
+        self.thin_marker(place.top)?;
+        let ticks = Ticks::between(
+            temperature.low,
+            temperature.high,
+            if with_key { 6 } else { 4 },
+        );
+        let labels = ticks
+            .values
+            .iter()
+            .map(|value| (*value, ticks.label(*value)));
+        self.frame(&temperature, &labels.collect::<Vec<_>>())?;
+        let middle = (place.top + place.bottom) / 2.0;
+        let label = text::markup("T_{mb} (K)");
+        self.canvas
+            .upward_text(&label, (MARGIN_MM + 2.4, middle), LABEL)?;
+
+        let at = (PLOT_LEFT_MM + 1.4, place.top + NAME_DEPTH_MM);
+        self.canvas.text(&name, at, Align::Start, NAME)?;
+        self.key(&key, key_left, place.top)?;
+        match place.residuals {
+            Some((top, bottom)) => self.residuals(panel, top, bottom),
+            None => Ok(()),
+        }
+    }
+
+    fn name(&self, panel: &Panel) -> Spans {
+        let room = 0.46 * (PLOT_RIGHT_MM - PLOT_LEFT_MM);
+        let name = text::line_name(&panel.line_name);
+        if text::width_mm(&name, NAME.size_pt, NAME.weight) <= room {
+            return name;
+        }
+        text::plain(&text::shortened(
+            &panel.line_name,
+            room,
+            NAME.size_pt,
+            NAME.weight,
+        ))
+    }
+
+    /// The temperature range of all that is shown, high enough for the name and the key to stand free;
+    /// and whether the key stands on the left, below the name.
+    fn temperature_axis(&self, panel: &Panel, place: &PanelPlace, key: &Key) -> (Axis, bool) {
+        let view = &self.layout.velocity;
+        let noise = if panel.noise_k.is_finite() {
+            panel.noise_k
+        } else {
+            0.0
+        };
+        let shown = self.shown_values(panel, view.low, view.high);
+        let (low, high) = shown.unwrap_or((0.0, 1.0));
+        let low = low.min(0.0).min(-2.0 * noise);
+        let high = high.max(3.0 * noise).max(low + f64::MIN_POSITIVE.max(1e-9));
+        let low = low - 0.05 * (high - low);
+        let height = place.bottom - place.top;
+        let velocity = |mm: f64| {
+            view.low + (mm - PLOT_LEFT_MM) / (PLOT_RIGHT_MM - PLOT_LEFT_MM) * (view.high - view.low)
+        };
+        // The upper end that leaves the top `depth` of the panel free between two places.
+        let upper = |from: f64, to: f64, depth: f64| {
+            let share = (depth / height).min(0.8);
+            let values = self.shown_values(panel, velocity(from), velocity(to));
+            values.map_or(high, |(_, most)| (most - share * low) / (1.0 - share))
+        };
+        let name_width = text::width_mm(&self.name(panel), NAME.size_pt, NAME.weight);
+        let base = (high + 0.1 * (high - low)).max(upper(
+            PLOT_LEFT_MM,
+            PLOT_LEFT_MM + name_width + 3.0,
+            NAME_DEPTH_MM + 1.6,
+        ));
+        let right = upper(
+            PLOT_RIGHT_MM - key.width - 2.5,
+            PLOT_RIGHT_MM,
+            key.depth(NAME_DEPTH_MM),
+        );
+        let left = upper(
+            PLOT_LEFT_MM,
+            PLOT_LEFT_MM + key.width + 3.0,
+            key.depth(NAME_DEPTH_MM + KEY_LEADING_MM + 0.4),
+        );
+        let key_left = left.max(base) < right.max(base);
+        let high = if key.labels.is_empty() {
+            base
+        } else {
+            base.max(left.min(right))
+        };
+        let axis = Axis {
+            low,
+            high,
+            start_mm: place.bottom,
+            end_mm: place.top,
+        };
+        (axis, key_left)
+    }
+
+    /// Extent of data and models between two velocities.
+    fn shown_values(&self, panel: &Panel, low: f64, high: f64) -> Option<(f64, f64)> {
+        let within =
+            move |velocity: f64, margin: f64| velocity + margin >= low && velocity - margin <= high;
+        let data = panel
+            .velocity_km_s
+            .iter()
+            .zip(&panel.width_km_s)
+            .zip(&panel.temperature_k)
+            .filter(|((velocity, width), _)| within(**velocity, **width / 2.0))
+            .map(|(_, temperature)| *temperature);
+        let models = panel.curves.iter().flat_map(|curve| {
+            let points = curve.velocity_km_s.iter().zip(&curve.temperature_k);
+            points
+                .filter(|(velocity, _)| within(**velocity, 0.0))
+                .map(|(_, temperature)| *temperature)
+        });
+        extent(data.chain(models))
+    }
+
+    /// The window, and guides at the ticks.
+    fn backdrop(&self, panel: &Panel, top: f64, bottom: f64) -> Drawn {
+        let axis = &self.layout.velocity;
+        self.strip(
+            panel.window.low_km_s,
+            panel.window.high_km_s,
+            top,
+            bottom,
+            WINDOW,
+        )?;
+        for tick in &self.layout.velocity_ticks.values {
+            let x = axis.place_mm(*tick);
+            self.canvas
+                .line(&[(x, top), (x, bottom)], solid(GUIDE, 0.14))?;
+        }
+        Ok(())
+    }
+
+    /// The systemic velocity with its error as a band.
+    fn systemic(&self, top: f64, bottom: f64) -> Drawn {
+        let axis = &self.layout.velocity;
+        if let Some(v_lsr) = self.figure.v_lsr_km_s {
+            if v_lsr.err.is_finite() {
+                let (low, high) = (v_lsr.value - v_lsr.err, v_lsr.value + v_lsr.err);
+                self.strip(low, high, top, bottom, V_LSR_BAND)?;
+            }
+            if axis.contains(v_lsr.value) {
+                let x = axis.place_mm(v_lsr.value);
+                self.canvas
+                    .line(&[(x, top), (x, bottom)], solid(V_LSR, 0.2))?;
+            }
+        }
+        Ok(())
+    }
+
+    /// A range of velocities as a filled strip, as far as it is in view.
+    fn strip(
+        &self,
+        low: f64,
+        high: f64,
+        top: f64,
+        bottom: f64,
+        color: plotters::style::RGBColor,
+    ) -> Drawn {
+        let axis = &self.layout.velocity;
+        let (low, high) = (low.max(axis.low), high.min(axis.high));
+        if low < high {
+            let (from, to) = (axis.place_mm(low), axis.place_mm(high));
+            self.canvas.rectangle((from, top), (to, bottom), color)?;
+        }
+        Ok(())
+    }
+
+    fn window_bracket(&self, window: Window, top: f64) -> Drawn {
+        const DROP_MM: f64 = 1.3;
+        let axis = &self.layout.velocity;
+        let (low, high) = (
+            window.low_km_s.max(axis.low),
+            window.high_km_s.min(axis.high),
+        );
+        if low >= high {
+            return Ok(());
+        }
+        let (from, to) = (axis.place_mm(low), axis.place_mm(high));
+        let mut points = vec![(from, top), (to, top)];
+        if axis.contains(window.low_km_s) {
+            points.insert(0, (from, top + DROP_MM));
+        }
+        if axis.contains(window.high_km_s) {
+            points.push((to, top + DROP_MM));
+        }
+        self.canvas.line(&points, solid(SOFT_INK, 0.18))
+    }
+
+    /// A small wedge on the upper edge at the thin line's velocity.
+    fn thin_marker(&self, top: f64) -> Drawn {
+        let axis = &self.layout.velocity;
+        match self.figure.v_thin_km_s {
+            Some(v_thin) if axis.contains(v_thin.value) => {
+                self.wedge(axis.place_mm(v_thin.value), top + 0.1)
+            }
+            _ => Ok(()),
+        }
+    }
+
+    fn wedge(&self, x: f64, top: f64) -> Drawn {
+        self.canvas
+            .polygon(&[(x - 0.85, top), (x + 0.85, top), (x, top + 1.7)], INK)
+    }
+
+    /// A horizontal line at a value.
+    fn level(&self, axis: &Axis, value: f64, stroke: Stroke) -> Drawn {
+        if !axis.contains(value) {
+            return Ok(());
+        }
+        let y = axis.place_mm(value);
+        self.canvas
+            .line(&[(PLOT_LEFT_MM, y), (PLOT_RIGHT_MM, y)], stroke)
+    }
+
+    fn draw_steps(&self, runs: &[Vec<(f64, f64)>], vertical: &Axis, stroke: Stroke) -> Drawn {
+        let axis = &self.layout.velocity;
+        for run in runs {
+            let points: Vec<_> = run
+                .chunks_exact(2)
+                .filter(|ends| ends[1].0 > axis.low && ends[0].0 < axis.high)
+                .flatten()
+                .map(|(velocity, value)| {
+                    let velocity = velocity.clamp(axis.low, axis.high);
+                    (axis.place_mm(velocity), vertical.place_mm(*value))
+                })
+                .collect();
+            self.canvas.line(&points, stroke)?;
+        }
+        Ok(())
+    }
+
+    fn curve(&self, curve: &Curve, vertical: &Axis) -> Drawn {
+        let axis = &self.layout.velocity;
+        let points = curve.velocity_km_s.iter().zip(&curve.temperature_k);
+        let mut runs: Vec<Vec<(f64, f64)>> = vec![Vec::new()];
+        for (velocity, temperature) in points {
+            if !temperature.is_finite() {
+                runs.push(Vec::new());
+            } else if axis.contains(*velocity)
+                && let Some(run) = runs.last_mut()
+            {
+                run.push((axis.place_mm(*velocity), vertical.place_mm(*temperature)));
+            }
+        }
+        for run in runs {
+            self.canvas.line(&run, self.stroke(curve))?;
+        }
+        Ok(())
+    }
+
+    fn stroke(&self, curve: &Curve) -> Stroke {
+        let names = &self.layout.models;
+        style::model(
+            names
+                .iter()
+                .position(|name| *name == curve.label)
+                .unwrap_or(0),
+        )
+    }
+
+    fn residuals(&self, panel: &Panel, top: f64, bottom: f64) -> Drawn {
+        let view = &self.layout.velocity;
+        let channels = panel.velocity_km_s.iter().enumerate();
+        let in_view: Vec<_> = channels
+            .filter(|(_, velocity)| view.contains(**velocity))
+            .map(|(channel, _)| channel)
+            .collect();
+        let largest = panel
+            .curves
+            .iter()
+            .flat_map(|curve| {
+                in_view
+                    .iter()
+                    .map(|channel| curve.residuals[*channel].abs())
+            })
+            .filter(|residual| residual.is_finite())
+            .fold(0.0, f64::max);
+        let (limit, tick) = residual_scale(largest);
+        let axis = Axis {
+            low: -limit,
+            high: limit,
+            start_mm: bottom,
+            end_mm: top,
+        };
+        self.backdrop(panel, top, bottom)?;
+        for value in [-tick, tick] {
+            self.level(&axis, value, solid(GUIDE, 0.14))?;
+        }
+        self.level(&axis, 0.0, solid(ZERO, 0.16))?;
+        self.systemic(top, bottom)?;
+        for (index, curve) in panel.curves.iter().enumerate().rev() {
+            let width_mm = if index == 0 { 0.24 } else { 0.16 };
+            let stroke = solid(self.stroke(curve).color, width_mm);
+            self.draw_steps(&steps(panel, &curve.residuals), &axis, stroke)?;
+        }
+        let labels = [
+            (-tick, format!("\u{2212}{tick}\u{3c3}")),
+            (0.0, "0".to_owned()),
+            (tick, format!("+{tick}\u{3c3}")),
+        ];
+        self.frame(&axis, &labels)?;
+        let middle = (top + bottom) / 2.0;
+        self.canvas
+            .upward_text(&text::plain("residual"), (MARGIN_MM + 2.4, middle), NOTE)
+    }
+
+    /// The axis line on the left with labelled ticks, and the lower edge with velocity ticks.
+    fn frame(&self, vertical: &Axis, labels: &[(f64, String)]) -> Drawn {
+        let line = solid(INK, 0.2);
+        let bottom = vertical.start_mm;
+        let corner = [
+            (PLOT_LEFT_MM, vertical.end_mm),
+            (PLOT_LEFT_MM, bottom),
+            (PLOT_RIGHT_MM, bottom),
+        ];
+        self.canvas.line(&corner, line)?;
+        for (value, label) in labels {
+            let y = vertical.place_mm(*value);
+            self.canvas
+                .line(&[(PLOT_LEFT_MM - TICK_MM, y), (PLOT_LEFT_MM, y)], line)?;
+            let baseline = y + 0.36 * TICK.size_pt * POINT_MM;
+            let at = (PLOT_LEFT_MM - TICK_MM - 0.6, baseline);
+            self.canvas
+                .text(&text::plain(label), at, Align::End, TICK)?;
+        }
+        for tick in &self.layout.velocity_ticks.values {
+            let x = self.layout.velocity.place_mm(*tick);
+            self.canvas
+                .line(&[(x, bottom), (x, bottom + TICK_MM)], line)?;
+        }
+        Ok(())
+    }
+
+    fn velocity_axis(&self) -> Drawn {
+        let bottom = self.layout.thin.end() + TICK_MM;
+        let ticks = &self.layout.velocity_ticks;
+        let baseline = bottom + leading_mm(TICK) * 0.8;
+        for tick in &ticks.values {
+            let at = (self.layout.velocity.place_mm(*tick), baseline);
+            self.canvas
+                .text(&text::plain(&ticks.label(*tick)), at, Align::Middle, TICK)?;
+        }
+        let middle = (PLOT_LEFT_MM + PLOT_RIGHT_MM) / 2.0;
+        let label = text::markup("V_{LSR} (km/s)");
+        let at = (middle, baseline + leading_mm(LABEL));
+        self.canvas.text(&label, at, Align::Middle, LABEL)
+    }
+
+    fn key(&self, key: &Key, on_left: bool, top: f64) -> Drawn {
+        let (x, first) = if on_left {
+            (
+                PLOT_LEFT_MM + 1.4,
+                top + NAME_DEPTH_MM + KEY_LEADING_MM + 0.4,
+            )
+        } else {
+            (PLOT_RIGHT_MM - key.width - 0.6, top + NAME_DEPTH_MM)
+        };
+        for (index, label) in key.labels.iter().enumerate() {
+            let baseline = first + KEY_LEADING_MM * index as f64;
+            let middle = baseline - 0.3 * TICK.size_pt * POINT_MM;
+            let sample = [(x, middle), (x + SAMPLE_MM, middle)];
+            self.canvas.line(&sample, style::model(index))?;
+            let at = (x + SAMPLE_MM + SAMPLE_GAP_MM, baseline);
+            self.canvas
+                .text(&text::plain(label), at, Align::Start, TICK)?;
+        }
+        Ok(())
+    }
+
+    fn notes(&self) -> Drawn {
+        for PlacedNote { note, at } in &self.layout.notes {
+            self.mark(*note, *at)?;
+            let at = (at.0 + note.mark_mm() + 0.9, at.1);
+            self.canvas
+                .text(&text::plain(note.words()), at, Align::Start, NOTE)?;
+        }
+        Ok(())
+    }
+
+    fn mark(&self, note: Note, (x, baseline): (f64, f64)) -> Drawn {
+        let end = x + note.mark_mm();
+        let (top, bottom) = (baseline - 1.8, baseline + 0.2);
+        let middle = f64::midpoint(x, end);
+        match note {
+            Note::Data => {
+                let points = [
+                    (x, bottom),
+                    (x + 1.3, bottom),
+                    (x + 1.3, top),
+                    (x + 2.7, top),
+                    (x + 2.7, baseline - 0.6),
+                    (end, baseline - 0.6),
+                ];
+                self.canvas.line(&points, solid(DATA, 0.26))
+            }
+            Note::Window => {
+                self.canvas.rectangle((x, top), (end, bottom), WINDOW)?;
+                let bracket = [(x, top + 0.9), (x, top), (end, top), (end, top + 0.9)];
+                self.canvas.line(&bracket, solid(SOFT_INK, 0.18))
+            }
+            Note::Systemic => {
+                self.canvas
+                    .rectangle((middle - 0.9, top), (middle + 0.9, bottom), V_LSR_BAND)?;
+                self.canvas
+                    .line(&[(middle, top), (middle, bottom)], solid(V_LSR, 0.2))
+            }
+            Note::Thin => self.wedge(middle, top + 0.1),
+        }
+    }
+
+    fn numbers(&self) -> Drawn {
+        let numbers = &self.layout.numbers;
+        if numbers.entries.is_empty() {
+            return Ok(());
+        }
+        let first = self.rule(self.layout.numbers_top)? + leading_mm(LABEL) * 0.8;
+        let lines_per_row = if numbers.values_below { 2.0 } else { 1.0 };
+        for (index, (label, value)) in numbers.entries.iter().enumerate() {
+            let (column, row) = (index / numbers.rows, index % numbers.rows);
+            let (label_x, value_x) = numbers.places[column];
+            let label_y = first + leading_mm(LABEL) * lines_per_row * row as f64;
+            let value_y = label_y + leading_mm(LABEL) * (lines_per_row - 1.0);
+            self.canvas
+                .text(label, (label_x, label_y), Align::Start, SOFT_LABEL)?;
+            self.canvas
+                .text(value, (value_x, value_y), Align::Start, VALUE)?;
+        }
+        Ok(())
+    }
+
+    fn cautions(&self) -> Drawn {
+        if self.layout.cautions.is_empty() {
+            return Ok(());
+        }
+        let mut baseline = self.rule(self.layout.cautions_top)? + leading_mm(CAUTION_HEADING) * 0.8;
+        let left = MARGIN_MM + 0.5;
+        let heading = text::plain("Cautions");
+        self.canvas
+            .text(&heading, (left, baseline), Align::Start, CAUTION_HEADING)?;
+        for caution in &self.layout.cautions {
+            let dot = (
+                left + 0.7,
+                baseline + leading_mm(LABEL) - 0.28 * LABEL.size_pt * POINT_MM,
+            );
+            self.canvas.dot(dot, 0.4, CAUTION)?;
+            for line in caution {
+                baseline += leading_mm(LABEL);
+                let at = (left + 2.2, baseline);
+                self.canvas
+                    .text(&text::plain(line), at, Align::Start, LABEL)?;
+            }
+        }
+        Ok(())
+    }
+
+    /// A thin line across the page; returns where the block beneath it begins.
+    fn rule(&self, y: f64) -> Result<f64, ReportError> {
+        let ends = [(MARGIN_MM + 0.5, y), (PAGE_MM - MARGIN_MM - 0.5, y)];
+        self.canvas.line(&ends, solid(ZERO, 0.14))?;
+        Ok(y + 1.2)
+    }
+}
+
+/// The models' names beside samples of their strokes.
+struct Key {
+    labels: Vec<String>,
+    width: f64,
+}
+
+impl Key {
+    fn of(models: &[String], name_width: f64) -> Self {
+        // The key may stand beside the line's name.
+        let room = PLOT_RIGHT_MM - PLOT_LEFT_MM - name_width - 6.0 - SAMPLE_MM - SAMPLE_GAP_MM;
+        let labels: Vec<_> = models
+            .iter()
+            .map(|name| text::shortened(name, room, TICK.size_pt, TICK.weight))
+            .collect();
+        let longest = labels
+            .iter()
+            .map(|label| text::span_width_mm(label, TICK.size_pt, TICK.weight))
+            .fold(0.0, f64::max);
+        Self {
+            labels,
+            width: SAMPLE_MM + SAMPLE_GAP_MM + longest,
+        }
+    }
+
+    /// How far down it reaches from the top of the panel, its first baseline given.
+    fn depth(&self, first_baseline: f64) -> f64 {
+        first_baseline + KEY_LEADING_MM * (self.labels.len().max(1) - 1) as f64 + 1.6
+    }
+}
+
+/// Half range of a residual axis and the value of its labelled ticks, in units of the noise.
+fn residual_scale(largest: f64) -> (f64, f64) {
+    const SCALES: [(f64, f64); 6] = [
+        (4.0, 3.0),
+        (6.0, 3.0),
+        (8.0, 5.0),
+        (10.0, 5.0),
+        (15.0, 10.0),
+        (20.0, 10.0),
+    ];
+    let wanted = largest * 1.05;
+    if let Some(scale) = SCALES.iter().find(|(limit, _)| *limit >= wanted) {
+        return *scale;
+    }
+    let power = 10_f64.powf(wanted.log10().floor());
+    let limit = [2.0, 3.0, 5.0, 10.0]
+        .into_iter()
+        .map(|factor| factor * power)
+        .find(|limit| *limit >= wanted)
+        .unwrap_or(10.0 * power);
+    (limit, limit / 2.0)
+}
+
+/// Values as steps: runs of unmasked neighbouring channels, two points (the ends) a channel.
+fn steps(panel: &Panel, values: &[f64]) -> Vec<Vec<(f64, f64)>> {
+    let mut runs: Vec<Vec<(f64, f64)>> = Vec::new();
+    let mut open_end = f64::NAN;
+    let channels = panel.velocity_km_s.iter().zip(&panel.width_km_s);
+    for ((velocity, width), value) in channels.zip(values) {
+        let (low, high) = (velocity - width / 2.0, velocity + width / 2.0);
+        if !value.is_finite() {
+            open_end = f64::NAN;
+            continue;
+        }
+        // Also true at the start and behind a masked channel, where there is no open end.
+        let apart = !((low - open_end).abs() <= 0.5 * width);
+        if apart {
+            runs.push(Vec::new());
+        }
+        if let Some(run) = runs.last_mut() {
+            run.extend([(low, *value), (high, *value)]);
+        }
+        open_end = high;
+    }
+    runs
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn residual_axes_hold_their_residuals() {
+        for (largest, expected) in [
+            (0.0, (4.0, 3.0)),
+            (3.7, (4.0, 3.0)),
+            (4.1, (6.0, 3.0)),
+            (9.6, (15.0, 10.0)),
+            (19.5, (30.0, 15.0)),
+            (170.0, (200.0, 100.0)),
+            (480.0, (1000.0, 500.0)),
+        ] {
+            assert_eq!(residual_scale(largest), expected, "{largest}");
+        }
+    }
+}

@@ -1,0 +1,76 @@
+//! Colours, dashes and sizes. Lengths are millimetres on the page, text sizes points.
+//!
+//! Model colours differ in hue for every common kind of colour vision and in lightness in grey; each
+//! has its own dashes and width besides.
+
+use plotters::style::RGBColor;
+
+/// One printer's point in millimetres.
+pub(super) const POINT_MM: f64 = 25.4 / 72.0;
+
+pub(super) const INK: RGBColor = RGBColor(31, 36, 42);
+pub(super) const SOFT_INK: RGBColor = RGBColor(88, 96, 105);
+pub(super) const DATA: RGBColor = RGBColor(70, 76, 84);
+pub(super) const GUIDE: RGBColor = RGBColor(229, 231, 234);
+pub(super) const ZERO: RGBColor = RGBColor(150, 156, 163);
+pub(super) const WINDOW: RGBColor = RGBColor(240, 243, 246);
+pub(super) const V_LSR: RGBColor = RGBColor(25, 110, 100);
+pub(super) const V_LSR_BAND: RGBColor = RGBColor(184, 221, 214);
+pub(super) const CAUTION: RGBColor = RGBColor(150, 50, 20);
+pub(super) const PAPER: RGBColor = RGBColor(255, 255, 255);
+
+pub(super) const TITLE_PT: f64 = 8.6;
+pub(super) const NAME_PT: f64 = 7.6;
+pub(super) const LABEL_PT: f64 = 7.0;
+pub(super) const TICK_PT: f64 = 6.4;
+
+/// How a line is drawn.
+#[derive(Clone, Copy, Debug)]
+pub(super) struct Stroke {
+    pub(super) color: RGBColor,
+    pub(super) width_mm: f64,
+    /// Alternating lengths of dash and gap, mm; empty for a whole line.
+    pub(super) dashes: &'static [f64],
+}
+
+pub(super) const fn solid(color: RGBColor, width_mm: f64) -> Stroke {
+    Stroke {
+        color,
+        width_mm,
+        dashes: &[],
+    }
+}
+
+/// Strokes of the models, in their order.
+pub(super) const MODELS: [Stroke; 5] = [
+    Stroke {
+        color: RGBColor(200, 62, 18),
+        width_mm: 0.42,
+        dashes: &[],
+    },
+    Stroke {
+        color: RGBColor(22, 82, 160),
+        width_mm: 0.36,
+        dashes: &[1.7, 0.7],
+    },
+    Stroke {
+        color: RGBColor(222, 150, 10),
+        width_mm: 0.44,
+        dashes: &[0.55, 0.55],
+    },
+    Stroke {
+        color: RGBColor(92, 30, 104),
+        width_mm: 0.32,
+        dashes: &[2.2, 0.6, 0.5, 0.6],
+    },
+    Stroke {
+        color: RGBColor(70, 150, 205),
+        width_mm: 0.40,
+        dashes: &[1.0, 1.0],
+    },
+];
+
+/// The stroke of the model with that index; strokes repeat after the fifth.
+pub(super) fn model(index: usize) -> Stroke {
+    MODELS[index % MODELS.len()]
+}

@@ -1,0 +1,225 @@
+//! One pair through every stage.
+
+use super::{LineSection, RunError, RunSheet};
+use crate::fit::{Caution, PairFacts, PairFit, ThinFit, cautions, fit_thin};
+use crate::line::{Line, isotopologue_pair};
+use crate::measure::{MeasureSettings, Measures, measure};
+use crate::prepare::scale::{ScaleNote, to_spectrum};
+use crate::prepare::{Expected, Prepared, prepare_pair};
+use crate::read::{ReadOptions, read_spectrum};
+use crate::spectrum::{Origin, Spectrum};
+use sha2::{Digest, Sha256};
+use std::path::{Path, PathBuf};
+
+/// One line of a pair, read and prepared.
+#[derive(Clone, Debug)]
+pub struct LineOutcome {
+    /// The line.
+    pub line: Line,
+    /// Its file and format.
+    pub origin: Origin,
+    /// SHA-256 of the file.
+    pub sha256: String,
+    /// What was assumed on the way to the common scale.
+    pub notes: Vec<ScaleNote>,
+    /// The prepared spectrum.
+    pub prepared: Prepared,
+}
+
+/// A pair with everything that was found of it.
+#[derive(Clone, Debug)]
+pub struct PairOutcome {
+    /// Name of the source.
+    pub name: String,
+    /// The optically thick line.
+    pub thick: LineOutcome,
+    /// The optically thin line.
+    pub thin: LineOutcome,
+    /// The thin line's own fit.
+    pub thin_fit: ThinFit,
+    /// Asymmetry measures.
+    pub measures: Measures,
+    /// The joint fits.
+    pub fit: PairFit,
+    /// Cautions, the gravest first.
+    pub cautions: Vec<Caution>,
+}
+
+/// Reads, prepares, measures and fits the pair of a run sheet; `base` is what its paths are
+/// relative to.
+///
+/// # Errors
+///
+/// [`RunError`] for settings, files or spectra that cannot be used.
+pub fn fit_pair(sheet: &RunSheet, base: &Path) -> Result<PairOutcome, RunError> {
+    let settings = sheet.fit_settings()?;
+    let (thick_line, thin_line) = (sheet.thick.line("thick")?, sheet.thin.line("thin")?);
+    refuse_exchanged_lines(&thick_line, &thin_line)?;
+    let thick = open(&sheet.thick, "thick", &thick_line, base)?;
+    let thin = open(&sheet.thin, "thin", &thin_line, base)?;
+    let expected = |line: &Line| Expected {
+        components: line.components.clone(),
+        window: None,
+    };
+    let (prepared_thick, prepared_thin) = prepare_pair(
+        (
+            &thick.spectrum,
+            &sheet.prepare_settings(&sheet.thick)?,
+            &expected(&thick_line),
+        ),
+        (
+            &thin.spectrum,
+            &sheet.prepare_settings(&sheet.thin)?,
+            &expected(&thin_line),
+        ),
+    )
+    .map_err(|error| {
+        RunError::of_pair(error, (thick.origin.path.clone(), thin.origin.path.clone()))
+    })?;
+    let thin_fit = fit_thin(&prepared_thin, &thin_line, &settings)?;
+    let systematic_km_s = thick_line
+        .velocity_systematic_km_s()
+        .hypot(thin_line.velocity_systematic_km_s());
+    let measures = measure(
+        &prepared_thick,
+        &prepared_thin,
+        thin_fit.line.as_ref(),
+        systematic_km_s,
+        &MeasureSettings {
+            thick_components: thick_line.components.clone(),
+            thin_components: thin_line.components.clone(),
+            ..MeasureSettings::default()
+        },
+    );
+    refuse_exchanged_brightness(&thick_line, &thin_line, &thin_fit, &measures)?;
+    let fit = crate::fit::fit_pair(
+        &prepared_thick,
+        &prepared_thin,
+        (&thick_line, &thin_line),
+        thin_fit.line.as_ref(),
+        &settings,
+    )?;
+    let cautions = cautions(&PairFacts {
+        thick: &prepared_thick,
+        thin: &prepared_thin,
+        thin_fit: &thin_fit,
+        measures: &measures,
+        fit: &fit,
+    });
+    let name = sheet
+        .source
+        .name
+        .clone()
+        .or_else(|| thick.object.clone())
+        .or_else(|| thin.object.clone())
+        .unwrap_or_else(|| stem(&thick.origin.path));
+    Ok(PairOutcome {
+        name,
+        thick: thick.outcome(thick_line, prepared_thick),
+        thin: thin.outcome(thin_line, prepared_thin),
+        thin_fit,
+        measures,
+        fit,
+        cautions,
+    })
+}
+
+/// A line's file, read and on the common scale.
+struct Opened {
+    origin: Origin,
+    object: Option<String>,
+    sha256: String,
+    notes: Vec<ScaleNote>,
+    spectrum: Spectrum,
+}
+
+impl Opened {
+    fn outcome(self, line: Line, prepared: Prepared) -> LineOutcome {
+        LineOutcome {
+            line,
+            origin: self.origin,
+            sha256: self.sha256,
+            notes: self.notes,
+            prepared,
+        }
+    }
+}
+
+fn open(
+    section: &LineSection,
+    which: &'static str,
+    line: &Line,
+    base: &Path,
+) -> Result<Opened, RunError> {
+    let file = section.file.as_ref().ok_or(RunError::NoFile { which })?;
+    let path = base.join(file);
+    let options: ReadOptions = section.read_options()?;
+    let raw = read_spectrum(&path, &options)?;
+    let scaled = to_spectrum(&raw, &section.scale_settings(line))?;
+    Ok(Opened {
+        sha256: sha256(&path)?,
+        object: raw.object.clone(),
+        origin: raw.origin,
+        notes: scaled.notes,
+        spectrum: scaled.spectrum,
+    })
+}
+
+/// SHA-256 of a file, in hexadecimal digits.
+fn sha256(path: &PathBuf) -> Result<String, RunError> {
+    let bytes = std::fs::read(path).map_err(|source| RunError::File {
+        path: path.clone(),
+        source,
+    })?;
+    Ok(Sha256::digest(&bytes)
+        .iter()
+        .map(|byte| format!("{byte:02x}"))
+        .collect())
+}
+
+fn stem(path: &Path) -> String {
+    path.file_stem().map_or_else(
+        || "source".to_owned(),
+        |stem| stem.to_string_lossy().into_owned(),
+    )
+}
+
+/// The rarer isotopologue as the thick line.
+fn refuse_exchanged_lines(thick: &Line, thin: &Line) -> Result<(), RunError> {
+    let exchanged =
+        isotopologue_pair(thick, thin).is_none() && isotopologue_pair(thin, thick).is_some();
+    if exchanged {
+        return Err(RunError::Swapped {
+            evidence: format!(
+                "{} as the thick line of {}, its more abundant isotopologue",
+                thick.name, thin.name
+            ),
+        });
+    }
+    Ok(())
+}
+
+/// How much brighter than the thick line an isotopologue in its place is that cannot be one.
+const IMPOSSIBLE_BRIGHTNESS: f64 = 1.5;
+
+fn refuse_exchanged_brightness(
+    thick: &Line,
+    thin: &Line,
+    thin_fit: &ThinFit,
+    measures: &Measures,
+) -> Result<(), RunError> {
+    let (Some(line), Some(peak)) = (&thin_fit.line, measures.peak_thick_k) else {
+        return Ok(());
+    };
+    let excess = line.peak_k.value - IMPOSSIBLE_BRIGHTNESS * peak.value;
+    let significant = excess > 5.0 * line.peak_k.err.hypot(peak.err);
+    if significant && isotopologue_pair(thick, thin).is_some() {
+        return Err(RunError::Swapped {
+            evidence: format!(
+                "{} peaks at {:.2} K and {}, its rarer isotopologue, at {:.2} K",
+                thick.name, peak.value, thin.name, line.peak_k.value
+            ),
+        });
+    }
+    Ok(())
+}

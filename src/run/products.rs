@@ -1,0 +1,364 @@
+//! Results into rows, text and files.
+
+use super::{LineOutcome, PairOutcome, Record, RunError, RunSheet};
+use crate::fit::ModelFit;
+use crate::measure::ProfileClass;
+use crate::model::Model;
+use crate::numeric::Estimate;
+use crate::report::{self, ReportError, Row, Table, Value};
+use std::path::{Path, PathBuf};
+
+/// One row of the result columns.
+///
+/// # Errors
+///
+/// [`RunError::Report`] where a column does not exist or a value is infinite: a defect.
+pub fn pair_row(outcome: &PairOutcome) -> Result<Row, RunError> {
+    let mut row = report::columns::results().row();
+    let measures = &outcome.measures;
+    let (thick, thin) = (&outcome.thick, &outcome.thin);
+    row.set("id", outcome.name.as_str())?;
+    row.set("thick_line", thick.line.name.as_str())?;
+    row.set("thin_line", thin.line.name.as_str())?;
+    row.set("noise_thick_k", thick.prepared.noise.rms_k)?;
+    row.set("noise_thin_k", thin.prepared.noise.rms_k)?;
+    row.set_estimate("peak_thick_k", measures.peak_thick_k)?;
+    row.set_estimate("peak_thin_k", measures.peak_thin_k)?;
+    row.set_estimate("integral_thick_k_km_s", measures.integral_thick_k_km_s)?;
+    row.set_estimate("integral_thin_k_km_s", measures.integral_thin_k_km_s)?;
+    row.set_estimate("v_thin_km_s", outcome.thin_fit.line.map(|line| line.v_km_s))?;
+    row.set_estimate(
+        "fwhm_thin_km_s",
+        outcome.thin_fit.line.map(|line| line.fwhm_km_s),
+    )?;
+    row.set_estimate("v_thick_km_s", measures.v_thick_km_s)?;
+    row.set_estimate("delta_v", measures.delta_v)?;
+    row.set("delta_v_systematic", measures.delta_v_systematic)?;
+    row.set_estimate("peak_ratio", measures.peak_ratio)?;
+    row.set_estimate("asymmetry", measures.asymmetry)?;
+    row.set_estimate("skewness", measures.skewness)?;
+    row.set("profile", profile_word(measures.profile))?;
+    row.set_estimate("v_closed_form_km_s", measures.v_closed_form_km_s)?;
+    for fit in &outcome.fit.models {
+        set_model(&mut row, fit)?;
+    }
+    if let Some(fit) = outcome.fit.adopted() {
+        for name in ["v_lsr_km_s", "sigma_km_s", "v_in_km_s"] {
+            set_parameter(&mut row, name, fit, name)?;
+        }
+        row.set("v_in_model", fit.model.name())?;
+    }
+    let mut codes: Vec<&str> = Vec::new();
+    for caution in &outcome.cautions {
+        if !codes.contains(&caution.code()) {
+            codes.push(caution.code());
+        }
+    }
+    row.set("cautions", codes.join(";"))?;
+    Ok(row)
+}
+
+/// Parameters of the model with columns of their own; the kinematics stand with the adopted model.
+fn set_model(row: &mut Row, fit: &ModelFit) -> Result<(), RunError> {
+    let prefix = fit.model.column_prefix();
+    for parameter in fit.model.parameters().iter().skip(2) {
+        let column = format!("{prefix}_{}", parameter.name);
+        if fit.model.has_infall() {
+            set_parameter(row, &column, fit, parameter.name)?;
+        }
+    }
+    row.set(&format!("{prefix}_chi2_red"), fit.chi2_reduced())?;
+    Ok(())
+}
+
+fn set_parameter(row: &mut Row, column: &str, fit: &ModelFit, name: &str) -> Result<(), RunError> {
+    let parameter = fit.parameter(name).ok_or_else(|| {
+        RunError::Internal(format!("{} has no parameter {name}", fit.model.name()))
+    })?;
+    row.set(column, parameter.value)?;
+    row.set(&format!("{column}_err"), parameter.err)?;
+    Ok(())
+}
+
+fn profile_word(profile: ProfileClass) -> &'static str {
+    match profile {
+        ProfileClass::Blue => "blue",
+        ProfileClass::Red => "red",
+        ProfileClass::Neither => "neither",
+        ProfileClass::Undetected => "undetected",
+    }
+}
+
+/// The readable table of a pair.
+///
+/// # Errors
+///
+/// As [`pair_row`].
+pub fn pair_summary(outcome: &PairOutcome) -> Result<String, RunError> {
+    let sentences: Vec<String> = outcome
+        .cautions
+        .iter()
+        .map(crate::fit::Caution::text)
+        .collect();
+    Ok(report::summary(&pair_row(outcome)?, &sentences))
+}
+
+/// Writes every product of a pair into a directory and returns their paths, in order.
+///
+/// `sheet` as it was run, `base` what its paths are relative to. Each file is whole or absent.
+///
+/// # Errors
+///
+/// [`RunError::File`] or [`RunError::Report`] naming the file that cannot be written.
+pub fn write_products(
+    outcome: &PairOutcome,
+    sheet: &RunSheet,
+    base: &Path,
+    directory: &Path,
+) -> Result<Vec<PathBuf>, RunError> {
+    std::fs::create_dir_all(directory).map_err(|source| RunError::File {
+        path: directory.to_owned(),
+        source,
+    })?;
+    let mut table = Table::new(report::columns::results());
+    table.push(pair_row(outcome)?)?;
+    table.meta = meta(outcome, sheet);
+    let resolved = resolved(outcome, sheet, base, directory).to_toml()?;
+    let mut written = Vec::new();
+    let mut write =
+        |name: &str, content: &dyn Fn(&mut dyn std::io::Write) -> Result<(), ReportError>| {
+            let path = directory.join(name);
+            report::files::write_atomically(&path, content)?;
+            written.push(path);
+            Ok::<(), RunError>(())
+        };
+    write("pair.csv", &|writer| report::write_csv(&table, writer))?;
+    write("pair.ecsv", &|writer| report::write_ecsv(&table, writer))?;
+    write("pair.fits", &|writer| report::write_fits(&table, writer))?;
+    #[cfg(feature = "figures")]
+    if sheet.output.figures {
+        let figure = pair_figure(outcome)?;
+        let svg = figure.svg()?;
+        write("pair.svg", &|writer| Ok(writer.write_all(svg.as_bytes())?))?;
+        let png = report::figure::svg_to_png(&svg, FIGURE_WIDTH_PX)?;
+        write("pair.png", &|writer| Ok(writer.write_all(&png)?))?;
+        let pdf = report::figure::svg_to_pdf(&svg)?;
+        write("pair.pdf", &|writer| Ok(writer.write_all(&pdf)?))?;
+    }
+    write("run.toml", &|writer| {
+        Ok(writer.write_all(resolved.as_bytes())?)
+    })?;
+    Ok(written)
+}
+
+#[cfg(feature = "figures")]
+const FIGURE_WIDTH_PX: u32 = 2000;
+
+fn meta(outcome: &PairOutcome, sheet: &RunSheet) -> Vec<(String, Value)> {
+    let text = |text: &str| Value::Text(text.to_owned());
+    let line = |which: &str, line: &LineOutcome| {
+        vec![
+            (format!("{which}_sha256"), text(&line.sha256)),
+            (
+                format!("{which}_rest_frequency_ghz"),
+                Value::Real(line.line.rest_frequency_ghz),
+            ),
+        ]
+    };
+    let mut meta = vec![
+        ("program".to_owned(), text("Inrush")),
+        ("version".to_owned(), text(env!("CARGO_PKG_VERSION"))),
+        (
+            "seed".to_owned(),
+            Value::Integer(i64::try_from(sheet.seed).unwrap_or(i64::MAX)),
+        ),
+        (
+            "errors".to_owned(),
+            text("formal, from the curvature of chi2 at its minimum"),
+        ),
+    ];
+    meta.extend(line("thick", &outcome.thick));
+    meta.extend(line("thin", &outcome.thin));
+    meta
+}
+
+/// The sheet with every default written out, paths relative to the results, and the record.
+fn resolved(outcome: &PairOutcome, sheet: &RunSheet, base: &Path, directory: &Path) -> RunSheet {
+    let mut resolved = sheet.clone();
+    resolved.source.name = Some(outcome.name.clone());
+    for (section, line) in [
+        (&mut resolved.thick, &outcome.thick),
+        (&mut resolved.thin, &outcome.thin),
+    ] {
+        section.line = Some(
+            section
+                .line
+                .clone()
+                .unwrap_or_else(|| line.line.name.clone()),
+        );
+        section.file = section
+            .file
+            .as_ref()
+            .map(|file| relative(&base.join(file), directory));
+    }
+    resolved.record = Some(Record {
+        version: env!("CARGO_PKG_VERSION").to_owned(),
+        thick_sha256: outcome.thick.sha256.clone(),
+        thin_sha256: outcome.thin.sha256.clone(),
+    });
+    resolved
+}
+
+/// A path as seen from a directory; absolute where the two share no root.
+fn relative(path: &Path, from: &Path) -> PathBuf {
+    let (Ok(path), Ok(from)) = (path.canonicalize(), from.canonicalize()) else {
+        return path.to_owned();
+    };
+    let shared = path
+        .components()
+        .zip(from.components())
+        .take_while(|(a, b)| a == b)
+        .count();
+    if shared == 0 {
+        return path;
+    }
+    let up = std::iter::repeat_n(
+        std::path::Component::ParentDir,
+        from.components().count() - shared,
+    );
+    up.chain(path.components().skip(shared)).collect()
+}
+
+#[cfg(feature = "figures")]
+fn pair_figure(outcome: &PairOutcome) -> Result<report::figure::PairFigure, RunError> {
+    use report::figure::{PairFigure, Panel};
+    let panel = |line: &LineOutcome, thick: bool| Panel {
+        line_name: line.line.name.clone(),
+        velocity_km_s: line.prepared.spectrum.velocity_km_s().to_vec(),
+        width_km_s: line.prepared.spectrum.width_km_s().to_vec(),
+        temperature_k: line.prepared.spectrum.temperature_k().to_vec(),
+        noise_k: line.prepared.noise.rms_k,
+        window: line.prepared.window,
+        curves: outcome
+            .fit
+            .models
+            .iter()
+            .map(|fit| curve(outcome, line, fit, thick))
+            .collect(),
+    };
+    let adopted = outcome.fit.adopted();
+    Ok(PairFigure {
+        source: outcome.name.clone(),
+        thick: panel(&outcome.thick, true),
+        thin: panel(&outcome.thin, false),
+        v_lsr_km_s: adopted.and_then(|fit| fit.estimate("v_lsr_km_s")),
+        v_thin_km_s: outcome.thin_fit.line.map(|line| line.v_km_s),
+        numbers: figure_numbers(outcome),
+        cautions: outcome
+            .cautions
+            .iter()
+            .map(crate::fit::Caution::text)
+            .collect(),
+    })
+}
+
+#[cfg(feature = "figures")]
+fn curve(
+    outcome: &PairOutcome,
+    line: &LineOutcome,
+    fit: &ModelFit,
+    thick: bool,
+) -> report::figure::Curve {
+    use crate::model::Sampling;
+    let spectrum = &line.prepared.spectrum;
+    let profile = |sampling: &Sampling| {
+        if thick {
+            fit.thick_profile_k(sampling)
+        } else {
+            fit.thin_profile_k(sampling)
+        }
+    };
+    let (low, high) = outcome.fit.range.map_or_else(
+        || {
+            (
+                spectrum.velocity_km_s()[0],
+                spectrum.velocity_km_s()[spectrum.len() - 1],
+            )
+        },
+        |range| (range.low_km_s, range.high_km_s),
+    );
+    let steps = 600;
+    let fine: Vec<f64> = (0..=steps)
+        .map(|step| low + (high - low) * f64::from(step) / f64::from(steps))
+        .collect();
+    let temperature_k = profile(&Sampling::at(fine.clone()));
+    let points = if thick {
+        outcome.fit.points.0
+    } else {
+        outcome.fit.points.1
+    };
+    let channels = Sampling::new(
+        spectrum.velocity_km_s().to_vec(),
+        spectrum.width_km_s().to_vec(),
+        points,
+    );
+    let residuals = profile(&channels)
+        .iter()
+        .zip(spectrum.temperature_k())
+        .map(|(model, datum)| (datum - model) / line.prepared.noise.rms_k)
+        .collect();
+    report::figure::Curve {
+        label: model_label(fit.model).to_owned(),
+        velocity_km_s: fine,
+        temperature_k,
+        residuals,
+    }
+}
+
+#[cfg(feature = "figures")]
+fn model_label(model: Model) -> &'static str {
+    match model {
+        Model::Gaussian => "Gaussian",
+        Model::TwoGaussians => "two Gaussians",
+        Model::Layer => "one layer",
+        Model::TwoLayer => "two layers",
+        Model::TwoLayerContinuum => "two layers, continuum",
+        Model::Hill => "hill",
+        Model::HillSurface => "hill, free surface",
+    }
+}
+
+#[cfg(feature = "figures")]
+fn figure_numbers(outcome: &PairOutcome) -> Vec<(String, String)> {
+    let shown = |estimate: Estimate, unit: &str| {
+        let number = report::rounded(estimate.value, estimate.err);
+        if unit.is_empty() {
+            number
+        } else {
+            format!("{number} {unit}")
+        }
+    };
+    let mut numbers = Vec::new();
+    for fit in &outcome.fit.models {
+        if let Some(v_in) = fit.estimate("v_in_km_s") {
+            numbers.push((
+                format!("v_in, {}", model_label(fit.model)),
+                shown(v_in, "km/s"),
+            ));
+        }
+    }
+    let adopted = outcome.fit.adopted();
+    for (name, label) in [("v_lsr_km_s", "v_LSR"), ("sigma_km_s", "sigma")] {
+        if let Some(estimate) = adopted.and_then(|fit| fit.estimate(name)) {
+            numbers.push((label.to_owned(), shown(estimate, "km/s")));
+        }
+    }
+    if let Some(delta_v) = outcome.measures.delta_v {
+        numbers.push(("delta V".to_owned(), shown(delta_v, "")));
+    }
+    numbers.push((
+        "profile".to_owned(),
+        profile_word(outcome.measures.profile).to_owned(),
+    ));
+    numbers
+}

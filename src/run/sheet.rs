@@ -1,0 +1,553 @@
+//! The run sheet: everything that decides a run, as TOML.
+//!
+//! Unknown keys are errors that name the nearest known key. A resolved sheet, with every default
+//! written out, goes beside the results: running it again gives the same bytes.
+
+use super::RunError;
+use crate::fit::{FitRange, FitSettings};
+use crate::line::{Component, Line, LineError};
+use crate::model::Model;
+use crate::numeric::Estimate;
+use crate::prepare::PrepareSettings;
+use crate::prepare::scale::ScaleSettings;
+use crate::read::{ReadOptions, ValueUnit};
+use crate::spectrum::{BeamArcsec, Window};
+use serde::{Deserialize, Serialize};
+use std::collections::BTreeMap;
+use std::path::{Path, PathBuf};
+
+/// A number, or a number with its standard error.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+#[serde(untagged)]
+pub enum Given {
+    /// The value alone.
+    Value(f64),
+    /// Value and error.
+    WithError([f64; 2]),
+}
+
+impl Given {
+    /// Value and error, 0 where none is given.
+    #[must_use]
+    pub fn estimate(self) -> Estimate {
+        match self {
+            Self::Value(value) => Estimate { value, err: 0.0 },
+            Self::WithError([value, err]) => Estimate { value, err },
+        }
+    }
+}
+
+/// One number, or two.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+#[serde(untagged)]
+pub enum Beam {
+    /// A round beam's full width at half maximum.
+    Round(f64),
+    /// Major and minor axis.
+    Elliptical([f64; 2]),
+}
+
+/// A number or a word.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+#[serde(untagged)]
+pub enum NumberOrWord {
+    /// A whole number.
+    Number(usize),
+    /// A word.
+    Word(String),
+}
+
+/// A range of velocities or a word.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+#[serde(untagged)]
+pub enum RangeOrWord {
+    /// Low and high, km/s.
+    Range([f64; 2]),
+    /// A word.
+    Word(String),
+}
+
+/// A run sheet.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct RunSheet {
+    /// Seed of everything random.
+    #[serde(default)]
+    pub seed: u64,
+    /// What is observed.
+    #[serde(default)]
+    pub source: SourceSection,
+    /// The optically thick line.
+    #[serde(default)]
+    pub thick: LineSection,
+    /// The optically thin line.
+    #[serde(default)]
+    pub thin: LineSection,
+    /// Baseline, window, noise.
+    #[serde(default)]
+    pub prepare: PrepareSection,
+    /// Models.
+    #[serde(default)]
+    pub fit: FitSection,
+    /// Products.
+    #[serde(default)]
+    pub output: OutputSection,
+    /// What a finished run writes of itself.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub record: Option<Record>,
+}
+
+/// What is observed.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct SourceSection {
+    /// Name in tables and figures.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub name: Option<String>,
+}
+
+/// One line of the pair.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct LineSection {
+    /// Its name, such as `HCO+ 1-0`.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub line: Option<String>,
+    /// Its spectrum, relative to the run sheet.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub file: Option<PathBuf>,
+    /// Rest frequency in place of the built-in one, GHz.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub rest_freq_ghz: Option<Given>,
+    /// Components of a line of the user's own: velocity offset (km/s) and relative weight.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub components: Option<Vec<[f64; 2]>>,
+    /// Beam, full width at half maximum, arcsec.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub beam_arcsec: Option<Beam>,
+    /// Main-beam efficiency.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub eta_mb: Option<f64>,
+    /// Velocity that brings the file's frame to LSRK, km/s.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub frame_offset_km_s: Option<f64>,
+    /// Columns of a text or table, such as `1:km/s,2:K`.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub columns: Option<String>,
+    /// Row of a table with one spectrum a row: a number, or `COLUMN=VALUE`.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub row: Option<NumberOrWord>,
+    /// Header-data unit of a FITS file, from 0.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub hdu: Option<usize>,
+    /// Unit of the values of a FITS file that states none.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub value_unit: Option<String>,
+    /// Line window in place of the automatic one, km/s.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub window_km_s: Option<[f64; 2]>,
+}
+
+/// Baseline, window, noise.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields, default)]
+pub struct PrepareSection {
+    /// Order of the polynomial baseline, 0 to 3, or `none`.
+    pub baseline_order: NumberOrWord,
+    /// Channel width to average to, km/s.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub smooth_to_km_s: Option<f64>,
+    /// Line window of both lines, km/s, where a line has none of its own.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub window_km_s: Option<[f64; 2]>,
+    /// Line-free channels beyond this many standard deviations are left out of the baseline.
+    pub clip_sigma: f64,
+    /// Significance from which signal counts as a line, in standard deviations.
+    pub detection_sigma: f64,
+    /// Highest order of the noise's correlation from channel to channel; 0 takes it as white.
+    pub noise_order: usize,
+}
+
+impl Default for PrepareSection {
+    fn default() -> Self {
+        let settings = PrepareSettings::default();
+        Self {
+            baseline_order: settings.baseline_order.map_or_else(
+                || NumberOrWord::Word("none".to_owned()),
+                NumberOrWord::Number,
+            ),
+            smooth_to_km_s: settings.smooth_to_km_s,
+            window_km_s: None,
+            clip_sigma: settings.clip_sigma,
+            detection_sigma: settings.detection_sigma,
+            noise_order: settings.noise_order,
+        }
+    }
+}
+
+/// Models.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields, default)]
+pub struct FitSection {
+    /// Models of the thick line.
+    pub models: Vec<String>,
+    /// Velocities whose channels count, km/s, or `all`; the windows with a margin where absent.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub range_km_s: Option<RangeOrWord>,
+    /// Gives the thin line a velocity of its own.
+    pub free_thin_velocity: bool,
+    /// Gives the thin line a dispersion of its own.
+    pub free_thin_sigma: bool,
+    /// Links the optical depths: thick over thin, with an error.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub isotope_ratio: Option<Given>,
+    /// Parameters held at a value, or with a Gaussian prior `[value, error]`.
+    #[serde(skip_serializing_if = "BTreeMap::is_empty")]
+    pub given: BTreeMap<String, Given>,
+    /// Bounds of parameters, `[low, high]`.
+    #[serde(skip_serializing_if = "BTreeMap::is_empty")]
+    pub bounds: BTreeMap<String, [f64; 2]>,
+}
+
+impl Default for FitSection {
+    fn default() -> Self {
+        let settings = FitSettings::default();
+        Self {
+            models: settings
+                .models
+                .iter()
+                .map(|model| model.name().to_owned())
+                .collect(),
+            range_km_s: None,
+            free_thin_velocity: settings.free_thin_velocity,
+            free_thin_sigma: settings.free_thin_sigma,
+            isotope_ratio: None,
+            given: BTreeMap::new(),
+            bounds: BTreeMap::new(),
+        }
+    }
+}
+
+/// Products.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields, default)]
+pub struct OutputSection {
+    /// Whether figures are drawn.
+    pub figures: bool,
+}
+
+impl Default for OutputSection {
+    fn default() -> Self {
+        Self { figures: true }
+    }
+}
+
+/// What a finished run writes of itself.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct Record {
+    /// Version of Inrush.
+    pub version: String,
+    /// SHA-256 of the thick line's file.
+    pub thick_sha256: String,
+    /// SHA-256 of the thin line's file.
+    pub thin_sha256: String,
+}
+
+impl RunSheet {
+    /// Reads a run sheet.
+    ///
+    /// # Errors
+    ///
+    /// [`RunError::File`] where it cannot be read, [`RunError::Sheet`] with the line and the nearest
+    /// known key where it is not one.
+    pub fn read(path: &Path) -> Result<Self, RunError> {
+        let bytes = std::fs::read(path).map_err(|source| RunError::File {
+            path: path.to_owned(),
+            source,
+        })?;
+        let text = String::from_utf8(bytes).map_err(|_| RunError::Sheet {
+            path: path.to_owned(),
+            line: None,
+            message: "bytes that are not UTF-8 text, expected a run sheet in TOML".to_owned(),
+            hint: Some("spectra are given with --thick and --thin".to_owned()),
+        })?;
+        Self::parse(&text, path)
+    }
+
+    /// Parses a run sheet; `path` serves messages only.
+    ///
+    /// # Errors
+    ///
+    /// As [`RunSheet::read`].
+    pub fn parse(text: &str, path: &Path) -> Result<Self, RunError> {
+        let text = text.strip_prefix('\u{feff}').unwrap_or(text);
+        toml::from_str(text).map_err(|error| {
+            let line = error
+                .span()
+                .map(|span| text[..span.start.min(text.len())].lines().count().max(1));
+            let (message, hint) = explain(error.message());
+            RunError::Sheet {
+                path: path.to_owned(),
+                line,
+                message,
+                hint,
+            }
+        })
+    }
+
+    /// The sheet as TOML.
+    ///
+    /// # Errors
+    ///
+    /// [`RunError::Internal`] where a value has no TOML form.
+    pub fn to_toml(&self) -> Result<String, RunError> {
+        toml::to_string(self).map_err(|error| RunError::Internal(error.to_string()))
+    }
+
+    /// How the pair is fitted.
+    ///
+    /// # Errors
+    ///
+    /// [`RunError::Setting`] for a model that does not exist or a range that is none.
+    pub fn fit_settings(&self) -> Result<FitSettings, RunError> {
+        let fit = &self.fit;
+        if fit.models.is_empty() {
+            return Err(RunError::setting("fit.models", "no model", "at least one"));
+        }
+        let mut models = Vec::new();
+        for name in &fit.models {
+            let model = Model::from_name(name).ok_or_else(|| unknown_model(name))?;
+            if !models.contains(&model) {
+                models.push(model);
+            }
+        }
+        let range = match &fit.range_km_s {
+            None => None,
+            Some(RangeOrWord::Word(word)) if word == "all" => Some(FitRange::All),
+            Some(RangeOrWord::Word(word)) => {
+                return Err(RunError::setting(
+                    "fit.range_km_s",
+                    &format!("`{word}`"),
+                    "[low, high] or \"all\"",
+                ));
+            }
+            Some(RangeOrWord::Range(range)) => {
+                Some(FitRange::Within(window("fit.range_km_s", *range)?))
+            }
+        };
+        if let Some(ratio) = fit.isotope_ratio.map(Given::estimate)
+            && !(ratio.value >= 1.0 && ratio.value.is_finite() && ratio.err >= 0.0)
+        {
+            return Err(RunError::setting(
+                "fit.isotope_ratio",
+                &format!("{} +- {}", ratio.value, ratio.err),
+                "thick over thin, at least 1, with an error of at least 0",
+            ));
+        }
+        for (name, given) in &fit.given {
+            let given = given.estimate();
+            if !(given.value.is_finite() && given.err.is_finite() && given.err >= 0.0) {
+                return Err(RunError::setting(
+                    &format!("fit.given.{name}"),
+                    &format!("{} +- {}", given.value, given.err),
+                    "a number with an error of at least 0",
+                ));
+            }
+        }
+        Ok(FitSettings {
+            models,
+            range,
+            free_thin_velocity: fit.free_thin_velocity,
+            free_thin_sigma: fit.free_thin_sigma,
+            isotope_ratio: fit.isotope_ratio.map(Given::estimate),
+            bounds: fit
+                .bounds
+                .iter()
+                .map(|(name, [low, high])| (name.clone(), (*low, *high)))
+                .collect(),
+            given: fit
+                .given
+                .iter()
+                .map(|(name, given)| (name.clone(), given.estimate()))
+                .collect(),
+            ..FitSettings::default()
+        })
+    }
+
+    /// How a line of the pair is prepared.
+    ///
+    /// # Errors
+    ///
+    /// [`RunError::Setting`] for an order or a window that is none.
+    pub fn prepare_settings(&self, section: &LineSection) -> Result<PrepareSettings, RunError> {
+        let prepare = &self.prepare;
+        let baseline_order = match &prepare.baseline_order {
+            NumberOrWord::Number(order) => Some(*order),
+            NumberOrWord::Word(word) if word == "none" => None,
+            NumberOrWord::Word(word) => {
+                return Err(RunError::setting(
+                    "prepare.baseline_order",
+                    &format!("`{word}`"),
+                    "0 to 3 or \"none\"",
+                ));
+            }
+        };
+        let given = section.window_km_s.or(prepare.window_km_s);
+        Ok(PrepareSettings {
+            window: given
+                .map(|range| window("window_km_s", range))
+                .transpose()?,
+            baseline_order,
+            smooth_to_km_s: prepare.smooth_to_km_s,
+            clip_sigma: prepare.clip_sigma,
+            detection_sigma: prepare.detection_sigma,
+            noise_order: prepare.noise_order,
+        })
+    }
+}
+
+impl LineSection {
+    /// The line that the section names: built in, with another rest frequency, or the user's own.
+    ///
+    /// # Errors
+    ///
+    /// [`RunError::NoLine`] where no name stands there, [`RunError::Line`] where it is unknown.
+    pub fn line(&self, which: &'static str) -> Result<Line, RunError> {
+        let name = self.line.as_deref().ok_or(RunError::NoLine { which })?;
+        let frequency = self.rest_freq_ghz.map(Given::estimate);
+        let err = frequency
+            .map(|frequency| frequency.err)
+            .filter(|err| *err > 0.0);
+        let components = self.components.as_ref().map(|components| {
+            components
+                .iter()
+                .map(|[offset_km_s, weight]| Component {
+                    offset_km_s: *offset_km_s,
+                    weight: *weight,
+                })
+                .collect()
+        });
+        let line = match (crate::line::find(name), frequency, components) {
+            (Ok(line), None, None) => Ok(line),
+            (Ok(line), Some(frequency), None) => line.with_rest_frequency(frequency.value, err),
+            (Ok(line), frequency, Some(components)) => {
+                let rest = frequency.map_or(line.rest_frequency_ghz, |frequency| frequency.value);
+                let err = err.or(Some(line.rest_frequency_err_ghz));
+                Line::custom(name, rest, err, Some(components))
+            }
+            (Err(_), Some(frequency), components) => {
+                Line::custom(name, frequency.value, err, components)
+            }
+            (Err(error), None, _) => Err(error),
+        };
+        line.map_err(|error: LineError| RunError::Line { which, error })
+    }
+
+    /// How the line's file is read.
+    ///
+    /// # Errors
+    ///
+    /// [`RunError::Setting`] for columns, a row or a unit that are none.
+    pub fn read_options(&self) -> Result<ReadOptions, RunError> {
+        let columns = self
+            .columns
+            .as_ref()
+            .map(|text| text.parse())
+            .transpose()
+            .map_err(|error: crate::read::ColumnChoiceError| RunError::Setting {
+                key: "columns".to_owned(),
+                message: error.to_string(),
+                hint: error.hint(),
+            })?;
+        let row = match &self.row {
+            None => None,
+            Some(NumberOrWord::Number(number)) => Some(number.to_string()),
+            Some(NumberOrWord::Word(word)) => Some(word.clone()),
+        };
+        let select = row.map(|text| text.parse()).transpose().map_err(
+            |error: crate::read::RowChoiceError| RunError::Setting {
+                key: "row".to_owned(),
+                message: error.to_string(),
+                hint: None,
+            },
+        )?;
+        let value_unit = self
+            .value_unit
+            .as_ref()
+            .map(|text| ValueUnit::parse(text))
+            .transpose()
+            .map_err(|error| RunError::Setting {
+                key: "value_unit".to_owned(),
+                message: format!("`{}`, expected {}", error.found, error.expected),
+                hint: error
+                    .nearest
+                    .map(|nearest| format!("did you mean `{nearest}`?")),
+            })?;
+        Ok(ReadOptions {
+            columns,
+            select,
+            hdu: self.hdu,
+            value_unit,
+        })
+    }
+
+    /// How the line's spectrum is brought onto the common scale.
+    #[must_use]
+    pub fn scale_settings(&self, line: &Line) -> ScaleSettings {
+        ScaleSettings {
+            rest_frequency_hz: line.rest_frequency_ghz * 1e9,
+            eta_mb: self.eta_mb,
+            beam: self.beam_arcsec.map(|beam| match beam {
+                Beam::Round(width) => BeamArcsec {
+                    major: width,
+                    minor: width,
+                },
+                Beam::Elliptical([major, minor]) => BeamArcsec { major, minor },
+            }),
+            frame_offset_km_s: self.frame_offset_km_s,
+        }
+    }
+}
+
+/// A window of two velocities in order.
+fn window(key: &str, [low_km_s, high_km_s]: [f64; 2]) -> Result<Window, RunError> {
+    if low_km_s < high_km_s && low_km_s.is_finite() && high_km_s.is_finite() {
+        Ok(Window {
+            low_km_s,
+            high_km_s,
+        })
+    } else {
+        Err(RunError::setting(
+            key,
+            &format!("[{low_km_s}, {high_km_s}]"),
+            "two velocities in km/s, the lower first",
+        ))
+    }
+}
+
+fn unknown_model(name: &str) -> RunError {
+    let known: Vec<&str> = Model::ALL.iter().map(|model| model.name()).collect();
+    RunError::Setting {
+        key: "models".to_owned(),
+        message: format!("`{name}`, expected one of {}", known.join(", ")),
+        hint: super::nearest(name, known.iter().copied())
+            .map(|name| format!("did you mean `{name}`?")),
+    }
+}
+
+/// The parser's message in our words, and the nearest known key where a key is unknown.
+fn explain(message: &str) -> (String, Option<String>) {
+    let mut quoted = message.split('`').skip(1).step_by(2);
+    if message.starts_with("unknown field") {
+        let unknown = quoted.next().unwrap_or_default().to_owned();
+        let known: Vec<&str> = quoted.collect();
+        let hint = super::nearest(&unknown, known.iter().copied())
+            .map(|key| format!("did you mean `{key}`?"));
+        return (
+            format!("the key `{unknown}`, expected one of {}", known.join(", ")),
+            hint,
+        );
+    }
+    (message.trim().replace('\n', ": "), None)
+}

@@ -1,0 +1,685 @@
+//! Line windows, baselines, noise and its correlation on simulated spectra of known truth.
+
+#![allow(clippy::unwrap_used, clippy::print_stdout)]
+
+use inrush::line::Component;
+use inrush::measure::{MeasureSettings, measure};
+use inrush::prepare::{
+    Expected, PairLine, PrepareError, PrepareSettings, Prepared, prepare, prepare_pair, rebin,
+};
+use inrush::spectrum::{Spectrum, Window};
+use rand::SeedableRng;
+use rand_chacha::ChaCha8Rng;
+use rand_distr::{Distribution, StandardNormal};
+
+const CHANNEL_KM_S: f64 = 0.1;
+
+fn velocity(channel: usize, count: usize) -> f64 {
+    (channel as f64 - 0.5 * (count as f64 - 1.0)) * CHANNEL_KM_S
+}
+
+fn spectrum(temperature_k: Vec<f64>) -> Spectrum {
+    let count = temperature_k.len();
+    let velocity_km_s = (0..count).map(|channel| velocity(channel, count)).collect();
+    Spectrum::new(velocity_km_s, vec![CHANNEL_KM_S; count], temperature_k).unwrap()
+}
+
+fn gaussian(v: f64, centre: f64, sigma: f64) -> f64 {
+    (-0.5 * ((v - centre) / sigma).powi(2)).exp()
+}
+
+fn white(count: usize, generator: &mut ChaCha8Rng) -> Vec<f64> {
+    (0..count)
+        .map(|_| StandardNormal.sample(generator))
+        .collect()
+}
+
+/// Noise smoothed with weights 1/4, 1/2, 1/4, unit variance.
+fn hanning(count: usize, generator: &mut ChaCha8Rng) -> Vec<f64> {
+    let norm = (6.0_f64 / 16.0).sqrt();
+    white(count + 2, generator)
+        .windows(3)
+        .map(|x| (0.25 * x[0] + 0.5 * x[1] + 0.25 * x[2]) / norm)
+        .collect()
+}
+
+fn with_noise(count: usize, noise: &[f64], rms_k: f64, line: impl Fn(f64) -> f64) -> Spectrum {
+    spectrum(
+        (0..count)
+            .map(|channel| line(velocity(channel, count)) + rms_k * noise[channel])
+            .collect(),
+    )
+}
+
+fn prepare_plainly(spectrum: &Spectrum) -> Prepared {
+    prepare(spectrum, &PrepareSettings::default(), &Expected::default()).unwrap()
+}
+
+/// A self-absorbed line: broad emission with a dip.
+fn self_absorbed(v: f64) -> f64 {
+    6.0 * gaussian(v, 0.0, 1.2) - 5.0 * gaussian(v, 0.2, 0.45)
+}
+
+struct Tally {
+    trials: u64,
+    cut: usize,
+    too_wide: usize,
+    undetected: usize,
+    correlated: usize,
+    rms: Vec<f64>,
+}
+
+/// A line that windows are tried on.
+struct Case {
+    name: &'static str,
+    channels: usize,
+    smoothed: bool,
+    rms_k: f64,
+    line: fn(f64) -> f64,
+    /// What the window must hold.
+    inner: (f64, f64),
+    /// What it must not exceed.
+    outer: (f64, f64),
+    /// Realisations of 200 in which it may cut, and in which it may be too wide.
+    allowed: (usize, usize),
+}
+
+/// Prepares many realisations of a line.
+fn tally(case: &Case) -> Tally {
+    let mut tally = Tally {
+        trials: 200,
+        cut: 0,
+        too_wide: 0,
+        undetected: 0,
+        correlated: 0,
+        rms: Vec::new(),
+    };
+    for seed in 0..tally.trials {
+        let mut generator = ChaCha8Rng::seed_from_u64(seed);
+        let noise = if case.smoothed {
+            hanning(case.channels, &mut generator)
+        } else {
+            white(case.channels, &mut generator)
+        };
+        let noisy = with_noise(case.channels, &noise, case.rms_k, case.line);
+        match prepare(&noisy, &PrepareSettings::default(), &Expected::default()) {
+            Ok(prepared) => {
+                let window = prepared.window;
+                tally.cut +=
+                    usize::from(window.low_km_s > case.inner.0 || window.high_km_s < case.inner.1);
+                tally.too_wide +=
+                    usize::from(window.low_km_s < case.outer.0 || window.high_km_s > case.outer.1);
+                tally.correlated += usize::from(!prepared.noise.process.is_white());
+                tally.rms.push(prepared.noise.rms_k / case.rms_k);
+            }
+            Err(PrepareError::NoLine { .. }) => tally.undetected += 1,
+            Err(error) => panic!("{error}"),
+        }
+    }
+    tally
+}
+
+impl Tally {
+    fn report(&self, name: &str) -> f64 {
+        let n = self.rms.len() as f64;
+        let mean = self.rms.iter().sum::<f64>() / n;
+        println!(
+            "{name}: cut {}, too wide {}, undetected {}, correlated {}, rms {mean:.3} of {}",
+            self.cut, self.too_wide, self.undetected, self.correlated, self.trials
+        );
+        mean
+    }
+}
+
+/// 3 % of 200.
+const FEW: (usize, usize) = (6, 6);
+
+const CASES: [Case; 12] = [
+    Case {
+        name: "thin line at S/N 6",
+        channels: 240,
+        smoothed: false,
+        rms_k: 1.0 / 6.0,
+        line: |v| gaussian(v, 1.0, 0.6),
+        inner: (0.2, 1.8),
+        outer: (-4.0, 6.0),
+        allowed: FEW,
+    },
+    Case {
+        name: "thin line at S/N 3",
+        channels: 240,
+        smoothed: false,
+        rms_k: 1.0 / 3.0,
+        line: |v| gaussian(v, 1.0, 0.6),
+        inner: (0.6, 1.4),
+        outer: (-4.0, 6.0),
+        allowed: FEW,
+    },
+    Case {
+        name: "thin line at S/N 3, Hanning noise",
+        channels: 240,
+        smoothed: true,
+        rms_k: 1.0 / 3.0,
+        line: |v| gaussian(v, 1.0, 0.6),
+        inner: (0.6, 1.4),
+        outer: (-4.0, 6.0),
+        allowed: FEW,
+    },
+    Case {
+        name: "bright line",
+        channels: 240,
+        smoothed: false,
+        rms_k: 0.06,
+        line: |v| 6.0 * gaussian(v, 1.0, 0.8),
+        inner: (-1.3, 3.3),
+        outer: (-5.0, 7.0),
+        allowed: FEW,
+    },
+    Case {
+        name: "bright line, Hanning noise",
+        channels: 240,
+        smoothed: true,
+        rms_k: 0.06,
+        line: |v| 6.0 * gaussian(v, 1.0, 0.8),
+        inner: (-1.3, 3.3),
+        outer: (-5.0, 7.0),
+        allowed: FEW,
+    },
+    Case {
+        name: "self-absorbed",
+        channels: 240,
+        smoothed: false,
+        rms_k: 0.2,
+        line: self_absorbed,
+        inner: (-2.5, 2.5),
+        outer: (-6.0, 6.0),
+        allowed: FEW,
+    },
+    Case {
+        name: "self-absorbed to zero",
+        channels: 240,
+        smoothed: false,
+        rms_k: 0.2,
+        line: |v| 4.0 * gaussian(v, -1.2, 0.5) + 2.0 * gaussian(v, 1.2, 0.5),
+        inner: (-2.3, 2.2),
+        outer: (-6.0, 6.0),
+        allowed: FEW,
+    },
+    Case {
+        name: "two clouds, Hanning noise",
+        channels: 240,
+        smoothed: true,
+        rms_k: 0.2,
+        line: |v| 4.0 * gaussian(v, -2.0, 0.7) + 3.0 * gaussian(v, 2.0, 0.7),
+        inner: (-3.4, 3.3),
+        outer: (-7.0, 7.0),
+        allowed: FEW,
+    },
+    Case {
+        name: "slope",
+        channels: 240,
+        smoothed: false,
+        rms_k: 0.2,
+        line: |v| self_absorbed(v) + 2.0 + 0.15 * v,
+        inner: (-2.5, 2.5),
+        outer: (-6.0, 6.0),
+        allowed: FEW,
+    },
+    Case {
+        name: "60 % of the band",
+        channels: 120,
+        smoothed: false,
+        rms_k: 0.2,
+        line: |v| 6.0 * gaussian(v, 0.3, 1.3),
+        inner: (-2.8, 3.4),
+        outer: (-5.5, 5.5),
+        allowed: FEW,
+    },
+    Case {
+        name: "narrow: two channels",
+        channels: 240,
+        smoothed: false,
+        rms_k: 0.1,
+        line: |v| 2.0 * gaussian(v, 0.3, 0.09),
+        inner: (0.15, 0.45),
+        outer: (-2.0, 2.6),
+        allowed: FEW,
+    },
+    Case {
+        name: "ripple",
+        channels: 480,
+        smoothed: false,
+        rms_k: 0.2,
+        line: |v| self_absorbed(v) + 0.15 * (v * 0.6).sin(),
+        inner: (-2.5, 2.5),
+        outer: (-8.0, 8.0),
+        // A crest beside the line can be taken for a part of it.
+        allowed: (6, 30),
+    },
+];
+
+#[test]
+fn windows_hold_many_kinds_of_line() {
+    for case in CASES {
+        let tally = tally(&case);
+        let mean = tally.report(case.name);
+        assert!(tally.cut <= case.allowed.0, "{}", case.name);
+        assert!(tally.too_wide <= case.allowed.1, "{}", case.name);
+        assert!(tally.undetected <= FEW.0, "{}", case.name);
+        if case.name != "ripple" {
+            assert!((mean - 1.0).abs() < 0.03, "{}", case.name);
+        }
+    }
+}
+
+#[test]
+fn white_noise_has_no_line_and_no_correlation() {
+    let trials = 300_u32;
+    let (mut lines, mut correlated, mut ratios) = (0, 0, Vec::new());
+    for seed in 0..u64::from(trials) {
+        let mut generator = ChaCha8Rng::seed_from_u64(seed);
+        let noise = with_noise(240, &white(240, &mut generator), 0.3, |_| 1.0);
+        let outcome = prepare(&noise, &PrepareSettings::default(), &Expected::default());
+        lines += usize::from(!matches!(outcome, Err(PrepareError::NoLine { .. })));
+        let given = PrepareSettings {
+            window: Some(Window {
+                low_km_s: -3.0,
+                high_km_s: 3.0,
+            }),
+            ..PrepareSettings::default()
+        };
+        let prepared = prepare(&noise, &given, &Expected::default()).unwrap();
+        correlated += usize::from(!prepared.noise.process.is_white());
+        ratios.push(prepared.noise.rms_k / 0.3);
+    }
+    let mean = ratios.iter().sum::<f64>() / f64::from(trials);
+    let scatter =
+        (ratios.iter().map(|r| (r - mean).powi(2)).sum::<f64>() / f64::from(trials - 1)).sqrt();
+    println!("lines {lines}, correlated {correlated}, rms {mean:.4} +- {scatter:.4}");
+    // 2 % and 5 % of 300.
+    assert!(lines <= 6);
+    assert!(correlated <= 15);
+    assert!((mean - 1.0).abs() < 0.01);
+    // The standard deviation of n values scatters by 1/sqrt(2 n) at best; 180 are line-free.
+    let best = 1.0 / (2.0 * 180.0_f64).sqrt();
+    assert!(scatter < 1.15 * best);
+}
+
+#[test]
+fn correlation_of_smoothed_noise_is_measured() {
+    let trials = 400_u32;
+    let (mut rms, mut first, mut second) = (0.0, 0.0, 0.0);
+    for seed in 0..u64::from(trials) {
+        let mut generator = ChaCha8Rng::seed_from_u64(seed);
+        let noise = hanning(240, &mut generator);
+        let prepared = prepare_plainly(&with_noise(240, &noise, 0.2, self_absorbed));
+        let correlation = prepared.noise.process.autocorrelation(3);
+        rms += prepared.noise.rms_k / 0.2 / f64::from(trials);
+        first += correlation[1] / f64::from(trials);
+        second += correlation[2] / f64::from(trials);
+    }
+    println!("rms {rms:.3}, correlation {first:.3} {second:.3}");
+    // Hanning weights 1/4, 1/2, 1/4: 2/3 and 1/6 by definition.
+    assert!((rms - 1.0).abs() < 0.02);
+    assert!((first - 2.0 / 3.0).abs() < 0.03);
+    assert!((second - 1.0 / 6.0).abs() < 0.05);
+}
+
+#[test]
+fn an_undetected_thin_line_takes_the_thick_lines_window() {
+    let mut generator = ChaCha8Rng::seed_from_u64(1);
+    let thick = with_noise(240, &white(240, &mut generator), 0.2, self_absorbed);
+    let thin = with_noise(300, &white(300, &mut generator), 0.2, |_| 0.0);
+    let settings = PrepareSettings::default();
+    let single = Expected::default();
+    let (first, second) =
+        prepare_pair((&thick, &settings, &single), (&thin, &settings, &single)).unwrap();
+    // Whole channels: within one channel on the thin line's own axis.
+    assert!((first.window.low_km_s - second.window.low_km_s).abs() <= CHANNEL_KM_S);
+    assert!((first.window.high_km_s - second.window.high_km_s).abs() <= CHANNEL_KM_S);
+    // The other way round.
+    let (second, first) =
+        prepare_pair((&thin, &settings, &single), (&thick, &settings, &single)).unwrap();
+    assert!((first.window.low_km_s - second.window.low_km_s).abs() <= CHANNEL_KM_S);
+    let error = prepare_pair((&thin, &settings, &single), (&thin, &settings, &single)).unwrap_err();
+    assert_eq!(error.line, PairLine::Thick);
+    assert!(matches!(error.error, PrepareError::NoLine { .. }));
+    assert!(error.hint().is_some());
+}
+
+/// A multiplet of three groups as of N2H+ 1-0: offsets in round numbers, statistical weights 1, 5, 3.
+fn multiplet() -> Expected {
+    let component = |offset_km_s, weight| Component {
+        offset_km_s,
+        weight,
+    };
+    Expected {
+        components: vec![
+            component(-8.0, 1.0 / 9.0),
+            component(0.0, 5.0 / 9.0),
+            component(6.0, 3.0 / 9.0),
+        ],
+        window: None,
+    }
+}
+
+#[test]
+fn a_multiplets_satellites_lie_in_the_window() {
+    let settings = PrepareSettings::default();
+    for (rms, centre) in [(0.02, 1.0), (0.1, 1.0), (0.15, -2.0)] {
+        for seed in 0..30 {
+            let mut generator = ChaCha8Rng::seed_from_u64(seed);
+            let line = |v: f64| -> f64 {
+                multiplet()
+                    .components
+                    .iter()
+                    .map(|one| one.weight * gaussian(v, centre + one.offset_km_s, 0.5))
+                    .sum()
+            };
+            let noise = white(400, &mut generator);
+            let prepared =
+                prepare(&with_noise(400, &noise, rms, line), &settings, &multiplet()).unwrap();
+            let window = prepared.window;
+            assert!(
+                window.low_km_s < centre - 8.3 && window.high_km_s > centre + 6.3,
+                "{rms} {seed} {window:?}"
+            );
+            assert!(
+                window.low_km_s > centre - 13.0 && window.high_km_s < centre + 11.0,
+                "{rms} {seed} {window:?}"
+            );
+        }
+    }
+}
+
+#[test]
+fn baselines_leave_the_line_alone() {
+    let mut generator = ChaCha8Rng::seed_from_u64(2);
+    let noise = white(240, &mut generator);
+    let flat = prepare_plainly(&with_noise(240, &noise, 0.2, self_absorbed));
+    let sloped = prepare_plainly(&with_noise(240, &noise, 0.2, |v| {
+        self_absorbed(v) + 3.0 - 0.4 * v
+    }));
+    // A straight baseline takes a straight line exactly.
+    assert_eq!(flat.window, sloped.window);
+    for (a, b) in flat
+        .spectrum
+        .temperature_k()
+        .iter()
+        .zip(sloped.spectrum.temperature_k())
+    {
+        assert!((a - b).abs() < 1e-9);
+    }
+    let curved = with_noise(240, &noise, 0.2, |v| {
+        self_absorbed(v) + 0.02 * v * v - 0.003 * v.powi(3)
+    });
+    let settings = PrepareSettings {
+        baseline_order: Some(3),
+        ..PrepareSettings::default()
+    };
+    let prepared = prepare(&curved, &settings, &Expected::default()).unwrap();
+    assert!((prepared.noise.rms_k / 0.2 - 1.0).abs() < 0.12);
+    assert_eq!(prepared.baseline.order, Some(3));
+    let none = PrepareSettings {
+        baseline_order: None,
+        ..PrepareSettings::default()
+    };
+    let original = with_noise(240, &noise, 0.2, self_absorbed);
+    let untouched = prepare(&original, &none, &Expected::default()).unwrap();
+    assert_eq!(untouched.spectrum, original);
+    assert!(
+        untouched
+            .baseline
+            .values_k
+            .iter()
+            .all(|value| *value == 0.0)
+    );
+}
+
+#[test]
+fn the_scale_of_temperature_and_velocity_does_not_matter() {
+    let mut generator = ChaCha8Rng::seed_from_u64(3);
+    let original = with_noise(240, &white(240, &mut generator), 0.2, self_absorbed);
+    let plain = prepare_plainly(&original);
+    let bright = prepare_plainly(&original.map_temperature_k(|_, t| 1000.0 * t));
+    assert_eq!(plain.window, bright.window);
+    assert!((bright.noise.rms_k / plain.noise.rms_k / 1000.0 - 1.0).abs() < 1e-9);
+    assert_eq!(plain.baseline.clipped, bright.baseline.clipped);
+}
+
+#[test]
+fn interference_and_blank_channels_do_no_harm() {
+    let mut generator = ChaCha8Rng::seed_from_u64(4);
+    let noise = white(240, &mut generator);
+    let clean = prepare_plainly(&with_noise(240, &noise, 0.2, self_absorbed));
+    let mut spoilt: Vec<f64> = with_noise(240, &noise, 0.2, self_absorbed)
+        .temperature_k()
+        .to_vec();
+    spoilt[20] = 50.0;
+    spoilt[200] = -40.0;
+    spoilt[60..70].fill(f64::NAN);
+    spoilt[118] = f64::NAN;
+    let prepared = prepare_plainly(&spectrum(spoilt));
+    println!("{:?} {:?}", clean.window, prepared.window);
+    assert!((prepared.window.low_km_s - clean.window.low_km_s).abs() < 0.5);
+    assert!((prepared.window.high_km_s - clean.window.high_km_s).abs() < 0.5);
+    assert!((prepared.noise.rms_k / clean.noise.rms_k - 1.0).abs() < 0.1);
+    assert!(
+        prepared.spectrum.temperature_k()[60..70]
+            .iter()
+            .all(|t| t.is_nan())
+    );
+    assert!(prepared.noise.process.is_white());
+}
+
+#[test]
+fn a_window_that_cuts_the_line_is_said_so() {
+    let mut generator = ChaCha8Rng::seed_from_u64(5);
+    let whole = with_noise(240, &white(240, &mut generator), 0.2, self_absorbed);
+    assert!(!prepare_plainly(&whole).window_cuts_line);
+    let given = |low_km_s, high_km_s| PrepareSettings {
+        window: Some(Window {
+            low_km_s,
+            high_km_s,
+        }),
+        ..PrepareSettings::default()
+    };
+    let narrow = prepare(&whole, &given(-1.0, 4.0), &Expected::default()).unwrap();
+    assert!(narrow.window_cuts_line && !narrow.window_automatic);
+    assert_eq!(narrow.window.low_km_s, -1.0);
+    // What the window leaves out of the line does not enter the baseline or the noise.
+    assert!((narrow.noise.rms_k / 0.2 - 1.0).abs() < 0.15);
+    let enough = prepare(&whole, &given(-5.0, 5.0), &Expected::default()).unwrap();
+    assert!(!enough.window_cuts_line);
+    let at_edge = with_noise(240, &white(240, &mut generator), 0.2, |v| {
+        5.0 * gaussian(v, 11.5, 0.8)
+    });
+    assert!(prepare_plainly(&at_edge).window_cuts_line);
+}
+
+#[test]
+fn rebinning_conserves_flux() {
+    let line = with_noise(241, &[0.0; 241], 0.0, self_absorbed);
+    let flux = |spectrum: &Spectrum| -> f64 {
+        spectrum
+            .temperature_k()
+            .iter()
+            .zip(spectrum.width_km_s())
+            .map(|(t, width)| t * width)
+            .sum()
+    };
+    for width_km_s in [0.2, 0.25, 0.3, 0.777] {
+        let coarse = rebin(&line, width_km_s).unwrap();
+        assert!(
+            (flux(&coarse) / flux(&line) - 1.0).abs() < 1e-9,
+            "{width_km_s}"
+        );
+        assert!(
+            (coarse.velocity_km_s()[0] - 0.5 * width_km_s - (line.velocity_km_s()[0] - 0.05)).abs()
+                < 1e-9
+        );
+    }
+    let same = rebin(&line, 0.1).unwrap();
+    assert_eq!(same, line);
+    // Whole multiples average whole channels.
+    let double = rebin(&line, 0.2).unwrap();
+    assert_eq!(double.len(), 120);
+    let expected = 0.5 * (line.temperature_k()[100] + line.temperature_k()[101]);
+    assert!((double.temperature_k()[50] - expected).abs() < 1e-9);
+    // A masked channel has no weight; a new channel without half of its width is masked.
+    let holes = spectrum(
+        (0..24)
+            .map(|i| {
+                if i == 3 || (8..12).contains(&i) {
+                    f64::NAN
+                } else {
+                    f64::from(i)
+                }
+            })
+            .collect(),
+    );
+    let coarse = rebin(&holes, 0.4).unwrap();
+    assert!((coarse.temperature_k()[0] - 1.0).abs() < 1e-9);
+    assert!(coarse.temperature_k()[2].is_nan());
+}
+
+#[test]
+fn noise_of_rebinned_spectra_is_measured_afterwards() {
+    let (mut ratio, trials) = (0.0, 100_u32);
+    for seed in 0..u64::from(trials) {
+        let mut generator = ChaCha8Rng::seed_from_u64(seed);
+        let fine = with_noise(960, &white(960, &mut generator), 0.4, self_absorbed);
+        let settings = PrepareSettings {
+            smooth_to_km_s: Some(0.4),
+            ..PrepareSettings::default()
+        };
+        let prepared = prepare(&fine, &settings, &Expected::default()).unwrap();
+        // Mean of four white channels.
+        ratio += prepared.noise.rms_k / 0.2 / f64::from(trials);
+    }
+    println!("{ratio:.4}");
+    assert!((ratio - 1.0).abs() < 0.02);
+}
+
+#[test]
+fn errors_of_integrals_hold_after_a_baseline() {
+    let settings = PrepareSettings {
+        window: Some(Window {
+            low_km_s: -4.0,
+            high_km_s: 4.0,
+        }),
+        ..PrepareSettings::default()
+    };
+    for smoothed in [false, true] {
+        let (mut values, mut stated) = (Vec::new(), 0.0);
+        for seed in 0..500 {
+            let mut generator = ChaCha8Rng::seed_from_u64(seed);
+            let noise = if smoothed {
+                hanning(160, &mut generator)
+            } else {
+                white(160, &mut generator)
+            };
+            let line = with_noise(160, &noise, 0.2, self_absorbed);
+            let prepared = prepare(&line, &settings, &Expected::default()).unwrap();
+            let measures = measure(&prepared, &prepared, None, 0.0, &MeasureSettings::default());
+            values.push(measures.integral_thick_k_km_s.value);
+            stated += measures.integral_thick_k_km_s.err / 500.0;
+        }
+        let mean = values.iter().sum::<f64>() / 500.0;
+        let scatter = (values.iter().map(|x| (x - mean).powi(2)).sum::<f64>() / 499.0).sqrt();
+        println!("smoothed {smoothed}: scatter {scatter:.4}, stated {stated:.4}");
+        assert!((stated / scatter - 1.0).abs() < 0.15);
+    }
+}
+
+#[test]
+fn bad_settings_and_spectra_are_refused_with_numbers() {
+    let mut generator = ChaCha8Rng::seed_from_u64(6);
+    let line = with_noise(240, &white(240, &mut generator), 0.2, self_absorbed);
+    let refuse = |spectrum: &Spectrum, settings: PrepareSettings| {
+        let error = prepare(spectrum, &settings, &Expected::default()).unwrap_err();
+        println!("{error}\n  hint: {:?}", error.hint());
+        error
+    };
+    let plain = PrepareSettings::default;
+    let order = PrepareSettings {
+        baseline_order: Some(4),
+        ..plain()
+    };
+    assert_eq!(
+        refuse(&line, order),
+        PrepareError::OrderTooHigh { order: 4 }
+    );
+    for (low_km_s, high_km_s) in [(50.0, 60.0), (3.0, -3.0), (f64::NAN, 3.0)] {
+        let outside = PrepareSettings {
+            window: Some(Window {
+                low_km_s,
+                high_km_s,
+            }),
+            ..plain()
+        };
+        assert!(matches!(
+            refuse(&line, outside),
+            PrepareError::WindowOutsideBand { .. }
+        ));
+    }
+    let all = PrepareSettings {
+        window: Some(Window {
+            low_km_s: -11.5,
+            high_km_s: 30.0,
+        }),
+        ..plain()
+    };
+    let PrepareError::TooFewLineFree {
+        found,
+        usable,
+        needed,
+    } = refuse(&line, all)
+    else {
+        panic!("another error");
+    };
+    assert!(found < needed && usable == 240);
+    for width in [0.05, f64::NAN, -1.0] {
+        let fine = PrepareSettings {
+            smooth_to_km_s: Some(width),
+            ..plain()
+        };
+        assert!(matches!(
+            refuse(&line, fine),
+            PrepareError::SmoothingTooFine { .. }
+        ));
+    }
+    let coarse = PrepareSettings {
+        smooth_to_km_s: Some(100.0),
+        ..plain()
+    };
+    assert!(matches!(
+        refuse(&line, coarse),
+        PrepareError::SmoothingTooCoarse { .. }
+    ));
+    let clip = PrepareSettings {
+        clip_sigma: f64::NAN,
+        ..plain()
+    };
+    assert!(matches!(refuse(&line, clip), PrepareError::Setting { .. }));
+    assert!(matches!(
+        refuse(&spectrum(vec![1.5; 100]), plain()),
+        PrepareError::ZeroNoise { .. }
+    ));
+    assert!(matches!(
+        refuse(&spectrum(vec![0.0; 100]), plain()),
+        PrepareError::ZeroNoise { .. }
+    ));
+    let noiseless = with_noise(240, &[0.0; 240], 0.0, |v| {
+        if v.abs() < 3.0 { self_absorbed(v) } else { 0.0 }
+    });
+    assert!(matches!(
+        refuse(&noiseless, plain()),
+        PrepareError::ZeroNoise { .. }
+    ));
+    let short = with_noise(8, &white(8, &mut generator), 0.2, self_absorbed);
+    assert!(matches!(
+        refuse(&short, plain()),
+        PrepareError::TooFewLineFree { .. }
+    ));
+}
