@@ -253,8 +253,7 @@ const CASES: [Case; 12] = [
         line: |v| self_absorbed(v) + 0.15 * (v * 0.6).sin(),
         inner: (-2.5, 2.5),
         outer: (-8.0, 8.0),
-        // A crest beside the line can be taken for a part of it.
-        allowed: (6, 30),
+        allowed: FEW,
     },
 ];
 

@@ -229,6 +229,9 @@ const LINE_FREE_NEEDED: usize = 12;
 /// Rounds of window, baseline and noise; they mostly settle in two or three.
 const MOST_ROUNDS: usize = 12;
 
+/// From this round on windows only grow, so that they settle.
+const GROW_ONLY_FROM: usize = 5;
+
 /// In the first round, which takes noise as white, regions beside the line must be this much more
 /// significant: smoothed noise must not be sorted into line-free and not.
 const FIRST_ROUND: f64 = 2.0;
@@ -467,6 +470,20 @@ struct Exclusion {
 }
 
 impl Exclusion {
+    /// Excludes what another one excludes too.
+    fn include(&mut self, other: &Exclusion) {
+        let hull = |a: (usize, usize), b: (usize, usize)| (a.0.min(b.0), a.1.max(b.1));
+        if let (Some(line), Some(before)) = (&mut self.line, &other.line) {
+            *line = line.join(before);
+        }
+        if let (Some(window), Some(before)) = (&mut self.window, other.window) {
+            *window = hull(*window, before);
+        }
+        for (mine, theirs) in self.channels.iter_mut().zip(&other.channels) {
+            *mine |= theirs;
+        }
+    }
+
     /// Channels that are line-free.
     fn free(&self) -> Vec<usize> {
         (0..self.channels.len())
@@ -492,10 +509,9 @@ impl Search<'_> {
         let channels = self.channels;
         let count = channels.len();
         let mut fit = robust_start(channels, self.order).ok_or_else(|| self.too_few(count))?;
-        let residual_scale = fit.scale;
-        self.check_scale(residual_scale)?;
+        self.check_scale(fit.scale)?;
         // The line is still in the residuals and would count as correlated noise: white at first.
-        let boxes = self.boxes(&fit, residual_scale, &Autoregression::white());
+        let boxes = self.boxes(&fit, fit.scale, &Autoregression::white());
         let mut exclusion = self.exclude(&boxes, FIRST_ROUND * self.settings.detection_sigma);
         for round in 1..=MOST_ROUNDS {
             let free = exclusion.free();
@@ -507,7 +523,10 @@ impl Search<'_> {
             self.check_scale(fit.scale)?;
             let (scale, process) = self.noise(&fit, &self.far(&exclusion));
             let boxes = self.boxes(&fit, scale, &process);
-            let next = self.exclude(&boxes, self.settings.detection_sigma);
+            let mut next = self.exclude(&boxes, self.settings.detection_sigma);
+            if round >= GROW_ONLY_FROM {
+                next.include(&exclusion);
+            }
             if next.channels == exclusion.channels || round == MOST_ROUNDS {
                 break;
             }
@@ -620,7 +639,7 @@ impl Search<'_> {
         let given = self.settings.window.and_then(|w| self.channel_range(w));
         let favoured = given.or_else(|| self.expected.window.and_then(|w| self.channel_range(w)));
         let (regions, significance) = boxes.regions(self.settings.detection_sigma, favoured);
-        let found = self.line(&regions, favoured);
+        let found = self.line(&regions, favoured, other_sigma);
         let line = found.map(|(line, _)| line);
         let mut channels = vec![false; self.channels.len()];
         for region in &regions {
@@ -651,6 +670,7 @@ impl Search<'_> {
         &self,
         regions: &[Region],
         favoured: Option<(usize, usize)>,
+        other_sigma: f64,
     ) -> Option<(Region, usize)> {
         let inside = |region: &&Region| {
             favoured.is_none_or(|(low, high)| region.low <= high && region.high >= low)
@@ -681,6 +701,7 @@ impl Search<'_> {
             let reach = main.width().max(2);
             let joined = regions
                 .iter()
+                .filter(|region| region.significance.abs() >= other_sigma)
                 .filter(|region| region.gap(&line) <= reach)
                 .fold(line, |line, region| line.join(region));
             if joined.low == line.low && joined.high == line.high {
