@@ -234,7 +234,7 @@ const GROW_ONLY_FROM: usize = 5;
 
 /// In the first round, which takes noise as white, regions beside the line must be this much more
 /// significant: smoothed noise must not be sorted into line-free and not.
-const FIRST_ROUND: f64 = 2.0;
+const FIRST_ROUND: f64 = 1.35;
 
 /// Per cent of a line's width that are added to its window on either side.
 const MARGIN_PERCENT: usize = 20;
