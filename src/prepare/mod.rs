@@ -290,7 +290,8 @@ pub fn prepare_pair(
         let window = narrowed(first.prepared.window, &thick.2.components);
         let expected = thin.2.or_window(window);
         let second = attempt(thin.0, thin.1, &expected).map_err(thin_error)?;
-        return Ok((first.prepared, second.prepared));
+        let second = second.require().map_err(thin_error)?;
+        return Ok((first.prepared, second));
     }
     let second = attempt(thin.0, thin.1, thin.2).map_err(thin_error)?;
     if !second.detected && thin.1.window.is_none() {
@@ -301,8 +302,10 @@ pub fn prepare_pair(
     }
     let window = narrowed(second.prepared.window, &thin.2.components);
     let expected = thick.2.or_window(window);
-    let first = attempt(thick.0, thick.1, &expected).map_err(thick_error)?;
-    Ok((first.prepared, second.prepared))
+    let first = attempt(thick.0, thick.1, &expected)
+        .and_then(Outcome::require)
+        .map_err(thick_error)?;
+    Ok((first, second.prepared))
 }
 
 impl Expected {
