@@ -34,9 +34,9 @@ pub struct ThinLine {
 /// Sense of the thick line's asymmetry (Mardones et al. 1997).
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub enum ProfileClass {
-    /// Normalised velocity difference below -0.25.
+    /// Normalised velocity difference below -0.25, its sign certain.
     Blue,
-    /// Normalised velocity difference above 0.25.
+    /// Normalised velocity difference above 0.25, its sign certain.
     Red,
     /// In between.
     Neither,
@@ -102,6 +102,11 @@ pub struct MeasureSettings {
     pub detection_sigma: f64,
     /// Significance of the dip below the lower peak from which a line has two peaks.
     pub dip_sigma: f64,
+    /// Significance of the normalised velocity difference from which a profile can be blue or red;
+    /// 0 leaves the limit of 0.25 alone. Of a line with two equal peaks one is always higher: its
+    /// error spans both, and the profile is neither. (Mardones et al. 1997 set 0.25 at five times
+    /// their typical error; from memory.)
+    pub class_sigma: f64,
     /// Components of the thick line; empty or one for a line without structure. Of a multiplet the
     /// main component alone is measured, and only if its nearest neighbour is at least three thin
     /// line widths away; otherwise there is no more than peak and integral.
@@ -115,6 +120,7 @@ impl Default for MeasureSettings {
         Self {
             detection_sigma: 5.0,
             dip_sigma: 3.0,
+            class_sigma: 3.0,
             thick_components: Vec::new(),
             thin_components: Vec::new(),
         }
@@ -202,7 +208,7 @@ pub fn measure(
         thin_two_peaked: thin_two_peaked(thin, &thin_noise, thin_line, settings),
         asymmetry: about.as_ref().and_then(About::asymmetry),
         skewness: about.as_ref().and_then(About::skewness),
-        profile: class(delta_v),
+        profile: class(delta_v, settings.class_sigma),
         v_closed_form_km_s: two
             .as_ref()
             .zip(detected)
@@ -214,12 +220,17 @@ fn estimate(value: f64, err: f64) -> Estimate {
     Estimate { value, err }
 }
 
-fn class(delta_v: Option<Estimate>) -> ProfileClass {
-    match delta_v {
-        None => ProfileClass::Undetected,
-        Some(delta_v) if delta_v.value < -CLASS_LIMIT => ProfileClass::Blue,
-        Some(delta_v) if delta_v.value > CLASS_LIMIT => ProfileClass::Red,
-        Some(_) => ProfileClass::Neither,
+/// Blue or red where the velocity difference is beyond the limit and its sign is certain.
+fn class(delta_v: Option<Estimate>, sigma: f64) -> ProfileClass {
+    let Some(Estimate { value, err }) = delta_v else {
+        return ProfileClass::Undetected;
+    };
+    if value.abs() <= CLASS_LIMIT || value.abs() < sigma * err {
+        ProfileClass::Neither
+    } else if value < 0.0 {
+        ProfileClass::Blue
+    } else {
+        ProfileClass::Red
     }
 }
 
