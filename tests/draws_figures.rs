@@ -2,6 +2,7 @@
 //!
 //! `INRUSH_FIGURES_TO=DIRECTORY cargo test --test draws_figures` also writes the PNGs to look at.
 #![cfg(feature = "figures")]
+#![allow(clippy::unwrap_used)]
 
 use std::sync::Arc;
 
@@ -147,6 +148,7 @@ fn panel(case: &Case, thick: bool) -> Panel {
         }
     };
     let noise_k = 3.2 / case.peak_over_noise / if thick { 1.0 } else { 2.0 };
+    #[allow(clippy::cast_possible_truncation, clippy::cast_sign_loss)]
     let channels = (40.0 * sigma / case.channel_km_s) as usize;
     let first = centre - 20.0 * sigma;
     let velocity_km_s: Vec<f64> = (0..channels)
@@ -239,7 +241,7 @@ fn texts(tree: &usvg::Tree) -> Vec<(String, usvg::Rect)> {
             match node {
                 usvg::Node::Group(group) => collect(group, found),
                 usvg::Node::Text(text) => {
-                    let words = text.chunks().iter().map(|chunk| chunk.text()).collect();
+                    let words = text.chunks().iter().map(usvg::TextChunk::text).collect();
                     let outlines = text.flattened().bounding_box();
                     found.push((words, outlines.transform(text.abs_transform()).unwrap()));
                 }

@@ -1,4 +1,5 @@
 //! Result tables: what is written reads back, and the documentation lists what is written.
+#![allow(clippy::unwrap_used)]
 
 use inrush::numeric::Estimate;
 use inrush::report::files::write_atomically;
@@ -104,7 +105,7 @@ fn ecsv_is_a_header_over_the_same_csv() {
     let header = ecsv.strip_suffix(csv.as_slice()).unwrap();
     assert_eq!(
         String::from_utf8(header.to_vec()).unwrap(),
-        r##"# %ECSV 1.0
+        r#"# %ECSV 1.0
 # ---
 # delimiter: ','
 # datatype:
@@ -114,7 +115,7 @@ fn ecsv_is_a_header_over_the_same_csv() {
 # meta: !!omap
 # - {"seed": 7}
 # - {"note: odd": "a \"b\"\n#c"}
-"##
+"#
     );
 }
 
@@ -446,7 +447,7 @@ fn a_failed_write_leaves_the_old_file_and_nothing_else() {
     let path = directory.path().join("results.csv");
     std::fs::write(&path, "old").unwrap();
     let error = write_atomically(&path, |writer| {
-        writer.write_all(&[b'x'; 100_000])?;
+        writer.write_all(&vec![b'x'; 100_000])?;
         Err(std::io::Error::other("disk on fire").into())
     })
     .unwrap_err();

@@ -5,6 +5,8 @@
 
 use plotters::style::RGBColor;
 
+use super::text::Weight;
+
 /// One printer's point in millimetres.
 pub(super) const POINT_MM: f64 = 25.4 / 72.0;
 
@@ -73,4 +75,36 @@ pub(super) const MODELS: [Stroke; 5] = [
 /// The stroke of the model with that index; strokes repeat after the fifth.
 pub(super) fn model(index: usize) -> Stroke {
     MODELS[index % MODELS.len()]
+}
+
+/// Size, weight and colour of a text.
+#[derive(Clone, Copy, Debug)]
+pub(super) struct Look {
+    pub(super) size_pt: f64,
+    pub(super) weight: Weight,
+    pub(super) color: RGBColor,
+}
+
+/// Baseline to baseline, in units of the text's size.
+pub(super) const LEADING: f64 = 1.32;
+
+pub(super) const TITLE: Look = look(TITLE_PT, Weight::SemiBold, INK);
+pub(super) const NAME: Look = look(NAME_PT, Weight::SemiBold, INK);
+pub(super) const LABEL: Look = look(LABEL_PT, Weight::Regular, INK);
+pub(super) const SOFT_LABEL: Look = look(LABEL_PT, Weight::Regular, SOFT_INK);
+pub(super) const VALUE: Look = look(LABEL_PT, Weight::SemiBold, INK);
+pub(super) const TICK: Look = look(TICK_PT, Weight::Regular, INK);
+pub(super) const NOTE: Look = look(TICK_PT, Weight::Regular, SOFT_INK);
+pub(super) const CAUTION_HEADING: Look = look(LABEL_PT, Weight::SemiBold, CAUTION);
+
+const fn look(size_pt: f64, weight: Weight, color: RGBColor) -> Look {
+    Look {
+        size_pt,
+        weight,
+        color,
+    }
+}
+
+pub(super) fn leading_mm(look: Look) -> f64 {
+    look.size_pt * POINT_MM * LEADING
 }
