@@ -25,6 +25,7 @@ struct Case {
     channel_km_s: f64,
     v_km_s: f64,
     masked: bool,
+    scale: f64,
     numbers: usize,
     cautions: usize,
 }
@@ -39,11 +40,12 @@ const PLAIN: Case = Case {
     channel_km_s: 0.1,
     v_km_s: -2.3,
     masked: false,
+    scale: 1.0,
     numbers: 6,
     cautions: 1,
 };
 
-const CASES: [Case; 9] = [
+const CASES: [Case; 12] = [
     PLAIN,
     Case {
         name: "no model",
@@ -109,6 +111,24 @@ const CASES: [Case; 9] = [
         numbers: 15,
         ..PLAIN
     },
+    Case {
+        name: "millikelvin",
+        scale: 0.004,
+        ..PLAIN
+    },
+    Case {
+        name: "absorption",
+        scale: -1.0,
+        ..PLAIN
+    },
+    Case {
+        name: "far and narrow",
+        sigma_km_s: 0.06,
+        channel_km_s: 0.02,
+        v_km_s: -1104.2,
+        source: "\u{6e90} \u{3b1}\u{3b2}",
+        ..PLAIN
+    },
 ];
 
 const CAUTIONS: [&str; 4] = [
@@ -140,14 +160,15 @@ fn panel(case: &Case, thick: bool) -> Panel {
     let mut random = ChaCha8Rng::seed_from_u64(if thick { 1 } else { 2 });
     let (centre, sigma) = (case.v_km_s, case.sigma_km_s);
     let profile = |v: f64, stretch: f64| {
-        if thick {
-            3.2 * stretch * gauss(v, centre - 0.9 * sigma, sigma)
-                + 1.7 * gauss(v, centre + 1.2 * sigma, 0.8 * stretch * sigma)
-        } else {
-            0.9 * stretch * gauss(v, centre, sigma)
-        }
+        case.scale
+            * if thick {
+                3.2 * stretch * gauss(v, centre - 0.9 * sigma, sigma)
+                    + 1.7 * gauss(v, centre + 1.2 * sigma, 0.8 * stretch * sigma)
+            } else {
+                0.9 * stretch * gauss(v, centre, sigma)
+            }
     };
-    let noise_k = 3.2 / case.peak_over_noise / if thick { 1.0 } else { 2.0 };
+    let noise_k = 3.2 * case.scale.abs() / case.peak_over_noise / if thick { 1.0 } else { 2.0 };
     #[allow(clippy::cast_possible_truncation, clippy::cast_sign_loss)]
     let channels = (40.0 * sigma / case.channel_km_s) as usize;
     let first = centre - 20.0 * sigma;

@@ -90,7 +90,7 @@ impl Layout {
         Self {
             title,
             velocity,
-            velocity_ticks: Ticks::between(velocity.low, velocity.high, 8),
+            velocity_ticks: velocity_ticks(&velocity),
             thick,
             thin,
             models: model_names(figure),
@@ -139,6 +139,30 @@ pub(super) fn velocity_axis(figure: &PairFigure) -> Axis {
         start_mm: PLOT_LEFT_MM,
         end_mm: PLOT_RIGHT_MM,
     }
+}
+
+/// As many ticks as leave room between their labels.
+fn velocity_ticks(axis: &Axis) -> Ticks {
+    const MOST: usize = 8;
+    const CLEAR: f64 = 1.4;
+    let fits = |ticks: &Ticks| {
+        let labels = ticks
+            .values
+            .iter()
+            .map(|value| text::span_width_mm(&ticks.label(*value), TICK.size_pt, TICK.weight));
+        let widest = labels.fold(0.0, f64::max);
+        let spacing = ticks
+            .values
+            .windows(2)
+            .map(|pair| axis.place_mm(pair[1]) - axis.place_mm(pair[0]))
+            .fold(f64::INFINITY, f64::min);
+        widest * CLEAR <= spacing
+    };
+    (2..=MOST)
+        .rev()
+        .map(|most| Ticks::between(axis.low, axis.high, most))
+        .find(fits)
+        .unwrap_or_else(|| Ticks::between(axis.low, axis.high, 2))
 }
 
 pub(super) fn edges_of(panel: &Panel) -> impl Iterator<Item = f64> {

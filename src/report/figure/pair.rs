@@ -71,18 +71,19 @@ impl Sheet<'_, '_> {
         }
         self.window_bracket(panel.window, place.top)?;
         self.thin_marker(place.top)?;
+        let (unit, per_kelvin) = temperature_unit(&temperature);
         let ticks = Ticks::between(
-            temperature.low,
-            temperature.high,
+            temperature.low * per_kelvin,
+            temperature.high * per_kelvin,
             if with_key { 6 } else { 4 },
         );
         let labels = ticks
             .values
             .iter()
-            .map(|value| (*value, ticks.label(*value)));
+            .map(|value| (*value / per_kelvin, ticks.label(*value)));
         self.frame(&temperature, &labels.collect::<Vec<_>>())?;
         let middle = f64::midpoint(place.top, place.bottom);
-        let label = text::markup("T_{mb} (K)");
+        let label = text::markup(&format!("T_{{mb}} ({unit})"));
         self.canvas
             .upward_text(&label, (MARGIN_MM + 2.4, middle), LABEL)?;
 
@@ -298,21 +299,12 @@ impl Sheet<'_, '_> {
 
     fn residuals(&self, panel: &Panel, top: f64, bottom: f64) -> Drawn {
         let view = &self.layout.velocity;
-        let channels = panel.velocity_km_s.iter().enumerate();
-        let in_view: Vec<_> = channels
-            .filter(|(_, velocity)| view.contains(**velocity))
-            .map(|(channel, _)| channel)
-            .collect();
-        let largest = panel
+        let shown = panel
             .curves
             .iter()
-            .flat_map(|curve| {
-                in_view
-                    .iter()
-                    .map(|channel| curve.residuals[*channel].abs())
-            })
-            .filter(|residual| residual.is_finite())
-            .fold(0.0, f64::max);
+            .flat_map(|curve| channels_within(panel, &curve.residuals, view.low, view.high));
+        let (low, high) = extent(shown).unwrap_or((0.0, 0.0));
+        let largest = high.max(-low);
         let (limit, tick) = residual_scale(largest);
         let axis = Axis {
             low: -limit,
@@ -516,22 +508,30 @@ fn name(panel: &Panel) -> Spans {
 
 /// Extent of data and models between two velocities.
 fn shown_values(panel: &Panel, low: f64, high: f64) -> Option<(f64, f64)> {
-    let within =
-        move |velocity: f64, margin: f64| velocity + margin >= low && velocity - margin <= high;
-    let data = panel
-        .velocity_km_s
-        .iter()
-        .zip(&panel.width_km_s)
-        .zip(&panel.temperature_k)
-        .filter(|((velocity, width), _)| within(**velocity, **width / 2.0))
-        .map(|(_, temperature)| *temperature);
+    let data = channels_within(panel, &panel.temperature_k, low, high);
     let models = panel.curves.iter().flat_map(|curve| {
         let points = curve.velocity_km_s.iter().zip(&curve.temperature_k);
         points
-            .filter(|(velocity, _)| within(**velocity, 0.0))
+            .filter(|(velocity, _)| (low..=high).contains(*velocity))
             .map(|(_, temperature)| *temperature)
     });
     extent(data.chain(models))
+}
+
+/// Values of those channels that reach between two velocities.
+fn channels_within<'a>(
+    panel: &'a Panel,
+    values: &'a [f64],
+    low: f64,
+    high: f64,
+) -> impl Iterator<Item = f64> + 'a {
+    let channels = panel.velocity_km_s.iter().zip(&panel.width_km_s);
+    channels
+        .zip(values)
+        .filter(move |((velocity, width), _)| {
+            *velocity + *width / 2.0 >= low && *velocity - *width / 2.0 <= high
+        })
+        .map(|(_, value)| *value)
 }
 
 /// The models' names beside samples of their strokes.
@@ -561,6 +561,16 @@ impl Key {
     /// How far down it reaches from the top of the panel, its first baseline given.
     fn depth(&self, first_baseline: f64) -> f64 {
         first_baseline + KEY_LEADING_MM * (self.labels.len().max(1) - 1) as f64 + 1.6
+    }
+}
+
+/// Unit that keeps a temperature axis' numbers short, and how many of it make a kelvin.
+fn temperature_unit(axis: &Axis) -> (&'static str, f64) {
+    const MILLIKELVIN_BELOW_K: f64 = 0.2;
+    if axis.high - axis.low < MILLIKELVIN_BELOW_K {
+        ("mK", 1000.0)
+    } else {
+        ("K", 1.0)
     }
 }
 

@@ -108,3 +108,35 @@ const fn look(size_pt: f64, weight: Weight, color: RGBColor) -> Look {
 pub(super) fn leading_mm(look: Look) -> f64 {
     look.size_pt * POINT_MM * LEADING
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// CIE 1976 lightness, 0 to 100, of an sRGB colour (IEC 61966-2-1).
+    fn lightness(color: RGBColor) -> f64 {
+        let linear = |byte: u8| {
+            let value = f64::from(byte) / 255.0;
+            if value <= 0.04045 {
+                value / 12.92
+            } else {
+                ((value + 0.055) / 1.055).powf(2.4)
+            }
+        };
+        let RGBColor(red, green, blue) = color;
+        let luminance = 0.2126 * linear(red) + 0.7152 * linear(green) + 0.0722 * linear(blue);
+        116.0 * luminance.cbrt() - 16.0
+    }
+
+    #[test]
+    fn models_differ_in_grey_and_in_dashes() {
+        for (index, one) in MODELS.iter().enumerate() {
+            assert!(lightness(one.color) < 75.0, "{index} is too faint on paper");
+            for other in &MODELS[index + 1..] {
+                let difference = lightness(one.color) - lightness(other.color);
+                assert!(difference.abs() > 8.0, "{one:?} {other:?}");
+                assert_ne!(one.dashes, other.dashes);
+            }
+        }
+    }
+}
