@@ -404,8 +404,38 @@ fn a_pair_with_nothing_known_is_still_drawn() {
         };
     }
     let svg = drawn.svg().unwrap();
-    assert!(!svg.contains("NaN") && !svg.contains("2147483647"), "{svg}");
+    assert!(!svg.contains("NaN") && !svg.contains("214748364"), "{svg}");
     svg_to_pdf(&svg).unwrap();
+}
+
+#[test]
+fn extreme_pairs_are_drawn_on_their_page() {
+    let cases: [(&str, fn(&mut Panel)); 5] = [
+        ("no channels", |panel| keep_channels(panel, 0)),
+        ("one channel", |panel| keep_channels(panel, 1)),
+        ("no noise", |panel| panel.noise_k = 0.0),
+        ("huge", |panel| {
+            panel.temperature_k.iter_mut().for_each(|t| *t *= 1e30)
+        }),
+        ("no width", |panel| panel.width_km_s.fill(0.0)),
+    ];
+    for (name, change) in cases {
+        let mut drawn = figure(&PLAIN);
+        change(&mut drawn.thick);
+        change(&mut drawn.thin);
+        let svg = drawn.svg().unwrap();
+        assert!(!svg.contains("NaN") && !svg.contains("214748364"), "{name}");
+        svg_to_pdf(&svg).unwrap();
+    }
+}
+
+fn keep_channels(panel: &mut Panel, channels: usize) {
+    panel.velocity_km_s.truncate(channels);
+    panel.width_km_s.truncate(channels);
+    panel.temperature_k.truncate(channels);
+    for curve in &mut panel.curves {
+        curve.residuals.truncate(channels);
+    }
 }
 
 #[test]
