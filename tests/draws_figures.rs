@@ -410,13 +410,12 @@ fn a_pair_with_nothing_known_is_still_drawn() {
 
 #[test]
 fn extreme_pairs_are_drawn_on_their_page() {
-    let cases: [(&str, fn(&mut Panel)); 5] = [
+    type Change = fn(&mut Panel);
+    let cases: [(&str, Change); 5] = [
         ("no channels", |panel| keep_channels(panel, 0)),
         ("one channel", |panel| keep_channels(panel, 1)),
         ("no noise", |panel| panel.noise_k = 0.0),
-        ("huge", |panel| {
-            panel.temperature_k.iter_mut().for_each(|t| *t *= 1e30)
-        }),
+        ("huge", |panel| panel.temperature_k.fill(1e30)),
         ("no width", |panel| panel.width_km_s.fill(0.0)),
     ];
     for (name, change) in cases {
