@@ -162,7 +162,7 @@ fn keyword(name: &str) -> Option<String> {
 }
 
 fn has_escapes(table: &Table) -> bool {
-    let cells = table.rows().iter().flat_map(|row| row.values());
+    let cells = table.rows().iter().flat_map(super::Row::values);
     let values = cells.chain(table.meta.iter().map(|(_, value)| value));
     let mut texts = values
         .filter_map(Value::text)
