@@ -19,6 +19,18 @@ pub enum RunError {
         /// Why.
         source: std::io::Error,
     },
+    /// A run sheet that is not there.
+    #[error("{}: no such file, expected a run sheet", path.display())]
+    NoSheet {
+        /// The file.
+        path: PathBuf,
+    },
+    /// Something else in an output directory's place.
+    #[error("{}: a file, expected a directory or nothing", path.display())]
+    NotADirectory {
+        /// What stands there.
+        path: PathBuf,
+    },
     /// A file that is no run sheet.
     #[error("{}{}: {message}", path.display(), line.map_or(String::new(), |line| format!(":{line}")))]
     Sheet {
@@ -64,7 +76,7 @@ pub enum RunError {
         error: LineError,
     },
     /// Thick and thin line in each other's place.
-    #[error("{evidence}: thick and thin line seem to be swapped")]
+    #[error("{evidence}, expected the other way round: thick and thin line seem to be swapped")]
     Swapped {
         /// What speaks for it.
         evidence: String,
@@ -83,6 +95,16 @@ pub enum RunError {
         /// Why.
         error: PrepareError,
     },
+    /// Two spectra that do not make a pair.
+    #[error("{} and {}: {error}", thick.display(), thin.display())]
+    Pair {
+        /// The thick line's file.
+        thick: PathBuf,
+        /// The thin line's file.
+        thin: PathBuf,
+        /// Why.
+        error: FitError,
+    },
     /// A pair that cannot be fitted.
     #[error(transparent)]
     Fit(#[from] FitError),
@@ -97,11 +119,21 @@ pub enum RunError {
 impl RunError {
     /// A setting with what was found and expected.
     #[must_use]
-    pub fn setting(key: &str, found: &str, expected: &str) -> Self {
+    pub fn setting(key: &str, found: &str, expected: &str, hint: &str) -> Self {
         Self::Setting {
             key: key.to_owned(),
             message: format!("{found}, expected {expected}"),
-            hint: None,
+            hint: Some(hint.to_owned()),
+        }
+    }
+
+    /// An error of fitting: with the files where it is about the spectra, not a setting.
+    pub(super) fn of_fit(error: FitError, (thick, thin): (PathBuf, PathBuf)) -> Self {
+        match error {
+            FitError::NoCommonVelocities { .. } | FitError::TooFewChannels { .. } => {
+                Self::Pair { thick, thin, error }
+            }
+            other => Self::Fit(other),
         }
     }
 
@@ -120,7 +152,12 @@ impl RunError {
     #[must_use]
     pub fn hint(&self) -> Option<String> {
         match self {
-            Self::File { .. } => Some("check the path and its permissions".to_owned()),
+            Self::File { .. } | Self::NoSheet { .. } => {
+                Some("check the path and its permissions".to_owned())
+            }
+            Self::NotADirectory { .. } => {
+                Some("give --out another name, or move the file away".to_owned())
+            }
             Self::Sheet { hint, .. } | Self::Setting { hint, .. } => hint.clone(),
             Self::NoFile { .. } => {
                 Some("inrush fit --help shows both ways to give a pair".to_owned())
@@ -133,7 +170,7 @@ impl RunError {
             Self::Read(error) => error.hint(),
             Self::Scale(error) => error.hint(),
             Self::Prepare { error, .. } => error.hint(),
-            Self::Fit(error) => error.hint(),
+            Self::Pair { error, .. } | Self::Fit(error) => error.hint(),
             Self::Report(error) => error.hint(),
             Self::Internal(_) => {
                 Some("please report this with the input that caused it".to_owned())
