@@ -8,7 +8,13 @@ use serde_json::Value;
 use std::io::Write;
 
 const PRODUCTS: [&str; 7] = [
-    "pair.csv", "pair.ecsv", "pair.fits", "pair.pdf", "pair.png", "pair.svg", "run.toml",
+    "pair.csv",
+    "pair.ecsv",
+    "pair.fits",
+    "pair.pdf",
+    "pair.png",
+    "pair.svg",
+    "run.toml",
 ];
 
 const SHEET: &str = "[source]\nname = \"Lantern 7\"\n\n[thick]\nline = \"HCO+ 1-0\"\nfile = \"thick.csv\"\n\n[thin]\nline = \"H13CO+ 1-0\"\nfile = \"thin.csv\"\n";
@@ -25,7 +31,11 @@ fn agrees(results: &serde_json::Map<String, Value>, name: &str, truth: f64, erro
 
 fn cautions(results: &serde_json::Map<String, Value>) -> Vec<String> {
     let codes = results["cautions"].as_str().unwrap_or_default();
-    codes.split(';').filter(|code| !code.is_empty()).map(str::to_owned).collect()
+    codes
+        .split(';')
+        .filter(|code| !code.is_empty())
+        .map(str::to_owned)
+        .collect()
 }
 
 /// The truth is that of docs/demo-scenario.md; the noise is this test's.
@@ -44,7 +54,11 @@ fn the_truth_of_a_simulated_pair_comes_back() {
     assert!((number(&results, "noise_thick_k") / 0.06 - 1.0).abs() < 0.1);
     assert!((number(&results, "noise_thin_k") / 0.03 - 1.0).abs() < 0.1);
     // the dip lies where the front half is, as it must in infall
-    assert!(!cautions(&results).contains(&"dip-off-thin".to_owned()), "{:?}", results["cautions"]);
+    assert!(
+        !cautions(&results).contains(&"dip-off-thin".to_owned()),
+        "{:?}",
+        results["cautions"]
+    );
 }
 
 #[test]
@@ -54,7 +68,10 @@ fn the_table_names_source_lines_results_and_cautions() {
     let run = folder.inrush(&["fit", "pair.toml"]);
     assert_eq!(run.code, 0, "{}", run.stderr);
     let mut lines = run.stdout.lines();
-    assert_eq!(lines.next(), Some("Lantern 7: HCO+ 1-0 (thick) and H13CO+ 1-0 (thin)"));
+    assert_eq!(
+        lines.next(),
+        Some("Lantern 7: HCO+ 1-0 (thick) and H13CO+ 1-0 (thin)")
+    );
     let results = folder.fit_json(&[]);
     let row = |label: &str| {
         run.stdout
@@ -75,11 +92,22 @@ fn the_table_names_source_lines_results_and_cautions() {
     assert_eq!(decimals(value), decimals(err), "{speed}");
     let half_step = 0.5 * 10f64.powi(-i32::try_from(decimals(value)).unwrap());
     let full = number(&results, "v_in_km_s");
-    assert!((value.parse::<f64>().unwrap() - full).abs() <= half_step * 1.000_001, "{speed} of {full}");
+    assert!(
+        (value.parse::<f64>().unwrap() - full).abs() <= half_step * 1.000_001,
+        "{speed} of {full}"
+    );
     for heading in ["Hill model", "Two-layer model", "Cautions"] {
-        assert!(run.stdout.contains(heading), "no `{heading}` in\n{}", run.stdout);
+        assert!(
+            run.stdout.contains(heading),
+            "no `{heading}` in\n{}",
+            run.stdout
+        );
     }
-    assert!(run.stdout.lines().all(|line| line.chars().count() <= 80), "{}", run.stdout);
+    assert!(
+        run.stdout.lines().all(|line| line.chars().count() <= 80),
+        "{}",
+        run.stdout
+    );
 }
 
 #[test]
@@ -106,7 +134,10 @@ fn out_gets_every_product_and_stdout_the_table() {
     let run = folder.fit(&["--out", "a/new/folder"]);
     assert_eq!(run.code, 0, "{}", run.stderr);
     assert_eq!(run.stdout, plain.stdout);
-    let mut expected: Vec<String> = PRODUCTS.iter().map(|name| format!("a/new/folder/{name}")).collect();
+    let mut expected: Vec<String> = PRODUCTS
+        .iter()
+        .map(|name| format!("a/new/folder/{name}"))
+        .collect();
     expected.extend(["thick.csv".to_owned(), "thin.csv".to_owned()]);
     assert_eq!(folder.files(), expected);
     let begins = |name: &str, start: &[u8]| {
@@ -121,13 +152,17 @@ fn out_gets_every_product_and_stdout_the_table() {
     begins("pair.pdf", b"%PDF-");
     let sheet = String::from_utf8(folder.read("a/new/folder/run.toml")).unwrap();
     assert!(sheet.contains("file = \"../../../thick.csv\""), "{sheet}");
-    assert!(sheet.contains(concat!("version = \"", env!("CARGO_PKG_VERSION"), "\"")), "{sheet}");
+    assert!(
+        sheet.contains(concat!("version = \"", env!("CARGO_PKG_VERSION"), "\"")),
+        "{sheet}"
+    );
 }
 
 #[test]
 fn the_table_files_hold_the_values_of_json() {
     let folder = Folder::with_pair();
-    let results = folder.fit_json(&["--out", "results"]);
+    let json = folder.fit(&["--json", "--out", "results"]).stdout;
+    let results = object(&json);
     let text = String::from_utf8(folder.read("results/pair.csv")).unwrap();
     let mut lines = text.lines().map(|line| line.split(','));
     let (names, cells) = (lines.next().unwrap(), lines.next().unwrap());
@@ -135,8 +170,11 @@ fn the_table_files_hold_the_values_of_json() {
     for (name, cell) in names.zip(cells) {
         match &results[name] {
             Value::Null => assert_eq!(cell, "", "{name}"),
-            Value::Number(value) => {
-                assert_eq!(cell.parse::<f64>().ok(), value.as_f64(), "{name}");
+            Value::Number(_) => {
+                // as text: the JSON parser is not exact to the last bit
+                let (_, rest) = json.split_once(&format!("\"{name}\":")).unwrap();
+                let number = rest.trim_start().split([',', '\n', '}']).next().unwrap();
+                assert_eq!(cell.parse::<f64>(), number.parse::<f64>(), "{name}");
                 compared += 1;
             }
             value => assert_eq!(Some(cell), value.as_str(), "{name}"),
@@ -152,14 +190,24 @@ fn no_figures_leaves_them_out_and_says_so_in_the_sheet() {
     assert_eq!(run.code, 0, "{}", run.stderr);
     assert_eq!(
         folder.files(),
-        ["results/pair.csv", "results/pair.ecsv", "results/pair.fits", "results/run.toml", "thick.csv", "thin.csv"]
+        [
+            "results/pair.csv",
+            "results/pair.ecsv",
+            "results/pair.fits",
+            "results/run.toml",
+            "thick.csv",
+            "thin.csv"
+        ]
     );
     let sheet = String::from_utf8(folder.read("results/run.toml")).unwrap();
     assert!(sheet.contains("figures = false"), "{sheet}");
 }
 
 fn products(folder: &Folder, directory: &str) -> Vec<(&'static str, Vec<u8>)> {
-    PRODUCTS.iter().map(|name| (*name, folder.read(&format!("{directory}/{name}")))).collect()
+    PRODUCTS
+        .iter()
+        .map(|name| (*name, folder.read(&format!("{directory}/{name}"))))
+        .collect()
 }
 
 fn assert_same(one: &[(&str, Vec<u8>)], other: &[(&str, Vec<u8>)], what: &str) {
@@ -170,21 +218,36 @@ fn assert_same(one: &[(&str, Vec<u8>)], other: &[(&str, Vec<u8>)], what: &str) {
 
 /// A run with as many settings as can be had in one.
 const SETTINGS: &[&str] = &[
-    "--window-km-s", "4,11", "--thin-window-km-s", "5,10", "--baseline-order", "2",
-    "--models", "two-layer,hill,hill-surface,gaussian", "--given", "tau=4,1", "--bounds", "v_in_km_s=-2,2",
-    "--isotope-ratio", "68,15", "--range-km-s", "0,15", "--name", "a \"named\" source", "--seed", "7",
-    "--free-thin-sigma", "--thick-rest-freq-ghz", "89.1885247,0.0000051",
+    "--window-km-s",
+    "4,11",
+    "--thin-window-km-s",
+    "5,10",
+    "--baseline-order",
+    "2",
+    "--models",
+    "two-layer,hill,hill-surface",
+    "--given",
+    "tau=4,1",
+    "--bounds",
+    "v_in_km_s=-2,2",
+    "--isotope-ratio",
+    "68,15",
+    "--range-km-s",
+    "0,15",
+    "--name",
+    "a \"named\" source",
+    "--seed",
+    "7",
+    "--free-thin-sigma",
+    "--thick-rest-freq-ghz",
+    "89.1885247,0.0000051",
 ];
 
 #[test]
 fn the_resolved_sheet_gives_the_same_bytes_again() {
     let folder = Folder::with_pair();
-    for settings in [&[][..], &SETTINGS[..SETTINGS.iter().position(|s| *s == "--models").unwrap()], SETTINGS] {
+    for settings in [&[][..], SETTINGS] {
         let mut arguments = settings.to_vec();
-        if settings.contains(&"--isotope-ratio") {
-            let models = arguments.iter().position(|s| s.contains("gaussian")).unwrap();
-            arguments[models] = "two-layer,hill,hill-surface";
-        }
         arguments.extend(["--out", "first"]);
         let run = folder.fit(&arguments);
         assert_eq!(run.code, 0, "{}", run.stderr);
@@ -206,12 +269,24 @@ fn the_resolved_sheet_gives_the_same_bytes_again() {
 fn a_sheet_run_again_on_changed_data_says_so() {
     let folder = Folder::with_pair();
     assert_eq!(folder.fit(&["--out", "first", "--no-figures"]).code, 0);
-    let other = Pair { seed: 21, ..Pair::default() };
+    let other = Pair {
+        seed: 21,
+        ..Pair::default()
+    };
     folder.write("thick.csv", other.csv().0.as_bytes());
     let run = folder.inrush(&["fit", "first/run.toml"]);
     assert_eq!(run.code, 0, "{}", run.stderr);
-    assert!(run.stderr.contains("thick.csv: not the file of the recorded run"), "{}", run.stderr);
-    assert!(!run.stderr.contains("thin.csv: not the file"), "{}", run.stderr);
+    assert!(
+        run.stderr
+            .contains("thick.csv: not the file of the recorded run"),
+        "{}",
+        run.stderr
+    );
+    assert!(
+        !run.stderr.contains("thin.csv: not the file"),
+        "{}",
+        run.stderr
+    );
 }
 
 #[test]
@@ -231,7 +306,11 @@ fn quiet_keeps_stderr_empty() {
     let folder = Folder::with_pair();
     let loud = folder.fit(&["--out", "results"]);
     assert!(loud.stderr.contains("note: thick.csv: "), "{}", loud.stderr);
-    assert!(loud.stderr.contains("note: wrote pair.csv, "), "{}", loud.stderr);
+    assert!(
+        loud.stderr.contains("note: wrote pair.csv, "),
+        "{}",
+        loud.stderr
+    );
     for quiet in ["--quiet", "-q"] {
         let run = folder.fit(&[quiet, "--out", "results"]);
         assert_eq!((run.code, run.stderr.as_str()), (0, ""));
@@ -280,12 +359,31 @@ fn options_stand_above_the_sheet() {
     assert_eq!(plain["prepare"]["baseline_order"].as_integer(), Some(3));
     assert_eq!(plain["fit"]["models"][0].as_str(), Some("gaussian"));
     let over = resolved(&[
-        "--window-km-s", "4,11", "--baseline-order", "none", "--models", "hill", "--given", "tau=3",
-        "--bounds", "v_in_km_s=0,1", "--name", "other", "--seed", "5", "--range-km-s", "all",
-        "--smooth-to-km-s", "0.2", "--free-thin-velocity",
+        "--window-km-s",
+        "4,11",
+        "--baseline-order",
+        "none",
+        "--models",
+        "hill",
+        "--given",
+        "tau=3",
+        "--bounds",
+        "v_in_km_s=0,1",
+        "--name",
+        "other",
+        "--seed",
+        "5",
+        "--range-km-s",
+        "all",
+        "--smooth-to-km-s",
+        "0.2",
+        "--free-thin-velocity",
     ]);
     assert_eq!(over["prepare"]["window_km_s"][0].as_float(), Some(4.0));
-    assert!(over["thin"].get("window_km_s").is_none(), "the option is for both lines");
+    assert!(
+        over["thin"].get("window_km_s").is_none(),
+        "the option is for both lines"
+    );
     assert_eq!(over["prepare"]["baseline_order"].as_str(), Some("none"));
     assert_eq!(over["prepare"]["smooth_to_km_s"].as_float(), Some(0.2));
     assert_eq!(over["fit"]["models"].as_array().map(Vec::len), Some(1));
@@ -315,7 +413,13 @@ fn a_prior_pulls_by_its_weight() {
     let wide = folder.fit_json(&["--given", "tau=3,0.5"]);
     let narrow = folder.fit_json(&["--given", "tau=3,0.01"]);
     let tau = |results| number(results, "hill_tau");
-    assert!(tau(&narrow) < tau(&wide) && tau(&wide) < tau(&free), "{} {} {}", tau(&narrow), tau(&wide), tau(&free));
+    assert!(
+        tau(&narrow) < tau(&wide) && tau(&wide) < tau(&free),
+        "{} {} {}",
+        tau(&narrow),
+        tau(&wide),
+        tau(&free)
+    );
     assert!(number(&wide, "hill_tau_err") < number(&free, "hill_tau_err"));
     // the free error is far below the wide prior's: it hardly moves
     assert!((tau(&wide) - tau(&free)).abs() < number(&free, "hill_tau_err"));
@@ -323,7 +427,8 @@ fn a_prior_pulls_by_its_weight() {
 
 #[test]
 fn bounds_hold_and_a_parameter_on_them_is_said() {
-    let results = Folder::with_pair().fit_json(&["--bounds", "v_in_km_s=-0.3,0.3", "--models", "hill"]);
+    let results =
+        Folder::with_pair().fit_json(&["--bounds", "v_in_km_s=-0.3,0.3", "--models", "hill"]);
     assert_eq!(number(&results, "hill_v_in_km_s"), 0.3);
     assert!(results["hill_v_in_km_s_err"].is_null());
     assert!(cautions(&results).contains(&"parameter-at-bound".to_owned()));
@@ -341,14 +446,22 @@ fn the_isotope_ratio_links_the_optical_depths() {
 
 #[test]
 fn a_freed_thin_line_leaves_sigma_to_the_thick_line() {
-    let pair = Pair { thin: vec![7.35, 0.40, 0.118, 11.0], ..Pair::default() };
+    let pair = Pair {
+        thin: vec![7.35, 0.40, 0.118, 11.0],
+        ..Pair::default()
+    };
     let folder = pair.folder();
     let shared = folder.fit_json(&["--models", "hill"]);
     let freed = folder.fit_json(&["--models", "hill", "--free-thin-sigma"]);
     agrees(&freed, "sigma_km_s", 0.62, 3.0);
     assert!(number(&shared, "hill_chi2_red") > number(&freed, "hill_chi2_red") + 0.2);
-    let shifted = Pair { thin: vec![7.75, 0.62, 0.118, 11.0], ..Pair::default() };
-    let freed = shifted.folder().fit_json(&["--models", "hill", "--free-thin-velocity"]);
+    let shifted = Pair {
+        thin: vec![7.75, 0.62, 0.118, 11.0],
+        ..Pair::default()
+    };
+    let freed = shifted
+        .folder()
+        .fit_json(&["--models", "hill", "--free-thin-velocity"]);
     agrees(&freed, "v_lsr_km_s", 7.35, 3.0);
     agrees(&freed, "v_thin_km_s", 7.75, 3.0);
 }
@@ -372,8 +485,20 @@ fn a_line_of_the_users_own_needs_a_rest_frequency_only() {
     let folder = Folder::with_pair();
     let built_in = folder.fit_json(&["--models", "hill"]);
     let own = folder.inrush(&[
-        "fit", "--thick", "thick.csv", "--thin", "thin.csv", "--thick-line", "my line",
-        "--thick-rest-freq-ghz", "89.1885247,0.00001", "--thin-line", "H13CO+ 1-0", "--models", "hill", "--json",
+        "fit",
+        "--thick",
+        "thick.csv",
+        "--thin",
+        "thin.csv",
+        "--thick-line",
+        "my line",
+        "--thick-rest-freq-ghz",
+        "89.1885247,0.00001",
+        "--thin-line",
+        "H13CO+ 1-0",
+        "--models",
+        "hill",
+        "--json",
     ]);
     assert_eq!(own.code, 0, "{}", own.stderr);
     let own = object(&own.stdout);
@@ -397,8 +522,18 @@ fn a_thin_multiplet_gives_its_velocity() {
     };
     let folder = pair.folder();
     let run = folder.inrush(&[
-        "fit", "--thick", "thick.csv", "--thin", "thin.csv", "--thick-line", "HCO+ 1-0", "--thin-line", "N2H+ 1-0",
-        "--json", "--out", "results",
+        "fit",
+        "--thick",
+        "thick.csv",
+        "--thin",
+        "thin.csv",
+        "--thick-line",
+        "HCO+ 1-0",
+        "--thin-line",
+        "N2H+ 1-0",
+        "--json",
+        "--out",
+        "results",
     ]);
     assert_eq!(run.code, 0, "{}", run.stderr);
     let results = object(&run.stdout);
@@ -406,7 +541,10 @@ fn a_thin_multiplet_gives_its_velocity() {
     agrees(&results, "v_thin_km_s", 7.35, 3.0);
     agrees(&results, "sigma_km_s", 0.3, 3.0);
     assert_eq!(results["profile"], "blue");
-    assert!(!cautions(&results).contains(&"thin-two-peaked".to_owned()), "satellites are no second cloud");
+    assert!(
+        !cautions(&results).contains(&"thin-two-peaked".to_owned()),
+        "satellites are no second cloud"
+    );
 }
 
 #[test]
@@ -423,7 +561,15 @@ fn a_thick_multiplet_is_fitted_with_its_components() {
     };
     let folder = pair.folder();
     let run = folder.inrush(&[
-        "fit", "--thick", "thick.csv", "--thin", "thin.csv", "--thick-line", "HCN 1-0", "--thin-line", "H13CN 1-0",
+        "fit",
+        "--thick",
+        "thick.csv",
+        "--thin",
+        "thin.csv",
+        "--thick-line",
+        "HCN 1-0",
+        "--thin-line",
+        "H13CN 1-0",
         "--json",
     ]);
     assert_eq!(run.code, 0, "{}", run.stderr);
@@ -436,9 +582,16 @@ fn a_thick_multiplet_is_fitted_with_its_components() {
 
 #[test]
 fn an_undetected_thin_line_is_said_and_takes_nothing_along() {
-    let pair = Pair { thin: vec![7.35, 0.62, 0.001, 3.0], ..Pair::default() };
+    let pair = Pair {
+        thin: vec![7.35, 0.62, 0.001, 3.0],
+        ..Pair::default()
+    };
     let results = pair.folder().fit_json(&[]);
-    assert!(cautions(&results).contains(&"thin-undetected".to_owned()), "{:?}", results["cautions"]);
+    assert!(
+        cautions(&results).contains(&"thin-undetected".to_owned()),
+        "{:?}",
+        results["cautions"]
+    );
     for name in ["v_thin_km_s", "fwhm_thin_km_s", "delta_v", "asymmetry"] {
         assert!(results[name].is_null(), "{name} is {}", results[name]);
     }
@@ -460,7 +613,12 @@ fn blank_channels_are_left_out_not_filled() {
     folder.write("thin.csv", csv(&velocity, &thin).as_bytes());
     let run = folder.fit(&["--json", "--out", "results"]);
     assert_eq!(run.code, 0, "{}", run.stderr);
-    assert!(run.stderr.contains("thick.csv: 8 of 291 channels are blank"), "{}", run.stderr);
+    assert!(
+        run.stderr
+            .contains("thick.csv: 8 of 291 channels are blank"),
+        "{}",
+        run.stderr
+    );
     let results = object(&run.stdout);
     agrees(&results, "v_in_km_s", 0.45, 3.0);
     let svg = String::from_utf8(folder.read("results/pair.svg")).unwrap();
@@ -475,8 +633,18 @@ fn a_gzipped_file_gives_the_same_results() {
     packed.write_all(&folder.read("thick.csv")).unwrap();
     folder.write("packed.csv.gz", &packed.finish().unwrap());
     let run = folder.inrush(&[
-        "fit", "--thick", "packed.csv.gz", "--thin", "thin.csv", "--thick-line", "HCO+ 1-0", "--thin-line", "H13CO+ 1-0",
-        "--json", "--name", "thick",
+        "fit",
+        "--thick",
+        "packed.csv.gz",
+        "--thin",
+        "thin.csv",
+        "--thick-line",
+        "HCO+ 1-0",
+        "--thin-line",
+        "H13CO+ 1-0",
+        "--json",
+        "--name",
+        "thick",
     ]);
     assert_eq!(run.code, 0, "{}", run.stderr);
     assert_eq!(object(&run.stdout), plain);
@@ -488,15 +656,24 @@ fn antenna_temperatures_are_divided_by_the_efficiency() {
     let main_beam = folder.fit_json(&[]);
     let pair = Pair::default();
     let (thick, thin) = pair.temperature_k();
-    let scaled = |values: &[f64], eta: f64| -> Vec<f64> { values.iter().map(|value| value * eta).collect() };
+    let scaled =
+        |values: &[f64], eta: f64| -> Vec<f64> { values.iter().map(|value| value * eta).collect() };
     for (name, values, eta) in [("thick.csv", thick, 0.8), ("thin.csv", thin, 0.5)] {
         let text = csv(&pair.velocity_km_s(), &scaled(&values, eta)).replace("tmb_k", "ta_k");
         folder.write(name, text.as_bytes());
     }
     let results = folder.fit_json(&["--thick-eta-mb", "0.8", "--thin-eta-mb", "0.5"]);
     // the texts hold five decimals
-    for (name, tolerance) in [("peak_thick_k", 1e-4), ("peak_thin_k", 1e-4), ("v_in_km_s", 1e-4), ("noise_thin_k", 1e-4)] {
-        assert!((number(&results, name) - number(&main_beam, name)).abs() < tolerance, "{name}");
+    for (name, tolerance) in [
+        ("peak_thick_k", 1e-4),
+        ("peak_thin_k", 1e-4),
+        ("v_in_km_s", 1e-4),
+        ("noise_thin_k", 1e-4),
+    ] {
+        assert!(
+            (number(&results, name) - number(&main_beam, name)).abs() < tolerance,
+            "{name}"
+        );
     }
 }
 
@@ -509,7 +686,12 @@ fn a_continuum_source_that_is_given_is_used() {
     };
     let folder = pair.folder();
     let results = folder.fit_json(&[
-        "--models", "two-layer-continuum", "--given", "filling=0.2", "--given", "t_continuum_k=60",
+        "--models",
+        "two-layer-continuum",
+        "--given",
+        "filling=0.2",
+        "--given",
+        "t_continuum_k=60",
     ]);
     assert_eq!(results["v_in_model"], "two-layer-continuum");
     agrees(&results, "v_in_km_s", 0.3, 3.0);
@@ -518,7 +700,12 @@ fn a_continuum_source_that_is_given_is_used() {
     assert_eq!(number(&results, "two_layer_continuum_filling"), 0.2);
     // priors widen the errors of what they stand for, and nothing else is lost
     let with_errors = folder.fit_json(&[
-        "--models", "two-layer-continuum", "--given", "filling=0.2,0.02", "--given", "t_continuum_k=60,5",
+        "--models",
+        "two-layer-continuum",
+        "--given",
+        "filling=0.2,0.02",
+        "--given",
+        "t_continuum_k=60,5",
     ]);
     agrees(&with_errors, "v_in_km_s", 0.3, 3.0);
     assert!(

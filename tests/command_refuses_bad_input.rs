@@ -845,7 +845,7 @@ fn options_that_cannot_be() {
         case("given without a value").with(&["--given", "tau"]).says(&["'tau'", "--given", "expected NAME=VALUE"]),
         case("given twice a comma").with(&["--given", "tau=1,2,3"]).says(&["--given", "expected VALUE or VALUE,ERR"]),
         case("given unknown").with(&["--given", "tua=1"]).says(&["`tua`", "expected one of", "\nhint: did you mean `tau`?"]),
-        case("given outside the bounds").with(&["--given", "tau=-3"]).says(&["tau", "-3", "expected a value from 0.02 to 200"]),
+        case("given outside the bounds").with(&["--given", "tau=-3"]).says(&["tau", "-3", "expected a value from 0.1 to 200"]),
         case("negative error").with(&["--given", "tau=3,-1"]).says(&["tau", "-1", "expected"]),
         case("empty bounds").with(&["--bounds", "tau=5,1"]).says(&["bounds 5 to 1 of tau", "expected the lower below the upper"]),
         case("bounds of nothing").with(&["--bounds", "tauu=1,5"]).says(&["`tauu`", "\nhint: did you mean `tau`?"]),

@@ -6,6 +6,7 @@ use crate::prepare::scale::ScaleError;
 use crate::prepare::{PairError, PrepareError};
 use crate::read::ReadError;
 use crate::report::ReportError;
+use crate::simulate::SimulateError;
 use std::path::PathBuf;
 
 /// Why a run cannot be done.
@@ -108,6 +109,9 @@ pub enum RunError {
     /// A pair that cannot be fitted.
     #[error(transparent)]
     Fit(#[from] FitError),
+    /// A truth that cannot be simulated.
+    #[error(transparent)]
+    Simulate(#[from] SimulateError),
     /// A product that cannot be written.
     #[error(transparent)]
     Report(#[from] ReportError),
@@ -119,11 +123,24 @@ pub enum RunError {
 impl RunError {
     /// A setting with what was found and expected.
     #[must_use]
-    pub fn setting(key: &str, found: &str, expected: &str, hint: &str) -> Self {
+    pub fn setting(key: &str, found: &str, expected: &str) -> Self {
         Self::Setting {
             key: key.to_owned(),
             message: format!("{found}, expected {expected}"),
-            hint: Some(hint.to_owned()),
+            hint: None,
+        }
+    }
+
+    /// The same with what to do about it.
+    #[must_use]
+    pub(super) fn hinted(self, text: &str) -> Self {
+        match self {
+            Self::Setting { key, message, .. } => Self::Setting {
+                key,
+                message,
+                hint: Some(text.to_owned()),
+            },
+            other => other,
         }
     }
 
@@ -171,6 +188,7 @@ impl RunError {
             Self::Scale(error) => error.hint(),
             Self::Prepare { error, .. } => error.hint(),
             Self::Pair { error, .. } | Self::Fit(error) => error.hint(),
+            Self::Simulate(error) => error.hint(),
             Self::Report(error) => error.hint(),
             Self::Internal(_) => {
                 Some("please report this with the input that caused it".to_owned())

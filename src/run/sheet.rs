@@ -320,12 +320,8 @@ impl RunSheet {
     pub fn fit_settings(&self) -> Result<FitSettings, RunError> {
         let fit = &self.fit;
         if fit.models.is_empty() {
-            return Err(RunError::setting(
-                "fit.models",
-                "no model",
-                "at least one",
-                "leave the key out for the default models",
-            ));
+            return Err(RunError::setting("fit.models", "no model", "at least one")
+                .hinted("leave the key out for the default models"));
         }
         let mut models = Vec::new();
         for name in &fit.models {
@@ -342,8 +338,8 @@ impl RunSheet {
                     "fit.range_km_s",
                     &format!("`{word}`"),
                     "[low, high] or \"all\"",
-                    "leave it out to fit the line windows with a margin",
-                ));
+                )
+                .hinted("leave it out to fit the line windows with a margin"));
             }
             Some(RangeOrWord::Range(range)) => {
                 Some(FitRange::Within(window("fit.range_km_s", *range)?))
@@ -356,8 +352,8 @@ impl RunSheet {
                 "fit.isotope_ratio",
                 &format!("{} +- {}", ratio.value, ratio.err),
                 "thick over thin, at least 1, with an error of at least 0",
-                "the ratio is that of the abundances, such as 68 for 12C/13C",
-            ));
+            )
+            .hinted("the ratio is that of the abundances, such as 68 for 12C/13C"));
         }
         for (name, given) in &fit.given {
             let given = given.estimate();
@@ -366,8 +362,8 @@ impl RunSheet {
                     &format!("fit.given.{name}"),
                     &format!("{} +- {}", given.value, given.err),
                     "a number with an error of at least 0",
-                    "an error of 0 or none holds the parameter, another is a Gaussian prior",
-                ));
+                )
+                .hinted("an error of 0 or none holds the parameter, another is a Gaussian prior"));
             }
         }
         Ok(FitSettings {
@@ -405,8 +401,8 @@ impl RunSheet {
                     "prepare.baseline_order",
                     &format!("`{word}`"),
                     "0 to 3 or \"none\"",
-                    "0 is a constant, 1 a straight line; none subtracts nothing",
-                ));
+                )
+                .hinted("0 is a constant, 1 a straight line; none subtracts nothing"));
             }
         };
         let given = section.window_km_s.or(prepare.window_km_s);
@@ -538,8 +534,8 @@ fn window(key: &str, [low_km_s, high_km_s]: [f64; 2]) -> Result<Window, RunError
             key,
             &format!("[{low_km_s}, {high_km_s}]"),
             "two velocities in km/s, the lower first",
-            "exchange the two",
-        ))
+        )
+        .hinted("exchange the two"))
     }
 }
 
