@@ -788,10 +788,16 @@ fn run_sheets_that_are_none() {
             .says(&["pair.toml:9", "\"wide\"", "expected"]),
         case("missing file key")
             .sheet(&SHEET.replace("file = \"thin.csv\"\n", ""))
-            .says(&["no file of the thin line", "expected `[thin] file`"]),
+            .says(&[
+                "pair.toml: no file of the thin line",
+                "expected `[thin] file`",
+            ]),
         case("missing line key")
             .sheet(&SHEET.replace("line = \"HCO+ 1-0\"\n", ""))
-            .says(&["no name of the thick line", "expected `[thick] line`"]),
+            .says(&[
+                "pair.toml: no name of the thick line",
+                "expected `[thick] line`",
+            ]),
         case("a spectrum for a run sheet")
             .run(&["fit", "thick.csv"])
             .says(&["thick.csv:1", "expected", "\nhint: ", "--thick"]),

@@ -164,7 +164,8 @@ pub fn run(arguments: &FitArguments, output: &Output) -> Result<Exit, RunError> 
     if let Some(directory) = &arguments.out {
         check_directory(directory)?;
     }
-    let outcome = fit_pair(&sheet, &base)?;
+    let outcome =
+        fit_pair(&sheet, &base).map_err(|error| error.of_sheet(arguments.sheet.as_deref()))?;
     if let Some(record) = &sheet.record {
         let changed = [
             (&record.thick_sha256, &outcome.thick),

@@ -7,7 +7,7 @@ use crate::prepare::{PairError, PrepareError};
 use crate::read::ReadError;
 use crate::report::ReportError;
 use crate::simulate::SimulateError;
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 
 /// Why a run cannot be done.
 #[derive(Debug, thiserror::Error)]
@@ -43,6 +43,14 @@ pub enum RunError {
         message: String,
         /// What to do.
         hint: Option<String>,
+    },
+    /// Something in a run sheet that cannot be used, or is missing there.
+    #[error("{}: {error}", path.display())]
+    InSheet {
+        /// The run sheet.
+        path: PathBuf,
+        /// What.
+        error: Box<RunError>,
     },
     /// A setting that cannot be used.
     #[error("{key}: {message}")]
@@ -121,6 +129,25 @@ pub enum RunError {
 }
 
 impl RunError {
+    /// The same error with the run sheet it stands in, where there is one and the error does not
+    /// name a file.
+    #[must_use]
+    pub fn of_sheet(self, sheet: Option<&Path>) -> Self {
+        match (sheet, self) {
+            (
+                Some(path),
+                error @ (Self::NoFile { .. }
+                | Self::NoLine { .. }
+                | Self::Line { .. }
+                | Self::Setting { .. }),
+            ) => Self::InSheet {
+                path: path.to_owned(),
+                error: Box::new(error),
+            },
+            (_, error) => error,
+        }
+    }
+
     /// A setting with what was found and expected.
     #[must_use]
     pub fn setting(key: &str, found: &str, expected: &str) -> Self {
@@ -175,6 +202,7 @@ impl RunError {
             Self::NotADirectory { .. } => {
                 Some("give --out another name, or move the file away".to_owned())
             }
+            Self::InSheet { error, .. } => error.hint(),
             Self::Sheet { hint, .. } | Self::Setting { hint, .. } => hint.clone(),
             Self::NoFile { .. } => {
                 Some("inrush fit --help shows both ways to give a pair".to_owned())
