@@ -153,6 +153,14 @@ impl Layout {
                     upper: *upper,
                 });
             }
+            if let Some(expected) = impossible(&parameter, *lower, *upper) {
+                return Err(FitError::ImpossibleBounds {
+                    name: name.to_owned(),
+                    lower: *lower,
+                    upper: *upper,
+                    expected,
+                });
+            }
             (low, high) = (*lower, *upper);
         }
         let mut joint = JointParameter {
@@ -220,6 +228,20 @@ impl Layout {
             local[2] = 2.0 * joint[tau] / joint[ratio];
         }
     }
+}
+
+/// Where bounds of a parameter may lie, if these lie elsewhere.
+fn impossible(parameter: &Parameter, lower: f64, upper: f64) -> Option<&'static str> {
+    if !(lower.is_finite() && upper.is_finite()) {
+        return Some("two finite numbers");
+    }
+    if parameter.name == "filling" && (lower < 0.0 || upper > 1.0) {
+        return Some("fractions from 0 to 1");
+    }
+    if parameter.low > 0.0 && lower <= 0.0 {
+        return Some("positive numbers");
+    }
+    None
 }
 
 /// The joint residuals of a pair, or of the thin line alone.
