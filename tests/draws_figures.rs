@@ -2,6 +2,7 @@
 //!
 //! `INRUSH_FIGURES_TO=DIRECTORY cargo test --test draws_figures` also writes the PNGs to look at.
 #![cfg(feature = "figures")]
+#![allow(clippy::unwrap_used)]
 
 use std::sync::Arc;
 
@@ -24,6 +25,7 @@ struct Case {
     channel_km_s: f64,
     v_km_s: f64,
     masked: bool,
+    scale: f64,
     numbers: usize,
     cautions: usize,
 }
@@ -38,11 +40,12 @@ const PLAIN: Case = Case {
     channel_km_s: 0.1,
     v_km_s: -2.3,
     masked: false,
+    scale: 1.0,
     numbers: 6,
     cautions: 1,
 };
 
-const CASES: [Case; 9] = [
+const CASES: [Case; 12] = [
     PLAIN,
     Case {
         name: "no model",
@@ -108,6 +111,24 @@ const CASES: [Case; 9] = [
         numbers: 15,
         ..PLAIN
     },
+    Case {
+        name: "millikelvin",
+        scale: 0.004,
+        ..PLAIN
+    },
+    Case {
+        name: "absorption",
+        scale: -1.0,
+        ..PLAIN
+    },
+    Case {
+        name: "far and narrow",
+        sigma_km_s: 0.06,
+        channel_km_s: 0.02,
+        v_km_s: -1104.2,
+        source: "\u{6e90} \u{3b1}\u{3b2}",
+        ..PLAIN
+    },
 ];
 
 const CAUTIONS: [&str; 4] = [
@@ -139,14 +160,16 @@ fn panel(case: &Case, thick: bool) -> Panel {
     let mut random = ChaCha8Rng::seed_from_u64(if thick { 1 } else { 2 });
     let (centre, sigma) = (case.v_km_s, case.sigma_km_s);
     let profile = |v: f64, stretch: f64| {
-        if thick {
-            3.2 * stretch * gauss(v, centre - 0.9 * sigma, sigma)
-                + 1.7 * gauss(v, centre + 1.2 * sigma, 0.8 * stretch * sigma)
-        } else {
-            0.9 * stretch * gauss(v, centre, sigma)
-        }
+        case.scale
+            * if thick {
+                3.2 * stretch * gauss(v, centre - 0.9 * sigma, sigma)
+                    + 1.7 * gauss(v, centre + 1.2 * sigma, 0.8 * stretch * sigma)
+            } else {
+                0.9 * stretch * gauss(v, centre, sigma)
+            }
     };
-    let noise_k = 3.2 / case.peak_over_noise / if thick { 1.0 } else { 2.0 };
+    let noise_k = 3.2 * case.scale.abs() / case.peak_over_noise / if thick { 1.0 } else { 2.0 };
+    #[allow(clippy::cast_possible_truncation, clippy::cast_sign_loss)]
     let channels = (40.0 * sigma / case.channel_km_s) as usize;
     let first = centre - 20.0 * sigma;
     let velocity_km_s: Vec<f64> = (0..channels)
@@ -239,7 +262,7 @@ fn texts(tree: &usvg::Tree) -> Vec<(String, usvg::Rect)> {
             match node {
                 usvg::Node::Group(group) => collect(group, found),
                 usvg::Node::Text(text) => {
-                    let words = text.chunks().iter().map(|chunk| chunk.text()).collect();
+                    let words = text.chunks().iter().map(usvg::TextChunk::text).collect();
                     let outlines = text.flattened().bounding_box();
                     found.push((words, outlines.transform(text.abs_transform()).unwrap()));
                 }
@@ -381,8 +404,37 @@ fn a_pair_with_nothing_known_is_still_drawn() {
         };
     }
     let svg = drawn.svg().unwrap();
-    assert!(!svg.contains("NaN") && !svg.contains("2147483647"), "{svg}");
+    assert!(!svg.contains("NaN") && !svg.contains("214748364"), "{svg}");
     svg_to_pdf(&svg).unwrap();
+}
+
+#[test]
+fn extreme_pairs_are_drawn_on_their_page() {
+    type Change = fn(&mut Panel);
+    let cases: [(&str, Change); 5] = [
+        ("no channels", |panel| keep_channels(panel, 0)),
+        ("one channel", |panel| keep_channels(panel, 1)),
+        ("no noise", |panel| panel.noise_k = 0.0),
+        ("huge", |panel| panel.temperature_k.fill(1e30)),
+        ("no width", |panel| panel.width_km_s.fill(0.0)),
+    ];
+    for (name, change) in cases {
+        let mut drawn = figure(&PLAIN);
+        change(&mut drawn.thick);
+        change(&mut drawn.thin);
+        let svg = drawn.svg().unwrap();
+        assert!(!svg.contains("NaN") && !svg.contains("214748364"), "{name}");
+        svg_to_pdf(&svg).unwrap();
+    }
+}
+
+fn keep_channels(panel: &mut Panel, channels: usize) {
+    panel.velocity_km_s.truncate(channels);
+    panel.width_km_s.truncate(channels);
+    panel.temperature_k.truncate(channels);
+    for curve in &mut panel.curves {
+        curve.residuals.truncate(channels);
+    }
 }
 
 #[test]

@@ -1,4 +1,5 @@
 //! Result tables: what is written reads back, and the documentation lists what is written.
+#![allow(clippy::unwrap_used)]
 
 use inrush::numeric::Estimate;
 use inrush::report::files::write_atomically;
@@ -104,7 +105,7 @@ fn ecsv_is_a_header_over_the_same_csv() {
     let header = ecsv.strip_suffix(csv.as_slice()).unwrap();
     assert_eq!(
         String::from_utf8(header.to_vec()).unwrap(),
-        r##"# %ECSV 1.0
+        r#"# %ECSV 1.0
 # ---
 # delimiter: ','
 # datatype:
@@ -114,7 +115,7 @@ fn ecsv_is_a_header_over_the_same_csv() {
 # meta: !!omap
 # - {"seed": 7}
 # - {"note: odd": "a \"b\"\n#c"}
-"##
+"#
     );
 }
 
@@ -390,7 +391,7 @@ fn summary_of_a_pair_is_readable() {
 invented clump: HCO+ 1-0 (thick) and H13CO+ 1-0 (thin)
 
 Noise and strength of the lines
-  noise, thick line             0.05120 K
+  noise, thick line             0.0512 K
   peak, thick line              3.21 +- 0.05 K
   integral, thick line          5.38 +- 0.12 K km/s
 
@@ -404,7 +405,7 @@ Asymmetry of the thick line, without a model
 Hill model, surface at the background
   inward speed                  0.48 +- 0.03 km/s
   optical depth of a half       4.2 +- 0.6
-  reduced chi2                  1.043
+  reduced chi2                  1.04
 
 Inward speed
   adopted inward speed          0.48 -0.04 +0.05 km/s
@@ -415,7 +416,7 @@ Probabilities
 
 Collapse
   mass infall rate              (1.2 -0.4 +0.8)e-4 Msun/yr
-  free-fall time                234560 yr
+  free-fall time                235000 yr
 
 Cautions
   - The thin line has two peaks: two clouds on one line of sight would look
@@ -429,8 +430,13 @@ Cautions
 fn summary_stays_in_its_lines_whatever_the_name() {
     let mut row = columns::results().row();
     row.set("id", "a\nb\u{1b}[31m").unwrap();
+    row.set("dx_arcsec", 12.25).unwrap();
+    row.set("dy_arcsec", -4.0).unwrap();
     let found = summary(&row, &[]);
-    assert_eq!(found, "a\\nb\\u{1b}[31m: ? (thick) and ? (thin)\n");
+    assert_eq!(
+        found,
+        "a\\nb\\u{1b}[31m at (12.25, -4.0) arcsec: ? (thick) and ? (thin)\n"
+    );
 }
 
 fn names_in(directory: &std::path::Path) -> Vec<String> {
@@ -446,7 +452,7 @@ fn a_failed_write_leaves_the_old_file_and_nothing_else() {
     let path = directory.path().join("results.csv");
     std::fs::write(&path, "old").unwrap();
     let error = write_atomically(&path, |writer| {
-        writer.write_all(&[b'x'; 100_000])?;
+        writer.write_all(&vec![b'x'; 100_000])?;
         Err(std::io::Error::other("disk on fire").into())
     })
     .unwrap_err();

@@ -4,6 +4,7 @@ mod check;
 mod fit;
 mod lines;
 mod output;
+mod simulate;
 
 use clap::{Parser, Subcommand};
 use inrush::run::RunError;
@@ -61,6 +62,7 @@ enum Command {
     Check(check::CheckArguments),
     Fit(Box<fit::FitArguments>),
     Lines(lines::LinesArguments),
+    Simulate(simulate::SimulateArgs),
 }
 
 /// Runs the command line and returns its exit code.
@@ -83,6 +85,7 @@ pub fn main() -> ExitCode {
         Command::Check(check) => check::run(check, &output),
         Command::Fit(fit) => fit::run(fit, &output),
         Command::Lines(lines) => lines::run(lines, &output),
+        Command::Simulate(simulate) => simulate::run(simulate, &output),
     };
     match result {
         Ok(exit) => exit.into(),

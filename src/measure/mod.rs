@@ -6,17 +6,19 @@
 //! Sources: Mardones et al. 1997 (doi:10.1086/304812), Jackson et al. 2019
 //! (doi:10.3847/1538-4357/aaef84), Myers et al. 1996 (doi:10.1086/310146), eq. 9 from memory.
 
+mod about;
 mod noise;
+mod peaks;
 mod smooth;
 
-use crate::constants::FWHM_PER_SIGMA;
 use crate::line::Component;
 use crate::numeric::Estimate;
 use crate::prepare::Prepared;
-use crate::spectrum::{Spectrum, Window};
+use crate::spectrum::Window;
+use about::About;
 use noise::ChannelNoise;
-use smooth::{Extremum, Smoothed, difference};
-use statrs::distribution::{ContinuousCDF, Normal};
+use peaks::Profile;
+use smooth::{Extremum, Smoothed};
 
 /// The thin line's velocity and width that every measure is relative to, from its fit.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -34,9 +36,9 @@ pub struct ThinLine {
 /// Sense of the thick line's asymmetry (Mardones et al. 1997).
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub enum ProfileClass {
-    /// Normalised velocity difference below -0.25.
+    /// Normalised velocity difference below -0.25, its sign certain.
     Blue,
-    /// Normalised velocity difference above 0.25.
+    /// Normalised velocity difference above 0.25, its sign certain.
     Red,
     /// In between.
     Neither,
@@ -102,6 +104,11 @@ pub struct MeasureSettings {
     pub detection_sigma: f64,
     /// Significance of the dip below the lower peak from which a line has two peaks.
     pub dip_sigma: f64,
+    /// Significance of the normalised velocity difference from which a profile can be blue or red;
+    /// 0 leaves the limit of 0.25 alone. Of a line with two equal peaks one is always higher: its
+    /// error spans both, and the profile is neither. (Mardones et al. 1997 set 0.25 at five times
+    /// their typical error; from memory.)
+    pub class_sigma: f64,
     /// Components of the thick line; empty or one for a line without structure. Of a multiplet the
     /// main component alone is measured, and only if its nearest neighbour is at least three thin
     /// line widths away; otherwise there is no more than peak and integral.
@@ -115,6 +122,7 @@ impl Default for MeasureSettings {
         Self {
             detection_sigma: 5.0,
             dip_sigma: 3.0,
+            class_sigma: 3.0,
             thick_components: Vec::new(),
             thin_components: Vec::new(),
         }
@@ -124,9 +132,6 @@ impl Default for MeasureSettings {
 /// Reach of the smoothing kernel to either side, in widths of the thin line: half of it is about
 /// half of a self-absorbed line's peak.
 const REACH_PER_FWHM: f64 = 0.45;
-
-/// Reach of the kernel that measures a dip, in distances between the peaks, where that is more.
-const DIP_REACH: f64 = 0.5;
 
 /// A component is measured alone if its neighbours are at least this many thin line widths away.
 const ISOLATED_FROM: f64 = 3.0;
@@ -202,7 +207,7 @@ pub fn measure(
         thin_two_peaked: thin_two_peaked(thin, &thin_noise, thin_line, settings),
         asymmetry: about.as_ref().and_then(About::asymmetry),
         skewness: about.as_ref().and_then(About::skewness),
-        profile: class(delta_v),
+        profile: class(delta_v, settings.class_sigma),
         v_closed_form_km_s: two
             .as_ref()
             .zip(detected)
@@ -214,12 +219,17 @@ fn estimate(value: f64, err: f64) -> Estimate {
     Estimate { value, err }
 }
 
-fn class(delta_v: Option<Estimate>) -> ProfileClass {
-    match delta_v {
-        None => ProfileClass::Undetected,
-        Some(delta_v) if delta_v.value < -CLASS_LIMIT => ProfileClass::Blue,
-        Some(delta_v) if delta_v.value > CLASS_LIMIT => ProfileClass::Red,
-        Some(_) => ProfileClass::Neither,
+/// Blue or red where the velocity difference is beyond the limit and its sign is certain.
+fn class(delta_v: Option<Estimate>, sigma: f64) -> ProfileClass {
+    let Some(Estimate { value, err }) = delta_v else {
+        return ProfileClass::Undetected;
+    };
+    if value.abs() <= CLASS_LIMIT || value.abs() < sigma * err {
+        ProfileClass::Neither
+    } else if value < 0.0 {
+        ProfileClass::Blue
+    } else {
+        ProfileClass::Red
     }
 }
 
@@ -352,286 +362,5 @@ impl Span {
             },
             offset_km_s: main.offset_km_s,
         })
-    }
-}
-
-/// Extrema of a smoothed line.
-struct Profile<'a> {
-    spectrum: &'a Spectrum,
-    noise: &'a ChannelNoise<'a>,
-    extrema: Vec<Extremum>,
-    reach_km_s: f64,
-    dip_sigma: f64,
-}
-
-/// Two peaks and the dip between them.
-struct Peaks<'a> {
-    blue: &'a Extremum,
-    dip: Extremum,
-    red: &'a Extremum,
-}
-
-impl Profile<'_> {
-    /// Velocity of the highest peak.
-    ///
-    /// Its error holds what noise moves it by and what noise would have moved it to another peak:
-    /// of a peak j lower by D with standard error s, that is the share Phi(-D/s) of repeated
-    /// observations.
-    fn velocity(&self) -> Option<Estimate> {
-        let top = highest(&self.extrema)?;
-        let own = top.velocity_err(self.noise).powi(2);
-        let normal = Normal::standard();
-        let rivals: Vec<(f64, f64, f64)> = self
-            .extrema
-            .iter()
-            .filter(|other| other.is_maximum && other.v_km_s != top.v_km_s)
-            .map(|other| {
-                let weights = difference(&top.value_weights, &other.value_weights);
-                let standing = (top.value_k - other.value_k) / self.noise.error(&weights);
-                (
-                    normal.cdf(-standing),
-                    other.v_km_s,
-                    other.velocity_err(self.noise).powi(2),
-                )
-            })
-            .filter(|rival| rival.0 > 1e-6)
-            .collect();
-        let top_share = (1.0 - rivals.iter().map(|rival| rival.0).sum::<f64>()).max(0.5);
-        let total = top_share + rivals.iter().map(|rival| rival.0).sum::<f64>();
-        let all = || {
-            std::iter::once((top_share, top.v_km_s, own))
-                .chain(rivals.iter().copied())
-                .map(|(share, v, variance)| (share / total, v, variance))
-        };
-        let mean: f64 = all().map(|(share, v, _)| share * v).sum();
-        let variance: f64 = all()
-            .map(|(share, v, variance)| share * (variance + (v - mean).powi(2)))
-            .sum();
-        Some(estimate(top.v_km_s, variance.sqrt()))
-    }
-
-    /// The highest peak and the one that the most significant dip parts from it.
-    fn two_peaks(&self) -> Option<Peaks<'_>> {
-        let top = highest(&self.extrema)?;
-        let mut best: Option<(f64, Peaks)> = None;
-        for other in self.extrema.iter().filter(|other| other.is_maximum) {
-            let (blue, red) = if other.v_km_s < top.v_km_s {
-                (other, top)
-            } else {
-                (top, other)
-            };
-            let Some(dip) = self
-                .extrema
-                .iter()
-                .filter(|dip| {
-                    !dip.is_maximum && dip.v_km_s > blue.v_km_s && dip.v_km_s < red.v_km_s
-                })
-                .min_by(|a, b| a.value_k.total_cmp(&b.value_k))
-            else {
-                continue;
-            };
-            let depth = other.value_k - dip.value_k;
-            let depth_err = self
-                .noise
-                .error(&difference(&other.value_weights, &dip.value_weights));
-            let significance = depth / depth_err;
-            let stands_out = other.value_k >= self.dip_sigma * other.value_err(self.noise);
-            if significance >= self.dip_sigma
-                && stands_out
-                && best.as_ref().is_none_or(|found| significance > found.0)
-            {
-                let dip = self.whole_dip(blue, red).unwrap_or_else(|| dip.clone());
-                best = Some((significance, Peaks { blue, dip, red }));
-            }
-        }
-        best.map(|found| found.1)
-    }
-
-    /// The dip smoothed over its own extent: in a wide one, noise makes several minima.
-    fn whole_dip(&self, blue: &Extremum, red: &Extremum) -> Option<Extremum> {
-        let reach = DIP_REACH * (red.v_km_s - blue.v_km_s);
-        Smoothed::new(self.spectrum, reach.max(self.reach_km_s))
-            .extrema(blue.v_km_s, red.v_km_s)
-            .into_iter()
-            .filter(|extremum| !extremum.is_maximum)
-            .min_by(|a, b| a.value_k.total_cmp(&b.value_k))
-    }
-}
-
-impl Peaks<'_> {
-    fn estimates(&self, noise: &ChannelNoise) -> TwoPeaks {
-        let v = |at: &Extremum| estimate(at.v_km_s, at.velocity_err(noise));
-        let k = |at: &Extremum| estimate(at.value_k, at.value_err(noise));
-        TwoPeaks {
-            v_blue_km_s: v(self.blue),
-            v_red_km_s: v(self.red),
-            v_dip_km_s: v(&self.dip),
-            blue_k: k(self.blue),
-            red_k: k(self.red),
-            dip_k: k(&self.dip),
-        }
-    }
-
-    /// `T_blue`/`T_red`.
-    fn ratio(&self, noise: &ChannelNoise) -> Estimate {
-        let ratio = self.blue.value_k / self.red.value_k;
-        let weights: Vec<f64> = self
-            .blue
-            .value_weights
-            .iter()
-            .zip(&self.red.value_weights)
-            .map(|(blue, red)| (blue - ratio * red) / self.red.value_k)
-            .collect();
-        estimate(ratio, noise.error(&weights))
-    }
-
-    /// v = s^2/(`v_red` - `v_blue`) ln[(1 + e `T_BD`/`T_D`)/(1 + e `T_RD`/`T_D`)], s = FWHM/sqrt(8 ln 2) of the
-    /// thin line, `T_D` the dip's temperature, `T_BD` and `T_RD` the peaks' heights above it (Myers et
-    /// al. 1996, eq. 9, from memory). `None` where the dip is not above zero.
-    fn closed_form(&self, line: &ThinLine, noise: &ChannelNoise) -> Option<Estimate> {
-        use std::f64::consts::E;
-        let (dip, blue, red) = (self.dip.value_k, self.blue.value_k, self.red.value_k);
-        if dip <= self.dip.value_err(noise) {
-            return None;
-        }
-        let sigma = line.fwhm_km_s.value / FWHM_PER_SIGMA;
-        let apart = self.red.v_km_s - self.blue.v_km_s;
-        let (above_blue, above_red) = (1.0 + E * (blue - dip) / dip, 1.0 + E * (red - dip) / dip);
-        let scale = sigma * sigma / apart;
-        let v = scale * (above_blue / above_red).ln();
-        // d/dT_B, d/dT_R, d/dT_D of the logarithm, with d(above)/dT_D = -e T/T_D^2.
-        let by_blue = scale * E / (dip * above_blue);
-        let by_red = -scale * E / (dip * above_red);
-        let by_dip = -(by_blue * blue + by_red * red) / dip;
-        let by_apart = -v / apart;
-        let weights: Vec<f64> = (0..self.blue.value_weights.len())
-            .map(|channel| {
-                by_blue * self.blue.value_weights[channel]
-                    + by_red * self.red.value_weights[channel]
-                    + by_dip * self.dip.value_weights[channel]
-                    + by_apart
-                        * (self.red.velocity_weights[channel] - self.blue.velocity_weights[channel])
-            })
-            .collect();
-        let by_width = 2.0 * v / line.fwhm_km_s.value * line.fwhm_km_s.err;
-        Some(estimate(v, noise.error(&weights).hypot(by_width)))
-    }
-}
-
-/// Sums of the thick line about the thin line's velocity.
-struct About<'a> {
-    spectrum: &'a Spectrum,
-    noise: &'a ChannelNoise<'a>,
-    channels: Vec<usize>,
-    centre_km_s: f64,
-    centre_err_km_s: f64,
-    /// Temperature at the centre, K.
-    at_centre_k: f64,
-    integral: f64,
-}
-
-impl<'a> About<'a> {
-    /// `None` where the centre is outside the span or the integral is not significant.
-    fn new(
-        spectrum: &'a Spectrum,
-        noise: &'a ChannelNoise<'a>,
-        smoothed: &Smoothed,
-        span: Span,
-        line: &ThinLine,
-        detection_sigma: f64,
-    ) -> Option<Self> {
-        let centre_km_s = line.v_km_s.value + span.offset_km_s;
-        if centre_km_s <= span.window.low_km_s || centre_km_s >= span.window.high_km_s {
-            return None;
-        }
-        let channels: Vec<usize> = (0..spectrum.len())
-            .filter(|&channel| {
-                spectrum.is_usable(channel)
-                    && span.window.contains(spectrum.velocity_km_s()[channel])
-            })
-            .collect();
-        let mut weights = vec![0.0; spectrum.len()];
-        let mut integral = 0.0;
-        for &channel in &channels {
-            weights[channel] = spectrum.width_km_s()[channel];
-            integral += weights[channel] * spectrum.temperature_k()[channel];
-        }
-        if integral < detection_sigma * noise.error(&weights) {
-            return None;
-        }
-        Some(Self {
-            spectrum,
-            noise,
-            channels,
-            centre_km_s,
-            centre_err_km_s: line.v_km_s.err,
-            at_centre_k: smoothed.value(centre_km_s)?,
-            integral,
-        })
-    }
-
-    /// Sum over channels of a function of velocity from the centre, times T dv.
-    fn sum(&self, of: impl Fn(usize) -> f64) -> f64 {
-        self.channels
-            .iter()
-            .map(|&channel| {
-                of(channel)
-                    * self.spectrum.temperature_k()[channel]
-                    * self.spectrum.width_km_s()[channel]
-            })
-            .sum()
-    }
-
-    /// Error from the channels' weights and from the centre's uncertainty.
-    fn error(&self, weight: impl Fn(usize) -> f64, by_centre: f64) -> f64 {
-        let mut weights = vec![0.0; self.spectrum.len()];
-        for &channel in &self.channels {
-            weights[channel] = weight(channel) * self.spectrum.width_km_s()[channel];
-        }
-        self.noise
-            .error(&weights)
-            .hypot(by_centre * self.centre_err_km_s)
-    }
-
-    /// Share of a channel that is blue of the centre minus the share that is red of it.
-    fn side(&self, channel: usize) -> f64 {
-        let from_centre = self.spectrum.velocity_km_s()[channel] - self.centre_km_s;
-        (-2.0 * from_centre / self.spectrum.width_km_s()[channel]).clamp(-1.0, 1.0)
-    }
-
-    /// A = (`I_blue` - `I_red`)/(`I_blue` + `I_red`); dA/dv = 2 T(v)/I (Jackson et al. 2019).
-    fn asymmetry(&self) -> Option<Estimate> {
-        let value = self.sum(|channel| self.side(channel)) / self.integral;
-        let err = self.error(
-            |channel| (self.side(channel) - value) / self.integral,
-            2.0 * self.at_centre_k / self.integral,
-        );
-        err.is_finite().then_some(estimate(value, err))
-    }
-
-    /// `m_3`/`m_2`^(3/2) with `m_k` = `sum_i` `T_i` `dv_i` (`v_i` - v)^k/`sum_i` `T_i` `dv_i`, v the thin line's velocity
-    /// (not the mean): `None` where noise leaves no positive second moment.
-    fn skewness(&self) -> Option<Estimate> {
-        let from_centre =
-            |channel: usize| self.spectrum.velocity_km_s()[channel] - self.centre_km_s;
-        let moment = |k: i32| self.sum(|channel| from_centre(channel).powi(k)) / self.integral;
-        let (m1, m2, m3) = (moment(1), moment(2), moment(3));
-        let m2_err = self.error(
-            |channel| (from_centre(channel).powi(2) - m2) / self.integral,
-            0.0,
-        );
-        if m2 <= 3.0 * m2_err {
-            return None;
-        }
-        let width = m2.sqrt();
-        let value = m3 / (m2 * width);
-        let err = self.error(
-            |channel| {
-                let u = from_centre(channel);
-                ((u.powi(3) - m3) / (m2 * width) - 1.5 * value * (u * u - m2) / m2) / self.integral
-            },
-            -3.0 / width + 3.0 * value * m1 / m2,
-        );
-        Some(estimate(value, err))
     }
 }

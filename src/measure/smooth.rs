@@ -10,8 +10,11 @@ use crate::spectrum::Spectrum;
 /// Step of numerical derivatives of the smoothed profile, in half-widths of the kernel.
 const DERIVATIVE_STEP: f64 = 0.02;
 
-/// Halvings of the bracket of an extremum: beyond rounding of the derivative.
-const HALVINGS: usize = 40;
+/// Most steps toward an extremum; regula falsi takes about eight.
+const MOST_STEPS: usize = 60;
+
+/// Width of the last bracket of an extremum, in half-widths of the kernel.
+const BRACKET: f64 = 1e-12;
 
 /// A profile smoothed over `reach_km_s` to either side.
 pub(super) struct Smoothed<'a> {
@@ -46,54 +49,50 @@ impl<'a> Smoothed<'a> {
         self.reach_km_s
     }
 
-    /// Calls `take` with every channel near v and its weight; `None` where too few are usable.
-    fn weigh(&self, v: f64, mut take: impl FnMut(usize, f64)) -> Option<()> {
+    /// Calls `take` with every usable channel near v, its distance u from v in reaches and its
+    /// kernel weight.
+    fn near(&self, v: f64, mut take: impl FnMut(usize, f64, f64)) {
         let velocity = self.spectrum.velocity_km_s();
         let width = self.spectrum.width_km_s();
         let reach = self.reach_km_s;
         let first = velocity.partition_point(|&x| x <= v - reach);
-        let end = velocity.partition_point(|&x| x < v + reach);
-        let kernel = |channel: usize| {
+        for channel in first..velocity.len() {
             let u = (velocity[channel] - v) / reach;
-            let rest = 1.0 - u * u;
-            (u, rest * rest * rest * width[channel])
-        };
-        let mut moments = [0.0; 5];
-        let mut usable = 0;
-        for channel in (first..end).filter(|&channel| self.spectrum.is_usable(channel)) {
-            let (u, mut term) = kernel(channel);
-            for moment in &mut moments {
-                *moment += term;
-                term *= u;
+            if u >= 1.0 {
+                break;
             }
-            usable += 1;
+            if self.spectrum.is_usable(channel) {
+                let rest = 1.0 - u * u;
+                take(channel, u, rest * rest * rest * width[channel]);
+            }
         }
-        let [s0, s1, s2, s3, s4] = moments;
-        // First row of the inverse of the moment matrix.
-        let (a, b, c) = (s2 * s4 - s3 * s3, s2 * s3 - s1 * s4, s1 * s3 - s2 * s2);
-        let determinant = s0 * a + s1 * b + s2 * c;
-        // Channels on one side only, or two of them, leave the parabola open.
-        if usable < 4 || determinant <= 1e-6 * s0 * s0 * s0 {
-            return None;
-        }
-        for channel in (first..end).filter(|&channel| self.spectrum.is_usable(channel)) {
-            let (u, k) = kernel(channel);
-            take(channel, k * (a + u * (b + u * c)) / determinant);
-        }
-        Some(())
     }
 
-    /// Smoothed temperature at v, K.
+    /// Smoothed temperature at v, K; `None` where too few channels are usable.
     pub fn value(&self, v: f64) -> Option<f64> {
         let temperature = self.spectrum.temperature_k();
-        let mut sum = 0.0;
-        self.weigh(v, |channel, weight| sum += weight * temperature[channel])?;
-        Some(sum)
+        let mut moments = Moments::default();
+        let mut sums = [0.0; 3];
+        self.near(v, |channel, u, k| {
+            moments.add(u, k);
+            let term = k * temperature[channel];
+            sums[0] += term;
+            sums[1] += term * u;
+            sums[2] += term * u * u;
+        });
+        let [a, b, c] = moments.value_row()?;
+        Some(a * sums[0] + b * sums[1] + c * sums[2])
     }
 
     /// Weights of all channels at v, times `factor`, added to `weights`.
     pub fn add_weights(&self, v: f64, factor: f64, weights: &mut [f64]) -> Option<()> {
-        self.weigh(v, |channel, weight| weights[channel] += factor * weight)
+        let mut moments = Moments::default();
+        self.near(v, |_, u, k| moments.add(u, k));
+        let [a, b, c] = moments.value_row()?;
+        self.near(v, |channel, u, k| {
+            weights[channel] += factor * k * (a + u * (b + u * c));
+        });
+        Some(())
     }
 
     fn slope(&self, v: f64) -> Option<f64> {
@@ -125,17 +124,32 @@ impl<'a> Smoothed<'a> {
         found
     }
 
-    /// The extremum in a bracket of opposite slopes.
+    /// The extremum in a bracket of opposite slopes, by regula falsi that halves the weight of an end
+    /// that stays.
     fn refine(&self, mut low: f64, mut high: f64, is_maximum: bool) -> Option<Extremum> {
-        for _ in 0..HALVINGS {
-            let middle = 0.5 * (low + high);
-            if (self.slope(middle)? > 0.0) == is_maximum {
-                low = middle;
+        let (mut at_low, mut at_high) = (self.slope(low)?, self.slope(high)?);
+        let mut v = 0.5 * (low + high);
+        for _ in 0..MOST_STEPS {
+            if high - low <= BRACKET * self.reach_km_s || at_low == at_high {
+                break;
+            }
+            let next = (low * at_high - high * at_low) / (at_high - at_low);
+            let moved = (next - v).abs();
+            v = next.clamp(low, high);
+            let slope = self.slope(v)?;
+            if slope == 0.0 || moved <= BRACKET * self.reach_km_s {
+                break;
+            }
+            if (slope > 0.0) == is_maximum {
+                low = v;
+                at_low = slope;
+                at_high *= 0.5;
             } else {
-                high = middle;
+                high = v;
+                at_high = slope;
+                at_low *= 0.5;
             }
         }
-        let v = 0.5 * (low + high);
         let wide = 0.1 * self.reach_km_s;
         let curvature = (self.slope(v + wide)? - self.slope(v - wide)?) / (2.0 * wide);
         if (curvature < 0.0) != is_maximum || curvature == 0.0 {
@@ -157,6 +171,36 @@ impl<'a> Smoothed<'a> {
             value_weights,
             velocity_weights,
         })
+    }
+}
+
+/// Moments of the kernel weights, `sum` k u^j for j = 0 to 4.
+#[derive(Default)]
+struct Moments {
+    sums: [f64; 5],
+    channels: usize,
+}
+
+impl Moments {
+    fn add(&mut self, u: f64, k: f64) {
+        let mut term = k;
+        for sum in &mut self.sums {
+            *sum += term;
+            term *= u;
+        }
+        self.channels += 1;
+    }
+
+    /// First row of the inverse of the moment matrix: the parabola's value at u = 0. `None` where
+    /// channels on one side only, or fewer than four, leave the parabola open.
+    fn value_row(&self) -> Option<[f64; 3]> {
+        let [s0, s1, s2, s3, s4] = self.sums;
+        let (a, b, c) = (s2 * s4 - s3 * s3, s2 * s3 - s1 * s4, s1 * s3 - s2 * s2);
+        let determinant = s0 * a + s1 * b + s2 * c;
+        if self.channels < 4 || determinant <= 1e-6 * s0 * s0 * s0 {
+            return None;
+        }
+        Some([a / determinant, b / determinant, c / determinant])
     }
 }
 

@@ -137,9 +137,10 @@ pub(super) fn robust_start(channels: &Channels, order: usize) -> Option<Clipped>
     let best = starts
         .into_iter()
         .take(3)
-        .filter_map(|(_, line)| concentrate(channels, line, order, core(channels.len()), 12))
+        .filter_map(|(_, line)| concentrate(&coarse, line, order, core(count), 12))
         .min_by(|a, b| a.0.total_cmp(&b.0))?
         .1;
+    let best = concentrate(channels, best, order, core(channels.len()), 6)?.1;
     // The usual last step: least squares on all that the start does not call outliers.
     let residuals = channels.residuals(&best);
     let scale = core_scale(&residuals, CORE_CLIP);

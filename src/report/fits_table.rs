@@ -9,7 +9,7 @@ use std::io::Write;
 
 use super::{Column, Kind, ReportError, Table, Value};
 
-const BLOCK: usize = 2880;
+pub(super) const BLOCK: usize = 2880;
 const CARD: usize = 80;
 /// Characters between the quotes of one card's text.
 const TEXT_ROOM: usize = 67;
@@ -162,7 +162,7 @@ fn keyword(name: &str) -> Option<String> {
 }
 
 fn has_escapes(table: &Table) -> bool {
-    let cells = table.rows().iter().flat_map(|row| row.values());
+    let cells = table.rows().iter().flat_map(super::Row::values);
     let values = cells.chain(table.meta.iter().map(|(_, value)| value));
     let mut texts = values
         .filter_map(Value::text)
@@ -189,7 +189,7 @@ fn ascii(text: &str) -> String {
 
 /// The cards of one header and data unit.
 #[derive(Default)]
-struct Header {
+pub(super) struct Header {
     cards: String,
 }
 
@@ -206,16 +206,16 @@ impl Header {
             .any(|start| self.cards[start..].starts_with(&name))
     }
 
-    fn logical(&mut self, keyword: &str, value: bool) {
+    pub(super) fn logical(&mut self, keyword: &str, value: bool) {
         let value = if value { "T" } else { "F" };
         self.card(&format!("{keyword:<8}= {value:>20}"));
     }
 
-    fn integer(&mut self, keyword: &str, value: u64) {
+    pub(super) fn integer(&mut self, keyword: &str, value: u64) {
         self.card(&format!("{keyword:<8}= {value:>20}"));
     }
 
-    fn value(&mut self, keyword: &str, value: &Value) {
+    pub(super) fn value(&mut self, keyword: &str, value: &Value) {
         match value {
             Value::Text(text) => self.text(keyword, text),
             Value::Real(number) => {
@@ -228,7 +228,7 @@ impl Header {
     }
 
     /// A text value, over CONTINUE cards where it is long (standard 4.0, section 4.2.1.2).
-    fn text(&mut self, keyword: &str, text: &str) {
+    pub(super) fn text(&mut self, keyword: &str, text: &str) {
         let quoted = ascii(text).replace('\'', "''");
         let pieces = pieces(&quoted);
         let last = pieces.len() - 1;
@@ -243,7 +243,7 @@ impl Header {
         }
     }
 
-    fn commentary(&mut self, keyword: &str, text: &str) {
+    pub(super) fn commentary(&mut self, keyword: &str, text: &str) {
         let text = ascii(text);
         for start in (0..text.len()).step_by(CARD - 8) {
             let end = text.len().min(start + CARD - 8);
@@ -252,7 +252,7 @@ impl Header {
     }
 
     /// The header's bytes with its checksums, padded to whole blocks.
-    fn unit(&self, data: &[u8]) -> Vec<u8> {
+    pub(super) fn unit(&self, data: &[u8]) -> Vec<u8> {
         let data_sum = ones_complement_sum(0, data);
         let bytes = |checksum: &str| {
             let mut header = Self {

@@ -14,6 +14,7 @@ pub mod files;
 mod fits_table;
 mod json;
 mod rounding;
+pub mod spectra;
 mod summary;
 mod table;
 
@@ -84,6 +85,18 @@ pub enum ReportError {
         /// The length it should have.
         expected: usize,
     },
+    /// A FITS image has one increment, but the channels do not lie evenly.
+    #[error(
+        "channel {channel} (counted from 1) at {found_km_s} km/s, expected {expected_km_s} km/s on an even axis"
+    )]
+    UnevenAxis {
+        /// Channel, from 1.
+        channel: usize,
+        /// Its centre, km/s.
+        found_km_s: f64,
+        /// Where an even axis has it, km/s.
+        expected_km_s: f64,
+    },
     /// A figure could not be drawn.
     #[error("the figure could not be drawn as {format}: {reason}")]
     Drawing {
@@ -116,6 +129,7 @@ impl ReportError {
             Self::File { .. } => {
                 Some("check that the directory exists, is writable and has space left".to_owned())
             }
+            Self::UnevenAxis { .. } => Some("write the spectrum as CSV".to_owned()),
             Self::TooManyColumns { .. } => Some("write the table as ECSV".to_owned()),
             _ => None,
         }

@@ -9,7 +9,7 @@ const PLAIN_FROM: f64 = 1e-3;
 const PLAIN_BELOW: f64 = 1e6;
 
 /// Significant digits of a value without an error.
-const DIGITS_WITHOUT_ERROR: i32 = 4;
+const DIGITS_WITHOUT_ERROR: i32 = 3;
 
 /// A value and its standard error: `0.48 +- 0.03`, `(1.2 +- 0.4)e-5`.
 ///
@@ -57,7 +57,7 @@ pub fn rounded_interval(value: f64, low: f64, high: f64) -> String {
     with_power(&text, power)
 }
 
-/// A value without an error, to four significant digits: `12.35`, `1.235e-5`.
+/// A value without an error, to three significant digits: `12.3`, `235000`, `1.23e-5`.
 pub fn rounded_plain(value: f64) -> String {
     if !value.is_finite() {
         return "-".to_owned();
@@ -65,12 +65,12 @@ pub fn rounded_plain(value: f64) -> String {
     if value == 0.0 {
         return "0".to_owned();
     }
-    // The exponent after rounding, so that 9.99996 becomes 10.00.
+    // The exponent after rounding, so that 9.996 becomes 10.0.
     let digits = usize::try_from(DIGITS_WITHOUT_ERROR - 1).unwrap_or(0);
     let exponent = printed_exponent(&format!("{:.digits$e}", value.abs()));
     let power = shown_power(value.abs());
     let place = exponent + 1 - DIGITS_WITHOUT_ERROR - power;
-    let text = scaled(value, power, place.min(0));
+    let text = scaled(value, power, place);
     if power == 0 {
         text
     } else {
@@ -163,8 +163,8 @@ mod tests {
             (1.234e-5, 4.1e-5, "(1 +- 4)e-5"),
             (2.5e7, 3.2e5, "(2.50 +- 0.03)e7"),
             (999_999.0, 400.0, "1000000 +- 400"),
-            (5.0, 0.0, "5.000"),
-            (5.0, f64::NAN, "5.000"),
+            (5.0, 0.0, "5.00"),
+            (5.0, f64::NAN, "5.00"),
             (f64::NAN, 1.0, "-"),
         ] {
             assert_eq!(rounded(value, err), expected, "{value} {err}");
@@ -178,21 +178,21 @@ mod tests {
             (0.48, 0.461, 0.532, "0.480 -0.019 +0.052"),
             (0.48, 0.50, 0.60, "0.48 (0.50 to 0.60)"),
             (1.2e-5, 0.8e-5, 2.0e-5, "(1.2 -0.4 +0.8)e-5"),
-            (0.48, f64::NEG_INFINITY, 0.6, "0.4800"),
+            (0.48, f64::NEG_INFINITY, 0.6, "0.480"),
         ] {
             assert_eq!(rounded_interval(value, low, high), expected, "{value}");
         }
     }
 
     #[test]
-    fn values_without_error_have_four_digits() {
+    fn values_without_error_have_three_digits() {
         for (value, expected) in [
-            (12.3456, "12.35"),
-            (123_456.0, "123456"),
-            (1.234_56e-5, "1.235e-5"),
+            (12.3456, "12.3"),
+            (234_560.0, "235000"),
+            (1.234_56e-5, "1.23e-5"),
             (0.0, "0"),
-            (-1.0, "-1.000"),
-            (9.999_96, "10.00"),
+            (-1.0, "-1.00"),
+            (9.996, "10.0"),
         ] {
             assert_eq!(rounded_plain(value), expected, "{value}");
         }

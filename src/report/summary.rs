@@ -3,6 +3,7 @@
 use std::fmt::Write as _;
 
 use super::columns::{Group, QUANTITIES, Quantity, Uncertainty};
+use super::csv::cell;
 use super::{Row, Value, rounded, rounded_interval, rounded_plain};
 
 /// Columns that the text is wrapped at.
@@ -42,19 +43,18 @@ pub fn summary(row: &Row, cautions: &[String]) -> String {
 
 /// `clump: HCO+ 1-0 (thick) and H13CO+ 1-0 (thin)`.
 fn title(row: &Row) -> String {
-    let cell = |name| row.get(name).ok().and_then(Value::text).unwrap_or("?");
-    let offset = |name| row.get(name).ok().and_then(Value::number);
+    let name = |name| row.get(name).ok().and_then(Value::text).unwrap_or("?");
+    // Given, not measured: as precise as they are.
+    let offset = |name| row.get(name).ok().filter(|value| **value != Value::Empty);
     let place = match (offset("dx_arcsec"), offset("dy_arcsec")) {
-        (Some(dx), Some(dy)) => {
-            format!(" at ({}, {}) arcsec", rounded_plain(dx), rounded_plain(dy))
-        }
+        (Some(dx), Some(dy)) => format!(" at ({}, {}) arcsec", cell(dx), cell(dy)),
         _ => String::new(),
     };
     format!(
         "{}{place}: {} (thick) and {} (thin)\n",
-        one_line(cell("id")),
-        one_line(cell("thick_line")),
-        one_line(cell("thin_line"))
+        one_line(name("id")),
+        one_line(name("thick_line")),
+        one_line(name("thin_line"))
     )
 }
 

@@ -6,6 +6,7 @@ use crate::prepare::scale::ScaleError;
 use crate::prepare::{PairError, PrepareError};
 use crate::read::ReadError;
 use crate::report::ReportError;
+use crate::simulate::SimulateError;
 use std::path::PathBuf;
 
 /// Why a run cannot be done.
@@ -86,6 +87,9 @@ pub enum RunError {
     /// A pair that cannot be fitted.
     #[error(transparent)]
     Fit(#[from] FitError),
+    /// A truth that cannot be simulated.
+    #[error(transparent)]
+    Simulate(#[from] SimulateError),
     /// A product that cannot be written.
     #[error(transparent)]
     Report(#[from] ReportError),
@@ -134,6 +138,7 @@ impl RunError {
             Self::Scale(error) => error.hint(),
             Self::Prepare { error, .. } => error.hint(),
             Self::Fit(error) => error.hint(),
+            Self::Simulate(error) => error.hint(),
             Self::Report(error) => error.hint(),
             Self::Internal(_) => {
                 Some("please report this with the input that caused it".to_owned())

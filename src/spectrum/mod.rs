@@ -141,7 +141,7 @@ impl Spectrum {
     }
 
     /// The same spectrum with each temperature (K) changed by a function of channel and value;
-    /// masked channels stay masked.
+    /// masked channels stay masked, and so becomes what is not finite afterwards.
     #[must_use]
     pub fn map_temperature_k(&self, change: impl Fn(usize, f64) -> f64) -> Self {
         let temperature_k = self
@@ -149,6 +149,7 @@ impl Spectrum {
             .iter()
             .enumerate()
             .map(|(channel, &value)| change(channel, value))
+            .map(|value| if value.is_finite() { value } else { f64::NAN })
             .collect();
         Self {
             velocity_km_s: self.velocity_km_s.clone(),

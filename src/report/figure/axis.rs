@@ -36,16 +36,15 @@ impl Ticks {
             .map(|factor| factor * power)
             .find(|step| *step >= wanted * (1.0 - 1e-9))
             .unwrap_or(10.0 * power);
-        let decimals = (-step.log10().floor()).max(0.0);
+        // Finite and small: a step's power of ten.
+        #[allow(clippy::cast_possible_truncation, clippy::cast_sign_loss)]
+        let decimals = (-step.log10().floor()).max(0.0) as usize;
         let first = (low / step - 1e-9).ceil();
         let values = (0..=most)
             .map(|index| (first + index as f64) * step)
             .take_while(|value| *value <= high + 1e-9 * step)
             .collect();
-        Self {
-            values,
-            decimals: decimals as usize,
-        }
+        Self { values, decimals }
     }
 
     pub(super) fn label(&self, value: f64) -> String {

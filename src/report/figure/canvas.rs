@@ -12,8 +12,8 @@ use plotters::style::{
     Color, FontDesc, FontFamily, FontTransform, RGBColor, ShapeStyle, TextStyle,
 };
 
-use super::style::{POINT_MM, Stroke};
-use super::text::{self, Spans, Weight};
+use super::style::{Look, POINT_MM, Stroke};
+use super::text::{self, Spans};
 use crate::report::ReportError;
 
 const UNITS_PER_MM: f64 = 100.0;
@@ -26,14 +26,6 @@ pub(super) enum Align {
     Start,
     Middle,
     End,
-}
-
-/// Size, weight and colour of a text.
-#[derive(Clone, Copy, Debug)]
-pub(super) struct Look {
-    pub(super) size_pt: f64,
-    pub(super) weight: Weight,
-    pub(super) color: RGBColor,
 }
 
 pub(super) struct Canvas<'a> {

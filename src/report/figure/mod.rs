@@ -9,6 +9,7 @@
 mod axis;
 mod canvas;
 mod export;
+mod layout;
 mod pair;
 mod style;
 mod text;

@@ -1,64 +1,26 @@
-//! Where everything of a pair's figure stands, and its drawing.
+//! The drawing of a pair's figure on its laid-out page.
 
 use super::axis::{Axis, Ticks, extent};
-use super::canvas::{Align, Canvas, Look, page};
-use super::style::{
-    self, CAUTION, DATA, GUIDE, INK, LABEL_PT, NAME_PT, PAPER, POINT_MM, SOFT_INK, Stroke, TICK_PT,
-    TITLE_PT, V_LSR, V_LSR_BAND, WINDOW, ZERO, solid,
+use super::canvas::{Align, Canvas, page};
+use super::layout::{
+    Layout, MARGIN_MM, Note, PAGE_MM, PLOT_LEFT_MM, PLOT_RIGHT_MM, PanelPlace, PlacedNote, TICK_MM,
 };
-use super::text::{self, Spans, Weight};
+use super::style::{
+    self, CAUTION, CAUTION_HEADING, DATA, GUIDE, INK, LABEL, NAME, NOTE, PAPER, POINT_MM, SOFT_INK,
+    SOFT_LABEL, Stroke, TICK, TITLE, V_LSR, V_LSR_BAND, VALUE, WINDOW, ZERO, leading_mm, solid,
+};
+use super::text::{self, Spans};
 use super::{Curve, PairFigure, Panel};
 use crate::report::ReportError;
 use crate::spectrum::Window;
 
-type Drawn = Result<(), ReportError>;
-
-/// Width of the page: one column of a journal.
-const PAGE_MM: f64 = 88.0;
-const MARGIN_MM: f64 = 1.5;
-/// Left and right ends of the velocity axis.
-const PLOT_LEFT_MM: f64 = 12.6;
-const PLOT_RIGHT_MM: f64 = 85.8;
-const THICK_MM: f64 = 41.0;
-const THIN_MM: f64 = 25.0;
-const RESIDUAL_MM: f64 = 9.5;
-/// Gaps between a line and its residuals, and between the two lines.
-const INNER_GAP_MM: f64 = 1.4;
-const OUTER_GAP_MM: f64 = 3.0;
-const TICK_MM: f64 = 0.9;
-/// Baseline to baseline, in units of the text's size.
-const LEADING: f64 = 1.32;
 /// Length of a line's sample in the key, and the blank behind it.
 const SAMPLE_MM: f64 = 6.4;
 const SAMPLE_GAP_MM: f64 = 1.2;
 /// Baselines of the line's name and of the key below the top of a panel, and the key's spacing.
 const NAME_DEPTH_MM: f64 = 4.2;
 const KEY_LEADING_MM: f64 = 3.1;
-/// Cautions beyond this many are counted, not shown.
-const MOST_CAUTIONS: usize = 8;
-/// Part of the window's width that is shown on either side of it.
-const VIEW_MARGIN: f64 = 0.6;
-
-const TITLE: Look = look(TITLE_PT, Weight::SemiBold, INK);
-const NAME: Look = look(NAME_PT, Weight::SemiBold, INK);
-const LABEL: Look = look(LABEL_PT, Weight::Regular, INK);
-const SOFT_LABEL: Look = look(LABEL_PT, Weight::Regular, SOFT_INK);
-const VALUE: Look = look(LABEL_PT, Weight::SemiBold, INK);
-const TICK: Look = look(TICK_PT, Weight::Regular, INK);
-const NOTE: Look = look(TICK_PT, Weight::Regular, SOFT_INK);
-const CAUTION_HEADING: Look = look(LABEL_PT, Weight::SemiBold, CAUTION);
-
-const fn look(size_pt: f64, weight: Weight, color: plotters::style::RGBColor) -> Look {
-    Look {
-        size_pt,
-        weight,
-        color,
-    }
-}
-
-fn leading_mm(look: Look) -> f64 {
-    look.size_pt * POINT_MM * LEADING
-}
+type Drawn = Result<(), ReportError>;
 
 /// Draws the figure; the arrays have been checked.
 pub(super) fn draw(figure: &PairFigure) -> Result<String, ReportError> {
@@ -87,289 +49,6 @@ pub(super) fn draw(figure: &PairFigure) -> Result<String, ReportError> {
     })
 }
 
-/// Top and bottom of a line's axes and of its residuals', mm.
-struct PanelPlace {
-    top: f64,
-    bottom: f64,
-    residuals: Option<(f64, f64)>,
-}
-
-impl PanelPlace {
-    fn of(panel: &Panel, top: f64, height: f64) -> Self {
-        let bottom = top + height;
-        let from = bottom + INNER_GAP_MM;
-        Self {
-            top,
-            bottom,
-            residuals: (!panel.curves.is_empty()).then_some((from, from + RESIDUAL_MM)),
-        }
-    }
-
-    fn end(&self) -> f64 {
-        self.residuals.map_or(self.bottom, |(_, bottom)| bottom)
-    }
-}
-
-struct Layout {
-    title: Vec<String>,
-    velocity: Axis,
-    velocity_ticks: Ticks,
-    thick: PanelPlace,
-    thin: PanelPlace,
-    /// Names of the models in the order of their strokes.
-    models: Vec<String>,
-    notes: Vec<PlacedNote>,
-    /// Top of the block of numbers.
-    numbers_top: f64,
-    numbers: Numbers,
-    cautions_top: f64,
-    cautions: Vec<Vec<String>>,
-    height_mm: f64,
-}
-
-impl Layout {
-    fn of(figure: &PairFigure) -> Self {
-        let velocity = velocity_axis(figure);
-        let title = title_lines(&figure.source);
-        let top = MARGIN_MM + leading_mm(TITLE) * title.len() as f64 + 1.4;
-        let thick = PanelPlace::of(&figure.thick, top, THICK_MM);
-        let thin = PanelPlace::of(&figure.thin, thick.end() + OUTER_GAP_MM, THIN_MM);
-
-        let axis_end = thin.end() + TICK_MM + leading_mm(TICK) + leading_mm(LABEL) + 0.4;
-        let notes = placed_notes(figure, axis_end + leading_mm(NOTE));
-        let notes_end = notes.last().map_or(axis_end, |note| note.at.1) + 1.6;
-
-        let numbers = Numbers::of(&figure.numbers);
-        let numbers_top = notes_end;
-        let mut end = numbers_top;
-        if numbers.lines() > 0 {
-            end += 1.2 + leading_mm(LABEL) * numbers.lines() as f64 + 0.8;
-        }
-        let cautions = caution_lines(&figure.cautions);
-        let cautions_top = end;
-        if !cautions.is_empty() {
-            let lines = cautions.iter().map(Vec::len).sum::<usize>();
-            end += 1.2 + leading_mm(CAUTION_HEADING) + leading_mm(LABEL) * lines as f64 + 0.8;
-        }
-        Self {
-            title,
-            velocity,
-            velocity_ticks: Ticks::between(velocity.low, velocity.high, 8),
-            thick,
-            thin,
-            models: model_names(figure),
-            notes,
-            numbers_top,
-            numbers,
-            cautions_top,
-            cautions,
-            height_mm: end + MARGIN_MM,
-        }
-    }
-}
-
-/// The source's name on at most two lines.
-fn title_lines(source: &str) -> Vec<String> {
-    let room = PLOT_RIGHT_MM - PLOT_LEFT_MM;
-    let mut lines = text::wrap(source, room, TITLE.size_pt, TITLE.weight);
-    if lines.len() > 2 {
-        let rest = lines.split_off(1).join(" ");
-        lines.push(text::shortened(&rest, room, TITLE.size_pt, TITLE.weight));
-    }
-    lines
-}
-
-/// The windows of both lines with a margin, as far as there are data.
-fn velocity_axis(figure: &PairFigure) -> Axis {
-    let panels = [&figure.thick, &figure.thin];
-    let band = extent(panels.iter().flat_map(|panel| edges_of(panel))).unwrap_or((-1.0, 1.0));
-    let windows = panels
-        .iter()
-        .flat_map(|panel| [panel.window.low_km_s, panel.window.high_km_s])
-        .chain(figure.v_lsr_km_s.map(|v_lsr| v_lsr.value));
-    let (low, high) = extent(windows).unwrap_or(band);
-    let channel = panels
-        .iter()
-        .flat_map(|panel| panel.width_km_s.iter().copied())
-        .fold(0.0, f64::max);
-    let margin = (VIEW_MARGIN * (high - low)).max(8.0 * channel);
-    let (mut low, mut high) = ((low - margin).max(band.0), (high + margin).min(band.1));
-    if high <= low {
-        (low, high) = band;
-    }
-    Axis {
-        low,
-        high,
-        start_mm: PLOT_LEFT_MM,
-        end_mm: PLOT_RIGHT_MM,
-    }
-}
-
-fn edges_of(panel: &Panel) -> impl Iterator<Item = f64> {
-    let channels = panel.velocity_km_s.iter().zip(&panel.width_km_s);
-    channels.flat_map(|(velocity, width)| [velocity - width / 2.0, velocity + width / 2.0])
-}
-
-fn model_names(figure: &PairFigure) -> Vec<String> {
-    let mut names: Vec<String> = Vec::new();
-    for curve in figure.thick.curves.iter().chain(&figure.thin.curves) {
-        if !names.contains(&curve.label) {
-            names.push(curve.label.clone());
-        }
-    }
-    names
-}
-
-/// What the marks mean, in words below the axis.
-#[derive(Clone, Copy, PartialEq)]
-enum Note {
-    Data,
-    Window,
-    Systemic,
-    Thin,
-}
-
-impl Note {
-    fn words(self) -> &'static str {
-        match self {
-            Self::Data => "data",
-            Self::Window => "line window",
-            Self::Systemic => "systemic velocity \u{b1} error",
-            Self::Thin => "thin line's velocity",
-        }
-    }
-
-    fn mark_mm(self) -> f64 {
-        match self {
-            Self::Data | Self::Window => 4.0,
-            Self::Systemic | Self::Thin => 2.0,
-        }
-    }
-}
-
-struct PlacedNote {
-    note: Note,
-    /// Left end of the mark, and baseline.
-    at: (f64, f64),
-}
-
-fn placed_notes(figure: &PairFigure, first_baseline: f64) -> Vec<PlacedNote> {
-    const BETWEEN_MM: f64 = 2.4;
-    let mut shown = vec![Note::Data, Note::Window];
-    if figure.v_lsr_km_s.is_some() {
-        shown.push(Note::Systemic);
-    }
-    if figure.v_thin_km_s.is_some() {
-        shown.push(Note::Thin);
-    }
-    let (mut x, mut y) = (MARGIN_MM + 0.5, first_baseline);
-    let mut placed = Vec::new();
-    for note in shown {
-        let words = text::span_width_mm(note.words(), NOTE.size_pt, NOTE.weight);
-        let width = note.mark_mm() + 0.9 + words;
-        if x + width > PAGE_MM - MARGIN_MM {
-            (x, y) = (MARGIN_MM + 0.5, y + leading_mm(NOTE));
-        }
-        placed.push(PlacedNote { note, at: (x, y) });
-        x += width + BETWEEN_MM;
-    }
-    placed
-}
-
-/// The block of numbers: two columns, the second after the first, where both fit, else one.
-struct Numbers {
-    entries: Vec<(Spans, Spans)>,
-    /// Entries of one column.
-    rows: usize,
-    /// Where labels and values of each column begin on the page.
-    places: Vec<(f64, f64)>,
-    /// Whether values stand below their labels.
-    values_below: bool,
-}
-
-const COLUMN_GAP_MM: f64 = 6.0;
-const NUMBERS_LEFT_MM: f64 = MARGIN_MM + 0.5;
-const NUMBERS_ROOM_MM: f64 = PAGE_MM - 2.0 * NUMBERS_LEFT_MM;
-/// Entries that are few enough for one column even where two would fit.
-const ONE_COLUMN: usize = 3;
-
-impl Numbers {
-    fn of(numbers: &[(String, String)]) -> Self {
-        let entries: Vec<_> = numbers
-            .iter()
-            .map(|(label, value)| (text::markup(label), text::number(value)))
-            .collect();
-        let half = entries.len().div_ceil(2);
-        let (two, two_width) = number_places(&entries, half);
-        if entries.len() > ONE_COLUMN && two_width <= NUMBERS_ROOM_MM {
-            return Self {
-                entries,
-                rows: half,
-                places: two,
-                values_below: false,
-            };
-        }
-        let (one, width) = number_places(&entries, entries.len());
-        let values_below = width > NUMBERS_ROOM_MM;
-        Self {
-            rows: entries.len(),
-            entries,
-            places: if values_below {
-                vec![(NUMBERS_LEFT_MM, NUMBERS_LEFT_MM + COLUMN_GAP_MM)]
-            } else {
-                one
-            },
-            values_below,
-        }
-    }
-
-    fn lines(&self) -> usize {
-        if self.values_below {
-            2 * self.rows
-        } else {
-            self.rows
-        }
-    }
-}
-
-/// Where labels and values begin in columns of so many rows, and the width of all columns.
-fn number_places(entries: &[(Spans, Spans)], rows: usize) -> (Vec<(f64, f64)>, f64) {
-    const BETWEEN_MM: f64 = 2.4;
-    let mut places = Vec::new();
-    let mut left = NUMBERS_LEFT_MM;
-    for column in entries.chunks(rows.max(1)) {
-        let label = widest(column.iter().map(|(label, _)| label), LABEL);
-        let value = widest(column.iter().map(|(_, value)| value), VALUE);
-        places.push((left, left + label + BETWEEN_MM));
-        left += label + BETWEEN_MM + value + COLUMN_GAP_MM;
-    }
-    (places, left - COLUMN_GAP_MM - NUMBERS_LEFT_MM)
-}
-
-fn widest<'a>(texts: impl Iterator<Item = &'a Spans>, look: Look) -> f64 {
-    texts
-        .map(|spans| text::width_mm(spans, look.size_pt, look.weight))
-        .fold(0.0, f64::max)
-}
-
-fn caution_lines(cautions: &[String]) -> Vec<Vec<String>> {
-    let room = PAGE_MM - 2.0 * MARGIN_MM - 3.4;
-    let wrapped = |caution: &str| text::wrap(caution, room, LABEL.size_pt, LABEL.weight);
-    let shown = if cautions.len() > MOST_CAUTIONS {
-        MOST_CAUTIONS - 1
-    } else {
-        cautions.len()
-    };
-    let mut lines: Vec<_> = cautions[..shown].iter().map(|c| wrapped(c)).collect();
-    if shown < cautions.len() {
-        lines.push(wrapped(&format!(
-            "{} more, listed in the tables.",
-            cautions.len() - shown
-        )));
-    }
-    lines
-}
-
 struct Sheet<'a, 'svg> {
     canvas: &'a Canvas<'svg>,
     figure: &'a PairFigure,
@@ -378,7 +57,7 @@ struct Sheet<'a, 'svg> {
 
 impl Sheet<'_, '_> {
     fn panel(&self, panel: &Panel, place: &PanelPlace, with_key: bool) -> Drawn {
-        let name = self.name(panel);
+        let name = name(panel);
         let name_width = text::width_mm(&name, NAME.size_pt, NAME.weight);
         let key = Key::of(if with_key { &self.layout.models } else { &[] }, name_width);
         let (temperature, key_left) = self.temperature_axis(panel, place, &key);
@@ -392,18 +71,19 @@ impl Sheet<'_, '_> {
         }
         self.window_bracket(panel.window, place.top)?;
         self.thin_marker(place.top)?;
+        let (unit, per_kelvin) = temperature_unit(&temperature);
         let ticks = Ticks::between(
-            temperature.low,
-            temperature.high,
+            temperature.low * per_kelvin,
+            temperature.high * per_kelvin,
             if with_key { 6 } else { 4 },
         );
         let labels = ticks
             .values
             .iter()
-            .map(|value| (*value, ticks.label(*value)));
+            .map(|value| (*value / per_kelvin, ticks.label(*value)));
         self.frame(&temperature, &labels.collect::<Vec<_>>())?;
-        let middle = (place.top + place.bottom) / 2.0;
-        let label = text::markup("T_{mb} (K)");
+        let middle = f64::midpoint(place.top, place.bottom);
+        let label = text::markup(&format!("T_{{mb}} ({unit})"));
         self.canvas
             .upward_text(&label, (MARGIN_MM + 2.4, middle), LABEL)?;
 
@@ -416,20 +96,6 @@ impl Sheet<'_, '_> {
         }
     }
 
-    fn name(&self, panel: &Panel) -> Spans {
-        let room = 0.46 * (PLOT_RIGHT_MM - PLOT_LEFT_MM);
-        let name = text::line_name(&panel.line_name);
-        if text::width_mm(&name, NAME.size_pt, NAME.weight) <= room {
-            return name;
-        }
-        text::plain(&text::shortened(
-            &panel.line_name,
-            room,
-            NAME.size_pt,
-            NAME.weight,
-        ))
-    }
-
     /// The temperature range of all that is shown, high enough for the name and the key to stand free;
     /// and whether the key stands on the left, below the name.
     fn temperature_axis(&self, panel: &Panel, place: &PanelPlace, key: &Key) -> (Axis, bool) {
@@ -439,7 +105,7 @@ impl Sheet<'_, '_> {
         } else {
             0.0
         };
-        let shown = self.shown_values(panel, view.low, view.high);
+        let shown = shown_values(panel, view.low, view.high);
         let (low, high) = shown.unwrap_or((0.0, 1.0));
         let low = low.min(0.0).min(-2.0 * noise);
         let high = high.max(3.0 * noise).max(low + f64::MIN_POSITIVE.max(1e-9));
@@ -451,10 +117,10 @@ impl Sheet<'_, '_> {
         // The upper end that leaves the top `depth` of the panel free between two places.
         let upper = |from: f64, to: f64, depth: f64| {
             let share = (depth / height).min(0.8);
-            let values = self.shown_values(panel, velocity(from), velocity(to));
+            let values = shown_values(panel, velocity(from), velocity(to));
             values.map_or(high, |(_, most)| (most - share * low) / (1.0 - share))
         };
-        let name_width = text::width_mm(&self.name(panel), NAME.size_pt, NAME.weight);
+        let name_width = text::width_mm(&name(panel), NAME.size_pt, NAME.weight);
         let base = (high + 0.1 * (high - low)).max(upper(
             PLOT_LEFT_MM,
             PLOT_LEFT_MM + name_width + 3.0,
@@ -483,26 +149,6 @@ impl Sheet<'_, '_> {
             end_mm: place.top,
         };
         (axis, key_left)
-    }
-
-    /// Extent of data and models between two velocities.
-    fn shown_values(&self, panel: &Panel, low: f64, high: f64) -> Option<(f64, f64)> {
-        let within =
-            move |velocity: f64, margin: f64| velocity + margin >= low && velocity - margin <= high;
-        let data = panel
-            .velocity_km_s
-            .iter()
-            .zip(&panel.width_km_s)
-            .zip(&panel.temperature_k)
-            .filter(|((velocity, width), _)| within(**velocity, **width / 2.0))
-            .map(|(_, temperature)| *temperature);
-        let models = panel.curves.iter().flat_map(|curve| {
-            let points = curve.velocity_km_s.iter().zip(&curve.temperature_k);
-            points
-                .filter(|(velocity, _)| within(**velocity, 0.0))
-                .map(|(_, temperature)| *temperature)
-        });
-        extent(data.chain(models))
     }
 
     /// The window, and guides at the ticks.
@@ -653,21 +299,12 @@ impl Sheet<'_, '_> {
 
     fn residuals(&self, panel: &Panel, top: f64, bottom: f64) -> Drawn {
         let view = &self.layout.velocity;
-        let channels = panel.velocity_km_s.iter().enumerate();
-        let in_view: Vec<_> = channels
-            .filter(|(_, velocity)| view.contains(**velocity))
-            .map(|(channel, _)| channel)
-            .collect();
-        let largest = panel
+        let shown = panel
             .curves
             .iter()
-            .flat_map(|curve| {
-                in_view
-                    .iter()
-                    .map(|channel| curve.residuals[*channel].abs())
-            })
-            .filter(|residual| residual.is_finite())
-            .fold(0.0, f64::max);
+            .flat_map(|curve| channels_within(panel, &curve.residuals, view.low, view.high));
+        let (low, high) = extent(shown).unwrap_or((0.0, 0.0));
+        let largest = high.max(-low);
         let (limit, tick) = residual_scale(largest);
         let axis = Axis {
             low: -limit,
@@ -692,7 +329,7 @@ impl Sheet<'_, '_> {
             (tick, format!("+{tick}\u{3c3}")),
         ];
         self.frame(&axis, &labels)?;
-        let middle = (top + bottom) / 2.0;
+        let middle = f64::midpoint(top, bottom);
         self.canvas
             .upward_text(&text::plain("residual"), (MARGIN_MM + 2.4, middle), NOTE)
     }
@@ -733,7 +370,7 @@ impl Sheet<'_, '_> {
             self.canvas
                 .text(&text::plain(&ticks.label(*tick)), at, Align::Middle, TICK)?;
         }
-        let middle = (PLOT_LEFT_MM + PLOT_RIGHT_MM) / 2.0;
+        let middle = f64::midpoint(PLOT_LEFT_MM, PLOT_RIGHT_MM);
         let label = text::markup("V_{LSR} (km/s)");
         let at = (middle, baseline + leading_mm(LABEL));
         self.canvas.text(&label, at, Align::Middle, LABEL)
@@ -854,6 +491,49 @@ impl Sheet<'_, '_> {
     }
 }
 
+/// The line's name, shortened where it would not leave room for the key.
+fn name(panel: &Panel) -> Spans {
+    let room = 0.46 * (PLOT_RIGHT_MM - PLOT_LEFT_MM);
+    let name = text::line_name(&panel.line_name);
+    if text::width_mm(&name, NAME.size_pt, NAME.weight) <= room {
+        return name;
+    }
+    text::plain(&text::shortened(
+        &panel.line_name,
+        room,
+        NAME.size_pt,
+        NAME.weight,
+    ))
+}
+
+/// Extent of data and models between two velocities.
+fn shown_values(panel: &Panel, low: f64, high: f64) -> Option<(f64, f64)> {
+    let data = channels_within(panel, &panel.temperature_k, low, high);
+    let models = panel.curves.iter().flat_map(|curve| {
+        let points = curve.velocity_km_s.iter().zip(&curve.temperature_k);
+        points
+            .filter(|(velocity, _)| (low..=high).contains(*velocity))
+            .map(|(_, temperature)| *temperature)
+    });
+    extent(data.chain(models))
+}
+
+/// Values of those channels that reach between two velocities.
+fn channels_within<'a>(
+    panel: &'a Panel,
+    values: &'a [f64],
+    low: f64,
+    high: f64,
+) -> impl Iterator<Item = f64> + 'a {
+    let channels = panel.velocity_km_s.iter().zip(&panel.width_km_s);
+    channels
+        .zip(values)
+        .filter(move |((velocity, width), _)| {
+            *velocity + *width / 2.0 >= low && *velocity - *width / 2.0 <= high
+        })
+        .map(|(_, value)| *value)
+}
+
 /// The models' names beside samples of their strokes.
 struct Key {
     labels: Vec<String>,
@@ -881,6 +561,16 @@ impl Key {
     /// How far down it reaches from the top of the panel, its first baseline given.
     fn depth(&self, first_baseline: f64) -> f64 {
         first_baseline + KEY_LEADING_MM * (self.labels.len().max(1) - 1) as f64 + 1.6
+    }
+}
+
+/// Unit that keeps a temperature axis' numbers short, and how many of it make a kelvin.
+fn temperature_unit(axis: &Axis) -> (&'static str, f64) {
+    const MILLIKELVIN_BELOW_K: f64 = 0.2;
+    if axis.high - axis.low < MILLIKELVIN_BELOW_K {
+        ("mK", 1000.0)
+    } else {
+        ("K", 1.0)
     }
 }
 
@@ -918,9 +608,8 @@ fn steps(panel: &Panel, values: &[f64]) -> Vec<Vec<(f64, f64)>> {
             open_end = f64::NAN;
             continue;
         }
-        // Also true at the start and behind a masked channel, where there is no open end.
-        let apart = !((low - open_end).abs() <= 0.5 * width);
-        if apart {
+        // At the start and behind a masked channel there is no open end.
+        if open_end.is_nan() || (low - open_end).abs() > 0.5 * width {
             runs.push(Vec::new());
         }
         if let Some(run) = runs.last_mut() {

@@ -5,6 +5,8 @@
 
 use plotters::style::RGBColor;
 
+use super::text::Weight;
+
 /// One printer's point in millimetres.
 pub(super) const POINT_MM: f64 = 25.4 / 72.0;
 
@@ -73,4 +75,68 @@ pub(super) const MODELS: [Stroke; 5] = [
 /// The stroke of the model with that index; strokes repeat after the fifth.
 pub(super) fn model(index: usize) -> Stroke {
     MODELS[index % MODELS.len()]
+}
+
+/// Size, weight and colour of a text.
+#[derive(Clone, Copy, Debug)]
+pub(super) struct Look {
+    pub(super) size_pt: f64,
+    pub(super) weight: Weight,
+    pub(super) color: RGBColor,
+}
+
+/// Baseline to baseline, in units of the text's size.
+pub(super) const LEADING: f64 = 1.32;
+
+pub(super) const TITLE: Look = look(TITLE_PT, Weight::SemiBold, INK);
+pub(super) const NAME: Look = look(NAME_PT, Weight::SemiBold, INK);
+pub(super) const LABEL: Look = look(LABEL_PT, Weight::Regular, INK);
+pub(super) const SOFT_LABEL: Look = look(LABEL_PT, Weight::Regular, SOFT_INK);
+pub(super) const VALUE: Look = look(LABEL_PT, Weight::SemiBold, INK);
+pub(super) const TICK: Look = look(TICK_PT, Weight::Regular, INK);
+pub(super) const NOTE: Look = look(TICK_PT, Weight::Regular, SOFT_INK);
+pub(super) const CAUTION_HEADING: Look = look(LABEL_PT, Weight::SemiBold, CAUTION);
+
+const fn look(size_pt: f64, weight: Weight, color: RGBColor) -> Look {
+    Look {
+        size_pt,
+        weight,
+        color,
+    }
+}
+
+pub(super) fn leading_mm(look: Look) -> f64 {
+    look.size_pt * POINT_MM * LEADING
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// CIE 1976 lightness, 0 to 100, of an sRGB colour (IEC 61966-2-1).
+    fn lightness(color: RGBColor) -> f64 {
+        let linear = |byte: u8| {
+            let value = f64::from(byte) / 255.0;
+            if value <= 0.04045 {
+                value / 12.92
+            } else {
+                ((value + 0.055) / 1.055).powf(2.4)
+            }
+        };
+        let RGBColor(red, green, blue) = color;
+        let luminance = 0.2126 * linear(red) + 0.7152 * linear(green) + 0.0722 * linear(blue);
+        116.0 * luminance.cbrt() - 16.0
+    }
+
+    #[test]
+    fn models_differ_in_grey_and_in_dashes() {
+        for (index, one) in MODELS.iter().enumerate() {
+            assert!(lightness(one.color) < 75.0, "{index} is too faint on paper");
+            for other in &MODELS[index + 1..] {
+                let difference = lightness(one.color) - lightness(other.color);
+                assert!(difference.abs() > 8.0, "{one:?} {other:?}");
+                assert_ne!(one.dashes, other.dashes);
+            }
+        }
+    }
 }

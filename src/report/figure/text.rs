@@ -1,5 +1,6 @@
 //! Text: the typeface, its measures, sub- and superscripts, formulas, wrapping.
 
+use std::fmt::Write as _;
 use std::sync::Once;
 
 use plotters::style::{FontDesc, FontFamily, FontStyle, register_font};
@@ -129,7 +130,8 @@ pub(super) fn number(text: &str) -> Spans {
             if length > 0 {
                 let exponent: String = characters[index + 1..=index + length].iter().collect();
                 let exponent = exponent.trim_start_matches('+').replace('-', "\u{2212}");
-                result.push_str(&format!(" \u{d7} 10^{{{exponent}}}"));
+                // Writing to a string cannot fail.
+                let _ = write!(result, " \u{d7} 10^{{{exponent}}}");
                 index += length + 1;
                 continue;
             }
