@@ -9,6 +9,7 @@ use inrush::model::{LineShape, Model, Sampling};
 use inrush::numeric::least_squares::{Interval, check_jacobian};
 use inrush::numeric::{Autoregression, Estimate};
 use inrush::prepare::{Baseline, Prepared};
+use inrush::simulate::{NoiseLevel, PairTruth, simulate_pair};
 use inrush::spectrum::{Noise, Spectrum, Window};
 use std::path::Path;
 
@@ -279,6 +280,42 @@ fn the_hill_is_adopted_before_two_layers_whatever_their_chi2() {
     let alone = fitted(vec![Model::Gaussian, Model::TwoLayer]);
     assert_eq!(alone.adopted().unwrap().model, Model::TwoLayer);
     assert_eq!(fitted(vec![Model::Gaussian]).adopted, None);
+}
+
+#[test]
+fn simulated_channels_follow_their_equation() {
+    let lines = (
+        line("thick", 89.2, vec![Component::SINGLE]),
+        line("thin", 86.8, vec![Component::SINGLE]),
+    );
+    let mut truth = PairTruth::new((Model::Gaussian, Model::Gaussian), lines, 5);
+    truth.thick.noise = NoiseLevel::RmsK(0.0);
+    truth.thick.axis.channel_km_s = 0.5;
+    truth.thick.parameters = [("v_lsr_km_s", 0.3), ("sigma_km_s", 0.4), ("peak_k", 2.0)]
+        .map(|(name, value)| (name.to_owned(), value))
+        .into();
+    let baseline = &mut truth.thick.baseline;
+    baseline.offset_k = 0.2;
+    baseline.slope_k_per_km_s = -0.03;
+    baseline.curvature_k_per_km2_s2 = 0.002;
+    baseline.ripple_k = 0.1;
+    baseline.ripple_period_km_s = 7.0;
+    baseline.ripple_phase_deg = 40.0;
+    let spectrum = simulate_pair(&truth).unwrap().thick.spectrum;
+    let v = spectrum.velocity_km_s();
+    let middle = 0.5 * (v[0] + v[v.len() - 1]);
+    for (v, found) in v.iter().zip(spectrum.temperature_k()) {
+        // the mean of a Gaussian over a channel is a difference of error functions
+        let edge = |side: f64| {
+            statrs::function::erf::erf((v + 0.25 * side - 0.3) / (0.4 * std::f64::consts::SQRT_2))
+        };
+        let mean = 2.0 * 0.4 * (0.5 * std::f64::consts::PI).sqrt() * (edge(1.0) - edge(-1.0)) / 0.5;
+        let x = v - middle;
+        let ripple = 0.1 * (std::f64::consts::TAU * x / 7.0 + 40_f64.to_radians()).sin();
+        let expected = mean + 0.2 - 0.03 * x + 0.002 * x * x + ripple;
+        // the error function here is good to 1e-10 or better
+        assert!((found - expected).abs() < 1e-9, "{v}: {found} {expected}");
+    }
 }
 
 /// Whether a name ends in a unit, as results and settings do and tests do not.
