@@ -41,12 +41,10 @@ pub enum Caution {
         /// How much higher its chi2 is.
         delta_chi2: f64,
     },
-    /// The residuals exceed the noise.
+    /// The residuals of some models exceed the noise.
     PoorFit {
-        /// The model.
-        model: Model,
-        /// chi2 over the degrees of freedom.
-        chi2_reduced: f64,
+        /// Each of the models with its chi2 over the degrees of freedom.
+        fits: Vec<(Model, f64)>,
     },
     /// The thick line is not detected.
     ThickUndetected,
@@ -141,10 +139,16 @@ impl Caution {
                 "{} also fits with v_in = {v_in_km_s:.3} km/s, the other sign, at a chi2 only {delta_chi2:.1} higher",
                 model.name()
             ),
-            Self::PoorFit { model, chi2_reduced } => format!(
-                "{} leaves residuals above the noise (reduced chi2 {chi2_reduced:.2}): its formal errors are too small",
-                model.name()
-            ),
+            Self::PoorFit { fits } => {
+                let each: Vec<String> = fits
+                    .iter()
+                    .map(|(model, chi2_reduced)| format!("{} {chi2_reduced:.2}", model.name()))
+                    .collect();
+                format!(
+                    "residuals exceed the noise, so formal errors are too small: reduced chi2 of {}",
+                    each.join(", ")
+                )
+            }
             Self::ThickUndetected => "the thick line is not detected".to_owned(),
             Self::ThinUndetected { significance } => format!(
                 "the thin line is not detected ({significance:.1} standard errors): velocity and width rest on the thick line"
@@ -183,9 +187,11 @@ const LOW_SIGNAL: f64 = 30.0;
 const WIDE: f64 = 1.0;
 /// chi2 difference of a second minimum below which a caution is given: three standard deviations.
 const SECOND_MINIMUM: f64 = 9.0;
-/// Offset of dip and thin line, in standard errors and in FWHM, above which a caution is given.
+/// Offset of dip and thin line, in standard errors and in FWHM, above which a caution is given: the
+/// front half absorbs at `v_lsr` + `v_in`, so the dip of an infalling clump is redward of the thin
+/// line's centre, but well within the line.
 const DIP_SIGNIFICANCE: f64 = 3.0;
-const DIP_OFFSET: f64 = 0.25;
+const DIP_OFFSET: f64 = 0.5;
 /// Probability of a chi2 as high by chance below which a caution is given.
 const POOR_FIT: f64 = 1e-3;
 
@@ -253,6 +259,7 @@ fn of_detection(facts: &PairFacts<'_>, found: &mut Vec<Caution>) {
 }
 
 fn of_fits(pair: &PairFit, found: &mut Vec<Caution>) {
+    let mut poor = Vec::new();
     for fit in &pair.models {
         let model = fit.model;
         if !fit.converged() {
@@ -285,11 +292,11 @@ fn of_fits(pair: &PairFit, found: &mut Vec<Caution>) {
         let by_chance = ChiSquared::new(fit.degrees_of_freedom.max(1) as f64)
             .map_or(1.0, |chi2| chi2.sf(fit.chi2));
         if by_chance < POOR_FIT {
-            found.push(Caution::PoorFit {
-                model,
-                chi2_reduced: fit.chi2_reduced(),
-            });
+            poor.push((model, fit.chi2_reduced()));
         }
+    }
+    if !poor.is_empty() {
+        found.push(Caution::PoorFit { fits: poor });
     }
 }
 

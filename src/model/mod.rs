@@ -62,9 +62,9 @@ const fn parameter(name: &'static str, unit: &'static str, low: f64, high: f64) 
 const V_LSR: Parameter = parameter("v_lsr_km_s", "km/s", f64::NEG_INFINITY, f64::INFINITY);
 const SIGMA: Parameter = parameter("sigma_km_s", "km/s", 0.01, 30.0);
 const V_IN: Parameter = parameter("v_in_km_s", "km/s", -10.0, 10.0);
-const TAU: Parameter = parameter("tau", "", 0.02, 200.0);
+const TAU: Parameter = parameter("tau", "", 0.1, 200.0);
 const T_BACKGROUND: f64 = crate::constants::BACKGROUND_TEMPERATURE.value;
-const HOTTEST_K: f64 = 1000.0;
+const HOTTEST_K: f64 = 200.0;
 
 const GAUSSIAN: &[Parameter] = &[
     V_LSR,

@@ -19,6 +19,12 @@ pub enum Group {
     Kinematics,
     /// Measures of the thick line's asymmetry, without a model.
     Asymmetry,
+    /// Parameters of a Gaussian.
+    Gaussian,
+    /// Parameters of two Gaussians.
+    TwoGaussians,
+    /// Parameters of one uniform layer.
+    Layer,
     /// Parameters of the two-layer model.
     TwoLayer,
     /// Parameters of the two-layer model with a continuum source.
@@ -47,6 +53,9 @@ impl Group {
             Self::Lines => "Noise and strength of the lines",
             Self::Kinematics => "Velocities and widths",
             Self::Asymmetry => "Asymmetry of the thick line, without a model",
+            Self::Gaussian => "Gaussian",
+            Self::TwoGaussians => "Two Gaussians",
+            Self::Layer => "One uniform layer",
             Self::TwoLayer => "Two-layer model",
             Self::TwoLayerContinuum => "Two-layer model with a continuum source",
             Self::Hill => "Hill model, surface at the background",
@@ -142,8 +151,8 @@ const YEAR: Option<&str> = Some("yr");
 const MASS_RATE: Option<&str> = Some("solMass/yr");
 
 use Group::{
-    Asymmetry, Cautions, Collapse, Hill, HillSurface, Hypotheses, Identity, Infall, Kinematics,
-    Lines, Sphere, TwoLayer, TwoLayerContinuum,
+    Asymmetry, Cautions, Collapse, Gaussian, Hill, HillSurface, Hypotheses, Identity, Infall,
+    Kinematics, Layer, Lines, Sphere, TwoGaussians, TwoLayer, TwoLayerContinuum,
 };
 use Uncertainty::{Error, ErrorAndIntervals, Intervals};
 
@@ -174,6 +183,25 @@ pub const QUANTITIES: &[Quantity] = &[
     with(real(Asymmetry, "skewness", None, "skewness", "Skewness of the thick line about v_thin"), Error),
     text(Asymmetry, "profile", "profile", "Sense of the asymmetry: blue, red, neither or undetected"),
     with(real(Asymmetry, "v_closed_form_km_s", KM_S, "inward speed, closed form", "Inward speed from the closed form for two-peak lines"), Error),
+
+    with(real(Gaussian, "gaussian_v_lsr_km_s", KM_S, "velocity", "Velocity of both lines, one Gaussian each"), Error),
+    with(real(Gaussian, "gaussian_sigma_km_s", KM_S, "dispersion", "Dispersion of both lines, one Gaussian each"), Error),
+    with(real(Gaussian, "gaussian_peak_k", KELVIN, "peak, thick line", "Peak of the thick line's Gaussian"), Error),
+    real(Gaussian, "gaussian_chi2_red", None, "reduced chi2", "Reduced chi-squared of one Gaussian a line"),
+
+    with(real(TwoGaussians, "two_gaussians_v_lsr_km_s", KM_S, "velocity, first", "Velocity of the first of two Gaussians, both lines"), Error),
+    with(real(TwoGaussians, "two_gaussians_sigma_km_s", KM_S, "dispersion, first", "Dispersion of the first of two Gaussians"), Error),
+    with(real(TwoGaussians, "two_gaussians_peak_k", KELVIN, "peak, first", "Peak of the thick line's first Gaussian"), Error),
+    with(real(TwoGaussians, "two_gaussians_v_second_km_s", KM_S, "velocity, second", "Velocity of the second of two Gaussians, both lines"), Error),
+    with(real(TwoGaussians, "two_gaussians_sigma_second_km_s", KM_S, "dispersion, second", "Dispersion of the second of two Gaussians"), Error),
+    with(real(TwoGaussians, "two_gaussians_peak_second_k", KELVIN, "peak, second", "Peak of the thick line's second Gaussian"), Error),
+    real(TwoGaussians, "two_gaussians_chi2_red", None, "reduced chi2", "Reduced chi-squared of two Gaussians a line"),
+
+    with(real(Layer, "layer_v_lsr_km_s", KM_S, "velocity", "Velocity of both lines, thick line one uniform layer"), Error),
+    with(real(Layer, "layer_sigma_km_s", KM_S, "dispersion", "Dispersion of both lines, thick line one uniform layer"), Error),
+    with(real(Layer, "layer_tau_total", None, "optical depth", "Optical depth of the thick line's layer, summed over its components"), Error),
+    with(real(Layer, "layer_t_ex_k", KELVIN, "excitation", "Excitation temperature of the thick line's layer"), Error),
+    real(Layer, "layer_chi2_red", None, "reduced chi2", "Reduced chi-squared of the thick line as one uniform layer"),
 
     with(real(TwoLayer, "two_layer_v_in_km_s", KM_S, "inward speed", "Inward speed of the two-layer model"), Error),
     with(real(TwoLayer, "two_layer_tau", None, "optical depth of a layer", "Peak optical depth of one layer"), Error),

@@ -58,14 +58,14 @@ pub fn pair_row(outcome: &PairOutcome) -> Result<Row, RunError> {
     Ok(row)
 }
 
-/// Parameters of the model with columns of their own; the kinematics stand with the adopted model.
+/// A model's parameters. Velocity and dispersion of a model with an inward speed stand with the
+/// adopted speed only.
 fn set_model(row: &mut Row, fit: &ModelFit) -> Result<(), RunError> {
     let prefix = fit.model.column_prefix();
-    for parameter in fit.model.parameters().iter().skip(2) {
+    let elsewhere = if fit.model.has_infall() { 2 } else { 0 };
+    for parameter in &fit.model.parameters()[elsewhere..] {
         let column = format!("{prefix}_{}", parameter.name);
-        if fit.model.has_infall() {
-            set_parameter(row, &column, fit, parameter.name)?;
-        }
+        set_parameter(row, &column, fit, parameter.name)?;
     }
     row.set(&format!("{prefix}_chi2_red"), fit.chi2_reduced())?;
     Ok(())
@@ -342,19 +342,19 @@ fn figure_numbers(outcome: &PairOutcome) -> Vec<(String, String)> {
     for fit in &outcome.fit.models {
         if let Some(v_in) = fit.estimate("v_in_km_s") {
             numbers.push((
-                format!("v_in, {}", model_label(fit.model)),
+                format!("inward speed, {}", model_label(fit.model)),
                 shown(v_in, "km/s"),
             ));
         }
     }
     let adopted = outcome.fit.adopted();
-    for (name, label) in [("v_lsr_km_s", "v_LSR"), ("sigma_km_s", "sigma")] {
+    for (name, label) in [("v_lsr_km_s", "v_{LSR}"), ("sigma_km_s", "dispersion")] {
         if let Some(estimate) = adopted.and_then(|fit| fit.estimate(name)) {
             numbers.push((label.to_owned(), shown(estimate, "km/s")));
         }
     }
     if let Some(delta_v) = outcome.measures.delta_v {
-        numbers.push(("delta V".to_owned(), shown(delta_v, "")));
+        numbers.push(("velocity difference".to_owned(), shown(delta_v, "")));
     }
     numbers.push((
         "profile".to_owned(),
