@@ -213,7 +213,7 @@ fn described(check: &FileCheck) -> String {
         } else {
             format!(
                 "correlation {:.2} between neighbours",
-                process.autocorrelation(1).first().copied().unwrap_or(0.0)
+                process.autocorrelation(2)[1]
             )
         };
         fact(

@@ -326,13 +326,7 @@ fn of_spectra(facts: &PairFacts<'_>, found: &mut Vec<Caution>) {
             found.push(Caution::WindowCutsLine { line });
         }
         if !prepared.noise.process.is_white() {
-            let adjacent = prepared
-                .noise
-                .process
-                .autocorrelation(1)
-                .first()
-                .copied()
-                .unwrap_or(0.0);
+            let adjacent = prepared.noise.process.autocorrelation(2)[1];
             found.push(Caution::CorrelatedNoise { line, adjacent });
         }
     }
