@@ -97,12 +97,10 @@ fn agree(expected: &[String], found: &[String]) -> bool {
     }
 }
 
-/// How many characters tell a line of the readable table from the others.
-const LABEL: usize = 30;
-
 /// What a page should say now: all lines, or the same selection of them.
 fn renewed(printed: &[String], found: &[String]) -> Vec<String> {
-    let label = |line: &str| line.chars().take(LABEL).collect::<String>();
+    // what stands before the first wide gap tells a line from the others
+    let label = |line: &str| line.trim_start().split("  ").next().map(str::to_owned);
     if !printed.iter().any(|line| line == "...") {
         return found.to_vec();
     }
