@@ -1,6 +1,8 @@
 //! docs/methods.md: its equations where no other test checks them, written out here a second time,
 //! and the tests that it names.
 
+#![allow(clippy::unwrap_used)]
+
 use inrush::constants::FWHM_PER_SIGMA;
 use inrush::fit::{Averaging, Channels, FitSettings, JointProblem, Layout, fit_pair};
 use inrush::line::{Component, Line};
@@ -138,8 +140,8 @@ fn closed_form_peak_ratio_asymmetry_and_skewness_follow_their_equations() {
         let blue_share = (0.5 - (v - V_LSR_KM_S) / CHANNEL_KM_S).clamp(0.0, 1.0);
         sides[0] += blue_share * t;
         sides[1] += (1.0 - blue_share) * t;
-        for (power, moment) in moments.iter_mut().enumerate() {
-            *moment += t * (v - V_LSR_KM_S).powi(power as i32);
+        for (power, moment) in (0..).zip(&mut moments) {
+            *moment += t * (v - V_LSR_KM_S).powi(power);
         }
     }
     let asymmetry = (sides[0] - sides[1]) / (sides[0] + sides[1]);
@@ -327,7 +329,9 @@ fn is_quantity(name: &str) -> bool {
 #[test]
 fn every_test_that_the_page_names_exists() {
     let root = Path::new(env!("CARGO_MANIFEST_DIR"));
-    let page = std::fs::read_to_string(root.join("docs/methods.md")).unwrap();
+    let page = std::fs::read_to_string(root.join("docs/methods.md"))
+        .unwrap()
+        .replace('\n', " ");
     let mut file: Option<(String, String)> = None;
     let mut checked = 0;
     for quoted in page.split('`').skip(1).step_by(2) {

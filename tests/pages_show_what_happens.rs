@@ -4,7 +4,8 @@
 //! prints on both streams; `...` stands for any lines. The commands of a page run in order in one
 //! folder that holds `demo-spectra`, shown as `/data`. `INRUSH_WRITE_EXPECTED=1` writes anew what commands
 //! print; where `...` stands, the other lines are found again by how they begin.
-#![cfg(unix)]
+#![cfg(all(unix, feature = "figures"))]
+#![allow(clippy::unwrap_used)]
 
 use std::path::Path;
 use std::process::Command;
@@ -16,6 +17,16 @@ const PAGES: [&str; 3] = ["README.md", "docs/tutorial.md", "docs/how-to.md"];
 struct Step {
     command: Vec<String>,
     printed: Vec<String>,
+}
+
+impl Step {
+    /// Its command as the page shows it.
+    fn shown_command(&self) -> impl Iterator<Item = String> {
+        let marks = std::iter::once("$ ").chain(std::iter::repeat("> "));
+        marks
+            .zip(&self.command)
+            .map(|(mark, line)| format!("{mark}{line}").trim_end().to_owned())
+    }
 }
 
 /// A page as text and blocks of steps, in turn.
@@ -126,10 +137,10 @@ fn every_shown_command_prints_what_its_page_says() {
         )
         .unwrap();
         let page = std::fs::read_to_string(root.join(name)).unwrap();
-        let mut written = String::new();
+        let mut written: Vec<String> = Vec::new();
         for part in parts(&page) {
             match part {
-                Part::Text(line) => written += &format!("{line}\n"),
+                Part::Text(line) => written.push(line),
                 Part::Steps(steps) => {
                     for step in steps {
                         commands += 1;
@@ -146,17 +157,14 @@ fn every_shown_command_prints_what_its_page_says() {
                                 found.join("\n")
                             ));
                         }
-                        written +=
-                            &format!("$ {}\n", step.command.join("\n> ")).replace("> \n", ">\n");
-                        for line in shown {
-                            written += &format!("{line}\n");
-                        }
+                        written.extend(step.shown_command());
+                        written.extend(shown);
                     }
                 }
             }
         }
         if write {
-            std::fs::write(root.join(name), written).unwrap();
+            std::fs::write(root.join(name), written.join("\n") + "\n").unwrap();
         }
     }
     assert!(wrong.is_empty(), "{}", wrong.join("\n"));
