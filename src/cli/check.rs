@@ -44,7 +44,16 @@ pub fn run(arguments: &CheckArguments, output: &Output) -> Result<Exit, RunError
     let mut unusable = 0;
     let mut checked = 0;
     for file in &arguments.files {
-        for (section, which, path, settings) in inputs(arguments, file)? {
+        let inputs = match inputs(arguments, file) {
+            Ok(inputs) => inputs,
+            Err(error) => {
+                checked += 1;
+                unusable += 1;
+                report(&error, output);
+                continue;
+            }
+        };
+        for (section, which, path, settings) in inputs {
             checked += 1;
             match check_file(&section, which, &path, &settings) {
                 Ok(check) => output
@@ -76,13 +85,19 @@ fn inputs(arguments: &CheckArguments, file: &Path) -> Result<Vec<Input>, RunErro
         .is_some_and(|extension| extension == "toml")
     {
         let sheet = RunSheet::read(file)?;
-        sheet.fit_settings()?;
+        sheet
+            .fit_settings()
+            .map_err(|error| error.of_sheet(Some(file)))?;
         let base = file.parent().map_or_else(PathBuf::new, Path::to_owned);
+        let sheet = &sheet;
         return [(&sheet.thick, "thick"), (&sheet.thin, "thin")]
             .into_iter()
             .map(|(section, which)| {
-                let path = section.file.as_ref().ok_or(RunError::NoFile { which })?;
-                let settings = sheet.prepare_settings(section)?;
+                let missing = || RunError::NoFile { which }.of_sheet(Some(file));
+                let path = section.file.as_ref().ok_or_else(missing)?;
+                let settings = sheet
+                    .prepare_settings(section)
+                    .map_err(|error| error.of_sheet(Some(file)))?;
                 Ok((section.clone(), which, base.join(path), settings))
             })
             .collect();
@@ -213,7 +228,7 @@ fn described(check: &FileCheck) -> String {
         } else {
             format!(
                 "correlation {:.2} between neighbours",
-                process.autocorrelation(2)[1]
+                process.adjacent_correlation()
             )
         };
         fact(

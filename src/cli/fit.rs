@@ -5,8 +5,8 @@ use super::output::Output;
 use clap::Args;
 use inrush::report;
 use inrush::run::{
-    Beam, Given, LineSection, NumberOrWord, RangeOrWord, RunError, RunSheet, fit_pair, pair_row,
-    pair_summary, write_products,
+    Beam, Given, LineSection, NumberOrWord, RangeOrWord, RunError, RunSheet, check_directory,
+    fit_pair, pair_row, pair_summary, write_products,
 };
 use std::path::{Path, PathBuf};
 
@@ -57,16 +57,26 @@ pub struct FitArguments {
     #[arg(long, value_name = "ROW", help_heading = "Reading")]
     thin_row: Option<String>,
     /// Main-beam efficiency of the thick line, for T_A*.
-    #[arg(long, value_name = "ETA", help_heading = "Reading")]
+    #[arg(
+        long,
+        value_name = "ETA",
+        allow_negative_numbers = true,
+        help_heading = "Reading"
+    )]
     thick_eta_mb: Option<f64>,
     /// Main-beam efficiency of the thin line, for T_A*.
-    #[arg(long, value_name = "ETA", help_heading = "Reading")]
+    #[arg(
+        long,
+        value_name = "ETA",
+        allow_negative_numbers = true,
+        help_heading = "Reading"
+    )]
     thin_eta_mb: Option<f64>,
     /// Beam of the thick line, full width at half maximum, for Jy/beam.
-    #[arg(long, value_name = "ARCSEC[,ARCSEC]", value_parser = beam, help_heading = "Reading")]
+    #[arg(long, value_name = "ARCSEC[,ARCSEC]", value_parser = beam, allow_hyphen_values = true, help_heading = "Reading")]
     thick_beam_arcsec: Option<Beam>,
     /// Beam of the thin line, full width at half maximum, for Jy/beam.
-    #[arg(long, value_name = "ARCSEC[,ARCSEC]", value_parser = beam, help_heading = "Reading")]
+    #[arg(long, value_name = "ARCSEC[,ARCSEC]", value_parser = beam, allow_hyphen_values = true, help_heading = "Reading")]
     thin_beam_arcsec: Option<Beam>,
     /// Velocity that brings both files' frame to LSRK, km/s.
     #[arg(
@@ -90,7 +100,12 @@ pub struct FitArguments {
     #[arg(long, value_name = "ORDER", value_parser = number_or_word, help_heading = "Preparing")]
     baseline_order: Option<NumberOrWord>,
     /// Average to channels of this width, km/s.
-    #[arg(long, value_name = "KM_S", help_heading = "Preparing")]
+    #[arg(
+        long,
+        value_name = "KM_S",
+        allow_negative_numbers = true,
+        help_heading = "Preparing"
+    )]
     smooth_to_km_s: Option<f64>,
 
     /// Models, separated by commas: gaussian, two-gaussians, layer, two-layer, two-layer-continuum,
@@ -134,14 +149,23 @@ pub struct FitArguments {
     #[arg(long, help_heading = "Products")]
     no_figures: bool,
     /// Seed of everything random.
-    #[arg(long, value_name = "SEED", help_heading = "Products")]
+    #[arg(
+        long,
+        value_name = "SEED",
+        allow_negative_numbers = true,
+        help_heading = "Products"
+    )]
     seed: Option<u64>,
 }
 
 /// Fits the pair, prints its results and writes its products.
 pub fn run(arguments: &FitArguments, output: &Output) -> Result<Exit, RunError> {
     let (sheet, base) = arguments.resolve()?;
-    let outcome = fit_pair(&sheet, &base)?;
+    if let Some(directory) = &arguments.out {
+        check_directory(directory)?;
+    }
+    let outcome =
+        fit_pair(&sheet, &base).map_err(|error| error.of_sheet(arguments.sheet.as_deref()))?;
     if let Some(record) = &sheet.record {
         let changed = [
             (&record.thick_sha256, &outcome.thick),
@@ -200,8 +224,11 @@ impl FitArguments {
             }
             None => (RunSheet::default(), PathBuf::new()),
         };
-        // options name files from where the command runs
+        // options name files from where the command runs, not from the sheet's folder
         let here = |file: &PathBuf| -> Result<PathBuf, RunError> {
+            if base.as_os_str().is_empty() {
+                return Ok(file.clone());
+            }
             std::path::absolute(file).map_err(|source| RunError::File {
                 path: file.clone(),
                 source,
@@ -286,7 +313,7 @@ fn numbers(text: &str) -> Result<Vec<f64>, String> {
                 .parse::<f64>()
                 .ok()
                 .filter(|number| number.is_finite())
-                .ok_or_else(|| format!("`{}` is no number", part.trim()))
+                .ok_or_else(|| format!("`{}`, expected a number", part.trim()))
         })
         .collect()
 }
@@ -318,7 +345,9 @@ fn range_or_word(text: &str) -> Result<RangeOrWord, String> {
     if text == "all" {
         return Ok(RangeOrWord::Word(text.to_owned()));
     }
-    range(text).map(RangeOrWord::Range)
+    range(text)
+        .map(RangeOrWord::Range)
+        .map_err(|message| format!("{message}; or `all`"))
 }
 
 // clap's parsers return a result

@@ -26,8 +26,10 @@ pub fn run(arguments: &LinesArguments, output: &Output) -> Result<Exit, RunError
     let found = search(text);
     if found.is_empty() {
         output.error(
-            &format!("no built-in line matches `{text}`"),
-            Some("inrush lines shows them all; a line of your own is given by its rest frequency"),
+            &format!(
+                "no built-in line matches `{text}`, expected a species, a part of a name or a frequency in GHz"
+            ),
+            Some("inrush lines without a text shows them all; a line of your own is given by its rest frequency"),
         );
         return Ok(Exit::Unusable);
     }

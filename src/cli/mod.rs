@@ -71,13 +71,12 @@ pub fn main() -> ExitCode {
         Ok(arguments) => arguments,
         Err(error) => {
             // help and version go to stdout with code 0, usage errors to stderr with code 2
-            let code = if error.use_stderr() {
-                Exit::Unusable
-            } else {
-                Exit::Done
-            };
+            if error.use_stderr() {
+                usage_error(&error);
+                return Exit::Unusable.into();
+            }
             let _ = error.print();
-            return code.into();
+            return Exit::Done.into();
         }
     };
     let output = Output::new(arguments.quiet);
@@ -94,6 +93,22 @@ pub fn main() -> ExitCode {
             Exit::Unusable.into()
         }
     }
+}
+
+/// A wrong command line: what the parser says, and its tip or the help as the hint.
+fn usage_error(error: &clap::Error) {
+    use clap::error::ErrorKind;
+    if error.kind() == ErrorKind::DisplayHelpOnMissingArgumentOrSubcommand {
+        let _ = error.print();
+        return;
+    }
+    let text = error.render().to_string();
+    let mut paragraphs = text.split("\n\n");
+    let message = paragraphs.next().unwrap_or_default().trim();
+    let message = message.strip_prefix("error: ").unwrap_or(message);
+    let tip = paragraphs.find_map(|paragraph| paragraph.trim().strip_prefix("tip: "));
+    let hint = tip.unwrap_or("`--help` behind the command shows every option");
+    Output::new(false).error(message, Some(hint));
 }
 
 /// An error with what to do about it.

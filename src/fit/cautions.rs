@@ -326,7 +326,7 @@ fn of_spectra(facts: &PairFacts<'_>, found: &mut Vec<Caution>) {
             found.push(Caution::WindowCutsLine { line });
         }
         if !prepared.noise.process.is_white() {
-            let adjacent = prepared.noise.process.autocorrelation(2)[1];
+            let adjacent = prepared.noise.process.adjacent_correlation();
             found.push(Caution::CorrelatedNoise { line, adjacent });
         }
     }

@@ -5,7 +5,7 @@ use super::channels::Channels;
 use super::{FitError, FitSettings};
 use crate::model::{Model, Parameter};
 use crate::numeric::Estimate;
-use crate::numeric::least_squares::{Interval, LeastSquares, MAX_PARAMETERS};
+use crate::numeric::least_squares::{Interval, LeastSquares, MAX_PARAMETERS, RowBlock, Structure};
 
 /// A parameter of a joint fit.
 #[derive(Clone, Debug, PartialEq)]
@@ -153,6 +153,14 @@ impl Layout {
                     upper: *upper,
                 });
             }
+            if let Some(expected) = impossible(&parameter, *lower, *upper) {
+                return Err(FitError::ImpossibleBounds {
+                    name: name.to_owned(),
+                    lower: *lower,
+                    upper: *upper,
+                    expected,
+                });
+            }
             (low, high) = (*lower, *upper);
         }
         let mut joint = JointParameter {
@@ -222,6 +230,20 @@ impl Layout {
     }
 }
 
+/// Where bounds of a parameter may lie, if these lie elsewhere.
+fn impossible(parameter: &Parameter, lower: f64, upper: f64) -> Option<&'static str> {
+    if !(lower.is_finite() && upper.is_finite()) {
+        return Some("two finite numbers");
+    }
+    if parameter.name == "filling" && (lower < 0.0 || upper > 1.0) {
+        return Some("fractions from 0 to 1");
+    }
+    if parameter.low > 0.0 && lower <= 0.0 {
+        return Some("positive numbers");
+    }
+    None
+}
+
 /// The joint residuals of a pair, or of the thin line alone.
 #[derive(Debug)]
 pub struct JointProblem<'a> {
@@ -229,7 +251,6 @@ pub struct JointProblem<'a> {
     thick: Option<&'a Channels>,
     thin: &'a Channels,
     priors: Vec<(usize, Estimate)>,
-    scratch: Vec<f64>,
 }
 
 impl<'a> JointProblem<'a> {
@@ -242,32 +263,11 @@ impl<'a> JointProblem<'a> {
             .enumerate()
             .filter_map(|(index, parameter)| Some((index, parameter.prior?)))
             .collect();
-        let most = thin.len().max(thick.map_or(0, Channels::len));
         Self {
             layout,
             thick,
             thin,
             priors,
-            scratch: vec![0.0; most * Model::MOST_PARAMETERS],
-        }
-    }
-}
-
-/// Adds a local Jacobian to the rows from `first` on of the joint one; a local parameter's column goes
-/// to its joint parameter, times a factor.
-fn scatter(
-    local: &[f64],
-    channels: usize,
-    targets: impl Iterator<Item = (usize, usize, f64)>,
-    joint: &mut [f64],
-    rows: usize,
-    first: usize,
-) {
-    for (column, target, factor) in targets {
-        let from = &local[column * channels..(column + 1) * channels];
-        let to = &mut joint[target * rows + first..target * rows + first + channels];
-        for (to, from) in to.iter_mut().zip(from) {
-            *to += factor * from;
         }
     }
 }
@@ -281,82 +281,77 @@ impl LeastSquares for JointProblem<'_> {
         self.thin.len() + self.thick.map_or(0, Channels::len) + self.priors.len()
     }
 
+    /// The thick line's channels, the thin line's, and the priors.
+    fn structure(&self) -> Structure {
+        let layout = self.layout;
+        let thick = RowBlock::new(self.thick.map_or(0, Channels::len), &layout.thick.1);
+        let mut thin = layout.thin.1.clone();
+        if let Some((_, ratio)) = layout.link {
+            thin.push(ratio);
+        }
+        let thin = RowBlock::new(self.thin.len(), &thin);
+        let priors: Vec<usize> = self.priors.iter().map(|(index, _)| *index).collect();
+        Structure::new(&[thick, thin, RowBlock::new(priors.len(), &priors)])
+    }
+
     fn evaluate(
         &mut self,
         parameters: &[f64],
         residuals: &mut [f64],
-        mut jacobian: Option<&mut [f64]>,
+        jacobian: Option<&mut [f64]>,
     ) {
         let layout = self.layout;
-        let rows = residuals.len();
-        if let Some(jacobian) = jacobian.as_deref_mut() {
-            jacobian.fill(0.0);
-        }
+        let mut rest_residuals = residuals;
+        let mut rest_jacobian = jacobian;
         let mut local = [0.0; MAX_PARAMETERS];
-        let mut first = 0;
         if let Some(thick) = self.thick {
             let (model, map) = (layout.thick.0, &layout.thick.1);
             for (value, index) in local.iter_mut().zip(map) {
                 *value = parameters[*index];
             }
-            let scratch = &mut self.scratch[..map.len() * thick.len()];
-            let wanted = jacobian.is_some();
-            thick.residuals(
-                model,
-                &local[..map.len()],
-                &mut residuals[..thick.len()],
-                wanted.then_some(&mut *scratch),
-            );
-            if let Some(jacobian) = jacobian.as_deref_mut() {
-                let targets = map
-                    .iter()
-                    .enumerate()
-                    .map(|(column, target)| (column, *target, 1.0));
-                scatter(scratch, thick.len(), targets, jacobian, rows, 0);
-            }
-            first = thick.len();
+            let own = take(&mut rest_residuals, thick.len());
+            let columns = take_columns(&mut rest_jacobian, thick.len() * map.len());
+            thick.residuals(model, &local[..map.len()], own, columns);
         }
         let (model, map) = (layout.thin.0, &layout.thin.1);
         layout.thin_local(parameters, &mut local[..map.len()]);
         let channels = self.thin.len();
-        let scratch = &mut self.scratch[..map.len() * channels];
-        let wanted = jacobian.is_some();
-        self.thin.residuals(
-            model,
-            &local[..map.len()],
-            &mut residuals[first..first + channels],
-            wanted.then_some(&mut *scratch),
-        );
-        if let Some(jacobian) = jacobian.as_deref_mut() {
-            let linked = layout
-                .link
-                .map(|(tau, ratio)| (2.0 / parameters[ratio], parameters[tau], ratio));
-            let targets = map.iter().enumerate().map(|(column, target)| {
-                let factor = match linked {
-                    Some((by_tau, _, _)) if column == 2 => by_tau,
-                    _ => 1.0,
-                };
-                (column, *target, factor)
-            });
-            scatter(scratch, channels, targets, jacobian, rows, first);
-            if let Some((by_tau, tau, ratio)) = linked {
-                let by_ratio = -by_tau * tau / parameters[ratio];
-                scatter(
-                    scratch,
-                    channels,
-                    std::iter::once((2, ratio, by_ratio)),
-                    jacobian,
-                    rows,
-                    first,
-                );
+        let own = take(&mut rest_residuals, channels);
+        let mut columns = take_columns(&mut rest_jacobian, channels * map.len());
+        self.thin
+            .residuals(model, &local[..map.len()], own, columns.as_deref_mut());
+        if let Some((tau, ratio)) = layout.link {
+            let by_ratio = take_columns(&mut rest_jacobian, channels);
+            if let (Some(columns), Some(by_ratio)) = (columns, by_ratio) {
+                // the thin line's optical depth is 2 tau / ratio
+                let by_tau = 2.0 / parameters[ratio];
+                let by_depth = &mut columns[2 * channels..3 * channels];
+                for (by_depth, by_ratio) in by_depth.iter_mut().zip(by_ratio) {
+                    *by_ratio = -by_tau * parameters[tau] / parameters[ratio] * *by_depth;
+                    *by_depth *= by_tau;
+                }
             }
         }
-        for (offset, (index, prior)) in self.priors.iter().enumerate() {
-            let row = first + channels + offset;
-            residuals[row] = (parameters[*index] - prior.value) / prior.err;
-            if let Some(jacobian) = jacobian.as_deref_mut() {
-                jacobian[*index * rows + row] = 1.0 / prior.err;
+        let count = self.priors.len();
+        for (row, (index, prior)) in self.priors.iter().enumerate() {
+            rest_residuals[row] = (parameters[*index] - prior.value) / prior.err;
+            if let Some(jacobian) = rest_jacobian.as_deref_mut() {
+                for column in 0..count {
+                    let own = if column == row { 1.0 / prior.err } else { 0.0 };
+                    jacobian[column * count + row] = own;
+                }
             }
         }
     }
+}
+
+/// The first `count` of a slice, which then begins behind them.
+fn take<'a>(rest: &mut &'a mut [f64], count: usize) -> &'a mut [f64] {
+    let (own, behind) = std::mem::take(rest).split_at_mut(count);
+    *rest = behind;
+    own
+}
+
+fn take_columns<'a>(rest: &mut Option<&'a mut [f64]>, count: usize) -> Option<&'a mut [f64]> {
+    rest.as_mut().map(|rest| take(rest, count))
 }

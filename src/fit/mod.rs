@@ -113,6 +113,18 @@ pub enum FitError {
         /// Upper bound.
         upper: f64,
     },
+    /// Bounds that reach where the parameter has no meaning.
+    #[error("bounds {lower} to {upper} of {name}, expected {expected}")]
+    ImpossibleBounds {
+        /// Parameter.
+        name: String,
+        /// Lower bound.
+        lower: f64,
+        /// Upper bound.
+        upper: f64,
+        /// Where bounds may lie.
+        expected: &'static str,
+    },
     /// A given value outside the parameter's bounds.
     #[error("{name} given as {value}, expected a value from {lower} to {upper}")]
     GivenOutside {
@@ -125,8 +137,17 @@ pub enum FitError {
         /// Upper bound.
         upper: f64,
     },
+    /// A continuum source that nothing determines.
+    #[error(
+        "the two-layer-continuum model without {}, expected filling and t_continuum_k given: line profiles do not determine them",
+        missing.join(" and ")
+    )]
+    OpenContinuum {
+        /// Those that are not given.
+        missing: Vec<&'static str>,
+    },
     /// A name that no parameter of the chosen models has.
-    #[error("parameter `{name}`, expected one of {known}")]
+    #[error("parameter `{name}`, expected one of the chosen models': {known}")]
     UnknownParameter {
         /// The name.
         name: String,
@@ -157,11 +178,28 @@ impl FitError {
             Self::NoCommonVelocities { .. } => Some(
                 "check the rest frequencies and frames of both files: a wrong rest frequency shifts the velocities".to_owned(),
             ),
-            Self::UnknownParameter { nearest, .. } => nearest.map(|name| format!("did you mean `{name}`?")),
+            Self::OpenContinuum { .. } => Some(
+                "hold them, as in --given filling=0.05 --given t_continuum_k=40, or give errors too, as in filling=0.05,0.01".to_owned(),
+            ),
+            Self::UnknownParameter { nearest, .. } => Some(nearest.map_or_else(
+                || "choose the model that it belongs to, or leave it out".to_owned(),
+                |name| format!("did you mean `{name}`?"),
+            )),
             Self::NothingToLink { .. } => Some(
                 "leave the ratio out, or choose among two-layer, two-layer-continuum, hill, hill-surface".to_owned(),
             ),
-            _ => None,
+            Self::EmptyBounds { .. } => {
+                Some("give the lower bound first; a given value holds a parameter".to_owned())
+            }
+            Self::ImpossibleBounds { .. } => {
+                Some("leave the bounds out for the default ones".to_owned())
+            }
+            Self::GivenOutside { name, .. } => {
+                Some(format!("give a value inside, or bounds of {name} that hold it"))
+            }
+            Self::Search(_) => {
+                Some("please report this with the input that caused it".to_owned())
+            }
         }
     }
 }
@@ -321,7 +359,6 @@ pub fn fit_pair(
     thin_line: Option<&ThinLine>,
     settings: &FitSettings,
 ) -> Result<PairFit, FitError> {
-    check_names(settings)?;
     let range = match settings.range {
         Some(FitRange::All) => None,
         Some(FitRange::Within(window)) => Some(window),
@@ -347,11 +384,20 @@ pub fn fit_pair(
     let reach = range.unwrap_or(overlap);
     let reach = Interval::new(reach.low_km_s, reach.high_km_s);
 
+    let layouts = settings
+        .models
+        .iter()
+        .map(|model| {
+            let thin_model = thin_model(*model, lines.1, settings);
+            Layout::new(*model, thin_model, settings, reach)
+        })
+        .collect::<Result<Vec<Layout>, FitError>>()?;
+    check_names(settings, &layouts)?;
+    check_continuum(settings)?;
+
     let mut workspace = Workspace::new();
-    let mut models = Vec::with_capacity(settings.models.len());
-    for model in &settings.models {
-        let thin_model = thin_model(*model, lines.1, settings);
-        let layout = Layout::new(*model, thin_model, settings, reach)?;
+    let mut models = Vec::with_capacity(layouts.len());
+    for layout in layouts {
         let fit;
         (fit, workspace) = fit_model(
             layout,
@@ -430,35 +476,22 @@ fn common_velocities(thick: &Prepared, thin: &Prepared) -> Result<Window, FitErr
     })
 }
 
-/// Every parameter name that bounds and given values may use.
-pub fn parameter_names() -> Vec<&'static str> {
-    let mut names: Vec<&'static str> = Model::ALL
-        .iter()
-        .flat_map(|model| model.parameters().iter().map(|parameter| parameter.name))
-        .chain([
-            "v_thin_km_s",
-            "sigma_thin_km_s",
-            "peak_thin_k",
-            "v_second_thin_km_s",
-            "sigma_second_thin_km_s",
-            "peak_second_thin_k",
-            "tau_thin",
-            "t_ex_thin_k",
-            "isotope_ratio",
-        ])
-        .collect();
-    names.sort_unstable();
-    names.dedup();
-    names
-}
-
-fn check_names(settings: &FitSettings) -> Result<(), FitError> {
-    let names = parameter_names();
+/// Refuses bounds and given values that no chosen model would use.
+fn check_names(settings: &FitSettings, layouts: &[Layout]) -> Result<(), FitError> {
+    let mut names: Vec<&'static str> = Vec::new();
+    for parameter in layouts.iter().flat_map(Layout::parameters) {
+        if !names.contains(&parameter.name) {
+            names.push(parameter.name);
+        }
+    }
     for name in settings.bounds.keys().chain(settings.given.keys()) {
         if !names.contains(&name.as_str()) {
-            let nearest = names.iter().copied().max_by(|a, b| {
-                strsim::jaro_winkler(a, name).total_cmp(&strsim::jaro_winkler(b, name))
-            });
+            let likeness = |known: &str| strsim::normalized_damerau_levenshtein(known, name);
+            let nearest = names
+                .iter()
+                .copied()
+                .max_by(|a, b| likeness(a).total_cmp(&likeness(b)))
+                .filter(|nearest| likeness(nearest) >= ALIKE);
             return Err(FitError::UnknownParameter {
                 name: name.clone(),
                 known: names.join(", "),
@@ -467,6 +500,26 @@ fn check_names(settings: &FitSettings) -> Result<(), FitError> {
         }
     }
     Ok(())
+}
+
+/// Likeness from which a name is offered for an unknown one.
+const ALIKE: f64 = 0.5;
+
+/// Refuses the continuum model with an open source: the profile has two amplitudes, which the two
+/// layers' temperatures take; filling and temperature of the source change nothing else.
+fn check_continuum(settings: &FitSettings) -> Result<(), FitError> {
+    if !settings.models.contains(&Model::TwoLayerContinuum) {
+        return Ok(());
+    }
+    let missing: Vec<&'static str> = ["filling", "t_continuum_k"]
+        .into_iter()
+        .filter(|name| !settings.given.contains_key(*name))
+        .collect();
+    if missing.is_empty() {
+        Ok(())
+    } else {
+        Err(FitError::OpenContinuum { missing })
+    }
 }
 
 /// Follows every start to a minimum and keeps the best.

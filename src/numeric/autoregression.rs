@@ -185,6 +185,12 @@ impl Autoregression {
         reflections
     }
 
+    /// Correlation of adjacent channels: the autocorrelation at lag 1, 0 for white noise.
+    #[must_use]
+    pub fn adjacent_correlation(&self) -> f64 {
+        self.autocorrelation(2)[1]
+    }
+
     /// Autocorrelation at lags 0 to `n_lags` - 1; 1 at lag 0.
     #[must_use]
     pub fn autocorrelation(&self, n_lags: usize) -> Vec<f64> {

@@ -189,7 +189,8 @@ impl PrepareError {
                 "the noise is measured outside the line; is this a model, or were channels filled?"
             }
             Self::NoLine { .. } => "give the line window, or a pair whose other line is detected",
-            Self::Setting { .. } | Self::Spectrum(_) => return None,
+            Self::Setting { .. } => "leave it out for the default",
+            Self::Spectrum(_) => "smooth less, or check the blank channels",
         };
         Some(text.to_owned())
     }

@@ -270,13 +270,13 @@ impl ScaleError {
         Some(
             match self {
                 ScaleError::Efficiency { .. } => "give the fraction, such as 0.81, not percent",
-                ScaleError::NoEfficiency { .. } => "give eta_mb; 1 keeps the scale as it is",
+                ScaleError::NoEfficiency { .. } => "give eta_mb in the run sheet, or --thick-eta-mb and --thin-eta-mb; 1 keeps the scale",
                 ScaleError::Beam { .. } => {
                     "BMAJ and BMIN are in degrees; a given beam is in arcsec"
                 }
                 ScaleError::NoBeam { .. } => "give the beam's full width at half maximum in arcsec",
                 ScaleError::OtherFrame { .. } => {
-                    "convert the file to LSRK, or give the velocity to add as a frame offset"
+                    "convert the file to LSRK, or give the velocity to add with --frame-offset-km-s"
                 }
                 ScaleError::OffsetInLsrk { .. } => "leave the frame offset out",
                 ScaleError::Offset { .. } => "the offset is in km/s",
@@ -285,7 +285,7 @@ impl ScaleError {
                 ScaleError::LineOutsideBand { .. } | ScaleError::OtherLine { .. } => {
                     "check the line's name, and thick and thin for a swap"
                 }
-                ScaleError::Spectrum { .. } => return None,
+                ScaleError::Spectrum { .. } => "check the channels' order and the blank values",
             }
             .into(),
         )

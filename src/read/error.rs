@@ -93,6 +93,14 @@ pub enum ReadError {
         /// The first bytes, in words.
         found: String,
     },
+    /// A file with the name of a FITS file that is none.
+    #[error("{}: starts with `{found}`, expected FITS (`SIMPLE  =`) by its name", path.display())]
+    NotFits {
+        /// The file.
+        path: PathBuf,
+        /// The beginning of its first line.
+        found: String,
+    },
     /// Text in another encoding than UTF-8.
     #[error("{}:{line}: byte {found:#04x}, expected text in UTF-8", path.display())]
     NotUtf8 {
@@ -342,7 +350,7 @@ pub enum ReadError {
         cards: usize,
     },
     /// A FITS header with bytes that are not printable ASCII.
-    #[error("{}: HDU {unit}: byte {found:#04x} in card {card}, expected printable ASCII", path.display())]
+    #[error("{}: HDU {unit}: byte {found:#04x} in card {card}, expected printable ASCII up to an END card", path.display())]
     FitsHeaderByte {
         /// The file.
         path: PathBuf,
@@ -509,6 +517,9 @@ impl ReadError {
             }
             ReadError::Unrecognised { .. } => {
                 "give CSV, ECSV, plain columns or FITS, or one of these as .gz".into()
+            }
+            ReadError::NotFits { .. } => {
+                "call a text file .csv or .txt; a FITS file that begins like this is damaged".into()
             }
             ReadError::NotUtf8 { .. } => {
                 "save the file as UTF-8, or use plain ASCII in names and comments".into()

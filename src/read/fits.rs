@@ -307,7 +307,7 @@ fn header_bytes(path: &Path, unit: usize, bytes: &[u8]) -> Result<usize, ReadErr
     Err(ReadError::FitsNoEnd {
         path: path.to_path_buf(),
         unit,
-        cards,
+        cards: bytes.len() / CARD_BYTES,
     })
 }
 

@@ -84,6 +84,9 @@ fn image_axis(
         let scale = unit.number(path, &format!("PC{number}_{number}"))?;
         needed(&name("CDELT"))? * scale.unwrap_or(1.0)
     };
+    if increment == 0.0 {
+        return Err(unit.wrong_card(path, &name("CDELT"), "0".into(), "a number other than 0"));
+    }
     refuse_rotation(path, unit, number)?;
     let factor = axis_factor(
         path,

@@ -148,9 +148,10 @@ fn from_bytes(
     }
     let text = text::decode(path, content)?;
     if is_named_fits(path) {
-        return Err(ReadError::Unrecognised {
+        let first = text.trim().lines().next().unwrap_or_default();
+        return Err(ReadError::NotFits {
             path: path.to_path_buf(),
-            found: format!("`{}`", text.trim().chars().take(20).collect::<String>()),
+            found: first.chars().take(20).collect(),
         });
     }
     let lines = text::lines(text);

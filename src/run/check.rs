@@ -63,7 +63,8 @@ pub fn check_file(
         }
         (None, None) => {
             check.doubts.push(
-                "no rest frequency in the file and no line given: velocities stay open".to_owned(),
+                "no rest frequency in the file and no line given (--line): velocities stay open"
+                    .to_owned(),
             );
             return Ok(check);
         }

@@ -7,7 +7,7 @@ use crate::prepare::{PairError, PrepareError};
 use crate::read::ReadError;
 use crate::report::ReportError;
 use crate::simulate::SimulateError;
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 
 /// Why a run cannot be done.
 #[derive(Debug, thiserror::Error)]
@@ -20,6 +20,18 @@ pub enum RunError {
         /// Why.
         source: std::io::Error,
     },
+    /// A run sheet that is not there.
+    #[error("{}: no such file, expected a run sheet", path.display())]
+    NoSheet {
+        /// The file.
+        path: PathBuf,
+    },
+    /// Something else in an output directory's place.
+    #[error("{}: a file, expected a directory or nothing", path.display())]
+    NotADirectory {
+        /// What stands there.
+        path: PathBuf,
+    },
     /// A file that is no run sheet.
     #[error("{}{}: {message}", path.display(), line.map_or(String::new(), |line| format!(":{line}")))]
     Sheet {
@@ -31,6 +43,14 @@ pub enum RunError {
         message: String,
         /// What to do.
         hint: Option<String>,
+    },
+    /// Something in a run sheet that cannot be used, or is missing there.
+    #[error("{}: {error}", path.display())]
+    InSheet {
+        /// The run sheet.
+        path: PathBuf,
+        /// What.
+        error: Box<RunError>,
     },
     /// A setting that cannot be used.
     #[error("{key}: {message}")]
@@ -65,7 +85,7 @@ pub enum RunError {
         error: LineError,
     },
     /// Thick and thin line in each other's place.
-    #[error("{evidence}: thick and thin line seem to be swapped")]
+    #[error("{evidence}, expected the other way round: thick and thin line seem to be swapped")]
     Swapped {
         /// What speaks for it.
         evidence: String,
@@ -84,6 +104,16 @@ pub enum RunError {
         /// Why.
         error: PrepareError,
     },
+    /// Two spectra that do not make a pair.
+    #[error("{} and {}: {error}", thick.display(), thin.display())]
+    Pair {
+        /// The thick line's file.
+        thick: PathBuf,
+        /// The thin line's file.
+        thin: PathBuf,
+        /// Why.
+        error: FitError,
+    },
     /// A pair that cannot be fitted.
     #[error(transparent)]
     Fit(#[from] FitError),
@@ -99,6 +129,25 @@ pub enum RunError {
 }
 
 impl RunError {
+    /// The same error with the run sheet it stands in, where there is one and the error does not
+    /// name a file.
+    #[must_use]
+    pub fn of_sheet(self, sheet: Option<&Path>) -> Self {
+        match (sheet, self) {
+            (
+                Some(path),
+                error @ (Self::NoFile { .. }
+                | Self::NoLine { .. }
+                | Self::Line { .. }
+                | Self::Setting { .. }),
+            ) => Self::InSheet {
+                path: path.to_owned(),
+                error: Box::new(error),
+            },
+            (_, error) => error,
+        }
+    }
+
     /// A setting with what was found and expected.
     #[must_use]
     pub fn setting(key: &str, found: &str, expected: &str) -> Self {
@@ -106,6 +155,29 @@ impl RunError {
             key: key.to_owned(),
             message: format!("{found}, expected {expected}"),
             hint: None,
+        }
+    }
+
+    /// The same with what to do about it.
+    #[must_use]
+    pub(super) fn hinted(self, text: &str) -> Self {
+        match self {
+            Self::Setting { key, message, .. } => Self::Setting {
+                key,
+                message,
+                hint: Some(text.to_owned()),
+            },
+            other => other,
+        }
+    }
+
+    /// An error of fitting: with the files where it is about the spectra, not a setting.
+    pub(super) fn of_fit(error: FitError, (thick, thin): (PathBuf, PathBuf)) -> Self {
+        match error {
+            FitError::NoCommonVelocities { .. } | FitError::TooFewChannels { .. } => {
+                Self::Pair { thick, thin, error }
+            }
+            other => Self::Fit(other),
         }
     }
 
@@ -124,7 +196,13 @@ impl RunError {
     #[must_use]
     pub fn hint(&self) -> Option<String> {
         match self {
-            Self::File { .. } => Some("check the path and its permissions".to_owned()),
+            Self::File { .. } | Self::NoSheet { .. } => {
+                Some("check the path and its permissions".to_owned())
+            }
+            Self::NotADirectory { .. } => {
+                Some("give --out another name, or move the file away".to_owned())
+            }
+            Self::InSheet { error, .. } => error.hint(),
             Self::Sheet { hint, .. } | Self::Setting { hint, .. } => hint.clone(),
             Self::NoFile { .. } => {
                 Some("inrush fit --help shows both ways to give a pair".to_owned())
@@ -137,7 +215,7 @@ impl RunError {
             Self::Read(error) => error.hint(),
             Self::Scale(error) => error.hint(),
             Self::Prepare { error, .. } => error.hint(),
-            Self::Fit(error) => error.hint(),
+            Self::Pair { error, .. } | Self::Fit(error) => error.hint(),
             Self::Simulate(error) => error.hint(),
             Self::Report(error) => error.hint(),
             Self::Internal(_) => {

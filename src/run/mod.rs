@@ -10,7 +10,7 @@ pub mod simulate;
 pub use check::{FileCheck, check_file};
 pub use error::RunError;
 pub use pair::{LineOutcome, PairOutcome, fit_pair};
-pub use products::{pair_row, pair_summary, write_products};
+pub use products::{check_directory, pair_row, pair_summary, write_products};
 pub use sheet::{
     Beam, FitSection, Given, LineSection, NumberOrWord, OutputSection, PrepareSection, RangeOrWord,
     Record, RunSheet, SourceSection,
@@ -18,9 +18,9 @@ pub use sheet::{
 
 /// The name most like a text, where one is like it at all.
 pub(crate) fn nearest<'a>(text: &str, names: impl Iterator<Item = &'a str>) -> Option<&'a str> {
-    const ALIKE: f64 = 0.7;
+    const ALIKE: f64 = 0.5;
     names
-        .map(|name| (strsim::jaro_winkler(name, text), name))
+        .map(|name| (strsim::normalized_damerau_levenshtein(name, text), name))
         .filter(|(likeness, _)| *likeness >= ALIKE)
         .max_by(|a, b| a.0.total_cmp(&b.0))
         .map(|(_, name)| name)

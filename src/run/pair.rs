@@ -91,14 +91,22 @@ pub fn fit_pair(sheet: &RunSheet, base: &Path) -> Result<PairOutcome, RunError> 
             ..MeasureSettings::default()
         },
     );
-    refuse_exchanged_brightness(&thick_line, &thin_line, &thin_fit, &measures)?;
+    refuse_exchanged_brightness(
+        (&thick_line, &thin_line),
+        (&thick.origin.path, &thin.origin.path),
+        &thin_fit,
+        &measures,
+    )?;
     let fit = crate::fit::fit_pair(
         &prepared_thick,
         &prepared_thin,
         (&thick_line, &thin_line),
         thin_fit.line.as_ref(),
         &settings,
-    )?;
+    )
+    .map_err(|error| {
+        RunError::of_fit(error, (thick.origin.path.clone(), thin.origin.path.clone()))
+    })?;
     let cautions = cautions(&PairFacts {
         thick: &prepared_thick,
         thin: &prepared_thin,
@@ -203,8 +211,8 @@ fn refuse_exchanged_lines(thick: &Line, thin: &Line) -> Result<(), RunError> {
 const IMPOSSIBLE_BRIGHTNESS: f64 = 1.5;
 
 fn refuse_exchanged_brightness(
-    thick: &Line,
-    thin: &Line,
+    (thick, thin): (&Line, &Line),
+    (thick_path, thin_path): (&Path, &Path),
     thin_fit: &ThinFit,
     measures: &Measures,
 ) -> Result<(), RunError> {
@@ -216,8 +224,13 @@ fn refuse_exchanged_brightness(
     if significant && isotopologue_pair(thick, thin).is_some() {
         return Err(RunError::Swapped {
             evidence: format!(
-                "{} peaks at {:.2} K and {}, its rarer isotopologue, at {:.2} K",
-                thick.name, peak.value, thin.name, line.peak_k.value
+                "{}: {} peaks at {:.2} K, and in {} {}, its rarer isotopologue, at {:.2} K",
+                thick_path.display(),
+                thick.name,
+                peak.value,
+                thin_path.display(),
+                thin.name,
+                line.peak_k.value
             ),
         });
     }

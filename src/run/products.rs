@@ -103,6 +103,22 @@ pub fn pair_summary(outcome: &PairOutcome) -> Result<String, RunError> {
     Ok(report::summary(&pair_row(outcome)?, &sentences))
 }
 
+/// Whether products can be written into a directory, as far as can be told without making it: before
+/// a long run, not after it.
+///
+/// # Errors
+///
+/// [`RunError::NotADirectory`] where a file stands in its place or above it.
+pub fn check_directory(directory: &Path) -> Result<(), RunError> {
+    let existing = directory.ancestors().find(|path| path.exists());
+    match existing {
+        Some(path) if !path.is_dir() => Err(RunError::NotADirectory {
+            path: path.to_owned(),
+        }),
+        _ => Ok(()),
+    }
+}
+
 /// Writes every product of a pair into a directory and returns their paths, in order.
 ///
 /// `sheet` as it was run, `base` what its paths are relative to. Each file is whole or absent.

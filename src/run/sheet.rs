@@ -18,7 +18,7 @@ use std::path::{Path, PathBuf};
 
 /// A number, or a number with its standard error.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
-#[serde(untagged)]
+#[serde(untagged, expecting = "expected a number, or [value, error]")]
 pub enum Given {
     /// The value alone.
     Value(f64),
@@ -39,7 +39,7 @@ impl Given {
 
 /// One number, or two.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
-#[serde(untagged)]
+#[serde(untagged, expecting = "expected a width, or [major, minor], in arcsec")]
 pub enum Beam {
     /// A round beam's full width at half maximum.
     Round(f64),
@@ -49,7 +49,10 @@ pub enum Beam {
 
 /// A number or a word.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
-#[serde(untagged)]
+#[serde(
+    untagged,
+    expecting = "expected a whole number from 0, or a text in quotes"
+)]
 pub enum NumberOrWord {
     /// A whole number.
     Number(usize),
@@ -59,7 +62,7 @@ pub enum NumberOrWord {
 
 /// A range of velocities or a word.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
-#[serde(untagged)]
+#[serde(untagged, expecting = "expected [low, high] in km/s, or \"all\"")]
 pub enum RangeOrWord {
     /// Low and high, km/s.
     Range([f64; 2]),
@@ -262,15 +265,20 @@ impl RunSheet {
     /// [`RunError::File`] where it cannot be read, [`RunError::Sheet`] with the line and the nearest
     /// known key where it is not one.
     pub fn read(path: &Path) -> Result<Self, RunError> {
-        let bytes = std::fs::read(path).map_err(|source| RunError::File {
-            path: path.to_owned(),
-            source,
+        let bytes = std::fs::read(path).map_err(|source| match source.kind() {
+            std::io::ErrorKind::NotFound => RunError::NoSheet {
+                path: path.to_owned(),
+            },
+            _ => RunError::File {
+                path: path.to_owned(),
+                source,
+            },
         })?;
         let text = String::from_utf8(bytes).map_err(|_| RunError::Sheet {
             path: path.to_owned(),
             line: None,
             message: "bytes that are not UTF-8 text, expected a run sheet in TOML".to_owned(),
-            hint: Some("spectra are given with --thick and --thin".to_owned()),
+            hint: Some(NO_SHEET_HINT.to_owned()),
         })?;
         Self::parse(&text, path)
     }
@@ -283,13 +291,12 @@ impl RunSheet {
     pub fn parse(text: &str, path: &Path) -> Result<Self, RunError> {
         let text = text.strip_prefix('\u{feff}').unwrap_or(text);
         toml::from_str(text).map_err(|error| {
-            let line = error
-                .span()
-                .map(|span| text[..span.start.min(text.len())].lines().count().max(1));
-            let (message, hint) = explain(error.message());
+            let span = error.span();
+            let found = span.clone().and_then(|span| text.get(span));
+            let (message, hint) = explain(error.message(), found.unwrap_or_default());
             RunError::Sheet {
                 path: path.to_owned(),
-                line,
+                line: span.map(|span| line_at(text, span.start)),
                 message,
                 hint,
             }
@@ -313,7 +320,8 @@ impl RunSheet {
     pub fn fit_settings(&self) -> Result<FitSettings, RunError> {
         let fit = &self.fit;
         if fit.models.is_empty() {
-            return Err(RunError::setting("fit.models", "no model", "at least one"));
+            return Err(RunError::setting("fit.models", "no model", "at least one")
+                .hinted("leave the key out for the default models"));
         }
         let mut models = Vec::new();
         for name in &fit.models {
@@ -330,7 +338,8 @@ impl RunSheet {
                     "fit.range_km_s",
                     &format!("`{word}`"),
                     "[low, high] or \"all\"",
-                ));
+                )
+                .hinted("leave it out to fit the line windows with a margin"));
             }
             Some(RangeOrWord::Range(range)) => {
                 Some(FitRange::Within(window("fit.range_km_s", *range)?))
@@ -343,7 +352,8 @@ impl RunSheet {
                 "fit.isotope_ratio",
                 &format!("{} +- {}", ratio.value, ratio.err),
                 "thick over thin, at least 1, with an error of at least 0",
-            ));
+            )
+            .hinted("the ratio is that of the abundances, such as 68 for 12C/13C"));
         }
         for (name, given) in &fit.given {
             let given = given.estimate();
@@ -352,7 +362,8 @@ impl RunSheet {
                     &format!("fit.given.{name}"),
                     &format!("{} +- {}", given.value, given.err),
                     "a number with an error of at least 0",
-                ));
+                )
+                .hinted("an error of 0 or none holds the parameter, another is a Gaussian prior"));
             }
         }
         Ok(FitSettings {
@@ -390,7 +401,8 @@ impl RunSheet {
                     "prepare.baseline_order",
                     &format!("`{word}`"),
                     "0 to 3 or \"none\"",
-                ));
+                )
+                .hinted("0 is a constant, 1 a straight line; none subtracts nothing"));
             }
         };
         let given = section.window_km_s.or(prepare.window_km_s);
@@ -469,7 +481,7 @@ impl LineSection {
             |error: crate::read::RowChoiceError| RunError::Setting {
                 key: "row".to_owned(),
                 message: error.to_string(),
-                hint: None,
+                hint: Some("give a row's number, from 1, or COLUMN=VALUE".to_owned()),
             },
         )?;
         let value_unit = self
@@ -522,7 +534,8 @@ fn window(key: &str, [low_km_s, high_km_s]: [f64; 2]) -> Result<Window, RunError
             key,
             &format!("[{low_km_s}, {high_km_s}]"),
             "two velocities in km/s, the lower first",
-        ))
+        )
+        .hinted("exchange the two"))
     }
 }
 
@@ -536,18 +549,62 @@ fn unknown_model(name: &str) -> RunError {
     }
 }
 
-/// The parser's message in our words, and the nearest known key where a key is unknown.
-fn explain(message: &str) -> (String, Option<String>) {
+/// What to do where something else than a run sheet was given.
+const NO_SHEET_HINT: &str = "spectra are given with --thick and --thin";
+
+/// The line, from 1, that a byte of a text stands in.
+fn line_at(text: &str, byte: usize) -> usize {
+    1 + text
+        .bytes()
+        .take(byte)
+        .filter(|byte| *byte == b'\n')
+        .count()
+}
+
+/// The parser's message in our words, and what to do; `found` is the text that it is about.
+fn explain(message: &str, found: &str) -> (String, Option<String>) {
+    let message = message.trim().replace('\n', ": ");
     let mut quoted = message.split('`').skip(1).step_by(2);
     if message.starts_with("unknown field") {
         let unknown = quoted.next().unwrap_or_default().to_owned();
         let known: Vec<&str> = quoted.collect();
-        let hint = super::nearest(&unknown, known.iter().copied())
-            .map(|key| format!("did you mean `{key}`?"));
+        let hint = super::nearest(&unknown, known.iter().copied()).map_or_else(
+            || "remove the key".to_owned(),
+            |key| format!("did you mean `{key}`?"),
+        );
+        let message = format!("the key `{unknown}`, expected one of {}", known.join(", "));
+        return (message, Some(hint));
+    }
+    let found = found.trim();
+    if message.starts_with("duplicate key") {
         return (
-            format!("the key `{unknown}`, expected one of {}", known.join(", ")),
-            hint,
+            format!("the key `{found}` twice, expected it once in its section"),
+            Some("remove one of the two".to_owned()),
         );
     }
-    (message.trim().replace('\n', ": "), None)
+    if let Some((_, expected)) = message.split_once("expected ")
+        && (message.starts_with("invalid") || message.starts_with("expected "))
+    {
+        return (
+            format!("{found}, expected {}", in_words(expected)),
+            Some("text stands in quotes, numbers do not, several values in [ ]".to_owned()),
+        );
+    }
+    let hint = format!(
+        "a run sheet has lines such as `[thick]` and `file = \"thick.csv\"`; {NO_SHEET_HINT}"
+    );
+    (format!("{message}, in a run sheet (TOML)"), Some(hint))
+}
+
+/// What the parser expected, without the names of types.
+fn in_words(expected: &str) -> &str {
+    match expected {
+        "f64" => "a number",
+        "u64" | "usize" => "a whole number from 0",
+        "a string" | "path string" => "a text in quotes",
+        "an array of length 2" => "two numbers in [ ]",
+        "a boolean" => "true or false",
+        "a sequence" => "a list in [ ]",
+        other => other,
+    }
 }

@@ -19,8 +19,11 @@ pub fn check_jacobian<P: LeastSquares + ?Sized>(
     let rows = problem.residuals();
     let mut ahead = vec![0.0; rows];
     let mut behind = vec![0.0; rows];
+    let structure = problem.structure();
+    let mut stored = vec![0.0; structure.numbers()];
+    problem.evaluate(parameters, &mut ahead, Some(&mut stored));
     let mut jacobian = vec![0.0; rows * parameters.len()];
-    problem.evaluate(parameters, &mut ahead, Some(&mut jacobian));
+    structure.expand(&stored, parameters.len(), &mut jacobian);
     let mut shifted = parameters.to_vec();
     let mut worst = 0.0_f64;
     for (parameter, column) in jacobian.chunks_exact(rows).enumerate() {

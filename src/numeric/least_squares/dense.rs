@@ -2,6 +2,14 @@
 //!
 //! Tall matrices are column by column in plain slices; small ones are fixed-size arrays on the stack.
 
+#![allow(
+    clippy::inline_always,
+    reason = "has to be compiled inside each instruction-set copy"
+)]
+
+use super::{RowBlock, Structure};
+use crate::numeric::dispatch::{Arithmetic, Kernel, dispatch};
+
 /// Most parameters a problem may have.
 pub const MAX_PARAMETERS: usize = 16;
 
@@ -10,82 +18,120 @@ pub(super) type Vector = [f64; MAX_PARAMETERS];
 /// A small square matrix, `matrix[row][column]`.
 pub(super) type Matrix = [Vector; MAX_PARAMETERS];
 
-/// Independent partial sums of a dot product: enough for the compiler to fill vector registers.
-const LANES: usize = 4;
+/// Independent partial sums of a dot product: one register of the widest instructions.
+const LANES: usize = 8;
 /// Rows of a block: 256 rows of 9 columns take 18 kB, so that a block stays in the first cache.
 const BLOCK: usize = 256;
 
-/// `sum_i a_i b_i`.
+/// `sum_i a_i b_i` of short slices.
 pub(super) fn dot(a: &[f64], b: &[f64]) -> f64 {
-    let [sum] = dot_with(a, [b]);
-    sum
+    a.iter().zip(b).map(|(a, b)| a * b).sum()
 }
 
 /// `sum_i r_i^2`, block by block.
 pub(super) fn sum_of_squares(values: &[f64]) -> f64 {
-    values.chunks(BLOCK).map(|block| dot(block, block)).sum()
+    struct Squares<'a>(&'a [f64]);
+    impl Kernel for Squares<'_> {
+        type Output = f64;
+        #[inline(always)]
+        fn run<A: Arithmetic>(self) -> f64 {
+            let mut total = 0.0;
+            for block in self.0.chunks(BLOCK) {
+                total += dot_with::<1, A>(block, [block])[0];
+            }
+            total
+        }
+    }
+    dispatch(Squares(values))
 }
 
 /// The dot products of `a` with `N` others, in one pass over `a`.
-#[inline]
-fn dot_with<const N: usize>(a: &[f64], others: [&[f64]; N]) -> [f64; N] {
-    let others = others.map(|other| &other[..a.len()]);
+#[inline(always)]
+fn dot_with<const N: usize, A: Arithmetic>(a: &[f64], others: [&[f64]; N]) -> [f64; N] {
     let mut sums = [[0.0; LANES]; N];
-    let whole = a.len() - a.len() % LANES;
-    let mut start = 0;
-    while start < whole {
-        let left = &a[start..start + LANES];
-        for (sum, other) in sums.iter_mut().zip(others) {
-            let right = &other[start..start + LANES];
+    let (whole, rest) = a.as_chunks::<LANES>();
+    let others = others.map(|other| other[..a.len()].as_chunks::<LANES>());
+    for (index, left) in whole.iter().enumerate() {
+        for k in 0..N {
+            let right = &others[k].0[index];
             for lane in 0..LANES {
-                sum[lane] += left[lane] * right[lane];
+                sums[k][lane] = A::mul_add(left[lane], right[lane], sums[k][lane]);
             }
         }
-        start += LANES;
     }
     let mut totals = [0.0; N];
-    for ((total, sum), other) in totals.iter_mut().zip(sums).zip(others) {
-        let rest: f64 = (whole..a.len()).map(|i| a[i] * other[i]).sum();
-        *total = sum.iter().sum::<f64>() + rest;
+    for k in 0..N {
+        let mut tail = 0.0;
+        for (left, right) in rest.iter().zip(others[k].1) {
+            tail = A::mul_add(*left, *right, tail);
+        }
+        let s = &sums[k];
+        totals[k] = ((s[0] + s[4]) + (s[1] + s[5])) + ((s[2] + s[6]) + (s[3] + s[7])) + tail;
     }
     totals
 }
 
-/// J^T J and J^T r of `columns` columns of `rows` rows each.
+/// J^T J and J^T r of a stored Jacobian.
 pub(super) fn normal_equations(
     jacobian: &[f64],
     residuals: &[f64],
-    rows: usize,
-    columns: usize,
+    structure: &Structure,
 ) -> (Matrix, Vector) {
     let mut gram = [[0.0; MAX_PARAMETERS]; MAX_PARAMETERS];
     let mut gradient = [0.0; MAX_PARAMETERS];
-    for start in (0..rows).step_by(BLOCK) {
-        let end = rows.min(start + BLOCK);
-        let column = |j: usize| &jacobian[j * rows + start..j * rows + end];
-        let block_residuals = &residuals[start..end];
-        for i in 0..columns {
-            let left = column(i);
-            gradient[i] += dot(left, block_residuals);
-            let mut j = i;
-            while j + 2 <= columns {
-                let sums = dot_with(left, [column(j), column(j + 1)]);
-                gram[i][j] += sums[0];
-                gram[i][j + 1] += sums[1];
-                j += 2;
-            }
-            if j < columns {
-                gram[i][j] += dot(left, column(j));
-            }
-        }
-    }
-    let upper = gram;
-    for (i, row) in gram.iter_mut().enumerate().take(columns) {
-        for (element, source) in row.iter_mut().zip(&upper).take(i) {
-            *element = source[i];
-        }
+    for (block, numbers, right) in structure.parts(jacobian, residuals) {
+        dispatch(Products {
+            block,
+            numbers,
+            right,
+            gram: &mut gram,
+            gradient: &mut gradient,
+        });
     }
     (gram, gradient)
+}
+
+/// Adds one row block's products.
+struct Products<'a> {
+    block: &'a RowBlock,
+    numbers: &'a [f64],
+    right: &'a [f64],
+    gram: &'a mut Matrix,
+    gradient: &'a mut Vector,
+}
+
+impl Kernel for Products<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        let parameters = self.block.parameters();
+        let rows = self.right.len();
+        for start in (0..rows).step_by(BLOCK) {
+            let end = rows.min(start + BLOCK);
+            let right = &self.right[start..end];
+            for (k, &i) in parameters.iter().enumerate() {
+                let left = &self.numbers[k * rows + start..k * rows + end];
+                let [by_right, square] = dot_with::<2, A>(left, [right, left]);
+                self.gradient[i] += by_right;
+                self.gram[i][i] += square;
+                let mut l = k + 1;
+                while l < parameters.len() {
+                    let column = |l: usize| {
+                        let l = l.min(parameters.len() - 1);
+                        &self.numbers[l * rows + start..l * rows + end]
+                    };
+                    let products =
+                        dot_with::<3, A>(left, [column(l), column(l + 1), column(l + 2)]);
+                    for (product, &j) in products.iter().zip(&parameters[l..]) {
+                        self.gram[i][j] += product;
+                        self.gram[j][i] += product;
+                    }
+                    l += 3;
+                }
+            }
+        }
+    }
 }
 
 /// Replaces the upper left `size` x `size` lower triangle of a symmetric matrix by its Cholesky
@@ -168,7 +214,8 @@ mod tests {
         for (rows, columns) in [(3, 1), (17, 4), (256, 5), (700, 9), (1031, 16)] {
             let jacobian: Vec<f64> = (0..columns).flat_map(|j| sample(rows, j as f64)).collect();
             let residuals = sample(rows, 0.5);
-            let (gram, gradient) = normal_equations(&jacobian, &residuals, rows, columns);
+            let (gram, gradient) =
+                normal_equations(&jacobian, &residuals, &Structure::dense(rows, columns));
             for i in 0..columns {
                 let column = |j: usize| &jacobian[j * rows..(j + 1) * rows];
                 for j in 0..columns {
@@ -186,7 +233,8 @@ mod tests {
         let (rows, columns) = (40, 6);
         let jacobian: Vec<f64> = (0..columns).flat_map(|j| sample(rows, j as f64)).collect();
         let right = sample(rows, 0.5);
-        let (gram, gradient) = normal_equations(&jacobian, &right, rows, columns);
+        let (gram, gradient) =
+            normal_equations(&jacobian, &right, &Structure::dense(rows, columns));
         let (mut reduced, mut rotated) = (jacobian, right);
         triangularise(&mut reduced, rows, columns, &mut rotated);
         let triangle = |row: usize, column: usize| {

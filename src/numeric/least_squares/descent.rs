@@ -8,7 +8,9 @@
 
 use super::dense::{self, MAX_PARAMETERS, Matrix, Vector};
 use super::minimum::Curvature;
-use super::{Interval, LeastSquares, LeastSquaresError, Minimum, Settings, Side, Termination};
+use super::{
+    Interval, LeastSquares, LeastSquaresError, Minimum, Settings, Side, Structure, Termination,
+};
 
 /// Smallest relative pivot of the normal equations: rounding (2e-16) over this is below 1e-8.
 const SMALLEST_PIVOT: f64 = 1e-7;
@@ -66,6 +68,7 @@ impl Workspace {
 /// A search under way.
 #[derive(Clone, Debug)]
 pub struct Descent {
+    structure: Structure,
     rows: usize,
     columns: usize,
     parameters: Vector,
@@ -97,15 +100,17 @@ impl Descent {
         let (rows, columns) = (problem.residuals(), problem.parameters());
         settings.validate()?;
         let free = check_start(rows, columns, start, bounds)?;
+        let structure = problem.structure();
         workspace.reserve(rows, columns);
         let residuals = &mut workspace.residuals[..rows];
-        let jacobian = &mut workspace.jacobian[..rows * columns];
+        let jacobian = &mut workspace.jacobian[..structure.numbers()];
         problem.evaluate(start, residuals, Some(jacobian));
-        check_values(residuals, jacobian)?;
+        check_values(residuals, jacobian, &structure)?;
         let mut parameters = [0.0; MAX_PARAMETERS];
         parameters[..columns].copy_from_slice(start);
-        let linear = Linearisation::new(jacobian, residuals, rows, columns);
+        let linear = Linearisation::new(jacobian, residuals, &structure, columns);
         let mut descent = Self {
+            structure,
             rows,
             columns,
             parameters,
@@ -215,7 +220,7 @@ impl Descent {
         let free: Vec<usize> = (0..self.columns)
             .filter(|&j| at_bound[j].is_none())
             .collect();
-        let triangle = self.linear.free_triangle(&free, workspace, self.rows);
+        let triangle = self.linear.free_triangle(&free, workspace, &self.structure);
         Minimum {
             parameters: self.parameters().to_vec(),
             chi2: self.chi2,
@@ -238,7 +243,7 @@ impl Descent {
     ) -> bool {
         let trial = self.moved(step, bounds);
         let residuals = &mut workspace.trial_residuals[..self.rows];
-        let jacobian = &mut workspace.trial_jacobian[..self.rows * self.columns];
+        let jacobian = &mut workspace.trial_jacobian[..self.structure.numbers()];
         problem.evaluate(&trial[..self.columns], residuals, Some(jacobian));
         let chi2 = dense::sum_of_squares(residuals);
         self.gain = if chi2.is_finite() {
@@ -249,7 +254,7 @@ impl Descent {
         if self.gain.is_nan() || self.gain < LEAST_GAIN || step.decrease <= 0.0 {
             return false;
         }
-        let linear = Linearisation::new(jacobian, residuals, self.rows, self.columns);
+        let linear = Linearisation::new(jacobian, residuals, &self.structure, self.columns);
         if !linear.is_finite() {
             return false;
         }
@@ -402,8 +407,8 @@ impl Descent {
             self.largest_norms
         });
         loop {
-            let (linear, rows) = (&mut self.linear, self.rows);
-            let target = linear.solve(damping, &scale, &step, workspace, rows);
+            let (linear, structure) = (&mut self.linear, &self.structure);
+            let target = linear.solve(damping, &scale, &step, workspace, structure);
             let Some((fraction, blocking, side)) = self.first_bound(&step, &target, bounds) else {
                 step.shift = target;
                 step.decrease = self.linear.decrease(&step.shift);
@@ -473,8 +478,8 @@ struct Triangle {
 }
 
 impl Linearisation {
-    fn new(jacobian: &[f64], residuals: &[f64], rows: usize, columns: usize) -> Self {
-        let (gram, gradient) = dense::normal_equations(jacobian, residuals, rows, columns);
+    fn new(jacobian: &[f64], residuals: &[f64], structure: &Structure, columns: usize) -> Self {
+        let (gram, gradient) = dense::normal_equations(jacobian, residuals, structure);
         Self {
             columns,
             gram,
@@ -518,7 +523,7 @@ impl Linearisation {
         scale: &Vector,
         step: &Step,
         workspace: &mut Workspace,
-        rows: usize,
+        structure: &Structure,
     ) -> Vector {
         let mut shift = step.shift;
         let mut free = [0; MAX_PARAMETERS];
@@ -536,7 +541,7 @@ impl Linearisation {
         }
         let columns = self.columns;
         self.triangle
-            .get_or_insert_with(|| Triangle::new(workspace, rows, columns))
+            .get_or_insert_with(|| Triangle::new(workspace, structure, columns))
             .solve(columns, damping, scale, free, &mut shift);
         shift
     }
@@ -570,7 +575,12 @@ impl Linearisation {
     }
 
     /// R of the `free` columns alone, column by column.
-    fn free_triangle(&self, free: &[usize], workspace: &mut Workspace, rows: usize) -> Vec<f64> {
+    fn free_triangle(
+        &self,
+        free: &[usize],
+        workspace: &mut Workspace,
+        structure: &Structure,
+    ) -> Vec<f64> {
         let size = free.len();
         let mut triangle = vec![0.0; size * size];
         let mut matrix = [[0.0; MAX_PARAMETERS]; MAX_PARAMETERS];
@@ -589,7 +599,7 @@ impl Linearisation {
         }
         let full = match &self.triangle {
             Some(full) => full.clone(),
-            None => Triangle::new(workspace, rows, self.columns),
+            None => Triangle::new(workspace, structure, self.columns),
         };
         let n = self.columns;
         let mut reduced = [0.0; MAX_PARAMETERS * MAX_PARAMETERS];
@@ -610,10 +620,11 @@ impl Linearisation {
 
 impl Triangle {
     /// Of the current Jacobian and residuals; works in the trial buffers.
-    fn new(workspace: &mut Workspace, rows: usize, columns: usize) -> Self {
+    fn new(workspace: &mut Workspace, structure: &Structure, columns: usize) -> Self {
+        let rows = structure.rows();
         let matrix = &mut workspace.trial_jacobian[..rows * columns];
         let rotated = &mut workspace.trial_residuals[..rows];
-        matrix.copy_from_slice(&workspace.jacobian[..rows * columns]);
+        structure.expand(&workspace.jacobian, columns, matrix);
         rotated.copy_from_slice(&workspace.residuals[..rows]);
         dense::triangularise(matrix, rows, columns, rotated);
         let mut upper = [[0.0; MAX_PARAMETERS]; MAX_PARAMETERS];
@@ -714,7 +725,11 @@ fn check_start(
 }
 
 /// Checks that the values at the start can be squared.
-fn check_values(residuals: &[f64], jacobian: &[f64]) -> Result<(), LeastSquaresError> {
+fn check_values(
+    residuals: &[f64],
+    jacobian: &[f64],
+    structure: &Structure,
+) -> Result<(), LeastSquaresError> {
     let rows = residuals.len();
     let unusable = |value: &f64| !(value * value * rows as f64).is_finite();
     if let Some(residual) = residuals.iter().position(unusable) {
@@ -724,9 +739,10 @@ fn check_values(residuals: &[f64], jacobian: &[f64]) -> Result<(), LeastSquaresE
         });
     }
     if let Some(index) = jacobian.iter().position(unusable) {
+        let (residual, parameter) = structure.place(index);
         return Err(LeastSquaresError::StartJacobian {
-            residual: index % rows,
-            parameter: index / rows,
+            residual,
+            parameter,
             found: jacobian[index],
         });
     }

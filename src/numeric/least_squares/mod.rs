@@ -16,6 +16,7 @@ mod error;
 mod minimum;
 mod settings;
 mod solver;
+mod structure;
 mod termination;
 
 pub use bounds::{Interval, Side, unbounded};
@@ -26,6 +27,7 @@ pub use error::LeastSquaresError;
 pub use minimum::{Covariance, CovarianceError, Minimum};
 pub use settings::Settings;
 pub use solver::LevenbergMarquardt;
+pub use structure::{MAX_BLOCKS, RowBlock, Structure};
 pub use termination::Termination;
 
 /// Residuals and their derivatives.
@@ -40,9 +42,14 @@ pub trait LeastSquares {
     /// Number of residuals m.
     fn residuals(&self) -> usize;
 
+    /// Which residuals depend on which parameters: all on all, unless a problem says otherwise.
+    fn structure(&self) -> Structure {
+        Structure::dense(self.residuals(), self.parameters())
+    }
+
     /// The residuals into `residuals` (length m) and, when asked for, their derivatives into
-    /// `jacobian` (length n m, column by column: that of residual i by parameter j is
-    /// `jacobian[j * m + i]`).
+    /// `jacobian`, stored as [`LeastSquares::structure`] says: where all depend on all, column by
+    /// column, that of residual i by parameter j at `jacobian[j * m + i]`.
     ///
     /// Every element must be written; the buffers hold old numbers.
     fn evaluate(&mut self, parameters: &[f64], residuals: &mut [f64], jacobian: Option<&mut [f64]>);
@@ -55,6 +62,10 @@ impl<P: LeastSquares + ?Sized> LeastSquares for &mut P {
 
     fn residuals(&self) -> usize {
         (**self).residuals()
+    }
+
+    fn structure(&self) -> Structure {
+        (**self).structure()
     }
 
     fn evaluate(
