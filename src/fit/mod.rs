@@ -522,7 +522,43 @@ fn check_continuum(settings: &FitSettings) -> Result<(), FitError> {
     }
 }
 
-/// Follows every start to a minimum and keeps the best.
+/// How far every start is followed before the best are chosen.
+const SCOUTING: Settings = Settings {
+    max_evaluations: 10,
+    chi2_tolerance: 1e-3,
+    step_tolerance: 1e-12,
+    gradient_tolerance: 1e-12,
+    initial_radius: 1.0,
+};
+
+/// Scouted starts that are followed to their minimum; one more where none of them has the other sign
+/// of the inward speed.
+const POLISHED: usize = 3;
+
+/// The deepest of the scouted starts (sorted by chi2) that have not run into each other, both signs of
+/// the inward speed among them.
+fn worth_polishing(sorted: &[Minimum], v_in: Option<usize>) -> Vec<&Minimum> {
+    const SAME: f64 = 1e-3;
+    let same = |a: &Minimum, b: &Minimum| {
+        (a.chi2 - b.chi2).abs() <= SAME * a.chi2.min(b.chi2)
+            && (a.parameters.iter().zip(&b.parameters))
+                .all(|(a, b)| (a - b).abs() <= 0.02 * (1e-3 + a.abs().max(b.abs())))
+    };
+    let mut kept: Vec<&Minimum> = Vec::new();
+    for scout in sorted {
+        let other_sign = v_in.is_some_and(|index| {
+            let sign = |minimum: &Minimum| minimum.parameters[index] > 0.0;
+            kept.iter().all(|minimum| sign(minimum) != sign(scout))
+        });
+        let wanted = kept.len() < POLISHED || other_sign;
+        if wanted && !kept.iter().any(|minimum| same(minimum, scout)) {
+            kept.push(scout);
+        }
+    }
+    kept
+}
+
+/// Follows the starts and keeps the best minimum.
 fn fit_model(
     layout: Layout,
     thick: &Channels,
@@ -546,13 +582,30 @@ fn fit_model(
         });
     }
     let starts = starts::starts(&layout, thick, thin, kinematics);
-    let mut minima = Vec::with_capacity(starts.len());
+    let mut evaluations = 0;
+    let mut scouted = Vec::with_capacity(starts.len());
     for start in &starts {
         let minimum;
-        (minimum, workspace) = search(&layout, Some(thick), thin, start, workspace)?;
+        (minimum, workspace) = search(&layout, Some(thick), thin, start, &SCOUTING, workspace)?;
+        evaluations += minimum.evaluations;
+        scouted.push(minimum);
+    }
+    scouted.sort_by(|a, b| a.chi2.total_cmp(&b.chi2));
+    let mut minima = Vec::with_capacity(POLISHED + 1);
+    for scout in worth_polishing(&scouted, layout.position("v_in_km_s")) {
+        let minimum;
+        let start = &scout.parameters;
+        (minimum, workspace) = search(
+            &layout,
+            Some(thick),
+            thin,
+            start,
+            &Settings::default(),
+            workspace,
+        )?;
+        evaluations += minimum.evaluations;
         minima.push(minimum);
     }
-    let evaluations = minima.iter().map(|minimum| minimum.evaluations).sum();
     let Some(best) = minima.iter().min_by(|a, b| a.chi2.total_cmp(&b.chi2)) else {
         return Err(FitError::Search(format!(
             "no start for the {} model",
@@ -626,6 +679,7 @@ fn search(
     thick: Option<&Channels>,
     thin: &Channels,
     start: &[f64],
+    settings: &Settings,
     workspace: Workspace,
 ) -> Result<(Minimum, Workspace), FitError> {
     let bounds: Vec<Interval> = layout
@@ -633,7 +687,7 @@ fn search(
         .iter()
         .map(|parameter| parameter.interval)
         .collect();
-    let solver = LevenbergMarquardt::with_workspace(bounds, Settings::default(), workspace);
+    let solver = LevenbergMarquardt::with_workspace(bounds, *settings, workspace);
     let failed = |error: &dyn std::fmt::Display| FitError::Search(error.to_string());
     let result = argmin::core::Executor::new(JointProblem::new(layout, thick, thin), solver)
         .configure(|state| state.param(start.to_vec()))
