@@ -325,6 +325,32 @@ fn the_table_flows_one_way() {
     }
 }
 
+/// DEVELOPERS.md shows the table to people.
+#[test]
+fn the_developers_page_holds_the_same_table() {
+    const START: &str = "<!-- imports: the table of tests/layering.rs -->\n";
+    const END: &str = "<!-- end of imports -->";
+    let path = concat!(env!("CARGO_MANIFEST_DIR"), "/DEVELOPERS.md");
+    let page = fs::read_to_string(path).expect("DEVELOPERS.md");
+    let (before, rest) = page.split_once(START).expect("the table's start");
+    let (found, after) = rest.split_once(END).expect("the table's end");
+    let mut expected = String::from("| module | may use |\n| --- | --- |\n");
+    for (module, allowed) in MAY_USE {
+        for part in ["| ", module, " | ", allowed, " |\n"] {
+            expected.push_str(part);
+        }
+    }
+    if std::env::var_os("INRUSH_WRITE_EXPECTED").is_some() {
+        fs::write(path, format!("{before}{START}{expected}{END}{after}")).expect("written");
+        return;
+    }
+    assert_eq!(
+        found, expected,
+        "DEVELOPERS.md shows another table; run \
+         `INRUSH_WRITE_EXPECTED=1 cargo test --test layering` to write it anew"
+    );
+}
+
 #[test]
 fn a_breach_is_found_however_it_is_written() {
     let cases: &[(&[&str], &str, &str)] = &[

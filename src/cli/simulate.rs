@@ -28,7 +28,7 @@ enum What {
 ///
 ///   inrush simulate pair --out simulated
 ///
-///   inrush simulate pair --out simulated --model two-layer --set v_in_km_s=0.2 --set tau=5 --noise-k 0.05
+///   inrush simulate pair --out simulated --model two-layer --set tau=5 --noise-k 0.05
 ///
 /// The first makes a blue two-peaked HCO+ 1-0 and an H13CO+ 1-0. Options without a line's name hold for
 /// both lines.

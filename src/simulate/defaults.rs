@@ -1,12 +1,15 @@
-//! Values that a truth starts from: a clump that falls in at 0.45 km/s, seen at 3 mm.
+//! Values that a truth starts from: a clump that falls in, seen at 3 mm.
 
 use crate::model::Model;
 
 /// Velocity dispersion of both lines, km/s.
 const SIGMA_KM_S: f64 = 0.62;
 
-/// Inward speed of the models that have one, km/s.
-const V_IN_KM_S: f64 = 0.45;
+/// Inward speed of the hill, km/s.
+const V_IN_HILL_KM_S: f64 = 0.45;
+
+/// Inward speed of the two layers, km/s: they lose their red peak at lower speeds than the hill.
+const V_IN_TWO_LAYER_KM_S: f64 = 0.2;
 
 /// A default of each parameter of a model, in the model's order.
 ///
@@ -17,10 +20,19 @@ pub(super) fn parameters(model: Model) -> &'static [f64] {
         Model::Gaussian => &[0.0, SIGMA_KM_S, 0.9],
         Model::TwoGaussians => &[-0.6, SIGMA_KM_S, 0.9, 1.2, SIGMA_KM_S, 0.5],
         Model::Layer => &[0.0, SIGMA_KM_S, 0.118, 11.0],
-        Model::TwoLayer => &[0.0, SIGMA_KM_S, V_IN_KM_S, 3.0, 6.0, 14.0],
-        Model::TwoLayerContinuum => &[0.0, SIGMA_KM_S, V_IN_KM_S, 3.0, 6.0, 14.0, 0.1, 40.0],
-        Model::Hill => &[0.0, SIGMA_KM_S, V_IN_KM_S, 4.0, 16.0],
-        Model::HillSurface => &[0.0, SIGMA_KM_S, V_IN_KM_S, 4.0, 16.0, 3.5],
+        Model::TwoLayer => &[0.0, SIGMA_KM_S, V_IN_TWO_LAYER_KM_S, 4.0, 6.0, 14.0],
+        Model::TwoLayerContinuum => &[
+            0.0,
+            SIGMA_KM_S,
+            V_IN_TWO_LAYER_KM_S,
+            4.0,
+            6.0,
+            14.0,
+            0.05,
+            15.0,
+        ],
+        Model::Hill => &[0.0, SIGMA_KM_S, V_IN_HILL_KM_S, 4.0, 16.0],
+        Model::HillSurface => &[0.0, SIGMA_KM_S, V_IN_HILL_KM_S, 4.0, 16.0, 3.5],
     }
 }
 

@@ -150,3 +150,44 @@ fn profile_k(truth: &LineTruth, velocity_km_s: &[f64], parameters: &[f64]) -> Ve
         .map(|parts| parts.iter().sum::<f64>() / parts.len() as f64)
         .collect()
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::line::find;
+    use crate::model::Model;
+
+    /// The part of a channel that quadrature works on, against the same cut into 16.
+    #[test]
+    fn parts_of_a_channel_are_narrow_enough_at_optical_depth_200() {
+        let line = find("HCO+ 1-0").unwrap();
+        let shape = LineShape::new(line.rest_frequency_ghz, line.components);
+        let (part_km_s, finer) = (1.0 / PARTS_PER_SIGMA, 16u32);
+        let centres: Vec<f64> = (-60..=60).map(|i| part_km_s * f64::from(i)).collect();
+        let fine_centres = centres
+            .iter()
+            .flat_map(|centre| {
+                (0..finer).map(move |i| {
+                    centre + part_km_s * ((f64::from(i) + 0.5) / f64::from(finer) - 0.5)
+                })
+            })
+            .collect();
+        let values = |centres: Vec<f64>, width_km_s: f64| {
+            let widths = vec![width_km_s; centres.len()];
+            let sampling = Sampling::new(centres, widths, Sampling::MOST_POINTS);
+            let mut value = vec![0.0; sampling.len()];
+            let parameters = [0.0, 1.0, 0.7, 200.0, 16.0];
+            Model::Hill.evaluate(&shape, &sampling, &parameters, &mut value, None);
+            value
+        };
+        let coarse = values(centres, part_km_s);
+        let fine = values(fine_centres, part_km_s / f64::from(finer));
+        let peak = coarse.iter().copied().fold(0.0, f64::max);
+        let mut worst = 0.0f64;
+        for (coarse, fine) in coarse.iter().zip(fine.chunks_exact(finer as usize)) {
+            let mean = fine.iter().sum::<f64>() / f64::from(finer);
+            worst = worst.max((coarse - mean).abs());
+        }
+        assert!(worst < 1e-9 * peak, "{}", worst / peak);
+    }
+}

@@ -3,6 +3,7 @@
 use super::correlation::Correlation;
 use super::defaults;
 use super::error::{PairLine, SimulateError};
+use crate::constants::BACKGROUND_TEMPERATURE;
 use crate::line::Line;
 use crate::model::{Model, Parameter};
 use serde::{Deserialize, Serialize};
@@ -359,35 +360,47 @@ fn require(
     })
 }
 
-/// A parameter within the model's bounds; optical depths may also be 0.
-fn check_parameter(line: PairLine, parameter: &Parameter, found: f64) -> Result<(), SimulateError> {
-    let low = if parameter.name.starts_with("tau") {
-        0.0
+/// Narrowest dispersion, km/s: thermal ones are above 0.01 km/s.
+const NARROWEST_KM_S: f64 = 1e-3;
+
+/// Highest temperature, K, optical depth and speed, km/s, that are taken for meant.
+const HIGHEST: f64 = 1e5;
+
+/// What a parameter of a name can be; wider than what a fit looks through by default.
+fn possible(name: &str) -> (f64, f64) {
+    if name.starts_with("sigma") {
+        (NARROWEST_KM_S, HIGHEST)
+    } else if name.starts_with("tau") {
+        (0.0, HIGHEST)
+    } else if name.starts_with("t_") {
+        (BACKGROUND_TEMPERATURE.value, HIGHEST)
+    } else if name == "filling" {
+        (0.0, 1.0)
     } else {
-        parameter.low
-    };
-    let inside = (low..=parameter.high).contains(&found) && found.is_finite();
-    if inside {
+        (-HIGHEST, HIGHEST)
+    }
+}
+
+fn check_parameter(line: PairLine, parameter: &Parameter, found: f64) -> Result<(), SimulateError> {
+    let (low, high) = possible(parameter.name);
+    if (low..=high).contains(&found) {
         return Ok(());
     }
-    let expected = if !low.is_finite() {
-        "a finite number".to_owned()
-    } else if low == crate::constants::BACKGROUND_TEMPERATURE.value {
-        format!("from the background's {low} K to {}", parameter.high)
-    } else {
-        format!("from {low} to {}", parameter.high)
-    };
-    let unit = match parameter.unit {
-        "K" => " K",
-        "km/s" => " km/s",
-        _ => "",
-    };
+    let below_background = low == BACKGROUND_TEMPERATURE.value && found < low;
     Err(SimulateError::Impossible {
         line,
         quantity: parameter.name,
         found,
-        unit,
-        expected,
+        unit: match parameter.unit {
+            "K" => " K",
+            "km/s" => " km/s",
+            _ => "",
+        },
+        expected: if below_background {
+            format!("at least the background's {low} K")
+        } else {
+            format!("{low} to {high}")
+        },
     })
 }
 
