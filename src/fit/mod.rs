@@ -288,6 +288,15 @@ impl ModelFit {
         self.termination.converged()
     }
 
+    /// Whether the data determine the parameters: there are formal errors, or nothing was left free.
+    #[must_use]
+    pub fn determined(&self) -> bool {
+        self.parameters
+            .iter()
+            .any(|parameter| parameter.err.is_some())
+            || self.parameters.iter().all(|parameter| parameter.held)
+    }
+
     fn values(&self) -> Vec<f64> {
         self.parameters
             .iter()
@@ -403,7 +412,7 @@ pub fn fit_pair(
             layout,
             &thick_channels,
             &thin_channels,
-            &kinematics,
+            (&kinematics, intensity),
             workspace,
         )?;
         models.push(fit);
@@ -411,7 +420,7 @@ pub fn fit_pair(
     let adopted = ADOPTION
         .iter()
         .filter_map(|model| models.iter().position(|fit| fit.model == *model))
-        .find(|index| models[*index].converged());
+        .find(|index| models[*index].converged() && models[*index].determined());
     let points = (
         thick_channels.sampling().nodes().len(),
         thin_channels.sampling().nodes().len(),
@@ -476,30 +485,59 @@ fn common_velocities(thick: &Prepared, thin: &Prepared) -> Result<Window, FitErr
     })
 }
 
-/// Refuses bounds and given values that no chosen model would use.
+/// Every parameter name that bounds may use.
+pub fn parameter_names() -> Vec<&'static str> {
+    let mut names: Vec<&'static str> = Model::ALL
+        .iter()
+        .flat_map(|model| model.parameters().iter().map(|parameter| parameter.name))
+        .chain([
+            "v_thin_km_s",
+            "sigma_thin_km_s",
+            "peak_thin_k",
+            "v_second_thin_km_s",
+            "sigma_second_thin_km_s",
+            "peak_second_thin_k",
+            "tau_thin",
+            "t_ex_thin_k",
+            "isotope_ratio",
+        ])
+        .collect();
+    names.sort_unstable();
+    names.dedup();
+    names
+}
+
+/// Refuses bounds of no model's parameter, and given values that no chosen model would use: they
+/// would be lost without a word.
 fn check_names(settings: &FitSettings, layouts: &[Layout]) -> Result<(), FitError> {
-    let mut names: Vec<&'static str> = Vec::new();
+    let mut chosen: Vec<&'static str> = Vec::new();
     for parameter in layouts.iter().flat_map(Layout::parameters) {
-        if !names.contains(&parameter.name) {
-            names.push(parameter.name);
+        if !chosen.contains(&parameter.name) {
+            chosen.push(parameter.name);
         }
     }
-    for name in settings.bounds.keys().chain(settings.given.keys()) {
-        if !names.contains(&name.as_str()) {
-            let likeness = |known: &str| strsim::normalized_damerau_levenshtein(known, name);
-            let nearest = names
-                .iter()
-                .copied()
-                .max_by(|a, b| likeness(a).total_cmp(&likeness(b)))
-                .filter(|nearest| likeness(nearest) >= ALIKE);
-            return Err(FitError::UnknownParameter {
-                name: name.clone(),
-                known: names.join(", "),
-                nearest,
-            });
-        }
-    }
-    Ok(())
+    let every = parameter_names();
+    let unused = settings
+        .given
+        .keys()
+        .find(|name| !chosen.contains(&name.as_str()));
+    let unknown = settings
+        .bounds
+        .keys()
+        .find(|name| !every.contains(&name.as_str()));
+    let Some(name) = unused.or(unknown) else {
+        return Ok(());
+    };
+    let likeness = |known: &str| strsim::normalized_damerau_levenshtein(known, name);
+    Err(FitError::UnknownParameter {
+        name: name.clone(),
+        known: chosen.join(", "),
+        nearest: chosen
+            .iter()
+            .copied()
+            .max_by(|a, b| likeness(a).total_cmp(&likeness(b)))
+            .filter(|nearest| likeness(nearest) >= ALIKE),
+    })
 }
 
 /// Likeness from which a name is offered for an unknown one.
@@ -563,7 +601,7 @@ fn fit_model(
     layout: Layout,
     thick: &Channels,
     thin: &Channels,
-    kinematics: &[Kinematics],
+    (kinematics, intensity): (&[Kinematics], Kinematics),
     mut workspace: Workspace,
 ) -> Result<(ModelFit, Workspace), FitError> {
     let parameters = layout.parameters().len();
@@ -581,7 +619,7 @@ fn fit_model(
             model: model.name(),
         });
     }
-    let starts = starts::starts(&layout, thick, thin, kinematics);
+    let starts = starts::starts(&layout, thick, thin, kinematics, intensity);
     let mut evaluations = 0;
     let mut scouted = Vec::with_capacity(starts.len());
     for start in &starts {
