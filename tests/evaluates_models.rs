@@ -1,5 +1,9 @@
 //! The profile models against finite differences, symmetries, limits, and quadrature of the
 //! transfer equation that they solve.
+#![allow(
+    clippy::unwrap_used,
+    reason = "a test stops where its data cannot be read"
+)]
 
 use inrush::line::Component;
 use inrush::model::{LineShape, Model, Sampling};

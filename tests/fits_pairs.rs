@@ -1,4 +1,8 @@
 //! Joint fits: the Jacobian of every layout, and what sharing, linking, holding and bounding do.
+#![allow(
+    clippy::unwrap_used,
+    reason = "a test stops where its data cannot be read"
+)]
 
 use inrush::fit::{
     Averaging, Channels, FitRange, FitSettings, JointProblem, Layout, fit_pair, fit_thin,

@@ -1,4 +1,8 @@
 //! The joint least-squares fits against those of scipy on 80 simulated pairs (tests/data/spheres).
+#![allow(
+    clippy::unwrap_used,
+    reason = "a test stops where its data cannot be read"
+)]
 
 use inrush::fit::{Averaging, FitRange, FitSettings, fit_pair};
 use inrush::line::{Component, Line};

@@ -146,7 +146,7 @@ impl Layout {
             (low, high) = (reach.lower, reach.upper);
         }
         if let Some((lower, upper)) = settings.bounds.get(name) {
-            if !(lower < upper) {
+            if lower.is_nan() || upper.is_nan() || lower >= upper {
                 return Err(FitError::EmptyBounds {
                     name: name.to_owned(),
                     lower: *lower,
@@ -309,14 +309,16 @@ impl LeastSquares for JointProblem<'_> {
             for (value, index) in local.iter_mut().zip(map) {
                 *value = parameters[*index];
             }
-            let own = take(&mut rest_residuals, thick.len());
+            let own = rest_residuals
+                .split_off_mut(..thick.len())
+                .unwrap_or_default();
             let columns = take_columns(&mut rest_jacobian, thick.len() * map.len());
             thick.residuals(model, &local[..map.len()], own, columns);
         }
         let (model, map) = (layout.thin.0, &layout.thin.1);
         layout.thin_local(parameters, &mut local[..map.len()]);
         let channels = self.thin.len();
-        let own = take(&mut rest_residuals, channels);
+        let own = rest_residuals.split_off_mut(..channels).unwrap_or_default();
         let mut columns = take_columns(&mut rest_jacobian, channels * map.len());
         self.thin
             .residuals(model, &local[..map.len()], own, columns.as_deref_mut());
@@ -345,13 +347,7 @@ impl LeastSquares for JointProblem<'_> {
     }
 }
 
-/// The first `count` of a slice, which then begins behind them.
-fn take<'a>(rest: &mut &'a mut [f64], count: usize) -> &'a mut [f64] {
-    let (own, behind) = std::mem::take(rest).split_at_mut(count);
-    *rest = behind;
-    own
-}
-
+/// The first `count` of the columns that are wanted, if any; the rest begins behind them.
 fn take_columns<'a>(rest: &mut Option<&'a mut [f64]>, count: usize) -> Option<&'a mut [f64]> {
-    rest.as_mut().map(|rest| take(rest, count))
+    rest.as_mut()?.split_off_mut(..count)
 }

@@ -244,7 +244,7 @@ impl Model {
         match self {
             Self::Gaussian => gaussian::evaluate(line, sampling, parameters, value, jacobian),
             Self::TwoGaussians => {
-                gaussian::evaluate_two(line, sampling, parameters, value, jacobian)
+                gaussian::evaluate_two(line, sampling, parameters, value, jacobian);
             }
             Self::Layer => layer::evaluate(line, sampling, parameters, value, jacobian),
             Self::TwoLayer => slabs::two_layer(line, sampling, parameters, value, jacobian),
@@ -257,7 +257,7 @@ impl Model {
     }
 }
 
-pub use slabs::{amplitudes, basis, temperatures};
+pub use slabs::{basis, temperatures};
 
 /// What a model has to know of a line.
 #[derive(Clone, Debug, PartialEq)]

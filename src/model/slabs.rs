@@ -205,7 +205,7 @@ pub(super) fn hill_surface(
 /// The two functions of velocity that a slab model's profile is linear in, at the first four
 /// parameters `v_lsr`, sigma, `v_in`, tau: for finding starts without iterating over temperatures.
 ///
-/// `first` multiplies A, `second` multiplies B (see [`amplitudes`]); one number a channel each.
+/// `first` multiplies A, `second` multiplies B (see [`temperatures`]); one number a channel each.
 ///
 /// # Panics
 ///
@@ -230,32 +230,6 @@ pub fn basis(
         Model::Hill | Model::HillSurface => {
             evaluate::<Peaked>(slab, &line.components, sampling, output);
         }
-        Model::Gaussian | Model::TwoGaussians | Model::Layer => {
-            panic!("{} has no inward speed", model.name())
-        }
-    }
-}
-
-/// The amplitudes A and B (K) of a slab model's parameters.
-///
-/// # Panics
-///
-/// For a model without an inward speed.
-#[must_use]
-pub fn amplitudes(model: Model, line: &LineShape, parameters: &[f64]) -> (f64, f64) {
-    let j = |index: usize| line.radiation.at(parameters[index]);
-    let background = line.radiation.background();
-    match model {
-        Model::TwoLayer => (j(4) - j(5), j(5) - background),
-        Model::TwoLayerContinuum => {
-            let open = 1.0 - parameters[6];
-            (
-                j(4) - parameters[6] * j(7) - open * j(5),
-                open * (j(5) - background),
-            )
-        }
-        Model::Hill => (j(4) - background, 0.0),
-        Model::HillSurface => (j(4) - j(5), j(5) - background),
         Model::Gaussian | Model::TwoGaussians | Model::Layer => {
             panic!("{} has no inward speed", model.name())
         }

@@ -13,7 +13,7 @@ use super::dispatch::{Arithmetic, Kernel, dispatch};
 /// 1.5 * 2^52: adding it rounds to an integer that then stands in the low mantissa bits.
 const ROUNDER: f64 = 6_755_399_441_055_744.0;
 /// High part of ln 2; its trailing zeros make n times it exact.
-const LN_2_HIGH: f64 = 6.931_471_803_691_238_2e-1;
+const LN_2_HIGH: f64 = 0.693_147_180_369_123_8;
 /// ln 2 minus its high part.
 const LN_2_LOW: f64 = 1.908_214_929_270_587_7e-10;
 /// Below, the result is zero; above the second, it is infinite.

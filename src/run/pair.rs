@@ -9,6 +9,7 @@ use crate::prepare::{Expected, Prepared, prepare_pair};
 use crate::read::{ReadOptions, read_spectrum};
 use crate::spectrum::{Origin, Spectrum};
 use sha2::{Digest, Sha256};
+use std::fmt::Write as _;
 use std::path::{Path, PathBuf};
 
 /// One line of a pair, read and prepared.
@@ -179,10 +180,12 @@ fn sha256(path: &PathBuf) -> Result<String, RunError> {
         path: path.clone(),
         source,
     })?;
-    Ok(Sha256::digest(&bytes)
-        .iter()
-        .map(|byte| format!("{byte:02x}"))
-        .collect())
+    let mut digits = String::new();
+    for byte in Sha256::digest(&bytes) {
+        // writing to a string cannot fail
+        let _ = write!(digits, "{byte:02x}");
+    }
+    Ok(digits)
 }
 
 fn stem(path: &Path) -> String {

@@ -153,7 +153,7 @@ pub fn write_products(
     write("pair.fits", &|writer| report::write_fits(&table, writer))?;
     #[cfg(feature = "figures")]
     if sheet.output.figures {
-        let figure = pair_figure(outcome)?;
+        let figure = pair_figure(outcome);
         let svg = figure.svg()?;
         write("pair.svg", &|writer| Ok(writer.write_all(svg.as_bytes())?))?;
         let png = report::figure::svg_to_png(&svg, FIGURE_WIDTH_PX)?;
@@ -246,7 +246,7 @@ fn relative(path: &Path, from: &Path) -> PathBuf {
 }
 
 #[cfg(feature = "figures")]
-fn pair_figure(outcome: &PairOutcome) -> Result<report::figure::PairFigure, RunError> {
+fn pair_figure(outcome: &PairOutcome) -> report::figure::PairFigure {
     use report::figure::{PairFigure, Panel};
     let panel = |line: &LineOutcome, thick: bool| Panel {
         line_name: line.line.name.clone(),
@@ -263,7 +263,7 @@ fn pair_figure(outcome: &PairOutcome) -> Result<report::figure::PairFigure, RunE
             .collect(),
     };
     let adopted = outcome.fit.adopted();
-    Ok(PairFigure {
+    PairFigure {
         source: outcome.name.clone(),
         thick: panel(&outcome.thick, true),
         thin: panel(&outcome.thin, false),
@@ -275,7 +275,7 @@ fn pair_figure(outcome: &PairOutcome) -> Result<report::figure::PairFigure, RunE
             .iter()
             .map(crate::fit::Caution::text)
             .collect(),
-    })
+    }
 }
 
 #[cfg(feature = "figures")]
