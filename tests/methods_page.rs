@@ -4,11 +4,11 @@
 #![allow(clippy::unwrap_used)]
 
 use inrush::constants::FWHM_PER_SIGMA;
-use inrush::fit::{Averaging, Channels, FitSettings, JointProblem, Layout, fit_pair};
+use inrush::fit::{FitSettings, Layout, fit_pair};
 use inrush::line::{Component, Line};
 use inrush::measure::{MeasureSettings, ThinLine, measure};
 use inrush::model::{LineShape, Model, Sampling};
-use inrush::numeric::least_squares::{Interval, check_jacobian};
+use inrush::numeric::least_squares::Interval;
 use inrush::numeric::{Autoregression, Estimate};
 use inrush::prepare::{Baseline, Prepared};
 use inrush::simulate::{NoiseLevel, PairTruth, simulate_pair};
@@ -190,53 +190,6 @@ fn linked_depths_follow_the_isotope_ratio() {
     // 2 * 9/45
     assert_eq!(model, Model::Layer);
     assert!((thin[model.position("tau_total").unwrap()] - 0.4).abs() < 1e-15);
-}
-
-#[test]
-fn joint_jacobians_agree_with_finite_differences() {
-    let thick_line = line("thick", 89.2, vec![Component::SINGLE]);
-    let thin_line = line("thin", 86.8, triplet());
-    let process = Autoregression::from_reflections(&[0.5, -0.1]);
-    let shape = |line: &Line| LineShape::new(line.rest_frequency_ghz, line.components.clone());
-    let channels = |line: &Line| {
-        let mut data = vec![0.3; velocities().len()];
-        data[20] = f64::NAN;
-        Channels::new(
-            &prepared(data, process.clone()),
-            shape(line),
-            None,
-            Averaging::Channel,
-            0.2,
-        )
-    };
-    let (thick, thin) = (channels(&thick_line), channels(&thin_line));
-    let freed = FitSettings {
-        free_thin_velocity: true,
-        free_thin_sigma: true,
-        ..linked()
-    };
-    for settings in [linked(), freed] {
-        let layout = Layout::new(Model::HillSurface, Model::Layer, &settings, reach()).unwrap();
-        let values: Vec<f64> = layout
-            .parameters()
-            .iter()
-            .map(|parameter| match parameter.name {
-                "v_lsr_km_s" => 0.05,
-                "v_thin_km_s" => -0.03,
-                "sigma_km_s" => 0.45,
-                "sigma_thin_km_s" => 0.52,
-                "v_in_km_s" => 0.15,
-                "tau" => 5.0,
-                "isotope_ratio" => 50.0,
-                "t_surface_k" => 4.0,
-                _ => 14.0,
-            })
-            .collect();
-        let steps: Vec<f64> = values.iter().map(|value| 2e-3 * value.abs()).collect();
-        let mut problem = JointProblem::new(&layout, Some(&thick), &thin);
-        let worst = check_jacobian(&mut problem, &values, &steps);
-        assert!(worst < 1e-6, "{worst:e}");
-    }
 }
 
 #[test]
