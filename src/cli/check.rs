@@ -5,7 +5,7 @@ use super::{Exit, report};
 use clap::Args;
 use inrush::prepare::PrepareSettings;
 use inrush::run::{FileCheck, LineSection, NumberOrWord, RunError, RunSheet, check_file};
-use inrush::spectrum::{AxisKind, BrightnessUnit, Frame};
+use inrush::spectrum::{AxisKind, BrightnessUnit, Frame, RawSpectrum};
 use std::fmt::Write;
 use std::path::{Path, PathBuf};
 
@@ -40,7 +40,7 @@ pub struct CheckArguments {
 }
 
 /// Checks every file; a bad one stops none of the others.
-pub fn run(arguments: &CheckArguments, output: &Output) -> Result<Exit, RunError> {
+pub fn run(arguments: &CheckArguments) -> Result<Exit, RunError> {
     let mut unusable = 0;
     let mut checked = 0;
     for file in &arguments.files {
@@ -49,22 +49,20 @@ pub fn run(arguments: &CheckArguments, output: &Output) -> Result<Exit, RunError
             Err(error) => {
                 checked += 1;
                 unusable += 1;
-                report(&error, output);
+                report(&error);
                 continue;
             }
         };
         for (section, which, path, settings) in inputs {
             checked += 1;
             match check_file(&section, which, &path, &settings) {
-                Ok(check) => output
-                    .data(&described(&check))
-                    .map_err(|source| RunError::File {
-                        path: PathBuf::from("stdout"),
-                        source,
-                    })?,
+                Ok(check) => Output::data(&described(&check)).map_err(|source| RunError::File {
+                    path: PathBuf::from("stdout"),
+                    source,
+                })?,
                 Err(error) => {
                     unusable += 1;
-                    report(&error, output);
+                    report(&error);
                 }
             }
         }
@@ -118,87 +116,95 @@ fn inputs(arguments: &CheckArguments, file: &Path) -> Result<Vec<Input>, RunErro
     )])
 }
 
-/// What a file holds, a fact a line.
-fn described(check: &FileCheck) -> String {
-    let raw = &check.raw;
-    let mut text = format!("{}\n", raw.origin.path.display());
-    let mut fact = |name: &str, value: String| {
-        let _ = writeln!(text, "  {name:<18}{value}");
-    };
-    fact("format", raw.origin.format.clone());
-    if let Some(object) = &raw.object {
-        fact("object", object.clone());
+/// Facts, one a line.
+struct Facts(String);
+
+impl Facts {
+    fn add(&mut self, name: &str, value: &str) {
+        // writing to a string cannot fail
+        let _ = writeln!(self.0, "  {name:<18}{value}");
     }
-    let (first, last) = (
-        raw.axis.first().copied().unwrap_or(f64::NAN),
-        raw.axis.last().copied().unwrap_or(f64::NAN),
-    );
-    fact(
+}
+
+/// What a file holds.
+fn described(check: &FileCheck) -> String {
+    let mut facts = Facts(format!("{}\n", check.raw.origin.path.display()));
+    stated(&check.raw, &mut facts);
+    found(check, &mut facts);
+    for note in &check.notes {
+        facts.add("assumed", &note.to_string());
+    }
+    for doubt in &check.doubts {
+        facts.add("doubtful", doubt);
+    }
+    facts.0
+}
+
+/// What the file says of itself.
+fn stated(raw: &RawSpectrum, facts: &mut Facts) {
+    facts.add("format", &raw.origin.format);
+    if let Some(object) = &raw.object {
+        facts.add("object", object);
+    }
+    let first = raw.axis.first().copied().unwrap_or(f64::NAN);
+    let last = raw.axis.last().copied().unwrap_or(f64::NAN);
+    let (factor, digits, unit) = match raw.axis_kind {
+        AxisKind::Frequency => (1e-9, 6, "GHz"),
+        AxisKind::RadioVelocity | AxisKind::OpticalVelocity | AxisKind::RadialVelocity => {
+            (1e-3, 3, "km/s")
+        }
+    };
+    facts.add(
         "axis",
-        match raw.axis_kind {
-            AxisKind::Frequency => {
-                format!("frequency, {:.6} to {:.6} GHz", first * 1e-9, last * 1e-9)
-            }
-            AxisKind::RadioVelocity => format!(
-                "radio velocity, {:.3} to {:.3} km/s",
-                first * 1e-3,
-                last * 1e-3
-            ),
-            AxisKind::OpticalVelocity => format!(
-                "optical velocity, {:.3} to {:.3} km/s",
-                first * 1e-3,
-                last * 1e-3
-            ),
-            AxisKind::RadialVelocity => format!(
-                "relativistic velocity, {:.3} to {:.3} km/s",
-                first * 1e-3,
-                last * 1e-3
-            ),
-        },
+        &format!(
+            "{}, {:.digits$} to {:.digits$} {unit}",
+            raw.axis_kind,
+            first * factor,
+            last * factor
+        ),
     );
     let blank = raw.values.iter().filter(|value| value.is_nan()).count();
-    fact(
+    facts.add(
         "channels",
-        format!("{}, {blank} of them blank", raw.axis.len()),
+        &format!("{}, {blank} of them blank", raw.axis.len()),
     );
-    fact(
-        "temperature scale",
-        match raw.unit {
-            BrightnessUnit::MainBeamKelvin => "T_mb",
-            BrightnessUnit::AntennaKelvin => "T_A*",
-            BrightnessUnit::Kelvin => "K, scale not stated",
-            BrightnessUnit::JanskyPerBeam => "Jy/beam",
-        }
-        .to_owned(),
-    );
-    fact(
-        "frame",
-        match &raw.frame {
-            Some(Frame::Lsrk) => "LSRK".to_owned(),
-            Some(Frame::Other(name)) => name.clone(),
-            None => "not stated".to_owned(),
-        },
-    );
+    let scale = match raw.unit {
+        BrightnessUnit::MainBeamKelvin => "T_mb",
+        BrightnessUnit::AntennaKelvin => "T_A*",
+        BrightnessUnit::Kelvin => "K, scale not stated",
+        BrightnessUnit::JanskyPerBeam => "Jy/beam",
+    };
+    facts.add("temperature scale", scale);
+    let frame = match &raw.frame {
+        Some(Frame::Lsrk) => "LSRK",
+        Some(Frame::Other(name)) => name,
+        None => "not stated",
+    };
+    facts.add("frame", frame);
     if let Some(frequency) = raw.rest_frequency_hz {
-        fact("rest frequency", format!("{:.7} GHz", frequency * 1e-9));
+        facts.add("rest frequency", &format!("{:.7} GHz", frequency * 1e-9));
     }
     if let Some(beam) = raw.beam {
-        fact(
+        facts.add(
             "beam",
-            format!("{:.1} x {:.1} arcsec", beam.major, beam.minor),
+            &format!("{:.1} x {:.1} arcsec", beam.major, beam.minor),
         );
     }
+}
+
+/// What its channels show.
+fn found(check: &FileCheck, facts: &mut Facts) {
     if let Some(line) = &check.line {
-        fact(
+        facts.add(
             "read for",
-            format!("{} at {:.7} GHz", line.name, line.rest_frequency_ghz),
+            &format!("{} at {:.7} GHz", line.name, line.rest_frequency_ghz),
         );
     }
     if let Some(spectrum) = &check.spectrum {
         let velocity = spectrum.velocity_km_s();
-        fact(
+        facts.add(
             "velocities",
-            format!(
+            &format!(
                 "{:.3} to {:.3} km/s (radio, LSRK), channels of {:.4} km/s",
                 velocity[0],
                 velocity[velocity.len() - 1],
@@ -206,48 +212,40 @@ fn described(check: &FileCheck) -> String {
             ),
         );
     }
-    if let Some(prepared) = &check.prepared {
-        fact(
-            "line window",
-            format!(
-                "{:.2} to {:.2} km/s",
-                prepared.window.low_km_s, prepared.window.high_km_s
-            ),
-        );
-        let brightest = prepared
-            .spectrum
-            .velocity_km_s()
-            .iter()
-            .zip(prepared.spectrum.temperature_k())
-            .filter(|(v, t)| prepared.window.contains(**v) && !t.is_nan())
-            .map(|(_, t)| *t)
-            .fold(f64::NEG_INFINITY, f64::max);
-        let process = &prepared.noise.process;
-        let correlation = if process.is_white() {
-            "white".to_owned()
-        } else {
-            format!(
-                "correlation {:.2} between neighbours",
-                process.adjacent_correlation()
-            )
-        };
-        fact(
-            "noise",
-            format!("{:.4} K a channel, {correlation}", prepared.noise.rms_k),
-        );
-        fact(
-            "brightest channel",
-            format!(
-                "{brightest:.3} K, {:.0} times the noise",
-                brightest / prepared.noise.rms_k
-            ),
-        );
-    }
-    for note in &check.notes {
-        fact("assumed", note.to_string());
-    }
-    for doubt in &check.doubts {
-        fact("doubtful", doubt.clone());
-    }
-    text
+    let Some(prepared) = &check.prepared else {
+        return;
+    };
+    facts.add(
+        "line window",
+        &format!(
+            "{:.2} to {:.2} km/s",
+            prepared.window.low_km_s, prepared.window.high_km_s
+        ),
+    );
+    let spectrum = &prepared.spectrum;
+    let brightest = (spectrum.velocity_km_s().iter())
+        .zip(spectrum.temperature_k())
+        .filter(|(v, t)| prepared.window.contains(**v) && !t.is_nan())
+        .map(|(_, t)| *t)
+        .fold(f64::NEG_INFINITY, f64::max);
+    let process = &prepared.noise.process;
+    let correlation = if process.is_white() {
+        "white".to_owned()
+    } else {
+        format!(
+            "correlation {:.2} between neighbours",
+            process.adjacent_correlation()
+        )
+    };
+    facts.add(
+        "noise",
+        &format!("{:.4} K a channel, {correlation}", prepared.noise.rms_k),
+    );
+    facts.add(
+        "brightest channel",
+        &format!(
+            "{brightest:.3} K, {:.0} times the noise",
+            brightest / prepared.noise.rms_k
+        ),
+    );
 }

@@ -20,6 +20,10 @@ use std::path::{Path, PathBuf};
 ///
 /// Options stand above the run sheet.
 #[derive(Debug, Args)]
+#[allow(
+    clippy::struct_excessive_bools,
+    reason = "each is a switch of the command line"
+)]
 #[command(verbatim_doc_comment)]
 pub struct FitArguments {
     /// Run sheet (TOML).
@@ -196,7 +200,7 @@ pub fn run(arguments: &FitArguments, output: &Output) -> Result<Exit, RunError> 
         Some(directory) => write_products(&outcome, &sheet, &base, directory)?,
         None => Vec::new(),
     };
-    output.data(&text).map_err(|source| RunError::File {
+    Output::data(&text).map_err(|source| RunError::File {
         path: PathBuf::from("stdout"),
         source,
     })?;

@@ -21,24 +21,24 @@ pub struct LinesArguments {
 }
 
 /// Prints the table.
-pub fn run(arguments: &LinesArguments, output: &Output) -> Result<Exit, RunError> {
+pub fn run(arguments: &LinesArguments) -> Result<Exit, RunError> {
     let text = arguments.text.as_deref().unwrap_or_default();
     let found = search(text);
     if found.is_empty() {
-        output.error(
+        Output::error(
             &format!(
                 "no built-in line matches `{text}`, expected a species, a part of a name or a frequency in GHz"
             ),
-            Some("inrush lines without a text shows them all; a line of your own is given by its rest frequency"),
+            Some(
+                "inrush lines without a text shows them all; a line of your own is given by its rest frequency",
+            ),
         );
         return Ok(Exit::Unusable);
     }
-    output
-        .data(&table(&found))
-        .map_err(|source| RunError::File {
-            path: PathBuf::from("stdout"),
-            source,
-        })?;
+    Output::data(&table(&found)).map_err(|source| RunError::File {
+        path: PathBuf::from("stdout"),
+        source,
+    })?;
     Ok(Exit::Done)
 }
 

@@ -81,15 +81,15 @@ pub fn main() -> ExitCode {
     };
     let output = Output::new(arguments.quiet);
     let result = match &arguments.command {
-        Command::Check(check) => check::run(check, &output),
+        Command::Check(check) => check::run(check),
         Command::Fit(fit) => fit::run(fit, &output),
-        Command::Lines(lines) => lines::run(lines, &output),
+        Command::Lines(lines) => lines::run(lines),
         Command::Simulate(simulate) => simulate::run(simulate, &output),
     };
     match result {
         Ok(exit) => exit.into(),
         Err(error) => {
-            report(&error, &output);
+            report(&error);
             Exit::Unusable.into()
         }
     }
@@ -108,10 +108,10 @@ fn usage_error(error: &clap::Error) {
     let message = message.strip_prefix("error: ").unwrap_or(message);
     let tip = paragraphs.find_map(|paragraph| paragraph.trim().strip_prefix("tip: "));
     let hint = tip.unwrap_or("`--help` behind the command shows every option");
-    Output::new(false).error(message, Some(hint));
+    Output::error(message, Some(hint));
 }
 
 /// An error with what to do about it.
-fn report(error: &RunError, output: &Output) {
-    output.error(&error.to_string(), error.hint().as_deref());
+fn report(error: &RunError) {
+    Output::error(&error.to_string(), error.hint().as_deref());
 }

@@ -16,7 +16,7 @@ impl Output {
     }
 
     /// Data.
-    pub fn data(&self, text: &str) -> std::io::Result<()> {
+    pub fn data(text: &str) -> std::io::Result<()> {
         let mut stdout = std::io::stdout().lock();
         match stdout
             .write_all(text.as_bytes())
@@ -35,7 +35,7 @@ impl Output {
     }
 
     /// What went wrong, and what to do about it.
-    pub fn error(&self, text: &str, hint: Option<&str>) {
+    pub fn error(text: &str, hint: Option<&str>) {
         let hint = hint.map_or(String::new(), |hint| format!("\nhint: {hint}\n"));
         Self::message(&format!("error: {text}\n{hint}"));
     }

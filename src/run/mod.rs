@@ -2,6 +2,8 @@
 
 mod check;
 mod error;
+#[cfg(feature = "figures")]
+mod figure;
 mod pair;
 mod products;
 mod sheet;
