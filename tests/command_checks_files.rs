@@ -154,8 +154,7 @@ fn correlated_noise_is_said() {
     let adjacent: f64 = noise
         .split_once("correlation ")
         .and_then(|(_, rest)| rest.split_once(' '))
-        .map(|(number, _)| number.parse().unwrap())
-        .unwrap_or_else(|| panic!("{noise}"));
+        .map_or_else(|| panic!("{noise}"), |(number, _)| number.parse().unwrap());
     assert!((adjacent - 2.0 / 3.0).abs() < 0.15, "{noise}");
 }
 

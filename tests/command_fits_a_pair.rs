@@ -713,3 +713,183 @@ fn a_continuum_source_that_is_given_is_used() {
             > number(&results, "two_layer_continuum_t_rear_k_err")
     );
 }
+
+/// The correlation of [1/4, 1/2, 1/4] smoothing between neighbours is 2/3.
+#[test]
+fn correlated_noise_is_said_with_its_size() {
+    let pair = Pair::default();
+    let smooth = |values: Vec<f64>| -> Vec<f64> {
+        let last = values.len() - 1;
+        (0..values.len())
+            .map(|i| {
+                0.25 * values[i.saturating_sub(1)]
+                    + 0.5 * values[i]
+                    + 0.25 * values[last.min(i + 1)]
+            })
+            .collect()
+    };
+    let (thick, thin) = pair.temperature_k();
+    let folder = Folder::new();
+    folder.write(
+        "thick.csv",
+        csv(&pair.velocity_km_s(), &smooth(thick)).as_bytes(),
+    );
+    folder.write(
+        "thin.csv",
+        csv(&pair.velocity_km_s(), &smooth(thin)).as_bytes(),
+    );
+    let run = folder.fit(&[]);
+    assert_eq!(run.code, 0, "{}", run.stderr);
+    let text = run.stdout.split_whitespace().collect::<Vec<_>>().join(" ");
+    for line in ["thick", "thin"] {
+        let begin = format!("{line} line's noise is correlated from channel to channel (");
+        let (_, rest) = text.split_once(&begin).unwrap_or_else(|| panic!("{text}"));
+        let adjacent: f64 = rest.split_once(' ').unwrap().0.parse().unwrap();
+        assert!((adjacent - 2.0 / 3.0).abs() < 0.15, "{line}: {adjacent}");
+    }
+}
+
+/// The thin line's own fit takes one of the clouds; the searches must not stay there.
+#[test]
+fn two_clouds_are_found_and_said() {
+    let pair = Pair {
+        thick_model: Model::TwoGaussians,
+        thick: vec![6.0, 0.5, 5.0, 9.0, 0.5, 3.0],
+        thin_model: Model::TwoGaussians,
+        thin: vec![6.0, 0.5, 0.8, 9.0, 0.5, 0.5],
+        ..Pair::default()
+    };
+    let results = pair.folder().fit_json(&["--models", "two-gaussians,hill"]);
+    agrees(&results, "two_gaussians_v_lsr_km_s", 6.0, 3.0);
+    agrees(&results, "two_gaussians_v_second_km_s", 9.0, 3.0);
+    agrees(&results, "two_gaussians_peak_k", 5.0, 3.0);
+    agrees(&results, "two_gaussians_peak_second_k", 3.0, 3.0);
+    assert!(number(&results, "two_gaussians_chi2_red") < 1.2);
+    let codes = cautions(&results);
+    for code in ["thin-two-peaked", "dip-off-thin", "poor-fit"] {
+        assert!(
+            codes.iter().any(|found| found == code),
+            "no {code} in {codes:?}"
+        );
+    }
+    assert_eq!(results["profile"], "neither");
+}
+
+/// A hill above the background cannot be in absorption: nothing is adopted from it.
+#[test]
+fn absorption_is_said_and_no_speed_is_adopted_from_models_without_a_source() {
+    let pair = Pair {
+        thick_model: Model::TwoLayerContinuum,
+        thick: vec![7.35, 0.62, 0.3, 2.0, 6.0, 14.0, 0.6, 100.0],
+        ..Pair::default()
+    };
+    let folder = pair.folder();
+    let results = folder.fit_json(&[]);
+    assert!(
+        cautions(&results).contains(&"thick-absorbed".to_owned()),
+        "{:?}",
+        results["cautions"]
+    );
+    assert!(!cautions(&results).contains(&"maybe-swapped".to_owned()));
+    assert!(results["v_in_km_s"].is_null(), "{}", results["v_in_km_s"]);
+    assert!(results["v_in_model"].is_null());
+    let source = folder.fit_json(&[
+        "--models",
+        "two-layer-continuum",
+        "--given",
+        "filling=0.6",
+        "--given",
+        "t_continuum_k=100",
+    ]);
+    agrees(&source, "v_in_km_s", 0.3, 3.0);
+}
+
+#[test]
+fn velocities_may_descend_and_lie_anywhere() {
+    let folder = Folder::with_pair();
+    let ascending = folder.fit(&["--json"]).stdout;
+    let pair = Pair::default();
+    let reversed = |mut values: Vec<f64>| {
+        values.reverse();
+        values
+    };
+    let (thick, thin) = pair.temperature_k();
+    let velocity = reversed(pair.velocity_km_s());
+    folder.write("thick.csv", csv(&velocity, &reversed(thick)).as_bytes());
+    folder.write("thin.csv", csv(&velocity, &reversed(thin)).as_bytes());
+    assert_eq!(folder.fit(&["--json"]).stdout, ascending);
+
+    let moved = Pair {
+        thick: vec![-200.0, 0.62, 0.45, 4.0, 16.0],
+        thin: vec![-200.0, 0.62, 0.118, 11.0],
+        first_km_s: -214.35,
+        ..Pair::default()
+    };
+    let results = moved.folder().fit_json(&[]);
+    agrees(&results, "v_lsr_km_s", -200.0, 3.0);
+    agrees(&results, "v_in_km_s", 0.45, 3.0);
+}
+
+#[test]
+fn a_very_broad_line_is_fitted_in_its_own_units() {
+    let pair = Pair {
+        thick: vec![7.0, 20.0, 8.0, 4.0, 16.0],
+        thin: vec![7.0, 20.0, 0.118, 11.0],
+        first_km_s: -300.0,
+        channel_km_s: 1.0,
+        channels: 601,
+        ..Pair::default()
+    };
+    let results = pair.folder().fit_json(&[]);
+    agrees(&results, "v_in_km_s", 8.0, 3.0);
+    agrees(&results, "sigma_km_s", 20.0, 3.0);
+    assert_eq!(results["profile"], "blue");
+}
+
+#[test]
+fn expansion_is_the_mirror_of_infall() {
+    let pair = Pair {
+        thick: vec![7.35, 0.62, -0.45, 4.0, 16.0],
+        ..Pair::default()
+    };
+    let results = pair.folder().fit_json(&[]);
+    assert_eq!(results["profile"], "red");
+    agrees(&results, "v_in_km_s", -0.45, 3.0);
+}
+
+#[test]
+fn a_static_clump_is_neither() {
+    let pair = Pair {
+        thick: vec![7.35, 0.62, 0.0, 4.0, 16.0],
+        ..Pair::default()
+    };
+    let results = pair.folder().fit_json(&[]);
+    assert_eq!(results["profile"], "neither");
+    agrees(&results, "v_in_km_s", 0.0, 3.0);
+}
+
+#[test]
+fn everything_held_is_no_undetermined_fit() {
+    let results = Folder::with_pair().fit_json(&[
+        "--models",
+        "hill",
+        "--given",
+        "v_lsr_km_s=7.35",
+        "--given",
+        "sigma_km_s=0.62",
+        "--given",
+        "tau=4",
+        "--given",
+        "t_peak_k=16",
+        "--given",
+        "v_in_km_s=0.45",
+        "--given",
+        "peak_thin_k=0.875",
+    ]);
+    assert_eq!(number(&results, "v_in_km_s"), 0.45);
+    assert!(
+        !cautions(&results).contains(&"parameter-undetermined".to_owned()),
+        "{:?}",
+        results["cautions"]
+    );
+}

@@ -1,6 +1,13 @@
 //! Bad input through the binary: each gets exit code 2, a message that names file and place, what
 //! was found, what was expected and a hint, nothing on stdout and nothing in the output directory.
 
+// tables of cases; messages are shown on demand: SHOW_MESSAGES=1 cargo test ... -- --nocapture
+#![allow(
+    clippy::too_many_lines,
+    clippy::print_stdout,
+    clippy::format_push_string
+)]
+
 mod command;
 
 use command::{Folder, PAIR, Pair, csv, image, table};
@@ -420,8 +427,8 @@ fn lines_that_do_not_fit_the_files() {
                 "expected the line inside",
             ]),
         case("swapped by the frequency axis")
-            .thick(by_frequency(86.7542884))
-            .thin(by_frequency(89.1885247))
+            .thick(by_frequency(86.754_288_4))
+            .thin(by_frequency(89.188_524_7))
             .says(&[
                 "thick.csv",
                 "the band 86.7",

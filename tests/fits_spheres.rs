@@ -104,6 +104,7 @@ fn settings(model: Model, v_lsr: f64) -> FitSettings {
         averaging: Averaging::Centre,
         bounds: bounds
             .into_iter()
+            .filter(|(name, _)| *name == "peak_thin_k" || model.position(name).is_some())
             .map(|(name, bounds)| (name.to_owned(), bounds))
             .collect(),
         ..FitSettings::default()

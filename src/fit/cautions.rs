@@ -48,6 +48,11 @@ pub enum Caution {
     },
     /// The thick line is not detected.
     ThickUndetected,
+    /// The thick line is in absorption as a whole.
+    ThickAbsorbed {
+        /// Integrated intensity in the window, K km/s.
+        integral_k_km_s: f64,
+    },
     /// The thin line is not detected: velocity and width rest on the thick line.
     ThinUndetected {
         /// Height over its error.
@@ -108,6 +113,7 @@ impl Caution {
             Self::SecondMinimum { .. } => "second-minimum",
             Self::PoorFit { .. } => "poor-fit",
             Self::ThickUndetected => "thick-undetected",
+            Self::ThickAbsorbed { .. } => "thick-absorbed",
             Self::ThinUndetected { .. } => "thin-undetected",
             Self::ThinTwoPeaked => "thin-two-peaked",
             Self::DipOffThin { .. } => "dip-off-thin",
@@ -150,6 +156,9 @@ impl Caution {
                 )
             }
             Self::ThickUndetected => "the thick line is not detected".to_owned(),
+            Self::ThickAbsorbed { integral_k_km_s } => format!(
+                "the thick line is in absorption ({integral_k_km_s:.2} K km/s): only two-layer-continuum, with the continuum source given, describes that"
+            ),
             Self::ThinUndetected { significance } => format!(
                 "the thin line is not detected ({significance:.1} standard errors): velocity and width rest on the thick line"
             ),
@@ -183,6 +192,8 @@ impl Caution {
 /// Peak signal-to-noise ratio below which a caution is given. De Vries & Myers 2005 asked for 30
 /// (published abstract); at 10 formal errors are known to be far too small.
 const LOW_SIGNAL: f64 = 30.0;
+/// Integral over its error from which absorption is one.
+const DETECTION: f64 = 5.0;
 /// Channel width over sigma above which a caution is given.
 const WIDE: f64 = 1.0;
 /// chi2 difference of a second minimum below which a caution is given: three standard deviations.
@@ -223,7 +234,16 @@ pub fn cautions(facts: &PairFacts<'_>) -> Vec<Caution> {
 fn of_detection(facts: &PairFacts<'_>, found: &mut Vec<Caution>) {
     let measures = facts.measures;
     match measures.peak_thick_k {
-        None => found.push(Caution::ThickUndetected),
+        None => {
+            let integral = measures.integral_thick_k_km_s;
+            found.push(if integral.value < -DETECTION * integral.err {
+                Caution::ThickAbsorbed {
+                    integral_k_km_s: integral.value,
+                }
+            } else {
+                Caution::ThickUndetected
+            });
+        }
         Some(peak) => {
             let signal_to_noise = peak.value / facts.thick.noise.rms_k;
             if signal_to_noise < LOW_SIGNAL {
@@ -236,8 +256,11 @@ fn of_detection(facts: &PairFacts<'_>, found: &mut Vec<Caution>) {
             significance: facts.thin_fit.significance,
         }),
         Some(thin) => {
-            let thick_peak = measures.peak_thick_k.map_or(0.0, |peak| peak.value);
-            if thin.peak_k.value > thick_peak + 3.0 * thin.peak_k.err {
+            let fainter = |thick_k: f64| thin.peak_k.value > thick_k + 3.0 * thin.peak_k.err;
+            if measures
+                .peak_thick_k
+                .is_some_and(|peak| fainter(peak.value))
+            {
                 found.push(Caution::MaybeSwapped);
             }
             if let Some(peaks) = &measures.two_peaks {
@@ -275,14 +298,13 @@ fn of_fits(pair: &PairFit, found: &mut Vec<Caution>) {
                 });
             }
         }
-        if fit
-            .parameters
-            .iter()
-            .all(|parameter| parameter.err.is_none())
-        {
+        if !fit.determined() {
             found.push(Caution::Undetermined { model });
         }
-        if let Some(rival) = fit.rival.filter(|rival| rival.delta_chi2 < SECOND_MINIMUM) {
+        let rival = fit
+            .rival
+            .filter(|rival| fit.determined() && rival.delta_chi2 < SECOND_MINIMUM);
+        if let Some(rival) = rival {
             found.push(Caution::SecondMinimum {
                 model,
                 v_in_km_s: rival.v_in_km_s,

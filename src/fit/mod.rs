@@ -288,6 +288,15 @@ impl ModelFit {
         self.termination.converged()
     }
 
+    /// Whether the data determine the parameters: there are formal errors, or nothing was left free.
+    #[must_use]
+    pub fn determined(&self) -> bool {
+        self.parameters
+            .iter()
+            .any(|parameter| parameter.err.is_some())
+            || self.parameters.iter().all(|parameter| parameter.held)
+    }
+
     fn values(&self) -> Vec<f64> {
         self.parameters
             .iter()
@@ -403,7 +412,7 @@ pub fn fit_pair(
             layout,
             &thick_channels,
             &thin_channels,
-            &kinematics,
+            (&kinematics, intensity),
             workspace,
         )?;
         models.push(fit);
@@ -411,7 +420,7 @@ pub fn fit_pair(
     let adopted = ADOPTION
         .iter()
         .filter_map(|model| models.iter().position(|fit| fit.model == *model))
-        .find(|index| models[*index].converged());
+        .find(|index| models[*index].converged() && models[*index].determined());
     let points = (
         thick_channels.sampling().nodes().len(),
         thin_channels.sampling().nodes().len(),
@@ -476,30 +485,59 @@ fn common_velocities(thick: &Prepared, thin: &Prepared) -> Result<Window, FitErr
     })
 }
 
-/// Refuses bounds and given values that no chosen model would use.
+/// Every parameter name that bounds may use.
+pub fn parameter_names() -> Vec<&'static str> {
+    let mut names: Vec<&'static str> = Model::ALL
+        .iter()
+        .flat_map(|model| model.parameters().iter().map(|parameter| parameter.name))
+        .chain([
+            "v_thin_km_s",
+            "sigma_thin_km_s",
+            "peak_thin_k",
+            "v_second_thin_km_s",
+            "sigma_second_thin_km_s",
+            "peak_second_thin_k",
+            "tau_thin",
+            "t_ex_thin_k",
+            "isotope_ratio",
+        ])
+        .collect();
+    names.sort_unstable();
+    names.dedup();
+    names
+}
+
+/// Refuses bounds of no model's parameter, and given values that no chosen model would use: they
+/// would be lost without a word.
 fn check_names(settings: &FitSettings, layouts: &[Layout]) -> Result<(), FitError> {
-    let mut names: Vec<&'static str> = Vec::new();
+    let mut chosen: Vec<&'static str> = Vec::new();
     for parameter in layouts.iter().flat_map(Layout::parameters) {
-        if !names.contains(&parameter.name) {
-            names.push(parameter.name);
+        if !chosen.contains(&parameter.name) {
+            chosen.push(parameter.name);
         }
     }
-    for name in settings.bounds.keys().chain(settings.given.keys()) {
-        if !names.contains(&name.as_str()) {
-            let likeness = |known: &str| strsim::normalized_damerau_levenshtein(known, name);
-            let nearest = names
-                .iter()
-                .copied()
-                .max_by(|a, b| likeness(a).total_cmp(&likeness(b)))
-                .filter(|nearest| likeness(nearest) >= ALIKE);
-            return Err(FitError::UnknownParameter {
-                name: name.clone(),
-                known: names.join(", "),
-                nearest,
-            });
-        }
-    }
-    Ok(())
+    let every = parameter_names();
+    let unused = settings
+        .given
+        .keys()
+        .find(|name| !chosen.contains(&name.as_str()));
+    let unknown = settings
+        .bounds
+        .keys()
+        .find(|name| !every.contains(&name.as_str()));
+    let Some(name) = unused.or(unknown) else {
+        return Ok(());
+    };
+    let likeness = |known: &str| strsim::normalized_damerau_levenshtein(known, name);
+    Err(FitError::UnknownParameter {
+        name: name.clone(),
+        known: chosen.join(", "),
+        nearest: chosen
+            .iter()
+            .copied()
+            .max_by(|a, b| likeness(a).total_cmp(&likeness(b)))
+            .filter(|nearest| likeness(nearest) >= ALIKE),
+    })
 }
 
 /// Likeness from which a name is offered for an unknown one.
@@ -522,12 +560,48 @@ fn check_continuum(settings: &FitSettings) -> Result<(), FitError> {
     }
 }
 
-/// Follows every start to a minimum and keeps the best.
+/// How far every start is followed before the best are chosen.
+const SCOUTING: Settings = Settings {
+    max_evaluations: 10,
+    chi2_tolerance: 1e-3,
+    step_tolerance: 1e-12,
+    gradient_tolerance: 1e-12,
+    initial_radius: 1.0,
+};
+
+/// Scouted starts that are followed to their minimum; one more where none of them has the other sign
+/// of the inward speed.
+const POLISHED: usize = 3;
+
+/// The deepest of the scouted starts (sorted by chi2) that have not run into each other, both signs of
+/// the inward speed among them.
+fn worth_polishing(sorted: &[Minimum], v_in: Option<usize>) -> Vec<&Minimum> {
+    const SAME: f64 = 1e-3;
+    let same = |a: &Minimum, b: &Minimum| {
+        (a.chi2 - b.chi2).abs() <= SAME * a.chi2.min(b.chi2)
+            && (a.parameters.iter().zip(&b.parameters))
+                .all(|(a, b)| (a - b).abs() <= 0.02 * (1e-3 + a.abs().max(b.abs())))
+    };
+    let mut kept: Vec<&Minimum> = Vec::new();
+    for scout in sorted {
+        let other_sign = v_in.is_some_and(|index| {
+            let sign = |minimum: &Minimum| minimum.parameters[index] > 0.0;
+            kept.iter().all(|minimum| sign(minimum) != sign(scout))
+        });
+        let wanted = kept.len() < POLISHED || other_sign;
+        if wanted && !kept.iter().any(|minimum| same(minimum, scout)) {
+            kept.push(scout);
+        }
+    }
+    kept
+}
+
+/// Follows the starts and keeps the best minimum.
 fn fit_model(
     layout: Layout,
     thick: &Channels,
     thin: &Channels,
-    kinematics: &[Kinematics],
+    (kinematics, intensity): (&[Kinematics], Kinematics),
     mut workspace: Workspace,
 ) -> Result<(ModelFit, Workspace), FitError> {
     let parameters = layout.parameters().len();
@@ -545,14 +619,31 @@ fn fit_model(
             model: model.name(),
         });
     }
-    let starts = starts::starts(&layout, thick, thin, kinematics);
-    let mut minima = Vec::with_capacity(starts.len());
+    let starts = starts::starts(&layout, thick, thin, kinematics, intensity);
+    let mut evaluations = 0;
+    let mut scouted = Vec::with_capacity(starts.len());
     for start in &starts {
         let minimum;
-        (minimum, workspace) = search(&layout, Some(thick), thin, start, workspace)?;
+        (minimum, workspace) = search(&layout, Some(thick), thin, start, &SCOUTING, workspace)?;
+        evaluations += minimum.evaluations;
+        scouted.push(minimum);
+    }
+    scouted.sort_by(|a, b| a.chi2.total_cmp(&b.chi2));
+    let mut minima = Vec::with_capacity(POLISHED + 1);
+    for scout in worth_polishing(&scouted, layout.position("v_in_km_s")) {
+        let minimum;
+        let start = &scout.parameters;
+        (minimum, workspace) = search(
+            &layout,
+            Some(thick),
+            thin,
+            start,
+            &Settings::default(),
+            workspace,
+        )?;
+        evaluations += minimum.evaluations;
         minima.push(minimum);
     }
-    let evaluations = minima.iter().map(|minimum| minimum.evaluations).sum();
     let Some(best) = minima.iter().min_by(|a, b| a.chi2.total_cmp(&b.chi2)) else {
         return Err(FitError::Search(format!(
             "no start for the {} model",
@@ -626,6 +717,7 @@ fn search(
     thick: Option<&Channels>,
     thin: &Channels,
     start: &[f64],
+    settings: &Settings,
     workspace: Workspace,
 ) -> Result<(Minimum, Workspace), FitError> {
     let bounds: Vec<Interval> = layout
@@ -633,7 +725,7 @@ fn search(
         .iter()
         .map(|parameter| parameter.interval)
         .collect();
-    let solver = LevenbergMarquardt::with_workspace(bounds, Settings::default(), workspace);
+    let solver = LevenbergMarquardt::with_workspace(bounds, *settings, workspace);
     let failed = |error: &dyn std::fmt::Display| FitError::Search(error.to_string());
     let result = argmin::core::Executor::new(JointProblem::new(layout, thick, thin), solver)
         .configure(|state| state.param(start.to_vec()))

@@ -14,20 +14,29 @@ pub(super) struct Kinematics {
     pub sigma_km_s: f64,
 }
 
+/// Distance of the thick line's centroid from the thin line, in dispersions, from which searches begin
+/// there too: the thin line's fit may have taken one of two clouds.
+const OFF_CENTRE: f64 = 0.8;
+
 /// Kinematics that the data suggest: those of the thin line where it is detected, else those of the
-/// thick line's intensity in `window`.
+/// thick line's intensity; both where they are far apart.
 pub(super) fn kinematics(thin_line: Option<&ThinLine>, thick: Kinematics) -> Vec<Kinematics> {
     match thin_line {
         Some(thin) => {
             let v_km_s = thin.v_km_s.value;
             let sigma = thin.fwhm_km_s.value / FWHM_PER_SIGMA;
-            [1.0, 0.7, 0.45]
+            let at = |v_km_s: f64, factor: f64| Kinematics {
+                v_km_s,
+                sigma_km_s: factor * sigma,
+            };
+            let mut found: Vec<Kinematics> = [1.0, 0.7, 0.45]
                 .into_iter()
-                .map(|factor| Kinematics {
-                    v_km_s,
-                    sigma_km_s: factor * sigma,
-                })
-                .collect()
+                .map(|factor| at(v_km_s, factor))
+                .collect();
+            if (thick.v_km_s - v_km_s).abs() > OFF_CENTRE * sigma {
+                found.extend([0.7, 1.0, 1.4].map(|factor| at(thick.v_km_s, factor)));
+            }
+            found
         }
         None => [-0.4, 0.0, 0.4]
             .into_iter()
@@ -61,6 +70,7 @@ pub(super) fn starts(
     thick: &Channels,
     thin: &Channels,
     kinematics: &[Kinematics],
+    intensity: Kinematics,
 ) -> Vec<Vec<f64>> {
     let (model, _) = layout.thick(&vec![1.0; layout.parameters().len()]);
     let mut candidates = Vec::new();
@@ -88,41 +98,7 @@ pub(super) fn starts(
                     });
                 }
             }
-            Model::TwoGaussians => {
-                for first in [-2.0, -1.3, -0.8, -0.4] {
-                    for second in [0.4, 0.8, 1.3, 2.0] {
-                        for factor in [0.5, 0.9] {
-                            let sigma = factor * kinematics.sigma_km_s;
-                            let (one, two) = (
-                                Kinematics {
-                                    v_km_s: kinematics.v_km_s + first * kinematics.sigma_km_s,
-                                    sigma_km_s: sigma,
-                                },
-                                Kinematics {
-                                    v_km_s: kinematics.v_km_s + second * kinematics.sigma_km_s,
-                                    sigma_km_s: sigma,
-                                },
-                            );
-                            let (chi2, peaks) = scan.two_gaussians(one, two);
-                            let parameters = layout_start(
-                                layout,
-                                thin,
-                                one,
-                                0.5 * thin_peak,
-                                |name| match name {
-                                    "peak_k" => Some(peaks.0),
-                                    "peak_second_k" => Some(peaks.1),
-                                    "peak_second_thin_k" => Some(0.5 * thin_peak),
-                                    "v_second_km_s" | "v_second_thin_km_s" => Some(two.v_km_s),
-                                    "sigma_second_km_s" | "sigma_second_thin_km_s" => Some(sigma),
-                                    _ => None,
-                                },
-                            );
-                            candidates.push(Candidate { chi2, parameters });
-                        }
-                    }
-                }
-            }
+            Model::TwoGaussians => two_gaussians(layout, &mut scan, *kinematics, &mut candidates),
             Model::TwoLayer | Model::TwoLayerContinuum | Model::Hill | Model::HillSurface => {
                 let source = source(layout);
                 for speed in INWARD_SPEEDS {
@@ -149,8 +125,46 @@ pub(super) fn starts(
             }
         }
     }
+    if model == Model::TwoGaussians {
+        two_gaussians(layout, &mut scan, intensity, &mut candidates);
+    }
     candidates.sort_by(|one, other| one.chi2.total_cmp(&other.chi2));
     distinct(candidates, layout)
+}
+
+/// Candidates of two Gaussians on either side of a centre, with the best amplitudes in both lines.
+fn two_gaussians(
+    layout: &Layout,
+    scan: &mut Scan<'_>,
+    about: Kinematics,
+    candidates: &mut Vec<Candidate>,
+) {
+    for first in [-2.0, -1.3, -0.8, -0.4] {
+        for second in [0.4, 0.8, 1.3, 2.0] {
+            for factor in [0.3, 0.5, 0.9] {
+                let sigma_km_s = factor * about.sigma_km_s;
+                let [one, two] = [first, second].map(|shift| Kinematics {
+                    v_km_s: about.v_km_s + shift * about.sigma_km_s,
+                    sigma_km_s,
+                });
+                let (thick_chi2, peaks) = scan.two_gaussians(scan.thick, one, two);
+                let (thin_chi2, thin_peaks) = scan.two_gaussians(scan.thin, one, two);
+                let parameters =
+                    layout_start(layout, scan.thin, one, thin_peaks.0, |name| match name {
+                        "peak_k" => Some(peaks.0),
+                        "peak_second_k" => Some(peaks.1),
+                        "peak_second_thin_k" => Some(thin_peaks.1),
+                        "v_second_km_s" | "v_second_thin_km_s" => Some(two.v_km_s),
+                        "sigma_second_km_s" | "sigma_second_thin_km_s" => Some(sigma_km_s),
+                        _ => None,
+                    });
+                candidates.push(Candidate {
+                    chi2: thick_chi2 + thin_chi2,
+                    parameters,
+                });
+            }
+        }
+    }
 }
 
 /// The best candidates that differ: neighbours of a better one would end in the same minimum. Both
@@ -302,16 +316,20 @@ impl<'a> Scan<'a> {
         one_gaussian(self.thick, kinematics, &mut self.first)
     }
 
-    /// chi2 of the thick line with two Gaussians of the best amplitudes.
-    fn two_gaussians(&mut self, one: Kinematics, two: Kinematics) -> (f64, (f64, f64)) {
-        let channels = self.thick.len();
-        unit_gaussian(self.thick, one, &mut self.first[..channels]);
-        unit_gaussian(self.thick, two, &mut self.second[..channels]);
-        let solution = Amplitudes::of(
-            self.thick,
-            &self.first[..channels],
-            &self.second[..channels],
+    /// chi2 of a line with two Gaussians of the best amplitudes.
+    fn two_gaussians(
+        &mut self,
+        line: &Channels,
+        one: Kinematics,
+        two: Kinematics,
+    ) -> (f64, (f64, f64)) {
+        let (first, second) = (
+            &mut self.first[..line.len()],
+            &mut self.second[..line.len()],
         );
+        unit_gaussian(line, one, first);
+        unit_gaussian(line, two, second);
+        let solution = Amplitudes::of(line, first, second);
         let (a, b) = solution.non_negative();
         (solution.chi2(a, b), (a, b))
     }

@@ -9,7 +9,7 @@ use crate::line::Line;
 use crate::measure::ThinLine;
 use crate::model::{LineShape, Model, Sampling};
 use crate::numeric::Estimate;
-use crate::numeric::least_squares::{Interval, Minimum, Termination, Workspace};
+use crate::numeric::least_squares::{Interval, Minimum, Settings, Termination, Workspace};
 use crate::prepare::Prepared;
 
 /// Height over its formal error from which the thin line counts as detected.
@@ -81,7 +81,14 @@ pub fn fit_thin(thin: &Prepared, line: &Line, settings: &FitSettings) -> Result<
     let mut workspace = Workspace::new();
     for start in thin_starts(&layout, &channels, intensity, thin) {
         let minimum;
-        (minimum, workspace) = search(&layout, None, &channels, &start, workspace)?;
+        (minimum, workspace) = search(
+            &layout,
+            None,
+            &channels,
+            &start,
+            &Settings::default(),
+            workspace,
+        )?;
         if best.as_ref().is_none_or(|best| minimum.chi2 < best.chi2) {
             best = Some(minimum);
         }

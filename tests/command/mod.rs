@@ -1,6 +1,6 @@
 //! The binary in a folder of its own, and small invented spectra to feed it.
 
-#![allow(dead_code)] // every test file uses its part
+#![allow(dead_code, clippy::unwrap_used)] // every test file uses its part; test support
 
 use inrush::line::find;
 use inrush::model::{LineShape, Model, Sampling};
