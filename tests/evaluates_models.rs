@@ -348,6 +348,11 @@ fn no_infall_makes_a_symmetric_profile() {
 }
 
 #[test]
+#[allow(
+    clippy::cast_possible_truncation,
+    clippy::cast_sign_loss,
+    reason = "positions on a grid of positive whole steps"
+)]
 fn channel_values_are_means_over_the_channel() {
     let line = single(89.1885);
     let fine = grid(-3.0, 3.0, 60_001);

@@ -135,7 +135,8 @@ impl Kernel for ExpSlice<'_> {
 /// ```
 /// let mut values = [0.0, 1.0, -1e9];
 /// inrush::numeric::exponential::exp_in_place(&mut values);
-/// assert_eq!(values, [1.0, std::f64::consts::E, 0.0]);
+/// assert_eq!([values[0], values[2]], [1.0, 0.0]);
+/// assert!((values[1] - std::f64::consts::E).abs() < 1e-15);
 /// ```
 pub fn exp_in_place(values: &mut [f64]) {
     dispatch(ExpSlice { values });
