@@ -1,4 +1,5 @@
-//! Every command that a page shows is run, and has to print what the page says.
+//! Every command that a page shows is run, and has to print what the page says; every caution is
+//! explained.
 //!
 //! Blocks marked `console` are read: `$ ` begins a command, `> ` continues it, other lines are what it
 //! prints on both streams; `...` stands for any lines. The commands of a page run in order in one
@@ -169,4 +170,18 @@ fn every_shown_command_prints_what_its_page_says() {
     }
     assert!(wrong.is_empty(), "{}", wrong.join("\n"));
     assert!(commands > 10, "{commands} commands");
+}
+
+#[test]
+fn the_tutorial_explains_every_caution() {
+    let root = Path::new(env!("CARGO_MANIFEST_DIR"));
+    let tutorial = std::fs::read_to_string(root.join("docs/tutorial.md")).unwrap();
+    let source = std::fs::read_to_string(root.join("src/fit/cautions.rs")).unwrap();
+    let (_, codes) = source.split_once("fn code(").unwrap();
+    let (codes, _) = codes.split_once("\n    }\n").unwrap();
+    let codes: Vec<&str> = codes.split('"').skip(1).step_by(2).collect();
+    assert!(codes.len() > 10, "{codes:?}");
+    for code in codes {
+        assert!(tutorial.contains(&format!("| `{code}` |")), "{code}");
+    }
 }
