@@ -29,7 +29,10 @@ fn a_good_text_file() {
     assert_eq!((run.code, run.stderr.as_str()), (0, ""));
     assert_eq!(run.stdout.lines().next(), Some("thick.csv"));
     assert_eq!(fact(&run, "format"), "CSV");
-    assert_eq!(fact(&run, "axis"), "radio-convention velocity, -7.000 to 22.000 km/s");
+    assert_eq!(
+        fact(&run, "axis"),
+        "radio-convention velocity, -7.000 to 22.000 km/s"
+    );
     assert_eq!(fact(&run, "channels"), "291, 0 of them blank");
     assert_eq!(fact(&run, "temperature scale"), "T_mb");
     assert_eq!(fact(&run, "frame"), "not stated");

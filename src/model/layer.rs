@@ -4,6 +4,7 @@
     reason = "has to be compiled inside each instruction-set copy"
 )]
 
+use super::slab::{BLOCK, padded, whole_lanes};
 use super::{LineShape, Sampling, columns};
 use crate::line::Component;
 use crate::numeric::dispatch::{Arithmetic, Kernel, dispatch};
@@ -20,10 +21,7 @@ pub(super) fn evaluate(
     value: &mut [f64],
     jacobian: Option<&mut [f64]>,
 ) {
-    let columns = jacobian.map(|jacobian| {
-        jacobian.fill(0.0);
-        columns(jacobian, value.len())
-    });
+    let columns = jacobian.map(|jacobian| columns(jacobian, value.len()));
     dispatch(LayerKernel {
         components: &line.components,
         sampling,
@@ -49,9 +47,6 @@ struct LayerKernel<'a> {
     columns: Option<[&'a mut [f64]; 4]>,
 }
 
-/// Channels that are worked on at a time.
-const BLOCK: usize = 64;
-
 impl Kernel for LayerKernel<'_> {
     type Output = ();
 
@@ -63,50 +58,52 @@ impl Kernel for LayerKernel<'_> {
         for first in (0..value.len()).step_by(BLOCK) {
             let last = (first + BLOCK).min(value.len());
             let channels = last - first;
-            let velocity = &self.sampling.velocity_km_s()[first..last];
-            let width = &self.sampling.width_km_s()[first..last];
-            let value = &mut value[first..last];
+            let n = whole_lanes(channels);
+            let centres = &padded(&self.sampling.velocity_km_s()[first..last])[..n];
+            let widths = &padded(&self.sampling.width_km_s()[first..last])[..n];
             let mut absorbed = [0.0; BLOCK];
+            let absorbed = &mut absorbed[..n];
+            let mut by_v = [0.0; BLOCK];
+            let by_v = &mut by_v[..n];
+            let mut by_sigma = [0.0; BLOCK];
+            let by_sigma = &mut by_sigma[..n];
+            let mut by_tau = [0.0; BLOCK];
+            let by_tau = &mut by_tau[..n];
             for (node, weight) in self.sampling.nodes() {
                 let mut phi = [0.0; BLOCK];
+                let phi = &mut phi[..n];
                 let mut by_velocity = [0.0; BLOCK];
+                let by_velocity = &mut by_velocity[..n];
                 let mut by_width = [0.0; BLOCK];
+                let by_width = &mut by_width[..n];
                 for component in self.components {
                     let centre = self.v_lsr_km_s + component.offset_km_s;
-                    for i in 0..channels {
-                        let z = (A::mul_add(*node, width[i], velocity[i]) - centre) * inverse;
+                    for i in 0..n {
+                        let z = (A::mul_add(*node, widths[i], centres[i]) - centre) * inverse;
                         let gauss = component.weight * exp_negative::<A>(0.5 * z * z);
+                        let slope = gauss * z * inverse;
                         phi[i] += gauss;
-                        by_velocity[i] += gauss * z * inverse;
-                        by_width[i] += gauss * z * z * inverse;
+                        by_velocity[i] += slope;
+                        by_width[i] = A::mul_add(slope, z, by_width[i]);
                     }
                 }
-                for i in 0..channels {
+                for i in 0..n {
                     let through = exp_negative::<A>(self.tau_total * phi[i]);
                     absorbed[i] = A::mul_add(*weight, 1.0 - through, absorbed[i]);
-                    // the same optical depths serve the slopes below
-                    phi[i] *= weight * self.contrast_k * through;
-                    by_velocity[i] *= weight * self.contrast_k * self.tau_total * through;
-                    by_width[i] *= weight * self.contrast_k * self.tau_total * through;
-                }
-                if let Some([by_v, by_sigma, by_tau, _]) = &mut columns {
-                    let (by_v, by_sigma, by_tau) = (
-                        &mut by_v[first..last],
-                        &mut by_sigma[first..last],
-                        &mut by_tau[first..last],
-                    );
-                    for i in 0..channels {
-                        by_v[i] += by_velocity[i];
-                        by_sigma[i] += by_width[i];
-                        by_tau[i] += phi[i];
-                    }
+                    let slope = weight * self.contrast_k * through;
+                    by_v[i] = A::mul_add(slope * self.tau_total, by_velocity[i], by_v[i]);
+                    by_sigma[i] = A::mul_add(slope * self.tau_total, by_width[i], by_sigma[i]);
+                    by_tau[i] = A::mul_add(slope, phi[i], by_tau[i]);
                 }
             }
-            for i in 0..channels {
-                value[i] = self.contrast_k * absorbed[i];
+            for (value, absorbed) in value[first..last].iter_mut().zip(&*absorbed) {
+                *value = self.contrast_k * absorbed;
             }
-            if let Some([_, _, _, by_t_ex]) = &mut columns {
-                for (target, absorbed) in by_t_ex[first..last].iter_mut().zip(&absorbed) {
+            if let Some([column_v, column_sigma, column_tau, column_t_ex]) = &mut columns {
+                column_v[first..last].copy_from_slice(&by_v[..channels]);
+                column_sigma[first..last].copy_from_slice(&by_sigma[..channels]);
+                column_tau[first..last].copy_from_slice(&by_tau[..channels]);
+                for (target, absorbed) in column_t_ex[first..last].iter_mut().zip(&*absorbed) {
                     *target = self.contrast_slope * absorbed;
                 }
             }

@@ -151,16 +151,19 @@ impl<S: Shape, T: Sink> Kernel for SlabKernel<'_, S, T> {
             by_velocity: [0.0; BLOCK],
             by_sigma: [0.0; BLOCK],
         };
-        let mut velocity = [0.0; BLOCK];
         for start in (0..all_velocities.len()).step_by(BLOCK) {
             let end = (start + BLOCK).min(all_velocities.len());
             let channels = end - start;
-            let (centres, widths) = (&all_velocities[start..end], &all_widths[start..end]);
+            let n = whole_lanes(channels);
+            let centres = padded(&all_velocities[start..end]);
+            let widths = padded(&all_widths[start..end]);
             for (index, (node, weight)) in sampling.nodes().iter().enumerate() {
-                for i in 0..channels {
+                let mut velocity = [0.0; BLOCK];
+                let velocity = &mut velocity[..n];
+                let (centres, widths) = (&centres[..n], &widths[..n]);
+                for i in 0..n {
                     velocity[i] = A::mul_add(*node, widths[i], centres[i]);
                 }
-                let velocity = &velocity[..channels];
                 front.fill::<A>(
                     velocity,
                     slab.v_lsr_km_s + slab.v_in_km_s,
@@ -195,14 +198,41 @@ pub(super) struct Block {
 }
 
 impl Block {
+    /// Writes the block's values into a column of all channels.
     #[inline(always)]
-    fn put(&self, target: &mut f64, value: f64) {
-        *target = if self.first { value } else { *target + value };
+    fn write(&self, column: &mut [f64], values: &[f64]) {
+        let values = &values[..self.channels];
+        let target = &mut column[self.start..self.start + self.channels];
+        if self.first {
+            target.copy_from_slice(values);
+        } else {
+            for (target, value) in target.iter_mut().zip(values) {
+                *target += value;
+            }
+        }
     }
 }
 
-/// Channels that are worked on at a time; their optical depths stay in the first-level cache.
-const BLOCK: usize = 64;
+/// Channels that are worked on at a time. Loops run over slices of arrays of their own, all of one
+/// length that is a multiple of [`LANES`]: so the compiler needs no checks inside and vectorises them.
+pub(super) const BLOCK: usize = 64;
+
+/// Numbers in a register of the widest instructions.
+const LANES: usize = 8;
+
+/// The length of the slices that hold `channels` (at most [`BLOCK`]).
+#[inline(always)]
+pub(super) fn whole_lanes(channels: usize) -> usize {
+    channels.next_multiple_of(LANES).min(BLOCK)
+}
+
+/// Up to [`BLOCK`] values, the last one repeated to fill the block.
+#[inline(always)]
+pub(super) fn padded(values: &[f64]) -> [f64; BLOCK] {
+    let mut block = [values[values.len() - 1]; BLOCK];
+    block[..values.len()].copy_from_slice(values);
+    block
+}
 
 /// Optical depth per unit tau of one half in a block of channels, and its slopes.
 pub(super) struct Half {
@@ -220,31 +250,23 @@ impl Half {
         sigma: f64,
         components: &[Component],
     ) {
-        let channels = velocity.len().min(BLOCK);
         let inverse = 1.0 / sigma;
-        let (phi, by_velocity, by_sigma) = (
-            &mut self.phi[..channels],
-            &mut self.by_velocity[..channels],
-            &mut self.by_sigma[..channels],
-        );
-        for (index, component) in components.iter().enumerate() {
+        let n = velocity.len();
+        let phi = &mut self.phi[..n];
+        let by_velocity = &mut self.by_velocity[..n];
+        let by_sigma = &mut self.by_sigma[..n];
+        phi.fill(0.0);
+        by_velocity.fill(0.0);
+        by_sigma.fill(0.0);
+        for component in components {
             let centre = centre + component.offset_km_s;
-            if index == 0 {
-                for i in 0..channels {
-                    let z = (velocity[i] - centre) * inverse;
-                    let gauss = component.weight * exp_negative::<A>(0.5 * z * z);
-                    phi[i] = gauss;
-                    by_velocity[i] = gauss * z * inverse;
-                    by_sigma[i] = gauss * z * z * inverse;
-                }
-            } else {
-                for i in 0..channels {
-                    let z = (velocity[i] - centre) * inverse;
-                    let gauss = component.weight * exp_negative::<A>(0.5 * z * z);
-                    phi[i] += gauss;
-                    by_velocity[i] += gauss * z * inverse;
-                    by_sigma[i] += gauss * z * z * inverse;
-                }
+            for i in 0..n {
+                let z = (velocity[i] - centre) * inverse;
+                let gauss = component.weight * exp_negative::<A>(0.5 * z * z);
+                let slope = gauss * z * inverse;
+                phi[i] += gauss;
+                by_velocity[i] += slope;
+                by_sigma[i] = A::mul_add(slope, z, by_sigma[i]);
             }
         }
     }
@@ -284,11 +306,14 @@ impl Sink for Value<'_> {
         front: &Half,
         rear: &Half,
     ) {
-        let value = &mut self.0[block.start..block.start + block.channels];
-        for i in 0..block.channels {
-            let point = point::<S, A>(slab, front.phi[i], rear.phi[i]);
-            block.put(&mut value[i], block.weight * point.value);
+        let n = whole_lanes(block.channels);
+        let (phi_f, phi_r) = (&front.phi[..n], &rear.phi[..n]);
+        let mut value = [0.0; BLOCK];
+        let value = &mut value[..n];
+        for i in 0..n {
+            value[i] = block.weight * point::<S, A>(slab, phi_f[i], phi_r[i]).value;
         }
+        block.write(self.0, value);
     }
 }
 
@@ -301,13 +326,19 @@ impl Sink for Basis<'_> {
         front: &Half,
         rear: &Half,
     ) {
-        let shape = &mut self.shape[block.start..block.start + block.channels];
-        let absorbed = &mut self.absorbed[block.start..block.start + block.channels];
-        for i in 0..block.channels {
-            let point = point::<S, A>(slab, front.phi[i], rear.phi[i]);
-            block.put(&mut shape[i], block.weight * point.shape);
-            block.put(&mut absorbed[i], block.weight * point.absorbed);
+        let n = whole_lanes(block.channels);
+        let (phi_f, phi_r) = (&front.phi[..n], &rear.phi[..n]);
+        let mut shape = [0.0; BLOCK];
+        let shape = &mut shape[..n];
+        let mut absorbed = [0.0; BLOCK];
+        let absorbed = &mut absorbed[..n];
+        for i in 0..n {
+            let point = point::<S, A>(slab, phi_f[i], phi_r[i]);
+            shape[i] = block.weight * point.shape;
+            absorbed[i] = block.weight * point.absorbed;
         }
+        block.write(self.shape, shape);
+        block.write(self.absorbed, absorbed);
     }
 }
 
@@ -320,39 +351,51 @@ impl Sink for Slopes<'_> {
         front: &Half,
         rear: &Half,
     ) {
-        let channels = block.channels;
-        let range = block.start..block.start + channels;
-        let value = &mut self.value[range.clone()];
-        let [by_v, by_sigma, by_v_in, by_tau, by_a] = self
-            .columns
-            .each_mut()
-            .map(|column| &mut column[range.clone()]);
-        let mut absorbed = [0.0; BLOCK];
-        for i in 0..channels {
-            let point = point::<S, A>(slab, front.phi[i], rear.phi[i]);
-            let (f, r) = (block.weight * point.front, block.weight * point.rear);
+        let n = whole_lanes(block.channels);
+        let (phi_f, phi_r) = (&front.phi[..n], &rear.phi[..n]);
+        let mut value = [0.0; BLOCK];
+        let value = &mut value[..n];
+        let mut by_front = [0.0; BLOCK];
+        let by_front = &mut by_front[..n];
+        let mut by_rear = [0.0; BLOCK];
+        let by_rear = &mut by_rear[..n];
+        let mut by_a = [0.0; BLOCK];
+        let by_a = &mut by_a[..n];
+        let mut by_b = [0.0; BLOCK];
+        let by_b = &mut by_b[..n];
+        for i in 0..n {
+            let point = point::<S, A>(slab, phi_f[i], phi_r[i]);
+            value[i] = block.weight * point.value;
+            by_front[i] = block.weight * point.front;
+            by_rear[i] = block.weight * point.rear;
+            by_a[i] = block.weight * point.shape;
+            by_b[i] = block.weight * point.absorbed;
+        }
+        let (dv_f, dv_r) = (&front.by_velocity[..n], &rear.by_velocity[..n]);
+        let (ds_f, ds_r) = (&front.by_sigma[..n], &rear.by_sigma[..n]);
+        let mut by_v = [0.0; BLOCK];
+        let by_v = &mut by_v[..n];
+        let mut by_sigma = [0.0; BLOCK];
+        let by_sigma = &mut by_sigma[..n];
+        let mut by_v_in = [0.0; BLOCK];
+        let by_v_in = &mut by_v_in[..n];
+        let mut by_tau = [0.0; BLOCK];
+        let by_tau = &mut by_tau[..n];
+        for i in 0..n {
+            let (f, r) = (by_front[i], by_rear[i]);
             let (tau_f, tau_r) = (slab.tau * f, slab.tau * r);
-            block.put(&mut value[i], block.weight * point.value);
-            block.put(
-                &mut by_v[i],
-                A::mul_add(tau_f, front.by_velocity[i], tau_r * rear.by_velocity[i]),
-            );
-            block.put(
-                &mut by_sigma[i],
-                A::mul_add(tau_f, front.by_sigma[i], tau_r * rear.by_sigma[i]),
-            );
-            block.put(
-                &mut by_v_in[i],
-                A::mul_add(tau_f, front.by_velocity[i], -tau_r * rear.by_velocity[i]),
-            );
-            block.put(&mut by_tau[i], A::mul_add(f, front.phi[i], r * rear.phi[i]));
-            block.put(&mut by_a[i], block.weight * point.shape);
-            absorbed[i] = block.weight * point.absorbed;
+            by_v[i] = A::mul_add(tau_f, dv_f[i], tau_r * dv_r[i]);
+            by_v_in[i] = A::mul_add(tau_f, dv_f[i], -tau_r * dv_r[i]);
+            by_sigma[i] = A::mul_add(tau_f, ds_f[i], tau_r * ds_r[i]);
+            by_tau[i] = A::mul_add(f, phi_f[i], r * phi_r[i]);
+        }
+        block.write(self.value, value);
+        let buffers = [by_v, by_sigma, by_v_in, by_tau, by_a];
+        for (column, buffer) in self.columns.iter_mut().zip(buffers) {
+            block.write(column, buffer);
         }
         if let Some(by_excess) = &mut self.by_excess {
-            for (target, value) in by_excess[range].iter_mut().zip(&absorbed) {
-                block.put(target, *value);
-            }
+            block.write(by_excess, by_b);
         }
     }
 }
