@@ -1,13 +1,14 @@
 """Tables that Inrush writes, read by astropy: values, units, descriptions, blanks, meta data.
 
-Usage: writes_astropy.py DIRECTORY, as filled by `cargo run --example write_tables -- DIRECTORY`.
-Any warning is an error, so that checksums, cards and units must all be in order.
+Two sets are made and checked: the awkward tables of `cargo run --example write_tables`, and the products
+of `inrush fit` on the demonstration pair. Any warning is an error, so that checksums, cards and units must all be in order.
 """
 
 import json
 import math
 import re
-import sys
+import subprocess
+import tempfile
 import warnings
 from pathlib import Path
 
@@ -57,7 +58,33 @@ def check_units(name, columns):
                 assert column.unit == u.Unit(unit), f"{name}: {column.name} is in {column.unit}"
 
 
-def main(directory):
+def check_whole(units):
+    """Cards, checksums and data sums of every unit."""
+    units.verify("exception")
+    for unit in units:
+        assert unit.verify_checksum() == 1 and unit.verify_datasum() == 1, "checksum"
+
+
+def check_products(directory, record):
+    """The tables that a fit writes hold what it prints with --json."""
+    csv = Table.read(directory / "pair.csv", format="ascii.csv")
+    numbers = check_same("pair.csv", csv, [record])
+    ecsv = Table.read(directory / "pair.ecsv", format="ascii.ecsv")
+    assert check_same("pair.ecsv", ecsv, [record]) == numbers
+    check_units("pair.ecsv", ecsv.columns.values())
+    with fits.open(directory / "pair.fits", checksum=True) as units:
+        check_whole(units)
+    table = Table.read(directory / "pair.fits")
+    assert check_same("pair.fits", table, [record], unescaped) == numbers
+    assert numbers > 40, f"only {numbers} numbers were compared"
+    print(f"astropy agrees on {numbers} numbers of a fit's CSV, ECSV and FITS")
+
+
+def cargo(*arguments):
+    return subprocess.run(["cargo", "run", "--quiet", "--locked", *arguments], check=True, capture_output=True).stdout
+
+
+def check_tables(directory):
     records = json.loads((directory / "results.json").read_text())
 
     csv = Table.read(directory / "results.csv", format="ascii.csv")
@@ -71,9 +98,7 @@ def main(directory):
     assert ecsv.meta["settings"].endswith("one card"), ecsv.meta
 
     with fits.open(directory / "results.fits", checksum=True) as units:
-        units.verify("exception")
-        for unit in units:
-            assert unit.verify_checksum() == 1 and unit.verify_datasum() == 1, "checksum"
+        check_whole(units)
         header = units[1].header
         assert header["SEED"] == 42 and header["RATIO"] == 1e-7
         assert header["SETTINGS"] == ecsv.meta["settings"], repr(header["SETTINGS"])
@@ -98,5 +123,14 @@ def main(directory):
     print(f"astropy agrees on {numbers} numbers in CSV, ECSV and FITS")
 
 
+def main():
+    with tempfile.TemporaryDirectory() as temporary:
+        directory = Path(temporary)
+        cargo("--example", "write_tables", "--", str(directory))
+        check_tables(directory)
+        fit = ["--", "fit", "demo-spectra/lantern7.toml", "--no-figures", "--json", "--out", str(directory)]
+        check_products(directory, json.loads(cargo(*fit)))
+
+
 if __name__ == "__main__":
-    main(Path(sys.argv[1]))
+    main()

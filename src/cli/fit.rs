@@ -185,8 +185,13 @@ pub fn run(arguments: &FitArguments, output: &Output) -> Result<Exit, RunError> 
         }
     }
     for line in [&outcome.thick, &outcome.thin] {
-        for note in &line.notes {
-            output.note(&format!("{}: {note}", line.origin.path.display()));
+        let notes: Vec<String> = line.notes.iter().map(ToString::to_string).collect();
+        if !notes.is_empty() {
+            output.note(&format!(
+                "{}: {}",
+                line.origin.path.display(),
+                notes.join("; ")
+            ));
         }
     }
     let text = if arguments.json {
