@@ -614,8 +614,7 @@ fn blank_channels_are_left_out_not_filled() {
     let run = folder.fit(&["--json", "--out", "results"]);
     assert_eq!(run.code, 0, "{}", run.stderr);
     assert!(
-        run.stderr
-            .contains("thick.csv: 8 of 291 channels are blank"),
+        run.stderr.contains("8 of 291 channels are blank"),
         "{}",
         run.stderr
     );
