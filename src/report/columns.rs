@@ -46,6 +46,21 @@ pub enum Group {
 }
 
 impl Group {
+    /// Whether its errors are formal: from the curvature of chi2 at the minimum of a model's fit.
+    pub fn is_fitted(self) -> bool {
+        matches!(
+            self,
+            Self::Gaussian
+                | Self::TwoGaussians
+                | Self::Layer
+                | Self::TwoLayer
+                | Self::TwoLayerContinuum
+                | Self::Hill
+                | Self::HillSurface
+                | Self::Infall
+        )
+    }
+
     /// The group's heading.
     pub fn heading(self) -> &'static str {
         match self {
@@ -255,7 +270,12 @@ impl Quantity {
     pub fn columns(&self) -> Vec<Column> {
         let mut columns = vec![self.column("", self.description.to_owned())];
         if matches!(self.uncertainty, Error | ErrorAndIntervals) {
-            columns.push(self.column("_err", format!("Standard error of {}", self.name)));
+            let kind = if self.group.is_fitted() {
+                "Formal standard error"
+            } else {
+                "Standard error"
+            };
+            columns.push(self.column("_err", format!("{kind} of {}", self.name)));
         }
         if matches!(self.uncertainty, Intervals | ErrorAndIntervals) {
             for percent in [68, 95] {

@@ -28,7 +28,12 @@ pub fn summary(row: &Row, cautions: &[String]) -> String {
         };
         if heading != Some(quantity.group) {
             heading = Some(quantity.group);
-            let _ = write!(text, "\n{}\n", quantity.group.heading());
+            let errors = if quantity.group.is_fitted() {
+                " (formal errors)"
+            } else {
+                ""
+            };
+            let _ = write!(text, "\n{}{errors}\n", quantity.group.heading());
         }
         let _ = writeln!(text, "  {:<LABEL$}{shown}", quantity.label);
     }

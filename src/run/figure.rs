@@ -133,6 +133,12 @@ fn figure_numbers(outcome: &PairOutcome) -> Vec<(String, String)> {
     if let Some(delta_v) = outcome.measures.delta_v {
         numbers.push(("velocity difference".to_owned(), shown(delta_v, "")));
     }
+    if adopted.is_some() {
+        numbers.push((
+            "errors".to_owned(),
+            "formal, one standard deviation".to_owned(),
+        ));
+    }
     numbers.push((
         "profile".to_owned(),
         profile_word(outcome.measures.profile).to_owned(),

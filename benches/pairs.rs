@@ -1,0 +1,132 @@
+//! What does it cost to fit one pair? Each answer is checked.
+#![allow(missing_docs, clippy::unwrap_used, reason = "a bench stops where it cannot go on")]
+
+use criterion::{Criterion, Throughput, criterion_group, criterion_main};
+use inrush::fit::{FitRange, FitSettings, fit_pair, fit_thin};
+use inrush::line::{Line, find};
+use inrush::measure::{MeasureSettings, measure};
+use inrush::model::Model;
+use inrush::numeric::exponential::exp_in_place;
+use inrush::prepare::{Expected, PrepareSettings, Prepared, prepare_pair};
+use inrush::simulate::{PairTruth, simulate_pair};
+use inrush::spectrum::Spectrum;
+use std::hint::black_box;
+
+/// The default simulated pair: HCO+ 1-0 and H13CO+ 1-0 of a hill.
+fn spectra() -> (Spectrum, Spectrum, Line, Line, f64) {
+    let lines = (find("HCO+ 1-0").unwrap(), find("H13CO+ 1-0").unwrap());
+    let truth = PairTruth::new((Model::Hill, Model::Gaussian), lines.clone(), 7);
+    let v_in = truth.thick.parameters["v_in_km_s"];
+    let pair = simulate_pair(&truth).unwrap();
+    (pair.thick.spectrum, pair.thin.spectrum, lines.0, lines.1, v_in)
+}
+
+fn prepared(thick: &Spectrum, thin: &Spectrum) -> (Prepared, Prepared) {
+    let settings = PrepareSettings::default();
+    let expected = Expected::default();
+    prepare_pair((thick, &settings, &expected), (thin, &settings, &expected)).unwrap()
+}
+
+fn fitting(criterion: &mut Criterion) {
+    let (thick, thin, thick_line, thin_line, v_in) = spectra();
+    let pair = prepared(&thick, &thin);
+    let thin_fit = fit_thin(&pair.1, &thin_line, &FitSettings::default()).unwrap();
+    let mut group = criterion.benchmark_group("one_pair");
+    for (name, models) in [
+        ("two_layer", vec![Model::TwoLayer]),
+        ("hill", vec![Model::Hill]),
+        ("both_slabs", vec![Model::TwoLayer, Model::Hill]),
+        (
+            "six_models",
+            vec![
+                Model::Gaussian,
+                Model::TwoGaussians,
+                Model::Layer,
+                Model::TwoLayer,
+                Model::Hill,
+                Model::HillSurface,
+            ],
+        ),
+    ] {
+        let settings = FitSettings {
+            models,
+            range: Some(FitRange::All),
+            ..FitSettings::default()
+        };
+        group.bench_function(name, |bencher| {
+            bencher.iter(|| {
+                let fit = fit_pair(
+                    black_box(&pair.0),
+                    black_box(&pair.1),
+                    (&thick_line, &thin_line),
+                    thin_fit.line.as_ref(),
+                    &settings,
+                )
+                .unwrap();
+                assert!(fit.models.iter().all(|fit| fit.chi2.is_finite()));
+                if let Some(hill) = fit.models.iter().find(|fit| fit.model == Model::Hill) {
+                    let found = hill.estimate("v_in_km_s").unwrap();
+                    assert!((found.value - v_in).abs() < 5.0 * found.err);
+                }
+                fit
+            });
+        });
+    }
+    group.bench_function("thin_line", |bencher| {
+        bencher.iter(|| {
+            let fit = fit_thin(black_box(&pair.1), &thin_line, &FitSettings::default()).unwrap();
+            assert!(fit.line.is_some());
+            fit
+        });
+    });
+    group.bench_function("prepare", |bencher| {
+        bencher.iter(|| {
+            let pair = prepared(black_box(&thick), black_box(&thin));
+            assert!(pair.0.window_automatic);
+            pair
+        });
+    });
+    group.bench_function("measure", |bencher| {
+        bencher.iter(|| {
+            let measures = measure(
+                black_box(&pair.0),
+                &pair.1,
+                thin_fit.line.as_ref(),
+                0.01,
+                &MeasureSettings::default(),
+            );
+            assert!(measures.delta_v.unwrap().value < -0.25);
+            measures
+        });
+    });
+    group.finish();
+}
+
+fn exponential(criterion: &mut Criterion) {
+    let arguments: Vec<f64> = (0..4096).map(|i| -0.01 * f64::from(i)).collect();
+    let mut values = arguments.clone();
+    exp_in_place(&mut values);
+    for (x, y) in arguments.iter().zip(&values) {
+        assert!((y / x.exp() - 1.0).abs() < 5e-16);
+    }
+    let mut group = criterion.benchmark_group("exponential");
+    group.throughput(Throughput::Elements(4096));
+    group.bench_function("vector", |bencher| {
+        bencher.iter(|| {
+            values.copy_from_slice(&arguments);
+            exp_in_place(black_box(&mut values));
+        });
+    });
+    group.bench_function("std", |bencher| {
+        bencher.iter(|| {
+            for (value, argument) in values.iter_mut().zip(&arguments) {
+                *value = argument.exp();
+            }
+            black_box(&mut values);
+        });
+    });
+    group.finish();
+}
+
+criterion_group!(benches, fitting, exponential);
+criterion_main!(benches);
