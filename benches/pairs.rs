@@ -1,5 +1,9 @@
 //! What does it cost to fit one pair? Each answer is checked.
-#![allow(missing_docs, clippy::unwrap_used, reason = "a bench stops where it cannot go on")]
+#![allow(
+    missing_docs,
+    clippy::unwrap_used,
+    reason = "a bench stops where it cannot go on"
+)]
 
 use criterion::{Criterion, Throughput, criterion_group, criterion_main};
 use inrush::fit::{FitRange, FitSettings, fit_pair, fit_thin};
@@ -18,7 +22,13 @@ fn spectra() -> (Spectrum, Spectrum, Line, Line, f64) {
     let truth = PairTruth::new((Model::Hill, Model::Gaussian), lines.clone(), 7);
     let v_in = truth.thick.parameters["v_in_km_s"];
     let pair = simulate_pair(&truth).unwrap();
-    (pair.thick.spectrum, pair.thin.spectrum, lines.0, lines.1, v_in)
+    (
+        pair.thick.spectrum,
+        pair.thin.spectrum,
+        lines.0,
+        lines.1,
+        v_in,
+    )
 }
 
 fn prepared(thick: &Spectrum, thin: &Spectrum) -> (Prepared, Prepared) {

@@ -2,6 +2,7 @@
 
 use crate::model::{LineShape, Model, Sampling};
 use crate::numeric::autoregression::Whitener;
+use crate::numeric::products::products;
 use crate::prepare::Prepared;
 use crate::spectrum::Window;
 use std::ops::Range;
@@ -20,12 +21,17 @@ pub enum Averaging {
 /// Largest error of the mean over a channel, in units of the channel's noise.
 const AVERAGING_TOLERANCE: f64 = 0.01;
 
+/// Most quadrature points a channel for which starts are ranked at channel centres.
+const MOST_FOR_COARSE: usize = 2;
+
 /// Usable channels of one line inside the fitted range, whitened.
 #[derive(Clone, Debug)]
 pub struct Channels {
     line: LineShape,
     sampling: Sampling,
+    coarse_sampling: Sampling,
     whitened_data: Vec<f64>,
+    data_chi2: f64,
     segments: Vec<Range<usize>>,
     whitener: Option<Whitener>,
     inverse_noise: f64,
@@ -80,10 +86,15 @@ impl Channels {
         if let Some(whitener) = &whitener {
             whitener.whiten(&segments, &mut data);
         }
+        let [data_chi2] = products(&data, [&data]);
+        // with more points a channel's centre says little about its mean
+        let coarse_points = if points > MOST_FOR_COARSE { points } else { 1 };
         Self {
             line,
+            coarse_sampling: Sampling::new(velocity.clone(), width.clone(), coarse_points),
             sampling: Sampling::new(velocity, width, points),
             whitened_data: data,
+            data_chi2,
             segments,
             whitener,
             inverse_noise,
@@ -106,6 +117,18 @@ impl Channels {
     #[must_use]
     pub fn sampling(&self) -> &Sampling {
         &self.sampling
+    }
+
+    /// Where models are evaluated to rank starts: at the channels' centres, unless channels are wide.
+    #[must_use]
+    pub fn coarse_sampling(&self) -> &Sampling {
+        &self.coarse_sampling
+    }
+
+    /// chi2 of no line at all: the sum of the whitened data's squares.
+    #[must_use]
+    pub fn data_chi2(&self) -> f64 {
+        self.data_chi2
     }
 
     /// The line.

@@ -6,6 +6,7 @@ use super::joint::Layout;
 use crate::constants::FWHM_PER_SIGMA;
 use crate::measure::ThinLine;
 use crate::model::{LineShape, Model, Sampling, basis, temperatures};
+use crate::numeric::products::products;
 
 /// Centre and dispersion that a search may begin with, km/s.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -291,10 +292,6 @@ pub(super) struct Scan<'a> {
     second: Vec<f64>,
 }
 
-fn dot(one: &[f64], other: &[f64]) -> f64 {
-    one.iter().zip(other).map(|(a, b)| a * b).sum()
-}
-
 impl<'a> Scan<'a> {
     pub(super) fn new(thick: &'a Channels, thin: &'a Channels) -> Self {
         let most = thick.len().max(thin.len());
@@ -349,7 +346,7 @@ impl<'a> Scan<'a> {
         basis(
             model,
             line,
-            self.thick.sampling(),
+            self.thick.coarse_sampling(),
             [kinematics.v_km_s, kinematics.sigma_km_s, v_in, tau],
             first,
             second,
@@ -385,12 +382,12 @@ fn one_gaussian(channels: &Channels, kinematics: Kinematics, scratch: &mut [f64]
     let column = &mut scratch[..channels.len()];
     unit_gaussian(channels, kinematics, column);
     let data = channels.whitened_data();
-    let (square, product) = (dot(column, column), dot(column, data));
+    let [square, product] = products(column, [column, data]);
     if square == 0.0 {
-        return (dot(data, data), 0.0);
+        return (channels.data_chi2(), 0.0);
     }
     (
-        dot(data, data) - product * product / square,
+        channels.data_chi2() - product * product / square,
         product / square,
     )
 }
@@ -408,13 +405,15 @@ struct Amplitudes {
 impl Amplitudes {
     fn of(channels: &Channels, first: &[f64], second: &[f64]) -> Self {
         let data = channels.whitened_data();
+        let [square, both, by_first] = products(first, [first, second, data]);
+        let [second_square, by_second] = products(second, [second, data]);
         Self {
-            data: dot(data, data),
-            first: dot(first, first),
-            second: dot(second, second),
-            both: dot(first, second),
-            by_first: dot(first, data),
-            by_second: dot(second, data),
+            data: channels.data_chi2(),
+            first: square,
+            second: second_square,
+            both,
+            by_first,
+            by_second,
         }
     }
 

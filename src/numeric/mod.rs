@@ -6,6 +6,7 @@ pub mod dispatch;
 pub mod exponential;
 pub mod least_squares;
 pub mod polynomial;
+pub mod products;
 pub mod robust;
 
 pub use autoregression::Autoregression;

@@ -9,6 +9,7 @@
 
 use super::{RowBlock, Structure};
 use crate::numeric::dispatch::{Arithmetic, Kernel, dispatch};
+use crate::numeric::products::products_with;
 
 /// Most parameters a problem may have.
 pub const MAX_PARAMETERS: usize = 16;
@@ -18,8 +19,6 @@ pub(super) type Vector = [f64; MAX_PARAMETERS];
 /// A small square matrix, `matrix[row][column]`.
 pub(super) type Matrix = [Vector; MAX_PARAMETERS];
 
-/// Independent partial sums of a dot product: one register of the widest instructions.
-const LANES: usize = 8;
 /// Rows of a block: 256 rows of 9 columns take 18 kB, so that a block stays in the first cache.
 const BLOCK: usize = 256;
 
@@ -37,38 +36,12 @@ pub(super) fn sum_of_squares(values: &[f64]) -> f64 {
         fn run<A: Arithmetic>(self) -> f64 {
             let mut total = 0.0;
             for block in self.0.chunks(BLOCK) {
-                total += dot_with::<1, A>(block, [block])[0];
+                total += products_with::<1, A>(block, [block])[0];
             }
             total
         }
     }
     dispatch(Squares(values))
-}
-
-/// The dot products of `a` with `N` others, in one pass over `a`.
-#[inline(always)]
-fn dot_with<const N: usize, A: Arithmetic>(a: &[f64], others: [&[f64]; N]) -> [f64; N] {
-    let mut sums = [[0.0; LANES]; N];
-    let (whole, rest) = a.as_chunks::<LANES>();
-    let others = others.map(|other| other[..a.len()].as_chunks::<LANES>());
-    for (index, left) in whole.iter().enumerate() {
-        for k in 0..N {
-            let right = &others[k].0[index];
-            for lane in 0..LANES {
-                sums[k][lane] = A::mul_add(left[lane], right[lane], sums[k][lane]);
-            }
-        }
-    }
-    let mut totals = [0.0; N];
-    for k in 0..N {
-        let mut tail = 0.0;
-        for (left, right) in rest.iter().zip(others[k].1) {
-            tail = A::mul_add(*left, *right, tail);
-        }
-        let s = &sums[k];
-        totals[k] = ((s[0] + s[4]) + (s[1] + s[5])) + ((s[2] + s[6]) + (s[3] + s[7])) + tail;
-    }
-    totals
 }
 
 /// J^T J and J^T r of a stored Jacobian.
@@ -112,7 +85,7 @@ impl Kernel for Products<'_> {
             let right = &self.right[start..end];
             for (k, &i) in parameters.iter().enumerate() {
                 let left = &self.numbers[k * rows + start..k * rows + end];
-                let [by_right, square] = dot_with::<2, A>(left, [right, left]);
+                let [by_right, square] = products_with::<2, A>(left, [right, left]);
                 self.gradient[i] += by_right;
                 self.gram[i][i] += square;
                 let mut l = k + 1;
@@ -122,7 +95,7 @@ impl Kernel for Products<'_> {
                         &self.numbers[l * rows + start..l * rows + end]
                     };
                     let products =
-                        dot_with::<3, A>(left, [column(l), column(l + 1), column(l + 2)]);
+                        products_with::<3, A>(left, [column(l), column(l + 1), column(l + 2)]);
                     for (product, &j) in products.iter().zip(&parameters[l..]) {
                         self.gram[i][j] += product;
                         self.gram[j][i] += product;
