@@ -13,7 +13,7 @@ use std::error::Error;
 use std::process::ExitCode;
 
 /// Pairs drawn for each row of a table.
-const PAIRS: usize = 400;
+const PAIRS: u64 = 400;
 
 fn main() -> ExitCode {
     let choice = std::env::args().nth(1).unwrap_or_default();

@@ -106,6 +106,9 @@ const KINDS: [&str; 5] = ["infall", "expand", "infall-ff", "static", "twocloud"]
 const SIGNAL_TO_NOISE: [&str; 4] = ["10", "20", "40", "100"];
 const SPEEDS: [(&str, Model); 2] = [("two-layer", Model::TwoLayer), ("hill", Model::Hill)];
 
+/// Optical depth of a layer below which nothing absorbs itself.
+const TRANSPARENT: f64 = 0.5;
+
 /// A group of pairs under its name.
 type Group<'a> = (String, Vec<&'a Sphere>);
 
@@ -159,6 +162,24 @@ fn ratios(text: &mut String, spheres: &[Sphere]) {
     let (fast, slow): (Vec<_>, Vec<_>) = moving.iter().partition(|sphere| speed(sphere) > 0.7);
     groups.push(("- abs(v_in) up to 0.7 sigma".to_owned(), slow));
     groups.push(("- abs(v_in) above 0.7 sigma".to_owned(), fast));
+    for line in ["HCO+ 1-0", "HCO+ 4-3"] {
+        let of_line = |sphere: &&&Sphere| sphere.truth["thick_line"] == line;
+        let chosen = moving.iter().filter(of_line).copied().collect();
+        groups.push((format!("- {line}"), chosen));
+    }
+    let depth = |sphere: &Sphere| sphere.number("tau_thin");
+    let (deep, thin): (Vec<_>, Vec<_>) = moving.iter().partition(|sphere| depth(sphere) > 1.0);
+    groups.push(("- thin line's tau up to 1".to_owned(), thin));
+    groups.push(("- thin line's tau above 1".to_owned(), deep));
+    let found = |sphere: &Sphere| {
+        let fit = sphere.fit(Model::Hill);
+        fit.and_then(|fit| fit.parameter("tau"))
+            .map_or(f64::NAN, |tau| tau.value)
+    };
+    let (opaque, clear): (Vec<_>, Vec<_>) =
+        moving.iter().partition(|one| found(one) >= TRANSPARENT);
+    groups.push((format!("- hill's tau found below {TRANSPARENT}"), clear));
+    groups.push((format!("- hill's tau found from {TRANSPARENT}"), opaque));
     groups.push(("infall".to_owned(), of_kinds(spheres, &["infall"])));
     groups.push(("expand".to_owned(), of_kinds(spheres, &["expand"])));
     groups.push(("infall-ff".to_owned(), of_kinds(spheres, &["infall-ff"])));
@@ -186,7 +207,7 @@ fn ratios(text: &mut String, spheres: &[Sphere]) {
 
 fn zero_speeds(text: &mut String, spheres: &[Sphere]) {
     text.push_str(
-        "| kind | speed | pairs | v_in/sigma: median (16 to 84 %) | largest abs | beyond 3 err |\n| --- | --- | --- | --- | --- | --- |\n",
+        "| kind | speed | pairs | v_in/sigma: median (16 to 84 %) | largest abs | beyond 3 err | tau below 0.5 |\n| --- | --- | --- | --- | --- | --- | --- |\n",
     );
     for kind in ["static", "twocloud"] {
         for (name, model) in SPEEDS {
@@ -199,12 +220,17 @@ fn zero_speeds(text: &mut String, spheres: &[Sphere]) {
             let largest = ratio.iter().map(|ratio| ratio.abs()).fold(0.0, f64::max);
             let _ = writeln!(
                 text,
-                "| {kind} | {name} | {} | {} | {largest:.2} | {} |",
+                "| {kind} | {name} | {} | {} | {largest:.2} | {} | {} |",
                 fitted.len(),
                 spread(&ratio),
                 fitted
                     .iter()
                     .filter(|one| one.err.is_some() && !one.within(3.0))
+                    .count(),
+                members
+                    .iter()
+                    .filter_map(|one| one.fit(model)?.parameter("tau"))
+                    .filter(|tau| tau.value < TRANSPARENT)
                     .count(),
             );
         }
@@ -214,7 +240,7 @@ fn zero_speeds(text: &mut String, spheres: &[Sphere]) {
 
 fn classes(text: &mut String, spheres: &[Sphere]) {
     text.push_str(
-        "| kind | pairs | blue | red | neither | undetected |\n| --- | --- | --- | --- | --- | --- |\n",
+        "| kind | pairs | blue | red | neither | undetected | two peaks | thin line between them |\n| --- | --- | --- | --- | --- | --- | --- | --- |\n",
     );
     for (kind, members) in by_kind(spheres) {
         let count = |class: ProfileClass| {
@@ -224,17 +250,30 @@ fn classes(text: &mut String, spheres: &[Sphere]) {
             };
             members.iter().filter(of_class).count()
         };
+        let peaks: Vec<bool> = members
+            .iter()
+            .filter_map(|sphere| thin_between_peaks(sphere.outcome.as_ref().ok()?))
+            .collect();
         let _ = writeln!(
             text,
-            "| {kind} | {} | {} | {} | {} | {} |",
+            "| {kind} | {} | {} | {} | {} | {} | {} | {} |",
             members.len(),
             count(ProfileClass::Blue),
             count(ProfileClass::Red),
             count(ProfileClass::Neither),
             count(ProfileClass::Undetected),
+            peaks.len(),
+            peaks.iter().filter(|between| **between).count(),
         );
     }
     text.push('\n');
+}
+
+/// Whether the thin line lies between the peaks of a two-peaked thick line; `None` for any other.
+fn thin_between_peaks(outcome: &PairOutcome) -> Option<bool> {
+    let peaks = outcome.measures.two_peaks?;
+    let thin_km_s = outcome.thin_fit.line?.v_km_s.value;
+    Some(peaks.v_blue_km_s.value < thin_km_s && thin_km_s < peaks.v_red_km_s.value)
 }
 
 fn cautions(text: &mut String, spheres: &[Sphere]) {
