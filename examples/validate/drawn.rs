@@ -12,6 +12,9 @@ use rand_chacha::ChaCha8Rng;
 use std::error::Error;
 use std::fmt::Write as _;
 
+/// Pairs drawn for each row of a table.
+pub const PAIRS: u64 = 400;
+
 /// Dispersion of every pair, km/s: speeds then reach 0.2 km/s.
 const SIGMA_KM_S: f64 = 0.2;
 /// Channel width, km/s.
@@ -161,12 +164,12 @@ pub const FORMAL_HEAD: &str = "| model | noise | S/N | pairs | in err | in 2 err
 /// # Errors
 ///
 /// As [`formal_errors_of`].
-pub fn formal_errors(pairs: u64) -> Result<String, Box<dyn Error>> {
+pub fn formal_errors() -> Result<String, Box<dyn Error>> {
     let mut text = FORMAL_HEAD.to_owned();
     for model in [Model::Hill, Model::TwoLayer] {
         for noise in NOISES {
             for signal_to_noise in [10.0, 30.0, 100.0] {
-                text += &formal_errors_of(model, noise, signal_to_noise, pairs)?;
+                text += &formal_errors_of(model, noise, signal_to_noise, PAIRS)?;
             }
         }
     }
@@ -226,7 +229,7 @@ fn formal_row(head: (&str, &str, f64), all: &[Drawn]) -> String {
 /// # Errors
 ///
 /// As [`formal_errors`].
-pub fn published_behaviour(pairs: u64) -> Result<String, Box<dyn Error>> {
+pub fn published_behaviour() -> Result<String, Box<dyn Error>> {
     const MODELS: [Model; 2] = [Model::Hill, Model::TwoLayer];
     let lines = lines()?;
     let mut text = String::from(
@@ -235,7 +238,7 @@ pub fn published_behaviour(pairs: u64) -> Result<String, Box<dyn Error>> {
     for made in MODELS {
         for signal_to_noise in [30.0, 100.0] {
             let mut found: Vec<Vec<Drawn>> = Vec::new();
-            for seed in 0..pairs {
+            for seed in 0..PAIRS {
                 let mut truth = draw(made, &lines, (signal_to_noise, Correlation::White), seed);
                 let infall = truth.thick.parameters["v_in_km_s"].abs();
                 truth

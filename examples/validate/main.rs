@@ -12,9 +12,6 @@ mod statistics;
 use std::error::Error;
 use std::process::ExitCode;
 
-/// Pairs drawn for each row of a table.
-const PAIRS: u64 = 400;
-
 fn main() -> ExitCode {
     let choice = std::env::args().nth(1).unwrap_or_default();
     match tables(&choice) {
@@ -33,8 +30,8 @@ fn tables(choice: &str) -> Result<String, Box<dyn Error>> {
     match choice {
         "spheres" => spheres::summary(),
         "pairs" => Ok(spheres::rows(&spheres::results(&[])?)),
-        "formal" => drawn::formal_errors(PAIRS),
-        "published" => drawn::published_behaviour(PAIRS),
+        "formal" => drawn::formal_errors(),
+        "published" => drawn::published_behaviour(),
         _ => Err("expected one of spheres, pairs, formal, published".into()),
     }
 }
