@@ -1,7 +1,7 @@
 //! The numbers of docs/validation.md that simulated pairs give are those the code gives now.
 //!
 //! The table of spheres whole, and of the drawn pairs, which take a minute, one row each.
-//! `INRUSH_WRITE_EXPECTED=1` writes the spheres' tables anew; `cargo run --release --example validate`
+//! `INRUSH_WRITE_EXPECTED=1` writes the spheres' tables anew; `cargo run --example validate`
 //! prints the others.
 #![allow(
     clippy::unwrap_used,

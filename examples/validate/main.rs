@@ -1,6 +1,6 @@
 //! The numbers of docs/validation.md that come from simulated pairs, as its tables.
 //!
-//! `cargo run --release --example validate -- spheres | pairs | formal | published`: collapsing
+//! `cargo run --example validate -- spheres | pairs | formal | published`: collapsing
 //! spheres in summary or a row a pair; formal errors, and one slab model fitted to the other's
 //! profiles, on pairs drawn from the models.
 #![allow(clippy::print_stdout, clippy::print_stderr)]

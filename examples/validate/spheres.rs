@@ -7,6 +7,7 @@ use inrush::measure::ProfileClass;
 use inrush::model::Model;
 use inrush::numeric::Estimate;
 use inrush::run::{LineSection, PairOutcome, RunSheet, fit_pair};
+use inrush::spectrum::Window;
 use std::collections::{BTreeMap, HashMap};
 use std::error::Error;
 use std::fmt::Write as _;
@@ -37,6 +38,15 @@ impl Sphere {
             "v_in_km_s"
         };
         self.number(column)
+    }
+
+    fn is_fast(&self) -> bool {
+        self.v_true_km_s().abs() > 0.7 * self.number("sigma_km_s")
+    }
+
+    fn is_two_peaked(&self) -> bool {
+        let outcome = self.outcome.as_ref();
+        outcome.is_ok_and(|outcome| outcome.measures.two_peaks.is_some())
     }
 
     fn fit(&self, model: Model) -> Option<&ModelFit> {
@@ -102,8 +112,8 @@ pub fn results(models: &[&str]) -> Result<Vec<Sphere>, Box<dyn Error>> {
     Ok(spheres)
 }
 
+/// Kinds of pairs, those with a speed first.
 const KINDS: [&str; 5] = ["infall", "expand", "infall-ff", "static", "twocloud"];
-const SIGNAL_TO_NOISE: [&str; 4] = ["10", "20", "40", "100"];
 const SPEEDS: [(&str, Model); 2] = [("two-layer", Model::TwoLayer), ("hill", Model::Hill)];
 
 /// Optical depth of a layer below which nothing absorbs itself.
@@ -143,66 +153,69 @@ pub fn summary() -> Result<String, Box<dyn Error>> {
     Ok(text)
 }
 
-fn ratios(text: &mut String, spheres: &[Sphere]) {
+/// Whether a pair belongs to a group.
+type Belongs = fn(&Sphere) -> bool;
+
+/// Groups that the pairs of one speed are split into.
+const SPLITS: [(&str, Belongs); 12] = [
+    ("S/N 10", |one| one.truth["snr_thick"] == "10"),
+    ("S/N 20", |one| one.truth["snr_thick"] == "20"),
+    ("S/N 40", |one| one.truth["snr_thick"] == "40"),
+    ("S/N 100", |one| one.truth["snr_thick"] == "100"),
+    ("thick line with two peaks", Sphere::is_two_peaked),
+    ("thick line without", |one| !one.is_two_peaked()),
+    ("abs(v_in) up to 0.7 sigma", |one| !one.is_fast()),
+    ("abs(v_in) above 0.7 sigma", Sphere::is_fast),
+    ("HCO+ 1-0", |one| one.truth["thick_line"] == "HCO+ 1-0"),
+    ("HCO+ 4-3", |one| one.truth["thick_line"] == "HCO+ 4-3"),
+    ("thin line's tau up to 1", |one| {
+        one.number("tau_thin") <= 1.0
+    }),
+    ("thin line's tau above 1", |one| {
+        one.number("tau_thin") > 1.0
+    }),
+];
+
+/// Pairs with a speed, whole and split.
+fn moving_groups(spheres: &[Sphere]) -> Vec<Group<'_>> {
     let moving = of_kinds(spheres, &["infall", "expand"]);
-    let mut groups = vec![("infall and expand".to_owned(), moving.clone())];
-    for ratio in SIGNAL_TO_NOISE {
-        let of_ratio = |sphere: &&&Sphere| sphere.truth["snr_thick"] == ratio;
-        let chosen = moving.iter().filter(of_ratio).copied().collect();
-        groups.push((format!("- of these, S/N {ratio}"), chosen));
-    }
-    let peaks = |sphere: &Sphere| {
-        let outcome = sphere.outcome.as_ref().ok();
-        outcome.is_some_and(|outcome| outcome.measures.two_peaks.is_some())
-    };
-    let (two, one): (Vec<_>, Vec<_>) = moving.iter().partition(|sphere| peaks(sphere));
-    groups.push(("- thick line with two peaks".to_owned(), two));
-    groups.push(("- thick line without".to_owned(), one));
-    let speed = |sphere: &Sphere| sphere.v_true_km_s().abs() / sphere.number("sigma_km_s");
-    let (fast, slow): (Vec<_>, Vec<_>) = moving.iter().partition(|sphere| speed(sphere) > 0.7);
-    groups.push(("- abs(v_in) up to 0.7 sigma".to_owned(), slow));
-    groups.push(("- abs(v_in) above 0.7 sigma".to_owned(), fast));
-    for line in ["HCO+ 1-0", "HCO+ 4-3"] {
-        let of_line = |sphere: &&&Sphere| sphere.truth["thick_line"] == line;
-        let chosen = moving.iter().filter(of_line).copied().collect();
-        groups.push((format!("- {line}"), chosen));
-    }
-    let depth = |sphere: &Sphere| sphere.number("tau_thin");
-    let (deep, thin): (Vec<_>, Vec<_>) = moving.iter().partition(|sphere| depth(sphere) > 1.0);
-    groups.push(("- thin line's tau up to 1".to_owned(), thin));
-    groups.push(("- thin line's tau above 1".to_owned(), deep));
-    let found = |sphere: &Sphere| {
-        let fit = sphere.fit(Model::Hill);
-        fit.and_then(|fit| fit.parameter("tau"))
-            .map_or(f64::NAN, |tau| tau.value)
-    };
-    let (opaque, clear): (Vec<_>, Vec<_>) =
-        moving.iter().partition(|one| found(one) >= TRANSPARENT);
-    groups.push((format!("- hill's tau found below {TRANSPARENT}"), clear));
-    groups.push((format!("- hill's tau found from {TRANSPARENT}"), opaque));
-    groups.push(("infall".to_owned(), of_kinds(spheres, &["infall"])));
-    groups.push(("expand".to_owned(), of_kinds(spheres, &["expand"])));
-    groups.push(("infall-ff".to_owned(), of_kinds(spheres, &["infall-ff"])));
-    for (name, model) in SPEEDS {
+    let split = SPLITS.map(|(name, belongs)| {
+        let chosen = moving.iter().filter(|one| belongs(one)).copied();
+        (format!("- {name}"), chosen.collect())
+    });
+    let kinds = by_kind(spheres).into_iter().take(3);
+    let whole = ("infall and expand".to_owned(), moving.clone());
+    std::iter::once(whole).chain(split).chain(kinds).collect()
+}
+
+fn ratios(text: &mut String, spheres: &[Sphere]) {
+    let groups = &moving_groups(spheres);
+    text.push_str(
+        "| group | pairs | two-layer v_in/v_true: median (16 to 84 %) | wrong sign | truth in err | in 2 err | hill v_in/v_true: median (16 to 84 %) | wrong sign | truth in err | in 2 err |\n| --- | --- | --- | --- | --- | --- | --- | --- | --- | --- |\n",
+    );
+    for (group, members) in groups {
+        let cells = SPEEDS.map(|(_, model)| speed_cells(members, model));
         let _ = writeln!(
             text,
-            "| {name} | pairs | v_in/v_true: median (16 to 84 %) | wrong sign | truth in err | in 2 err |\n| --- | --- | --- | --- | --- | --- |"
+            "| {group} | {} | {} |",
+            members.len(),
+            cells.join(" | ")
         );
-        for (group, members) in &groups {
-            let fitted: Vec<Fitted> = members.iter().filter_map(|one| one.speed(model)).collect();
-            let ratio: Vec<f64> = fitted.iter().map(|one| one.value / one.truth).collect();
-            let _ = writeln!(
-                text,
-                "| {group} | {} | {} | {} | {} | {} |",
-                fitted.len(),
-                spread(&ratio),
-                ratio.iter().filter(|ratio| **ratio < 0.0).count(),
-                percent(&fitted, |one| one.within(1.0)),
-                percent(&fitted, |one| one.within(2.0)),
-            );
-        }
-        text.push('\n');
     }
+    text.push('\n');
+}
+
+/// Ratio to the true speed, wrong signs, and how often intervals hold the truth.
+fn speed_cells(members: &[&Sphere], model: Model) -> String {
+    let fitted: Vec<Fitted> = members.iter().filter_map(|one| one.speed(model)).collect();
+    let ratio: Vec<f64> = fitted.iter().map(|one| one.value / one.truth).collect();
+    format!(
+        "{} | {} | {} | {}",
+        spread(&ratio),
+        ratio.iter().filter(|ratio| **ratio < 0.0).count(),
+        percent(&fitted, |one| one.within(1.0)),
+        percent(&fitted, |one| one.within(2.0)),
+    )
 }
 
 fn zero_speeds(text: &mut String, spheres: &[Sphere]) {
@@ -415,7 +428,7 @@ fn cell(estimate: Option<Estimate>) -> String {
 /// A row a pair, as CSV.
 pub fn rows(spheres: &[Sphere]) -> String {
     let mut text = String::from(
-        "id,kind,snr,v_true,sigma,tau_thin,two_layer,two_layer_chi2_red,hill,hill_tau,hill_sigma,hill_chi2_red,profile,delta_v,two_peaks,window_thick,cautions\n",
+        "id,kind,snr,v_true,sigma,tau_thin,two_layer,two_layer_chi2_red,hill,hill_tau,hill_sigma,hill_chi2_red,profile,delta_v,two_peaks,window_thick,window_thin,cautions\n",
     );
     for sphere in spheres {
         let Ok(outcome) = &sphere.outcome else {
@@ -431,10 +444,14 @@ pub fn rows(spheres: &[Sphere]) -> String {
         };
         let chi2 = |model| sphere.fit(model).map_or(f64::NAN, ModelFit::chi2_reduced);
         let v_lsr = sphere.number("v_lsr_km_s");
-        let window = outcome.thick.prepared.window;
+        let window = |window: Window| {
+            let sigma = sphere.number("sigma_km_s");
+            let ends = [window.low_km_s, window.high_km_s].map(|end| (end - v_lsr) / sigma);
+            format!("{:.1}:{:.1}", ends[0], ends[1])
+        };
         let _ = writeln!(
             text,
-            "{},{},{},{},{},{},{},{:.2},{},{},{},{:.2},{:?},{},{},{:.1}:{:.1},{}",
+            "{},{},{},{},{},{},{},{:.2},{},{},{},{:.2},{:?},{},{},{},{},{}",
             sphere.truth["id"],
             sphere.kind(),
             sphere.truth["snr_thick"],
@@ -450,8 +467,8 @@ pub fn rows(spheres: &[Sphere]) -> String {
             outcome.measures.profile,
             cell(outcome.measures.delta_v),
             outcome.measures.two_peaks.is_some(),
-            (window.low_km_s - v_lsr) / sphere.number("sigma_km_s"),
-            (window.high_km_s - v_lsr) / sphere.number("sigma_km_s"),
+            window(outcome.thick.prepared.window),
+            window(outcome.thin.prepared.window),
             codes(outcome).join(" "),
         );
     }

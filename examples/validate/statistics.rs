@@ -17,10 +17,18 @@ pub fn rms(values: &[f64]) -> f64 {
     (square / values.len().max(1) as f64).sqrt()
 }
 
+/// Rounded to hundredths, and zero without a sign.
+fn hundredths(value: f64) -> f64 {
+    (value * 100.0).round() / 100.0 + 0.0
+}
+
 /// Median and 16 to 84 % as a cell.
 pub fn spread(values: &[f64]) -> String {
     match [0.5, 0.16, 0.84].map(|part| quantile(values, part)) {
-        [Some(median), Some(low), Some(high)] => format!("{median:.2} ({low:.2} to {high:.2})"),
+        [Some(median), Some(low), Some(high)] => {
+            let [median, low, high] = [median, low, high].map(hundredths);
+            format!("{median:.2} ({low:.2} to {high:.2})")
+        }
         _ => "-".to_owned(),
     }
 }
