@@ -117,7 +117,7 @@ const KINDS: [&str; 5] = ["infall", "expand", "infall-ff", "static", "twocloud"]
 const SPEEDS: [(&str, Model); 2] = [("two-layer", Model::TwoLayer), ("hill", Model::Hill)];
 
 /// Optical depth of a layer below which nothing absorbs itself.
-const TRANSPARENT: f64 = 0.5;
+pub const TRANSPARENT: f64 = 0.5;
 
 /// A group of pairs under its name.
 type Group<'a> = (String, Vec<&'a Sphere>);
