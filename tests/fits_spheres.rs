@@ -119,7 +119,7 @@ fn every_slab_fit_is_as_deep_as_scipys_best_of_ten_starts() {
     for model in [Model::TwoLayer, Model::Hill] {
         let mut shallow = Vec::new();
         let mut disagreeing = Vec::new();
-        let mut deeper = 0;
+        let mut deeper = Vec::new();
         let mut evaluations = 0;
         for (truth, reference) in truth.iter().zip(&reference) {
             let id = &truth["id"];
@@ -165,11 +165,11 @@ fn every_slab_fit_is_as_deep_as_scipys_best_of_ten_starts() {
                     ));
                 }
             } else {
-                deeper += 1;
+                deeper.push(format!("{id} {ratio:.5}"));
             }
         }
         println!(
-            "{}: shallower {shallow:?}, deeper than scipy {deeper}, {evaluations} evaluations",
+            "{}: shallower {shallow:?}, deeper than scipy {deeper:?}, {evaluations} evaluations",
             model.name()
         );
         println!("{disagreeing:#?}");

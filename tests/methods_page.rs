@@ -1,5 +1,5 @@
 //! docs/methods.md: its equations where no other test checks them, written out here a second time,
-//! and the tests that it names.
+//! and the tests that it and docs/validation.md name.
 
 #![allow(clippy::unwrap_used)]
 
@@ -280,11 +280,11 @@ fn is_quantity(name: &str) -> bool {
 
 /// Names in backquotes: a file, then `: `, then a test; a test alone belongs to the file before it.
 #[test]
-fn every_test_that_the_page_names_exists() {
+fn every_test_that_the_pages_name_exists() {
     let root = Path::new(env!("CARGO_MANIFEST_DIR"));
-    let page = std::fs::read_to_string(root.join("docs/methods.md"))
-        .unwrap()
-        .replace('\n', " ");
+    let pages = ["docs/methods.md", "docs/validation.md"]
+        .map(|page| std::fs::read_to_string(root.join(page)).unwrap());
+    let page = pages.concat().replace('\n', " ");
     let mut file: Option<(String, String)> = None;
     let mut checked = 0;
     for quoted in page.split('`').skip(1).step_by(2) {
