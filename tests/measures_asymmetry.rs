@@ -91,6 +91,7 @@ fn prepared(temperature_k: Vec<f64>, rms_k: f64, process: &Autoregression) -> Pr
         },
         window_automatic: false,
         window_cuts_line: false,
+        other_signal: Vec::new(),
         baseline: Baseline {
             order: None,
             values_k: vec![0.0; count],

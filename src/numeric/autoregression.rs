@@ -37,6 +37,10 @@ const LARGEST_REFLECTION: f64 = 0.999;
 /// Autocorrelation below this is taken as zero in sums.
 const NEGLIGIBLE: f64 = 1e-6;
 
+/// Where as many values in a row as the process has coefficients are below this, all that follow are
+/// zero to double precision.
+const VANISHED: f64 = 1e-18;
+
 impl Autoregression {
     /// White noise.
     #[must_use]
@@ -206,17 +210,23 @@ impl Autoregression {
             step_up(&mut lower, reflection);
             innovation *= 1.0 - reflection * reflection;
         }
-        while correlation.len() < n_lags {
+        let mut vanished = 0;
+        while correlation.len() < n_lags && vanished < self.order() {
             let lag = correlation.len();
-            let next = self
+            let next: f64 = self
                 .coefficients
                 .iter()
                 .enumerate()
                 .map(|(k, a)| a * correlation[lag - 1 - k])
                 .sum();
+            vanished = if next.abs() < VANISHED {
+                vanished + 1
+            } else {
+                0
+            };
             correlation.push(next);
         }
-        correlation.truncate(n_lags);
+        correlation.resize(n_lags, 0.0);
         correlation
     }
 
@@ -241,8 +251,10 @@ impl Autoregression {
         sum
     }
 
-    /// Autocorrelation up to the lag from which it stays negligible, at most `n_lags` values.
-    fn significant_autocorrelation(&self, n_lags: usize) -> Vec<f64> {
+    /// Autocorrelation up to the lag from which it stays negligible (below 1e-6), at most `n_lags`
+    /// values.
+    #[must_use]
+    pub fn significant_autocorrelation(&self, n_lags: usize) -> Vec<f64> {
         let mut correlation = self.autocorrelation(n_lags);
         let last = correlation
             .iter()
