@@ -283,6 +283,9 @@ impl Autoregression {
     }
 }
 
+/// Values that are made white together.
+const BLOCK: usize = 64;
+
 /// Prediction filters of orders 0 to p: lower ones serve at the start of a segment.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Whitener {
@@ -301,14 +304,29 @@ impl Whitener {
         }
         for segment in segments {
             let values = &mut column[segment.clone()];
-            for index in (0..values.len()).rev() {
-                let used = index.min(order);
-                let predicted: f64 = self.filters[used]
+            // From the end, so that every value is predicted from those still coloured.
+            let mut end = values.len();
+            while end > order {
+                let start = end.saturating_sub(BLOCK).max(order);
+                let mut predicted = [0.0; BLOCK];
+                for (k, a) in self.filters[order].iter().enumerate() {
+                    let before = &values[start - k - 1..end - k - 1];
+                    for (sum, x) in predicted.iter_mut().zip(before) {
+                        *sum += a * x;
+                    }
+                }
+                for (value, predicted) in values[start..end].iter_mut().zip(predicted) {
+                    *value = (*value - predicted) * self.inverse_std[order];
+                }
+                end = start;
+            }
+            for index in (0..end).rev() {
+                let predicted: f64 = self.filters[index]
                     .iter()
-                    .zip(values[index - used..index].iter().rev())
+                    .zip(values[..index].iter().rev())
                     .map(|(a, x)| a * x)
                     .sum();
-                values[index] = (values[index] - predicted) * self.inverse_std[used];
+                values[index] = (values[index] - predicted) * self.inverse_std[index];
             }
         }
     }
