@@ -132,3 +132,82 @@ impl BaselineNoise {
         })
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::numeric::Autoregression;
+    use crate::prepare::Baseline;
+    use crate::spectrum::{Noise, Spectrum, Window};
+
+    /// The same by definition: each channel's weight with the baseline's share taken off, summed over
+    /// all pairs of channels.
+    #[test]
+    fn errors_are_those_of_the_full_sum_over_channels() {
+        let count = 90;
+        let velocity: Vec<f64> = (0..count).map(|i| 0.2 * f64::from(i) - 7.0).collect();
+        let mut values = vec![0.5; velocity.len()];
+        values[10] = f64::NAN;
+        let window = |low_km_s, high_km_s| Window {
+            low_km_s,
+            high_km_s,
+        };
+        for (reflections, order) in [
+            (vec![], None),
+            (vec![], Some(1)),
+            (vec![0.6, -0.2], Some(3)),
+        ] {
+            let prepared = Prepared {
+                spectrum: Spectrum::new(velocity.clone(), vec![0.2; values.len()], values.clone())
+                    .unwrap(),
+                window: window(-1.0, 3.0),
+                window_automatic: true,
+                window_cuts_line: false,
+                other_signal: vec![window(6.0, 7.5)],
+                baseline: Baseline {
+                    order,
+                    values_k: vec![0.0; values.len()],
+                    channels: 60,
+                    clipped: 0,
+                },
+                noise: Noise {
+                    rms_k: 0.3,
+                    channels: 60,
+                    process: Autoregression::from_reflections(&reflections),
+                },
+            };
+            let weights: Vec<f64> = velocity
+                .iter()
+                .map(|&v| {
+                    if (0.0..2.0).contains(&v) {
+                        1.0 + v
+                    } else {
+                        0.0
+                    }
+                })
+                .collect();
+            let mut all = weights.clone();
+            if let Some(order) = order {
+                let axis = ScaledAxis::new(velocity[0], velocity[velocity.len() - 1]);
+                let free: Vec<usize> = (0..velocity.len())
+                    .filter(|&i| i != 10 && prepared.is_line_free(velocity[i]))
+                    .collect();
+                let factor = Factor::new(axis, order, free.iter().map(|&i| velocity[i])).unwrap();
+                let mut moment = [0.0; 4];
+                for (&v, weight) in velocity.iter().zip(&weights) {
+                    for (sum, basis) in moment.iter_mut().zip(axis.basis(v)) {
+                        *sum += weight * basis;
+                    }
+                }
+                let share = factor.solve(moment);
+                for i in free {
+                    let basis = axis.basis(velocity[i]);
+                    all[i] -= (0..=order).map(|k| basis[k] * share[k]).sum::<f64>();
+                }
+            }
+            let expected = 0.3 * prepared.noise.process.variance_of_sum(&all).sqrt();
+            let found = ChannelNoise::of(&prepared).error(&weights);
+            assert!((found / expected - 1.0).abs() < 1e-10, "{order:?}");
+        }
+    }
+}

@@ -553,6 +553,27 @@ mod tests {
     }
 
     #[test]
+    fn long_segments_are_whitened_as_the_definition_says() {
+        let process = Autoregression::from_reflections(&[0.6, -0.2, 0.1]);
+        let mut generator = ChaCha8Rng::seed_from_u64(14);
+        let noise = filtered(&[1.0, 0.5], 300, &mut generator);
+        let mut whitened = noise.clone();
+        let segments = [0..2, 2..66, 66..69, 70..300];
+        process.whitener().whiten(&segments, &mut whitened);
+        assert_eq!(whitened[69], noise[69]);
+        // Far enough into a segment, w_i = (x_i - sum_k a_k x_(i-k))/s, s^2 the innovation's variance.
+        let innovation = process.innovation_variance().sqrt();
+        for segment in segments {
+            for i in segment.start + 3..segment.end {
+                let predicted: f64 = (1..=3)
+                    .map(|k| process.coefficients[k - 1] * noise[i - k])
+                    .sum();
+                assert!((whitened[i] - (noise[i] - predicted) / innovation).abs() < 1e-12);
+            }
+        }
+    }
+
+    #[test]
     fn an_outlier_does_not_make_correlation() {
         let mut generator = ChaCha8Rng::seed_from_u64(13);
         let mut noise = filtered(&[1.0], 200, &mut generator);
