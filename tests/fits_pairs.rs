@@ -54,6 +54,7 @@ fn prepared(model: Model, line: &Line, parameters: &[f64], noise_k: f64, seed: u
         },
         window_automatic: false,
         window_cuts_line: false,
+        other_signal: Vec::new(),
         baseline: Baseline {
             order: None,
             values_k: vec![0.0; channels],

@@ -49,6 +49,7 @@ fn spectrum(name: &str, noise_k: f64, window: Window) -> Prepared {
         window,
         window_automatic: false,
         window_cuts_line: false,
+        other_signal: Vec::new(),
         baseline: Baseline {
             order: None,
             values_k: vec![0.0; channels],

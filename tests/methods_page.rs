@@ -51,6 +51,7 @@ fn prepared(temperature_k: Vec<f64>, process: Autoregression) -> Prepared {
         window: WINDOW,
         window_automatic: false,
         window_cuts_line: false,
+        other_signal: Vec::new(),
         baseline: Baseline {
             order: None,
             values_k: vec![0.0; channels],

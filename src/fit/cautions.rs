@@ -6,6 +6,7 @@ use crate::measure::Measures;
 use crate::model::Model;
 use crate::numeric::least_squares::Side;
 use crate::prepare::{PairLine, Prepared};
+use crate::spectrum::Window;
 use statrs::distribution::{ChiSquared, ContinuousCDF};
 
 /// A reason to take a result with care.
@@ -84,6 +85,13 @@ pub enum Caution {
         /// Which line.
         line: PairLine,
     },
+    /// There is significant signal apart from the line: it counts neither as noise nor in the fit.
+    OtherSignal {
+        /// Which line's spectrum.
+        line: PairLine,
+        /// Where it is.
+        windows: Vec<Window>,
+    },
     /// Noise is correlated between neighbouring channels (accounted for in chi2 and errors).
     CorrelatedNoise {
         /// Which line.
@@ -120,6 +128,7 @@ impl Caution {
             Self::LowSignal { .. } => "low-signal",
             Self::WideChannels { .. } => "wide-channels",
             Self::WindowCutsLine { .. } => "window-cuts-line",
+            Self::OtherSignal { .. } => "other-signal",
             Self::CorrelatedNoise { .. } => "correlated-noise",
             Self::MaybeSwapped => "maybe-swapped",
         }
@@ -177,6 +186,17 @@ impl Caution {
             ),
             Self::WindowCutsLine { line } => {
                 format!("the {} line goes on beyond its window or the band", word(*line))
+            }
+            Self::OtherSignal { line, windows } => {
+                let each: Vec<String> = windows
+                    .iter()
+                    .map(|one| format!("{:.2} to {:.2}", one.low_km_s, one.high_km_s))
+                    .collect();
+                format!(
+                    "the {} spectrum holds signal apart from the line, at {} km/s: left out of baseline, noise and fit",
+                    word(*line),
+                    each.join(", ")
+                )
             }
             Self::CorrelatedNoise { line, adjacent } => format!(
                 "{} line's noise is correlated from channel to channel ({adjacent:.2} between neighbours): taken into account",
@@ -346,6 +366,12 @@ fn of_spectra(facts: &PairFacts<'_>, found: &mut Vec<Caution>) {
         }
         if prepared.window_cuts_line {
             found.push(Caution::WindowCutsLine { line });
+        }
+        if !prepared.other_signal.is_empty() {
+            found.push(Caution::OtherSignal {
+                line,
+                windows: prepared.other_signal.clone(),
+            });
         }
         if !prepared.noise.process.is_white() {
             let adjacent = prepared.noise.process.adjacent_correlation();

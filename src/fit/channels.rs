@@ -38,7 +38,7 @@ pub struct Channels {
 }
 
 impl Channels {
-    /// Takes the usable channels inside `range` (all where it is `None`).
+    /// Takes the usable channels inside `range` (all where it is `None`) and outside other signal.
     ///
     /// `narrowest_km_s` is the dispersion of the sharpest feature that a model will show, for the
     /// number of quadrature points.
@@ -60,7 +60,8 @@ impl Channels {
         let mut brightest = 0.0f64;
         for channel in 0..spectrum.len() {
             let v = spectrum.velocity_km_s()[channel];
-            if !spectrum.is_usable(channel) || range.is_some_and(|range| !range.contains(v)) {
+            let outside = range.is_some_and(|range| !range.contains(v));
+            if outside || !spectrum.is_usable(channel) || prepared.is_other_signal(v) {
                 continue;
             }
             let index = data.len();

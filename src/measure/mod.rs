@@ -139,6 +139,10 @@ const ISOLATED_FROM: f64 = 3.0;
 /// Significance of the thin line's peak from which it counts as detected.
 const THIN_DETECTED: f64 = 3.0;
 
+/// Significance of the dip, and of the lower peak, from which a thin line has two peaks: noise makes
+/// many small peaks on a line's wings, and of each it is asked.
+const THIN_DIP_SIGMA: f64 = 4.5;
+
 /// Normalised velocity difference beyond which a profile is blue or red (Mardones et al. 1997).
 const CLASS_LIMIT: f64 = 0.25;
 
@@ -318,7 +322,7 @@ fn thin_two_peaked(
         noise,
         extrema: smoothed.extrema(span.window.low_km_s, span.window.high_km_s),
         reach_km_s: smoothed.reach_km_s(),
-        dip_sigma: settings.dip_sigma,
+        dip_sigma: settings.dip_sigma.max(THIN_DIP_SIGMA),
     };
     profile.two_peaks().is_some()
 }

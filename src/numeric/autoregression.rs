@@ -37,6 +37,10 @@ const LARGEST_REFLECTION: f64 = 0.999;
 /// Autocorrelation below this is taken as zero in sums.
 const NEGLIGIBLE: f64 = 1e-6;
 
+/// Where as many values in a row as the process has coefficients are below this, all that follow are
+/// zero to double precision.
+const VANISHED: f64 = 1e-18;
+
 impl Autoregression {
     /// White noise.
     #[must_use]
@@ -206,17 +210,23 @@ impl Autoregression {
             step_up(&mut lower, reflection);
             innovation *= 1.0 - reflection * reflection;
         }
-        while correlation.len() < n_lags {
+        let mut vanished = 0;
+        while correlation.len() < n_lags && vanished < self.order() {
             let lag = correlation.len();
-            let next = self
+            let next: f64 = self
                 .coefficients
                 .iter()
                 .enumerate()
                 .map(|(k, a)| a * correlation[lag - 1 - k])
                 .sum();
+            vanished = if next.abs() < VANISHED {
+                vanished + 1
+            } else {
+                0
+            };
             correlation.push(next);
         }
-        correlation.truncate(n_lags);
+        correlation.resize(n_lags, 0.0);
         correlation
     }
 
@@ -241,8 +251,10 @@ impl Autoregression {
         sum
     }
 
-    /// Autocorrelation up to the lag from which it stays negligible, at most `n_lags` values.
-    fn significant_autocorrelation(&self, n_lags: usize) -> Vec<f64> {
+    /// Autocorrelation up to the lag from which it stays negligible (below 1e-6), at most `n_lags`
+    /// values.
+    #[must_use]
+    pub fn significant_autocorrelation(&self, n_lags: usize) -> Vec<f64> {
         let mut correlation = self.autocorrelation(n_lags);
         let last = correlation
             .iter()
@@ -271,6 +283,9 @@ impl Autoregression {
     }
 }
 
+/// Values that are made white together.
+const BLOCK: usize = 64;
+
 /// Prediction filters of orders 0 to p: lower ones serve at the start of a segment.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Whitener {
@@ -289,14 +304,29 @@ impl Whitener {
         }
         for segment in segments {
             let values = &mut column[segment.clone()];
-            for index in (0..values.len()).rev() {
-                let used = index.min(order);
-                let predicted: f64 = self.filters[used]
+            // From the end, so that every value is predicted from those still coloured.
+            let mut end = values.len();
+            while end > order {
+                let start = end.saturating_sub(BLOCK).max(order);
+                let mut predicted = [0.0; BLOCK];
+                for (k, a) in self.filters[order].iter().enumerate() {
+                    let before = &values[start - k - 1..end - k - 1];
+                    for (sum, x) in predicted.iter_mut().zip(before) {
+                        *sum += a * x;
+                    }
+                }
+                for (value, predicted) in values[start..end].iter_mut().zip(predicted) {
+                    *value = (*value - predicted) * self.inverse_std[order];
+                }
+                end = start;
+            }
+            for index in (0..end).rev() {
+                let predicted: f64 = self.filters[index]
                     .iter()
-                    .zip(values[index - used..index].iter().rev())
+                    .zip(values[..index].iter().rev())
                     .map(|(a, x)| a * x)
                     .sum();
-                values[index] = (values[index] - predicted) * self.inverse_std[used];
+                values[index] = (values[index] - predicted) * self.inverse_std[index];
             }
         }
     }
@@ -520,6 +550,27 @@ mod tests {
                 .sum::<f64>();
         let chi_square: f64 = whitened.iter().map(|w| w * w).sum();
         assert!((chi_square - expected).abs() < 1e-12);
+    }
+
+    #[test]
+    fn long_segments_are_whitened_as_the_definition_says() {
+        let process = Autoregression::from_reflections(&[0.6, -0.2, 0.1]);
+        let mut generator = ChaCha8Rng::seed_from_u64(14);
+        let noise = filtered(&[1.0, 0.5], 300, &mut generator);
+        let mut whitened = noise.clone();
+        let segments = [0..2, 2..66, 66..69, 70..300];
+        process.whitener().whiten(&segments, &mut whitened);
+        assert_eq!(whitened[69], noise[69]);
+        // Far enough into a segment, w_i = (x_i - sum_k a_k x_(i-k))/s, s^2 the innovation's variance.
+        let innovation = process.innovation_variance().sqrt();
+        for segment in segments {
+            for i in segment.start + 3..segment.end {
+                let predicted: f64 = (1..=3)
+                    .map(|k| process.coefficients[k - 1] * noise[i - k])
+                    .sum();
+                assert!((whitened[i] - (noise[i] - predicted) / innovation).abs() < 1e-12);
+            }
+        }
     }
 
     #[test]

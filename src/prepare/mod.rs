@@ -28,10 +28,27 @@ pub struct Prepared {
     pub window_automatic: bool,
     /// Whether the line seems to go on beyond the window or the band.
     pub window_cuts_line: bool,
+    /// Significant signal apart from the line, such as another species' or another cloud's, ascending:
+    /// neither baseline nor noise is measured on it, and it does not count in fits.
+    pub other_signal: Vec<Window>,
     /// The baseline that was subtracted.
     pub baseline: Baseline,
     /// Noise in the line-free channels.
     pub noise: Noise,
+}
+
+impl Prepared {
+    /// Whether a velocity (km/s) is in other signal than the line's.
+    pub fn is_other_signal(&self, velocity_km_s: f64) -> bool {
+        self.other_signal
+            .iter()
+            .any(|other| other.contains(velocity_km_s))
+    }
+
+    /// Whether a velocity (km/s) is in neither the line's window nor other signal.
+    pub fn is_line_free(&self, velocity_km_s: f64) -> bool {
+        !self.window.contains(velocity_km_s) && !self.is_other_signal(velocity_km_s)
+    }
 }
 
 /// A fitted and subtracted polynomial baseline.
@@ -241,7 +258,7 @@ pub fn prepare(
     settings: &PrepareSettings,
     expected: &Expected,
 ) -> Result<Prepared, PrepareError> {
-    let outcome = attempt(spectrum, settings, expected)?;
+    let outcome = attempt(spectrum, settings, expected, None)?;
     outcome.require()
 }
 
@@ -249,7 +266,9 @@ pub fn prepare(
 ///
 /// A line that is not detected takes the window of the other (moved by nothing: both are on the
 /// velocity scale of their own rest frequency), widened by its own components. A detected thin
-/// line is looked for where the thick line is.
+/// line is looked for where the thick line is. Where the thick spectrum shows several lines, the
+/// one that the thin line overlaps is taken, or the nearest if it is no farther away than the thin
+/// line is wide; else the brightest. A window given for either line is taken as it is.
 ///
 /// # Errors
 ///
@@ -267,15 +286,25 @@ pub fn prepare_pair(
         line: PairLine::Thin,
         error,
     };
-    let first = attempt(thick.0, thick.1, thick.2).map_err(thick_error)?;
+    let mut first = attempt(thick.0, thick.1, thick.2, None).map_err(thick_error)?;
+    let windows = [thick.1.window, thick.2.window, thin.1.window, thin.2.window];
+    if first.lines.len() > 1 && windows.iter().all(Option::is_none) {
+        // A thin spectrum that cannot be prepared by itself tells nothing here.
+        let toward = attempt(thin.0, thin.1, thin.2, None)
+            .ok()
+            .and_then(|alone| better_placed(&first.lines, &alone.lines));
+        if toward.is_some() {
+            first = attempt(thick.0, thick.1, thick.2, toward).map_err(thick_error)?;
+        }
+    }
     if first.detected || thick.1.window.is_some() {
         let window = narrowed(first.prepared.window, &thick.2.components);
         let expected = thin.2.or_window(window);
-        let second = attempt(thin.0, thin.1, &expected).map_err(thin_error)?;
+        let second = attempt(thin.0, thin.1, &expected, None).map_err(thin_error)?;
         let second = second.require().map_err(thin_error)?;
         return Ok((first.prepared, second));
     }
-    let second = attempt(thin.0, thin.1, thin.2).map_err(thin_error)?;
+    let second = attempt(thin.0, thin.1, thin.2, None).map_err(thin_error)?;
     if !second.detected && thin.1.window.is_none() {
         // Neither is seen: the expected windows, if there are any.
         let thick = first.require().map_err(thick_error)?;
@@ -284,10 +313,35 @@ pub fn prepare_pair(
     }
     let window = narrowed(second.prepared.window, &thin.2.components);
     let expected = thick.2.or_window(window);
-    let first = attempt(thick.0, thick.1, &expected)
+    let first = attempt(thick.0, thick.1, &expected, None)
         .and_then(Outcome::require)
         .map_err(thick_error)?;
     Ok((first, second.prepared))
+}
+
+/// Where the thick line is to be looked for, if not in its brightest line: the thin spectrum's most
+/// significant line that overlaps a line of the thick spectrum, or its most significant one.
+///
+/// Both lists are of systemic velocities, the most significant first.
+fn better_placed(thick: &[Window], thin: &[Window]) -> Option<Window> {
+    let overlaps = |line: &&Window| thick.iter().any(|one| one.apart_km_s(line) == 0.0);
+    let thin = thin.iter().find(overlaps).or(thin.first())?;
+    let brightest = thick.first()?.apart_km_s(thin);
+    let nearest = thick
+        .iter()
+        .map(|one| one.apart_km_s(thin))
+        .fold(f64::INFINITY, f64::min);
+    let near_enough = nearest <= thin.high_km_s - thin.low_km_s;
+    (near_enough && nearest < brightest).then_some(*thin)
+}
+
+impl Window {
+    /// Velocities between two windows, km/s; 0 where they touch or overlap.
+    fn apart_km_s(&self, other: &Self) -> f64 {
+        (self.low_km_s - other.high_km_s)
+            .max(other.low_km_s - self.high_km_s)
+            .max(0.0)
+    }
 }
 
 impl Expected {
@@ -335,6 +389,8 @@ struct Outcome {
     prepared: Prepared,
     /// Whether a line stands out.
     detected: bool,
+    /// Systemic velocities of all lines in emission, the most significant first.
+    lines: Vec<Window>,
     /// Whether the window rests on anything: a detection, the user, an expectation.
     has_window: bool,
     significance: f64,
@@ -388,10 +444,12 @@ fn check_window(window: Window, channels: &Channels) -> Result<(), PrepareError>
     })
 }
 
+/// `toward` are systemic velocities to which the line is chosen among several.
 fn attempt(
     original: &Spectrum,
     settings: &PrepareSettings,
     expected: &Expected,
+    toward: Option<Window>,
 ) -> Result<Outcome, PrepareError> {
     check(settings)?;
     let rebinned = match settings.smooth_to_km_s {
@@ -412,5 +470,7 @@ fn attempt(
     if let Some(window) = settings.window {
         check_window(window, &channels)?;
     }
-    Search::new(spectrum, &channels, settings, expected, needed).outcome(spectrum)
+    Search::new(spectrum, &channels, settings, expected, needed)
+        .toward(toward)
+        .outcome(spectrum)
 }

@@ -46,6 +46,20 @@ const GROW_AT: f64 = 2.0;
 /// only as much: interference in a single channel is no line.
 const SPIKE_AT: f64 = 3.0;
 
+/// Width of the widest box that is tried on a band: a third of it.
+fn largest_box(count: usize) -> usize {
+    (count / 3).max(1)
+}
+
+/// Widest box whose noise is ever asked for: the largest one tried, or the few channels beside a
+/// region or a window.
+fn widest(count: usize) -> usize {
+    largest_box(count).max(BESIDE).min(count)
+}
+
+/// Widest look beside a region or a window, where half of the region is not more.
+pub(super) const BESIDE: usize = 12;
+
 /// Sums of residuals over boxes, in units of their noise.
 pub(super) struct Boxes {
     sums: Vec<f64>,
@@ -78,7 +92,7 @@ impl Boxes {
         // Var(x_1 + ... + x_n) grows by 1 + 2 (rho_1 + ... + rho_(n-1)) with every value.
         let mut variance_of_sum = vec![0.0];
         let (mut variance, mut step) = (0.0, -1.0);
-        for rho in process.autocorrelation(count) {
+        for rho in process.autocorrelation(widest(count)) {
             step += 2.0 * rho;
             variance += step;
             variance_of_sum.push(scale * scale * variance);
@@ -104,7 +118,7 @@ impl Boxes {
 
     /// Box widths that are tried: 1, 2, 3, 4, 6, 8, 12, ... up to a third of the band.
     fn widths(&self) -> Vec<usize> {
-        let largest = (self.len() / 3).max(1);
+        let largest = largest_box(self.len());
         let mut widths = vec![1, 2, 3];
         let mut width = 4;
         while width <= largest {
@@ -118,17 +132,28 @@ impl Boxes {
         widths
     }
 
-    /// The most significant box that touches no taken channel.
-    fn best(&self, taken: &[bool], widths: &[usize]) -> Option<Region> {
-        let mut best: Option<Region> = None;
-        let mut free_run = 0;
-        for (high, &is_taken) in taken.iter().enumerate() {
-            free_run = if is_taken { 0 } else { free_run + 1 };
-            for &width in widths.iter().take_while(|&&width| width <= free_run) {
+    /// The boxes whose significance is at least `threshold` either way, in order of their last
+    /// channel, and the significance of the strongest of all boxes.
+    fn standing_out(&self, threshold: f64) -> (Vec<Region>, f64) {
+        // Without the baseline's share the noise is least: most boxes are settled by that alone.
+        let widths: Vec<(usize, f64)> = self
+            .widths()
+            .into_iter()
+            .map(|width| (width, self.variance_of_sum[width].sqrt()))
+            .collect();
+        let mut found = Vec::new();
+        let mut strongest = 0.0_f64;
+        for high in 0..self.len() {
+            for &(width, least_noise) in widths.iter().take_while(|at| at.0 <= high + 1) {
                 let low = high + 1 - width;
+                let sum = (self.sums[high + 1] - self.sums[low]).abs();
+                if sum < strongest.min(threshold) * least_noise {
+                    continue;
+                }
                 let significance = self.significance(low, width);
-                if best.is_none_or(|found| significance.abs() > found.significance.abs()) {
-                    best = Some(Region {
+                strongest = strongest.max(significance.abs());
+                if significance.abs() >= threshold {
+                    found.push(Region {
                         low,
                         high,
                         significance,
@@ -136,7 +161,7 @@ impl Boxes {
                 }
             }
         }
-        best
+        (found, strongest)
     }
 
     /// Extends a box into its wings, on either side by at most its own width.
@@ -174,23 +199,27 @@ impl Boxes {
     /// `favoured` channels need one standard deviation less: a line is expected there. The significance
     /// of the strongest box comes with them, found or not.
     pub fn regions(&self, threshold: f64, favoured: Option<(usize, usize)>) -> (Vec<Region>, f64) {
-        let widths = self.widths();
+        let (mut boxes, strongest) = self.standing_out(threshold - 1.0);
         let mut taken = vec![false; self.len()];
         let mut regions = Vec::new();
-        let mut strongest = 0.0_f64;
         while regions.len() < MOST_REGIONS {
-            let Some(found) = self.best(&taken, &widths) else {
+            // The first of equals, as narrow as there is.
+            let best = boxes.iter().copied().reduce(|best, next| {
+                if next.significance.abs() > best.significance.abs() {
+                    next
+                } else {
+                    best
+                }
+            });
+            let Some(found) = best else {
                 break;
             };
-            strongest = strongest.max(found.significance.abs());
             let expected =
                 favoured.is_some_and(|(low, high)| found.low <= high && found.high >= low);
             let needed = if expected { threshold - 1.0 } else { threshold };
-            if found.significance.abs() < threshold - 1.0 {
-                break;
-            }
             let grown = self.grow(found, &taken);
             taken[grown.low..=grown.high].fill(true);
+            boxes.retain(|one| one.high < grown.low || one.low > grown.high);
             if found.significance.abs() >= needed {
                 regions.push(grown);
             }

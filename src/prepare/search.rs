@@ -1,8 +1,8 @@
 //! The line window, the baseline and the noise of one spectrum, found together in rounds.
 
 use super::baseline::{Channels, Clipped, NOISE_CLIP, clipped_fit, robust_start};
-use super::regions::{Boxes, Region};
-use super::{Baseline, Expected, Outcome, PrepareError, PrepareSettings, Prepared};
+use super::regions::{BESIDE, Boxes, Region};
+use super::{Baseline, Expected, Outcome, PrepareError, PrepareSettings, Prepared, narrowed};
 use crate::numeric::Autoregression;
 use crate::numeric::robust::{clipped_scale, median};
 use crate::spectrum::{Noise, Spectrum, Window};
@@ -41,6 +41,10 @@ struct Exclusion {
     /// First and last channel of the window.
     window: Option<(usize, usize)>,
     channels: Vec<bool>,
+    /// Channels of signal beyond the line.
+    other: Vec<bool>,
+    /// Systemic velocities of all lines in emission, the most significant first.
+    lines: Vec<Window>,
     /// Significance of the strongest signal.
     significance: f64,
 }
@@ -56,6 +60,9 @@ impl Exclusion {
             *window = hull(*window, before);
         }
         for (mine, theirs) in self.channels.iter_mut().zip(&other.channels) {
+            *mine |= theirs;
+        }
+        for (mine, theirs) in self.other.iter_mut().zip(&other.other) {
             *mine |= theirs;
         }
     }
@@ -78,6 +85,8 @@ pub(super) struct Search<'a> {
     step_km_s: f64,
     /// A line seen before, which the line contains if it overlaps it.
     at_least: Option<Region>,
+    /// Systemic velocities to which the line is chosen among several; `None` for the brightest.
+    toward: Option<Window>,
 }
 
 impl<'a> Search<'a> {
@@ -96,7 +105,13 @@ impl<'a> Search<'a> {
             needed,
             step_km_s: spectrum.channel_width_km_s(),
             at_least: None,
+            toward: None,
         }
+    }
+
+    /// Chooses among several lines the one at, or nearest to, these systemic velocities.
+    pub fn toward(self, toward: Option<Window>) -> Self {
+        Self { toward, ..self }
     }
 
     /// The prepared spectrum, with or without a line in it.
@@ -255,12 +270,16 @@ impl<'a> Search<'a> {
         let found = self.line(&regions, favoured, other_sigma);
         let line = found.map(|(line, _)| line);
         let mut channels = vec![false; self.channels.len()];
+        let mut other = channels.clone();
         for region in &regions {
             let of_line = line.is_some_and(|line| line.gap(region) == 0);
             if of_line || region.significance.abs() >= other_sigma {
                 let low = region.low.saturating_sub(1);
                 let high = (region.high + 1).min(self.channels.len() - 1);
                 channels[low..=high].fill(true);
+                if !of_line {
+                    other[low..=high].fill(true);
+                }
             }
         }
         let window = given
@@ -273,8 +292,35 @@ impl<'a> Search<'a> {
             line,
             window,
             channels,
+            other,
+            lines: self.lines(&regions, other_sigma),
             significance,
         }
+    }
+
+    /// Systemic velocities of every line in emission, the most significant first.
+    fn lines(&self, regions: &[Region], other_sigma: f64) -> Vec<Window> {
+        let mut lines: Vec<Window> = Vec::new();
+        for main in regions {
+            if main.significance >= self.settings.detection_sigma {
+                let line = self.systemic(&self.whole(main, regions, other_sigma));
+                if !lines.contains(&line) {
+                    lines.push(line);
+                }
+            }
+        }
+        lines
+    }
+
+    /// A line's velocities without the room for its components.
+    fn systemic(&self, line: &Region) -> Window {
+        let velocity = &self.channels.velocity;
+        let half = 0.5 * self.step_km_s;
+        let window = Window {
+            low_km_s: velocity[line.low] - half,
+            high_km_s: velocity[line.high] + half,
+        };
+        narrowed(window, &self.expected.components)
     }
 
     /// The line among the regions, its satellites and companions joined, and the width in channels of
@@ -288,17 +334,31 @@ impl<'a> Search<'a> {
         let inside = |region: &&Region| {
             favoured.is_none_or(|(low, high)| region.low <= high && region.high >= low)
         };
+        let away = |main: &Region| {
+            self.toward.map_or(0.0, |toward| {
+                let line = self.whole(main, regions, other_sigma);
+                self.systemic(&line).apart_km_s(&toward)
+            })
+        };
         let emission = regions
             .iter()
             .filter(inside)
             .filter(|region| region.significance > 0.0)
-            .max_by(|a, b| a.significance.total_cmp(&b.significance));
+            .max_by(|a, b| {
+                let nearer = away(b).total_cmp(&away(a));
+                nearer.then(a.significance.total_cmp(&b.significance))
+            });
         let main = emission.or_else(|| {
             regions
                 .iter()
                 .filter(inside)
                 .min_by(|a, b| a.significance.total_cmp(&b.significance))
         })?;
+        Some((self.whole(main, regions, other_sigma), main.width()))
+    }
+
+    /// The line of a main region, with its satellites and companions.
+    fn whole(&self, main: &Region, regions: &[Region], other_sigma: f64) -> Region {
         let mut line = *main;
         if let Some(seen) = self.at_least
             && seen.gap(main) == 0
@@ -318,7 +378,7 @@ impl<'a> Search<'a> {
                 .filter(|region| region.gap(&line) <= reach)
                 .fold(line, |line, region| line.join(region));
             if joined.low == line.low && joined.high == line.high {
-                return Some((line, main.width()));
+                return line;
             }
             line = joined;
         }
@@ -345,11 +405,17 @@ impl<'a> Search<'a> {
                 .map(|component| component.weight * signal(v + component.offset_km_s))
                 .sum()
         };
+        let expected = |v: f64| self.toward.is_some_and(|toward| toward.contains(v));
         let main_centre = 0.5 * (velocity[main.low] + velocity[main.high]);
         let Some(best) = components
             .iter()
             .map(|component| (component.weight, main_centre - component.offset_km_s))
-            .max_by(|a, b| score(a.1).total_cmp(&score(b.1)).then(a.0.total_cmp(&b.0)))
+            .max_by(|a, b| {
+                let there = expected(a.1).cmp(&expected(b.1));
+                there
+                    .then(score(a.1).total_cmp(&score(b.1)))
+                    .then(a.0.total_cmp(&b.0))
+            })
         else {
             return main;
         };
@@ -391,7 +457,7 @@ impl<'a> Search<'a> {
             .exclusion
             .line
             .is_some_and(|line| line.low <= 1 || line.high + 1 >= last);
-        let outside = [3, 6, 12].iter().any(|&width| {
+        let outside = [3, 6, BESIDE].iter().any(|&width| {
             let below =
                 window.0 >= width && boxes.significance(window.0 - width, width) > CUT_SIGMA;
             let above =
@@ -423,15 +489,26 @@ impl<'a> Search<'a> {
             vec![0.0; spectrum.len()]
         };
         let subtracted = spectrum.map_temperature_k(|channel, t| t - values_k[channel]);
+        let is_other = |i: usize| found.exclusion.other[i] && !(range.0..=range.1).contains(&i);
+        let other_signal = channels
+            .segments(is_other)
+            .into_iter()
+            .map(|run| Window {
+                low_km_s: edge(run.start, -1.0),
+                high_km_s: edge(run.end - 1, 1.0),
+            })
+            .collect();
         let free = found.exclusion.free().len();
         let kept = found.fit.kept.len();
         Outcome {
             detected: found.exclusion.line.is_some(),
+            lines: found.exclusion.lines.clone(),
             has_window: found.exclusion.window.is_some(),
             significance: found.exclusion.significance,
             needed: self.settings.detection_sigma,
             prepared: Prepared {
                 window_cuts_line: self.cuts(found, &boxes, range),
+                other_signal,
                 spectrum: subtracted,
                 window,
                 window_automatic: self.settings.window.is_none(),
