@@ -402,12 +402,12 @@ Asymmetry of the thick line, without a model
   velocity difference           -0.52 +- 0.04
   profile                       blue
 
-Hill model, surface at the background
+Hill model, surface at the background (formal errors)
   inward speed                  0.48 +- 0.03 km/s
   optical depth of a half       4.2 +- 0.6
   reduced chi2                  1.04
 
-Inward speed
+Inward speed (formal errors)
   adopted inward speed          0.48 -0.04 +0.05 km/s
   adopted from                  hill
 
