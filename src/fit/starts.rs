@@ -76,7 +76,11 @@ pub(super) fn starts(
     let (model, _) = layout.thick(&vec![1.0; layout.parameters().len()]);
     let mut candidates = Vec::new();
     let mut scan = Scan::new(thick, thin);
-    for kinematics in kinematics {
+    let tried: Vec<f64> = kinematics
+        .iter()
+        .map(|kinematics| kinematics.v_km_s)
+        .collect();
+    for (index, kinematics) in kinematics.iter().enumerate() {
         let (thin_chi2, thin_peak) = scan.thin(*kinematics);
         match model {
             Model::Gaussian | Model::Layer => {
@@ -99,6 +103,8 @@ pub(super) fn starts(
                     });
                 }
             }
+            // these scan widths of their own: once a centre
+            Model::TwoGaussians if tried[..index].contains(&kinematics.v_km_s) => {}
             Model::TwoGaussians => two_gaussians(layout, &mut scan, *kinematics, &mut candidates),
             Model::TwoLayer | Model::TwoLayerContinuum | Model::Hill | Model::HillSurface => {
                 let source = source(layout);
@@ -370,7 +376,7 @@ impl<'a> Scan<'a> {
 fn unit_gaussian(channels: &Channels, kinematics: Kinematics, column: &mut [f64]) {
     Model::Gaussian.evaluate(
         channels.line(),
-        channels.sampling(),
+        channels.coarse_sampling(),
         &[kinematics.v_km_s, kinematics.sigma_km_s, 1.0],
         column,
         None,
