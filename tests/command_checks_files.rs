@@ -60,6 +60,25 @@ fn a_good_text_file() {
 }
 
 #[test]
+fn signal_away_from_the_line_is_doubtful() {
+    let pair = Pair::default();
+    let velocity = pair.velocity_km_s();
+    let (mut thick, _) = pair.temperature_k();
+    for (temperature, v) in thick.iter_mut().zip(&velocity) {
+        *temperature += 2.0 * (-0.5 * ((v - 17.0) / 0.4).powi(2)).exp();
+    }
+    let folder = Folder::new();
+    folder.write("thick.csv", csv(&velocity, &thick).as_bytes());
+    let run = folder.inrush(&["check", "thick.csv", "--line", "HCO+ 1-0"]);
+    assert_eq!(run.code, 0);
+    let doubt = fact(&run, "doubtful");
+    assert!(
+        doubt.starts_with("signal outside the line window, 1"),
+        "{doubt}"
+    );
+}
+
+#[test]
 fn a_fits_file_states_more() {
     let folder = Folder::new();
     folder.write(

@@ -82,6 +82,12 @@ pub fn check_file(
                     .doubts
                     .push("the line goes on beyond its window or the band".to_owned());
             }
+            for window in &prepared.other_signal {
+                check.doubts.push(format!(
+                    "signal outside the line window, {:.2} to {:.2} km/s: another line or cloud",
+                    window.low_km_s, window.high_km_s
+                ));
+            }
             check.prepared = Some(prepared);
         }
         Err(error) => check.doubts.push(error.to_string()),
