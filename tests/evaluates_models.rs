@@ -386,3 +386,58 @@ fn channel_values_are_means_over_the_channel() {
         }
     }
 }
+
+/// The rule of the fits: points from the width of the sharpest feature, 0.3 of the dispersion.
+#[test]
+fn channel_means_are_within_a_hundredth_of_the_noise() {
+    let line = single(89.1885);
+    let sigma = 0.5;
+    let mut worst = (0.0, String::new());
+    for width in [0.1, 0.2, 0.4, 0.7, 1.0].map(|share: f64| share * sigma) {
+        for signal_to_noise in [10.0, 30.0, 100.0] {
+            for (model, tail) in [
+                (Model::TwoLayer, vec![6.0, 20.0]),
+                (Model::Hill, vec![20.0]),
+            ] {
+                for tau in [0.5, 3.0, 10.0, 30.0] {
+                    for v_in in [0.0, 0.15, 0.5] {
+                        let parameters = [vec![0.03, sigma, v_in, tau], tail.clone()].concat();
+                        let centres = grid(-3.0, 3.0, 61);
+                        let means = |width: f64, points: usize| {
+                            let sampling =
+                                Sampling::new(centres.clone(), vec![width; centres.len()], points);
+                            profile(model, &line, &sampling, &parameters)
+                        };
+                        let peak = means(width, 5).iter().copied().fold(0.0, f64::max);
+                        let points =
+                            Sampling::points_needed(width, 0.3 * sigma, signal_to_noise, 0.01);
+                        let found = means(width, points);
+                        // twenty parts of a channel, five points each
+                        let mut exact = vec![0.0; centres.len()];
+                        for part in 0..20 {
+                            let shift = width * ((f64::from(part) + 0.5) / 20.0 - 0.5);
+                            let shifted: Vec<f64> = centres.iter().map(|v| v + shift).collect();
+                            let sampling =
+                                Sampling::new(shifted, vec![width / 20.0; centres.len()], 5);
+                            let part = profile(model, &line, &sampling, &parameters);
+                            for (sum, part) in exact.iter_mut().zip(part) {
+                                *sum += part / 20.0;
+                            }
+                        }
+                        for (found, exact) in found.iter().zip(&exact) {
+                            let error = (found - exact).abs() / (peak / signal_to_noise);
+                            if error > worst.0 {
+                                let case = format!(
+                                    "{} width {width} S/N {signal_to_noise} tau {tau} v_in {v_in}, {points} points",
+                                    model.name()
+                                );
+                                worst = (error, case);
+                            }
+                        }
+                    }
+                }
+            }
+        }
+    }
+    assert!(worst.0 < 0.01, "{} of the noise: {}", worst.0, worst.1);
+}
