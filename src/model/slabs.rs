@@ -1,6 +1,6 @@
 //! The two-layer and hill models: their temperatures as the two amplitudes of a [`Slab`].
 
-use super::slab::{Basis, Peaked, Slab, Slopes, Uniform, Value, evaluate};
+use super::slab::{Basis, Peaked, Shape, Slab, Slopes, Uniform, Value, evaluate};
 use super::{LineShape, Model, Sampling, columns};
 
 fn slab(parameters: &[f64], contrast_k: f64, excess_k: f64) -> Slab {
@@ -29,6 +29,41 @@ fn scale(column: &mut [f64], factor: f64) {
     }
 }
 
+/// A slab whose fifth and sixth parameters are the temperatures of its amplitudes:
+/// A = J(fifth) - J(sixth), B = J(sixth) - J(`T_bg`).
+fn own_temperatures<S: Shape>(
+    line: &LineShape,
+    sampling: &Sampling,
+    parameters: &[f64],
+    value: &mut [f64],
+    jacobian: Option<&mut [f64]>,
+) {
+    let scale_j = &line.radiation;
+    let (first, second) = (scale_j.at(parameters[4]), scale_j.at(parameters[5]));
+    let slab = slab(parameters, first - second, second - scale_j.background());
+    let Some(jacobian) = jacobian else {
+        return evaluate::<S>(slab, &line.components, sampling, Value(value));
+    };
+    let [by_v, by_sigma, by_v_in, by_tau, by_first, by_second] = columns(jacobian, value.len());
+    evaluate::<S>(
+        slab,
+        &line.components,
+        sampling,
+        Slopes {
+            value,
+            columns: [by_v, by_sigma, by_v_in, by_tau, by_first],
+            by_excess: Some(by_second),
+        },
+    );
+    let (slope_first, slope_second) = (scale_j.slope(parameters[4]), scale_j.slope(parameters[5]));
+    recombine(
+        by_first,
+        by_second,
+        (slope_first, 0.0),
+        (-slope_second, slope_second),
+    );
+}
+
 /// Two layers; parameters `v_lsr`, sigma, `v_in`, tau, `T_f`, `T_r`.
 ///
 /// T = J(`T_f`)(1 - `E_f`) + J(`T_r`)(1 - `E_r`)`E_f` - J(`T_bg`)(1 - `E_r` `E_f`)
@@ -40,30 +75,7 @@ pub(super) fn two_layer(
     value: &mut [f64],
     jacobian: Option<&mut [f64]>,
 ) {
-    let scale_j = &line.radiation;
-    let (front, rear) = (scale_j.at(parameters[4]), scale_j.at(parameters[5]));
-    let slab = slab(parameters, front - rear, rear - scale_j.background());
-    let Some(jacobian) = jacobian else {
-        return evaluate::<Uniform>(slab, &line.components, sampling, Value(value));
-    };
-    let [by_v, by_sigma, by_v_in, by_tau, by_front, by_rear] = columns(jacobian, value.len());
-    evaluate::<Uniform>(
-        slab,
-        &line.components,
-        sampling,
-        Slopes {
-            value,
-            columns: [by_v, by_sigma, by_v_in, by_tau, by_front],
-            by_excess: Some(by_rear),
-        },
-    );
-    let (slope_front, slope_rear) = (scale_j.slope(parameters[4]), scale_j.slope(parameters[5]));
-    recombine(
-        by_front,
-        by_rear,
-        (slope_front, 0.0),
-        (-slope_rear, slope_rear),
-    );
+    own_temperatures::<Uniform>(line, sampling, parameters, value, jacobian);
 }
 
 /// Two layers with an opaque continuum source of beam filling Phi and temperature `T_c` between
@@ -176,30 +188,7 @@ pub(super) fn hill_surface(
     value: &mut [f64],
     jacobian: Option<&mut [f64]>,
 ) {
-    let scale_j = &line.radiation;
-    let (peak, surface) = (scale_j.at(parameters[4]), scale_j.at(parameters[5]));
-    let slab = slab(parameters, peak - surface, surface - scale_j.background());
-    let Some(jacobian) = jacobian else {
-        return evaluate::<Peaked>(slab, &line.components, sampling, Value(value));
-    };
-    let [by_v, by_sigma, by_v_in, by_tau, by_peak, by_surface] = columns(jacobian, value.len());
-    evaluate::<Peaked>(
-        slab,
-        &line.components,
-        sampling,
-        Slopes {
-            value,
-            columns: [by_v, by_sigma, by_v_in, by_tau, by_peak],
-            by_excess: Some(by_surface),
-        },
-    );
-    let (slope_peak, slope_surface) = (scale_j.slope(parameters[4]), scale_j.slope(parameters[5]));
-    recombine(
-        by_peak,
-        by_surface,
-        (slope_peak, 0.0),
-        (-slope_surface, slope_surface),
-    );
+    own_temperatures::<Peaked>(line, sampling, parameters, value, jacobian);
 }
 
 /// The two functions of velocity that a slab model's profile is linear in, at the first four
