@@ -4,8 +4,8 @@
 //! AVX2 with FMA, and the target's baseline) and runs the widest that the processor has; the
 //! compiler vectorises each copy. This is the only place in the crate with `unsafe`.
 //!
-//! AVX-512 and AVX2 copies fuse each multiply-add and agree bit for bit where a kernel has no
-//! reductions over its slices; the baseline copy rounds twice and may differ in the last bits.
+//! AVX-512 and AVX2 copies fuse each multiply-add and agree bit for bit: the compiler keeps the order
+//! of every sum. The baseline copy rounds twice and may differ in the last bits.
 #![allow(unsafe_code)]
 
 /// How a kernel copy multiplies and adds.

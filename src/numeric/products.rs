@@ -43,13 +43,43 @@ pub fn products_with<const N: usize, A: Arithmetic>(a: &[f64], others: [&[f64]; 
 /// assert_eq!((square, sum), (5.0, 3.0));
 /// ```
 pub fn products<const N: usize>(a: &[f64], others: [&[f64]; N]) -> [f64; N] {
-    struct Products<'a, const N: usize>(&'a [f64], [&'a [f64]; N]);
-    impl<const N: usize> Kernel for Products<'_, N> {
-        type Output = [f64; N];
-        #[inline(always)]
-        fn run<A: Arithmetic>(self) -> [f64; N] {
-            products_with::<N, A>(self.0, self.1)
+    dispatch(Products(a, others))
+}
+
+struct Products<'a, const N: usize>(&'a [f64], [&'a [f64]; N]);
+
+impl<const N: usize> Kernel for Products<'_, N> {
+    type Output = [f64; N];
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> [f64; N] {
+        products_with::<N, A>(self.0, self.1)
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::numeric::dispatch::dispatch_all;
+
+    #[test]
+    fn products_are_the_plain_sums_and_fused_copies_agree_bit_for_bit() {
+        for length in [0, 1, 7, 8, 9, 200, 291] {
+            let column = |phase: f64| -> Vec<f64> {
+                (0..length)
+                    .map(|i| (f64::from(i) * 0.7 + phase).sin())
+                    .collect()
+            };
+            let (a, b, c) = (column(0.0), column(1.0), column(2.0));
+            let plain = |x: &[f64]| -> f64 { a.iter().zip(x).map(|(a, x)| a * x).sum() };
+            let copies = dispatch_all(|| Products(&a, [&b, &c]));
+            for [by_b, by_c] in &copies {
+                assert!((by_b - plain(&b)).abs() < 1e-13);
+                assert!((by_c - plain(&c)).abs() < 1e-13);
+            }
+            if let [_, avx2, avx512] = &copies[..] {
+                assert_eq!(avx2, avx512);
+            }
         }
     }
-    dispatch(Products(a, others))
 }
