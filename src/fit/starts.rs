@@ -56,8 +56,8 @@ const INWARD_SPEEDS: [f64; 12] = [
 ];
 const OPTICAL_DEPTHS: [f64; 6] = [0.5, 1.5, 4.0, 10.0, 30.0, 80.0];
 
-/// Candidates of each sign of the inward speed that are polished.
-const POLISHED: usize = 4;
+/// Candidates of each sign of the inward speed that become starts.
+const STARTS: usize = 4;
 
 /// A start with the chi2 that its candidate reached.
 struct Candidate {
@@ -76,11 +76,17 @@ pub(super) fn starts(
     let (model, _) = layout.thick(&vec![1.0; layout.parameters().len()]);
     let mut candidates = Vec::new();
     let mut scan = Scan::new(thick, thin);
-    let tried: Vec<f64> = kinematics
-        .iter()
-        .map(|kinematics| kinematics.v_km_s)
-        .collect();
-    for (index, kinematics) in kinematics.iter().enumerate() {
+    if model == Model::TwoGaussians {
+        // widths are scanned about each centre: once is enough
+        let mut centres = kinematics.to_vec();
+        centres.dedup_by_key(|kinematics| kinematics.v_km_s);
+        for about in centres.into_iter().chain([intensity]) {
+            two_gaussians(layout, &mut scan, about, &mut candidates);
+        }
+        return distinct(candidates, layout);
+    }
+    let source = source(layout);
+    for kinematics in kinematics {
         let (thin_chi2, thin_peak) = scan.thin(*kinematics);
         match model {
             Model::Gaussian | Model::Layer => {
@@ -103,11 +109,9 @@ pub(super) fn starts(
                     });
                 }
             }
-            // these scan widths of their own: once a centre
-            Model::TwoGaussians if tried[..index].contains(&kinematics.v_km_s) => {}
-            Model::TwoGaussians => two_gaussians(layout, &mut scan, *kinematics, &mut candidates),
+            // scanned above, about each centre once
+            Model::TwoGaussians => {}
             Model::TwoLayer | Model::TwoLayerContinuum | Model::Hill | Model::HillSurface => {
-                let source = source(layout);
                 for speed in INWARD_SPEEDS {
                     for tau in OPTICAL_DEPTHS {
                         let v_in = speed * kinematics.sigma_km_s;
@@ -132,10 +136,6 @@ pub(super) fn starts(
             }
         }
     }
-    if model == Model::TwoGaussians {
-        two_gaussians(layout, &mut scan, intensity, &mut candidates);
-    }
-    candidates.sort_by(|one, other| one.chi2.total_cmp(&other.chi2));
     distinct(candidates, layout)
 }
 
@@ -174,9 +174,10 @@ fn two_gaussians(
     }
 }
 
-/// The best candidates that differ: neighbours of a better one would end in the same minimum. Both
+/// The best candidates that differ, the best first: neighbours of a better one would end in the same minimum. Both
 /// signs of the inward speed are kept.
-fn distinct(sorted: Vec<Candidate>, layout: &Layout) -> Vec<Vec<f64>> {
+fn distinct(mut candidates: Vec<Candidate>, layout: &Layout) -> Vec<Vec<f64>> {
+    candidates.sort_by(|one, other| one.chi2.total_cmp(&other.chi2));
     let position = |name: &str| layout.position(name);
     let (sigma, v_in, tau) = (
         position("sigma_km_s"),
@@ -196,12 +197,12 @@ fn distinct(sorted: Vec<Candidate>, layout: &Layout) -> Vec<Vec<f64>> {
             && (value(one, sigma) / value(other, sigma)).ln().abs() < NEAR_LOG_SIGMA
     };
     let mut kept: Vec<Candidate> = Vec::new();
-    for candidate in sorted {
+    for candidate in candidates {
         let of_its_sign = kept
             .iter()
             .filter(|other| same_sign(&candidate, other))
             .count();
-        if of_its_sign < POLISHED
+        if of_its_sign < STARTS
             && !(v_in.is_some() && kept.iter().any(|other| near(&candidate, other)))
         {
             kept.push(candidate);
