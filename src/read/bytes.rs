@@ -20,7 +20,7 @@ pub(super) const GZIP_MAGIC: [u8; 2] = [0x1f, 0x8b];
 /// # Errors
 ///
 /// The file is missing, unreadable or too large.
-pub(super) fn load(path: &Path) -> Result<Vec<u8>, ReadError> {
+pub fn load(path: &Path) -> Result<Vec<u8>, ReadError> {
     let file = File::open(path).map_err(|error| unreadable(path, &error))?;
     take(path, file, LIMIT_BYTES).map_err(|error| unreadable(path, &error))?
 }

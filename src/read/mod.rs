@@ -21,6 +21,7 @@ use std::fmt;
 use std::path::Path;
 use std::str::FromStr;
 
+pub use bytes::load;
 pub use columns::{ColumnChoice, ColumnChoiceError, ColumnKey};
 pub use error::{Place, ReadError};
 pub use unit::{AxisUnit, UnknownUnit, ValueUnit};

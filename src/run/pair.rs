@@ -6,11 +6,11 @@ use crate::line::{Line, isotopologue_pair};
 use crate::measure::{MeasureSettings, Measures, measure};
 use crate::prepare::scale::{ScaleNote, to_spectrum};
 use crate::prepare::{Expected, Prepared, prepare_pair};
-use crate::read::{ReadOptions, read_spectrum};
+use crate::read::{ReadOptions, load, spectrum_from_bytes};
 use crate::spectrum::{Origin, Spectrum};
 use sha2::{Digest, Sha256};
 use std::fmt::Write as _;
-use std::path::{Path, PathBuf};
+use std::path::Path;
 
 /// One line of a pair, read and prepared.
 #[derive(Clone, Debug)]
@@ -163,10 +163,11 @@ fn open(
     let file = section.file.as_ref().ok_or(RunError::NoFile { which })?;
     let path = base.join(file);
     let options: ReadOptions = section.read_options()?;
-    let raw = read_spectrum(&path, &options)?;
+    let content = load(&path)?;
+    let raw = spectrum_from_bytes(&path, &content, &options)?;
     let scaled = to_spectrum(&raw, &section.scale_settings(line))?;
     Ok(Opened {
-        sha256: sha256(&path)?,
+        sha256: sha256(&content),
         object: raw.object.clone(),
         origin: raw.origin,
         notes: scaled.notes,
@@ -174,18 +175,14 @@ fn open(
     })
 }
 
-/// SHA-256 of a file, in hexadecimal digits.
-fn sha256(path: &PathBuf) -> Result<String, RunError> {
-    let bytes = std::fs::read(path).map_err(|source| RunError::File {
-        path: path.clone(),
-        source,
-    })?;
+/// SHA-256 of a file's content, in hexadecimal digits.
+fn sha256(content: &[u8]) -> String {
     let mut digits = String::new();
-    for byte in Sha256::digest(&bytes) {
+    for byte in Sha256::digest(content) {
         // writing to a string cannot fail
         let _ = write!(digits, "{byte:02x}");
     }
-    Ok(digits)
+    digits
 }
 
 fn stem(path: &Path) -> String {
