@@ -2,6 +2,7 @@
 
 use super::Exit;
 use super::output::Output;
+use super::values::{named, numbers, range};
 use clap::Args;
 use inrush::report;
 use inrush::run::{
@@ -315,18 +316,6 @@ fn set<T>(target: &mut Option<T>, value: Option<T>) {
     }
 }
 
-fn numbers(text: &str) -> Result<Vec<f64>, String> {
-    text.split(',')
-        .map(|part| {
-            part.trim()
-                .parse::<f64>()
-                .ok()
-                .filter(|number| number.is_finite())
-                .ok_or_else(|| format!("`{}`, expected a number", part.trim()))
-        })
-        .collect()
-}
-
 fn given(text: &str) -> Result<Given, String> {
     match numbers(text)?[..] {
         [value] => Ok(Given::Value(value)),
@@ -340,13 +329,6 @@ fn beam(text: &str) -> Result<Beam, String> {
         [width] => Ok(Beam::Round(width)),
         [major, minor] => Ok(Beam::Elliptical([major, minor])),
         _ => Err("expected a width, or major and minor axis, in arcsec".to_owned()),
-    }
-}
-
-fn range(text: &str) -> Result<[f64; 2], String> {
-    match numbers(text)?[..] {
-        [low, high] => Ok([low, high]),
-        _ => Err("expected LOW,HIGH".to_owned()),
     }
 }
 
@@ -366,11 +348,6 @@ fn number_or_word(text: &str) -> Result<NumberOrWord, String> {
         |_| NumberOrWord::Word(text.to_owned()),
         NumberOrWord::Number,
     ))
-}
-
-fn named<T>(text: &str, parse: impl Fn(&str) -> Result<T, String>) -> Result<(String, T), String> {
-    let (name, value) = text.split_once('=').ok_or("expected NAME=VALUE")?;
-    Ok((name.trim().to_owned(), parse(value)?))
 }
 
 fn named_given(text: &str) -> Result<(String, Given), String> {

@@ -5,6 +5,7 @@ mod fit;
 mod lines;
 mod output;
 mod simulate;
+mod values;
 
 use clap::{Parser, Subcommand};
 use inrush::run::RunError;

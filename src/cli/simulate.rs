@@ -2,6 +2,7 @@
 
 use super::Exit;
 use super::output::Output;
+use super::values::{named, number, range};
 use clap::{Args, Subcommand, ValueEnum};
 use inrush::line::find;
 use inrush::report::spectra::FitsAxis;
@@ -114,7 +115,7 @@ pub struct PairArgs {
     channel_thin_km_s: Option<f64>,
     /// First and last channel, km/s; 20 dispersions about the line where absent.
     #[arg(long, value_name = "LOW,HIGH", value_parser = range, allow_hyphen_values = true, help_heading = "Channels")]
-    range_km_s: Option<(f64, f64)>,
+    range_km_s: Option<[f64; 2]>,
 
     /// Noise of one channel, K.
     #[arg(
@@ -298,9 +299,9 @@ impl PairArgs {
 
     /// Channels, noise and baseline as far as they hold for both lines.
     fn set_observation(&self, line: &mut LineTruth) {
-        let (low_km_s, high_km_s) = self
+        let [low_km_s, high_km_s] = self
             .range_km_s
-            .unwrap_or((line.axis.low_km_s, line.axis.high_km_s));
+            .unwrap_or([line.axis.low_km_s, line.axis.high_km_s]);
         line.axis = Axis {
             low_km_s,
             high_km_s,
@@ -326,18 +327,7 @@ fn level(noise_k: Option<f64>, signal_to_noise: Option<f64>) -> Option<NoiseLeve
 }
 
 fn assignment(text: &str) -> Result<(String, f64), String> {
-    let (name, value) = text
-        .split_once('=')
-        .ok_or_else(|| "expected NAME=VALUE, such as tau=4".to_owned())?;
-    let value = number(value)?;
-    Ok((name.trim().to_owned(), value))
-}
-
-fn range(text: &str) -> Result<(f64, f64), String> {
-    let (low, high) = text
-        .split_once(',')
-        .ok_or_else(|| "expected two numbers with a comma, such as -10,10".to_owned())?;
-    Ok((number(low)?, number(high)?))
+    named(text, number)
 }
 
 fn correlation(text: &str) -> Result<Correlation, String> {
@@ -362,10 +352,4 @@ fn correlation(text: &str) -> Result<Correlation, String> {
                 .to_owned(),
         ),
     }
-}
-
-fn number(text: &str) -> Result<f64, String> {
-    text.trim()
-        .parse()
-        .map_err(|_| format!("`{text}`, expected a number"))
 }
