@@ -11,6 +11,7 @@ use inrush::line::{Line, find};
 use inrush::measure::{MeasureSettings, measure};
 use inrush::model::Model;
 use inrush::numeric::exponential::exp_in_place;
+use inrush::numeric::least_squares::Workspace;
 use inrush::prepare::{Expected, PrepareSettings, Prepared, prepare_pair};
 use inrush::simulate::{PairTruth, simulate_pair};
 use inrush::spectrum::Spectrum;
@@ -40,7 +41,13 @@ fn prepared(thick: &Spectrum, thin: &Spectrum) -> (Prepared, Prepared) {
 fn fitting(criterion: &mut Criterion) {
     let (thick, thin, thick_line, thin_line, v_in) = spectra();
     let pair = prepared(&thick, &thin);
-    let thin_fit = fit_thin(&pair.1, &thin_line, &FitSettings::default()).unwrap();
+    let thin_fit = fit_thin(
+        &pair.1,
+        &thin_line,
+        &FitSettings::default(),
+        &mut Workspace::new(),
+    )
+    .unwrap();
     let mut group = criterion.benchmark_group("one_pair");
     for (name, models) in [
         ("two_layer", vec![Model::TwoLayer]),
@@ -71,6 +78,7 @@ fn fitting(criterion: &mut Criterion) {
                     (&thick_line, &thin_line),
                     thin_fit.line.as_ref(),
                     &settings,
+                    &mut Workspace::new(),
                 )
                 .unwrap();
                 assert!(fit.models.iter().all(|fit| fit.chi2.is_finite()));
@@ -84,7 +92,13 @@ fn fitting(criterion: &mut Criterion) {
     }
     group.bench_function("thin_line", |bencher| {
         bencher.iter(|| {
-            let fit = fit_thin(black_box(&pair.1), &thin_line, &FitSettings::default()).unwrap();
+            let fit = fit_thin(
+                black_box(&pair.1),
+                &thin_line,
+                &FitSettings::default(),
+                &mut Workspace::new(),
+            )
+            .unwrap();
             assert!(fit.line.is_some());
             fit
         });

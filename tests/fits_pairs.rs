@@ -9,6 +9,7 @@ use inrush::fit::{
 };
 use inrush::line::{Component, Line};
 use inrush::model::{LineShape, Model, Sampling};
+use inrush::numeric::least_squares::Workspace;
 use inrush::numeric::least_squares::{Interval, check_jacobian};
 use inrush::numeric::{Autoregression, Estimate};
 use inrush::prepare::{Baseline, Prepared};
@@ -175,13 +176,14 @@ fn hill_pair(v_in: f64, seed: u64) -> (Prepared, Prepared, Line, Line) {
 }
 
 fn fit(pair: &(Prepared, Prepared, Line, Line), settings: &FitSettings) -> inrush::fit::PairFit {
-    let thin = fit_thin(&pair.1, &pair.3, settings).unwrap();
+    let thin = fit_thin(&pair.1, &pair.3, settings, &mut Workspace::new()).unwrap();
     fit_pair(
         &pair.0,
         &pair.1,
         (&pair.2, &pair.3),
         thin.line.as_ref(),
         settings,
+        &mut Workspace::new(),
     )
     .unwrap()
 }

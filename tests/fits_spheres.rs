@@ -9,6 +9,7 @@ use inrush::line::{Component, Line};
 use inrush::measure::ThinLine;
 use inrush::model::Model;
 use inrush::numeric::Autoregression;
+use inrush::numeric::least_squares::Workspace;
 use inrush::prepare::{Baseline, Prepared};
 use inrush::spectrum::{Noise, Spectrum, Window};
 use std::collections::HashMap;
@@ -142,9 +143,18 @@ fn every_slab_fit_is_as_deep_as_scipys_best_of_ten_starts() {
             );
             let lines = (line(&truth["thick_line"]), line(&truth["thin_line"]));
             let settings = settings(model, v_lsr);
-            let thin_fit = inrush::fit::fit_thin(&thin, &lines.1, &settings).unwrap();
+            let thin_fit =
+                inrush::fit::fit_thin(&thin, &lines.1, &settings, &mut Workspace::new()).unwrap();
             let thin_line: Option<&ThinLine> = thin_fit.line.as_ref();
-            let pair = fit_pair(&thick, &thin, (&lines.0, &lines.1), thin_line, &settings).unwrap();
+            let pair = fit_pair(
+                &thick,
+                &thin,
+                (&lines.0, &lines.1),
+                thin_line,
+                &settings,
+                &mut Workspace::new(),
+            )
+            .unwrap();
             let fit = &pair.models[0];
             evaluations += fit.evaluations;
             let chi2 = number(reference, &format!("{}_chi2", model.column_prefix()));

@@ -8,6 +8,7 @@ use inrush::constants::{FWHM_PER_SIGMA, photon_temperature_k};
 use inrush::fit::{FitSettings, fit_thin};
 use inrush::line::{Component, find};
 use inrush::measure::{MeasureSettings, Measures, ProfileClass, ThinLine, TwoPeaks, measure};
+use inrush::numeric::least_squares::Workspace;
 use inrush::numeric::{Autoregression, Estimate};
 use inrush::prepare::{Baseline, Expected, PrepareSettings, Prepared, prepare_pair};
 use inrush::spectrum::{Noise, Spectrum, Window};
@@ -438,7 +439,8 @@ fn seen_two_peaked(signal_to_noise: f64, apart: f64) -> usize {
                 (&thin, &settings, &expected),
             )
             .unwrap();
-            let fit = fit_thin(&thin, &hcop, &FitSettings::default()).unwrap();
+            let fit =
+                fit_thin(&thin, &hcop, &FitSettings::default(), &mut Workspace::new()).unwrap();
             measure(
                 &thick,
                 &thin,

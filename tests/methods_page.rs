@@ -9,6 +9,7 @@ use inrush::line::{Component, Line};
 use inrush::measure::{MeasureSettings, ThinLine, measure};
 use inrush::model::{LineShape, Model, Sampling};
 use inrush::numeric::least_squares::Interval;
+use inrush::numeric::least_squares::Workspace;
 use inrush::numeric::{Autoregression, Estimate};
 use inrush::prepare::{Baseline, Prepared};
 use inrush::simulate::{NoiseLevel, PairTruth, simulate_pair};
@@ -227,6 +228,7 @@ fn the_hill_is_adopted_before_two_layers_whatever_their_chi2() {
             (&lines.0, &lines.1),
             Some(&thin_line()),
             &settings,
+            &mut Workspace::new(),
         )
         .unwrap()
     };

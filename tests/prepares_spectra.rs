@@ -8,6 +8,7 @@ use inrush::fit::{
 use inrush::line::{Component, find};
 use inrush::measure::{MeasureSettings, measure};
 use inrush::model::{LineShape, Model};
+use inrush::numeric::least_squares::Workspace;
 use inrush::prepare::{
     Expected, PairLine, PrepareError, PrepareSettings, Prepared, prepare, prepare_pair, rebin,
 };
@@ -610,9 +611,17 @@ fn other_signal_does_not_count_in_fits_and_is_said() {
             range: Some(FitRange::All),
             ..FitSettings::default()
         };
-        let thin_fit = fit_thin(&thin, &lines[1], &everywhere).unwrap();
+        let thin_fit = fit_thin(&thin, &lines[1], &everywhere, &mut Workspace::new()).unwrap();
         let line = thin_fit.line.as_ref();
-        let fit = fit_pair(&thick, &thin, (&lines[0], &lines[1]), line, &everywhere).unwrap();
+        let fit = fit_pair(
+            &thick,
+            &thin,
+            (&lines[0], &lines[1]),
+            line,
+            &everywhere,
+            &mut Workspace::new(),
+        )
+        .unwrap();
         chi2 += fit.models[0].chi2;
         degrees += fit.models[0].degrees_of_freedom;
         let measures = measure(&thick, &thin, line, 0.0, &MeasureSettings::default());

@@ -5,6 +5,7 @@ use inrush::fit::{FitSettings, fit_pair, fit_thin};
 use inrush::line::{Component, Line, find};
 use inrush::model::Model;
 use inrush::numeric::Autoregression;
+use inrush::numeric::least_squares::Workspace;
 use inrush::prepare::{Expected, PrepareSettings, prepare_pair};
 use inrush::read::{ReadOptions, read_spectrum};
 use inrush::report::spectra::FitsAxis;
@@ -307,9 +308,19 @@ fn pulls(correlation: Correlation, noise_known: bool, count: u64) -> (f64, f64) 
             models: vec![Model::Hill],
             ..FitSettings::default()
         };
-        let thin_line = fit_thin(&thin, &lines.1, &settings).unwrap().line;
+        let thin_line = fit_thin(&thin, &lines.1, &settings, &mut Workspace::new())
+            .unwrap()
+            .line;
         let lines = (&lines.0, &lines.1);
-        let fit = fit_pair(&thick, &thin, lines, thin_line.as_ref(), &settings).unwrap();
+        let fit = fit_pair(
+            &thick,
+            &thin,
+            lines,
+            thin_line.as_ref(),
+            &settings,
+            &mut Workspace::new(),
+        )
+        .unwrap();
         let v_in = fit.models[0].estimate("v_in_km_s").unwrap();
         pulls.push((v_in.value - 0.45) / v_in.err);
     }

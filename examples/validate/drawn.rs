@@ -6,6 +6,7 @@ use inrush::fit::{Caution, FitSettings, PairFacts, cautions, fit_pair, fit_thin}
 use inrush::line::{Line, find};
 use inrush::measure::{MeasureSettings, measure};
 use inrush::model::Model;
+use inrush::numeric::least_squares::Workspace;
 use inrush::prepare::{Expected, PrepareSettings, prepare_pair};
 use inrush::simulate::{Axis, Correlation, NoiseLevel, PairTruth, simulate_pair};
 use rand::{RngExt as _, SeedableRng as _};
@@ -110,7 +111,7 @@ fn fitted(
         models: models.to_vec(),
         ..FitSettings::default()
     };
-    let thin_fit = fit_thin(&thin, &lines.1, &settings)?;
+    let thin_fit = fit_thin(&thin, &lines.1, &settings, &mut Workspace::new())?;
     let thin_line = thin_fit.line;
     let measures = measure(
         &thick,
@@ -125,6 +126,7 @@ fn fitted(
         (&lines.0, &lines.1),
         thin_line.as_ref(),
         &settings,
+        &mut Workspace::new(),
     )?;
     let cautions = cautions(&PairFacts {
         thick: &thick,

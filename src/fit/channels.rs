@@ -34,7 +34,7 @@ pub struct Channels {
     data_chi2: f64,
     segments: Vec<Range<usize>>,
     whitener: Option<Whitener>,
-    inverse_noise: f64,
+    noise_k: f64,
 }
 
 impl Channels {
@@ -98,7 +98,7 @@ impl Channels {
             data_chi2,
             segments,
             whitener,
-            inverse_noise,
+            noise_k: prepared.noise.rms_k,
         }
     }
 
@@ -144,14 +144,28 @@ impl Channels {
         &self.whitened_data
     }
 
-    /// Turns a column of temperatures (K, one a channel) into units of the noise and makes it white
-    /// as the data are.
-    pub fn whiten(&self, column: &mut [f64]) {
-        for value in column.iter_mut() {
-            *value *= self.inverse_noise;
+    /// Standard deviation of the noise in a channel, K.
+    #[must_use]
+    pub fn noise_k(&self) -> f64 {
+        self.noise_k
+    }
+
+    /// Turns columns of temperatures (K, one a channel, one column after the other) into units of the
+    /// noise and makes them white as the data are.
+    pub fn whiten(&self, columns: &mut [f64]) {
+        let inverse_noise = 1.0 / self.noise_k;
+        for value in columns.iter_mut() {
+            *value *= inverse_noise;
         }
+        self.decorrelate(columns);
+    }
+
+    /// Makes columns white as the data are, but leaves their unit.
+    pub fn decorrelate(&self, columns: &mut [f64]) {
         if let Some(whitener) = &self.whitener {
-            whitener.whiten(&self.segments, column);
+            for column in columns.chunks_exact_mut(self.len()) {
+                whitener.whiten(&self.segments, column);
+            }
         }
     }
 
@@ -175,9 +189,7 @@ impl Channels {
             *residual -= datum;
         }
         if let Some(jacobian) = jacobian {
-            for column in jacobian.chunks_exact_mut(self.len()) {
-                self.whiten(column);
-            }
+            self.whiten(jacobian);
         }
     }
 }

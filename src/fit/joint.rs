@@ -219,7 +219,39 @@ impl Layout {
         (self.thin.0, local)
     }
 
-    fn thin_local(&self, joint: &[f64], local: &mut [f64]) {
+    /// Model of the thick line and the joint positions of its parameters.
+    pub(super) fn thick_line(&self) -> (Model, &[usize]) {
+        (self.thick.0, &self.thick.1)
+    }
+
+    /// Model of the thin line and the joint positions of its parameters.
+    pub(super) fn thin_line(&self) -> (Model, &[usize]) {
+        (self.thin.0, &self.thin.1)
+    }
+
+    /// Positions of tau and of the isotope ratio where the optical depths are linked.
+    pub(super) fn link(&self) -> Option<(usize, usize)> {
+        self.link
+    }
+
+    /// Where optical depths are linked: the thin line's column by its own optical depth, the third of
+    /// `columns`, becomes that by the thick line's, and that by the isotope ratio is written last.
+    pub(super) fn chain_link(&self, joint: &[f64], columns: &mut [f64], channels: usize) {
+        let Some((tau, ratio)) = self.link else {
+            return;
+        };
+        // the thin line's optical depth is 2 tau / ratio
+        let by_tau = 2.0 / joint[ratio];
+        let (columns, by_ratio) = columns.split_at_mut(columns.len() - channels);
+        let by_depth = &mut columns[2 * channels..3 * channels];
+        for (by_depth, by_ratio) in by_depth.iter_mut().zip(by_ratio) {
+            *by_ratio = -by_tau * joint[tau] / joint[ratio] * *by_depth;
+            *by_depth *= by_tau;
+        }
+    }
+
+    /// The thin line's own parameters.
+    pub(super) fn thin_local(&self, joint: &[f64], local: &mut [f64]) {
         for (value, index) in local.iter_mut().zip(&self.thin.1) {
             *value = joint[*index];
         }
@@ -319,20 +351,14 @@ impl LeastSquares for JointProblem<'_> {
         layout.thin_local(parameters, &mut local[..map.len()]);
         let channels = self.thin.len();
         let own = rest_residuals.split_off_mut(..channels).unwrap_or_default();
-        let mut columns = take_columns(&mut rest_jacobian, channels * map.len());
-        self.thin
-            .residuals(model, &local[..map.len()], own, columns.as_deref_mut());
-        if let Some((tau, ratio)) = layout.link {
-            let by_ratio = take_columns(&mut rest_jacobian, channels);
-            if let (Some(columns), Some(by_ratio)) = (columns, by_ratio) {
-                // the thin line's optical depth is 2 tau / ratio
-                let by_tau = 2.0 / parameters[ratio];
-                let by_depth = &mut columns[2 * channels..3 * channels];
-                for (by_depth, by_ratio) in by_depth.iter_mut().zip(by_ratio) {
-                    *by_ratio = -by_tau * parameters[tau] / parameters[ratio] * *by_depth;
-                    *by_depth *= by_tau;
-                }
-            }
+        let linked = usize::from(layout.link.is_some());
+        let mut columns = take_columns(&mut rest_jacobian, channels * (map.len() + linked));
+        let direct = columns
+            .as_deref_mut()
+            .map(|columns| &mut columns[..channels * map.len()]);
+        self.thin.residuals(model, &local[..map.len()], own, direct);
+        if let Some(columns) = columns {
+            layout.chain_link(parameters, columns, channels);
         }
         let count = self.priors.len();
         for (row, (index, prior)) in self.priors.iter().enumerate() {

@@ -4,9 +4,11 @@
 //! depths linked where an isotope ratio is given. Errors here are formal: from the curvature of chi2
 //! at its minimum, with the measured noise and its correlation between channels.
 
+mod amplitudes;
 mod cautions;
 mod channels;
 mod joint;
+mod projected;
 mod starts;
 mod thin;
 
@@ -21,11 +23,13 @@ use crate::measure::ThinLine;
 use crate::model::{LineShape, Model, Sampling};
 use crate::numeric::Estimate;
 use crate::numeric::least_squares::{
-    Interval, LevenbergMarquardt, MAX_PARAMETERS, Minimum, Settings, Side, Termination, Workspace,
+    Interval, LeastSquaresError, MAX_PARAMETERS, Minimum, Settings, Side, Termination, Workspace,
+    minimize,
 };
 use crate::prepare::Prepared;
 use crate::spectrum::Window;
-use starts::Kinematics;
+use projected::Projected;
+use starts::{Kinematics, Scan};
 use std::collections::BTreeMap;
 
 /// How pairs are fitted.
@@ -367,6 +371,7 @@ pub fn fit_pair(
     lines: (&Line, &Line),
     thin_line: Option<&ThinLine>,
     settings: &FitSettings,
+    workspace: &mut Workspace,
 ) -> Result<PairFit, FitError> {
     let range = match settings.range {
         Some(FitRange::All) => None,
@@ -404,19 +409,12 @@ pub fn fit_pair(
     check_names(settings, &layouts)?;
     check_continuum(settings)?;
 
-    let mut workspace = Workspace::new();
-    let mut models = Vec::with_capacity(layouts.len());
-    for layout in layouts {
-        let fit;
-        (fit, workspace) = fit_model(
-            layout,
-            &thick_channels,
-            &thin_channels,
-            (&kinematics, intensity),
-            workspace,
-        )?;
-        models.push(fit);
-    }
+    let channels = (&thick_channels, &thin_channels);
+    let mut scan = Scan::new(channels, &kinematics, intensity, &settings.models);
+    let models = layouts
+        .into_iter()
+        .map(|layout| fit_model(layout, channels, &mut scan, workspace))
+        .collect::<Result<Vec<ModelFit>, FitError>>()?;
     let adopted = ADOPTION
         .iter()
         .filter_map(|model| models.iter().position(|fit| fit.model == *model))
@@ -575,6 +573,13 @@ const SCOUTING: Settings = Settings {
     initial_radius: 1.0,
 };
 
+/// How far the chosen ones are followed: within a thousandth of a standard error.
+const POLISHING: Settings = Settings {
+    max_evaluations: 1000,
+    chi2_tolerance: 1e-6,
+    ..SCOUTING
+};
+
 /// Scouted starts that are followed to their minimum; one more where none of them has the other sign
 /// of the inward speed.
 const POLISHED: usize = 3;
@@ -602,17 +607,82 @@ fn worth_polishing(sorted: &[Minimum], v_in: Option<usize>) -> Vec<&Minimum> {
     kept
 }
 
+/// The lowest minima near a layout's starts, the deepest first, and how many evaluations they took.
+///
+/// Every start is scouted with the amplitudes solved for, the best scouts are followed to their minima,
+/// and those of the lowest chi2 on either side of zero speed are settled with all parameters free.
+fn minima(
+    layout: &Layout,
+    thick: Option<&Channels>,
+    thin: &Channels,
+    starts: &[Vec<f64>],
+    workspace: &mut Workspace,
+) -> Result<(Vec<Minimum>, usize), FitError> {
+    let Some(reference) = starts.first() else {
+        return Err(FitError::Search("no start".to_owned()));
+    };
+    let mut projected = Projected::new(layout, thick, thin, reference);
+    let bounds = projected.bounds();
+    let mut evaluations = 0;
+    let mut scouted = Vec::with_capacity(starts.len());
+    for start in starts {
+        let start = projected.parameters_of(start);
+        let minimum = minimize(&mut projected, &start, &bounds, &SCOUTING, workspace)?;
+        evaluations += minimum.evaluations;
+        scouted.push(minimum);
+    }
+    scouted.sort_by(|a, b| a.chi2.total_cmp(&b.chi2));
+    let v_in = layout
+        .position("v_in_km_s")
+        .and_then(|position| projected.position(position));
+    let mut followed = Vec::with_capacity(POLISHED + 1);
+    for scout in worth_polishing(&scouted, v_in) {
+        let start = &scout.parameters;
+        let minimum = minimize(&mut projected, start, &bounds, &POLISHING, workspace)?;
+        evaluations += minimum.evaluations;
+        followed.push(minimum);
+    }
+    followed.sort_by(|a, b| a.chi2.total_cmp(&b.chi2));
+    let inward = |minimum: &Minimum| v_in.map(|index| minimum.parameters[index] > 0.0);
+    let deepest = &followed[0];
+    let rival = followed
+        .iter()
+        .find(|minimum| inward(minimum) != inward(deepest));
+    let bounds: Vec<Interval> = layout
+        .parameters()
+        .iter()
+        .map(|parameter| parameter.interval)
+        .collect();
+    let mut problem = JointProblem::new(layout, thick, thin);
+    let mut minima = Vec::with_capacity(2);
+    for minimum in [Some(deepest), rival].into_iter().flatten() {
+        let start = projected.settled(&minimum.parameters);
+        let minimum = minimize(&mut problem, &start, &bounds, &SETTLING, workspace)?;
+        evaluations += minimum.evaluations;
+        minima.push(minimum);
+    }
+    minima.sort_by(|a, b| a.chi2.total_cmp(&b.chi2));
+    Ok((minima, evaluations))
+}
+
+/// The end of a search, with every parameter free.
+const SETTLING: Settings = POLISHING;
+
+impl From<LeastSquaresError> for FitError {
+    fn from(error: LeastSquaresError) -> Self {
+        Self::Search(error.to_string())
+    }
+}
+
 /// Follows the starts and keeps the best minimum.
 fn fit_model(
     layout: Layout,
-    thick: &Channels,
-    thin: &Channels,
-    (kinematics, intensity): (&[Kinematics], Kinematics),
-    mut workspace: Workspace,
-) -> Result<(ModelFit, Workspace), FitError> {
-    let parameters = layout.parameters().len();
+    (thick, thin): (&Channels, &Channels),
+    scan: &mut Scan<'_>,
+    workspace: &mut Workspace,
+) -> Result<ModelFit, FitError> {
     let channels = thick.len() + thin.len();
-    let (model, _) = layout.thick(&vec![1.0; parameters]);
+    let (model, _) = layout.thick_line();
     let free = layout
         .parameters()
         .iter()
@@ -625,37 +695,9 @@ fn fit_model(
             model: model.name(),
         });
     }
-    let starts = starts::starts(&layout, thick, thin, kinematics, intensity);
-    let mut evaluations = 0;
-    let mut scouted = Vec::with_capacity(starts.len());
-    for start in &starts {
-        let minimum;
-        (minimum, workspace) = search(&layout, Some(thick), thin, start, &SCOUTING, workspace)?;
-        evaluations += minimum.evaluations;
-        scouted.push(minimum);
-    }
-    scouted.sort_by(|a, b| a.chi2.total_cmp(&b.chi2));
-    let mut minima = Vec::with_capacity(POLISHED + 1);
-    for scout in worth_polishing(&scouted, layout.position("v_in_km_s")) {
-        let minimum;
-        let start = &scout.parameters;
-        (minimum, workspace) = search(
-            &layout,
-            Some(thick),
-            thin,
-            start,
-            &Settings::default(),
-            workspace,
-        )?;
-        evaluations += minimum.evaluations;
-        minima.push(minimum);
-    }
-    let Some(best) = minima.iter().min_by(|a, b| a.chi2.total_cmp(&b.chi2)) else {
-        return Err(FitError::Search(format!(
-            "no start for the {} model",
-            model.name()
-        )));
-    };
+    let starts = scan.starts(&layout);
+    let (minima, evaluations) = minima(&layout, Some(thick), thin, &starts, workspace)?;
+    let best = &minima[0];
     let rival = layout.position("v_in_km_s").and_then(|index| {
         let sign = best.parameters[index].signum();
         minima
@@ -669,7 +711,7 @@ fn fit_model(
             })
             .min_by(|a, b| a.delta_chi2.total_cmp(&b.delta_chi2))
     });
-    let fit = ModelFit {
+    Ok(ModelFit {
         model,
         parameters: fitted(&layout, best),
         chi2: best.chi2,
@@ -682,8 +724,7 @@ fn fit_model(
         thick_shape: thick.line().clone(),
         thin_shape: thin.line().clone(),
         layout,
-    };
-    Ok((fit, workspace))
+    })
 }
 
 fn fitted(layout: &Layout, minimum: &Minimum) -> Vec<FittedParameter> {
@@ -715,33 +756,4 @@ fn standard_errors(minimum: &Minimum) -> [Option<f64>; MAX_PARAMETERS] {
         }
     }
     errors
-}
-
-/// One search from one start, by argmin's executor.
-fn search(
-    layout: &Layout,
-    thick: Option<&Channels>,
-    thin: &Channels,
-    start: &[f64],
-    settings: &Settings,
-    workspace: Workspace,
-) -> Result<(Minimum, Workspace), FitError> {
-    let bounds: Vec<Interval> = layout
-        .parameters()
-        .iter()
-        .map(|parameter| parameter.interval)
-        .collect();
-    let solver = LevenbergMarquardt::with_workspace(bounds, *settings, workspace);
-    let failed = |error: &dyn std::fmt::Display| FitError::Search(error.to_string());
-    let result = argmin::core::Executor::new(JointProblem::new(layout, thick, thin), solver)
-        .configure(|state| state.param(start.to_vec()))
-        .timer(false)
-        .run()
-        .map_err(|error| failed(&error))?;
-    let minimum = result
-        .solver
-        .minimum()
-        .cloned()
-        .ok_or_else(|| failed(&"the search was stopped"))?;
-    Ok((minimum, result.solver.into_workspace()))
 }

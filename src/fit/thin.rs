@@ -3,13 +3,13 @@
 use super::channels::Channels;
 use super::joint::Layout;
 use super::starts::{self, Kinematics};
-use super::{Averaging, FitError, FitSettings, FittedParameter, fitted, search};
+use super::{Averaging, FitError, FitSettings, FittedParameter, fitted, minima};
 use crate::constants::FWHM_PER_SIGMA;
 use crate::line::Line;
 use crate::measure::ThinLine;
 use crate::model::{LineShape, Model, Sampling};
 use crate::numeric::Estimate;
-use crate::numeric::least_squares::{Interval, Minimum, Settings, Termination, Workspace};
+use crate::numeric::least_squares::{Interval, Minimum, Termination, Workspace};
 use crate::prepare::Prepared;
 
 /// Height over its formal error from which the thin line counts as detected.
@@ -39,7 +39,12 @@ pub struct ThinFit {
 /// # Errors
 ///
 /// [`FitError`] where there are fewer channels than parameters.
-pub fn fit_thin(thin: &Prepared, line: &Line, settings: &FitSettings) -> Result<ThinFit, FitError> {
+pub fn fit_thin(
+    thin: &Prepared,
+    line: &Line,
+    settings: &FitSettings,
+    workspace: &mut Workspace,
+) -> Result<ThinFit, FitError> {
     let model = if line.components.len() > 1 {
         Model::Layer
     } else {
@@ -77,24 +82,10 @@ pub fn fit_thin(thin: &Prepared, line: &Line, settings: &FitSettings) -> Result<
             model: model.name(),
         });
     }
-    let mut best: Option<Minimum> = None;
-    let mut workspace = Workspace::new();
-    for start in thin_starts(&layout, &channels, intensity, thin) {
-        let minimum;
-        (minimum, workspace) = search(
-            &layout,
-            None,
-            &channels,
-            &start,
-            &Settings::default(),
-            workspace,
-        )?;
-        if best.as_ref().is_none_or(|best| minimum.chi2 < best.chi2) {
-            best = Some(minimum);
-        }
-    }
-    let best = best.ok_or_else(|| FitError::Search("no start for the thin line".to_owned()))?;
-    let peak = peak(model, &channels, &best);
+    let starts = thin_starts(&layout, &channels, intensity, thin);
+    let (minima, _) = minima(&layout, None, &channels, &starts, workspace)?;
+    let best = &minima[0];
+    let peak = peak(model, &channels, best);
     let significance = peak.map_or(0.0, |peak| peak.value / peak.err);
     let line = peak
         .filter(|_| significance >= DETECTION)
@@ -116,7 +107,7 @@ pub fn fit_thin(thin: &Prepared, line: &Line, settings: &FitSettings) -> Result<
         });
     Ok(ThinFit {
         model,
-        parameters: fitted(&layout, &best),
+        parameters: fitted(&layout, best),
         chi2: best.chi2,
         degrees_of_freedom: best.degrees_of_freedom(),
         termination: best.termination,
@@ -135,44 +126,27 @@ fn thin_starts(
     let window = thin.window;
     let width = window.high_km_s - window.low_km_s;
     let mut candidates = Vec::new();
-    let mut scan = starts::Scan::new(channels, channels);
+    let mut column = vec![0.0; channels.len()];
     let centres = (0..=40)
         .map(|step| window.low_km_s + width * f64::from(step) / 40.0)
         .chain(std::iter::once(intensity.v_km_s));
     for v_km_s in centres {
         for sigma_km_s in [0.05 * width, 0.1 * width, 0.2 * width, intensity.sigma_km_s] {
-            let (chi2, peak) = scan.thin(Kinematics { v_km_s, sigma_km_s });
+            let at = Kinematics { v_km_s, sigma_km_s };
+            let (chi2, peak) = starts::one_gaussian(channels, at, &mut column);
             if peak > 0.0 {
-                candidates.push((chi2, v_km_s, sigma_km_s, peak));
+                candidates.push((chi2, at));
             }
         }
     }
     candidates.sort_by(|a, b| a.0.total_cmp(&b.0));
     candidates.truncate(4);
     if candidates.is_empty() {
-        candidates.push((
-            0.0,
-            intensity.v_km_s,
-            intensity.sigma_km_s,
-            thin.noise.rms_k,
-        ));
+        candidates.push((0.0, intensity));
     }
     candidates
         .into_iter()
-        .map(|(_, v_km_s, sigma_km_s, peak)| {
-            starts::layout_start(
-                layout,
-                channels,
-                Kinematics { v_km_s, sigma_km_s },
-                peak,
-                |name| match name {
-                    "peak_k" => Some(peak),
-                    "tau_total" => Some(1.0),
-                    "t_ex_k" => Some(starts::excitation_k(channels.line(), 1.0, peak)),
-                    _ => None,
-                },
-            )
-        })
+        .map(|(_, at)| starts::start_alone(layout, at))
         .collect()
 }
 

@@ -21,7 +21,7 @@ pub(super) fn evaluate(
     jacobian: Option<&mut [f64]>,
 ) {
     let columns = jacobian.map(|jacobian| columns(jacobian, value.len()));
-    run(line, sampling, parameters, value, columns, false);
+    add_one(line, sampling, parameters, value, columns, true);
 }
 
 /// Two Gaussians of parameters `v_lsr`, sigma, peak, and the same of the second.
@@ -36,41 +36,91 @@ pub(super) fn evaluate_two(
         Some([a, b, c, d, e, f]) => (Some([a, b, c]), Some([d, e, f])),
         None => (None, None),
     };
-    run(line, sampling, &parameters[..3], value, first, false);
-    run(line, sampling, &parameters[3..], value, second, true);
+    add_one(line, sampling, &parameters[..3], value, first, true);
+    add_one(line, sampling, &parameters[3..], value, second, false);
 }
 
-fn run(
+/// Sets or adds one Gaussian, and sets its columns by centre, dispersion and peak.
+fn add_one(
     line: &LineShape,
     sampling: &Sampling,
     parameters: &[f64],
     value: &mut [f64],
     columns: Option<[&mut [f64]; 3]>,
-    add: bool,
+    set: bool,
 ) {
-    if !add {
-        value.fill(0.0);
+    let peak_k = parameters[2];
+    let Some([by_v, by_sigma, by_peak]) = columns else {
+        return run(line, sampling, parameters, (peak_k, set), value, None);
+    };
+    let slopes = Some((peak_k, [by_v, by_sigma]));
+    run(line, sampling, parameters, (1.0, true), by_peak, slopes);
+    for (value, unit) in value.iter_mut().zip(by_peak) {
+        let before = if set { 0.0 } else { *value };
+        *value = before + peak_k * *unit;
     }
+}
+
+/// The Gaussian of height 1, and its slopes by centre and dispersion, as in
+/// [`Model::functions`](super::Model::functions).
+pub(super) fn functions(
+    line: &LineShape,
+    sampling: &Sampling,
+    parameters: &[f64],
+    functions: &mut [f64],
+    slopes: Option<&mut [f64]>,
+) {
+    let slopes = slopes.map(|slopes| (1.0, columns(slopes, sampling.len())));
+    run(line, sampling, parameters, (1.0, true), functions, slopes);
+}
+
+/// The same of two Gaussians.
+pub(super) fn functions_of_two(
+    line: &LineShape,
+    sampling: &Sampling,
+    parameters: &[f64],
+    functions: &mut [f64],
+    slopes: Option<&mut [f64]>,
+) {
+    let channels = sampling.len();
+    let (first, second) = functions.split_at_mut(channels);
+    let (of_first, of_second) = match slopes {
+        Some(slopes) => {
+            slopes.fill(0.0);
+            let [a, _, b, _, _, c, _, d] = columns::<8>(slopes, channels);
+            (Some((1.0, [a, b])), Some((1.0, [c, d])))
+        }
+        None => (None, None),
+    };
+    let unit = (1.0, true);
+    run(line, sampling, &parameters[..2], unit, first, of_first);
+    run(line, sampling, &parameters[3..5], unit, second, of_second);
+}
+
+/// Sets or adds `factor` times the Gaussian of height 1; its slopes times a factor of their own.
+fn run(
+    line: &LineShape,
+    sampling: &Sampling,
+    parameters: &[f64],
+    (factor, set): (f64, bool),
+    value: &mut [f64],
+    slopes: Option<(f64, [&mut [f64]; 2])>,
+) {
     let strongest = line
         .components
         .iter()
         .map(|component| component.weight)
         .fold(0.0, f64::max);
-    let mut columns = columns;
-    if let Some(columns) = &mut columns {
-        for column in columns.iter_mut() {
-            column.fill(0.0);
-        }
-    }
     dispatch(GaussianKernel {
         components: &line.components,
         strongest,
         sampling,
         v_lsr_km_s: parameters[0],
         sigma_km_s: parameters[1],
-        peak_k: parameters[2],
+        factor,
+        set,
         value,
-        columns,
+        slopes,
     });
 }
 
@@ -80,9 +130,10 @@ struct GaussianKernel<'a> {
     sampling: &'a Sampling,
     v_lsr_km_s: f64,
     sigma_km_s: f64,
-    peak_k: f64,
+    factor: f64,
+    set: bool,
     value: &'a mut [f64],
-    columns: Option<[&'a mut [f64]; 3]>,
+    slopes: Option<(f64, [&'a mut [f64]; 2])>,
 }
 
 impl Kernel for GaussianKernel<'_> {
@@ -97,32 +148,36 @@ impl Kernel for GaussianKernel<'_> {
         );
         let inverse = 1.0 / self.sigma_km_s;
         let value = self.value;
-        let mut columns = self.columns;
+        let mut slopes = self.slopes;
+        let mut first = true;
         for component in self.components {
             let centre = self.v_lsr_km_s + component.offset_km_s;
             for (node, weight) in self.sampling.nodes() {
                 let share = weight * component.weight / self.strongest;
-                let Some([by_v, by_sigma, by_peak]) = &mut columns else {
+                let height = self.factor * share;
+                let keep = !(first && self.set);
+                let keep_slopes = !first;
+                first = false;
+                let Some((slope_factor, [by_v, by_sigma])) = &mut slopes else {
                     for i in 0..channels {
                         let z = (A::mul_add(*node, width[i], velocity[i]) - centre) * inverse;
-                        let gauss = share * exp_negative::<A>(0.5 * z * z);
-                        value[i] = A::mul_add(self.peak_k, gauss, value[i]);
+                        let before = if keep { value[i] } else { 0.0 };
+                        value[i] = A::mul_add(height, exp_negative::<A>(0.5 * z * z), before);
                     }
                     continue;
                 };
-                let (by_v, by_sigma, by_peak) = (
-                    &mut by_v[..channels],
-                    &mut by_sigma[..channels],
-                    &mut by_peak[..channels],
-                );
+                let (by_v, by_sigma) = (&mut by_v[..channels], &mut by_sigma[..channels]);
+                let steepness = *slope_factor * share * inverse;
                 for i in 0..channels {
                     let z = (A::mul_add(*node, width[i], velocity[i]) - centre) * inverse;
-                    let gauss = share * exp_negative::<A>(0.5 * z * z);
-                    let slope = self.peak_k * gauss * z * inverse;
-                    value[i] = A::mul_add(self.peak_k, gauss, value[i]);
-                    by_v[i] += slope;
-                    by_sigma[i] = A::mul_add(slope, z, by_sigma[i]);
-                    by_peak[i] += gauss;
+                    let gauss = exp_negative::<A>(0.5 * z * z);
+                    let slope = steepness * gauss * z;
+                    let before = if keep { value[i] } else { 0.0 };
+                    value[i] = A::mul_add(height, gauss, before);
+                    let before = if keep_slopes { by_v[i] } else { 0.0 };
+                    by_v[i] = before + slope;
+                    let before = if keep_slopes { by_sigma[i] } else { 0.0 };
+                    by_sigma[i] = A::mul_add(slope, z, before);
                 }
             }
         }

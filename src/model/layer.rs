@@ -21,17 +21,55 @@ pub(super) fn evaluate(
     value: &mut [f64],
     jacobian: Option<&mut [f64]>,
 ) {
-    let columns = jacobian.map(|jacobian| columns(jacobian, value.len()));
+    let contrast_k = line.radiation.at(parameters[3]) - line.radiation.background();
+    let Some(jacobian) = jacobian else {
+        run(line, sampling, parameters, contrast_k, value, None);
+        for value in value {
+            *value *= contrast_k;
+        }
+        return;
+    };
+    let [by_v, by_sigma, by_tau, by_t_ex] = columns(jacobian, value.len());
+    let slopes = Some([by_v, by_sigma, by_tau]);
+    run(line, sampling, parameters, contrast_k, by_t_ex, slopes);
+    let contrast_slope = line.radiation.slope(parameters[3]);
+    for (value, by_t_ex) in value.iter_mut().zip(by_t_ex) {
+        *value = contrast_k * *by_t_ex;
+        *by_t_ex *= contrast_slope;
+    }
+}
+
+/// 1 - e^-tau(v), and its slopes by centre, dispersion and `tau_total`, as in
+/// [`Model::functions`](super::Model::functions).
+pub(super) fn functions(
+    line: &LineShape,
+    sampling: &Sampling,
+    parameters: &[f64],
+    functions: &mut [f64],
+    slopes: Option<&mut [f64]>,
+) {
+    let slopes = slopes.map(|slopes| columns(slopes, sampling.len()));
+    run(line, sampling, parameters, 1.0, functions, slopes);
+}
+
+/// 1 - e^-tau(v), and its slopes times `slope_factor`.
+fn run(
+    line: &LineShape,
+    sampling: &Sampling,
+    parameters: &[f64],
+    slope_factor: f64,
+    absorbed: &mut [f64],
+    slopes: Option<[&mut [f64]; 3]>,
+) {
     dispatch(LayerKernel {
         components: &line.components,
         sampling,
         v_lsr_km_s: parameters[0],
         sigma_km_s: parameters[1],
         tau_total: parameters[2],
-        contrast_k: line.radiation.at(parameters[3]) - line.radiation.background(),
-        contrast_slope: line.radiation.slope(parameters[3]),
-        value,
-        columns,
+        slope_factor,
+        absorbed,
+        slopes,
     });
 }
 
@@ -41,10 +79,9 @@ struct LayerKernel<'a> {
     v_lsr_km_s: f64,
     sigma_km_s: f64,
     tau_total: f64,
-    contrast_k: f64,
-    contrast_slope: f64,
-    value: &'a mut [f64],
-    columns: Option<[&'a mut [f64]; 4]>,
+    slope_factor: f64,
+    absorbed: &'a mut [f64],
+    slopes: Option<[&'a mut [f64]; 3]>,
 }
 
 impl Kernel for LayerKernel<'_> {
@@ -53,10 +90,10 @@ impl Kernel for LayerKernel<'_> {
     #[inline(always)]
     fn run<A: Arithmetic>(self) {
         let inverse = 1.0 / self.sigma_km_s;
-        let value = self.value;
-        let mut columns = self.columns;
-        for first in (0..value.len()).step_by(BLOCK) {
-            let last = (first + BLOCK).min(value.len());
+        let all_absorbed = self.absorbed;
+        let mut slopes = self.slopes;
+        for first in (0..all_absorbed.len()).step_by(BLOCK) {
+            let last = (first + BLOCK).min(all_absorbed.len());
             let channels = last - first;
             let n = whole_lanes(channels);
             let centres = &padded(&self.sampling.velocity_km_s()[first..last])[..n];
@@ -90,22 +127,17 @@ impl Kernel for LayerKernel<'_> {
                 for i in 0..n {
                     let through = exp_negative::<A>(self.tau_total * phi[i]);
                     absorbed[i] = A::mul_add(*weight, 1.0 - through, absorbed[i]);
-                    let slope = weight * self.contrast_k * through;
+                    let slope = weight * self.slope_factor * through;
                     by_v[i] = A::mul_add(slope * self.tau_total, by_velocity[i], by_v[i]);
                     by_sigma[i] = A::mul_add(slope * self.tau_total, by_width[i], by_sigma[i]);
                     by_tau[i] = A::mul_add(slope, phi[i], by_tau[i]);
                 }
             }
-            for (value, absorbed) in value[first..last].iter_mut().zip(&*absorbed) {
-                *value = self.contrast_k * absorbed;
-            }
-            if let Some([column_v, column_sigma, column_tau, column_t_ex]) = &mut columns {
+            all_absorbed[first..last].copy_from_slice(&absorbed[..channels]);
+            if let Some([column_v, column_sigma, column_tau]) = &mut slopes {
                 column_v[first..last].copy_from_slice(&by_v[..channels]);
                 column_sigma[first..last].copy_from_slice(&by_sigma[..channels]);
                 column_tau[first..last].copy_from_slice(&by_tau[..channels]);
-                for (target, absorbed) in column_t_ex[first..last].iter_mut().zip(&*absorbed) {
-                    *target = self.contrast_slope * absorbed;
-                }
             }
         }
     }

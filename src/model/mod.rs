@@ -5,13 +5,17 @@
 //! its mean over the channel.
 
 mod gaussian;
+mod ladder;
 mod layer;
 mod sampling;
+mod separable;
 mod slab;
 mod slabs;
 mod temperature;
 
+pub use ladder::{BothSigns, Ladder};
 pub use sampling::Sampling;
+pub use separable::MOST_AMPLITUDES;
 pub use temperature::RadiationTemperature;
 
 use crate::line::Component;
@@ -256,8 +260,6 @@ impl Model {
         }
     }
 }
-
-pub use slabs::{basis, temperatures};
 
 /// What a model has to know of a line.
 #[derive(Clone, Debug, PartialEq)]

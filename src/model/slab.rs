@@ -91,10 +91,14 @@ pub(super) trait Sink {
 /// T only.
 pub(super) struct Value<'a>(pub &'a mut [f64]);
 
-/// F and 1 - `E_f` `E_r`, the two functions that T is linear in.
-pub(super) struct Basis<'a> {
+/// The functions that T is linear in, F and (1 - `E_f` `E_r`) - F, and the slopes of each by `v_lsr`,
+/// sigma, `v_in` and tau.
+pub(super) struct Functions<'a> {
     pub shape: &'a mut [f64],
-    pub absorbed: &'a mut [f64],
+    /// The second function, where the model has it.
+    pub rest: Option<&'a mut [f64]>,
+    pub shape_slopes: Option<[&'a mut [f64]; 4]>,
+    pub rest_slopes: Option<[&'a mut [f64]; 4]>,
 }
 
 /// T, and dT by `v_lsr`, sigma, `v_in`, tau, A and, where wanted, B: columns of one length.
@@ -317,7 +321,44 @@ impl Sink for Value<'_> {
     }
 }
 
-impl Sink for Basis<'_> {
+/// Writes the slopes of a function by `v_lsr`, sigma, `v_in` and tau, from its partial derivatives by
+/// the optical depths of the two halves.
+#[inline(always)]
+fn write_slopes<A: Arithmetic>(
+    block: &Block,
+    tau: f64,
+    (by_front, by_rear): (&[f64], &[f64]),
+    (front, rear): (&Half, &Half),
+    columns: &mut [&mut [f64]; 4],
+) {
+    let n = by_front.len();
+    let by_rear = &by_rear[..n];
+    let (phi_f, phi_r) = (&front.phi[..n], &rear.phi[..n]);
+    let (dv_f, dv_r) = (&front.by_velocity[..n], &rear.by_velocity[..n]);
+    let (ds_f, ds_r) = (&front.by_sigma[..n], &rear.by_sigma[..n]);
+    let mut by_v = [0.0; BLOCK];
+    let by_v = &mut by_v[..n];
+    let mut by_sigma = [0.0; BLOCK];
+    let by_sigma = &mut by_sigma[..n];
+    let mut by_v_in = [0.0; BLOCK];
+    let by_v_in = &mut by_v_in[..n];
+    let mut by_tau = [0.0; BLOCK];
+    let by_tau = &mut by_tau[..n];
+    for i in 0..n {
+        let (f, r) = (by_front[i], by_rear[i]);
+        let (tau_f, tau_r) = (tau * f, tau * r);
+        by_v[i] = A::mul_add(tau_f, dv_f[i], tau_r * dv_r[i]);
+        by_v_in[i] = A::mul_add(tau_f, dv_f[i], -tau_r * dv_r[i]);
+        by_sigma[i] = A::mul_add(tau_f, ds_f[i], tau_r * ds_r[i]);
+        by_tau[i] = A::mul_add(f, phi_f[i], r * phi_r[i]);
+    }
+    let buffers = [by_v, by_sigma, by_v_in, by_tau];
+    for (column, buffer) in columns.iter_mut().zip(buffers) {
+        block.write(column, buffer);
+    }
+}
+
+impl Sink for Functions<'_> {
     #[inline(always)]
     fn block<S: Shape, A: Arithmetic>(
         &mut self,
@@ -330,15 +371,36 @@ impl Sink for Basis<'_> {
         let (phi_f, phi_r) = (&front.phi[..n], &rear.phi[..n]);
         let mut shape = [0.0; BLOCK];
         let shape = &mut shape[..n];
-        let mut absorbed = [0.0; BLOCK];
-        let absorbed = &mut absorbed[..n];
+        let mut by_front = [0.0; BLOCK];
+        let by_front = &mut by_front[..n];
+        let mut by_rear = [0.0; BLOCK];
+        let by_rear = &mut by_rear[..n];
+        let mut through = [0.0; BLOCK];
+        let through = &mut through[..n];
+        let weight = block.weight;
         for i in 0..n {
-            let point = point::<S, A>(slab, phi_f[i], phi_r[i]);
-            shape[i] = block.weight * point.shape;
-            absorbed[i] = block.weight * point.absorbed;
+            let (tau_f, tau_r) = (slab.tau * phi_f[i], slab.tau * phi_r[i]);
+            let (e_f, e_r) = (exp_negative::<A>(tau_f), exp_negative::<A>(tau_r));
+            let (value, front, rear) = S::value_and_slopes::<A>(tau_f, tau_r, e_f, e_r);
+            shape[i] = weight * value;
+            by_front[i] = weight * front;
+            by_rear[i] = weight * rear;
+            through[i] = weight * (e_f * e_r);
+        }
+        if let Some(columns) = &mut self.shape_slopes {
+            write_slopes::<A>(block, slab.tau, (by_front, by_rear), (front, rear), columns);
         }
         block.write(self.shape, shape);
-        block.write(self.absorbed, absorbed);
+        let Some(rest) = &mut self.rest else { return };
+        for i in 0..n {
+            shape[i] = (weight - through[i]) - shape[i];
+            by_front[i] = through[i] - by_front[i];
+            by_rear[i] = through[i] - by_rear[i];
+        }
+        block.write(rest, shape);
+        if let Some(columns) = &mut self.rest_slopes {
+            write_slopes::<A>(block, slab.tau, (by_front, by_rear), (front, rear), columns);
+        }
     }
 }
 
@@ -371,29 +433,16 @@ impl Sink for Slopes<'_> {
             by_a[i] = block.weight * point.shape;
             by_b[i] = block.weight * point.absorbed;
         }
-        let (dv_f, dv_r) = (&front.by_velocity[..n], &rear.by_velocity[..n]);
-        let (ds_f, ds_r) = (&front.by_sigma[..n], &rear.by_sigma[..n]);
-        let mut by_v = [0.0; BLOCK];
-        let by_v = &mut by_v[..n];
-        let mut by_sigma = [0.0; BLOCK];
-        let by_sigma = &mut by_sigma[..n];
-        let mut by_v_in = [0.0; BLOCK];
-        let by_v_in = &mut by_v_in[..n];
-        let mut by_tau = [0.0; BLOCK];
-        let by_tau = &mut by_tau[..n];
-        for i in 0..n {
-            let (f, r) = (by_front[i], by_rear[i]);
-            let (tau_f, tau_r) = (slab.tau * f, slab.tau * r);
-            by_v[i] = A::mul_add(tau_f, dv_f[i], tau_r * dv_r[i]);
-            by_v_in[i] = A::mul_add(tau_f, dv_f[i], -tau_r * dv_r[i]);
-            by_sigma[i] = A::mul_add(tau_f, ds_f[i], tau_r * ds_r[i]);
-            by_tau[i] = A::mul_add(f, phi_f[i], r * phi_r[i]);
-        }
         block.write(self.value, value);
-        let buffers = [by_v, by_sigma, by_v_in, by_tau, by_a];
-        for (column, buffer) in self.columns.iter_mut().zip(buffers) {
-            block.write(column, buffer);
-        }
+        let [kinematics @ .., contrast] = &mut self.columns;
+        write_slopes::<A>(
+            block,
+            slab.tau,
+            (by_front, by_rear),
+            (front, rear),
+            kinematics,
+        );
+        block.write(contrast, by_a);
         if let Some(by_excess) = &mut self.by_excess {
             block.write(by_excess, by_b);
         }

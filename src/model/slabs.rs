@@ -1,6 +1,6 @@
 //! The two-layer and hill models: their temperatures as the two amplitudes of a [`Slab`].
 
-use super::slab::{Basis, Peaked, Shape, Slab, Slopes, Uniform, Value, evaluate};
+use super::slab::{Functions, Peaked, Shape, Slab, Slopes, Uniform, Value, evaluate};
 use super::{LineShape, Model, Sampling, columns};
 
 fn slab(parameters: &[f64], contrast_k: f64, excess_k: f64) -> Slab {
@@ -191,74 +191,42 @@ pub(super) fn hill_surface(
     own_temperatures::<Peaked>(line, sampling, parameters, value, jacobian);
 }
 
-/// The two functions of velocity that a slab model's profile is linear in, at the first four
-/// parameters `v_lsr`, sigma, `v_in`, tau: for finding starts without iterating over temperatures.
-///
-/// `first` multiplies A, `second` multiplies B (see [`temperatures`]); one number a channel each.
-///
-/// # Panics
-///
-/// For a model without an inward speed.
-pub fn basis(
+/// The functions that a slab's profile is linear in, and their slopes by the first four parameters, laid
+/// out as in [`Model::functions`].
+pub(super) fn functions(
     model: Model,
     line: &LineShape,
     sampling: &Sampling,
-    kinematics: [f64; 4],
-    first: &mut [f64],
-    second: &mut [f64],
+    parameters: &[f64],
+    functions: &mut [f64],
+    slopes: Option<&mut [f64]>,
 ) {
-    let slab = slab(&kinematics, 0.0, 0.0);
-    let output = Basis {
-        shape: first,
-        absorbed: second,
+    let slab = slab(parameters, 0.0, 0.0);
+    let channels = sampling.len();
+    let (shape, rest) = functions.split_at_mut(channels);
+    let output = if model == Model::Hill {
+        Functions {
+            shape,
+            rest: None,
+            shape_slopes: slopes.map(|slopes| columns(slopes, channels)),
+            rest_slopes: None,
+        }
+    } else {
+        let slopes = slopes.map(|slopes| columns::<8>(slopes, channels));
+        let (shape_slopes, rest_slopes) = match slopes {
+            Some([a, b, c, d, e, f, g, h]) => (Some([a, c, e, g]), Some([b, d, f, h])),
+            None => (None, None),
+        };
+        Functions {
+            shape,
+            rest: Some(rest),
+            shape_slopes,
+            rest_slopes,
+        }
     };
-    match model {
-        Model::TwoLayer | Model::TwoLayerContinuum => {
-            evaluate::<Uniform>(slab, &line.components, sampling, output);
-        }
-        Model::Hill | Model::HillSurface => {
-            evaluate::<Peaked>(slab, &line.components, sampling, output);
-        }
-        Model::Gaussian | Model::TwoGaussians | Model::Layer => {
-            panic!("{} has no inward speed", model.name())
-        }
-    }
-}
-
-/// The temperatures that give amplitudes A and B (K), as the model's parameters from the fifth on.
-///
-/// `source` is Phi and `T_c` of the continuum source, used by that model alone. Temperatures
-/// below the background come out where the amplitudes ask for them: the caller clamps.
-///
-/// # Panics
-///
-/// For a model without an inward speed.
-#[must_use]
-pub fn temperatures(
-    model: Model,
-    line: &LineShape,
-    a_k: f64,
-    b_k: f64,
-    source: (f64, f64),
-) -> (f64, f64) {
-    let background = line.radiation.background();
-    let t = |radiation: f64| line.radiation.inverse(radiation);
-    match model {
-        Model::TwoLayer | Model::HillSurface => {
-            let second = background + b_k;
-            (t(second + a_k), t(second))
-        }
-        Model::TwoLayerContinuum => {
-            let open = (1.0 - source.0).max(1e-6);
-            let rear = background + b_k / open;
-            (
-                t(a_k + source.0 * line.radiation.at(source.1) + open * rear),
-                t(rear),
-            )
-        }
-        Model::Hill => (t(background + a_k), f64::NAN),
-        Model::Gaussian | Model::TwoGaussians | Model::Layer => {
-            panic!("{} has no inward speed", model.name())
-        }
+    if matches!(model, Model::TwoLayer | Model::TwoLayerContinuum) {
+        evaluate::<Uniform>(slab, &line.components, sampling, output);
+    } else {
+        evaluate::<Peaked>(slab, &line.components, sampling, output);
     }
 }

@@ -4,6 +4,7 @@ use super::{LineSection, RunError, RunSheet};
 use crate::fit::{Caution, PairFacts, PairFit, ThinFit, cautions, fit_thin};
 use crate::line::{Line, isotopologue_pair};
 use crate::measure::{MeasureSettings, Measures, measure};
+use crate::numeric::least_squares::Workspace;
 use crate::prepare::scale::{ScaleNote, to_spectrum};
 use crate::prepare::{Expected, Prepared, prepare_pair};
 use crate::read::{ReadOptions, load, spectrum_from_bytes};
@@ -77,7 +78,8 @@ pub fn fit_pair(sheet: &RunSheet, base: &Path) -> Result<PairOutcome, RunError> 
     .map_err(|error| {
         RunError::of_pair(error, (thick.origin.path.clone(), thin.origin.path.clone()))
     })?;
-    let thin_fit = fit_thin(&prepared_thin, &thin_line, &settings)?;
+    let mut workspace = Workspace::new();
+    let thin_fit = fit_thin(&prepared_thin, &thin_line, &settings, &mut workspace)?;
     let systematic_km_s = thick_line
         .velocity_systematic_km_s()
         .hypot(thin_line.velocity_systematic_km_s());
@@ -104,6 +106,7 @@ pub fn fit_pair(sheet: &RunSheet, base: &Path) -> Result<PairOutcome, RunError> 
         (&thick_line, &thin_line),
         thin_fit.line.as_ref(),
         &settings,
+        &mut workspace,
     )
     .map_err(|error| {
         RunError::of_fit(error, (thick.origin.path.clone(), thin.origin.path.clone()))

@@ -1,0 +1,351 @@
+//! The joint least-squares problem with the amplitudes solved for: a search over velocities,
+//! dispersions and optical depths alone.
+//!
+//! At every point the amplitudes of both lines take their best values inside their ranges, which is
+//! exact and cheap (variable projection: Golub & Pereyra 1973, SIAM J. Numer. Anal. 10, 413); the
+//! Jacobian is that of the profile with its part along the free functions taken out (Kaufman 1975,
+//! BIT 15, 49). Gaussian priors on amplitudes bound their ranges; the full problem does the rest.
+
+use super::amplitudes::{Amplitudes, Products};
+use super::channels::Channels;
+use super::joint::Layout;
+use crate::model::{MOST_AMPLITUDES, Model};
+use crate::numeric::Estimate;
+use crate::numeric::dispatch::{Arithmetic, Kernel, dispatch};
+use crate::numeric::least_squares::{Interval, LeastSquares, MAX_PARAMETERS, RowBlock, Structure};
+use crate::numeric::products::products_with;
+
+/// A prior's reach: its amplitude stays within so many standard errors.
+const PRIOR_REACH: f64 = 3.0;
+
+/// The problem over the nonlinear parameters of a layout.
+#[derive(Debug)]
+pub(super) struct Projected<'a> {
+    layout: &'a Layout,
+    /// Positions of the nonlinear parameters among the joint ones.
+    nonlinear: Vec<usize>,
+    /// The joint parameters last evaluated, but for their amplitudes.
+    joint: Vec<f64>,
+    priors: Vec<(usize, Estimate)>,
+    thick: Option<Line<'a>>,
+    thin: Line<'a>,
+}
+
+/// One line of the problem.
+#[derive(Debug)]
+struct Line<'a> {
+    channels: &'a Channels,
+    model: Model,
+    /// Joint positions of the model's parameters.
+    joint: &'a [usize],
+    /// Positions, among the problem's parameters, of those that the line's residuals depend on.
+    depends_on: Vec<usize>,
+    /// Ranges of the amplitudes, and their best values where the problem was evaluated last, in units
+    /// of the noise.
+    ranges: [(f64, f64); MOST_AMPLITUDES],
+    amplitudes: Amplitudes,
+    functions: Vec<f64>,
+    slopes: Vec<f64>,
+}
+
+impl<'a> Projected<'a> {
+    /// The problem of a pair, or of the thin line alone where `thick` is `None`, near `joint`
+    /// parameters, of which those that no line is linear in and none searches over are held.
+    pub fn new(
+        layout: &'a Layout,
+        thick: Option<&'a Channels>,
+        thin: &'a Channels,
+        joint: &[f64],
+    ) -> Self {
+        let mut nonlinear = Vec::with_capacity(MAX_PARAMETERS);
+        let thick = thick.map(|channels| {
+            let (model, map) = layout.thick_line();
+            Line::new(layout, channels, (model, map), None, &mut nonlinear, joint)
+        });
+        let (model, map) = layout.thin_line();
+        let ratio = layout.link().map(|(_, ratio)| ratio);
+        let thin = Line::new(layout, thin, (model, map), ratio, &mut nonlinear, joint);
+        let priors = nonlinear
+            .iter()
+            .enumerate()
+            .filter_map(|(own, position)| Some((own, layout.parameters()[*position].prior?)))
+            .collect();
+        Self {
+            layout,
+            nonlinear,
+            joint: joint.to_vec(),
+            priors,
+            thick,
+            thin,
+        }
+    }
+
+    /// The intervals of the problem's parameters.
+    pub fn bounds(&self) -> Vec<Interval> {
+        self.of_joint(|position| self.layout.parameters()[position].interval)
+    }
+
+    /// The problem's parameters of joint ones.
+    pub fn parameters_of(&self, joint: &[f64]) -> Vec<f64> {
+        self.of_joint(|position| joint[position])
+    }
+
+    /// Position of a joint parameter among the problem's.
+    pub fn position(&self, joint: usize) -> Option<usize> {
+        self.nonlinear
+            .iter()
+            .position(|position| *position == joint)
+    }
+
+    fn of_joint<T>(&self, value: impl Fn(usize) -> T) -> Vec<T> {
+        self.nonlinear
+            .iter()
+            .map(|position| value(*position))
+            .collect()
+    }
+
+    /// The joint parameters where the problem's parameters are these and the amplitudes are at their
+    /// best, inside their intervals.
+    pub fn settled(&mut self, parameters: &[f64]) -> Vec<f64> {
+        let mut residuals = vec![0.0; self.residuals()];
+        self.evaluate(parameters, &mut residuals, None);
+        let mut joint = self.joint.clone();
+        for line in self.thick.iter().chain([&self.thin]) {
+            let local: Vec<f64> = line.joint.iter().map(|position| joint[*position]).collect();
+            let shape = line.channels.line();
+            for (k, own) in line.model.linear().iter().enumerate() {
+                let amplitude_k = line.amplitudes[k] * line.channels.noise_k();
+                let value = line.model.value_at_amplitude(shape, &local, k, amplitude_k);
+                let position = line.joint[*own];
+                joint[position] = self.layout.parameters()[position].interval.nearest(value);
+            }
+        }
+        joint
+    }
+}
+
+impl<'a> Line<'a> {
+    fn new(
+        layout: &Layout,
+        channels: &'a Channels,
+        (model, map): (Model, &'a [usize]),
+        ratio: Option<usize>,
+        nonlinear: &mut Vec<usize>,
+        joint: &[f64],
+    ) -> Self {
+        let own = model.nonlinear().iter().map(|own| map[*own]).chain(ratio);
+        let depends_on: Vec<usize> = own
+            .map(|position| {
+                let known = nonlinear.iter().position(|other| *other == position);
+                known.unwrap_or_else(|| {
+                    nonlinear.push(position);
+                    nonlinear.len() - 1
+                })
+            })
+            .collect();
+        let columns = model.linear().len();
+        Self {
+            channels,
+            model,
+            joint: map,
+            depends_on,
+            ranges: amplitude_ranges(layout, channels, (model, map), joint),
+            amplitudes: [0.0; MOST_AMPLITUDES],
+            functions: vec![0.0; columns * channels.len()],
+            slopes: vec![0.0; model.nonlinear().len() * columns * channels.len()],
+        }
+    }
+
+    /// Residuals and their Jacobian by the model's nonlinear parameters at local parameters.
+    fn evaluate(&mut self, local: &[f64], residuals: &mut [f64], jacobian: Option<&mut [f64]>) {
+        let slopes = jacobian.is_some().then_some(&mut self.slopes[..]);
+        let channels = self.channels;
+        self.model.functions(
+            channels.line(),
+            channels.sampling(),
+            local,
+            &mut self.functions,
+            slopes,
+        );
+        channels.decorrelate(&mut self.functions);
+        if jacobian.is_some() {
+            channels.decorrelate(&mut self.slopes);
+        }
+        self.amplitudes = dispatch(Projection {
+            data: channels.whitened_data(),
+            functions: &self.functions,
+            slopes: &self.slopes,
+            ranges: &self.ranges,
+            residuals,
+            jacobian,
+        });
+    }
+}
+
+impl LeastSquares for Projected<'_> {
+    fn parameters(&self) -> usize {
+        self.nonlinear.len()
+    }
+
+    fn residuals(&self) -> usize {
+        let thick = self.thick.as_ref().map_or(0, |line| line.channels.len());
+        thick + self.thin.channels.len() + self.priors.len()
+    }
+
+    fn structure(&self) -> Structure {
+        let block = |line: &Line<'_>| RowBlock::new(line.channels.len(), &line.depends_on);
+        let thick = self.thick.as_ref().map_or(RowBlock::new(0, &[]), block);
+        let priors: Vec<usize> = self.priors.iter().map(|(own, _)| *own).collect();
+        Structure::new(&[
+            thick,
+            block(&self.thin),
+            RowBlock::new(priors.len(), &priors),
+        ])
+    }
+
+    fn evaluate(
+        &mut self,
+        parameters: &[f64],
+        residuals: &mut [f64],
+        jacobian: Option<&mut [f64]>,
+    ) {
+        for (position, value) in self.nonlinear.iter().zip(parameters) {
+            self.joint[*position] = *value;
+        }
+        let mut rows = residuals;
+        let mut columns = jacobian;
+        let mut local = [0.0; MAX_PARAMETERS];
+        if let Some(line) = &mut self.thick {
+            for (value, position) in local.iter_mut().zip(line.joint) {
+                *value = self.joint[*position];
+            }
+            let channels = line.channels.len();
+            let own = rows.split_off_mut(..channels).unwrap_or_default();
+            let count = channels * line.depends_on.len();
+            let own_columns = columns.as_mut().and_then(|all| all.split_off_mut(..count));
+            line.evaluate(&local[..line.joint.len()], own, own_columns);
+        }
+        let line = &mut self.thin;
+        let local = &mut local[..line.joint.len()];
+        self.layout.thin_local(&self.joint, local);
+        let channels = line.channels.len();
+        let own = rows.split_off_mut(..channels).unwrap_or_default();
+        let count = channels * line.depends_on.len();
+        let mut own_columns = columns.as_mut().and_then(|all| all.split_off_mut(..count));
+        let direct = channels * line.model.nonlinear().len();
+        let own_direct = own_columns.as_deref_mut().map(|all| &mut all[..direct]);
+        line.evaluate(local, own, own_direct);
+        if let Some(columns) = own_columns {
+            self.layout.chain_link(&self.joint, columns, channels);
+        }
+        let count = self.priors.len();
+        for (row, (own, prior)) in self.priors.iter().enumerate() {
+            rows[row] = (parameters[*own] - prior.value) / prior.err;
+            if let Some(columns) = columns.as_deref_mut() {
+                for column in 0..count {
+                    let slope = if column == row { 1.0 / prior.err } else { 0.0 };
+                    columns[column * count + row] = slope;
+                }
+            }
+        }
+    }
+}
+
+/// Ranges of a line's amplitudes, in units of the noise, from the intervals and priors of its
+/// parameters; (0, 0) of a function that it has not. `joint` gives what else amplitudes depend on.
+pub(super) fn amplitude_ranges(
+    layout: &Layout,
+    channels: &Channels,
+    (model, map): (Model, &[usize]),
+    joint: &[f64],
+) -> [(f64, f64); MOST_AMPLITUDES] {
+    let local: Vec<f64> = map.iter().map(|position| joint[*position]).collect();
+    let mut ranges = [(0.0, 0.0); MOST_AMPLITUDES];
+    for (k, (range, own)) in ranges.iter_mut().zip(model.linear()).enumerate() {
+        let parameter = &layout.parameters()[map[*own]];
+        let Interval { lower, upper } = parameter.interval;
+        let (low, high) = parameter.prior.map_or((lower, upper), |prior| {
+            let reach = PRIOR_REACH * prior.err;
+            let inside = |value: f64| value.clamp(lower, upper);
+            (inside(prior.value - reach), inside(prior.value + reach))
+        });
+        let amplitude =
+            |value| model.amplitude_k(channels.line(), &local, k, value) / channels.noise_k();
+        *range = (amplitude(low), amplitude(high));
+    }
+    ranges
+}
+
+/// The best amplitudes of one line, its residuals, and the Jacobian without its part along the free
+/// functions.
+struct Projection<'a> {
+    data: &'a [f64],
+    functions: &'a [f64],
+    slopes: &'a [f64],
+    ranges: &'a [(f64, f64); MOST_AMPLITUDES],
+    residuals: &'a mut [f64],
+    jacobian: Option<&'a mut [f64]>,
+}
+
+impl Kernel for Projection<'_> {
+    type Output = Amplitudes;
+
+    #[inline(always)]
+    #[allow(
+        clippy::inline_always,
+        reason = "has to be compiled inside each instruction-set copy"
+    )]
+    fn run<A: Arithmetic>(self) -> Amplitudes {
+        let channels = self.data.len();
+        let data = self.data;
+        let residuals = &mut self.residuals[..channels];
+        let two = self.functions.len() > channels;
+        let f = &self.functions[..channels];
+        // a model of one function meets it twice, the second time with amplitude zero
+        let h = if two {
+            &self.functions[channels..2 * channels]
+        } else {
+            f
+        };
+        let [ff, mut fh, fd] = products_with::<3, A>(f, [f, h, data]);
+        let [mut hh, mut hd] = products_with::<2, A>(h, [h, data]);
+        if !two {
+            (fh, hh, hd) = (0.0, 0.0, 0.0);
+        }
+        let products = Products {
+            squares: [ff, hh],
+            both: fh,
+            by_data: [fd, hd],
+            data: 0.0,
+        };
+        let best = products.best(self.ranges);
+        let [a, b] = best.amplitudes;
+        for i in 0..channels {
+            residuals[i] = A::mul_add(a, f[i], A::mul_add(b, h[i], -data[i]));
+        }
+        let Some(jacobian) = self.jacobian else {
+            return best.amplitudes;
+        };
+        let stride = if two { 2 } else { 1 };
+        for (p, column) in jacobian.chunks_exact_mut(channels).enumerate() {
+            let column = &mut column[..channels];
+            let first = p * stride * channels;
+            let by_f = &self.slopes[first..first + channels];
+            let second = if two { first + channels } else { first };
+            let by_h = &self.slopes[second..second + channels];
+            for i in 0..channels {
+                column[i] = A::mul_add(a, by_f[i], b * by_h[i]);
+            }
+            let [along_f, along_h] = products_with::<2, A>(column, [f, h]);
+            let along = Products {
+                by_data: [along_f, if two { along_h } else { 0.0 }],
+                ..products
+            };
+            let [by_f, by_h] = along.shares(best.free);
+            for i in 0..channels {
+                column[i] -= A::mul_add(by_f, f[i], by_h * h[i]);
+            }
+        }
+        best.amplitudes
+    }
+}
