@@ -24,6 +24,9 @@ const AVERAGING_TOLERANCE: f64 = 0.01;
 /// Most quadrature points a channel for which starts are ranked at channel centres.
 const MOST_FOR_COARSE: usize = 2;
 
+/// Fewest channels that a search is content with.
+const FEWEST_NEAR: usize = 16;
+
 /// Usable channels of one line inside the fitted range, whitened.
 #[derive(Clone, Debug)]
 pub struct Channels {
@@ -99,6 +102,38 @@ impl Channels {
             segments,
             whitener,
             noise_k: prepared.noise.rms_k,
+        }
+    }
+
+    /// Those of the channels inside a window that are close enough to be all that a search needs; all
+    /// where few are inside.
+    #[must_use]
+    pub fn near(&self, window: Window) -> Self {
+        let velocity = self.sampling.velocity_km_s();
+        let offsets = || self.line.components.iter().map(|one| one.offset_km_s);
+        let low_km_s = window.low_km_s + offsets().fold(0.0, f64::min);
+        let high_km_s = window.high_km_s + offsets().fold(0.0, f64::max);
+        let first = velocity.partition_point(|v| *v < low_km_s);
+        let end = velocity.partition_point(|v| *v <= high_km_s);
+        if end - first < FEWEST_NEAR {
+            return self.clone();
+        }
+        let data = self.whitened_data[first..end].to_vec();
+        let [data_chi2] = products(&data, [&data]);
+        let segments = (self.segments.iter())
+            .map(|segment| segment.start.max(first)..segment.end.min(end))
+            .filter(|segment| !segment.is_empty())
+            .map(|segment| segment.start - first..segment.end - first)
+            .collect();
+        Self {
+            line: self.line.clone(),
+            sampling: self.sampling.part(first..end),
+            coarse_sampling: self.coarse_sampling.part(first..end),
+            whitened_data: data,
+            data_chi2,
+            segments,
+            whitener: self.whitener.clone(),
+            noise_k: self.noise_k,
         }
     }
 

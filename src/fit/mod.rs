@@ -9,6 +9,7 @@ mod cautions;
 mod channels;
 mod joint;
 mod projected;
+mod race;
 mod starts;
 mod thin;
 
@@ -409,11 +410,15 @@ pub fn fit_pair(
     check_names(settings, &layouts)?;
     check_continuum(settings)?;
 
+    let about = starts::about(&kinematics);
+    let thick_near = thick_channels.near(about);
+    let thin_near = thin_channels.near(about);
     let channels = (&thick_channels, &thin_channels);
-    let mut scan = Scan::new(channels, &kinematics, intensity, &settings.models);
+    let near = (&thick_near, &thin_near);
+    let mut scan = Scan::new(near, &kinematics, intensity, &settings.models);
     let models = layouts
         .into_iter()
-        .map(|layout| fit_model(layout, channels, &mut scan, workspace))
+        .map(|layout| fit_model(layout, channels, near, &mut scan, workspace))
         .collect::<Result<Vec<ModelFit>, FitError>>()?;
     let adopted = ADOPTION
         .iter()
@@ -564,109 +569,52 @@ fn check_continuum(settings: &FitSettings) -> Result<(), FitError> {
     }
 }
 
-/// How far every start is followed before the best are chosen.
-const SCOUTING: Settings = Settings {
-    max_evaluations: 10,
-    chi2_tolerance: 1e-3,
+/// Where a search ends: within a thousandth of a standard error of its minimum.
+const SEARCH: Settings = Settings {
+    max_evaluations: 1000,
+    chi2_tolerance: 1e-6,
     step_tolerance: 1e-12,
     gradient_tolerance: 1e-12,
     initial_radius: 1.0,
 };
 
-/// How far the chosen ones are followed: within a thousandth of a standard error.
-const POLISHING: Settings = Settings {
-    max_evaluations: 1000,
-    chi2_tolerance: 1e-6,
-    ..SCOUTING
-};
-
-/// Scouted starts that are followed to their minimum; one more where none of them has the other sign
-/// of the inward speed.
-const POLISHED: usize = 3;
-
-/// The deepest of the scouted starts (sorted by chi2) that have not run into each other, both signs of
-/// the inward speed among them.
-fn worth_polishing(sorted: &[Minimum], v_in: Option<usize>) -> Vec<&Minimum> {
-    const SAME: f64 = 1e-3;
-    let same = |a: &Minimum, b: &Minimum| {
-        (a.chi2 - b.chi2).abs() <= SAME * a.chi2.min(b.chi2)
-            && (a.parameters.iter().zip(&b.parameters))
-                .all(|(a, b)| (a - b).abs() <= 0.02 * (1e-3 + a.abs().max(b.abs())))
-    };
-    let mut kept: Vec<&Minimum> = Vec::new();
-    for scout in sorted {
-        let other_sign = v_in.is_some_and(|index| {
-            let sign = |minimum: &Minimum| minimum.parameters[index] > 0.0;
-            kept.iter().all(|minimum| sign(minimum) != sign(scout))
-        });
-        let wanted = kept.len() < POLISHED || other_sign;
-        if wanted && !kept.iter().any(|minimum| same(minimum, scout)) {
-            kept.push(scout);
-        }
-    }
-    kept
-}
+/// A line's pair of channel sets, or the thin line's alone.
+type Lines<'a> = (Option<&'a Channels>, &'a Channels);
 
 /// The lowest minima near a layout's starts, the deepest first, and how many evaluations they took.
 ///
-/// Every start is scouted with the amplitudes solved for, the best scouts are followed to their minima,
-/// and those of the lowest chi2 on either side of zero speed are settled with all parameters free.
+/// The starts compete (see [`Race`]) on the `near` channels, those about the line, with the amplitudes
+/// solved for; the deepest minima on either side of zero speed are then settled on `all` channels with all
+/// parameters free.
 fn minima(
     layout: &Layout,
-    thick: Option<&Channels>,
-    thin: &Channels,
+    near: Lines<'_>,
+    all: Lines<'_>,
     starts: &[Vec<f64>],
     workspace: &mut Workspace,
 ) -> Result<(Vec<Minimum>, usize), FitError> {
     let Some(reference) = starts.first() else {
         return Err(FitError::Search("no start".to_owned()));
     };
-    let mut projected = Projected::new(layout, thick, thin, reference);
-    let bounds = projected.bounds();
-    let mut evaluations = 0;
-    let mut scouted = Vec::with_capacity(starts.len());
-    for start in starts {
-        let start = projected.parameters_of(start);
-        let minimum = minimize(&mut projected, &start, &bounds, &SCOUTING, workspace)?;
-        evaluations += minimum.evaluations;
-        scouted.push(minimum);
-    }
-    scouted.sort_by(|a, b| a.chi2.total_cmp(&b.chi2));
-    let v_in = layout
-        .position("v_in_km_s")
-        .and_then(|position| projected.position(position));
-    let mut followed = Vec::with_capacity(POLISHED + 1);
-    for scout in worth_polishing(&scouted, v_in) {
-        let start = &scout.parameters;
-        let minimum = minimize(&mut projected, start, &bounds, &POLISHING, workspace)?;
-        evaluations += minimum.evaluations;
-        followed.push(minimum);
-    }
-    followed.sort_by(|a, b| a.chi2.total_cmp(&b.chi2));
-    let inward = |minimum: &Minimum| v_in.map(|index| minimum.parameters[index] > 0.0);
-    let deepest = &followed[0];
-    let rival = followed
-        .iter()
-        .find(|minimum| inward(minimum) != inward(deepest));
+    let v_in = layout.position("v_in_km_s");
+    let mut projected = Projected::new(layout, near, reference);
+    let (finalists, mut evaluations) = race::finalists(&mut projected, starts, v_in)?;
     let bounds: Vec<Interval> = layout
         .parameters()
         .iter()
         .map(|parameter| parameter.interval)
         .collect();
-    let mut problem = JointProblem::new(layout, thick, thin);
-    let mut minima = Vec::with_capacity(2);
-    for minimum in [Some(deepest), rival].into_iter().flatten() {
-        let start = projected.settled(&minimum.parameters);
-        let minimum = minimize(&mut problem, &start, &bounds, &SETTLING, workspace)?;
-        evaluations += minimum.evaluations;
+    let mut problem = JointProblem::new(layout, all.0, all.1);
+    let mut minima = Vec::with_capacity(finalists.len());
+    for finalist in finalists {
+        let start = projected.settled(&finalist);
+        let minimum = minimize(&mut problem, &start, &bounds, &SEARCH, workspace)?;
+        evaluations += 1 + minimum.evaluations;
         minima.push(minimum);
     }
     minima.sort_by(|a, b| a.chi2.total_cmp(&b.chi2));
     Ok((minima, evaluations))
 }
-
-/// The end of a search, with every parameter free.
-const SETTLING: Settings = POLISHING;
 
 impl From<LeastSquaresError> for FitError {
     fn from(error: LeastSquaresError) -> Self {
@@ -678,6 +626,7 @@ impl From<LeastSquaresError> for FitError {
 fn fit_model(
     layout: Layout,
     (thick, thin): (&Channels, &Channels),
+    near: (&Channels, &Channels),
     scan: &mut Scan<'_>,
     workspace: &mut Workspace,
 ) -> Result<ModelFit, FitError> {
@@ -696,7 +645,8 @@ fn fit_model(
         });
     }
     let starts = scan.starts(&layout);
-    let (minima, evaluations) = minima(&layout, Some(thick), thin, &starts, workspace)?;
+    let near = (Some(near.0), near.1);
+    let (minima, evaluations) = minima(&layout, near, (Some(thick), thin), &starts, workspace)?;
     let best = &minima[0];
     let rival = layout.position("v_in_km_s").and_then(|index| {
         let sign = best.parameters[index].signum();

@@ -24,6 +24,9 @@ pub(super) struct Projected<'a> {
     layout: &'a Layout,
     /// Positions of the nonlinear parameters among the joint ones.
     nonlinear: Vec<usize>,
+    /// What is subtracted from each: a velocity's zero is at the line, so that steps are as long as
+    /// widths ask for, whatever the line's velocity.
+    origins: Vec<f64>,
     /// The joint parameters last evaluated, but for their amplitudes.
     joint: Vec<f64>,
     priors: Vec<(usize, Estimate)>,
@@ -53,8 +56,7 @@ impl<'a> Projected<'a> {
     /// parameters, of which those that no line is linear in and none searches over are held.
     pub fn new(
         layout: &'a Layout,
-        thick: Option<&'a Channels>,
-        thin: &'a Channels,
+        (thick, thin): (Option<&'a Channels>, &'a Channels),
         joint: &[f64],
     ) -> Self {
         let mut nonlinear = Vec::with_capacity(MAX_PARAMETERS);
@@ -70,9 +72,18 @@ impl<'a> Projected<'a> {
             .enumerate()
             .filter_map(|(own, position)| Some((own, layout.parameters()[*position].prior?)))
             .collect();
+        let origins: Vec<f64> = nonlinear
+            .iter()
+            .map(|position| {
+                let name = layout.parameters()[*position].name;
+                let is_velocity = name.starts_with("v_") && name != "v_in_km_s";
+                if is_velocity { joint[*position] } else { 0.0 }
+            })
+            .collect();
         Self {
             layout,
             nonlinear,
+            origins,
             joint: joint.to_vec(),
             priors,
             thick,
@@ -82,12 +93,20 @@ impl<'a> Projected<'a> {
 
     /// The intervals of the problem's parameters.
     pub fn bounds(&self) -> Vec<Interval> {
-        self.of_joint(|position| self.layout.parameters()[position].interval)
+        self.of_joint(|position, origin| {
+            let Interval { lower, upper } = self.layout.parameters()[position].interval;
+            Interval::new(lower - origin, upper - origin)
+        })
     }
 
     /// The problem's parameters of joint ones.
     pub fn parameters_of(&self, joint: &[f64]) -> Vec<f64> {
-        self.of_joint(|position| joint[position])
+        self.of_joint(|position, origin| joint[position] - origin)
+    }
+
+    /// Position of the thick line's optical depth among the problem's parameters.
+    pub fn tau(&self) -> Option<usize> {
+        self.position(self.layout.position("tau")?)
     }
 
     /// Position of a joint parameter among the problem's.
@@ -97,10 +116,9 @@ impl<'a> Projected<'a> {
             .position(|position| *position == joint)
     }
 
-    fn of_joint<T>(&self, value: impl Fn(usize) -> T) -> Vec<T> {
-        self.nonlinear
-            .iter()
-            .map(|position| value(*position))
+    fn of_joint<T>(&self, value: impl Fn(usize, f64) -> T) -> Vec<T> {
+        (self.nonlinear.iter().zip(&self.origins))
+            .map(|(position, origin)| value(*position, *origin))
             .collect()
     }
 
@@ -209,8 +227,8 @@ impl LeastSquares for Projected<'_> {
         residuals: &mut [f64],
         jacobian: Option<&mut [f64]>,
     ) {
-        for (position, value) in self.nonlinear.iter().zip(parameters) {
-            self.joint[*position] = *value;
+        for ((position, origin), value) in self.nonlinear.iter().zip(&self.origins).zip(parameters) {
+            self.joint[*position] = origin + value;
         }
         let mut rows = residuals;
         let mut columns = jacobian;
@@ -240,7 +258,8 @@ impl LeastSquares for Projected<'_> {
         }
         let count = self.priors.len();
         for (row, (own, prior)) in self.priors.iter().enumerate() {
-            rows[row] = (parameters[*own] - prior.value) / prior.err;
+            let value = self.joint[self.nonlinear[*own]];
+            rows[row] = (value - prior.value) / prior.err;
             if let Some(columns) = columns.as_deref_mut() {
                 for column in 0..count {
                     let slope = if column == row { 1.0 / prior.err } else { 0.0 };

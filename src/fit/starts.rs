@@ -7,8 +7,9 @@ use super::joint::Layout;
 use super::projected::amplitude_ranges;
 use crate::constants::FWHM_PER_SIGMA;
 use crate::measure::ThinLine;
-use crate::model::{BothSigns, Ladder, Model, Sampling};
+use crate::model::{BothSigns, Ladder, MOST_AMPLITUDES, Model, Sampling};
 use crate::numeric::products::products;
+use crate::spectrum::Window;
 
 /// Centre and dispersion that a search may begin with, km/s.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -32,7 +33,7 @@ pub(super) fn kinematics(thin_line: Option<&ThinLine>, thick: Kinematics) -> Vec
                 v_km_s,
                 sigma_km_s: factor * sigma,
             };
-            let mut found: Vec<Kinematics> = [1.0, 0.7, 0.45]
+            let mut found: Vec<Kinematics> = factors()
                 .into_iter()
                 .map(|factor| at(v_km_s, factor))
                 .collect();
@@ -53,17 +54,36 @@ pub(super) fn kinematics(thin_line: Option<&ThinLine>, thick: Kinematics) -> Vec
     }
 }
 
+/// How far from the centres, in the largest dispersion, the thick line reaches: the fastest candidate
+/// speed and four dispersions more.
+const REACH: f64 = 6.0;
+
+/// Velocities about a line of these kinematics; outside, candidates are zero.
+pub(super) fn about(kinematics: &[Kinematics]) -> Window {
+    let sigma_km_s = kinematics
+        .iter()
+        .map(|kinematics| kinematics.sigma_km_s)
+        .fold(0.0, f64::max);
+    let centres = || kinematics.iter().map(|kinematics| kinematics.v_km_s);
+    Window {
+        low_km_s: centres().fold(f64::INFINITY, f64::min) - REACH * sigma_km_s,
+        high_km_s: centres().fold(f64::NEG_INFINITY, f64::max) + REACH * sigma_km_s,
+    }
+}
+
 /// Inward speeds of the candidates, in dispersions, either sign.
-const SPEEDS: [f64; 6] = [0.08, 0.25, 0.5, 0.8, 1.2, 1.8];
-const OPTICAL_DEPTHS: [f64; 6] = [0.5, 1.5, 4.0, 10.0, 30.0, 80.0];
+fn factors() -> Vec<f64> { list("FACTORS", "1,0.7,0.45,1.4") }
+fn list(n: &str, d: &str) -> Vec<f64> { std::env::var(n).unwrap_or(d.to_owned()).split(',').map(|t| t.parse().unwrap()).collect() }
+fn speeds() -> Vec<f64> { list("SPEEDS", "0.08,0.25,0.5,0.8,1.2,1.8") }
+fn depths() -> Vec<f64> { list("DEPTHS", "0.5,1.5,4,10,30,80") }
 
 /// Candidates of each sign of the inward speed that become starts.
-const STARTS: usize = 4;
+fn STARTS() -> usize { static V: std::sync::OnceLock<usize> = std::sync::OnceLock::new(); *V.get_or_init(|| std::env::var("STARTS").ok().map_or(4, |t| t.parse().unwrap())) }
 
 /// Candidates closer than this in `v_in`/sigma, ln tau and ln sigma are neighbours.
-const NEAR_SPEED: f64 = 0.45;
-const NEAR_LOG: f64 = 1.3;
-const NEAR_LOG_SIGMA: f64 = 0.5;
+fn NEAR_SPEED() -> f64 { static V: std::sync::OnceLock<f64> = std::sync::OnceLock::new(); *V.get_or_init(|| std::env::var("NEAR_SPEED").ok().map_or(0.45, |t| t.parse().unwrap())) }
+fn NEAR_LOG() -> f64 { static V: std::sync::OnceLock<f64> = std::sync::OnceLock::new(); *V.get_or_init(|| std::env::var("NEAR_LOG").ok().map_or(1.3, |t| t.parse().unwrap())) }
+fn NEAR_LOG_SIGMA() -> f64 { static V: std::sync::OnceLock<f64> = std::sync::OnceLock::new(); *V.get_or_init(|| std::env::var("NEAR_LOG_SIGMA").ok().map_or(0.5, |t| t.parse().unwrap())) }
 
 /// Optical depth of a single layer at its start.
 const LAYER_TAU: f64 = 2.0;
@@ -77,6 +97,8 @@ struct Candidate {
     second: Kinematics,
     v_in_km_s: f64,
     tau: f64,
+    /// Which amplitudes are inside their ranges.
+    free: [bool; MOST_AMPLITUDES],
 }
 
 impl Candidate {
@@ -87,6 +109,7 @@ impl Candidate {
             second: kinematics,
             v_in_km_s: 0.0,
             tau: LAYER_TAU,
+            free: [true; MOST_AMPLITUDES],
         }
     }
 
@@ -97,9 +120,10 @@ impl Candidate {
     fn is_near(&self, other: &Self) -> bool {
         let (sigma, other_sigma) = (self.kinematics.sigma_km_s, other.kinematics.sigma_km_s);
         self.inward() == other.inward()
-            && (self.v_in_km_s - other.v_in_km_s).abs() < NEAR_SPEED * sigma.max(other_sigma)
-            && (self.tau / other.tau).ln().abs() < NEAR_LOG
-            && (sigma / other_sigma).ln().abs() < NEAR_LOG_SIGMA
+            && self.free == other.free
+            && (self.v_in_km_s - other.v_in_km_s).abs() < NEAR_SPEED() * sigma.max(other_sigma)
+            && (self.tau / other.tau).ln().abs() < NEAR_LOG()
+            && (sigma / other_sigma).ln().abs() < NEAR_LOG_SIGMA()
     }
 }
 
@@ -226,8 +250,10 @@ impl<'a> Scan<'a> {
                     Model::Hill => slab.peaked.of_first_alone(),
                     _ => slab.peaked,
                 };
-                let chi2 = products.best(&ranges).chi2 + self.thin_chi2[slab.kinematics];
+                let best = products.best(&ranges);
+                let chi2 = best.chi2 + self.thin_chi2[slab.kinematics];
                 Candidate {
+                    free: best.free,
                     v_in_km_s: slab.v_in_km_s,
                     tau: slab.tau,
                     ..Candidate::at(chi2, self.kinematics[slab.kinematics])
@@ -246,17 +272,17 @@ fn slab_candidates(
     let channels = thick.len();
     let sampling = thick.coarse_sampling();
     let mut candidates =
-        Vec::with_capacity(2 * kinematics.len() * SPEEDS.len() * OPTICAL_DEPTHS.len());
+        Vec::with_capacity(400);
     let mut ladder = Ladder::default();
     for (index, at) in kinematics.iter().enumerate() {
-        for speed in SPEEDS {
+        for speed in speeds() {
             let speed_km_s = speed * at.sigma_km_s;
             ladder.place(
                 thick.line(),
                 sampling,
                 (at.v_km_s, at.sigma_km_s, speed_km_s),
             );
-            for tau in OPTICAL_DEPTHS {
+            for tau in depths() {
                 let columns = &mut columns[..5 * channels];
                 let [absorbed, inward, outward, peaked_inward, peaked_outward] =
                     five_columns(columns);
@@ -313,14 +339,14 @@ fn five_columns(columns: &mut [f64]) -> [&mut [f64]; 5] {
 /// signs of the inward speed are kept.
 fn distinct(mut candidates: Vec<Candidate>, has_infall: bool) -> Vec<Candidate> {
     candidates.sort_by(|one, other| one.chi2.total_cmp(&other.chi2));
-    let mut kept: Vec<Candidate> = Vec::with_capacity(2 * STARTS);
+    let mut kept: Vec<Candidate> = Vec::with_capacity(2 * STARTS());
     for candidate in candidates {
         let of_its_sign = kept
             .iter()
             .filter(|other| candidate.inward() == other.inward())
             .count();
         let near = has_infall && kept.iter().any(|other| candidate.is_near(other));
-        if of_its_sign < STARTS && !near {
+        if of_its_sign < STARTS() && !near {
             kept.push(candidate);
         }
     }

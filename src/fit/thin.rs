@@ -83,7 +83,13 @@ pub fn fit_thin(
         });
     }
     let starts = thin_starts(&layout, &channels, intensity, thin);
-    let (minima, _) = minima(&layout, None, &channels, &starts, workspace)?;
+    let (minima, _) = minima(
+        &layout,
+        (None, &channels),
+        (None, &channels),
+        &starts,
+        workspace,
+    )?;
     let best = &minima[0];
     let peak = peak(model, &channels, best);
     let significance = peak.map_or(0.0, |peak| peak.value / peak.err);

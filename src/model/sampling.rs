@@ -63,6 +63,16 @@ impl Sampling {
         Self::new(velocity_km_s, width_km_s, 1)
     }
 
+    /// Some of the channels.
+    #[must_use]
+    pub fn part(&self, channels: std::ops::Range<usize>) -> Self {
+        Self {
+            velocity_km_s: self.velocity_km_s[channels.clone()].to_vec(),
+            width_km_s: self.width_km_s[channels].to_vec(),
+            points: self.points,
+        }
+    }
+
     /// Number of channels.
     #[must_use]
     pub fn len(&self) -> usize {
