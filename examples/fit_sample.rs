@@ -12,8 +12,8 @@ use inrush::fit::{Averaging, FitRange, FitSettings, ModelFit, ThinFit, fit_pair,
 use inrush::line::{Line, find};
 use inrush::model::Model;
 use inrush::numeric::Autoregression;
-use inrush::prepare::{Expected, PrepareSettings, Prepared, prepare_pair};
-use inrush::spectrum::{Spectrum, Window};
+use inrush::prepare::{Baseline, Expected, PrepareSettings, Prepared, prepare_pair};
+use inrush::spectrum::{Noise, Spectrum, Window};
 use serde_json::json;
 use std::collections::HashMap;
 use std::error::Error;
@@ -113,7 +113,7 @@ impl Sample {
         ];
         let velocity = thick.velocity_km_s();
         let middle_km_s = 0.5 * (velocity[0] + velocity[velocity.len() - 1]);
-        let (thick, thin) = prepared(&thick, &thin, noise_k)?;
+        let (thick, thin) = prepared(thick, thin, noise_k);
         Ok(Pair {
             thick,
             thin,
@@ -195,32 +195,57 @@ fn spectrum(path: &Path) -> Outcome<Spectrum> {
     )?)
 }
 
-/// Both lines without a baseline, with windows found as a user has them found, or where the line is too
-/// faint for that, the middle half of the band; white noise of the truth's rms; every channel counts.
-fn prepared(thick: &Spectrum, thin: &Spectrum, noise_k: [f64; 2]) -> Outcome<(Prepared, Prepared)> {
-    let automatic = PrepareSettings {
+/// Both lines as they are, with white noise of the truth's rms.
+fn prepared(thick: Spectrum, thin: Spectrum, noise_k: [f64; 2]) -> (Prepared, Prepared) {
+    let windows = windows(&thick, &thin);
+    let prepared = |spectrum: Spectrum, window: Window, rms_k: f64| {
+        let channels = spectrum.len();
+        Prepared {
+            spectrum,
+            window,
+            window_automatic: true,
+            window_cuts_line: false,
+            other_signal: Vec::new(),
+            baseline: Baseline {
+                order: None,
+                values_k: vec![0.0; channels],
+                channels,
+                clipped: 0,
+            },
+            noise: Noise {
+                rms_k,
+                channels,
+                process: Autoregression::white(),
+            },
+        }
+    };
+    (
+        prepared(thick, windows.0, noise_k[0]),
+        prepared(thin, windows.1, noise_k[1]),
+    )
+}
+
+/// Windows as they are found for a user, or the middle half of the band where none can be found.
+fn windows(thick: &Spectrum, thin: &Spectrum) -> (Window, Window) {
+    let settings = PrepareSettings {
         baseline_order: None,
         noise_order: 0,
         ..PrepareSettings::default()
     };
-    let velocity = thick.velocity_km_s();
-    let quarter = velocity.len() / 4;
-    let middle_half = PrepareSettings {
-        window: Some(Window {
+    let expected = Expected::default();
+    let found = prepare_pair((thick, &settings, &expected), (thin, &settings, &expected));
+    let middle_half = |spectrum: &Spectrum| {
+        let velocity = spectrum.velocity_km_s();
+        let quarter = velocity.len() / 4;
+        Window {
             low_km_s: velocity[quarter],
             high_km_s: velocity[velocity.len() - 1 - quarter],
-        }),
-        ..automatic.clone()
+        }
     };
-    let expected = Expected::default();
-    let pair = |settings| prepare_pair((thick, settings, &expected), (thin, settings, &expected));
-    let (mut thick, mut thin) = pair(&automatic).or_else(|_| pair(&middle_half))?;
-    for (line, rms_k) in [(&mut thick, noise_k[0]), (&mut thin, noise_k[1])] {
-        line.noise.rms_k = rms_k;
-        line.noise.process = Autoregression::white();
-        line.other_signal.clear();
+    match found {
+        Ok((thick, thin)) => (thick.window, thin.window),
+        Err(_) => (middle_half(thick), middle_half(thin)),
     }
-    Ok((thick, thin))
 }
 
 /// The comparison's bounds, as in `benches/against_scipy.py`.

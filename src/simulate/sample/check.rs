@@ -136,7 +136,7 @@ impl SampleSettings {
         refuse(
             "channels",
             &format!(
-                "{} of at least {narrowest_sigmas} dispersions, a band of {half_sigmas} on either side",
+                "{} of at least {narrowest_sigmas:.4} dispersions, a band of {half_sigmas:.4} on either side",
                 self.channels
             ),
             &format!("a band that reaches the line, up to {reach} from its middle"),
