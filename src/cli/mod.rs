@@ -85,7 +85,7 @@ pub fn main() -> ExitCode {
         Command::Check(check) => check::run(check),
         Command::Fit(fit) => fit::run(fit, &output),
         Command::Lines(lines) => lines::run(lines),
-        Command::Simulate(simulate) => simulate::run(simulate, &output),
+        Command::Simulate(simulate) => simulate::run(simulate, arguments.threads, &output),
     };
     match result {
         Ok(exit) => exit.into(),

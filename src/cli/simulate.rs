@@ -1,5 +1,7 @@
 //! `inrush simulate`.
 
+mod sample;
+
 use super::Exit;
 use super::output::Output;
 use super::values::{named, number, range};
@@ -9,6 +11,7 @@ use inrush::report::spectra::FitsAxis;
 use inrush::run::RunError;
 use inrush::run::simulate::{Formats, PairSettings, model_named, write_pair};
 use inrush::simulate::{Axis, Correlation, LineTruth, NoiseLevel, PairTruth};
+use sample::SampleArgs;
 use std::path::PathBuf;
 
 /// Make spectra whose truth is known.
@@ -21,7 +24,30 @@ pub struct SimulateArgs {
 #[derive(Debug, Subcommand)]
 enum What {
     Pair(Box<PairArgs>),
+    Sample(Box<SampleArgs>),
 }
+
+/// What a pair and a sample both have.
+#[derive(Debug, Args)]
+struct SharedArgs {
+    /// Seed of the random numbers; 1 where absent.
+    #[arg(long, value_name = "N", value_parser = clap::value_parser!(u64).range(..=i64::MAX.unsigned_abs()))]
+    seed: Option<u64>,
+    /// The thick line; HCO+ 1-0 where absent.
+    #[arg(long, value_name = "LINE", help_heading = "Lines")]
+    thick_line: Option<String>,
+    /// The thin line; H13CO+ 1-0 where absent.
+    #[arg(long, value_name = "LINE", help_heading = "Lines")]
+    thin_line: Option<String>,
+    /// Correlation of the noise from channel to channel: white, hanning, boxcar:N, linear, band-limited
+    /// or autoregressive:COEFFICIENT; white where absent.
+    #[arg(long, value_name = "KIND", value_parser = correlation, help_heading = "Noise and baseline")]
+    correlation: Option<Correlation>,
+}
+
+const SEED: u64 = 1;
+const THICK_LINE: &str = "HCO+ 1-0";
+const THIN_LINE: &str = "H13CO+ 1-0";
 
 /// Make the spectra of one pair, its truth and its run sheet.
 ///
@@ -51,26 +77,9 @@ pub struct PairArgs {
     /// Spectral axis of FITS files.
     #[arg(long, value_enum, default_value_t = FitsAxisName::Velocity)]
     fits_axis: FitsAxisName,
-    /// Seed of the noise.
-    #[arg(long, value_name = "N", default_value_t = 1, value_parser = clap::value_parser!(u64).range(..=i64::MAX.unsigned_abs()))]
-    seed: u64,
+    #[command(flatten)]
+    shared: SharedArgs,
 
-    /// The thick line.
-    #[arg(
-        long,
-        value_name = "LINE",
-        default_value = "HCO+ 1-0",
-        help_heading = "Lines"
-    )]
-    thick_line: String,
-    /// The thin line.
-    #[arg(
-        long,
-        value_name = "LINE",
-        default_value = "H13CO+ 1-0",
-        help_heading = "Lines"
-    )]
-    thin_line: String,
     /// Model of the thick line.
     #[arg(
         long,
@@ -151,10 +160,6 @@ pub struct PairArgs {
         help_heading = "Noise and baseline"
     )]
     signal_to_noise_thin: Option<f64>,
-    /// Correlation of the noise from channel to channel: white, hanning, boxcar:N, linear, band-limited
-    /// or autoregressive:COEFFICIENT.
-    #[arg(long, value_name = "KIND", default_value = "white", value_parser = correlation, help_heading = "Noise and baseline")]
-    correlation: Correlation,
     /// Offset of the baseline in the middle of the band, K.
     #[arg(
         long,
@@ -230,8 +235,18 @@ enum FitsAxisName {
 }
 
 /// Simulates and writes.
-pub fn run(arguments: &SimulateArgs, output: &Output) -> Result<Exit, RunError> {
-    let What::Pair(pair) = &arguments.what;
+pub fn run(
+    arguments: &SimulateArgs,
+    threads: Option<u16>,
+    output: &Output,
+) -> Result<Exit, RunError> {
+    match &arguments.what {
+        What::Pair(pair) => run_pair(pair, output),
+        What::Sample(sample) => sample::run(sample, threads, output),
+    }
+}
+
+fn run_pair(pair: &PairArgs, output: &Output) -> Result<Exit, RunError> {
     let files = write_pair(&pair.settings()?)?;
     for path in &files.written {
         output.note(&format!("wrote {}", path.display()));
@@ -270,16 +285,20 @@ impl PairArgs {
     }
 
     fn truth(&self) -> Result<PairTruth, RunError> {
-        let line = |which, name| find(name).map_err(|error| RunError::Line { which, error });
+        let shared = &self.shared;
+        let line = |which, name: &Option<String>, default| {
+            find(name.as_deref().unwrap_or(default))
+                .map_err(|error| RunError::Line { which, error })
+        };
         let lines = (
-            line("thick", &self.thick_line)?,
-            line("thin", &self.thin_line)?,
+            line("thick", &shared.thick_line, THICK_LINE)?,
+            line("thin", &shared.thin_line, THIN_LINE)?,
         );
         let models = (
             model_named("--model", &self.model)?,
             model_named("--thin-model", &self.thin_model)?,
         );
-        let mut truth = PairTruth::new(models, lines, self.seed);
+        let mut truth = PairTruth::new(models, lines, shared.seed.unwrap_or(SEED));
         if let Some(ratio) = self.isotope_ratio {
             truth.link(ratio);
         }
@@ -310,7 +329,7 @@ impl PairArgs {
         if let Some(noise) = level(self.noise_k, self.signal_to_noise) {
             line.noise = noise;
         }
-        line.correlation = self.correlation;
+        line.correlation = self.shared.correlation.unwrap_or_default();
         line.baseline.offset_k = self.baseline_offset_k;
         line.baseline.slope_k_per_km_s = self.baseline_slope;
         line.baseline.curvature_k_per_km2_s2 = self.baseline_curvature;

@@ -4,7 +4,7 @@
 
 use std::io::Write;
 
-use super::{ReportError, Row, Table, Value};
+use super::{Column, ReportError, Row, Table, Value};
 
 /// Writes a table as CSV (RFC 4180, but with single line feeds). Its meta data are left out.
 ///
@@ -12,18 +12,52 @@ use super::{ReportError, Row, Table, Value};
 ///
 /// [`ReportError::Stream`] where the writer fails.
 pub fn write_csv(table: &Table, writer: impl Write) -> Result<(), ReportError> {
-    let mut output = ::csv::WriterBuilder::new()
-        // Quotes a first cell that begins with `#`, which many readers take for a comment.
-        .comment(Some(b'#'))
-        .from_writer(writer);
-    output
-        .write_record(table.columns().iter().map(|column| column.name.as_str()))
-        .map_err(stream)?;
+    let mut rows = CsvRows::new(table.columns(), writer)?;
     for row in table.rows() {
-        output.write_record(cells(row)).map_err(stream)?;
+        rows.push(row)?;
     }
-    output.flush()?;
-    Ok(())
+    rows.finish()
+}
+
+/// Rows written one by one: a table that need not be held in memory.
+pub struct CsvRows<W: Write> {
+    output: ::csv::Writer<W>,
+}
+
+impl<W: Write> CsvRows<W> {
+    /// Writes the header line.
+    ///
+    /// # Errors
+    ///
+    /// [`ReportError::Stream`] where the writer fails.
+    pub fn new(columns: &[Column], writer: W) -> Result<Self, ReportError> {
+        let mut output = ::csv::WriterBuilder::new()
+            // Quotes a first cell that begins with `#`, which many readers take for a comment.
+            .comment(Some(b'#'))
+            .from_writer(writer);
+        output
+            .write_record(columns.iter().map(|column| column.name.as_str()))
+            .map_err(stream)?;
+        Ok(Self { output })
+    }
+
+    /// Writes a row, which is one of the header's columns.
+    ///
+    /// # Errors
+    ///
+    /// [`ReportError::Stream`] where the writer fails, or the row has more or fewer cells.
+    pub fn push(&mut self, row: &Row) -> Result<(), ReportError> {
+        self.output.write_record(cells(row)).map_err(stream)
+    }
+
+    /// Writes what is still held back.
+    ///
+    /// # Errors
+    ///
+    /// [`ReportError::Stream`] where the writer fails.
+    pub fn finish(mut self) -> Result<(), ReportError> {
+        Ok(self.output.flush()?)
+    }
 }
 
 fn cells(row: &Row) -> impl Iterator<Item = String> {

@@ -18,7 +18,7 @@ pub mod spectra;
 mod summary;
 mod table;
 
-pub use self::csv::write_csv;
+pub use self::csv::{CsvRows, write_csv};
 pub use ecsv::write_ecsv;
 pub use fits_table::write_fits;
 pub use json::{write_json, write_json_rows};

@@ -32,6 +32,12 @@ pub enum RunError {
         /// What stands there.
         path: PathBuf,
     },
+    /// An output directory that holds something already.
+    #[error("{}: a directory that holds files, expected an empty one or nothing", path.display())]
+    Occupied {
+        /// The directory.
+        path: PathBuf,
+    },
     /// A file that is no run sheet.
     #[error("{}{}: {message}", path.display(), line.map_or(String::new(), |line| format!(":{line}")))]
     Sheet {
@@ -201,6 +207,9 @@ impl RunError {
             }
             Self::NotADirectory { .. } => {
                 Some("give --out another name, or move the file away".to_owned())
+            }
+            Self::Occupied { .. } => {
+                Some("give --out another name: what is there is left as it is".to_owned())
             }
             Self::InSheet { error, .. } => error.hint(),
             Self::Sheet { hint, .. } | Self::Setting { hint, .. } => hint.clone(),

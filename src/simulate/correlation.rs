@@ -3,6 +3,7 @@
 use rand::Rng;
 use rand_distr::{Distribution, StandardNormal};
 use serde::{Deserialize, Serialize};
+use std::fmt;
 
 /// How the noise of one channel goes with that of its neighbours.
 ///
@@ -30,6 +31,22 @@ pub enum Correlation {
         /// Correlation of neighbours, between -1 and 1.
         coefficient: f64,
     },
+}
+
+/// As options name it.
+impl fmt::Display for Correlation {
+    fn fmt(&self, formatter: &mut fmt::Formatter<'_>) -> fmt::Result {
+        match self {
+            Self::White => formatter.write_str("white"),
+            Self::Hanning => formatter.write_str("hanning"),
+            Self::Boxcar { channels } => write!(formatter, "boxcar:{channels}"),
+            Self::Linear => formatter.write_str("linear"),
+            Self::BandLimited => formatter.write_str("band-limited"),
+            Self::Autoregressive { coefficient } => {
+                write!(formatter, "autoregressive:{coefficient}")
+            }
+        }
+    }
 }
 
 /// Independent channels on either side that band-limited interpolation takes in.

@@ -130,6 +130,16 @@ pub enum SimulateError {
         /// What it needs.
         expected: &'static str,
     },
+    /// A setting of a sample that cannot be used.
+    #[error("{quantity} {found}, expected {expected}")]
+    Sample {
+        /// The setting.
+        quantity: &'static str,
+        /// What it is.
+        found: String,
+        /// What it may be.
+        expected: String,
+    },
     /// A seed that a truth file cannot hold.
     #[error("seed {found}, expected at most {}", i64::MAX)]
     Seed {
@@ -168,7 +178,13 @@ impl SimulateError {
                 "use it with a thick line that has an optical depth and a thin layer without its own"
                     .to_owned()
             }
-            Self::Impossible { .. } | Self::Seed { .. } | Self::Spectrum { .. } => return None,
+            Self::Sample {
+                quantity: "channels",
+                ..
+            } => "choose more or wider channels".to_owned(),
+            Self::Impossible { .. }
+            | Self::Sample { .. }
+            | Self::Seed { .. } | Self::Spectrum { .. } => return None,
         })
     }
 }

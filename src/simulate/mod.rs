@@ -6,10 +6,12 @@
 mod correlation;
 mod defaults;
 mod error;
+mod sample;
 mod truth;
 
 pub use correlation::Correlation;
 pub use error::{PairLine, SimulateError};
+pub use sample::{Kind, Range, SampleSettings, SampleTruth, Slab, Spacing};
 pub use truth::{Axis, Baseline, LineTruth, NoiseLevel, PairTruth};
 
 use crate::model::{LineShape, Sampling};

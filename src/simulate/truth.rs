@@ -103,7 +103,7 @@ impl Baseline {
 const FEWEST_CHANNELS: usize = 2;
 
 /// Most channels of a spectrum.
-const MOST_CHANNELS: usize = 1_000_000;
+pub(super) const MOST_CHANNELS: usize = 1_000_000;
 
 /// Most points at which a profile is evaluated.
 const MOST_PARTS: usize = 10_000_000;
@@ -361,10 +361,10 @@ fn require(
 }
 
 /// Narrowest dispersion, km/s: thermal ones are above 0.01 km/s.
-const NARROWEST_KM_S: f64 = 1e-3;
+pub(super) const NARROWEST_KM_S: f64 = 1e-3;
 
 /// Highest temperature, K, optical depth and speed, km/s, that are taken for meant.
-const HIGHEST: f64 = 1e5;
+pub(super) const HIGHEST: f64 = 1e5;
 
 /// What a parameter of a name can be; wider than what a fit looks through by default.
 fn possible(name: &str) -> (f64, f64) {
