@@ -177,7 +177,7 @@ pub fn run(arguments: &FitArguments, output: &Output) -> Result<Exit, RunError> 
             (&record.thin_sha256, &outcome.thin),
         ];
         for (recorded, line) in changed {
-            if *recorded != line.sha256 {
+            if recorded.is_some() && *recorded != line.sha256 {
                 output.note(&format!(
                     "{}: not the file of the recorded run (its checksum differs)",
                     line.origin.path.display()
