@@ -4,7 +4,7 @@
 
 use std::io::Write;
 
-use super::{ReportError, Row, Table, Value};
+use super::{ReportError, Row, Schema, Table, Value};
 
 /// Writes a table as CSV (RFC 4180, but with single line feeds). Its meta data are left out.
 ///
@@ -12,22 +12,49 @@ use super::{ReportError, Row, Table, Value};
 ///
 /// [`ReportError::Stream`] where the writer fails.
 pub fn write_csv(table: &Table, writer: impl Write) -> Result<(), ReportError> {
-    let mut output = ::csv::WriterBuilder::new()
-        // Quotes a first cell that begins with `#`, which many readers take for a comment.
-        .comment(Some(b'#'))
-        .from_writer(writer);
-    output
-        .write_record(table.columns().iter().map(|column| column.name.as_str()))
-        .map_err(stream)?;
+    let mut rows = CsvRows::begin(table.schema(), writer)?;
     for row in table.rows() {
-        output.write_record(cells(row)).map_err(stream)?;
+        rows.push(row)?;
     }
-    output.flush()?;
+    rows.finish()?;
     Ok(())
 }
 
-fn cells(row: &Row) -> impl Iterator<Item = String> {
-    row.values().iter().map(cell)
+/// Rows written as CSV one at a time: what [`write_csv`] writes of them all.
+#[derive(Debug)]
+pub(super) struct CsvRows<W: Write> {
+    schema: Schema,
+    output: ::csv::Writer<W>,
+}
+
+impl<W: Write> CsvRows<W> {
+    /// Writes the header line.
+    pub(super) fn begin(schema: &Schema, writer: W) -> Result<Self, ReportError> {
+        let mut output = ::csv::WriterBuilder::new()
+            // Quotes a first cell that begins with `#`, which many readers take for a comment.
+            .comment(Some(b'#'))
+            .from_writer(writer);
+        let names = schema.columns().iter().map(|column| column.name.as_str());
+        output.write_record(names).map_err(stream)?;
+        Ok(Self {
+            schema: schema.clone(),
+            output,
+        })
+    }
+
+    pub(super) fn push(&mut self, row: &Row) -> Result<(), ReportError> {
+        self.schema.check(row)?;
+        let cells = row.values().iter().map(cell);
+        self.output.write_record(cells).map_err(stream)
+    }
+
+    /// Flushes and gives the writer back.
+    pub(super) fn finish(self) -> Result<W, ReportError> {
+        let writer = self.output.into_inner();
+        let mut writer = writer.map_err(::csv::IntoInnerError::into_error)?;
+        writer.flush()?;
+        Ok(writer)
+    }
 }
 
 /// A cell as text that reads back to the same value.
