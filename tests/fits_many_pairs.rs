@@ -7,14 +7,13 @@
 use inrush::fit::FitSettings;
 use inrush::line::find;
 use inrush::model::Model;
-use inrush::prepare::PrepareSettings;
 use inrush::report::{Table, columns, write_csv};
 use inrush::run::{
     BatchSettings, LineInput, PairInput, PairJob, PairOutcome, RunError, RunSheet, fit_pair,
     fit_pairs, fit_spectra, pair_row,
 };
 use inrush::simulate::{PairTruth, SimulatedLine, simulate_pair};
-use inrush::spectrum::{Origin, Spectrum};
+use inrush::spectrum::Spectrum;
 use std::convert::Infallible;
 use std::ops::ControlFlow;
 use std::path::{Path, PathBuf};
@@ -25,22 +24,13 @@ fn simulated(seed: u64) -> PairInput {
     let lines = (find("HCO+ 1-0").unwrap(), find("H13CO+ 1-0").unwrap());
     let truth = PairTruth::new((Model::Hill, Model::Gaussian), lines, seed);
     let pair = simulate_pair(&truth).unwrap();
-    let line = |simulated: SimulatedLine, truth: inrush::simulate::LineTruth| LineInput {
-        line: truth.line,
-        spectrum: simulated.spectrum,
-        prepare: PrepareSettings::default(),
-        origin: Origin {
-            path: PathBuf::from(format!("simulated {seed}")),
-            format: "simulation".to_owned(),
-        },
-        sha256: None,
-        object: None,
-        notes: Vec::new(),
+    let line = |line, simulated: SimulatedLine| {
+        LineInput::in_memory(line, simulated.spectrum, &format!("simulated {seed}"))
     };
     PairInput {
         name: Some(format!("pair {seed}")),
-        thick: line(pair.thick, truth.thick),
-        thin: line(pair.thin, truth.thin),
+        thick: line(truth.thick.line, pair.thick),
+        thin: line(truth.thin.line, pair.thin),
     }
 }
 

@@ -180,6 +180,23 @@ pub fn fit_spectra(pair: PairInput, settings: &FitSettings) -> Result<PairOutcom
 }
 
 impl LineInput {
+    /// A spectrum that no file holds, prepared with the default settings; messages call it `called`.
+    #[must_use]
+    pub fn in_memory(line: Line, spectrum: Spectrum, called: &str) -> Self {
+        Self {
+            line,
+            spectrum,
+            prepare: PrepareSettings::default(),
+            origin: Origin {
+                path: called.into(),
+                format: "in memory".to_owned(),
+            },
+            sha256: None,
+            object: None,
+            notes: Vec::new(),
+        }
+    }
+
     fn outcome(self, prepared: Prepared) -> LineOutcome {
         LineOutcome {
             line: self.line,
