@@ -4,7 +4,8 @@
 //!
 //! Fits PAIRS (10,000) simulated pairs of 200 channels a line in blocks, each block with one thread and
 //! with two, one after the other, so that a machine whose speed drifts treats both alike. Reading is
-//! left out; preparing, measuring, fitting and the row of results are not.
+//! left out; preparing, measuring, fitting and the row of results are not. Processor time (as Linux
+//! counts it) tells what sharing out costs where other programs take the cores.
 #![allow(
     clippy::print_stdout,
     clippy::unwrap_used,
@@ -35,26 +36,30 @@ fn main() {
     let survey = Survey::draw().unwrap();
     let block = pairs.div_ceil(BLOCKS);
     let mut answers = Answers::default();
-    let mut seconds = [0.0; 2];
+    let (mut seconds, mut processor) = ([0.0; 2], [0.0; 2]);
     let mut ratios = Vec::new();
     for first in (0..pairs).step_by(usize::try_from(block).unwrap()) {
         let numbers = first..pairs.min(first + block);
-        let (one, rows) = timed(&survey, numbers.clone(), 1);
-        let (two, same) = timed(&survey, numbers.clone(), 2);
+        let ([one, one_processor], rows) = timed(&survey, numbers.clone(), 1);
+        let ([two, two_processor], same) = timed(&survey, numbers.clone(), 2);
         for (row, same) in rows.iter().zip(&same) {
             assert_eq!(row.values(), same.values(), "threads change a result");
         }
         answers.check(&survey, numbers, &rows);
-        seconds[0] += one;
-        seconds[1] += two;
+        seconds = [seconds[0] + one, seconds[1] + two];
+        processor = [processor[0] + one_processor, processor[1] + two_processor];
         ratios.push(one / two);
     }
     ratios.sort_by(f64::total_cmp);
-    let each_ms = seconds.map(|seconds| 1e3 * seconds / pairs as f64);
-    println!("one thread   {:8.3} ms a pair, {pairs} pairs", each_ms[0]);
-    println!("two threads  {:8.3} ms a pair", each_ms[1]);
+    for (name, seconds, processor) in [
+        ("one thread ", seconds[0], processor[0]),
+        ("two threads", seconds[1], processor[1]),
+    ] {
+        let [wall_ms, processor_ms] = [seconds, processor].map(|time| 1e3 * time / pairs as f64);
+        println!("{name}  {wall_ms:8.3} ms a pair, {processor_ms:.3} ms of a processor");
+    }
     println!(
-        "one over two {:8.3}, in blocks {:.3} to {:.3}, median {:.3}",
+        "one over two {:8.3} for {pairs} pairs, in blocks {:.3} to {:.3}, median {:.3}",
         seconds[0] / seconds[1],
         ratios[0],
         ratios[ratios.len() - 1],
@@ -63,8 +68,8 @@ fn main() {
     answers.conclude(pairs);
 }
 
-/// Seconds for a block, and its rows in order.
-fn timed(survey: &Survey, numbers: Range<u64>, threads: usize) -> (f64, Vec<Row>) {
+/// Seconds for a block by the clock and of processors, and its rows in order.
+fn timed(survey: &Survey, numbers: Range<u64>, threads: usize) -> ([f64; 2], Vec<Row>) {
     let settings = Arc::new(FitSettings::default());
     let jobs: Vec<PairJob> = numbers
         .map(|number| PairJob::Spectra {
@@ -73,7 +78,7 @@ fn timed(survey: &Survey, numbers: Range<u64>, threads: usize) -> (f64, Vec<Row>
         })
         .collect();
     let mut rows = Vec::with_capacity(jobs.len());
-    let begun = Instant::now();
+    let (begun, processor) = (Instant::now(), processor_seconds());
     let ended = fit_pairs(
         &BatchSettings::with_threads(threads),
         jobs,
@@ -85,8 +90,23 @@ fn timed(survey: &Survey, numbers: Range<u64>, threads: usize) -> (f64, Vec<Row>
     )
     .unwrap();
     let seconds = begun.elapsed().as_secs_f64();
+    let processor = processor_seconds() - processor;
     assert_eq!(ended, ControlFlow::Continue(rows.len() as u64));
-    (seconds, rows)
+    ([seconds, processor], rows)
+}
+
+/// Processor time of this process so far, s, user and system; `NaN` where the system is not Linux.
+fn processor_seconds() -> f64 {
+    const TICKS_PER_S: f64 = 100.0;
+    let text = std::fs::read_to_string("/proc/self/stat").unwrap_or_default();
+    // fields 14 and 15 of proc(5), of which the first two end with the name's bracket
+    let after = text.rsplit_once(") ").map_or("", |(_, after)| after);
+    let fields = after.split(' ').skip(11).take(2);
+    let ticks = fields.map(|field| field.parse().unwrap_or(f64::NAN));
+    ticks
+        .reduce(|user, system| user + system)
+        .unwrap_or(f64::NAN)
+        / TICKS_PER_S
 }
 
 /// How many speeds have an error, and how many of those are within 1, 2 and 3 of it.

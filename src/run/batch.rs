@@ -96,9 +96,9 @@ impl BatchSettings {
     ///
     /// `state` makes what a thread keeps from item to item, such as a workspace; it is made anew after a
     /// panic. `sink` ends the batch early by [`ControlFlow::Break`]: items that are being worked on are
-    /// finished and dropped, no other is begun. `items` and `sink` are called from one thread at a
-    /// time, which works on items too while there is nothing to draw or hand on: what takes long belongs
-    /// into `work`. A panic of `items` or `sink` goes through to the caller.
+    /// finished and dropped, no other is begun. `items` and `sink` are called from one thread, which works
+    /// on items too while there is nothing to draw or hand on: what takes long or needs much memory, such
+    /// as a file's content, belongs into `work`. A panic of `items` or `sink` goes through to the caller.
     ///
     /// Returns the number of items, or what `sink` broke with.
     ///
