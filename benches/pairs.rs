@@ -6,12 +6,12 @@
 )]
 
 use criterion::{Criterion, Throughput, criterion_group, criterion_main};
+use inrush::fit::Workspace;
 use inrush::fit::{FitRange, FitSettings, fit_pair, fit_thin};
 use inrush::line::{Line, find};
 use inrush::measure::{MeasureSettings, measure};
 use inrush::model::Model;
 use inrush::numeric::exponential::exp_in_place;
-use inrush::numeric::least_squares::Workspace;
 use inrush::prepare::{Expected, PrepareSettings, Prepared, prepare_pair};
 use inrush::simulate::{PairTruth, simulate_pair};
 use inrush::spectrum::Spectrum;

@@ -8,7 +8,9 @@
 //! fit of one model with everything that it needs but the thin line's own fit, `thin_seconds` that one.
 #![allow(clippy::print_stdout, clippy::print_stderr)]
 
-use inrush::fit::{Averaging, FitRange, FitSettings, ModelFit, ThinFit, fit_pair, fit_thin};
+use inrush::fit::{
+    Averaging, FitRange, FitSettings, ModelFit, ThinFit, Workspace, fit_pair, fit_thin,
+};
 use inrush::line::{Line, find};
 use inrush::model::Model;
 use inrush::numeric::Autoregression;
@@ -139,13 +141,14 @@ struct PairFits {
 
 impl Pair {
     fn fit(&self) -> Outcome<PairFits> {
+        let mut workspace = Workspace::new();
         let start = seconds();
-        let thin_fit = fit_thin(&self.thin, &self.lines.1, &self.settings[0])?;
+        let thin_fit = fit_thin(&self.thin, &self.lines.1, &self.settings[0], &mut workspace)?;
         let thin_seconds = seconds() - start;
         let mut models = Vec::with_capacity(self.settings.len());
         for settings in &self.settings {
             let start = seconds();
-            let fit = self.fit_model(&thin_fit, settings)?;
+            let fit = self.fit_model(&thin_fit, settings, &mut workspace)?;
             models.push((fit, seconds() - start));
         }
         Ok(PairFits {
@@ -154,10 +157,22 @@ impl Pair {
         })
     }
 
-    fn fit_model(&self, thin_fit: &ThinFit, settings: &FitSettings) -> Outcome<ModelFit> {
+    fn fit_model(
+        &self,
+        thin_fit: &ThinFit,
+        settings: &FitSettings,
+        workspace: &mut Workspace,
+    ) -> Outcome<ModelFit> {
         let lines = (&self.lines.0, &self.lines.1);
         let thin_line = thin_fit.line.as_ref();
-        let mut fit = fit_pair(&self.thick, &self.thin, lines, thin_line, settings)?;
+        let mut fit = fit_pair(
+            &self.thick,
+            &self.thin,
+            lines,
+            thin_line,
+            settings,
+            workspace,
+        )?;
         Ok(fit.models.swap_remove(0))
     }
 }

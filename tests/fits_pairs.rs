@@ -4,12 +4,12 @@
     reason = "a test stops where its data cannot be read"
 )]
 
+use inrush::fit::Workspace;
 use inrush::fit::{
     Averaging, Channels, FitRange, FitSettings, JointProblem, Layout, fit_pair, fit_thin,
 };
 use inrush::line::{Component, Line};
 use inrush::model::{LineShape, Model, Sampling};
-use inrush::numeric::least_squares::Workspace;
 use inrush::numeric::least_squares::{Interval, check_jacobian};
 use inrush::numeric::{Autoregression, Estimate};
 use inrush::prepare::{Baseline, Prepared};

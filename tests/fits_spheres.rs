@@ -4,12 +4,12 @@
     reason = "a test stops where its data cannot be read"
 )]
 
+use inrush::fit::Workspace;
 use inrush::fit::{Averaging, FitRange, FitSettings, fit_pair};
 use inrush::line::{Component, Line};
 use inrush::measure::ThinLine;
 use inrush::model::Model;
 use inrush::numeric::Autoregression;
-use inrush::numeric::least_squares::Workspace;
 use inrush::prepare::{Baseline, Prepared};
 use inrush::spectrum::{Noise, Spectrum, Window};
 use std::collections::HashMap;

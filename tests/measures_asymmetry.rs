@@ -5,10 +5,10 @@
 #![allow(clippy::unwrap_used, clippy::print_stdout)]
 
 use inrush::constants::{FWHM_PER_SIGMA, photon_temperature_k};
+use inrush::fit::Workspace;
 use inrush::fit::{FitSettings, fit_thin};
 use inrush::line::{Component, find};
 use inrush::measure::{MeasureSettings, Measures, ProfileClass, ThinLine, TwoPeaks, measure};
-use inrush::numeric::least_squares::Workspace;
 use inrush::numeric::{Autoregression, Estimate};
 use inrush::prepare::{Baseline, Expected, PrepareSettings, Prepared, prepare_pair};
 use inrush::spectrum::{Noise, Spectrum, Window};

@@ -4,12 +4,12 @@
 #![allow(clippy::unwrap_used)]
 
 use inrush::constants::FWHM_PER_SIGMA;
+use inrush::fit::Workspace;
 use inrush::fit::{FitSettings, Layout, fit_pair};
 use inrush::line::{Component, Line};
 use inrush::measure::{MeasureSettings, ThinLine, measure};
 use inrush::model::{LineShape, Model, Sampling};
 use inrush::numeric::least_squares::Interval;
-use inrush::numeric::least_squares::Workspace;
 use inrush::numeric::{Autoregression, Estimate};
 use inrush::prepare::{Baseline, Prepared};
 use inrush::simulate::{NoiseLevel, PairTruth, simulate_pair};

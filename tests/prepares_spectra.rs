@@ -2,13 +2,13 @@
 
 #![allow(clippy::unwrap_used, clippy::print_stdout)]
 
+use inrush::fit::Workspace;
 use inrush::fit::{
     Averaging, Caution, Channels, FitRange, FitSettings, PairFacts, cautions, fit_pair, fit_thin,
 };
 use inrush::line::{Component, find};
 use inrush::measure::{MeasureSettings, measure};
 use inrush::model::{LineShape, Model};
-use inrush::numeric::least_squares::Workspace;
 use inrush::prepare::{
     Expected, PairLine, PrepareError, PrepareSettings, Prepared, prepare, prepare_pair, rebin,
 };

@@ -1,11 +1,11 @@
 //! Simulated pairs look as they should, and what was put in can be got out again.
 #![allow(clippy::unwrap_used, clippy::print_stdout)] // What fails below a test fails the test.
 
+use inrush::fit::Workspace;
 use inrush::fit::{FitSettings, fit_pair, fit_thin};
 use inrush::line::{Component, Line, find};
 use inrush::model::Model;
 use inrush::numeric::Autoregression;
-use inrush::numeric::least_squares::Workspace;
 use inrush::prepare::{Expected, PrepareSettings, prepare_pair};
 use inrush::read::{ReadOptions, read_spectrum};
 use inrush::report::spectra::FitsAxis;

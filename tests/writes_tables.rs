@@ -4,8 +4,8 @@
 use inrush::numeric::Estimate;
 use inrush::report::files::write_atomically;
 use inrush::report::{
-    Column, Kind, ReportError, Row, Schema, Table, Value, columns, summary, write_csv, write_ecsv,
-    write_fits, write_json, write_json_rows,
+    Column, Kind, ReportError, Row, Schema, Table, TableFiles, Value, columns, summary, write_csv,
+    write_ecsv, write_fits, write_json, write_json_rows,
 };
 
 /// Numbers that lose bits in careless writers.
@@ -480,6 +480,83 @@ fn a_missing_or_taken_place_is_an_error_with_the_path() {
         assert!(error.hint().is_some());
     }
     assert!(names_in(directory.path()).is_empty());
+}
+
+/// A table written a row at a time has the bytes of one written whole.
+fn check_row_by_row(table: &Table) {
+    let directory = tempfile::tempdir().unwrap();
+    let meta = table.meta.clone();
+    let mut files = TableFiles::begin(directory.path(), "table", table.schema(), meta).unwrap();
+    for row in table.rows() {
+        files.push(row).unwrap();
+    }
+    assert!(
+        (names_in(directory.path()).iter()).all(|name| name.starts_with(".unfinished-")),
+        "nothing has its name before the end"
+    );
+    let paths = files.finish().unwrap();
+    let whole = [
+        bytes(|output| write_csv(table, output)),
+        bytes(|output| write_ecsv(table, output)),
+        bytes(|output| write_fits(table, output)),
+    ];
+    for (path, whole) in paths.iter().zip(whole) {
+        assert!(std::fs::read(path).unwrap() == whole, "{}", path.display());
+    }
+    let mut names = names_in(directory.path());
+    names.sort_unstable();
+    assert_eq!(names, ["table.csv", "table.ecsv", "table.fits"]);
+}
+
+#[test]
+fn rows_one_at_a_time_make_the_bytes_of_the_whole_table() {
+    let mut small = small_table();
+    check_row_by_row(&small);
+    small.meta = vec![
+        ("seed".to_owned(), Value::Integer(7)),
+        ("note".to_owned(), Value::from("caf\u{e9}")),
+    ];
+    check_row_by_row(&small);
+    check_row_by_row(&Table::new(small_schema()));
+    // Many chunks of a FITS file, with the widest text at the end.
+    let mut long = Table::new(columns::results());
+    for number in 0..3000u32 {
+        let mut row = pair();
+        row.set("id", format!("clump {number}")).unwrap();
+        row.set("v_in_km_s", f64::from(number).sin()).unwrap();
+        if number == 2999 {
+            row.set("cautions", "x".repeat(400)).unwrap();
+        }
+        long.push(row).unwrap();
+    }
+    check_row_by_row(&long);
+}
+
+#[test]
+fn a_table_that_is_not_finished_leaves_old_files_and_nothing_else() {
+    let directory = tempfile::tempdir().unwrap();
+    std::fs::write(directory.path().join("table.fits"), "old").unwrap();
+    let table = small_table();
+    let mut files =
+        TableFiles::begin(directory.path(), "table", table.schema(), Vec::new()).unwrap();
+    files.push(&table.rows()[0]).unwrap();
+    let foreign = files.push(&pair()).unwrap_err();
+    assert!(matches!(foreign, ReportError::ForeignRow { .. }));
+    drop(files);
+    assert_eq!(names_in(directory.path()), ["table.fits"]);
+
+    let nowhere = directory.path().join("nowhere");
+    let error = TableFiles::begin(&nowhere, "table", table.schema(), Vec::new()).unwrap_err();
+    let named = nowhere.join("table.csv");
+    assert!(error.to_string().starts_with(&named.display().to_string()));
+}
+
+/// Where there is a device that is always full.
+#[cfg(target_os = "linux")]
+#[test]
+fn a_full_disk_is_an_error() {
+    let error = write_csv(&small_table(), std::fs::File::create("/dev/full").unwrap()).unwrap_err();
+    assert!(matches!(error, ReportError::Stream(_)));
 }
 
 #[cfg(unix)]

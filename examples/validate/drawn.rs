@@ -2,11 +2,11 @@
 
 use super::spheres::TRANSPARENT;
 use super::statistics::{percent, rms, spread};
+use inrush::fit::Workspace;
 use inrush::fit::{Caution, FitSettings, PairFacts, cautions, fit_pair, fit_thin};
 use inrush::line::{Line, find};
 use inrush::measure::{MeasureSettings, measure};
 use inrush::model::Model;
-use inrush::numeric::least_squares::Workspace;
 use inrush::prepare::{Expected, PrepareSettings, prepare_pair};
 use inrush::simulate::{Axis, Correlation, NoiseLevel, PairTruth, simulate_pair};
 use rand::{RngExt as _, SeedableRng as _};

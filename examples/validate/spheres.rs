@@ -2,6 +2,7 @@
 //! truth.
 
 use super::statistics::{percent, quantile, spread};
+use inrush::fit::Workspace;
 use inrush::fit::{Caution, ModelFit};
 use inrush::measure::ProfileClass;
 use inrush::model::Model;
@@ -106,7 +107,8 @@ pub fn results(models: &[&str]) -> Result<Vec<Sphere>, Box<dyn Error>> {
         if !models.is_empty() {
             sheet.fit.models = models.iter().map(|name| (*name).to_owned()).collect();
         }
-        let outcome = fit_pair(&sheet, &folder()).map_err(|error| error.to_string());
+        let outcome =
+            fit_pair(&sheet, &folder(), &mut Workspace::new()).map_err(|error| error.to_string());
         spheres.push(Sphere { truth, outcome });
     }
     Ok(spheres)

@@ -4,6 +4,7 @@ use super::Exit;
 use super::output::Output;
 use super::values::{named, numbers, range};
 use clap::Args;
+use inrush::fit::Workspace;
 use inrush::report;
 use inrush::run::{
     Beam, Given, LineSection, NumberOrWord, RangeOrWord, RunError, RunSheet, check_directory,
@@ -169,15 +170,15 @@ pub fn run(arguments: &FitArguments, output: &Output) -> Result<Exit, RunError> 
     if let Some(directory) = &arguments.out {
         check_directory(directory)?;
     }
-    let outcome =
-        fit_pair(&sheet, &base).map_err(|error| error.of_sheet(arguments.sheet.as_deref()))?;
+    let outcome = fit_pair(&sheet, &base, &mut Workspace::new())
+        .map_err(|error| error.of_sheet(arguments.sheet.as_deref()))?;
     if let Some(record) = &sheet.record {
         let changed = [
             (&record.thick_sha256, &outcome.thick),
             (&record.thin_sha256, &outcome.thin),
         ];
         for (recorded, line) in changed {
-            if *recorded != line.sha256 {
+            if recorded.is_some() && *recorded != line.sha256 {
                 output.note(&format!(
                     "{}: not the file of the recorded run (its checksum differs)",
                     line.origin.path.display()

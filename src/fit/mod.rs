@@ -12,11 +12,13 @@ mod projected;
 mod race;
 mod starts;
 mod thin;
+mod workspace;
 
 pub use cautions::{Caution, PairFacts, cautions};
 pub use channels::{Averaging, Channels};
 pub use joint::{JointParameter, JointProblem, Layout};
 pub use thin::{ThinFit, fit_thin};
+pub use workspace::Workspace;
 
 use crate::constants::FWHM_PER_SIGMA;
 use crate::line::Line;
@@ -24,8 +26,7 @@ use crate::measure::ThinLine;
 use crate::model::{LineShape, Model, Sampling};
 use crate::numeric::Estimate;
 use crate::numeric::least_squares::{
-    Interval, LeastSquaresError, MAX_PARAMETERS, Minimum, Settings, Side, Termination, Workspace,
-    minimize,
+    Interval, LeastSquaresError, MAX_PARAMETERS, Minimum, Settings, Side, Termination, minimize,
 };
 use crate::prepare::Prepared;
 use crate::spectrum::Window;
@@ -410,16 +411,23 @@ pub fn fit_pair(
     check_names(settings, &layouts)?;
     check_continuum(settings)?;
 
-    let about = starts::about(&kinematics);
-    let thick_near = thick_channels.near(about);
-    let thin_near = thin_channels.near(about);
+    let (thick_about, thin_about) = starts::about(&kinematics);
+    let thick_near = thick_channels.near(thick_about);
+    let thin_near = thin_channels.near(thin_about);
     let channels = (&thick_channels, &thin_channels);
     let near = (&thick_near, &thin_near);
-    let mut scan = Scan::new(near, &kinematics, intensity, &settings.models);
+    let mut scan = Scan::new(
+        near,
+        &kinematics,
+        intensity,
+        &settings.models,
+        std::mem::take(&mut workspace.columns),
+    );
     let models = layouts
         .into_iter()
         .map(|layout| fit_model(layout, channels, near, &mut scan, workspace))
         .collect::<Result<Vec<ModelFit>, FitError>>()?;
+    workspace.columns = scan.into_columns();
     let adopted = ADOPTION
         .iter()
         .filter_map(|model| models.iter().position(|fit| fit.model == *model))
@@ -596,9 +604,9 @@ fn minima(
     let Some(reference) = starts.first() else {
         return Err(FitError::Search("no start".to_owned()));
     };
-    let v_in = layout.position("v_in_km_s");
-    let mut projected = Projected::new(layout, near, reference);
-    let (finalists, mut evaluations) = race::finalists(&mut projected, starts, v_in)?;
+    let mut projected = Projected::new(layout, near, reference, &mut workspace.lines);
+    let (finalists, mut evaluations) =
+        race::finalists(&mut projected, starts, &mut workspace.runners)?;
     let bounds: Vec<Interval> = layout
         .parameters()
         .iter()
@@ -608,10 +616,17 @@ fn minima(
     let mut minima = Vec::with_capacity(finalists.len());
     for finalist in finalists {
         let start = projected.settled(&finalist);
-        let minimum = minimize(&mut problem, &start, &bounds, &SEARCH, workspace)?;
+        let minimum = minimize(
+            &mut problem,
+            &start,
+            &bounds,
+            &SEARCH,
+            &mut workspace.search,
+        )?;
         evaluations += 1 + minimum.evaluations;
         minima.push(minimum);
     }
+    workspace.lines = projected.into_buffers();
     minima.sort_by(|a, b| a.chi2.total_cmp(&b.chi2));
     Ok((minima, evaluations))
 }

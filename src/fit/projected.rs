@@ -9,6 +9,7 @@
 use super::amplitudes::{Amplitudes, Products};
 use super::channels::Channels;
 use super::joint::Layout;
+use super::workspace::LineBuffers;
 use crate::model::{MOST_AMPLITUDES, Model};
 use crate::numeric::Estimate;
 use crate::numeric::dispatch::{Arithmetic, Kernel, dispatch};
@@ -47,8 +48,7 @@ struct Line<'a> {
     /// of the noise.
     ranges: [(f64, f64); MOST_AMPLITUDES],
     amplitudes: Amplitudes,
-    functions: Vec<f64>,
-    slopes: Vec<f64>,
+    buffers: LineBuffers,
 }
 
 impl<'a> Projected<'a> {
@@ -58,15 +58,25 @@ impl<'a> Projected<'a> {
         layout: &'a Layout,
         (thick, thin): (Option<&'a Channels>, &'a Channels),
         joint: &[f64],
+        buffers: &mut [LineBuffers; 2],
     ) -> Self {
+        let [of_thick, of_thin] = buffers.each_mut().map(std::mem::take);
         let mut nonlinear = Vec::with_capacity(MAX_PARAMETERS);
         let thick = thick.map(|channels| {
             let (model, map) = layout.thick_line();
-            Line::new(layout, channels, (model, map), None, &mut nonlinear, joint)
+            let line = (channels, model, map);
+            Line::new(layout, line, None, &mut nonlinear, joint, of_thick)
         });
         let (model, map) = layout.thin_line();
         let ratio = layout.link().map(|(_, ratio)| ratio);
-        let thin = Line::new(layout, thin, (model, map), ratio, &mut nonlinear, joint);
+        let thin = Line::new(
+            layout,
+            (thin, model, map),
+            ratio,
+            &mut nonlinear,
+            joint,
+            of_thin,
+        );
         let priors = nonlinear
             .iter()
             .enumerate()
@@ -104,13 +114,15 @@ impl<'a> Projected<'a> {
         self.of_joint(|position, origin| joint[position] - origin)
     }
 
-    /// Position of the thick line's optical depth among the problem's parameters.
-    pub fn tau(&self) -> Option<usize> {
-        self.position(self.layout.position("tau")?)
+    /// Gives the buffers back.
+    pub fn into_buffers(self) -> [LineBuffers; 2] {
+        let of_thick = self.thick.map(|line| line.buffers).unwrap_or_default();
+        [of_thick, self.thin.buffers]
     }
 
-    /// Position of a joint parameter among the problem's.
-    pub fn position(&self, joint: usize) -> Option<usize> {
+    /// Position of a joint parameter, by name, among the problem's.
+    pub fn position_of(&self, name: &str) -> Option<usize> {
+        let joint = self.layout.position(name)?;
         self.nonlinear
             .iter()
             .position(|position| *position == joint)
@@ -145,11 +157,11 @@ impl<'a> Projected<'a> {
 impl<'a> Line<'a> {
     fn new(
         layout: &Layout,
-        channels: &'a Channels,
-        (model, map): (Model, &'a [usize]),
+        (channels, model, map): (&'a Channels, Model, &'a [usize]),
         ratio: Option<usize>,
         nonlinear: &mut Vec<usize>,
         joint: &[f64],
+        mut buffers: LineBuffers,
     ) -> Self {
         let own = model.nonlinear().iter().map(|own| map[*own]).chain(ratio);
         let depends_on: Vec<usize> = own
@@ -161,7 +173,11 @@ impl<'a> Line<'a> {
                 })
             })
             .collect();
-        let columns = model.linear().len();
+        let numbers = model.linear().len() * channels.len();
+        buffers.functions.resize(numbers, 0.0);
+        buffers
+            .slopes
+            .resize(model.nonlinear().len() * numbers, 0.0);
         Self {
             channels,
             model,
@@ -169,30 +185,29 @@ impl<'a> Line<'a> {
             depends_on,
             ranges: amplitude_ranges(layout, channels, (model, map), joint),
             amplitudes: [0.0; MOST_AMPLITUDES],
-            functions: vec![0.0; columns * channels.len()],
-            slopes: vec![0.0; model.nonlinear().len() * columns * channels.len()],
+            buffers,
         }
     }
 
     /// Residuals and their Jacobian by the model's nonlinear parameters at local parameters.
     fn evaluate(&mut self, local: &[f64], residuals: &mut [f64], jacobian: Option<&mut [f64]>) {
-        let slopes = jacobian.is_some().then_some(&mut self.slopes[..]);
+        let slopes = jacobian.is_some().then_some(&mut self.buffers.slopes[..]);
         let channels = self.channels;
         self.model.functions(
             channels.line(),
             channels.sampling(),
             local,
-            &mut self.functions,
+            &mut self.buffers.functions,
             slopes,
         );
-        channels.decorrelate(&mut self.functions);
+        channels.decorrelate(&mut self.buffers.functions);
         if jacobian.is_some() {
-            channels.decorrelate(&mut self.slopes);
+            channels.decorrelate(&mut self.buffers.slopes);
         }
         self.amplitudes = dispatch(Projection {
             data: channels.whitened_data(),
-            functions: &self.functions,
-            slopes: &self.slopes,
+            functions: &self.buffers.functions,
+            slopes: &self.buffers.slopes,
             ranges: &self.ranges,
             residuals,
             jacobian,
@@ -227,7 +242,8 @@ impl LeastSquares for Projected<'_> {
         residuals: &mut [f64],
         jacobian: Option<&mut [f64]>,
     ) {
-        for ((position, origin), value) in self.nonlinear.iter().zip(&self.origins).zip(parameters) {
+        for ((position, origin), value) in self.nonlinear.iter().zip(&self.origins).zip(parameters)
+        {
             self.joint[*position] = origin + value;
         }
         let mut rows = residuals;

@@ -3,106 +3,120 @@
 
 use super::projected::Projected;
 use super::{FitError, SEARCH};
-use crate::numeric::least_squares::{Descent, Workspace};
+use crate::numeric::least_squares::{Descent, Interval, Settings, Termination, Workspace};
 
-/// Steps of each round and how many stay in after it.
-const ROUNDS: [(usize, usize); 3] = [(3, 5), (3, 3), (1000, 2)];
+/// Steps of each round, and how many stay in after it.
+const ROUNDS: [Round; 3] = [
+    Round { steps: 2, stay: 8 },
+    Round { steps: 2, stay: 5 },
+    Round { steps: 3, stay: 3 },
+];
 
-struct Runner {
-    descent: Descent,
-    workspace: Workspace,
-    ended: bool,
+/// Most further steps of the last in the race: one that creeps that long is no match for the settled fit,
+/// which goes on where it stopped.
+const LAST: Round = Round { steps: 40, stay: 2 };
+
+struct Round {
+    steps: usize,
+    stay: usize,
 }
 
-impl Runner {
-    fn inward(&self, v_in: Option<usize>) -> Option<bool> {
-        v_in.map(|index| self.descent.parameters()[index] > 0.0)
-    }
-
-    /// Whether it has run into another one.
-    fn is_at(&self, other: &Self) -> bool {
-        let (a, b) = (self.descent.chi2(), other.descent.chi2());
-        (a - b).abs() <= SAME_CHI2 * a.min(b)
-            && (self.descent.parameters().iter())
-                .zip(other.descent.parameters())
-                .all(|(a, b)| (a - b).abs() <= SAME_PARAMETER * (1e-3 + a.abs().max(b.abs())))
-    }
-}
+/// The first steps are short, so that a descent stays in the valley where it began.
+const FIRST: Settings = Settings {
+    initial_radius: 0.25,
+    ..SEARCH
+};
 
 /// Relative differences below which two descents are in one place.
 const SAME_CHI2: f64 = 1e-3;
 const SAME_PARAMETER: f64 = 0.02;
 
-/// Where the deepest descents ended, the deepest first (nonlinear parameters; of `v_in`, a joint position,
-/// both signs if there are such), and the number of evaluations.
+/// Optical depth below which the two halves can nearly be exchanged: there is a minimum with the other
+/// sign of the inward speed as deep to within little.
+const EXCHANGEABLE: f64 = 1.0;
+
+/// A descent under way.
+struct Runner<'a> {
+    descent: Descent,
+    workspace: &'a mut Workspace,
+    ended: Option<Termination>,
+}
+
+impl Runner<'_> {
+    fn follow(&mut self, problem: &mut Projected<'_>, bounds: &[Interval], steps: usize) {
+        for _ in 0..steps {
+            if self.ended.is_some() {
+                return;
+            }
+            self.ended = self.descent.step(problem, bounds, &SEARCH, self.workspace);
+        }
+    }
+
+    fn value(&self, index: Option<usize>) -> Option<f64> {
+        index.map(|index| self.descent.parameters()[index])
+    }
+
+    /// Whether it has run into another one.
+    fn is_at(&self, other: &Self) -> bool {
+        let (a, b) = (self.descent.chi2(), other.descent.chi2());
+        let same =
+            |(a, b): (&f64, &f64)| (a - b).abs() <= SAME_PARAMETER * (1e-3 + a.abs().max(b.abs()));
+        (a - b).abs() <= SAME_CHI2 * a.min(b)
+            && (self.descent.parameters().iter())
+                .zip(other.descent.parameters())
+                .all(same)
+    }
+}
+
+/// Where the deepest descents ended, the deepest first (parameters of `problem`; of the inward speed both
+/// signs if both are there), and the number of evaluations.
 pub(super) fn finalists(
     problem: &mut Projected<'_>,
     starts: &[Vec<f64>],
-    v_in: Option<usize>,
+    workspaces: &mut Vec<Workspace>,
 ) -> Result<(Vec<Vec<f64>>, usize), FitError> {
-    let v_in = v_in.and_then(|position| problem.position(position));
+    let v_in = problem.position_of("v_in_km_s");
+    let tau = problem.position_of("tau");
     let bounds = problem.bounds();
+    if workspaces.len() <= starts.len() {
+        workspaces.resize_with(starts.len() + 1, Workspace::new);
+    }
+    let mut workspaces = workspaces.iter_mut();
+    let mut begin =
+        |problem: &mut Projected<'_>, start: &[f64]| -> Result<Option<Runner<'_>>, FitError> {
+            let Some(workspace) = workspaces.next() else {
+                return Ok(None);
+            };
+            let descent = Descent::begin(problem, start, &bounds, &FIRST, workspace)?;
+            Ok(Some(Runner {
+                descent,
+                workspace,
+                ended: None,
+            }))
+        };
     let mut runners = Vec::with_capacity(starts.len());
-    let mut evaluations = 0;
-    let first = crate::numeric::least_squares::Settings { initial_radius: std::env::var("RADIUS").ok().map_or(1.0, |t| t.parse().unwrap()), ..SEARCH };
     for start in starts {
         let start = problem.parameters_of(start);
-        let mut workspace = Workspace::new();
-        let descent = Descent::begin(problem, &start, &bounds, &first, &mut workspace)?;
-        runners.push(Runner {
-            descent,
-            workspace,
-            ended: false,
-        });
+        runners.extend(begin(problem, &start)?);
     }
-    let rounds: Vec<(usize, usize)> = match std::env::var("ROUNDS") {
-        Ok(text) => text
-            .split(',')
-            .map(|p| {
-                let (a, b) = p.split_once(':').unwrap();
-                (a.parse().unwrap(), b.parse().unwrap())
-            })
-            .collect(),
-        Err(_) => ROUNDS.to_vec(),
-    };
-    let tau = None.or(problem.tau());
-    let last = rounds.len() - 1;
-    for (index, (steps, stay)) in rounds.into_iter().enumerate() {
-        if index == last && std::env::var("MIRROR").is_ok() {
-            if let (Some(v_in), Some(tau)) = (v_in, tau) {
-                let mut start = runners[0].descent.parameters().to_vec();
-                if start[tau] < 1.0 {
-                    start[v_in] = -start[v_in];
-                    let mut workspace = Workspace::new();
-                    let descent = Descent::begin(problem, &start, &bounds, &first, &mut workspace)?;
-                    runners.push(Runner { descent, workspace, ended: false });
-                }
-            }
-        }
+    let mut evaluations = 0;
+    for Round { steps, stay } in ROUNDS.into_iter().chain([LAST]) {
         for runner in &mut runners {
-            for done in 0..steps {
-                if runner.ended || done > 40 {
-                    break;
-                }
-                let ended = runner
-                    .descent
-                    .step(problem, &bounds, &SEARCH, &mut runner.workspace);
-                runner.ended = ended.is_some();
-            }
+            runner.follow(problem, &bounds, steps);
         }
-        runners.sort_by(|a, b| a.descent.chi2().total_cmp(&b.descent.chi2()));
-        let mut kept: Vec<Runner> = Vec::with_capacity(runners.len());
-        for runner in runners {
-            let other_sign = kept
-                .iter()
-                .all(|other| other.inward(v_in) != runner.inward(v_in));
-            if (kept.len() < stay || other_sign) && !kept.iter().any(|other| other.is_at(&runner)) {
-                kept.push(runner);
-            } else {
-                evaluations += runner.descent.evaluations();
-            }
+        evaluations += keep(&mut runners, stay, v_in);
+    }
+    if let (Some(v_in), Some(tau)) = (v_in, tau)
+        && let Some(deepest) = runners.first()
+        && deepest.descent.parameters()[tau] < EXCHANGEABLE
+    {
+        let mut mirrored = deepest.descent.parameters().to_vec();
+        mirrored[v_in] = bounds[v_in].nearest(-mirrored[v_in]);
+        if let Some(mut runner) = begin(problem, &mirrored)? {
+            runner.follow(problem, &bounds, LAST.steps);
+            runners.push(runner);
+            evaluations += keep(&mut runners, LAST.stay, Some(v_in));
         }
-        runners = kept;
     }
     evaluations += runners
         .iter()
@@ -113,4 +127,23 @@ pub(super) fn finalists(
         .map(|runner| runner.descent.parameters().to_vec())
         .collect();
     Ok((places, evaluations))
+}
+
+/// Keeps the deepest that have not run into each other, one of each sign of the inward speed among them;
+/// returns the evaluations that the others took.
+fn keep(runners: &mut Vec<Runner<'_>>, stay: usize, v_in: Option<usize>) -> usize {
+    runners.sort_by(|a, b| a.descent.chi2().total_cmp(&b.descent.chi2()));
+    let inward = |runner: &Runner<'_>| runner.value(v_in).map(|speed| speed > 0.0);
+    let mut evaluations = 0;
+    let mut kept = Vec::with_capacity(runners.len());
+    for runner in runners.drain(..) {
+        let other_sign = kept.iter().all(|other| inward(other) != inward(&runner));
+        if (kept.len() < stay || other_sign) && !kept.iter().any(|other| runner.is_at(other)) {
+            kept.push(runner);
+        } else {
+            evaluations += runner.descent.evaluations();
+        }
+    }
+    *runners = kept;
+    evaluations
 }

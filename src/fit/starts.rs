@@ -33,7 +33,7 @@ pub(super) fn kinematics(thin_line: Option<&ThinLine>, thick: Kinematics) -> Vec
                 v_km_s,
                 sigma_km_s: factor * sigma,
             };
-            let mut found: Vec<Kinematics> = factors()
+            let mut found: Vec<Kinematics> = DISPERSIONS
                 .into_iter()
                 .map(|factor| at(v_km_s, factor))
                 .collect();
@@ -54,36 +54,39 @@ pub(super) fn kinematics(thin_line: Option<&ThinLine>, thick: Kinematics) -> Vec
     }
 }
 
-/// How far from the centres, in the largest dispersion, the thick line reaches: the fastest candidate
-/// speed and four dispersions more.
-const REACH: f64 = 6.0;
+/// How far from its centre a line reaches, in the largest dispersion of the candidates.
+const REACH: f64 = 4.5;
+/// The same of the thick line, whose halves are at the fastest speed from the centre.
+const THICK_REACH: f64 = 6.0;
 
-/// Velocities about a line of these kinematics; outside, candidates are zero.
-pub(super) fn about(kinematics: &[Kinematics]) -> Window {
+/// Velocities about a thick and a thin line of these kinematics; outside, candidates are zero.
+pub(super) fn about(kinematics: &[Kinematics]) -> (Window, Window) {
     let sigma_km_s = kinematics
         .iter()
         .map(|kinematics| kinematics.sigma_km_s)
         .fold(0.0, f64::max);
     let centres = || kinematics.iter().map(|kinematics| kinematics.v_km_s);
-    Window {
-        low_km_s: centres().fold(f64::INFINITY, f64::min) - REACH * sigma_km_s,
-        high_km_s: centres().fold(f64::NEG_INFINITY, f64::max) + REACH * sigma_km_s,
-    }
+    let within = |reach: f64| Window {
+        low_km_s: centres().fold(f64::INFINITY, f64::min) - reach * sigma_km_s,
+        high_km_s: centres().fold(f64::NEG_INFINITY, f64::max) + reach * sigma_km_s,
+    };
+    (within(THICK_REACH), within(REACH))
 }
 
 /// Inward speeds of the candidates, in dispersions, either sign.
-fn factors() -> Vec<f64> { list("FACTORS", "1,0.7,0.45,1.4") }
-fn list(n: &str, d: &str) -> Vec<f64> { std::env::var(n).unwrap_or(d.to_owned()).split(',').map(|t| t.parse().unwrap()).collect() }
-fn speeds() -> Vec<f64> { list("SPEEDS", "0.08,0.25,0.5,0.8,1.2,1.8") }
-fn depths() -> Vec<f64> { list("DEPTHS", "0.5,1.5,4,10,30,80") }
+const SPEEDS: [f64; 5] = [0.08, 0.25, 0.5, 0.9, 1.6];
+const OPTICAL_DEPTHS: [f64; 5] = [0.3, 1.0, 3.0, 10.0, 40.0];
+/// Dispersions of the candidates, in that of the thin line: optical depth broadens a line, and slabs
+/// without a speed fit wide ones.
+const DISPERSIONS: [f64; 4] = [1.0, 0.7, 0.45, 1.4];
 
 /// Candidates of each sign of the inward speed that become starts.
-fn STARTS() -> usize { static V: std::sync::OnceLock<usize> = std::sync::OnceLock::new(); *V.get_or_init(|| std::env::var("STARTS").ok().map_or(4, |t| t.parse().unwrap())) }
+const STARTS: usize = 8;
 
 /// Candidates closer than this in `v_in`/sigma, ln tau and ln sigma are neighbours.
-fn NEAR_SPEED() -> f64 { static V: std::sync::OnceLock<f64> = std::sync::OnceLock::new(); *V.get_or_init(|| std::env::var("NEAR_SPEED").ok().map_or(0.45, |t| t.parse().unwrap())) }
-fn NEAR_LOG() -> f64 { static V: std::sync::OnceLock<f64> = std::sync::OnceLock::new(); *V.get_or_init(|| std::env::var("NEAR_LOG").ok().map_or(1.3, |t| t.parse().unwrap())) }
-fn NEAR_LOG_SIGMA() -> f64 { static V: std::sync::OnceLock<f64> = std::sync::OnceLock::new(); *V.get_or_init(|| std::env::var("NEAR_LOG_SIGMA").ok().map_or(0.5, |t| t.parse().unwrap())) }
+const NEAR_SPEED: f64 = 0.25;
+const NEAR_LOG: f64 = 1.3;
+const NEAR_LOG_SIGMA: f64 = 0.5;
 
 /// Optical depth of a single layer at its start.
 const LAYER_TAU: f64 = 2.0;
@@ -121,9 +124,9 @@ impl Candidate {
         let (sigma, other_sigma) = (self.kinematics.sigma_km_s, other.kinematics.sigma_km_s);
         self.inward() == other.inward()
             && self.free == other.free
-            && (self.v_in_km_s - other.v_in_km_s).abs() < NEAR_SPEED() * sigma.max(other_sigma)
-            && (self.tau / other.tau).ln().abs() < NEAR_LOG()
-            && (sigma / other_sigma).ln().abs() < NEAR_LOG_SIGMA()
+            && (self.v_in_km_s - other.v_in_km_s).abs() < NEAR_SPEED * sigma.max(other_sigma)
+            && (self.tau / other.tau).ln().abs() < NEAR_LOG
+            && (sigma / other_sigma).ln().abs() < NEAR_LOG_SIGMA
     }
 }
 
@@ -152,14 +155,15 @@ struct SlabCandidate {
 }
 
 impl<'a> Scan<'a> {
-    /// The candidates of a pair for these models.
+    /// The candidates of a pair for these models; `columns` is a buffer.
     pub(super) fn new(
         (thick, thin): (&'a Channels, &'a Channels),
         kinematics: &'a [Kinematics],
         intensity: Kinematics,
         models: &[Model],
+        mut columns: Vec<f64>,
     ) -> Self {
-        let mut columns = vec![0.0; 5 * thick.len().max(thin.len())];
+        columns.resize(5 * thick.len().max(thin.len()), 0.0);
         let thin_chi2 = kinematics
             .iter()
             .map(|kinematics| one_gaussian(thin, *kinematics, &mut columns).0)
@@ -178,6 +182,11 @@ impl<'a> Scan<'a> {
             slabs,
             columns,
         }
+    }
+
+    /// Gives the buffer back.
+    pub(super) fn into_columns(self) -> Vec<f64> {
+        self.columns
     }
 
     /// Joint starting parameters of a layout, most promising first.
@@ -272,17 +281,17 @@ fn slab_candidates(
     let channels = thick.len();
     let sampling = thick.coarse_sampling();
     let mut candidates =
-        Vec::with_capacity(400);
+        Vec::with_capacity(2 * kinematics.len() * SPEEDS.len() * OPTICAL_DEPTHS.len());
     let mut ladder = Ladder::default();
     for (index, at) in kinematics.iter().enumerate() {
-        for speed in speeds() {
+        for speed in SPEEDS {
             let speed_km_s = speed * at.sigma_km_s;
             ladder.place(
                 thick.line(),
                 sampling,
                 (at.v_km_s, at.sigma_km_s, speed_km_s),
             );
-            for tau in depths() {
+            for tau in OPTICAL_DEPTHS {
                 let columns = &mut columns[..5 * channels];
                 let [absorbed, inward, outward, peaked_inward, peaked_outward] =
                     five_columns(columns);
@@ -339,14 +348,14 @@ fn five_columns(columns: &mut [f64]) -> [&mut [f64]; 5] {
 /// signs of the inward speed are kept.
 fn distinct(mut candidates: Vec<Candidate>, has_infall: bool) -> Vec<Candidate> {
     candidates.sort_by(|one, other| one.chi2.total_cmp(&other.chi2));
-    let mut kept: Vec<Candidate> = Vec::with_capacity(2 * STARTS());
+    let mut kept: Vec<Candidate> = Vec::with_capacity(2 * STARTS);
     for candidate in candidates {
         let of_its_sign = kept
             .iter()
             .filter(|other| candidate.inward() == other.inward())
             .count();
         let near = has_infall && kept.iter().any(|other| candidate.is_near(other));
-        if of_its_sign < STARTS() && !near {
+        if of_its_sign < STARTS && !near {
             kept.push(candidate);
         }
     }

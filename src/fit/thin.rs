@@ -3,13 +3,13 @@
 use super::channels::Channels;
 use super::joint::Layout;
 use super::starts::{self, Kinematics};
-use super::{Averaging, FitError, FitSettings, FittedParameter, fitted, minima};
+use super::{Averaging, FitError, FitSettings, FittedParameter, Workspace, fitted, minima};
 use crate::constants::FWHM_PER_SIGMA;
 use crate::line::Line;
 use crate::measure::ThinLine;
 use crate::model::{LineShape, Model, Sampling};
 use crate::numeric::Estimate;
-use crate::numeric::least_squares::{Interval, Minimum, Termination, Workspace};
+use crate::numeric::least_squares::{Interval, Minimum, Termination};
 use crate::prepare::Prepared;
 
 /// Height over its formal error from which the thin line counts as detected.

@@ -4,7 +4,7 @@
 
 use std::io::Write;
 
-use super::{Column, ReportError, Row, Table, Value};
+use super::{ReportError, Row, Schema, Table, Value};
 
 /// Writes a table as CSV (RFC 4180, but with single line feeds). Its meta data are left out.
 ///
@@ -12,15 +12,18 @@ use super::{Column, ReportError, Row, Table, Value};
 ///
 /// [`ReportError::Stream`] where the writer fails.
 pub fn write_csv(table: &Table, writer: impl Write) -> Result<(), ReportError> {
-    let mut rows = CsvRows::new(table.columns(), writer)?;
+    let mut rows = CsvRows::begin(table.schema(), writer)?;
     for row in table.rows() {
         rows.push(row)?;
     }
-    rows.finish()
+    rows.finish()?;
+    Ok(())
 }
 
-/// Rows written one by one: a table that need not be held in memory.
+/// Rows written as CSV one at a time: what [`write_csv`] writes of them all.
+#[derive(Debug)]
 pub struct CsvRows<W: Write> {
+    schema: Schema,
     output: ::csv::Writer<W>,
 }
 
@@ -30,38 +33,41 @@ impl<W: Write> CsvRows<W> {
     /// # Errors
     ///
     /// [`ReportError::Stream`] where the writer fails.
-    pub fn new(columns: &[Column], writer: W) -> Result<Self, ReportError> {
+    pub fn begin(schema: &Schema, writer: W) -> Result<Self, ReportError> {
         let mut output = ::csv::WriterBuilder::new()
             // Quotes a first cell that begins with `#`, which many readers take for a comment.
             .comment(Some(b'#'))
             .from_writer(writer);
-        output
-            .write_record(columns.iter().map(|column| column.name.as_str()))
-            .map_err(stream)?;
-        Ok(Self { output })
+        let names = schema.columns().iter().map(|column| column.name.as_str());
+        output.write_record(names).map_err(stream)?;
+        Ok(Self {
+            schema: schema.clone(),
+            output,
+        })
     }
 
-    /// Writes a row, which is one of the header's columns.
+    /// Writes a row.
     ///
     /// # Errors
     ///
-    /// [`ReportError::Stream`] where the writer fails, or the row has more or fewer cells.
+    /// [`ReportError`] where the row is not one of this table, or the writer fails.
     pub fn push(&mut self, row: &Row) -> Result<(), ReportError> {
-        self.output.write_record(cells(row)).map_err(stream)
+        self.schema.check(row)?;
+        let cells = row.values().iter().map(cell);
+        self.output.write_record(cells).map_err(stream)
     }
 
-    /// Writes what is still held back.
+    /// Flushes and gives the writer back.
     ///
     /// # Errors
     ///
     /// [`ReportError::Stream`] where the writer fails.
-    pub fn finish(mut self) -> Result<(), ReportError> {
-        Ok(self.output.flush()?)
+    pub fn finish(self) -> Result<W, ReportError> {
+        let writer = self.output.into_inner();
+        let mut writer = writer.map_err(::csv::IntoInnerError::into_error)?;
+        writer.flush()?;
+        Ok(writer)
     }
-}
-
-fn cells(row: &Row) -> impl Iterator<Item = String> {
-    row.values().iter().map(cell)
 }
 
 /// A cell as text that reads back to the same value.

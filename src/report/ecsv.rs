@@ -4,7 +4,7 @@
 use std::fmt::Write as _;
 use std::io::Write;
 
-use super::{Column, Kind, ReportError, Table, Value, csv, write_csv};
+use super::{Column, Kind, ReportError, Schema, Table, Value, csv, write_csv};
 
 /// Writes a table as ECSV.
 ///
@@ -12,19 +12,20 @@ use super::{Column, Kind, ReportError, Table, Value, csv, write_csv};
 ///
 /// [`ReportError::Stream`] where the writer fails.
 pub fn write_ecsv(table: &Table, mut writer: impl Write) -> Result<(), ReportError> {
-    writer.write_all(header(table).as_bytes())?;
+    writer.write_all(header(table.schema(), &table.meta).as_bytes())?;
     write_csv(table, writer)
 }
 
-fn header(table: &Table) -> String {
+/// The lines that stand above the CSV.
+pub(super) fn header(schema: &Schema, meta: &[(String, Value)]) -> String {
     let mut text = String::from("# %ECSV 1.0\n# ---\n# delimiter: ','\n# datatype:\n");
-    for column in table.columns() {
+    for column in schema.columns() {
         // Writing to a string cannot fail.
         let _ = writeln!(text, "# - {{{}}}", column_fields(column));
     }
-    if !table.meta.is_empty() {
+    if !meta.is_empty() {
         text.push_str("# meta: !!omap\n");
-        for (key, value) in &table.meta {
+        for (key, value) in meta {
             let _ = writeln!(text, "# - {{{}: {}}}", quoted(key), scalar(value));
         }
     }

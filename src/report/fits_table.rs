@@ -5,9 +5,9 @@
 //! card says so. Meta data are keywords where their names allow, else HISTORY cards.
 
 use std::fmt::Write as _;
-use std::io::Write;
+use std::io::{self, BufReader, BufWriter, Cursor, Read, Seek, Write};
 
-use super::{Column, Kind, ReportError, Table, Value};
+use super::{Column, Kind, ReportError, Row, Schema, Table, Value};
 
 pub(super) const BLOCK: usize = 2880;
 const CARD: usize = 80;
@@ -18,93 +18,176 @@ const NO_INTEGER: i64 = i64::MIN;
 /// Checksum cards as they stand while the sum is taken.
 const NO_CHECKSUM: &str = "0000000000000000";
 
+/// Bytes of rows that are summed or written at a time, whole blocks.
+const CHUNK: usize = 100 * BLOCK;
+
 /// Writes a table as a FITS file: an empty primary unit and one binary table named RESULTS, both
 /// with CHECKSUM and DATASUM.
 ///
 /// # Errors
 ///
 /// [`ReportError::TooManyColumns`] beyond 999, [`ReportError::Stream`] where the writer fails.
-pub fn write_fits(table: &Table, mut writer: impl Write) -> Result<(), ReportError> {
-    if table.columns().len() > 999 {
-        return Err(ReportError::TooManyColumns {
-            found: table.columns().len(),
-        });
-    }
-    let mut primary = Header::default();
-    primary.logical("SIMPLE", true);
-    primary.integer("BITPIX", 8);
-    primary.integer("NAXIS", 0);
-    primary.logical("EXTEND", true);
-    writer.write_all(&primary.unit(&[]))?;
-
-    let layout = layout(table);
-    let data = data(table, &layout);
-    writer.write_all(&table_header(table, &layout).unit(&data))?;
-    writer.write_all(&data)?;
-    writer.flush()?;
-    Ok(())
-}
-
-/// Bytes of each column's field.
-fn layout(table: &Table) -> Vec<usize> {
-    let widths = table.columns().iter().enumerate().map(|(index, column)| {
-        if column.kind != Kind::Text {
-            return 8;
-        }
-        let lengths = table.rows().iter().map(|row| match &row.values()[index] {
-            Value::Text(text) => ascii(text).len(),
-            _ => 0,
-        });
-        lengths.max().unwrap_or(0).max(1)
-    });
-    widths.collect()
-}
-
-fn data(table: &Table, layout: &[usize]) -> Vec<u8> {
-    let mut bytes = Vec::with_capacity(layout.iter().sum::<usize>() * table.rows().len() + BLOCK);
+pub fn write_fits(table: &Table, writer: impl Write) -> Result<(), ReportError> {
+    let mut rows = FitsRows::begin(table.schema(), Cursor::new(Vec::new()))?;
     for row in table.rows() {
-        let cells = table.columns().iter().zip(row.values()).zip(layout);
-        for ((column, value), &width) in cells {
+        rows.push(row)?;
+    }
+    rows.finish(&table.meta, writer)
+}
+
+/// Rows taken one at a time. The header of a FITS table holds their number, the width of its texts and
+/// a sum over all bytes, so rows wait in `spool` (a temporary file, or memory) until the last is there.
+#[derive(Debug)]
+pub(super) struct FitsRows<S: Read + Write + Seek> {
+    schema: Schema,
+    layout: Layout,
+    spool: BufWriter<S>,
+}
+
+impl<S: Read + Write + Seek> FitsRows<S> {
+    /// Begins a table without rows; `spool` is empty.
+    pub(super) fn begin(schema: &Schema, spool: S) -> Result<Self, ReportError> {
+        let found = schema.columns().len();
+        if found > 999 {
+            return Err(ReportError::TooManyColumns { found });
+        }
+        Ok(Self {
+            schema: schema.clone(),
+            layout: Layout::new(schema.columns()),
+            spool: BufWriter::new(spool),
+        })
+    }
+
+    pub(super) fn push(&mut self, row: &Row) -> Result<(), ReportError> {
+        self.schema.check(row)?;
+        let cells = self.schema.columns().iter().zip(row.values());
+        for ((column, value), width) in cells.zip(&mut self.layout.widths) {
             match column.kind {
                 Kind::Text => {
-                    let text = value.text().map(ascii).unwrap_or_default();
-                    bytes.extend_from_slice(text.as_bytes());
-                    bytes.resize(bytes.len() + width - text.len(), b' ');
+                    let text = value.text().unwrap_or_default();
+                    self.layout.escapes |= !text.bytes().all(is_printable);
+                    let text = ascii(text);
+                    *width = text.len().max(*width);
+                    self.spool.write_all(&(text.len() as u64).to_be_bytes())?;
+                    self.spool.write_all(text.as_bytes())?;
                 }
                 Kind::Real => {
                     let number = value.number().unwrap_or(f64::NAN);
-                    bytes.extend_from_slice(&number.to_be_bytes());
+                    self.spool.write_all(&number.to_be_bytes())?;
                 }
                 Kind::Integer => {
                     let number = match value {
                         Value::Integer(number) => *number,
                         _ => NO_INTEGER,
                     };
-                    bytes.extend_from_slice(&number.to_be_bytes());
+                    self.spool.write_all(&number.to_be_bytes())?;
                 }
             }
         }
+        self.layout.rows += 1;
+        Ok(())
     }
-    bytes.resize(bytes.len().next_multiple_of(BLOCK), 0);
-    bytes
+
+    /// Writes the file.
+    pub(super) fn finish(
+        self,
+        meta: &[(String, Value)],
+        mut writer: impl Write,
+    ) -> Result<(), ReportError> {
+        let mut primary = Header::default();
+        primary.logical("SIMPLE", true);
+        primary.integer("BITPIX", 8);
+        primary.integer("NAXIS", 0);
+        primary.logical("EXTEND", true);
+        writer.write_all(&primary.unit(0))?;
+
+        let (columns, layout) = (self.schema.columns(), &self.layout);
+        let spool = self
+            .spool
+            .into_inner()
+            .map_err(io::IntoInnerError::into_error)?;
+        let mut spool = BufReader::with_capacity(CHUNK, spool);
+        let mut sum = 0;
+        each_chunk(&mut spool, columns, layout, |bytes| {
+            sum = ones_complement_sum(sum, bytes);
+            Ok(())
+        })?;
+        writer.write_all(&table_header(columns, meta, layout).unit(sum))?;
+        each_chunk(&mut spool, columns, layout, |bytes| writer.write_all(bytes))?;
+        writer.flush()?;
+        Ok(())
+    }
 }
 
-fn table_header(table: &Table, layout: &[usize]) -> Header {
+/// What the header says of the rows.
+#[derive(Debug)]
+struct Layout {
+    /// Bytes of each column's field.
+    widths: Vec<usize>,
+    rows: u64,
+    /// Whether a text has characters that are written as their code points.
+    escapes: bool,
+}
+
+impl Layout {
+    fn new(columns: &[Column]) -> Self {
+        let width = |column: &Column| if column.kind == Kind::Text { 1 } else { 8 };
+        Self {
+            widths: columns.iter().map(width).collect(),
+            rows: 0,
+            escapes: false,
+        }
+    }
+}
+
+/// The data of the table from the spool's start, whole blocks at a time, padded to whole blocks.
+fn each_chunk(
+    spool: &mut (impl Read + Seek),
+    columns: &[Column],
+    layout: &Layout,
+    mut take: impl FnMut(&[u8]) -> io::Result<()>,
+) -> io::Result<()> {
+    spool.rewind()?;
+    let mut bytes = Vec::with_capacity(CHUNK);
+    for _ in 0..layout.rows {
+        for (column, &width) in columns.iter().zip(&layout.widths) {
+            let mut eight = [0; 8];
+            spool.read_exact(&mut eight)?;
+            if column.kind == Kind::Text {
+                let start = bytes.len();
+                let length = usize::try_from(u64::from_be_bytes(eight)).unwrap_or(usize::MAX);
+                bytes.resize(start + width, b' ');
+                spool.read_exact(&mut bytes[start..start + length])?;
+            } else {
+                bytes.extend_from_slice(&eight);
+            }
+        }
+        if bytes.len() >= CHUNK {
+            let whole = bytes.len() / BLOCK * BLOCK;
+            take(&bytes[..whole])?;
+            bytes.drain(..whole);
+        }
+    }
+    bytes.resize(bytes.len().next_multiple_of(BLOCK), 0);
+    take(&bytes)
+}
+
+fn table_header(columns: &[Column], meta: &[(String, Value)], layout: &Layout) -> Header {
     let mut header = Header::default();
     header.text("XTENSION", "BINTABLE");
     header.integer("BITPIX", 8);
     header.integer("NAXIS", 2);
-    header.integer("NAXIS1", layout.iter().sum::<usize>() as u64);
-    header.integer("NAXIS2", table.rows().len() as u64);
+    header.integer("NAXIS1", layout.widths.iter().sum::<usize>() as u64);
+    header.integer("NAXIS2", layout.rows);
     header.integer("PCOUNT", 0);
     header.integer("GCOUNT", 1);
-    header.integer("TFIELDS", table.columns().len() as u64);
+    header.integer("TFIELDS", columns.len() as u64);
     header.text("EXTNAME", "RESULTS");
-    for (index, (column, &width)) in table.columns().iter().zip(layout).enumerate() {
+    for (index, (column, &width)) in columns.iter().zip(&layout.widths).enumerate() {
         column_cards(&mut header, index + 1, column, width);
     }
     let mut history = Vec::new();
-    for (key, value) in &table.meta {
+    for (key, value) in meta {
         match keyword(key) {
             Some(keyword) if !header.has(&keyword) => header.value(&keyword, value),
             _ => history.push(format!("{key} = {}", super::csv::cell(value))),
@@ -113,7 +196,7 @@ fn table_header(table: &Table, layout: &[usize]) -> Header {
     for line in history {
         header.commentary("HISTORY", &line);
     }
-    if has_escapes(table) {
+    if layout.escapes || has_escapes(meta) {
         header.commentary(
             "COMMENT",
             "Characters other than printable ASCII are written as \\u{HEX}, their code points.",
@@ -161,12 +244,9 @@ fn keyword(name: &str) -> Option<String> {
     (allowed && !indexed && !TAKEN.contains(&keyword.as_str())).then_some(keyword)
 }
 
-fn has_escapes(table: &Table) -> bool {
-    let cells = table.rows().iter().flat_map(super::Row::values);
-    let values = cells.chain(table.meta.iter().map(|(_, value)| value));
-    let mut texts = values
-        .filter_map(Value::text)
-        .chain(table.meta.iter().map(|(key, _)| key.as_str()));
+fn has_escapes(meta: &[(String, Value)]) -> bool {
+    let values = meta.iter().filter_map(|(_, value)| value.text());
+    let mut texts = values.chain(meta.iter().map(|(key, _)| key.as_str()));
     texts.any(|text| !text.bytes().all(is_printable))
 }
 
@@ -251,9 +331,8 @@ impl Header {
         }
     }
 
-    /// The header's bytes with its checksums, padded to whole blocks.
-    pub(super) fn unit(&self, data: &[u8]) -> Vec<u8> {
-        let data_sum = ones_complement_sum(0, data);
+    /// The header's bytes with its checksums, padded to whole blocks; `data_sum` is that of its data.
+    pub(super) fn unit(&self, data_sum: u32) -> Vec<u8> {
         let bytes = |checksum: &str| {
             let mut header = Self {
                 cards: self.cards.clone(),
@@ -287,7 +366,7 @@ fn pieces(text: &str) -> Vec<&str> {
 }
 
 /// The 32-bit ones' complement sum of appendix J, continued from `sum`; whole 4-byte words.
-fn ones_complement_sum(sum: u32, bytes: &[u8]) -> u32 {
+pub(super) fn ones_complement_sum(sum: u32, bytes: &[u8]) -> u32 {
     let mut total = u64::from(sum);
     for word in bytes.chunks_exact(4) {
         total += u64::from(u32::from_be_bytes([word[0], word[1], word[2], word[3]]));
@@ -342,9 +421,9 @@ mod tests {
         let mut header = Header::default();
         header.text("XTENSION", "BINTABLE");
         let data = vec![7u8; BLOCK];
-        let unit = header.unit(&data);
+        let data_sum = ones_complement_sum(0, &data);
         assert_eq!(
-            ones_complement_sum(ones_complement_sum(0, &data), &unit),
+            ones_complement_sum(data_sum, &header.unit(data_sum)),
             u32::MAX
         );
     }

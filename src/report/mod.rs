@@ -17,6 +17,7 @@ mod rounding;
 pub mod spectra;
 mod summary;
 mod table;
+mod table_files;
 
 pub use self::csv::{CsvRows, write_csv};
 pub use ecsv::write_ecsv;
@@ -25,6 +26,7 @@ pub use json::{write_json, write_json_rows};
 pub use rounding::{rounded, rounded_interval, rounded_plain};
 pub use summary::summary;
 pub use table::{Column, Kind, Row, Schema, Table, Value};
+pub use table_files::TableFiles;
 
 use std::path::PathBuf;
 

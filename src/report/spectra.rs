@@ -5,7 +5,7 @@
 
 use std::io::Write;
 
-use super::fits_table::{BLOCK, Header};
+use super::fits_table::{BLOCK, Header, ones_complement_sum};
 use super::{ReportError, Value};
 use crate::constants::SPEED_OF_LIGHT_KM_S;
 use crate::spectrum::Spectrum;
@@ -124,7 +124,7 @@ pub fn fits(
         .flat_map(|temperature| temperature.to_be_bytes())
         .collect();
     data.resize(data.len().next_multiple_of(BLOCK), 0);
-    writer.write_all(&cards.unit(&data))?;
+    writer.write_all(&cards.unit(ones_complement_sum(0, &data)))?;
     writer.write_all(&data)?;
     writer.flush()?;
     Ok(())

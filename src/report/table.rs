@@ -188,8 +188,16 @@ impl Schema {
             .map(|(_, column)| column.name.clone())
     }
 
-    fn is_same(&self, other: &Self) -> bool {
-        Arc::ptr_eq(&self.0, &other.0) || self.columns() == other.columns()
+    /// Refuses a row that was made for other columns.
+    pub(super) fn check(&self, row: &Row) -> Result<(), ReportError> {
+        let same = Arc::ptr_eq(&self.0, &row.schema.0) || self.columns() == row.schema.columns();
+        if same {
+            return Ok(());
+        }
+        Err(ReportError::ForeignRow {
+            found: row.values.len(),
+            expected: self.columns().len(),
+        })
     }
 }
 
@@ -305,14 +313,14 @@ impl Table {
     ///
     /// [`ReportError::ForeignRow`] where it was made for other columns.
     pub fn push(&mut self, row: Row) -> Result<(), ReportError> {
-        if !self.schema.is_same(&row.schema) {
-            return Err(ReportError::ForeignRow {
-                found: row.values.len(),
-                expected: self.schema.columns().len(),
-            });
-        }
+        self.schema.check(&row)?;
         self.rows.push(row);
         Ok(())
+    }
+
+    /// What the rows share.
+    pub fn schema(&self) -> &Schema {
+        &self.schema
     }
 
     /// The columns, in order.

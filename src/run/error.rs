@@ -1,5 +1,6 @@
 //! Why a run cannot be done; rendered by the command line.
 
+use super::{BatchError, Panicked};
 use crate::fit::FitError;
 use crate::line::LineError;
 use crate::prepare::scale::ScaleError;
@@ -129,9 +130,18 @@ pub enum RunError {
     /// A product that cannot be written.
     #[error(transparent)]
     Report(#[from] ReportError),
+    /// Many pairs that cannot be worked on.
+    #[error(transparent)]
+    Batch(#[from] BatchError),
     /// A defect of the program.
     #[error("internal error: {0}")]
     Internal(String),
+}
+
+impl From<Panicked> for RunError {
+    fn from(panic: Panicked) -> Self {
+        Self::Internal(panic.message)
+    }
 }
 
 impl RunError {
@@ -227,6 +237,7 @@ impl RunError {
             Self::Pair { error, .. } | Self::Fit(error) => error.hint(),
             Self::Simulate(error) => error.hint(),
             Self::Report(error) => error.hint(),
+            Self::Batch(error) => error.hint(),
             Self::Internal(_) => {
                 Some("please report this with the input that caused it".to_owned())
             }

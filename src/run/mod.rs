@@ -1,17 +1,21 @@
 //! The one place that joins the stages: a run sheet in, results and products out.
 
+mod batch;
 mod check;
 mod error;
 #[cfg(feature = "figures")]
 mod figure;
 mod pair;
+mod pairs;
 mod products;
 mod sheet;
 pub mod simulate;
 
+pub use batch::{BatchError, BatchSettings, Panicked};
 pub use check::{FileCheck, check_file};
 pub use error::RunError;
-pub use pair::{LineOutcome, PairOutcome, fit_pair};
+pub use pair::{LineInput, LineOutcome, PairInput, PairOutcome, fit_pair, fit_spectra, read_pair};
+pub use pairs::{PairJob, fit_pairs};
 pub use products::{check_directory, pair_row, pair_summary, write_products};
 pub use sheet::{
     Beam, FitSection, Given, LineSection, NumberOrWord, OutputSection, PrepareSection, RangeOrWord,

@@ -1,17 +1,48 @@
 //! One pair through every stage.
 
 use super::{LineSection, RunError, RunSheet};
-use crate::fit::{Caution, PairFacts, PairFit, ThinFit, cautions, fit_thin};
+use crate::fit::{
+    Caution, FitSettings, PairFacts, PairFit, ThinFit, Workspace, cautions, fit_thin,
+};
 use crate::line::{Line, isotopologue_pair};
 use crate::measure::{MeasureSettings, Measures, measure};
-use crate::numeric::least_squares::Workspace;
 use crate::prepare::scale::{ScaleNote, to_spectrum};
-use crate::prepare::{Expected, Prepared, prepare_pair};
+use crate::prepare::{Expected, PrepareSettings, Prepared, prepare_pair};
 use crate::read::{ReadOptions, load, spectrum_from_bytes};
 use crate::spectrum::{Origin, Spectrum};
 use sha2::{Digest, Sha256};
 use std::fmt::Write as _;
 use std::path::Path;
+
+/// One line of a pair before it is prepared.
+#[derive(Clone, Debug)]
+pub struct LineInput {
+    /// The line.
+    pub line: Line,
+    /// Its spectrum on the common scale: ascending LSRK km/s and main-beam K.
+    pub spectrum: Spectrum,
+    /// How it is prepared.
+    pub prepare: PrepareSettings,
+    /// Its file and format; of spectra that no file holds, what messages shall call them.
+    pub origin: Origin,
+    /// SHA-256 of its file, where there is one.
+    pub sha256: Option<String>,
+    /// Name of the source that its file states.
+    pub object: Option<String>,
+    /// What was assumed on the way to the common scale.
+    pub notes: Vec<ScaleNote>,
+}
+
+/// A pair before it is prepared.
+#[derive(Clone, Debug)]
+pub struct PairInput {
+    /// Name of the source; `None` takes what the files state, else the name of the thick line's file.
+    pub name: Option<String>,
+    /// The optically thick line.
+    pub thick: LineInput,
+    /// The optically thin line.
+    pub thin: LineInput,
+}
 
 /// One line of a pair, read and prepared.
 #[derive(Clone, Debug)]
@@ -20,8 +51,8 @@ pub struct LineOutcome {
     pub line: Line,
     /// Its file and format.
     pub origin: Origin,
-    /// SHA-256 of the file.
-    pub sha256: String,
+    /// SHA-256 of the file, where there is one.
+    pub sha256: Option<String>,
     /// What was assumed on the way to the common scale.
     pub notes: Vec<ScaleNote>,
     /// The prepared spectrum.
@@ -53,33 +84,59 @@ pub struct PairOutcome {
 /// # Errors
 ///
 /// [`RunError`] for settings, files or spectra that cannot be used.
-pub fn fit_pair(sheet: &RunSheet, base: &Path) -> Result<PairOutcome, RunError> {
+pub fn fit_pair(
+    sheet: &RunSheet,
+    base: &Path,
+    workspace: &mut Workspace,
+) -> Result<PairOutcome, RunError> {
     let settings = sheet.fit_settings()?;
+    fit_spectra(read_pair(sheet, base)?, &settings, workspace)
+}
+
+/// Reads the pair of a run sheet; `base` is what its paths are relative to.
+///
+/// # Errors
+///
+/// [`RunError`] for settings or files that cannot be used.
+pub fn read_pair(sheet: &RunSheet, base: &Path) -> Result<PairInput, RunError> {
     let (thick_line, thin_line) = (sheet.thick.line("thick")?, sheet.thin.line("thin")?);
     refuse_exchanged_lines(&thick_line, &thin_line)?;
-    let thick = open(&sheet.thick, "thick", &thick_line, base)?;
-    let thin = open(&sheet.thin, "thin", &thin_line, base)?;
+    let read = |section: &LineSection, which, line| {
+        let prepare = sheet.prepare_settings(section)?;
+        open(section, which, line, prepare, base)
+    };
+    Ok(PairInput {
+        name: sheet.source.name.clone(),
+        thick: read(&sheet.thick, "thick", thick_line)?,
+        thin: read(&sheet.thin, "thin", thin_line)?,
+    })
+}
+
+/// Prepares, measures and fits a pair.
+///
+/// # Errors
+///
+/// [`RunError`] for settings or spectra that cannot be used.
+pub fn fit_spectra(
+    pair: PairInput,
+    settings: &FitSettings,
+    workspace: &mut Workspace,
+) -> Result<PairOutcome, RunError> {
+    let PairInput { name, thick, thin } = pair;
+    let (thick_line, thin_line) = (&thick.line, &thin.line);
+    refuse_exchanged_lines(thick_line, thin_line)?;
     let expected = |line: &Line| Expected {
         components: line.components.clone(),
         window: None,
     };
     let (prepared_thick, prepared_thin) = prepare_pair(
-        (
-            &thick.spectrum,
-            &sheet.prepare_settings(&sheet.thick)?,
-            &expected(&thick_line),
-        ),
-        (
-            &thin.spectrum,
-            &sheet.prepare_settings(&sheet.thin)?,
-            &expected(&thin_line),
-        ),
+        (&thick.spectrum, &thick.prepare, &expected(thick_line)),
+        (&thin.spectrum, &thin.prepare, &expected(thin_line)),
     )
     .map_err(|error| {
         RunError::of_pair(error, (thick.origin.path.clone(), thin.origin.path.clone()))
     })?;
-    let mut workspace = Workspace::new();
-    let thin_fit = fit_thin(&prepared_thin, &thin_line, &settings, &mut workspace)?;
+    let thin_fit = fit_thin(&prepared_thin, thin_line, settings, workspace)?;
     let systematic_km_s = thick_line
         .velocity_systematic_km_s()
         .hypot(thin_line.velocity_systematic_km_s());
@@ -95,7 +152,7 @@ pub fn fit_pair(sheet: &RunSheet, base: &Path) -> Result<PairOutcome, RunError> 
         },
     );
     refuse_exchanged_brightness(
-        (&thick_line, &thin_line),
+        (thick_line, thin_line),
         (&thick.origin.path, &thin.origin.path),
         &thin_fit,
         &measures,
@@ -103,10 +160,10 @@ pub fn fit_pair(sheet: &RunSheet, base: &Path) -> Result<PairOutcome, RunError> 
     let fit = crate::fit::fit_pair(
         &prepared_thick,
         &prepared_thin,
-        (&thick_line, &thin_line),
+        (thick_line, thin_line),
         thin_fit.line.as_ref(),
-        &settings,
-        &mut workspace,
+        settings,
+        workspace,
     )
     .map_err(|error| {
         RunError::of_fit(error, (thick.origin.path.clone(), thin.origin.path.clone()))
@@ -118,17 +175,14 @@ pub fn fit_pair(sheet: &RunSheet, base: &Path) -> Result<PairOutcome, RunError> 
         measures: &measures,
         fit: &fit,
     });
-    let name = sheet
-        .source
-        .name
-        .clone()
+    let name = name
         .or_else(|| thick.object.clone())
         .or_else(|| thin.object.clone())
         .unwrap_or_else(|| stem(&thick.origin.path));
     Ok(PairOutcome {
         name,
-        thick: thick.outcome(thick_line, prepared_thick),
-        thin: thin.outcome(thin_line, prepared_thin),
+        thick: thick.outcome(prepared_thick),
+        thin: thin.outcome(prepared_thin),
         thin_fit,
         measures,
         fit,
@@ -136,19 +190,27 @@ pub fn fit_pair(sheet: &RunSheet, base: &Path) -> Result<PairOutcome, RunError> 
     })
 }
 
-/// A line's file, read and on the common scale.
-struct Opened {
-    origin: Origin,
-    object: Option<String>,
-    sha256: String,
-    notes: Vec<ScaleNote>,
-    spectrum: Spectrum,
-}
-
-impl Opened {
-    fn outcome(self, line: Line, prepared: Prepared) -> LineOutcome {
-        LineOutcome {
+impl LineInput {
+    /// A spectrum that no file holds, prepared with the default settings; messages call it `called`.
+    #[must_use]
+    pub fn in_memory(line: Line, spectrum: Spectrum, called: &str) -> Self {
+        Self {
             line,
+            spectrum,
+            prepare: PrepareSettings::default(),
+            origin: Origin {
+                path: called.into(),
+                format: "in memory".to_owned(),
+            },
+            sha256: None,
+            object: None,
+            notes: Vec::new(),
+        }
+    }
+
+    fn outcome(self, prepared: Prepared) -> LineOutcome {
+        LineOutcome {
+            line: self.line,
             origin: self.origin,
             sha256: self.sha256,
             notes: self.notes,
@@ -157,24 +219,28 @@ impl Opened {
     }
 }
 
+/// A line's file, read and on the common scale.
 fn open(
     section: &LineSection,
     which: &'static str,
-    line: &Line,
+    line: Line,
+    prepare: PrepareSettings,
     base: &Path,
-) -> Result<Opened, RunError> {
+) -> Result<LineInput, RunError> {
     let file = section.file.as_ref().ok_or(RunError::NoFile { which })?;
     let path = base.join(file);
     let options: ReadOptions = section.read_options()?;
     let content = load(&path)?;
     let raw = spectrum_from_bytes(&path, &content, &options)?;
-    let scaled = to_spectrum(&raw, &section.scale_settings(line))?;
-    Ok(Opened {
-        sha256: sha256(&content),
+    let scaled = to_spectrum(&raw, &section.scale_settings(&line))?;
+    Ok(LineInput {
+        line,
+        spectrum: scaled.spectrum,
+        prepare,
+        sha256: Some(sha256(&content)),
         object: raw.object.clone(),
         origin: raw.origin,
         notes: scaled.notes,
-        spectrum: scaled.spectrum,
     })
 }
 

@@ -169,7 +169,10 @@ fn meta(outcome: &PairOutcome, sheet: &RunSheet) -> Vec<(String, Value)> {
     let text = |text: &str| Value::Text(text.to_owned());
     let line = |which: &str, line: &LineOutcome| {
         vec![
-            (format!("{which}_sha256"), text(&line.sha256)),
+            (
+                format!("{which}_sha256"),
+                Value::from(line.sha256.as_deref()),
+            ),
             (
                 format!("{which}_rest_frequency_ghz"),
                 Value::Real(line.line.rest_frequency_ghz),

@@ -252,9 +252,11 @@ pub struct Record {
     /// Version of Inrush.
     pub version: String,
     /// SHA-256 of the thick line's file.
-    pub thick_sha256: String,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub thick_sha256: Option<String>,
     /// SHA-256 of the thin line's file.
-    pub thin_sha256: String,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub thin_sha256: Option<String>,
 }
 
 impl RunSheet {

@@ -140,8 +140,8 @@ fn write_into(folder: &Path, run: &SampleRun, lines: (&Line, &Line)) -> Result<(
         .map_err(ReportError::Stream)?;
     let table_schema = truth_table::sample_schema()?;
     let truth_schema = truth_table::schema()?;
-    let mut table = CsvRows::new(table_schema.columns(), create(TABLE)?)?;
-    let mut truths = CsvRows::new(truth_schema.columns(), create(TRUTH)?)?;
+    let mut table = CsvRows::begin(&table_schema, create(TABLE)?)?;
+    let mut truths = CsvRows::begin(&truth_schema, create(TRUTH)?)?;
     let mut first = 0;
     while first < run.settings.pairs {
         let block = first..run.settings.pairs.min(first + BLOCK);
