@@ -5,13 +5,11 @@
     reason = "a bench stops where it cannot go on"
 )]
 
-use criterion::{Criterion, Throughput, criterion_group, criterion_main};
-use inrush::fit::Workspace;
-use inrush::fit::{FitRange, FitSettings, fit_pair, fit_thin};
+use criterion::{Criterion, criterion_group, criterion_main};
+use inrush::fit::{FitRange, FitSettings, Workspace, fit_pair, fit_thin};
 use inrush::line::{Line, find};
 use inrush::measure::{MeasureSettings, measure};
 use inrush::model::Model;
-use inrush::numeric::exponential::exp_in_place;
 use inrush::prepare::{Expected, PrepareSettings, Prepared, prepare_pair};
 use inrush::simulate::{PairTruth, simulate_pair};
 use inrush::spectrum::Spectrum;
@@ -126,31 +124,5 @@ fn fitting(criterion: &mut Criterion) {
     group.finish();
 }
 
-fn exponential(criterion: &mut Criterion) {
-    let arguments: Vec<f64> = (0..4096).map(|i| -0.01 * f64::from(i)).collect();
-    let mut values = arguments.clone();
-    exp_in_place(&mut values);
-    for (x, y) in arguments.iter().zip(&values) {
-        assert!((y / x.exp() - 1.0).abs() < 5e-16);
-    }
-    let mut group = criterion.benchmark_group("exponential");
-    group.throughput(Throughput::Elements(4096));
-    group.bench_function("vector", |bencher| {
-        bencher.iter(|| {
-            values.copy_from_slice(&arguments);
-            exp_in_place(black_box(&mut values));
-        });
-    });
-    group.bench_function("std", |bencher| {
-        bencher.iter(|| {
-            for (value, argument) in values.iter_mut().zip(&arguments) {
-                *value = argument.exp();
-            }
-            black_box(&mut values);
-        });
-    });
-    group.finish();
-}
-
-criterion_group!(benches, fitting, exponential);
+criterion_group!(benches, fitting);
 criterion_main!(benches);

@@ -27,6 +27,9 @@ const MOST_FOR_COARSE: usize = 2;
 /// Fewest channels that a search is content with.
 const FEWEST_NEAR: usize = 16;
 
+/// Numbers in a register of the widest instructions.
+const REGISTER: usize = 8;
+
 /// Usable channels of one line inside the fitted range, whitened.
 #[derive(Clone, Debug)]
 pub struct Channels {
@@ -114,7 +117,9 @@ impl Channels {
         let low_km_s = window.low_km_s + offsets().fold(0.0, f64::min);
         let high_km_s = window.high_km_s + offsets().fold(0.0, f64::max);
         let first = velocity.partition_point(|v| *v < low_km_s);
-        let end = velocity.partition_point(|v| *v <= high_km_s);
+        let inside = velocity.partition_point(|v| *v <= high_km_s) - first;
+        // loops over whole registers have no remainder
+        let end = (first + inside.next_multiple_of(REGISTER)).min(velocity.len());
         if end - first < FEWEST_NEAR {
             return self.clone();
         }

@@ -586,6 +586,9 @@ const SEARCH: Settings = Settings {
     initial_radius: 1.0,
 };
 
+/// A minimum that is so much shallower in chi2 is none worth a second look.
+const NO_RIVAL: f64 = 50.0;
+
 /// A line's pair of channel sets, or the thin line's alone.
 type Lines<'a> = (Option<&'a Channels>, &'a Channels);
 
@@ -613,8 +616,12 @@ fn minima(
         .map(|parameter| parameter.interval)
         .collect();
     let mut problem = JointProblem::new(layout, all.0, all.1);
+    let deepest = finalists.first().map_or(0.0, |(chi2, _)| *chi2);
     let mut minima = Vec::with_capacity(finalists.len());
-    for finalist in finalists {
+    for (chi2, finalist) in finalists {
+        if chi2 - deepest > NO_RIVAL {
+            continue;
+        }
         let start = projected.settled(&finalist);
         let minimum = minimize(
             &mut problem,

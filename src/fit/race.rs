@@ -35,9 +35,13 @@ const SAME_PARAMETER: f64 = 0.02;
 /// sign of the inward speed as deep to within little.
 const EXCHANGEABLE: f64 = 1.0;
 
+/// chi2 and parameters.
+type Place = (f64, Vec<f64>);
+
 /// A descent under way.
 struct Runner<'a> {
-    descent: Descent,
+    /// Boxed, so that sorting moves little.
+    descent: Box<Descent>,
     workspace: &'a mut Workspace,
     ended: Option<Termination>,
 }
@@ -68,13 +72,26 @@ impl Runner<'_> {
     }
 }
 
-/// Where the deepest descents ended, the deepest first (parameters of `problem`; of the inward speed both
-/// signs if both are there), and the number of evaluations.
+/// Where the deepest descents ended, the deepest first (chi2 and the parameters of `problem`; of the inward
+/// speed both signs if both are there), and the number of evaluations.
 pub(super) fn finalists(
     problem: &mut Projected<'_>,
     starts: &[Vec<f64>],
     workspaces: &mut Vec<Workspace>,
-) -> Result<(Vec<Vec<f64>>, usize), FitError> {
+) -> Result<(Vec<Place>, usize), FitError> {
+    let rounds: Vec<Round> = match std::env::var("ROUNDS") {
+        Ok(t) => t
+            .split(',')
+            .map(|p| {
+                let (a, b) = p.split_once(':').unwrap();
+                Round {
+                    steps: a.parse().unwrap(),
+                    stay: b.parse().unwrap(),
+                }
+            })
+            .collect(),
+        Err(_) => ROUNDS.into_iter().collect(),
+    };
     let v_in = problem.position_of("v_in_km_s");
     let tau = problem.position_of("tau");
     let bounds = problem.bounds();
@@ -89,7 +106,7 @@ pub(super) fn finalists(
             };
             let descent = Descent::begin(problem, start, &bounds, &FIRST, workspace)?;
             Ok(Some(Runner {
-                descent,
+                descent: Box::new(descent),
                 workspace,
                 ended: None,
             }))
@@ -100,7 +117,7 @@ pub(super) fn finalists(
         runners.extend(begin(problem, &start)?);
     }
     let mut evaluations = 0;
-    for Round { steps, stay } in ROUNDS.into_iter().chain([LAST]) {
+    for Round { steps, stay } in rounds.into_iter().chain([LAST]) {
         for runner in &mut runners {
             runner.follow(problem, &bounds, steps);
         }
@@ -124,7 +141,7 @@ pub(super) fn finalists(
         .sum::<usize>();
     let places = runners
         .iter()
-        .map(|runner| runner.descent.parameters().to_vec())
+        .map(|runner| (runner.descent.chi2(), runner.descent.parameters().to_vec()))
         .collect();
     Ok((places, evaluations))
 }

@@ -167,7 +167,8 @@ pub fn measure(
     let detected = thin_line.filter(|line| line.peak_k.value >= THIN_DETECTED * line.peak_k.err);
     let span = Span::of(thick, &settings.thick_components, thin_line);
     let smoothed = Smoothed::new(&thick.spectrum, REACH_PER_FWHM * fwhm_km_s);
-    let peak_of_all = highest(&smoothed.extrema(thick.window.low_km_s, thick.window.high_km_s))
+    let extrema = smoothed.extrema(thick.window.low_km_s, thick.window.high_km_s);
+    let peak_of_all = highest(&extrema)
         .map(|peak| estimate(peak.value_k, peak.value_err(&thick_noise)))
         .filter(|peak| peak.value >= settings.detection_sigma * peak.err);
     let profile = Profile {
@@ -175,7 +176,7 @@ pub fn measure(
         noise: &thick_noise,
         extrema: span
             .filter(|_| peak_of_all.is_some())
-            .map(|span| smoothed.extrema(span.window.low_km_s, span.window.high_km_s))
+            .map(|span| span.extrema(&smoothed, extrema, thick.window))
             .unwrap_or_default(),
         reach_km_s: smoothed.reach_km_s(),
         dip_sigma: settings.dip_sigma,
@@ -198,9 +199,11 @@ pub fn measure(
     let delta_v = v_thick_km_s
         .zip(detected)
         .map(|(v, line)| normalised_difference(v, line));
+    let (peak_thin_k, thin_two_peaked) =
+        thin_shape(thin, &thin_noise, fwhm_km_s, thin_line, settings);
     Measures {
         peak_thick_k: peak_of_all,
-        peak_thin_k: thin_peak(thin, &thin_noise, fwhm_km_s, settings),
+        peak_thin_k,
         integral_thick_k_km_s: integral(thick, &thick_noise),
         integral_thin_k_km_s: integral(thin, &thin_noise),
         v_thick_km_s,
@@ -208,7 +211,7 @@ pub fn measure(
         delta_v_systematic: delta_v.map(|_| rest_frequency_systematic_km_s / fwhm_km_s),
         peak_ratio: two.as_ref().map(|two| two.ratio(&thick_noise)),
         two_peaks: two.as_ref().map(|two| two.estimates(&thick_noise)),
-        thin_two_peaked: thin_two_peaked(thin, &thin_noise, thin_line, settings),
+        thin_two_peaked,
         asymmetry: about.as_ref().and_then(About::asymmetry),
         skewness: about.as_ref().and_then(About::skewness),
         profile: class(delta_v, settings.class_sigma),
@@ -293,38 +296,32 @@ fn highest(extrema: &[Extremum]) -> Option<&Extremum> {
         .max_by(|a, b| a.value_k.total_cmp(&b.value_k))
 }
 
-fn thin_peak(
+/// The thin line's peak, and whether it has two.
+fn thin_shape(
     thin: &Prepared,
     noise: &ChannelNoise,
     fwhm_km_s: f64,
-    settings: &MeasureSettings,
-) -> Option<Estimate> {
-    let smoothed = Smoothed::new(&thin.spectrum, REACH_PER_FWHM * fwhm_km_s);
-    let extrema = smoothed.extrema(thin.window.low_km_s, thin.window.high_km_s);
-    let peak = highest(&extrema)?;
-    let peak = estimate(peak.value_k, peak.value_err(noise));
-    // Faint thin lines are common: their peak is given from 3 sigma.
-    (peak.value >= settings.detection_sigma.min(THIN_DETECTED) * peak.err).then_some(peak)
-}
-
-fn thin_two_peaked(
-    thin: &Prepared,
-    noise: &ChannelNoise,
     line: Option<&ThinLine>,
     settings: &MeasureSettings,
-) -> bool {
-    let (Some(line), Some(span)) = (line, Span::of(thin, &settings.thin_components, line)) else {
-        return false;
-    };
-    let smoothed = Smoothed::new(&thin.spectrum, REACH_PER_FWHM * line.fwhm_km_s.value);
-    let profile = Profile {
-        spectrum: &thin.spectrum,
-        noise,
-        extrema: smoothed.extrema(span.window.low_km_s, span.window.high_km_s),
-        reach_km_s: smoothed.reach_km_s(),
-        dip_sigma: settings.dip_sigma.max(THIN_DIP_SIGMA),
-    };
-    profile.two_peaks().is_some()
+) -> (Option<Estimate>, bool) {
+    let smoothed = Smoothed::new(&thin.spectrum, REACH_PER_FWHM * fwhm_km_s);
+    let extrema = smoothed.extrema(thin.window.low_km_s, thin.window.high_km_s);
+    // Faint thin lines are common: their peak is given from 3 sigma.
+    let peak = highest(&extrema)
+        .map(|peak| estimate(peak.value_k, peak.value_err(noise)))
+        .filter(|peak| peak.value >= settings.detection_sigma.min(THIN_DETECTED) * peak.err);
+    let span = line.and_then(|line| Span::of(thin, &settings.thin_components, Some(line)));
+    let two_peaked = span.is_some_and(|span| {
+        let profile = Profile {
+            spectrum: &thin.spectrum,
+            noise,
+            extrema: span.extrema(&smoothed, extrema, thin.window),
+            reach_km_s: smoothed.reach_km_s(),
+            dip_sigma: settings.dip_sigma.max(THIN_DIP_SIGMA),
+        };
+        profile.two_peaks().is_some()
+    });
+    (peak, two_peaked)
 }
 
 /// The range in which one component stands alone.
@@ -336,6 +333,14 @@ struct Span {
 }
 
 impl Span {
+    /// Extrema in the range, given those in the whole window.
+    fn extrema(self, smoothed: &Smoothed, whole: Vec<Extremum>, window: Window) -> Vec<Extremum> {
+        if self.window == window {
+            return whole;
+        }
+        smoothed.extrema(self.window.low_km_s, self.window.high_km_s)
+    }
+
     /// The window, or its part around a multiplet's main component; `None` where that is blended.
     fn of(prepared: &Prepared, components: &[Component], line: Option<&ThinLine>) -> Option<Self> {
         let window = prepared.window;

@@ -56,32 +56,110 @@ pub trait Kernel {
     fn run<A: Arithmetic>(self) -> Self::Output;
 }
 
+/// Instructions that kernels are compiled for.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord)]
+pub enum InstructionSet {
+    /// What every processor of the target has: SSE2 on x86-64, NEON with fused multiply-add on
+    /// aarch64.
+    Baseline,
+    /// AVX2 with FMA: four numbers at a time.
+    Avx2,
+    /// AVX-512 F, DQ and VL: eight numbers at a time.
+    Avx512,
+}
+
+impl InstructionSet {
+    /// Every one, the narrowest first.
+    pub const ALL: [Self; 3] = [Self::Baseline, Self::Avx2, Self::Avx512];
+
+    /// Whether this processor has it.
+    #[must_use]
+    #[inline]
+    pub fn is_available(self) -> bool {
+        match self {
+            Self::Baseline => true,
+            #[cfg(target_arch = "x86_64")]
+            Self::Avx2 => {
+                std::arch::is_x86_feature_detected!("avx2")
+                    && std::arch::is_x86_feature_detected!("fma")
+            }
+            #[cfg(target_arch = "x86_64")]
+            Self::Avx512 => {
+                std::arch::is_x86_feature_detected!("avx512f")
+                    && std::arch::is_x86_feature_detected!("avx512dq")
+                    && std::arch::is_x86_feature_detected!("avx512vl")
+            }
+            #[cfg(not(target_arch = "x86_64"))]
+            Self::Avx2 | Self::Avx512 => false,
+        }
+    }
+
+    /// The widest that this processor has: what [`dispatch`] uses.
+    #[must_use]
+    #[inline]
+    pub fn widest() -> Self {
+        if Self::Avx512.is_available() {
+            Self::Avx512
+        } else if Self::Avx2.is_available() {
+            Self::Avx2
+        } else {
+            Self::Baseline
+        }
+    }
+}
+
 /// Runs a kernel with the widest instructions that this processor has.
 #[inline]
 pub fn dispatch<K: Kernel>(kernel: K) -> K::Output {
-    #[cfg(target_arch = "x86_64")]
-    {
-        if std::arch::is_x86_feature_detected!("avx512f")
-            && std::arch::is_x86_feature_detected!("avx512dq")
-            && std::arch::is_x86_feature_detected!("avx512vl")
-        {
-            // SAFETY: the three features that `run_avx512` is compiled with were just detected
-            // (avx512f implies avx2 and fma); the kernel itself is safe code.
-            return unsafe { run_avx512(kernel) };
-        }
-        if std::arch::is_x86_feature_detected!("avx2") && std::arch::is_x86_feature_detected!("fma")
-        {
-            // SAFETY: the two features that `run_avx2` is compiled with were just detected; the
-            // kernel itself is safe code.
-            return unsafe { run_avx2(kernel) };
-        }
-        kernel.run::<Separate>()
+    match InstructionSet::widest() {
+        InstructionSet::Baseline => run_baseline(kernel),
+        // SAFETY: `widest` has just detected the features that the copy is compiled with (avx512f
+        // implies avx2 and fma); the kernel itself is safe code.
+        #[cfg(target_arch = "x86_64")]
+        InstructionSet::Avx2 => unsafe { run_avx2(kernel) },
+        // SAFETY: as above.
+        #[cfg(target_arch = "x86_64")]
+        InstructionSet::Avx512 => unsafe { run_avx512(kernel) },
+        #[cfg(not(target_arch = "x86_64"))]
+        InstructionSet::Avx2 | InstructionSet::Avx512 => run_baseline(kernel),
     }
+}
+
+/// Runs a kernel's copy for one instruction set, to compare copies; `None` where this processor
+/// does not have it.
+///
+/// ```
+/// use inrush::numeric::dispatch::{InstructionSet, dispatch_on};
+/// use inrush::numeric::exponential::ExpInPlace;
+/// let mut values = [1.0];
+/// dispatch_on(InstructionSet::Baseline, ExpInPlace(&mut values)).expect("every processor has it");
+/// assert!((values[0] - std::f64::consts::E).abs() < 1e-15);
+/// ```
+pub fn dispatch_on<K: Kernel>(instructions: InstructionSet, kernel: K) -> Option<K::Output> {
+    if !instructions.is_available() {
+        return None;
+    }
+    match instructions {
+        InstructionSet::Baseline => Some(run_baseline(kernel)),
+        // SAFETY: `is_available` has just detected the features that the copy is compiled with; the
+        // kernel itself is safe code.
+        #[cfg(target_arch = "x86_64")]
+        InstructionSet::Avx2 => Some(unsafe { run_avx2(kernel) }),
+        // SAFETY: as above.
+        #[cfg(target_arch = "x86_64")]
+        InstructionSet::Avx512 => Some(unsafe { run_avx512(kernel) }),
+        #[cfg(not(target_arch = "x86_64"))]
+        InstructionSet::Avx2 | InstructionSet::Avx512 => None,
+    }
+}
+
+#[inline]
+fn run_baseline<K: Kernel>(kernel: K) -> K::Output {
     #[cfg(target_arch = "aarch64")]
     {
         kernel.run::<Fused>()
     }
-    #[cfg(not(any(target_arch = "x86_64", target_arch = "aarch64")))]
+    #[cfg(not(target_arch = "aarch64"))]
     {
         kernel.run::<Separate>()
     }
@@ -102,21 +180,8 @@ fn run_avx2<K: Kernel>(kernel: K) -> K::Output {
 /// Runs every copy that this processor has, the baseline first: for tests of their agreement.
 #[cfg(test)]
 pub(crate) fn dispatch_all<K: Kernel>(make: impl Fn() -> K) -> Vec<K::Output> {
-    let mut outputs = vec![make().run::<Separate>()];
-    #[cfg(target_arch = "x86_64")]
-    {
-        if std::arch::is_x86_feature_detected!("avx2") && std::arch::is_x86_feature_detected!("fma")
-        {
-            // SAFETY: detected on the line above.
-            outputs.push(unsafe { run_avx2(make()) });
-        }
-        if std::arch::is_x86_feature_detected!("avx512f")
-            && std::arch::is_x86_feature_detected!("avx512dq")
-            && std::arch::is_x86_feature_detected!("avx512vl")
-        {
-            // SAFETY: detected on the lines above.
-            outputs.push(unsafe { run_avx512(make()) });
-        }
-    }
-    outputs
+    InstructionSet::ALL
+        .into_iter()
+        .filter_map(|instructions| dispatch_on(instructions, make()))
+        .collect()
 }

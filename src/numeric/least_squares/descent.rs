@@ -36,6 +36,7 @@ pub struct Workspace {
     jacobian: Vec<f64>,
     trial_residuals: Vec<f64>,
     trial_jacobian: Vec<f64>,
+    triangle: Triangle,
 }
 
 impl Workspace {
@@ -55,6 +56,27 @@ impl Workspace {
             if buffer.len() < rows * columns {
                 buffer.resize(rows * columns, 0.0);
             }
+        }
+    }
+
+    /// Forms the triangle of the current Jacobian and residuals; works in the trial buffers.
+    fn triangularise(&mut self, structure: &Structure, columns: usize) {
+        let rows = structure.rows();
+        let matrix = &mut self.trial_jacobian[..rows * columns];
+        let rotated = &mut self.trial_residuals[..rows];
+        structure.expand(&self.jacobian, columns, matrix);
+        rotated.copy_from_slice(&self.residuals[..rows]);
+        dense::triangularise(matrix, rows, columns, rotated);
+        let Triangle { upper, right } = &mut self.triangle;
+        for row in 0..columns.min(rows) {
+            right[row] = rotated[row];
+            for column in row..columns {
+                upper[row][column] = matrix[column * rows + row];
+            }
+        }
+        for row in rows..columns {
+            right[row] = 0.0;
+            upper[row] = [0.0; MAX_PARAMETERS];
         }
     }
 
@@ -411,7 +433,7 @@ impl Descent {
             let target = linear.solve(damping, &scale, &step, workspace, structure);
             let Some((fraction, blocking, side)) = self.first_bound(&step, &target, bounds) else {
                 step.shift = target;
-                step.decrease = self.linear.decrease(&step.shift);
+                step.decrease = self.linear.decrease(&step.shift, &workspace.triangle);
                 return step;
             };
             for (shift, target) in step.shift.iter_mut().zip(target) {
@@ -464,12 +486,13 @@ struct Linearisation {
     gram: Matrix,
     /// J^T r.
     gradient: Vector,
-    /// Formed when the normal equations lose too many digits.
-    triangle: Option<Triangle>,
+    /// Whether the workspace's triangle is of this Jacobian: it is formed when the normal equations lose
+    /// too many digits.
+    triangular: bool,
 }
 
 /// J = Q R.
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Default)]
 struct Triangle {
     /// R, `upper[row][column]`.
     upper: Matrix,
@@ -484,7 +507,7 @@ impl Linearisation {
             columns,
             gram,
             gradient,
-            triangle: None,
+            triangular: false,
         }
     }
 
@@ -493,22 +516,22 @@ impl Linearisation {
     }
 
     /// 2 g.d + d.J^T J d with its sign turned.
-    fn decrease(&self, shift: &Vector) -> f64 {
+    fn decrease(&self, shift: &Vector, triangle: &Triangle) -> f64 {
         let n = self.columns;
-        match &self.triangle {
-            Some(triangle) => -(0..n)
+        if self.triangular {
+            return -(0..n)
                 .map(|row| {
                     let change = dense::dot(&triangle.upper[row][row..n], &shift[row..n]);
                     change * (2.0 * triangle.right[row] + change)
                 })
-                .sum::<f64>(),
-            None => -(0..n)
-                .map(|row| {
-                    let change = dense::dot(&self.gram[row][..n], &shift[..n]);
-                    shift[row] * (2.0 * self.gradient[row] + change)
-                })
-                .sum::<f64>(),
+                .sum::<f64>();
         }
+        -(0..n)
+            .map(|row| {
+                let change = dense::dot(&self.gram[row][..n], &shift[..n]);
+                shift[row] * (2.0 * self.gradient[row] + change)
+            })
+            .sum::<f64>()
     }
 
     /// The norm of each column of J.
@@ -536,13 +559,15 @@ impl Linearisation {
             }
         }
         let free = &free[..count];
-        if self.triangle.is_none() && self.solve_normal(damping, scale, free, &mut shift) {
+        if !self.triangular && self.solve_normal(damping, scale, free, &mut shift) {
             return shift;
         }
-        let columns = self.columns;
-        self.triangle
-            .get_or_insert_with(|| Triangle::new(workspace, structure, columns))
-            .solve(columns, damping, scale, free, &mut shift);
+        if !self.triangular {
+            workspace.triangularise(structure, self.columns);
+            self.triangular = true;
+        }
+        let triangle = &workspace.triangle;
+        triangle.solve(self.columns, damping, scale, free, &mut shift);
         shift
     }
 
@@ -597,10 +622,10 @@ impl Linearisation {
             }
             return triangle;
         }
-        let full = match &self.triangle {
-            Some(full) => full.clone(),
-            None => Triangle::new(workspace, structure, self.columns),
-        };
+        if !self.triangular {
+            workspace.triangularise(structure, self.columns);
+        }
+        let full = &workspace.triangle;
         let n = self.columns;
         let mut reduced = [0.0; MAX_PARAMETERS * MAX_PARAMETERS];
         for (column, &j) in free.iter().enumerate() {
@@ -619,25 +644,6 @@ impl Linearisation {
 }
 
 impl Triangle {
-    /// Of the current Jacobian and residuals; works in the trial buffers.
-    fn new(workspace: &mut Workspace, structure: &Structure, columns: usize) -> Self {
-        let rows = structure.rows();
-        let matrix = &mut workspace.trial_jacobian[..rows * columns];
-        let rotated = &mut workspace.trial_residuals[..rows];
-        structure.expand(&workspace.jacobian, columns, matrix);
-        rotated.copy_from_slice(&workspace.residuals[..rows]);
-        dense::triangularise(matrix, rows, columns, rotated);
-        let mut upper = [[0.0; MAX_PARAMETERS]; MAX_PARAMETERS];
-        let mut right = [0.0; MAX_PARAMETERS];
-        for row in 0..columns.min(rows) {
-            right[row] = rotated[row];
-            for column in row..columns {
-                upper[row][column] = matrix[column * rows + row];
-            }
-        }
-        Self { upper, right }
-    }
-
     /// Least squares of R d + Q^T r stacked on sqrt(damping) D d.
     fn solve(
         &self,
@@ -731,6 +737,10 @@ fn check_values(
     structure: &Structure,
 ) -> Result<(), LeastSquaresError> {
     let rows = residuals.len();
+    let sum = dense::sum_of_squares(residuals) + dense::sum_of_squares(jacobian);
+    if (sum * rows as f64).is_finite() {
+        return Ok(());
+    }
     let unusable = |value: &f64| !(value * value * rows as f64).is_finite();
     if let Some(residual) = residuals.iter().position(unusable) {
         return Err(LeastSquaresError::StartResidual {
