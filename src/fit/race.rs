@@ -79,19 +79,6 @@ pub(super) fn finalists(
     starts: &[Vec<f64>],
     workspaces: &mut Vec<Workspace>,
 ) -> Result<(Vec<Place>, usize), FitError> {
-    let rounds: Vec<Round> = match std::env::var("ROUNDS") {
-        Ok(t) => t
-            .split(',')
-            .map(|p| {
-                let (a, b) = p.split_once(':').unwrap();
-                Round {
-                    steps: a.parse().unwrap(),
-                    stay: b.parse().unwrap(),
-                }
-            })
-            .collect(),
-        Err(_) => ROUNDS.into_iter().collect(),
-    };
     let v_in = problem.position_of("v_in_km_s");
     let tau = problem.position_of("tau");
     let bounds = problem.bounds();
@@ -117,7 +104,7 @@ pub(super) fn finalists(
         runners.extend(begin(problem, &start)?);
     }
     let mut evaluations = 0;
-    for Round { steps, stay } in rounds.into_iter().chain([LAST]) {
+    for Round { steps, stay } in ROUNDS.into_iter().chain([LAST]) {
         for runner in &mut runners {
             runner.follow(problem, &bounds, steps);
         }
