@@ -72,6 +72,9 @@ START_DEPTHS = (1.5, 5.0)
 LOWER = 1e-6
 # Two programs' chi2 of the same parameters: rounding alone, with models that cancel to 1e-10 of their terms.
 SAME = 1e-9
+# What --bars asks for: how much faster in all, and the share of pairs in which scipy may be lower.
+LEAST_RATIO = 300.0
+MOST_WORSE = 1e-3
 # Pairs that one side fits before it is the other's turn.
 BLOCK = 20
 
@@ -418,6 +421,9 @@ def arguments():
     parser.add_argument("--scipy-only", action="store_true", help="fill --scipy-results, run nothing else")
     parser.add_argument("--jobs", type=int, default=1, help="processes of scipy; with more than 1 no ratio is printed")
     parser.add_argument("--json", type=Path, help="file for all numbers")
+    parser.add_argument("--bars", action="store_true",
+                        help=f"fail where scipy is lower in more than {MOST_WORSE:g} of the pairs, or less than "
+                             f"{LEAST_RATIO:g} times slower where that is measured")
     parser.add_argument("--no-build", action="store_true", help="take the release programs as they are")
     given = parser.parse_args()
     if given.scipy_only and not (given.scipy_results and given.sample):
@@ -456,6 +462,12 @@ def main():
     show(numbers, given.jobs)
     if given.json:
         given.json.write_text(json.dumps(numbers, indent=2) + "\n")
+    if given.bars:
+        measured = numbers["times_of_one_run"] and given.jobs == 1
+        if numbers["pairs_inrush_worse"] > MOST_WORSE * numbers["pairs"]:
+            sys.exit(f"error: scipy lower in {numbers['pairs_inrush_worse']} pairs")
+        if measured and numbers["ratio"]["total"] < LEAST_RATIO:
+            sys.exit(f"error: {numbers['ratio']['total']:.1f} times faster, expected {LEAST_RATIO:g}")
 
 
 if __name__ == "__main__":

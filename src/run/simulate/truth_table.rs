@@ -180,7 +180,7 @@ pub(super) fn row(
     row.set("kind", drawn.kind.name())?;
     row.set("thick_model", truth.thick.model.name())?;
     row.set("thin_model", truth.thin.model.name())?;
-    set_parameters(&mut row, &truth.thick, |name| name.to_owned())?;
+    set_parameters(&mut row, &truth.thick, str::to_owned)?;
     set_parameters(&mut row, &truth.thin, thin_name)?;
     for (which, ratio, line) in [
         ("thick", "signal_to_noise", &pair.thick),
