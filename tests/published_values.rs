@@ -6,6 +6,13 @@ use inrush::constants::{
     ATOMIC_MASS, BOLTZMANN, Constant, FWHM_PER_SIGMA, GRAVITATION, HYDROGEN_MASS, PARSEC, PLANCK,
     SOLAR_MASS, SPEED_OF_LIGHT, SPEED_OF_LIGHT_KM_S, YEAR, photon_temperature_k,
 };
+use inrush::derive::{
+    Emitter, alfven_speed_km_s, column_density_cm2, doubling_time_yr, dust_mass_msun,
+    field_from_angles_ug, free_fall_speed_km_s, free_fall_time_yr, isothermal_rate_msun_yr,
+    mass_density_g_cm3, mass_rate_from_density_msun_yr, mass_rate_from_mass_msun_yr, mass_to_flux,
+    mean_h2_density_cm3, planck_w_m2_hz_sr, sound_speed_km_s, thermal_dispersion_km_s,
+    virial_parameter,
+};
 use inrush::line::{Line, find};
 use statrs::distribution::{Binomial, DiscreteCDF};
 use statrs::statistics::Distribution;
@@ -189,4 +196,143 @@ fn check_multiplet(line: &Line, reference_mhz: f64, expected: &[(f64, f64, f64)]
         let difference = component.offset_km_s - offset_km_s;
         assert!(difference.abs() < 6e-4, "{difference}");
     }
+}
+
+/// Plain arithmetic with CODATA 2022, IAU 2015 masses and m_H = 1.673532840653e-27 kg, done outside
+/// this program to ten digits.
+#[test]
+fn rates_times_and_speeds_of_collapse_are_plain_arithmetic() {
+    for (found, expected, digits) in [
+        // 4 pi R^2 n mu m_H v: 0.1 pc, 1e5 cm-3, mu = 2.8, 0.5 km/s
+        (
+            mass_rate_from_density_msun_yr(0.1, 1e5, 0.5),
+            4.449_090_972e-4,
+            10,
+        ),
+        // 3 M v/R: 1000 Msun, 0.5 pc, 1 km/s
+        (
+            mass_rate_from_mass_msun_yr(1000.0, 0.5, 0.0, 1.0),
+            6.136_272_990e-3,
+            10,
+        ),
+        // 1e5 cm-3, mu = 2.8
+        (free_fall_time_yr(1e5), 97_242.83, 7),
+        // 100 Msun, 0.1 pc
+        (free_fall_speed_km_s(100.0, 0.1), 2.932_888, 7),
+    ] {
+        assert_eq!(digits_of(found, digits), digits_of(expected, digits));
+    }
+}
+
+/// A number rounded to significant digits.
+fn digits_of(number: f64, digits: usize) -> String {
+    format!("{number:.*e}", digits - 1)
+}
+
+/// Peretto et al. 2013, A&A 555, A112 (abstract): 2.5e-3 Msun/yr over a free-fall time of 3e5 yr bring
+/// in 750 Msun.
+#[test]
+fn a_published_rate_brings_in_its_published_mass() {
+    assert!(relative_difference(doubling_time_yr(750.0, 2.5e-3), 3e5) < ROUNDING);
+}
+
+/// Shu 1977: 0.975 a^3/G = 4.36e-6 (T/20 K)^1.5 Msun/yr with mu = 2.33. Today's constants give 4.369e-6:
+/// the published number is within one of its last digit.
+#[test]
+fn the_rate_of_an_isothermal_sphere_is_that_of_shu() {
+    for (temperature_k, factor) in [(20.0, 1.0), (80.0, 8.0), (5.0, 0.125)] {
+        let found = isothermal_rate_msun_yr(sound_speed_km_s(temperature_k));
+        let off = found / factor - 4.36e-6;
+        assert!(off.abs() < 0.01e-6, "{temperature_k} K: {found}");
+    }
+}
+
+/// astropy 8.0.2, `BlackBody`, W m-2 Hz-1 sr-1.
+#[test]
+fn planck_functions_are_those_of_astropy() {
+    for (frequency_ghz, temperature_k, expected) in [
+        (89.1885247, 2.725, 2.7453733029172256e-18),
+        (89.1885247, 2.7255, 2.7463722594196717e-18),
+        (89.1885247, 5.0, 7.726521121478568e-18),
+        (89.1885247, 10.0, 1.9580885736610022e-17),
+        (89.1885247, 15.0, 3.167698330456583e-17),
+        (89.1885247, 20.0, 4.383466806625823e-17),
+        (89.1885247, 50.0, 1.170409398522522e-16),
+        (93.1733977, 2.725, 2.866910321628471e-18),
+        (93.1733977, 2.7255, 2.86798106836378e-18),
+        (93.1733977, 5.0, 8.249886574541028e-18),
+        (93.1733977, 10.0, 2.115161430825306e-17),
+        (93.1733977, 15.0, 3.4340511756550145e-17),
+        (93.1733977, 20.0, 4.7602697793157156e-17),
+        (93.1733977, 50.0, 1.2748557043519788e-16),
+        (97.9809533, 2.725, 3.004677621976789e-18),
+        (97.9809533, 2.7255, 3.0058351416488264e-18),
+        (97.9809533, 5.0, 8.884154441755405e-18),
+        (97.9809533, 10.0, 2.310208241467953e-17),
+        (97.9809533, 15.0, 3.767004550106603e-17),
+        (97.9809533, 20.0, 5.2327534226489716e-17),
+        (97.9809533, 50.0, 1.4065110112062435e-16),
+        (115.2712018, 2.725, 3.414009462963748e-18),
+        (115.2712018, 2.7255, 3.41547352455557e-18),
+        (115.2712018, 5.0, 1.1160787323883887e-17),
+        (115.2712018, 10.0, 3.056753880461726e-17),
+        (115.2712018, 15.0, 5.063609187999015e-17),
+        (115.2712018, 20.0, 7.087537436801986e-17),
+        (115.2712018, 50.0, 1.9303506966361043e-16),
+        (267.5576259, 2.725, 2.560557900336134e-18),
+        (267.5576259, 2.7255, 2.5627924648656777e-18),
+        (267.5576259, 5.0, 2.345365763098049e-17),
+        (267.5576259, 10.0, 1.0815238202750038e-16),
+        (267.5576259, 15.0, 2.0860670266442467e-16),
+        (267.5576259, 20.0, 3.1367954781026134e-16),
+        (267.5576259, 50.0, 9.645330110682401e-16),
+        (356.734223, 2.725, 1.2529093150538843e-18),
+        (356.734223, 2.7255, 1.2543569459117184e-18),
+        (356.734223, 5.0, 2.2541961250895527e-17),
+        (356.734223, 10.0, 1.4743188828208295e-16),
+        (356.734223, 15.0, 3.141120598389686e-16),
+        (356.734223, 20.0, 4.944557069041256e-16),
+        (356.734223, 50.0, 1.639299483951246e-15),
+    ] {
+        let found = planck_w_m2_hz_sr(frequency_ghz, temperature_k);
+        // The library cancels exp(x) - 1 at low x, which costs it two digits.
+        assert!(relative_difference(found, expected) < 1e-13, "{found}");
+    }
+}
+
+/// The same quantities with units by astropy 8.0.2 and m_H = 1.673532840653e-27 kg.
+#[test]
+fn support_and_field_are_those_of_astropy() {
+    for (found, expected) in [
+        (mass_density_g_cm3(1e5), 4.685_891_953_828_4e-19),
+        (mean_h2_density_cm3(350.0, 0.3), 44_696.927_976_712_9),
+        (sound_speed_km_s(20.0), 0.266_110_223_099_439),
+        (thermal_dispersion_km_s(18.0, 30.0), 0.070_630_571_041_483_6),
+        (virial_parameter(0.7, 0.3, 350.0), 0.488_267_936_384_250_7),
+        (
+            dust_mass_msun(1.0, 1.0, 0.01, 230.0, 20.0),
+            19.659_938_472_396_05,
+        ),
+        (field_from_angles_ug(1e4, 0.5, 10.0), 109.916_706_871_114_6),
+        (alfven_speed_km_s(100.0, 1e4), 1.303_163_575_949_055_4),
+        (mass_to_flux(100.0, 0.3, 100.0), 1.198_933_700_876_544_5),
+    ] {
+        assert!(
+            relative_difference(found, expected) < 1e-12,
+            "{found} {expected}"
+        );
+    }
+}
+
+/// The equation of Mangum & Shirley 2015 written out with numpy 2.4.6 and a rigid rotor's partition
+/// function: H13CO+ 1-0 with tau = 0.147, sigma = 0.7 km/s, T_ex = 11 K.
+#[test]
+fn a_column_density_is_that_of_a_rigid_rotor() {
+    let emitter = Emitter::of(&named("H13CO+ 1-0")).expect("a linear molecule");
+    let found = column_density_cm2(&emitter, 0.147, 0.7, 11.0);
+    // the tabulated partition function is a rigid rotor's within 0.1 %
+    assert!(
+        relative_difference(found, 2.428_047_904_494e12) < 1e-3,
+        "{found}"
+    );
 }
