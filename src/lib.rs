@@ -17,7 +17,7 @@
 //! | [`prepare`] | those into calibrated, baseline-free spectra with measured noise |
 //! | [`measure`] | a prepared pair into asymmetry measures, without a model |
 //! | [`fit`] | models and a prepared pair into parameters, errors and cautions |
-//! | [`derive`] | a fit and properties of the source into rates, time scales and support |
+//! | [`mod@derive`] | a fit and properties of the source into rates, time scales and support |
 //! | [`simulate`] | a truth into spectra |
 //! | [`report`] | results into tables, FITS and figures |
 //! | [`run`] | a run sheet into all of the above |

@@ -41,8 +41,8 @@ pub fn column_density_cm2(emitter: &Emitter, tau: f64, sigma_km_s: f64, t_ex_k: 
 /// Infinite where T reaches J(T_ex) - J(T_bg): no depth makes such a line.
 ///
 /// ```
-/// let tau = inrush::derive::depth_from_brightness(86.7542884, 1.0759, 11.0);
-/// assert!((tau - 0.147).abs() < 1e-4);
+/// let tau = inrush::derive::depth_from_brightness(86.7542884, 1.079_298_7, 11.0);
+/// assert!((tau - 0.147).abs() < 1e-7);
 /// ```
 #[must_use]
 pub fn depth_from_brightness(frequency_ghz: f64, peak_k: f64, t_ex_k: f64) -> f64 {

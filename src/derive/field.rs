@@ -5,7 +5,8 @@ use crate::constants::{GRAVITATION, PARSEC, SOLAR_MASS};
 use std::f64::consts::PI;
 
 /// Correction of the Davis-Chandrasekhar-Fermi relation (Ostriker, Stone & Gammie 2001,
-/// doi:10.1086/318290: 0.46 to 0.51 for dispersions below 25 degrees; rounded as in common practice).
+/// doi:10.1086/318290: 0.46 to 0.51 for dispersions below 25 degrees, from memory; rounded as in common
+/// practice).
 pub const FIELD_CORRECTION: f64 = 0.5;
 
 /// Dispersion of field angles above which the Davis-Chandrasekhar-Fermi relation fails, degrees (same
