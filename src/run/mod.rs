@@ -14,8 +14,8 @@ pub use error::RunError;
 pub use pair::{LineOutcome, PairOutcome, fit_pair};
 pub use products::{check_directory, pair_row, pair_summary, write_products};
 pub use sheet::{
-    Beam, FitSection, Given, LineSection, NumberOrWord, OutputSection, PrepareSection, RangeOrWord,
-    Record, RunSheet, SourceSection,
+    Beam, DeriveSection, FitSection, Given, LineSection, NumberOrWord, OutputSection,
+    PrepareSection, RangeOrWord, Record, RunSheet, SourceSection,
 };
 
 /// The name most like a text, where one is like it at all.

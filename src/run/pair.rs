@@ -1,9 +1,11 @@
 //! One pair through every stage.
 
 use super::{LineSection, RunError, RunSheet};
-use crate::fit::{Caution, PairFacts, PairFit, ThinFit, cautions, fit_thin};
+use crate::derive::{Derived, FitDraws, Tracers};
+use crate::fit::{Caution, ModelFit, PairFacts, PairFit, ThinFit, cautions, fit_thin};
 use crate::line::{Line, isotopologue_pair};
 use crate::measure::{MeasureSettings, Measures, measure};
+use crate::model::Model;
 use crate::prepare::scale::{ScaleNote, to_spectrum};
 use crate::prepare::{Expected, Prepared, prepare_pair};
 use crate::read::{ReadOptions, load, spectrum_from_bytes};
@@ -44,6 +46,22 @@ pub struct PairOutcome {
     pub fit: PairFit,
     /// Cautions, the gravest first.
     pub cautions: Vec<Caution>,
+    /// What follows from the fit and the source's properties, with cautions of its own.
+    pub derived: Derived,
+    /// Whether anything but its name is given of the source.
+    pub source_given: bool,
+}
+
+impl PairOutcome {
+    /// Code and sentence of every caution, the pair's before those of what is derived.
+    #[must_use]
+    pub fn all_cautions(&self) -> Vec<(&'static str, String)> {
+        let of_pair = self.cautions.iter().map(|one| (one.code(), one.text()));
+        let of_derived = &self.derived.cautions;
+        of_pair
+            .chain(of_derived.iter().map(|one| (one.code(), one.text())))
+            .collect()
+    }
 }
 
 /// Reads, prepares, measures and fits the pair of a run sheet; `base` is what its paths are
@@ -54,6 +72,8 @@ pub struct PairOutcome {
 /// [`RunError`] for settings, files or spectra that cannot be used.
 pub fn fit_pair(sheet: &RunSheet, base: &Path) -> Result<PairOutcome, RunError> {
     let settings = sheet.fit_settings()?;
+    let source = sheet.source.properties()?;
+    let derive_settings = sheet.derive_settings()?;
     let (thick_line, thin_line) = (sheet.thick.line("thick")?, sheet.thin.line("thin")?);
     refuse_exchanged_lines(&thick_line, &thin_line)?;
     let thick = open(&sheet.thick, "thick", &thick_line, base)?;
@@ -115,6 +135,18 @@ pub fn fit_pair(sheet: &RunSheet, base: &Path) -> Result<PairOutcome, RunError> 
         measures: &measures,
         fit: &fit,
     });
+    let described = fit.adopted().or_else(|| layer(&fit));
+    let draws = match (described, &thin_fit.line) {
+        (Some(fit), _) => FitDraws::formal(fit, &derive_settings),
+        (None, Some(line)) => FitDraws::of_thin_line(line, &derive_settings),
+        (None, None) => FitDraws::new(derive_settings.draws),
+    };
+    let tracers = Tracers {
+        thick: &thick_line,
+        thin: &thin_line,
+        model: described.map(|fit| fit.model),
+    };
+    let derived = crate::derive::sample(&source, &draws, &tracers, derive_settings.seed)?.derived();
     let name = sheet
         .source
         .name
@@ -130,7 +162,15 @@ pub fn fit_pair(sheet: &RunSheet, base: &Path) -> Result<PairOutcome, RunError> 
         measures,
         fit,
         cautions,
+        derived,
+        source_given: !source.is_empty(),
     })
+}
+
+/// Without an inward speed, a uniform layer still has a depth and an excitation temperature.
+fn layer(fit: &PairFit) -> Option<&ModelFit> {
+    let usable = |fit: &&ModelFit| fit.model == Model::Layer && fit.converged() && fit.determined();
+    fit.models.iter().find(usable)
 }
 
 /// A line's file, read and on the common scale.
