@@ -15,9 +15,8 @@
 #[path = "../examples/stream/survey.rs"]
 mod survey;
 
-use inrush::fit::FitSettings;
 use inrush::report::Row;
-use inrush::run::{BatchSettings, PairJob, fit_pairs, pair_row};
+use inrush::run::{BatchSettings, PairJob, PairSettings, fit_pairs, pair_row};
 use std::ops::{ControlFlow, Range};
 use std::sync::Arc;
 use std::time::Instant;
@@ -70,7 +69,7 @@ fn main() {
 
 /// Seconds for a block by the clock and of processors, and its rows in order.
 fn timed(survey: &Survey, numbers: Range<u64>, threads: usize) -> ([f64; 2], Vec<Row>) {
-    let settings = Arc::new(FitSettings::default());
+    let settings = Arc::new(PairSettings::default());
     let jobs: Vec<PairJob> = numbers
         .map(|number| PairJob::Spectra {
             pair: Box::new(survey.pair(number).unwrap()),

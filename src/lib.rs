@@ -17,11 +17,13 @@
 //! | [`prepare`] | those into calibrated, baseline-free spectra with measured noise |
 //! | [`measure`] | a prepared pair into asymmetry measures, without a model |
 //! | [`fit`] | models and a prepared pair into parameters, errors and cautions |
+//! | [`mod@derive`] | a fit and properties of the source into rates, time scales and support |
 //! | [`simulate`] | a truth into spectra |
 //! | [`report`] | results into tables, FITS and figures |
 //! | [`run`] | a run sheet into all of the above |
 
 pub mod constants;
+pub mod derive;
 pub mod fit;
 pub mod line;
 pub mod measure;

@@ -790,6 +790,36 @@ fn run_sheets_that_are_none() {
                 "file = \"thick.csv\"\nrest_freq_ghz = [89.1, 0.1, 3.0]",
             ))
             .says(&["pair.toml:4", "expected a number, or [value, error]"]),
+        case("unknown property of the source")
+            .sheet(&plus("[source]\nmass_sun = 350\n"))
+            .says(&[
+                "pair.toml:9",
+                "the key `mass_sun`",
+                "\nhint: did you mean `mass_msun`?",
+            ]),
+        case("negative mass")
+            .sheet(&plus("[source]\nmass_msun = -350\n"))
+            .says(&[
+                "pair.toml: mass_msun: -350 Msun",
+                "it is positive",
+                "\nhint: give mass_msun in Msun",
+            ]),
+        case("negative error")
+            .sheet(&plus("[source]\nradius_pc = [0.3, -0.1]\n"))
+            .says(&[
+                "pair.toml: radius_pc: 0.3 with an error of -0.1",
+                "\nhint: ",
+            ]),
+        case("too few draws")
+            .sheet(&plus("[derive]\ndraws = 3\n"))
+            .says(&["pair.toml: 3 draws, expected 100 to 1000000", "\nhint: "]),
+        case("the same by check")
+            .file("source.toml", plus("[source]\nt_kin_k = 1e6\n"))
+            .run(&["check", "source.toml"])
+            .says(&[
+                "source.toml: t_kin_k: 1000000 K",
+                "molecules are dissociated",
+            ]),
         case("a word for a window")
             .sheet(&plus("[prepare]\nwindow_km_s = \"wide\"\n"))
             .says(&["pair.toml:9", "\"wide\"", "expected"]),
@@ -851,6 +881,19 @@ fn run_sheets_that_are_none() {
 fn options_that_cannot_be() {
     check(&[
         case("no arguments").run(&["fit"]).says(&["no name of the thick line", "expected"]),
+        case("radius of a kiloparsec").with(&["--radius-pc", "1000"]).says(&["radius_pc: 1000 pc", "expected 0.00001 to 300 pc", "no molecular cloud is as large", "\nhint: "]),
+        case("kinetic temperature of a corona").with(&["--t-kin-k", "1e6"]).says(&["t_kin_k: 1000000 K", "molecules are dissociated", "\nhint: "]),
+        case("field of a tesla").with(&["--field-ug", "1e10"]).says(&["field_ug: 10000000000 uG", "less than a gauss", "\nhint: give field_ug in uG"]),
+        case("distance of parsecs as kiloparsecs").with(&["--distance-kpc", "1900,200"]).says(&["distance_kpc: 1900 kpc", "megaparsec", "\nhint: give distance_kpc in kpc"]),
+        case("density slope without a mass").with(&["--density-slope", "3"]).says(&["density_slope: 3", "infinite", "\nhint: "]),
+        case("density that rises outward").with(&["--density-slope", "-1"]).says(&["density_slope: -1", "rise outward", "\nhint: "]),
+        case("angles beyond random ones").with(&["--angle-dispersion-deg", "70"]).says(&["angle_dispersion_deg: 70 deg", "without any order", "\nhint: "]),
+        case("dust hotter than dust").with(&["--dust-temperature-k", "5000"]).says(&["dust_temperature_k: 5000 K", "sublimates", "\nhint: "]),
+        case("gas colder than the background").with(&["--t-kin-k", "1.5"]).says(&["t_kin_k: 1.5 K", "background", "\nhint: "]),
+        case("negative mass of an option").with(&["--mass-msun", "-350,90"]).says(&["mass_msun: -350 Msun", "it is positive", "\nhint: "]),
+        case("negative error of an option").with(&["--mass-msun", "350,-90"]).says(&["mass_msun: 350 with an error of -90", "\nhint: "]),
+        case("an error that says nothing is known").with(&["--mass-msun", "350,9000"]).says(&["mass_msun: 350 with an error of 9000", "expected an error of 0 to 3500", "\nhint: "]),
+        case("no number of a mass").with(&["--mass-msun", "heavy"]).says(&["--mass-msun", "`heavy`, expected a number"]),
         case("unknown option").with(&["--thik", "x"]).says(&["--thik", "\nhint: ", "--thick"]),
         case("unknown command").run(&["fot"]).says(&["fot", "\nhint: ", "fit"]),
         case("a number that is none").with(&["--window-km-s", "4,x"]).says(&["`x`", "expected"]),

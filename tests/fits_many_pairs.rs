@@ -4,13 +4,13 @@
     reason = "a test stops where its data cannot be made"
 )]
 
-use inrush::fit::{FitSettings, Workspace};
+use inrush::fit::Workspace;
 use inrush::line::find;
 use inrush::model::Model;
 use inrush::report::{Table, columns, write_csv};
 use inrush::run::{
-    BatchSettings, LineInput, PairInput, PairJob, PairOutcome, RunError, RunSheet, fit_pair,
-    fit_pairs, fit_spectra, pair_row,
+    BatchSettings, LineInput, PairInput, PairJob, PairOutcome, PairSettings, RunError, RunSheet,
+    fit_pair, fit_pairs, fit_spectra, pair_row,
 };
 use inrush::simulate::{PairTruth, SimulatedLine, simulate_pair};
 use inrush::spectrum::Spectrum;
@@ -29,12 +29,13 @@ fn simulated(seed: u64) -> PairInput {
     };
     PairInput {
         name: Some(format!("pair {seed}")),
+        source: inrush::derive::SourceProperties::default(),
         thick: line(truth.thick.line, pair.thick),
         thin: line(truth.thin.line, pair.thin),
     }
 }
 
-fn job(pair: PairInput, settings: &Arc<FitSettings>) -> PairJob {
+fn job(pair: PairInput, settings: &Arc<PairSettings>) -> PairJob {
     PairJob::Spectra {
         pair: Box::new(pair),
         settings: Arc::clone(settings),
@@ -67,7 +68,7 @@ fn table_and_errors(threads: usize, jobs: Vec<PairJob>) -> (Vec<u8>, Vec<(u64, R
 
 /// One pair that cannot be fitted among fifteen that can.
 fn sixteen_pairs() -> Vec<PairJob> {
-    let settings = Arc::new(FitSettings::default());
+    let settings = Arc::new(PairSettings::default());
     (0..16)
         .map(|seed| {
             let mut pair = simulated(seed);
@@ -92,7 +93,7 @@ fn every_number_of_threads_gives_the_bytes_of_one_pair_after_the_other() {
     for seed in (0..16).filter(|&seed| seed != 5) {
         let outcome = fit_spectra(
             simulated(seed),
-            &FitSettings::default(),
+            &PairSettings::default(),
             &mut Workspace::new(),
         )
         .unwrap();
@@ -112,7 +113,7 @@ fn every_number_of_threads_gives_the_bytes_of_one_pair_after_the_other() {
 
 #[test]
 fn a_panic_in_one_pair_is_that_pairs_error() {
-    let settings = Arc::new(FitSettings::default());
+    let settings = Arc::new(PairSettings::default());
     let jobs: Vec<PairJob> = (0..4).map(|seed| job(simulated(seed), &settings)).collect();
     let mut found = Vec::new();
     let _ = fit_pairs(

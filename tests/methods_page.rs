@@ -278,7 +278,9 @@ fn simulated_channels_follow_their_equation() {
 
 /// Whether a name ends in a unit, as results and settings do and tests do not.
 fn is_quantity(name: &str) -> bool {
-    ["_k", "_km_s"].iter().any(|unit| name.ends_with(unit))
+    ["_k", "_km_s", "_cm3", "_cm2", "_cm2_g", "_msun_yr"]
+        .iter()
+        .any(|unit| name.ends_with(unit))
 }
 
 /// Names in backquotes: a file, then `: `, then a test; a test alone belongs to the file before it.

@@ -6,6 +6,13 @@ use inrush::constants::{
     ATOMIC_MASS, BOLTZMANN, Constant, FWHM_PER_SIGMA, GRAVITATION, HYDROGEN_MASS, PARSEC, PLANCK,
     SOLAR_MASS, SPEED_OF_LIGHT, SPEED_OF_LIGHT_KM_S, YEAR, photon_temperature_k,
 };
+use inrush::derive::{
+    Emitter, alfven_speed_km_s, column_density_cm2, doubling_time_yr, dust_mass_msun,
+    field_from_angles_ug, free_fall_speed_km_s, free_fall_time_yr, isothermal_rate_msun_yr,
+    mass_density_g_cm3, mass_rate_from_density_msun_yr, mass_rate_from_mass_msun_yr, mass_to_flux,
+    mean_h2_density_cm3, planck_w_m2_hz_sr, sound_speed_km_s, thermal_dispersion_km_s,
+    virial_parameter,
+};
 use inrush::line::{Line, find};
 use statrs::distribution::{Binomial, DiscreteCDF};
 use statrs::statistics::Distribution;
@@ -189,4 +196,143 @@ fn check_multiplet(line: &Line, reference_mhz: f64, expected: &[(f64, f64, f64)]
         let difference = component.offset_km_s - offset_km_s;
         assert!(difference.abs() < 6e-4, "{difference}");
     }
+}
+
+/// Plain arithmetic with CODATA 2022, IAU 2015 masses and m_H = 1.673532840653e-27 kg, done outside
+/// this program to ten digits.
+#[test]
+fn rates_times_and_speeds_of_collapse_are_plain_arithmetic() {
+    for (found, expected, digits) in [
+        // 4 pi R^2 n mu m_H v: 0.1 pc, 1e5 cm-3, mu = 2.8, 0.5 km/s
+        (
+            mass_rate_from_density_msun_yr(0.1, 1e5, 0.5),
+            4.449_090_972e-4,
+            10,
+        ),
+        // 3 M v/R: 1000 Msun, 0.5 pc, 1 km/s
+        (
+            mass_rate_from_mass_msun_yr(1000.0, 0.5, 0.0, 1.0),
+            6.136_272_990e-3,
+            10,
+        ),
+        // 1e5 cm-3, mu = 2.8
+        (free_fall_time_yr(1e5), 97_242.83, 7),
+        // 100 Msun, 0.1 pc
+        (free_fall_speed_km_s(100.0, 0.1), 2.932_888, 7),
+    ] {
+        assert_eq!(digits_of(found, digits), digits_of(expected, digits));
+    }
+}
+
+/// A number rounded to significant digits.
+fn digits_of(number: f64, digits: usize) -> String {
+    format!("{number:.*e}", digits - 1)
+}
+
+/// Peretto et al. 2013, A&A 555, A112 (abstract): 2.5e-3 Msun/yr over a free-fall time of 3e5 yr bring
+/// in 750 Msun.
+#[test]
+fn a_published_rate_brings_in_its_published_mass() {
+    assert!(relative_difference(doubling_time_yr(750.0, 2.5e-3), 3e5) < ROUNDING);
+}
+
+/// Shu 1977: 0.975 a^3/G = 4.36e-6 (T/20 K)^1.5 Msun/yr with mu = 2.33. Today's constants give 4.369e-6:
+/// the published number is within one of its last digit.
+#[test]
+fn the_rate_of_an_isothermal_sphere_is_that_of_shu() {
+    for (temperature_k, factor) in [(20.0, 1.0), (80.0, 8.0), (5.0, 0.125)] {
+        let found = isothermal_rate_msun_yr(sound_speed_km_s(temperature_k));
+        let off = found / factor - 4.36e-6;
+        assert!(off.abs() < 0.01e-6, "{temperature_k} K: {found}");
+    }
+}
+
+/// astropy 8.0.2, `BlackBody`, W m-2 Hz-1 sr-1.
+#[test]
+fn planck_functions_are_those_of_astropy() {
+    for (frequency_ghz, temperature_k, expected) in [
+        (89.188_524_7, 2.725, 2.745_373_302_917_225_6e-18),
+        (89.188_524_7, 2.7255, 2.746_372_259_419_671_7e-18),
+        (89.188_524_7, 5.0, 7.726_521_121_478_568e-18),
+        (89.188_524_7, 10.0, 1.958_088_573_661_002_2e-17),
+        (89.188_524_7, 15.0, 3.167_698_330_456_583e-17),
+        (89.188_524_7, 20.0, 4.383_466_806_625_823e-17),
+        (89.188_524_7, 50.0, 1.170_409_398_522_522e-16),
+        (93.173_397_7, 2.725, 2.866_910_321_628_471e-18),
+        (93.173_397_7, 2.7255, 2.867_981_068_363_78e-18),
+        (93.173_397_7, 5.0, 8.249_886_574_541_028e-18),
+        (93.173_397_7, 10.0, 2.115_161_430_825_306e-17),
+        (93.173_397_7, 15.0, 3.434_051_175_655_014_5e-17),
+        (93.173_397_7, 20.0, 4.760_269_779_315_715_6e-17),
+        (93.173_397_7, 50.0, 1.274_855_704_351_978_8e-16),
+        (97.980_953_3, 2.725, 3.004_677_621_976_789e-18),
+        (97.980_953_3, 2.7255, 3.005_835_141_648_826_4e-18),
+        (97.980_953_3, 5.0, 8.884_154_441_755_405e-18),
+        (97.980_953_3, 10.0, 2.310_208_241_467_953e-17),
+        (97.980_953_3, 15.0, 3.767_004_550_106_603e-17),
+        (97.980_953_3, 20.0, 5.232_753_422_648_971_6e-17),
+        (97.980_953_3, 50.0, 1.406_511_011_206_243_5e-16),
+        (115.271_201_8, 2.725, 3.414_009_462_963_748e-18),
+        (115.271_201_8, 2.7255, 3.415_473_524_555_57e-18),
+        (115.271_201_8, 5.0, 1.116_078_732_388_388_7e-17),
+        (115.271_201_8, 10.0, 3.056_753_880_461_726e-17),
+        (115.271_201_8, 15.0, 5.063_609_187_999_015e-17),
+        (115.271_201_8, 20.0, 7.087_537_436_801_986e-17),
+        (115.271_201_8, 50.0, 1.930_350_696_636_104_3e-16),
+        (267.557_625_9, 2.725, 2.560_557_900_336_134e-18),
+        (267.557_625_9, 2.7255, 2.562_792_464_865_677_7e-18),
+        (267.557_625_9, 5.0, 2.345_365_763_098_049e-17),
+        (267.557_625_9, 10.0, 1.081_523_820_275_003_8e-16),
+        (267.557_625_9, 15.0, 2.086_067_026_644_246_7e-16),
+        (267.557_625_9, 20.0, 3.136_795_478_102_613_4e-16),
+        (267.557_625_9, 50.0, 9.645_330_110_682_401e-16),
+        (356.734_223, 2.725, 1.252_909_315_053_884_3e-18),
+        (356.734_223, 2.7255, 1.254_356_945_911_718_4e-18),
+        (356.734_223, 5.0, 2.254_196_125_089_552_7e-17),
+        (356.734_223, 10.0, 1.474_318_882_820_829_5e-16),
+        (356.734_223, 15.0, 3.141_120_598_389_686e-16),
+        (356.734_223, 20.0, 4.944_557_069_041_256e-16),
+        (356.734_223, 50.0, 1.639_299_483_951_246e-15),
+    ] {
+        let found = planck_w_m2_hz_sr(frequency_ghz, temperature_k);
+        // The library cancels exp(x) - 1 at low x, which costs it two digits.
+        assert!(relative_difference(found, expected) < 1e-13, "{found}");
+    }
+}
+
+/// The same quantities with units by astropy 8.0.2 and m_H = 1.673532840653e-27 kg.
+#[test]
+fn support_and_field_are_those_of_astropy() {
+    for (found, expected) in [
+        (mass_density_g_cm3(1e5), 4.685_891_953_828_4e-19),
+        (mean_h2_density_cm3(350.0, 0.3), 44_696.927_976_712_9),
+        (sound_speed_km_s(20.0), 0.266_110_223_099_439),
+        (thermal_dispersion_km_s(18.0, 30.0), 0.070_630_571_041_483_6),
+        (virial_parameter(0.7, 0.3, 350.0), 0.488_267_936_384_250_7),
+        (
+            dust_mass_msun(1.0, 1.0, 0.01, 230.0, 20.0),
+            19.659_938_472_396_05,
+        ),
+        (field_from_angles_ug(1e4, 0.5, 10.0), 109.916_706_871_114_6),
+        (alfven_speed_km_s(100.0, 1e4), 1.303_163_575_949_055_4),
+        (mass_to_flux(100.0, 0.3, 100.0), 1.198_933_700_876_544_5),
+    ] {
+        assert!(
+            relative_difference(found, expected) < 1e-12,
+            "{found} {expected}"
+        );
+    }
+}
+
+/// The equation of Mangum & Shirley 2015 written out with numpy 2.4.6 and a rigid rotor's partition
+/// function: H13CO+ 1-0 with tau = 0.147, sigma = 0.7 km/s, T_ex = 11 K.
+#[test]
+fn a_column_density_is_that_of_a_rigid_rotor() {
+    let emitter = Emitter::of(&named("H13CO+ 1-0")).expect("a linear molecule");
+    let found = column_density_cm2(&emitter, 0.147, 0.7, 11.0);
+    // the tabulated partition function is a rigid rotor's within 0.1 %
+    assert!(
+        relative_difference(found, 2.428_047_904_494e12) < 1e-3,
+        "{found}"
+    );
 }

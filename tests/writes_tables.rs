@@ -375,6 +375,12 @@ fn pair() -> Row {
     row.set("mass_rate_msun_yr_lo68", 0.81e-4).unwrap();
     row.set("mass_rate_msun_yr_hi68", 2.04e-4).unwrap();
     row.set("t_ff_yr", 2.3456e5).unwrap();
+    row.set(
+        "missing_inputs",
+        "t_kin_k would fill sound_speed_km_s + sigma_nonthermal_km_s + sigma_total_km_s + \
+         mach_number + virial_parameter; field_ug would fill mass_to_flux",
+    )
+    .unwrap();
     row
 }
 
@@ -414,9 +420,14 @@ Inward speed (formal errors)
 Probabilities
   infall                        0.987
 
-Collapse
+Collapse (68 % intervals; formal errors of the fit)
   mass infall rate              (1.2 -0.4 +0.8)e-4 Msun/yr
   free-fall time                235000 yr
+
+Not derived
+  - t_kin_k would fill sound_speed_km_s + sigma_nonthermal_km_s +
+    sigma_total_km_s + mach_number + virial_parameter
+  - field_ug would fill mass_to_flux
 
 Cautions
   - The thin line has two peaks: two clouds on one line of sight would look

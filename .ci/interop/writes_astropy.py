@@ -47,12 +47,14 @@ def check_same(name, table, records, decode=lambda text: text):
 
 
 def check_units(name, columns):
-    """Each unit is one that FITS and VOUnit know, and agrees with the column's name."""
-    suffixes = {"_km_s": "km/s", "_arcsec": "arcsec", "_msun_yr": "solMass/yr"}
+    """Each unit is one that FITS and VOUnit know (which deprecates the gauss), and agrees with the column's name."""
+    suffixes = {"_km_s": "km/s", "_arcsec": "arcsec", "_msun_yr": "solMass/yr", "_msun": "solMass"}
+    suffixes |= {"_cm3": "cm-3", "_cm2": "cm-2", "_ug": "uG"}
     for column in columns:
         if column.unit is not None:
             u.Unit(column.unit.to_string("fits"), format="fits")
-            u.Unit(column.unit.to_string("vounit"), format="vounit")
+            if column.unit != u.uG:
+                u.Unit(column.unit.to_string("vounit"), format="vounit")
         for suffix, unit in suffixes.items():
             if column.name.endswith(suffix) and not column.name.endswith("_k_km_s"):
                 assert column.unit == u.Unit(unit), f"{name}: {column.name} is in {column.unit}"

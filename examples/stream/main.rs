@@ -10,9 +10,9 @@
 
 mod survey;
 
-use inrush::fit::{FitSettings, Workspace};
+use inrush::fit::Workspace;
 use inrush::report::{ReportError, Row, TableFiles, Value, columns};
-use inrush::run::{BatchSettings, RunError, fit_spectra, pair_row};
+use inrush::run::{BatchSettings, PairSettings, RunError, fit_spectra, pair_row};
 use std::error::Error;
 use std::ops::ControlFlow;
 use std::path::{Path, PathBuf};
@@ -67,7 +67,7 @@ fn stream(
     batch: &BatchSettings,
     directory: &Path,
 ) -> Result<Vec<PathBuf>, Box<dyn Error + Send + Sync>> {
-    let settings = FitSettings::default();
+    let settings = PairSettings::default();
     let meta = vec![("program".to_owned(), Value::from("Inrush"))];
     let mut table = TableFiles::begin(directory, "pairs", &columns::results(), meta)?;
     let mut progress = Progress::new(pairs);

@@ -87,6 +87,7 @@ impl Survey {
                 .map(|spectrum| LineInput::in_memory(line.clone(), spectrum, &name))
         };
         Ok(PairInput {
+            source: inrush::derive::SourceProperties::default(),
             thick: line(&self.lines.0, &clump.thick)?,
             thin: line(&self.lines.1, &clump.thin)?,
             name: Some(name),

@@ -85,6 +85,8 @@ fn inputs(arguments: &CheckArguments, file: &Path) -> Result<Vec<Input>, RunErro
         let sheet = RunSheet::read(file)?;
         sheet
             .fit_settings()
+            .and_then(|_| sheet.source.properties())
+            .and_then(|_| sheet.derive_settings())
             .map_err(|error| error.of_sheet(Some(file)))?;
         let base = file.parent().map_or_else(PathBuf::new, Path::to_owned);
         let sheet = &sheet;

@@ -2,7 +2,8 @@
 
 use super::Exit;
 use super::output::Output;
-use super::values::{named, numbers, range};
+use super::source::SourceArguments;
+use super::values::{given, named, numbers, range};
 use clap::Args;
 use inrush::fit::Workspace;
 use inrush::report;
@@ -145,6 +146,12 @@ pub struct FitArguments {
     #[arg(long, help_heading = "Fitting")]
     formal: bool,
 
+    #[command(flatten)]
+    source: SourceArguments,
+    /// Draws behind each interval of derived quantities.
+    #[arg(long, value_name = "N", help_heading = "Source")]
+    draws: Option<usize>,
+
     /// Write tables, figures and the resolved run sheet into this directory.
     #[arg(long, value_name = "DIR", help_heading = "Products")]
     out: Option<PathBuf>,
@@ -256,6 +263,10 @@ impl FitArguments {
         set(&mut sheet.thick.line, self.thick_line.clone());
         set(&mut sheet.thin.line, self.thin_line.clone());
         set(&mut sheet.source.name, self.name.clone());
+        self.source.set(&mut sheet.source);
+        if let Some(draws) = self.draws {
+            sheet.derive.draws = draws;
+        }
         set(&mut sheet.thick.rest_freq_ghz, self.thick_rest_freq_ghz);
         set(&mut sheet.thin.rest_freq_ghz, self.thin_rest_freq_ghz);
         set(
@@ -314,14 +325,6 @@ impl FitArguments {
 fn set<T>(target: &mut Option<T>, value: Option<T>) {
     if value.is_some() {
         *target = value;
-    }
-}
-
-fn given(text: &str) -> Result<Given, String> {
-    match numbers(text)?[..] {
-        [value] => Ok(Given::Value(value)),
-        [value, err] => Ok(Given::WithError([value, err])),
-        _ => Err("expected VALUE or VALUE,ERR".to_owned()),
     }
 }
 

@@ -5,6 +5,7 @@ mod fit;
 mod lines;
 mod output;
 mod simulate;
+mod source;
 mod values;
 
 use clap::{Parser, Subcommand};

@@ -1,5 +1,7 @@
 //! Values of options: numbers, ranges, and values with a name.
 
+use inrush::run::Given;
+
 /// One finite number.
 pub fn number(text: &str) -> Result<f64, String> {
     let text = text.trim();
@@ -12,6 +14,15 @@ pub fn number(text: &str) -> Result<f64, String> {
 /// Finite numbers with commas between them.
 pub fn numbers(text: &str) -> Result<Vec<f64>, String> {
     text.split(',').map(number).collect()
+}
+
+/// A number, or a number and its error; what they may be is the receiver's to check.
+pub fn given(text: &str) -> Result<Given, String> {
+    match numbers(text)?[..] {
+        [value] => Ok(Given::Value(value)),
+        [value, err] => Ok(Given::WithError([value, err])),
+        _ => Err("expected VALUE or VALUE,ERR".to_owned()),
+    }
 }
 
 /// Two numbers, the lower and the higher end; their order is the receiver's to check.

@@ -2,7 +2,8 @@
 //!
 //! A [`Quantity`] makes its own column and those of its uncertainty: `NAME_err` for a standard
 //! error, `NAME_lo68`, `NAME_hi68`, `NAME_lo95`, `NAME_hi95` for intervals, all in the unit of `NAME`.
-//! Units are written so that FITS, `VOUnit` and ECSV readers all take them.
+//! Units are written so that FITS, `VOUnit` and ECSV readers all take them; `VOUnit` deprecates the
+//! gauss, which fields are in.
 
 use std::sync::OnceLock;
 
@@ -41,6 +42,12 @@ pub enum Group {
     Hypotheses,
     /// What follows from speed, mass and size.
     Collapse,
+    /// What holds the gas up: heat, turbulence, field.
+    Support,
+    /// Column densities of the lines' species.
+    ColumnDensity,
+    /// What would fill empty columns.
+    Missing,
     /// What limits the result.
     Cautions,
 }
@@ -61,6 +68,11 @@ impl Group {
         )
     }
 
+    /// Whether its intervals come from sampling what is given of the source and what a fit says.
+    pub fn is_derived(self) -> bool {
+        matches!(self, Self::Collapse | Self::Support | Self::ColumnDensity)
+    }
+
     /// The group's heading.
     pub fn heading(self) -> &'static str {
         match self {
@@ -79,6 +91,9 @@ impl Group {
             Self::Infall => "Inward speed",
             Self::Hypotheses => "Probabilities",
             Self::Collapse => "Collapse",
+            Self::Support => "Support",
+            Self::ColumnDensity => "Column densities",
+            Self::Missing => "Not derived",
             Self::Cautions => "Cautions",
         }
     }
@@ -163,11 +178,16 @@ const KELVIN: Option<&str> = Some("K");
 const K_KM_S: Option<&str> = Some("K.km/s");
 const ARCSEC: Option<&str> = Some("arcsec");
 const YEAR: Option<&str> = Some("yr");
+const MASS: Option<&str> = Some("solMass");
+const PER_CM3: Option<&str> = Some("cm-3");
+const PER_CM2: Option<&str> = Some("cm-2");
+const MICROGAUSS: Option<&str> = Some("uG");
 const MASS_RATE: Option<&str> = Some("solMass/yr");
 
 use Group::{
-    Asymmetry, Cautions, Collapse, Gaussian, Hill, HillSurface, Hypotheses, Identity, Infall,
-    Kinematics, Layer, Lines, Sphere, TwoGaussians, TwoLayer, TwoLayerContinuum,
+    Asymmetry, Cautions, Collapse, ColumnDensity, Gaussian, Hill, HillSurface, Hypotheses,
+    Identity, Infall, Kinematics, Layer, Lines, Missing, Sphere, Support, TwoGaussians, TwoLayer,
+    TwoLayerContinuum,
 };
 use Uncertainty::{Error, ErrorAndIntervals, Intervals};
 
@@ -256,11 +276,34 @@ pub const QUANTITIES: &[Quantity] = &[
     real(Hypotheses, "p_static", None, "static", "Probability of neither infall nor expansion"),
     real(Hypotheses, "p_two_clouds", None, "two clouds", "Probability of two clouds on one line of sight"),
 
+    with(real(Collapse, "mass_dust_msun", MASS, "mass from dust", "Mass of gas from the dust's flux, S d^2/(kappa B(T_d))"), Intervals),
+    with(real(Collapse, "mass_msun", MASS, "mass", "Mass within the source's radius"), Intervals),
+    text(Collapse, "mass_from", "mass from", "Where mass_msun comes from: given, or its formula"),
+    with(real(Collapse, "n_h2_mean_cm3", PER_CM3, "mean density of H2", "Mean number density of H2, M/((4/3) pi R^3 2.8 m_H)"), Intervals),
     with(real(Collapse, "mass_rate_msun_yr", MASS_RATE, "mass infall rate", "Mass infall rate through the source's radius"), Intervals),
-    real(Collapse, "v_ff_km_s", KM_S, "free-fall speed", "Free-fall speed at the source's radius"),
-    real(Collapse, "t_ff_yr", YEAR, "free-fall time", "Free-fall time at the mean density"),
-    real(Collapse, "doubling_time_yr", YEAR, "mass doubling time", "Mass over mass infall rate"),
-    real(Collapse, "virial_parameter", None, "virial parameter", "5 sigma^2 R/(G M)"),
+    text(Collapse, "mass_rate_from", "mass infall rate from", "Formula of mass_rate_msun_yr"),
+    with(real(Collapse, "v_ff_km_s", KM_S, "free-fall speed", "Free-fall speed at the source's radius, sqrt(2 G M/R)"), Intervals),
+    with(real(Collapse, "v_in_over_v_ff", None, "inward over free fall", "Inward speed over free-fall speed"), Intervals),
+    with(real(Collapse, "t_ff_yr", YEAR, "free-fall time", "Free-fall time at the mean density, sqrt(3 pi/(32 G rho))"), Intervals),
+    with(real(Collapse, "doubling_time_yr", YEAR, "mass doubling time", "Mass over mass infall rate"), Intervals),
+
+    with(real(Support, "sound_speed_km_s", KM_S, "sound speed", "Isothermal sound speed, sqrt(k T/(2.33 m_H))"), Intervals),
+    with(real(Support, "sigma_nonthermal_km_s", KM_S, "non-thermal dispersion", "Dispersion without the thin line's thermal part, sqrt(sigma^2 - k T/m)"), Intervals),
+    with(real(Support, "sigma_total_km_s", KM_S, "total dispersion", "Dispersion of the mean particle, non-thermal and sound speed in quadrature"), Intervals),
+    with(real(Support, "mach_number", None, "sonic Mach number", "Non-thermal dispersion over sound speed, one-dimensional"), Intervals),
+    with(real(Support, "virial_parameter", None, "virial parameter", "5 sigma^2 R/(G M) with the total dispersion"), Intervals),
+    with(real(Support, "virial_thermal", None, "thermal part", "5 sigma^2 R/(G M) with the sound speed"), Intervals),
+    with(real(Support, "virial_nonthermal", None, "non-thermal part", "5 sigma^2 R/(G M) with the non-thermal dispersion"), Intervals),
+    with(real(Support, "isothermal_rate_msun_yr", MASS_RATE, "isothermal sphere's rate", "0.975 a^3/G with a the total dispersion"), Intervals),
+    with(real(Support, "field_ug", MICROGAUSS, "field strength", "Given field, or 0.5 sqrt(4 pi rho) sigma_nt/sigma_phi from the dispersion of its angles"), Intervals),
+    with(real(Support, "mass_to_flux", None, "mass to flux over critical", "Mass-to-flux ratio in units of 1/(2 pi sqrt(G))"), Intervals),
+    with(real(Support, "v_alfven_km_s", KM_S, "Alfven speed", "Alfven speed at the mean density, B/sqrt(4 pi rho)"), Intervals),
+    with(real(Support, "v_in_over_v_alfven", None, "inward over Alfven speed", "Inward speed over Alfven speed"), Intervals),
+
+    with(real(ColumnDensity, "column_thick_cm2", PER_CM2, "thick line's species", "Column density from tau, sigma and T_ex of the adopted model, Mangum & Shirley 2015"), Intervals),
+    with(real(ColumnDensity, "column_thin_cm2", PER_CM2, "thin line's species", "Column density from the fit or from the peak and thin_t_ex_k, Mangum & Shirley 2015"), Intervals),
+
+    text(Missing, "missing_inputs", "missing", "Which inputs would fill which empty columns, separated by ;"),
 
     text(Cautions, "cautions", "cautions", "Short codes of what limits the result, separated by ;"),
 ];
@@ -358,6 +401,10 @@ mod tests {
                 Some("K") => "_k",
                 Some("arcsec") => "_arcsec",
                 Some("yr") => "_yr",
+                Some("solMass") => "_msun",
+                Some("cm-3") => "_cm3",
+                Some("cm-2") => "_cm2",
+                Some("uG") => "_ug",
                 Some("solMass/yr") => "_msun_yr",
                 Some(other) => panic!("{other} has no suffix"),
                 None => continue,

@@ -217,7 +217,9 @@ fn column_cards(header: &mut Header, number: usize, column: &Column, width: usiz
         header.text(&format!("TUNIT{number}"), unit);
     }
     match (column.kind, column.unit.as_deref()) {
-        (Kind::Real, Some("yr" | "solMass/yr")) => header.text(&format!("TDISP{number}"), "E12.4"),
+        (Kind::Real, Some("yr" | "solMass/yr" | "solMass" | "cm-2" | "cm-3")) => {
+            header.text(&format!("TDISP{number}"), "E12.4");
+        }
         (Kind::Real, _) => header.text(&format!("TDISP{number}"), "F12.4"),
         (Kind::Integer, _) => header.card(&format!(
             "{:<8}= {NO_INTEGER:>20}",
@@ -340,8 +342,9 @@ impl Header {
             header.card(&format!("CHECKSUM= '{checksum}'"));
             header.card(&format!("DATASUM = '{data_sum:<8}'"));
             header.card("END");
-            let length = header.cards.len().next_multiple_of(BLOCK);
-            format!("{:<length$}", header.cards).into_bytes()
+            let mut bytes = header.cards.into_bytes();
+            bytes.resize(bytes.len().next_multiple_of(BLOCK), b' ');
+            bytes
         };
         let sum = ones_complement_sum(data_sum, &bytes(NO_CHECKSUM));
         bytes(&encoded(!sum))
@@ -413,6 +416,19 @@ mod tests {
                 .all(|piece| piece.matches('\'').count() % 2 == 0)
         );
         assert!(pieces.iter().all(|piece| piece.len() <= TEXT_ROOM + 1));
+    }
+
+    /// A format's width ends at 65535, a header need not.
+    #[test]
+    fn headers_of_more_than_64_kilobytes_are_padded_with_blanks() {
+        let mut header = Header::default();
+        for number in 0..900 {
+            header.integer(&format!("KEY{number}"), number);
+        }
+        let unit = header.unit(0);
+        assert!(unit.len() > 65_536 && unit.len() % BLOCK == 0);
+        let blanks = unit.iter().rev().take_while(|byte| **byte == b' ').count();
+        assert_eq!(&unit[unit.len() - blanks - 3..unit.len() - blanks], b"END");
     }
 
     #[test]

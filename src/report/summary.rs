@@ -20,7 +20,10 @@ pub fn summary(row: &Row, cautions: &[String]) -> String {
     let mut text = title(row);
     let mut heading = None;
     for quantity in QUANTITIES {
-        if matches!(quantity.group, Group::Identity | Group::Cautions) {
+        if matches!(
+            quantity.group,
+            Group::Identity | Group::Missing | Group::Cautions
+        ) {
             continue;
         }
         let Some(shown) = shown(quantity, row) else {
@@ -30,12 +33,20 @@ pub fn summary(row: &Row, cautions: &[String]) -> String {
             heading = Some(quantity.group);
             let errors = if quantity.group.is_fitted() {
                 " (formal errors)"
+            } else if quantity.group.is_derived() {
+                " (68 % intervals; formal errors of the fit)"
             } else {
                 ""
             };
             let _ = write!(text, "\n{}{errors}\n", quantity.group.heading());
         }
         let _ = writeln!(text, "  {:<LABEL$}{shown}", quantity.label);
+    }
+    if let Ok(Value::Text(missing)) = row.get("missing_inputs") {
+        let _ = write!(text, "\n{}\n", Group::Missing.heading());
+        for sentence in missing.split("; ") {
+            text.push_str(&wrapped(&one_line(sentence)));
+        }
     }
     if !cautions.is_empty() {
         let _ = write!(text, "\n{}\n", Group::Cautions.heading());

@@ -1,6 +1,7 @@
 //! Why a run cannot be done; rendered by the command line.
 
 use super::{BatchError, Panicked};
+use crate::derive::DeriveError;
 use crate::fit::FitError;
 use crate::line::LineError;
 use crate::prepare::scale::ScaleError;
@@ -124,6 +125,9 @@ pub enum RunError {
     /// A pair that cannot be fitted.
     #[error(transparent)]
     Fit(#[from] FitError),
+    /// A property of the source that no source has, or a setting of what is derived from it.
+    #[error(transparent)]
+    Derive(#[from] DeriveError),
     /// A truth that cannot be simulated.
     #[error(transparent)]
     Simulate(#[from] SimulateError),
@@ -155,7 +159,8 @@ impl RunError {
                 error @ (Self::NoFile { .. }
                 | Self::NoLine { .. }
                 | Self::Line { .. }
-                | Self::Setting { .. }),
+                | Self::Setting { .. }
+                | Self::Derive(_)),
             ) => Self::InSheet {
                 path: path.to_owned(),
                 error: Box::new(error),
@@ -235,6 +240,7 @@ impl RunError {
             Self::Scale(error) => error.hint(),
             Self::Prepare { error, .. } => error.hint(),
             Self::Pair { error, .. } | Self::Fit(error) => error.hint(),
+            Self::Derive(error) => error.hint(),
             Self::Simulate(error) => error.hint(),
             Self::Report(error) => error.hint(),
             Self::Batch(error) => error.hint(),

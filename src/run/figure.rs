@@ -35,9 +35,9 @@ pub(super) fn pair_figure(outcome: &PairOutcome) -> report::figure::PairFigure {
         v_thin_km_s: outcome.thin_fit.line.map(|line| line.v_km_s),
         numbers: figure_numbers(outcome),
         cautions: outcome
-            .cautions
-            .iter()
-            .map(crate::fit::Caution::text)
+            .all_cautions()
+            .into_iter()
+            .map(|(_, sentence)| sentence)
             .collect(),
     }
 }

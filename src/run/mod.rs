@@ -14,12 +14,14 @@ pub mod simulate;
 pub use batch::{BatchError, BatchSettings, Panicked};
 pub use check::{FileCheck, check_file};
 pub use error::RunError;
-pub use pair::{LineInput, LineOutcome, PairInput, PairOutcome, fit_pair, fit_spectra, read_pair};
+pub use pair::{
+    LineInput, LineOutcome, PairInput, PairOutcome, PairSettings, fit_pair, fit_spectra, read_pair,
+};
 pub use pairs::{PairJob, fit_pairs};
 pub use products::{check_directory, pair_row, pair_summary, write_products};
 pub use sheet::{
-    Beam, FitSection, Given, LineSection, NumberOrWord, OutputSection, PrepareSection, RangeOrWord,
-    Record, RunSheet, SourceSection,
+    Beam, DeriveSection, FitSection, Given, LineSection, NumberOrWord, OutputSection,
+    PrepareSection, RangeOrWord, Record, RunSheet, SourceSection,
 };
 
 /// The name most like a text, where one is like it at all.

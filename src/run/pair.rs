@@ -1,11 +1,13 @@
 //! One pair through every stage.
 
 use super::{LineSection, RunError, RunSheet};
+use crate::derive::{DeriveSettings, Derived, FitDraws, SourceProperties, Tracers};
 use crate::fit::{
-    Caution, FitSettings, PairFacts, PairFit, ThinFit, Workspace, cautions, fit_thin,
+    Caution, FitSettings, ModelFit, PairFacts, PairFit, ThinFit, Workspace, cautions, fit_thin,
 };
 use crate::line::{Line, isotopologue_pair};
 use crate::measure::{MeasureSettings, Measures, measure};
+use crate::model::Model;
 use crate::prepare::scale::{ScaleNote, to_spectrum};
 use crate::prepare::{Expected, PrepareSettings, Prepared, prepare_pair};
 use crate::read::{ReadOptions, load, spectrum_from_bytes};
@@ -38,10 +40,21 @@ pub struct LineInput {
 pub struct PairInput {
     /// Name of the source; `None` takes what the files state, else the name of the thick line's file.
     pub name: Option<String>,
+    /// What is given of the source.
+    pub source: SourceProperties,
     /// The optically thick line.
     pub thick: LineInput,
     /// The optically thin line.
     pub thin: LineInput,
+}
+
+/// How a pair is fitted, and how quantities are derived from the fit.
+#[derive(Clone, Debug, Default, PartialEq)]
+pub struct PairSettings {
+    /// The fit.
+    pub fit: FitSettings,
+    /// What follows from it.
+    pub derive: DeriveSettings,
 }
 
 /// One line of a pair, read and prepared.
@@ -76,6 +89,22 @@ pub struct PairOutcome {
     pub fit: PairFit,
     /// Cautions, the gravest first.
     pub cautions: Vec<Caution>,
+    /// What follows from the fit and the source's properties, with cautions of its own.
+    pub derived: Derived,
+    /// Whether anything but its name is given of the source.
+    pub source_given: bool,
+}
+
+impl PairOutcome {
+    /// Code and sentence of every caution, the pair's before those of what is derived.
+    #[must_use]
+    pub fn all_cautions(&self) -> Vec<(&'static str, String)> {
+        let of_pair = self.cautions.iter().map(|one| (one.code(), one.text()));
+        let of_derived = &self.derived.cautions;
+        of_pair
+            .chain(of_derived.iter().map(|one| (one.code(), one.text())))
+            .collect()
+    }
 }
 
 /// Reads, prepares, measures and fits the pair of a run sheet; `base` is what its paths are
@@ -89,8 +118,7 @@ pub fn fit_pair(
     base: &Path,
     workspace: &mut Workspace,
 ) -> Result<PairOutcome, RunError> {
-    let settings = sheet.fit_settings()?;
-    fit_spectra(read_pair(sheet, base)?, &settings, workspace)
+    fit_spectra(read_pair(sheet, base)?, &sheet.pair_settings()?, workspace)
 }
 
 /// Reads the pair of a run sheet; `base` is what its paths are relative to.
@@ -107,6 +135,7 @@ pub fn read_pair(sheet: &RunSheet, base: &Path) -> Result<PairInput, RunError> {
     };
     Ok(PairInput {
         name: sheet.source.name.clone(),
+        source: sheet.source.properties()?,
         thick: read(&sheet.thick, "thick", thick_line)?,
         thin: read(&sheet.thin, "thin", thin_line)?,
     })
@@ -119,10 +148,15 @@ pub fn read_pair(sheet: &RunSheet, base: &Path) -> Result<PairInput, RunError> {
 /// [`RunError`] for settings or spectra that cannot be used.
 pub fn fit_spectra(
     pair: PairInput,
-    settings: &FitSettings,
+    settings: &PairSettings,
     workspace: &mut Workspace,
 ) -> Result<PairOutcome, RunError> {
-    let PairInput { name, thick, thin } = pair;
+    let PairInput {
+        name,
+        source,
+        thick,
+        thin,
+    } = pair;
     let (thick_line, thin_line) = (&thick.line, &thin.line);
     refuse_exchanged_lines(thick_line, thin_line)?;
     let expected = |line: &Line| Expected {
@@ -136,7 +170,7 @@ pub fn fit_spectra(
     .map_err(|error| {
         RunError::of_pair(error, (thick.origin.path.clone(), thin.origin.path.clone()))
     })?;
-    let thin_fit = fit_thin(&prepared_thin, thin_line, settings, workspace)?;
+    let thin_fit = fit_thin(&prepared_thin, thin_line, &settings.fit, workspace)?;
     let systematic_km_s = thick_line
         .velocity_systematic_km_s()
         .hypot(thin_line.velocity_systematic_km_s());
@@ -162,7 +196,7 @@ pub fn fit_spectra(
         &prepared_thin,
         (thick_line, thin_line),
         thin_fit.line.as_ref(),
-        settings,
+        &settings.fit,
         workspace,
     )
     .map_err(|error| {
@@ -175,6 +209,18 @@ pub fn fit_spectra(
         measures: &measures,
         fit: &fit,
     });
+    let described = fit.adopted().or_else(|| layer(&fit));
+    let draws = match (described, &thin_fit.line) {
+        (Some(fit), _) => FitDraws::formal(fit, &settings.derive),
+        (None, Some(line)) => FitDraws::of_thin_line(line, &settings.derive),
+        (None, None) => FitDraws::new(settings.derive.draws),
+    };
+    let tracers = Tracers {
+        thick: thick_line,
+        thin: thin_line,
+        model: described.map(|fit| fit.model),
+    };
+    let derived = crate::derive::sample(&source, &draws, &tracers, settings.derive.seed)?.derived();
     let name = name
         .or_else(|| thick.object.clone())
         .or_else(|| thin.object.clone())
@@ -187,7 +233,15 @@ pub fn fit_spectra(
         measures,
         fit,
         cautions,
+        derived,
+        source_given: !source.is_empty(),
     })
+}
+
+/// Without an inward speed, a uniform layer still has a depth and an excitation temperature.
+fn layer(fit: &PairFit) -> Option<&ModelFit> {
+    let usable = |fit: &&ModelFit| fit.model == Model::Layer && fit.converged() && fit.determined();
+    fit.models.iter().find(usable)
 }
 
 impl LineInput {

@@ -1,9 +1,10 @@
 //! Many pairs: each goes the way of one pair.
 
 use super::{
-    BatchError, BatchSettings, PairInput, PairOutcome, RunError, RunSheet, fit_pair, fit_spectra,
+    BatchError, BatchSettings, PairInput, PairOutcome, PairSettings, RunError, RunSheet, fit_pair,
+    fit_spectra,
 };
-use crate::fit::{FitSettings, Workspace};
+use crate::fit::Workspace;
 use std::ops::ControlFlow;
 use std::path::{Path, PathBuf};
 use std::sync::Arc;
@@ -16,7 +17,7 @@ pub enum PairJob {
         /// The pair.
         pair: Box<PairInput>,
         /// How it is fitted; most pairs share their settings.
-        settings: Arc<FitSettings>,
+        settings: Arc<PairSettings>,
     },
     /// A run sheet in memory.
     Sheet {

@@ -1,6 +1,7 @@
 //! Results into rows, text and files.
 
 use super::{LineOutcome, PairOutcome, Record, RunError, RunSheet};
+use crate::derive::{Derived, MassSource, Quantity, RateFormula};
 use crate::fit::ModelFit;
 use crate::measure::ProfileClass;
 use crate::report::{self, ReportError, Row, Table, Value};
@@ -46,14 +47,61 @@ pub fn pair_row(outcome: &PairOutcome) -> Result<Row, RunError> {
         }
         row.set("v_in_model", fit.model.name())?;
     }
+    set_derived(&mut row, outcome)?;
     let mut codes: Vec<&str> = Vec::new();
-    for caution in &outcome.cautions {
-        if !codes.contains(&caution.code()) {
-            codes.push(caution.code());
+    for (code, _) in outcome.all_cautions() {
+        if !codes.contains(&code) {
+            codes.push(code);
         }
     }
     row.set("cautions", codes.join(";"))?;
     Ok(row)
+}
+
+/// Derived quantities, how they were found, and what is missing.
+fn set_derived(row: &mut Row, outcome: &PairOutcome) -> Result<(), RunError> {
+    let derived = &outcome.derived;
+    for quantity in Quantity::ALL {
+        let Some(spread) = derived.get(quantity) else {
+            continue;
+        };
+        let column = quantity.column();
+        row.set(column, spread.value)?;
+        let intervals = [("68", spread.interval68), ("95", spread.interval95)];
+        for (percent, [low, high]) in intervals {
+            row.set(&format!("{column}_lo{percent}"), low)?;
+            row.set(&format!("{column}_hi{percent}"), high)?;
+        }
+    }
+    row.set("mass_from", derived.mass_from.map(MassSource::text))?;
+    row.set("mass_rate_from", derived.rate_from.map(RateFormula::text))?;
+    let missing = if outcome.source_given {
+        missing(derived)
+    } else {
+        NOTHING_GIVEN.to_owned()
+    };
+    row.set("missing_inputs", missing)?;
+    Ok(())
+}
+
+/// What is said in place of a long list where nothing is given of a source.
+const NOTHING_GIVEN: &str = "radius_pc + mass_msun + density_slope + t_kin_k and others would fill mass_rate_msun_yr and others";
+
+/// `INPUTS would fill COLUMNS`, `;` between; no comma, so that tables can be cut at commas.
+fn missing(derived: &Derived) -> String {
+    let each: Vec<String> = derived
+        .missing()
+        .into_iter()
+        .map(|(lack, quantities)| {
+            let columns: Vec<&str> = quantities.into_iter().map(Quantity::column).collect();
+            format!(
+                "{} would fill {}",
+                lack.names().join(" + "),
+                columns.join(" + ")
+            )
+        })
+        .collect();
+    each.join("; ")
 }
 
 /// A model's parameters. Velocity and dispersion of a model with an inward speed stand with the
@@ -94,9 +142,9 @@ pub(super) fn profile_word(profile: ProfileClass) -> &'static str {
 /// As [`pair_row`].
 pub fn pair_summary(outcome: &PairOutcome) -> Result<String, RunError> {
     let sentences: Vec<String> = outcome
-        .cautions
-        .iter()
-        .map(crate::fit::Caution::text)
+        .all_cautions()
+        .into_iter()
+        .map(|(_, sentence)| sentence)
         .collect();
     Ok(report::summary(&pair_row(outcome)?, &sentences))
 }
@@ -189,6 +237,10 @@ fn meta(outcome: &PairOutcome, sheet: &RunSheet) -> Vec<(String, Value)> {
         (
             "errors".to_owned(),
             text("formal, from the curvature of chi2 at its minimum"),
+        ),
+        (
+            "draws".to_owned(),
+            Value::Integer(i64::try_from(sheet.derive.draws).unwrap_or(i64::MAX)),
         ),
     ];
     meta.extend(line("thick", &outcome.thick));

@@ -3,7 +3,8 @@
 //! Unknown keys are errors that name the nearest known key. A resolved sheet, with every default
 //! written out, goes beside the results: running it again gives the same bytes.
 
-use super::RunError;
+use super::{PairSettings, RunError};
+use crate::derive::{DeriveSettings, Input, SourceProperties};
 use crate::fit::{FitRange, FitSettings};
 use crate::line::{Component, Line, LineError};
 use crate::model::Model;
@@ -92,6 +93,9 @@ pub struct RunSheet {
     /// Models.
     #[serde(default)]
     pub fit: FitSection,
+    /// Derived quantities.
+    #[serde(default)]
+    pub derive: DeriveSection,
     /// Products.
     #[serde(default)]
     pub output: OutputSection,
@@ -100,13 +104,104 @@ pub struct RunSheet {
     pub record: Option<Record>,
 }
 
-/// What is observed.
+/// What is observed: each number alone or with its standard error. A radius, mass and density are those
+/// at the given distance; see [`SourceProperties`].
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 #[serde(deny_unknown_fields)]
 pub struct SourceSection {
     /// Name in tables and figures.
     #[serde(skip_serializing_if = "Option::is_none")]
     pub name: Option<String>,
+    /// Distance, kpc.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub distance_kpc: Option<Given>,
+    /// Radius, pc, at that distance.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub radius_pc: Option<Given>,
+    /// Mass within the radius, solar masses, at that distance.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub mass_msun: Option<Given>,
+    /// Number density of H2 at the radius, cm-3, at that distance.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub n_h2_cm3: Option<Given>,
+    /// Slope p of the density, rho ~ r^-p.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub density_slope: Option<Given>,
+    /// Kinetic temperature, K.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub t_kin_k: Option<Given>,
+    /// Flux of the dust, Jy.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub dust_flux_jy: Option<Given>,
+    /// Frequency of that flux, GHz.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub dust_freq_ghz: Option<Given>,
+    /// Temperature of the dust, K.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub dust_temperature_k: Option<Given>,
+    /// Opacity of the dust per gram of gas and dust at that frequency, cm2/g.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub dust_kappa_cm2_g: Option<Given>,
+    /// Magnetic field strength, microgauss.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub field_ug: Option<Given>,
+    /// Dispersion of the field's angles, degrees.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub angle_dispersion_deg: Option<Given>,
+    /// Excitation temperature of the thin line where its model has none, K.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub thin_t_ex_k: Option<Given>,
+}
+
+impl SourceSection {
+    fn given(&self, input: Input) -> Option<Given> {
+        match input {
+            Input::Distance => self.distance_kpc,
+            Input::Radius => self.radius_pc,
+            Input::Mass => self.mass_msun,
+            Input::Density => self.n_h2_cm3,
+            Input::Slope => self.density_slope,
+            Input::Kinetic => self.t_kin_k,
+            Input::DustFlux => self.dust_flux_jy,
+            Input::DustFrequency => self.dust_freq_ghz,
+            Input::DustTemperature => self.dust_temperature_k,
+            Input::DustOpacity => self.dust_kappa_cm2_g,
+            Input::Field => self.field_ug,
+            Input::AngleDispersion => self.angle_dispersion_deg,
+            Input::ThinExcitation => self.thin_t_ex_k,
+        }
+    }
+
+    /// What is given of the source, checked.
+    ///
+    /// # Errors
+    ///
+    /// [`RunError::Derive`] for a value that no source has, with the physical reason.
+    pub fn properties(&self) -> Result<SourceProperties, RunError> {
+        let mut properties = SourceProperties::default();
+        for input in Input::ALL {
+            if let Some(given) = self.given(input) {
+                properties.set(input, given.estimate())?;
+            }
+        }
+        Ok(properties)
+    }
+}
+
+/// Derived quantities.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields, default)]
+pub struct DeriveSection {
+    /// Draws behind each interval.
+    pub draws: usize,
+}
+
+impl Default for DeriveSection {
+    fn default() -> Self {
+        Self {
+            draws: DeriveSettings::default().draws,
+        }
+    }
 }
 
 /// One line of the pair.
@@ -314,6 +409,18 @@ impl RunSheet {
         toml::to_string(self).map_err(|error| RunError::Internal(error.to_string()))
     }
 
+    /// How the pair is fitted, and what is derived.
+    ///
+    /// # Errors
+    ///
+    /// As [`RunSheet::fit_settings`] and [`RunSheet::derive_settings`].
+    pub fn pair_settings(&self) -> Result<PairSettings, RunError> {
+        Ok(PairSettings {
+            fit: self.fit_settings()?,
+            derive: self.derive_settings()?,
+        })
+    }
+
     /// How the pair is fitted.
     ///
     /// # Errors
@@ -386,6 +493,20 @@ impl RunSheet {
                 .collect(),
             ..FitSettings::default()
         })
+    }
+
+    /// How derived quantities are sampled.
+    ///
+    /// # Errors
+    ///
+    /// [`RunError::Derive`] for too few or too many draws.
+    pub fn derive_settings(&self) -> Result<DeriveSettings, RunError> {
+        let settings = DeriveSettings {
+            draws: self.derive.draws,
+            seed: self.seed,
+        };
+        settings.check()?;
+        Ok(settings)
     }
 
     /// How a line of the pair is prepared.

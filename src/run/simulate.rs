@@ -225,6 +225,7 @@ fn sheet(settings: &PairSettings) -> Result<String, RunError> {
     let sheet = PairSheet {
         source: SourceSection {
             name: Some(settings.name.clone()),
+            ..SourceSection::default()
         },
         thick: section("thick", &settings.truth.thick),
         thin: section("thin", &settings.truth.thin),
