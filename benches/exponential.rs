@@ -4,6 +4,10 @@
     clippy::unwrap_used,
     reason = "a bench stops where it cannot go on"
 )]
+#![allow(
+    clippy::inline_always,
+    reason = "has to be compiled inside each instruction-set copy"
+)]
 
 use criterion::{Criterion, Throughput, criterion_group, criterion_main};
 use inrush::numeric::dispatch::{Arithmetic, InstructionSet, Kernel, dispatch_on};

@@ -4,6 +4,7 @@
 //! reflection coefficient lies within -1 and 1, so the covariance is positive definite whatever the
 //! data. The same coefficients give the filters that make noise white.
 
+use super::dispatch::{Arithmetic, Kernel, dispatch};
 use std::ops::Range;
 
 /// `x_i` = `sum_k` `a_k` `x_(i-k)` + `e_i` with unit variance of x; order 0 is white noise.
@@ -350,6 +351,8 @@ fn step_up(coefficients: &mut Vec<f64>, reflection: f64) {
 
 /// One step of Burg's recursion: the reflection coefficient of `order` and the number of pairs it
 /// rests on; `None` where too few pairs are left.
+///
+/// The backward errors stay where they are: that of channel i is at i + 1 - `order`.
 fn burg_step(
     forward: &mut [Vec<f64>],
     backward: &mut [Vec<f64>],
@@ -357,24 +360,58 @@ fn burg_step(
 ) -> Option<(f64, usize)> {
     let (mut cross, mut power, mut pairs) = (0.0, 0.0, 0);
     for (f, b) in forward.iter().zip(backward.iter()) {
-        for i in order..f.len() {
-            cross += f[i] * b[i - 1];
-            power += f[i] * f[i] + b[i - 1] * b[i - 1];
-            pairs += 1;
-        }
+        let f = f.get(order..).unwrap_or_default();
+        let (product, squares) = dispatch(BurgSums(f, &b[..f.len()]));
+        cross += product;
+        power += squares;
+        pairs += f.len();
     }
     if pairs < 4 * order.max(2) || power <= 0.0 {
         return None;
     }
     let reflection: f64 = (2.0 * cross / power).clamp(-LARGEST_REFLECTION, LARGEST_REFLECTION);
     for (f, b) in forward.iter_mut().zip(backward.iter_mut()) {
-        for i in (order..f.len()).rev() {
-            let (ahead, behind) = (f[i], b[i - 1]);
-            f[i] = ahead - reflection * behind;
-            b[i] = behind - reflection * ahead;
+        let f = f.get_mut(order..).unwrap_or_default();
+        for (f, b) in f.iter_mut().zip(b) {
+            let (ahead, behind) = (*f, *b);
+            *f = ahead - reflection * behind;
+            *b = behind - reflection * ahead;
         }
     }
     Some((reflection, pairs))
+}
+
+/// `sum_i` `f_i` `b_i` and `sum_i` (`f_i`^2 + `b_i`^2).
+struct BurgSums<'a>(&'a [f64], &'a [f64]);
+
+impl Kernel for BurgSums<'_> {
+    type Output = (f64, f64);
+
+    /// No fused multiply-add: every copy gives the same.
+    #[inline(always)]
+    #[allow(
+        clippy::inline_always,
+        reason = "has to be compiled inside each instruction-set copy"
+    )]
+    fn run<A: Arithmetic>(self) -> (f64, f64) {
+        const LANES: usize = 8;
+        let Self(f, b) = self;
+        let (mut cross, mut power) = ([0.0; LANES], [0.0; LANES]);
+        let (whole, rest) = f.as_chunks::<LANES>();
+        let (other, other_rest) = b.as_chunks::<LANES>();
+        for (f, b) in whole.iter().zip(other) {
+            for lane in 0..LANES {
+                cross[lane] += f[lane] * b[lane];
+                power[lane] += f[lane] * f[lane] + b[lane] * b[lane];
+            }
+        }
+        let (mut cross, mut power) = (cross.iter().sum::<f64>(), power.iter().sum::<f64>());
+        for (f, b) in rest.iter().zip(other_rest) {
+            cross += f * b;
+            power += f * f + b * b;
+        }
+        (cross, power)
+    }
 }
 
 /// Pulls a reflection coefficient toward zero by its sampling variance (1 - k^2)/count over k, so

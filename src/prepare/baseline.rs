@@ -1,7 +1,7 @@
 //! Polynomial baselines: a start that no line can pull, and clipped least squares on line-free channels.
 
-use crate::numeric::polynomial::{Factor, Polynomial, ScaledAxis};
-use crate::numeric::robust::{clipped_scale, core_scale};
+use crate::numeric::polynomial::{Basis, Polynomial, ScaledAxis};
+use crate::numeric::robust::{clipped_scale, core_scale, limit_of_smallest, squares_within};
 
 /// Per cent of the channels that the robust start rests on: less than what the widest line that is to
 /// be survived leaves free.
@@ -28,8 +28,8 @@ pub(super) struct Channels {
     pub value: Vec<f64>,
     /// Index of each in the spectrum.
     pub index: Vec<usize>,
-    /// Axis scale for polynomials.
-    pub axis: ScaledAxis,
+    /// Polynomials in each.
+    basis: Basis,
 }
 
 impl Channels {
@@ -45,10 +45,10 @@ impl Channels {
             velocity.last().copied().unwrap_or(1.0),
         );
         Self {
+            basis: Basis::new(axis, &velocity),
             velocity,
             value,
             index,
-            axis,
         }
     }
 
@@ -59,7 +59,7 @@ impl Channels {
             velocity: take(&self.velocity),
             value: take(&self.value),
             index: self.index.iter().copied().step_by(stride).collect(),
-            axis: self.axis,
+            basis: self.basis.every(stride),
         }
     }
 
@@ -69,25 +69,21 @@ impl Channels {
 
     /// Values minus a baseline.
     pub fn residuals(&self, baseline: &Polynomial) -> Vec<f64> {
-        self.velocity
-            .iter()
-            .zip(&self.value)
-            .map(|(v, t)| t - baseline.evaluate(*v))
-            .collect()
+        let mut residuals = Vec::with_capacity(self.len());
+        self.basis.subtract(baseline, &self.value, &mut residuals);
+        residuals
     }
 
     /// Least squares on chosen channels; `None` where they do not determine the order.
     fn fit(&self, order: usize, chosen: &[usize]) -> Option<Polynomial> {
-        let factor = Factor::new(self.axis, order, chosen.iter().map(|&i| self.velocity[i]))?;
-        Some(factor.fit(chosen.iter().map(|&i| (self.velocity[i], self.value[i]))))
+        self.basis.fit(order, chosen, &self.value)
     }
 
     /// Variance in each channel of a baseline fitted on chosen channels of unit variance.
     pub fn leverage(&self, order: usize, chosen: &[usize]) -> Vec<f64> {
-        Factor::new(self.axis, order, chosen.iter().map(|&i| self.velocity[i])).map_or_else(
-            || vec![0.0; self.len()],
-            |factor| self.velocity.iter().map(|&v| factor.leverage(v)).collect(),
-        )
+        self.basis
+            .leverages(order, chosen)
+            .unwrap_or_else(|| vec![0.0; self.len()])
     }
 
     /// Indices of runs of channels that neighbour each other in the spectrum and are all kept.
@@ -123,6 +119,7 @@ pub(super) fn robust_start(channels: &Channels, order: usize) -> Option<Clipped>
     let core = |count: usize| (count * CORE_PERCENT / 100).max(order + 3).min(count);
     let block = |b: usize| (b * count / BLOCKS)..((b + 1) * count / BLOCKS);
     let mut starts: Vec<(f64, Polynomial)> = Vec::new();
+    let mut scratch = Vec::with_capacity(channels.len());
     for first in 0..BLOCKS {
         for second in first..BLOCKS {
             let chosen: Vec<usize> = block(first).chain(block(second)).collect();
@@ -130,17 +127,30 @@ pub(super) fn robust_start(channels: &Channels, order: usize) -> Option<Clipped>
             let Some(line) = coarse.fit(degree, &chosen) else {
                 continue;
             };
-            starts.extend(concentrate(&coarse, line, order.min(1), core(count), 3));
+            starts.extend(concentrate(
+                &coarse,
+                line,
+                order.min(1),
+                (core(count), 3),
+                &mut scratch,
+            ));
         }
     }
     starts.sort_by(|a, b| a.0.total_cmp(&b.0));
     let best = starts
         .into_iter()
         .take(3)
-        .filter_map(|(_, line)| concentrate(&coarse, line, order, core(count), 12))
+        .filter_map(|(_, line)| concentrate(&coarse, line, order, (core(count), 12), &mut scratch))
         .min_by(|a, b| a.0.total_cmp(&b.0))?
         .1;
-    let best = concentrate(channels, best, order, core(channels.len()), 6)?.1;
+    let best = concentrate(
+        channels,
+        best,
+        order,
+        (core(channels.len()), 6),
+        &mut scratch,
+    )?
+    .1;
     // The usual last step: least squares on all that the start does not call outliers.
     let residuals = channels.residuals(&best);
     let scale = core_scale(&residuals, CORE_CLIP);
@@ -174,29 +184,28 @@ fn difference_scale(residuals: &[f64]) -> f64 {
 }
 
 /// Refits to the `core` channels nearest to the baseline, `steps` times; the sum of their squared
-/// residuals with it.
+/// residuals with it. `magnitude` is overwritten.
 fn concentrate(
     channels: &Channels,
     mut baseline: Polynomial,
     order: usize,
-    core: usize,
-    steps: usize,
+    (core, steps): (usize, usize),
+    magnitude: &mut Vec<f64>,
 ) -> Option<(f64, Polynomial)> {
+    let (basis, value) = (&channels.basis, &channels.value);
     let mut last = f64::INFINITY;
     for _ in 0..steps {
-        let residuals = channels.residuals(&baseline);
-        let mut nearest: Vec<usize> = (0..channels.len()).collect();
-        nearest.select_nth_unstable_by(core - 1, |&a, &b| {
-            residuals[a].abs().total_cmp(&residuals[b].abs())
-        });
-        nearest.truncate(core);
-        nearest.sort_unstable();
-        let sum: f64 = nearest.iter().map(|&i| residuals[i] * residuals[i]).sum();
+        basis.subtract(&baseline, value, magnitude);
+        for residual in magnitude.iter_mut() {
+            *residual = residual.abs();
+        }
+        let limit = limit_of_smallest(magnitude, core);
+        let (sum, _) = squares_within(magnitude, limit);
         if sum >= last {
             break;
         }
         last = sum;
-        baseline = channels.fit(order, &nearest)?;
+        baseline = basis.fit_within(order, magnitude, limit, value)?;
     }
     Some((last, baseline))
 }
@@ -224,11 +233,12 @@ pub(super) fn clipped_fit(
         let residuals = channels.residuals(&baseline);
         let on_free: Vec<f64> = free.iter().map(|&i| residuals[i]).collect();
         let scale = clipped_scale(&on_free, NOISE_CLIP);
-        let next: Vec<usize> = free
-            .iter()
-            .copied()
-            .filter(|&i| residuals[i].abs() <= clip * scale)
-            .collect();
+        let mut next = Vec::with_capacity(free.len());
+        next.extend(
+            free.iter()
+                .copied()
+                .filter(|&i| residuals[i].abs() <= clip * scale),
+        );
         if next == kept || next.len() <= order + 1 {
             return Some(Clipped {
                 baseline,

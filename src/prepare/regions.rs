@@ -1,6 +1,11 @@
 //! Runs of channels with significant signal: boxes of many widths, grown into the wings.
+#![allow(
+    clippy::inline_always,
+    reason = "has to be compiled inside each instruction-set copy"
+)]
 
 use crate::numeric::Autoregression;
+use crate::numeric::dispatch::{Arithmetic, Kernel, dispatch};
 
 /// A run of channels with signal, ends included.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -141,15 +146,21 @@ impl Boxes {
             .into_iter()
             .map(|width| (width, self.variance_of_sum[width].sqrt()))
             .collect();
+        let mut may_stand_out = vec![0_u64; self.len()];
+        dispatch(MayStandOut {
+            sums: &self.sums,
+            widths: &widths,
+            threshold,
+            marks: &mut may_stand_out,
+        });
         let mut found = Vec::new();
         let mut strongest = 0.0_f64;
-        for high in 0..self.len() {
-            for &(width, least_noise) in widths.iter().take_while(|at| at.0 <= high + 1) {
+        for (high, &marks) in may_stand_out.iter().enumerate() {
+            let mut left = marks;
+            while left != 0 {
+                let width = widths[left.trailing_zeros() as usize].0;
+                left &= left - 1;
                 let low = high + 1 - width;
-                let sum = (self.sums[high + 1] - self.sums[low]).abs();
-                if sum < strongest.min(threshold) * least_noise {
-                    continue;
-                }
                 let significance = self.significance(low, width);
                 strongest = strongest.max(significance.abs());
                 if significance.abs() >= threshold {
@@ -161,7 +172,24 @@ impl Boxes {
                 }
             }
         }
+        if strongest < threshold {
+            strongest = self.strongest(&widths);
+        }
         (found, strongest)
+    }
+
+    /// The significance of the strongest box, either way.
+    fn strongest(&self, widths: &[(usize, f64)]) -> f64 {
+        let mut strongest = 0.0_f64;
+        for &(width, least_noise) in widths {
+            for low in 0..=self.len() - width {
+                let sum = (self.sums[low + width] - self.sums[low]).abs();
+                if sum >= strongest * least_noise {
+                    strongest = strongest.max(self.significance(low, width).abs());
+                }
+            }
+        }
+        strongest
     }
 
     /// Extends a box into its wings, on either side by at most its own width.
@@ -225,5 +253,32 @@ impl Boxes {
             }
         }
         (regions, strongest)
+    }
+}
+
+/// Marks the boxes that reach a threshold in units of their least noise: bit k of a channel's marks
+/// for the box of the k-th width (at most 64 of them) that ends there.
+struct MayStandOut<'a> {
+    /// Sums before each channel, and of all.
+    sums: &'a [f64],
+    /// Widths, and the least noise of a sum over each.
+    widths: &'a [(usize, f64)],
+    threshold: f64,
+    marks: &'a mut [u64],
+}
+
+impl Kernel for MayStandOut<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        for (k, &(width, least_noise)) in self.widths.iter().enumerate() {
+            let limit = self.threshold * least_noise;
+            let ends = self.marks[width - 1..].iter_mut();
+            for (marks, (before, until)) in ends.zip(self.sums.iter().zip(&self.sums[width..])) {
+                let mark = u64::from((until - before).abs() >= limit);
+                *marks |= mark << k;
+            }
+        }
     }
 }

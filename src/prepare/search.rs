@@ -69,9 +69,9 @@ impl Exclusion {
 
     /// Channels that are line-free.
     fn free(&self) -> Vec<usize> {
-        (0..self.channels.len())
-            .filter(|&i| !self.channels[i])
-            .collect()
+        let mut free = Vec::with_capacity(self.channels.len());
+        free.extend((0..self.channels.len()).filter(|&i| !self.channels[i]));
+        free
     }
 }
 
@@ -199,10 +199,9 @@ impl<'a> Search<'a> {
     /// Noise and its process on channels that are not excluded, corrected for what the baseline took.
     fn noise(&self, fit: &Clipped, excluded: &[bool]) -> (f64, Autoregression) {
         let residuals = self.channels.residuals(&fit.baseline);
-        let free: Vec<f64> = (0..residuals.len())
-            .filter(|&i| !excluded[i])
-            .map(|i| residuals[i])
-            .collect();
+        let mut free = Vec::with_capacity(residuals.len());
+        let not_excluded = residuals.iter().zip(excluded).filter(|(_, out)| !**out);
+        free.extend(not_excluded.map(|(residual, _)| *residual));
         let scale = clipped_scale(&free, NOISE_CLIP);
         let process = self.process(&residuals, scale, excluded);
         let terms = self.order + 1;

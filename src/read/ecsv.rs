@@ -89,7 +89,7 @@ impl Header {
         let written = split(names.1, self.separator);
         if written
             .iter()
-            .ne(self.columns.iter().map(|column| &column.name))
+            .ne(self.columns.iter().map(|column| column.name.as_str()))
         {
             return Err(ReadError::EcsvHeader {
                 path: path.to_path_buf(),

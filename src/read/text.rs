@@ -1,5 +1,6 @@
 //! What the text formats share: lines, separators, quotes, numbers.
 
+use std::borrow::Cow;
 use std::path::Path;
 
 use super::columns::{Column, Roles};
@@ -60,8 +61,13 @@ pub(super) fn decode<'a>(path: &Path, bytes: &'a [u8]) -> Result<&'a str, ReadEr
         path: path.to_path_buf(),
         found: describe(bytes),
     };
-    let is_binary = |byte: &u8| byte.is_ascii_control() && !b"\t\n\r\x0c".contains(byte);
-    if bytes.iter().any(is_binary) {
+    let is_binary =
+        |byte: u8| byte.is_ascii_control() && !matches!(byte, b'\t' | b'\n' | b'\r' | b'\x0c');
+    // No early end: so the compiler looks at many bytes at once.
+    if bytes
+        .iter()
+        .fold(false, |found, byte| found | is_binary(*byte))
+    {
         return Err(unrecognised());
     }
     std::str::from_utf8(bytes).map_err(|error| {
@@ -109,12 +115,36 @@ pub(super) fn data_lines<'a>(lines: &[Line<'a>]) -> Vec<Line<'a>> {
 }
 
 /// Fields of a line; double quotes keep separators, and two of them stand for one.
-pub(super) fn split(text: &str, separator: Separator) -> Vec<String> {
+pub(super) fn split(text: &str, separator: Separator) -> Vec<Cow<'_, str>> {
+    let mut fields = Vec::new();
+    split_into(text, separator, &mut fields);
+    fields
+}
+
+/// The same into `fields`, which are overwritten.
+fn split_into<'a>(text: &'a str, separator: Separator, fields: &mut Vec<Cow<'a, str>>) {
+    fields.clear();
+    let text = text.trim();
+    if text.contains('"') {
+        let unquoted = split_quoted(text, separator);
+        return fields.extend(unquoted.into_iter().map(Cow::Owned));
+    }
+    let trimmed = |field: &'a str| Cow::Borrowed(field.trim());
+    match separator {
+        Separator::Character(letter) => fields.extend(text.split(letter).map(trimmed)),
+        Separator::Blanks => {
+            let words = text.split([' ', '\t']).filter(|word| !word.is_empty());
+            fields.extend(words.map(trimmed));
+        }
+    }
+}
+
+fn split_quoted(text: &str, separator: Separator) -> Vec<String> {
     let mut fields = Vec::new();
     let mut field = String::new();
     let mut quoted = false;
     let mut was_quoted = false;
-    let mut letters = text.trim().chars().peekable();
+    let mut letters = text.chars().peekable();
     while let Some(letter) = letters.next() {
         match letter {
             '"' if quoted && letters.peek() == Some(&'"') => {
@@ -181,7 +211,7 @@ pub(super) fn decimal_comma(path: &Path, line: usize, found: &str) -> ReadError 
 }
 
 /// Axis and values of rows of text, in the file's order and units; and the line of each.
-#[derive(Debug, Default)]
+#[derive(Debug)]
 pub(super) struct Channels {
     pub axis: Vec<f64>,
     pub values: Vec<f64>,
@@ -201,9 +231,14 @@ pub(super) fn channels(
     columns: &[Column],
     roles: &Roles,
 ) -> Result<Channels, ReadError> {
-    let mut read = Channels::default();
+    let mut read = Channels {
+        axis: Vec::with_capacity(rows.len()),
+        values: Vec::with_capacity(rows.len()),
+        lines: Vec::with_capacity(rows.len()),
+    };
+    let mut fields = Vec::with_capacity(columns.len());
     for &(line, text) in rows {
-        let fields = split(text, separator);
+        split_into(text, separator, &mut fields);
         if fields.len() != columns.len() {
             return Err(wrong_count(path, (line, text), &fields, columns.len()));
         }
@@ -249,10 +284,10 @@ fn not_a_number(path: &Path, line: usize, column: &str, field: &str) -> ReadErro
 fn wrong_count(
     path: &Path,
     (line, text): Line<'_>,
-    fields: &[String],
+    fields: &[Cow<'_, str>],
     expected: usize,
 ) -> ReadError {
-    let whole = |field: &String| field.trim_start_matches(['+', '-']).parse::<u64>().is_ok();
+    let whole = |field: &Cow<'_, str>| field.trim_start_matches(['+', '-']).parse::<u64>().is_ok();
     if fields.len() == 2 * expected && fields.iter().skip(1).step_by(2).all(whole) {
         let found = format!("{},{}", fields[0], fields[1]);
         if is_decimal_comma(&found) {
