@@ -102,7 +102,13 @@ fn preparing(criterion: &mut Criterion) {
         .unwrap()
     };
     let (thick, thin) = prepared();
-    let thin_fit = fit_thin(&thin, &lines.1, &FitSettings::default(), &mut Workspace::new()).unwrap();
+    let thin_fit = fit_thin(
+        &thin,
+        &lines.1,
+        &FitSettings::default(),
+        &mut Workspace::new(),
+    )
+    .unwrap();
     let mut group = criterion.benchmark_group("before_the_fit");
     group.bench_function("prepare", |bencher| {
         bencher.iter(|| {

@@ -237,17 +237,23 @@ impl Layout {
     /// Where optical depths are linked: the thin line's column by its own optical depth, the third of
     /// `columns`, becomes that by the thick line's, and that by the isotope ratio is written last.
     pub(super) fn chain_link(&self, joint: &[f64], columns: &mut [f64], channels: usize) {
-        let Some((tau, ratio)) = self.link else {
+        let Some((by_tau, by_ratio)) = self.link_slopes(joint) else {
             return;
         };
-        // the thin line's optical depth is 2 tau / ratio
-        let by_tau = 2.0 / joint[ratio];
-        let (columns, by_ratio) = columns.split_at_mut(columns.len() - channels);
-        let by_depth = &mut columns[2 * channels..3 * channels];
-        for (by_depth, by_ratio) in by_depth.iter_mut().zip(by_ratio) {
-            *by_ratio = -by_tau * joint[tau] / joint[ratio] * *by_depth;
+        let (columns, ratio_column) = columns.split_at_mut(columns.len() - channels);
+        let depth_column = &mut columns[2 * channels..3 * channels];
+        for (by_depth, target) in depth_column.iter_mut().zip(ratio_column) {
+            *target = by_ratio * *by_depth;
             *by_depth *= by_tau;
         }
+    }
+
+    /// Slopes of the thin line's optical depth, 2 tau / ratio, by tau and by the isotope ratio, where it is
+    /// linked.
+    pub(super) fn link_slopes(&self, joint: &[f64]) -> Option<(f64, f64)> {
+        let (tau, ratio) = self.link?;
+        let by_tau = 2.0 / joint[ratio];
+        Some((by_tau, -by_tau * joint[tau] / joint[ratio]))
     }
 
     /// The thin line's own parameters.

@@ -8,6 +8,7 @@ mod amplitudes;
 mod cautions;
 mod channels;
 mod joint;
+mod normal;
 mod projected;
 mod race;
 mod starts;
@@ -410,6 +411,9 @@ pub fn fit_pair(
         .collect::<Result<Vec<Layout>, FitError>>()?;
     check_names(settings, &layouts)?;
     check_continuum(settings)?;
+    for layout in &layouts {
+        check_channels(layout, &thick_channels, &thin_channels)?;
+    }
 
     let (thick_about, thin_about) = starts::about(&kinematics);
     let thick_near = thick_channels.near(thick_about);
@@ -442,6 +446,24 @@ pub fn fit_pair(
         range,
         points,
     })
+}
+
+/// Refuses a model with as many free parameters as there are channels, or more.
+fn check_channels(layout: &Layout, thick: &Channels, thin: &Channels) -> Result<(), FitError> {
+    let channels = thick.len() + thin.len();
+    let free = layout
+        .parameters()
+        .iter()
+        .filter(|parameter| !parameter.interval.is_fixed())
+        .count();
+    if thick.len() <= free || channels <= free || thin.is_empty() {
+        return Err(FitError::TooFewChannels {
+            channels: thick.len().min(channels),
+            parameters: free,
+            model: layout.thick_line().0.name(),
+        });
+    }
+    Ok(())
 }
 
 /// The thin line's model beside a model of the thick line.
@@ -587,7 +609,7 @@ const SEARCH: Settings = Settings {
 };
 
 /// A minimum that is so much shallower in chi2 is none worth a second look.
-const NO_RIVAL: f64 = 50.0;
+const NO_RIVAL: f64 = 25.0;
 
 /// A line's pair of channel sets, or the thin line's alone.
 type Lines<'a> = (Option<&'a Channels>, &'a Channels);
@@ -654,18 +676,6 @@ fn fit_model(
 ) -> Result<ModelFit, FitError> {
     let channels = thick.len() + thin.len();
     let (model, _) = layout.thick_line();
-    let free = layout
-        .parameters()
-        .iter()
-        .filter(|parameter| !parameter.interval.is_fixed())
-        .count();
-    if thick.len() <= free || channels <= free || thin.is_empty() {
-        return Err(FitError::TooFewChannels {
-            channels: thick.len().min(channels),
-            parameters: free,
-            model: model.name(),
-        });
-    }
     let starts = scan.starts(&layout);
     let near = (Some(near.0), near.1);
     let (minima, evaluations) = minima(&layout, near, (Some(thick), thin), &starts, workspace)?;

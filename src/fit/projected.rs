@@ -9,11 +9,14 @@
 use super::amplitudes::{Amplitudes, Products};
 use super::channels::Channels;
 use super::joint::Layout;
+use super::normal::{LineSums, line_sums};
 use super::workspace::LineBuffers;
 use crate::model::{MOST_AMPLITUDES, Model};
 use crate::numeric::Estimate;
 use crate::numeric::dispatch::{Arithmetic, Kernel, dispatch};
-use crate::numeric::least_squares::{Interval, LeastSquares, MAX_PARAMETERS, RowBlock, Structure};
+use crate::numeric::least_squares::{
+    Interval, LeastSquares, MAX_PARAMETERS, NormalEquations, RowBlock, Structure,
+};
 use crate::numeric::products::products_with;
 
 /// A prior's reach: its amplitude stays within so many standard errors.
@@ -128,6 +131,13 @@ impl<'a> Projected<'a> {
             .position(|position| *position == joint)
     }
 
+    fn place(&mut self, parameters: &[f64]) {
+        for ((position, origin), value) in self.nonlinear.iter().zip(&self.origins).zip(parameters)
+        {
+            self.joint[*position] = origin + value;
+        }
+    }
+
     fn of_joint<T>(&self, value: impl Fn(usize, f64) -> T) -> Vec<T> {
         (self.nonlinear.iter().zip(&self.origins))
             .map(|(position, origin)| value(*position, *origin))
@@ -189,21 +199,43 @@ impl<'a> Line<'a> {
         }
     }
 
-    /// Residuals and their Jacobian by the model's nonlinear parameters at local parameters.
-    fn evaluate(&mut self, local: &[f64], residuals: &mut [f64], jacobian: Option<&mut [f64]>) {
-        let slopes = jacobian.is_some().then_some(&mut self.buffers.slopes[..]);
+    /// Functions and, where wanted, slopes at local parameters, white as the data are.
+    fn fill(&mut self, local: &[f64], slopes: bool) {
+        let LineBuffers {
+            functions,
+            slopes: columns,
+        } = &mut self.buffers;
         let channels = self.channels;
+        let wanted = slopes.then_some(&mut columns[..]);
         self.model.functions(
             channels.line(),
             channels.sampling(),
             local,
-            &mut self.buffers.functions,
-            slopes,
+            functions,
+            wanted,
         );
-        channels.decorrelate(&mut self.buffers.functions);
-        if jacobian.is_some() {
-            channels.decorrelate(&mut self.buffers.slopes);
+        channels.decorrelate(functions);
+        if slopes {
+            channels.decorrelate(columns);
         }
+    }
+
+    /// The sums at local parameters.
+    fn sums(&mut self, local: &[f64]) -> LineSums {
+        self.fill(local, true);
+        let LineBuffers { functions, slopes } = &self.buffers;
+        line_sums(
+            self.channels.whitened_data(),
+            functions,
+            slopes,
+            &self.ranges,
+        )
+    }
+
+    /// Residuals and their Jacobian by the model's nonlinear parameters at local parameters.
+    fn evaluate(&mut self, local: &[f64], residuals: &mut [f64], jacobian: Option<&mut [f64]>) {
+        self.fill(local, jacobian.is_some());
+        let channels = self.channels;
         self.amplitudes = dispatch(Projection {
             data: channels.whitened_data(),
             functions: &self.buffers.functions,
@@ -236,16 +268,60 @@ impl LeastSquares for Projected<'_> {
         ])
     }
 
+    fn normal_equations(&mut self, parameters: &[f64]) -> Option<NormalEquations> {
+        self.place(parameters);
+        let mut all = NormalEquations::default();
+        let mut local = [0.0; MAX_PARAMETERS];
+        if let Some(line) = &mut self.thick {
+            for (value, position) in local.iter_mut().zip(line.joint) {
+                *value = self.joint[*position];
+            }
+            let sums = line.sums(&local[..line.joint.len()]);
+            for (p, own) in line.depends_on.iter().enumerate() {
+                all.gradient[*own] += sums.gradient[p];
+                for (q, other) in line.depends_on.iter().enumerate() {
+                    all.gram[*own][*other] += sums.gram[p.min(q)][p.max(q)];
+                }
+            }
+            all.chi2 += sums.chi2;
+        }
+        let line = &mut self.thin;
+        let local = &mut local[..line.joint.len()];
+        self.layout.thin_local(&self.joint, local);
+        let sums = line.sums(local);
+        all.chi2 += sums.chi2;
+        // an own optical depth that is linked counts for tau and for the isotope ratio
+        let chain = self.layout.link_slopes(&self.joint);
+        let own = |column: usize| match (column, chain) {
+            (2, Some((by_tau, _))) => (2, by_tau),
+            (3, Some((_, by_ratio))) => (2, by_ratio),
+            _ => (column, 1.0),
+        };
+        for (column, place) in line.depends_on.iter().enumerate() {
+            let (p, factor) = own(column);
+            all.gradient[*place] += factor * sums.gradient[p];
+            for (other, other_place) in line.depends_on.iter().enumerate() {
+                let (q, other_factor) = own(other);
+                let product = sums.gram[p.min(q)][p.max(q)];
+                all.gram[*place][*other_place] += factor * other_factor * product;
+            }
+        }
+        for (place, prior) in &self.priors {
+            let residual = (self.joint[self.nonlinear[*place]] - prior.value) / prior.err;
+            all.chi2 += residual * residual;
+            all.gradient[*place] += residual / prior.err;
+            all.gram[*place][*place] += 1.0 / (prior.err * prior.err);
+        }
+        Some(all)
+    }
+
     fn evaluate(
         &mut self,
         parameters: &[f64],
         residuals: &mut [f64],
         jacobian: Option<&mut [f64]>,
     ) {
-        for ((position, origin), value) in self.nonlinear.iter().zip(&self.origins).zip(parameters)
-        {
-            self.joint[*position] = origin + value;
-        }
+        self.place(parameters);
         let mut rows = residuals;
         let mut columns = jacobian;
         let mut local = [0.0; MAX_PARAMETERS];
@@ -382,5 +458,165 @@ impl Kernel for Projection<'_> {
             }
         }
         best.amplitudes
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::fit::{Averaging, FitSettings};
+    use crate::line::{Component, Line as SpectralLine, find};
+    use crate::model::LineShape;
+    use crate::numeric::Autoregression;
+    use crate::prepare::{Baseline, Prepared};
+    use crate::spectrum::{Noise, Spectrum, Window};
+
+    fn channels(line: &SpectralLine, process: Autoregression, count: i32) -> Channels {
+        let velocity: Vec<f64> = (0..count).map(|i| 0.1 * f64::from(i - count / 2)).collect();
+        let temperature = velocity
+            .iter()
+            .map(|v| (-v * v).exp() * (1.0 + 0.3 * v) + 0.05 * (37.0 * v).sin())
+            .collect();
+        let channels = velocity.len();
+        let prepared = Prepared {
+            spectrum: Spectrum::new(velocity, vec![0.1; channels], temperature).unwrap(),
+            window: Window {
+                low_km_s: -2.0,
+                high_km_s: 2.0,
+            },
+            window_automatic: false,
+            window_cuts_line: false,
+            other_signal: Vec::new(),
+            baseline: Baseline {
+                order: None,
+                values_k: vec![0.0; channels],
+                channels,
+                clipped: 0,
+            },
+            noise: Noise {
+                rms_k: 0.05,
+                channels,
+                process,
+            },
+        };
+        let shape = LineShape::new(line.rest_frequency_ghz, line.components.clone());
+        Channels::new(&prepared, shape, None, Averaging::Channel, 0.2)
+    }
+
+    /// Sums in one pass are those of the residuals and the Jacobian, and the gradient is that of chi2.
+    #[test]
+    fn normal_equations_are_those_of_residuals_and_jacobian() {
+        let reach = Interval::new(-3.0, 3.0);
+        let linked = FitSettings {
+            isotope_ratio: Some(Estimate {
+                value: 50.0,
+                err: 10.0,
+            }),
+            ..FitSettings::default()
+        };
+        let single = find("HCO+ 1-0").unwrap();
+        let triplet = SpectralLine {
+            components: vec![
+                Component {
+                    offset_km_s: -0.5,
+                    weight: 0.4,
+                },
+                Component {
+                    offset_km_s: 0.3,
+                    weight: 0.6,
+                },
+            ],
+            ..single.clone()
+        };
+        for (thick_model, thin_model, settings) in [
+            (Model::TwoLayer, Model::Gaussian, FitSettings::default()),
+            (Model::Hill, Model::Layer, linked.clone()),
+            (Model::HillSurface, Model::Layer, linked),
+            (Model::Layer, Model::Gaussian, FitSettings::default()),
+            (
+                Model::TwoGaussians,
+                Model::TwoGaussians,
+                FitSettings::default(),
+            ),
+        ] {
+            for (count, process) in [
+                (83, Autoregression::white()),
+                (64, Autoregression::from_reflections(&[0.5, -0.2])),
+            ] {
+                let thick = channels(&triplet, process.clone(), count);
+                let thin = channels(&single, process, 61);
+                let layout = Layout::new(thick_model, thin_model, &settings, reach).unwrap();
+                let joint: Vec<f64> = layout
+                    .parameters()
+                    .iter()
+                    .map(|parameter| match parameter.name {
+                        "v_lsr_km_s" => 0.1,
+                        "v_second_km_s" => 0.8,
+                        "v_in_km_s" => 0.2,
+                        "sigma_km_s" | "sigma_second_km_s" => 0.6,
+                        "tau" => 2.5,
+                        "isotope_ratio" => 45.0,
+                        _ => 1.5,
+                    })
+                    .collect();
+                let mut buffers = [LineBuffers::default(), LineBuffers::default()];
+                let mut problem =
+                    Projected::new(&layout, (Some(&thick), &thin), &joint, &mut buffers);
+                let at = problem.parameters_of(&joint);
+                let (rows, structure) = (problem.residuals(), problem.structure());
+                let mut residuals = vec![0.0; rows];
+                let mut stored = vec![0.0; structure.numbers()];
+                problem.evaluate(&at, &mut residuals, Some(&mut stored));
+                let sums = problem.normal_equations(&at).unwrap();
+                let chi2: f64 = residuals.iter().map(|r| r * r).sum();
+                assert!((sums.chi2 / chi2 - 1.0).abs() < 1e-12);
+                let mut gram = [[0.0; MAX_PARAMETERS]; MAX_PARAMETERS];
+                let mut gradient = [0.0; MAX_PARAMETERS];
+                let (mut start, mut first) = (0, 0);
+                for block in structure.blocks() {
+                    let column = |k: usize| {
+                        &stored[start + k * block.rows()..start + (k + 1) * block.rows()]
+                    };
+                    let own = &residuals[first..first + block.rows()];
+                    for (k, i) in block.parameters().iter().enumerate() {
+                        let dot = |b: &[f64]| -> f64 {
+                            column(k).iter().zip(b).map(|(a, b)| a * b).sum()
+                        };
+                        gradient[*i] += dot(own);
+                        for (l, j) in block.parameters().iter().enumerate() {
+                            gram[*i][*j] += dot(column(l));
+                        }
+                    }
+                    start += block.rows() * block.parameters().len();
+                    first += block.rows();
+                }
+                for i in 0..at.len() {
+                    let scale = gram[i][i].sqrt();
+                    assert!(
+                        (sums.gradient[i] - gradient[i]).abs() < 1e-9 * scale * chi2.sqrt(),
+                        "{thick_model:?} gradient {i}: {} and {}",
+                        sums.gradient[i],
+                        gradient[i]
+                    );
+                    for j in 0..at.len() {
+                        let scale = scale * gram[j][j].sqrt();
+                        assert!((sums.gram[i][j] - gram[i][j]).abs() < 1e-9 * scale);
+                    }
+                    let step = 1e-5;
+                    let mut chi2_at = |shift: f64| {
+                        let mut moved = at.clone();
+                        moved[i] += shift;
+                        problem.normal_equations(&moved).unwrap().chi2
+                    };
+                    let slope = (chi2_at(step) - chi2_at(-step)) / (2.0 * step);
+                    let expected = 2.0 * sums.gradient[i];
+                    assert!(
+                        (slope - expected).abs()
+                            < 1e-4 * (slope.abs() + scale * chi2.sqrt() * 1e-3),
+                        "{thick_model:?} parameter {i}: {slope} and {expected}"
+                    );
+                }
+            }
+        }
     }
 }

@@ -33,7 +33,7 @@ const SAME_PARAMETER: f64 = 0.02;
 
 /// Optical depth below which the two halves can nearly be exchanged: there is a minimum with the other
 /// sign of the inward speed as deep to within little.
-const EXCHANGEABLE: f64 = 1.0;
+const EXCHANGEABLE: f64 = 4.0;
 
 /// chi2 and parameters.
 type Place = (f64, Vec<f64>);

@@ -44,24 +44,47 @@ pub(super) fn sum_of_squares(values: &[f64]) -> f64 {
     dispatch(Squares(values))
 }
 
-/// J^T J and J^T r of a stored Jacobian.
+/// chi2 and its derivatives, from r and J.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct NormalEquations {
+    /// r^T r.
+    pub chi2: f64,
+    /// J^T r.
+    pub gradient: [f64; MAX_PARAMETERS],
+    /// J^T J.
+    pub gram: [[f64; MAX_PARAMETERS]; MAX_PARAMETERS],
+}
+
+impl Default for NormalEquations {
+    fn default() -> Self {
+        Self {
+            chi2: 0.0,
+            gradient: [0.0; MAX_PARAMETERS],
+            gram: [[0.0; MAX_PARAMETERS]; MAX_PARAMETERS],
+        }
+    }
+}
+
+/// The normal equations of a stored Jacobian.
 pub(super) fn normal_equations(
     jacobian: &[f64],
     residuals: &[f64],
     structure: &Structure,
-) -> (Matrix, Vector) {
-    let mut gram = [[0.0; MAX_PARAMETERS]; MAX_PARAMETERS];
-    let mut gradient = [0.0; MAX_PARAMETERS];
+) -> NormalEquations {
+    let mut sums = NormalEquations {
+        chi2: sum_of_squares(residuals),
+        ..NormalEquations::default()
+    };
     for (block, numbers, right) in structure.parts(jacobian, residuals) {
         dispatch(Products {
             block,
             numbers,
             right,
-            gram: &mut gram,
-            gradient: &mut gradient,
+            gram: &mut sums.gram,
+            gradient: &mut sums.gradient,
         });
     }
-    (gram, gradient)
+    sums
 }
 
 /// Adds one row block's products.
@@ -187,7 +210,7 @@ mod tests {
         for (rows, columns) in [(3, 1), (17, 4), (256, 5), (700, 9), (1031, 16)] {
             let jacobian: Vec<f64> = (0..columns).flat_map(|j| sample(rows, j as f64)).collect();
             let residuals = sample(rows, 0.5);
-            let (gram, gradient) =
+            let NormalEquations { gram, gradient, .. } =
                 normal_equations(&jacobian, &residuals, &Structure::dense(rows, columns));
             for i in 0..columns {
                 let column = |j: usize| &jacobian[j * rows..(j + 1) * rows];
@@ -206,7 +229,7 @@ mod tests {
         let (rows, columns) = (40, 6);
         let jacobian: Vec<f64> = (0..columns).flat_map(|j| sample(rows, j as f64)).collect();
         let right = sample(rows, 0.5);
-        let (gram, gradient) =
+        let NormalEquations { gram, gradient, .. } =
             normal_equations(&jacobian, &right, &Structure::dense(rows, columns));
         let (mut reduced, mut rotated) = (jacobian, right);
         triangularise(&mut reduced, rows, columns, &mut rotated);

@@ -9,7 +9,8 @@
 use super::dense::{self, MAX_PARAMETERS, Matrix, Vector};
 use super::minimum::Curvature;
 use super::{
-    Interval, LeastSquares, LeastSquaresError, Minimum, Settings, Side, Structure, Termination,
+    Interval, LeastSquares, LeastSquaresError, Minimum, NormalEquations, Settings, Side, Structure,
+    Termination,
 };
 
 /// Smallest relative pivot of the normal equations: rounding (2e-16) over this is below 1e-8.
@@ -124,19 +125,23 @@ impl Descent {
         let free = check_start(rows, columns, start, bounds)?;
         let structure = problem.structure();
         workspace.reserve(rows, columns);
-        let residuals = &mut workspace.residuals[..rows];
-        let jacobian = &mut workspace.jacobian[..structure.numbers()];
-        problem.evaluate(start, residuals, Some(jacobian));
-        check_values(residuals, jacobian, &structure)?;
         let mut parameters = [0.0; MAX_PARAMETERS];
         parameters[..columns].copy_from_slice(start);
-        let linear = Linearisation::new(jacobian, residuals, &structure, columns);
+        let linear = if let Some(linear) = Linearisation::of_sums(problem, start) {
+            linear
+        } else {
+            let residuals = &mut workspace.residuals[..rows];
+            let jacobian = &mut workspace.jacobian[..structure.numbers()];
+            problem.evaluate(start, residuals, Some(jacobian));
+            check_values(residuals, jacobian, &structure)?;
+            Linearisation::new(jacobian, residuals, &structure, columns)
+        };
         let mut descent = Self {
             structure,
             rows,
             columns,
             parameters,
-            chi2: dense::sum_of_squares(residuals),
+            chi2: linear.sums.chi2,
             degrees_of_freedom: rows.saturating_sub(free).max(1) as f64,
             linear,
             largest_norms: [0.0; MAX_PARAMETERS],
@@ -264,10 +269,17 @@ impl Descent {
         workspace: &mut Workspace,
     ) -> bool {
         let trial = self.moved(step, bounds);
+        let parameters = &trial[..self.columns];
+        let of_sums = Linearisation::of_sums(problem, parameters);
         let residuals = &mut workspace.trial_residuals[..self.rows];
         let jacobian = &mut workspace.trial_jacobian[..self.structure.numbers()];
-        problem.evaluate(&trial[..self.columns], residuals, Some(jacobian));
-        let chi2 = dense::sum_of_squares(residuals);
+        let chi2 = match &of_sums {
+            Some(linear) => linear.sums.chi2,
+            None => {
+                problem.evaluate(parameters, residuals, Some(jacobian));
+                dense::sum_of_squares(residuals)
+            }
+        };
         self.gain = if chi2.is_finite() {
             (self.chi2 - chi2) / step.decrease
         } else {
@@ -276,7 +288,9 @@ impl Descent {
         if self.gain.is_nan() || self.gain < LEAST_GAIN || step.decrease <= 0.0 {
             return false;
         }
-        let linear = Linearisation::new(jacobian, residuals, &self.structure, self.columns);
+        let linear = of_sums.unwrap_or_else(|| {
+            Linearisation::new(jacobian, residuals, &self.structure, self.columns)
+        });
         if !linear.is_finite() {
             return false;
         }
@@ -356,12 +370,14 @@ impl Descent {
         let limit = settings.gradient_tolerance * self.chi2.sqrt();
         (0..self.columns)
             .filter(|&j| !self.is_pressed(j, bounds))
-            .all(|j| self.linear.gradient[j].abs() <= limit * self.linear.gram[j][j].sqrt())
+            .all(|j| {
+                self.linear.sums.gradient[j].abs() <= limit * self.linear.sums.gram[j][j].sqrt()
+            })
     }
 
     /// Whether the parameter is fixed, or on a bound with chi2 falling beyond it.
     fn is_pressed(&self, parameter: usize, bounds: &[Interval]) -> bool {
-        let slope = self.linear.gradient[parameter];
+        let slope = self.linear.sums.gradient[parameter];
         match bounds[parameter].side(self.parameters[parameter]) {
             Some(Side::Fixed) => true,
             Some(Side::Lower) => slope >= 0.0,
@@ -377,7 +393,7 @@ impl Descent {
         let scale = without_zeros(self.largest_norms);
         let steepness = (0..self.columns)
             .filter(|&j| !self.is_pressed(j, bounds))
-            .map(|j| (self.linear.gradient[j] / scale[j]).powi(2))
+            .map(|j| (self.linear.sums.gradient[j] / scale[j]).powi(2))
             .sum::<f64>()
             .sqrt();
         let (mut low, mut high) = (UNDAMPED, steepness / self.radius);
@@ -482,13 +498,19 @@ struct Step {
 #[derive(Clone, Debug)]
 struct Linearisation {
     columns: usize,
-    /// J^T J.
-    gram: Matrix,
-    /// J^T r.
-    gradient: Vector,
-    /// Whether the workspace's triangle is of this Jacobian: it is formed when the normal equations lose
-    /// too many digits.
-    triangular: bool,
+    sums: NormalEquations,
+    known: Known,
+}
+
+/// What is known of a Jacobian besides its sums.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+enum Known {
+    /// Nothing: where the normal equations lose too many digits, they are damped.
+    Sums,
+    /// The workspace holds it.
+    Jacobian,
+    /// The workspace's triangle is its: it is formed when the normal equations lose too many digits.
+    Triangle,
 }
 
 /// J = Q R.
@@ -502,23 +524,31 @@ struct Triangle {
 
 impl Linearisation {
     fn new(jacobian: &[f64], residuals: &[f64], structure: &Structure, columns: usize) -> Self {
-        let (gram, gradient) = dense::normal_equations(jacobian, residuals, structure);
         Self {
             columns,
-            gram,
-            gradient,
-            triangular: false,
+            sums: dense::normal_equations(jacobian, residuals, structure),
+            known: Known::Jacobian,
         }
     }
 
+    /// Of a problem that gives its sums without a Jacobian.
+    fn of_sums<P: LeastSquares + ?Sized>(problem: &mut P, parameters: &[f64]) -> Option<Self> {
+        Some(Self {
+            columns: parameters.len(),
+            sums: problem.normal_equations(parameters)?,
+            known: Known::Sums,
+        })
+    }
+
     fn is_finite(&self) -> bool {
-        (0..self.columns).all(|j| self.gram[j][j].is_finite() && self.gradient[j].is_finite())
+        (0..self.columns)
+            .all(|j| self.sums.gram[j][j].is_finite() && self.sums.gradient[j].is_finite())
     }
 
     /// 2 g.d + d.J^T J d with its sign turned.
     fn decrease(&self, shift: &Vector, triangle: &Triangle) -> f64 {
         let n = self.columns;
-        if self.triangular {
+        if self.known == Known::Triangle {
             return -(0..n)
                 .map(|row| {
                     let change = dense::dot(&triangle.upper[row][row..n], &shift[row..n]);
@@ -528,15 +558,15 @@ impl Linearisation {
         }
         -(0..n)
             .map(|row| {
-                let change = dense::dot(&self.gram[row][..n], &shift[..n]);
-                shift[row] * (2.0 * self.gradient[row] + change)
+                let change = dense::dot(&self.sums.gram[row][..n], &shift[..n]);
+                shift[row] * (2.0 * self.sums.gradient[row] + change)
             })
             .sum::<f64>()
     }
 
     /// The norm of each column of J.
     fn column_norms(&self) -> Vector {
-        std::array::from_fn(|j| self.gram[j][j].sqrt())
+        std::array::from_fn(|j| self.sums.gram[j][j].sqrt())
     }
 
     /// The shifts that minimise |r + J d|^2 + damping |D d|^2, those of held parameters given.
@@ -559,12 +589,19 @@ impl Linearisation {
             }
         }
         let free = &free[..count];
-        if !self.triangular && self.solve_normal(damping, scale, free, &mut shift) {
+        if self.known != Known::Triangle && self.solve_normal(damping, scale, free, &mut shift) {
             return shift;
         }
-        if !self.triangular {
+        if self.known == Known::Sums {
+            let mut damping = damping.max(SMALLEST_PIVOT);
+            while damping < 1.0 && !self.solve_normal(damping, scale, free, &mut shift) {
+                damping *= 10.0;
+            }
+            return shift;
+        }
+        if self.known == Known::Jacobian {
             workspace.triangularise(structure, self.columns);
-            self.triangular = true;
+            self.known = Known::Triangle;
         }
         let triangle = &workspace.triangle;
         triangle.solve(self.columns, damping, scale, free, &mut shift);
@@ -583,11 +620,11 @@ impl Linearisation {
         let mut x = [0.0; MAX_PARAMETERS];
         for (row, &i) in free.iter().enumerate() {
             for (column, &j) in free[..=row].iter().enumerate() {
-                matrix[row][column] = self.gram[i][j] / (scale[i] * scale[j]);
+                matrix[row][column] = self.sums.gram[i][j] / (scale[i] * scale[j]);
             }
             matrix[row][row] += damping;
-            let moved = dense::dot(&self.gram[i][..self.columns], &shift[..self.columns]);
-            x[row] = -(self.gradient[i] + moved) / scale[i];
+            let moved = dense::dot(&self.sums.gram[i][..self.columns], &shift[..self.columns]);
+            x[row] = -(self.sums.gradient[i] + moved) / scale[i];
         }
         if dense::cholesky(&mut matrix, free.len()) < SMALLEST_PIVOT {
             return false;
@@ -611,7 +648,7 @@ impl Linearisation {
         let mut matrix = [[0.0; MAX_PARAMETERS]; MAX_PARAMETERS];
         for (row, &i) in free.iter().enumerate() {
             for (column, &j) in free.iter().enumerate() {
-                matrix[row][column] = self.gram[i][j];
+                matrix[row][column] = self.sums.gram[i][j];
             }
         }
         if dense::cholesky(&mut matrix, size) >= SMALLEST_PIVOT {
@@ -622,8 +659,10 @@ impl Linearisation {
             }
             return triangle;
         }
-        if !self.triangular {
-            workspace.triangularise(structure, self.columns);
+        match self.known {
+            Known::Sums => return triangle,
+            Known::Jacobian => workspace.triangularise(structure, self.columns),
+            Known::Triangle => {}
         }
         let full = &workspace.triangle;
         let n = self.columns;

@@ -21,7 +21,7 @@ mod termination;
 
 pub use bounds::{Interval, Side, unbounded};
 pub use check::check_jacobian;
-pub use dense::MAX_PARAMETERS;
+pub use dense::{MAX_PARAMETERS, NormalEquations};
 pub use descent::{Descent, Workspace};
 pub use error::LeastSquaresError;
 pub use minimum::{Covariance, CovarianceError, Minimum};
@@ -53,6 +53,13 @@ pub trait LeastSquares {
     ///
     /// Every element must be written; the buffers hold old numbers.
     fn evaluate(&mut self, parameters: &[f64], residuals: &mut [f64], jacobian: Option<&mut [f64]>);
+
+    /// The sums that a step needs, where a problem has them cheaper than residuals and Jacobian;
+    /// `evaluate` is then not called. Steps where they lose too many digits are damped.
+    fn normal_equations(&mut self, parameters: &[f64]) -> Option<NormalEquations> {
+        let _ = parameters;
+        None
+    }
 }
 
 impl<P: LeastSquares + ?Sized> LeastSquares for &mut P {
@@ -75,6 +82,10 @@ impl<P: LeastSquares + ?Sized> LeastSquares for &mut P {
         jacobian: Option<&mut [f64]>,
     ) {
         (**self).evaluate(parameters, residuals, jacobian);
+    }
+
+    fn normal_equations(&mut self, parameters: &[f64]) -> Option<NormalEquations> {
+        (**self).normal_equations(parameters)
     }
 }
 
