@@ -11,6 +11,7 @@
 use super::amplitudes::Products;
 use crate::model::MOST_AMPLITUDES;
 use crate::numeric::dispatch::{Arithmetic, Kernel, dispatch};
+use crate::numeric::products::products_with;
 
 /// Most nonlinear parameters of a model.
 pub(super) const MOST_NONLINEAR: usize = 4;
@@ -67,21 +68,6 @@ struct Line<'a> {
 /// Of `K` functions and `P` nonlinear parameters.
 struct Sums<'a, const K: usize, const P: usize>(Line<'a>);
 
-/// The channels from `start` on that fill a register; zeros where there are no more.
-#[inline(always)]
-fn lanes(column: &[f64], start: usize) -> Lanes {
-    if let Some(whole) = column.get(start..start + LANES) {
-        let mut lanes = [0.0; LANES];
-        lanes.copy_from_slice(whole);
-        return lanes;
-    }
-    let mut lanes = [0.0; LANES];
-    for (lane, value) in lanes.iter_mut().zip(&column[start..]) {
-        *lane = *value;
-    }
-    lanes
-}
-
 #[inline(always)]
 fn add_product<A: Arithmetic>(sum: &mut Lanes, a: &Lanes, b: &Lanes) {
     for lane in 0..LANES {
@@ -89,9 +75,25 @@ fn add_product<A: Arithmetic>(sum: &mut Lanes, a: &Lanes, b: &Lanes) {
     }
 }
 
+/// The first `count` registers of a column.
 #[inline(always)]
+fn registers(column: &[f64], count: usize) -> &[Lanes] {
+    &column.as_chunks::<LANES>().0[..count]
+}
+
+/// Not inlined: the compiler would let the order of these few sums rule that of the loops before them.
+#[inline(never)]
 fn total(s: &Lanes) -> f64 {
     ((s[0] + s[4]) + (s[1] + s[5])) + ((s[2] + s[6]) + (s[3] + s[7]))
+}
+
+/// Sums over channels of the products of residuals r, J and functions.
+struct Accumulated<const P: usize> {
+    chi2: f64,
+    gram: [[f64; P]; P],
+    gradient: [f64; P],
+    along_f: [f64; P],
+    along_h: [f64; P],
 }
 
 impl<const K: usize, const P: usize> Kernel for Sums<'_, K, P> {
@@ -112,25 +114,18 @@ impl<const K: usize, const P: usize> Kernel for Sums<'_, K, P> {
         } else {
             f
         };
-        let zero = [0.0; LANES];
-        let [mut ff, mut fh, mut hh, mut fd, mut hd, mut dd] = [zero; 6];
-        for start in (0..channels).step_by(LANES) {
-            let (d, f) = (lanes(data, start), lanes(f, start));
-            add_product::<A>(&mut ff, &f, &f);
-            add_product::<A>(&mut fd, &f, &d);
-            add_product::<A>(&mut dd, &d, &d);
-            if K == 2 {
-                let h = lanes(h, start);
-                add_product::<A>(&mut fh, &f, &h);
-                add_product::<A>(&mut hh, &h, &h);
-                add_product::<A>(&mut hd, &h, &d);
-            }
-        }
+        let [ff, fh, fd] = products_with::<3, A>(f, [f, h, data]);
+        let [hh, hd] = products_with::<2, A>(h, [h, data]);
         let products = Products {
-            squares: [total(&ff), total(&hh)],
-            both: total(&fh),
-            by_data: [total(&fd), total(&hd)],
-            data: total(&dd),
+            squares: [ff, hh],
+            both: fh,
+            by_data: [fd, hd],
+            data: 0.0,
+        };
+        let products = if K == 2 {
+            products
+        } else {
+            products.of_first_alone()
         };
         let best = products.best(line.ranges);
         let [a, b] = best.amplitudes;
@@ -147,63 +142,118 @@ impl<const K: usize, const P: usize> Kernel for Sums<'_, K, P> {
                 by_h[p] = slope(p, 1);
             }
         }
-        let mut chi2 = zero;
-        let mut gram = [[zero; P]; P];
-        let mut gradient = [zero; P];
-        let mut along_f = [zero; P];
-        let mut along_h = [zero; P];
-        for start in (0..channels).step_by(LANES) {
-            let (d, f) = (lanes(data, start), lanes(f, start));
-            let h = if K == 2 { lanes(h, start) } else { zero };
-            let mut r = zero;
-            for lane in 0..LANES {
-                r[lane] = A::mul_add(a, f[lane], -d[lane]);
-                if K == 2 {
-                    r[lane] = A::mul_add(b, h[lane], r[lane]);
-                }
-            }
-            add_product::<A>(&mut chi2, &r, &r);
-            let mut j = [zero; P];
-            for p in 0..P {
-                let s = lanes(by_f[p], start);
-                let t = if K == 2 { lanes(by_h[p], start) } else { zero };
-                for lane in 0..LANES {
-                    j[p][lane] = a * s[lane];
-                    if K == 2 {
-                        j[p][lane] = A::mul_add(b, t[lane], j[p][lane]);
-                    }
-                }
-            }
-            for p in 0..P {
-                add_product::<A>(&mut gradient[p], &j[p], &r);
-                add_product::<A>(&mut along_f[p], &j[p], &f);
-                if K == 2 {
-                    add_product::<A>(&mut along_h[p], &j[p], &h);
-                }
-                for q in p..P {
-                    add_product::<A>(&mut gram[p][q], &j[p], &j[q]);
-                }
-            }
-        }
-
-        let mut sums = LineSums {
-            chi2: total(&chi2),
+        let sums = accumulate::<K, P, A>((data, f, h), (by_f, by_h), (a, b));
+        let mut result = LineSums {
+            chi2: sums.chi2,
             gradient: [0.0; MOST_NONLINEAR],
             gram: [[0.0; MOST_NONLINEAR]; MOST_NONLINEAR],
         };
-        let along = |p: usize| [total(&along_f[p]), total(&along_h[p])];
         for p in 0..P {
-            sums.gradient[p] = total(&gradient[p]);
-            let of_p = Products {
-                by_data: along(p),
+            result.gradient[p] = sums.gradient[p];
+            let along = Products {
+                by_data: [sums.along_f[p], sums.along_h[p]],
                 ..products
             };
-            let [by_f, by_h] = of_p.shares(best.free);
+            let [by_f, by_h] = along.shares(best.free);
             for q in p..P {
-                let [with_f, with_h] = along(q);
-                sums.gram[p][q] = total(&gram[p][q]) - by_f * with_f - by_h * with_h;
+                let explained = by_f * sums.along_f[q] + by_h * sums.along_h[q];
+                result.gram[p][q] = sums.gram[p][q] - explained;
             }
         }
-        sums
+        result
     }
+}
+
+/// The sums with amplitudes a and b.
+#[inline(always)]
+#[allow(
+    clippy::needless_range_loop,
+    reason = "loops over constants are unrolled, and sums stay in registers"
+)]
+fn accumulate<const K: usize, const P: usize, A: Arithmetic>(
+    (data, f, h): (&[f64], &[f64], &[f64]),
+    (by_f, by_h): ([&[f64]; P], [&[f64]; P]),
+    (a, b): (f64, f64),
+) -> Accumulated<P> {
+    let (d, rest) = data.as_chunks::<LANES>();
+    let whole = data.len() - rest.len();
+    let n = d.len();
+    let (f_lanes, h_lanes) = (registers(f, n), registers(h, n));
+    let (by_f_lanes, by_h_lanes) = (
+        by_f.map(|column| registers(column, n)),
+        by_h.map(|column| registers(column, n)),
+    );
+    let zero = [0.0; LANES];
+    let mut chi2 = zero;
+    let mut gram = [[zero; P]; P];
+    let [mut gradient, mut along_f, mut along_h] = [[zero; P]; 3];
+    for i in 0..n {
+        let mut r = zero;
+        for lane in 0..LANES {
+            r[lane] = A::mul_add(a, f_lanes[i][lane], -d[i][lane]);
+        }
+        if K == 2 {
+            for lane in 0..LANES {
+                r[lane] = A::mul_add(b, h_lanes[i][lane], r[lane]);
+            }
+        }
+        let mut j = [zero; P];
+        for p in 0..P {
+            let mut column = zero;
+            for lane in 0..LANES {
+                column[lane] = a * by_f_lanes[p][i][lane];
+            }
+            if K == 2 {
+                for lane in 0..LANES {
+                    column[lane] = A::mul_add(b, by_h_lanes[p][i][lane], column[lane]);
+                }
+            }
+            j[p] = column;
+        }
+        add_product::<A>(&mut chi2, &r, &r);
+        for p in 0..P {
+            add_product::<A>(&mut gradient[p], &j[p], &r);
+            add_product::<A>(&mut along_f[p], &j[p], &f_lanes[i]);
+            if K == 2 {
+                add_product::<A>(&mut along_h[p], &j[p], &h_lanes[i]);
+            }
+            for q in p..P {
+                add_product::<A>(&mut gram[p][q], &j[p], &j[q]);
+            }
+        }
+    }
+    let totals = |sums: [Lanes; P]| sums.map(|lanes| total(&lanes));
+    let mut sums = Accumulated {
+        chi2: total(&chi2),
+        gram: gram.map(totals),
+        gradient: totals(gradient),
+        along_f: totals(along_f),
+        along_h: totals(along_h),
+    };
+    for i in whole..data.len() {
+        let both = |first: f64, second: f64| {
+            if K == 2 {
+                a * first + b * second
+            } else {
+                a * first
+            }
+        };
+        let r = both(f[i], h[i]) - data[i];
+        sums.chi2 += r * r;
+        let mut j = [0.0; P];
+        for p in 0..P {
+            j[p] = both(by_f[p][i], by_h[p][i]);
+        }
+        for p in 0..P {
+            sums.gradient[p] += j[p] * r;
+            sums.along_f[p] += j[p] * f[i];
+            if K == 2 {
+                sums.along_h[p] += j[p] * h[i];
+            }
+            for q in p..P {
+                sums.gram[p][q] += j[p] * j[q];
+            }
+        }
+    }
+    sums
 }

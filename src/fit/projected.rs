@@ -503,6 +503,54 @@ mod tests {
         Channels::new(&prepared, shape, None, Averaging::Channel, 0.2)
     }
 
+    fn joint_at(layout: &Layout) -> Vec<f64> {
+        let value = |name: &str| match name {
+            "v_lsr_km_s" => 0.1,
+            "v_second_km_s" => 0.8,
+            "v_in_km_s" => 0.2,
+            "sigma_km_s" | "sigma_second_km_s" => 0.6,
+            "tau" => 2.5,
+            "isotope_ratio" => 45.0,
+            _ => 1.5,
+        };
+        let parameters = layout.parameters().iter();
+        parameters.map(|parameter| value(parameter.name)).collect()
+    }
+
+    /// chi2, J^T r and J^T J of the residuals and the Jacobian written out.
+    fn explicit_sums(
+        problem: &mut Projected<'_>,
+        at: &[f64],
+    ) -> (
+        f64,
+        [f64; MAX_PARAMETERS],
+        [[f64; MAX_PARAMETERS]; MAX_PARAMETERS],
+    ) {
+        let (rows, structure) = (problem.residuals(), problem.structure());
+        let mut residuals = vec![0.0; rows];
+        let mut stored = vec![0.0; structure.numbers()];
+        problem.evaluate(at, &mut residuals, Some(&mut stored));
+        let chi2 = residuals.iter().map(|r| r * r).sum();
+        let mut gram = [[0.0; MAX_PARAMETERS]; MAX_PARAMETERS];
+        let mut gradient = [0.0; MAX_PARAMETERS];
+        let (mut start, mut first) = (0, 0);
+        for block in structure.blocks() {
+            let column =
+                |k: usize| &stored[start + k * block.rows()..start + (k + 1) * block.rows()];
+            let own = &residuals[first..first + block.rows()];
+            for (k, i) in block.parameters().iter().enumerate() {
+                let dot = |b: &[f64]| -> f64 { column(k).iter().zip(b).map(|(a, b)| a * b).sum() };
+                gradient[*i] += dot(own);
+                for (l, j) in block.parameters().iter().enumerate() {
+                    gram[*i][*j] += dot(column(l));
+                }
+            }
+            start += block.rows() * block.parameters().len();
+            first += block.rows();
+        }
+        (chi2, gradient, gram)
+    }
+
     /// Sums in one pass are those of the residuals and the Jacobian, and the gradient is that of chi2.
     #[test]
     fn normal_equations_are_those_of_residuals_and_jacobian() {
@@ -546,50 +594,14 @@ mod tests {
                 let thick = channels(&triplet, process.clone(), count);
                 let thin = channels(&single, process, 61);
                 let layout = Layout::new(thick_model, thin_model, &settings, reach).unwrap();
-                let joint: Vec<f64> = layout
-                    .parameters()
-                    .iter()
-                    .map(|parameter| match parameter.name {
-                        "v_lsr_km_s" => 0.1,
-                        "v_second_km_s" => 0.8,
-                        "v_in_km_s" => 0.2,
-                        "sigma_km_s" | "sigma_second_km_s" => 0.6,
-                        "tau" => 2.5,
-                        "isotope_ratio" => 45.0,
-                        _ => 1.5,
-                    })
-                    .collect();
+                let joint = joint_at(&layout);
                 let mut buffers = [LineBuffers::default(), LineBuffers::default()];
                 let mut problem =
                     Projected::new(&layout, (Some(&thick), &thin), &joint, &mut buffers);
                 let at = problem.parameters_of(&joint);
-                let (rows, structure) = (problem.residuals(), problem.structure());
-                let mut residuals = vec![0.0; rows];
-                let mut stored = vec![0.0; structure.numbers()];
-                problem.evaluate(&at, &mut residuals, Some(&mut stored));
+                let (chi2, gradient, gram) = explicit_sums(&mut problem, &at);
                 let sums = problem.normal_equations(&at).unwrap();
-                let chi2: f64 = residuals.iter().map(|r| r * r).sum();
                 assert!((sums.chi2 / chi2 - 1.0).abs() < 1e-12);
-                let mut gram = [[0.0; MAX_PARAMETERS]; MAX_PARAMETERS];
-                let mut gradient = [0.0; MAX_PARAMETERS];
-                let (mut start, mut first) = (0, 0);
-                for block in structure.blocks() {
-                    let column = |k: usize| {
-                        &stored[start + k * block.rows()..start + (k + 1) * block.rows()]
-                    };
-                    let own = &residuals[first..first + block.rows()];
-                    for (k, i) in block.parameters().iter().enumerate() {
-                        let dot = |b: &[f64]| -> f64 {
-                            column(k).iter().zip(b).map(|(a, b)| a * b).sum()
-                        };
-                        gradient[*i] += dot(own);
-                        for (l, j) in block.parameters().iter().enumerate() {
-                            gram[*i][*j] += dot(column(l));
-                        }
-                    }
-                    start += block.rows() * block.parameters().len();
-                    first += block.rows();
-                }
                 for i in 0..at.len() {
                     let scale = gram[i][i].sqrt();
                     assert!(

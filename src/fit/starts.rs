@@ -18,6 +18,15 @@ pub(super) struct Kinematics {
     pub sigma_km_s: f64,
 }
 
+impl Kinematics {
+    /// Whether one Gaussian from both would end in the same minimum.
+    pub(super) fn is_near(&self, other: &Self) -> bool {
+        let wider = self.sigma_km_s.max(other.sigma_km_s);
+        (self.v_km_s - other.v_km_s).abs() < wider
+            && (self.sigma_km_s / other.sigma_km_s).ln().abs() < 1.0
+    }
+}
+
 /// Distance of the thick line's centroid from the thin line, in dispersions, from which searches begin
 /// there too: the thin line's fit may have taken one of two clouds.
 const OFF_CENTRE: f64 = 0.8;

@@ -122,7 +122,10 @@ pub fn fit_thin(
     })
 }
 
-/// Starts over the window's velocities and a few widths, the best four by their linear amplitude.
+/// Starts of the thin line.
+const THIN_STARTS: usize = 3;
+
+/// Starts over the window's velocities and a few widths, the best that differ by their linear amplitude.
 fn thin_starts(
     layout: &Layout,
     channels: &Channels,
@@ -146,7 +149,14 @@ fn thin_starts(
         }
     }
     candidates.sort_by(|a, b| a.0.total_cmp(&b.0));
-    candidates.truncate(4);
+    let mut distinct: Vec<(f64, Kinematics)> = Vec::with_capacity(THIN_STARTS);
+    for candidate in candidates {
+        let near = |(_, other): &(f64, Kinematics)| candidate.1.is_near(other);
+        if distinct.len() < THIN_STARTS && !distinct.iter().any(near) {
+            distinct.push(candidate);
+        }
+    }
+    let mut candidates = distinct;
     if candidates.is_empty() {
         candidates.push((0.0, intensity));
     }

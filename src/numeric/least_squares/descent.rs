@@ -124,12 +124,12 @@ impl Descent {
         settings.validate()?;
         let free = check_start(rows, columns, start, bounds)?;
         let structure = problem.structure();
-        workspace.reserve(rows, columns);
         let mut parameters = [0.0; MAX_PARAMETERS];
         parameters[..columns].copy_from_slice(start);
         let linear = if let Some(linear) = Linearisation::of_sums(problem, start) {
             linear
         } else {
+            workspace.reserve(rows, columns);
             let residuals = &mut workspace.residuals[..rows];
             let jacobian = &mut workspace.jacobian[..structure.numbers()];
             problem.evaluate(start, residuals, Some(jacobian));
@@ -271,14 +271,13 @@ impl Descent {
         let trial = self.moved(step, bounds);
         let parameters = &trial[..self.columns];
         let of_sums = Linearisation::of_sums(problem, parameters);
-        let residuals = &mut workspace.trial_residuals[..self.rows];
-        let jacobian = &mut workspace.trial_jacobian[..self.structure.numbers()];
-        let chi2 = match &of_sums {
-            Some(linear) => linear.sums.chi2,
-            None => {
-                problem.evaluate(parameters, residuals, Some(jacobian));
-                dense::sum_of_squares(residuals)
-            }
+        let chi2 = if let Some(linear) = &of_sums {
+            linear.sums.chi2
+        } else {
+            let residuals = &mut workspace.trial_residuals[..self.rows];
+            let jacobian = &mut workspace.trial_jacobian[..self.structure.numbers()];
+            problem.evaluate(parameters, residuals, Some(jacobian));
+            dense::sum_of_squares(residuals)
         };
         self.gain = if chi2.is_finite() {
             (self.chi2 - chi2) / step.decrease
@@ -289,6 +288,8 @@ impl Descent {
             return false;
         }
         let linear = of_sums.unwrap_or_else(|| {
+            let residuals = &workspace.trial_residuals[..self.rows];
+            let jacobian = &workspace.trial_jacobian[..self.structure.numbers()];
             Linearisation::new(jacobian, residuals, &self.structure, self.columns)
         });
         if !linear.is_finite() {
