@@ -8,7 +8,7 @@
     reason = "has to be compiled inside each instruction-set copy"
 )]
 
-use super::amplitudes::Products;
+use super::amplitudes::{Amplitudes, Products};
 use crate::model::MOST_AMPLITUDES;
 use crate::numeric::dispatch::{Arithmetic, Kernel, dispatch};
 use crate::numeric::products::products_with;
@@ -24,6 +24,7 @@ type Lanes = [f64; LANES];
 /// chi2 at the best amplitudes and its derivatives by a line's nonlinear parameters.
 #[derive(Clone, Copy, Debug)]
 pub(super) struct LineSums {
+    pub amplitudes: Amplitudes,
     pub chi2: f64,
     /// J^T r.
     pub gradient: [f64; MOST_NONLINEAR],
@@ -144,6 +145,7 @@ impl<const K: usize, const P: usize> Kernel for Sums<'_, K, P> {
         }
         let sums = accumulate::<K, P, A>((data, f, h), (by_f, by_h), (a, b));
         let mut result = LineSums {
+            amplitudes: best.amplitudes,
             chi2: sums.chi2,
             gradient: [0.0; MOST_NONLINEAR],
             gram: [[0.0; MOST_NONLINEAR]; MOST_NONLINEAR],

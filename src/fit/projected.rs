@@ -117,6 +117,18 @@ impl<'a> Projected<'a> {
         self.of_joint(|position, origin| joint[position] - origin)
     }
 
+    /// Whether an amplitude of the thick line is at an end of its range where the problem was evaluated
+    /// last.
+    pub fn presses_a_range(&self) -> bool {
+        self.thick.as_ref().is_some_and(|line| {
+            let functions = line.model.linear().len();
+            let pressed = |(value, (low, high)): (&f64, &(f64, f64))| value <= low || value >= high;
+            (line.amplitudes.iter().zip(&line.ranges))
+                .take(functions)
+                .any(pressed)
+        })
+    }
+
     /// Gives the buffers back.
     pub fn into_buffers(self) -> [LineBuffers; 2] {
         let of_thick = self.thick.map(|line| line.buffers).unwrap_or_default();
@@ -147,8 +159,7 @@ impl<'a> Projected<'a> {
     /// The joint parameters where the problem's parameters are these and the amplitudes are at their
     /// best, inside their intervals.
     pub fn settled(&mut self, parameters: &[f64]) -> Vec<f64> {
-        let mut residuals = vec![0.0; self.residuals()];
-        self.evaluate(parameters, &mut residuals, None);
+        self.normal_equations(parameters);
         let mut joint = self.joint.clone();
         for line in self.thick.iter().chain([&self.thin]) {
             let local: Vec<f64> = line.joint.iter().map(|position| joint[*position]).collect();
@@ -224,12 +235,14 @@ impl<'a> Line<'a> {
     fn sums(&mut self, local: &[f64]) -> LineSums {
         self.fill(local, true);
         let LineBuffers { functions, slopes } = &self.buffers;
-        line_sums(
+        let sums = line_sums(
             self.channels.whitened_data(),
             functions,
             slopes,
             &self.ranges,
-        )
+        );
+        self.amplitudes = sums.amplitudes;
+        sums
     }
 
     /// Residuals and their Jacobian by the model's nonlinear parameters at local parameters.

@@ -3,7 +3,9 @@
 
 use super::projected::Projected;
 use super::{FitError, SEARCH};
-use crate::numeric::least_squares::{Descent, Interval, Settings, Termination, Workspace};
+use crate::numeric::least_squares::{
+    Descent, Interval, LeastSquares, Settings, Termination, Workspace,
+};
 
 /// Steps of each round, and how many stay in after it.
 const ROUNDS: [Round; 3] = [
@@ -34,6 +36,10 @@ const SAME_PARAMETER: f64 = 0.02;
 /// Optical depth below which the two halves can nearly be exchanged: there is a minimum with the other
 /// sign of the inward speed as deep to within little.
 const EXCHANGEABLE: f64 = 4.0;
+
+/// Optical depths from which the exchanged minimum is searched, in that of the deepest one. Where one half
+/// is as cold as can be, the other makes the line alone, and has another depth behind it than in front.
+const EXCHANGED_TAU: [f64; 3] = [1.0, 0.3, 3.0];
 
 /// chi2 and parameters.
 type Place = (f64, Vec<f64>);
@@ -82,8 +88,9 @@ pub(super) fn finalists(
     let v_in = problem.position_of("v_in_km_s");
     let tau = problem.position_of("tau");
     let bounds = problem.bounds();
-    if workspaces.len() <= starts.len() {
-        workspaces.resize_with(starts.len() + 1, Workspace::new);
+    let most = starts.len() + EXCHANGED_TAU.len();
+    if workspaces.len() < most {
+        workspaces.resize_with(most, Workspace::new);
     }
     let mut workspaces = workspaces.iter_mut();
     let mut begin =
@@ -114,13 +121,22 @@ pub(super) fn finalists(
         && let Some(deepest) = runners.first()
         && deepest.descent.parameters()[tau] < EXCHANGEABLE
     {
-        let mut mirrored = deepest.descent.parameters().to_vec();
-        mirrored[v_in] = bounds[v_in].nearest(-mirrored[v_in]);
-        if let Some(mut runner) = begin(problem, &mirrored)? {
-            runner.follow(problem, &bounds, LAST.steps);
-            runners.push(runner);
-            evaluations += keep(&mut runners, LAST.stay, Some(v_in));
+        let deepest = deepest.descent.parameters().to_vec();
+        problem.normal_equations(&deepest);
+        let with_a_cold_half = problem.presses_a_range();
+        for factor in EXCHANGED_TAU {
+            if factor != 1.0 && !with_a_cold_half {
+                continue;
+            }
+            let mut exchanged = deepest.clone();
+            exchanged[v_in] = bounds[v_in].nearest(-exchanged[v_in]);
+            exchanged[tau] = bounds[tau].nearest(factor * exchanged[tau]);
+            if let Some(mut runner) = begin(problem, &exchanged)? {
+                runner.follow(problem, &bounds, LAST.steps);
+                runners.push(runner);
+            }
         }
+        evaluations += keep(&mut runners, LAST.stay, Some(v_in));
     }
     evaluations += runners
         .iter()

@@ -49,16 +49,20 @@ fn add_one(
     columns: Option<[&mut [f64]; 3]>,
     set: bool,
 ) {
-    let peak_k = parameters[2];
-    let Some([by_v, by_sigma, by_peak]) = columns else {
-        return run(line, sampling, parameters, (peak_k, set), value, None);
-    };
-    let slopes = Some((peak_k, [by_v, by_sigma]));
-    run(line, sampling, parameters, (1.0, true), by_peak, slopes);
-    for (value, unit) in value.iter_mut().zip(by_peak) {
-        let before = if set { 0.0 } else { *value };
-        *value = before + peak_k * *unit;
-    }
+    let slopes = columns.map(|[by_v, by_sigma, by_peak]| Slopes {
+        factor: parameters[2],
+        by_v,
+        by_sigma,
+        unit: Some(by_peak),
+    });
+    run(
+        line,
+        sampling,
+        parameters,
+        (parameters[2], set),
+        value,
+        slopes,
+    );
 }
 
 /// The Gaussian of height 1, and its slopes by centre and dispersion, as in
@@ -70,7 +74,10 @@ pub(super) fn functions(
     functions: &mut [f64],
     slopes: Option<&mut [f64]>,
 ) {
-    let slopes = slopes.map(|slopes| (1.0, columns(slopes, sampling.len())));
+    let slopes = slopes.map(|slopes| {
+        let [by_v, by_sigma] = columns(slopes, sampling.len());
+        Slopes::of_unit(by_v, by_sigma)
+    });
     run(line, sampling, parameters, (1.0, true), functions, slopes);
 }
 
@@ -88,7 +95,7 @@ pub(super) fn functions_of_two(
         Some(slopes) => {
             slopes.fill(0.0);
             let [a, _, b, _, _, c, _, d] = columns::<8>(slopes, channels);
-            (Some((1.0, [a, b])), Some((1.0, [c, d])))
+            (Some(Slopes::of_unit(a, b)), Some(Slopes::of_unit(c, d)))
         }
         None => (None, None),
     };
@@ -97,14 +104,35 @@ pub(super) fn functions_of_two(
     run(line, sampling, &parameters[3..5], unit, second, of_second);
 }
 
-/// Sets or adds `factor` times the Gaussian of height 1; its slopes times a factor of their own.
+/// Columns that are set beside the value.
+struct Slopes<'a> {
+    /// Factor of the slopes by centre and dispersion.
+    factor: f64,
+    by_v: &'a mut [f64],
+    by_sigma: &'a mut [f64],
+    /// The Gaussian of height 1, where it is not the value.
+    unit: Option<&'a mut [f64]>,
+}
+
+impl<'a> Slopes<'a> {
+    fn of_unit(by_v: &'a mut [f64], by_sigma: &'a mut [f64]) -> Self {
+        Self {
+            factor: 1.0,
+            by_v,
+            by_sigma,
+            unit: None,
+        }
+    }
+}
+
+/// Sets or adds `factor` times the Gaussian of height 1, and sets its slopes.
 fn run(
     line: &LineShape,
     sampling: &Sampling,
     parameters: &[f64],
     (factor, set): (f64, bool),
     value: &mut [f64],
-    slopes: Option<(f64, [&mut [f64]; 2])>,
+    slopes: Option<Slopes<'_>>,
 ) {
     let strongest = line
         .components
@@ -133,7 +161,7 @@ struct GaussianKernel<'a> {
     factor: f64,
     set: bool,
     value: &'a mut [f64],
-    slopes: Option<(f64, [&'a mut [f64]; 2])>,
+    slopes: Option<Slopes<'a>>,
 }
 
 impl Kernel for GaussianKernel<'_> {
@@ -158,7 +186,7 @@ impl Kernel for GaussianKernel<'_> {
                 let keep = !(first && self.set);
                 let keep_slopes = !first;
                 first = false;
-                let Some((slope_factor, [by_v, by_sigma])) = &mut slopes else {
+                let Some(slopes) = &mut slopes else {
                     for i in 0..channels {
                         let z = (A::mul_add(*node, width[i], velocity[i]) - centre) * inverse;
                         let before = if keep { value[i] } else { 0.0 };
@@ -166,8 +194,9 @@ impl Kernel for GaussianKernel<'_> {
                     }
                     continue;
                 };
-                let (by_v, by_sigma) = (&mut by_v[..channels], &mut by_sigma[..channels]);
-                let steepness = *slope_factor * share * inverse;
+                let by_v = &mut slopes.by_v[..channels];
+                let by_sigma = &mut slopes.by_sigma[..channels];
+                let steepness = slopes.factor * share * inverse;
                 for i in 0..channels {
                     let z = (A::mul_add(*node, width[i], velocity[i]) - centre) * inverse;
                     let gauss = exp_negative::<A>(0.5 * z * z);
@@ -178,6 +207,15 @@ impl Kernel for GaussianKernel<'_> {
                     by_v[i] = before + slope;
                     let before = if keep_slopes { by_sigma[i] } else { 0.0 };
                     by_sigma[i] = A::mul_add(slope, z, before);
+                }
+                let Some(unit) = &mut slopes.unit else {
+                    continue;
+                };
+                let unit = &mut unit[..channels];
+                for i in 0..channels {
+                    let z = (A::mul_add(*node, width[i], velocity[i]) - centre) * inverse;
+                    let before = if keep_slopes { unit[i] } else { 0.0 };
+                    unit[i] = A::mul_add(share, exp_negative::<A>(0.5 * z * z), before);
                 }
             }
         }
