@@ -117,16 +117,10 @@ impl<'a> Projected<'a> {
         self.of_joint(|position, origin| joint[position] - origin)
     }
 
-    /// Whether an amplitude of the thick line is at an end of its range where the problem was evaluated
-    /// last.
-    pub fn presses_a_range(&self) -> bool {
-        self.thick.as_ref().is_some_and(|line| {
-            let functions = line.model.linear().len();
-            let pressed = |(value, (low, high)): (&f64, &(f64, f64))| value <= low || value >= high;
-            (line.amplitudes.iter().zip(&line.ranges))
-                .take(functions)
-                .any(pressed)
-        })
+    /// Whether the two halves of the thick line have temperatures of their own.
+    pub fn has_two_temperatures(&self) -> bool {
+        let two = |line: &Line<'_>| line.model.has_infall() && line.model.linear().len() == 2;
+        self.thick.as_ref().is_some_and(two)
     }
 
     /// Gives the buffers back.

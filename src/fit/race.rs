@@ -3,9 +3,7 @@
 
 use super::projected::Projected;
 use super::{FitError, SEARCH};
-use crate::numeric::least_squares::{
-    Descent, Interval, LeastSquares, Settings, Termination, Workspace,
-};
+use crate::numeric::least_squares::{Descent, Interval, Settings, Termination, Workspace};
 
 /// Steps of each round, and how many stay in after it.
 const ROUNDS: [Round; 3] = [
@@ -37,8 +35,15 @@ const SAME_PARAMETER: f64 = 0.02;
 /// sign of the inward speed as deep to within little.
 const EXCHANGEABLE: f64 = 4.0;
 
-/// Optical depths from which the exchanged minimum is searched, in that of the deepest one. Where one half
-/// is as cold as can be, the other makes the line alone, and has another depth behind it than in front.
+/// From there steps are shorter still: little parts the two.
+const EXCHANGED: Settings = Settings {
+    initial_radius: 0.05,
+    ..SEARCH
+};
+
+/// Optical depths from which the exchanged minimum is searched, in that of the deepest one. Where the halves
+/// have temperatures of their own and one is cold, the other makes the line alone, and has another depth
+/// behind it than in front.
 const EXCHANGED_TAU: [f64; 3] = [1.0, 0.3, 3.0];
 
 /// chi2 and parameters.
@@ -93,22 +98,24 @@ pub(super) fn finalists(
         workspaces.resize_with(most, Workspace::new);
     }
     let mut workspaces = workspaces.iter_mut();
-    let mut begin =
-        |problem: &mut Projected<'_>, start: &[f64]| -> Result<Option<Runner<'_>>, FitError> {
-            let Some(workspace) = workspaces.next() else {
-                return Ok(None);
-            };
-            let descent = Descent::begin(problem, start, &bounds, &FIRST, workspace)?;
-            Ok(Some(Runner {
-                descent: Box::new(descent),
-                workspace,
-                ended: None,
-            }))
+    let mut begin = |problem: &mut Projected<'_>,
+                     start: &[f64],
+                     first: &Settings|
+     -> Result<Option<Runner<'_>>, FitError> {
+        let Some(workspace) = workspaces.next() else {
+            return Ok(None);
         };
+        let descent = Descent::begin(problem, start, &bounds, first, workspace)?;
+        Ok(Some(Runner {
+            descent: Box::new(descent),
+            workspace,
+            ended: None,
+        }))
+    };
     let mut runners = Vec::with_capacity(starts.len());
     for start in starts {
         let start = problem.parameters_of(start);
-        runners.extend(begin(problem, &start)?);
+        runners.extend(begin(problem, &start, &FIRST)?);
     }
     let mut evaluations = 0;
     for Round { steps, stay } in ROUNDS.into_iter().chain([LAST]) {
@@ -122,16 +129,16 @@ pub(super) fn finalists(
         && deepest.descent.parameters()[tau] < EXCHANGEABLE
     {
         let deepest = deepest.descent.parameters().to_vec();
-        problem.normal_equations(&deepest);
-        let with_a_cold_half = problem.presses_a_range();
-        for factor in EXCHANGED_TAU {
-            if factor != 1.0 && !with_a_cold_half {
-                continue;
-            }
+        let depths = if problem.has_two_temperatures() {
+            &EXCHANGED_TAU[..]
+        } else {
+            &EXCHANGED_TAU[..1]
+        };
+        for factor in depths {
             let mut exchanged = deepest.clone();
             exchanged[v_in] = bounds[v_in].nearest(-exchanged[v_in]);
             exchanged[tau] = bounds[tau].nearest(factor * exchanged[tau]);
-            if let Some(mut runner) = begin(problem, &exchanged)? {
+            if let Some(mut runner) = begin(problem, &exchanged, &EXCHANGED)? {
                 runner.follow(problem, &bounds, LAST.steps);
                 runners.push(runner);
             }
