@@ -1,0 +1,467 @@
+//! Parallel rays through the shells, and the transfer equation along them.
+//!
+//! A sphere looks the same from everywhere, so the rays of one direction serve all: averaged over
+//! a shell's volume they give its mean intensity, and at their ends the spectrum.
+//!
+//! Populations are constant in a shell, so along the passage of a ray through it
+//! tau(u) = alpha C(u), C(u) = integral of n/n_mean phi(u - w) ds, w the line-of-sight speed of the
+//! gas. C does not depend on the excitation: it is tabulated once, with the passage divided so that
+//! w changes by little in each part, and used for every transition and iteration.
+#![allow(
+    clippy::inline_always,
+    reason = "has to be compiled inside each instruction-set copy"
+)]
+
+use super::parts_needed;
+use super::shells::Shells;
+use crate::line::Component;
+use crate::numeric::dispatch::{Arithmetic, Kernel, dispatch};
+use crate::numeric::exponential::exp_negative;
+
+/// Velocities that one step of a kernel treats.
+pub(super) const LANES: usize = 8;
+
+/// Gauss-Legendre abscissae and weights on 0 to 1, by number of points less one.
+pub(super) const GAUSS: [&[(f64, f64)]; 4] = [
+    &[(0.5, 1.0)],
+    &[
+        (0.211_324_865_405_187_1, 0.5),
+        (0.788_675_134_594_812_9, 0.5),
+    ],
+    &[
+        (0.112_701_665_379_258_3, 0.277_777_777_777_777_8),
+        (0.5, 0.444_444_444_444_444_4),
+        (0.887_298_334_620_741_7, 0.277_777_777_777_777_8),
+    ],
+    &[
+        (0.069_431_844_202_973_7, 0.173_927_422_568_727),
+        (0.330_009_478_207_571_9, 0.326_072_577_431_273),
+        (0.669_990_521_792_428_1, 0.326_072_577_431_273),
+        (0.930_568_155_797_026_3, 0.173_927_422_568_727),
+    ],
+];
+
+/// A ray at a distance from the centre, with its share of a sum over rays.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(super) struct Ray {
+    pub(super) impact_pc: f64,
+    pub(super) weight: f64,
+}
+
+/// Rays in the annulus between two impact parameters, `points` of them; weights sum to the
+/// difference of the squares.
+///
+/// Paths through a shell end like the square root of the distance from its edge; with
+/// p^2 = b^2 - (b^2 - a^2) y^2 they are smooth in y.
+pub(super) fn annulus(a: f64, b: f64, points: usize) -> impl Iterator<Item = Ray> {
+    let area = b * b - a * a;
+    GAUSS[points.clamp(1, GAUSS.len()) - 1]
+        .iter()
+        .map(move |(y, weight)| Ray {
+            impact_pc: (b * b - area * y * y).max(0.0).sqrt(),
+            weight: 2.0 * y * weight * area,
+        })
+}
+
+/// A shell on the way of a ray, or a part of it; radii only grow or only fall on the way.
+#[derive(Clone, Copy, Debug, PartialEq)]
+struct Passage {
+    shell: usize,
+    /// Where the ray enters and leaves: 0 at the shell's inner edge, 1 at its outer.
+    enters: f64,
+    leaves: f64,
+    /// Distances from the point nearest to the centre, pc.
+    near_pc: f64,
+    far_pc: f64,
+}
+
+/// Into what a ray is divided.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(super) struct Division {
+    /// Largest change of w in a passage, in dispersions; passages end at edges anyway.
+    pub(super) passage: f64,
+    /// Largest change of w in a part of a passage, over which the profile is integrated.
+    pub(super) part: f64,
+}
+
+/// Rays through shells, and C(u) of each of their passages.
+#[derive(Clone, Debug)]
+pub(super) struct RayTable {
+    velocities: usize,
+    rays: Vec<(Ray, usize)>,
+    passages: Vec<Passage>,
+    paths: Vec<f64>,
+    shells: usize,
+}
+
+/// Emission and opacity of the shells in one transition.
+#[derive(Clone, Debug, PartialEq)]
+pub(super) struct Transfer {
+    /// Opacity integrated over velocity, km/s per pc.
+    pub(super) opacity: Vec<f64>,
+    /// Emission integrated over velocity, K km/s per pc.
+    pub(super) emission: Vec<f64>,
+}
+
+/// Sums over a shell of the intensity that comes from outside of the passage, and of the share of
+/// photons that leave it; both weighted with the line profile and divided by its sum.
+#[derive(Clone, Debug, Default, PartialEq)]
+pub(super) struct MeanIntensity {
+    /// Mean intensity without what a passage makes itself, K.
+    pub(super) external_k: Vec<f64>,
+    /// 1 - the local operator.
+    pub(super) escape: Vec<f64>,
+}
+
+impl RayTable {
+    /// Rays through shells at velocities (km/s, a multiple of [`LANES`]).
+    pub(super) fn new(
+        shells: &Shells,
+        rays: &[Ray],
+        velocity_km_s: &[f64],
+        components: &[Component],
+        division: Division,
+    ) -> Self {
+        assert_eq!(velocity_km_s.len() % LANES, 0, "whole lanes");
+        let mut table = Self {
+            velocities: velocity_km_s.len(),
+            rays: Vec::new(),
+            passages: Vec::new(),
+            paths: Vec::new(),
+            shells: shells.count(),
+        };
+        let mut outward = Vec::new();
+        let mut parts = Vec::new();
+        for ray in rays {
+            outward.clear();
+            pass_outward(shells, ray.impact_pc, division.passage, &mut outward);
+            // the far side mirrors the near one
+            let inward = outward.iter().rev().map(|near| {
+                let passage = Passage {
+                    enters: near.leaves,
+                    leaves: near.enters,
+                    ..*near
+                };
+                (passage, -1.0)
+            });
+            let near = outward.iter().map(|passage| (*passage, 1.0));
+            for (passage, side) in inward.chain(near) {
+                parts.clear();
+                divide(
+                    shells,
+                    &passage,
+                    ray.impact_pc,
+                    side,
+                    division.part,
+                    &mut parts,
+                );
+                let start = table.paths.len();
+                table.paths.resize(start + velocity_km_s.len(), 0.0);
+                dispatch(Paths {
+                    parts: &parts,
+                    components,
+                    sigma_km_s: shells.table.sigma_km_s[passage.shell],
+                    velocity_km_s,
+                    row: &mut table.paths[start..],
+                });
+                table.passages.push(passage);
+            }
+            table.rays.push((*ray, 2 * outward.len()));
+        }
+        table
+    }
+
+    /// Mean intensity in each shell of radiation that enters with `background_k`.
+    pub(super) fn mean_intensity(
+        &self,
+        transfer: &Transfer,
+        background_k: f64,
+        result: &mut MeanIntensity,
+    ) {
+        result.external_k.clear();
+        result.external_k.resize(self.shells, 0.0);
+        result.escape.clear();
+        result.escape.resize(self.shells, 0.0);
+        dispatch(Mean {
+            table: self,
+            transfer,
+            background_k,
+            intensity: &mut vec![background_k; self.velocities],
+            norm: &mut vec![0.0; self.shells],
+            result,
+        });
+    }
+
+    /// Intensity above the background of the rays, each times its weight, summed: K.
+    ///
+    /// Opacity and emission hold here a value an edge, for the mean density of a shell of
+    /// `density` (molecules cm^-3); the source between them varies linearly in optical depth.
+    pub(super) fn emergent(
+        &self,
+        edges: &Transfer,
+        density: &[f64],
+        background_k: f64,
+    ) -> Vec<f64> {
+        let mut spectrum = vec![0.0; self.velocities];
+        dispatch(Emergent {
+            table: self,
+            edges,
+            density,
+            background_k,
+            intensity: &mut vec![background_k; self.velocities],
+            spectrum: &mut spectrum,
+        });
+        spectrum
+    }
+}
+
+/// Where the logarithm of a radius lies between those of a shell's edges.
+fn fraction(edges: &[f64], shell: usize, radius: f64) -> f64 {
+    ((radius / edges[shell]).ln() / (edges[shell + 1] / edges[shell]).ln()).clamp(0.0, 1.0)
+}
+
+/// A part of a passage: length times relative density, pc, and line-of-sight speed, km/s.
+struct Part {
+    path_pc: f64,
+    speed_km_s: f64,
+}
+
+/// Line-of-sight speed in a shell at a distance z from the point of a ray nearest to the centre;
+/// the far side (`side` -1) comes toward us during infall.
+fn speed_at(shells: &Shells, shell: usize, impact_pc: f64, side: f64, z_pc: f64) -> f64 {
+    let radius = z_pc.hypot(impact_pc);
+    side * shells.inward_speed_km_s(shell, radius) * z_pc / radius
+}
+
+/// How much the line-of-sight speed changes on the way between two such distances, km/s.
+fn speed_change(shells: &Shells, shell: usize, impact_pc: f64, from: f64, to: f64) -> f64 {
+    const PROBES: usize = 4;
+    let speeds: [f64; PROBES + 1] = std::array::from_fn(|index| {
+        let z = from + (to - from) * index as f64 / PROBES as f64;
+        speed_at(shells, shell, impact_pc, 1.0, z)
+    });
+    speeds
+        .windows(2)
+        .map(|pair| (pair[1] - pair[0]).abs())
+        .sum()
+}
+
+/// Passages of the near half of a ray, from the centre outward.
+fn pass_outward(shells: &Shells, impact_pc: f64, widest: f64, passages: &mut Vec<Passage>) {
+    let edges = &shells.table.edge_pc;
+    let p = impact_pc;
+    let depth = |radius: f64| ((radius - p) * (radius + p)).max(0.0).sqrt();
+    for shell in edges[1..].partition_point(|edge| *edge <= p)..shells.count() {
+        let (low, high) = (depth(p.max(edges[shell])), depth(edges[shell + 1]));
+        let change = speed_change(shells, shell, p, low, high);
+        let count = parts_needed(change, widest * shells.table.sigma_km_s[shell]);
+        let width = (high - low) / count as f64;
+        for index in 0..count {
+            let near_pc = low + width * index as f64;
+            let far_pc = near_pc + width;
+            passages.push(Passage {
+                shell,
+                enters: fraction(edges, shell, near_pc.hypot(p)),
+                leaves: fraction(edges, shell, far_pc.hypot(p)),
+                near_pc,
+                far_pc,
+            });
+        }
+    }
+}
+
+/// Divides a passage into parts in each of which the line-of-sight speed changes by at most
+/// `widest` dispersions, and each of those into two Gauss points.
+fn divide(
+    shells: &Shells,
+    passage: &Passage,
+    impact_pc: f64,
+    side: f64,
+    widest: f64,
+    parts: &mut Vec<Part>,
+) {
+    let Passage {
+        shell,
+        near_pc,
+        far_pc,
+        ..
+    } = *passage;
+    let change = speed_change(shells, shell, impact_pc, near_pc, far_pc);
+    let count = parts_needed(change, widest * shells.table.sigma_km_s[shell]);
+    let length = (far_pc - near_pc) / count as f64;
+    for part in 0..count {
+        for (x, weight) in GAUSS[1] {
+            let z = near_pc + length * (part as f64 + x);
+            let density = shells.relative_density(shell, z.hypot(impact_pc));
+            parts.push(Part {
+                path_pc: weight * length * density,
+                speed_km_s: speed_at(shells, shell, impact_pc, side, z),
+            });
+        }
+    }
+}
+
+struct Paths<'a> {
+    parts: &'a [Part],
+    components: &'a [Component],
+    sigma_km_s: f64,
+    velocity_km_s: &'a [f64],
+    row: &'a mut [f64],
+}
+
+impl Kernel for Paths<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        let inverse = 1.0 / self.sigma_km_s;
+        let norm = inverse / std::f64::consts::TAU.sqrt();
+        let (paths, _) = self.row.as_chunks_mut::<LANES>();
+        let (velocities, _) = self.velocity_km_s.as_chunks::<LANES>();
+        for part in self.parts {
+            for component in self.components {
+                let centre = part.speed_km_s + component.offset_km_s;
+                let height = norm * part.path_pc * component.weight;
+                for (path, velocity) in paths.iter_mut().zip(velocities) {
+                    for lane in 0..LANES {
+                        let x = (velocity[lane] - centre) * inverse;
+                        path[lane] = A::mul_add(height, exp_negative::<A>(0.5 * x * x), path[lane]);
+                    }
+                }
+            }
+        }
+    }
+}
+
+/// (1 - (1 - e^-t)/t)/t, by its series near 0; t may be negative (inverted populations).
+#[inline(always)]
+fn half_escape<A: Arithmetic>(t: f64, exp_minus_t: f64) -> f64 {
+    const SERIES_BELOW: f64 = 0.05;
+    const SERIES: [f64; 6] = [
+        -1.0 / 5040.0,
+        1.0 / 720.0,
+        -1.0 / 120.0,
+        1.0 / 24.0,
+        -1.0 / 6.0,
+        0.5,
+    ];
+    let mut series = SERIES[0];
+    for coefficient in &SERIES[1..] {
+        series = A::mul_add(series, t, *coefficient);
+    }
+    let direct = ((t - 1.0) + exp_minus_t) / (t * t);
+    if t.abs() < SERIES_BELOW {
+        series
+    } else {
+        direct
+    }
+}
+
+struct Mean<'a> {
+    table: &'a RayTable,
+    transfer: &'a Transfer,
+    background_k: f64,
+    intensity: &'a mut [f64],
+    norm: &'a mut [f64],
+    result: &'a mut MeanIntensity,
+}
+
+impl Kernel for Mean<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        let (paths, _) = self.table.paths.as_chunks::<LANES>();
+        let (intensity, _) = self.intensity.as_chunks_mut::<LANES>();
+        let chunks = intensity.len();
+        let mut first = 0;
+        for (ray, passages) in &self.table.rays {
+            intensity.fill([self.background_k; LANES]);
+            for index in first..first + passages {
+                let shell = self.table.passages[index].shell;
+                let (opacity, emission) =
+                    (self.transfer.opacity[shell], self.transfer.emission[shell]);
+                let mut sums = [[0.0; LANES]; 3];
+                let row = &paths[index * chunks..(index + 1) * chunks];
+                for (path, intensity) in row.iter().zip(&mut *intensity) {
+                    for lane in 0..LANES {
+                        let t = opacity * path[lane];
+                        let e = exp_negative::<A>(t);
+                        let escape = A::mul_add(-t, half_escape::<A>(t, e), 1.0);
+                        let leaving = path[lane] * escape;
+                        sums[0][lane] += path[lane];
+                        sums[1][lane] += leaving;
+                        sums[2][lane] = A::mul_add(leaving, intensity[lane], sums[2][lane]);
+                        intensity[lane] = A::mul_add(intensity[lane], e, emission * leaving);
+                    }
+                }
+                let [norm, escape, external] = sums.map(|lanes| lanes.iter().sum::<f64>());
+                self.norm[shell] += ray.weight * norm;
+                self.result.escape[shell] += ray.weight * escape;
+                self.result.external_k[shell] += ray.weight * external;
+            }
+            first += passages;
+        }
+        for shell in 0..self.norm.len() {
+            self.result.escape[shell] /= self.norm[shell];
+            self.result.external_k[shell] /= self.norm[shell];
+        }
+    }
+}
+
+struct Emergent<'a> {
+    table: &'a RayTable,
+    edges: &'a Transfer,
+    density: &'a [f64],
+    background_k: f64,
+    intensity: &'a mut [f64],
+    spectrum: &'a mut [f64],
+}
+
+impl Kernel for Emergent<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        let (paths, _) = self.table.paths.as_chunks::<LANES>();
+        let (intensity, _) = self.intensity.as_chunks_mut::<LANES>();
+        let (spectrum, _) = self.spectrum.as_chunks_mut::<LANES>();
+        let chunks = intensity.len();
+        let mut first = 0;
+        for (ray, passages) in &self.table.rays {
+            intensity.fill([self.background_k; LANES]);
+            for index in first..first + passages {
+                let passage = &self.table.passages[index];
+                let between = |column: &[f64], fraction: f64| {
+                    let (inner, outer) = (column[passage.shell], column[passage.shell + 1]);
+                    self.density[passage.shell] * (inner + fraction * (outer - inner))
+                };
+                let opacity = 0.5
+                    * (between(&self.edges.opacity, passage.enters)
+                        + between(&self.edges.opacity, passage.leaves));
+                let enters = between(&self.edges.emission, passage.enters);
+                let leaves = between(&self.edges.emission, passage.leaves);
+                let row = &paths[index * chunks..(index + 1) * chunks];
+                for (path, intensity) in row.iter().zip(&mut *intensity) {
+                    for lane in 0..LANES {
+                        let t = opacity * path[lane];
+                        let e = exp_negative::<A>(t);
+                        let half = half_escape::<A>(t, e);
+                        let escape = A::mul_add(-t, half, 1.0);
+                        // a source that is linear in optical depth from S_a to S_b makes
+                        // S_b (1 - g) + S_a (g - e^-t), g = (1 - e^-t)/t
+                        let made = A::mul_add(leaves, half, enters * (escape - half)) * path[lane];
+                        intensity[lane] = A::mul_add(intensity[lane], e, made);
+                    }
+                }
+            }
+            for (sum, intensity) in spectrum.iter_mut().zip(&*intensity) {
+                for lane in 0..LANES {
+                    sum[lane] =
+                        A::mul_add(ray.weight, intensity[lane] - self.background_k, sum[lane]);
+                }
+            }
+            first += passages;
+        }
+    }
+}
