@@ -21,7 +21,7 @@ impl Populations {
     ///
     /// [`SphereError::Length`] where the shares are not a whole number of shells.
     pub fn new(levels: usize, mut shares: Vec<f64>) -> Result<Self, SphereError> {
-        if levels == 0 || shares.len() % levels != 0 {
+        if levels == 0 || !shares.len().is_multiple_of(levels) {
             return Err(SphereError::Length {
                 quantity: "level populations",
                 found: shares.len(),
@@ -55,6 +55,12 @@ impl Populations {
     #[must_use]
     pub fn levels(&self) -> usize {
         self.levels
+    }
+
+    /// Number of shells.
+    #[must_use]
+    pub fn shells(&self) -> usize {
+        self.shares.len() / self.levels
     }
 
     /// Shares of the levels in a shell.
@@ -116,6 +122,10 @@ impl Coefficients {
             opacity,
             emission: opacity * photon_temperature_k(line.frequency_ghz),
         }
+    }
+
+    pub(super) fn weight_ratio(&self) -> f64 {
+        self.weight_ratio
     }
 
     pub(super) fn opacity(&self, shares: &[f64]) -> f64 {

@@ -5,8 +5,10 @@
 //! them over a beam. Knows no spectra and no files: velocities, densities and temperatures in,
 //! brightness out.
 
+mod balance;
 mod clump;
 mod emergent;
+mod equilibrium;
 mod error;
 mod excitation;
 mod molecule;
@@ -15,6 +17,7 @@ mod shells;
 
 pub use clump::Clump;
 pub use emergent::{Beam, Fineness, emergent};
+pub use equilibrium::{Equilibrium, EquilibriumSettings, LEAST_SHARE, solve};
 pub use error::SphereError;
 pub use excitation::{LineField, Populations};
 pub use molecule::{Collisions, Level, Molecule, Partner, Radiative, ortho_share};

@@ -95,12 +95,19 @@ pub(super) struct RayTable {
 }
 
 /// Emission and opacity of the shells in one transition.
-#[derive(Clone, Debug, PartialEq)]
+#[derive(Clone, Debug, Default, PartialEq)]
 pub(super) struct Transfer {
     /// Opacity integrated over velocity, km/s per pc.
     pub(super) opacity: Vec<f64>,
     /// Emission integrated over velocity, K km/s per pc.
     pub(super) emission: Vec<f64>,
+}
+
+impl Transfer {
+    pub(super) fn clear(&mut self) {
+        self.opacity.clear();
+        self.emission.clear();
+    }
 }
 
 /// Sums over a shell of the intensity that comes from outside of the passage, and of the share of
