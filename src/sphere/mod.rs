@@ -12,6 +12,7 @@ mod equilibrium;
 mod error;
 mod excitation;
 mod molecule;
+mod pair;
 mod rays;
 mod shells;
 
@@ -21,6 +22,7 @@ pub use equilibrium::{Equilibrium, EquilibriumSettings, LEAST_SHARE, solve};
 pub use error::SphereError;
 pub use excitation::{LineField, Populations};
 pub use molecule::{Collisions, Level, Molecule, Partner, Radiative, ortho_share};
+pub use pair::{LineView, Mode, PairSpectra, PairView, pair_spectra};
 pub use shells::{ShellTable, Shells};
 
 use crate::constants::PARSEC;

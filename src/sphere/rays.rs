@@ -21,23 +21,30 @@ use crate::numeric::exponential::exp_negative;
 /// Velocities that one step of a kernel treats.
 pub(super) const LANES: usize = 8;
 
-/// Gauss-Legendre abscissae and weights on 0 to 1, by number of points less one.
-pub(super) const GAUSS: [&[(f64, f64)]; 4] = [
-    &[(0.5, 1.0)],
+/// Gauss's two points and their weights on 0 to 1.
+const GAUSS: [(f64, f64); 2] = [
+    (0.211_324_865_405_187_1, 0.5),
+    (0.788_675_134_594_812_9, 0.5),
+];
+
+/// Abscissae and weights of Gauss's rules for the integral of 2 y f(y) from 0 to 1, by number of
+/// points less one (scipy 1.17, `roots_jacobi`).
+const RADIAL: [&[(f64, f64)]; 4] = [
+    &[(0.666_666_666_666_666_6, 1.0)],
     &[
-        (0.211_324_865_405_187_1, 0.5),
-        (0.788_675_134_594_812_9, 0.5),
+        (0.355_051_025_721_682_1, 0.363_917_236_512_045_7),
+        (0.844_948_974_278_317_8, 0.636_082_763_487_954_3),
     ],
     &[
-        (0.112_701_665_379_258_3, 0.277_777_777_777_777_8),
-        (0.5, 0.444_444_444_444_444_4),
-        (0.887_298_334_620_741_7, 0.277_777_777_777_777_8),
+        (0.212_340_538_239_153, 0.139_653_959_802_908_3),
+        (0.590_533_135_559_265_3, 0.458_482_212_719_172_6),
+        (0.911_412_040_487_296_1, 0.401_863_827_477_919_1),
     ],
     &[
-        (0.069_431_844_202_973_7, 0.173_927_422_568_727),
-        (0.330_009_478_207_571_9, 0.326_072_577_431_273),
-        (0.669_990_521_792_428_1, 0.326_072_577_431_273),
-        (0.930_568_155_797_026_3, 0.173_927_422_568_727),
+        (0.139_759_864_343_780_6, 0.062_361_941_900_016_1),
+        (0.416_409_567_631_083_2, 0.259_695_095_216_464_9),
+        (0.723_156_986_361_876_2, 0.406_929_136_020_542_9),
+        (0.942_895_803_885_482_3, 0.271_013_826_862_976),
     ],
 ];
 
@@ -55,11 +62,11 @@ pub(super) struct Ray {
 /// p^2 = b^2 - (b^2 - a^2) y^2 they are smooth in y.
 pub(super) fn annulus(a: f64, b: f64, points: usize) -> impl Iterator<Item = Ray> {
     let area = b * b - a * a;
-    GAUSS[points.clamp(1, GAUSS.len()) - 1]
+    RADIAL[points.clamp(1, RADIAL.len()) - 1]
         .iter()
         .map(move |(y, weight)| Ray {
             impact_pc: (b * b - area * y * y).max(0.0).sqrt(),
-            weight: 2.0 * y * weight * area,
+            weight: weight * area,
         })
 }
 
@@ -297,7 +304,7 @@ fn divide(
     let count = parts_needed(change, widest * shells.table.sigma_km_s[shell]);
     let length = (far_pc - near_pc) / count as f64;
     for part in 0..count {
-        for (x, weight) in GAUSS[1] {
+        for (x, weight) in GAUSS {
             let z = near_pc + length * (part as f64 + x);
             let density = shells.relative_density(shell, z.hypot(impact_pc));
             parts.push(Part {
