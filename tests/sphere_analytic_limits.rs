@@ -291,7 +291,7 @@ fn a_moving_sphere_with_gradients_agrees_with_the_transfer_equation_in_small_ste
                 *value -= radiation_k(2.725_48);
             }
             let beam = Beam::Pencil { offset_pc: offset };
-            let differences = [10, 20, 40, 80].map(|shells| {
+            let differences = [20, 40, 80, 160].map(|shells| {
                 difference(
                     &spectrum(&clump, shells, beam, &Fineness::default()),
                     &expected,

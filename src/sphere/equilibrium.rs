@@ -9,7 +9,7 @@
 
 use super::balance;
 use super::error::{SphereError, checked};
-use super::excitation::{Coefficients, Populations, molecules};
+use super::excitation::{Coefficients, EdgeShares, Populations, molecules};
 use super::molecule::Molecule;
 use super::parts_needed;
 use super::rays::{Division, LANES, MeanIntensity, Ray, RayTable, Transfer, annulus};
@@ -31,8 +31,11 @@ pub struct EquilibriumSettings {
     pub rays: usize,
     /// Distance of the velocities at which radiation is followed, in dispersions.
     pub velocity_step: f64,
-    /// Largest change of the line-of-sight speed between two points where the line profile is
+    /// Largest change of the line-of-sight speed between two points where the source is
     /// evaluated, in dispersions.
+    pub source_step: f64,
+    /// Largest change of the line-of-sight speed between two points where the line profile is, in
+    /// dispersions.
     pub profile_step: f64,
 }
 
@@ -44,6 +47,7 @@ impl Default for EquilibriumSettings {
             max_iterations: 1000,
             rays: 2,
             velocity_step: 0.25,
+            source_step: 0.5,
             profile_step: 0.25,
         }
     }
@@ -55,8 +59,15 @@ pub const LEAST_SHARE: f64 = 1e-8;
 /// Dispersions beyond the fastest gas within which radiation is followed.
 const PROFILE_REACH: f64 = 4.0;
 
+/// Largest share of the mean intensity that the local operator may account for: what is left stays
+/// positive. The solution does not depend on it.
+const MOST_LOCAL: f64 = 0.99;
+
+/// Changes that do not fall count as falling by this.
+const FACTOR_CAP: f64 = 0.995;
+
 /// Iterations between extrapolations.
-const EXTRAPOLATE_EVERY: usize = 6;
+const EXTRAPOLATE_EVERY: usize = 4;
 
 /// A solution of statistical equilibrium.
 #[derive(Clone, Debug, PartialEq)]
@@ -131,6 +142,7 @@ fn checked_settings(settings: &EquilibriumSettings) -> Result<(), SphereError> {
     checked("max_iterations", iterations, iterations >= 1.0, "1 or more")?;
     for (quantity, step) in [
         ("velocity_step", settings.velocity_step),
+        ("source_step", settings.source_step),
         ("profile_step", settings.profile_step),
     ] {
         checked(quantity, step, step > 0.0, "more than 0")?;
@@ -140,10 +152,12 @@ fn checked_settings(settings: &EquilibriumSettings) -> Result<(), SphereError> {
 
 /// What does not change from iteration to iteration.
 struct Problem<'a> {
+    shells: &'a Shells,
     molecule: &'a Molecule,
     density: Vec<f64>,
     collisions: Vec<Vec<f64>>,
     table: RayTable,
+    middles: Vec<f64>,
     lines: Vec<LineConstants>,
 }
 
@@ -156,6 +170,7 @@ struct LineConstants {
 /// Space that iterations use again.
 #[derive(Default)]
 struct Work {
+    edges: EdgeShares,
     transfer: Transfer,
     mean: MeanIntensity,
     rates: Vec<Vec<f64>>,
@@ -163,13 +178,15 @@ struct Work {
 
 impl<'a> Problem<'a> {
     fn new(
-        shells: &Shells,
+        shells: &'a Shells,
         molecule: &'a Molecule,
         settings: &EquilibriumSettings,
     ) -> Result<Self, SphereError> {
-        let columns = shells.table.n_h2_cm3.iter().zip(&shells.table.t_kin_k);
-        let collisions = columns
-            .map(|(n, t)| molecule.collision_rates(*n, *t))
+        let collisions = (0..shells.count())
+            .map(|shell| {
+                let temperature_k = shells.table.t_kin_k[shell];
+                molecule.collision_rates(shells.collider_cm3(shell), temperature_k)
+            })
             .collect::<Result<_, _>>()?;
         let lines = molecule.radiative.iter().map(|line| LineConstants {
             coefficients: Coefficients::new(molecule, line),
@@ -178,21 +195,23 @@ impl<'a> Problem<'a> {
                 .at(BACKGROUND_TEMPERATURE.value),
         });
         let division = Division {
-            // sources are constant in a shell: nothing is gained by shorter passages
-            passage: f64::INFINITY,
+            passage: settings.source_step,
             part: settings.profile_step,
         };
+        let table = RayTable::new(
+            shells,
+            &disc(&shells.table.edge_pc, settings.rays),
+            &velocities(shells, settings.velocity_step),
+            &[Component::SINGLE],
+            division,
+        );
         Ok(Self {
+            shells,
             molecule,
             density: molecules(shells),
             collisions,
-            table: RayTable::new(
-                shells,
-                &disc(&shells.table.edge_pc, settings.rays),
-                &velocities(shells, settings.velocity_step),
-                &[Component::SINGLE],
-                division,
-            ),
+            middles: table.middles(shells.count()),
+            table,
             lines: lines.collect(),
         })
     }
@@ -201,24 +220,26 @@ impl<'a> Problem<'a> {
     fn iterate(&self, shares: &mut [f64], work: &mut Work) -> Result<(), SphereError> {
         let levels = self.molecule.levels.len();
         work.rates.clone_from(&self.collisions);
+        work.edges.update(self.shells, levels, shares);
         for (line, constants) in self.molecule.radiative.iter().zip(&self.lines) {
             let coefficients = &constants.coefficients;
-            work.transfer.clear();
-            for (shares, density) in shares.chunks(levels).zip(&self.density) {
-                let opacity = density * coefficients.opacity(shares);
-                work.transfer.opacity.push(opacity);
-                let emission = density * coefficients.emission(shares);
-                work.transfer.emission.push(emission);
-            }
-            let (transfer, mean) = (&work.transfer, &mut work.mean);
-            self.table
-                .mean_intensity(transfer, constants.background_k, mean);
+            coefficients.conservative(shares, &work.edges, &self.middles, &mut work.transfer);
+            self.table.mean_intensity(
+                &work.transfer,
+                &self.density,
+                constants.background_k,
+                &mut work.mean,
+            );
             let weights = coefficients.weight_ratio();
             for (shell, rates) in work.rates.iter_mut().enumerate() {
-                // photons per mode that come from elsewhere
-                let occupation = work.mean.external_k[shell] / constants.photon_k;
-                let induced = line.einstein_a_per_s * occupation;
-                let escaping = line.einstein_a_per_s * work.mean.escape[shell];
+                // photons a mode: all of them, and those that the shell's own source accounts for
+                let photons = work.mean.intensity_k[shell] / constants.photon_k;
+                let own = &shares[shell * levels..(shell + 1) * levels];
+                let source = coefficients.source(own).unwrap_or(0.0);
+                let kept = (1.0 - work.mean.escape[shell]).clamp(0.0, 1.0);
+                let kept = kept.min(MOST_LOCAL * photons / source.max(f64::MIN_POSITIVE));
+                let induced = line.einstein_a_per_s * (photons - kept * source);
+                let escaping = line.einstein_a_per_s * (1.0 - kept);
                 rates[line.upper * levels + line.lower] += escaping + induced;
                 rates[line.lower * levels + line.upper] += weights * induced;
             }
@@ -258,6 +279,9 @@ fn velocities(shells: &Shells, step: f64) -> Vec<f64> {
 struct History {
     iterates: Vec<Vec<f64>>,
     changes: Vec<f64>,
+    /// By what changes fell last before the last extrapolation. It removes what falls slowest from
+    /// sight, not from the solution: right after it, changes fall faster than they will.
+    slowest: f64,
 }
 
 impl History {
@@ -274,7 +298,7 @@ impl History {
         self.changes.push(change);
         let error = match self.changes[..] {
             [.., a, b, c] => {
-                let factor = (b / a).max(c / b);
+                let factor = (b / a).max(c / b).max(self.slowest);
                 if factor < 1.0 {
                     c * factor / (1.0 - factor)
                 } else {
@@ -323,6 +347,9 @@ impl History {
                     *share = value;
                 }
             }
+        }
+        if let [.., before, last] = self.changes[..] {
+            self.slowest = (last / before).min(FACTOR_CAP);
         }
         self.iterates.clear();
         self.changes.clear();

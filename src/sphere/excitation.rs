@@ -6,6 +6,7 @@ use super::molecule::{Molecule, Radiative};
 use super::rays::Transfer;
 use super::shells::Shells;
 use crate::constants::{SPEED_OF_LIGHT, photon_temperature_k};
+use crate::numeric::exponential::exp_in_place;
 
 /// Shares of the molecules in each level, shell by shell, innermost first.
 #[derive(Clone, Debug, PartialEq)]
@@ -94,6 +95,9 @@ fn weight_ratio(molecule: &Molecule, line: &Radiative) -> f64 {
     molecule.levels[line.upper].weight / molecule.levels[line.lower].weight
 }
 
+/// Largest part of a shell's source that its slope may take away at one end.
+const STEEPEST: f64 = 0.8;
+
 /// Coefficients of a transition: opacity = density (n_l g_u/g_l - n_u) `opacity`, emission =
 /// density n_u `emission`, with n the levels' shares.
 ///
@@ -124,16 +128,99 @@ impl Coefficients {
         }
     }
 
+    pub(super) fn opacity(&self, lower: f64, upper: f64) -> f64 {
+        self.opacity * (lower * self.weight_ratio - upper)
+    }
+
+    /// Photons a mode that the molecules' own source amounts to; `None` where it is inverted.
+    pub(super) fn source(&self, shares: &[f64]) -> Option<f64> {
+        let upper = shares[self.upper];
+        let difference = shares[self.lower] * self.weight_ratio - upper;
+        (difference > 0.0).then(|| upper / difference)
+    }
+
+    /// Opacity and emission that are continuous at the edges.
+    pub(super) fn continuous(&self, edges: &EdgeShares, transfer: &mut Transfer) {
+        transfer.clear();
+        for (inner, outer) in edges.pairs() {
+            let ends = [inner, outer].map(|shares| (shares[self.lower], shares[self.upper]));
+            transfer
+                .opacity
+                .push(ends.map(|(lower, upper)| self.opacity(lower, upper)));
+            transfer
+                .emission
+                .push(ends.map(|(_, upper)| self.emission * upper));
+        }
+    }
+
+    /// Opacity that is constant in each shell, and a source that is linear with the right mean.
+    ///
+    /// Where a shell is thick its mean intensity has to be its source, whatever the slope: a mean
+    /// that is off is as good as a leak. `middles` as of [`super::rays::RayTable::middles`].
+    pub(super) fn conservative(
+        &self,
+        shares: &[f64],
+        edges: &EdgeShares,
+        middles: &[f64],
+        transfer: &mut Transfer,
+    ) {
+        transfer.clear();
+        let shells = shares.chunks(edges.levels).zip(edges.pairs()).zip(middles);
+        for ((own, (inner, outer)), middle) in shells {
+            let opacity = self.opacity(own[self.lower], own[self.upper]);
+            let emission = self.emission * own[self.upper];
+            let rise = match (self.source(inner), self.source(outer), self.source(own)) {
+                (Some(inner), Some(outer), Some(own)) => {
+                    // within what leaves both ends positive
+                    let (least, most) = (-STEEPEST / (1.0 - middle), STEEPEST / middle);
+                    emission * ((outer - inner) / own).clamp(least, most)
+                }
+                _ => 0.0,
+            };
+            transfer.opacity.push([opacity; 2]);
+            transfer
+                .emission
+                .push([emission - rise * middle, emission + rise * (1.0 - middle)]);
+        }
+    }
+
     pub(super) fn weight_ratio(&self) -> f64 {
         self.weight_ratio
     }
+}
 
-    pub(super) fn opacity(&self, shares: &[f64]) -> f64 {
-        self.opacity * (shares[self.lower] * self.weight_ratio - shares[self.upper])
+/// Shares of the levels at the edges of the shells.
+#[derive(Clone, Debug, Default)]
+pub(super) struct EdgeShares {
+    levels: usize,
+    shares: Vec<f64>,
+    logarithms: Vec<f64>,
+}
+
+impl EdgeShares {
+    /// Shares at the inner and the outer edge of each shell.
+    fn pairs(&self) -> impl Iterator<Item = (&[f64], &[f64])> {
+        let inner = self.shares.chunks(self.levels);
+        inner.clone().zip(inner.skip(1))
     }
 
-    pub(super) fn emission(&self, shares: &[f64]) -> f64 {
-        self.emission * shares[self.upper]
+    /// Logarithms of shares are linear in the logarithm of the radius.
+    pub(super) fn update(&mut self, shells: &Shells, levels: usize, shares: &[f64]) {
+        self.levels = levels;
+        self.logarithms.clear();
+        self.logarithms
+            .extend(shares.iter().map(|share| share.max(f64::MIN_POSITIVE).ln()));
+        self.shares.clear();
+        for between in shells.edges() {
+            let inner = &self.logarithms[between.shell * levels..][..levels];
+            let outer = &self.logarithms[between.next * levels..][..levels];
+            let mixed = inner
+                .iter()
+                .zip(outer)
+                .map(|(inner, outer)| (inner + between.fraction * (outer - inner)).min(0.0));
+            self.shares.extend(mixed);
+        }
+        exp_in_place(&mut self.shares);
     }
 }
 
@@ -157,36 +244,13 @@ impl LineField {
         populations: &Populations,
     ) -> Self {
         let line = &molecule.radiative[transition];
-        let coefficients = Coefficients::new(molecule, line);
-        let at_edges = |level: usize| -> Vec<f64> {
-            let logarithms: Vec<f64> = populations
-                .shares
-                .chunks(populations.levels)
-                .map(|shares| shares[level].max(f64::MIN_POSITIVE).ln())
-                .collect();
-            let mut edges = shells.at_edges(&logarithms);
-            for value in &mut edges {
-                *value = value.exp();
-            }
-            edges
-        };
-        let (lower, upper) = (at_edges(line.lower), at_edges(line.upper));
-        let opacity = lower
-            .iter()
-            .zip(&upper)
-            .map(|(lower, upper)| {
-                coefficients.opacity * (lower * coefficients.weight_ratio - upper)
-            })
-            .collect();
+        let mut shares = EdgeShares::default();
+        shares.update(shells, populations.levels, &populations.shares);
+        let mut edges = Transfer::default();
+        Coefficients::new(molecule, line).continuous(&shares, &mut edges);
         Self {
             frequency_ghz: line.frequency_ghz,
-            edges: Transfer {
-                opacity,
-                emission: upper
-                    .iter()
-                    .map(|upper| coefficients.emission * upper)
-                    .collect(),
-            },
+            edges,
             density_cm3: molecules(shells),
         }
     }
@@ -199,7 +263,8 @@ impl LineField {
         (0..shells.count())
             .map(|shell| {
                 let edges = &table.edge_pc[shell..shell + 2];
-                let opacity = 0.5 * (self.edges.opacity[shell] + self.edges.opacity[shell + 1]);
+                let [inner, outer] = self.edges.opacity[shell];
+                let opacity = 0.5 * (inner + outer);
                 let middle = 0.5 * (edges[0] + edges[1]);
                 let path = [edges[0], middle, middle, edges[1]]
                     .map(|radius| shells.relative_density(shell, radius));

@@ -36,17 +36,18 @@ impl Mode {
     #[must_use]
     pub fn fast() -> Self {
         Self {
-            shells: 12,
+            shells: 16,
             equilibrium: EquilibriumSettings {
-                levels: 7,
+                levels: 8,
                 tolerance: 0.01,
                 max_iterations: 200,
                 rays: 1,
                 velocity_step: 0.5,
+                source_step: 1.0,
                 profile_step: 1.0,
             },
             fineness: Fineness {
-                rays: 1,
+                rays: 2,
                 annulus: 1.0,
                 source_step: 1.0,
                 profile_step: 1.0,

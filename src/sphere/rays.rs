@@ -3,10 +3,11 @@
 //! A sphere looks the same from everywhere, so the rays of one direction serve all: averaged over
 //! a shell's volume they give its mean intensity, and at their ends the spectrum.
 //!
-//! Populations are constant in a shell, so along the passage of a ray through it
-//! tau(u) = alpha C(u), C(u) = integral of n/n_mean phi(u - w) ds, w the line-of-sight speed of the
-//! gas. C does not depend on the excitation: it is tabulated once, with the passage divided so that
-//! w changes by little in each part, and used for every transition and iteration.
+//! Along the passage of a ray through a shell tau(u) = alpha C(u), with
+//! C(u) = integral of n/n_mean phi(u - w) ds, w the line-of-sight speed of the gas, and alpha the
+//! mean of the shell's edges; the source is linear in tau. C does not depend on the excitation: it
+//! is tabulated once, with the passage divided so that w changes by little in each part, and used for
+//! every transition and iteration.
 #![allow(
     clippy::inline_always,
     reason = "has to be compiled inside each instruction-set copy"
@@ -98,16 +99,16 @@ pub(super) struct RayTable {
     rays: Vec<(Ray, usize)>,
     passages: Vec<Passage>,
     paths: Vec<f64>,
-    shells: usize,
 }
 
-/// Emission and opacity of the shells in one transition.
+/// Emission and opacity of one molecule a cm^3 in one transition: in each shell, at its inner and its
+/// outer edge.
 #[derive(Clone, Debug, Default, PartialEq)]
 pub(super) struct Transfer {
     /// Opacity integrated over velocity, km/s per pc.
-    pub(super) opacity: Vec<f64>,
+    pub(super) opacity: Vec<[f64; 2]>,
     /// Emission integrated over velocity, K km/s per pc.
-    pub(super) emission: Vec<f64>,
+    pub(super) emission: Vec<[f64; 2]>,
 }
 
 impl Transfer {
@@ -117,14 +118,37 @@ impl Transfer {
     }
 }
 
-/// Sums over a shell of the intensity that comes from outside of the passage, and of the share of
-/// photons that leave it; both weighted with the line profile and divided by its sum.
+/// Means over shells, weighted with their molecules and the line profile.
 #[derive(Clone, Debug, Default, PartialEq)]
 pub(super) struct MeanIntensity {
-    /// Mean intensity without what a passage makes itself, K.
-    pub(super) external_k: Vec<f64>,
-    /// 1 - the local operator.
+    /// Intensity, K.
+    pub(super) intensity_k: Vec<f64>,
+    /// Share of the photons of a passage of a ray through a shell that leave it there.
     pub(super) escape: Vec<f64>,
+}
+
+/// What a passage absorbs and emits for each unit of C.
+struct PassageTransfer {
+    opacity: f64,
+    enters: f64,
+    leaves: f64,
+}
+
+impl Passage {
+    /// Values at its ends, between those at the edges of its shell.
+    #[inline(always)]
+    fn transfer(&self, edges: &Transfer, density: &[f64]) -> PassageTransfer {
+        let between = |column: &[[f64; 2]], fraction: f64| {
+            let [inner, outer] = column[self.shell];
+            density[self.shell] * (inner + fraction * (outer - inner))
+        };
+        PassageTransfer {
+            opacity: 0.5
+                * (between(&edges.opacity, self.enters) + between(&edges.opacity, self.leaves)),
+            enters: between(&edges.emission, self.enters),
+            leaves: between(&edges.emission, self.leaves),
+        }
+    }
 }
 
 impl RayTable {
@@ -142,7 +166,6 @@ impl RayTable {
             rays: Vec::new(),
             passages: Vec::new(),
             paths: Vec::new(),
-            shells: shells.count(),
         };
         let mut outward = Vec::new();
         let mut parts = Vec::new();
@@ -185,31 +208,46 @@ impl RayTable {
         table
     }
 
-    /// Mean intensity in each shell of radiation that enters with `background_k`.
+    /// Where the middle of each shell lies between its edges: the mean of [`Passage::enters`] and
+    /// [`Passage::leaves`] over its molecules.
+    pub(super) fn middles(&self, shells: usize) -> Vec<f64> {
+        let mut sums = vec![[0.0; 2]; shells];
+        let mut passages = self.passages.iter().zip(self.paths.chunks(self.velocities));
+        for (ray, count) in &self.rays {
+            for (passage, row) in passages.by_ref().take(*count) {
+                let weight = ray.weight * row.iter().sum::<f64>();
+                sums[passage.shell][0] += weight * 0.5 * (passage.enters + passage.leaves);
+                sums[passage.shell][1] += weight;
+            }
+        }
+        sums.iter().map(|[sum, weight]| sum / weight).collect()
+    }
+
+    /// Mean intensity in each shell of radiation that enters with `background_k`; molecules a
+    /// cm^3 in each shell are `density`.
     pub(super) fn mean_intensity(
         &self,
-        transfer: &Transfer,
+        edges: &Transfer,
+        density: &[f64],
         background_k: f64,
         result: &mut MeanIntensity,
     ) {
-        result.external_k.clear();
-        result.external_k.resize(self.shells, 0.0);
+        result.intensity_k.clear();
+        result.intensity_k.resize(density.len(), 0.0);
         result.escape.clear();
-        result.escape.resize(self.shells, 0.0);
+        result.escape.resize(density.len(), 0.0);
         dispatch(Mean {
             table: self,
-            transfer,
+            edges,
+            density,
             background_k,
             intensity: &mut vec![background_k; self.velocities],
-            norm: &mut vec![0.0; self.shells],
+            norm: &mut vec![0.0; density.len()],
             result,
         });
     }
 
     /// Intensity above the background of the rays, each times its weight, summed: K.
-    ///
-    /// Opacity and emission hold here a value an edge, for the mean density of a shell of
-    /// `density` (molecules cm^-3); the source between them varies linearly in optical depth.
     pub(super) fn emergent(
         &self,
         edges: &Transfer,
@@ -347,33 +385,50 @@ impl Kernel for Paths<'_> {
     }
 }
 
-/// (1 - (1 - e^-t)/t)/t, by its series near 0; t may be negative (inverted populations).
+/// Below, the functions of a passage come from their series.
+const SERIES_BELOW: f64 = 0.1;
+
+/// Coefficients of `(1/2 - h)/t`, h as of [`passage`]: (-1)^k/(k + 3)!.
+const SERIES: [f64; 7] = [
+    1.0 / 362_880.0,
+    -1.0 / 40_320.0,
+    1.0 / 5040.0,
+    -1.0 / 720.0,
+    1.0 / 120.0,
+    -1.0 / 24.0,
+    1.0 / 6.0,
+];
+
+/// e^-t and, from it, g = (1 - e^-t)/t, h = (1 - g)/t and k = (1/2 - h)/t, which are 1, 1/2 and
+/// 1/6 at t = 0; t may be negative (inverted populations).
+///
+/// A source that is linear in optical depth from S_a, where the ray enters, to S_b makes
+/// t (S_a (g - h) + S_b h) where it leaves, and t (S_a (h - k) + S_b k) in the mean over the
+/// passage, to which what enters adds g times itself.
 #[inline(always)]
-fn half_escape<A: Arithmetic>(t: f64, exp_minus_t: f64) -> f64 {
-    const SERIES_BELOW: f64 = 0.05;
-    const SERIES: [f64; 6] = [
-        -1.0 / 5040.0,
-        1.0 / 720.0,
-        -1.0 / 120.0,
-        1.0 / 24.0,
-        -1.0 / 6.0,
-        0.5,
-    ];
+fn passage<A: Arithmetic>(t: f64) -> [f64; 4] {
+    let e = exp_negative::<A>(t);
     let mut series = SERIES[0];
     for coefficient in &SERIES[1..] {
         series = A::mul_add(series, t, *coefficient);
     }
-    let direct = ((t - 1.0) + exp_minus_t) / (t * t);
-    if t.abs() < SERIES_BELOW {
+    let inverse = 1.0 / t;
+    let direct_h = (1.0 - (1.0 - e) * inverse) * inverse;
+    let direct_k = (0.5 - direct_h) * inverse;
+    let k = if t.abs() < SERIES_BELOW {
         series
     } else {
-        direct
-    }
+        direct_k
+    };
+    let h = A::mul_add(-t, k, 0.5);
+    let g = A::mul_add(-t, h, 1.0);
+    [e, g, h, k]
 }
 
 struct Mean<'a> {
     table: &'a RayTable,
-    transfer: &'a Transfer,
+    edges: &'a Transfer,
+    density: &'a [f64],
     background_k: f64,
     intensity: &'a mut [f64],
     norm: &'a mut [f64],
@@ -392,33 +447,37 @@ impl Kernel for Mean<'_> {
         for (ray, passages) in &self.table.rays {
             intensity.fill([self.background_k; LANES]);
             for index in first..first + passages {
-                let shell = self.table.passages[index].shell;
-                let (opacity, emission) =
-                    (self.transfer.opacity[shell], self.transfer.emission[shell]);
+                let one = &self.table.passages[index];
+                let PassageTransfer {
+                    opacity,
+                    enters,
+                    leaves,
+                } = one.transfer(self.edges, self.density);
                 let mut sums = [[0.0; LANES]; 3];
                 let row = &paths[index * chunks..(index + 1) * chunks];
                 for (path, intensity) in row.iter().zip(&mut *intensity) {
                     for lane in 0..LANES {
-                        let t = opacity * path[lane];
-                        let e = exp_negative::<A>(t);
-                        let escape = A::mul_add(-t, half_escape::<A>(t, e), 1.0);
-                        let leaving = path[lane] * escape;
-                        sums[0][lane] += path[lane];
-                        sums[1][lane] += leaving;
-                        sums[2][lane] = A::mul_add(leaving, intensity[lane], sums[2][lane]);
-                        intensity[lane] = A::mul_add(intensity[lane], e, emission * leaving);
+                        let c = path[lane];
+                        let [e, g, h, k] = passage::<A>(opacity * c);
+                        let own = A::mul_add(leaves, k, enters * (h - k)) * c;
+                        let mean = A::mul_add(intensity[lane], g, own);
+                        sums[0][lane] += c;
+                        sums[1][lane] = A::mul_add(c, g, sums[1][lane]);
+                        sums[2][lane] = A::mul_add(c, mean, sums[2][lane]);
+                        let made = A::mul_add(leaves, h, enters * (g - h)) * c;
+                        intensity[lane] = A::mul_add(intensity[lane], e, made);
                     }
                 }
-                let [norm, escape, external] = sums.map(|lanes| lanes.iter().sum::<f64>());
-                self.norm[shell] += ray.weight * norm;
-                self.result.escape[shell] += ray.weight * escape;
-                self.result.external_k[shell] += ray.weight * external;
+                let [norm, escape, mean] = sums.map(|lanes| lanes.iter().sum::<f64>());
+                self.norm[one.shell] += ray.weight * norm;
+                self.result.escape[one.shell] += ray.weight * escape;
+                self.result.intensity_k[one.shell] += ray.weight * mean;
             }
             first += passages;
         }
-        for shell in 0..self.norm.len() {
-            self.result.escape[shell] /= self.norm[shell];
-            self.result.external_k[shell] /= self.norm[shell];
+        for (shell, norm) in self.norm.iter().enumerate() {
+            self.result.escape[shell] /= norm;
+            self.result.intensity_k[shell] /= norm;
         }
     }
 }
@@ -445,26 +504,18 @@ impl Kernel for Emergent<'_> {
         for (ray, passages) in &self.table.rays {
             intensity.fill([self.background_k; LANES]);
             for index in first..first + passages {
-                let passage = &self.table.passages[index];
-                let between = |column: &[f64], fraction: f64| {
-                    let (inner, outer) = (column[passage.shell], column[passage.shell + 1]);
-                    self.density[passage.shell] * (inner + fraction * (outer - inner))
-                };
-                let opacity = 0.5
-                    * (between(&self.edges.opacity, passage.enters)
-                        + between(&self.edges.opacity, passage.leaves));
-                let enters = between(&self.edges.emission, passage.enters);
-                let leaves = between(&self.edges.emission, passage.leaves);
+                let one = &self.table.passages[index];
+                let PassageTransfer {
+                    opacity,
+                    enters,
+                    leaves,
+                } = one.transfer(self.edges, self.density);
                 let row = &paths[index * chunks..(index + 1) * chunks];
                 for (path, intensity) in row.iter().zip(&mut *intensity) {
                     for lane in 0..LANES {
-                        let t = opacity * path[lane];
-                        let e = exp_negative::<A>(t);
-                        let half = half_escape::<A>(t, e);
-                        let escape = A::mul_add(-t, half, 1.0);
-                        // a source that is linear in optical depth from S_a to S_b makes
-                        // S_b (1 - g) + S_a (g - e^-t), g = (1 - e^-t)/t
-                        let made = A::mul_add(leaves, half, enters * (escape - half)) * path[lane];
+                        let c = path[lane];
+                        let [e, g, h, _] = passage::<A>(opacity * c);
+                        let made = A::mul_add(leaves, h, enters * (g - h)) * c;
                         intensity[lane] = A::mul_add(intensity[lane], e, made);
                     }
                 }
