@@ -4,9 +4,10 @@
 #![allow(clippy::unwrap_used)]
 
 use inrush::constants::PARSEC;
+use inrush::line::Component;
 use inrush::sphere::{
-    Clump, Equilibrium, EquilibriumSettings, Molecule, Populations, ShellTable, Shells,
-    SphereError, solve,
+    Beam, Clump, Equilibrium, EquilibriumSettings, LineView, Mode, Molecule, PairView, Populations,
+    ShellTable, Shells, SphereError, pair_spectra, solve,
 };
 use std::path::Path;
 
@@ -190,19 +191,83 @@ fn too_few_iterations_are_an_error_that_says_how_far_it_came() {
 }
 
 #[test]
-fn finer_rays_and_velocities_change_little_and_more_shells_converge() {
-    let coarse = few_levels();
-    let fine = EquilibriumSettings {
-        rays: 4,
-        velocity_step: 0.125,
-        profile_step: 0.1,
-        ..coarse
+fn rays_and_velocities_are_fine_enough() {
+    let default = few_levels();
+    let (_, reference) = solved(&clump(), 32, &default);
+    for (finer, largest) in [
+        (EquilibriumSettings { rays: 4, ..default }, 2e-3),
+        (
+            EquilibriumSettings {
+                velocity_step: 0.25,
+                ..default
+            },
+            2e-3,
+        ),
+        (
+            EquilibriumSettings {
+                source_step: 0.125,
+                ..default
+            },
+            2e-3,
+        ),
+        (
+            EquilibriumSettings {
+                profile_step: 0.1,
+                ..default
+            },
+            2e-3,
+        ),
+    ] {
+        let (_, found) = solved(&clump(), 32, &finer);
+        let difference = difference(&found.populations, &reference.populations);
+        println!("{finer:?}: {difference:.1e}");
+        assert!(difference < largest, "{finer:?}: {difference}");
+    }
+}
+
+#[test]
+fn twice_as_many_shells_in_the_full_mode_change_spectra_by_less_than_a_percent() {
+    let molecule = hco_plus();
+    let line = LineView {
+        transition: 0,
+        components: vec![Component::SINGLE],
+        beam: Beam::Gaussian {
+            fwhm_pc: 0.1,
+            offset_pc: 0.0,
+        },
+        velocity_km_s: (-20..=20).map(|step| 0.075 * f64::from(step)).collect(),
     };
-    let (_, a) = solved(&clump(), 16, &coarse);
-    let (_, b) = solved(&clump(), 16, &fine);
-    let numerical = difference(&a.populations, &b.populations);
-    println!("rays and velocities: {numerical:.1e}");
-    assert!(numerical < 6e-3, "{numerical}");
+    let view = PairView {
+        thin_molecule: molecule.isotopologue(86.754_288_4 / 89.188_524_7),
+        thick_molecule: molecule,
+        thick: line.clone(),
+        thin: line,
+    };
+    let mut full = Mode::full();
+    full.equilibrium.levels = 9;
+    let finer = Mode {
+        shells: 2 * full.shells,
+        ..full
+    };
+    let [a, b] =
+        [full, finer].map(|mode| pair_spectra(&clump(), 50.0, &view, &mode, None).unwrap());
+    for (name, a, b) in [
+        ("thick", &a.thick_k, &b.thick_k),
+        ("thin", &a.thin_k, &b.thin_k),
+    ] {
+        let peak = a.iter().copied().fold(0.0, f64::max);
+        let worst = a
+            .iter()
+            .zip(b)
+            .map(|(a, b)| (a - b).abs())
+            .fold(0.0, f64::max);
+        println!("{name}: {:.1e} of the peak, {peak:.2} K", worst / peak);
+        assert!(worst < 0.01 * peak, "{name}: {}", worst / peak);
+    }
+    // infall toward warmer gas: the thick line is brighter in the blue
+    let (blue, red) = a.thick_k.split_at(20);
+    let largest = |side: &[f64]| side.iter().copied().fold(0.0, f64::max);
+    assert!(largest(blue) > 1.1 * largest(red));
 }
 
 /// Columns of the benchmark's table: radii, density, temperature, speed, width, then shares.

@@ -45,9 +45,9 @@ impl Default for EquilibriumSettings {
             levels: 16,
             tolerance: 1e-4,
             max_iterations: 1000,
-            rays: 2,
-            velocity_step: 0.25,
-            source_step: 0.5,
+            rays: 3,
+            velocity_step: 0.5,
+            source_step: 0.25,
             profile_step: 0.25,
         }
     }
