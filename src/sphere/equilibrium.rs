@@ -23,6 +23,9 @@ use crate::model::RadiationTemperature;
 pub struct EquilibriumSettings {
     /// Lowest levels that are kept; all where there are fewer.
     pub levels: usize,
+    /// Optical depth from the inner to the outer radius below which a transition's own photons are
+    /// left out.
+    pub least_depth: f64,
     /// Largest estimated relative error of any population above [`LEAST_SHARE`].
     pub tolerance: f64,
     /// Most iterations.
@@ -43,6 +46,7 @@ impl Default for EquilibriumSettings {
     fn default() -> Self {
         Self {
             levels: 16,
+            least_depth: 1e-6,
             tolerance: 1e-4,
             max_iterations: 1000,
             rays: 3,
@@ -152,6 +156,7 @@ fn checked_settings(settings: &EquilibriumSettings) -> Result<(), SphereError> {
 
 /// What does not change from iteration to iteration.
 struct Problem<'a> {
+    least_depth: f64,
     shells: &'a Shells,
     molecule: &'a Molecule,
     density: Vec<f64>,
@@ -206,6 +211,7 @@ impl<'a> Problem<'a> {
             division,
         );
         Ok(Self {
+            least_depth: settings.least_depth,
             shells,
             molecule,
             density: molecules(shells),
@@ -224,12 +230,17 @@ impl<'a> Problem<'a> {
         for (line, constants) in self.molecule.radiative.iter().zip(&self.lines) {
             let coefficients = &constants.coefficients;
             coefficients.conservative(shares, &work.edges, &self.middles, &mut work.transfer);
-            self.table.mean_intensity(
-                &work.transfer,
-                &self.density,
-                constants.background_k,
-                &mut work.mean,
-            );
+            if self.depth(&work.transfer) < self.least_depth {
+                work.mean
+                    .transparent(self.density.len(), constants.background_k);
+            } else {
+                self.table.mean_intensity(
+                    &work.transfer,
+                    &self.density,
+                    constants.background_k,
+                    &mut work.mean,
+                );
+            }
             let weights = coefficients.weight_ratio();
             for (shell, rates) in work.rates.iter_mut().enumerate() {
                 // photons a mode: all of them, and those that the shell's own source accounts for
@@ -251,6 +262,21 @@ impl<'a> Problem<'a> {
             })?;
         }
         Ok(())
+    }
+}
+
+impl Problem<'_> {
+    /// Optical depth at a line's centre along a radius, as if nothing moved.
+    fn depth(&self, transfer: &Transfer) -> f64 {
+        let table = &self.shells.table;
+        let shells = transfer.opacity.iter().zip(&self.density);
+        shells
+            .zip(table.edge_pc.windows(2).zip(&table.sigma_km_s))
+            .map(|(([opacity, _], density), (edges, sigma))| {
+                opacity.abs() * density * (edges[1] - edges[0]) / sigma
+            })
+            .sum::<f64>()
+            / std::f64::consts::TAU.sqrt()
     }
 }
 

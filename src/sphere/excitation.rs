@@ -267,7 +267,7 @@ impl LineField {
                 let opacity = 0.5 * (inner + outer);
                 let middle = 0.5 * (edges[0] + edges[1]);
                 let path = [edges[0], middle, middle, edges[1]]
-                    .map(|radius| shells.relative_density(shell, radius));
+                    .map(|radius| shells.inside(shell, radius)[0]);
                 let mean = (path[0] + 4.0 * path[1] + path[3]) / 6.0;
                 opacity * self.density_cm3[shell] * mean * (edges[1] - edges[0])
                     / (table.sigma_km_s[shell] * std::f64::consts::TAU.sqrt())

@@ -6,6 +6,7 @@
 //! brightness out.
 
 mod balance;
+mod closure;
 mod clump;
 mod emergent;
 mod equilibrium;
@@ -16,6 +17,7 @@ mod pair;
 mod rays;
 mod shells;
 
+pub use closure::TwoLevel;
 pub use clump::Clump;
 pub use emergent::{Beam, Fineness, emergent};
 pub use equilibrium::{Equilibrium, EquilibriumSettings, LEAST_SHARE, solve};

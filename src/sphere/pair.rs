@@ -36,13 +36,14 @@ impl Mode {
     #[must_use]
     pub fn fast() -> Self {
         Self {
-            shells: 16,
+            shells: 20,
             equilibrium: EquilibriumSettings {
                 levels: 8,
-                tolerance: 0.01,
+                least_depth: 0.02,
+                tolerance: 0.02,
                 max_iterations: 200,
                 rays: 1,
-                velocity_step: 0.5,
+                velocity_step: 0.9,
                 source_step: 1.0,
                 profile_step: 1.0,
             },

@@ -127,6 +127,19 @@ pub(super) struct MeanIntensity {
     pub(super) escape: Vec<f64>,
 }
 
+impl MeanIntensity {
+    /// Of shells that neither absorb nor emit.
+    pub(super) fn transparent(&mut self, shells: usize, background_k: f64) {
+        for (column, value) in [
+            (&mut self.intensity_k, background_k),
+            (&mut self.escape, 1.0),
+        ] {
+            column.clear();
+            column.resize(shells, value);
+        }
+    }
+}
+
 /// What a passage absorbs and emits for each unit of C.
 struct PassageTransfer {
     opacity: f64,
@@ -172,36 +185,32 @@ impl RayTable {
         for ray in rays {
             outward.clear();
             pass_outward(shells, ray.impact_pc, division.passage, &mut outward);
-            // the far side mirrors the near one
-            let inward = outward.iter().rev().map(|near| {
-                let passage = Passage {
+            // the far side mirrors the near one: it comes toward us during infall
+            let halves = outward.len();
+            let first = table.passages.len();
+            table
+                .passages
+                .extend(outward.iter().rev().map(|near| Passage {
                     enters: near.leaves,
                     leaves: near.enters,
                     ..*near
-                };
-                (passage, -1.0)
-            });
-            let near = outward.iter().map(|passage| (*passage, 1.0));
-            for (passage, side) in inward.chain(near) {
-                parts.clear();
-                divide(
-                    shells,
-                    &passage,
-                    ray.impact_pc,
-                    side,
-                    division.part,
-                    &mut parts,
-                );
-                let start = table.paths.len();
-                table.paths.resize(start + velocity_km_s.len(), 0.0);
-                dispatch(Paths {
-                    parts: &parts,
-                    components,
-                    sigma_km_s: shells.table.sigma_km_s[passage.shell],
-                    velocity_km_s,
-                    row: &mut table.paths[start..],
-                });
-                table.passages.push(passage);
+                }));
+            table.passages.extend_from_slice(&outward);
+            let row = |index: usize| index * table.velocities..(index + 1) * table.velocities;
+            table.paths.resize(row(first + 2 * halves).start, 0.0);
+            for (index, passage) in outward.iter().enumerate() {
+                divide(shells, passage, ray.impact_pc, division.part, &mut parts);
+                let rows = [row(first + halves + index), row(first + halves - 1 - index)];
+                for (side, row) in [1.0, -1.0].into_iter().zip(rows) {
+                    dispatch(Paths {
+                        parts: &parts,
+                        side,
+                        components,
+                        sigma_km_s: shells.table.sigma_km_s[passage.shell],
+                        velocity_km_s,
+                        row: &mut table.paths[row],
+                    });
+                }
             }
             table.rays.push((*ray, 2 * outward.len()));
         }
@@ -272,25 +281,20 @@ fn fraction(edges: &[f64], shell: usize, radius: f64) -> f64 {
     ((radius / edges[shell]).ln() / (edges[shell + 1] / edges[shell]).ln()).clamp(0.0, 1.0)
 }
 
-/// A part of a passage: length times relative density, pc, and line-of-sight speed, km/s.
+/// A part of a passage: length times relative density, pc, and line-of-sight speed on the near side,
+/// km/s.
 struct Part {
     path_pc: f64,
     speed_km_s: f64,
 }
 
-/// Line-of-sight speed in a shell at a distance z from the point of a ray nearest to the centre;
-/// the far side (`side` -1) comes toward us during infall.
-fn speed_at(shells: &Shells, shell: usize, impact_pc: f64, side: f64, z_pc: f64) -> f64 {
-    let radius = z_pc.hypot(impact_pc);
-    side * shells.inward_speed_km_s(shell, radius) * z_pc / radius
-}
-
-/// How much the line-of-sight speed changes on the way between two such distances, km/s.
+/// How much the line-of-sight speed changes on the way between two distances from the point of a
+/// ray nearest to the centre, km/s.
 fn speed_change(shells: &Shells, shell: usize, impact_pc: f64, from: f64, to: f64) -> f64 {
     const PROBES: usize = 4;
     let speeds: [f64; PROBES + 1] = std::array::from_fn(|index| {
         let z = from + (to - from) * index as f64 / PROBES as f64;
-        speed_at(shells, shell, impact_pc, 1.0, z)
+        shells.inside(shell, z.hypot(impact_pc))[1] * z
     });
     speeds
         .windows(2)
@@ -322,32 +326,26 @@ fn pass_outward(shells: &Shells, impact_pc: f64, widest: f64, passages: &mut Vec
     }
 }
 
-/// Divides a passage into parts in each of which the line-of-sight speed changes by at most
+/// Divides a passage of the near side into parts in each of which the line-of-sight speed changes by at most
 /// `widest` dispersions, and each of those into two Gauss points.
-fn divide(
-    shells: &Shells,
-    passage: &Passage,
-    impact_pc: f64,
-    side: f64,
-    widest: f64,
-    parts: &mut Vec<Part>,
-) {
+fn divide(shells: &Shells, passage: &Passage, impact_pc: f64, widest: f64, parts: &mut Vec<Part>) {
     let Passage {
         shell,
         near_pc,
         far_pc,
         ..
     } = *passage;
+    parts.clear();
     let change = speed_change(shells, shell, impact_pc, near_pc, far_pc);
     let count = parts_needed(change, widest * shells.table.sigma_km_s[shell]);
     let length = (far_pc - near_pc) / count as f64;
     for part in 0..count {
         for (x, weight) in GAUSS {
             let z = near_pc + length * (part as f64 + x);
-            let density = shells.relative_density(shell, z.hypot(impact_pc));
+            let [density, speed_per_pc] = shells.inside(shell, z.hypot(impact_pc));
             parts.push(Part {
                 path_pc: weight * length * density,
-                speed_km_s: speed_at(shells, shell, impact_pc, side, z),
+                speed_km_s: speed_per_pc * z,
             });
         }
     }
@@ -355,6 +353,7 @@ fn divide(
 
 struct Paths<'a> {
     parts: &'a [Part],
+    side: f64,
     components: &'a [Component],
     sigma_km_s: f64,
     velocity_km_s: &'a [f64],
@@ -372,7 +371,7 @@ impl Kernel for Paths<'_> {
         let (velocities, _) = self.velocity_km_s.as_chunks::<LANES>();
         for part in self.parts {
             for component in self.components {
-                let centre = part.speed_km_s + component.offset_km_s;
+                let centre = self.side * part.speed_km_s + component.offset_km_s;
                 let height = norm * part.path_pc * component.weight;
                 for (path, velocity) in paths.iter_mut().zip(velocities) {
                     for lane in 0..LANES {
