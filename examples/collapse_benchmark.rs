@@ -3,6 +3,8 @@
 //!
 //! `cargo run --release --example collapse_benchmark`
 
+#![allow(clippy::print_stdout)]
+
 use inrush::constants::PARSEC;
 use inrush::sphere::{
     EquilibriumSettings, Molecule, Populations, ShellTable, Shells, SphereError, solve,

@@ -3,7 +3,11 @@
 //!
 //! `cargo run --release --example sphere_modes -- 100`
 
-#![allow(clippy::cast_possible_truncation, clippy::cast_sign_loss)]
+#![allow(
+    clippy::print_stdout,
+    clippy::cast_possible_truncation,
+    clippy::cast_sign_loss
+)]
 
 use inrush::line::Component;
 use inrush::sphere::{Beam, Clump, LineView, Mode, Molecule, PairView, SphereError, pair_spectra};

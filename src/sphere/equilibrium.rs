@@ -216,7 +216,7 @@ impl<'a> Problem<'a> {
             molecule,
             density: molecules(shells),
             collisions,
-            middles: table.middles(shells.count()),
+            middles: table.middles(),
             table,
             lines: lines.collect(),
         })

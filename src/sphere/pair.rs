@@ -36,7 +36,7 @@ impl Mode {
     #[must_use]
     pub fn fast() -> Self {
         Self {
-            shells: 20,
+            shells: 24,
             equilibrium: EquilibriumSettings {
                 levels: 8,
                 least_depth: 0.02,

@@ -99,6 +99,8 @@ pub(super) struct RayTable {
     rays: Vec<(Ray, usize)>,
     passages: Vec<Passage>,
     paths: Vec<f64>,
+    /// Sum of C over velocities and rays, weights included, in each shell.
+    norms: Vec<f64>,
 }
 
 /// Emission and opacity of one molecule a cm^3 in one transition: in each shell, at its inner and its
@@ -179,6 +181,7 @@ impl RayTable {
             rays: Vec::new(),
             passages: Vec::new(),
             paths: Vec::new(),
+            norms: vec![0.0; shells.count()],
         };
         let mut outward = Vec::new();
         let mut parts = Vec::new();
@@ -212,6 +215,10 @@ impl RayTable {
                     });
                 }
             }
+            for (index, passage) in table.passages.iter().enumerate().skip(first) {
+                let sum = table.paths[row(index)].iter().sum::<f64>();
+                table.norms[passage.shell] += ray.weight * sum;
+            }
             table.rays.push((*ray, 2 * outward.len()));
         }
         table
@@ -219,17 +226,19 @@ impl RayTable {
 
     /// Where the middle of each shell lies between its edges: the mean of [`Passage::enters`] and
     /// [`Passage::leaves`] over its molecules.
-    pub(super) fn middles(&self, shells: usize) -> Vec<f64> {
-        let mut sums = vec![[0.0; 2]; shells];
+    pub(super) fn middles(&self) -> Vec<f64> {
+        let mut sums = vec![0.0; self.norms.len()];
         let mut passages = self.passages.iter().zip(self.paths.chunks(self.velocities));
         for (ray, count) in &self.rays {
             for (passage, row) in passages.by_ref().take(*count) {
                 let weight = ray.weight * row.iter().sum::<f64>();
-                sums[passage.shell][0] += weight * 0.5 * (passage.enters + passage.leaves);
-                sums[passage.shell][1] += weight;
+                sums[passage.shell] += weight * 0.5 * (passage.enters + passage.leaves);
             }
         }
-        sums.iter().map(|[sum, weight]| sum / weight).collect()
+        sums.iter()
+            .zip(&self.norms)
+            .map(|(sum, norm)| sum / norm)
+            .collect()
     }
 
     /// Mean intensity in each shell of radiation that enters with `background_k`; molecules a
@@ -250,8 +259,7 @@ impl RayTable {
             edges,
             density,
             background_k,
-            intensity: &mut vec![background_k; self.velocities],
-            norm: &mut vec![0.0; density.len()],
+            space: &mut vec![0.0; 3 * self.velocities],
             result,
         });
     }
@@ -367,20 +375,30 @@ impl Kernel for Paths<'_> {
     fn run<A: Arithmetic>(self) {
         let inverse = 1.0 / self.sigma_km_s;
         let norm = inverse / std::f64::consts::TAU.sqrt();
-        let (paths, _) = self.row.as_chunks_mut::<LANES>();
-        let (velocities, _) = self.velocity_km_s.as_chunks::<LANES>();
         for part in self.parts {
             for component in self.components {
                 let centre = self.side * part.speed_km_s + component.offset_km_s;
                 let height = norm * part.path_pc * component.weight;
-                for (path, velocity) in paths.iter_mut().zip(velocities) {
-                    for lane in 0..LANES {
-                        let x = (velocity[lane] - centre) * inverse;
-                        path[lane] = A::mul_add(height, exp_negative::<A>(0.5 * x * x), path[lane]);
-                    }
-                }
+                add_profile::<A>(self.velocity_km_s, centre, inverse, height, self.row);
             }
         }
+    }
+}
+
+/// Adds a Gaussian of a height to a row. A loop over slices without a sum: that is what the compiler
+/// makes vectors of.
+#[inline(always)]
+fn add_profile<A: Arithmetic>(
+    velocity_km_s: &[f64],
+    centre_km_s: f64,
+    inverse_sigma: f64,
+    height: f64,
+    row: &mut [f64],
+) {
+    let row = &mut row[..velocity_km_s.len()];
+    for (value, velocity) in row.iter_mut().zip(velocity_km_s) {
+        let x = (velocity - centre_km_s) * inverse_sigma;
+        *value = A::mul_add(height, exp_negative::<A>(0.5 * x * x), *value);
     }
 }
 
@@ -424,13 +442,63 @@ fn passage<A: Arithmetic>(t: f64) -> [f64; 4] {
     [e, g, h, k]
 }
 
+impl PassageTransfer {
+    /// Takes the intensities of a ray through a passage of given C, without the mean.
+    #[inline(always)]
+    fn pass<A: Arithmetic>(&self, paths: &[f64], intensity: &mut [f64]) {
+        let intensity = &mut intensity[..paths.len()];
+        for (intensity, c) in intensity.iter_mut().zip(paths) {
+            let [e, g, h, _] = passage::<A>(self.opacity * c);
+            let made = A::mul_add(self.leaves, h, self.enters * (g - h)) * c;
+            *intensity = A::mul_add(*intensity, e, made);
+        }
+    }
+
+    /// The same, with C times g and C times the mean over the passage.
+    #[inline(always)]
+    fn pass_with_mean<A: Arithmetic>(
+        &self,
+        paths: &[f64],
+        intensity: &mut [f64],
+        escape: &mut [f64],
+        mean: &mut [f64],
+    ) {
+        let velocities = paths.len();
+        let (intensity, escape) = (&mut intensity[..velocities], &mut escape[..velocities]);
+        let mean = &mut mean[..velocities];
+        for i in 0..velocities {
+            let c = paths[i];
+            let [e, g, h, k] = passage::<A>(self.opacity * c);
+            let own = A::mul_add(self.leaves, k, self.enters * (h - k)) * c;
+            escape[i] = c * g;
+            mean[i] = c * A::mul_add(intensity[i], g, own);
+            let made = A::mul_add(self.leaves, h, self.enters * (g - h)) * c;
+            intensity[i] = A::mul_add(intensity[i], e, made);
+        }
+    }
+}
+
+/// Sum of a slice of whole lanes, in lanes.
+#[inline(always)]
+fn sum_of_lanes(values: &[f64]) -> f64 {
+    let (chunks, _) = values.as_chunks::<LANES>();
+    let mut sums = [0.0; LANES];
+    for chunk in chunks {
+        for lane in 0..LANES {
+            sums[lane] += chunk[lane];
+        }
+    }
+    let s = sums;
+    ((s[0] + s[4]) + (s[1] + s[5])) + ((s[2] + s[6]) + (s[3] + s[7]))
+}
+
 struct Mean<'a> {
     table: &'a RayTable,
     edges: &'a Transfer,
     density: &'a [f64],
     background_k: f64,
-    intensity: &'a mut [f64],
-    norm: &'a mut [f64],
+    /// Space for a number a velocity, three times.
+    space: &'a mut [f64],
     result: &'a mut MeanIntensity,
 }
 
@@ -439,42 +507,21 @@ impl Kernel for Mean<'_> {
 
     #[inline(always)]
     fn run<A: Arithmetic>(self) {
-        let (paths, _) = self.table.paths.as_chunks::<LANES>();
-        let (intensity, _) = self.intensity.as_chunks_mut::<LANES>();
-        let chunks = intensity.len();
-        let mut first = 0;
-        for (ray, passages) in &self.table.rays {
-            intensity.fill([self.background_k; LANES]);
-            for index in first..first + passages {
-                let one = &self.table.passages[index];
-                let PassageTransfer {
-                    opacity,
-                    enters,
-                    leaves,
-                } = one.transfer(self.edges, self.density);
-                let mut sums = [[0.0; LANES]; 3];
-                let row = &paths[index * chunks..(index + 1) * chunks];
-                for (path, intensity) in row.iter().zip(&mut *intensity) {
-                    for lane in 0..LANES {
-                        let c = path[lane];
-                        let [e, g, h, k] = passage::<A>(opacity * c);
-                        let own = A::mul_add(leaves, k, enters * (h - k)) * c;
-                        let mean = A::mul_add(intensity[lane], g, own);
-                        sums[0][lane] += c;
-                        sums[1][lane] = A::mul_add(c, g, sums[1][lane]);
-                        sums[2][lane] = A::mul_add(c, mean, sums[2][lane]);
-                        let made = A::mul_add(leaves, h, enters * (g - h)) * c;
-                        intensity[lane] = A::mul_add(intensity[lane], e, made);
-                    }
-                }
-                let [norm, escape, mean] = sums.map(|lanes| lanes.iter().sum::<f64>());
-                self.norm[one.shell] += ray.weight * norm;
-                self.result.escape[one.shell] += ray.weight * escape;
-                self.result.intensity_k[one.shell] += ray.weight * mean;
+        let velocities = self.table.velocities;
+        let (intensity, rest) = self.space.split_at_mut(velocities);
+        let (escape, mean) = rest.split_at_mut(velocities);
+        let mut passages = self.table.passages.iter();
+        let mut rows = self.table.paths.chunks_exact(velocities);
+        for (ray, count) in &self.table.rays {
+            intensity.fill(self.background_k);
+            for (one, row) in passages.by_ref().zip(rows.by_ref()).take(*count) {
+                one.transfer(self.edges, self.density)
+                    .pass_with_mean::<A>(row, intensity, escape, mean);
+                self.result.escape[one.shell] += ray.weight * sum_of_lanes(escape);
+                self.result.intensity_k[one.shell] += ray.weight * sum_of_lanes(mean);
             }
-            first += passages;
         }
-        for (shell, norm) in self.norm.iter().enumerate() {
+        for (shell, norm) in self.table.norms.iter().enumerate() {
             self.result.escape[shell] /= norm;
             self.result.intensity_k[shell] /= norm;
         }
@@ -495,37 +542,17 @@ impl Kernel for Emergent<'_> {
 
     #[inline(always)]
     fn run<A: Arithmetic>(self) {
-        let (paths, _) = self.table.paths.as_chunks::<LANES>();
-        let (intensity, _) = self.intensity.as_chunks_mut::<LANES>();
-        let (spectrum, _) = self.spectrum.as_chunks_mut::<LANES>();
-        let chunks = intensity.len();
-        let mut first = 0;
-        for (ray, passages) in &self.table.rays {
-            intensity.fill([self.background_k; LANES]);
-            for index in first..first + passages {
-                let one = &self.table.passages[index];
-                let PassageTransfer {
-                    opacity,
-                    enters,
-                    leaves,
-                } = one.transfer(self.edges, self.density);
-                let row = &paths[index * chunks..(index + 1) * chunks];
-                for (path, intensity) in row.iter().zip(&mut *intensity) {
-                    for lane in 0..LANES {
-                        let c = path[lane];
-                        let [e, g, h, _] = passage::<A>(opacity * c);
-                        let made = A::mul_add(leaves, h, enters * (g - h)) * c;
-                        intensity[lane] = A::mul_add(intensity[lane], e, made);
-                    }
-                }
+        let mut passages = self.table.passages.iter();
+        let mut rows = self.table.paths.chunks_exact(self.table.velocities);
+        for (ray, count) in &self.table.rays {
+            self.intensity.fill(self.background_k);
+            for (one, row) in passages.by_ref().zip(rows.by_ref()).take(*count) {
+                one.transfer(self.edges, self.density)
+                    .pass::<A>(row, self.intensity);
             }
-            for (sum, intensity) in spectrum.iter_mut().zip(&*intensity) {
-                for lane in 0..LANES {
-                    sum[lane] =
-                        A::mul_add(ray.weight, intensity[lane] - self.background_k, sum[lane]);
-                }
+            for (sum, intensity) in self.spectrum.iter_mut().zip(&*self.intensity) {
+                *sum = A::mul_add(ray.weight, intensity - self.background_k, *sum);
             }
-            first += passages;
         }
     }
 }

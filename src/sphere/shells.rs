@@ -265,10 +265,10 @@ impl Inside {
         // Chebyshev's nodes, and the polynomial through them by divided differences
         const NODES: [f64; ORDER] = [
             -0.965_925_826_289_068_2,
-            -0.707_106_781_186_547_5,
+            -std::f64::consts::FRAC_1_SQRT_2,
             -0.258_819_045_102_520_6,
             0.258_819_045_102_520_7,
-            0.707_106_781_186_547_6,
+            std::f64::consts::FRAC_1_SQRT_2,
             0.965_925_826_289_068_3,
         ];
         let middle_pc = 0.5 * (edges[0] + edges[1]);
