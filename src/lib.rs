@@ -12,6 +12,7 @@
 //! | [`mod@line`] | a name into a transition with its rest frequency and multiplet |
 //! | [`numeric`] | numbers into numbers: exponentials, least squares, noise processes; no astronomy |
 //! | [`model`] | parameters into a line profile and its Jacobian |
+//! | [`sphere`] | a clump and a molecule into level populations and the spectrum a beam sees |
 //! | [`spectrum`] | arrays into one checked spectrum with noise and windows |
 //! | [`read`] | files into spectra as the file states them |
 //! | [`prepare`] | those into calibrated, baseline-free spectra with measured noise |
@@ -35,3 +36,4 @@ pub mod report;
 pub mod run;
 pub mod simulate;
 pub mod spectrum;
+pub mod sphere;

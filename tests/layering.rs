@@ -13,6 +13,7 @@ const MAY_USE: &[(&str, &str)] = &[
     ("line", "constants"),
     ("numeric", "constants"),
     ("model", "constants line numeric"),
+    ("sphere", "constants line numeric model"),
     ("spectrum", "constants line numeric"),
     ("read", "constants line numeric spectrum"),
     ("prepare", "constants line numeric spectrum read"),
