@@ -8,6 +8,7 @@ pub mod least_squares;
 pub mod polynomial;
 pub mod products;
 pub mod robust;
+pub mod sampling;
 
 pub use autoregression::Autoregression;
 
