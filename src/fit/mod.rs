@@ -7,6 +7,8 @@
 mod cautions;
 mod channels;
 mod joint;
+pub mod posterior;
+pub mod priors;
 mod starts;
 mod thin;
 

@@ -1,6 +1,7 @@
 //! Numbers into numbers: exponentials over slices, least squares, noise processes, robust
 //! statistics. No astronomy here.
 
+pub mod amplitudes;
 pub mod autoregression;
 pub mod dispatch;
 pub mod exponential;

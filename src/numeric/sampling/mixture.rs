@@ -229,7 +229,7 @@ impl Freedom {
 }
 
 /// A number from 0 up to, not including, 1.
-pub(super) fn uniform(generator: &mut impl Rng) -> f64 {
+pub(crate) fn uniform(generator: &mut impl Rng) -> f64 {
     /// 2^-53
     const STEP: f64 = 1.0 / 9_007_199_254_740_992.0;
     (generator.next_u64() >> 11) as f64 * STEP

@@ -15,6 +15,7 @@ mod peak;
 pub use importance::{Draws, ImportanceSettings, Quality, sample};
 pub use matrix::{MOST_DIMENSIONS, Matrix, Point};
 pub use mixture::StudentMixture;
+pub(crate) use mixture::uniform;
 pub use pareto::tail_shape;
 pub use peak::{Peak, ascend};
 
