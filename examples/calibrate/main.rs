@@ -1,16 +1,18 @@
 //! Whether intervals and probabilities mean what they say: pairs drawn from the priors, prepared with
 //! default settings, against their truth.
 //!
-//! `cargo run --example calibrate -- coverage | mixed | spheres [PAIRS] [white | hanning | band-limited]`
+//! `cargo run --example calibrate -- coverage | mixed | spheres | sampler [PAIRS] [white | hanning | band-limited]`
 #![allow(clippy::print_stdout, clippy::print_stderr)]
 
 mod drawn;
 
 use drawn::{DrawnPair, draw, lines};
+use inrush::fit::hypotheses::{Hypothesis, Odds, verdict};
 use inrush::fit::posterior::{Family, PairPosterior, PosteriorSettings, pair_posterior};
 use inrush::fit::{FitSettings, fit_thin};
 use inrush::line::Line;
 use inrush::model::Model;
+use inrush::numeric::sampling::ImportanceSettings;
 use inrush::prepare::{Expected, PrepareSettings, prepare_pair};
 use inrush::simulate::Correlation;
 use inrush::spectrum::Spectrum;
@@ -44,7 +46,10 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
     };
     match choice {
         "coverage" => coverage(pairs, correlation),
-        other => Err(format!("`{other}`, expected coverage, mixed or spheres").into()),
+        "mixed" => mixed(pairs, correlation),
+        "spheres" => spheres(),
+        "sampler" => sampler(pairs, correlation),
+        other => Err(format!("`{other}`, expected coverage, mixed, spheres or sampler").into()),
     }
 }
 
@@ -54,7 +59,12 @@ struct Outcome {
     seconds: f64,
 }
 
-fn posterior(thick: &Spectrum, thin: &Spectrum, lines: &(Line, Line)) -> Result<Outcome, String> {
+fn posterior(
+    thick: &Spectrum,
+    thin: &Spectrum,
+    lines: &(Line, Line),
+    posterior_settings: &PosteriorSettings,
+) -> Result<Outcome, String> {
     let text = |error: &dyn Error| error.to_string();
     let settings = PrepareSettings::default();
     let expected = |line: &Line| Expected {
@@ -74,7 +84,7 @@ fn posterior(thick: &Spectrum, thin: &Spectrum, lines: &(Line, Line)) -> Result<
         &thin,
         (&lines.0, &lines.1),
         thin_fit.line.as_ref(),
-        &PosteriorSettings::default(),
+        posterior_settings,
     )
     .map_err(|error| text(&error))?;
     Ok(Outcome {
@@ -132,7 +142,12 @@ fn coverage(pairs: usize, correlation: Correlation) -> Result<(), Box<dyn Error>
             index as u64,
         )
         .map_err(|error| error.to_string())?;
-        let outcome = posterior(&pair.thick, &pair.thin, &lines)?;
+        let outcome = posterior(
+            &pair.thick,
+            &pair.thin,
+            &lines,
+            &PosteriorSettings::default(),
+        )?;
         Ok::<_, String>((pair, outcome))
     });
     let refused: Vec<&String> = results
@@ -257,4 +272,267 @@ fn flatness(below: &[f64]) -> f64 {
         .map(|count| (*count as f64 - expected).powi(2) / expected)
         .sum();
     ChiSquared::new(BINS as f64 - 1.0).map_or(f64::NAN, |distribution| distribution.sf(chi2))
+}
+
+/// Pairs of every hypothesis with equal odds: how often infall is true in each tenth of p_infall.
+fn mixed(pairs: usize, correlation: Correlation) -> Result<(), Box<dyn Error>> {
+    let lines = lines()?;
+    let results = parallel(pairs, |index| {
+        let (family, inward) = match (index % 4, index / 4 % 6) {
+            (0, kind) => (Family::Moving(MODELS[kind % 2]), Some(true)),
+            (1, kind) => (Family::Moving(MODELS[kind % 2]), Some(false)),
+            (2, kind) => match kind % 3 {
+                0 => (Family::Still(Model::TwoLayer), None),
+                1 => (Family::Still(Model::Hill), None),
+                _ => (Family::Unabsorbed, None),
+            },
+            _ => (Family::TwoClouds, None),
+        };
+        let seed = 1_000_000 + index as u64;
+        let pair =
+            draw(family, inward, &lines, correlation, seed).map_err(|error| error.to_string())?;
+        let outcome = posterior(
+            &pair.thick,
+            &pair.thin,
+            &lines,
+            &PosteriorSettings::default(),
+        )?;
+        let verdict =
+            verdict(&outcome.posterior, &Odds::default()).map_err(|error| error.to_string())?;
+        Ok::<_, String>((Hypothesis::ALL[index % 4], pair, verdict))
+    });
+    let found: Vec<_> = results.iter().filter_map(|one| one.as_ref().ok()).collect();
+    println!("pairs {pairs}, refused {}", pairs - found.len());
+    for hypothesis in Hypothesis::ALL {
+        println!(
+            "| p_{} | pairs | mean p | true |\n| --- | --- | --- | --- |",
+            hypothesis.name()
+        );
+        for tenth in 0..10 {
+            let of: Vec<_> = found
+                .iter()
+                .map(|(truth, _, verdict)| (*truth == hypothesis, verdict.probability(hypothesis)))
+                .filter(|(_, p)| ((p * 10.0) as usize).min(9) == tenth)
+                .collect();
+            let count = of.len().max(1) as f64;
+            let mean = of.iter().map(|(_, p)| p).sum::<f64>() / count;
+            let share = of.iter().filter(|(truth, _)| *truth).count() as f64 / count;
+            println!(
+                "| {:.1} to {:.1} | {} | {mean:.3} | {share:.3} |",
+                tenth as f64 / 10.0,
+                (tenth + 1) as f64 / 10.0,
+                of.len()
+            );
+        }
+    }
+    println!("| truth | pairs | p_infall > 0.9 | favoured is true |\n| --- | --- | --- | --- |");
+    for hypothesis in Hypothesis::ALL {
+        let of: Vec<_> = found
+            .iter()
+            .filter(|(truth, ..)| *truth == hypothesis)
+            .collect();
+        let sure = of
+            .iter()
+            .filter(|(_, _, verdict)| verdict.probability(Hypothesis::Infall) > 0.9);
+        let right = of
+            .iter()
+            .filter(|(truth, _, verdict)| verdict.favoured() == *truth);
+        println!(
+            "| {} | {} | {} | {} |",
+            hypothesis.name(),
+            of.len(),
+            sure.count(),
+            right.count()
+        );
+    }
+    Ok(())
+}
+
+fn spheres() -> Result<(), Box<dyn Error>> {
+    use inrush::run::{LineSection, RunSheet, fit_pair};
+    use std::collections::HashMap;
+    let folder = std::path::Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/data/spheres");
+    let rows: Vec<HashMap<String, String>> = csv::Reader::from_path(folder.join("truth.csv"))?
+        .deserialize()
+        .collect::<Result<_, _>>()?;
+    let results = parallel(rows.len(), |index| {
+        let truth = &rows[index];
+        let line = |which: &str| LineSection {
+            line: Some(truth[&format!("{which}_line")].clone()),
+            file: Some(format!("{}-{which}.csv", truth["id"]).into()),
+            ..LineSection::default()
+        };
+        let sheet = RunSheet {
+            thick: line("thick"),
+            thin: line("thin"),
+            ..RunSheet::default()
+        };
+        let outcome = fit_pair(&sheet, &folder).map_err(|error| error.to_string())?;
+        let posterior = pair_posterior(
+            &outcome.thick.prepared,
+            &outcome.thin.prepared,
+            (&outcome.thick.line, &outcome.thin.line),
+            outcome.thin_fit.line.as_ref(),
+            &PosteriorSettings::default(),
+        )
+        .map_err(|error| error.to_string())?;
+        let verdict = verdict(&posterior, &Odds::default()).map_err(|error| error.to_string())?;
+        Ok::<_, String>((posterior, verdict))
+    });
+    println!(
+        "id,kind,snr,v_over_sigma,sigma,tau_thin,p_infall,p_expansion,p_static,p_two_clouds,v_in_over_sigma,lo68,hi68,lo95,hi95,between,ln_z...,trusted"
+    );
+    for (truth, result) in rows.iter().zip(&results) {
+        let number = |column: &str| truth[column].parse::<f64>().unwrap_or(f64::NAN);
+        let speed = if truth["kind"] == "infall-ff" {
+            number("v_at_radius_km_s")
+        } else {
+            number("v_in_km_s")
+        };
+        let sigma = number("sigma_km_s");
+        match result {
+            Err(error) => println!("{},{},{error}", truth["id"], truth["kind"]),
+            Ok((posterior, verdict)) => {
+                let p = verdict
+                    .standings
+                    .map(|one| format!("{:.3}", one.probability))
+                    .join(",");
+                let v = verdict.v_in_km_s;
+                let scaled = [
+                    v.median,
+                    v.interval68.0,
+                    v.interval68.1,
+                    v.interval95.0,
+                    v.interval95.1,
+                    verdict.between_models_km_s,
+                ]
+                .map(|value| format!("{:.2}", value / sigma))
+                .join(",");
+                let highest = posterior
+                    .families
+                    .iter()
+                    .map(|one| one.ln_evidence)
+                    .fold(f64::NEG_INFINITY, f64::max);
+                let z: Vec<String> = posterior
+                    .families
+                    .iter()
+                    .map(|one| format!("{:.1}", one.ln_evidence - highest))
+                    .collect();
+                println!(
+                    "{},{},{},{:.2},{sigma:.2},{:.2},{p},{scaled},{},{}",
+                    truth["id"],
+                    truth["kind"],
+                    truth["snr_thick"],
+                    speed / sigma,
+                    number("tau_thin"),
+                    z.join(" "),
+                    verdict.trusted
+                );
+            }
+        }
+    }
+    let of_kind = |kinds: &[&str], limit: &dyn Fn(&HashMap<String, String>) -> bool| {
+        let of: Vec<f64> = rows
+            .iter()
+            .zip(&results)
+            .filter(|(truth, _)| kinds.contains(&truth["kind"].as_str()) && limit(truth))
+            .filter_map(|(_, result)| Some(result.as_ref().ok()?.1.probability(Hypothesis::Infall)))
+            .collect();
+        format!(
+            "{} of {}",
+            of.iter().filter(|p| **p > 0.9).count(),
+            of.len()
+        )
+    };
+    println!(
+        "p_infall > 0.9: static and twocloud {}",
+        of_kind(&["static", "twocloud"], &|_| true)
+    );
+    println!("  static {}", of_kind(&["static"], &|_| true));
+    println!("  twocloud {}", of_kind(&["twocloud"], &|_| true));
+    println!("  expand {}", of_kind(&["expand"], &|_| true));
+    let strong = |truth: &HashMap<String, String>| {
+        let number = |column: &str| truth[column].parse::<f64>().unwrap_or(f64::NAN);
+        let speed = if truth["kind"] == "infall-ff" {
+            number("v_at_radius_km_s")
+        } else {
+            number("v_in_km_s")
+        };
+        number("snr_thick") >= 20.0 && speed > 0.3 * number("sigma_km_s")
+    };
+    println!(
+        "  infall, S/N >= 20, v_in > 0.3 sigma {}",
+        of_kind(&["infall"], &strong)
+    );
+    println!(
+        "  the same with infall-ff {}",
+        of_kind(&["infall", "infall-ff"], &strong)
+    );
+    Ok(())
+}
+
+/// Default draws against many more: differences of ln Z and of quantiles of v_in.
+fn sampler(pairs: usize, correlation: Correlation) -> Result<(), Box<dyn Error>> {
+    let lines = lines()?;
+    let many = PosteriorSettings {
+        sampling: ImportanceSettings {
+            round: 3000,
+            fewest_rounds: 4,
+            most_rounds: 12,
+            effective: 15_000.0,
+        },
+        seed: 99,
+        ..PosteriorSettings::default()
+    };
+    let results = parallel(pairs, |index| {
+        let families = [Family::Moving(MODELS[index / 2 % 2]), Family::TwoClouds];
+        let pair = draw(families[index % 2], None, &lines, correlation, index as u64)
+            .map_err(|error| error.to_string())?;
+        let few = posterior(
+            &pair.thick,
+            &pair.thin,
+            &lines,
+            &PosteriorSettings::default(),
+        )?;
+        let many = posterior(&pair.thick, &pair.thin, &lines, &many)?;
+        Ok::<_, String>((pair.signal_to_noise, few.posterior, many.posterior))
+    });
+    for (index, result) in results.iter().enumerate() {
+        let Ok((signal_to_noise, few, many)) = result else {
+            continue;
+        };
+        let best = many
+            .families
+            .iter()
+            .map(|one| one.ln_evidence)
+            .fold(f64::NEG_INFINITY, f64::max);
+        for (few, many) in few.families.iter().zip(&many.families) {
+            let apart = few.ln_evidence - many.ln_evidence;
+            let ends = |one: &inrush::fit::posterior::FamilyPosterior| one.v_in_km_s();
+            let moved = match (ends(few), ends(many)) {
+                (Some(a), Some(b)) => {
+                    let width = b.interval68.1 - b.interval68.0;
+                    format!(
+                        "{:+.2} {:+.2} {:+.2}",
+                        (a.interval95.0 - b.interval95.0) / width,
+                        (a.median - b.median) / width,
+                        (a.interval95.1 - b.interval95.1) / width
+                    )
+                }
+                _ => String::new(),
+            };
+            println!(
+                "{index},{signal_to_noise:.0},{},{:.2},{apart:+.3},{:.3},{:.0},{:.2},{:.0},{:.2},{},{moved}",
+                few.family.name(),
+                many.ln_evidence - best,
+                few.ln_evidence_err,
+                few.quality.effective,
+                few.quality.tail_shape.unwrap_or(-1.0),
+                many.quality.effective,
+                many.quality.tail_shape.unwrap_or(-1.0),
+                few.quality.holds(),
+            );
+        }
+    }
+    Ok(())
 }

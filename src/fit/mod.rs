@@ -6,6 +6,7 @@
 
 mod cautions;
 mod channels;
+pub mod hypotheses;
 mod joint;
 pub mod posterior;
 pub mod priors;

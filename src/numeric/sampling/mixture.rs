@@ -10,7 +10,7 @@ use statrs::function::gamma::ln_gamma;
 const FREEDOM: f64 = 5.0;
 
 /// Share below which a component is given up.
-const LEAST_SHARE: f64 = 1e-3;
+const LEAST_SHARE: f64 = 5e-3;
 
 /// Part of a component's old scatter that is kept in each direction: it never collapses on one draw.
 const KEPT_SCATTER: f64 = 0.02;
@@ -28,7 +28,8 @@ struct Component {
     centre: Point,
     scatter: Matrix,
     lower: Matrix,
-    inverse_lower: Matrix,
+    /// Columns of the inverse of `lower`.
+    inverse_columns: Matrix,
     /// Share times the density at the centre.
     height: f64,
 }
@@ -46,7 +47,7 @@ impl Component {
             share,
             centre,
             scatter,
-            inverse_lower: inverse_lower(&lower, dimensions),
+            inverse_columns: transposed(&inverse_lower(&lower, dimensions)),
             lower,
             height: share * ln_height.exp(),
         })
@@ -58,30 +59,33 @@ impl Component {
         for i in 0..dimensions {
             offset[i] = point[i] - self.centre[i];
         }
-        let mut sum = 0.0;
-        for i in 0..dimensions {
-            let mut scaled = 0.0;
-            for j in 0..=i {
-                scaled += self.inverse_lower[i][j] * offset[j];
+        let mut scaled = [0.0; MOST_DIMENSIONS];
+        for (along, column) in offset.iter().zip(&self.inverse_columns).take(dimensions) {
+            for (sum, value) in scaled.iter_mut().zip(column) {
+                *sum += along * value;
             }
-            sum += scaled * scaled;
         }
-        sum
+        scaled.iter().map(|value| value * value).sum()
     }
 
     /// Share times density.
     fn density(&self, dimensions: usize, distance_squared: f64) -> f64 {
         let base = 1.0 + distance_squared / FREEDOM;
-        // (5 + d)/2 is a whole number or a half
-        let twice = 5 + i32::try_from(dimensions).unwrap_or(0);
-        let whole = base.powi(twice / 2);
-        let power = if twice % 2 == 0 {
-            whole
+        // base^((5 + d)/2), a whole number or a half
+        let mut power = if dimensions % 2 == 0 {
+            base.sqrt()
         } else {
-            whole * base.sqrt()
+            1.0
         };
+        for _ in 0..dimensions.div_ceil(2) + 2 {
+            power *= base;
+        }
         self.height / power
     }
+}
+
+fn transposed(matrix: &Matrix) -> Matrix {
+    std::array::from_fn(|i| std::array::from_fn(|j| matrix[j][i]))
 }
 
 impl StudentMixture {
