@@ -1,14 +1,15 @@
 //! Pairs drawn from the priors.
 
-use inrush::fit::posterior::Family;
+use super::Setup;
+use inrush::fit::posterior::{Family, ShapeErrors};
 use inrush::fit::priors::Priors;
 use inrush::line::{Line, find};
 use inrush::model::{LineShape, Model, Sampling};
-use inrush::simulate::Correlation;
 use inrush::spectrum::Spectrum;
 use rand::RngExt as _;
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::SeedableRng as _;
+use rand_distr::{Distribution as _, StandardNormal};
 use std::error::Error;
 
 /// A drawn pair.
@@ -40,7 +41,7 @@ pub fn draw(
     family: Family,
     inward: Option<bool>,
     lines: &(Line, Line),
-    correlation: Correlation,
+    setup: Setup,
     seed: u64,
 ) -> Result<DrawnPair, Box<dyn Error>> {
     let mut generator = ChaCha8Rng::seed_from_u64(seed);
@@ -58,6 +59,7 @@ pub fn draw(
     let thin_peaks = [0, 1].map(|_| of("peak_thin_k", &mut generator));
     let second = v + sigma * of("separation_over_sigma", &mut generator);
     let wide = sigma * of("sigma_ratio", &mut generator);
+    let thin_width = of("thin_width_ratio", &mut generator);
     let depths = [0, 1].map(|_| of("tau_cloud", &mut generator));
     let log_uniform = |low: f64, high: f64, generator: &mut ChaCha8Rng| {
         low * (high / low).powf(generator.random::<f64>())
@@ -92,9 +94,17 @@ pub fn draw(
             pairs.map(|(f, r)| x * f + y * r * (1.0 - f)).collect()
         }
     };
-    let mut thin = axis.values(Model::Gaussian, &shapes[1], &[v, sigma, thin_peaks[0]]);
+    let mut thin = axis.values(
+        Model::Gaussian,
+        &shapes[1],
+        &[v, thin_width * sigma, thin_peaks[0]],
+    );
     if family == Family::TwoClouds {
-        let other = axis.values(Model::Gaussian, &shapes[1], &[second, wide, thin_peaks[1]]);
+        let other = axis.values(
+            Model::Gaussian,
+            &shapes[1],
+            &[second, thin_width * wide, thin_peaks[1]],
+        );
         for (value, other) in thin.iter_mut().zip(other) {
             *value += other;
         }
@@ -103,8 +113,16 @@ pub fn draw(
         let peak = profile
             .iter()
             .fold(0.0f64, |peak, value| peak.max(value.abs()));
-        let means = axis.means(&profile);
-        let noise = correlation.unit_noise(&mut generator, means.len());
+        let mut means = axis.means(&profile);
+        for bump in
+            shape_errors(&axis.velocity, &means, sigma, setup.shape_error).bumps(&axis.velocity)
+        {
+            let amplitude: f64 = StandardNormal.sample(&mut generator);
+            for (value, bump) in means.iter_mut().zip(bump) {
+                *value += amplitude * bump;
+            }
+        }
+        let noise = setup.correlation.unit_noise(&mut generator, means.len());
         let values = means
             .iter()
             .zip(noise)
@@ -120,6 +138,22 @@ pub fn draw(
         thick: observed(thick, signal_to_noise)?,
         thin: observed(thin, share * signal_to_noise)?,
     })
+}
+
+/// Shape errors of a noiseless line.
+fn shape_errors(velocity: &[f64], profile: &[f64], sigma: f64, share: f64) -> ShapeErrors {
+    let sum = |power: i32| -> f64 {
+        let terms = velocity.iter().zip(profile);
+        terms.map(|(v, t)| t * v.powi(power)).sum()
+    };
+    let middle = sum(1) / sum(0);
+    let peak = profile.iter().copied().fold(0.0, f64::max);
+    ShapeErrors {
+        deviation_k: share * peak,
+        middle_km_s: middle,
+        reach_km_s: 1.5 * (sum(2) / sum(0) - middle * middle).sqrt(),
+        sigma_km_s: sigma,
+    }
 }
 
 /// Parts of a channel.

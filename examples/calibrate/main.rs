@@ -1,14 +1,16 @@
 //! Whether intervals and probabilities mean what they say: pairs drawn from the priors, prepared with
 //! default settings, against their truth.
 //!
-//! `cargo run --example calibrate -- coverage | mixed | spheres | sampler [PAIRS] [white | hanning | band-limited]`
+//! `cargo run --example calibrate -- coverage | mixed | spheres | sampler | shapes [PAIRS] [white | hanning | band-limited] [SHAPE_ERROR]`
 #![allow(clippy::print_stdout, clippy::print_stderr)]
 
 mod drawn;
 
 use drawn::{DrawnPair, draw, lines};
 use inrush::fit::hypotheses::{Hypothesis, Odds, verdict};
-use inrush::fit::posterior::{Family, PairPosterior, PosteriorSettings, pair_posterior};
+use inrush::fit::posterior::{
+    Family, PairPosterior, PosteriorSettings, SHAPE_ERROR, pair_posterior,
+};
 use inrush::fit::{FitSettings, fit_thin};
 use inrush::line::Line;
 use inrush::model::Model;
@@ -44,12 +46,39 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
             return Err(format!("noise `{other}`, expected white, hanning or band-limited").into());
         }
     };
+    let setup = Setup {
+        correlation,
+        shape_error: arguments
+            .get(3)
+            .map_or(Ok(SHAPE_ERROR), |text| text.parse())?,
+    };
     match choice {
-        "coverage" => coverage(pairs, correlation),
-        "mixed" => mixed(pairs, correlation),
-        "spheres" => spheres(),
-        "sampler" => sampler(pairs, correlation),
-        other => Err(format!("`{other}`, expected coverage, mixed, spheres or sampler").into()),
+        "coverage" => coverage(pairs, setup),
+        "mixed" => mixed(pairs, setup),
+        "spheres" => spheres(setup),
+        "sampler" => sampler(pairs, setup),
+        "shapes" => shapes(pairs),
+        other => {
+            Err(format!("`{other}`, expected coverage, mixed, spheres, sampler or shapes").into())
+        }
+    }
+}
+
+/// How pairs are drawn and judged.
+#[derive(Clone, Copy)]
+pub struct Setup {
+    /// Correlation of the noise.
+    pub correlation: Correlation,
+    /// Shape errors over the peak.
+    pub shape_error: f64,
+}
+
+impl Setup {
+    fn settings(self) -> PosteriorSettings {
+        PosteriorSettings {
+            shape_error: self.shape_error,
+            ..PosteriorSettings::default()
+        }
     }
 }
 
@@ -130,24 +159,13 @@ struct Rank {
 
 const MODELS: [Model; 2] = [Model::TwoLayer, Model::Hill];
 
-fn coverage(pairs: usize, correlation: Correlation) -> Result<(), Box<dyn Error>> {
+fn coverage(pairs: usize, setup: Setup) -> Result<(), Box<dyn Error>> {
     let lines = lines()?;
     let results = parallel(pairs, |index| {
         let model = MODELS[index % 2];
-        let pair = draw(
-            Family::Moving(model),
-            None,
-            &lines,
-            correlation,
-            index as u64,
-        )
-        .map_err(|error| error.to_string())?;
-        let outcome = posterior(
-            &pair.thick,
-            &pair.thin,
-            &lines,
-            &PosteriorSettings::default(),
-        )?;
+        let pair = draw(Family::Moving(model), None, &lines, setup, index as u64)
+            .map_err(|error| error.to_string())?;
+        let outcome = posterior(&pair.thick, &pair.thin, &lines, &setup.settings())?;
         Ok::<_, String>((pair, outcome))
     });
     let refused: Vec<&String> = results
@@ -275,7 +293,7 @@ fn flatness(below: &[f64]) -> f64 {
 }
 
 /// Pairs of every hypothesis with equal odds: how often infall is true in each tenth of p_infall.
-fn mixed(pairs: usize, correlation: Correlation) -> Result<(), Box<dyn Error>> {
+fn mixed(pairs: usize, setup: Setup) -> Result<(), Box<dyn Error>> {
     let lines = lines()?;
     let results = parallel(pairs, |index| {
         let (family, inward) = match (index % 4, index / 4 % 6) {
@@ -289,14 +307,8 @@ fn mixed(pairs: usize, correlation: Correlation) -> Result<(), Box<dyn Error>> {
             _ => (Family::TwoClouds, None),
         };
         let seed = 1_000_000 + index as u64;
-        let pair =
-            draw(family, inward, &lines, correlation, seed).map_err(|error| error.to_string())?;
-        let outcome = posterior(
-            &pair.thick,
-            &pair.thin,
-            &lines,
-            &PosteriorSettings::default(),
-        )?;
+        let pair = draw(family, inward, &lines, setup, seed).map_err(|error| error.to_string())?;
+        let outcome = posterior(&pair.thick, &pair.thin, &lines, &setup.settings())?;
         let verdict =
             verdict(&outcome.posterior, &Odds::default()).map_err(|error| error.to_string())?;
         Ok::<_, String>((Hypothesis::ALL[index % 4], pair, verdict))
@@ -348,7 +360,7 @@ fn mixed(pairs: usize, correlation: Correlation) -> Result<(), Box<dyn Error>> {
     Ok(())
 }
 
-fn spheres() -> Result<(), Box<dyn Error>> {
+fn spheres(setup: Setup) -> Result<(), Box<dyn Error>> {
     use inrush::run::{LineSection, RunSheet, fit_pair};
     use std::collections::HashMap;
     let folder = std::path::Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/data/spheres");
@@ -373,7 +385,7 @@ fn spheres() -> Result<(), Box<dyn Error>> {
             &outcome.thin.prepared,
             (&outcome.thick.line, &outcome.thin.line),
             outcome.thin_fit.line.as_ref(),
-            &PosteriorSettings::default(),
+            &setup.settings(),
         )
         .map_err(|error| error.to_string())?;
         let verdict = verdict(&posterior, &Odds::default()).map_err(|error| error.to_string())?;
@@ -472,7 +484,7 @@ fn spheres() -> Result<(), Box<dyn Error>> {
 }
 
 /// Default draws against many more: differences of ln Z and of quantiles of v_in.
-fn sampler(pairs: usize, correlation: Correlation) -> Result<(), Box<dyn Error>> {
+fn sampler(pairs: usize, setup: Setup) -> Result<(), Box<dyn Error>> {
     let lines = lines()?;
     let many = PosteriorSettings {
         sampling: ImportanceSettings {
@@ -480,20 +492,16 @@ fn sampler(pairs: usize, correlation: Correlation) -> Result<(), Box<dyn Error>>
             fewest_rounds: 4,
             most_rounds: 12,
             effective: 15_000.0,
+            ..ImportanceSettings::default()
         },
         seed: 99,
-        ..PosteriorSettings::default()
+        ..setup.settings()
     };
     let results = parallel(pairs, |index| {
         let families = [Family::Moving(MODELS[index / 2 % 2]), Family::TwoClouds];
-        let pair = draw(families[index % 2], None, &lines, correlation, index as u64)
+        let pair = draw(families[index % 2], None, &lines, setup, index as u64)
             .map_err(|error| error.to_string())?;
-        let few = posterior(
-            &pair.thick,
-            &pair.thin,
-            &lines,
-            &PosteriorSettings::default(),
-        )?;
+        let few = posterior(&pair.thick, &pair.thin, &lines, &setup.settings())?;
         let many = posterior(&pair.thick, &pair.thin, &lines, &many)?;
         Ok::<_, String>((pair.signal_to_noise, few.posterior, many.posterior))
     });
@@ -533,6 +541,70 @@ fn sampler(pairs: usize, correlation: Correlation) -> Result<(), Box<dyn Error>>
                 few.quality.holds(),
             );
         }
+    }
+    Ok(())
+}
+
+/// How far slab models are from each other: the best fit of one to the other's profiles without
+/// noise to speak of, residuals over the peak.
+fn shapes(pairs: usize) -> Result<(), Box<dyn Error>> {
+    let lines = lines()?;
+    let setup = Setup {
+        correlation: Correlation::White,
+        shape_error: 0.0,
+    };
+    for made in MODELS {
+        let fitted = MODELS
+            .into_iter()
+            .find(|model| *model != made)
+            .unwrap_or(made);
+        let mut found: Vec<(f64, f64)> = parallel(pairs, |index| {
+            let seed = 2_000_000 + index as u64;
+            let pair = draw(Family::Moving(made), None, &lines, setup, seed).ok()?;
+            if pair.signal_to_noise < 30.0 {
+                return None;
+            }
+            let settings = PrepareSettings::default();
+            let expected = Expected::default();
+            let (thick, thin) = prepare_pair(
+                (&pair.thick, &settings, &expected),
+                (&pair.thin, &settings, &expected),
+            )
+            .ok()?;
+            let fit_settings = FitSettings {
+                models: vec![fitted],
+                free_thin_sigma: true,
+                ..FitSettings::default()
+            };
+            let thin_fit = fit_thin(&thin, &lines.1, &fit_settings).ok()?;
+            let lines = (&lines.0, &lines.1);
+            let fit =
+                inrush::fit::fit_pair(&thick, &thin, lines, thin_fit.line.as_ref(), &fit_settings)
+                    .ok()?;
+            let fit = fit.models.first()?;
+            let window = thick.window;
+            let velocity = thick.spectrum.velocity_km_s();
+            let channels = velocity.iter().filter(|v| window.contains(**v)).count() as f64;
+            let excess = (fit.chi2 - fit.degrees_of_freedom as f64).max(0.0);
+            Some((
+                (excess / channels).sqrt() / pair.signal_to_noise,
+                pair.signal_to_noise,
+            ))
+        })
+        .into_iter()
+        .flatten()
+        .collect();
+        found.sort_by(|a, b| a.0.total_cmp(&b.0));
+        let at = |part: f64| found[((found.len() - 1) as f64 * part) as usize].0;
+        println!(
+            "{} fitted by {}: {} pairs, rms residual over the peak: 16 % {:.3}, median {:.3}, 84 % {:.3}",
+            made.name(),
+            fitted.name(),
+            found.len(),
+            at(0.16),
+            at(0.5),
+            at(0.84)
+        );
     }
     Ok(())
 }

@@ -126,7 +126,7 @@ pub struct PriorRow {
 
 /// The table: every prior that posteriors and probabilities rest on, beside v_lsr (uniform over the
 /// fitted velocities) and the noise levels s (1/s, made proper by the line-free channels).
-pub const PRIORS: [PriorRow; 8] = [
+pub const PRIORS: [PriorRow; 9] = [
     PriorRow {
         name: "sigma_km_s",
         prior: Prior::LogNormal {
@@ -157,6 +157,14 @@ pub const PRIORS: [PriorRow; 8] = [
         name: "peak_thin_k",
         prior: Prior::Exponential { mean: 2.0 },
         about: "peak of the thin line, of each cloud in it",
+    },
+    PriorRow {
+        name: "thin_width_ratio",
+        prior: Prior::LogNormal {
+            median: 1.08,
+            ln_deviation: 0.1,
+        },
+        about: "dispersion of the thin line over sigma: an optical depth of 0.5 to 1 and the motion itself widen it by 6 to 13 %",
     },
     PriorRow {
         name: "separation_over_sigma",

@@ -1,7 +1,8 @@
 //! One line's channels as sums that a likelihood needs, with baseline and noise level unknown.
 //!
 //! All usable channels count. Those outside the fitted range hold no line: they tell of the baseline
-//! (whose polynomial is integrated over with a flat prior) and of the noise level alone.
+//! (whose polynomial is integrated over with a flat prior) and of the noise level alone. No cloud has
+//! exactly the profile of a family: smooth shape errors of a few percent are integrated over too.
 
 use crate::fit::{Averaging, Channels};
 use crate::model::LineShape;
@@ -14,15 +15,66 @@ use crate::spectrum::Window;
 /// spike is no noise level.
 const FARTHEST: f64 = 4.0;
 
+/// Smooth departures of a line from any family's profile: bumps in a row along the line, each with a
+/// normal amplitude.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct ShapeErrors {
+    /// Standard deviation in the middle of the line, K.
+    pub deviation_k: f64,
+    /// Middle of the line, km/s.
+    pub middle_km_s: f64,
+    /// Dispersion of the envelope that lets them fade in the wings, km/s.
+    pub reach_km_s: f64,
+    /// Dispersion of the gas, km/s: the scale of the bumps.
+    pub sigma_km_s: f64,
+}
+
+impl ShapeErrors {
+    /// Dispersion of a bump and distance of neighbours, in dispersions of the gas.
+    const BUMP: f64 = 0.6;
+    const STEP: f64 = 0.85;
+    /// Bumps reach this many dispersions of the envelope to either side.
+    const ENVELOPES: f64 = 2.0;
+    /// Most bumps.
+    const MOST: f64 = 15.0;
+
+    /// Each bump at the given velocities, K, scaled to its standard deviation.
+    #[must_use]
+    pub fn bumps(&self, velocity_km_s: &[f64]) -> Vec<Vec<f64>> {
+        if self.deviation_k <= 0.0 {
+            return Vec::new();
+        }
+        let half = Self::ENVELOPES * self.reach_km_s;
+        let step = (Self::STEP * self.sigma_km_s).max(2.0 * half / Self::MOST);
+        let width = Self::BUMP / Self::STEP * step;
+        // neighbours overlap: their squares sum to sqrt(pi) width/step
+        let scale = self.deviation_k / (std::f64::consts::PI.sqrt() * width / step).sqrt();
+        #[expect(clippy::cast_possible_truncation, reason = "a few steps")]
+        let count = (half / step).floor() as i32;
+        (-count..=count)
+            .map(|index| {
+                let centre = self.middle_km_s + step * f64::from(index);
+                let bump = |v: &f64| {
+                    let along = (v - centre) / width;
+                    let out = (v - self.middle_km_s) / self.reach_km_s;
+                    scale * (-0.5 * (along * along + out * out)).exp()
+                };
+                velocity_km_s.iter().map(bump).collect()
+            })
+            .collect()
+    }
+}
+
 /// A line's data.
 #[derive(Clone, Debug)]
 pub(super) struct LineData {
     channels: Channels,
-    /// Data in the range, white, less the baseline that all channels together suggest.
+    /// Data in the range, white, less the baseline and shape errors that all channels together suggest.
     data: Vec<f64>,
-    /// Baseline polynomials in the range, white, orthonormal over all channels.
-    baseline: Vec<Vec<f64>>,
-    /// Sum of the data's squares over all channels, less the baseline's part.
+    /// Baseline polynomials and shape errors in the range, white, orthonormal over all channels and
+    /// the priors of the shape errors.
+    nuisances: Vec<Vec<f64>>,
+    /// Sum of the data's squares over all channels, less the nuisances' part.
     squares: f64,
     /// Channels less baseline terms.
     values: f64,
@@ -35,6 +87,7 @@ impl LineData {
         range: Window,
         averaging: Averaging,
         narrowest_km_s: f64,
+        shape_errors: &ShapeErrors,
     ) -> Self {
         let within = |low_km_s: f64, high_km_s: f64| {
             let window = Window {
@@ -56,29 +109,39 @@ impl LineData {
             data.extend(whitened.map(|value| value.clamp(-FARTHEST, FARTHEST)));
         }
         let terms = prepared.baseline.order.map_or(0, |order| order + 1);
-        let polynomials = orthonormal(polynomials(&parts, terms));
+        let polynomials = polynomials(&parts, terms);
+        let bumps: Vec<Vec<f64>> = shape_errors
+            .bumps(channels.sampling().velocity_km_s())
+            .into_iter()
+            .map(|mut bump| {
+                channels.whiten(&mut bump);
+                bump
+            })
+            .collect();
+        let values = (data.len() - polynomials.len()) as f64;
+        let nuisances = orthonormal(with_priors(polynomials, bumps, data.len()));
+        data.resize(nuisances.first().map_or(data.len(), Vec::len), 0.0);
         let [mut squares] = products(&data, [&data]);
-        for polynomial in &polynomials {
-            let [share] = products(&data, [polynomial]);
-            for (datum, value) in data.iter_mut().zip(polynomial) {
+        for nuisance in &nuisances {
+            let [share] = products(&data, [nuisance]);
+            for (datum, value) in data.iter_mut().zip(nuisance) {
                 *datum -= share * value;
             }
             squares -= share * share;
         }
-        let values = (data.len() - polynomials.len()) as f64;
         let count = channels.len();
         data.truncate(count);
-        let baseline = polynomials
+        let nuisances = nuisances
             .into_iter()
-            .map(|mut polynomial| {
-                polynomial.truncate(count);
-                polynomial
+            .map(|mut nuisance| {
+                nuisance.truncate(count);
+                nuisance
             })
             .collect();
         Self {
             channels,
             data,
-            baseline,
+            nuisances,
             squares,
             values,
         }
@@ -103,8 +166,8 @@ impl LineData {
                 let [square, product] = products(one, [one, &self.data]);
                 quadratic.products[0] = square;
                 quadratic.projected[0] = product;
-                for polynomial in &self.baseline {
-                    let [along] = products(one, [polynomial]);
+                for nuisance in &self.nuisances {
+                    let [along] = products(one, [nuisance]);
                     quadratic.products[0] -= along * along;
                 }
             }
@@ -113,8 +176,8 @@ impl LineData {
                 let [other, second] = products(two, [two, &self.data]);
                 quadratic.products = [square, cross, other];
                 quadratic.projected = [first, second];
-                for polynomial in &self.baseline {
-                    let [a, b] = products(polynomial, [one, two]);
+                for nuisance in &self.nuisances {
+                    let [a, b] = products(nuisance, [one, two]);
                     quadratic.products[0] -= a * a;
                     quadratic.products[1] -= a * b;
                     quadratic.products[2] -= b * b;
@@ -147,6 +210,23 @@ fn polynomials(parts: &[&Channels], terms: usize) -> Vec<Vec<f64>> {
                 .collect()
         })
         .collect()
+}
+
+/// Nuisance columns over all channels and one more value for each column with a prior: there its
+/// amplitude, in units of its standard deviation, is "measured" as zero with unit error.
+fn with_priors(flat: Vec<Vec<f64>>, normal: Vec<Vec<f64>>, channels: usize) -> Vec<Vec<f64>> {
+    let length = channels + normal.len();
+    let extended = |mut column: Vec<f64>| {
+        column.resize(length, 0.0);
+        column
+    };
+    let flat = flat.into_iter().map(extended);
+    let normal = normal.into_iter().enumerate().map(|(index, column)| {
+        let mut column = extended(column);
+        column[channels + index] = 1.0;
+        column
+    });
+    flat.chain(normal).collect()
 }
 
 /// Columns made orthonormal one after the other.

@@ -48,40 +48,45 @@ impl Family {
     /// Number of coordinates.
     pub(super) fn dimensions(self) -> usize {
         match self {
-            Self::Moving(_) => 4,
-            Self::Still(_) => 3,
-            Self::Unabsorbed => 2,
-            Self::TwoClouds => 6,
+            Self::Moving(_) => 5,
+            Self::Still(_) => 4,
+            Self::Unabsorbed => 3,
+            Self::TwoClouds => 7,
         }
+    }
+
+    /// The coordinate of the thin line's width: the last one.
+    fn thin_width(self) -> usize {
+        self.dimensions() - 1
     }
 
     /// Rough sizes of the coordinates, the first in units of `sigma_km_s`.
     pub(super) fn scales(self, sigma_km_s: f64) -> Point {
         let v = 0.3 * sigma_km_s;
         match self {
-            Self::Moving(_) => padded(&[v, 0.3, 0.3, 0.5]),
-            Self::Still(_) => padded(&[v, 0.3, 0.5]),
-            Self::Unabsorbed => padded(&[v, 0.3]),
-            Self::TwoClouds => padded(&[v, 0.3, 0.4, 0.3, 0.5, 0.5]),
+            Self::Moving(_) => padded(&[v, 0.3, 0.3, 0.5, 0.1]),
+            Self::Still(_) => padded(&[v, 0.3, 0.5, 0.1]),
+            Self::Unabsorbed => padded(&[v, 0.3, 0.1]),
+            Self::TwoClouds => padded(&[v, 0.3, 0.4, 0.3, 0.5, 0.5, 0.1]),
         }
     }
 
     /// Names of the physical parameters.
     #[must_use]
     pub fn parameters(self) -> Vec<&'static str> {
-        let thin = "peak_thin_k";
+        let thin = ["peak_thin_k", "thin_width_ratio"];
         match self {
             Self::Moving(model) => {
                 let own = model.parameters().iter().map(|parameter| parameter.name);
-                own.chain([thin]).collect()
+                own.chain(thin).collect()
             }
             Self::Still(model) => {
                 let own = model.parameters().iter().map(|parameter| parameter.name);
                 own.filter(|name| *name != "v_in_km_s")
-                    .chain([thin])
+                    .chain(thin)
                     .collect()
             }
-            Self::Unabsorbed => vec!["v_lsr_km_s", "sigma_km_s", "peak_k", thin],
+            Self::Unabsorbed => [&["v_lsr_km_s", "sigma_km_s", "peak_k"][..], &thin].concat(),
             Self::TwoClouds => vec![
                 "v_front_km_s",
                 "sigma_front_km_s",
@@ -93,6 +98,7 @@ impl Family {
                 "excess_rear_k",
                 "peak_front_thin_k",
                 "peak_rear_thin_k",
+                "thin_width_ratio",
             ],
         }
     }
@@ -135,7 +141,8 @@ impl Family {
             Self::Unabsorbed => vec![x, thin[0]],
             Self::TwoClouds => vec![x, y, thin[0], thin[1]],
         };
-        [kinematics, rest].concat()
+        let ratio = point[self.thin_width()].exp();
+        [kinematics, rest, vec![ratio]].concat()
     }
 }
 
@@ -154,6 +161,7 @@ struct Looked {
     separation: Prior,
     ratio: Prior,
     tau_cloud: Prior,
+    thin_width: Prior,
     thick_k: f64,
     thin_k: f64,
 }
@@ -194,6 +202,7 @@ impl<'a> Target<'a> {
                 separation: priors.of("separation_over_sigma"),
                 ratio: priors.of("sigma_ratio"),
                 tau_cloud: priors.of("tau_cloud"),
+                thin_width: priors.of("thin_width_ratio"),
                 thick_k: mean("excess_thick_k"),
                 thin_k: mean("peak_thin_k"),
             },
@@ -207,7 +216,10 @@ impl<'a> Target<'a> {
         }
         let priors = &self.priors;
         let velocity = -(self.range.high_km_s - self.range.low_km_s).ln();
-        let shared = velocity + priors.sigma.ln_density_of_logarithm(point[1]);
+        let thin_width = point[self.family.thin_width()];
+        let shared = velocity
+            + priors.sigma.ln_density_of_logarithm(point[1])
+            + priors.thin_width.ln_density_of_logarithm(thin_width);
         shared
             + match self.family {
                 Family::Moving(_) => {
@@ -248,10 +260,11 @@ impl<'a> Target<'a> {
                 2
             }
         };
-        gaussian(thin, v, sigma, &mut thin_shapes[0]);
+        let thin_width = point[self.family.thin_width()].exp();
+        gaussian(thin, v, thin_width * sigma, &mut thin_shapes[0]);
         let thin_count = if self.family == Family::TwoClouds {
             let (second, wide) = (v + point[2] * sigma, sigma * point[3].exp());
-            gaussian(thin, second, wide, &mut thin_shapes[1]);
+            gaussian(thin, second, thin_width * wide, &mut thin_shapes[1]);
             2
         } else {
             1

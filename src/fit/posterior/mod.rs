@@ -8,6 +8,7 @@ mod data;
 mod family;
 mod starts;
 
+pub use data::ShapeErrors;
 pub use family::Family;
 
 use super::priors::Priors;
@@ -34,6 +35,8 @@ pub struct PosteriorSettings {
     /// Velocities whose channels hold the line; `None` takes the line windows and as much again on
     /// either side.
     pub range: Option<FitRange>,
+    /// Standard deviation of the shape errors over the line's peak.
+    pub shape_error: f64,
     /// How the model's value in a channel is formed.
     pub averaging: Averaging,
     /// How much is drawn.
@@ -44,12 +47,16 @@ pub struct PosteriorSettings {
     pub seed: u64,
 }
 
+/// Departure of clouds from every family's profile, over the peak.
+pub const SHAPE_ERROR: f64 = 0.03;
+
 impl Default for PosteriorSettings {
     fn default() -> Self {
         Self {
             models: vec![Model::TwoLayer, Model::Hill],
             priors: Priors::default(),
             range: None,
+            shape_error: SHAPE_ERROR,
             averaging: Averaging::Channel,
             sampling: ImportanceSettings::default(),
             draws: 500,
@@ -267,7 +274,9 @@ pub fn pair_posterior(
     let narrowest = starts::NARROWEST * kinematics[0].sigma_km_s;
     let line_data = |prepared: &Prepared, line: &Line| {
         let shape = LineShape::new(line.rest_frequency_ghz, line.components.clone());
-        LineData::new(prepared, shape, range, settings.averaging, narrowest)
+        let errors = starts::shape_errors(prepared, settings.shape_error, kinematics[0]);
+        let averaging = settings.averaging;
+        LineData::new(prepared, shape, range, averaging, narrowest, &errors)
     };
     let data = [line_data(thick, lines.0), line_data(thin, lines.1)];
     for (name, data) in ["thick", "thin"].into_iter().zip(&data) {
@@ -364,8 +373,13 @@ fn family_posterior(
         .filter_map(|start| ascend(&mut counted, start, &scales, 40))
         .collect();
     let peaks = starts::distinct(peaks, family.dimensions());
-    let draws: Draws =
-        sample(&mut counted, &peaks, &settings.sampling, generator).ok_or_else(no_mass)?;
+    let mut sampling = settings.sampling;
+    if family == Family::TwoClouds {
+        sampling.spread *= 2;
+        sampling.round *= 2;
+        sampling.effective *= 1.5;
+    }
+    let draws: Draws = sample(&mut counted, &peaks, &sampling, generator).ok_or_else(no_mass)?;
     let evaluations = counted.evaluations;
     let v_in = match family {
         Family::Moving(_) => draws

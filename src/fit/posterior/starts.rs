@@ -1,7 +1,7 @@
 //! Where the search for peaks of a posterior begins.
 
 use super::family::{Family, padded};
-use super::sigma_km_s;
+use super::{ShapeErrors, sigma_km_s};
 use crate::measure::ThinLine;
 use crate::numeric::sampling::{Density, Peak, Point};
 use crate::prepare::Prepared;
@@ -38,6 +38,24 @@ pub(super) fn kinematics(
     from_thin.into_iter().chain(rest).collect()
 }
 
+/// Shape errors of a prepared line: about its intensity, a share of its peak.
+pub(super) fn shape_errors(prepared: &Prepared, share: f64, gas: Kinematics) -> ShapeErrors {
+    let about = intensity(prepared);
+    let (spectrum, window) = (&prepared.spectrum, prepared.window);
+    let inside = spectrum
+        .velocity_km_s()
+        .iter()
+        .zip(spectrum.temperature_k())
+        .filter(|(v, t)| window.contains(**v) && t.is_finite());
+    let peak = inside.map(|(_, t)| *t).fold(0.0, f64::max);
+    ShapeErrors {
+        deviation_k: share * (peak - prepared.noise.rms_k).max(0.0),
+        middle_km_s: about.v_km_s,
+        reach_km_s: 1.5 * about.sigma_km_s / SHARE_OF_INTENSITY,
+        sigma_km_s: gas.sigma_km_s,
+    }
+}
+
 /// First and second moment of the positive intensity in the window.
 fn intensity(prepared: &Prepared) -> Kinematics {
     let (spectrum, window) = (&prepared.spectrum, prepared.window);
@@ -69,7 +87,7 @@ fn intensity(prepared: &Prepared) -> Kinematics {
 }
 
 /// Candidates of each kind (sign of the third coordinate) that are followed to a peak.
-const FOLLOWED: usize = 2;
+const FOLLOWED: usize = 3;
 
 /// The most promising candidates of a family.
 pub(super) fn starts(
@@ -104,6 +122,9 @@ pub(super) fn starts(
     kept
 }
 
+/// ln of the thin line's width over the thick line's dispersion in every candidate.
+const THIN_WIDTH: f64 = 0.05;
+
 fn candidates(family: Family, about: Kinematics) -> Vec<Point> {
     let Kinematics { v_km_s, sigma_km_s } = about;
     let ln = |factor: f64| (factor * sigma_km_s).ln();
@@ -113,7 +134,13 @@ fn candidates(family: Family, about: Kinematics) -> Vec<Point> {
             for factor in [1.1, 0.8, 0.5] {
                 for speed in [-1.6, -1.0, -0.5, -0.15, 0.15, 0.5, 1.0, 1.6] {
                     for tau in [0.8f64, 3.0, 10.0, 30.0] {
-                        points.push(padded(&[v_km_s, ln(factor), speed / factor, tau.ln()]));
+                        points.push(padded(&[
+                            v_km_s,
+                            ln(factor),
+                            speed / factor,
+                            tau.ln(),
+                            THIN_WIDTH,
+                        ]));
                     }
                 }
             }
@@ -121,13 +148,13 @@ fn candidates(family: Family, about: Kinematics) -> Vec<Point> {
         Family::Still(_) => {
             for factor in [1.3, 1.0, 0.7, 0.45] {
                 for tau in [0.5f64, 2.0, 6.0, 20.0, 50.0] {
-                    points.push(padded(&[v_km_s, ln(factor), tau.ln()]));
+                    points.push(padded(&[v_km_s, ln(factor), tau.ln(), THIN_WIDTH]));
                 }
             }
         }
         Family::Unabsorbed => {
             for factor in [0.6, 1.0, 1.4, 2.0] {
-                points.push(padded(&[v_km_s, ln(factor)]));
+                points.push(padded(&[v_km_s, ln(factor), THIN_WIDTH]));
             }
         }
         Family::TwoClouds => {
@@ -146,6 +173,7 @@ fn candidates(family: Family, about: Kinematics) -> Vec<Point> {
                                     0.0,
                                     front.ln(),
                                     rear.ln(),
+                                    THIN_WIDTH,
                                 ]));
                             }
                         }

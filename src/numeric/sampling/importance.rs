@@ -15,6 +15,8 @@ pub struct ImportanceSettings {
     pub fewest_rounds: usize,
     /// Most rounds.
     pub most_rounds: usize,
+    /// Components of the first proposal about each peak, beside a narrow and a wide one.
+    pub spread: usize,
     /// Effective sample size at which drawing ends.
     pub effective: f64,
 }
@@ -25,6 +27,7 @@ impl Default for ImportanceSettings {
             round: 250,
             fewest_rounds: 3,
             most_rounds: 16,
+            spread: 2,
             effective: 500.0,
         }
     }
@@ -78,12 +81,10 @@ pub struct Draws {
 /// Part of every proposal that keeps the first one: what adapting loses stays reachable.
 const KEPT_SHARE: f64 = 0.1;
 
-/// Components about each peak.
-const SPREAD: usize = 4;
-
+/// Powers of the weights that the proposals of the first rounds are fitted to: wider than the density.
 const POWERS: [f64; 3] = [0.3, 0.5, 0.7];
 
-/// The second component about each peak is this much wider.
+/// The wide component about each peak is this much wider.
 const WIDER: f64 = 2.5;
 
 /// Weighted draws of a density about its peaks; `None` where no peak has a scatter or every draw has
@@ -110,7 +111,7 @@ pub fn sample(
     });
     let spread = StudentMixture::new(
         dimensions,
-        (0..SPREAD * peaks.len()).map(|index| {
+        (0..settings.spread * peaks.len()).map(|index| {
             let peak = &peaks[index % peaks.len()];
             let single = StudentMixture::new(dimensions, [(peak.point, peak.scatter)]);
             (single.draw(generator, &chi_squared), wide(&peak.scatter))
