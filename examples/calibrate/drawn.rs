@@ -22,6 +22,8 @@ pub struct DrawnPair {
     pub sigma_km_s: f64,
     /// Peak over noise of the thick line.
     pub signal_to_noise: f64,
+    /// Noise of both lines, K.
+    pub noise_k: (f64, f64),
     pub thick: Spectrum,
     pub thin: Spectrum,
 }
@@ -56,11 +58,12 @@ pub fn draw(
     let tau = of("tau", &mut generator);
     let x = of("excess_thick_k", &mut generator);
     let y = of("excess_thick_k", &mut generator);
-    let thin_peaks = [0, 1].map(|_| of("peak_thin_k", &mut generator));
+    let thin_peak = of("peak_thin_k", &mut generator);
+    let other_peak = thin_peak * of("thin_brightness_ratio", &mut generator);
     let second = v + sigma * of("separation_over_sigma", &mut generator);
     let wide = sigma * of("sigma_ratio", &mut generator);
     let thin_width = of("thin_width_ratio", &mut generator);
-    let depths = [0, 1].map(|_| of("tau_cloud", &mut generator));
+    let depth = of("tau_cloud", &mut generator);
     let log_uniform = |low: f64, high: f64, generator: &mut ChaCha8Rng| {
         low * (high / low).powf(generator.random::<f64>())
     };
@@ -88,8 +91,8 @@ pub fn draw(
         }
         Family::Unabsorbed => axis.values(Model::Gaussian, &shapes[0], &[v, sigma, x]),
         Family::TwoClouds => {
-            let front = axis.values(Model::Layer, &shapes[0], &[v, sigma, depths[0], t(1.0)]);
-            let rear = axis.values(Model::Layer, &shapes[0], &[second, wide, depths[1], t(1.0)]);
+            let front = axis.values(Model::Layer, &shapes[0], &[v, sigma, depth, t(1.0)]);
+            let rear = axis.values(Model::Layer, &shapes[0], &[second, wide, depth, t(1.0)]);
             let pairs = front.iter().zip(&rear);
             pairs.map(|(f, r)| x * f + y * r * (1.0 - f)).collect()
         }
@@ -97,13 +100,13 @@ pub fn draw(
     let mut thin = axis.values(
         Model::Gaussian,
         &shapes[1],
-        &[v, thin_width * sigma, thin_peaks[0]],
+        &[v, thin_width * sigma, thin_peak],
     );
     if family == Family::TwoClouds {
         let other = axis.values(
             Model::Gaussian,
             &shapes[1],
-            &[second, thin_width * wide, thin_peaks[1]],
+            &[second, thin_width * wide, other_peak],
         );
         for (value, other) in thin.iter_mut().zip(other) {
             *value += other;
@@ -129,14 +132,18 @@ pub fn draw(
             .map(|(mean, noise)| mean + peak / ratio * noise)
             .collect();
         Spectrum::new(axis.velocity.clone(), vec![channel; means.len()], values)
+            .map(|spectrum| (spectrum, peak / ratio))
     };
+    let (thick, noise_k) = observed(thick, signal_to_noise)?;
+    let (thin, thin_noise_k) = observed(thin, share * signal_to_noise)?;
     Ok(DrawnPair {
         family,
         v_in_km_s: v_in,
         sigma_km_s: sigma,
         signal_to_noise,
-        thick: observed(thick, signal_to_noise)?,
-        thin: observed(thin, share * signal_to_noise)?,
+        noise_k: (noise_k, thin_noise_k),
+        thick,
+        thin,
     })
 }
 

@@ -1,7 +1,7 @@
 //! Whether intervals and probabilities mean what they say: pairs drawn from the priors, prepared with
 //! default settings, against their truth.
 //!
-//! `cargo run --example calibrate -- coverage | mixed | spheres | sampler | shapes [PAIRS] [white | hanning | band-limited] [SHAPE_ERROR]`
+//! `cargo run --example calibrate -- coverage | mixed | spheres | sampler | shapes [PAIRS] [white | hanning | band-limited] [SHAPE_ERROR] [exact]`
 #![allow(clippy::print_stdout, clippy::print_stderr)]
 
 mod drawn;
@@ -13,11 +13,13 @@ use inrush::fit::posterior::{
 };
 use inrush::fit::{FitSettings, fit_thin};
 use inrush::line::Line;
+use inrush::measure::ThinLine;
 use inrush::model::Model;
 use inrush::numeric::sampling::ImportanceSettings;
-use inrush::prepare::{Expected, PrepareSettings, prepare_pair};
+use inrush::numeric::{Autoregression, Estimate};
+use inrush::prepare::{Baseline, Expected, PrepareSettings, Prepared, prepare_pair};
 use inrush::simulate::Correlation;
-use inrush::spectrum::Spectrum;
+use inrush::spectrum::{Noise, Spectrum, Window};
 use std::error::Error;
 use std::process::ExitCode;
 use std::sync::Mutex;
@@ -51,6 +53,7 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
         shape_error: arguments
             .get(3)
             .map_or(Ok(SHAPE_ERROR), |text| text.parse())?,
+        exact: arguments.get(4).is_some_and(|text| text == "exact"),
     };
     match choice {
         "coverage" => coverage(pairs, setup),
@@ -71,6 +74,8 @@ pub struct Setup {
     pub correlation: Correlation,
     /// Shape errors over the peak.
     pub shape_error: f64,
+    /// Whether noise, window and thin line are given instead of found.
+    pub exact: bool,
 }
 
 impl Setup {
@@ -122,6 +127,60 @@ fn posterior(
     })
 }
 
+/// The posterior of a pair whose noise, window and thin line are known: what is left is the sampler's.
+fn exact(
+    pair: &DrawnPair,
+    lines: &(Line, Line),
+    settings: &PosteriorSettings,
+) -> Result<Outcome, String> {
+    let sigma = pair.sigma_km_s;
+    let window = Window {
+        low_km_s: -4.0 * sigma,
+        high_km_s: 4.0 * sigma,
+    };
+    let prepared = |spectrum: &Spectrum, rms_k: f64| Prepared {
+        window,
+        window_automatic: false,
+        window_cuts_line: false,
+        other_signal: Vec::new(),
+        baseline: Baseline {
+            order: None,
+            values_k: vec![0.0; spectrum.len()],
+            channels: spectrum.len(),
+            clipped: 0,
+        },
+        noise: Noise {
+            rms_k,
+            channels: spectrum.len(),
+            process: Autoregression::white(),
+        },
+        spectrum: spectrum.clone(),
+    };
+    let known = |value: f64| Estimate {
+        value,
+        err: 0.1 * sigma,
+    };
+    let thin_line = ThinLine {
+        v_km_s: known(0.0),
+        fwhm_km_s: known(sigma * inrush::constants::FWHM_PER_SIGMA),
+        covariance_v_fwhm: 0.0,
+        peak_k: known(1.0),
+    };
+    let began = Instant::now();
+    let posterior = pair_posterior(
+        &prepared(&pair.thick, pair.noise_k.0),
+        &prepared(&pair.thin, pair.noise_k.1),
+        (&lines.0, &lines.1),
+        Some(&thin_line),
+        settings,
+    )
+    .map_err(|error| error.to_string())?;
+    Ok(Outcome {
+        posterior,
+        seconds: began.elapsed().as_secs_f64(),
+    })
+}
+
 /// Results of jobs 0 to `count`, in order, on every core.
 fn parallel<T: Send>(count: usize, job: impl Fn(usize) -> T + Sync) -> Vec<T> {
     let next = AtomicUsize::new(0);
@@ -165,7 +224,16 @@ fn coverage(pairs: usize, setup: Setup) -> Result<(), Box<dyn Error>> {
         let model = MODELS[index % 2];
         let pair = draw(Family::Moving(model), None, &lines, setup, index as u64)
             .map_err(|error| error.to_string())?;
-        let outcome = posterior(&pair.thick, &pair.thin, &lines, &setup.settings())?;
+        let settings = PosteriorSettings {
+            models: vec![model],
+            hypotheses: false,
+            ..setup.settings()
+        };
+        let outcome = if setup.exact {
+            exact(&pair, &lines, &settings)?
+        } else {
+            posterior(&pair.thick, &pair.thin, &lines, &settings)?
+        };
         Ok::<_, String>((pair, outcome))
     });
     let refused: Vec<&String> = results
@@ -216,6 +284,24 @@ fn coverage(pairs: usize, setup: Setup) -> Result<(), Box<dyn Error>> {
     }
     let below: Vec<f64> = ranks.iter().map(|rank| rank.below).collect();
     println!("ranks in twentieths: {:?}", histogram(&below));
+    for (pair, outcome) in &found {
+        if let Some(rank) = rank(pair, outcome).filter(|rank| (rank.below - 0.5).abs() > 0.495)
+            && let Some(of) = outcome.posterior.of(pair.family)
+        {
+            println!(
+                "far: {} S/N {:.0} true {:.3} below {:.4} {:?} {:?}",
+                rank.model.name(),
+                pair.signal_to_noise,
+                pair.v_in_km_s / pair.sigma_km_s,
+                rank.below,
+                of.v_in_km_s().map(|v| (
+                    v.interval95.0 / pair.sigma_km_s,
+                    v.interval95.1 / pair.sigma_km_s
+                )),
+                of.quality
+            );
+        }
+    }
     costs(&found);
     Ok(())
 }
@@ -443,6 +529,33 @@ fn spheres(setup: Setup) -> Result<(), Box<dyn Error>> {
             }
         }
     }
+    for (truth, result) in rows.iter().zip(&results) {
+        let Some(clouds) = result
+            .as_ref()
+            .ok()
+            .and_then(|(posterior, _)| posterior.of(Family::TwoClouds))
+        else {
+            continue;
+        };
+        let text: Vec<String> = clouds
+            .names
+            .iter()
+            .filter_map(|name| {
+                Some(format!(
+                    "{} {:.2}",
+                    name.trim_end_matches("_km_s"),
+                    clouds.marginal(name)?.median
+                ))
+            })
+            .collect();
+        println!(
+            "clouds {} v_lsr {} sigma {}: {}",
+            truth["id"],
+            truth["v_lsr_km_s"],
+            truth["sigma_km_s"],
+            text.join(" ")
+        );
+    }
     let of_kind = |kinds: &[&str], limit: &dyn Fn(&HashMap<String, String>) -> bool| {
         let of: Vec<f64> = rows
             .iter()
@@ -552,6 +665,7 @@ fn shapes(pairs: usize) -> Result<(), Box<dyn Error>> {
     let setup = Setup {
         correlation: Correlation::White,
         shape_error: 0.0,
+        exact: false,
     };
     for made in MODELS {
         let fitted = MODELS

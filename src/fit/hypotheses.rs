@@ -15,7 +15,7 @@ pub enum Hypothesis {
     Expansion,
     /// It is at rest: a slab without motion, or a line that nothing absorbs.
     Static,
-    /// Two clouds of two velocities lie on the line of sight.
+    /// Two clouds of two velocities lie on the line of sight, and both lines show both.
     TwoClouds,
 }
 
@@ -118,10 +118,13 @@ pub enum Unseen {
     Rotation,
     /// An outflow's lobes make them too.
     Outflow,
+    /// A cold cloud in front that the thin line does not show, at a velocity of its own.
+    Foreground,
 }
 
-/// Rotation and outflow: only a map tells.
-pub const UNSEEN: [Unseen; 2] = [Unseen::Rotation, Unseen::Outflow];
+/// Rotation and outflow, which a map tells, and a cold foreground, which lines of other excitation
+/// do.
+pub const UNSEEN: [Unseen; 3] = [Unseen::Rotation, Unseen::Outflow, Unseen::Foreground];
 
 /// The verdict on a pair.
 #[derive(Clone, Debug, PartialEq)]

@@ -126,7 +126,7 @@ pub struct PriorRow {
 
 /// The table: every prior that posteriors and probabilities rest on, beside v_lsr (uniform over the
 /// fitted velocities) and the noise levels s (1/s, made proper by the line-free channels).
-pub const PRIORS: [PriorRow; 9] = [
+pub const PRIORS: [PriorRow; 10] = [
     PriorRow {
         name: "sigma_km_s",
         prior: Prior::LogNormal {
@@ -156,7 +156,7 @@ pub const PRIORS: [PriorRow; 9] = [
     PriorRow {
         name: "peak_thin_k",
         prior: Prior::Exponential { mean: 2.0 },
-        about: "peak of the thin line, of each cloud in it",
+        about: "peak of the thin line, of the front cloud in it",
     },
     PriorRow {
         name: "thin_width_ratio",
@@ -185,7 +185,15 @@ pub const PRIORS: [PriorRow; 9] = [
             median: 4.0,
             ln_deviation: 1.0,
         },
-        about: "optical depth of each of two clouds in the thick line",
+        about: "optical depth of two clouds in the thick line",
+    },
+    PriorRow {
+        name: "thin_brightness_ratio",
+        prior: Prior::LogNormal {
+            median: 1.0,
+            ln_deviation: 0.7,
+        },
+        about: "peak of the rear cloud in the thin line over the front one's: two clouds are those that both lines show",
     },
 ];
 

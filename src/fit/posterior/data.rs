@@ -166,27 +166,48 @@ impl LineData {
                 let [square, product] = products(one, [one, &self.data]);
                 quadratic.products[0] = square;
                 quadratic.projected[0] = product;
-                for nuisance in &self.nuisances {
-                    let [along] = products(one, [nuisance]);
-                    quadratic.products[0] -= along * along;
-                }
+                self.each_nuisance(one, |_, along| quadratic.products[0] -= along * along);
             }
             [one, two, ..] => {
                 let [square, cross, first] = products(one, [one, two, &self.data]);
                 let [other, second] = products(two, [two, &self.data]);
                 quadratic.products = [square, cross, other];
                 quadratic.projected = [first, second];
-                for nuisance in &self.nuisances {
-                    let [a, b] = products(nuisance, [one, two]);
-                    quadratic.products[0] -= a * a;
-                    quadratic.products[1] -= a * b;
-                    quadratic.products[2] -= b * b;
-                }
+                let mut others = [0.0; MOST_NUISANCES];
+                self.each_nuisance(two, |index, along| others[index] = along);
+                self.each_nuisance(one, |index, along| {
+                    quadratic.products[0] -= along * along;
+                    quadratic.products[1] -= along * others[index];
+                    quadratic.products[2] -= others[index] * others[index];
+                });
             }
         }
         quadratic
     }
 }
+
+impl LineData {
+    /// Products of a column with every nuisance, four in a pass.
+    fn each_nuisance(&self, column: &[f64], mut take: impl FnMut(usize, f64)) {
+        let (fours, rest) = self.nuisances.as_chunks::<4>();
+        let mut index = 0;
+        let mut next = |along: f64| {
+            take(index, along);
+            index += 1;
+        };
+        for four in fours {
+            let four: [&[f64]; 4] = std::array::from_fn(|k| &four[k][..]);
+            products(column, four).into_iter().for_each(&mut next);
+        }
+        for nuisance in rest {
+            let [along] = products(column, [nuisance]);
+            next(along);
+        }
+    }
+}
+
+/// Most baseline terms and shape errors together.
+const MOST_NUISANCES: usize = 24;
 
 /// Powers of velocity in all channels of the parts, white.
 fn polynomials(parts: &[&Channels], terms: usize) -> Vec<Vec<f64>> {

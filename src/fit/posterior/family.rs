@@ -17,8 +17,8 @@ pub enum Family {
     Still(Model),
     /// One Gaussian in both lines, nothing absorbed.
     Unabsorbed,
-    /// Two clouds of two velocities: in the thick line each a layer, the front one absorbing the
-    /// rear one; in the thin line each a Gaussian.
+    /// Two clouds of two velocities, of comparable brightness in the thin line, each a Gaussian there;
+    /// in the thick line each a layer of one optical depth, the front one absorbing the rear one.
     TwoClouds,
 }
 
@@ -67,7 +67,7 @@ impl Family {
             Self::Moving(_) => padded(&[v, 0.3, 0.3, 0.5, 0.1]),
             Self::Still(_) => padded(&[v, 0.3, 0.5, 0.1]),
             Self::Unabsorbed => padded(&[v, 0.3, 0.1]),
-            Self::TwoClouds => padded(&[v, 0.3, 0.4, 0.3, 0.5, 0.5, 0.1]),
+            Self::TwoClouds => padded(&[v, 0.3, 0.4, 0.3, 0.5, 0.4, 0.1]),
         }
     }
 
@@ -92,25 +92,24 @@ impl Family {
                 "sigma_front_km_s",
                 "v_rear_km_s",
                 "sigma_rear_km_s",
-                "tau_front",
-                "tau_rear",
+                "tau_cloud",
                 "excess_front_k",
                 "excess_rear_k",
-                "peak_front_thin_k",
-                "peak_rear_thin_k",
+                "peak_thin_k",
+                "thin_brightness_ratio",
                 "thin_width_ratio",
             ],
         }
     }
 
-    /// Physical parameters, in the order of [`Family::parameters`], of a point and the amplitudes of
+    /// Physical parameters, in the order of [`Family::parameters`], of a point and the brightnesses of
     /// both lines.
     pub(super) fn physical(
         self,
         point: &Point,
         radiation: &RadiationTemperature,
         [x, y]: [f64; 2],
-        thin: [f64; 2],
+        thin_k: f64,
     ) -> Vec<f64> {
         let t = |excess: f64| radiation.inverse(radiation.background() + excess);
         let (v, sigma) = (point[0], point[1].exp());
@@ -129,17 +128,16 @@ impl Family {
                 v + point[2] * sigma,
                 sigma * point[3].exp(),
                 point[4].exp(),
-                point[5].exp(),
             ],
         };
         let rest = match self {
             Self::Moving(model) | Self::Still(model) => {
                 let mut rest = temperatures(model);
-                rest.push(thin[0]);
+                rest.push(thin_k);
                 rest
             }
-            Self::Unabsorbed => vec![x, thin[0]],
-            Self::TwoClouds => vec![x, y, thin[0], thin[1]],
+            Self::Unabsorbed => vec![x, thin_k],
+            Self::TwoClouds => vec![x, y, thin_k, point[5].exp()],
         };
         let ratio = point[self.thin_width()].exp();
         [kinematics, rest, vec![ratio]].concat()
@@ -161,6 +159,7 @@ struct Looked {
     separation: Prior,
     ratio: Prior,
     tau_cloud: Prior,
+    brightness: Prior,
     thin_width: Prior,
     thick_k: f64,
     thin_k: f64,
@@ -202,6 +201,7 @@ impl<'a> Target<'a> {
                 separation: priors.of("separation_over_sigma"),
                 ratio: priors.of("sigma_ratio"),
                 tau_cloud: priors.of("tau_cloud"),
+                brightness: priors.of("thin_brightness_ratio"),
                 thin_width: priors.of("thin_width_ratio"),
                 thick_k: mean("excess_thick_k"),
                 thin_k: mean("peak_thin_k"),
@@ -231,7 +231,7 @@ impl<'a> Target<'a> {
                     priors.separation.ln_density(point[2])
                         + priors.ratio.ln_density_of_logarithm(point[3])
                         + priors.tau_cloud.ln_density_of_logarithm(point[4])
-                        + priors.tau_cloud.ln_density_of_logarithm(point[5])
+                        + priors.brightness.ln_density_of_logarithm(point[5])
                 }
             }
     }
@@ -255,36 +255,38 @@ impl<'a> Target<'a> {
             }
             Family::TwoClouds => {
                 let (second, wide) = (v + point[2] * sigma, sigma * point[3].exp());
-                let front = (v, sigma, point[4].exp());
-                clouds(thick, front, (second, wide, point[5].exp()), thick_shapes);
+                let tau = point[4].exp();
+                clouds(thick, (v, sigma, tau), (second, wide, tau), thick_shapes);
                 2
             }
         };
         let thin_width = point[self.family.thin_width()].exp();
         gaussian(thin, v, thin_width * sigma, &mut thin_shapes[0]);
-        let thin_count = if self.family == Family::TwoClouds {
+        if self.family == Family::TwoClouds {
             let (second, wide) = (v + point[2] * sigma, sigma * point[3].exp());
-            gaussian(thin, second, thin_width * wide, &mut thin_shapes[1]);
-            2
-        } else {
-            1
-        };
+            let [front, rear] = thin_shapes;
+            gaussian(thin, second, thin_width * wide, rear);
+            let ratio = point[5].exp();
+            for (front, rear) in front.iter_mut().zip(rear) {
+                *front += ratio * *rear;
+            }
+        }
         let of = |line: &LineData, shapes: &[Vec<f64>; 2], count: usize, mean: f64| {
             let columns = [&shapes[0][..], &shapes[1][..]];
             line.quadratic(&columns[..count], mean)
         };
         [
             of(thick, thick_shapes, thick_count, self.priors.thick_k),
-            of(thin, thin_shapes, thin_count, self.priors.thin_k),
+            of(thin, thin_shapes, 1, self.priors.thin_k),
         ]
     }
 
     /// Physical parameters of a point with brightnesses drawn given it.
     pub fn physical(&mut self, point: &Point, generator: &mut impl rand::Rng) -> Vec<f64> {
         let [thick, thin] = self.quadratics(point);
-        let (thick, thin) = (thick.draw(generator), thin.draw(generator));
+        let (thick, [thin_k, _]) = (thick.draw(generator), thin.draw(generator));
         let radiation = &self.lines[0].channels().line().radiation;
-        self.family.physical(point, radiation, thick, thin)
+        self.family.physical(point, radiation, thick, thin_k)
     }
 }
 
@@ -307,7 +309,11 @@ impl Density for Target<'_> {
         }
         let [thick, thin] = self.quadratics(point);
         let ln = prior + thick.ln_marginal() + thin.ln_marginal();
-        if ln.is_nan() { f64::NEG_INFINITY } else { ln }
+        if ln.is_finite() {
+            ln
+        } else {
+            f64::NEG_INFINITY
+        }
     }
 }
 

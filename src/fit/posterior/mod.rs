@@ -30,6 +30,8 @@ use rand_chacha::rand_core::SeedableRng;
 pub struct PosteriorSettings {
     /// Slab models; each moving and at rest.
     pub models: Vec<Model>,
+    /// Whether families that hypotheses need beside the moving models are sampled too.
+    pub hypotheses: bool,
     /// Priors.
     pub priors: Priors,
     /// Velocities whose channels hold the line; `None` takes the line windows and as much again on
@@ -54,6 +56,7 @@ impl Default for PosteriorSettings {
     fn default() -> Self {
         Self {
             models: vec![Model::TwoLayer, Model::Hill],
+            hypotheses: true,
             priors: Priors::default(),
             range: None,
             shape_error: SHAPE_ERROR,
@@ -289,11 +292,8 @@ pub fn pair_posterior(
             });
         }
     }
-    let moving = settings.models.iter().copied().map(Family::Moving);
-    let still = settings.models.iter().copied().map(Family::Still);
-    let families = moving
-        .chain(still)
-        .chain([Family::Unabsorbed, Family::TwoClouds])
+    let families = families(settings)
+        .into_iter()
         .enumerate()
         .map(|(stream, family)| {
             let mut target = Target::new(family, (&data[0], &data[1]), range, &settings.priors);
@@ -303,6 +303,17 @@ pub fn pair_posterior(
         })
         .collect::<Result<Vec<FamilyPosterior>, PosteriorError>>()?;
     Ok(PairPosterior { families, range })
+}
+
+/// The families of the settings.
+fn families(settings: &PosteriorSettings) -> Vec<Family> {
+    let moving = settings.models.iter().copied().map(Family::Moving);
+    if !settings.hypotheses {
+        return moving.collect();
+    }
+    let still = settings.models.iter().copied().map(Family::Still);
+    let others = [Family::Unabsorbed, Family::TwoClouds];
+    moving.chain(still).chain(others).collect()
 }
 
 fn check(settings: &PosteriorSettings) -> Result<(), PosteriorError> {

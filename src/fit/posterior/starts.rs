@@ -6,8 +6,9 @@ use crate::measure::ThinLine;
 use crate::numeric::sampling::{Density, Peak, Point};
 use crate::prepare::Prepared;
 
-/// Width of the sharpest feature of a profile, in dispersions.
-pub(super) const NARROWEST: f64 = 0.3;
+/// Width of the sharpest feature of a profile, in dispersions. Sharper ones, the edges of an opaque
+/// line, are lost among the shape errors.
+pub(super) const NARROWEST: f64 = 0.6;
 
 /// Centre and dispersion, km/s.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -132,7 +133,7 @@ fn candidates(family: Family, about: Kinematics) -> Vec<Point> {
     match family {
         Family::Moving(_) => {
             for factor in [1.1, 0.8, 0.5] {
-                for speed in [-1.6, -1.0, -0.5, -0.15, 0.15, 0.5, 1.0, 1.6] {
+                for speed in [-2.6, -1.6, -1.0, -0.5, -0.15, 0.15, 0.5, 1.0, 1.6, 2.6] {
                     for tau in [0.8f64, 3.0, 10.0, 30.0] {
                         points.push(padded(&[
                             v_km_s,
@@ -162,17 +163,15 @@ fn candidates(family: Family, about: Kinematics) -> Vec<Point> {
                 for sign in [-1.0, 1.0] {
                     for shift in [-0.7, 0.0, 0.7] {
                         for factor in [0.5, 0.85] {
-                            for (front, rear) in
-                                [(2.0f64, 2.0f64), (10.0, 2.0), (2.0, 10.0), (10.0, 10.0)]
-                            {
+                            for tau in [2.0f64, 10.0] {
                                 let v = v_km_s + (shift - 0.5 * sign * apart) * sigma_km_s;
                                 points.push(padded(&[
                                     v,
                                     ln(factor),
                                     sign * apart / factor,
                                     0.0,
-                                    front.ln(),
-                                    rear.ln(),
+                                    tau.ln(),
+                                    0.0,
                                     THIN_WIDTH,
                                 ]));
                             }

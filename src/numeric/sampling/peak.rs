@@ -1,7 +1,7 @@
 //! A peak of a density and the scatter about it, without derivatives being given.
 
 use super::Density;
-use super::matrix::{MOST_DIMENSIONS, Matrix, Point, inverse};
+use super::matrix::{MOST_DIMENSIONS, Matrix, Point, cholesky, inverse};
 
 /// A peak.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -152,6 +152,9 @@ fn update(metric: &mut Matrix, moved: &Point, turned: &Point, dimensions: usize)
 /// Drop of ln(density) at which curvature is measured.
 const DROP: f64 = 0.5;
 
+/// Widest standard deviation of a scatter, in units of the scales.
+const WIDEST: f64 = 6.0;
+
 /// Inverse curvature about a peak from differences over steps that lower ln(density) by about
 /// [`DROP`] each.
 fn scatter(density: &mut impl Density, here: &Point, ln: f64, scales: &Point) -> Matrix {
@@ -191,9 +194,12 @@ fn scatter(density: &mut impl Density, here: &Point, ln: f64, scales: &Point) ->
             curvature[j][i] = curvature[i][j];
         }
     }
-    // curvature that is not that of a peak: correlations are lowered until it is
-    for _ in 0..12 {
-        if let Some(scatter) = inverse(&curvature, dimensions) {
+    // curvature that is not that of a peak, or hardly: correlations are lowered until it is
+    for _ in 0..20 {
+        if let Some(scatter) = inverse(&curvature, dimensions)
+            && cholesky(&scatter, dimensions).is_some()
+            && (0..dimensions).all(|i| scatter[i][i] < (WIDEST * scales[i]).powi(2))
+        {
             return scatter;
         }
         for i in 0..dimensions {
