@@ -14,6 +14,7 @@ use inrush::numeric::{Autoregression, Estimate};
 use inrush::prepare::{Baseline, Prepared};
 use inrush::simulate::{NoiseLevel, PairTruth, simulate_pair};
 use inrush::spectrum::{Noise, Spectrum, Window};
+use std::fmt::Write as _;
 use std::path::Path;
 
 const V_LSR_KM_S: f64 = 0.02;
@@ -321,12 +322,8 @@ fn the_page_shows_the_priors() {
     let (found, after) = rest.split_once(end).unwrap();
     let mut expected = String::from("| name | density | of what, and why |\n| --- | --- | --- |\n");
     for row in PRIORS {
-        expected += &format!(
-            "| `{}` | {} | {} |\n",
-            row.name,
-            row.prior.text(),
-            row.about
-        );
+        let (name, density, about) = (row.name, row.prior.text(), row.about);
+        writeln!(expected, "| `{name}` | {density} | {about} |").unwrap();
     }
     if std::env::var_os("INRUSH_WRITE_EXPECTED").is_some() {
         std::fs::write(&path, format!("{before}{begin}{expected}{end}{after}")).unwrap();

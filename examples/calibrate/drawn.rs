@@ -116,7 +116,7 @@ pub fn draw(
         let peak = profile
             .iter()
             .fold(0.0f64, |peak, value| peak.max(value.abs()));
-        let mut means = axis.means(&profile);
+        let mut means = means(&profile);
         for bump in
             shape_errors(&axis.velocity, &means, sigma, setup.shape_error).bumps(&axis.velocity)
         {
@@ -166,6 +166,9 @@ fn shape_errors(velocity: &[f64], profile: &[f64], sigma: f64, share: f64) -> Sh
 /// Parts of a channel.
 const PARTS: usize = 8;
 
+/// More channels than any drawn band has.
+const MOST_CHANNELS: u32 = 10_000;
+
 /// Channels, and the parts of them that profiles are averaged over.
 struct Axis {
     velocity: Vec<f64>,
@@ -174,8 +177,10 @@ struct Axis {
 
 impl Axis {
     fn new(reach: f64, channel: f64) -> Self {
-        let half = (reach / channel).ceil() as i32;
-        let velocity: Vec<f64> = (-half..=half).map(|i| f64::from(i) * channel).collect();
+        let velocity: Vec<f64> = (0..MOST_CHANNELS)
+            .map(|index| -reach + f64::from(index) * channel)
+            .take_while(|v| *v <= reach)
+            .collect();
         let parts = velocity
             .iter()
             .flat_map(|v| {
@@ -193,11 +198,12 @@ impl Axis {
         model.evaluate(shape, &self.parts, parameters, &mut value, None);
         value
     }
+}
 
-    fn means(&self, values: &[f64]) -> Vec<f64> {
-        let parts = values.chunks_exact(PARTS);
-        parts
-            .map(|parts| parts.iter().sum::<f64>() / PARTS as f64)
-            .collect()
-    }
+/// Means over the channels.
+fn means(values: &[f64]) -> Vec<f64> {
+    let parts = values.chunks_exact(PARTS);
+    parts
+        .map(|parts| parts.iter().sum::<f64>() / PARTS as f64)
+        .collect()
 }

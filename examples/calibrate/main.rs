@@ -5,6 +5,7 @@
 #![allow(clippy::print_stdout, clippy::print_stderr)]
 
 mod drawn;
+mod spheres;
 
 use drawn::{DrawnPair, draw, lines};
 use inrush::fit::hypotheses::{Hypothesis, Odds, verdict};
@@ -58,7 +59,7 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
     match choice {
         "coverage" => coverage(pairs, setup),
         "mixed" => mixed(pairs, setup),
-        "spheres" => spheres(setup),
+        "spheres" => spheres::print(setup),
         "sampler" => sampler(pairs, setup),
         "shapes" => shapes(pairs),
         other => {
@@ -216,6 +217,9 @@ struct Rank {
     trusted: bool,
 }
 
+/// Whether a rank belongs to a group.
+type Belongs = fn(&Rank) -> bool;
+
 const MODELS: [Model; 2] = [Model::TwoLayer, Model::Hill];
 
 fn coverage(pairs: usize, setup: Setup) -> Result<(), Box<dyn Error>> {
@@ -250,20 +254,16 @@ fn coverage(pairs: usize, setup: Setup) -> Result<(), Box<dyn Error>> {
         .iter()
         .filter_map(|(pair, outcome)| rank(pair, outcome))
         .collect();
-    let groups: [(&str, Box<dyn Fn(&Rank) -> bool>); 7] = [
-        ("all", Box::new(|_| true)),
-        ("two-layer", Box::new(|rank| rank.model == Model::TwoLayer)),
-        ("hill", Box::new(|rank| rank.model == Model::Hill)),
-        ("S/N 5 to 15", Box::new(|rank| rank.signal_to_noise < 15.0)),
-        (
-            "S/N 15 to 40",
-            Box::new(|rank| (15.0..40.0).contains(&rank.signal_to_noise)),
-        ),
-        (
-            "S/N 40 to 100",
-            Box::new(|rank| rank.signal_to_noise >= 40.0),
-        ),
-        ("trusted", Box::new(|rank| rank.trusted)),
+    let groups: [(&str, Belongs); 7] = [
+        ("all", |_| true),
+        ("two-layer", |rank| rank.model == Model::TwoLayer),
+        ("hill", |rank| rank.model == Model::Hill),
+        ("S/N 5 to 15", |rank| rank.signal_to_noise < 15.0),
+        ("S/N 15 to 40", |rank| {
+            (15.0..40.0).contains(&rank.signal_to_noise)
+        }),
+        ("S/N 40 to 100", |rank| rank.signal_to_noise >= 40.0),
+        ("trusted", |rank| rank.trusted),
     ];
     println!(
         "| group | pairs | in 68.3 % | in 95.4 % | rank chi2 p |\n| --- | --- | --- | --- | --- |"
@@ -284,24 +284,6 @@ fn coverage(pairs: usize, setup: Setup) -> Result<(), Box<dyn Error>> {
     }
     let below: Vec<f64> = ranks.iter().map(|rank| rank.below).collect();
     println!("ranks in twentieths: {:?}", histogram(&below));
-    for (pair, outcome) in &found {
-        if let Some(rank) = rank(pair, outcome).filter(|rank| (rank.below - 0.5).abs() > 0.495)
-            && let Some(of) = outcome.posterior.of(pair.family)
-        {
-            println!(
-                "far: {} S/N {:.0} true {:.3} below {:.4} {:?} {:?}",
-                rank.model.name(),
-                pair.signal_to_noise,
-                pair.v_in_km_s / pair.sigma_km_s,
-                rank.below,
-                of.v_in_km_s().map(|v| (
-                    v.interval95.0 / pair.sigma_km_s,
-                    v.interval95.1 / pair.sigma_km_s
-                )),
-                of.quality
-            );
-        }
-    }
     costs(&found);
     Ok(())
 }
@@ -359,10 +341,16 @@ fn within(below: &[f64], part: f64) -> f64 {
 
 const BINS: usize = 20;
 
+/// Which of `count` equal parts of 0 to 1 a number lies in.
+fn part(number: f64, count: usize) -> usize {
+    let upper = (1..count).find(|edge| number < *edge as f64 / count as f64);
+    upper.unwrap_or(count) - 1
+}
+
 fn histogram(below: &[f64]) -> [usize; BINS] {
     let mut counts = [0; BINS];
     for rank in below {
-        counts[((rank * BINS as f64) as usize).min(BINS - 1)] += 1;
+        counts[part(*rank, BINS)] += 1;
     }
     counts
 }
@@ -410,7 +398,7 @@ fn mixed(pairs: usize, setup: Setup) -> Result<(), Box<dyn Error>> {
             let of: Vec<_> = found
                 .iter()
                 .map(|(truth, _, verdict)| (*truth == hypothesis, verdict.probability(hypothesis)))
-                .filter(|(_, p)| ((p * 10.0) as usize).min(9) == tenth)
+                .filter(|(_, p)| part(*p, 10) == tenth)
                 .collect();
             let count = of.len().max(1) as f64;
             let mean = of.iter().map(|(_, p)| p).sum::<f64>() / count;
@@ -443,156 +431,6 @@ fn mixed(pairs: usize, setup: Setup) -> Result<(), Box<dyn Error>> {
             right.count()
         );
     }
-    Ok(())
-}
-
-fn spheres(setup: Setup) -> Result<(), Box<dyn Error>> {
-    use inrush::run::{LineSection, RunSheet, fit_pair};
-    use std::collections::HashMap;
-    let folder = std::path::Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/data/spheres");
-    let rows: Vec<HashMap<String, String>> = csv::Reader::from_path(folder.join("truth.csv"))?
-        .deserialize()
-        .collect::<Result<_, _>>()?;
-    let results = parallel(rows.len(), |index| {
-        let truth = &rows[index];
-        let line = |which: &str| LineSection {
-            line: Some(truth[&format!("{which}_line")].clone()),
-            file: Some(format!("{}-{which}.csv", truth["id"]).into()),
-            ..LineSection::default()
-        };
-        let sheet = RunSheet {
-            thick: line("thick"),
-            thin: line("thin"),
-            ..RunSheet::default()
-        };
-        let outcome = fit_pair(&sheet, &folder).map_err(|error| error.to_string())?;
-        let posterior = pair_posterior(
-            &outcome.thick.prepared,
-            &outcome.thin.prepared,
-            (&outcome.thick.line, &outcome.thin.line),
-            outcome.thin_fit.line.as_ref(),
-            &setup.settings(),
-        )
-        .map_err(|error| error.to_string())?;
-        let verdict = verdict(&posterior, &Odds::default()).map_err(|error| error.to_string())?;
-        Ok::<_, String>((posterior, verdict))
-    });
-    println!(
-        "id,kind,snr,v_over_sigma,sigma,tau_thin,p_infall,p_expansion,p_static,p_two_clouds,v_in_over_sigma,lo68,hi68,lo95,hi95,between,ln_z...,trusted"
-    );
-    for (truth, result) in rows.iter().zip(&results) {
-        let number = |column: &str| truth[column].parse::<f64>().unwrap_or(f64::NAN);
-        let speed = if truth["kind"] == "infall-ff" {
-            number("v_at_radius_km_s")
-        } else {
-            number("v_in_km_s")
-        };
-        let sigma = number("sigma_km_s");
-        match result {
-            Err(error) => println!("{},{},{error}", truth["id"], truth["kind"]),
-            Ok((posterior, verdict)) => {
-                let p = verdict
-                    .standings
-                    .map(|one| format!("{:.3}", one.probability))
-                    .join(",");
-                let v = verdict.v_in_km_s;
-                let scaled = [
-                    v.median,
-                    v.interval68.0,
-                    v.interval68.1,
-                    v.interval95.0,
-                    v.interval95.1,
-                    verdict.between_models_km_s,
-                ]
-                .map(|value| format!("{:.2}", value / sigma))
-                .join(",");
-                let highest = posterior
-                    .families
-                    .iter()
-                    .map(|one| one.ln_evidence)
-                    .fold(f64::NEG_INFINITY, f64::max);
-                let z: Vec<String> = posterior
-                    .families
-                    .iter()
-                    .map(|one| format!("{:.1}", one.ln_evidence - highest))
-                    .collect();
-                println!(
-                    "{},{},{},{:.2},{sigma:.2},{:.2},{p},{scaled},{},{}",
-                    truth["id"],
-                    truth["kind"],
-                    truth["snr_thick"],
-                    speed / sigma,
-                    number("tau_thin"),
-                    z.join(" "),
-                    verdict.trusted
-                );
-            }
-        }
-    }
-    for (truth, result) in rows.iter().zip(&results) {
-        let Some(clouds) = result
-            .as_ref()
-            .ok()
-            .and_then(|(posterior, _)| posterior.of(Family::TwoClouds))
-        else {
-            continue;
-        };
-        let text: Vec<String> = clouds
-            .names
-            .iter()
-            .filter_map(|name| {
-                Some(format!(
-                    "{} {:.2}",
-                    name.trim_end_matches("_km_s"),
-                    clouds.marginal(name)?.median
-                ))
-            })
-            .collect();
-        println!(
-            "clouds {} v_lsr {} sigma {}: {}",
-            truth["id"],
-            truth["v_lsr_km_s"],
-            truth["sigma_km_s"],
-            text.join(" ")
-        );
-    }
-    let of_kind = |kinds: &[&str], limit: &dyn Fn(&HashMap<String, String>) -> bool| {
-        let of: Vec<f64> = rows
-            .iter()
-            .zip(&results)
-            .filter(|(truth, _)| kinds.contains(&truth["kind"].as_str()) && limit(truth))
-            .filter_map(|(_, result)| Some(result.as_ref().ok()?.1.probability(Hypothesis::Infall)))
-            .collect();
-        format!(
-            "{} of {}",
-            of.iter().filter(|p| **p > 0.9).count(),
-            of.len()
-        )
-    };
-    println!(
-        "p_infall > 0.9: static and twocloud {}",
-        of_kind(&["static", "twocloud"], &|_| true)
-    );
-    println!("  static {}", of_kind(&["static"], &|_| true));
-    println!("  twocloud {}", of_kind(&["twocloud"], &|_| true));
-    println!("  expand {}", of_kind(&["expand"], &|_| true));
-    let strong = |truth: &HashMap<String, String>| {
-        let number = |column: &str| truth[column].parse::<f64>().unwrap_or(f64::NAN);
-        let speed = if truth["kind"] == "infall-ff" {
-            number("v_at_radius_km_s")
-        } else {
-            number("v_in_km_s")
-        };
-        number("snr_thick") >= 20.0 && speed > 0.3 * number("sigma_km_s")
-    };
-    println!(
-        "  infall, S/N >= 20, v_in > 0.3 sigma {}",
-        of_kind(&["infall"], &strong)
-    );
-    println!(
-        "  the same with infall-ff {}",
-        of_kind(&["infall", "infall-ff"], &strong)
-    );
     Ok(())
 }
 
@@ -709,7 +547,7 @@ fn shapes(pairs: usize) -> Result<(), Box<dyn Error>> {
         .flatten()
         .collect();
         found.sort_by(|a, b| a.0.total_cmp(&b.0));
-        let at = |part: f64| found[((found.len() - 1) as f64 * part) as usize].0;
+        let at = |share: f64| found[part(share, found.len())].0;
         println!(
             "{} fitted by {}: {} pairs, rms residual over the peak: 16 % {:.3}, median {:.3}, 84 % {:.3}",
             made.name(),

@@ -427,7 +427,7 @@ mod tests {
         };
         // just below and above the switch at 6 standard deviations
         assert!(at(6.25).abs() < 1e-6, "{}", at(6.25));
-        assert_eq!(at(6.35).abs() < 1e-12, true);
+        assert!(at(6.35).abs() < 1e-12);
     }
 
     #[test]

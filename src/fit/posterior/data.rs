@@ -76,14 +76,14 @@ pub(super) struct LineData {
     nuisances: Vec<Vec<f64>>,
     /// Sum of the data's squares over all channels, less the nuisances' part.
     squares: f64,
-    /// Channels less baseline terms.
+    /// Channels less baseline terms, as many as count where the noise's correlation is uncertain.
     values: f64,
 }
 
 impl LineData {
     pub fn new(
         prepared: &Prepared,
-        line: LineShape,
+        line: &LineShape,
         range: Window,
         averaging: Averaging,
         narrowest_km_s: f64,
@@ -118,7 +118,7 @@ impl LineData {
                 bump
             })
             .collect();
-        let values = (data.len() - polynomials.len()) as f64;
+        let values = (data.len() - polynomials.len()) as f64 / inflation(prepared);
         let nuisances = orthonormal(with_priors(polynomials, bumps, data.len()));
         data.resize(nuisances.first().map_or(data.len(), Vec::len), 0.0);
         let [mut squares] = products(&data, [&data]);
@@ -204,6 +204,18 @@ impl LineData {
             next(along);
         }
     }
+}
+
+/// What an uncertain correlation of the noise does to variances: 1 + 10 p/N for a process of order p
+/// measured on N channels.
+///
+/// White residuals of new channels have a variance 1 + 2 p/N of that of the channels that the process
+/// was fitted to, and the mean of true over measured power at one frequency is about as high: 4 p/N
+/// together. The rest is measured (docs/validation.md): smoothed noise is no process of finite order.
+fn inflation(prepared: &Prepared) -> f64 {
+    const PER_COEFFICIENT: f64 = 10.0;
+    let noise = &prepared.noise;
+    1.0 + PER_COEFFICIENT * noise.process.order() as f64 / noise.channels.max(1) as f64
 }
 
 /// Most baseline terms and shape errors together.

@@ -279,7 +279,7 @@ pub fn pair_posterior(
         let shape = LineShape::new(line.rest_frequency_ghz, line.components.clone());
         let errors = starts::shape_errors(prepared, settings.shape_error, kinematics[0]);
         let averaging = settings.averaging;
-        LineData::new(prepared, shape, range, averaging, narrowest, &errors)
+        LineData::new(prepared, &shape, range, averaging, narrowest, &errors)
     };
     let data = [line_data(thick, lines.0), line_data(thin, lines.1)];
     for (name, data) in ["thick", "thin"].into_iter().zip(&data) {

@@ -35,8 +35,8 @@ struct Component {
 }
 
 impl Component {
-    fn new(dimensions: usize, share: f64, centre: Point, scatter: Matrix) -> Option<Self> {
-        let lower = cholesky(&scatter, dimensions)?;
+    fn new(dimensions: usize, share: f64, centre: Point, scatter: &Matrix) -> Option<Self> {
+        let lower = cholesky(scatter, dimensions)?;
         let ln_determinant: f64 = (0..dimensions).map(|i| lower[i][i].ln()).sum();
         let d = dimensions as f64;
         let ln_height = ln_gamma(0.5 * (FREEDOM + d))
@@ -46,7 +46,7 @@ impl Component {
         Some(Self {
             share,
             centre,
-            scatter,
+            scatter: *scatter,
             inverse_columns: transposed(&inverse_lower(&lower, dimensions)),
             lower,
             height: share * ln_height.exp(),
@@ -72,7 +72,7 @@ impl Component {
     fn density(&self, dimensions: usize, distance_squared: f64) -> f64 {
         let base = 1.0 + distance_squared / FREEDOM;
         // base^((5 + d)/2), a whole number or a half
-        let mut power = if dimensions % 2 == 0 {
+        let mut power = if dimensions.is_multiple_of(2) {
             base.sqrt()
         } else {
             1.0
@@ -95,7 +95,7 @@ impl StudentMixture {
     pub fn new(dimensions: usize, centres: impl IntoIterator<Item = (Point, Matrix)>) -> Self {
         let components: Vec<Component> = centres
             .into_iter()
-            .filter_map(|(centre, scatter)| Component::new(dimensions, 1.0, centre, scatter))
+            .filter_map(|(centre, scatter)| Component::new(dimensions, 1.0, centre, &scatter))
             .collect();
         Self {
             dimensions,
@@ -280,7 +280,7 @@ impl Sums {
                 scatter[j][i] = scatter[i][j];
             }
         }
-        Component::new(dimensions, self.weight, centre, scatter)
-            .or_else(|| Component::new(dimensions, self.weight, old.centre, old.scatter))
+        Component::new(dimensions, self.weight, centre, &scatter)
+            .or_else(|| Component::new(dimensions, self.weight, old.centre, &old.scatter))
     }
 }

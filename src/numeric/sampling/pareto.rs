@@ -51,11 +51,11 @@ fn generalised_pareto(excess: &[f64]) -> Option<(f64, f64)> {
     let count = excess.len();
     let n = count as f64;
     let largest = excess[count - 1];
-    let quartile = excess[((n / 4.0 + 0.5).floor() as usize).clamp(1, count) - 1];
+    let quartile = excess[((count + 2) / 4).clamp(1, count) - 1];
     if largest <= 0.0 || quartile <= 0.0 {
         return None;
     }
-    let grid = 20 + n.sqrt().floor() as usize;
+    let grid = 20 + count.isqrt();
     let shape_of = |b: f64| -> f64 { excess.iter().map(|x| (-b * x).ln_1p()).sum::<f64>() / n };
     let candidates: Vec<(f64, f64)> = (1..=grid)
         .map(|j| {

@@ -4,7 +4,7 @@ shape errors included: no closed form of the program is used but the noise level
 
     python dynesty_evidence.py        writes cases.json and case-N-thick.csv, case-N-thin.csv beside itself
 
-Made with dynesty 3, numpy 2, scipy 1.17. About ten minutes.
+Made with dynesty 3.1.0, numpy 2.4.6, scipy 1.17.1. About ten minutes.
 """
 import json
 import pathlib
