@@ -323,7 +323,7 @@ fn the_page_shows_the_priors() {
     let mut expected = String::from("| name | density | of what, and why |\n| --- | --- | --- |\n");
     for row in PRIORS {
         let (name, density, about) = (row.name, row.prior.text(), row.about);
-        writeln!(expected, "| `{name}` | {density} | {about} |").unwrap();
+        writeln!(expected, "| {name} | {density} | {about} |").unwrap();
     }
     if std::env::var_os("INRUSH_WRITE_EXPECTED").is_some() {
         std::fs::write(&path, format!("{before}{begin}{expected}{end}{after}")).unwrap();
