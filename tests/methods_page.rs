@@ -5,6 +5,7 @@
 
 use inrush::constants::FWHM_PER_SIGMA;
 use inrush::fit::Workspace;
+use inrush::fit::priors::PRIORS;
 use inrush::fit::{FitSettings, Layout, fit_pair};
 use inrush::line::{Component, Line};
 use inrush::measure::{MeasureSettings, ThinLine, measure};
@@ -14,6 +15,7 @@ use inrush::numeric::{Autoregression, Estimate};
 use inrush::prepare::{Baseline, Prepared};
 use inrush::simulate::{NoiseLevel, PairTruth, simulate_pair};
 use inrush::spectrum::{Noise, Spectrum, Window};
+use std::fmt::Write as _;
 use std::path::Path;
 
 const V_LSR_KM_S: f64 = 0.02;
@@ -309,4 +311,27 @@ fn every_test_that_the_pages_name_exists() {
         checked += 1;
     }
     assert!(checked > 40, "{checked} tests named");
+}
+
+/// The table of priors on the page is that of the code. `INRUSH_WRITE_EXPECTED=1` writes it.
+#[test]
+fn the_page_shows_the_priors() {
+    let path = Path::new(env!("CARGO_MANIFEST_DIR")).join("docs/methods.md");
+    let page = std::fs::read_to_string(&path).unwrap();
+    let (begin, end) = (
+        "<!-- priors: written by tests/methods_page.rs -->\n",
+        "<!-- end of priors -->",
+    );
+    let (before, rest) = page.split_once(begin).unwrap();
+    let (found, after) = rest.split_once(end).unwrap();
+    let mut expected = String::from("| name | density | of what, and why |\n| --- | --- | --- |\n");
+    for row in PRIORS {
+        let (name, density, about) = (row.name, row.prior.text(), row.about);
+        writeln!(expected, "| {name} | {density} | {about} |").unwrap();
+    }
+    if std::env::var_os("INRUSH_WRITE_EXPECTED").is_some() {
+        std::fs::write(&path, format!("{before}{begin}{expected}{end}{after}")).unwrap();
+    } else {
+        assert_eq!(found, expected, "docs/methods.md");
+    }
 }

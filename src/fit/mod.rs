@@ -7,8 +7,11 @@
 mod amplitudes;
 mod cautions;
 mod channels;
+pub mod hypotheses;
 mod joint;
 mod normal;
+pub mod posterior;
+pub mod priors;
 mod projected;
 mod race;
 mod starts;

@@ -1,6 +1,7 @@
 //! Numbers into numbers: exponentials over slices, least squares, noise processes, robust
 //! statistics. No astronomy here.
 
+pub mod amplitudes;
 pub mod autoregression;
 pub mod dispatch;
 pub mod exponential;
@@ -8,6 +9,7 @@ pub mod least_squares;
 pub mod polynomial;
 pub mod products;
 pub mod robust;
+pub mod sampling;
 
 pub use autoregression::Autoregression;
 

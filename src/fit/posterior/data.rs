@@ -1,0 +1,283 @@
+//! One line's channels as sums that a likelihood needs, with baseline and noise level unknown.
+//!
+//! All usable channels count. Those outside the fitted range hold no line: they tell of the baseline
+//! (whose polynomial is integrated over with a flat prior) and of the noise level alone. No cloud has
+//! exactly the profile of a family: smooth shape errors of a few percent are integrated over too.
+
+use crate::fit::{Averaging, Channels};
+use crate::model::LineShape;
+use crate::numeric::amplitudes::Quadratic;
+use crate::numeric::products::products;
+use crate::prepare::Prepared;
+use crate::spectrum::Window;
+
+/// Channels outside the fitted range count no farther from zero than this, in units of the noise: a
+/// spike is no noise level.
+const FARTHEST: f64 = 4.0;
+
+/// Smooth departures of a line from any family's profile: bumps in a row along the line, each with a
+/// normal amplitude.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct ShapeErrors {
+    /// Standard deviation in the middle of the line, K.
+    pub deviation_k: f64,
+    /// Middle of the line, km/s.
+    pub middle_km_s: f64,
+    /// Dispersion of the envelope that lets them fade in the wings, km/s.
+    pub reach_km_s: f64,
+    /// Dispersion of the gas, km/s: the scale of the bumps.
+    pub sigma_km_s: f64,
+}
+
+impl ShapeErrors {
+    /// Dispersion of a bump and distance of neighbours, in dispersions of the gas.
+    const BUMP: f64 = 0.6;
+    const STEP: f64 = 0.85;
+    /// Bumps reach this many dispersions of the envelope to either side.
+    const ENVELOPES: f64 = 2.0;
+    /// Most bumps.
+    const MOST: f64 = 15.0;
+
+    /// Each bump at the given velocities, K, scaled to its standard deviation.
+    #[must_use]
+    pub fn bumps(&self, velocity_km_s: &[f64]) -> Vec<Vec<f64>> {
+        if self.deviation_k <= 0.0 {
+            return Vec::new();
+        }
+        let half = Self::ENVELOPES * self.reach_km_s;
+        let step = (Self::STEP * self.sigma_km_s).max(2.0 * half / Self::MOST);
+        let width = Self::BUMP / Self::STEP * step;
+        // neighbours overlap: their squares sum to sqrt(pi) width/step
+        let scale = self.deviation_k / (std::f64::consts::PI.sqrt() * width / step).sqrt();
+        #[expect(clippy::cast_possible_truncation, reason = "a few steps")]
+        let count = (half / step).floor() as i32;
+        (-count..=count)
+            .map(|index| {
+                let centre = self.middle_km_s + step * f64::from(index);
+                let bump = |v: &f64| {
+                    let along = (v - centre) / width;
+                    let out = (v - self.middle_km_s) / self.reach_km_s;
+                    scale * (-0.5 * (along * along + out * out)).exp()
+                };
+                velocity_km_s.iter().map(bump).collect()
+            })
+            .collect()
+    }
+}
+
+/// A line's data.
+#[derive(Clone, Debug)]
+pub(super) struct LineData {
+    channels: Channels,
+    /// Data in the range, white, less the baseline and shape errors that all channels together suggest.
+    data: Vec<f64>,
+    /// Baseline polynomials and shape errors in the range, white, orthonormal over all channels and
+    /// the priors of the shape errors.
+    nuisances: Vec<Vec<f64>>,
+    /// Sum of the data's squares over all channels, less the nuisances' part.
+    squares: f64,
+    /// Channels less baseline terms, as many as count where the noise's correlation is uncertain.
+    values: f64,
+}
+
+impl LineData {
+    pub fn new(
+        prepared: &Prepared,
+        line: &LineShape,
+        range: Window,
+        averaging: Averaging,
+        narrowest_km_s: f64,
+        shape_errors: &ShapeErrors,
+    ) -> Self {
+        let within = |low_km_s: f64, high_km_s: f64| {
+            let window = Window {
+                low_km_s,
+                high_km_s,
+            };
+            let line = line.clone();
+            Channels::new(prepared, line, Some(window), averaging, narrowest_km_s)
+        };
+        let channels = within(range.low_km_s, range.high_km_s);
+        let outside = [
+            within(f64::NEG_INFINITY, range.low_km_s.next_down()),
+            within(range.high_km_s.next_up(), f64::INFINITY),
+        ];
+        let parts = [&channels, &outside[0], &outside[1]];
+        let mut data: Vec<f64> = channels.whitened_data().to_vec();
+        for part in &outside {
+            let whitened = part.whitened_data().iter();
+            data.extend(whitened.map(|value| value.clamp(-FARTHEST, FARTHEST)));
+        }
+        let terms = prepared.baseline.order.map_or(0, |order| order + 1);
+        let polynomials = polynomials(&parts, terms);
+        let bumps: Vec<Vec<f64>> = shape_errors
+            .bumps(channels.sampling().velocity_km_s())
+            .into_iter()
+            .map(|mut bump| {
+                channels.whiten(&mut bump);
+                bump
+            })
+            .collect();
+        let values = (data.len() - polynomials.len()) as f64 / inflation(prepared);
+        let nuisances = orthonormal(with_priors(polynomials, bumps, data.len()));
+        data.resize(nuisances.first().map_or(data.len(), Vec::len), 0.0);
+        let [mut squares] = products(&data, [&data]);
+        for nuisance in &nuisances {
+            let [share] = products(&data, [nuisance]);
+            for (datum, value) in data.iter_mut().zip(nuisance) {
+                *datum -= share * value;
+            }
+            squares -= share * share;
+        }
+        let count = channels.len();
+        data.truncate(count);
+        let nuisances = nuisances
+            .into_iter()
+            .map(|mut nuisance| {
+                nuisance.truncate(count);
+                nuisance
+            })
+            .collect();
+        Self {
+            channels,
+            data,
+            nuisances,
+            squares,
+            values,
+        }
+    }
+
+    pub fn channels(&self) -> &Channels {
+        &self.channels
+    }
+
+    /// chi2 as a function of the amplitudes of white columns (at most two).
+    pub fn quadratic(&self, columns: &[&[f64]], mean: f64) -> Quadratic {
+        let mut quadratic = Quadratic {
+            count: columns.len(),
+            data: self.squares,
+            values: self.values,
+            means: [mean; 2],
+            ..Quadratic::default()
+        };
+        match columns {
+            [] => {}
+            [one] => {
+                let [square, product] = products(one, [one, &self.data]);
+                quadratic.products[0] = square;
+                quadratic.projected[0] = product;
+                self.each_nuisance(one, |_, along| quadratic.products[0] -= along * along);
+            }
+            [one, two, ..] => {
+                let [square, cross, first] = products(one, [one, two, &self.data]);
+                let [other, second] = products(two, [two, &self.data]);
+                quadratic.products = [square, cross, other];
+                quadratic.projected = [first, second];
+                let mut others = [0.0; MOST_NUISANCES];
+                self.each_nuisance(two, |index, along| others[index] = along);
+                self.each_nuisance(one, |index, along| {
+                    quadratic.products[0] -= along * along;
+                    quadratic.products[1] -= along * others[index];
+                    quadratic.products[2] -= others[index] * others[index];
+                });
+            }
+        }
+        quadratic
+    }
+}
+
+impl LineData {
+    /// Products of a column with every nuisance, four in a pass.
+    fn each_nuisance(&self, column: &[f64], mut take: impl FnMut(usize, f64)) {
+        let (fours, rest) = self.nuisances.as_chunks::<4>();
+        let mut index = 0;
+        let mut next = |along: f64| {
+            take(index, along);
+            index += 1;
+        };
+        for four in fours {
+            let four: [&[f64]; 4] = std::array::from_fn(|k| &four[k][..]);
+            products(column, four).into_iter().for_each(&mut next);
+        }
+        for nuisance in rest {
+            let [along] = products(column, [nuisance]);
+            next(along);
+        }
+    }
+}
+
+/// What an uncertain correlation of the noise does to variances: 1 + 10 p/N for a process of order p
+/// measured on N channels.
+///
+/// White residuals of new channels have a variance 1 + 2 p/N of that of the channels that the process
+/// was fitted to, and the mean of true over measured power at one frequency is about as high: 4 p/N
+/// together. The rest is measured (docs/validation.md): smoothed noise is no process of finite order.
+fn inflation(prepared: &Prepared) -> f64 {
+    const PER_COEFFICIENT: f64 = 10.0;
+    let noise = &prepared.noise;
+    1.0 + PER_COEFFICIENT * noise.process.order() as f64 / noise.channels.max(1) as f64
+}
+
+/// Most baseline terms and shape errors together.
+const MOST_NUISANCES: usize = 24;
+
+/// Powers of velocity in all channels of the parts, white.
+fn polynomials(parts: &[&Channels], terms: usize) -> Vec<Vec<f64>> {
+    let ends = parts
+        .iter()
+        .flat_map(|part| part.sampling().velocity_km_s());
+    let (low, high) = ends.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), v| {
+        (low.min(*v), high.max(*v))
+    });
+    (0..i32::try_from(terms).unwrap_or(0))
+        .map(|power| {
+            parts
+                .iter()
+                .flat_map(|part| {
+                    let scaled = |v: &f64| (2.0 * v - low - high) / (high - low);
+                    let velocities = part.sampling().velocity_km_s().iter();
+                    let mut column: Vec<f64> = velocities.map(|v| scaled(v).powi(power)).collect();
+                    part.whiten(&mut column);
+                    column
+                })
+                .collect()
+        })
+        .collect()
+}
+
+/// Nuisance columns over all channels and one more value for each column with a prior: there its
+/// amplitude, in units of its standard deviation, is "measured" as zero with unit error.
+fn with_priors(flat: Vec<Vec<f64>>, normal: Vec<Vec<f64>>, channels: usize) -> Vec<Vec<f64>> {
+    let length = channels + normal.len();
+    let extended = |mut column: Vec<f64>| {
+        column.resize(length, 0.0);
+        column
+    };
+    let flat = flat.into_iter().map(extended);
+    let normal = normal.into_iter().enumerate().map(|(index, column)| {
+        let mut column = extended(column);
+        column[channels + index] = 1.0;
+        column
+    });
+    flat.chain(normal).collect()
+}
+
+/// Columns made orthonormal one after the other.
+fn orthonormal(mut columns: Vec<Vec<f64>>) -> Vec<Vec<f64>> {
+    for index in 0..columns.len() {
+        let (before, rest) = columns.split_at_mut(index);
+        let column = &mut rest[0];
+        for other in before.iter() {
+            let [along] = products(column, [other]);
+            for (value, other) in column.iter_mut().zip(other) {
+                *value -= along * other;
+            }
+        }
+        let [square] = products(column, [&*column]);
+        let norm = square.sqrt();
+        for value in column.iter_mut() {
+            *value /= norm;
+        }
+    }
+    columns
+}

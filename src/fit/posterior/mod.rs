@@ -1,0 +1,442 @@
+//! A prepared pair and priors into posteriors and evidences of families of profiles.
+//!
+//! Brightnesses, baselines and noise levels are integrated out in closed form; what is left, two to
+//! six coordinates of kinematics and optical depth, is sampled. No least-squares fit is needed. The
+//! probabilities of hypotheses are made from these in `hypotheses`.
+
+mod data;
+mod family;
+mod starts;
+
+pub use data::ShapeErrors;
+pub use family::Family;
+
+use super::priors::Priors;
+use super::{Averaging, FitRange};
+use crate::constants::FWHM_PER_SIGMA;
+use crate::line::Line;
+use crate::measure::ThinLine;
+use crate::model::{LineShape, Model};
+use crate::numeric::sampling::{Draws, ImportanceSettings, Peak, Quality, ascend, sample};
+use crate::prepare::Prepared;
+use crate::spectrum::Window;
+use data::LineData;
+use family::Target;
+use rand_chacha::ChaCha8Rng;
+use rand_chacha::rand_core::SeedableRng;
+
+/// How posteriors are found.
+#[derive(Clone, Debug, PartialEq)]
+pub struct PosteriorSettings {
+    /// Slab models; each moving and at rest.
+    pub models: Vec<Model>,
+    /// Whether families that hypotheses need beside the moving models are sampled too.
+    pub hypotheses: bool,
+    /// Priors.
+    pub priors: Priors,
+    /// Velocities whose channels hold the line; `None` takes the line windows and as much again on
+    /// either side.
+    pub range: Option<FitRange>,
+    /// Standard deviation of the shape errors over the line's peak.
+    pub shape_error: f64,
+    /// How the model's value in a channel is formed.
+    pub averaging: Averaging,
+    /// How much is drawn.
+    pub sampling: ImportanceSettings,
+    /// Equal-weight draws that are kept of each family.
+    pub draws: usize,
+    /// Seed of all draws.
+    pub seed: u64,
+}
+
+/// Departure of clouds from every family's profile, over the peak.
+pub const SHAPE_ERROR: f64 = 0.03;
+
+impl Default for PosteriorSettings {
+    fn default() -> Self {
+        Self {
+            models: vec![Model::TwoLayer, Model::Hill],
+            hypotheses: true,
+            priors: Priors::default(),
+            range: None,
+            shape_error: SHAPE_ERROR,
+            averaging: Averaging::Channel,
+            sampling: ImportanceSettings::default(),
+            draws: 500,
+            seed: 1,
+        }
+    }
+}
+
+/// Why there is no posterior.
+#[derive(Clone, Debug, PartialEq, thiserror::Error)]
+pub enum PosteriorError {
+    /// No draws are asked for.
+    #[error("{draws} draws, expected at least {least}")]
+    TooFewDraws {
+        /// Draws asked for.
+        draws: usize,
+        /// Fewest that intervals need.
+        least: usize,
+    },
+    /// No slab model, or one without a posterior.
+    #[error("posterior of the {model} model, expected some of two-layer, hill, hill-surface")]
+    NoPosterior {
+        /// Name of the model; `no` where none was given.
+        model: &'static str,
+    },
+    /// Too few channels.
+    #[error("{channels} channels of the {line} line, expected at least {needed}")]
+    TooFewChannels {
+        /// Which line.
+        line: &'static str,
+        /// Channels in the range.
+        channels: usize,
+        /// Channels needed.
+        needed: usize,
+    },
+    /// The prior has no mass where the data are.
+    #[error("{family}: the priors have no mass where the data are, expected some")]
+    NoMass {
+        /// Name of the family.
+        family: String,
+    },
+}
+
+impl PosteriorError {
+    /// What to do about it.
+    #[must_use]
+    pub fn hint(&self) -> Option<String> {
+        Some(match self {
+            Self::TooFewDraws { .. } => "leave the number of draws out for the default".to_owned(),
+            Self::NoPosterior { .. } => {
+                "choose two-layer or hill beside it, or stop after least squares".to_owned()
+            }
+            Self::TooFewChannels { .. } => "widen the fitted range".to_owned(),
+            Self::NoMass { .. } => {
+                "check the priors that were replaced, and the range of velocities".to_owned()
+            }
+        })
+    }
+}
+
+/// Fewest draws for a 95 % interval.
+const FEWEST_DRAWS: usize = 100;
+
+/// Fewest channels of a line in the fitted range.
+const FEWEST_CHANNELS: usize = 10;
+
+/// A median with its intervals.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Interval {
+    /// Half of the probability lies below.
+    pub median: f64,
+    /// Mean.
+    pub mean: f64,
+    /// 15.87 to 84.13 %.
+    pub interval68: (f64, f64),
+    /// 2.28 to 97.72 %.
+    pub interval95: (f64, f64),
+}
+
+/// Shares below the ends of intervals: those of one and two standard deviations.
+const ENDS: [f64; 4] = [0.022_750_13, 0.158_655_25, 0.841_344_75, 0.977_249_87];
+
+/// Posterior of a family.
+#[derive(Clone, Debug, PartialEq)]
+pub struct FamilyPosterior {
+    /// The family.
+    pub family: Family,
+    /// ln of the evidence; a constant of the data is common to all families.
+    pub ln_evidence: f64,
+    /// Standard error of it.
+    pub ln_evidence_err: f64,
+    /// Whether the draws can be trusted.
+    pub quality: Quality,
+    /// Evaluations of the posterior density, search for its peaks included.
+    pub evaluations: usize,
+    /// Weighted draws of v_in (km/s), of weights of sum 1; empty without an inward speed.
+    pub v_in: Vec<(f64, f64)>,
+    /// Names of the physical parameters.
+    pub names: Vec<&'static str>,
+    /// Equal-weight draws of them.
+    pub draws: Vec<Vec<f64>>,
+}
+
+impl FamilyPosterior {
+    /// Probability of v_in > 0.
+    #[must_use]
+    pub fn share_inward(&self) -> f64 {
+        let inward = self.v_in.iter().filter(|(v_in, _)| *v_in > 0.0);
+        inward.map(|(_, weight)| weight).sum()
+    }
+
+    /// v_in, km/s.
+    #[must_use]
+    pub fn v_in_km_s(&self) -> Option<Interval> {
+        interval(&self.v_in)
+    }
+
+    /// A physical parameter's marginal; `None` where the family has none of that name.
+    #[must_use]
+    pub fn marginal(&self, name: &str) -> Option<Interval> {
+        if name == "v_in_km_s" {
+            return self.v_in_km_s();
+        }
+        let index = self.names.iter().position(|known| *known == name)?;
+        let equal = 1.0 / self.draws.len() as f64;
+        let values: Vec<(f64, f64)> = self.draws.iter().map(|one| (one[index], equal)).collect();
+        interval(&values)
+    }
+
+    /// Correlation of two physical parameters over the draws; `None` without them.
+    #[must_use]
+    pub fn correlation(&self, first: &str, second: &str) -> Option<f64> {
+        let at = |name: &str| self.names.iter().position(|known| *known == name);
+        let (i, j) = (at(first)?, at(second)?);
+        let count = self.draws.len() as f64;
+        let mean = |k: usize| self.draws.iter().map(|one| one[k]).sum::<f64>() / count;
+        let (a, b) = (mean(i), mean(j));
+        let product = |k: usize, mean_k: f64, l: usize, mean_l: f64| -> f64 {
+            let terms = self.draws.iter();
+            terms.map(|one| (one[k] - mean_k) * (one[l] - mean_l)).sum()
+        };
+        let scale = (product(i, a, i, a) * product(j, b, j, b)).sqrt();
+        (scale > 0.0).then(|| product(i, a, j, b) / scale)
+    }
+}
+
+/// Median, mean and intervals of weighted values; `None` where there are none.
+#[must_use]
+pub fn interval(values: &[(f64, f64)]) -> Option<Interval> {
+    let mut sorted = values.to_vec();
+    sorted.sort_by(|a, b| a.0.total_cmp(&b.0));
+    let total: f64 = sorted.iter().map(|(_, weight)| weight).sum();
+    if sorted.is_empty() || total.is_nan() || total <= 0.0 {
+        return None;
+    }
+    let mean = sorted
+        .iter()
+        .map(|(value, weight)| value * weight)
+        .sum::<f64>()
+        / total;
+    let quantile = |part: f64| {
+        let mut below = 0.0;
+        for (value, weight) in &sorted {
+            below += weight / total;
+            if below >= part {
+                return *value;
+            }
+        }
+        sorted[sorted.len() - 1].0
+    };
+    let [low95, low68, high68, high95] = ENDS.map(quantile);
+    Some(Interval {
+        median: quantile(0.5),
+        mean,
+        interval68: (low68, high68),
+        interval95: (low95, high95),
+    })
+}
+
+/// Posteriors of a pair.
+#[derive(Clone, Debug, PartialEq)]
+pub struct PairPosterior {
+    /// One a family: each model moving, each at rest, unabsorbed, two clouds.
+    pub families: Vec<FamilyPosterior>,
+    /// Velocities whose channels hold the line.
+    pub range: Window,
+}
+
+impl PairPosterior {
+    /// The posterior of a family.
+    #[must_use]
+    pub fn of(&self, family: Family) -> Option<&FamilyPosterior> {
+        self.families.iter().find(|one| one.family == family)
+    }
+}
+
+/// Posteriors and evidences of every family for a pair.
+///
+/// `thin_line` is the thin line's fit where it is detected: searches begin there.
+///
+/// # Errors
+///
+/// [`PosteriorError`] for settings that make no posterior, too few channels, or priors without mass
+/// where the data are. Draws that cannot be trusted are no error: see [`FamilyPosterior::quality`].
+pub fn pair_posterior(
+    thick: &Prepared,
+    thin: &Prepared,
+    lines: (&Line, &Line),
+    thin_line: Option<&ThinLine>,
+    settings: &PosteriorSettings,
+) -> Result<PairPosterior, PosteriorError> {
+    check(settings)?;
+    let range = range(thick, thin, settings);
+    let kinematics = starts::kinematics(thick, thin, thin_line);
+    let narrowest = starts::NARROWEST * kinematics[0].sigma_km_s;
+    let line_data = |prepared: &Prepared, line: &Line| {
+        let shape = LineShape::new(line.rest_frequency_ghz, line.components.clone());
+        let errors = starts::shape_errors(prepared, settings.shape_error, kinematics[0]);
+        let averaging = settings.averaging;
+        LineData::new(prepared, &shape, range, averaging, narrowest, &errors)
+    };
+    let data = [line_data(thick, lines.0), line_data(thin, lines.1)];
+    for (name, data) in ["thick", "thin"].into_iter().zip(&data) {
+        let channels = data.channels().len();
+        if channels < FEWEST_CHANNELS {
+            return Err(PosteriorError::TooFewChannels {
+                line: name,
+                channels,
+                needed: FEWEST_CHANNELS,
+            });
+        }
+    }
+    let families = families(settings)
+        .into_iter()
+        .enumerate()
+        .map(|(stream, family)| {
+            let mut target = Target::new(family, (&data[0], &data[1]), range, &settings.priors);
+            let mut generator = ChaCha8Rng::seed_from_u64(settings.seed);
+            generator.set_stream(stream as u64 + 1);
+            family_posterior(family, &mut target, &kinematics, settings, &mut generator)
+        })
+        .collect::<Result<Vec<FamilyPosterior>, PosteriorError>>()?;
+    Ok(PairPosterior { families, range })
+}
+
+/// The families of the settings.
+fn families(settings: &PosteriorSettings) -> Vec<Family> {
+    let moving = settings.models.iter().copied().map(Family::Moving);
+    if !settings.hypotheses {
+        return moving.collect();
+    }
+    let still = settings.models.iter().copied().map(Family::Still);
+    let others = [Family::Unabsorbed, Family::TwoClouds];
+    moving.chain(still).chain(others).collect()
+}
+
+fn check(settings: &PosteriorSettings) -> Result<(), PosteriorError> {
+    if settings.draws < FEWEST_DRAWS {
+        return Err(PosteriorError::TooFewDraws {
+            draws: settings.draws,
+            least: FEWEST_DRAWS,
+        });
+    }
+    if settings.models.is_empty() {
+        return Err(PosteriorError::NoPosterior { model: "no" });
+    }
+    match settings
+        .models
+        .iter()
+        .find(|model| !Family::Moving(**model).is_known())
+    {
+        Some(model) => Err(PosteriorError::NoPosterior {
+            model: model.name(),
+        }),
+        None => Ok(()),
+    }
+}
+
+fn range(thick: &Prepared, thin: &Prepared, settings: &PosteriorSettings) -> Window {
+    match settings.range {
+        Some(FitRange::Within(window)) => window,
+        Some(FitRange::All) => {
+            let ends = [thick, thin].map(|prepared| {
+                let velocity = prepared.spectrum.velocity_km_s();
+                (velocity[0], velocity[velocity.len() - 1])
+            });
+            Window {
+                low_km_s: ends[0].0.min(ends[1].0),
+                high_km_s: ends[0].1.max(ends[1].1),
+            }
+        }
+        None => {
+            let low_km_s = thick.window.low_km_s.min(thin.window.low_km_s);
+            let high_km_s = thick.window.high_km_s.max(thin.window.high_km_s);
+            let margin = high_km_s - low_km_s;
+            Window {
+                low_km_s: low_km_s - margin,
+                high_km_s: high_km_s + margin,
+            }
+        }
+    }
+}
+
+fn family_posterior(
+    family: Family,
+    target: &mut Target<'_>,
+    kinematics: &[starts::Kinematics],
+    settings: &PosteriorSettings,
+    generator: &mut ChaCha8Rng,
+) -> Result<FamilyPosterior, PosteriorError> {
+    let no_mass = || PosteriorError::NoMass {
+        family: family.name(),
+    };
+    let mut counted = Counted {
+        target,
+        evaluations: 0,
+    };
+    let scales = family.scales(kinematics[0].sigma_km_s);
+    let starts = starts::starts(family, &mut counted, kinematics);
+    let peaks: Vec<Peak> = starts
+        .iter()
+        .filter_map(|start| ascend(&mut counted, start, &scales, 40))
+        .collect();
+    let peaks = starts::distinct(peaks, family.dimensions());
+    let mut sampling = settings.sampling;
+    if family == Family::TwoClouds {
+        sampling.spread *= 2;
+        sampling.round *= 2;
+        sampling.effective *= 1.5;
+    }
+    let draws: Draws = sample(&mut counted, &peaks, &sampling, generator).ok_or_else(no_mass)?;
+    let evaluations = counted.evaluations;
+    let v_in = match family {
+        Family::Moving(_) => draws
+            .points
+            .iter()
+            .zip(&draws.weights)
+            .filter(|(_, weight)| **weight > 0.0)
+            .map(|(point, weight)| (point[2] * point[1].exp(), *weight))
+            .collect(),
+        _ => Vec::new(),
+    };
+    let chosen = draws.equal(settings.draws, generator);
+    let physical = chosen
+        .iter()
+        .map(|index| target.physical(&draws.points[*index], generator))
+        .collect();
+    Ok(FamilyPosterior {
+        family,
+        ln_evidence: draws.ln_integral,
+        ln_evidence_err: draws.ln_integral_err,
+        quality: draws.quality,
+        evaluations,
+        v_in,
+        names: family.parameters(),
+        draws: physical,
+    })
+}
+
+/// A density whose evaluations are counted.
+struct Counted<'t, 'a> {
+    target: &'t mut Target<'a>,
+    evaluations: usize,
+}
+
+impl crate::numeric::sampling::Density for Counted<'_, '_> {
+    fn dimensions(&self) -> usize {
+        self.target.dimensions()
+    }
+
+    fn ln(&mut self, point: &crate::numeric::sampling::Point) -> f64 {
+        self.evaluations += 1;
+        self.target.ln(point)
+    }
+}
+
+/// Dispersion of a thin line.
+fn sigma_km_s(thin_line: &ThinLine) -> f64 {
+    thin_line.fwhm_km_s.value / FWHM_PER_SIGMA
+}

@@ -1,0 +1,286 @@
+//! Mixtures of multivariate t distributions: densities, draws, and fits to weighted draws.
+
+use super::matrix::{MOST_DIMENSIONS, Matrix, Point, cholesky, inverse_lower};
+use rand::Rng;
+use rand_distr::{ChiSquared, Distribution, StandardNormal};
+use statrs::function::gamma::ln_gamma;
+
+/// Degrees of freedom of every component: tails heavy enough for weights to stay bounded, and a
+/// finite third moment.
+const FREEDOM: f64 = 5.0;
+
+/// Share below which a component is given up.
+const LEAST_SHARE: f64 = 5e-3;
+
+/// Part of a component's old scatter that is kept in each direction: it never collapses on one draw.
+const KEPT_SCATTER: f64 = 0.02;
+
+/// A mixture of multivariate t distributions of 5 degrees of freedom.
+#[derive(Clone, Debug, PartialEq)]
+pub struct StudentMixture {
+    dimensions: usize,
+    components: Vec<Component>,
+}
+
+#[derive(Clone, Debug, PartialEq)]
+struct Component {
+    share: f64,
+    centre: Point,
+    scatter: Matrix,
+    lower: Matrix,
+    /// Columns of the inverse of `lower`.
+    inverse_columns: Matrix,
+    /// Share times the density at the centre.
+    height: f64,
+}
+
+impl Component {
+    fn new(dimensions: usize, share: f64, centre: Point, scatter: &Matrix) -> Option<Self> {
+        let lower = cholesky(scatter, dimensions)?;
+        let ln_determinant: f64 = (0..dimensions).map(|i| lower[i][i].ln()).sum();
+        let d = dimensions as f64;
+        let ln_height = ln_gamma(0.5 * (FREEDOM + d))
+            - ln_gamma(0.5 * FREEDOM)
+            - 0.5 * d * (FREEDOM * std::f64::consts::PI).ln()
+            - ln_determinant;
+        Some(Self {
+            share,
+            centre,
+            scatter: *scatter,
+            inverse_columns: transposed(&inverse_lower(&lower, dimensions)),
+            lower,
+            height: share * ln_height.exp(),
+        })
+    }
+
+    /// Squared distance from the centre in units of the scatter.
+    fn distance_squared(&self, dimensions: usize, point: &Point) -> f64 {
+        let mut offset = [0.0; MOST_DIMENSIONS];
+        for i in 0..dimensions {
+            offset[i] = point[i] - self.centre[i];
+        }
+        let mut scaled = [0.0; MOST_DIMENSIONS];
+        for (along, column) in offset.iter().zip(&self.inverse_columns).take(dimensions) {
+            for (sum, value) in scaled.iter_mut().zip(column) {
+                *sum += along * value;
+            }
+        }
+        scaled.iter().map(|value| value * value).sum()
+    }
+
+    /// Share times density.
+    fn density(&self, dimensions: usize, distance_squared: f64) -> f64 {
+        let base = 1.0 + distance_squared / FREEDOM;
+        // base^((5 + d)/2), a whole number or a half
+        let mut power = if dimensions.is_multiple_of(2) {
+            base.sqrt()
+        } else {
+            1.0
+        };
+        for _ in 0..dimensions.div_ceil(2) + 2 {
+            power *= base;
+        }
+        self.height / power
+    }
+}
+
+fn transposed(matrix: &Matrix) -> Matrix {
+    std::array::from_fn(|i| std::array::from_fn(|j| matrix[j][i]))
+}
+
+impl StudentMixture {
+    /// A mixture of equal shares about centres with their scatter matrices; those that are not
+    /// positive definite are left out.
+    #[must_use]
+    pub fn new(dimensions: usize, centres: impl IntoIterator<Item = (Point, Matrix)>) -> Self {
+        let components: Vec<Component> = centres
+            .into_iter()
+            .filter_map(|(centre, scatter)| Component::new(dimensions, 1.0, centre, &scatter))
+            .collect();
+        Self {
+            dimensions,
+            components,
+        }
+        .with_equal_shares()
+    }
+
+    fn with_equal_shares(mut self) -> Self {
+        let share = 1.0 / self.components.len().max(1) as f64;
+        for component in &mut self.components {
+            component.height *= share / component.share;
+            component.share = share;
+        }
+        self
+    }
+
+    /// Whether it has no component.
+    #[must_use]
+    pub fn is_empty(&self) -> bool {
+        self.components.is_empty()
+    }
+
+    /// Its density at a point.
+    #[must_use]
+    pub fn density(&self, point: &Point) -> f64 {
+        self.components
+            .iter()
+            .map(|component| {
+                let distance = component.distance_squared(self.dimensions, point);
+                component.density(self.dimensions, distance)
+            })
+            .sum()
+    }
+
+    /// A draw.
+    pub fn draw(&self, generator: &mut impl Rng, chi_squared: &Freedom) -> Point {
+        let mut left = uniform(generator);
+        let last = self.components.len() - 1;
+        let chosen = self.components[..last].iter().position(|component| {
+            left -= component.share;
+            left < 0.0
+        });
+        let component = &self.components[chosen.unwrap_or(last)];
+        let mut normal = [0.0; MOST_DIMENSIONS];
+        for value in normal.iter_mut().take(self.dimensions) {
+            *value = StandardNormal.sample(generator);
+        }
+        let stretch = (FREEDOM / chi_squared.0.sample(generator)).sqrt();
+        let mut point = component.centre;
+        for i in 0..self.dimensions {
+            let along: f64 = (0..=i).map(|j| component.lower[i][j] * normal[j]).sum();
+            point[i] += stretch * along;
+        }
+        point
+    }
+
+    /// The mixture after one step of expectation and maximisation on weighted points (weights of sum
+    /// 1). Components that no longer carry weight are dropped.
+    #[must_use]
+    pub fn refitted(&self, points: &[Point], weights: &[f64]) -> Self {
+        let d = self.dimensions;
+        let mut sums = vec![Sums::default(); self.components.len()];
+        let mut densities = vec![(0.0, 0.0); self.components.len()];
+        for (point, weight) in points.iter().zip(weights) {
+            let mut total = 0.0;
+            for (slot, component) in densities.iter_mut().zip(&self.components) {
+                let distance = component.distance_squared(d, point);
+                let density = component.density(d, distance);
+                *slot = (density, (FREEDOM + d as f64) / (FREEDOM + distance));
+                total += density;
+            }
+            if total <= 0.0 {
+                continue;
+            }
+            for (sum, (density, pull)) in sums.iter_mut().zip(&densities) {
+                sum.add(d, point, weight * density / total, *pull);
+            }
+        }
+        let components: Vec<Component> = self
+            .components
+            .iter()
+            .zip(&sums)
+            .filter_map(|(component, sum)| sum.component(d, component))
+            .collect();
+        if components.is_empty() {
+            return self.clone();
+        }
+        let mut refitted = Self {
+            dimensions: d,
+            components,
+        };
+        refitted.normalise();
+        refitted
+    }
+
+    fn normalise(&mut self) {
+        let total: f64 = self.components.iter().map(|one| one.share).sum();
+        for component in &mut self.components {
+            component.share /= total;
+            component.height /= total;
+        }
+    }
+
+    /// The mixture with another one mixed in at a share.
+    #[must_use]
+    pub fn with(&self, other: &Self, share: f64) -> Self {
+        let scaled = |mixture: &Self, factor: f64| {
+            let mut components = mixture.components.clone();
+            for component in &mut components {
+                component.share *= factor;
+                component.height *= factor;
+            }
+            components
+        };
+        let mut components = scaled(self, 1.0 - share);
+        components.extend(scaled(other, share));
+        Self {
+            dimensions: self.dimensions,
+            components,
+        }
+    }
+}
+
+/// Distribution of the squared lengths that stretch normal deviates into t deviates.
+#[derive(Clone, Copy, Debug)]
+pub struct Freedom(ChiSquared<f64>);
+
+impl Freedom {
+    /// That of the mixture's degrees of freedom; `None` never, as these are positive.
+    #[must_use]
+    pub fn new() -> Option<Self> {
+        ChiSquared::new(FREEDOM).ok().map(Self)
+    }
+}
+
+/// A number from 0 up to, not including, 1.
+pub(crate) fn uniform(generator: &mut impl Rng) -> f64 {
+    /// 2^-53
+    const STEP: f64 = 1.0 / 9_007_199_254_740_992.0;
+    (generator.next_u64() >> 11) as f64 * STEP
+}
+
+/// Weighted sums over points that belong to a component.
+#[derive(Clone, Copy, Debug, Default)]
+struct Sums {
+    weight: f64,
+    pulled: f64,
+    first: Point,
+    second: Matrix,
+}
+
+impl Sums {
+    fn add(&mut self, dimensions: usize, point: &Point, weight: f64, pull: f64) {
+        self.weight += weight;
+        let pulled = weight * pull;
+        self.pulled += pulled;
+        for i in 0..dimensions {
+            let along = pulled * point[i];
+            self.first[i] += along;
+            for j in 0..=i {
+                self.second[i][j] += along * point[j];
+            }
+        }
+    }
+
+    fn component(&self, dimensions: usize, old: &Component) -> Option<Component> {
+        if self.weight < LEAST_SHARE {
+            return None;
+        }
+        let mut centre = old.centre;
+        for i in 0..dimensions {
+            centre[i] = self.first[i] / self.pulled;
+        }
+        let mut scatter = old.scatter;
+        for i in 0..dimensions {
+            for j in 0..=i {
+                let spread =
+                    (self.second[i][j] - self.pulled * centre[i] * centre[j]) / self.weight;
+                let kept = KEPT_SCATTER * old.scatter[i][j];
+                scatter[i][j] = (1.0 - KEPT_SCATTER) * spread + kept;
+                scatter[j][i] = scatter[i][j];
+            }
+        }
+        Component::new(dimensions, self.weight, centre, &scatter)
+            .or_else(|| Component::new(dimensions, self.weight, old.centre, &old.scatter))
+    }
+}
