@@ -619,7 +619,7 @@ type Lines<'a> = (Option<&'a Channels>, &'a Channels);
 
 /// The lowest minima near a layout's starts, the deepest first, and how many evaluations they took.
 ///
-/// The starts compete (see [`Race`]) on the `near` channels, those about the line, with the amplitudes
+/// The starts compete ([`race`]) on the `near` channels, those about the line, with the amplitudes
 /// solved for; the deepest minima on either side of zero speed are then settled on `all` channels with all
 /// parameters free.
 fn minima(

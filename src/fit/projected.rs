@@ -6,18 +6,16 @@
 //! Jacobian is that of the profile with its part along the free functions taken out (Kaufman 1975,
 //! BIT 15, 49). Gaussian priors on amplitudes bound their ranges; the full problem does the rest.
 
-use super::amplitudes::{Amplitudes, Products};
+use super::amplitudes::Amplitudes;
 use super::channels::Channels;
 use super::joint::Layout;
 use super::normal::{LineSums, line_sums};
 use super::workspace::LineBuffers;
 use crate::model::{MOST_AMPLITUDES, Model};
 use crate::numeric::Estimate;
-use crate::numeric::dispatch::{Arithmetic, Kernel, dispatch};
 use crate::numeric::least_squares::{
-    Interval, LeastSquares, MAX_PARAMETERS, NormalEquations, RowBlock, Structure,
+    Interval, Linearise, MAX_PARAMETERS, NormalEquations, Structure,
 };
-use crate::numeric::products::products_with;
 
 /// A prior's reach: its amplitude stays within so many standard errors.
 const PRIOR_REACH: f64 = 3.0;
@@ -144,6 +142,54 @@ impl<'a> Projected<'a> {
         }
     }
 
+    /// chi2 and its derivatives with the amplitudes at their best.
+    fn normal_equations(&mut self, parameters: &[f64]) -> NormalEquations {
+        self.place(parameters);
+        let mut all = NormalEquations::default();
+        let mut local = [0.0; MAX_PARAMETERS];
+        if let Some(line) = &mut self.thick {
+            for (value, position) in local.iter_mut().zip(line.joint) {
+                *value = self.joint[*position];
+            }
+            let sums = line.sums(&local[..line.joint.len()]);
+            for (p, own) in line.depends_on.iter().enumerate() {
+                all.gradient[*own] += sums.gradient[p];
+                for (q, other) in line.depends_on.iter().enumerate() {
+                    all.gram[*own][*other] += sums.gram[p.min(q)][p.max(q)];
+                }
+            }
+            all.chi2 += sums.chi2;
+        }
+        let line = &mut self.thin;
+        let local = &mut local[..line.joint.len()];
+        self.layout.thin_local(&self.joint, local);
+        let sums = line.sums(local);
+        all.chi2 += sums.chi2;
+        // an own optical depth that is linked counts for tau and for the isotope ratio
+        let chain = self.layout.link_slopes(&self.joint);
+        let own = |column: usize| match (column, chain) {
+            (2, Some((by_tau, _))) => (2, by_tau),
+            (3, Some((_, by_ratio))) => (2, by_ratio),
+            _ => (column, 1.0),
+        };
+        for (column, place) in line.depends_on.iter().enumerate() {
+            let (p, factor) = own(column);
+            all.gradient[*place] += factor * sums.gradient[p];
+            for (other, other_place) in line.depends_on.iter().enumerate() {
+                let (q, other_factor) = own(other);
+                let product = sums.gram[p.min(q)][p.max(q)];
+                all.gram[*place][*other_place] += factor * other_factor * product;
+            }
+        }
+        for (place, prior) in &self.priors {
+            let residual = (self.joint[self.nonlinear[*place]] - prior.value) / prior.err;
+            all.chi2 += residual * residual;
+            all.gradient[*place] += residual / prior.err;
+            all.gram[*place][*place] += 1.0 / (prior.err * prior.err);
+        }
+        all
+    }
+
     fn of_joint<T>(&self, value: impl Fn(usize, f64) -> T) -> Vec<T> {
         (self.nonlinear.iter().zip(&self.origins))
             .map(|(position, origin)| value(*position, *origin))
@@ -204,168 +250,40 @@ impl<'a> Line<'a> {
         }
     }
 
-    /// Functions and, where wanted, slopes at local parameters, white as the data are.
-    fn fill(&mut self, local: &[f64], slopes: bool) {
-        let LineBuffers {
-            functions,
-            slopes: columns,
-        } = &mut self.buffers;
-        let channels = self.channels;
-        let wanted = slopes.then_some(&mut columns[..]);
-        self.model.functions(
-            channels.line(),
-            channels.sampling(),
-            local,
-            functions,
-            wanted,
-        );
-        channels.decorrelate(functions);
-        if slopes {
-            channels.decorrelate(columns);
-        }
-    }
-
     /// The sums at local parameters.
     fn sums(&mut self, local: &[f64]) -> LineSums {
-        self.fill(local, true);
-        let LineBuffers { functions, slopes } = &self.buffers;
-        let sums = line_sums(
-            self.channels.whitened_data(),
-            functions,
-            slopes,
-            &self.ranges,
-        );
+        let LineBuffers { functions, slopes } = &mut self.buffers;
+        let channels = self.channels;
+        let (line, sampling) = (channels.line(), channels.sampling());
+        self.model
+            .functions(line, sampling, local, functions, Some(slopes));
+        // white as the data are
+        channels.decorrelate(functions);
+        channels.decorrelate(slopes);
+        let sums = line_sums(channels.whitened_data(), functions, slopes, &self.ranges);
         self.amplitudes = sums.amplitudes;
         sums
     }
-
-    /// Residuals and their Jacobian by the model's nonlinear parameters at local parameters.
-    fn evaluate(&mut self, local: &[f64], residuals: &mut [f64], jacobian: Option<&mut [f64]>) {
-        self.fill(local, jacobian.is_some());
-        let channels = self.channels;
-        self.amplitudes = dispatch(Projection {
-            data: channels.whitened_data(),
-            functions: &self.buffers.functions,
-            slopes: &self.buffers.slopes,
-            ranges: &self.ranges,
-            residuals,
-            jacobian,
-        });
-    }
 }
 
-impl LeastSquares for Projected<'_> {
-    fn parameters(&self) -> usize {
-        self.nonlinear.len()
-    }
-
-    fn residuals(&self) -> usize {
+impl Linearise for Projected<'_> {
+    fn sizes(&self) -> (usize, usize) {
         let thick = self.thick.as_ref().map_or(0, |line| line.channels.len());
-        thick + self.thin.channels.len() + self.priors.len()
+        let residuals = thick + self.thin.channels.len() + self.priors.len();
+        (residuals, self.nonlinear.len())
     }
 
-    fn structure(&self) -> Structure {
-        let block = |line: &Line<'_>| RowBlock::new(line.channels.len(), &line.depends_on);
-        let thick = self.thick.as_ref().map_or(RowBlock::new(0, &[]), block);
-        let priors: Vec<usize> = self.priors.iter().map(|(own, _)| *own).collect();
-        Structure::new(&[
-            thick,
-            block(&self.thin),
-            RowBlock::new(priors.len(), &priors),
-        ])
+    fn storage(&self) -> Structure {
+        Structure::new(&[])
     }
 
-    fn normal_equations(&mut self, parameters: &[f64]) -> Option<NormalEquations> {
-        self.place(parameters);
-        let mut all = NormalEquations::default();
-        let mut local = [0.0; MAX_PARAMETERS];
-        if let Some(line) = &mut self.thick {
-            for (value, position) in local.iter_mut().zip(line.joint) {
-                *value = self.joint[*position];
-            }
-            let sums = line.sums(&local[..line.joint.len()]);
-            for (p, own) in line.depends_on.iter().enumerate() {
-                all.gradient[*own] += sums.gradient[p];
-                for (q, other) in line.depends_on.iter().enumerate() {
-                    all.gram[*own][*other] += sums.gram[p.min(q)][p.max(q)];
-                }
-            }
-            all.chi2 += sums.chi2;
-        }
-        let line = &mut self.thin;
-        let local = &mut local[..line.joint.len()];
-        self.layout.thin_local(&self.joint, local);
-        let sums = line.sums(local);
-        all.chi2 += sums.chi2;
-        // an own optical depth that is linked counts for tau and for the isotope ratio
-        let chain = self.layout.link_slopes(&self.joint);
-        let own = |column: usize| match (column, chain) {
-            (2, Some((by_tau, _))) => (2, by_tau),
-            (3, Some((_, by_ratio))) => (2, by_ratio),
-            _ => (column, 1.0),
-        };
-        for (column, place) in line.depends_on.iter().enumerate() {
-            let (p, factor) = own(column);
-            all.gradient[*place] += factor * sums.gradient[p];
-            for (other, other_place) in line.depends_on.iter().enumerate() {
-                let (q, other_factor) = own(other);
-                let product = sums.gram[p.min(q)][p.max(q)];
-                all.gram[*place][*other_place] += factor * other_factor * product;
-            }
-        }
-        for (place, prior) in &self.priors {
-            let residual = (self.joint[self.nonlinear[*place]] - prior.value) / prior.err;
-            all.chi2 += residual * residual;
-            all.gradient[*place] += residual / prior.err;
-            all.gram[*place][*place] += 1.0 / (prior.err * prior.err);
-        }
-        Some(all)
-    }
-
-    fn evaluate(
+    fn linearise(
         &mut self,
         parameters: &[f64],
-        residuals: &mut [f64],
-        jacobian: Option<&mut [f64]>,
-    ) {
-        self.place(parameters);
-        let mut rows = residuals;
-        let mut columns = jacobian;
-        let mut local = [0.0; MAX_PARAMETERS];
-        if let Some(line) = &mut self.thick {
-            for (value, position) in local.iter_mut().zip(line.joint) {
-                *value = self.joint[*position];
-            }
-            let channels = line.channels.len();
-            let own = rows.split_off_mut(..channels).unwrap_or_default();
-            let count = channels * line.depends_on.len();
-            let own_columns = columns.as_mut().and_then(|all| all.split_off_mut(..count));
-            line.evaluate(&local[..line.joint.len()], own, own_columns);
-        }
-        let line = &mut self.thin;
-        let local = &mut local[..line.joint.len()];
-        self.layout.thin_local(&self.joint, local);
-        let channels = line.channels.len();
-        let own = rows.split_off_mut(..channels).unwrap_or_default();
-        let count = channels * line.depends_on.len();
-        let mut own_columns = columns.as_mut().and_then(|all| all.split_off_mut(..count));
-        let direct = channels * line.model.nonlinear().len();
-        let own_direct = own_columns.as_deref_mut().map(|all| &mut all[..direct]);
-        line.evaluate(local, own, own_direct);
-        if let Some(columns) = own_columns {
-            self.layout.chain_link(&self.joint, columns, channels);
-        }
-        let count = self.priors.len();
-        for (row, (own, prior)) in self.priors.iter().enumerate() {
-            let value = self.joint[self.nonlinear[*own]];
-            rows[row] = (value - prior.value) / prior.err;
-            if let Some(columns) = columns.as_deref_mut() {
-                for column in 0..count {
-                    let slope = if column == row { 1.0 / prior.err } else { 0.0 };
-                    columns[column * count + row] = slope;
-                }
-            }
-        }
+        _: &mut [f64],
+        _: &mut [f64],
+    ) -> Option<NormalEquations> {
+        Some(self.normal_equations(parameters))
     }
 }
 
@@ -392,80 +310,6 @@ pub(super) fn amplitude_ranges(
         *range = (amplitude(low), amplitude(high));
     }
     ranges
-}
-
-/// The best amplitudes of one line, its residuals, and the Jacobian without its part along the free
-/// functions.
-struct Projection<'a> {
-    data: &'a [f64],
-    functions: &'a [f64],
-    slopes: &'a [f64],
-    ranges: &'a [(f64, f64); MOST_AMPLITUDES],
-    residuals: &'a mut [f64],
-    jacobian: Option<&'a mut [f64]>,
-}
-
-impl Kernel for Projection<'_> {
-    type Output = Amplitudes;
-
-    #[inline(always)]
-    #[allow(
-        clippy::inline_always,
-        reason = "has to be compiled inside each instruction-set copy"
-    )]
-    fn run<A: Arithmetic>(self) -> Amplitudes {
-        let channels = self.data.len();
-        let data = self.data;
-        let residuals = &mut self.residuals[..channels];
-        let two = self.functions.len() > channels;
-        let f = &self.functions[..channels];
-        // a model of one function meets it twice, the second time with amplitude zero
-        let h = if two {
-            &self.functions[channels..2 * channels]
-        } else {
-            f
-        };
-        let [ff, mut fh, fd] = products_with::<3, A>(f, [f, h, data]);
-        let [mut hh, mut hd] = products_with::<2, A>(h, [h, data]);
-        if !two {
-            (fh, hh, hd) = (0.0, 0.0, 0.0);
-        }
-        let products = Products {
-            squares: [ff, hh],
-            both: fh,
-            by_data: [fd, hd],
-            data: 0.0,
-        };
-        let best = products.best(self.ranges);
-        let [a, b] = best.amplitudes;
-        for i in 0..channels {
-            residuals[i] = A::mul_add(a, f[i], A::mul_add(b, h[i], -data[i]));
-        }
-        let Some(jacobian) = self.jacobian else {
-            return best.amplitudes;
-        };
-        let stride = if two { 2 } else { 1 };
-        for (p, column) in jacobian.chunks_exact_mut(channels).enumerate() {
-            let column = &mut column[..channels];
-            let first = p * stride * channels;
-            let by_f = &self.slopes[first..first + channels];
-            let second = if two { first + channels } else { first };
-            let by_h = &self.slopes[second..second + channels];
-            for i in 0..channels {
-                column[i] = A::mul_add(a, by_f[i], b * by_h[i]);
-            }
-            let [along_f, along_h] = products_with::<2, A>(column, [f, h]);
-            let along = Products {
-                by_data: [along_f, if two { along_h } else { 0.0 }],
-                ..products
-            };
-            let [by_f, by_h] = along.shares(best.free);
-            for i in 0..channels {
-                column[i] -= A::mul_add(by_f, f[i], by_h * h[i]);
-            }
-        }
-        best.amplitudes
-    }
 }
 
 #[cfg(test)]
@@ -524,38 +368,93 @@ mod tests {
         parameters.map(|parameter| value(parameter.name)).collect()
     }
 
+    fn dot(a: &[f64], b: &[f64]) -> f64 {
+        a.iter().zip(b).map(|(a, b)| a * b).sum()
+    }
+
+    fn subtract(column: &mut [f64], factor: f64, other: &[f64]) {
+        for (value, other) in column.iter_mut().zip(other) {
+            *value -= factor * other;
+        }
+    }
+
+    /// Residuals of a line where it was evaluated last, and their slopes by its nonlinear parameters
+    /// without the part along the free functions.
+    fn residuals_and_slopes(line: &Line<'_>) -> (Vec<f64>, Vec<Vec<f64>>) {
+        let channels = line.channels.len();
+        let LineBuffers { functions, slopes } = &line.buffers;
+        let functions: Vec<&[f64]> = functions.chunks_exact(channels).collect();
+        let with_amplitudes = |columns: &[f64]| -> Vec<f64> {
+            let mut sum = vec![0.0; channels];
+            for (amplitude, column) in line.amplitudes.iter().zip(columns.chunks_exact(channels)) {
+                subtract(&mut sum, -amplitude, column);
+            }
+            sum
+        };
+        let mut residuals = with_amplitudes(&line.buffers.functions);
+        subtract(&mut residuals, 1.0, line.channels.whitened_data());
+        // an orthonormal basis of the free functions
+        let mut basis: Vec<Vec<f64>> = Vec::new();
+        for (k, function) in functions.iter().enumerate() {
+            let (low, high) = line.ranges[k];
+            if line.amplitudes[k] <= low || line.amplitudes[k] >= high {
+                continue;
+            }
+            let mut own = function.to_vec();
+            for other in &basis {
+                let along = dot(&own, other);
+                subtract(&mut own, along, other);
+            }
+            let norm = dot(&own, &own).sqrt();
+            own.iter_mut().for_each(|value| *value /= norm);
+            basis.push(own);
+        }
+        let by_parameter = slopes.chunks_exact(functions.len() * channels);
+        let slopes = by_parameter.map(|columns| {
+            let mut column = with_amplitudes(columns);
+            for other in &basis {
+                let along = dot(&column, other);
+                subtract(&mut column, along, other);
+            }
+            column
+        });
+        (residuals, slopes.collect())
+    }
+
     /// chi2, J^T r and J^T J of the residuals and the Jacobian written out.
-    fn explicit_sums(
-        problem: &mut Projected<'_>,
-        at: &[f64],
-    ) -> (
-        f64,
-        [f64; MAX_PARAMETERS],
-        [[f64; MAX_PARAMETERS]; MAX_PARAMETERS],
-    ) {
-        let (rows, structure) = (problem.residuals(), problem.structure());
-        let mut residuals = vec![0.0; rows];
-        let mut stored = vec![0.0; structure.numbers()];
-        problem.evaluate(at, &mut residuals, Some(&mut stored));
-        let chi2 = residuals.iter().map(|r| r * r).sum();
-        let mut gram = [[0.0; MAX_PARAMETERS]; MAX_PARAMETERS];
-        let mut gradient = [0.0; MAX_PARAMETERS];
-        let (mut start, mut first) = (0, 0);
-        for block in structure.blocks() {
-            let column =
-                |k: usize| &stored[start + k * block.rows()..start + (k + 1) * block.rows()];
-            let own = &residuals[first..first + block.rows()];
-            for (k, i) in block.parameters().iter().enumerate() {
-                let dot = |b: &[f64]| -> f64 { column(k).iter().zip(b).map(|(a, b)| a * b).sum() };
-                gradient[*i] += dot(own);
-                for (l, j) in block.parameters().iter().enumerate() {
-                    gram[*i][*j] += dot(column(l));
+    fn explicit_sums(problem: &mut Projected<'_>, at: &[f64]) -> NormalEquations {
+        problem.normal_equations(at);
+        let mut sums = NormalEquations::default();
+        let mut add = |residuals: &[f64], columns: &[(usize, Vec<f64>)]| {
+            sums.chi2 += dot(residuals, residuals);
+            for (i, column) in columns {
+                sums.gradient[*i] += dot(column, residuals);
+                for (j, other) in columns {
+                    sums.gram[*i][*j] += dot(column, other);
                 }
             }
-            start += block.rows() * block.parameters().len();
-            first += block.rows();
+        };
+        for line in problem.thick.iter().chain([&problem.thin]) {
+            let (residuals, mut slopes) = residuals_and_slopes(line);
+            // the thin line's optical depth is 2 tau / ratio
+            if line.depends_on.len() > slopes.len() {
+                let (tau, ratio) = problem.layout.link().unwrap();
+                let (tau, ratio) = (problem.joint[tau], problem.joint[ratio]);
+                let by_ratio = slopes[2]
+                    .iter()
+                    .map(|slope| -2.0 * tau / (ratio * ratio) * slope);
+                slopes.push(by_ratio.collect());
+                slopes[2].iter_mut().for_each(|slope| *slope *= 2.0 / ratio);
+            }
+            let columns: Vec<(usize, Vec<f64>)> =
+                line.depends_on.iter().copied().zip(slopes).collect();
+            add(&residuals, &columns);
         }
-        (chi2, gradient, gram)
+        for (own, prior) in &problem.priors {
+            let residual = (problem.joint[problem.nonlinear[*own]] - prior.value) / prior.err;
+            add(&[residual], &[(*own, vec![1.0 / prior.err])]);
+        }
+        sums
     }
 
     /// Sums in one pass are those of the residuals and the Jacobian, and the gradient is that of chi2.
@@ -606,8 +505,12 @@ mod tests {
                 let mut problem =
                     Projected::new(&layout, (Some(&thick), &thin), &joint, &mut buffers);
                 let at = problem.parameters_of(&joint);
-                let (chi2, gradient, gram) = explicit_sums(&mut problem, &at);
-                let sums = problem.normal_equations(&at).unwrap();
+                let NormalEquations {
+                    chi2,
+                    gradient,
+                    gram,
+                } = explicit_sums(&mut problem, &at);
+                let sums = problem.normal_equations(&at);
                 assert!((sums.chi2 / chi2 - 1.0).abs() < 1e-12);
                 for i in 0..at.len() {
                     let scale = gram[i][i].sqrt();
@@ -625,7 +528,7 @@ mod tests {
                     let mut chi2_at = |shift: f64| {
                         let mut moved = at.clone();
                         moved[i] += shift;
-                        problem.normal_equations(&moved).unwrap().chi2
+                        problem.normal_equations(&moved).chi2
                     };
                     let slope = (chi2_at(step) - chi2_at(-step)) / (2.0 * step);
                     let expected = 2.0 * sums.gradient[i];

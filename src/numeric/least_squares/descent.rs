@@ -9,7 +9,7 @@
 use super::dense::{self, MAX_PARAMETERS, Matrix, Vector};
 use super::minimum::Curvature;
 use super::{
-    Interval, LeastSquares, LeastSquaresError, Minimum, NormalEquations, Settings, Side, Structure,
+    Interval, LeastSquaresError, Linearise, Minimum, NormalEquations, Settings, Side, Structure,
     Termination,
 };
 
@@ -113,26 +113,25 @@ impl Descent {
     ///
     /// # Errors
     /// [`LeastSquaresError`] for sizes, bounds, settings or a start that cannot be used.
-    pub fn begin<P: LeastSquares + ?Sized>(
+    pub fn begin<P: Linearise + ?Sized>(
         problem: &mut P,
         start: &[f64],
         bounds: &[Interval],
         settings: &Settings,
         workspace: &mut Workspace,
     ) -> Result<Self, LeastSquaresError> {
-        let (rows, columns) = (problem.residuals(), problem.parameters());
+        let (rows, columns) = problem.sizes();
         settings.validate()?;
         let free = check_start(rows, columns, start, bounds)?;
-        let structure = problem.structure();
+        let structure = problem.storage();
         let mut parameters = [0.0; MAX_PARAMETERS];
         parameters[..columns].copy_from_slice(start);
-        let linear = if let Some(linear) = Linearisation::of_sums(problem, start) {
-            linear
+        workspace.reserve(structure.rows(), columns);
+        let residuals = &mut workspace.residuals[..structure.rows()];
+        let jacobian = &mut workspace.jacobian[..structure.numbers()];
+        let linear = if let Some(sums) = problem.linearise(start, residuals, jacobian) {
+            Linearisation::of_sums(sums, columns)
         } else {
-            workspace.reserve(rows, columns);
-            let residuals = &mut workspace.residuals[..rows];
-            let jacobian = &mut workspace.jacobian[..structure.numbers()];
-            problem.evaluate(start, residuals, Some(jacobian));
             check_values(residuals, jacobian, &structure)?;
             Linearisation::new(jacobian, residuals, &structure, columns)
         };
@@ -191,7 +190,7 @@ impl Descent {
 
     /// Tries one step: one call of the model, or none when the search ends. Returns why it ended,
     /// `None` while it goes on. `problem`, `bounds`, `settings` and `workspace` are those of `begin`.
-    pub fn step<P: LeastSquares + ?Sized>(
+    pub fn step<P: Linearise + ?Sized>(
         &mut self,
         problem: &mut P,
         bounds: &[Interval],
@@ -261,7 +260,7 @@ impl Descent {
     }
 
     /// Evaluates the trial and keeps it where chi2 falls as it should.
-    fn try_step<P: LeastSquares + ?Sized>(
+    fn try_step<P: Linearise + ?Sized>(
         &mut self,
         problem: &mut P,
         step: &Step,
@@ -270,14 +269,12 @@ impl Descent {
     ) -> bool {
         let trial = self.moved(step, bounds);
         let parameters = &trial[..self.columns];
-        let of_sums = Linearisation::of_sums(problem, parameters);
-        let chi2 = if let Some(linear) = &of_sums {
-            linear.sums.chi2
-        } else {
-            let residuals = &mut workspace.trial_residuals[..self.rows];
-            let jacobian = &mut workspace.trial_jacobian[..self.structure.numbers()];
-            problem.evaluate(parameters, residuals, Some(jacobian));
-            dense::sum_of_squares(residuals)
+        let residuals = &mut workspace.trial_residuals[..self.structure.rows()];
+        let jacobian = &mut workspace.trial_jacobian[..self.structure.numbers()];
+        let sums = problem.linearise(parameters, residuals, jacobian);
+        let chi2 = match &sums {
+            Some(sums) => sums.chi2,
+            None => dense::sum_of_squares(residuals),
         };
         self.gain = if chi2.is_finite() {
             (self.chi2 - chi2) / step.decrease
@@ -287,11 +284,10 @@ impl Descent {
         if self.gain.is_nan() || self.gain < LEAST_GAIN || step.decrease <= 0.0 {
             return false;
         }
-        let linear = of_sums.unwrap_or_else(|| {
-            let residuals = &workspace.trial_residuals[..self.rows];
-            let jacobian = &workspace.trial_jacobian[..self.structure.numbers()];
-            Linearisation::new(jacobian, residuals, &self.structure, self.columns)
-        });
+        let linear = match sums {
+            Some(sums) => Linearisation::of_sums(sums, self.columns),
+            None => Linearisation::new(jacobian, residuals, &self.structure, self.columns),
+        };
         if !linear.is_finite() {
             return false;
         }
@@ -532,13 +528,13 @@ impl Linearisation {
         }
     }
 
-    /// Of a problem that gives its sums without a Jacobian.
-    fn of_sums<P: LeastSquares + ?Sized>(problem: &mut P, parameters: &[f64]) -> Option<Self> {
-        Some(Self {
-            columns: parameters.len(),
-            sums: problem.normal_equations(parameters)?,
+    /// Of sums that are given without a Jacobian.
+    fn of_sums(sums: NormalEquations, columns: usize) -> Self {
+        Self {
+            columns,
+            sums,
             known: Known::Sums,
-        })
+        }
     }
 
     fn is_finite(&self) -> bool {

@@ -53,13 +53,6 @@ pub trait LeastSquares {
     ///
     /// Every element must be written; the buffers hold old numbers.
     fn evaluate(&mut self, parameters: &[f64], residuals: &mut [f64], jacobian: Option<&mut [f64]>);
-
-    /// The sums that a step needs, where a problem has them cheaper than residuals and Jacobian;
-    /// `evaluate` is then not called. Steps where they lose too many digits are damped.
-    fn normal_equations(&mut self, parameters: &[f64]) -> Option<NormalEquations> {
-        let _ = parameters;
-        None
-    }
 }
 
 impl<P: LeastSquares + ?Sized> LeastSquares for &mut P {
@@ -83,9 +76,44 @@ impl<P: LeastSquares + ?Sized> LeastSquares for &mut P {
     ) {
         (**self).evaluate(parameters, residuals, jacobian);
     }
+}
 
-    fn normal_equations(&mut self, parameters: &[f64]) -> Option<NormalEquations> {
-        (**self).normal_equations(parameters)
+/// What a [`Descent`] asks of a problem. Every [`LeastSquares`] problem answers with residuals and a
+/// Jacobian; one that has chi2 and its derivatives cheaper answers with those sums.
+pub trait Linearise {
+    /// Numbers of residuals m, which chi2 is a sum over, and of parameters n.
+    fn sizes(&self) -> (usize, usize);
+
+    /// How residuals and Jacobian are stored; empty where sums take their place.
+    fn storage(&self) -> Structure;
+
+    /// The sums at some parameters; or `None`, with residuals and Jacobian in the buffers, stored as
+    /// [`Linearise::storage`] says. Where sums lose too many digits for a step, it is damped.
+    fn linearise(
+        &mut self,
+        parameters: &[f64],
+        residuals: &mut [f64],
+        jacobian: &mut [f64],
+    ) -> Option<NormalEquations>;
+}
+
+impl<P: LeastSquares + ?Sized> Linearise for P {
+    fn sizes(&self) -> (usize, usize) {
+        (self.residuals(), self.parameters())
+    }
+
+    fn storage(&self) -> Structure {
+        self.structure()
+    }
+
+    fn linearise(
+        &mut self,
+        parameters: &[f64],
+        residuals: &mut [f64],
+        jacobian: &mut [f64],
+    ) -> Option<NormalEquations> {
+        self.evaluate(parameters, residuals, Some(jacobian));
+        None
     }
 }
 
