@@ -8,7 +8,6 @@
 use criterion::{Criterion, criterion_group, criterion_main};
 use inrush::fit::{FitRange, FitSettings, Workspace, fit_pair, fit_thin};
 use inrush::line::{Line, find};
-use inrush::measure::{MeasureSettings, measure};
 use inrush::model::Model;
 use inrush::prepare::{Expected, PrepareSettings, Prepared, prepare_pair};
 use inrush::simulate::{PairTruth, simulate_pair};
@@ -99,26 +98,6 @@ fn fitting(criterion: &mut Criterion) {
             .unwrap();
             assert!(fit.line.is_some());
             fit
-        });
-    });
-    group.bench_function("prepare", |bencher| {
-        bencher.iter(|| {
-            let pair = prepared(black_box(&thick), black_box(&thin));
-            assert!(pair.0.window_automatic);
-            pair
-        });
-    });
-    group.bench_function("measure", |bencher| {
-        bencher.iter(|| {
-            let measures = measure(
-                black_box(&pair.0),
-                &pair.1,
-                thin_fit.line.as_ref(),
-                0.01,
-                &MeasureSettings::default(),
-            );
-            assert!(measures.delta_v.unwrap().value < -0.25);
-            measures
         });
     });
     group.finish();

@@ -11,7 +11,7 @@ use inrush::line::{Line, find};
 use inrush::model::{LineShape, Model, Sampling};
 use inrush::numeric::least_squares::{Descent, Interval, Settings, Workspace};
 use inrush::numeric::{Autoregression, Estimate};
-use inrush::prepare::{Baseline, Prepared};
+use inrush::prepare::Prepared;
 use inrush::spectrum::{Noise, Spectrum, Window};
 use std::alloc::{GlobalAlloc, Layout as MemoryLayout, System};
 use std::cell::Cell;
@@ -73,27 +73,18 @@ fn prepared(model: Model, line: &Line, parameters: &[f64], process: Autoregressi
         *value += 0.05 * (f64::from(channel * channel) * 0.7).sin();
     }
     let channels = value_k.len();
-    Prepared {
-        spectrum: Spectrum::new(velocity_km_s, width_km_s, value_k).expect("a spectrum"),
-        window: Window {
+    Prepared::as_given(
+        Spectrum::new(velocity_km_s, width_km_s, value_k).expect("a spectrum"),
+        Window {
             low_km_s: -4.0,
             high_km_s: 4.0,
         },
-        window_automatic: false,
-        window_cuts_line: false,
-        other_signal: Vec::new(),
-        baseline: Baseline {
-            order: None,
-            values_k: vec![0.0; channels],
-            channels,
-            clipped: 0,
-        },
-        noise: Noise {
+        Noise {
             rms_k: 0.05,
             channels,
             process,
         },
-    }
+    )
 }
 
 fn shape(line: &Line) -> LineShape {

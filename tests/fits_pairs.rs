@@ -12,7 +12,7 @@ use inrush::line::{Component, Line};
 use inrush::model::{LineShape, Model, Sampling};
 use inrush::numeric::least_squares::{Interval, check_jacobian};
 use inrush::numeric::{Autoregression, Estimate};
-use inrush::prepare::{Baseline, Prepared};
+use inrush::prepare::Prepared;
 use inrush::spectrum::{Noise, Spectrum, Window};
 use rand::SeedableRng;
 use rand_chacha::ChaCha8Rng;
@@ -47,27 +47,18 @@ fn prepared(model: Model, line: &Line, parameters: &[f64], noise_k: f64, seed: u
         *value += noise_k * deviate;
     }
     let channels = velocity.len();
-    Prepared {
-        spectrum: Spectrum::new(velocity, vec![width; channels], value).unwrap(),
-        window: Window {
+    Prepared::as_given(
+        Spectrum::new(velocity, vec![width; channels], value).unwrap(),
+        Window {
             low_km_s: -4.0,
             high_km_s: 4.0,
         },
-        window_automatic: false,
-        window_cuts_line: false,
-        other_signal: Vec::new(),
-        baseline: Baseline {
-            order: None,
-            values_k: vec![0.0; channels],
-            channels,
-            clipped: 0,
-        },
-        noise: Noise {
+        Noise {
             rms_k: noise_k,
             channels,
             process: Autoregression::white(),
         },
-    }
+    )
 }
 
 const SINGLE: &[(f64, f64)] = &[(0.0, 1.0)];

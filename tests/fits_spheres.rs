@@ -4,13 +4,17 @@
     reason = "a test stops where its data cannot be read"
 )]
 
+#[path = "../examples/fit_sample/comparison.rs"]
+mod comparison;
+
+use comparison::settings;
 use inrush::fit::Workspace;
-use inrush::fit::{Averaging, FitRange, FitSettings, fit_pair};
+use inrush::fit::fit_pair;
 use inrush::line::{Component, Line};
 use inrush::measure::ThinLine;
 use inrush::model::Model;
 use inrush::numeric::Autoregression;
-use inrush::prepare::{Baseline, Prepared};
+use inrush::prepare::Prepared;
 use inrush::spectrum::{Noise, Spectrum, Window};
 use std::collections::HashMap;
 use std::path::{Path, PathBuf};
@@ -45,24 +49,15 @@ fn spectrum(name: &str, noise_k: f64, window: Window) -> Prepared {
     }
     let channels = velocity.len();
     let width = (velocity[channels - 1] - velocity[0]) / (channels as f64 - 1.0);
-    Prepared {
-        spectrum: Spectrum::new(velocity, vec![width; channels], temperature).unwrap(),
+    Prepared::as_given(
+        Spectrum::new(velocity, vec![width; channels], temperature).unwrap(),
         window,
-        window_automatic: false,
-        window_cuts_line: false,
-        other_signal: Vec::new(),
-        baseline: Baseline {
-            order: None,
-            values_k: vec![0.0; channels],
-            channels,
-            clipped: 0,
-        },
-        noise: Noise {
+        Noise {
             rms_k: noise_k,
             channels,
             process: Autoregression::white(),
         },
-    }
+    )
 }
 
 /// A line at the comparison's frequency.
@@ -81,35 +76,6 @@ fn line(name: &str) -> Line {
             offset_km_s: 0.0,
             weight: 1.0,
         }],
-    }
-}
-
-fn settings(model: Model, v_lsr: f64) -> FitSettings {
-    let (tau, temperature) = if model == Model::Hill {
-        (200.0, 400.0)
-    } else {
-        (80.0, 150.0)
-    };
-    let bounds = [
-        ("v_lsr_km_s", (v_lsr - 3.0, v_lsr + 3.0)),
-        ("v_in_km_s", (-3.0, 3.0)),
-        ("sigma_km_s", (0.15, 4.0)),
-        ("tau", (0.05, tau)),
-        ("t_front_k", (2.73, temperature)),
-        ("t_rear_k", (2.73, temperature)),
-        ("t_peak_k", (2.73, temperature)),
-        ("peak_thin_k", (0.0, 100.0)),
-    ];
-    FitSettings {
-        models: vec![model],
-        range: Some(FitRange::All),
-        averaging: Averaging::Centre,
-        bounds: bounds
-            .into_iter()
-            .filter(|(name, _)| *name == "peak_thin_k" || model.position(name).is_some())
-            .map(|(name, bounds)| (name.to_owned(), bounds))
-            .collect(),
-        ..FitSettings::default()
     }
 }
 

@@ -12,7 +12,7 @@ use inrush::measure::{MeasureSettings, ThinLine, measure};
 use inrush::model::{LineShape, Model, Sampling};
 use inrush::numeric::least_squares::Interval;
 use inrush::numeric::{Autoregression, Estimate};
-use inrush::prepare::{Baseline, Prepared};
+use inrush::prepare::Prepared;
 use inrush::simulate::{NoiseLevel, PairTruth, simulate_pair};
 use inrush::spectrum::{Noise, Spectrum, Window};
 use std::fmt::Write as _;
@@ -49,24 +49,15 @@ fn velocities() -> Vec<f64> {
 fn prepared(temperature_k: Vec<f64>, process: Autoregression) -> Prepared {
     let velocity = velocities();
     let channels = velocity.len();
-    Prepared {
-        spectrum: Spectrum::new(velocity, vec![CHANNEL_KM_S; channels], temperature_k).unwrap(),
-        window: WINDOW,
-        window_automatic: false,
-        window_cuts_line: false,
-        other_signal: Vec::new(),
-        baseline: Baseline {
-            order: None,
-            values_k: vec![0.0; channels],
-            channels,
-            clipped: 0,
-        },
-        noise: Noise {
+    Prepared::as_given(
+        Spectrum::new(velocity, vec![CHANNEL_KM_S; channels], temperature_k).unwrap(),
+        WINDOW,
+        Noise {
             rms_k: 0.05,
             channels,
             process,
         },
-    }
+    )
 }
 
 fn profile(model: Model, shape: &LineShape, parameters: &[f64]) -> Vec<f64> {

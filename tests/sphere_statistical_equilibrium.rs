@@ -3,13 +3,15 @@
 
 #![allow(clippy::unwrap_used)]
 
-use inrush::constants::PARSEC;
+#[path = "../examples/collapse_benchmark/table.rs"]
+mod table;
+
 use inrush::line::Component;
 use inrush::sphere::{
     Beam, Clump, Equilibrium, EquilibriumSettings, LineView, Mode, Molecule, PairView, Populations,
-    ShellTable, Shells, SphereError, pair_spectra, solve,
+    Shells, SphereError, pair_spectra, solve,
 };
-use std::path::Path;
+use table::benchmark;
 
 fn clump() -> Clump {
     Clump {
@@ -270,32 +272,6 @@ fn twice_as_many_shells_in_the_full_mode_change_spectra_by_less_than_a_percent()
     assert!(largest(blue) > 1.1 * largest(red));
 }
 
-/// Columns of the benchmark's table: radii, density, temperature, speed, width, then shares.
-fn benchmark() -> (Shells, Vec<Vec<f64>>) {
-    let folder = Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/data/collapse/shells.csv");
-    let rows: Vec<Vec<f64>> = csv::Reader::from_path(folder)
-        .unwrap()
-        .deserialize()
-        .map(Result::unwrap)
-        .collect();
-    let column = |index: usize| -> Vec<f64> { rows.iter().map(|row| row[index]).collect() };
-    let cm_per_pc = PARSEC.value * 100.0;
-    let mut edge_pc: Vec<f64> = column(0).iter().map(|cm| cm / cm_per_pc).collect();
-    edge_pc.push(4.628_40e17 / cm_per_pc);
-    let table = ShellTable {
-        edge_pc,
-        n_h2_cm3: column(1),
-        t_kin_k: column(2),
-        v_in_km_s: column(3),
-        sigma_km_s: column(4)
-            .iter()
-            .map(|b| b / std::f64::consts::SQRT_2)
-            .collect(),
-        abundance: vec![1e-9; rows.len()],
-    };
-    (Shells::of_table(table).unwrap(), rows)
-}
-
 /// tests/data/collapse/README.md: van Zadelhoff et al. 2002, A&A 395, 373, problem 2a, against an
 /// independent Monte Carlo solution.
 ///
@@ -304,7 +280,7 @@ fn benchmark() -> (Shells, Vec<Vec<f64>>) {
 /// cavity: nothing here; continuing the innermost gas halves the difference.
 #[test]
 fn a_collapsing_cloud_agrees_with_a_published_benchmark() {
-    let (shells, rows) = benchmark();
+    let (shells, rows) = benchmark().unwrap();
     let settings = EquilibriumSettings {
         levels: 12,
         ..EquilibriumSettings::default()

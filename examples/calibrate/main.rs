@@ -18,7 +18,7 @@ use inrush::measure::ThinLine;
 use inrush::model::Model;
 use inrush::numeric::sampling::ImportanceSettings;
 use inrush::numeric::{Autoregression, Estimate};
-use inrush::prepare::{Baseline, Expected, PrepareSettings, Prepared, prepare_pair};
+use inrush::prepare::{Expected, PrepareSettings, Prepared, prepare_pair};
 use inrush::simulate::Correlation;
 use inrush::spectrum::{Noise, Spectrum, Window};
 use std::error::Error;
@@ -144,23 +144,16 @@ fn exact(
         low_km_s: -4.0 * sigma,
         high_km_s: 4.0 * sigma,
     };
-    let prepared = |spectrum: &Spectrum, rms_k: f64| Prepared {
-        window,
-        window_automatic: false,
-        window_cuts_line: false,
-        other_signal: Vec::new(),
-        baseline: Baseline {
-            order: None,
-            values_k: vec![0.0; spectrum.len()],
-            channels: spectrum.len(),
-            clipped: 0,
-        },
-        noise: Noise {
-            rms_k,
-            channels: spectrum.len(),
-            process: Autoregression::white(),
-        },
-        spectrum: spectrum.clone(),
+    let prepared = |spectrum: &Spectrum, rms_k: f64| {
+        Prepared::as_given(
+            spectrum.clone(),
+            window,
+            Noise {
+                rms_k,
+                channels: spectrum.len(),
+                process: Autoregression::white(),
+            },
+        )
     };
     let known = |value: f64| Estimate {
         value,

@@ -319,7 +319,7 @@ mod tests {
     use crate::line::{Component, Line as SpectralLine, find};
     use crate::model::LineShape;
     use crate::numeric::Autoregression;
-    use crate::prepare::{Baseline, Prepared};
+    use crate::prepare::Prepared;
     use crate::spectrum::{Noise, Spectrum, Window};
 
     fn channels(line: &SpectralLine, process: Autoregression, count: i32) -> Channels {
@@ -329,27 +329,18 @@ mod tests {
             .map(|v| (-v * v).exp() * (1.0 + 0.3 * v) + 0.05 * (37.0 * v).sin())
             .collect();
         let channels = velocity.len();
-        let prepared = Prepared {
-            spectrum: Spectrum::new(velocity, vec![0.1; channels], temperature).unwrap(),
-            window: Window {
+        let prepared = Prepared::as_given(
+            Spectrum::new(velocity, vec![0.1; channels], temperature).unwrap(),
+            Window {
                 low_km_s: -2.0,
                 high_km_s: 2.0,
             },
-            window_automatic: false,
-            window_cuts_line: false,
-            other_signal: Vec::new(),
-            baseline: Baseline {
-                order: None,
-                values_k: vec![0.0; channels],
-                channels,
-                clipped: 0,
-            },
-            noise: Noise {
+            Noise {
                 rms_k: 0.05,
                 channels,
                 process,
             },
-        };
+        );
         let shape = LineShape::new(line.rest_frequency_ghz, line.components.clone());
         Channels::new(&prepared, shape, None, Averaging::Channel, 0.2)
     }
@@ -406,7 +397,9 @@ mod tests {
                 subtract(&mut own, along, other);
             }
             let norm = dot(&own, &own).sqrt();
-            own.iter_mut().for_each(|value| *value /= norm);
+            for value in &mut own {
+                *value /= norm;
+            }
             basis.push(own);
         }
         let by_parameter = slopes.chunks_exact(functions.len() * channels);
@@ -444,7 +437,9 @@ mod tests {
                     .iter()
                     .map(|slope| -2.0 * tau / (ratio * ratio) * slope);
                 slopes.push(by_ratio.collect());
-                slopes[2].iter_mut().for_each(|slope| *slope *= 2.0 / ratio);
+                for slope in &mut slopes[2] {
+                    *slope *= 2.0 / ratio;
+                }
             }
             let columns: Vec<(usize, Vec<f64>)> =
                 line.depends_on.iter().copied().zip(slopes).collect();

@@ -1,11 +1,11 @@
 //! Numbers into numbers: exponentials over slices, least squares, noise processes, robust
 //! statistics. No astronomy here.
 
-pub mod amplitudes;
 pub mod autoregression;
 pub mod dispatch;
 pub mod exponential;
 pub mod least_squares;
+pub mod marginal;
 pub mod polynomial;
 pub mod products;
 pub mod robust;

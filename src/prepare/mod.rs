@@ -38,6 +38,25 @@ pub struct Prepared {
 }
 
 impl Prepared {
+    /// A spectrum that needs no preparation: no baseline is subtracted, and there is no other signal in it.
+    pub fn as_given(spectrum: Spectrum, window: Window, noise: Noise) -> Self {
+        let channels = spectrum.len();
+        Self {
+            spectrum,
+            window,
+            window_automatic: false,
+            window_cuts_line: false,
+            other_signal: Vec::new(),
+            baseline: Baseline {
+                order: None,
+                values_k: vec![0.0; channels],
+                channels,
+                clipped: 0,
+            },
+            noise,
+        }
+    }
+
     /// Whether a velocity (km/s) is in other signal than the line's.
     pub fn is_other_signal(&self, velocity_km_s: f64) -> bool {
         self.other_signal

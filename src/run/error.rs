@@ -169,6 +169,16 @@ impl RunError {
         }
     }
 
+    /// TOML that is not what was expected of it, with the line where the parser says so.
+    pub(super) fn of_toml(error: &toml::de::Error, text: &str, path: &Path) -> Self {
+        Self::Sheet {
+            path: path.to_owned(),
+            line: error.span().map(|span| line_at(text, span.start)),
+            message: error.message().to_owned(),
+            hint: None,
+        }
+    }
+
     /// A setting with what was found and expected.
     #[must_use]
     pub fn setting(key: &str, found: &str, expected: &str) -> Self {
@@ -249,4 +259,13 @@ impl RunError {
             }
         }
     }
+}
+
+/// The line, from 1, that a byte of a text stands in.
+pub(super) fn line_at(text: &str, byte: usize) -> usize {
+    1 + text
+        .bytes()
+        .take(byte)
+        .filter(|byte| *byte == b'\n')
+        .count()
 }

@@ -3,6 +3,7 @@
 //! Unknown keys are errors that name the nearest known key. A resolved sheet, with every default
 //! written out, goes beside the results: running it again gives the same bytes.
 
+use super::error::line_at;
 use super::{PairSettings, RunError};
 use crate::derive::{DeriveSettings, Input, SourceProperties};
 use crate::fit::{FitRange, FitSettings};
@@ -674,15 +675,6 @@ fn unknown_model(name: &str) -> RunError {
 
 /// What to do where something else than a run sheet was given.
 const NO_SHEET_HINT: &str = "spectra are given with --thick and --thin";
-
-/// The line, from 1, that a byte of a text stands in.
-fn line_at(text: &str, byte: usize) -> usize {
-    1 + text
-        .bytes()
-        .take(byte)
-        .filter(|byte| *byte == b'\n')
-        .count()
-}
 
 /// The parser's message in our words, and what to do; `found` is the text that it is about.
 fn explain(message: &str, found: &str) -> (String, Option<String>) {

@@ -6,7 +6,7 @@
 
 use crate::fit::{Averaging, Channels};
 use crate::model::LineShape;
-use crate::numeric::amplitudes::Quadratic;
+use crate::numeric::marginal::Quadratic;
 use crate::numeric::products::products;
 use crate::prepare::Prepared;
 use crate::spectrum::Window;

@@ -4,7 +4,7 @@
 use super::data::LineData;
 use crate::fit::priors::{Prior, Priors};
 use crate::model::{LineShape, Model, RadiationTemperature};
-use crate::numeric::amplitudes::Quadratic;
+use crate::numeric::marginal::Quadratic;
 use crate::numeric::sampling::{Density, MOST_DIMENSIONS, Point};
 use crate::spectrum::Window;
 

@@ -130,7 +130,7 @@ impl Descent {
         let residuals = &mut workspace.residuals[..structure.rows()];
         let jacobian = &mut workspace.jacobian[..structure.numbers()];
         let linear = if let Some(sums) = problem.linearise(start, residuals, jacobian) {
-            Linearisation::of_sums(sums, columns)
+            Linearisation::of_sums(&sums, columns)
         } else {
             check_values(residuals, jacobian, &structure)?;
             Linearisation::new(jacobian, residuals, &structure, columns)
@@ -285,7 +285,7 @@ impl Descent {
             return false;
         }
         let linear = match sums {
-            Some(sums) => Linearisation::of_sums(sums, self.columns),
+            Some(sums) => Linearisation::of_sums(&sums, self.columns),
             None => Linearisation::new(jacobian, residuals, &self.structure, self.columns),
         };
         if !linear.is_finite() {
@@ -529,10 +529,10 @@ impl Linearisation {
     }
 
     /// Of sums that are given without a Jacobian.
-    fn of_sums(sums: NormalEquations, columns: usize) -> Self {
+    fn of_sums(sums: &NormalEquations, columns: usize) -> Self {
         Self {
             columns,
-            sums,
+            sums: *sums,
             known: Known::Sums,
         }
     }

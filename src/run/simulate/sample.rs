@@ -309,13 +309,7 @@ pub fn read_sample_settings(
     path: &Path,
 ) -> Result<(SampleSettings, Option<String>, Option<String>), RunError> {
     let text = fs::read_to_string(path).map_err(|source| file_error(path, source))?;
-    let file: SettingsFile = toml::from_str(&text).map_err(|error| RunError::Sheet {
-        path: path.to_owned(),
-        line: error
-            .span()
-            .map(|span| text[..span.start.min(text.len())].lines().count().max(1)),
-        message: error.message().to_owned(),
-        hint: None,
-    })?;
+    let file: SettingsFile =
+        toml::from_str(&text).map_err(|error| RunError::of_toml(&error, &text, path))?;
     Ok((file.sample, file.thick_line, file.thin_line))
 }

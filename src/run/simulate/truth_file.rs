@@ -130,14 +130,8 @@ pub fn read_truth(path: &Path) -> Result<PairTruth, RunError> {
 ///
 /// [`RunError::Sheet`] where the text is no truth, [`RunError::Line`] where a line is none.
 pub fn parse_truth(text: &str, path: &Path) -> Result<PairTruth, RunError> {
-    let file: TruthFile = toml::from_str(text).map_err(|error| RunError::Sheet {
-        path: path.to_owned(),
-        line: error
-            .span()
-            .map(|span| text[..span.start.min(text.len())].lines().count().max(1)),
-        message: error.message().to_owned(),
-        hint: None,
-    })?;
+    let file: TruthFile =
+        toml::from_str(text).map_err(|error| RunError::of_toml(&error, text, path))?;
     Ok(PairTruth {
         thick: line_truth("thick", file.thick)?,
         thin: line_truth("thin", file.thin)?,

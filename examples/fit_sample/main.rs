@@ -8,13 +8,14 @@
 //! fit of one model with everything that it needs but the thin line's own fit, `thin_seconds` that one.
 #![allow(clippy::print_stdout, clippy::print_stderr)]
 
-use inrush::fit::{
-    Averaging, FitRange, FitSettings, ModelFit, ThinFit, Workspace, fit_pair, fit_thin,
-};
+mod comparison;
+
+use comparison::settings;
+use inrush::fit::{FitSettings, ModelFit, ThinFit, Workspace, fit_pair, fit_thin};
 use inrush::line::{Line, find};
 use inrush::model::Model;
 use inrush::numeric::Autoregression;
-use inrush::prepare::{Baseline, Expected, PrepareSettings, Prepared, prepare_pair};
+use inrush::prepare::{Expected, PrepareSettings, Prepared, prepare_pair};
 use inrush::spectrum::{Noise, Spectrum, Window};
 use serde_json::json;
 use std::collections::HashMap;
@@ -215,24 +216,15 @@ fn prepared(thick: Spectrum, thin: Spectrum, noise_k: [f64; 2]) -> (Prepared, Pr
     let windows = windows(&thick, &thin);
     let prepared = |spectrum: Spectrum, window: Window, rms_k: f64| {
         let channels = spectrum.len();
-        Prepared {
+        Prepared::as_given(
             spectrum,
             window,
-            window_automatic: true,
-            window_cuts_line: false,
-            other_signal: Vec::new(),
-            baseline: Baseline {
-                order: None,
-                values_k: vec![0.0; channels],
-                channels,
-                clipped: 0,
-            },
-            noise: Noise {
+            Noise {
                 rms_k,
                 channels,
                 process: Autoregression::white(),
             },
-        }
+        )
     };
     (
         prepared(thick, windows.0, noise_k[0]),
@@ -260,34 +252,5 @@ fn windows(thick: &Spectrum, thin: &Spectrum) -> (Window, Window) {
     match found {
         Ok((thick, thin)) => (thick.window, thin.window),
         Err(_) => (middle_half(thick), middle_half(thin)),
-    }
-}
-
-/// The comparison's bounds, as in `benches/against_scipy.py`.
-fn settings(model: Model, middle_km_s: f64) -> FitSettings {
-    let (tau, temperature) = match model {
-        Model::Hill => (200.0, 400.0),
-        _ => (80.0, 150.0),
-    };
-    let bounds = [
-        ("v_lsr_km_s", (middle_km_s - 3.0, middle_km_s + 3.0)),
-        ("v_in_km_s", (-3.0, 3.0)),
-        ("sigma_km_s", (0.15, 4.0)),
-        ("tau", (0.05, tau)),
-        ("t_front_k", (2.73, temperature)),
-        ("t_rear_k", (2.73, temperature)),
-        ("t_peak_k", (2.73, temperature)),
-        ("peak_thin_k", (0.0, 100.0)),
-    ];
-    FitSettings {
-        models: vec![model],
-        range: Some(FitRange::All),
-        averaging: Averaging::Centre,
-        bounds: bounds
-            .into_iter()
-            .filter(|(name, _)| *name == "peak_thin_k" || model.position(name).is_some())
-            .map(|(name, bounds)| (name.to_owned(), bounds))
-            .collect(),
-        ..FitSettings::default()
     }
 }
