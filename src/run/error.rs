@@ -1,6 +1,6 @@
 //! Why a run cannot be done; rendered by the command line.
 
-use super::{BatchError, Panicked};
+use super::{BatchError, JudgeError, Panicked};
 use crate::derive::DeriveError;
 use crate::fit::FitError;
 use crate::line::LineError;
@@ -125,6 +125,9 @@ pub enum RunError {
     /// A pair that cannot be fitted.
     #[error(transparent)]
     Fit(#[from] FitError),
+    /// A pair that cannot be judged.
+    #[error(transparent)]
+    Judge(#[from] JudgeError),
     /// A property of the source that no source has, or a setting of what is derived from it.
     #[error(transparent)]
     Derive(#[from] DeriveError),
@@ -250,6 +253,7 @@ impl RunError {
             Self::Scale(error) => error.hint(),
             Self::Prepare { error, .. } => error.hint(),
             Self::Pair { error, .. } | Self::Fit(error) => error.hint(),
+            Self::Judge(error) => error.hint(),
             Self::Derive(error) => error.hint(),
             Self::Simulate(error) => error.hint(),
             Self::Report(error) => error.hint(),

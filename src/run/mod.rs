@@ -5,6 +5,7 @@ mod check;
 mod error;
 #[cfg(feature = "figures")]
 mod figure;
+mod judge;
 mod pair;
 mod pairs;
 mod products;
@@ -14,6 +15,7 @@ pub mod simulate;
 pub use batch::{BatchError, BatchSettings, Panicked};
 pub use check::{FileCheck, check_file};
 pub use error::RunError;
+pub use judge::{JudgeError, Judged, VerdictSettings};
 pub use pair::{
     LineInput, LineOutcome, PairInput, PairOutcome, PairSettings, fit_pair, fit_spectra, read_pair,
 };
