@@ -261,6 +261,13 @@ fn figure_numbers(outcome: &PairOutcome) -> Vec<(String, String)> {
             )),
             _ => {}
         }
+        if judged.verdict.shares.len() > 1 {
+            let shares = judged.verdict.shares.iter();
+            let each: Vec<String> = shares
+                .map(|(model, share)| format!("{} {share:.2}", model_label(*model)))
+                .collect();
+            numbers.push(("evidence".to_owned(), each.join(", ")));
+        }
     } else {
         for fit in &outcome.fit.models {
             if let Some(v_in) = fit.estimate("v_in_km_s") {

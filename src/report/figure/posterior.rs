@@ -62,8 +62,16 @@ pub(super) fn draw(
     canvas.line(&ends, solid(ZERO, 0.14))?;
     let heading = place.top + 1.2 + leading_mm(VALUE) * 0.8;
     let title = text::plain("Posterior of the inward speed");
-    canvas.text(&title, (MARGIN_MM + 0.5, heading), Align::Start, VALUE)?;
-    legend(canvas, heading)?;
+    let left = MARGIN_MM + 0.5;
+    canvas.text(&title, (left, heading), Align::Start, VALUE)?;
+    let width = text::width_mm(&title, VALUE.size_pt, VALUE.weight);
+    legend(canvas, heading, left + width)?;
+    if let Some(correlation) = part.correlation.filter(|_| !part.draws.is_empty()) {
+        let sign = if correlation < 0.0 { "\u{2212}" } else { "+" };
+        let words = format!("correlation {sign}{:.2}", correlation.abs());
+        let at = (PLOT_RIGHT_MM, heading);
+        canvas.text(&text::plain(&words), at, Align::End, NOTE)?;
+    }
     marginal(canvas, part, (top, bottom), stroke_of)?;
     if !part.draws.is_empty() {
         depth(canvas, part, (top, bottom), stroke_of)?;
@@ -77,15 +85,15 @@ pub(super) fn draw(
     Ok(())
 }
 
-/// What the shades mean, at the right of the heading.
-fn legend(canvas: &Canvas<'_>, baseline: f64) -> Result<(), ReportError> {
-    let mut right = PAGE_MM - MARGIN_MM - 0.5;
-    for (words, color) in [("95 %", POSTERIOR_95), ("68 %", POSTERIOR_68)] {
-        let width = text::span_width_mm(words, NOTE.size_pt, NOTE.weight);
-        canvas.text(&text::plain(words), (right, baseline), Align::End, NOTE)?;
-        let from = (right - width - 4.4, baseline - 1.8);
-        canvas.rectangle(from, (right - width - 1.0, baseline + 0.2), color)?;
-        right -= width + 7.0;
+/// What the shades mean, beside the heading that ends at `from`.
+fn legend(canvas: &Canvas<'_>, baseline: f64, from: f64) -> Result<(), ReportError> {
+    let mut left = from + 3.0;
+    for (words, color) in [("68 %", POSTERIOR_68), ("95 %", POSTERIOR_95)] {
+        let right = left + 3.4;
+        canvas.rectangle((left, baseline - 1.8), (right, baseline + 0.2), color)?;
+        let at = (right + 0.9, baseline);
+        canvas.text(&text::plain(words), at, Align::Start, NOTE)?;
+        left = right + text::span_width_mm(words, NOTE.size_pt, NOTE.weight) + 3.0;
     }
     Ok(())
 }
@@ -184,14 +192,7 @@ fn depth(
     )?;
     let middle = f64::midpoint(top, bottom);
     let label = text::plain("optical depth");
-    canvas.upward_text(&label, (MARGINAL_RIGHT_MM + 4.0, middle), LABEL)?;
-    if let Some(correlation) = part.correlation {
-        let sign = if correlation < 0.0 { "\u{2212}" } else { "+" };
-        let words = format!("correlation {sign}{:.2}", correlation.abs());
-        let at = (PLOT_RIGHT_MM, top - 0.5);
-        canvas.text(&text::plain(&words), at, Align::End, NOTE)?;
-    }
-    Ok(())
+    canvas.upward_text(&label, (MARGINAL_RIGHT_MM + 4.0, middle), LABEL)
 }
 
 /// Round depths on a logarithmic axis.
