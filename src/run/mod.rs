@@ -2,9 +2,11 @@
 
 mod batch;
 mod check;
+mod durable;
 mod error;
 #[cfg(feature = "figures")]
 mod figure;
+mod journal;
 mod pair;
 mod pairs;
 mod products;
@@ -13,7 +15,11 @@ pub mod simulate;
 
 pub use batch::{BatchError, BatchSettings, Panicked};
 pub use check::{FileCheck, check_file};
+pub use durable::{Ended, Progress, Watch};
 pub use error::RunError;
+pub use journal::{
+    Failure, JOURNAL, Journal, JournalError, Opened, RECORD, RunIdentity, RunRecord, inputs_sha256,
+};
 pub use pair::{
     LineInput, LineOutcome, PairInput, PairOutcome, PairSettings, fit_pair, fit_spectra, read_pair,
 };
