@@ -7,6 +7,7 @@ use super::truth_table;
 use crate::line::{Line, find};
 use crate::report::spectra::{self, SpectrumHeader};
 use crate::report::{CsvRows, ReportError, Row, Schema};
+use crate::run::products::holds_something;
 use crate::run::{RunError, check_directory};
 use crate::simulate::{SampleSettings, SampleTruth, SimulatedLine, simulate_pair};
 use serde::{Deserialize, Serialize};
@@ -91,14 +92,6 @@ pub fn write_sample(run: &SampleRun) -> Result<SampleFiles, RunError> {
         settings: run.directory.join(SETTINGS),
         spectra: run.directory.join(SPECTRA),
     })
-}
-
-fn holds_something(directory: &Path) -> Result<bool, RunError> {
-    if !directory.exists() {
-        return Ok(false);
-    }
-    let mut entries = fs::read_dir(directory).map_err(|source| file_error(directory, source))?;
-    Ok(entries.next().is_some())
 }
 
 /// A folder under a temporary name, on the file system of its later place.
