@@ -7,6 +7,7 @@
 
 pub mod columns;
 mod csv;
+pub mod cube;
 mod ecsv;
 #[cfg(feature = "figures")]
 pub mod figure;

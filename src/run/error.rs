@@ -1,6 +1,6 @@
 //! Why a run cannot be done; rendered by the command line.
 
-use super::{BatchError, JudgeError, Panicked};
+use super::{BatchError, JournalError, JudgeError, Panicked};
 use crate::derive::DeriveError;
 use crate::fit::FitError;
 use crate::line::LineError;
@@ -140,6 +140,9 @@ pub enum RunError {
     /// Many pairs that cannot be worked on.
     #[error(transparent)]
     Batch(#[from] BatchError),
+    /// A journal of finished items that cannot be used.
+    #[error(transparent)]
+    Journal(#[from] JournalError),
     /// A defect of the program.
     #[error("internal error: {0}")]
     Internal(String),
@@ -258,6 +261,7 @@ impl RunError {
             Self::Simulate(error) => error.hint(),
             Self::Report(error) => error.hint(),
             Self::Batch(error) => error.hint(),
+            Self::Journal(error) => Some(error.hint()),
             Self::Internal(_) => {
                 Some("please report this with the input that caused it".to_owned())
             }

@@ -2,9 +2,11 @@
 
 mod batch;
 mod check;
+mod durable;
 mod error;
 #[cfg(feature = "figures")]
 mod figure;
+mod journal;
 mod judge;
 mod pair;
 mod pairs;
@@ -14,7 +16,11 @@ pub mod simulate;
 
 pub use batch::{BatchError, BatchSettings, Panicked};
 pub use check::{FileCheck, check_file};
+pub use durable::{Ended, Progress, Watch};
 pub use error::RunError;
+pub use journal::{
+    Failure, JOURNAL, Journal, JournalError, Opened, RECORD, RunIdentity, RunRecord, inputs_sha256,
+};
 pub use judge::{JudgeError, Judged, VerdictSettings};
 pub use pair::{
     LineInput, LineOutcome, PairInput, PairOutcome, PairSettings, fit_pair, fit_spectra, read_pair,

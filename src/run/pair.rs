@@ -1,5 +1,6 @@
 //! One pair through every stage.
 
+use super::journal::hexadecimal;
 use super::judge::{PreparedPair, judge};
 use super::{Judged, LineSection, RunError, RunSheet, VerdictSettings};
 use crate::derive::{DeriveSettings, Derived, FitDraws, SourceProperties, Tracers};
@@ -16,7 +17,6 @@ use crate::prepare::{Expected, PrepareSettings, Prepared, prepare_pair};
 use crate::read::{ReadOptions, load, spectrum_from_bytes};
 use crate::spectrum::{Origin, Spectrum};
 use sha2::{Digest, Sha256};
-use std::fmt::Write as _;
 use std::path::Path;
 
 /// One line of a pair before it is prepared.
@@ -348,21 +348,11 @@ fn open(
         line,
         spectrum: scaled.spectrum,
         prepare,
-        sha256: Some(sha256(&content)),
+        sha256: Some(hexadecimal(&Sha256::digest(&content))),
         object: raw.object.clone(),
         origin: raw.origin,
         notes: scaled.notes,
     })
-}
-
-/// SHA-256 of a file's content, in hexadecimal digits.
-fn sha256(content: &[u8]) -> String {
-    let mut digits = String::new();
-    for byte in Sha256::digest(content) {
-        // writing to a string cannot fail
-        let _ = write!(digits, "{byte:02x}");
-    }
-    digits
 }
 
 fn stem(path: &Path) -> String {

@@ -238,6 +238,18 @@ pub fn check_directory(directory: &Path) -> Result<(), RunError> {
     }
 }
 
+/// Whether a directory is there and not empty.
+pub(super) fn holds_something(directory: &Path) -> Result<bool, RunError> {
+    if !directory.exists() {
+        return Ok(false);
+    }
+    let mut entries = std::fs::read_dir(directory).map_err(|source| RunError::File {
+        path: directory.to_owned(),
+        source,
+    })?;
+    Ok(entries.next().is_some())
+}
+
 /// Writes every product of a pair into a directory and returns their paths, in order.
 ///
 /// `sheet` as it was run, `base` what its paths are relative to. Each file is whole or absent.
