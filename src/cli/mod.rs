@@ -1,9 +1,11 @@
 //! Arguments in, messages out. Results go to stdout, everything else to stderr.
 
+mod calibrate;
 mod check;
 mod fit;
 mod lines;
 mod output;
+mod pair;
 mod simulate;
 mod source;
 mod values;
@@ -61,6 +63,7 @@ struct Arguments {
 
 #[derive(Debug, Subcommand)]
 enum Command {
+    Calibrate(Box<calibrate::CalibrateArguments>),
     Check(check::CheckArguments),
     Fit(Box<fit::FitArguments>),
     Lines(lines::LinesArguments),
@@ -83,6 +86,7 @@ pub fn main() -> ExitCode {
     };
     let output = Output::new(arguments.quiet);
     let result = match &arguments.command {
+        Command::Calibrate(calibrate) => calibrate::run(calibrate, arguments.threads, &output),
         Command::Check(check) => check::run(check),
         Command::Fit(fit) => fit::run(fit, &output),
         Command::Lines(lines) => lines::run(lines),

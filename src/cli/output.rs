@@ -1,7 +1,8 @@
 //! The two streams: data on stdout, messages on stderr. A reader that closes stdout early ends the
 //! program quietly.
 
-use std::io::{ErrorKind, Write};
+use std::io::{ErrorKind, IsTerminal, Write};
+use std::path::{Path, PathBuf};
 
 /// Where messages go, and which of them.
 #[derive(Clone, Copy, Debug)]
@@ -32,6 +33,34 @@ impl Output {
         if !self.quiet {
             Self::message(&format!("note: {text}\n"));
         }
+    }
+
+    /// Which files were written into a directory; nothing of none.
+    pub fn wrote(&self, files: &[PathBuf], directory: &Path) {
+        let names: Vec<String> = files
+            .iter()
+            .filter_map(|path| Some(path.file_name()?.to_string_lossy().into_owned()))
+            .collect();
+        if !names.is_empty() {
+            self.note(&format!(
+                "wrote {} into {}",
+                names.join(", "),
+                directory.display()
+            ));
+        }
+    }
+
+    /// How far a long run is, in place of what was said before; on terminals alone. The end is wiped out.
+    pub fn progress(&self, done: usize, total: usize) {
+        if self.quiet || !std::io::stderr().is_terminal() {
+            return;
+        }
+        let text = if done < total {
+            format!("\r{done} of {total}")
+        } else {
+            "\r\u{1b}[K".to_owned()
+        };
+        Self::message(&text);
     }
 
     /// What went wrong, and what to do about it.

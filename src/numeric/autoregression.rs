@@ -5,6 +5,8 @@
 //! data. The same coefficients give the filters that make noise white.
 
 use super::dispatch::{Arithmetic, Kernel, dispatch};
+use rand::Rng;
+use rand_distr::{Distribution, StandardNormal};
 use std::ops::Range;
 
 /// `x_i` = `sum_k` `a_k` `x_(i-k)` + `e_i` with unit variance of x; order 0 is white noise.
@@ -453,7 +455,6 @@ mod tests {
     use super::*;
     use rand::SeedableRng;
     use rand_chacha::ChaCha8Rng;
-    use rand_distr::{Distribution, StandardNormal};
 
     /// White noise convolved with a kernel, unit variance.
     fn filtered(kernel: &[f64], count: usize, generator: &mut ChaCha8Rng) -> Vec<f64> {

@@ -9,6 +9,7 @@ mod products;
 mod statistics;
 
 pub use products::{calibration_summary, calibration_table, json_row, write_calibration};
+pub(super) use products::{found_label, needed, percent};
 pub use statistics::{Level, NINE_IN_TEN, Needed, Share, Statistics};
 
 use super::{
@@ -23,7 +24,6 @@ use crate::report::{Row, Value};
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::SeedableRng;
 use std::ops::ControlFlow;
-use std::sync::Arc;
 
 /// How an observation is calibrated.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -115,9 +115,20 @@ impl Calibration {
     }
 }
 
+/// What is injected.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Kind {
+    /// The model as fitted.
+    Moving,
+    /// The same with no inward speed.
+    AtRest,
+}
+
 /// One injected pair and what was found of it.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Injection {
+    /// What it is.
+    pub kind: Kind,
     /// Noise over the observation's own.
     pub noise_factor: f64,
     /// The injected inward speed, km/s; 0 at rest.
@@ -202,10 +213,10 @@ impl Found {
 struct Mould {
     thick: LineMould,
     thin: LineMould,
-    /// The model at rest.
-    still: (Vec<f64>, Vec<f64>),
-    /// The model as fitted.
+    /// Both lines of the model as fitted, K.
     moving: (Vec<f64>, Vec<f64>),
+    /// The same at rest.
+    at_rest: (Vec<f64>, Vec<f64>),
 }
 
 /// One line of an observation.
@@ -218,7 +229,7 @@ struct LineMould {
 #[derive(Clone, Copy, Debug)]
 struct Task {
     noise_factor: f64,
-    moving: bool,
+    kind: Kind,
     /// Its number among all; its noise follows from it.
     number: u64,
 }
@@ -261,9 +272,13 @@ pub fn calibrate(
         tasks.iter().copied(),
         Workspace::new,
         |workspace, task: Task| {
-            let true_v_in_km_s = if task.moving { v_in_km_s } else { 0.0 };
+            let true_v_in_km_s = match task.kind {
+                Kind::Moving => v_in_km_s,
+                Kind::AtRest => 0.0,
+            };
             let found = injected(&mould, task, how.seed, &settings, workspace);
             Ok::<Injection, RunError>(Injection {
+                kind: task.kind,
                 noise_factor: task.noise_factor,
                 true_v_in_km_s,
                 found: found.map_err(|error| error.to_string()),
@@ -284,8 +299,7 @@ pub fn calibrate(
     if let (ControlFlow::Break(()), Some(error)) = (ended, failed) {
         return Err(error);
     }
-    let kinds: Vec<bool> = tasks.iter().map(|task| task.moving).collect();
-    let levels = statistics::levels(&injections, &kinds, v_in_km_s, signal_to_noise);
+    let levels = statistics::levels(&injections, v_in_km_s, signal_to_noise);
     let calibration = Calibration {
         source: outcome.name.clone(),
         lines: (
@@ -348,7 +362,7 @@ fn mould(
     };
     Mould {
         moving: profiles(fit),
-        still: profiles(&still),
+        at_rest: profiles(&still),
         thick: line(&outcome.thick, prepare.0),
         thin: line(&outcome.thin, prepare.1),
     }
@@ -373,11 +387,11 @@ fn tasks(how: &CalibrateSettings) -> Vec<Task> {
         } else {
             how.fewer()
         };
-        for moving in [true, false] {
+        for kind in [Kind::Moving, Kind::AtRest] {
             for _ in 0..pairs {
                 tasks.push(Task {
                     noise_factor,
-                    moving,
+                    kind,
                     number: tasks.len() as u64,
                 });
             }
@@ -396,10 +410,9 @@ fn injected(
     settings: &PairSettings,
     workspace: &mut Workspace,
 ) -> Result<Found, RunError> {
-    let (thick_k, thin_k) = if task.moving {
-        &mould.moving
-    } else {
-        &mould.still
+    let (thick_k, thin_k) = match task.kind {
+        Kind::Moving => &mould.moving,
+        Kind::AtRest => &mould.at_rest,
     };
     let line = |line: &LineMould, profile_k: &[f64], stream: u64| -> Result<LineInput, RunError> {
         let prepared = &line.outcome.prepared;

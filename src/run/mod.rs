@@ -1,6 +1,7 @@
 //! The one place that joins the stages: a run sheet in, results and products out.
 
 mod batch;
+pub mod calibrate;
 mod check;
 mod durable;
 mod error;

@@ -7,6 +7,7 @@
 //! Fonts are read only when a figure is drawn.
 
 mod axis;
+mod calibration;
 mod canvas;
 mod export;
 mod frame;
@@ -15,6 +16,8 @@ mod pair;
 mod posterior;
 mod style;
 mod text;
+
+pub use calibration::{CalibrationFigure, CalibrationPoint};
 
 use super::ReportError;
 use crate::numeric::Estimate;

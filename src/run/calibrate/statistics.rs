@@ -1,6 +1,6 @@
 //! Injections into bias, scatter, coverage and false alarms.
 
-use super::{Found, Injection};
+use super::{Found, Injection, Kind};
 use crate::numeric::robust::median;
 use statrs::distribution::{Beta, ContinuousCDF};
 
@@ -147,32 +147,24 @@ fn quantile(sorted: &[f64], share: f64) -> f64 {
     sorted[below] + part * (sorted[above] - sorted[below])
 }
 
-/// Statistics of every noise level, the lowest signal-to-noise ratio first. `moving` says which
-/// injections move.
-pub(super) fn levels(
-    injections: &[Injection],
-    moving: &[bool],
-    v_in_km_s: f64,
-    signal_to_noise: f64,
-) -> Vec<Level> {
+/// Statistics of every noise level, the lowest signal-to-noise ratio first.
+pub(super) fn levels(injections: &[Injection], v_in_km_s: f64, signal_to_noise: f64) -> Vec<Level> {
     let mut factors: Vec<f64> = injections.iter().map(|one| one.noise_factor).collect();
     factors.sort_by(|a, b| b.total_cmp(a));
     factors.dedup();
     factors
         .into_iter()
         .map(|noise_factor| {
-            let of = |kind: bool| -> Vec<&Injection> {
-                let pairs = injections.iter().zip(moving);
-                pairs
-                    .filter(|(one, moves)| one.noise_factor == noise_factor && **moves == kind)
-                    .map(|(one, _)| one)
+            let of = |kind: Kind| -> Vec<&Injection> {
+                let own = injections.iter();
+                own.filter(|one| one.noise_factor == noise_factor && one.kind == kind)
                     .collect()
             };
             Level {
                 noise_factor,
                 signal_to_noise: signal_to_noise / noise_factor,
-                moving: Statistics::of(&of(true), v_in_km_s, v_in_km_s > 0.0),
-                at_rest: Statistics::of(&of(false), 0.0, true),
+                moving: Statistics::of(&of(Kind::Moving), v_in_km_s, v_in_km_s > 0.0),
+                at_rest: Statistics::of(&of(Kind::AtRest), 0.0, true),
             }
         })
         .collect()
@@ -219,6 +211,7 @@ mod tests {
 
     fn injection(v_in_km_s: f64, half: f64, p_infall: f64) -> Injection {
         Injection {
+            kind: Kind::Moving,
             noise_factor: 1.0,
             true_v_in_km_s: 0.3,
             found: Ok(Found {
@@ -242,7 +235,7 @@ mod tests {
             found: Err("no line found".to_owned()),
             ..all[0].clone()
         });
-        let levels = levels(&all, &[true; 6], 0.3, 20.0);
+        let levels = levels(&all, 0.3, 20.0);
         let [level] = &levels[..] else {
             panic!("{levels:?}");
         };
@@ -274,7 +267,7 @@ mod tests {
     fn what_is_needed_lies_between_two_levels() {
         let level = |signal_to_noise: f64, count: usize| {
             let injections = [injection(0.3, 0.1, 0.5)];
-            let mut level = levels(&injections, &[true], 0.3, signal_to_noise).remove(0);
+            let mut level = levels(&injections, 0.3, signal_to_noise).remove(0);
             level.moving.found = Share { count, of: 10 };
             level
         };
