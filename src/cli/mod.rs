@@ -2,8 +2,11 @@
 
 mod check;
 mod fit;
+mod interrupt;
 mod lines;
 mod output;
+mod progress;
+mod rank;
 mod simulate;
 mod source;
 mod values;
@@ -22,7 +25,12 @@ pub enum Exit {
     SomeUnusable,
     /// Bad usage, input or setting.
     Unusable,
+    /// Interrupted; what was done is kept.
+    Interrupted,
 }
+
+/// Exit code of an interrupted run: 128 and the number of SIGINT.
+const INTERRUPTED: u8 = 130;
 
 impl From<Exit> for ExitCode {
     fn from(exit: Exit) -> Self {
@@ -30,6 +38,7 @@ impl From<Exit> for ExitCode {
             Exit::Done => 0,
             Exit::SomeUnusable => 1,
             Exit::Unusable => 2,
+            Exit::Interrupted => INTERRUPTED,
         })
     }
 }
@@ -64,6 +73,7 @@ enum Command {
     Check(check::CheckArguments),
     Fit(Box<fit::FitArguments>),
     Lines(lines::LinesArguments),
+    Rank(rank::RankArguments),
     Simulate(simulate::SimulateArgs),
 }
 
@@ -86,6 +96,7 @@ pub fn main() -> ExitCode {
         Command::Check(check) => check::run(check),
         Command::Fit(fit) => fit::run(fit, &output),
         Command::Lines(lines) => lines::run(lines),
+        Command::Rank(sample) => rank::run(sample, arguments.threads, &output),
         Command::Simulate(simulate) => simulate::run(simulate, arguments.threads, &output),
     };
     match result {

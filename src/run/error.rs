@@ -52,6 +52,18 @@ pub enum RunError {
         /// What to do.
         hint: Option<String>,
     },
+    /// A sample table that is none.
+    #[error("{}:{line}: {message}", path.display())]
+    Sample {
+        /// The table.
+        path: PathBuf,
+        /// Line, from 1.
+        line: u64,
+        /// What was found and expected.
+        message: String,
+        /// What to do.
+        hint: Option<String>,
+    },
     /// Something in a run sheet that cannot be used, or is missing there.
     #[error("{}: {error}", path.display())]
     InSheet {
@@ -240,7 +252,9 @@ impl RunError {
                 Some("give --out another name: what is there is left as it is".to_owned())
             }
             Self::InSheet { error, .. } => error.hint(),
-            Self::Sheet { hint, .. } | Self::Setting { hint, .. } => hint.clone(),
+            Self::Sheet { hint, .. } | Self::Sample { hint, .. } | Self::Setting { hint, .. } => {
+                hint.clone()
+            }
             Self::NoFile { .. } => {
                 Some("inrush fit --help shows both ways to give a pair".to_owned())
             }

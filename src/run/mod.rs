@@ -10,6 +10,7 @@ mod journal;
 mod pair;
 mod pairs;
 mod products;
+pub mod rank;
 mod sheet;
 pub mod simulate;
 
@@ -18,7 +19,8 @@ pub use check::{FileCheck, check_file};
 pub use durable::{Ended, Progress, Watch};
 pub use error::RunError;
 pub use journal::{
-    Failure, JOURNAL, Journal, JournalError, Opened, RECORD, RunIdentity, RunRecord, inputs_sha256,
+    Failure, JOURNAL, Journal, JournalError, JournalPlace, Kept, Opened, RECORD, RunIdentity,
+    RunRecord, inputs_sha256,
 };
 pub use pair::{
     LineInput, LineOutcome, PairInput, PairOutcome, PairSettings, fit_pair, fit_spectra, read_pair,

@@ -53,7 +53,8 @@ fn run(journal: &mut Results, threads: usize, stop_at: u64) -> (Ended, u64) {
 
 /// What is in a journal, as text.
 fn content(journal: &Results) -> String {
-    let results: Vec<_> = (journal.results().unwrap()).map(Result::unwrap).collect();
+    let results = journal.results().unwrap().map(Result::unwrap);
+    let results: Vec<_> = results.map(|(_, result)| result).collect();
     format!("{results:?}")
 }
 
@@ -72,6 +73,20 @@ fn every_result_comes_back_bit_for_bit_and_failures_with_their_reason() {
     assert!(text.contains("internal error: eleven"));
     assert!(text.contains(&format!("Ok((299, {:?}))", 299_f64.sin())));
     assert!(text.contains("Ok((12, NaN))"));
+}
+
+#[test]
+fn any_result_is_read_again_at_its_place() {
+    let directory = tempfile::tempdir().unwrap();
+    let mut journal = open(directory.path(), false);
+    run(&mut journal, 1, u64::MAX);
+    let all: Vec<_> = (journal.results().unwrap()).map(Result::unwrap).collect();
+    for (place, result) in all.iter().rev() {
+        assert_eq!(
+            format!("{:?}", journal.at(*place).unwrap()),
+            format!("{result:?}")
+        );
+    }
 }
 
 #[test]
@@ -105,7 +120,10 @@ fn a_stopped_batch_goes_on_where_it_stopped_for_any_number_of_threads() {
 #[test]
 fn a_torn_end_is_cut_off_wherever_it_is_torn() {
     let (expected, bytes) = whole();
-    for length in (0..bytes.len()).step_by(97).chain(bytes.len() - 30..bytes.len()) {
+    for length in (0..bytes.len())
+        .step_by(97)
+        .chain(bytes.len() - 30..bytes.len())
+    {
         let directory = tempfile::tempdir().unwrap();
         let mut torn = bytes[..length].to_vec();
         if length % 2 == 0 {
@@ -152,8 +170,14 @@ fn another_run_is_refused_with_its_difference() {
     for (other, expected) in [
         (identity("other"), "other settings"),
         (changed(|run| run.command = "map".into()), "another command"),
-        (changed(|run| run.version = "0.0.0".into()), "another version"),
-        (changed(|run| run.inputs_sha256 = "x".into()), "other inputs"),
+        (
+            changed(|run| run.version = "0.0.0".into()),
+            "another version",
+        ),
+        (
+            changed(|run| run.inputs_sha256 = "x".into()),
+            "other inputs",
+        ),
         (changed(|run| run.items = 1), "another number of items"),
     ] {
         let error = Results::open(directory.path(), other, true).unwrap_err();
@@ -163,7 +187,11 @@ fn another_run_is_refused_with_its_difference() {
     let error = Results::open(directory.path(), base, false).unwrap_err();
     let found = matches!(
         error,
-        RunError::Journal(JournalError::Unfinished { done: 20.., items: ITEMS, .. })
+        RunError::Journal(JournalError::Unfinished {
+            done: 20..,
+            items: ITEMS,
+            ..
+        })
     );
     assert!(found, "{error}");
     assert!(error.hint().unwrap().contains("--resume"));
@@ -174,7 +202,10 @@ fn a_journal_in_use_is_refused() {
     let directory = tempfile::tempdir().unwrap();
     let _held = open(directory.path(), false);
     let error = Results::open(directory.path(), identity("settings"), true).unwrap_err();
-    assert!(matches!(error, RunError::Journal(JournalError::InUse { .. })));
+    assert!(matches!(
+        error,
+        RunError::Journal(JournalError::InUse { .. })
+    ));
 }
 
 #[test]
@@ -184,7 +215,10 @@ fn a_finished_run_leaves_its_record_and_is_made_again_or_said_to_be_there() {
     run(&mut journal, 2, u64::MAX);
     let record = journal.finish(2).unwrap();
     assert!(!directory.path().join(JOURNAL).exists());
-    assert_eq!(RunRecord::read(directory.path()).unwrap(), Some(record.clone()));
+    assert_eq!(
+        RunRecord::read(directory.path()).unwrap(),
+        Some(record.clone())
+    );
     match Results::open(directory.path(), identity("settings"), true).unwrap() {
         Opened::Finished(found) => assert_eq!(found, record),
         Opened::Journal(_) => panic!("begun again"),
@@ -203,6 +237,13 @@ fn foreign_files_are_left_alone() {
     let path = directory.path().join(JOURNAL);
     std::fs::write(&path, "a diary of somebody else, long enough").unwrap();
     let error = Results::open(directory.path(), identity("settings"), true).unwrap_err();
-    assert!(error.to_string().contains("another kind of file"), "{error}");
-    assert!(std::fs::read_to_string(path).unwrap().starts_with("a diary"));
+    assert!(
+        error.to_string().contains("another kind of file"),
+        "{error}"
+    );
+    assert!(
+        std::fs::read_to_string(path)
+            .unwrap()
+            .starts_with("a diary")
+    );
 }
