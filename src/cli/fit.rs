@@ -142,9 +142,12 @@ pub struct FitArguments {
     /// Bounds of a parameter.
     #[arg(long, value_name = "NAME=LOW,HIGH", value_parser = named_range, help_heading = "Fitting")]
     bounds: Vec<(String, [f64; 2])>,
-    /// Stop after least squares.
+    /// Stop after least squares: no posterior, no probabilities.
     #[arg(long, help_heading = "Fitting")]
     formal: bool,
+    /// Effective draws of a posterior.
+    #[arg(long, value_name = "N", help_heading = "Fitting")]
+    posterior_draws: Option<usize>,
 
     #[command(flatten)]
     source: SourceArguments,
@@ -308,6 +311,10 @@ impl FitArguments {
         set(&mut sheet.fit.isotope_ratio, self.isotope_ratio);
         sheet.fit.given.extend(self.given.iter().cloned());
         sheet.fit.bounds.extend(self.bounds.iter().cloned());
+        sheet.fit.formal |= self.formal;
+        if let Some(draws) = self.posterior_draws {
+            sheet.fit.posterior_draws = draws;
+        }
         sheet.output.figures &= !self.no_figures;
         if let Some(seed) = self.seed {
             sheet.seed = seed;

@@ -145,12 +145,12 @@ impl RankArguments {
         if let Some(seed) = self.seed {
             sheet.seed = seed;
         }
+        sheet.fit.formal |= self.formal;
         sheet.output.figures &= !self.no_figures;
         Ok(RankRun {
             table: self.table.clone(),
             directory: self.out.clone(),
             sheet,
-            formal: self.formal,
             top: self.top,
             latex: self.latex,
             resume: self.resume,

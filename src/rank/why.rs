@@ -63,7 +63,7 @@ fn surpassed(finding: &Finding, quantity: Quantity) -> String {
             format!("no mass rate without mass and radius - {}", speed(value))
         }
         (_, Some(value)) => speed(value),
-        _ => "no inward speed".to_owned(),
+        _ => "the lines hardly constrain the speed".to_owned(),
     }
 }
 

@@ -25,7 +25,7 @@ pub use self::csv::{CsvRows, write_csv};
 pub use ecsv::write_ecsv;
 pub use fits_table::write_fits;
 pub use json::{write_json, write_json_rows};
-pub use rounding::{rounded, rounded_interval, rounded_plain};
+pub use rounding::{rounded, rounded_interval, rounded_plain, rounded_range};
 pub use summary::summary;
 pub use table::{Column, Kind, Row, Schema, Table, Value};
 pub use table_files::TableFiles;

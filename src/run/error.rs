@@ -1,6 +1,6 @@
 //! Why a run cannot be done; rendered by the command line.
 
-use super::{BatchError, JournalError, Panicked};
+use super::{BatchError, JournalError, JudgeError, Panicked};
 use crate::derive::DeriveError;
 use crate::fit::FitError;
 use crate::line::LineError;
@@ -137,6 +137,9 @@ pub enum RunError {
     /// A pair that cannot be fitted.
     #[error(transparent)]
     Fit(#[from] FitError),
+    /// A pair that cannot be judged.
+    #[error(transparent)]
+    Judge(#[from] JudgeError),
     /// A property of the source that no source has, or a setting of what is derived from it.
     #[error(transparent)]
     Derive(#[from] DeriveError),
@@ -267,6 +270,7 @@ impl RunError {
             Self::Scale(error) => error.hint(),
             Self::Prepare { error, .. } => error.hint(),
             Self::Pair { error, .. } | Self::Fit(error) => error.hint(),
+            Self::Judge(error) => error.hint(),
             Self::Derive(error) => error.hint(),
             Self::Simulate(error) => error.hint(),
             Self::Report(error) => error.hint(),

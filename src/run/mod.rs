@@ -7,6 +7,7 @@ mod error;
 #[cfg(feature = "figures")]
 mod figure;
 mod journal;
+mod judge;
 mod pair;
 mod pairs;
 mod products;
@@ -22,6 +23,7 @@ pub use journal::{
     Failure, JOURNAL, Journal, JournalError, JournalPlace, Kept, Opened, RECORD, RunIdentity,
     RunRecord, inputs_sha256,
 };
+pub use judge::{JudgeError, Judged, VerdictSettings};
 pub use pair::{
     LineInput, LineOutcome, PairInput, PairOutcome, PairSettings, fit_pair, fit_spectra, read_pair,
 };

@@ -4,8 +4,9 @@
 //! written out, goes beside the results: running it again gives the same bytes.
 
 use super::error::line_at;
-use super::{PairSettings, RunError};
+use super::{PairSettings, RunError, VerdictSettings};
 use crate::derive::{DeriveSettings, Input, SourceProperties};
+use crate::fit::posterior::PosteriorSettings;
 use crate::fit::{FitRange, FitSettings};
 use crate::line::{Component, Line, LineError};
 use crate::model::Model;
@@ -326,6 +327,10 @@ pub struct FitSection {
     /// Bounds of parameters, `[low, high]`.
     #[serde(skip_serializing_if = "BTreeMap::is_empty")]
     pub bounds: BTreeMap<String, [f64; 2]>,
+    /// Stops after least squares: no posterior, no probabilities.
+    pub formal: bool,
+    /// Effective draws at which the sampling of a posterior ends, and draws that are kept of it.
+    pub posterior_draws: usize,
 }
 
 impl Default for FitSection {
@@ -343,6 +348,8 @@ impl Default for FitSection {
             isotope_ratio: None,
             given: BTreeMap::new(),
             bounds: BTreeMap::new(),
+            formal: false,
+            posterior_draws: PosteriorSettings::default().draws,
         }
     }
 }
@@ -430,16 +437,46 @@ impl RunSheet {
         toml::to_string(self).map_err(|error| RunError::Internal(error.to_string()))
     }
 
-    /// How the pair is fitted, and what is derived.
+    /// How the pair is fitted and judged, and what is derived.
     ///
     /// # Errors
     ///
-    /// As [`RunSheet::fit_settings`] and [`RunSheet::derive_settings`].
+    /// As [`RunSheet::fit_settings`], [`RunSheet::verdict_settings`] and
+    /// [`RunSheet::derive_settings`].
     pub fn pair_settings(&self) -> Result<PairSettings, RunError> {
         Ok(PairSettings {
             fit: self.fit_settings()?,
+            verdict: self.verdict_settings()?,
             derive: self.derive_settings()?,
         })
+    }
+
+    /// How the pair is judged; `None` where the run stops after least squares.
+    ///
+    /// # Errors
+    ///
+    /// [`RunError::Setting`] for too few or too many draws.
+    pub fn verdict_settings(&self) -> Result<Option<VerdictSettings>, RunError> {
+        let draws = self.fit.posterior_draws;
+        let (least, most) = POSTERIOR_DRAWS;
+        if !(least..=most).contains(&draws) {
+            return Err(RunError::setting(
+                "fit.posterior_draws",
+                &draws.to_string(),
+                &format!("{least} to {most}"),
+            )
+            .hinted("leave it out for the default"));
+        }
+        if self.fit.formal {
+            return Ok(None);
+        }
+        Ok(Some(VerdictSettings {
+            posterior: PosteriorSettings {
+                seed: self.seed,
+                ..PosteriorSettings::default().with_draws(draws)
+            },
+            ..VerdictSettings::default()
+        }))
     }
 
     /// How the pair is fitted.
@@ -665,6 +702,9 @@ impl LineSection {
         }
     }
 }
+
+/// Fewest and most draws of a posterior.
+const POSTERIOR_DRAWS: (usize, usize) = (100, 100_000);
 
 /// A window of two velocities in order.
 fn window(key: &str, [low_km_s, high_km_s]: [f64; 2]) -> Result<Window, RunError> {

@@ -68,6 +68,18 @@ impl Default for PosteriorSettings {
     }
 }
 
+impl PosteriorSettings {
+    /// The same with as many effective draws, and as many that are kept.
+    #[must_use]
+    pub fn with_draws(mut self, draws: usize) -> Self {
+        let more = draws as f64 / self.draws as f64;
+        self.sampling.effective *= more;
+        self.sampling.round *= draws.div_ceil(self.draws);
+        self.draws = draws;
+        self
+    }
+}
+
 /// Why there is no posterior.
 #[derive(Clone, Debug, PartialEq, thiserror::Error)]
 pub enum PosteriorError {

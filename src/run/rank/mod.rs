@@ -35,8 +35,6 @@ pub struct RankRun {
     pub directory: PathBuf,
     /// What holds for every source: a run sheet without lines and files.
     pub sheet: RunSheet,
-    /// Stops after least squares: no posteriors, no hypotheses.
-    pub formal: bool,
     /// How many first places `p_top` is about.
     pub top: usize,
     /// Whether the tables of a paper are written.
@@ -90,7 +88,7 @@ pub fn rank(run: &RankRun, batch: &BatchSettings, watch: Watch<'_>) -> Result<Ra
     if run.top == 0 {
         return Err(RunError::setting("top", "0", "at least 1"));
     }
-    let settings = format!("formal = {}\n{}", run.formal, run.sheet.to_toml()?);
+    let settings = run.sheet.to_toml()?;
     let files = table
         .rows
         .iter()
@@ -115,7 +113,7 @@ pub fn rank(run: &RankRun, batch: &BatchSettings, watch: Watch<'_>) -> Result<Ra
             let (source, seed) = (sheet.source.properties()?, sheet.seed);
             let base = base.to_owned();
             let outcome = PairJob::Sheet { sheet, base }.fit(workspace)?;
-            PairRecord::of(&outcome, &source, seed, run.formal)
+            PairRecord::of(&outcome, &source, seed)
         },
         watch,
     )?;

@@ -1,6 +1,6 @@
 //! The products of a ranking: tables, statistics, figures, the sheet that repeats it.
 
-use super::record::set_finding;
+use super::record::set_combined;
 use super::{Member, Ordered, PairRecord, RankRun};
 use crate::rank::why;
 use crate::report::{
@@ -66,7 +66,7 @@ fn meta(run: &RankRun) -> Vec<(String, Value)> {
         ("top".to_owned(), number(run.top)),
         (
             "errors".to_owned(),
-            Value::from(if run.formal {
+            Value::from(if run.sheet.fit.formal {
                 "formal, from the curvature of chi2 at its minimum"
             } else {
                 "speeds and what follows from them: from the posterior; other fitted parameters: formal"
@@ -87,13 +87,7 @@ impl Ordered<'_> {
         let mut results = columns::results().row_of(self.record(journal, member.leading)?.cells)?;
         let finding = &member.source.finding;
         if finding.disagreement.is_some() {
-            set_finding(&mut results, finding, Some("several line pairs"))?;
-            // worked out from the leading pair's own speed
-            for column in ["v_in_over_v_alfven"] {
-                for suffix in ["", "_lo68", "_hi68", "_lo95", "_hi95"] {
-                    results.set(&format!("{column}{suffix}"), Value::Empty)?;
-                }
-            }
+            set_combined(&mut results, finding)?;
         }
         let mut row = ranking::with_results(schema, &results)?;
         row.set("rank", i64::try_from(place).unwrap_or(i64::MAX))?;

@@ -2,13 +2,14 @@
 
 use super::sketch::Sketch;
 use crate::derive::{FitDraws, Quantity, Sampled, SourceProperties, Tracers};
-use crate::fit::hypotheses::{Hypothesis, Odds, Verdict, verdict};
-use crate::fit::posterior::{Family, PairPosterior, PosteriorSettings, pair_posterior};
+use crate::fit::averaged::Averaged;
+use crate::fit::hypotheses::{Hypothesis, Speed};
 use crate::measure::ProfileClass;
 use crate::numeric::Estimate;
+use crate::numeric::robust::median;
 use crate::rank::{Drawn, Finding, Profile};
 use crate::report::{Row, Value};
-use crate::run::{PairOutcome, RunError, pair_row};
+use crate::run::{Judged, PairOutcome, RunError, pair_row};
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::SeedableRng;
 use rand_distr::{Distribution, StandardNormal};
@@ -36,49 +37,21 @@ pub const ROWS: usize = 400;
 const FORMAL_STREAMS: u64 = 0x7261_6e6b_0000_0000;
 
 impl PairRecord {
-    /// Takes what ranking needs of a pair. `formal` leaves posteriors and hypotheses out.
+    /// Takes what ranking needs of a pair; `source` and `seed` are those that it was derived with.
+    ///
+    /// # Errors
+    ///
+    /// [`RunError`]: a defect, the pair has been through the whole chain.
     pub fn of(
         outcome: &PairOutcome,
         source: &SourceProperties,
         seed: u64,
-        formal: bool,
     ) -> Result<Self, RunError> {
-        let judged = if formal { None } else { judged(outcome, seed) };
-        let speeds = match &judged {
-            Some((posterior, verdict)) => Some(Speeds::of_posterior(posterior, verdict)),
-            None => Speeds::formal(outcome, seed),
-        };
-        let sampled = speeds
-            .as_ref()
-            .map(|speeds| speeds.sampled(outcome, source, seed))
-            .transpose()?;
-        let drawn = |quantity| sampled.as_ref().and_then(|sampled| kept(sampled, quantity));
-        let measured = outcome.measures.profile;
-        let finding = Finding {
-            probabilities: judged.as_ref().map(|(_, verdict)| {
-                Hypothesis::ALL.map(|hypothesis| verdict.probability(hypothesis))
-            }),
-            trusted: judged.as_ref().is_none_or(|(_, verdict)| verdict.trusted),
-            detected: measured != ProfileClass::Undetected,
-            rate_msun_yr: drawn(Quantity::MassRate),
-            v_ff_km_s: drawn(Quantity::FreeFallSpeed),
-            mass_msun: drawn(Quantity::Mass),
-            v_in_km_s: speeds.as_ref().map(|speeds| speeds.v_in.clone()),
-            sigma_km_s: speeds.map(|speeds| speeds.sigma),
-            line_pairs: 1,
-            disagreement: None,
-        };
-        let mut row = pair_row(outcome)?;
-        set_finding(
-            &mut row,
-            &finding,
-            if formal { None } else { Some("posterior") },
-        )?;
         let lines = [&outcome.thick, &outcome.thin];
         Ok(Self {
-            cells: row.values().to_vec(),
-            finding,
-            profile: match measured {
+            cells: pair_row(outcome)?.values().to_vec(),
+            finding: finding(outcome, source, seed)?,
+            profile: match outcome.measures.profile {
                 ProfileClass::Blue => Profile::Blue,
                 ProfileClass::Red => Profile::Red,
                 ProfileClass::Neither => Profile::Neither,
@@ -92,22 +65,38 @@ impl PairRecord {
     }
 }
 
-/// Posteriors and verdict; `None` where the pair allows none, such as too few channels.
-fn judged(outcome: &PairOutcome, seed: u64) -> Option<(PairPosterior, Verdict)> {
-    let settings = PosteriorSettings {
-        seed,
-        ..PosteriorSettings::default()
+fn finding(
+    outcome: &PairOutcome,
+    source: &SourceProperties,
+    seed: u64,
+) -> Result<Finding, RunError> {
+    let judged = outcome.judged.as_ref();
+    let speeds = match judged.and_then(Judged::adopted) {
+        Some(averaged) => {
+            let constrained = judged.is_some_and(|judged| judged.speed != Speed::Unconstrained);
+            constrained.then(|| Speeds::of(&averaged)).flatten()
+        }
+        None => Speeds::formal(outcome, seed),
     };
-    let posterior = pair_posterior(
-        &outcome.thick.prepared,
-        &outcome.thin.prepared,
-        (&outcome.thick.line, &outcome.thin.line),
-        outcome.thin_fit.line.as_ref(),
-        &settings,
-    )
-    .ok()?;
-    let verdict = verdict(&posterior, &Odds::default()).ok()?;
-    Some((posterior, verdict))
+    let sampled = speeds
+        .as_ref()
+        .map(|speeds| speeds.sampled(outcome, source, seed))
+        .transpose()?;
+    let drawn = |quantity| sampled.as_ref().and_then(|sampled| kept(sampled, quantity));
+    let verdict = judged.map(|judged| &judged.verdict);
+    Ok(Finding {
+        probabilities: verdict
+            .map(|verdict| Hypothesis::ALL.map(|hypothesis| verdict.probability(hypothesis))),
+        trusted: verdict.is_none_or(|verdict| verdict.trusted),
+        detected: outcome.measures.profile != ProfileClass::Undetected,
+        rate_msun_yr: drawn(Quantity::MassRate),
+        v_ff_km_s: drawn(Quantity::FreeFallSpeed),
+        mass_msun: drawn(Quantity::Mass),
+        v_in_km_s: speeds.as_ref().map(|speeds| speeds.v_in.clone()),
+        sigma_km_s: speeds.map(|speeds| speeds.sigma),
+        line_pairs: 1,
+        disagreement: None,
+    })
 }
 
 /// Joint draws of inward speed and dispersion.
@@ -117,36 +106,18 @@ struct Speeds {
 }
 
 impl Speeds {
-    /// Draws of the moving models, each as many as its share says.
-    fn of_posterior(posterior: &PairPosterior, verdict: &Verdict) -> Self {
-        let (mut v_in, mut sigma) = (Vec::with_capacity(ROWS), Vec::with_capacity(ROWS));
-        let mut shares = 0.0;
-        for (model, share) in &verdict.shares {
-            let Some(family) = posterior.of(Family::Moving(*model)) else {
-                continue;
-            };
-            shares += share;
-            #[allow(
-                clippy::cast_possible_truncation,
-                clippy::cast_sign_loss,
-                reason = "a share of the rows"
-            )]
-            let until = (shares * ROWS as f64).round() as usize;
-            let rows = until.saturating_sub(v_in.len()).min(ROWS - v_in.len());
-            let at = |name: &str| family.names.iter().position(|known| *known == name);
-            let (Some(speed), Some(dispersion)) = (at("v_in_km_s"), at("sigma_km_s")) else {
-                continue;
-            };
-            for row in 0..rows {
-                let draw = &family.draws[row * family.draws.len() / rows];
-                v_in.push(draw[speed]);
-                sigma.push(draw[dispersion]);
-            }
-        }
-        Self {
-            v_in: drawn(verdict.v_in_km_s.median, &v_in),
-            sigma: drawn(middle(&sigma), &sigma),
-        }
+    /// Draws of the posterior averaged over models.
+    fn of(averaged: &Averaged<'_>) -> Option<Self> {
+        let draws = |name: &str| -> Option<Drawn> {
+            let rows = averaged.rows(ROWS).map(|row| row.get(name));
+            let draws: Vec<f64> = rows.collect::<Option<_>>()?;
+            let value = averaged.marginal(name).map(|one| one.median);
+            Some(drawn(value.unwrap_or_else(|| median(&draws)), &draws))
+        };
+        Some(Self {
+            v_in: draws("v_in_km_s")?,
+            sigma: draws("sigma_km_s")?,
+        })
     }
 
     /// Normal draws about the adopted model's speed and dispersion.
@@ -155,11 +126,9 @@ impl Speeds {
         let normal = |estimate: Estimate, stream: u64| {
             let mut generator = ChaCha8Rng::seed_from_u64(seed);
             generator.set_stream(FORMAL_STREAMS + stream);
-            let draws: Vec<f64> = (0..ROWS)
-                .map(|_| {
-                    let deviate: f64 = StandardNormal.sample(&mut generator);
-                    estimate.value + estimate.err * deviate
-                })
+            let deviates = StandardNormal.sample_iter(generator).take(ROWS);
+            let draws: Vec<f64> = deviates
+                .map(|deviate: f64| estimate.value + estimate.err * deviate)
                 .collect();
             drawn(estimate.value, &draws)
         };
@@ -176,7 +145,7 @@ impl Speeds {
         seed: u64,
     ) -> Result<Sampled, RunError> {
         let column = |drawn: &Drawn| drawn.draws.iter().map(|draw| f64::from(*draw)).collect();
-        let draws = FitDraws::new(self.v_in.draws.len())
+        let draws = FitDraws::new(ROWS)
             .with("v_in_km_s", self.v_in.value, column(&self.v_in))?
             .with("sigma_km_s", self.sigma.value, column(&self.sigma))?;
         let tracers = Tracers {
@@ -186,10 +155,6 @@ impl Speeds {
         };
         Ok(crate::derive::sample(source, &draws, &tracers, seed)?)
     }
-}
-
-fn middle(values: &[f64]) -> f64 {
-    crate::numeric::samples::median(values, 0.5).map_or(f64::NAN, |(median, _)| median)
 }
 
 #[allow(
@@ -211,29 +176,29 @@ fn kept(sampled: &Sampled, quantity: Quantity) -> Option<Drawn> {
         .then(|| drawn(quantity.value, &quantity.draws))
 }
 
-/// Puts a finding's speed, and what is proportional to it, into a row of results.
-pub fn set_finding(row: &mut Row, finding: &Finding, model: Option<&str>) -> Result<(), RunError> {
+/// Puts what several line pairs say together into a row of results: probabilities, the speed, and what
+/// is proportional to it.
+pub fn set_combined(row: &mut Row, finding: &Finding) -> Result<(), RunError> {
     for hypothesis in Hypothesis::ALL {
         let column = format!("p_{}", hypothesis.name());
         let probability = finding.probabilities.map(|all| all[hypothesis as usize]);
         row.set(&column, probability)?;
     }
-    let Some(speed) = &finding.v_in_km_s else {
-        return Ok(());
-    };
-    set_drawn(row, "v_in_km_s", Some(speed))?;
-    row.set(
-        "v_in_km_s_err",
-        speed.moments().map(|(_, deviation)| deviation),
-    )?;
-    if let Some(model) = model {
-        row.set("v_in_model", model)?;
+    for column in ["v_in_systematic_km_s", "v_in_limit_km_s"] {
+        row.set(column, Value::Empty)?;
     }
+    // Worked out from the speed of one pair; the Alfven speed's draws are not kept.
+    set_drawn(row, "v_in_over_v_alfven", None)?;
+    let speed = finding.v_in_km_s.as_ref();
+    set_drawn(row, "v_in_km_s", speed)?;
+    let moments = speed.and_then(Drawn::moments);
+    row.set("v_in_km_s_err", moments.map(|(_, deviation)| deviation))?;
+    row.set("v_in_model", "several line pairs")?;
     let rate = finding.rate_msun_yr.as_ref();
     set_drawn(row, "mass_rate_msun_yr", rate)?;
     let doubling = ratio(finding.mass_msun.as_ref(), rate);
     set_drawn(row, "doubling_time_yr", doubling.as_ref())?;
-    let of_free_fall = ratio(Some(speed), finding.v_ff_km_s.as_ref());
+    let of_free_fall = ratio(speed, finding.v_ff_km_s.as_ref());
     set_drawn(row, "v_in_over_v_ff", of_free_fall.as_ref())
 }
 
