@@ -1,6 +1,7 @@
 //! Arguments in, messages out. Results go to stdout, everything else to stderr.
 
 mod check;
+mod cite;
 mod fit;
 mod interrupt;
 mod lines;
@@ -71,6 +72,7 @@ struct Arguments {
 #[derive(Debug, Subcommand)]
 enum Command {
     Check(check::CheckArguments),
+    Cite(cite::CiteArguments),
     Fit(Box<fit::FitArguments>),
     Lines(lines::LinesArguments),
     Rank(rank::RankArguments),
@@ -94,6 +96,7 @@ pub fn main() -> ExitCode {
     let output = Output::new(arguments.quiet);
     let result = match &arguments.command {
         Command::Check(check) => check::run(check),
+        Command::Cite(cite) => cite::run(cite),
         Command::Fit(fit) => fit::run(fit, &output),
         Command::Lines(lines) => lines::run(lines),
         Command::Rank(sample) => rank::run(sample, arguments.threads, &output),

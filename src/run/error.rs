@@ -52,6 +52,14 @@ pub enum RunError {
         /// What to do.
         hint: Option<String>,
     },
+    /// A directory without results.
+    #[error("{}: no table of results, expected one of {expected}", path.display())]
+    NoResults {
+        /// The directory.
+        path: PathBuf,
+        /// Names of tables.
+        expected: String,
+    },
     /// A sample table that is none.
     #[error("{}:{line}: {message}", path.display())]
     Sample {
@@ -247,6 +255,9 @@ impl RunError {
         match self {
             Self::File { .. } | Self::NoSheet { .. } => {
                 Some("check the path and its permissions".to_owned())
+            }
+            Self::NoResults { .. } => {
+                Some("give what was --out of a run, or columns with --for".to_owned())
             }
             Self::NotADirectory { .. } => {
                 Some("give --out another name, or move the file away".to_owned())

@@ -2,6 +2,7 @@
 
 mod batch;
 mod check;
+mod cite;
 mod durable;
 mod error;
 #[cfg(feature = "figures")]
@@ -17,6 +18,7 @@ pub mod simulate;
 
 pub use batch::{BatchError, BatchSettings, Panicked};
 pub use check::{FileCheck, check_file};
+pub use cite::{cite_all, cite_columns, cite_results};
 pub use durable::{Ended, Progress, Watch};
 pub use error::RunError;
 pub use journal::{

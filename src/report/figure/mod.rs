@@ -11,8 +11,16 @@ mod canvas;
 mod export;
 mod layout;
 mod pair;
+mod plot;
 mod style;
+mod survey;
 mod text;
+
+pub use plot::Interval;
+pub use survey::{
+    DistributionFigure, ProfilePanel, ProfileSheet, RankBar, RankFigure, ScatterFigure,
+    ScatterPoint,
+};
 
 use super::ReportError;
 use crate::numeric::Estimate;

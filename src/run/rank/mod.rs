@@ -3,6 +3,8 @@
 //! What is known of a source while others are worked on is on disk, in the journal; what the order needs of
 //! it, some 7 kB, is in memory. Rows of the ranking are read again from the journal as they are written.
 
+#[cfg(feature = "figures")]
+mod figures;
 mod products;
 mod record;
 mod sketch;
@@ -121,7 +123,7 @@ pub fn rank(run: &RankRun, batch: &BatchSettings, watch: Watch<'_>) -> Result<Ra
         return Ok(RankEnd::Stopped(progress));
     }
     let ordered = Ordered::of(&table, &journal, run)?;
-    let files = products::write(&ordered, &journal, run)?;
+    let files = products::write(&ordered, &journal, run, batch)?;
     let unusable = ordered.failures.len() as u64;
     let ranking = Ranking {
         text: ordered.text(&journal)?,
@@ -161,6 +163,7 @@ struct Ordered<'a> {
     /// Rows without a result, in the order of the table.
     failures: Vec<(usize, Failure)>,
     quantity: Quantity,
+    facts: Vec<SourceFacts>,
     statistics: Sample,
     notes: Vec<(String, usize)>,
     top: usize,
@@ -210,6 +213,7 @@ impl<'a> Ordered<'a> {
             members,
             failures,
             quantity,
+            facts,
             statistics,
             notes: notes.into_iter().collect(),
             top: run.top,

@@ -4,9 +4,10 @@ use super::record::set_combined;
 use super::{Member, Ordered, PairRecord, RankRun};
 use crate::rank::why;
 use crate::report::{
-    self, ReportError, Row, Schema, TableFiles, Value, columns, ranking, sample_statistics,
+    self, PaperTable, ReportError, Row, Schema, TableFiles, Value, columns, ranking,
+    sample_statistics,
 };
-use crate::run::{Failure, Journal, RunError};
+use crate::run::{BatchSettings, Failure, Journal, RunError};
 use std::path::PathBuf;
 
 /// What a ranking wrote, in order.
@@ -21,9 +22,17 @@ pub(super) fn write(
     ordered: &Ordered<'_>,
     journal: &Journal<PairRecord>,
     run: &RankRun,
+    batch: &BatchSettings,
 ) -> Result<RankFiles, RunError> {
     let mut files = RankFiles::default();
-    files.paths.extend(write_ranking(ordered, journal, run)?);
+    let schema = ranking::schema(run.top)?;
+    let mut paper = if run.latex {
+        Some(PaperTable::new(&schema, run.sheet.fit.formal)?)
+    } else {
+        None
+    };
+    let written = write_ranking(ordered, journal, run, &schema, paper.as_mut())?;
+    files.paths.extend(written);
     if ordered.members.iter().any(|member| member.rows.len() > 1) {
         files.paths.extend(write_pairs(ordered, journal, run)?);
     }
@@ -46,6 +55,15 @@ pub(super) fn write(
     write("statistics.txt", &|writer| {
         Ok(writer.write_all(text.as_bytes())?)
     })?;
+    if let Some(paper) = &paper {
+        let latex = paper.latex();
+        let mut twin = paper.twin().clone();
+        twin.meta = meta(run);
+        write("paper.tex", &|writer| {
+            Ok(writer.write_all(latex.as_bytes())?)
+        })?;
+        write("paper.ecsv", &|writer| report::write_ecsv(&twin, writer))?;
+    }
     let sheet = run.sheet.to_toml()?;
     let sheet =
         format!("# What held for every source: inrush rank TABLE --sheet run.toml\n\n{sheet}");
@@ -53,6 +71,13 @@ pub(super) fn write(
         "run.toml",
         &|writer| Ok(writer.write_all(sheet.as_bytes())?),
     )?;
+    #[cfg(feature = "figures")]
+    if run.sheet.output.figures {
+        let figures = super::figures::write(ordered, journal, run, batch)?;
+        files.paths.extend(figures);
+    }
+    #[cfg(not(feature = "figures"))]
+    let _ = batch;
     Ok(files)
 }
 
@@ -123,7 +148,11 @@ impl Ordered<'_> {
         Ok(made)
     }
 
-    fn record(&self, journal: &Journal<PairRecord>, row: usize) -> Result<PairRecord, RunError> {
+    pub(super) fn record(
+        &self,
+        journal: &Journal<PairRecord>,
+        row: usize,
+    ) -> Result<PairRecord, RunError> {
         let place = self.places[row]
             .ok_or_else(|| RunError::Internal(format!("row {row} without a result is read")))?;
         let kept = journal.at(place)?;
@@ -158,14 +187,22 @@ fn write_ranking(
     ordered: &Ordered<'_>,
     journal: &Journal<PairRecord>,
     run: &RankRun,
+    schema: &Schema,
+    mut paper: Option<&mut PaperTable>,
 ) -> Result<Vec<PathBuf>, RunError> {
-    let schema = ranking::schema(run.top)?;
-    let mut files = TableFiles::begin(&run.directory, "ranking", &schema, meta(run))?;
+    let mut files = TableFiles::begin(&run.directory, "ranking", schema, meta(run))?;
+    let mut push = |row: Row| -> Result<(), RunError> {
+        files.push(&row)?;
+        if let Some(paper) = &mut paper {
+            paper.push(&row)?;
+        }
+        Ok(())
+    };
     for (index, member) in ordered.members.iter().enumerate() {
-        files.push(&ordered.row(&schema, index + 1, member, journal)?)?;
+        push(ordered.row(schema, index + 1, member, journal)?)?;
     }
     for (row, failure) in ordered.unranked() {
-        files.push(&ordered.failed_row(&schema, *row, failure)?)?;
+        push(ordered.failed_row(schema, *row, failure)?)?;
     }
     Ok(files.finish()?)
 }
