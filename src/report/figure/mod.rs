@@ -12,9 +12,17 @@ mod export;
 mod frame;
 mod layout;
 mod pair;
+mod plot;
 mod posterior;
 mod style;
+mod survey;
 mod text;
+
+pub use plot::Interval;
+pub use survey::{
+    DistributionFigure, ProfilePanel, ProfileSheet, RankBar, RankFigure, ScatterFigure,
+    ScatterPoint,
+};
 
 use super::ReportError;
 use crate::numeric::Estimate;
