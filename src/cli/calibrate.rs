@@ -3,6 +3,7 @@
 use super::Exit;
 use super::output::Output;
 use super::pair::{PairArguments, tell};
+use super::progress::ProgressLine;
 use clap::Args;
 use inrush::report;
 use inrush::run::calibrate::{
@@ -61,12 +62,14 @@ pub fn run(
     };
     how.check()?;
     let batch = BatchSettings::with_threads(threads.unwrap_or(0).into());
+    let mut line = ProgressLine::begin(output, "pairs");
     let calibrated = read_pair(&sheet, &base).and_then(|pair| {
         let settings = sheet.pair_settings()?;
-        calibrate(pair, &settings, &how, &batch, |done, total| {
-            output.progress(done, total);
+        calibrate(pair, &settings, &how, &batch, |progress| {
+            line.show(progress);
         })
     });
+    line.end();
     let (calibration, outcome) =
         calibrated.map_err(|error| error.of_sheet(arguments.pair.sheet()))?;
     tell(&outcome, &sheet, output);

@@ -50,23 +50,26 @@ impl Output {
         }
     }
 
-    /// How far a long run is, in place of what was said before; on terminals alone. The end is wiped out.
-    pub fn progress(&self, done: usize, total: usize) {
-        if self.quiet || !std::io::stderr().is_terminal() {
-            return;
-        }
-        let text = if done < total {
-            format!("\r{done} of {total}")
-        } else {
-            "\r\u{1b}[K".to_owned()
-        };
-        Self::message(&text);
+    /// What could not be used while the rest was done.
+    pub fn warning(&self, text: &str) {
+        Self::message(&format!("warning: {text}\n"));
     }
 
     /// What went wrong, and what to do about it.
     pub fn error(text: &str, hint: Option<&str>) {
         let hint = hint.map_or(String::new(), |hint| format!("\nhint: {hint}\n"));
         Self::message(&format!("error: {text}\n{hint}"));
+    }
+
+    /// Whether somebody watches.
+    pub fn shows_progress(&self) -> bool {
+        !self.quiet && std::io::stderr().is_terminal()
+    }
+
+    /// A line on a terminal that the next one is written over.
+    pub fn transient(text: &str) {
+        const CLEAR_LINE: &str = "\r\x1b[K";
+        Self::message(&format!("{CLEAR_LINE}{text}"));
     }
 
     fn message(text: &str) {

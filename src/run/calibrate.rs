@@ -13,8 +13,8 @@ pub(super) use products::{found_label, needed, percent};
 pub use statistics::{Level, NINE_IN_TEN, Needed, Share, Statistics};
 
 use super::{
-    BatchSettings, LineInput, LineOutcome, PairInput, PairOutcome, PairSettings, RunError,
-    fit_spectra, pair_row,
+    BatchSettings, LineInput, LineOutcome, PairInput, PairOutcome, PairSettings, Progress,
+    RunError, fit_spectra, pair_row,
 };
 use crate::derive::{DRAWS_LIMITS, SourceProperties};
 use crate::fit::{ModelFit, Workspace};
@@ -236,7 +236,7 @@ struct Task {
 
 /// Fits a pair, injects its best model, and fits every injection.
 ///
-/// `progress` is told how many of how many are done.
+/// `progress` is told how many are done.
 ///
 /// # Errors
 ///
@@ -247,7 +247,7 @@ pub fn calibrate(
     settings: &PairSettings,
     how: &CalibrateSettings,
     batch: &BatchSettings,
-    mut progress: impl FnMut(usize, usize) + Send,
+    mut progress: impl FnMut(Progress) + Send,
 ) -> Result<(Calibration, PairOutcome), RunError> {
     how.check()?;
     let prepare = (pair.thick.prepare.clone(), pair.thin.prepare.clone());
@@ -292,7 +292,11 @@ pub fn calibrate(
                     return ControlFlow::Break(());
                 }
             }
-            progress(injections.len(), total);
+            progress(Progress {
+                done: injections.len() as u64,
+                before: 0,
+                items: total as u64,
+            });
             ControlFlow::Continue(())
         },
     )?;

@@ -52,6 +52,26 @@ pub enum RunError {
         /// What to do.
         hint: Option<String>,
     },
+    /// A directory without results.
+    #[error("{}: no table of results, expected one of {expected}", path.display())]
+    NoResults {
+        /// The directory.
+        path: PathBuf,
+        /// Names of tables.
+        expected: String,
+    },
+    /// A sample table that is none.
+    #[error("{}:{line}: {message}", path.display())]
+    Sample {
+        /// The table.
+        path: PathBuf,
+        /// Line, from 1.
+        line: u64,
+        /// What was found and expected.
+        message: String,
+        /// What to do.
+        hint: Option<String>,
+    },
     /// Something in a run sheet that cannot be used, or is missing there.
     #[error("{}: {error}", path.display())]
     InSheet {
@@ -236,6 +256,9 @@ impl RunError {
             Self::File { .. } | Self::NoSheet { .. } => {
                 Some("check the path and its permissions".to_owned())
             }
+            Self::NoResults { .. } => {
+                Some("give what was --out of a run, or columns with --for".to_owned())
+            }
             Self::NotADirectory { .. } => {
                 Some("give --out another name, or move the file away".to_owned())
             }
@@ -243,7 +266,9 @@ impl RunError {
                 Some("give --out another name: what is there is left as it is".to_owned())
             }
             Self::InSheet { error, .. } => error.hint(),
-            Self::Sheet { hint, .. } | Self::Setting { hint, .. } => hint.clone(),
+            Self::Sheet { hint, .. } | Self::Sample { hint, .. } | Self::Setting { hint, .. } => {
+                hint.clone()
+            }
             Self::NoFile { .. } => {
                 Some("inrush fit --help shows both ways to give a pair".to_owned())
             }

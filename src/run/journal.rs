@@ -220,6 +220,13 @@ impl JournalError {
     }
 }
 
+/// What the journal keeps of an item.
+pub type Kept<R> = Result<R, Failure>;
+
+/// Where a result stands in its journal.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub struct JournalPlace(u64);
+
 /// An open journal of results of one kind.
 #[derive(Debug)]
 pub struct Journal<R> {
@@ -391,7 +398,7 @@ impl<R: Serialize + DeserializeOwned> Journal<R> {
     }
 
     /// Appends the next item's result. On an error the journal is as it was before.
-    pub(super) fn append(&mut self, result: &Result<R, Failure>) -> Result<(), JournalError> {
+    pub(super) fn append(&mut self, result: &Kept<R>) -> Result<(), JournalError> {
         let content = postcard::to_allocvec(result)
             .map_err(|error| self.foreign(&format!("a result that cannot be written ({error})")))?;
         self.buffer.clear();
@@ -411,26 +418,46 @@ impl<R: Serialize + DeserializeOwned> Journal<R> {
         Ok(())
     }
 
-    /// The results so far, in the order of the items, read from the disk one after the other.
+    /// The results so far, in the order of the items, read from the disk one after the other, each with
+    /// its place, at which [`Journal::at`] reads it again.
     ///
     /// # Errors
     ///
     /// [`RunError::Journal`] where the file cannot be read; each result likewise.
     pub fn results(
         &self,
-    ) -> Result<impl Iterator<Item = Result<Result<R, Failure>, RunError>> + use<'_, R>, RunError>
-    {
+    ) -> Result<
+        impl Iterator<Item = Result<(JournalPlace, Kept<R>), RunError>> + use<'_, R>,
+        RunError,
+    > {
+        let mut frames = self.frames(self.first)?;
+        Ok((0..self.done).map(move |_| {
+            let place = JournalPlace(frames.place);
+            Ok((place, self.decoded(&mut frames)?))
+        }))
+    }
+
+    /// The result at a place.
+    ///
+    /// # Errors
+    ///
+    /// [`RunError::Journal`] where the file cannot be read.
+    pub fn at(&self, place: JournalPlace) -> Result<Kept<R>, RunError> {
+        Ok(self.decoded(&mut self.frames(place.0)?)?)
+    }
+
+    fn frames(&self, from: u64) -> Result<Frames<BufReader<File>>, JournalError> {
         let named = |source| file_error(&self.path, source);
         let mut file = self.file.try_clone().map_err(named)?;
-        file.seek(SeekFrom::Start(self.first)).map_err(named)?;
-        let mut frames = Frames::new(BufReader::new(file), self.end, self.first);
-        Ok((0..self.done).map(move |_| {
-            let content = frames.next().map_err(named)?;
-            let content = content.ok_or_else(|| self.foreign("fewer results than were written"))?;
-            let result = postcard::from_bytes(content)
-                .map_err(|error| self.foreign(&format!("a result of another form ({error})")))?;
-            Ok(result)
-        }))
+        file.seek(SeekFrom::Start(from)).map_err(named)?;
+        Ok(Frames::new(BufReader::new(file), self.end, from))
+    }
+
+    fn decoded(&self, frames: &mut Frames<BufReader<File>>) -> Result<Kept<R>, JournalError> {
+        let content = (frames.next()).map_err(|source| file_error(&self.path, source))?;
+        let content = content.ok_or_else(|| self.foreign("fewer results than were written"))?;
+        postcard::from_bytes(content)
+            .map_err(|error| self.foreign(&format!("a result of another form ({error})")))
     }
 
     /// Ends a run whose products are all written: leaves its record beside them and removes the journal.

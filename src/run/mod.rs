@@ -3,6 +3,7 @@
 mod batch;
 pub mod calibrate;
 mod check;
+mod cite;
 mod durable;
 mod error;
 #[cfg(feature = "figures")]
@@ -12,15 +13,18 @@ mod judge;
 mod pair;
 mod pairs;
 mod products;
+pub mod rank;
 mod sheet;
 pub mod simulate;
 
 pub use batch::{BatchError, BatchSettings, Panicked};
 pub use check::{FileCheck, check_file};
+pub use cite::{cite_all, cite_columns, cite_results};
 pub use durable::{Ended, Progress, Watch};
 pub use error::RunError;
 pub use journal::{
-    Failure, JOURNAL, Journal, JournalError, Opened, RECORD, RunIdentity, RunRecord, inputs_sha256,
+    Failure, JOURNAL, Journal, JournalError, JournalPlace, Kept, Opened, RECORD, RunIdentity,
+    RunRecord, inputs_sha256,
 };
 pub use judge::{JudgeError, Judged, VerdictSettings};
 pub use pair::{

@@ -182,6 +182,26 @@ impl SourceSection {
         }
     }
 
+    /// Replaces what is given.
+    pub fn set(&mut self, input: Input, given: Given) {
+        let target = match input {
+            Input::Distance => &mut self.distance_kpc,
+            Input::Radius => &mut self.radius_pc,
+            Input::Mass => &mut self.mass_msun,
+            Input::Density => &mut self.n_h2_cm3,
+            Input::Slope => &mut self.density_slope,
+            Input::Kinetic => &mut self.t_kin_k,
+            Input::DustFlux => &mut self.dust_flux_jy,
+            Input::DustFrequency => &mut self.dust_freq_ghz,
+            Input::DustTemperature => &mut self.dust_temperature_k,
+            Input::DustOpacity => &mut self.dust_kappa_cm2_g,
+            Input::Field => &mut self.field_ug,
+            Input::AngleDispersion => &mut self.angle_dispersion_deg,
+            Input::ThinExcitation => &mut self.thin_t_ex_k,
+        };
+        *target = Some(given);
+    }
+
     /// What is given of the source, checked.
     ///
     /// # Errors

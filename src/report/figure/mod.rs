@@ -13,11 +13,18 @@ mod export;
 mod frame;
 mod layout;
 mod pair;
+mod plot;
 mod posterior;
 mod style;
+mod survey;
 mod text;
 
 pub use calibration::{CalibrationFigure, CalibrationPoint};
+pub use plot::Interval;
+pub use survey::{
+    DistributionFigure, ProfilePanel, ProfileSheet, RankBar, RankFigure, ScatterFigure,
+    ScatterPoint,
+};
 
 use super::ReportError;
 use crate::numeric::Estimate;

@@ -53,7 +53,8 @@ fn run(journal: &mut Results, threads: usize, stop_at: u64) -> (Ended, u64) {
 
 /// What is in a journal, as text.
 fn content(journal: &Results) -> String {
-    let results: Vec<_> = (journal.results().unwrap()).map(Result::unwrap).collect();
+    let results = journal.results().unwrap().map(Result::unwrap);
+    let results: Vec<_> = results.map(|(_, result)| result).collect();
     format!("{results:?}")
 }
 
@@ -72,6 +73,20 @@ fn every_result_comes_back_bit_for_bit_and_failures_with_their_reason() {
     assert!(text.contains("internal error: eleven"));
     assert!(text.contains(&format!("Ok((299, {:?}))", 299_f64.sin())));
     assert!(text.contains("Ok((12, NaN))"));
+}
+
+#[test]
+fn any_result_is_read_again_at_its_place() {
+    let directory = tempfile::tempdir().unwrap();
+    let mut journal = open(directory.path(), false);
+    run(&mut journal, 1, u64::MAX);
+    let all: Vec<_> = (journal.results().unwrap()).map(Result::unwrap).collect();
+    for (place, result) in all.iter().rev() {
+        assert_eq!(
+            format!("{:?}", journal.at(*place).unwrap()),
+            format!("{result:?}")
+        );
+    }
 }
 
 #[test]
