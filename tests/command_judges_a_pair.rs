@@ -344,3 +344,32 @@ fn settings_that_cannot_be_are_refused_with_what_to_do() {
         run.stderr
     );
 }
+
+/// Nothing of the band is left outside the fitted range, and neighbours are correlated.
+#[test]
+fn correlated_noise_in_a_narrow_band_is_judged() {
+    let pair = Pair {
+        first_km_s: 2.0,
+        channels: 108,
+        ..Pair::default()
+    };
+    let (thick, thin) = pair.temperature_k();
+    let smooth = |values: &[f64]| -> Vec<f64> {
+        let around = |i: usize, by: usize| values[(i + by).clamp(1, values.len()) - 1];
+        (0..values.len())
+            .map(|i| 0.25 * around(i, 0) + 0.5 * values[i] + 0.25 * around(i, 2))
+            .collect()
+    };
+    let folder = Folder::new();
+    for (name, values) in [("thick.csv", &thick), ("thin.csv", &thin)] {
+        let text = command::csv(&pair.velocity_km_s(), &smooth(values));
+        folder.write(name, text.as_bytes());
+    }
+    let results = folder.fit_json(&["--range-km-s", "0,15"]);
+    assert!(
+        codes(&results).contains(&"correlated-noise"),
+        "{:?}",
+        codes(&results)
+    );
+    assert!(number(&results, "p_infall") > 0.9);
+}

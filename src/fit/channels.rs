@@ -202,7 +202,9 @@ impl Channels {
 
     /// Makes columns white as the data are, but leaves their unit.
     pub fn decorrelate(&self, columns: &mut [f64]) {
-        if let Some(whitener) = &self.whitener {
+        if let Some(whitener) = &self.whitener
+            && !self.is_empty()
+        {
             for column in columns.chunks_exact_mut(self.len()) {
                 whitener.whiten(&self.segments, column);
             }
