@@ -3,7 +3,7 @@
 use super::Exit;
 use super::output::Output;
 use super::source::SourceArguments;
-use super::values::{given, named, numbers, range};
+use super::values::{given, named, number, numbers, range};
 use clap::Args;
 use inrush::fit::Workspace;
 use inrush::report;
@@ -145,6 +145,12 @@ pub struct FitArguments {
     /// Stop after least squares: no posterior, no probabilities.
     #[arg(long, help_heading = "Fitting")]
     formal: bool,
+    /// Replace a prior: the numbers of its density (docs/methods.md has the table).
+    #[arg(long, value_name = "NAME=NUMBER[,NUMBER]", value_parser = named_given, help_heading = "Fitting")]
+    prior: Vec<(String, Given)>,
+    /// Prior odds of infall, expansion, static or two_clouds; 1 each unless given.
+    #[arg(long, value_name = "NAME=ODDS", value_parser = named_number, help_heading = "Fitting")]
+    odds: Vec<(String, f64)>,
     /// Effective draws of a posterior.
     #[arg(long, value_name = "N", help_heading = "Fitting")]
     posterior_draws: Option<usize>,
@@ -312,6 +318,10 @@ impl FitArguments {
         sheet.fit.given.extend(self.given.iter().cloned());
         sheet.fit.bounds.extend(self.bounds.iter().cloned());
         sheet.fit.formal |= self.formal;
+        sheet.priors.extend(self.prior.iter().cloned());
+        for (name, odds) in &self.odds {
+            sheet.odds.set(name, *odds)?;
+        }
         if let Some(draws) = self.posterior_draws {
             sheet.fit.posterior_draws = draws;
         }
@@ -363,6 +373,10 @@ fn number_or_word(text: &str) -> Result<NumberOrWord, String> {
 
 fn named_given(text: &str) -> Result<(String, Given), String> {
     named(text, given)
+}
+
+fn named_number(text: &str) -> Result<(String, f64), String> {
+    named(text, number)
 }
 
 fn named_range(text: &str) -> Result<(String, [f64; 2]), String> {

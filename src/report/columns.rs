@@ -280,6 +280,7 @@ pub const QUANTITIES: &[Quantity] = &[
     real(Hypotheses, "p_expansion", None, "expansion", "Probability of expansion"),
     real(Hypotheses, "p_static", None, "static", "Probability of neither infall nor expansion"),
     real(Hypotheses, "p_two_clouds", None, "two clouds", "Probability of two clouds on one line of sight"),
+    text(Hypotheses, "verdict", "verdict", "What the data exclude and at what odds, what they cannot, in sentences"),
 
     with(real(Collapse, "mass_dust_msun", MASS, "mass from dust", "Mass of gas from the dust's flux, S d^2/(kappa B(T_d))"), Intervals),
     with(real(Collapse, "mass_msun", MASS, "mass", "Mass within the source's radius"), Intervals),

@@ -8,6 +8,7 @@
 pub mod citation;
 pub mod columns;
 mod csv;
+pub mod cube;
 mod ecsv;
 #[cfg(feature = "figures")]
 pub mod figure;
@@ -18,6 +19,7 @@ mod paper;
 pub mod ranking;
 mod rounding;
 pub mod sample_statistics;
+mod sentence;
 pub mod spectra;
 mod summary;
 mod table;
@@ -29,6 +31,7 @@ pub use fits_table::write_fits;
 pub use json::{write_json, write_json_rows};
 pub use paper::PaperTable;
 pub use rounding::{rounded, rounded_interval, rounded_plain, rounded_range};
+pub use sentence::verdict_sentences;
 pub use summary::summary;
 pub use table::{Column, Kind, Row, Schema, Table, Value};
 pub use table_files::TableFiles;

@@ -45,6 +45,12 @@ pub fn summary(row: &Row, cautions: &[String]) -> String {
             };
             let _ = write!(text, "\n{}{errors}\n", quantity.group.heading());
         }
+        if quantity.name == "verdict" {
+            for sentence in shown.trim_end_matches('.').split(". ") {
+                text.push_str(&wrapped(sentence));
+            }
+            continue;
+        }
         let _ = writeln!(text, "  {:<LABEL$}{shown}", quantity.label);
         if quantity.group.is_fitted()
             && let Some(range) = posterior_range(quantity, row)

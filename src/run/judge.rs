@@ -1,13 +1,16 @@
 //! A prepared pair into posteriors and a verdict, with the settings of the fit that both know.
 
 use crate::fit::averaged::Averaged;
+use crate::fit::conflict::{PriorConflict, conflict, replaced};
 use crate::fit::hypotheses::{HypothesesError, Odds, Speed, Verdict, verdict};
 use crate::fit::posterior::{
     Family, PairPosterior, PosteriorError, PosteriorSettings, pair_posterior,
 };
+use crate::fit::priors::Priors;
 use crate::fit::{FitSettings, Unjudged, is_absorbed};
 use crate::line::Line;
 use crate::measure::{Measures, ThinLine};
+use crate::model::RadiationTemperature;
 use crate::prepare::Prepared;
 
 /// How a pair is judged.
@@ -57,8 +60,8 @@ pub(super) struct PreparedPair<'a> {
 ///
 /// # Errors
 ///
-/// [`HypothesesError`] for odds that are no probabilities, [`PosteriorError`] for settings that make no
-/// posterior. What lies in the data is no error, but an [`Unjudged`].
+/// [`JudgeError`] for odds that are no probabilities, settings that make no posterior, and replaced
+/// priors without mass where the data are. What lies in the data is no error, but an [`Unjudged`].
 pub(super) fn judge(
     pair: &PreparedPair<'_>,
     fit: &FitSettings,
@@ -76,18 +79,27 @@ pub(super) fn judge(
     if is_absorbed(pair.measures) {
         return Ok(Err(Unjudged::Absorbed));
     }
-    let posterior = pair_posterior(
-        pair.thick,
-        pair.thin,
-        pair.lines,
-        pair.thin_line,
-        &PosteriorSettings {
-            models,
-            range: fit.range,
-            averaging: fit.averaging,
-            ..settings.posterior.clone()
-        },
-    );
+    let settings_of = |priors: &Priors, hypotheses: bool| PosteriorSettings {
+        models: models.clone(),
+        hypotheses,
+        priors: priors.clone(),
+        range: fit.range,
+        averaging: fit.averaging,
+        ..settings.posterior.clone()
+    };
+    let sampled = |own: &PosteriorSettings| {
+        pair_posterior(pair.thick, pair.thin, pair.lines, pair.thin_line, own)
+    };
+    let priors = &settings.posterior.priors;
+    if !replaced(priors).is_empty()
+        && let Ok(by_default) = sampled(&settings_of(&Priors::default(), false))
+    {
+        let radiation = RadiationTemperature::new(pair.lines.0.rest_frequency_ghz);
+        if let Some(conflict) = conflict(priors, &by_default, &radiation) {
+            return Err(conflict.into());
+        }
+    }
+    let posterior = sampled(&settings_of(priors, true));
     let posterior = match posterior {
         Ok(posterior) => posterior,
         Err(error @ (PosteriorError::TooFewDraws { .. } | PosteriorError::NoPosterior { .. })) => {
@@ -117,6 +129,9 @@ pub enum JudgeError {
     /// Odds that are no probabilities.
     #[error(transparent)]
     Hypotheses(#[from] HypothesesError),
+    /// A replaced prior without mass where the data are.
+    #[error(transparent)]
+    Prior(#[from] PriorConflict),
 }
 
 impl JudgeError {
@@ -126,6 +141,7 @@ impl JudgeError {
         match self {
             Self::Posterior(error) => error.hint(),
             Self::Hypotheses(error) => error.hint(),
+            Self::Prior(error) => Some(error.hint()),
         }
     }
 }

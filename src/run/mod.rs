@@ -32,7 +32,7 @@ pub use pair::{
 pub use pairs::{PairJob, fit_pairs};
 pub use products::{check_directory, pair_row, pair_summary, write_products};
 pub use sheet::{
-    Beam, DeriveSection, FitSection, Given, LineSection, NumberOrWord, OutputSection,
+    Beam, DeriveSection, FitSection, Given, LineSection, NumberOrWord, OddsSection, OutputSection,
     PrepareSection, RangeOrWord, Record, RunSheet, SourceSection,
 };
 

@@ -49,6 +49,9 @@ pub fn pair_row(outcome: &PairOutcome) -> Result<Row, RunError> {
             let column = format!("p_{}", standing.hypothesis.name());
             row.set(&column, standing.probability)?;
         }
+        let detected = outcome.measures.peak_thick_k.is_some();
+        let sentences = report::verdict_sentences(&judged.verdict, detected);
+        row.set("verdict", sentences.join(". ") + ".")?;
     }
     set_derived(&mut row, outcome)?;
     let mut codes: Vec<&str> = Vec::new();
@@ -336,7 +339,7 @@ fn meta(outcome: &PairOutcome, sheet: &RunSheet) -> Vec<(String, Value)> {
 
 /// The sheet with every default written out, paths relative to the results, and the record.
 fn resolved(outcome: &PairOutcome, sheet: &RunSheet, base: &Path, directory: &Path) -> RunSheet {
-    let mut resolved = sheet.clone();
+    let mut resolved = sheet.clone().with_all_priors();
     resolved.source.name = Some(outcome.name.clone());
     for (section, line) in [
         (&mut resolved.thick, &outcome.thick),
