@@ -39,7 +39,7 @@ fn infall_is_found_with_intervals_and_said_in_sentences() {
         assert!(ends.is_sorted(), "{model} {ends:?}");
     }
     let verdict = results["verdict"].as_str().unwrap();
-    assert!(verdict.starts_with("Infall is most probable"), "{verdict}");
+    assert!(verdict.starts_with("Most probable: infall"), "{verdict}");
     assert!(verdict.contains("The data exclude expansion"), "{verdict}");
     for unseen in ["rotation or an outflow", "a cold cloud in front"] {
         assert!(verdict.contains(unseen), "{verdict}");
@@ -50,7 +50,7 @@ fn infall_is_found_with_intervals_and_said_in_sentences() {
     );
     let words = folder.fit(&[]).stdout;
     for sentence in [
-        "  - Infall is most probable",
+        "  - Most probable: infall",
         "  - One position cannot exclude rotation or an outflow",
     ] {
         assert!(words.contains(sentence), "{words}");
@@ -195,7 +195,7 @@ fn two_clouds_do_not_pass_as_infall() {
         results["verdict"]
             .as_str()
             .unwrap()
-            .starts_with("Two clouds is most probable")
+            .starts_with("Most probable: two clouds")
     );
 }
 

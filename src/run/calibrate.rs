@@ -13,14 +13,14 @@ pub(super) use products::{found_label, needed, percent};
 pub use statistics::{Level, NINE_IN_TEN, Needed, Share, Statistics};
 
 use super::{
-    BatchSettings, LineInput, LineOutcome, PairInput, PairOutcome, PairSettings, Progress,
+    BatchSettings, Judged, LineInput, LineOutcome, PairInput, PairOutcome, PairSettings, Progress,
     RunError, fit_spectra, pair_row,
 };
 use crate::derive::{DRAWS_LIMITS, SourceProperties};
 use crate::fit::{ModelFit, Workspace};
 use crate::model::{Model, Sampling};
 use crate::prepare::PrepareSettings;
-use crate::report::{Row, Value};
+use crate::report::Row;
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::SeedableRng;
 use std::ops::ControlFlow;
@@ -148,7 +148,9 @@ pub struct Found {
     pub interval68_km_s: Option<(f64, f64)>,
     /// Its 95 % interval, km/s: of formal errors, two either way.
     pub interval95_km_s: Option<(f64, f64)>,
-    /// Probabilities of infall, expansion, rest and two clouds; `None` of formal fits.
+    /// Whether speed and errors are formal.
+    pub formal: bool,
+    /// Probabilities of infall, expansion, rest and two clouds; `None` without posteriors.
     pub probabilities: Option<[f64; 4]>,
     /// Cautions.
     pub cautions: String,
@@ -165,7 +167,9 @@ impl Found {
     /// speed beyond [`FOUND_ERRORS`].
     #[must_use]
     pub fn moves(&self, inward: bool) -> bool {
-        if let Some([infall, expansion, ..]) = self.probabilities {
+        if let Some([infall, expansion, ..]) = self.probabilities
+            && !self.formal
+        {
             return if inward { infall } else { expansion } > FOUND_FROM;
         }
         let (Some(v_in), Some(err)) = (self.v_in_km_s, self.err_km_s) else {
@@ -198,13 +202,9 @@ impl Found {
             interval95_km_s: of95.or_else(|| formal(2.0)),
             v_in_km_s,
             err_km_s,
+            formal: row.get("v_in_errors")?.text() == Some("formal"),
             probabilities,
-            cautions: row
-                .get("cautions")
-                .ok()
-                .and_then(Value::text)
-                .unwrap_or_default()
-                .to_owned(),
+            cautions: row.get("cautions")?.text().unwrap_or_default().to_owned(),
         })
     }
 }
@@ -299,7 +299,7 @@ pub fn calibrate(
         model: fit.model,
         v_in_km_s,
         signal_to_noise,
-        formal: settings.verdict.is_none(),
+        formal: outcome.judged.as_ref().and_then(Judged::adopted).is_none(),
         levels,
         injections,
     };
