@@ -7,6 +7,7 @@
 mod amplitudes;
 mod cautions;
 mod channels;
+pub mod clump;
 pub mod hypotheses;
 mod joint;
 mod normal;

@@ -8,8 +8,10 @@ mod data;
 mod family;
 mod starts;
 
+pub(in crate::fit) use data::LineData;
 pub use data::ShapeErrors;
 pub use family::Family;
+pub(in crate::fit) use starts::{Kinematics, distinct, kinematics, shape_errors};
 
 use super::priors::Priors;
 use super::{Averaging, FitRange};
@@ -20,7 +22,6 @@ use crate::model::{LineShape, Model};
 use crate::numeric::sampling::{Draws, ImportanceSettings, Peak, Quality, ascend, sample};
 use crate::prepare::Prepared;
 use crate::spectrum::Window;
-use data::LineData;
 use family::Target;
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::SeedableRng;
