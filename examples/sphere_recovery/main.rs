@@ -63,7 +63,26 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
             Ok(())
         }
         "judge" => {
+            let mut priors = inrush::fit::clump::ClumpPriors::default();
+            let env = |name: &str, to: &mut inrush::fit::clump::Normal| {
+                if let Ok(text) = std::env::var(name) {
+                    let (a, b) = text.split_once(':').unwrap();
+                    *to = inrush::fit::clump::Normal::of(a.parse().unwrap(), b.parse().unwrap());
+                }
+            };
+            env("DEPTH", &mut priors.ln_depth);
+            env("SLOPE", &mut priors.opacity_slope);
+            env("COLL", &mut priors.ln_collision_ratio);
+            env("EXCESS", &mut priors.excess_slope);
+            env("TSLOPE", &mut priors.temperature_slope);
+            env("TKIN", &mut priors.ln_t_kin);
+            env("RATIO", &mut priors.ln_isotope_ratio);
+            env("BEAM", &mut priors.ln_beam_over_radius);
+            env("RESP", &mut priors.opacity_response);
+            env("THIN", &mut priors.thin_slope);
+            if let Ok(text) = std::env::var("SCALE") { priors.thin_scale = text.parse().unwrap(); }
             let settings = ClumpSettings {
+                priors,
                 law: law(arguments.get(3))?,
                 shape_error: number(4, inrush::fit::clump::SHAPE_ERROR)?,
                 ..ClumpSettings::default()
@@ -93,7 +112,7 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
             summary("all", &rows);
             Ok(())
         }
-        "folder" => folder::print(&name),
+        "folder" => folder::print(&name, &ClumpSettings::default()),
         other => Err(format!("`{other}`, expected draw, judge or folder").into()),
     }
 }

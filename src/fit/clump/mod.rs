@@ -16,7 +16,7 @@ use super::Averaging;
 use crate::line::Line;
 use crate::measure::ThinLine;
 use crate::model::LineShape;
-use crate::numeric::sampling::{Density, Draws, ImportanceSettings, Peak, Point, Quality, ascend, sample};
+use crate::numeric::sampling::{Density, Draws, ImportanceSettings, MOST_DIMENSIONS, Peak, Point, Quality, ascend, sample};
 use crate::prepare::Prepared;
 use crate::spectrum::Window;
 use rand_chacha::ChaCha8Rng;
@@ -75,7 +75,7 @@ pub struct ClumpSettings {
 }
 
 /// Departure of clumps from the reduced sphere, over the peak.
-pub const SHAPE_ERROR: f64 = 0.01;
+pub const SHAPE_ERROR: f64 = 0.015;
 
 impl Default for ClumpSettings {
     fn default() -> Self {
@@ -175,7 +175,7 @@ pub fn clump_posterior(
 }
 
 fn scales(sigma_km_s: f64) -> Point {
-    [0.3 * sigma_km_s, 0.2, 0.2, 0.5, 0.4, 0.8, 0.4, 0.2, 0.4, 0.5]
+    [0.3 * sigma_km_s, 0.2, 0.2, 0.5, 0.4, 0.8, 0.4, 0.2, 0.4, 0.5, 0.4, 0.3]
 }
 
 /// Candidates of each sign that are followed to a peak.
@@ -189,8 +189,8 @@ fn starts(target: &mut Target<'_>, kinematics: &[Kinematics]) -> Vec<Point> {
             for depth in [3.0f64, 12.0, 40.0] {
                 for collisions in [0.005f64, 0.05, 0.4] {
                     for factor in [0.85f64, 0.65] {
-                        let mut point = [0.0; DIMENSIONS];
-                        point[1..].copy_from_slice(&middle);
+                        let mut point = [0.0; MOST_DIMENSIONS];
+                        point[1..DIMENSIONS].copy_from_slice(&middle);
                         point[place::V_LSR] = about.v_km_s;
                         point[place::LN_SIGMA] = (factor * about.sigma_km_s).ln();
                         point[place::V_IN] = speed;

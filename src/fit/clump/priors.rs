@@ -65,6 +65,10 @@ pub struct ClumpPriors {
     pub ln_isotope_ratio: Normal,
     /// ln of beam FWHM over outer radius.
     pub ln_beam_over_radius: Normal,
+    /// g of opacity ~ E^-g, E how near the excitation comes to that of the gas.
+    pub opacity_response: Normal,
+    /// How much steeper the thin line's source is than the same gas's of the thick line.
+    pub thin_slope: Normal,
     /// Deviation of the thin line's brightness from that of the same gas: calibration and excitation.
     pub thin_scale: f64,
 }
@@ -75,14 +79,16 @@ impl Default for ClumpPriors {
             ln_sigma: Normal::of_logarithm(0.6, 0.8),
             v_in_over_sigma: Normal::of(0.0, 1.0),
             ln_depth: Normal::of_logarithm(10.0, 1.2),
-            opacity_slope: Normal::of(1.7, 0.5),
+            opacity_slope: Normal::of(1.7, 0.7),
             ln_collision_ratio: Normal::of_logarithm(0.03, 1.5),
             excess_slope: Normal::of(0.0, 0.5),
-            temperature_slope: Normal::of(0.15, 0.2),
+            temperature_slope: Normal::of(0.15, 0.25),
             ln_t_kin: Normal::of_logarithm(18.0, 0.5),
             ln_isotope_ratio: Normal::of_logarithm(50.0, 0.5),
             ln_beam_over_radius: Normal::of_logarithm(0.7, 0.7),
-            thin_scale: 0.1,
+            opacity_response: Normal::of(0.2, 0.7),
+            thin_slope: Normal::of(0.0, 0.5),
+            thin_scale: 0.2,
         }
     }
 }

@@ -10,7 +10,7 @@ use crate::sphere::{ReducedClump, ReducedLine, ReducedPair};
 use crate::spectrum::Window;
 
 /// Number of coordinates.
-pub(super) const DIMENSIONS: usize = 10;
+pub(super) const DIMENSIONS: usize = 12;
 
 /// Their places in a point.
 pub(super) mod place {
@@ -24,6 +24,8 @@ pub(super) mod place {
     pub const TEMPERATURE_SLOPE: usize = 7;
     pub const LN_RATIO: usize = 8;
     pub const LN_BEAM: usize = 9;
+    pub const RESPONSE: usize = 10;
+    pub const THIN_SLOPE: usize = 11;
 }
 
 /// Coordinates that only priors bound stay within this many standard deviations.
@@ -91,6 +93,8 @@ impl<'a> Target<'a> {
             p.temperature_slope,
             p.ln_isotope_ratio,
             p.ln_beam_over_radius,
+            p.opacity_response,
+            p.thin_slope,
         ]
     }
 
@@ -126,6 +130,8 @@ impl<'a> Target<'a> {
             velocity_slope: self.velocity_slope,
             depth: point[place::LN_DEPTH].exp(),
             opacity_slope: point[place::OPACITY_SLOPE],
+            thin_slope: point[place::THIN_SLOPE],
+            opacity_response: point[place::RESPONSE],
             collision_ratio: point[place::LN_COLLISIONS].exp(),
             collision_slope: point[place::OPACITY_SLOPE] + point[place::EXCESS_SLOPE],
             temperature_slope: point[place::TEMPERATURE_SLOPE],
