@@ -3,7 +3,7 @@
 use super::Exit;
 use super::output::Output;
 use super::source::SourceArguments;
-use super::values::{given, named, numbers, range};
+use super::values::{given, named, number, numbers, range};
 use clap::Args;
 use inrush::fit::Workspace;
 use inrush::report;
@@ -142,9 +142,18 @@ pub struct FitArguments {
     /// Bounds of a parameter.
     #[arg(long, value_name = "NAME=LOW,HIGH", value_parser = named_range, help_heading = "Fitting")]
     bounds: Vec<(String, [f64; 2])>,
-    /// Stop after least squares.
+    /// Stop after least squares: no posterior, no probabilities.
     #[arg(long, help_heading = "Fitting")]
     formal: bool,
+    /// Replace a prior: the numbers of its density (docs/methods.md has the table).
+    #[arg(long, value_name = "NAME=NUMBER[,NUMBER]", value_parser = named_given, help_heading = "Fitting")]
+    prior: Vec<(String, Given)>,
+    /// Prior odds of infall, expansion, static or two_clouds; 1 each unless given.
+    #[arg(long, value_name = "NAME=ODDS", value_parser = named_number, help_heading = "Fitting")]
+    odds: Vec<(String, f64)>,
+    /// Effective draws of a posterior.
+    #[arg(long, value_name = "N", help_heading = "Fitting")]
+    posterior_draws: Option<usize>,
 
     #[command(flatten)]
     source: SourceArguments,
@@ -308,6 +317,14 @@ impl FitArguments {
         set(&mut sheet.fit.isotope_ratio, self.isotope_ratio);
         sheet.fit.given.extend(self.given.iter().cloned());
         sheet.fit.bounds.extend(self.bounds.iter().cloned());
+        sheet.fit.formal |= self.formal;
+        sheet.priors.extend(self.prior.iter().cloned());
+        for (name, odds) in &self.odds {
+            sheet.odds.set(name, *odds)?;
+        }
+        if let Some(draws) = self.posterior_draws {
+            sheet.fit.posterior_draws = draws;
+        }
         sheet.output.figures &= !self.no_figures;
         if let Some(seed) = self.seed {
             sheet.seed = seed;
@@ -356,6 +373,10 @@ fn number_or_word(text: &str) -> Result<NumberOrWord, String> {
 
 fn named_given(text: &str) -> Result<(String, Given), String> {
     named(text, given)
+}
+
+fn named_number(text: &str) -> Result<(String, f64), String> {
+    named(text, number)
 }
 
 fn named_range(text: &str) -> Result<(String, [f64; 2]), String> {

@@ -151,7 +151,7 @@ impl<'a> Target<'a> {
         (clump, lines)
     }
 
-    /// Profiles of a point for an amplitude of 1 K, whitened.
+    /// Profiles of a point for an amplitude of 1 K.
     fn profiles(&mut self, point: &Point) {
         let (clump, [thick, thin]) = self.clump(point);
         self.pair.trace(&clump, [&thick, &thin]);
@@ -169,14 +169,15 @@ impl<'a> Target<'a> {
                     })
                     .sum();
             }
-            channels.whiten(column);
         }
     }
 
     fn amplitudes(&mut self, point: &Point) -> [Amplitude; 2] {
         self.profiles(point);
         [0, 1].map(|line| {
-            let quadratic = self.lines[line].quadratic(&[&self.columns[line]], 1.0);
+            let column = &mut self.columns[line];
+            let channels = 0..column.len();
+            let quadratic = self.lines[line].quadratic(channels, &mut [column], 1.0);
             let Quadratic {
                 projected,
                 products,
