@@ -81,8 +81,13 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
             env("RESP", &mut priors.opacity_response);
             env("THIN", &mut priors.thin_slope);
             if let Ok(text) = std::env::var("SCALE") { priors.thin_scale = text.parse().unwrap(); }
+            let mut sampling = ClumpSettings::default().sampling;
+            let count = |name: &str, to: &mut usize| if let Ok(t) = std::env::var(name) { *to = t.parse().unwrap() };
+            count("ROUND", &mut sampling.round);
+            count("ROUNDS", &mut sampling.most_rounds);
+            count("SPREAD", &mut sampling.spread);
             let settings = ClumpSettings {
-                priors,
+                priors, sampling,
                 law: law(arguments.get(3))?,
                 shape_error: number(4, inrush::fit::clump::SHAPE_ERROR)?,
                 ..ClumpSettings::default()

@@ -143,10 +143,10 @@ impl MeanIntensity {
 }
 
 /// What a passage absorbs and emits for each unit of C.
-pub(super) struct PassageTransfer {
-    pub(super) opacity: f64,
-    pub(super) enters: f64,
-    pub(super) leaves: f64,
+struct PassageTransfer {
+    opacity: f64,
+    enters: f64,
+    leaves: f64,
 }
 
 impl Passage {
@@ -388,7 +388,7 @@ impl Kernel for Paths<'_> {
 /// Adds a Gaussian of a height to a row. A loop over slices without a sum: that is what the compiler
 /// makes vectors of.
 #[inline(always)]
-pub(super) fn add_profile<A: Arithmetic>(
+fn add_profile<A: Arithmetic>(
     velocity_km_s: &[f64],
     centre_km_s: f64,
     inverse_sigma: f64,
@@ -445,7 +445,7 @@ fn passage<A: Arithmetic>(t: f64) -> [f64; 4] {
 impl PassageTransfer {
     /// Takes the intensities of a ray through a passage of given C, without the mean.
     #[inline(always)]
-    pub(super) fn pass<A: Arithmetic>(&self, paths: &[f64], intensity: &mut [f64]) {
+    fn pass<A: Arithmetic>(&self, paths: &[f64], intensity: &mut [f64]) {
         let intensity = &mut intensity[..paths.len()];
         for (intensity, c) in intensity.iter_mut().zip(paths) {
             let [e, g, h, _] = passage::<A>(self.opacity * c);

@@ -7,7 +7,8 @@
 
 use super::emergent::density as beam_density;
 use super::power_integral;
-use super::rays::{LANES, PassageTransfer, add_profile};
+use super::rays::LANES;
+
 use crate::line::Component;
 use crate::numeric::dispatch::{Arithmetic, Kernel, dispatch};
 use crate::numeric::exponential::exp_in_place;
@@ -112,8 +113,9 @@ const LINES: usize = 2;
 pub struct ReducedPair {
     velocities: Vec<f64>,
     spectra: [Vec<f64>; LINES],
-    intensity: [Vec<f64>; LINES],
-    paths: Vec<f64>,
+    intensity: [Vec<f32>; LINES],
+    profile: Vec<f32>,
+    single_velocities: Vec<f32>,
     cells: Vec<Cell>,
     /// Emission over opacity at the ends of cells, a value a line.
     sources: Vec<[f64; LINES]>,
@@ -181,7 +183,7 @@ impl ReducedPair {
         let farthest = (BEAM_REACH * beams[0].max(beams[1])).min(1.0);
         let same = lines[0].components == lines[1].components;
         let velocities = self.velocities.len();
-        self.paths.resize(velocities, 0.0);
+        self.profile.resize(velocities, 0.0);
         for line in 0..LINES {
             self.spectra[line].clear();
             self.spectra[line].resize(velocities, 0.0);
@@ -199,16 +201,16 @@ impl ReducedPair {
             dispatch(Trace {
                 components: lines.map(|line| &line.components[..]),
                 same,
-                velocities: &self.velocities,
+                velocities: &self.single_velocities,
                 cells: &self.cells,
                 sources: &self.sources,
-                paths: &mut self.paths,
+                profile: &mut self.profile,
                 intensity: [thick, thin],
             });
             for line in 0..LINES {
                 let weight = area * beam_density(impact, 0.0, beams[line]);
                 for (sum, value) in self.spectra[line].iter_mut().zip(&self.intensity[line]) {
-                    *sum += weight * value;
+                    *sum += weight * f64::from(*value);
                 }
             }
         }
@@ -255,6 +257,9 @@ impl ReducedPair {
         self.velocities.clear();
         self.velocities
             .extend((0..count).map(|index| low + STEP * index as f64));
+        self.single_velocities.clear();
+        self.single_velocities
+            .extend(self.velocities.iter().map(|v| single(*v)));
     }
 
     /// Opacity and source of both lines at the tabulated radii.
@@ -412,11 +417,18 @@ struct Trace<'a> {
     components: [&'a [Component]; LINES],
     /// Whether both lines have the same components.
     same: bool,
-    velocities: &'a [f64],
+    velocities: &'a [f32],
     cells: &'a [Cell],
     sources: &'a [[f64; LINES]],
-    paths: &'a mut [f64],
-    intensity: [&'a mut [f64]; LINES],
+    profile: &'a mut [f32],
+    intensity: [&'a mut [f32]; LINES],
+}
+
+/// A number as precise as spectra are needed.
+#[inline(always)]
+#[expect(clippy::cast_possible_truncation, reason = "1e-7 of a spectrum is nothing")]
+fn single(value: f64) -> f32 {
+    value as f32
 }
 
 impl Kernel for Trace<'_> {
@@ -437,29 +449,98 @@ impl Kernel for Trace<'_> {
             let inverse = 1.0 / cell.width;
             for line in 0..LINES {
                 if line == 0 || !self.same {
-                    self.paths.fill(0.0);
+                    self.profile.fill(0.0);
                     for component in self.components[line] {
-                        let centre = side * cell.speed + component.offset_km_s;
-                        let height = component.weight * inverse;
-                        add_profile::<A>(self.velocities, centre, inverse, height, self.paths);
+                        let centre = single(side * cell.speed + component.offset_km_s);
+                        let height = single(component.weight * inverse);
+                        add_gaussian(self.velocities, centre, single(inverse), height, self.profile);
                     }
                 }
-                let opacity = cell.depth[line];
-                let inner = opacity * self.sources[index][line];
-                let outer = opacity * self.sources[index + 1][line];
-                let (enters, leaves) = if near { (inner, outer) } else { (outer, inner) };
-                let passage = PassageTransfer {
-                    opacity,
-                    enters,
-                    leaves,
-                };
-                if line == 0 {
-                    passage.pass::<A>(self.paths, thick);
+                let (inner, outer) = (self.sources[index][line], self.sources[index + 1][line]);
+                let ends = if near { [inner, outer] } else { [outer, inner] }.map(single);
+                let depth = single(cell.depth[line]);
+                let intensity = if line == 0 { &mut *thick } else { &mut *thin };
+                if depth * single(inverse) < SERIES_BELOW {
+                    pass_thin(self.profile, depth, ends, intensity);
                 } else {
-                    passage.pass::<A>(self.paths, thin);
+                    pass(self.profile, depth, ends, intensity);
                 }
             }
         }
+    }
+}
+
+/// Optical depth below which a cell's functions come from their series.
+const SERIES_BELOW: f32 = 0.3;
+
+/// e^-t of t >= 0, within 3e-7: 2^n times Taylor's polynomial of 2^f, abs(f) <= 1/2.
+#[inline(always)]
+fn exp_minus(t: f32) -> f32 {
+    /// 1.5 * 2^23: adding it rounds to an integer that then stands in the low mantissa bits.
+    const ROUNDER: f32 = 12_582_912.0;
+    const LN_2: f32 = std::f32::consts::LN_2;
+    const TERMS: [f32; 7] = [
+        LN_2 * LN_2 * LN_2 * LN_2 * LN_2 * LN_2 / 720.0,
+        LN_2 * LN_2 * LN_2 * LN_2 * LN_2 / 120.0,
+        LN_2 * LN_2 * LN_2 * LN_2 / 24.0,
+        LN_2 * LN_2 * LN_2 / 6.0,
+        LN_2 * LN_2 / 2.0,
+        LN_2,
+        1.0,
+    ];
+    let y = t.min(87.0) * -std::f32::consts::LOG2_E;
+    let rounded = y + ROUNDER;
+    let f = y - (rounded - ROUNDER);
+    let mut power = TERMS[0];
+    for term in &TERMS[1..] {
+        power = power * f + term;
+    }
+    f32::from_bits(power.to_bits().wrapping_add(rounded.to_bits() << 23))
+}
+
+#[inline(always)]
+fn add_gaussian(velocities: &[f32], centre: f32, inverse: f32, height: f32, row: &mut [f32]) {
+    let row = &mut row[..velocities.len()];
+    for (value, velocity) in row.iter_mut().zip(velocities) {
+        let x = (velocity - centre) * inverse;
+        *value += height * exp_minus(0.5 * x * x);
+    }
+}
+
+/// Shares of the sources at both ends in what a cell emits, of a small optical depth t: g - e^-t and 1 - g,
+/// g = (1 - e^-t)/t.
+#[inline(always)]
+fn shares(t: f32) -> [f32; 2] {
+    let first = t * (0.5 - t * (1.0 / 3.0 - t * (0.125 - t * (1.0 / 30.0 - t * (1.0 / 144.0)))));
+    let last = t * (0.5 - t * (1.0 / 6.0 - t * (1.0 / 24.0 - t * (1.0 / 120.0 - t * (1.0 / 720.0)))));
+    [first, last]
+}
+
+/// Takes intensities through a cell whose source is linear in optical depth between its ends.
+#[inline(always)]
+fn pass(profile: &[f32], depth: f32, [enters, leaves]: [f32; 2], intensity: &mut [f32]) {
+    let intensity = &mut intensity[..profile.len()];
+    for (intensity, phi) in intensity.iter_mut().zip(profile) {
+        let t = depth * phi;
+        let e = exp_minus(t);
+        let g = (1.0 - e) / t.max(0.5 * SERIES_BELOW);
+        let [first, last] = shares(t);
+        let small = t < SERIES_BELOW;
+        let first = if small { first } else { g - e };
+        let last = if small { last } else { 1.0 - g };
+        *intensity = *intensity * e + enters * first + leaves * last;
+    }
+}
+
+/// The same where no optical depth is large.
+#[inline(always)]
+fn pass_thin(profile: &[f32], depth: f32, [enters, leaves]: [f32; 2], intensity: &mut [f32]) {
+    let intensity = &mut intensity[..profile.len()];
+    for (intensity, phi) in intensity.iter_mut().zip(profile) {
+        let t = depth * phi;
+        let [first, last] = shares(t);
+        // 1 - e^-t is the sum of both
+        *intensity += enters * first + leaves * last - *intensity * (first + last);
     }
 }
 
