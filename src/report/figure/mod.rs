@@ -10,7 +10,6 @@ mod axis;
 mod calibration;
 mod canvas;
 mod export;
-mod frame;
 mod layout;
 mod pair;
 mod plot;
