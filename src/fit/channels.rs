@@ -203,7 +203,8 @@ impl Channels {
     /// Makes columns white as the data are, but leaves their unit.
     pub fn decorrelate(&self, columns: &mut [f64]) {
         if let Some(whitener) = &self.whitener {
-            for column in columns.chunks_exact_mut(self.len()) {
+            // a side of a line without a channel has no columns
+            for column in columns.chunks_exact_mut(self.len().max(1)) {
                 whitener.whiten(&self.segments, column);
             }
         }

@@ -8,6 +8,7 @@ mod amplitudes;
 pub mod averaged;
 mod cautions;
 mod channels;
+pub mod clump;
 pub mod conflict;
 pub mod hypotheses;
 mod joint;

@@ -27,14 +27,14 @@ pub(super) enum Scale {
     Log,
 }
 
-/// Colours of groups, told apart by their shapes too.
+/// Colours of groups, told apart by their shapes too. No blue and no red: those are senses of asymmetry.
 pub(super) const GROUPS: [RGBColor; 6] = [
-    RGBColor(22, 82, 160),
-    RGBColor(200, 62, 18),
-    RGBColor(30, 120, 90),
-    RGBColor(150, 100, 10),
+    RGBColor(22, 112, 104),
+    RGBColor(214, 138, 10),
     RGBColor(92, 30, 104),
-    RGBColor(88, 96, 105),
+    RGBColor(120, 140, 40),
+    RGBColor(60, 66, 74),
+    RGBColor(170, 110, 150),
 ];
 
 /// A frame on the page.
