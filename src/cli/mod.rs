@@ -6,6 +6,7 @@ mod cite;
 mod fit;
 mod interrupt;
 mod lines;
+mod map;
 mod output;
 mod pair;
 mod progress;
@@ -78,6 +79,7 @@ enum Command {
     Cite(cite::CiteArguments),
     Fit(Box<fit::FitArguments>),
     Lines(lines::LinesArguments),
+    Map(map::MapArguments),
     Rank(rank::RankArguments),
     Simulate(simulate::SimulateArgs),
 }
@@ -103,6 +105,7 @@ pub fn main() -> ExitCode {
         Command::Cite(cite) => cite::run(cite),
         Command::Fit(fit) => fit::run(fit, &output),
         Command::Lines(lines) => lines::run(lines),
+        Command::Map(map) => map::run(map, arguments.threads, &output),
         Command::Rank(sample) => rank::run(sample, arguments.threads, &output),
         Command::Simulate(simulate) => simulate::run(simulate, arguments.threads, &output),
     };

@@ -370,7 +370,7 @@ pub(super) fn resolved(
 }
 
 /// A path as seen from a directory; absolute where the two share no root.
-fn relative(path: &Path, from: &Path) -> PathBuf {
+pub(super) fn relative(path: &Path, from: &Path) -> PathBuf {
     let (Ok(path), Ok(from)) = (path.canonicalize(), from.canonicalize()) else {
         return path.to_owned();
     };
