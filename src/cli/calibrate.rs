@@ -27,8 +27,8 @@ pub struct CalibrateArguments {
     #[command(flatten)]
     pair: PairArguments,
 
-    /// Pairs that move, and as many at rest, at the observation's own noise; a fifth of that at six other
-    /// noise levels.
+    /// Pairs that move, and as many at rest, at the observation's own noise; a fifth of that at seven
+    /// other noise levels.
     #[arg(long, value_name = "N", help_heading = "Calibration")]
     pairs: Option<usize>,
 

@@ -13,14 +13,14 @@ pub(super) use products::{found_label, needed, percent};
 pub use statistics::{Level, NINE_IN_TEN, Needed, Share, Statistics};
 
 use super::{
-    BatchSettings, LineInput, LineOutcome, PairInput, PairOutcome, PairSettings, Progress,
+    BatchSettings, Judged, LineInput, LineOutcome, PairInput, PairOutcome, PairSettings, Progress,
     RunError, fit_spectra, pair_row,
 };
 use crate::derive::{DRAWS_LIMITS, SourceProperties};
 use crate::fit::{ModelFit, Workspace};
 use crate::model::{Model, Sampling};
 use crate::prepare::PrepareSettings;
-use crate::report::{Row, Value};
+use crate::report::Row;
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::SeedableRng;
 use std::ops::ControlFlow;
@@ -67,12 +67,12 @@ impl CalibrateSettings {
 
     /// Pairs of each kind at another noise level.
     fn fewer(&self) -> usize {
-        (self.pairs / 5).max(PAIRS_LIMITS.0)
+        (self.pairs / 5).max(10)
     }
 }
 
 /// Noise levels over the observation's own.
-pub const NOISE_FACTORS: [f64; 7] = [1.0, 0.125, 0.25, 0.5, 2.0, 4.0, 8.0];
+pub const NOISE_FACTORS: [f64; 8] = [1.0, 0.125, 0.25, 0.5, 2.0, 4.0, 8.0, 16.0];
 
 /// What an observation's calibration found.
 #[derive(Clone, Debug)]
@@ -148,7 +148,9 @@ pub struct Found {
     pub interval68_km_s: Option<(f64, f64)>,
     /// Its 95 % interval, km/s: of formal errors, two either way.
     pub interval95_km_s: Option<(f64, f64)>,
-    /// Probabilities of infall, expansion, rest and two clouds; `None` of formal fits.
+    /// Whether speed and errors are formal.
+    pub formal: bool,
+    /// Probabilities of infall, expansion, rest and two clouds; `None` without posteriors.
     pub probabilities: Option<[f64; 4]>,
     /// Cautions.
     pub cautions: String,
@@ -165,7 +167,9 @@ impl Found {
     /// speed beyond [`FOUND_ERRORS`].
     #[must_use]
     pub fn moves(&self, inward: bool) -> bool {
-        if let Some([infall, expansion, ..]) = self.probabilities {
+        if let Some([infall, expansion, ..]) = self.probabilities
+            && !self.formal
+        {
             return if inward { infall } else { expansion } > FOUND_FROM;
         }
         let (Some(v_in), Some(err)) = (self.v_in_km_s, self.err_km_s) else {
@@ -198,13 +202,9 @@ impl Found {
             interval95_km_s: of95.or_else(|| formal(2.0)),
             v_in_km_s,
             err_km_s,
+            formal: row.get("v_in_errors")?.text() == Some("formal"),
             probabilities,
-            cautions: row
-                .get("cautions")
-                .ok()
-                .and_then(Value::text)
-                .unwrap_or_default()
-                .to_owned(),
+            cautions: row.get("cautions")?.text().unwrap_or_default().to_owned(),
         })
     }
 }
@@ -267,42 +267,28 @@ pub fn calibrate(
     let total = tasks.len();
     let settings = injected_settings(settings);
     let mut injections = Vec::with_capacity(total);
-    let mut failed = None;
-    let ended = batch.run(
+    let _ = batch.run(
         tasks.iter().copied(),
         Workspace::new,
         |workspace, task: Task| {
-            let true_v_in_km_s = match task.kind {
-                Kind::Moving => v_in_km_s,
-                Kind::AtRest => 0.0,
-            };
             let found = injected(&mould, task, how.seed, &settings, workspace);
-            Ok::<Injection, RunError>(Injection {
-                kind: task.kind,
-                noise_factor: task.noise_factor,
-                true_v_in_km_s,
-                found: found.map_err(|error| error.to_string()),
-            })
+            Ok(task.injection(v_in_km_s, found))
         },
-        |_, injection| {
-            match injection {
-                Ok(injection) => injections.push(injection),
-                Err(error) => {
-                    failed = Some(error);
-                    return ControlFlow::Break(());
-                }
-            }
+        |number, injection| {
+            let task = usize::try_from(number)
+                .ok()
+                .and_then(|index| tasks.get(index));
+            // a panic is that injection's error
+            let failed = |error: RunError| Some(task?.injection(v_in_km_s, Err(error)));
+            injections.extend(injection.map_or_else(failed, Some));
             progress(Progress {
                 done: injections.len() as u64,
                 before: 0,
                 items: total as u64,
             });
-            ControlFlow::Continue(())
+            ControlFlow::<()>::Continue(())
         },
     )?;
-    if let (ControlFlow::Break(()), Some(error)) = (ended, failed) {
-        return Err(error);
-    }
     let levels = statistics::levels(&injections, v_in_km_s, signal_to_noise);
     let calibration = Calibration {
         source: outcome.name.clone(),
@@ -313,7 +299,7 @@ pub fn calibrate(
         model: fit.model,
         v_in_km_s,
         signal_to_noise,
-        formal: settings.verdict.is_none(),
+        formal: outcome.judged.as_ref().and_then(Judged::adopted).is_none(),
         levels,
         injections,
     };
@@ -381,6 +367,20 @@ fn injected_settings(settings: &PairSettings) -> PairSettings {
     let mut settings = settings.clone();
     settings.derive.draws = DRAWS_LIMITS.0;
     settings
+}
+
+impl Task {
+    fn injection(self, v_in_km_s: f64, found: Result<Found, RunError>) -> Injection {
+        Injection {
+            kind: self.kind,
+            noise_factor: self.noise_factor,
+            true_v_in_km_s: match self.kind {
+                Kind::Moving => v_in_km_s,
+                Kind::AtRest => 0.0,
+            },
+            found: found.map_err(|error| error.to_string()),
+        }
+    }
 }
 
 fn tasks(how: &CalibrateSettings) -> Vec<Task> {

@@ -206,6 +206,7 @@ impl RunError {
                 | Self::NoLine { .. }
                 | Self::Line { .. }
                 | Self::Setting { .. }
+                | Self::Judge(_)
                 | Self::Derive(_)),
             ) => Self::InSheet {
                 path: path.to_owned(),

@@ -1,14 +1,13 @@
 //! The figure of a calibration: speeds found of injected pairs, and how they go with the signal-to-noise
 //! ratio.
 
-use super::axis::{Axis, extent};
+use super::axis::extent;
 use super::canvas::{Align, Canvas, page};
 use super::export;
-use super::frame::{Tick, frame, height_below_mm, round_ticks};
 use super::layout::{MARGIN_MM, Numbers, PAGE_MM, PLOT_RIGHT_MM};
+use super::plot::{Frame, HEIGHT_BELOW_MM, Scale};
 use super::style::{
-    self, GUIDE, LABEL, NOTE, PAPER, SOFT_LABEL, Stroke, TITLE, V_LSR, VALUE, ZERO, leading_mm,
-    solid,
+    self, LABEL, NOTE, PAPER, SOFT_LABEL, Stroke, TITLE, V_LSR, VALUE, ZERO, leading_mm, solid,
 };
 use super::text;
 use crate::report::ReportError;
@@ -76,6 +75,8 @@ const LEFT_MM: f64 = MARGIN_MM + 8.5;
 /// Right end of the left one of two plots, left end of the right one.
 const LEFT_PLOT_END_MM: f64 = 43.0;
 const RIGHT_PLOT_START_MM: f64 = 53.5;
+/// Right end of the histogram: half a tick's label fits beside it.
+const SPEEDS_RIGHT_MM: f64 = 83.0;
 const BINS: usize = 36;
 const DOT_MM: f64 = 0.55;
 /// What is true, and false alarms: two strokes of the models' kind.
@@ -92,11 +93,11 @@ fn draw(figure: &CalibrationFigure) -> Result<String, ReportError> {
     let words_end = title_end + leading_mm(LABEL) * words.len() as f64 + 1.0;
     let speeds_top = words_end + leading_mm(VALUE) + 1.4;
     let speeds_bottom = speeds_top + SPEEDS_MM;
-    let levels_heading = speeds_bottom + height_below_mm() + 2.2;
+    let levels_heading = speeds_bottom + HEIGHT_BELOW_MM + 2.2;
     let levels_top = levels_heading + leading_mm(VALUE) + 1.4;
     let levels_bottom = levels_top + LEVELS_MM;
     let numbers = Numbers::of(&figure.numbers);
-    let numbers_top = levels_bottom + height_below_mm() + 1.8;
+    let numbers_top = levels_bottom + HEIGHT_BELOW_MM + 1.8;
     let height_mm = numbers_top + leading_mm(LABEL) * numbers.lines() as f64 + 2.0 + MARGIN_MM;
     let heading = format!("{}: calibration", figure.source);
     page(PAGE_MM, height_mm, &heading, |canvas| {
@@ -171,44 +172,30 @@ fn speeds(canvas: &Canvas<'_>, figure: &CalibrationFigure, (top, bottom): (f64, 
     let ends = ends.flat_map(|(low, high)| [low, high]).chain(truths);
     let (low, high) = extent(ends).unwrap_or((-1.0, 1.0));
     let pad = (0.06 * (high - low)).max(1e-3);
-    let horizontal = Axis {
-        low: low - pad,
-        high: high + pad,
-        start_mm: LEFT_MM,
-        end_mm: PLOT_RIGHT_MM,
-    };
-    let counts = found.map(|values| histogram(values, &horizontal));
+    let across = (low - pad, high + pad);
+    let counts = found.map(|values| histogram(values, across));
     let most = counts.iter().flatten().copied().max().unwrap_or(0).max(1);
-    let vertical = Axis {
-        low: 0.0,
-        high: 1.12 * most as f64,
-        start_mm: bottom,
-        end_mm: top,
-    };
+    let frame = Frame::new(
+        (LEFT_MM, SPEEDS_RIGHT_MM, top, bottom),
+        across,
+        (0.0, 1.12 * most as f64),
+        (Scale::Even, Scale::Even),
+    )
+    .with_ticks(8, 4);
     for (index, truth) in truths.into_iter().enumerate().rev() {
-        let x = horizontal.place_mm(truth);
+        let (x, _) = frame.place(truth, 0.0);
         let color = style::model(index).color;
         canvas.line(&[(x, top), (x, bottom)], solid(color, 0.14))?;
     }
     for (index, counts) in counts.iter().enumerate().rev() {
-        let outline = bars(counts, &horizontal, &vertical);
-        if index == MOVING {
+        let outline = bars(counts, &frame);
+        if index == MOVING && !outline.is_empty() {
             canvas.polygon(&outline, light(style::model(index).color))?;
         }
         canvas.line(&outline, style::model(index))?;
     }
-    frame(
-        canvas,
-        (&horizontal, &round_ticks(&horizontal, 8)),
-        (&vertical, &round_ticks(&vertical, 4)),
-        "inward speed found (km/s); thin lines: the true ones",
-    )?;
-    pairs_label(canvas, (top, bottom))
-}
-
-fn pairs_label(canvas: &Canvas<'_>, (top, bottom): (f64, f64)) -> Drawn {
-    let middle = f64::midpoint(top, bottom);
-    canvas.upward_text(&text::plain("pairs"), (MARGIN_MM + 2.4, middle), LABEL)
+    let name = "inward speed found (km/s); thin lines: the true ones";
+    frame.draw(canvas, (Some(name), Some("pairs")))
 }
 
 /// A colour mixed with paper.
@@ -217,53 +204,64 @@ fn light(RGBColor(red, green, blue): RGBColor) -> RGBColor {
     RGBColor(mixed(red), mixed(green), mixed(blue))
 }
 
-fn histogram(values: &[f64], axis: &Axis) -> Vec<usize> {
+fn histogram(values: &[f64], (low, high): (f64, f64)) -> Vec<usize> {
     let mut counts = vec![0; BINS];
-    let width = (axis.high - axis.low) / BINS as f64;
-    for value in values.iter().filter(|value| axis.contains(**value)) {
+    let width = (high - low) / BINS as f64;
+    for value in values.iter().filter(|value| (low..=high).contains(*value)) {
         #[expect(
             clippy::cast_possible_truncation,
             clippy::cast_sign_loss,
-            reason = "inside the axis"
+            reason = "inside the range"
         )]
-        let bin = ((value - axis.low) / width) as usize;
+        let bin = ((value - low) / width) as usize;
         counts[bin.min(BINS - 1)] += 1;
     }
     counts
 }
 
-/// The outline of a histogram, from the axis and back to it.
-fn bars(counts: &[usize], horizontal: &Axis, vertical: &Axis) -> Vec<(f64, f64)> {
-    let width = (horizontal.high - horizontal.low) / counts.len() as f64;
-    let x = |bin: usize| horizontal.place_mm(horizontal.low + width * bin as f64);
-    let mut outline = vec![(x(0), vertical.start_mm)];
-    for (bin, count) in counts.iter().enumerate() {
-        let y = vertical.place_mm(*count as f64);
-        outline.extend([(x(bin), y), (x(bin + 1), y)]);
+/// The outline of a histogram over the frame's width, from the axis and back to it.
+fn bars(counts: &[usize], frame: &Frame) -> Vec<(f64, f64)> {
+    let width = (frame.across.high - frame.across.low) / counts.len() as f64;
+    let at =
+        |bin: usize, count: usize| frame.place(frame.across.low + width * bin as f64, count as f64);
+    let held = |count: &usize| *count > 0;
+    let (Some(first), Some(last)) = (counts.iter().position(held), counts.iter().rposition(held))
+    else {
+        return Vec::new();
+    };
+    let mut outline = vec![at(first, 0)];
+    for (bin, count) in counts.iter().enumerate().take(last + 1).skip(first) {
+        outline.extend([at(bin, *count), at(bin + 1, *count)]);
     }
-    outline.push((x(counts.len()), vertical.start_mm));
+    outline.push(at(last + 1, 0));
     outline
 }
 
 /// Speeds and shares over the signal-to-noise ratio.
 fn levels(canvas: &Canvas<'_>, figure: &CalibrationFigure, (top, bottom): (f64, f64)) -> Drawn {
-    let ratios = figure.points.iter().map(|point| point.signal_to_noise.ln());
+    let ratios = figure
+        .points
+        .iter()
+        .map(|point| point.signal_to_noise.log10());
     let (low, high) = extent(ratios).unwrap_or((0.0, 1.0));
-    let across = |start_mm, end_mm| Axis {
-        low: low - 0.2,
-        high: high + 0.2,
-        start_mm,
-        end_mm,
+    let frame = |left: f64, right: f64, up: (f64, f64)| {
+        let place = (left, right, top, bottom);
+        let across = (low - 0.1, high + 0.1);
+        Frame::new(place, across, up, (Scale::Log, Scale::Even)).with_ticks(4, 5)
     };
-    let left = across(LEFT_MM, LEFT_PLOT_END_MM);
-    let right = across(RIGHT_PLOT_START_MM, PLOT_RIGHT_MM);
-    for horizontal in [&left, &right] {
-        let x = horizontal.place_mm(figure.signal_to_noise.ln());
+    let known = figure.points.iter().filter_map(|point| point.speed_km_s);
+    let ends = known.flat_map(|(speed, half)| [speed - half, speed + half]);
+    let ends = extent(ends.chain([0.0, figure.true_v_in_km_s])).unwrap_or((-1.0, 1.0));
+    let pad = (0.06 * (ends.1 - ends.0)).max(1e-3);
+    let speeds = frame(LEFT_MM, LEFT_PLOT_END_MM, (ends.0 - pad, ends.1 + pad));
+    let shares = frame(RIGHT_PLOT_START_MM, PLOT_RIGHT_MM, (0.0, 1.04));
+    for one in [&speeds, &shares] {
+        let (x, _) = one.place(figure.signal_to_noise, 0.0);
         canvas.line(&[(x, top), (x, bottom)], solid(V_LSR, 0.2))?;
     }
-    speeds_by_level(canvas, figure, &left, (top, bottom))?;
-    shares_by_level(canvas, figure, &right, (top, bottom))?;
-    let x = left.place_mm(figure.signal_to_noise.ln());
+    speeds_by_level(canvas, figure, &speeds)?;
+    shares_by_level(canvas, figure, &shares)?;
+    let (x, _) = speeds.place(figure.signal_to_noise, 0.0);
     let words = text::plain("this observation");
     let width = text::width_mm(&words, NOTE.size_pt, NOTE.weight);
     let align = if x + width > LEFT_PLOT_END_MM + 8.0 {
@@ -271,85 +269,34 @@ fn levels(canvas: &Canvas<'_>, figure: &CalibrationFigure, (top, bottom): (f64, 
     } else {
         Align::Start
     };
-    canvas.text(
-        &words,
-        (x, top - 0.5),
-        align,
-        style::Look {
-            color: V_LSR,
-            ..NOTE
-        },
-    )
+    let look = style::Look {
+        color: V_LSR,
+        ..NOTE
+    };
+    canvas.text(&words, (x, top - 0.5), align, look)
 }
 
-const RATIO_LABEL: &str = "peak over noise";
+const RATIO: &str = "peak over noise";
 
-fn speeds_by_level(
-    canvas: &Canvas<'_>,
-    figure: &CalibrationFigure,
-    horizontal: &Axis,
-    (top, bottom): (f64, f64),
-) -> Drawn {
-    let known: Vec<(f64, f64, f64)> = figure
-        .points
-        .iter()
-        .filter_map(|point| {
-            let (speed, half) = point.speed_km_s?;
-            Some((point.signal_to_noise.ln(), speed, half))
-        })
-        .collect();
-    let ends = known
-        .iter()
-        .flat_map(|(_, speed, half)| [speed - half, speed + half]);
-    let (low, high) = extent(ends.chain([0.0, figure.true_v_in_km_s])).unwrap_or((-1.0, 1.0));
-    let pad = (0.06 * (high - low)).max(1e-3);
-    let vertical = Axis {
-        low: low - pad,
-        high: high + pad,
-        start_mm: bottom,
-        end_mm: top,
-    };
-    let ends = |value: f64| {
-        let y = vertical.place_mm(value);
-        [(horizontal.start_mm, y), (horizontal.end_mm, y)]
-    };
-    canvas.line(&ends(0.0), solid(GUIDE, 0.16))?;
+fn speeds_by_level(canvas: &Canvas<'_>, figure: &CalibrationFigure, frame: &Frame) -> Drawn {
     let color = style::model(MOVING).color;
-    canvas.line(&ends(figure.true_v_in_km_s), solid(color, 0.14))?;
-    for (ratio, speed, half) in known {
-        let x = horizontal.place_mm(ratio);
-        let [low, high] = [speed - half, speed + half].map(|value| vertical.place_mm(value));
-        canvas.line(&[(x, low), (x, high)], solid(color, 0.3))?;
-        canvas.dot((x, vertical.place_mm(speed)), DOT_MM, color)?;
+    frame.level(canvas, 0.0)?;
+    let (_, y) = frame.place(figure.signal_to_noise, figure.true_v_in_km_s);
+    let ends = [(frame.across.start_mm, y), (frame.across.end_mm, y)];
+    canvas.line(&ends, solid(color, 0.14))?;
+    for point in &figure.points {
+        let Some((speed, half)) = point.speed_km_s else {
+            continue;
+        };
+        let at = |value: f64| frame.place(point.signal_to_noise, value);
+        canvas.line(&[at(speed - half), at(speed + half)], solid(color, 0.3))?;
+        canvas.dot(at(speed), DOT_MM, color)?;
     }
-    frame(
-        canvas,
-        (horizontal, &ratio_ticks(horizontal)),
-        (&vertical, &round_ticks(&vertical, 5)),
-        RATIO_LABEL,
-    )?;
-    let middle = f64::midpoint(top, bottom);
-    let label = text::plain("speed (km/s)");
-    canvas.upward_text(&label, (MARGIN_MM + 2.4, middle), LABEL)
+    frame.draw(canvas, (Some(RATIO), Some("speed (km/s)")))
 }
 
-fn shares_by_level(
-    canvas: &Canvas<'_>,
-    figure: &CalibrationFigure,
-    horizontal: &Axis,
-    (top, bottom): (f64, f64),
-) -> Drawn {
-    let vertical = Axis {
-        low: 0.0,
-        high: 1.03,
-        start_mm: bottom,
-        end_mm: top,
-    };
-    let y = vertical.place_mm(0.5);
-    canvas.line(
-        &[(horizontal.start_mm, y), (horizontal.end_mm, y)],
-        solid(GUIDE, 0.16),
-    )?;
+fn shares_by_level(canvas: &Canvas<'_>, figure: &CalibrationFigure, frame: &Frame) -> Drawn {
+    frame.level(canvas, 0.5)?;
     for index in [AT_REST, MOVING] {
         let stroke = style::model(index);
         let shares = figure.points.iter().map(|point| {
@@ -358,43 +305,23 @@ fn shares_by_level(
             } else {
                 point.false_alarms
             };
-            (horizontal.place_mm(point.signal_to_noise.ln()), share)
+            (point.signal_to_noise, share)
         });
         let shares: Vec<(f64, (f64, f64, f64))> = shares.collect();
-        let points: Vec<(f64, f64)> = shares
+        let points = shares
             .iter()
-            .map(|(x, (share, ..))| (*x, vertical.place_mm(*share)))
-            .collect();
-        canvas.line(
-            &points,
-            Stroke {
-                width_mm: 0.24,
-                ..stroke
-            },
-        )?;
-        for ((x, y), (_, (_, low, high))) in points.iter().zip(&shares) {
-            let [low, high] = [low, high].map(|value| vertical.place_mm(*value));
-            canvas.line(&[(*x, low), (*x, high)], solid(stroke.color, 0.2))?;
-            canvas.dot((*x, *y), DOT_MM, stroke.color)?;
+            .map(|(ratio, (share, ..))| frame.place(*ratio, *share));
+        let points: Vec<(f64, f64)> = points.collect();
+        let line = Stroke {
+            width_mm: 0.24,
+            ..stroke
+        };
+        canvas.line(&points, line)?;
+        for (at, (ratio, (_, low, high))) in points.iter().zip(&shares) {
+            let ends = [frame.place(*ratio, *low), frame.place(*ratio, *high)];
+            canvas.line(&ends, solid(stroke.color, 0.2))?;
+            canvas.dot(*at, DOT_MM, stroke.color)?;
         }
     }
-    let ticks: Vec<Tick> = [0, 50, 100]
-        .into_iter()
-        .map(|percent| (f64::from(percent) / 100.0, format!("{percent} %")))
-        .collect();
-    frame(
-        canvas,
-        (horizontal, &ratio_ticks(horizontal)),
-        (&vertical, &ticks),
-        RATIO_LABEL,
-    )
-}
-
-/// Round ratios on a logarithmic axis.
-fn ratio_ticks(axis: &Axis) -> Vec<Tick> {
-    let decades = (-2..=4).map(|power| 10f64.powi(power));
-    let all = decades.flat_map(|decade| [1.0, 3.0].map(|step| step * decade));
-    all.filter(|ratio| axis.contains(ratio.ln()))
-        .map(|ratio| (ratio.ln(), format!("{ratio}")))
-        .collect()
+    frame.draw(canvas, (Some(RATIO), Some("share of pairs")))
 }

@@ -11,7 +11,6 @@ mod calibration;
 mod canvas;
 mod contour;
 mod export;
-mod frame;
 mod layout;
 mod map;
 mod pair;

@@ -419,7 +419,7 @@ pub(in crate::run) fn needed(calibration: &Calibration, share: f64) -> String {
     };
     match calibration.needed(share) {
         Needed::At(needed) => format!("{needed:.0}, {}", times(needed)),
-        Needed::Below(lowest) => format!("below {lowest:.0}, {}", times(lowest)),
+        Needed::Below(lowest) => format!("below {lowest:.0}, less than {}", times(lowest)),
         Needed::Above(highest) => format!("more than {highest:.0}, if any is enough"),
     }
 }

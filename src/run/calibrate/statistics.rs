@@ -206,6 +206,7 @@ mod tests {
                 err_km_s: Some(half),
                 interval68_km_s: Some((v_in_km_s - half, v_in_km_s + half)),
                 interval95_km_s: Some((v_in_km_s - 2.0 * half, v_in_km_s + 2.0 * half)),
+                formal: false,
                 probabilities: Some([p_infall, 0.0, 1.0 - p_infall, 0.0]),
                 cautions: String::new(),
             }),
