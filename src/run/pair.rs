@@ -179,6 +179,34 @@ pub fn fit_spectra(
     settings: &PairSettings,
     workspace: &mut Workspace,
 ) -> Result<PairOutcome, RunError> {
+    refuse_exchanged_lines(&pair.thick.line, &pair.thin.line)?;
+    let prepared = prepare_lines(&pair)?;
+    fit_prepared(pair, prepared, settings, workspace)
+}
+
+/// Prepares both lines of a pair, the thick one first.
+pub(super) fn prepare_lines(pair: &PairInput) -> Result<(Prepared, Prepared), RunError> {
+    let (thick, thin) = (&pair.thick, &pair.thin);
+    let expected = |line: &Line| Expected {
+        components: line.components.clone(),
+        window: None,
+    };
+    prepare_pair(
+        (&thick.spectrum, &thick.prepare, &expected(&thick.line)),
+        (&thin.spectrum, &thin.prepare, &expected(&thin.line)),
+    )
+    .map_err(|error| {
+        RunError::of_pair(error, (thick.origin.path.clone(), thin.origin.path.clone()))
+    })
+}
+
+/// Measures and fits a pair whose lines are prepared.
+pub(super) fn fit_prepared(
+    pair: PairInput,
+    (prepared_thick, prepared_thin): (Prepared, Prepared),
+    settings: &PairSettings,
+    workspace: &mut Workspace,
+) -> Result<PairOutcome, RunError> {
     let PairInput {
         name,
         source,
@@ -186,18 +214,6 @@ pub fn fit_spectra(
         thin,
     } = pair;
     let (thick_line, thin_line) = (&thick.line, &thin.line);
-    refuse_exchanged_lines(thick_line, thin_line)?;
-    let expected = |line: &Line| Expected {
-        components: line.components.clone(),
-        window: None,
-    };
-    let (prepared_thick, prepared_thin) = prepare_pair(
-        (&thick.spectrum, &thick.prepare, &expected(thick_line)),
-        (&thin.spectrum, &thin.prepare, &expected(thin_line)),
-    )
-    .map_err(|error| {
-        RunError::of_pair(error, (thick.origin.path.clone(), thin.origin.path.clone()))
-    })?;
     let thin_fit = fit_thin(&prepared_thin, thin_line, &settings.fit, workspace)?;
     let systematic_km_s = thick_line
         .velocity_systematic_km_s()
@@ -331,7 +347,7 @@ impl LineInput {
 }
 
 /// A line's file, read and on the common scale.
-fn open(
+pub(super) fn open(
     section: &LineSection,
     which: &'static str,
     line: Line,
@@ -363,7 +379,7 @@ fn stem(path: &Path) -> String {
 }
 
 /// The rarer isotopologue as the thick line.
-fn refuse_exchanged_lines(thick: &Line, thin: &Line) -> Result<(), RunError> {
+pub(super) fn refuse_exchanged_lines(thick: &Line, thin: &Line) -> Result<(), RunError> {
     let exchanged =
         isotopologue_pair(thick, thin).is_none() && isotopologue_pair(thin, thick).is_some();
     if exchanged {

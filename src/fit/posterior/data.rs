@@ -68,7 +68,7 @@ impl ShapeErrors {
 
 /// A line's data.
 #[derive(Clone, Debug)]
-pub(super) struct LineData {
+pub(in crate::fit) struct LineData {
     channels: Channels,
     /// Data in the range, white, less the baseline and shape errors that all channels together suggest.
     data: Vec<f64>,

@@ -9,8 +9,10 @@ mod family;
 mod shapes;
 mod starts;
 
+pub(in crate::fit) use data::LineData;
 pub use data::ShapeErrors;
 pub use family::Family;
+pub(in crate::fit) use starts::{Kinematics, distinct, kinematics, shape_errors};
 
 use super::priors::Priors;
 use super::{Averaging, FitRange};
@@ -21,7 +23,6 @@ use crate::model::{LineShape, Model};
 use crate::numeric::sampling::{Draws, ImportanceSettings, Quality, sample};
 use crate::prepare::Prepared;
 use crate::spectrum::Window;
-use data::LineData;
 use family::Target;
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::SeedableRng;
