@@ -124,7 +124,10 @@ fn each_pointing(
     // The second pass waits in a temporary file, not in memory.
     let mut spool = BufWriter::new(tempfile::tempfile_in(directory).map_err(failed)?);
     for found in journal.results()?.skip(blocks) {
-        for replaced in found?.1.map_err(|failure| RunError::Internal(failure.message))? {
+        for replaced in found?
+            .1
+            .map_err(|failure| RunError::Internal(failure.message))?
+        {
             let bytes = postcard::to_allocvec(&replaced).map_err(|error| internal(&error))?;
             let length = u32::try_from(bytes.len()).unwrap_or(u32::MAX);
             spool.write_all(&length.to_be_bytes()).map_err(failed)?;
@@ -136,7 +139,10 @@ fn each_pointing(
     let mut spool = BufReader::new(spool);
     let mut next = next_of(&mut spool).map_err(failed)?;
     for found in journal.results()?.take(blocks) {
-        for (number, pointing) in found?.1.map_err(|failure| RunError::Internal(failure.message))? {
+        for (number, pointing) in found?
+            .1
+            .map_err(|failure| RunError::Internal(failure.message))?
+        {
             let site = usize::try_from(number).unwrap_or(usize::MAX);
             let replaced = next.take_if(|(other, _)| *other == number);
             if let Some((_, replaced)) = replaced {
