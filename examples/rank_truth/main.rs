@@ -9,6 +9,7 @@
 //! how often sources with a stated probability of a place among the first ten have one.
 #![allow(clippy::print_stdout, clippy::print_stderr)]
 
+#[path = "sources.rs"]
 mod sources;
 
 use inrush::rank::{Grade, Quantity, Source, rank_spreads};
