@@ -419,9 +419,8 @@ pub fn fit_pair(
     }
 
     let (thick_about, thin_about) = starts::about(&kinematics);
-    let merged_km_s = MERGED * narrowest / SHARPEST;
-    let thick_near = thick_channels.near(thick_about, merged_km_s);
-    let thin_near = thin_channels.near(thin_about, merged_km_s);
+    let thick_near = thick_channels.near(thick_about, 0.0);
+    let thin_near = thin_channels.near(thin_about, 0.0);
     let channels = (&thick_channels, &thin_channels);
     let near = (&thick_near, &thin_near);
     let mut scan = Scan::new(
@@ -497,8 +496,8 @@ fn default_range(thick: &Prepared, thin: &Prepared) -> Window {
 /// and a signal-to-noise ratio up to 100 (tests/evaluates_models.rs).
 const SHARPEST: f64 = 0.3;
 
-/// Width over which searches average neighbouring channels, in the thin line's dispersion: enough to tell
-/// valleys of chi2 apart. Where they end, every channel counts.
+/// Width over which the search of the thin line alone averages neighbouring channels, in its dispersion.
+/// Beside a thick line that loses minima: 11 of 2000 pairs instead of 6 with 0.35, 28 with 0.5.
 const MERGED: f64 = 0.35;
 
 /// The dispersion of the gas in that of a self-absorbed thick line's intensity, at least.

@@ -64,9 +64,9 @@ pub(super) fn kinematics(thin_line: Option<&ThinLine>, thick: Kinematics) -> Vec
 }
 
 /// How far from its centre a line reaches, in the largest dispersion of the candidates.
-const REACH: f64 = 4.5;
+const REACH: f64 = 3.6;
 /// The same of the thick line, whose halves are at the fastest speed from the centre.
-const THICK_REACH: f64 = 6.0;
+const THICK_REACH: f64 = 4.5;
 
 /// Velocities about a thick and a thin line of these kinematics; outside, candidates are zero.
 pub(super) fn about(kinematics: &[Kinematics]) -> (Window, Window) {
