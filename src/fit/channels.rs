@@ -265,9 +265,10 @@ impl Channels {
 
     /// Makes columns white as the data are, but leaves their unit.
     pub fn decorrelate(&self, columns: &mut [f64]) {
-        if let Some(whitener) = &self.whitener {
-            // a side of a line without a channel has no columns
-            for column in columns.chunks_exact_mut(self.len().max(1)) {
+        if let Some(whitener) = &self.whitener
+            && !self.is_empty()
+        {
+            for column in columns.chunks_exact_mut(self.len()) {
                 whitener.whiten(&self.segments, column);
             }
         }
@@ -287,6 +288,12 @@ impl Channels {
                 whitener.whiten(std::slice::from_ref(&part), column);
             }
         }
+    }
+
+    /// Runs of channels that follow each other.
+    #[must_use]
+    pub fn segments(&self) -> &[Range<usize>] {
+        &self.segments
     }
 
     /// Order of the noise's process.

@@ -166,7 +166,7 @@ pub fn clump_posterior(
         .collect();
     let peaks = distinct(peaks, DIMENSIONS);
     let draws =
-        sample(&mut target, &peaks, &settings.sampling, &mut generator).ok_or_else(|| {
+        sample(&mut target, &peaks, &[], &settings.sampling, &mut generator).ok_or_else(|| {
             PosteriorError::NoMass {
                 family: "sphere".to_owned(),
             }

@@ -12,7 +12,7 @@ mod mixture;
 mod pareto;
 mod peak;
 
-pub use importance::{Draws, ImportanceSettings, Quality, sample};
+pub use importance::{Doubt, Draws, ImportanceSettings, Quality, sample};
 pub use matrix::{MOST_DIMENSIONS, Matrix, Point};
 pub use mixture::StudentMixture;
 pub(crate) use mixture::uniform;
