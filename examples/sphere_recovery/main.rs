@@ -63,31 +63,18 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
             Ok(())
         }
         "judge" => {
-            let mut priors = inrush::fit::clump::ClumpPriors::default();
-            let env = |name: &str, to: &mut inrush::fit::clump::Normal| {
-                if let Ok(text) = std::env::var(name) {
-                    let (a, b) = text.split_once(':').unwrap();
-                    *to = inrush::fit::clump::Normal::of(a.parse().unwrap(), b.parse().unwrap());
-                }
-            };
-            env("DEPTH", &mut priors.ln_depth);
-            env("SLOPE", &mut priors.opacity_slope);
-            env("COLL", &mut priors.ln_collision_ratio);
-            env("EXCESS", &mut priors.excess_slope);
-            env("TSLOPE", &mut priors.temperature_slope);
-            env("TKIN", &mut priors.ln_t_kin);
-            env("RATIO", &mut priors.ln_isotope_ratio);
-            env("BEAM", &mut priors.ln_beam_over_radius);
-            env("RESP", &mut priors.opacity_response);
-            env("THIN", &mut priors.thin_slope);
-            if let Ok(text) = std::env::var("SCALE") { priors.thin_scale = text.parse().unwrap(); }
             let mut sampling = ClumpSettings::default().sampling;
             let count = |name: &str, to: &mut usize| if let Ok(t) = std::env::var(name) { *to = t.parse().unwrap() };
             count("ROUND", &mut sampling.round);
             count("ROUNDS", &mut sampling.most_rounds);
             count("SPREAD", &mut sampling.spread);
+            if let Ok(t) = std::env::var("WIDER") { sampling.wider = t.parse().unwrap() }
+            let mut ensemble = ClumpSettings::default().ensemble;
+            count("WALKERS", &mut ensemble.walkers);
+            count("STEPS", &mut ensemble.steps);
             let settings = ClumpSettings {
-                priors, sampling,
+                ensemble,
+                sampling,
                 law: law(arguments.get(3))?,
                 shape_error: number(4, inrush::fit::clump::SHAPE_ERROR)?,
                 ..ClumpSettings::default()
@@ -109,6 +96,19 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
                     Ok(found) => {
                         let row = Row::new(&found, drawn.v_in_km_s, snr);
                         println!("{index} {} {}", drawn.text(), row.text());
+                        if std::env::var("SHOW").is_ok() {
+                            let d = &found.posterior.draws;
+                            let names = ["v_lsr", "ln_sigma", "u", "ln_depth", "a", "ln_e", "excess", "m", "ln_ratio", "ln_beam", "resp", "thin"];
+                            for (k, name) in names.iter().enumerate() {
+                                let (mean, sd) = d.moments(|p| p[k]);
+                                let v = |p: &inrush::numeric::sampling::Point| p[2] * p[1].exp();
+                                let (vm, vs) = d.moments(v);
+                                let (c, _) = d.moments(|p| (p[k] - mean) * (v(p) - vm) / sd / vs);
+                                print!("   {name} {mean:.3}+-{sd:.3} (best {:.3}, r {c:+.2})", found.posterior.best[k]);
+                            }
+                            println!();
+                            println!("   truth: v_lsr {:.3} ln_sigma {:.3} u {:.3} ln_ratio {:.3} ln_beam {:.3}", drawn.v_lsr_km_s, drawn.sigma_km_s.ln(), drawn.v_in_km_s/drawn.sigma_km_s, drawn.ratio.ln(), drawn.beam_over_radius.ln());
+                        }
                         rows.push(row);
                     }
                     Err(error) => println!("{index} {}: {error}", drawn.text()),

@@ -16,7 +16,7 @@ use super::Averaging;
 use crate::line::Line;
 use crate::measure::ThinLine;
 use crate::model::LineShape;
-use crate::numeric::sampling::{Density, Draws, ImportanceSettings, MOST_DIMENSIONS, Peak, Point, Quality, ascend, sample};
+use crate::numeric::sampling::{Density, Draws, EnsembleSettings, settle, ImportanceSettings, MOST_DIMENSIONS, Peak, Point, Quality, ascend, sample};
 use crate::prepare::Prepared;
 use crate::spectrum::Window;
 use rand_chacha::ChaCha8Rng;
@@ -60,14 +60,16 @@ impl SpeedLaw {
 pub struct ClumpSettings {
     /// How the speed depends on the radius.
     pub law: SpeedLaw,
-    /// Priors.
-    pub priors: ClumpPriors,
+    /// Priors; `None` takes those at the thick line's frequency.
+    pub priors: Option<ClumpPriors>,
     /// FWHM of the thin line's beam over the thick line's.
     pub beam_ratio: f64,
     /// Standard deviation of smooth departures from any sphere, over each line's peak.
     pub shape_error: f64,
     /// How the model's value in a channel is formed.
     pub averaging: Averaging,
+    /// How long walkers settle before draws.
+    pub ensemble: EnsembleSettings,
     /// How much is drawn.
     pub sampling: ImportanceSettings,
     /// Seed of all draws.
@@ -75,17 +77,26 @@ pub struct ClumpSettings {
 }
 
 /// Departure of clumps from the reduced sphere, over the peak.
-pub const SHAPE_ERROR: f64 = 0.015;
+pub const SHAPE_ERROR: f64 = 0.025;
 
 impl Default for ClumpSettings {
     fn default() -> Self {
         Self {
             law: SpeedLaw::Constant,
-            priors: ClumpPriors::default(),
+            priors: None,
             beam_ratio: 1.0,
             shape_error: SHAPE_ERROR,
             averaging: Averaging::Channel,
-            sampling: ImportanceSettings::default(),
+            ensemble: EnsembleSettings {
+                walkers: 48,
+                steps: 120,
+            },
+            sampling: ImportanceSettings {
+                round: 500,
+                most_rounds: 8,
+                wider: 1.6,
+                ..ImportanceSettings::default()
+            },
             seed: 1,
         }
     }
@@ -138,24 +149,30 @@ pub fn clump_posterior(
         LineData::new(prepared, &shape, range, settings.averaging, 0.6 * about.sigma_km_s, &errors)
     };
     let data = [line_data(thick, lines.0), line_data(thin, lines.1)];
+    let frequency = lines.0.rest_frequency_ghz;
+    let priors = settings.priors.unwrap_or_else(|| ClumpPriors::at_frequency(frequency));
     let mut target = Target::new(
         [&data[0], &data[1]],
         range,
-        &settings.priors,
+        &priors,
         settings.law.slope(),
         settings.beam_ratio,
     );
     let mut generator = ChaCha8Rng::seed_from_u64(settings.seed);
     let scales = scales(about.sigma_km_s);
+    let no_mass = || PosteriorError::NoMass {
+        family: "sphere".to_owned(),
+    };
     let starts = starts(&mut target, &kinematics);
     let peaks: Vec<Peak> = starts
         .iter()
         .filter_map(|start| ascend(&mut target, start, &scales, 40))
         .collect();
     let peaks = distinct(peaks, DIMENSIONS);
-    let draws = sample(&mut target, &peaks, &settings.sampling, &mut generator).ok_or_else(|| {
-        PosteriorError::NoMass { family: "sphere".to_owned() }
-    })?;
+    let best = peaks.first().map(|peak| peak.point).ok_or_else(no_mass)?;
+    let settled = settle(&mut target, &peaks, &settings.ensemble, &mut generator);
+    let draws =
+        sample(&mut target, &settled, &settings.sampling, &mut generator).ok_or_else(no_mass)?;
     let v_in: Vec<(f64, f64)> = draws
         .points
         .iter()
@@ -164,12 +181,12 @@ pub fn clump_posterior(
         .collect();
     Ok(ClumpPosterior {
         law: settings.law,
-        v_in_km_s: interval(&v_in).ok_or_else(|| PosteriorError::NoMass { family: "sphere".to_owned() })?,
+        v_in_km_s: interval(&v_in).ok_or_else(no_mass)?,
         ln_evidence: draws.ln_integral,
         ln_evidence_err: draws.ln_integral_err,
         quality: draws.quality,
         evaluations: target.evaluations,
-        best: peaks[0].point,
+        best,
         draws,
     })
 }

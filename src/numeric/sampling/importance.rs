@@ -18,6 +18,8 @@ pub struct ImportanceSettings {
     pub most_rounds: usize,
     /// Components of the first proposal about each peak, beside a narrow and a wide one.
     pub spread: usize,
+    /// How much wider than its peak the wide component is.
+    pub wider: f64,
     /// Effective sample size at which drawing ends.
     pub effective: f64,
     /// Logarithm of an integral that does not matter: drawing ends after the second round where the
@@ -32,6 +34,7 @@ impl Default for ImportanceSettings {
             fewest_rounds: 3,
             most_rounds: 16,
             spread: 2,
+            wider: 2.5,
             effective: 500.0,
             negligible: f64::NEG_INFINITY,
         }
@@ -89,9 +92,6 @@ const KEPT_SHARE: f64 = 0.1;
 /// Powers of the weights that the proposals of the first rounds are fitted to: wider than the density.
 const POWERS: [f64; 3] = [0.3, 0.5, 0.7];
 
-/// The wide component about each peak is this much wider.
-const WIDER: f64 = 2.5;
-
 /// Weighted draws of a density about its peaks; `None` where no peak has a scatter or every draw has
 /// the density zero.
 pub fn sample(
@@ -102,18 +102,14 @@ pub fn sample(
 ) -> Option<Draws> {
     let dimensions = density.dimensions();
     let chi_squared = Freedom::new()?;
-    let wide = |scatter: &Matrix| scatter.map(|row| row.map(|value| WIDER * WIDER * value));
-    let about = |scatter: fn(&Peak) -> Matrix| {
-        StudentMixture::new(
-            dimensions,
-            peaks.iter().map(move |peak| (peak.point, scatter(peak))),
-        )
+    let wider = settings.wider;
+    let wide = |scatter: &Matrix| scatter.map(|row| row.map(|value| wider * wider * value));
+    let about = |scatter: &dyn Fn(&Matrix) -> Matrix| {
+        let each = peaks.iter().map(|peak| (peak.point, scatter(&peak.scatter)));
+        StudentMixture::new(dimensions, each)
     };
-    let narrow = about(|peak| peak.scatter);
-    let first = about(|peak| {
-        peak.scatter
-            .map(|row| row.map(|value| WIDER * WIDER * value))
-    });
+    let narrow = about(&|scatter| *scatter);
+    let first = about(&wide);
     let spread = StudentMixture::new(
         dimensions,
         (0..settings.spread * peaks.len()).map(|index| {
