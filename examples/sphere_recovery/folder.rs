@@ -36,11 +36,7 @@ pub fn print(folder: &str, settings: &ClumpSettings) -> Result<(), Box<dyn Error
         let snr = number(truth, "snr_thick");
         let speed = number(truth, "v_at_radius_km_s");
         let [found, other] = SpeedLaw::ALL.map(|law| {
-            let settings = ClumpSettings {
-                law,
-                ..settings.clone()
-            };
-            infer(&thick, &thin, &lines, &settings)
+            infer(&thick, &thin, &lines, law, settings)
         });
         let (found, other) = (found?, other?);
         let odds = other.posterior.ln_evidence - found.posterior.ln_evidence;

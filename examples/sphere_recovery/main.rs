@@ -63,19 +63,8 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
             Ok(())
         }
         "judge" => {
-            let mut sampling = ClumpSettings::default().sampling;
-            let count = |name: &str, to: &mut usize| if let Ok(t) = std::env::var(name) { *to = t.parse().unwrap() };
-            count("ROUND", &mut sampling.round);
-            count("ROUNDS", &mut sampling.most_rounds);
-            count("SPREAD", &mut sampling.spread);
-            if let Ok(t) = std::env::var("WIDER") { sampling.wider = t.parse().unwrap() }
-            let mut ensemble = ClumpSettings::default().ensemble;
-            count("WALKERS", &mut ensemble.walkers);
-            count("STEPS", &mut ensemble.steps);
+            let law = law(arguments.get(3))?;
             let settings = ClumpSettings {
-                ensemble,
-                sampling,
-                law: law(arguments.get(3))?,
                 shape_error: number(4, inrush::fit::clump::SHAPE_ERROR)?,
                 ..ClumpSettings::default()
             };
@@ -92,23 +81,10 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
                 let snr = if snr > 0.0 { snr } else { drawn.snr };
                 let (thick, thin) = drawn.observed(snr, index as u64)?;
                 let lines = drawn.lines()?;
-                match infer(&thick, &thin, &lines, &settings) {
+                match infer(&thick, &thin, &lines, law, &settings) {
                     Ok(found) => {
                         let row = Row::new(&found, drawn.v_in_km_s, snr);
                         println!("{index} {} {}", drawn.text(), row.text());
-                        if std::env::var("SHOW").is_ok() {
-                            let d = &found.posterior.draws;
-                            let names = ["v_lsr", "ln_sigma", "u", "ln_depth", "a", "ln_e", "excess", "m", "ln_ratio", "ln_beam", "resp", "thin"];
-                            for (k, name) in names.iter().enumerate() {
-                                let (mean, sd) = d.moments(|p| p[k]);
-                                let v = |p: &inrush::numeric::sampling::Point| p[2] * p[1].exp();
-                                let (vm, vs) = d.moments(v);
-                                let (c, _) = d.moments(|p| (p[k] - mean) * (v(p) - vm) / sd / vs);
-                                print!("   {name} {mean:.3}+-{sd:.3} (best {:.3}, r {c:+.2})", found.posterior.best[k]);
-                            }
-                            println!();
-                            println!("   truth: v_lsr {:.3} ln_sigma {:.3} u {:.3} ln_ratio {:.3} ln_beam {:.3}", drawn.v_lsr_km_s, drawn.sigma_km_s.ln(), drawn.v_in_km_s/drawn.sigma_km_s, drawn.ratio.ln(), drawn.beam_over_radius.ln());
-                        }
                         rows.push(row);
                     }
                     Err(error) => println!("{index} {}: {error}", drawn.text()),
@@ -132,6 +108,7 @@ fn infer(
     thick: &Spectrum,
     thin: &Spectrum,
     lines: &(Line, Line),
+    law: SpeedLaw,
     settings: &ClumpSettings,
 ) -> Result<Found, String> {
     let prepare = PrepareSettings::default();
@@ -157,6 +134,7 @@ fn infer(
         &thin,
         (&lines.0, &lines.1),
         thin_fit.line.as_ref(),
+        law,
         settings,
     )
     .map_err(|error| error.to_string())?;
@@ -193,12 +171,19 @@ impl Row {
             trusted: found.posterior.quality.holds(),
             z: (v.median - truth) / half * truth.signum(),
             text: format!(
-                "neff {:.0} k {:.2} h {:.2} lnZ {:.2} n {}",
+                "neff {:.0} k {:.2} h {:.2} n {} chi2 {:.0}/{} {:+.1} {:.0}/{} {:+.1} {:?} with {}",
                 found.posterior.quality.effective,
                 found.posterior.quality.tail_shape.unwrap_or(0.0),
                 found.posterior.quality.halves,
-                found.posterior.ln_evidence,
-                found.posterior.evaluations
+                found.posterior.evaluations,
+                found.posterior.residuals.thick.chi2,
+                found.posterior.residuals.thick.channels,
+                found.posterior.residuals.thick.correlation,
+                found.posterior.residuals.thin.chi2,
+                found.posterior.residuals.thin.channels,
+                found.posterior.residuals.thin.correlation,
+                found.posterior.residuals.misfit,
+                found.posterior.speed_depends_on()[1].0,
             ),
             milliseconds: found.milliseconds,
         }
