@@ -16,6 +16,7 @@ use super::Averaging;
 use super::posterior::{
     Interval, Kinematics, LineData, PosteriorError, distinct, interval, kinematics, shape_errors,
 };
+use crate::constants::photon_temperature_k;
 use crate::line::Line;
 use crate::measure::ThinLine;
 use crate::model::LineShape;
@@ -64,7 +65,7 @@ impl SpeedLaw {
 /// How a clump's posterior is found.
 #[derive(Clone, Debug, PartialEq)]
 pub struct ClumpSettings {
-    /// Priors; `None` takes those at the thick line's frequency.
+    /// Priors; `None` takes [`ClumpPriors::of_line`].
     pub priors: Option<ClumpPriors>,
     /// FWHM of the thin line's beam over the thick line's.
     pub beam_ratio: f64,
@@ -293,8 +294,9 @@ pub fn clump_posterior(
             });
         }
     }
-    let frequency = lines.0.rest_frequency_ghz;
-    let priors = settings.priors.unwrap_or_else(|| ClumpPriors::at_frequency(frequency));
+    let priors = settings.priors.unwrap_or_else(|| {
+        ClumpPriors::of_line(lines.0.rest_frequency_ghz, is_to_ground(lines.0))
+    });
     let both = [&data[0], &data[1]];
     let mut target = Target::new(both, range, &priors, law.slope(), settings.beam_ratio);
     let mut generator = ChaCha8Rng::seed_from_u64(settings.seed);
@@ -328,6 +330,16 @@ pub fn clump_posterior(
         residuals,
         draws,
     })
+}
+
+/// Whether a line's lower state is known to be the ground state: its energy is below that of a photon by
+/// far.
+fn is_to_ground(line: &Line) -> bool {
+    const SHARE: f64 = 0.1;
+    let photon_k = photon_temperature_k(line.rest_frequency_ghz);
+    line.transition()
+        .and_then(|transition| transition.upper_energy_k)
+        .is_some_and(|upper_k| upper_k - photon_k < SHARE * photon_k)
 }
 
 /// Most steps toward a peak.

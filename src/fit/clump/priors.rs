@@ -74,12 +74,13 @@ pub struct ClumpPriors {
 }
 
 impl ClumpPriors {
-    /// Priors for a thick line of a frequency, nothing else known.
+    /// Priors for a thick line, nothing else known.
     ///
     /// Spontaneous emission outruns collisions the more, the higher the frequency: A ~ nu^3, and levels of
-    /// higher J have more ways to be reached.
+    /// higher J have more ways to be reached. A line to the ground state loses opacity where upper levels
+    /// fill; of others that is open.
     #[must_use]
-    pub fn at_frequency(frequency_ghz: f64) -> Self {
+    pub fn of_line(frequency_ghz: f64, to_ground: bool) -> Self {
         let ratio = 0.04 * (89.0 / frequency_ghz).powi(2);
         Self {
             ln_sigma: Normal::of_logarithm(0.6, 0.8),
@@ -92,7 +93,7 @@ impl ClumpPriors {
             ln_t_kin: Normal::of_logarithm(18.0, 0.5),
             ln_isotope_ratio: Normal::of_logarithm(50.0, 0.5),
             ln_beam_over_radius: Normal::of_logarithm(0.7, 0.7),
-            opacity_response: Normal::of(0.0, 0.7),
+            opacity_response: Normal::of(if to_ground { 0.4 } else { 0.0 }, 0.7),
             thin_slope: Normal::of(0.0, 0.5),
             thin_scale: 0.2,
         }
