@@ -1,6 +1,7 @@
 //! Inward speeds of spheres from their spectra, against the speeds that they were made with.
 
 #[path = "../examples/sphere_recovery/drawn.rs"]
+#[allow(dead_code, reason = "the example prints its text")]
 mod drawn;
 
 use inrush::fit::clump::{
@@ -34,7 +35,13 @@ fn prepared(thick: &Spectrum, thin: &Spectrum, lines: (Line, Line)) -> Pair {
         (thin, &settings, &expected(&lines.1)),
     )
     .unwrap();
-    let fit = fit_thin(&thin, &lines.1, &FitSettings::default(), &mut Workspace::new()).unwrap();
+    let fit = fit_thin(
+        &thin,
+        &lines.1,
+        &FitSettings::default(),
+        &mut Workspace::new(),
+    )
+    .unwrap();
     Pair {
         thick,
         thin,
@@ -104,7 +111,8 @@ fn reduced(v_in_km_s: f64, velocity_slope: f64, seed: u64) -> Pair {
 #[test]
 fn the_speed_of_a_sphere_of_the_fitted_kind_is_found() {
     for (seed, speed) in [(1, 0.3), (2, -0.2), (3, 0.0)] {
-        let found = reduced(speed, 0.0, seed).posterior(SpeedLaw::Constant, &ClumpSettings::default());
+        let found =
+            reduced(speed, 0.0, seed).posterior(SpeedLaw::Constant, &ClumpSettings::default());
         let (low, high) = found.v_in_km_s.interval95;
         assert!(low < speed && speed < high, "{speed}: {low} to {high}");
         assert!(high - low < 0.4, "{speed}: {low} to {high}");
@@ -117,9 +125,15 @@ fn free_fall_is_told_from_a_constant_speed_where_both_are_fast() {
     let settings = ClumpSettings::default();
     let odds = |pair: &Pair| {
         let lines = (&pair.lines.0, &pair.lines.1);
-        clump_posteriors(&pair.thick, &pair.thin, lines, pair.thin_line.as_ref(), &settings)
-            .unwrap()
-            .ln_odds_of_free_fall()
+        clump_posteriors(
+            &pair.thick,
+            &pair.thin,
+            lines,
+            pair.thin_line.as_ref(),
+            &settings,
+        )
+        .unwrap()
+        .ln_odds_of_free_fall()
     };
     let (falling, constant) = (odds(&reduced(0.25, 0.5, 4)), odds(&reduced(0.6, 0.0, 5)));
     assert!(falling > 0.0 && constant < 0.0, "{falling} {constant}");

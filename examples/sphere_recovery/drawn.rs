@@ -1,8 +1,8 @@
 //! Random clumps in statistical equilibrium into noiseless and into noisy pairs.
 
 use inrush::line::{Component, Line, find};
-use inrush::sphere::{Beam, Clump, LineView, Mode, Molecule, PairView, SphereError, pair_spectra};
 use inrush::spectrum::Spectrum;
+use inrush::sphere::{Beam, Clump, LineView, Mode, Molecule, PairView, SphereError, pair_spectra};
 use rand::{RngExt, SeedableRng};
 use rand_chacha::ChaCha8Rng;
 use rand_distr::{Distribution, StandardNormal};
@@ -93,7 +93,11 @@ fn attempt(random: &mut ChaCha8Rng, velocity_slope: f64) -> Result<Option<Drawn>
         .map(|index| (f64::from(index) + shift) * step)
         .collect();
     let reach = 5.0 * sigma_km_s + clump.v_in_km_s.abs() * (1.0 + 4.0 * velocity_slope);
-    let near: Vec<f64> = velocity.iter().copied().filter(|v| v.abs() < reach).collect();
+    let near: Vec<f64> = velocity
+        .iter()
+        .copied()
+        .filter(|v| v.abs() < reach)
+        .collect();
     let line = LineView {
         transition,
         components: vec![Component::SINGLE],

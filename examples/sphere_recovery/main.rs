@@ -208,7 +208,13 @@ fn quantile(sorted: &[f64], share: f64) -> f64 {
 }
 
 fn summary(name: &str, rows: &[Row]) {
-    let bins = [(0.0, 1e9), (0.0, 15.0), (15.0, 30.0), (30.0, 55.0), (55.0, 1e9)];
+    let bins = [
+        (0.0, 1e9),
+        (0.0, 15.0),
+        (15.0, 30.0),
+        (30.0, 55.0),
+        (55.0, 1e9),
+    ];
     for (low, high) in bins {
         let some: Vec<&Row> = rows
             .iter()

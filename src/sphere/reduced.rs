@@ -331,7 +331,9 @@ impl ReducedPair {
         for flights in self.flights.chunks(OFFSETS * DIRECTIONS.len()) {
             let mut sum = 0.0;
             for (flights, (_, weight)) in flights.chunks(OFFSETS).zip(DIRECTIONS) {
-                let mean: f64 = (0..OFFSETS).map(|k| share(k) * profile[k] * flights[k]).sum();
+                let mean: f64 = (0..OFFSETS)
+                    .map(|k| share(k) * profile[k] * flights[k])
+                    .sum();
                 sum += weight * mean / norm;
             }
             escape.push(sum.max(f64::MIN_POSITIVE).ln());
@@ -358,7 +360,8 @@ impl ReducedPair {
         let place = |radius: f64| place_of(radius.ln());
         let (mut t, (mut radius, mut here)) = (0.0, at(0.0));
         let mut begins = place(radius);
-        self.sources.push([0, 1].map(|line| between(&self.source[line], begins)));
+        self.sources
+            .push([0, 1].map(|line| between(&self.source[line], begins)));
         while t < end {
             let probe = (t + LENGTH_STEP).min(end);
             let mut next = probe;
@@ -386,7 +389,8 @@ impl ReducedPair {
                 speed: (here + 4.0 * middle.1 + ends.1) / 6.0,
                 width: (1.0 + change * change / 12.0).sqrt(),
             });
-            self.sources.push([0, 1].map(|line| between(&self.source[line], there)));
+            self.sources
+                .push([0, 1].map(|line| between(&self.source[line], there)));
             (t, radius, here, begins) = (next, ends.0, ends.1, there);
         }
     }
@@ -426,7 +430,10 @@ struct Trace<'a> {
 
 /// A number as precise as spectra are needed.
 #[inline(always)]
-#[expect(clippy::cast_possible_truncation, reason = "1e-7 of a spectrum is nothing")]
+#[expect(
+    clippy::cast_possible_truncation,
+    reason = "1e-7 of a spectrum is nothing"
+)]
 fn single(value: f64) -> f32 {
     value as f32
 }
@@ -453,7 +460,13 @@ impl Kernel for Trace<'_> {
                     for component in self.components[line] {
                         let centre = single(side * cell.speed + component.offset_km_s);
                         let height = single(component.weight * inverse);
-                        add_gaussian(self.velocities, centre, single(inverse), height, self.profile);
+                        add_gaussian(
+                            self.velocities,
+                            centre,
+                            single(inverse),
+                            height,
+                            self.profile,
+                        );
                     }
                 }
                 let (inner, outer) = (self.sources[index][line], self.sources[index + 1][line]);
@@ -512,7 +525,8 @@ fn add_gaussian(velocities: &[f32], centre: f32, inverse: f32, height: f32, row:
 #[inline(always)]
 fn shares(t: f32) -> [f32; 2] {
     let first = t * (0.5 - t * (1.0 / 3.0 - t * (0.125 - t * (1.0 / 30.0 - t * (1.0 / 144.0)))));
-    let last = t * (0.5 - t * (1.0 / 6.0 - t * (1.0 / 24.0 - t * (1.0 / 120.0 - t * (1.0 / 720.0)))));
+    let last =
+        t * (0.5 - t * (1.0 / 6.0 - t * (1.0 / 24.0 - t * (1.0 / 120.0 - t * (1.0 / 720.0)))));
     [first, last]
 }
 
@@ -600,7 +614,10 @@ mod tests {
                 let field = LineField::two_level(&shells, &clump, &two).unwrap();
                 let radiation = crate::model::RadiationTemperature::new(89.0);
                 let unit = radiation.at(20.0) - radiation.background();
-                let beam = Beam::Gaussian { fwhm_pc: beam, offset_pc: 0.0 };
+                let beam = Beam::Gaussian {
+                    fwhm_pc: beam,
+                    offset_pc: 0.0,
+                };
                 let exact = emergent(
                     &shells,
                     &field,

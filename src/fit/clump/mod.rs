@@ -167,7 +167,9 @@ impl ClumpPosterior {
 
     fn weighted(&self, value: impl Fn(&Point) -> f64) -> Vec<(f64, f64)> {
         let pairs = self.draws.points.iter().zip(&self.draws.weights);
-        pairs.map(|(point, weight)| (value(point), *weight)).collect()
+        pairs
+            .map(|(point, weight)| (value(point), *weight))
+            .collect()
     }
 
     /// Correlation of the inward speed with each coordinate that is not of the motion itself, the
@@ -181,7 +183,10 @@ impl ClumpPosterior {
                 let (mean, deviation) = self.draws.moments(|point| point[index]);
                 let product = |point: &Point| (point[index] - mean) * (speed(point) - mean_v);
                 let scale = (deviation * deviation_v).max(f64::MIN_POSITIVE);
-                (Self::COORDINATES[index], self.draws.moments(product).0 / scale)
+                (
+                    Self::COORDINATES[index],
+                    self.draws.moments(product).0 / scale,
+                )
             })
             .collect();
         found.sort_by(|a, b| b.1.abs().total_cmp(&a.1.abs()));
@@ -281,7 +286,14 @@ pub fn clump_posterior(
         let shape = LineShape::new(line.rest_frequency_ghz, line.components.clone());
         let errors = shape_errors(prepared, settings.shape_error, about);
         let narrowest = NARROWEST * about.sigma_km_s;
-        LineData::new(prepared, &shape, range, settings.averaging, narrowest, &errors)
+        LineData::new(
+            prepared,
+            &shape,
+            range,
+            settings.averaging,
+            narrowest,
+            &errors,
+        )
     };
     let data = [line_data(thick, lines.0), line_data(thin, lines.1)];
     for (name, data) in ["thick", "thin"].into_iter().zip(&data) {
@@ -294,9 +306,9 @@ pub fn clump_posterior(
             });
         }
     }
-    let priors = settings.priors.unwrap_or_else(|| {
-        ClumpPriors::of_line(lines.0.rest_frequency_ghz, is_to_ground(lines.0))
-    });
+    let priors = settings
+        .priors
+        .unwrap_or_else(|| ClumpPriors::of_line(lines.0.rest_frequency_ghz, is_to_ground(lines.0)));
     let both = [&data[0], &data[1]];
     let mut target = Target::new(both, range, &priors, law.slope(), settings.beam_ratio);
     let mut generator = ChaCha8Rng::seed_from_u64(settings.seed);
@@ -311,7 +323,9 @@ pub fn clump_posterior(
         sample(&mut target, &settled, &settings.sampling, &mut generator).ok_or_else(no_mass)?;
     let best = peaks.first().map(|peak| peak.point).ok_or_else(no_mass)?;
     let pairs = draws.points.iter().zip(&draws.weights);
-    let v_in: Vec<(f64, f64)> = pairs.map(|(point, weight)| (speed(point), *weight)).collect();
+    let v_in: Vec<(f64, f64)> = pairs
+        .map(|(point, weight)| (speed(point), *weight))
+        .collect();
     let residuals = residuals::residuals(&mut target, &best);
     let [thick_k, thin_k] = target.best_profiles_k(&best);
     let profile = |line: usize, temperature_k: Vec<f64>| ClumpProfile {

@@ -71,7 +71,9 @@ impl Misfit {
     pub fn text(self) -> &'static str {
         match self {
             Self::Wings => "emission in the wings, as of an outflow",
-            Self::SecondCloud => "the thin line shows gas at another velocity, as of a second cloud",
+            Self::SecondCloud => {
+                "the thin line shows gas at another velocity, as of a second cloud"
+            }
             Self::Rotation => "the thin line is flatter than a sphere's, as of rotation",
             Self::Unknown => "no reason stands out",
         }
@@ -111,7 +113,8 @@ pub(super) fn residuals(target: &mut Target<'_>, best: &Point) -> ClumpResiduals
                 let x = (**v - best[place::V_LSR]) / sigma;
                 x >= low && x < high
             });
-            let (sum, count) = inside.fold((0.0, 0.0), |(s, n): (f64, f64), (_, r)| (s + r, n + 1.0));
+            let (sum, count) =
+                inside.fold((0.0, 0.0), |(s, n): (f64, f64), (_, r)| (s + r, n + 1.0));
             sum / count.max(1.0).sqrt()
         };
         let motion = best[place::V_IN].abs();

@@ -6,8 +6,8 @@ use crate::fit::posterior::LineData;
 use crate::line::Component;
 use crate::numeric::marginal::Quadratic;
 use crate::numeric::sampling::{Density, Point};
-use crate::sphere::{ReducedClump, ReducedLine, ReducedPair};
 use crate::spectrum::Window;
+use crate::sphere::{ReducedClump, ReducedLine, ReducedPair};
 
 /// Number of coordinates.
 pub(super) const DIMENSIONS: usize = 12;
@@ -213,7 +213,8 @@ impl<'a> Target<'a> {
         let both = both.max(floor);
         let ln_prior = self.ln_brightness.ln_density(both.ln()) - both.ln();
         let total = other + thick.variance;
-        let ln = thick.level + thin.level
+        let ln = thick.level
+            + thin.level
             + 0.5 * (std::f64::consts::TAU * thick.variance * thin.variance / total).ln()
             - 0.5 * apart * apart / total
             + ln_prior;

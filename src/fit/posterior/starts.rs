@@ -40,7 +40,11 @@ pub(in crate::fit) fn kinematics(
 }
 
 /// Shape errors of a prepared line: about its intensity, a share of its peak.
-pub(in crate::fit) fn shape_errors(prepared: &Prepared, share: f64, gas: Kinematics) -> ShapeErrors {
+pub(in crate::fit) fn shape_errors(
+    prepared: &Prepared,
+    share: f64,
+    gas: Kinematics,
+) -> ShapeErrors {
     let about = intensity(prepared);
     let (spectrum, window) = (&prepared.spectrum, prepared.window);
     let inside = spectrum

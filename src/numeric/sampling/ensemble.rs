@@ -39,13 +39,19 @@ pub fn settle(
     let Some(freedom) = Freedom::new() else {
         return Vec::new();
     };
-    let highest = peaks.iter().map(|peak| peak.ln).fold(f64::NEG_INFINITY, f64::max);
+    let highest = peaks
+        .iter()
+        .map(|peak| peak.ln)
+        .fold(f64::NEG_INFINITY, f64::max);
     let about: Vec<(Peak, StudentMixture)> = peaks
         .iter()
         .filter(|peak| highest - peak.ln < DEEPEST)
         .map(|peak| {
             let scatter = peak.scatter.map(|row| row.map(|value| 0.25 * value));
-            (*peak, StudentMixture::new(dimensions, [(peak.point, scatter)]))
+            (
+                *peak,
+                StudentMixture::new(dimensions, [(peak.point, scatter)]),
+            )
         })
         .filter(|(_, mixture)| !mixture.is_empty())
         .collect();
@@ -79,7 +85,11 @@ pub fn settle(
                 let chosen = chosen as usize;
                 chosen.min(walkers.len() - 1)
             });
-            let factor = if jumps { 1.0 } else { usual * (0.5 + uniform(generator)) };
+            let factor = if jumps {
+                1.0
+            } else {
+                usual * (0.5 + uniform(generator))
+            };
             let (point, ln, of) = walkers[index];
             let mut trial = point;
             for i in 0..dimensions {
@@ -90,7 +100,11 @@ pub fn settle(
             }
             let found = density.ln(&trial);
             if found - ln > uniform(generator).max(f64::MIN_POSITIVE).ln() {
-                let belongs = if jumps { nearest(dimensions, &about, &trial) } else { of };
+                let belongs = if jumps {
+                    nearest(dimensions, &about, &trial)
+                } else {
+                    of
+                };
                 walkers[index] = (trial, found, belongs);
             }
             if 2 * step >= settings.steps {
@@ -127,7 +141,10 @@ fn measured(dimensions: usize, points: &[&(Point, f64, usize)]) -> Peak {
     let count = points.len() as f64;
     let mut peak = Peak {
         point: [0.0; super::MOST_DIMENSIONS],
-        ln: points.iter().map(|point| point.1).fold(f64::NEG_INFINITY, f64::max),
+        ln: points
+            .iter()
+            .map(|point| point.1)
+            .fold(f64::NEG_INFINITY, f64::max),
         scatter: Matrix::default(),
     };
     for i in 0..dimensions {

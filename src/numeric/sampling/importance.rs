@@ -105,7 +105,9 @@ pub fn sample(
     let wider = settings.wider;
     let wide = |scatter: &Matrix| scatter.map(|row| row.map(|value| wider * wider * value));
     let about = |scatter: &dyn Fn(&Matrix) -> Matrix| {
-        let each = peaks.iter().map(|peak| (peak.point, scatter(&peak.scatter)));
+        let each = peaks
+            .iter()
+            .map(|peak| (peak.point, scatter(&peak.scatter)));
         StudentMixture::new(dimensions, each)
     };
     let narrow = about(&|scatter| *scatter);
