@@ -165,6 +165,21 @@ impl LineData {
         &self.channels
     }
 
+    /// White residuals beside a profile (K), baseline and shape errors taken out.
+    pub fn residuals(&self, mut profile_k: Vec<f64>) -> Vec<f64> {
+        self.channels.whiten(&mut profile_k);
+        let channels = 0..profile_k.len();
+        let mut along = Vec::new();
+        self.along_nuisances(&profile_k, &channels, |_, one| along.push(one));
+        for (nuisance, along) in self.nuisances.iter().zip(along) {
+            for (value, nuisance) in profile_k.iter_mut().zip(nuisance) {
+                *value -= along * nuisance;
+            }
+        }
+        let pairs = self.data.iter().zip(profile_k);
+        pairs.map(|(datum, value)| datum - value).collect()
+    }
+
     /// chi2 as a function of the amplitudes (K) of shapes in some channels, which become white; they
     /// vanish in all other channels, and in the first ones, as many as the noise's order.
     pub fn quadratic(

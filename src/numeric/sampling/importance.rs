@@ -18,6 +18,8 @@ pub struct ImportanceSettings {
     pub most_rounds: usize,
     /// Components of the first proposal about each peak, beside a narrow and a wide one.
     pub spread: usize,
+    /// How much wider than its peak the wide component is.
+    pub wider: f64,
     /// Effective sample size at which drawing ends.
     pub effective: f64,
     /// Effective sample size in either tail (5 %) of every coordinate at which drawing ends.
@@ -34,6 +36,7 @@ impl Default for ImportanceSettings {
             fewest_rounds: 3,
             most_rounds: 16,
             spread: 2,
+            wider: 2.5,
             effective: 600.0,
             tails: 20.0,
             negligible: f64::NEG_INFINITY,
@@ -155,9 +158,6 @@ const KEPT_SHARE: f64 = 0.2;
 /// follow: wider than the density, in the first rounds much so.
 const POWERS: [f64; 4] = [0.3, 0.5, 0.7, 0.8];
 
-/// The wide component about each peak is this much wider.
-const WIDER: f64 = 2.5;
-
 /// Share of the broad components in the first, wide proposal.
 const BROAD_SHARE: f64 = 0.5;
 
@@ -175,18 +175,16 @@ pub fn sample(
 ) -> Option<Draws> {
     let dimensions = density.dimensions();
     let chi_squared = Freedom::new()?;
-    let wide = |scatter: &Matrix| scatter.map(|row| row.map(|value| WIDER * WIDER * value));
-    let about = |scatter: fn(&Peak) -> Matrix| {
-        StudentMixture::new(
-            dimensions,
-            peaks.iter().map(move |peak| (peak.point, scatter(peak))),
-        )
+    let wider = settings.wider;
+    let wide = |scatter: &Matrix| scatter.map(|row| row.map(|value| wider * wider * value));
+    let about = |scatter: &dyn Fn(&Matrix) -> Matrix| {
+        let each = peaks
+            .iter()
+            .map(|peak| (peak.point, scatter(&peak.scatter)));
+        StudentMixture::new(dimensions, each)
     };
-    let narrow = about(|peak| peak.scatter);
-    let first = about(|peak| {
-        peak.scatter
-            .map(|row| row.map(|value| WIDER * WIDER * value))
-    });
+    let narrow = about(&|scatter| *scatter);
+    let first = about(&wide);
     let spread = StudentMixture::new(
         dimensions,
         (0..settings.spread * peaks.len()).map(|index| {
