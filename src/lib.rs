@@ -26,6 +26,7 @@
 pub mod constants;
 pub mod derive;
 pub mod fit;
+pub mod grid;
 pub mod line;
 pub mod measure;
 pub mod model;

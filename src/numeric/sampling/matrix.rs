@@ -45,7 +45,7 @@ pub(super) fn inverse_lower(lower: &Matrix, dimensions: usize) -> Matrix {
 }
 
 /// Inverse of a positive definite matrix; `None` where it is not one.
-pub(super) fn inverse(matrix: &Matrix, dimensions: usize) -> Option<Matrix> {
+pub(crate) fn inverse(matrix: &Matrix, dimensions: usize) -> Option<Matrix> {
     let inverse = inverse_lower(&cholesky(matrix, dimensions)?, dimensions);
     let mut product = [[0.0; MOST_DIMENSIONS]; MOST_DIMENSIONS];
     for i in 0..dimensions {

@@ -7,7 +7,7 @@
 //! doi:10.1111/j.1467-9469.2011.00756.x). Everything follows from the generator handed in.
 
 mod importance;
-mod matrix;
+pub(crate) mod matrix;
 mod mixture;
 mod pareto;
 mod peak;
