@@ -282,21 +282,22 @@ fn coverage(pairs: usize, setup: Setup) -> Result<(), Box<dyn Error>> {
     }
     let below: Vec<f64> = ranks.iter().map(|rank| rank.below).collect();
     println!("ranks in twentieths: {:?}", histogram(&below));
-    costs(&found);
+    let outcomes: Vec<&Outcome> = found.iter().map(|(_, outcome)| outcome).collect();
+    costs(&outcomes);
     Ok(())
 }
 
-fn costs(found: &[&(DrawnPair, Outcome)]) {
+fn costs(found: &[&Outcome]) {
     let count = found.len().max(1) as f64;
-    let seconds: f64 = found.iter().map(|(_, outcome)| outcome.seconds).sum();
+    let seconds: f64 = found.iter().map(|outcome| outcome.seconds).sum();
     println!("mean time {:.1} ms a pair", 1e3 * seconds / count);
-    let Some((_, first)) = found.first() else {
+    let Some(first) = found.first() else {
         return;
     };
     for (index, family) in first.posterior.families.iter().enumerate() {
         let of: Vec<_> = found
             .iter()
-            .map(|(_, outcome)| &outcome.posterior.families[index])
+            .map(|outcome| &outcome.posterior.families[index])
             .collect();
         let mean = |value: &dyn Fn(&inrush::fit::posterior::FamilyPosterior) -> f64| {
             of.iter().map(|one| value(one)).sum::<f64>() / count
@@ -383,10 +384,12 @@ fn mixed(pairs: usize, setup: Setup) -> Result<(), Box<dyn Error>> {
         let outcome = posterior(&pair.thick, &pair.thin, &lines, &setup.settings())?;
         let verdict =
             verdict(&outcome.posterior, &Odds::default()).map_err(|error| error.to_string())?;
-        Ok::<_, String>((Hypothesis::ALL[index % 4], pair, verdict))
+        Ok::<_, String>((Hypothesis::ALL[index % 4], pair, verdict, outcome))
     });
     let found: Vec<_> = results.iter().filter_map(|one| one.as_ref().ok()).collect();
     println!("pairs {pairs}, refused {}", pairs - found.len());
+    let outcomes: Vec<&Outcome> = found.iter().map(|(_, _, _, outcome)| outcome).collect();
+    costs(&outcomes);
     for hypothesis in Hypothesis::ALL {
         println!(
             "| p_{} | pairs | mean p | true |\n| --- | --- | --- | --- |",
@@ -395,7 +398,9 @@ fn mixed(pairs: usize, setup: Setup) -> Result<(), Box<dyn Error>> {
         for tenth in 0..10 {
             let of: Vec<_> = found
                 .iter()
-                .map(|(truth, _, verdict)| (*truth == hypothesis, verdict.probability(hypothesis)))
+                .map(|(truth, _, verdict, _)| {
+                    (*truth == hypothesis, verdict.probability(hypothesis))
+                })
                 .filter(|(_, p)| part(*p, 10) == tenth)
                 .collect();
             let count = of.len().max(1) as f64;
@@ -417,10 +422,10 @@ fn mixed(pairs: usize, setup: Setup) -> Result<(), Box<dyn Error>> {
             .collect();
         let sure = of
             .iter()
-            .filter(|(_, _, verdict)| verdict.probability(Hypothesis::Infall) > 0.9);
+            .filter(|(_, _, verdict, _)| verdict.probability(Hypothesis::Infall) > 0.9);
         let right = of
             .iter()
-            .filter(|(truth, _, verdict)| verdict.favoured() == *truth);
+            .filter(|(truth, _, verdict, _)| verdict.favoured() == *truth);
         println!(
             "| {} | {} | {} | {} |",
             hypothesis.name(),

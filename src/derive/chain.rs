@@ -242,7 +242,7 @@ pub struct Tracers<'a> {
     pub thick: &'a Line,
     /// Thin line.
     pub thin: &'a Line,
-    /// Model of the thick line; `None` without a fit.
+    /// Model of the thick line; `None` without a fit, and for draws of several models.
     pub model: Option<Model>,
 }
 
@@ -500,7 +500,10 @@ impl<'a> ThickDepth<'a> {
                     .collect::<Option<_>>()?,
             })
         };
-        match tracers.model? {
+        let Some(model) = tracers.model else {
+            return layers("tau", &["t_front_k", "t_rear_k"]);
+        };
+        match model {
             Model::Layer => layers("tau_total", &["t_ex_k"]),
             Model::TwoLayer | Model::TwoLayerContinuum => layers("tau", &["t_front_k", "t_rear_k"]),
             Model::Hill | Model::HillSurface => Some(Self::Hill {

@@ -209,6 +209,28 @@ impl Channels {
         }
     }
 
+    /// The same of a column over some channels in a row; its first values have to vanish, as many as
+    /// [`Channels::order`], where a segment goes on before them.
+    pub fn decorrelate_part(&self, channels: &Range<usize>, column: &mut [f64]) {
+        let Some(whitener) = &self.whitener else {
+            return;
+        };
+        for segment in &self.segments {
+            let first = segment.start.max(channels.start);
+            let end = segment.end.min(channels.end);
+            if first < end {
+                let part = first - channels.start..end - channels.start;
+                whitener.whiten(std::slice::from_ref(&part), column);
+            }
+        }
+    }
+
+    /// Order of the noise's process.
+    #[must_use]
+    pub fn order(&self) -> usize {
+        self.whitener.as_ref().map_or(0, Whitener::order)
+    }
+
     /// Residuals and, where wanted, their Jacobian of a model: buffers as in [`Model::evaluate`].
     pub fn residuals(
         &self,

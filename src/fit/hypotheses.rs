@@ -45,6 +45,23 @@ impl Default for Odds {
     }
 }
 
+impl Odds {
+    /// Refuses odds that are no probabilities.
+    ///
+    /// # Errors
+    ///
+    /// [`HypothesesError::Odds`].
+    pub fn check(&self) -> Result<(), HypothesesError> {
+        let total: f64 = self.0.iter().sum();
+        let usable = self.0.iter().all(|one| *one >= 0.0) && total > 0.0 && total.is_finite();
+        if usable {
+            Ok(())
+        } else {
+            Err(HypothesesError::Odds { found: self.0 })
+        }
+    }
+}
+
 /// Why there are no probabilities.
 #[derive(Clone, Debug, PartialEq, thiserror::Error)]
 pub enum HypothesesError {
@@ -179,11 +196,7 @@ const NEGLIGIBLE: f64 = 0.01;
 ///
 /// [`HypothesesError`] for odds that are no probabilities, or posteriors without the families needed.
 pub fn verdict(posterior: &PairPosterior, odds: &Odds) -> Result<Verdict, HypothesesError> {
-    let total: f64 = odds.0.iter().sum();
-    let usable = odds.0.iter().all(|one| *one >= 0.0) && total > 0.0 && total.is_finite();
-    if !usable {
-        return Err(HypothesesError::Odds { found: odds.0 });
-    }
+    odds.check()?;
     let highest = posterior
         .families
         .iter()

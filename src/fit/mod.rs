@@ -5,8 +5,10 @@
 //! at its minimum, with the measured noise and its correlation between channels.
 
 mod amplitudes;
+pub mod averaged;
 mod cautions;
 mod channels;
+pub mod conflict;
 pub mod hypotheses;
 mod joint;
 mod normal;
@@ -18,7 +20,7 @@ mod starts;
 mod thin;
 mod workspace;
 
-pub use cautions::{Caution, PairFacts, cautions};
+pub use cautions::{Caution, Judgement, PairFacts, Unjudged, cautions, is_absorbed};
 pub use channels::{Averaging, Channels};
 pub use joint::{JointParameter, JointProblem, Layout};
 pub use thin::{ThinFit, fit_thin};

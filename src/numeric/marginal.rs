@@ -142,6 +142,9 @@ fn scaled_erfc(t: f64) -> f64 {
 
 /// z^2/2 + ln Phi(z) with its first two derivatives, Phi the unit normal distribution function.
 fn tilted(z: f64) -> (f64, f64, f64) {
+    if z > FAR_FROM_ZERO {
+        return (0.5 * z * z, z, 1.0);
+    }
     let (value, hazard) = if z < 0.0 {
         let scaled = scaled_erfc(-z * FRAC_1_SQRT_2);
         ((0.5 * scaled).ln(), (2.0 / PI).sqrt() / scaled)
@@ -156,6 +159,17 @@ fn tilted(z: f64) -> (f64, f64, f64) {
 /// ln of the integral of exp(-m x^2/2 + b x) over x >= 0.
 fn ln_half_line(m: f64, b: f64) -> f64 {
     0.5 * (TAU / m).ln() + tilted(b / m.sqrt()).0
+}
+
+/// ln of the integral of exp(-(m x^2 + 2 k x y + l y^2)/2 + b x + c y) over y >= 0 and all x, where
+/// x >= 0 is not felt: at every y that counts x is far above zero.
+fn ln_without_bound(m: f64, k: f64, l: f64, b: f64, c: f64) -> Option<f64> {
+    let (of_y, along) = (l - k * k / m, c - k * b / m);
+    let highest = (along / of_y).max(0.0) + FAR_FROM_ZERO / of_y.sqrt();
+    // mean of x at given y over its deviation
+    let least = (b - k * highest).min(b) / m.sqrt();
+    (least > FAR_FROM_ZERO)
+        .then(|| 0.5 * (TAU / m).ln() + 0.5 * b * b / m + ln_half_line(of_y, along))
 }
 
 /// Drop of the integrand's logarithm at which the outer integral ends.
@@ -268,6 +282,11 @@ impl Exponent {
             && y * y * determinant > FAR_FROM_ZERO * FAR_FROM_ZERO * m
         {
             return TAU.ln() - 0.5 * determinant.ln() + 0.5 * (b * x + c * y);
+        }
+        for (m, k, l, b, c) in [(m, k, l, b, c), (l, k, m, c, b)] {
+            if let Some(found) = ln_without_bound(m, k, l, b, c) {
+                return found;
+            }
         }
         let (summit, highest, below, above) = self.ends(start[0]);
         let panel = |sign: f64, length: f64| -> f64 {

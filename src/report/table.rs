@@ -5,6 +5,7 @@ use std::sync::Arc;
 
 use super::ReportError;
 use crate::numeric::Estimate;
+use serde::{Deserialize, Serialize};
 
 /// What a column holds.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -42,7 +43,7 @@ pub struct Column {
 }
 
 /// One cell.
-#[derive(Clone, Debug, PartialEq)]
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub enum Value {
     /// Text; not empty.
     Text(String),
@@ -161,6 +162,24 @@ impl Schema {
             schema: self.clone(),
             values: vec![Value::Empty; self.columns().len()],
         }
+    }
+
+    /// A row of these cells.
+    ///
+    /// # Errors
+    ///
+    /// [`ReportError::ForeignRow`] where they are not as many as the columns.
+    pub fn row_of(&self, values: Vec<Value>) -> Result<Row, ReportError> {
+        if values.len() != self.columns().len() {
+            return Err(ReportError::ForeignRow {
+                found: values.len(),
+                expected: self.columns().len(),
+            });
+        }
+        Ok(Row {
+            schema: self.clone(),
+            values,
+        })
     }
 
     fn position(&self, name: &str) -> Result<usize, ReportError> {

@@ -1,9 +1,13 @@
 //! One pair through every stage.
 
-use super::{LineSection, RunError, RunSheet};
+use super::journal::hexadecimal;
+use super::judge::{PreparedPair, judge};
+use super::{Judged, LineSection, RunError, RunSheet, VerdictSettings};
 use crate::derive::{DeriveSettings, Derived, FitDraws, SourceProperties, Tracers};
+use crate::fit::hypotheses::Speed;
 use crate::fit::{
-    Caution, FitSettings, ModelFit, PairFacts, PairFit, ThinFit, Workspace, cautions, fit_thin,
+    Caution, FitSettings, Judgement, ModelFit, PairFacts, PairFit, ThinFit, Workspace, cautions,
+    fit_thin,
 };
 use crate::line::{Line, isotopologue_pair};
 use crate::measure::{MeasureSettings, Measures, measure};
@@ -13,7 +17,6 @@ use crate::prepare::{Expected, PrepareSettings, Prepared, prepare_pair};
 use crate::read::{ReadOptions, load, spectrum_from_bytes};
 use crate::spectrum::{Origin, Spectrum};
 use sha2::{Digest, Sha256};
-use std::fmt::Write as _;
 use std::path::Path;
 
 /// One line of a pair before it is prepared.
@@ -49,12 +52,35 @@ pub struct PairInput {
 }
 
 /// How a pair is fitted, and how quantities are derived from the fit.
-#[derive(Clone, Debug, Default, PartialEq)]
+#[derive(Clone, Debug, PartialEq)]
 pub struct PairSettings {
     /// The fit.
     pub fit: FitSettings,
-    /// What follows from it.
+    /// Posteriors and verdict; `None` stops after least squares.
+    pub verdict: Option<VerdictSettings>,
+    /// What follows from them.
     pub derive: DeriveSettings,
+}
+
+impl Default for PairSettings {
+    fn default() -> Self {
+        Self {
+            verdict: Some(VerdictSettings::default()),
+            ..Self::formal()
+        }
+    }
+}
+
+impl PairSettings {
+    /// Default settings that stop after least squares.
+    #[must_use]
+    pub fn formal() -> Self {
+        Self {
+            fit: FitSettings::default(),
+            verdict: None,
+            derive: DeriveSettings::default(),
+        }
+    }
 }
 
 /// One line of a pair, read and prepared.
@@ -87,6 +113,8 @@ pub struct PairOutcome {
     pub measures: Measures,
     /// The joint fits.
     pub fit: PairFit,
+    /// Posteriors and verdict; `None` where they were not asked for, or a caution says why not.
+    pub judged: Option<Judged>,
     /// Cautions, the gravest first.
     pub cautions: Vec<Caution>,
     /// What follows from the fit and the source's properties, with cautions of its own.
@@ -202,23 +230,51 @@ pub fn fit_spectra(
     .map_err(|error| {
         RunError::of_fit(error, (thick.origin.path.clone(), thin.origin.path.clone()))
     })?;
+    let prepared = PreparedPair {
+        thick: &prepared_thick,
+        thin: &prepared_thin,
+        lines: (thick_line, thin_line),
+        thin_line: thin_fit.line.as_ref(),
+        measures: &measures,
+    };
+    let judged = (settings.verdict.as_ref())
+        .map(|verdict| judge(&prepared, &settings.fit, verdict))
+        .transpose()?;
     let cautions = cautions(&PairFacts {
         thick: &prepared_thick,
         thin: &prepared_thin,
         thin_fit: &thin_fit,
         measures: &measures,
         fit: &fit,
+        judgement: match &judged {
+            None => Judgement::NotAsked,
+            Some(Err(reason)) => Judgement::Missing(reason),
+            Some(Ok(judged)) => Judgement::Found(
+                &judged.posterior,
+                &judged.verdict,
+                judged.speed,
+                &judged.unheard,
+            ),
+        },
     });
+    let judged = judged.and_then(Result::ok);
+    let averaged = judged.as_ref().and_then(Judged::adopted);
     let described = fit.adopted().or_else(|| layer(&fit));
-    let draws = match (described, &thin_fit.line) {
-        (Some(fit), _) => FitDraws::formal(fit, &settings.derive),
-        (None, Some(line)) => FitDraws::of_thin_line(line, &settings.derive),
-        (None, None) => FitDraws::new(settings.derive.draws),
+    let draws = match (&judged, &averaged, described, &thin_fit.line) {
+        (Some(judged), Some(averaged), ..) => {
+            let with_speed = judged.speed != Speed::Unconstrained;
+            FitDraws::of_posterior(averaged, thick_line, with_speed, &settings.derive)
+        }
+        (_, _, Some(fit), _) => FitDraws::formal(fit, &settings.derive),
+        (_, _, None, Some(line)) => FitDraws::of_thin_line(line, &settings.derive),
+        (_, _, None, None) => FitDraws::new(settings.derive.draws),
     };
     let tracers = Tracers {
         thick: thick_line,
         thin: thin_line,
-        model: described.map(|fit| fit.model),
+        model: described
+            .filter(|_| averaged.is_none())
+            .map(|fit| fit.model),
     };
     let derived = crate::derive::sample(&source, &draws, &tracers, settings.derive.seed)?.derived();
     let name = name
@@ -232,6 +288,7 @@ pub fn fit_spectra(
         thin_fit,
         measures,
         fit,
+        judged,
         cautions,
         derived,
         source_given: !source.is_empty(),
@@ -291,21 +348,11 @@ fn open(
         line,
         spectrum: scaled.spectrum,
         prepare,
-        sha256: Some(sha256(&content)),
+        sha256: Some(hexadecimal(&Sha256::digest(&content))),
         object: raw.object.clone(),
         origin: raw.origin,
         notes: scaled.notes,
     })
-}
-
-/// SHA-256 of a file's content, in hexadecimal digits.
-fn sha256(content: &[u8]) -> String {
-    let mut digits = String::new();
-    for byte in Sha256::digest(content) {
-        // writing to a string cannot fail
-        let _ = write!(digits, "{byte:02x}");
-    }
-    digits
 }
 
 fn stem(path: &Path) -> String {

@@ -10,6 +10,7 @@ use crate::numeric::marginal::Quadratic;
 use crate::numeric::products::products;
 use crate::prepare::Prepared;
 use crate::spectrum::Window;
+use std::ops::Range;
 
 /// Channels outside the fitted range count no farther from zero than this, in units of the noise: a
 /// spike is no noise level.
@@ -151,44 +152,60 @@ impl LineData {
         &self.channels
     }
 
-    /// chi2 as a function of the amplitudes of white columns (at most two).
-    pub fn quadratic(&self, columns: &[&[f64]], mean: f64) -> Quadratic {
+    /// chi2 as a function of the amplitudes (K) of shapes in some channels, which become white; they
+    /// vanish in all other channels, and in the first ones, as many as the noise's order.
+    pub fn quadratic(
+        &self,
+        channels: Range<usize>,
+        shapes: &mut [&mut [f64]],
+        mean: f64,
+    ) -> Quadratic {
+        let scale = 1.0 / self.channels.noise_k();
         let mut quadratic = Quadratic {
-            count: columns.len(),
+            count: shapes.len(),
             data: self.squares,
             values: self.values,
             means: [mean; 2],
             ..Quadratic::default()
         };
-        match columns {
+        for shape in shapes.iter_mut() {
+            self.channels.decorrelate_part(&channels, shape);
+        }
+        let data = &self.data[channels.clone()];
+        match shapes {
             [] => {}
             [one] => {
-                let [square, product] = products(one, [one, &self.data]);
+                let [mut square, product] = products(one, [one, data]);
+                self.along_nuisances(one, &channels, |_, along| square -= along * along);
                 quadratic.products[0] = square;
                 quadratic.projected[0] = product;
-                self.each_nuisance(one, |_, along| quadratic.products[0] -= along * along);
             }
             [one, two, ..] => {
-                let [square, cross, first] = products(one, [one, two, &self.data]);
-                let [other, second] = products(two, [two, &self.data]);
+                let [mut square, mut cross, first] = products(one, [one, two, data]);
+                let [mut other, second] = products(two, [two, data]);
+                let mut others = [0.0; MOST_NUISANCES];
+                self.along_nuisances(two, &channels, |index, along| others[index] = along);
+                self.along_nuisances(one, &channels, |index, along| {
+                    square -= along * along;
+                    cross -= along * others[index];
+                    other -= others[index] * others[index];
+                });
                 quadratic.products = [square, cross, other];
                 quadratic.projected = [first, second];
-                let mut others = [0.0; MOST_NUISANCES];
-                self.each_nuisance(two, |index, along| others[index] = along);
-                self.each_nuisance(one, |index, along| {
-                    quadratic.products[0] -= along * along;
-                    quadratic.products[1] -= along * others[index];
-                    quadratic.products[2] -= others[index] * others[index];
-                });
             }
         }
+        quadratic.products = quadratic.products.map(|product| scale * scale * product);
+        quadratic.projected = quadratic.projected.map(|product| scale * product);
         quadratic
     }
-}
 
-impl LineData {
-    /// Products of a column with every nuisance, four in a pass.
-    fn each_nuisance(&self, column: &[f64], mut take: impl FnMut(usize, f64)) {
+    /// Products of a column over some channels with every nuisance, four in a pass.
+    fn along_nuisances(
+        &self,
+        column: &[f64],
+        channels: &Range<usize>,
+        mut take: impl FnMut(usize, f64),
+    ) {
         let (fours, rest) = self.nuisances.as_chunks::<4>();
         let mut index = 0;
         let mut next = |along: f64| {
@@ -196,11 +213,11 @@ impl LineData {
             index += 1;
         };
         for four in fours {
-            let four: [&[f64]; 4] = std::array::from_fn(|k| &four[k][..]);
+            let four: [&[f64]; 4] = std::array::from_fn(|k| &four[k][channels.clone()]);
             products(column, four).into_iter().for_each(&mut next);
         }
         for nuisance in rest {
-            let [along] = products(column, [nuisance]);
+            let [along] = products(column, [&nuisance[channels.clone()]]);
             next(along);
         }
     }

@@ -2,8 +2,11 @@
 //! of a draw. Brightnesses are amplitudes of the shapes and no coordinates.
 
 use super::data::LineData;
+use super::shapes::{
+    Combine, Hill, HillSurface, Part, TwoClouds, TwoLayers, absorbing, channels_of, emitting,
+};
 use crate::fit::priors::{Prior, Priors};
-use crate::model::{LineShape, Model, RadiationTemperature};
+use crate::model::{Model, RadiationTemperature};
 use crate::numeric::marginal::Quadratic;
 use crate::numeric::sampling::{Density, MOST_DIMENSIONS, Point};
 use crate::spectrum::Window;
@@ -171,8 +174,8 @@ pub(super) struct Target<'a> {
     lines: [&'a LineData; 2],
     range: Window,
     priors: Looked,
-    /// Shapes of the thick and of the thin line.
-    shapes: [[Vec<f64>; 2]; 2],
+    /// Both shapes of the thick line, and that of the thin line.
+    shapes: [Vec<f64>; 3],
 }
 
 impl<'a> Target<'a> {
@@ -186,10 +189,7 @@ impl<'a> Target<'a> {
             Prior::Exponential { mean } => mean,
             other => panic!("{}: brightnesses have exponential priors", other.text()),
         };
-        let shapes = [thick, thin].map(|line| {
-            let length = line.channels().len();
-            [vec![0.0; length], vec![0.0; length]]
-        });
+        let shapes = [thick, thick, thin].map(|line| vec![0.0; line.channels().len()]);
         Self {
             family,
             lines: [thick, thin],
@@ -238,47 +238,48 @@ impl<'a> Target<'a> {
 
     /// chi2 of the thick and of the thin line as functions of their amplitudes.
     pub fn quadratics(&mut self, point: &Point) -> [Quadratic; 2] {
-        let (v, sigma) = (point[0], point[1].exp());
+        let (v_km_s, sigma_km_s) = (point[0], point[1].exp());
+        let part = |v_km_s: f64, sigma_km_s: f64, depth: f64| Part {
+            v_km_s,
+            sigma_km_s,
+            depth,
+        };
+        let halves = |v_in_km_s: f64, tau: f64| {
+            [v_in_km_s, -v_in_km_s].map(|along| part(v_km_s + along, sigma_km_s, tau))
+        };
+        let second_cloud = || (v_km_s + point[2] * sigma_km_s, sigma_km_s * point[3].exp());
+        let width = point[self.family.thin_width()].exp();
+        let front = part(v_km_s, width * sigma_km_s, 1.0);
         let [thick, thin] = self.lines;
-        let [thick_shapes, thin_shapes] = &mut self.shapes;
-        let thick_count = match self.family {
+        let (thick_k, thin_k) = (self.priors.thick_k, self.priors.thin_k);
+        let [both @ .., emitted] = &mut self.shapes;
+        let of_thick = match self.family {
             Family::Moving(model) => {
-                let kinematics = [v, sigma, point[2] * sigma, point[3].exp()];
-                slab(model, thick, kinematics, thick_shapes)
+                let halves = halves(point[2] * sigma_km_s, point[3].exp());
+                slab(model, thick, halves, thick_k, both)
             }
-            Family::Still(model) => {
-                slab(model, thick, [v, sigma, 0.0, point[2].exp()], thick_shapes)
-            }
-            Family::Unabsorbed => {
-                gaussian(thick, v, sigma, &mut thick_shapes[0]);
-                1
-            }
+            Family::Still(model) => slab(model, thick, halves(0.0, point[2].exp()), thick_k, both),
+            Family::Unabsorbed => emission(
+                thick,
+                &[part(v_km_s, sigma_km_s, 1.0)],
+                thick_k,
+                &mut both[0],
+            ),
             Family::TwoClouds => {
-                let (second, wide) = (v + point[2] * sigma, sigma * point[3].exp());
+                let (v, sigma) = second_cloud();
                 let tau = point[4].exp();
-                clouds(thick, (v, sigma, tau), (second, wide, tau), thick_shapes);
-                2
+                let clouds = [part(v_km_s, sigma_km_s, tau), part(v, sigma, tau)];
+                absorption::<TwoClouds>(thick, clouds, 2, thick_k, both)
             }
         };
-        let thin_width = point[self.family.thin_width()].exp();
-        gaussian(thin, v, thin_width * sigma, &mut thin_shapes[0]);
-        if self.family == Family::TwoClouds {
-            let (second, wide) = (v + point[2] * sigma, sigma * point[3].exp());
-            let [front, rear] = thin_shapes;
-            gaussian(thin, second, thin_width * wide, rear);
-            let ratio = point[5].exp();
-            for (front, rear) in front.iter_mut().zip(rear) {
-                *front += ratio * *rear;
-            }
-        }
-        let of = |line: &LineData, shapes: &[Vec<f64>; 2], count: usize, mean: f64| {
-            let columns = [&shapes[0][..], &shapes[1][..]];
-            line.quadratic(&columns[..count], mean)
+        let of_thin = if self.family == Family::TwoClouds {
+            let (v, sigma) = second_cloud();
+            let rear = part(v, width * sigma, point[5].exp());
+            emission(thin, &[front, rear], thin_k, emitted)
+        } else {
+            emission(thin, &[front], thin_k, emitted)
         };
-        [
-            of(thick, thick_shapes, thick_count, self.priors.thick_k),
-            of(thin, thin_shapes, 1, self.priors.thin_k),
-        ]
+        [of_thick, of_thin]
     }
 
     /// Physical parameters of a point with brightnesses drawn given it.
@@ -317,87 +318,43 @@ impl Density for Target<'_> {
     }
 }
 
-fn gaussian(line: &LineData, v_km_s: f64, sigma_km_s: f64, column: &mut [f64]) {
-    let channels = line.channels();
-    Model::Gaussian.evaluate(
-        channels.line(),
-        channels.sampling(),
-        &[v_km_s, sigma_km_s, 1.0],
-        column,
-        None,
-    );
-    channels.whiten(column);
+/// What a line's data say of Gaussian emission; `mean` is the prior mean of its brightness.
+fn emission(line: &LineData, parts: &[Part], mean: f64, shape: &mut [f64]) -> Quadratic {
+    let data = line.channels();
+    let channels = channels_of(parts, data.line(), data.sampling(), data.order());
+    let shape = &mut shape[..channels.len()];
+    let place = (data.sampling(), channels.clone());
+    emitting(data.line(), place, parts, shape);
+    line.quadratic(channels, &mut [shape], mean)
 }
 
-/// Shapes that a slab's brightness steps multiply; their number.
+/// What they say of a slab's halves, front and rear.
 fn slab(
     model: Model,
     line: &LineData,
-    kinematics: [f64; 4],
-    [first, second]: &mut [Vec<f64>; 2],
-) -> usize {
-    let channels = line.channels();
-    let count = channels.len();
-    let shapes = model.linear().len();
-    // both in one column, until they are apart
-    first.resize(shapes * count, 0.0);
-    model.functions(
-        channels.line(),
-        channels.sampling(),
-        &kinematics,
-        first,
-        None,
-    );
-    channels.whiten(first);
-    if shapes == 1 {
-        return 1;
+    halves: [Part; 2],
+    mean: f64,
+    shapes: &mut [Vec<f64>; 2],
+) -> Quadratic {
+    match model {
+        Model::TwoLayer => absorption::<TwoLayers>(line, halves, 2, mean, shapes),
+        Model::HillSurface => absorption::<HillSurface>(line, halves, 2, mean, shapes),
+        _ => absorption::<Hill>(line, halves, 1, mean, shapes),
     }
-    second[..count].copy_from_slice(&first[count..]);
-    first.truncate(count);
-    if model == Model::TwoLayer {
-        // x (1 - E_f E_r) + y (1 - E_r) E_f, x of both layers, y of the rear one alone
-        for (first, second) in first.iter_mut().zip(second.iter()) {
-            *first += second;
-        }
-    } else {
-        // x (1 - E_f E_r) of both surfaces, y F of what the middle has above them
-        for (first, second) in first.iter_mut().zip(second.iter_mut()) {
-            let (peaked, rest) = (*first, *second);
-            (*first, *second) = (peaked + rest, peaked);
-        }
-    }
-    2
 }
 
-/// Shapes of a front cloud and of a rear one seen through it.
-fn clouds(
+/// What they say of the first `count` shapes of a front and a rear part.
+fn absorption<C: Combine>(
     line: &LineData,
-    front: (f64, f64, f64),
-    rear: (f64, f64, f64),
+    parts: [Part; 2],
+    count: usize,
+    mean: f64,
     [first, second]: &mut [Vec<f64>; 2],
-) {
-    let channels = line.channels();
-    let unit = unit_excess_k(channels.line());
-    let layer = |(v, sigma, tau): (f64, f64, f64), column: &mut [f64]| {
-        Model::Layer.evaluate(
-            channels.line(),
-            channels.sampling(),
-            &[v, sigma, tau, unit],
-            column,
-            None,
-        );
-    };
-    layer(front, first);
-    layer(rear, second);
-    for (rear, front) in second.iter_mut().zip(first.iter()) {
-        *rear *= 1.0 - front;
-    }
-    channels.whiten(first);
-    channels.whiten(second);
-}
-
-/// The excitation temperature, K, at which J(T) is 1 K above the background.
-fn unit_excess_k(line: &LineShape) -> f64 {
-    let radiation = &line.radiation;
-    radiation.inverse(radiation.background() + 1.0)
+) -> Quadratic {
+    let data = line.channels();
+    let channels = channels_of(&parts, data.line(), data.sampling(), data.order());
+    let (first, second) = (&mut first[..channels.len()], &mut second[..channels.len()]);
+    let place = (data.sampling(), channels.clone());
+    absorbing::<C>(data.line(), place, parts, (first, second));
+    line.quadratic(channels, &mut [first, second][..count], mean)
 }

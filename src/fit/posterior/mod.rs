@@ -6,6 +6,7 @@
 
 mod data;
 mod family;
+mod shapes;
 mod starts;
 
 pub use data::ShapeErrors;
@@ -17,7 +18,7 @@ use crate::constants::FWHM_PER_SIGMA;
 use crate::line::Line;
 use crate::measure::ThinLine;
 use crate::model::{LineShape, Model};
-use crate::numeric::sampling::{Draws, ImportanceSettings, Peak, Quality, ascend, sample};
+use crate::numeric::sampling::{Draws, ImportanceSettings, Quality, sample};
 use crate::prepare::Prepared;
 use crate::spectrum::Window;
 use data::LineData;
@@ -65,6 +66,18 @@ impl Default for PosteriorSettings {
             draws: 500,
             seed: 1,
         }
+    }
+}
+
+impl PosteriorSettings {
+    /// The same with as many effective draws, and as many that are kept.
+    #[must_use]
+    pub fn with_draws(mut self, draws: usize) -> Self {
+        let more = draws as f64 / self.draws as f64;
+        self.sampling.effective *= more;
+        self.sampling.round *= draws.div_ceil(self.draws);
+        self.draws = draws;
+        self
     }
 }
 
@@ -292,16 +305,27 @@ pub fn pair_posterior(
             });
         }
     }
-    let families = families(settings)
-        .into_iter()
-        .enumerate()
-        .map(|(stream, family)| {
-            let mut target = Target::new(family, (&data[0], &data[1]), range, &settings.priors);
-            let mut generator = ChaCha8Rng::seed_from_u64(settings.seed);
-            generator.set_stream(stream as u64 + 1);
-            family_posterior(family, &mut target, &kinematics, settings, &mut generator)
-        })
-        .collect::<Result<Vec<FamilyPosterior>, PosteriorError>>()?;
+    let mut found: Vec<FamilyPosterior> = Vec::new();
+    for (stream, family) in families(settings).into_iter().enumerate() {
+        let mut target = Target::new(family, (&data[0], &data[1]), range, &settings.priors);
+        let mut generator = ChaCha8Rng::seed_from_u64(settings.seed);
+        generator.set_stream(stream as u64 + 1);
+        let best = found.iter().map(|one| one.ln_evidence);
+        let sampling = sampling(
+            family,
+            settings.sampling,
+            best.fold(f64::NEG_INFINITY, f64::max),
+        );
+        let draws = (sampling, settings.draws);
+        found.push(family_posterior(
+            family,
+            &mut target,
+            &kinematics,
+            draws,
+            &mut generator,
+        )?);
+    }
+    let families = found;
     Ok(PairPosterior { families, range })
 }
 
@@ -363,11 +387,32 @@ fn range(thick: &Prepared, thin: &Prepared, settings: &PosteriorSettings) -> Win
     }
 }
 
+/// A family whose ln of the evidence is lower than another's by more than this has a probability below
+/// 1e-5: its draws need not be many.
+const NEGLIGIBLE: f64 = 12.0;
+
+/// How much is drawn of a family, given the highest ln of an evidence so far: speeds need more draws
+/// than evidences, many coordinates larger rounds than few.
+fn sampling(family: Family, settings: ImportanceSettings, highest: f64) -> ImportanceSettings {
+    let moving = matches!(family, Family::Moving(_));
+    let coordinates = Family::Moving(Model::Hill).dimensions();
+    ImportanceSettings {
+        round: settings.round * family.dimensions() / coordinates,
+        effective: if moving { 1.0 } else { 0.5 } * settings.effective,
+        negligible: if moving {
+            f64::NEG_INFINITY
+        } else {
+            highest - NEGLIGIBLE
+        },
+        ..settings
+    }
+}
+
 fn family_posterior(
     family: Family,
     target: &mut Target<'_>,
     kinematics: &[starts::Kinematics],
-    settings: &PosteriorSettings,
+    (sampling, kept): (ImportanceSettings, usize),
     generator: &mut ChaCha8Rng,
 ) -> Result<FamilyPosterior, PosteriorError> {
     let no_mass = || PosteriorError::NoMass {
@@ -377,19 +422,7 @@ fn family_posterior(
         target,
         evaluations: 0,
     };
-    let scales = family.scales(kinematics[0].sigma_km_s);
-    let starts = starts::starts(family, &mut counted, kinematics);
-    let peaks: Vec<Peak> = starts
-        .iter()
-        .filter_map(|start| ascend(&mut counted, start, &scales, 40))
-        .collect();
-    let peaks = starts::distinct(peaks, family.dimensions());
-    let mut sampling = settings.sampling;
-    if family == Family::TwoClouds {
-        sampling.spread *= 2;
-        sampling.round *= 2;
-        sampling.effective *= 1.5;
-    }
+    let peaks = starts::peaks(family, &mut counted, kinematics);
     let draws: Draws = sample(&mut counted, &peaks, &sampling, generator).ok_or_else(no_mass)?;
     let evaluations = counted.evaluations;
     let v_in = match family {
@@ -402,7 +435,7 @@ fn family_posterior(
             .collect(),
         _ => Vec::new(),
     };
-    let chosen = draws.equal(settings.draws, generator);
+    let chosen = draws.equal(kept, generator);
     let physical = chosen
         .iter()
         .map(|index| target.physical(&draws.points[*index], generator))

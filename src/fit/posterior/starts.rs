@@ -3,7 +3,7 @@
 use super::family::{Family, padded};
 use super::{ShapeErrors, sigma_km_s};
 use crate::measure::ThinLine;
-use crate::numeric::sampling::{Density, Peak, Point};
+use crate::numeric::sampling::{Density, Peak, Point, climb};
 use crate::prepare::Prepared;
 
 /// Width of the sharpest feature of a profile, in dispersions. Sharper ones, the edges of an opaque
@@ -90,12 +90,45 @@ fn intensity(prepared: &Prepared) -> Kinematics {
 /// Candidates of each kind (sign of the third coordinate) that are followed to a peak.
 const FOLLOWED: usize = 3;
 
-/// The most promising candidates of a family.
-pub(super) fn starts(
+/// Most steps to a peak.
+const STEPS: usize = 40;
+
+/// A climb ends where it comes this close, in units of the scales, to a peak that is known.
+const KNOWN: f64 = 0.2;
+
+/// Peaks lower than the highest by more than this hold nothing.
+const DEEPEST: f64 = 15.0;
+
+/// The peaks of a family that differ and matter.
+pub(super) fn peaks(
     family: Family,
     target: &mut impl Density,
     kinematics: &[Kinematics],
-) -> Vec<Point> {
+) -> Vec<Peak> {
+    let scales = family.scales(kinematics[0].sigma_km_s);
+    let mut tops: Vec<(Point, f64)> = Vec::new();
+    for start in starts(family, target, kinematics) {
+        let known = |point: &Point| {
+            tops.iter().any(|(top, _)| {
+                (0..family.dimensions()).all(|i| (point[i] - top[i]).abs() < KNOWN * scales[i])
+            })
+        };
+        tops.extend(climb(target, &start, &scales, STEPS, known));
+    }
+    let highest = tops
+        .iter()
+        .map(|(_, ln)| *ln)
+        .fold(f64::NEG_INFINITY, f64::max);
+    let peaks = tops
+        .into_iter()
+        .filter(|(_, ln)| highest - ln < DEEPEST)
+        .map(|(point, ln)| Peak::measured(target, point, ln, &scales))
+        .collect();
+    distinct(peaks, family.dimensions())
+}
+
+/// The most promising candidates of a family.
+fn starts(family: Family, target: &mut impl Density, kinematics: &[Kinematics]) -> Vec<Point> {
     let mut candidates: Vec<(f64, Point)> = kinematics
         .iter()
         .flat_map(|kinematics| candidates(family, *kinematics))
@@ -133,8 +166,8 @@ fn candidates(family: Family, about: Kinematics) -> Vec<Point> {
     match family {
         Family::Moving(_) => {
             for factor in [1.1, 0.8, 0.5] {
-                for speed in [-2.6, -1.6, -1.0, -0.5, -0.15, 0.15, 0.5, 1.0, 1.6, 2.6] {
-                    for tau in [0.8f64, 3.0, 10.0, 30.0] {
+                for speed in [-2.2, -1.0, -0.5, -0.15, 0.15, 0.5, 1.0, 2.2] {
+                    for tau in [1.0f64, 4.0, 20.0] {
                         points.push(padded(&[
                             v_km_s,
                             ln(factor),
@@ -184,11 +217,8 @@ fn candidates(family: Family, about: Kinematics) -> Vec<Point> {
     points
 }
 
-/// Peaks lower than the highest by more than this hold nothing.
-const DEEPEST: f64 = 15.0;
-
-/// The peaks that differ and matter.
-pub(super) fn distinct(mut peaks: Vec<Peak>, dimensions: usize) -> Vec<Peak> {
+/// The peaks that differ, the highest first.
+fn distinct(mut peaks: Vec<Peak>, dimensions: usize) -> Vec<Peak> {
     peaks.sort_by(|a, b| b.ln.total_cmp(&a.ln));
     let mut kept: Vec<Peak> = Vec::new();
     for peak in peaks {
@@ -196,11 +226,7 @@ pub(super) fn distinct(mut peaks: Vec<Peak>, dimensions: usize) -> Vec<Peak> {
             (0..dimensions)
                 .all(|i| (peak.point[i] - other.point[i]).powi(2) < 0.25 * other.scatter[i][i])
         };
-        if kept
-            .first()
-            .is_none_or(|first| first.ln - peak.ln < DEEPEST)
-            && !kept.iter().any(same)
-        {
+        if !kept.iter().any(same) {
             kept.push(peak);
         }
     }

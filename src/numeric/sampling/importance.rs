@@ -4,6 +4,7 @@ use super::mixture::{Freedom, StudentMixture, uniform};
 use super::pareto::tail_shape;
 use super::peak::Peak;
 use super::{Density, Matrix, Point};
+use crate::numeric::exponential::exp_in_place;
 use rand::Rng;
 
 /// How much is drawn.
@@ -19,6 +20,9 @@ pub struct ImportanceSettings {
     pub spread: usize,
     /// Effective sample size at which drawing ends.
     pub effective: f64,
+    /// Logarithm of an integral that does not matter: drawing ends after the second round where the
+    /// integral is lower.
+    pub negligible: f64,
 }
 
 impl Default for ImportanceSettings {
@@ -29,6 +33,7 @@ impl Default for ImportanceSettings {
             most_rounds: 16,
             spread: 2,
             effective: 500.0,
+            negligible: f64::NEG_INFINITY,
         }
     }
 }
@@ -128,23 +133,28 @@ pub fn sample(
     let mut proposed: Vec<f64> = Vec::new();
     let mut weights: Vec<f64> = Vec::new();
     for round in 1..=settings.most_rounds {
-        for (point, sum) in points.iter().zip(&mut proposed) {
-            *sum += proposal.density(point);
-        }
-        proposals.push(proposal.clone());
+        let before = points.len();
         for _ in 0..settings.round {
             let point = proposal.draw(generator, &chi_squared);
             ln_density.push(density.ln(&point));
-            proposed.push(proposals.iter().map(|one| one.density(&point)).sum());
             points.push(point);
         }
-        weights = weights_of(&ln_density, &proposed)?;
+        proposed.resize(points.len(), 0.0);
+        for earlier in &proposals {
+            earlier.add_densities(&points[before..], &mut proposed[before..]);
+        }
+        proposal.add_densities(&points, &mut proposed);
+        proposals.push(proposal.clone());
+        let (ln_weights, found) = weights_of(&ln_density, &proposed)?;
+        weights = found;
         let enough = effective(&weights) >= settings.effective && round >= settings.fewest_rounds;
-        if enough || round == settings.most_rounds {
+        let negligible = round >= SURE_OF_NEGLIGIBLE
+            && ln_integral(&ln_density, &proposed, round) < settings.negligible;
+        if enough || negligible || round == settings.most_rounds {
             break;
         }
         let power = POWERS.get(round - 1).copied().unwrap_or(1.0);
-        let tempered = tempered(&weights, power, (4 * dimensions * dimensions) as f64);
+        let tempered = tempered(&ln_weights, power, (4 * dimensions * dimensions) as f64);
         let (kept, kept_weights) = worth_fitting(&points, &tempered);
         let refitted = proposal.refitted(&kept, &kept_weights);
         proposal = refitted.with(&first, KEPT_SHARE);
@@ -159,19 +169,37 @@ pub fn sample(
     ))
 }
 
-/// Normalised weights; `None` where all densities are zero.
-fn weights_of(ln_density: &[f64], proposed: &[f64]) -> Option<Vec<f64>> {
-    let highest = ln_density.iter().copied().fold(f64::NEG_INFINITY, f64::max);
+/// Rounds after which an integral can be called negligible.
+const SURE_OF_NEGLIGIBLE: usize = 2;
+
+/// Logarithms of weights, the largest 0, and normalised weights; `None` where all densities are zero.
+fn weights_of(ln_density: &[f64], proposed: &[f64]) -> Option<(Vec<f64>, Vec<f64>)> {
+    let mut ln_weights: Vec<f64> = ln_density
+        .iter()
+        .zip(proposed)
+        .map(|(ln, proposed)| ln - proposed.ln())
+        .collect();
+    let highest = ln_weights.iter().copied().fold(f64::NEG_INFINITY, f64::max);
     if !highest.is_finite() {
         return None;
     }
-    let mut weights: Vec<f64> = ln_density
+    for ln in &mut ln_weights {
+        *ln -= highest;
+    }
+    let mut weights = ln_weights.clone();
+    exp_in_place(&mut weights);
+    normalise(&mut weights);
+    Some((ln_weights, weights))
+}
+
+/// ln of the mean over draws of density over mean proposal.
+fn ln_integral(ln_density: &[f64], proposed: &[f64], rounds: usize) -> f64 {
+    let highest = ln_density.iter().copied().fold(f64::NEG_INFINITY, f64::max);
+    let ratios = ln_density
         .iter()
         .zip(proposed)
-        .map(|(ln, proposed)| (ln - highest).exp() / proposed)
-        .collect();
-    normalise(&mut weights);
-    Some(weights)
+        .map(|(ln, proposed)| (ln - highest).exp() * rounds as f64 / proposed);
+    highest + (ratios.sum::<f64>() / ln_density.len() as f64).ln()
 }
 
 fn normalise(weights: &mut [f64]) {
@@ -186,15 +214,12 @@ fn effective(weights: &[f64]) -> f64 {
     1.0 / weights.iter().map(|weight| weight * weight).sum::<f64>()
 }
 
-/// The weights raised to the largest power, at most 1, that leaves the wanted effective number: a
-/// proposal is not fitted to a handful of draws.
-fn tempered(weights: &[f64], power: f64, wanted: f64) -> Vec<f64> {
+/// The weights raised to the largest power, at most the given one, that leaves the wanted effective
+/// number: a proposal is not fitted to a handful of draws. Logarithms of weights go in.
+fn tempered(ln_weights: &[f64], power: f64, wanted: f64) -> Vec<f64> {
     let raised = |power: f64| {
-        let largest = weights.iter().copied().fold(0.0, f64::max);
-        let mut raised: Vec<f64> = weights
-            .iter()
-            .map(|weight| (weight / largest).powf(power))
-            .collect();
+        let mut raised: Vec<f64> = ln_weights.iter().map(|ln| power * ln).collect();
+        exp_in_place(&mut raised);
         normalise(&mut raised);
         raised
     };
@@ -227,13 +252,7 @@ fn finish(
     mut weights: Vec<f64>,
 ) -> Draws {
     let count = points.len() as f64;
-    let highest = ln_density.iter().copied().fold(f64::NEG_INFINITY, f64::max);
-    // the mean over draws of density over mean proposal
-    let ratios = ln_density
-        .iter()
-        .zip(proposed)
-        .map(|(ln, proposed)| (ln - highest).exp() * rounds as f64 / proposed);
-    let mean = ratios.sum::<f64>() / count;
+    let ln_integral = ln_integral(ln_density, proposed, rounds);
     let relative = (1.0 / effective(&weights) - 1.0 / count).max(0.0).sqrt();
     let shape = tail_shape(&mut weights);
     normalise(&mut weights);
@@ -243,7 +262,7 @@ fn finish(
         halves: halves(dimensions, &points, &weights),
     };
     Draws {
-        ln_integral: highest + mean.ln(),
+        ln_integral,
         ln_integral_err: relative,
         quality,
         evaluations: points.len(),

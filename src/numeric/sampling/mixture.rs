@@ -1,6 +1,11 @@
 //! Mixtures of multivariate t distributions: densities, draws, and fits to weighted draws.
+#![allow(
+    clippy::inline_always,
+    reason = "has to be compiled inside each instruction-set copy"
+)]
 
 use super::matrix::{MOST_DIMENSIONS, Matrix, Point, cholesky, inverse_lower};
+use crate::numeric::dispatch::{Arithmetic, Kernel, dispatch};
 use rand::Rng;
 use rand_distr::{ChiSquared, Distribution, StandardNormal};
 use statrs::function::gamma::ln_gamma;
@@ -28,8 +33,8 @@ struct Component {
     centre: Point,
     scatter: Matrix,
     lower: Matrix,
-    /// Columns of the inverse of `lower`.
-    inverse_columns: Matrix,
+    /// The inverse of `lower`.
+    inverse: Matrix,
     /// Share times the density at the centre.
     height: f64,
 }
@@ -47,45 +52,147 @@ impl Component {
             share,
             centre,
             scatter: *scatter,
-            inverse_columns: transposed(&inverse_lower(&lower, dimensions)),
+            inverse: inverse_lower(&lower, dimensions),
             lower,
             height: share * ln_height.exp(),
         })
     }
 
-    /// Squared distance from the centre in units of the scatter.
-    fn distance_squared(&self, dimensions: usize, point: &Point) -> f64 {
-        let mut offset = [0.0; MOST_DIMENSIONS];
+    /// Squared distances of some points from the centre in units of the scatter.
+    #[inline(always)]
+    fn distances_squared<A: Arithmetic>(&self, dimensions: usize, points: &Lanewise) -> Lanes {
+        let mut offsets = [[0.0; LANES]; MOST_DIMENSIONS];
         for i in 0..dimensions {
-            offset[i] = point[i] - self.centre[i];
-        }
-        let mut scaled = [0.0; MOST_DIMENSIONS];
-        for (along, column) in offset.iter().zip(&self.inverse_columns).take(dimensions) {
-            for (sum, value) in scaled.iter_mut().zip(column) {
-                *sum += along * value;
+            for lane in 0..LANES {
+                offsets[i][lane] = points[i][lane] - self.centre[i];
             }
         }
-        scaled.iter().map(|value| value * value).sum()
+        let mut squares = [0.0; LANES];
+        for i in 0..dimensions {
+            let mut along = [0.0; LANES];
+            for j in 0..=i {
+                let factor = self.inverse[i][j];
+                for lane in 0..LANES {
+                    along[lane] = A::mul_add(factor, offsets[j][lane], along[lane]);
+                }
+            }
+            for lane in 0..LANES {
+                squares[lane] = A::mul_add(along[lane], along[lane], squares[lane]);
+            }
+        }
+        squares
     }
 
-    /// Share times density.
-    fn density(&self, dimensions: usize, distance_squared: f64) -> f64 {
-        let base = 1.0 + distance_squared / FREEDOM;
+    /// Share times densities at these squared distances.
+    #[inline(always)]
+    fn densities(&self, dimensions: usize, distances_squared: &Lanes) -> Lanes {
+        let mut found = [0.0; LANES];
+        let base: Lanes = distances_squared.map(|square| 1.0 + square * (1.0 / FREEDOM));
         // base^((5 + d)/2), a whole number or a half
         let mut power = if dimensions.is_multiple_of(2) {
-            base.sqrt()
+            base.map(f64::sqrt)
         } else {
-            1.0
+            [1.0; LANES]
         };
         for _ in 0..dimensions.div_ceil(2) + 2 {
-            power *= base;
+            for lane in 0..LANES {
+                power[lane] *= base[lane];
+            }
         }
-        self.height / power
+        for lane in 0..LANES {
+            found[lane] = self.height / power[lane];
+        }
+        found
     }
 }
 
-fn transposed(matrix: &Matrix) -> Matrix {
-    std::array::from_fn(|i| std::array::from_fn(|j| matrix[j][i]))
+/// Points that are worked on together: one register of the widest instructions.
+const LANES: usize = 8;
+
+type Lanes = [f64; LANES];
+
+/// Coordinates of [`LANES`] points, one coordinate after the other.
+type Lanewise = [Lanes; MOST_DIMENSIONS];
+
+/// Up to [`LANES`] points, the first one repeated.
+#[inline(always)]
+fn lanewise(points: &[Point]) -> Lanewise {
+    std::array::from_fn(|i| {
+        std::array::from_fn(|lane| points[if lane < points.len() { lane } else { 0 }][i])
+    })
+}
+
+/// Adds a mixture's densities at points.
+struct AddDensities<'a> {
+    mixture: &'a StudentMixture,
+    points: &'a [Point],
+    sums: &'a mut [f64],
+}
+
+impl Kernel for AddDensities<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        let d = self.mixture.dimensions;
+        for (points, sums) in self.points.chunks(LANES).zip(self.sums.chunks_mut(LANES)) {
+            let lanes = lanewise(points);
+            let mut total = [0.0; LANES];
+            for component in &self.mixture.components {
+                let distances = component.distances_squared::<A>(d, &lanes);
+                let densities = component.densities(d, &distances);
+                for lane in 0..LANES {
+                    total[lane] += densities[lane];
+                }
+            }
+            for (sum, density) in sums.iter_mut().zip(total) {
+                *sum += density;
+            }
+        }
+    }
+}
+
+/// Least part of a point that counts for a component when the mixture is refitted.
+const LEAST_PART: f64 = 1e-3;
+
+/// Sums over weighted points for each component of a mixture.
+struct Memberships<'a> {
+    mixture: &'a StudentMixture,
+    points: &'a [Point],
+    weights: &'a [f64],
+}
+
+impl Kernel for Memberships<'_> {
+    type Output = Vec<Sums>;
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) -> Vec<Sums> {
+        let (d, components) = (self.mixture.dimensions, &self.mixture.components);
+        let mut sums = vec![Sums::default(); components.len()];
+        let mut found = vec![([0.0; LANES], [0.0; LANES]); components.len()];
+        for (points, weights) in self.points.chunks(LANES).zip(self.weights.chunks(LANES)) {
+            let lanes = lanewise(points);
+            let mut total = [0.0; LANES];
+            for (slot, component) in found.iter_mut().zip(components) {
+                let distances = component.distances_squared::<A>(d, &lanes);
+                let densities = component.densities(d, &distances);
+                for lane in 0..LANES {
+                    total[lane] += densities[lane];
+                }
+                *slot = (densities, distances);
+            }
+            for (sum, (densities, distances)) in sums.iter_mut().zip(&found) {
+                for (lane, (point, weight)) in points.iter().zip(weights).enumerate() {
+                    let part = densities[lane] / total[lane];
+                    if part > LEAST_PART {
+                        let pull = (FREEDOM + d as f64) / (FREEDOM + distances[lane]);
+                        sum.add(d, point, weight * part, pull);
+                    }
+                }
+            }
+        }
+        sums
+    }
 }
 
 impl StudentMixture {
@@ -119,16 +226,19 @@ impl StudentMixture {
         self.components.is_empty()
     }
 
-    /// Its density at a point.
+    /// Adds its densities at points to as many sums.
+    pub fn add_densities(&self, points: &[Point], sums: &mut [f64]) {
+        dispatch(AddDensities {
+            mixture: self,
+            points,
+            sums,
+        });
+    }
+
+    /// Number of components.
     #[must_use]
-    pub fn density(&self, point: &Point) -> f64 {
-        self.components
-            .iter()
-            .map(|component| {
-                let distance = component.distance_squared(self.dimensions, point);
-                component.density(self.dimensions, distance)
-            })
-            .sum()
+    pub fn len(&self) -> usize {
+        self.components.len()
     }
 
     /// A draw.
@@ -158,23 +268,11 @@ impl StudentMixture {
     #[must_use]
     pub fn refitted(&self, points: &[Point], weights: &[f64]) -> Self {
         let d = self.dimensions;
-        let mut sums = vec![Sums::default(); self.components.len()];
-        let mut densities = vec![(0.0, 0.0); self.components.len()];
-        for (point, weight) in points.iter().zip(weights) {
-            let mut total = 0.0;
-            for (slot, component) in densities.iter_mut().zip(&self.components) {
-                let distance = component.distance_squared(d, point);
-                let density = component.density(d, distance);
-                *slot = (density, (FREEDOM + d as f64) / (FREEDOM + distance));
-                total += density;
-            }
-            if total <= 0.0 {
-                continue;
-            }
-            for (sum, (density, pull)) in sums.iter_mut().zip(&densities) {
-                sum.add(d, point, weight * density / total, *pull);
-            }
-        }
+        let sums = dispatch(Memberships {
+            mixture: self,
+            points,
+            weights,
+        });
         let components: Vec<Component> = self
             .components
             .iter()

@@ -17,7 +17,7 @@ pub use matrix::{MOST_DIMENSIONS, Matrix, Point};
 pub use mixture::StudentMixture;
 pub(crate) use mixture::uniform;
 pub use pareto::tail_shape;
-pub use peak::{Peak, ascend};
+pub use peak::{Peak, ascend, climb};
 
 /// A density that is known up to a constant.
 ///

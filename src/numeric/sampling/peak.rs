@@ -15,25 +15,46 @@ pub struct Peak {
 }
 
 /// Difference step for slopes, in units of the scales.
-const STEP: f64 = 1e-4;
+const STEP: f64 = 1e-3;
 
 /// Longest step of the ascent, in units of the scales.
 const LONGEST: f64 = 1.0;
 
 /// Rise of ln(density) below which an ascent ends.
-const RISE: f64 = 0.02;
+const RISE: f64 = 0.05;
 
-/// Follows a density upward from a point by quasi-Newton steps (Broyden, Fletcher, Goldfarb, Shanno
-/// 1970) with slopes from differences, and measures the scatter about the peak.
-///
-/// `scales` are rough sizes of each coordinate; at most `iterations` steps are taken. `None` where the
-/// density is zero at the start.
+/// Follows a density upward from a point and measures the scatter about the peak: [`climb`], then
+/// [`Peak::measured`]. `None` where the density is zero at the start.
 pub fn ascend(
     density: &mut impl Density,
     start: &Point,
     scales: &Point,
     iterations: usize,
 ) -> Option<Peak> {
+    let (point, ln) = climb(density, start, scales, iterations, |_| false)?;
+    Some(Peak::measured(density, point, ln, scales))
+}
+
+impl Peak {
+    /// A peak at a point with the logarithm of the density there: its scatter is measured.
+    pub fn measured(density: &mut impl Density, point: Point, ln: f64, scales: &Point) -> Self {
+        let scatter = scatter(density, &point, ln, scales);
+        Self { point, ln, scatter }
+    }
+}
+
+/// Follows a density upward from a point by quasi-Newton steps (Broyden, Fletcher, Goldfarb, Shanno
+/// 1970) with slopes from differences: the highest point and the logarithm of the density there.
+///
+/// `scales` are rough sizes of each coordinate; at most `iterations` steps are taken. `None` where the
+/// density is zero at the start, or where `known` says of a point on the way that its peak is known.
+pub fn climb(
+    density: &mut impl Density,
+    start: &Point,
+    scales: &Point,
+    iterations: usize,
+    known: impl Fn(&Point) -> bool,
+) -> Option<(Point, f64)> {
     let dimensions = density.dimensions();
     let mut here = *start;
     let mut ln = density.ln(&here);
@@ -93,17 +114,15 @@ pub fn ascend(
         update(&mut metric, &moved, &turned, dimensions);
         let rise = found - ln;
         (here, ln, slope) = (point, found, new_slope);
+        if known(&here) {
+            return None;
+        }
         small = if rise < RISE { small + 1 } else { 0 };
         if small > 1 {
             break;
         }
     }
-    let scatter = scatter(density, &here, ln, scales);
-    Some(Peak {
-        point: here,
-        ln,
-        scatter,
-    })
+    Some((here, ln))
 }
 
 fn dot(a: &Point, b: &Point) -> f64 {

@@ -18,6 +18,8 @@ pub(super) const ZERO: RGBColor = RGBColor(150, 156, 163);
 pub(super) const WINDOW: RGBColor = RGBColor(240, 243, 246);
 pub(super) const V_LSR: RGBColor = RGBColor(25, 110, 100);
 pub(super) const V_LSR_BAND: RGBColor = RGBColor(184, 221, 214);
+pub(super) const POSTERIOR_68: RGBColor = RGBColor(205, 186, 148);
+pub(super) const POSTERIOR_95: RGBColor = RGBColor(236, 228, 210);
 pub(super) const CAUTION: RGBColor = RGBColor(150, 50, 20);
 pub(super) const PAPER: RGBColor = RGBColor(255, 255, 255);
 

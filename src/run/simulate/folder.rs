@@ -1,5 +1,6 @@
 //! A new folder that is whole or absent: made under a temporary name, then renamed.
 
+use crate::run::products::holds_something;
 use crate::run::{RunError, check_directory};
 use std::fs;
 use std::path::Path;
@@ -30,14 +31,6 @@ pub(super) fn fill_folder(
     // it has another name now: nothing is left to remove
     let _ = unfinished.keep();
     Ok(())
-}
-
-fn holds_something(directory: &Path) -> Result<bool, RunError> {
-    if !directory.exists() {
-        return Ok(false);
-    }
-    let mut entries = fs::read_dir(directory).map_err(|source| file_error(directory, source))?;
-    Ok(entries.next().is_some())
 }
 
 /// A folder under a temporary name, on the file system of its later place.
