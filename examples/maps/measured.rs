@@ -1,29 +1,78 @@
 //! A simulated map's pointings, prepared, measured and fitted as the pairs that they are.
 
 use inrush::fit::{FitSettings, Workspace, fit_pair, fit_thin};
+use inrush::grid::{ClumpMaps, Diagnosis, Field, GridError, Reading, centre, diagnose};
 use inrush::line::Line;
-use inrush::measure::{MeasureSettings, Measures, ThinLine, first_moment, measure};
+use inrush::measure::{MeasureSettings, Sides, ThinLine, first_moment, measure, sides};
 use inrush::model::Model;
 use inrush::numeric::Estimate;
 use inrush::prepare::{Expected, PrepareSettings, Prepared, prepare_pair};
-use inrush::simulate::grid::{SimulatedGrid, SimulatedPointing};
+use inrush::simulate::grid::{GridTruth, SimulatedGrid, SimulatedPointing, simulate_grid};
 use inrush::spectrum::{Spectrum, Window};
 
 /// What a pointing brings.
 pub struct Measured {
-    pub dx_arcsec: f64,
-    pub dy_arcsec: f64,
+    pub at_arcsec: [f64; 2],
     pub thin: Option<ThinLine>,
-    pub measures: Measures,
-    pub mean_thick_km_s: Option<Estimate>,
+    pub integral_thin_k_km_s: Estimate,
+    pub sides: Option<Sides>,
+    pub thick_moment_km_s: Option<Estimate>,
     pub v_in_km_s: Option<Estimate>,
 }
 
 /// Significance from which a moment is taken.
 const DETECTION: f64 = 5.0;
 
+/// What a simulated map says, from its spectra alone: centre, parities, verdict.
+pub fn diagnosed(
+    truth: &GridTruth,
+    lines: &(Line, Line),
+    with_fits: bool,
+    workspace: &mut Workspace,
+) -> Result<Diagnosis, Box<dyn std::error::Error>> {
+    let grid = simulate_grid(truth, (&lines.0, &lines.1))?;
+    let pointings = measured(&grid, lines, with_fits, workspace);
+    Ok(diagnosis(&pointings, truth)?)
+}
+
+fn diagnosis(pointings: &[Measured], truth: &GridTruth) -> Result<Diagnosis, GridError> {
+    let beam_arcsec = truth.beam_arcsec[0];
+    let field = |of: &dyn Fn(&Measured) -> Option<Estimate>| {
+        let readings = pointings.iter().filter_map(|one| {
+            let Estimate { value, err } = of(one)?;
+            let [dx_arcsec, dy_arcsec] = one.at_arcsec;
+            (err > 0.0).then_some(Reading {
+                dx_arcsec,
+                dy_arcsec,
+                value,
+                err,
+            })
+        });
+        Field::new(readings.collect(), truth.noise_fwhm_arcsec)
+    };
+    let systematics: Vec<f64> = pointings
+        .iter()
+        .filter_map(|one| Some(one.sides?.core_systematic))
+        .collect();
+    let maps = ClumpMaps {
+        thin_velocity: field(&|one| Some(one.thin?.v_km_s))?,
+        thick_moment: field(&|one| one.thick_moment_km_s)?,
+        core: field(&|one| Some(one.sides?.core))?,
+        wings: field(&|one| Some(one.sides?.wings))?,
+        core_systematic: systematics.iter().sum::<f64>() / systematics.len().max(1) as f64,
+        speed: field(&|one| one.v_in_km_s)?,
+    };
+    let integrals = field(&|one| Some(one.integral_thin_k_km_s))?;
+    Ok(diagnose(&maps, &centre(&integrals)?, beam_arcsec))
+}
+
+fn integral_thin(thick: &Prepared, thin: &Prepared, systematic_km_s: f64) -> Estimate {
+    let settings = MeasureSettings::default();
+    measure(thick, thin, None, systematic_km_s, &settings).integral_thin_k_km_s
+}
+
 /// All pointings whose spectra can be prepared.
-pub fn measured(
+fn measured(
     grid: &SimulatedGrid,
     lines: &(Line, Line),
     with_fits: bool,
@@ -41,26 +90,23 @@ pub fn measured(
     prepared
         .iter()
         .map(|(pointing, thick, thin)| {
-            let line = std::panic::catch_unwind(std::panic::AssertUnwindSafe(|| {
-                fit_thin(thin, &lines.1, &FitSettings::default(), workspace)
-                    .ok()
-                    .and_then(|fit| fit.line)
-            }))
-            .unwrap_or(None);
+            let fit = fit_thin(thin, &lines.1, &FitSettings::default(), workspace);
+            let line = fit.ok().and_then(|fit| fit.line);
             let systematic = lines
                 .0
                 .velocity_systematic_km_s()
                 .hypot(lines.1.velocity_systematic_km_s());
-            let settings = MeasureSettings::default();
             let v_in_km_s = line
                 .as_ref()
                 .filter(|_| with_fits)
                 .and_then(|line| speed(thick, thin, lines, line, workspace));
             Measured {
-                dx_arcsec: pointing.dx_arcsec,
-                dy_arcsec: pointing.dy_arcsec,
-                measures: measure(thick, thin, line.as_ref(), systematic, &settings),
-                mean_thick_km_s: first_moment(thick, range, DETECTION),
+                at_arcsec: [pointing.dx_arcsec, pointing.dy_arcsec],
+                integral_thin_k_km_s: integral_thin(thick, thin, systematic),
+                thick_moment_km_s: first_moment(thick, range, DETECTION),
+                sides: line
+                    .as_ref()
+                    .and_then(|line| sides(thick, line, 1, systematic, DETECTION)),
                 v_in_km_s,
                 thin: line,
             }
