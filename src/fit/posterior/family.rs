@@ -2,7 +2,7 @@
 //! Brightnesses are amplitudes of the shapes and no coordinates.
 
 use crate::model::{Model, RadiationTemperature};
-use crate::numeric::sampling::{MOST_DIMENSIONS, Point};
+use crate::numeric::sampling::{Point, padded};
 
 /// A family of profiles.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Hash)]
@@ -177,10 +177,4 @@ impl Family {
         let ratio = point[self.thin_width()].exp();
         [kinematics, rest, vec![ratio]].concat()
     }
-}
-
-pub(super) fn padded(values: &[f64]) -> Point {
-    let mut point = [0.0; MOST_DIMENSIONS];
-    point[..values.len()].copy_from_slice(values);
-    point
 }

@@ -1,10 +1,10 @@
 //! Where the search for peaks of a posterior begins.
 
-use super::family::{Family, padded};
+use super::family::Family;
 use super::target::Target;
 use super::{ShapeErrors, sigma_km_s};
 use crate::measure::ThinLine;
-use crate::numeric::sampling::{Density, Peak, Point, climb};
+use crate::numeric::sampling::{Density, Peak, Point, climb, padded};
 use crate::prepare::Prepared;
 
 /// Width of the sharpest feature of a profile, in dispersions. Sharper ones, the edges of an opaque

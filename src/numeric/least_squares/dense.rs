@@ -197,13 +197,14 @@ pub(super) fn triangularise(matrix: &mut [f64], rows: usize, columns: usize, rig
         let (head, tail) = matrix.split_at_mut((k + 1) * rows);
         let reflector = &mut head[k * rows + k..];
         let norm = sum_of_squares(reflector).sqrt();
-        if norm == 0.0 {
+        // Half the squared length of the reflector, without cancellation.
+        let half_square = norm * (norm + reflector[0].abs());
+        // Nothing, or so little that its square has no digits: dividing by it would give NaN.
+        if half_square < f64::MIN_POSITIVE {
             continue;
         }
         let diagonal = -norm.copysign(reflector[0]);
         reflector[0] -= diagonal;
-        // The squared length of the reflector, without cancellation.
-        let half_square = norm * reflector[0].abs();
         let reflect = |values: &mut [f64]| {
             let factor = -dot(reflector, values) / half_square;
             for (value, element) in values.iter_mut().zip(reflector.iter()) {
@@ -227,6 +228,17 @@ mod tests {
         (0..count)
             .map(|i| (phase + 1.7 * i as f64).sin() + 0.1 * phase)
             .collect()
+    }
+
+    /// Wings of a very narrow line: their squares underflow.
+    #[test]
+    fn columns_whose_squares_vanish_leave_no_nan() {
+        for tiny in [1e-155, 1e-160, 1e-162, 1e-200, 5e-324] {
+            let mut matrix = [tiny, -tiny, tiny, tiny, tiny, -2.0 * tiny];
+            let mut right = [1.0, 2.0, 3.0];
+            triangularise(&mut matrix, 3, 2, &mut right);
+            assert!(matrix.iter().chain(&right).all(|value| value.is_finite()));
+        }
     }
 
     #[test]

@@ -8,14 +8,14 @@
 
 mod ensemble;
 mod importance;
-mod matrix;
+pub(crate) mod matrix;
 mod mixture;
 mod pareto;
 mod peak;
 
 pub use ensemble::{EnsembleSettings, settle};
 pub use importance::{Doubt, Draws, ImportanceSettings, Quality, sample};
-pub use matrix::{MOST_DIMENSIONS, Matrix, Point};
+pub use matrix::{MOST_DIMENSIONS, Matrix, Point, padded};
 pub use mixture::StudentMixture;
 pub(crate) use mixture::uniform;
 pub use pareto::tail_shape;
