@@ -293,14 +293,14 @@ fn weak_thin_lines_are_replaced_by_means_and_say_so() {
 fn write_table(folder: &Path, change: impl Fn(&str, String) -> Option<String>) {
     let clump = Clump::default();
     let mut table = "id,dx_arcsec,dy_arcsec,thick_file,thin_file\n".to_owned();
-    for index in 0..9 {
+    for index in 0..9_u32 {
         let at = [
             24.0 - 24.0 * f64::from(index % 3),
             24.0 * f64::from(index / 3) - 24.0,
         ];
         for (which, thick) in [("thick", true), ("thin", false)] {
             let plan = plan(thick);
-            let seen = clump.seen(&plan, thick, 10 + u64::from(index.unsigned_abs()));
+            let seen = clump.seen(&plan, thick, 10 + u64::from(index));
             let mut csv = "velocity_km_s,tmb_k\n".to_owned();
             for channel in 0..plan.channels {
                 let velocity = plan.first_km_s + plan.channel_km_s * channel as f64;
