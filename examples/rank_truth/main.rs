@@ -1,10 +1,10 @@
 //! Do rates' intervals hold, does a ranking follow the true rates, and are places as firm as they say?
 //!
-//!     cargo run --release --example rank_truth -- rates [SOURCES] | order [SOURCES]
+//!     cargo run --release --example rank_truth -- rates [SOURCES] | order [SOURCES] [SHARE]
 //!
 //! `rates` draws SOURCES (1000) pairs from the priors, each with a distance, mass, radius and slope whose
 //! truths are drawn from what is given of them, and counts how many 68 and 95 % intervals of the rate hold
-//! the truth. `order` simulates SOURCES (200) with a signal-to-noise ratio of 20 in both lines, ranks them, and
+//! the truth. `order` simulates SOURCES (200), a SHARE (0.7) of them infalling, with a signal-to-noise ratio of 20 in both lines, ranks them, and
 //! compares the order with that of the true rates; from more than 200 it takes many samples of 200 and tabulates
 //! how often sources with a stated probability of a place among the first ten have one.
 #![allow(clippy::print_stdout, clippy::print_stderr)]
@@ -16,13 +16,15 @@ use inrush::rank::{Grade, Quantity, Source, rank_spreads};
 use rand::RngExt as _;
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::SeedableRng as _;
-use sources::{Failed, Held, correlation, held, pool};
+use sources::{Failed, Held, correlation, correlation_of_rates, held, pool};
 use std::process::ExitCode;
 
 /// Sources of one sample.
 const SAMPLE: usize = 200;
 /// First places that are asked about.
 const TOP: usize = 10;
+/// Share that falls in.
+const INFALL: f64 = 0.7;
 
 fn main() -> ExitCode {
     let arguments: Vec<String> = std::env::args().skip(1).collect();
@@ -30,8 +32,11 @@ fn main() -> ExitCode {
     let result = match (arguments.first().map(String::as_str), sources) {
         (Some("rates"), None) => rates(1000),
         (Some("rates"), Some(Ok(sources))) => rates(sources),
-        (Some("order"), None) => order(SAMPLE),
-        (Some("order"), Some(Ok(sources))) => order(sources),
+        (Some("order"), None) => order(SAMPLE, INFALL),
+        (Some("order"), Some(Ok(sources))) => {
+            let share = arguments.get(2).and_then(|text| text.parse().ok());
+            order(sources, share.unwrap_or(INFALL))
+        }
         _ => Err("expected rates or order, then a number of sources".into()),
     };
     match result {
@@ -60,8 +65,8 @@ fn rates(sources: usize) -> Result<(), Failed> {
     Ok(())
 }
 
-fn order(sources: usize) -> Result<(), Failed> {
-    let (pool, failed) = pool(sources)?;
+fn order(sources: usize, infall: f64) -> Result<(), Failed> {
+    let (pool, failed) = pool(sources, infall)?;
     println!("{} sources, {failed} failed", pool.len());
     let all: Vec<usize> = (0..pool.len().min(SAMPLE)).collect();
     let grades = [
@@ -80,6 +85,10 @@ fn order(sources: usize) -> Result<(), Failed> {
     println!(
         "rank correlation with the true rates, first sample: {:.3}",
         correlation(&pool, &all)
+    );
+    println!(
+        "rank correlation of reported and true rates: {:.3}",
+        correlation_of_rates(&pool, &all)
     );
     let mut generator = ChaCha8Rng::seed_from_u64(5);
     let samples = if pool.len() > SAMPLE {

@@ -100,9 +100,9 @@ pub struct Ranked {
     pub rate_msun_yr: f64,
 }
 
-/// Sources with a signal-to-noise ratio of 20 in both lines, 70 % of them infalling, 15 % at rest, 15 % expanding,
-/// and how many failed.
-pub fn pool(sources: usize) -> Result<(Vec<Ranked>, usize), Failed> {
+/// Sources with a signal-to-noise ratio of 20 in both lines, a share of them infalling, the others half at rest and
+/// half expanding, and how many failed.
+pub fn pool(sources: usize, infall: f64) -> Result<(Vec<Ranked>, usize), Failed> {
     let lines = drawn::lines().map_err(|error| error.to_string())?;
     let twenty = Range {
         low: 20.0,
@@ -111,9 +111,9 @@ pub fn pool(sources: usize) -> Result<(Vec<Ranked>, usize), Failed> {
     };
     let sample = SampleSettings {
         kinds: [
-            (Kind::Infall, 0.7),
-            (Kind::Static, 0.15),
-            (Kind::Expansion, 0.15),
+            (Kind::Infall, infall),
+            (Kind::Static, 0.5 - 0.5 * infall),
+            (Kind::Expansion, 0.5 - 0.5 * infall),
         ]
         .into(),
         signal_to_noise: twenty,
@@ -150,4 +150,14 @@ pub fn correlation(pool: &[Ranked], members: &[usize]) -> f64 {
         .map(|index| pool[*index].rate_msun_yr)
         .collect();
     spearman(&places, &rates).unwrap_or(f64::NAN)
+}
+
+/// Rank correlation of the reported rates and the true ones, of sources with a reported one.
+pub fn correlation_of_rates(pool: &[Ranked], members: &[usize]) -> f64 {
+    let known = members.iter().filter_map(|index| {
+        let reported = pool[*index].source.finding.rate_msun_yr.as_ref()?;
+        Some((reported.value, pool[*index].rate_msun_yr))
+    });
+    let (reported, truth): (Vec<f64>, Vec<f64>) = known.unzip();
+    spearman(&reported, &truth).unwrap_or(f64::NAN)
 }

@@ -274,13 +274,17 @@ fn refuse_meant_column(name: &str, place: &Place<'_>) -> Result<(), RunError> {
         let slip = strsim::normalized_damerau_levenshtein(stem, key) >= A_SLIP;
         if other_unit || slip {
             let found = format!("the column `{name}`");
-            let hint = if other_unit {
-                format!(
-                    "give it in {} and name it `{key}`, or rename it",
-                    input.unit()
-                )
-            } else {
-                format!("did you mean `{key}`? Another name is passed over")
+            let unit = input.unit();
+            let hint = match (slip, other_unit) {
+                (true, true) => {
+                    format!(
+                        "did you mean `{key}`? Of another unit, give it in {unit} and name it so"
+                    )
+                }
+                (false, true) => {
+                    format!("give it in {unit} and name it `{key}`, or rename it")
+                }
+                _ => format!("did you mean `{key}`? Another name is passed over"),
             };
             return Err(place.error(&found, &format!("`{key}`"), &hint));
         }
