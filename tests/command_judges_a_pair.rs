@@ -39,7 +39,7 @@ fn infall_is_found_with_intervals_and_said_in_sentences() {
         assert!(ends.is_sorted(), "{model} {ends:?}");
     }
     let verdict = results["verdict"].as_str().unwrap();
-    assert!(verdict.starts_with("Infall is most probable"), "{verdict}");
+    assert!(verdict.starts_with("Most probable: infall"), "{verdict}");
     assert!(verdict.contains("The data exclude expansion"), "{verdict}");
     for unseen in ["rotation or an outflow", "a cold cloud in front"] {
         assert!(verdict.contains(unseen), "{verdict}");
@@ -50,7 +50,7 @@ fn infall_is_found_with_intervals_and_said_in_sentences() {
     );
     let words = folder.fit(&[]).stdout;
     for sentence in [
-        "  - Infall is most probable",
+        "  - Most probable: infall",
         "  - One position cannot exclude rotation or an outflow",
     ] {
         assert!(words.contains(sentence), "{words}");
@@ -195,7 +195,7 @@ fn two_clouds_do_not_pass_as_infall() {
         results["verdict"]
             .as_str()
             .unwrap()
-            .starts_with("Two clouds is most probable")
+            .starts_with("Most probable: two clouds")
     );
 }
 
@@ -343,4 +343,33 @@ fn settings_that_cannot_be_are_refused_with_what_to_do() {
         "{}",
         run.stderr
     );
+}
+
+/// Nothing of the band is left outside the fitted range, and neighbours are correlated.
+#[test]
+fn correlated_noise_in_a_narrow_band_is_judged() {
+    let pair = Pair {
+        first_km_s: 2.0,
+        channels: 108,
+        ..Pair::default()
+    };
+    let (thick, thin) = pair.temperature_k();
+    let smooth = |values: &[f64]| -> Vec<f64> {
+        let around = |i: usize, by: usize| values[(i + by).clamp(1, values.len()) - 1];
+        (0..values.len())
+            .map(|i| 0.25 * around(i, 0) + 0.5 * values[i] + 0.25 * around(i, 2))
+            .collect()
+    };
+    let folder = Folder::new();
+    for (name, values) in [("thick.csv", &thick), ("thin.csv", &thin)] {
+        let text = command::csv(&pair.velocity_km_s(), &smooth(values));
+        folder.write(name, text.as_bytes());
+    }
+    let results = folder.fit_json(&["--range-km-s", "0,15"]);
+    assert!(
+        codes(&results).contains(&"correlated-noise"),
+        "{:?}",
+        codes(&results)
+    );
+    assert!(number(&results, "p_infall") > 0.9);
 }

@@ -261,7 +261,7 @@ fn posterior(case: &Case) -> PosteriorPart {
         draws: draws.collect(),
         correlation: Some(-0.83),
         sentences: vec![
-            "Infall is most probable (probability 0.934). The data exclude expansion (above 10000 to 1) and rest (260 to 1)."
+            "Most probable: infall (probability 0.934). The data exclude expansion (above 10000 to 1) and rest (260 to 1)."
                 .to_owned(),
         ],
     }

@@ -378,7 +378,7 @@ fn pair() -> Row {
     row.set("p_infall", 0.9871).unwrap();
     row.set(
         "verdict",
-        "Infall is most probable (probability 0.987). The data exclude none of the others.",
+        "Most probable: infall (probability 0.987). The data exclude none of the others.",
     )
     .unwrap();
     row.set("mass_rate_msun_yr", 1.234e-4).unwrap();
@@ -433,7 +433,7 @@ Inward speed (68 % intervals)
 
 Probabilities
   infall                        0.987
-  - Infall is most probable (probability 0.987)
+  - Most probable: infall (probability 0.987)
   - The data exclude none of the others
 
 Collapse (68 % intervals)

@@ -1,11 +1,14 @@
 //! Arguments in, messages out. Results go to stdout, everything else to stderr.
 
+mod calibrate;
 mod check;
 mod cite;
 mod fit;
 mod interrupt;
 mod lines;
+mod map;
 mod output;
+mod pair;
 mod progress;
 mod rank;
 mod simulate;
@@ -71,10 +74,12 @@ struct Arguments {
 
 #[derive(Debug, Subcommand)]
 enum Command {
+    Calibrate(Box<calibrate::CalibrateArguments>),
     Check(check::CheckArguments),
     Cite(cite::CiteArguments),
     Fit(Box<fit::FitArguments>),
     Lines(lines::LinesArguments),
+    Map(map::MapArguments),
     Rank(rank::RankArguments),
     Simulate(simulate::SimulateArgs),
 }
@@ -95,10 +100,12 @@ pub fn main() -> ExitCode {
     };
     let output = Output::new(arguments.quiet);
     let result = match &arguments.command {
+        Command::Calibrate(calibrate) => calibrate::run(calibrate, arguments.threads, &output),
         Command::Check(check) => check::run(check),
         Command::Cite(cite) => cite::run(cite),
         Command::Fit(fit) => fit::run(fit, &output),
         Command::Lines(lines) => lines::run(lines),
+        Command::Map(map) => map::run(map, arguments.threads, &output),
         Command::Rank(sample) => rank::run(sample, arguments.threads, &output),
         Command::Simulate(simulate) => simulate::run(simulate, arguments.threads, &output),
     };

@@ -2,6 +2,7 @@
 //! program quietly.
 
 use std::io::{ErrorKind, IsTerminal, Write};
+use std::path::{Path, PathBuf};
 
 /// Where messages go, and which of them.
 #[derive(Clone, Copy, Debug)]
@@ -31,6 +32,21 @@ impl Output {
     pub fn note(&self, text: &str) {
         if !self.quiet {
             Self::message(&format!("note: {text}\n"));
+        }
+    }
+
+    /// Which files were written into a directory; nothing of none.
+    pub fn wrote(&self, files: &[PathBuf], directory: &Path) {
+        let names: Vec<String> = files
+            .iter()
+            .filter_map(|path| Some(path.file_name()?.to_string_lossy().into_owned()))
+            .collect();
+        if !names.is_empty() {
+            self.note(&format!(
+                "wrote {} into {}",
+                names.join(", "),
+                directory.display()
+            ));
         }
     }
 

@@ -52,8 +52,14 @@ fn graded(finding: &Finding) -> String {
 }
 
 fn surpassed(finding: &Finding, quantity: Quantity) -> String {
-    let rate = |rate: f64| format!("mass rate above {rate:.1e} Msun/yr at 84 %");
-    let speed = |speed: f64| format!("inward speed above {speed:.2} km/s at 84 %");
+    let rate = |rate: f64| match rate {
+        ..=0.0 => "no mass rate is certain".to_owned(),
+        _ => format!("mass rate above {rate:.1e} Msun/yr at 84 %"),
+    };
+    let speed = |speed: f64| match speed {
+        ..=0.0 => "no inward speed is certain".to_owned(),
+        _ => format!("inward speed above {speed:.2} km/s at 84 %"),
+    };
     match (
         certain(finding, quantity),
         certain(finding, Quantity::Speed),

@@ -20,6 +20,7 @@ pub mod ranking;
 mod rounding;
 pub mod sample_statistics;
 mod sentence;
+pub mod sky_map;
 pub mod spectra;
 mod summary;
 mod table;

@@ -20,8 +20,8 @@ pub fn verdict_sentences(verdict: &Verdict, detected: bool) -> Vec<String> {
         sentences.push("The thick line is not detected".to_owned());
     }
     sentences.push(format!(
-        "{} is most probable ({})",
-        capital(word(favoured)),
+        "Most probable: {} ({})",
+        word(favoured),
         probability(verdict.probability(favoured))
     ));
     let excluded = others(true);
@@ -63,12 +63,6 @@ fn word(hypothesis: Hypothesis) -> &'static str {
         Hypothesis::Static => "rest",
         Hypothesis::TwoClouds => "two clouds",
     }
-}
-
-fn capital(text: &str) -> String {
-    let mut letters = text.chars();
-    let first = letters.next().map(char::to_uppercase);
-    first.into_iter().flatten().chain(letters).collect()
 }
 
 /// Never 0 or 1: what is not excluded by logic has a probability.
@@ -139,7 +133,7 @@ mod tests {
         assert_eq!(
             verdict_sentences(&found, true),
             [
-                "Infall is most probable (probability 0.900)",
+                "Most probable: infall (probability 0.900)",
                 "The data exclude expansion (above 10000 to 1) and rest (350 to 1)",
                 "They do not exclude two clouds (probability 0.080)",
                 "One position cannot exclude rotation or an outflow",
@@ -149,7 +143,7 @@ mod tests {
         let open = verdict([0.2, 0.2, 0.4, 0.2], [2.0, 2.0, 1.0, 2.0]);
         let sentences = verdict_sentences(&open, false);
         assert_eq!(sentences[0], "The thick line is not detected");
-        assert_eq!(sentences[1], "Rest is most probable (probability 0.400)");
+        assert_eq!(sentences[1], "Most probable: rest (probability 0.400)");
         assert_eq!(sentences[2], "The data exclude none of the others");
         assert!(sentences.iter().all(|one| !one.contains(',')));
     }

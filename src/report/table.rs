@@ -300,6 +300,12 @@ impl Row {
         &self.values
     }
 
+    /// The cells alone, in the order of the columns.
+    #[must_use]
+    pub fn into_values(self) -> Vec<Value> {
+        self.values
+    }
+
     /// The columns it is for.
     pub fn schema(&self) -> &Schema {
         &self.schema

@@ -3,6 +3,7 @@
 use super::{BatchError, JournalError, JudgeError, Panicked};
 use crate::derive::DeriveError;
 use crate::fit::FitError;
+use crate::grid::cubes::CubeError;
 use crate::line::LineError;
 use crate::prepare::scale::ScaleError;
 use crate::prepare::{PairError, PrepareError};
@@ -163,6 +164,25 @@ pub enum RunError {
     /// A journal of finished items that cannot be used.
     #[error(transparent)]
     Journal(#[from] JournalError),
+    /// Two cubes that do not belong together.
+    #[error(transparent)]
+    Cubes(#[from] CubeError),
+    /// Two tables of pointings without a position that is in both.
+    #[error("{} and {}: no position in both, expected rows of the same positions", thick.display(), thin.display())]
+    NoCommonPositions {
+        /// The thick line's file.
+        thick: PathBuf,
+        /// The thin line's file.
+        thin: PathBuf,
+    },
+    /// No pointing of a map has a result.
+    #[error("none of {pointings} pointings can be used; the first: {first}")]
+    NoPointing {
+        /// Pointings with spectra.
+        pointings: usize,
+        /// Why the first cannot be used.
+        first: String,
+    },
     /// A defect of the program.
     #[error("internal error: {0}")]
     Internal(String),
@@ -186,6 +206,7 @@ impl RunError {
                 | Self::NoLine { .. }
                 | Self::Line { .. }
                 | Self::Setting { .. }
+                | Self::Judge(_)
                 | Self::Derive(_)),
             ) => Self::InSheet {
                 path: path.to_owned(),
@@ -287,6 +308,11 @@ impl RunError {
             Self::Report(error) => error.hint(),
             Self::Batch(error) => error.hint(),
             Self::Journal(error) => Some(error.hint()),
+            Self::Cubes(error) => error.hint(),
+            Self::NoCommonPositions { .. } => {
+                Some("check that both tables are of one source".to_owned())
+            }
+            Self::NoPointing { .. } => Some("check files and lines of the run sheet".to_owned()),
             Self::Internal(_) => {
                 Some("please report this with the input that caused it".to_owned())
             }

@@ -1,5 +1,6 @@
 //! The figure of a pair: what is drawn, handed to the report.
 
+use super::calibrate::{self, Calibration, Kind, Share};
 use super::products::profile_word;
 use super::{Judged, LineOutcome, PairOutcome};
 use crate::fit::ModelFit;
@@ -261,6 +262,13 @@ fn figure_numbers(outcome: &PairOutcome) -> Vec<(String, String)> {
             )),
             _ => {}
         }
+        if judged.verdict.shares.len() > 1 {
+            let shares = judged.verdict.shares.iter();
+            let each: Vec<String> = shares
+                .map(|(model, share)| format!("{} {share:.2}", model_label(*model)))
+                .collect();
+            numbers.push(("evidence".to_owned(), each.join(", ")));
+        }
     } else {
         for fit in &outcome.fit.models {
             if let Some(v_in) = fit.estimate("v_in_km_s") {
@@ -291,5 +299,82 @@ fn figure_numbers(outcome: &PairOutcome) -> Vec<(String, String)> {
         "profile".to_owned(),
         profile_word(outcome.measures.profile).to_owned(),
     ));
+    numbers
+}
+
+/// The figure of a calibration.
+pub(super) fn calibration_figure(calibration: &Calibration) -> report::figure::CalibrationFigure {
+    let speeds = |moving: bool| {
+        let own = calibration
+            .injections
+            .iter()
+            .filter(|one| one.noise_factor == 1.0 && (one.kind == Kind::Moving) == moving);
+        own.filter_map(|one| one.found.as_ref().ok()?.v_in_km_s)
+            .collect()
+    };
+    let share = |share: Share| {
+        let (low, high) = share.interval95();
+        (share.value().unwrap_or(0.0), low, high)
+    };
+    let points = calibration.levels.iter().map(|level| {
+        let moving = &level.moving;
+        let speed = moving.bias_km_s.zip(moving.scatter_km_s);
+        report::figure::CalibrationPoint {
+            signal_to_noise: level.signal_to_noise,
+            speed_km_s: speed.map(|(bias, scatter)| (calibration.v_in_km_s + bias, scatter)),
+            found: share(moving.found),
+            false_alarms: share(level.at_rest.found),
+        }
+    });
+    let errors = if calibration.formal {
+        "formal errors"
+    } else {
+        "posteriors"
+    };
+    let pairs = calibration.own().map_or(0, |own| own.moving.pairs);
+    report::figure::CalibrationFigure {
+        source: calibration.source.clone(),
+        injected: format!(
+            "{} and {}: {pairs} pairs of the {} model as fitted and {pairs} of it at rest, with this observation's noise and channels, fitted again ({errors})",
+            calibration.lines.0,
+            calibration.lines.1,
+            model_label(calibration.model)
+        ),
+        true_v_in_km_s: calibration.v_in_km_s,
+        moving_km_s: speeds(true),
+        at_rest_km_s: speeds(false),
+        signal_to_noise: calibration.signal_to_noise,
+        points: points.collect(),
+        found: calibrate::found_label(calibration),
+        numbers: calibration_numbers(calibration),
+    }
+}
+
+fn calibration_numbers(calibration: &Calibration) -> Vec<(String, String)> {
+    let Some(own) = calibration.own() else {
+        return Vec::new();
+    };
+    let moving = &own.moving;
+    let mut numbers = Vec::new();
+    let mut add = |label: &str, value: String| numbers.push((label.to_owned(), value));
+    if let (Some(bias), Some(err)) = (moving.bias_km_s, moving.bias_err_km_s) {
+        add("bias", format!("{} km/s", report::rounded(bias, err)));
+    }
+    for (label, value) in [
+        ("scatter", moving.scatter_km_s),
+        ("stated error", moving.stated_km_s),
+    ] {
+        if let Some(value) = value {
+            add(label, format!("{} km/s", report::rounded_plain(value)));
+        }
+    }
+    add("truth in 68 %", calibrate::percent(moving.in68));
+    add("truth in 95 %", calibrate::percent(moving.in95));
+    add("false alarms", calibrate::percent(own.at_rest.found));
+    add("half found from", calibrate::needed(calibration, 0.5));
+    add(
+        "nine in ten from",
+        calibrate::needed(calibration, calibrate::NINE_IN_TEN),
+    );
     numbers
 }

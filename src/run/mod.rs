@@ -1,6 +1,7 @@
 //! The one place that joins the stages: a run sheet in, results and products out.
 
 mod batch;
+pub mod calibrate;
 mod check;
 mod cite;
 mod durable;
@@ -9,6 +10,7 @@ mod error;
 mod figure;
 mod journal;
 mod judge;
+pub mod map;
 mod pair;
 mod pairs;
 mod products;
@@ -32,8 +34,8 @@ pub use pair::{
 pub use pairs::{PairJob, fit_pairs};
 pub use products::{check_directory, pair_row, pair_summary, write_products};
 pub use sheet::{
-    Beam, DeriveSection, FitSection, Given, LineSection, NumberOrWord, OddsSection, OutputSection,
-    PrepareSection, RangeOrWord, Record, RunSheet, SourceSection,
+    Beam, DeriveSection, FitSection, Given, GridSection, LineSection, NumberOrWord, OddsSection,
+    OutputSection, PrepareSection, RangeOrWord, Record, RunSheet, SourceSection,
 };
 
 /// The name most like a text, where one is like it at all.

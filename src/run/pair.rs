@@ -1,13 +1,12 @@
 //! One pair through every stage.
 
 use super::journal::hexadecimal;
-use super::judge::{PreparedPair, judge};
+use super::judge::{PreparedPair, judge, judgement};
 use super::{Judged, LineSection, RunError, RunSheet, VerdictSettings};
 use crate::derive::{DeriveSettings, Derived, FitDraws, SourceProperties, Tracers};
 use crate::fit::hypotheses::Speed;
 use crate::fit::{
-    Caution, FitSettings, Judgement, ModelFit, PairFacts, PairFit, ThinFit, Workspace, cautions,
-    fit_thin,
+    Caution, FitSettings, ModelFit, PairFacts, PairFit, ThinFit, Workspace, cautions, fit_thin,
 };
 use crate::line::{Line, isotopologue_pair};
 use crate::measure::{MeasureSettings, Measures, measure};
@@ -179,6 +178,34 @@ pub fn fit_spectra(
     settings: &PairSettings,
     workspace: &mut Workspace,
 ) -> Result<PairOutcome, RunError> {
+    refuse_exchanged_lines(&pair.thick.line, &pair.thin.line)?;
+    let prepared = prepare_lines(&pair)?;
+    fit_prepared(pair, prepared, settings, workspace)
+}
+
+/// Prepares both lines of a pair, the thick one first.
+pub(super) fn prepare_lines(pair: &PairInput) -> Result<(Prepared, Prepared), RunError> {
+    let (thick, thin) = (&pair.thick, &pair.thin);
+    let expected = |line: &Line| Expected {
+        components: line.components.clone(),
+        window: None,
+    };
+    prepare_pair(
+        (&thick.spectrum, &thick.prepare, &expected(&thick.line)),
+        (&thin.spectrum, &thin.prepare, &expected(&thin.line)),
+    )
+    .map_err(|error| {
+        RunError::of_pair(error, (thick.origin.path.clone(), thin.origin.path.clone()))
+    })
+}
+
+/// Measures and fits a pair whose lines are prepared.
+pub(super) fn fit_prepared(
+    pair: PairInput,
+    (prepared_thick, prepared_thin): (Prepared, Prepared),
+    settings: &PairSettings,
+    workspace: &mut Workspace,
+) -> Result<PairOutcome, RunError> {
     let PairInput {
         name,
         source,
@@ -186,18 +213,6 @@ pub fn fit_spectra(
         thin,
     } = pair;
     let (thick_line, thin_line) = (&thick.line, &thin.line);
-    refuse_exchanged_lines(thick_line, thin_line)?;
-    let expected = |line: &Line| Expected {
-        components: line.components.clone(),
-        window: None,
-    };
-    let (prepared_thick, prepared_thin) = prepare_pair(
-        (&thick.spectrum, &thick.prepare, &expected(thick_line)),
-        (&thin.spectrum, &thin.prepare, &expected(thin_line)),
-    )
-    .map_err(|error| {
-        RunError::of_pair(error, (thick.origin.path.clone(), thin.origin.path.clone()))
-    })?;
     let thin_fit = fit_thin(&prepared_thin, thin_line, &settings.fit, workspace)?;
     let systematic_km_s = thick_line
         .velocity_systematic_km_s()
@@ -246,16 +261,7 @@ pub fn fit_spectra(
         thin_fit: &thin_fit,
         measures: &measures,
         fit: &fit,
-        judgement: match &judged {
-            None => Judgement::NotAsked,
-            Some(Err(reason)) => Judgement::Missing(reason),
-            Some(Ok(judged)) => Judgement::Found(
-                &judged.posterior,
-                &judged.verdict,
-                judged.speed,
-                &judged.unheard,
-            ),
-        },
+        judgement: judgement(judged.as_ref()),
     });
     let judged = judged.and_then(Result::ok);
     let averaged = judged.as_ref().and_then(Judged::adopted);
@@ -331,7 +337,7 @@ impl LineInput {
 }
 
 /// A line's file, read and on the common scale.
-fn open(
+pub(super) fn open(
     section: &LineSection,
     which: &'static str,
     line: Line,
@@ -363,7 +369,7 @@ fn stem(path: &Path) -> String {
 }
 
 /// The rarer isotopologue as the thick line.
-fn refuse_exchanged_lines(thick: &Line, thin: &Line) -> Result<(), RunError> {
+pub(super) fn refuse_exchanged_lines(thick: &Line, thin: &Line) -> Result<(), RunError> {
     let exchanged =
         isotopologue_pair(thick, thin).is_none() && isotopologue_pair(thin, thick).is_some();
     if exchanged {

@@ -298,7 +298,7 @@ pub fn write_products(
     Ok(written)
 }
 
-fn meta(outcome: &PairOutcome, sheet: &RunSheet) -> Vec<(String, Value)> {
+pub(super) fn meta(outcome: &PairOutcome, sheet: &RunSheet) -> Vec<(String, Value)> {
     let text = |text: &str| Value::Text(text.to_owned());
     let line = |which: &str, line: &LineOutcome| {
         vec![
@@ -338,7 +338,12 @@ fn meta(outcome: &PairOutcome, sheet: &RunSheet) -> Vec<(String, Value)> {
 }
 
 /// The sheet with every default written out, paths relative to the results, and the record.
-fn resolved(outcome: &PairOutcome, sheet: &RunSheet, base: &Path, directory: &Path) -> RunSheet {
+pub(super) fn resolved(
+    outcome: &PairOutcome,
+    sheet: &RunSheet,
+    base: &Path,
+    directory: &Path,
+) -> RunSheet {
     let mut resolved = sheet.clone().with_all_priors();
     resolved.source.name = Some(outcome.name.clone());
     for (section, line) in [
@@ -365,7 +370,7 @@ fn resolved(outcome: &PairOutcome, sheet: &RunSheet, base: &Path, directory: &Pa
 }
 
 /// A path as seen from a directory; absolute where the two share no root.
-fn relative(path: &Path, from: &Path) -> PathBuf {
+pub(super) fn relative(path: &Path, from: &Path) -> PathBuf {
     let (Ok(path), Ok(from)) = (path.canonicalize(), from.canonicalize()) else {
         return path.to_owned();
     };

@@ -15,6 +15,8 @@ use crate::model::Model;
 use crate::numeric::Estimate;
 use crate::prepare::PrepareSettings;
 use crate::prepare::scale::ScaleSettings;
+use crate::read::cube::SkyBeam;
+use crate::read::sky::{SkyFrame, SkyPosition};
 use crate::read::{ReadOptions, ValueUnit};
 use crate::spectrum::{BeamArcsec, Window};
 use serde::{Deserialize, Serialize};
@@ -106,6 +108,9 @@ pub struct RunSheet {
     /// Derived quantities.
     #[serde(default)]
     pub derive: DeriveSection,
+    /// A map's pointings.
+    #[serde(default, skip_serializing_if = "GridSection::is_default")]
+    pub grid: GridSection,
     /// Products.
     #[serde(default)]
     pub output: OutputSection,
@@ -234,6 +239,60 @@ impl Default for DeriveSection {
     }
 }
 
+/// A map's pointings. Without a table, the lines' files are cubes, or tables of one spectrum a row.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields, default)]
+pub struct GridSection {
+    /// Table of pointings, relative to the run sheet.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub pointings: Option<PathBuf>,
+    /// Right ascension and declination (ICRS, degrees) of the position that offsets are from.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub centre_deg: Option<[f64; 2]>,
+    /// Peak of the thick line over the noise of a channel from which a pointing is fitted.
+    pub threshold_sigma: f64,
+}
+
+impl Default for GridSection {
+    fn default() -> Self {
+        Self {
+            pointings: None,
+            centre_deg: None,
+            threshold_sigma: 5.0,
+        }
+    }
+}
+
+impl GridSection {
+    fn is_default(&self) -> bool {
+        *self == Self::default()
+    }
+
+    /// The position that offsets are from, where it is given.
+    ///
+    /// # Errors
+    ///
+    /// [`RunError::Setting`] for one that is none.
+    pub fn centre(&self) -> Result<Option<SkyPosition>, RunError> {
+        let Some([longitude_deg, latitude_deg]) = self.centre_deg else {
+            return Ok(None);
+        };
+        if !((0.0..=360.0).contains(&longitude_deg) && latitude_deg.abs() <= 90.0) {
+            return Err(RunError::setting(
+                "grid.centre_deg",
+                &format!("[{longitude_deg}, {latitude_deg}]"),
+                "right ascension from 0 to 360 and declination from -90 to 90, degrees",
+            )
+            .hinted("both are decimal degrees, ICRS"));
+        }
+        Ok(Some(SkyPosition {
+            frame: SkyFrame::Icrs,
+            longitude_deg,
+            latitude_deg,
+        }))
+    }
+}
+
 /// One line of the pair.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 #[serde(deny_unknown_fields)]
@@ -253,6 +312,9 @@ pub struct LineSection {
     /// Beam, full width at half maximum, arcsec.
     #[serde(skip_serializing_if = "Option::is_none")]
     pub beam_arcsec: Option<Beam>,
+    /// Angle of an elliptical beam's major axis from north through east, degrees; for maps.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub beam_angle_deg: Option<f64>,
     /// Main-beam efficiency.
     #[serde(skip_serializing_if = "Option::is_none")]
     pub eta_mb: Option<f64>,
@@ -803,6 +865,20 @@ impl LineSection {
             select,
             hdu: self.hdu,
             value_unit,
+        })
+    }
+
+    /// The given beam on the sky.
+    #[must_use]
+    pub fn sky_beam(&self) -> Option<SkyBeam> {
+        let [major_arcsec, minor_arcsec] = match self.beam_arcsec? {
+            Beam::Round(width) => [width, width],
+            Beam::Elliptical(widths) => widths,
+        };
+        Some(SkyBeam {
+            major_arcsec,
+            minor_arcsec,
+            angle_deg: self.beam_angle_deg.unwrap_or(0.0),
         })
     }
 

@@ -55,6 +55,26 @@ pub struct NormalEquations {
     pub gram: [[f64; MAX_PARAMETERS]; MAX_PARAMETERS],
 }
 
+impl NormalEquations {
+    /// Sets the sums of the first `parameters` to zero; nothing else is read of a smaller problem.
+    pub(crate) fn clear(&mut self, parameters: usize) {
+        self.chi2 = 0.0;
+        self.gradient[..parameters].fill(0.0);
+        for row in &mut self.gram[..parameters] {
+            row[..parameters].fill(0.0);
+        }
+    }
+
+    /// Takes over the sums of the first `parameters`.
+    pub(super) fn take(&mut self, other: &Self, parameters: usize) {
+        self.chi2 = other.chi2;
+        self.gradient[..parameters].copy_from_slice(&other.gradient[..parameters]);
+        for (row, other) in self.gram.iter_mut().zip(&other.gram).take(parameters) {
+            row[..parameters].copy_from_slice(&other[..parameters]);
+        }
+    }
+}
+
 impl Default for NormalEquations {
     fn default() -> Self {
         Self {
@@ -134,7 +154,7 @@ impl Kernel for Products<'_> {
 /// factor. Returns the smallest pivot relative to the diagonal element it came from: about the
 /// inverse condition number when the diagonal is near one; zero or less when the matrix is not
 /// positive definite, and the factor is then unfinished.
-pub(super) fn cholesky(matrix: &mut Matrix, size: usize) -> f64 {
+pub(super) fn cholesky<const N: usize>(matrix: &mut [[f64; N]; N], size: usize) -> f64 {
     let mut smallest = f64::INFINITY;
     for k in 0..size {
         let diagonal = matrix[k][k];
@@ -157,7 +177,11 @@ pub(super) fn cholesky(matrix: &mut Matrix, size: usize) -> f64 {
 }
 
 /// Solves L L^T x = b in place for the factor of [`cholesky`].
-pub(super) fn cholesky_solve(factor: &Matrix, size: usize, x: &mut Vector) {
+pub(super) fn cholesky_solve<const N: usize>(
+    factor: &[[f64; N]; N],
+    size: usize,
+    x: &mut [f64; N],
+) {
     for k in 0..size {
         x[k] = (0..k).fold(x[k], |rest, i| rest - factor[k][i] * x[i]) / factor[k][k];
     }

@@ -7,18 +7,24 @@
 //! Fonts are read only when a figure is drawn.
 
 mod axis;
+mod calibration;
 mod canvas;
+mod contour;
 mod export;
-mod frame;
 mod layout;
+mod map;
 mod pair;
 mod plot;
 mod posterior;
+mod spectra_sheet;
 mod style;
 mod survey;
 mod text;
 
+pub use calibration::{CalibrationFigure, CalibrationPoint};
+pub use map::{ColourScale, MapCells, MapFigure, ScaleBar};
 pub use plot::Interval;
+pub use spectra_sheet::{SpectraSheet, SpectrumPanel};
 pub use survey::{
     DistributionFigure, ProfilePanel, ProfileSheet, RankBar, RankFigure, ScatterFigure,
     ScatterPoint,

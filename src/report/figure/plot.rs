@@ -27,14 +27,14 @@ pub(super) enum Scale {
     Log,
 }
 
-/// Colours of groups, told apart by their shapes too.
+/// Colours of groups, told apart by their shapes too. No blue and no red: those are senses of asymmetry.
 pub(super) const GROUPS: [RGBColor; 6] = [
-    RGBColor(22, 82, 160),
-    RGBColor(200, 62, 18),
-    RGBColor(30, 120, 90),
-    RGBColor(150, 100, 10),
+    RGBColor(22, 112, 104),
+    RGBColor(214, 138, 10),
     RGBColor(92, 30, 104),
-    RGBColor(88, 96, 105),
+    RGBColor(120, 140, 40),
+    RGBColor(60, 66, 74),
+    RGBColor(170, 110, 150),
 ];
 
 /// A frame on the page.
@@ -42,9 +42,14 @@ pub(super) struct Frame {
     pub(super) across: Axis,
     pub(super) up: Axis,
     pub(super) scales: (Scale, Scale),
+    /// Most ticks on either axis.
+    most: (usize, usize),
 }
 
 pub(super) const TICK_MM: f64 = 0.9;
+
+/// Room below a frame for its numbers and its axis' name.
+pub(super) const HEIGHT_BELOW_MM: f64 = 7.6;
 
 impl Frame {
     /// A frame from its left, right, top and bottom on the page and the values at its ends, logarithms taken
@@ -69,6 +74,15 @@ impl Frame {
                 end_mm: top,
             },
             scales,
+            most: (7, 6),
+        }
+    }
+
+    /// The same with at most so many ticks across and up.
+    pub(super) fn with_ticks(self, across: usize, up: usize) -> Self {
+        Self {
+            most: (across, up),
+            ..self
         }
     }
 
@@ -91,7 +105,7 @@ impl Frame {
         let (bottom, top) = (self.up.start_mm, self.up.end_mm);
         if let Some(name) = names.0 {
             let base = bottom + TICK_MM + 0.36 * POINT_MM * 6.4 + 1.8;
-            for (at, label) in ticks(&self.across, self.scales.0, 7) {
+            for (at, label) in ticks(&self.across, self.scales.0, self.most.0) {
                 canvas.line(&[(at, bottom), (at, bottom + TICK_MM)], line)?;
                 canvas.text(&label, (at, base), Align::Middle, TICK)?;
             }
@@ -101,7 +115,7 @@ impl Frame {
         }
         if let Some(name) = names.1 {
             let mut widest: f64 = 0.0;
-            for (at, label) in ticks(&self.up, self.scales.1, 6) {
+            for (at, label) in ticks(&self.up, self.scales.1, self.most.1) {
                 canvas.line(&[(left - TICK_MM, at), (left, at)], line)?;
                 widest = widest.max(text::width_mm(&label, TICK.size_pt, TICK.weight));
                 let at = (left - TICK_MM - 0.6, at + 0.36 * TICK.size_pt * POINT_MM);
@@ -188,7 +202,8 @@ fn placed(axis: &Axis, scale: Scale, value: f64) -> f64 {
     axis.place_mm(value.clamp(axis.low, axis.high))
 }
 
-/// Places and labels of ticks; powers of ten on a logarithmic axis, and 2 and 5 between them where it is short.
+/// Places and labels of ticks; powers of ten on a logarithmic axis, 2 and 5 between them where it is short,
+/// and round numbers where it is shorter still.
 fn ticks(axis: &Axis, scale: Scale, most: usize) -> Vec<(f64, text::Spans)> {
     match scale {
         Scale::Even => {
@@ -209,7 +224,7 @@ fn ticks(axis: &Axis, scale: Scale, most: usize) -> Vec<(f64, text::Spans)> {
             } else {
                 &[1, 2, 5]
             };
-            (first..=last)
+            let found: Vec<(f64, text::Spans)> = (first..=last)
                 .step_by(step)
                 .flat_map(|power| factors.iter().map(move |factor| (*factor, power)))
                 .map(|(factor, power)| {
@@ -217,6 +232,17 @@ fn ticks(axis: &Axis, scale: Scale, most: usize) -> Vec<(f64, text::Spans)> {
                 })
                 .filter(|(value, ..)| axis.contains(*value))
                 .map(|(value, factor, power)| (axis.place_mm(value), power_of_ten(factor, power)))
+                .collect();
+            if found.len() > 1 {
+                return found;
+            }
+            let ticks = Ticks::between(10_f64.powf(axis.low), 10_f64.powf(axis.high), most);
+            let labelled = ticks.values.iter();
+            labelled
+                .map(|value| {
+                    let place = axis.place_mm(value.log10());
+                    (place, text::plain(&ticks.label(*value)))
+                })
                 .collect()
         }
     }

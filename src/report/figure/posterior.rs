@@ -2,10 +2,10 @@
 //! the optical depth.
 
 use super::PosteriorPart;
-use super::axis::{Axis, extent};
+use super::axis::extent;
 use super::canvas::{Align, Canvas};
-use super::frame::{Tick, frame, height_below_mm, round_ticks};
 use super::layout::{MARGIN_MM, PAGE_MM, PLOT_RIGHT_MM};
+use super::plot::{Frame, HEIGHT_BELOW_MM, Scale};
 use super::style::{
     self, INK, LABEL, NOTE, POSTERIOR_68, POSTERIOR_95, VALUE, ZERO, leading_mm, solid,
 };
@@ -43,7 +43,7 @@ impl PosteriorPlace {
 
     pub(super) fn end(&self) -> f64 {
         let words = leading_mm(LABEL) * self.sentences.len() as f64;
-        self.plot_top() + PLOT_MM + height_below_mm() + words + 1.4
+        self.plot_top() + PLOT_MM + HEIGHT_BELOW_MM + words + 1.4
     }
 }
 
@@ -62,13 +62,21 @@ pub(super) fn draw(
     canvas.line(&ends, solid(ZERO, 0.14))?;
     let heading = place.top + 1.2 + leading_mm(VALUE) * 0.8;
     let title = text::plain("Posterior of the inward speed");
-    canvas.text(&title, (MARGIN_MM + 0.5, heading), Align::Start, VALUE)?;
-    legend(canvas, heading)?;
+    let left = MARGIN_MM + 0.5;
+    canvas.text(&title, (left, heading), Align::Start, VALUE)?;
+    let width = text::width_mm(&title, VALUE.size_pt, VALUE.weight);
+    legend(canvas, heading, left + width)?;
+    if let Some(correlation) = part.correlation.filter(|_| !part.draws.is_empty()) {
+        let sign = if correlation < 0.0 { "\u{2212}" } else { "+" };
+        let words = format!("correlation {sign}{:.2}", correlation.abs());
+        let at = (PLOT_RIGHT_MM, heading);
+        canvas.text(&text::plain(&words), at, Align::End, NOTE)?;
+    }
     marginal(canvas, part, (top, bottom), stroke_of)?;
     if !part.draws.is_empty() {
         depth(canvas, part, (top, bottom), stroke_of)?;
     }
-    let mut baseline = bottom + height_below_mm() + leading_mm(LABEL) * 0.8;
+    let mut baseline = bottom + HEIGHT_BELOW_MM + leading_mm(LABEL) * 0.8;
     for line in &place.sentences {
         let at = (MARGIN_MM + 0.5, baseline);
         canvas.text(&text::plain(line), at, Align::Start, LABEL)?;
@@ -77,15 +85,15 @@ pub(super) fn draw(
     Ok(())
 }
 
-/// What the shades mean, at the right of the heading.
-fn legend(canvas: &Canvas<'_>, baseline: f64) -> Result<(), ReportError> {
-    let mut right = PAGE_MM - MARGIN_MM - 0.5;
-    for (words, color) in [("95 %", POSTERIOR_95), ("68 %", POSTERIOR_68)] {
-        let width = text::span_width_mm(words, NOTE.size_pt, NOTE.weight);
-        canvas.text(&text::plain(words), (right, baseline), Align::End, NOTE)?;
-        let from = (right - width - 4.4, baseline - 1.8);
-        canvas.rectangle(from, (right - width - 1.0, baseline + 0.2), color)?;
-        right -= width + 7.0;
+/// What the shades mean, beside the heading that ends at `from`.
+fn legend(canvas: &Canvas<'_>, baseline: f64, from: f64) -> Result<(), ReportError> {
+    let mut left = from + 3.0;
+    for (words, color) in [("68 %", POSTERIOR_68), ("95 %", POSTERIOR_95)] {
+        let right = left + 3.4;
+        canvas.rectangle((left, baseline - 1.8), (right, baseline + 0.2), color)?;
+        let at = (right + 0.9, baseline);
+        canvas.text(&text::plain(words), at, Align::Start, NOTE)?;
+        left = right + text::span_width_mm(words, NOTE.size_pt, NOTE.weight) + 3.0;
     }
     Ok(())
 }
@@ -96,23 +104,17 @@ fn marginal(
     (top, bottom): (f64, f64),
     stroke_of: &dyn Fn(&str) -> style::Stroke,
 ) -> Result<(), ReportError> {
-    let (low, high) = part.range_km_s;
-    let horizontal = Axis {
-        low,
-        high,
-        start_mm: MARGINAL_LEFT_MM,
-        end_mm: MARGINAL_RIGHT_MM,
-    };
     let curves = part.models.iter().map(|(_, density)| density);
     let all = curves.chain([&part.averaged]).flatten();
     let tallest = all.map(|(_, density)| *density).fold(0.0, f64::max);
-    let vertical = Axis {
-        low: 0.0,
-        high: 1.06 * tallest.max(f64::MIN_POSITIVE),
-        start_mm: bottom,
-        end_mm: top,
-    };
-    let at = |(v, density): &(f64, f64)| (horizontal.place_mm(*v), vertical.place_mm(*density));
+    let frame = Frame::new(
+        (MARGINAL_LEFT_MM, MARGINAL_RIGHT_MM, top, bottom),
+        part.range_km_s,
+        (0.0, 1.06 * tallest.max(f64::MIN_POSITIVE)),
+        (Scale::Even, Scale::Even),
+    )
+    .with_ticks(5, 0);
+    let at = |(v, density): &(f64, f64)| frame.place(*v, *density);
     for ((from, to), color) in [
         (part.interval95_km_s, POSTERIOR_95),
         (part.interval68_km_s, POSTERIOR_68),
@@ -131,7 +133,7 @@ fn marginal(
             canvas.polygon(&outline, color)?;
         }
     }
-    let zero = horizontal.place_mm(0.0);
+    let (zero, _) = frame.place(0.0, 0.0);
     canvas.line(&[(zero, top), (zero, bottom)], solid(ZERO, 0.16))?;
     let outline: Vec<(f64, f64)> = part.averaged.iter().map(at).collect();
     canvas.line(&outline, solid(INK, 0.16))?;
@@ -139,13 +141,10 @@ fn marginal(
         let points: Vec<(f64, f64)> = density.iter().map(at).collect();
         canvas.line(&points, stroke_of(label))?;
     }
-    frame(
-        canvas,
-        (&horizontal, &round_ticks(&horizontal, 5)),
-        (&vertical, &[]),
-        "inward speed (km/s)",
-    )
+    frame.draw(canvas, (Some(SPEED), None))
 }
+
+const SPEED: &str = "inward speed (km/s)";
 
 fn depth(
     canvas: &Canvas<'_>,
@@ -158,95 +157,20 @@ fn depth(
     let (Some(across), Some(up)) = (extent(speeds), extent(depths)) else {
         return Ok(());
     };
-    let padded = |(low, high): (f64, f64), start_mm, end_mm| {
+    let padded = |(low, high): (f64, f64)| {
         let pad = (0.05 * (high - low)).max(1e-6);
-        Axis {
-            low: low - pad,
-            high: high + pad,
-            start_mm,
-            end_mm,
-        }
+        (low - pad, high + pad)
     };
-    let horizontal = padded(across, DEPTH_LEFT_MM, PLOT_RIGHT_MM);
-    let vertical = padded(up, bottom, top);
+    let frame = Frame::new(
+        (DEPTH_LEFT_MM, PLOT_RIGHT_MM, top, bottom),
+        padded(across),
+        padded(up),
+        (Scale::Even, Scale::Log),
+    )
+    .with_ticks(4, 4);
     for draw in &part.draws {
-        let at = (
-            horizontal.place_mm(draw.v_in_km_s),
-            vertical.place_mm(draw.tau.log10()),
-        );
+        let at = frame.place(draw.v_in_km_s, draw.tau);
         canvas.dot(at, DOT_MM, stroke_of(&draw.label).color)?;
     }
-    frame(
-        canvas,
-        (&horizontal, &round_ticks(&horizontal, 4)),
-        (&vertical, &depth_ticks(&vertical)),
-        "inward speed (km/s)",
-    )?;
-    let middle = f64::midpoint(top, bottom);
-    let label = text::plain("optical depth");
-    canvas.upward_text(&label, (MARGINAL_RIGHT_MM + 4.0, middle), LABEL)?;
-    if let Some(correlation) = part.correlation {
-        let sign = if correlation < 0.0 { "\u{2212}" } else { "+" };
-        let words = format!("correlation {sign}{:.2}", correlation.abs());
-        let at = (PLOT_RIGHT_MM, top - 0.5);
-        canvas.text(&text::plain(&words), at, Align::End, NOTE)?;
-    }
-    Ok(())
-}
-
-/// Round depths on a logarithmic axis.
-fn depth_ticks(axis: &Axis) -> Vec<Tick> {
-    const STEPS: [&[f64]; 3] = [&[1.0], &[1.0, 3.0], &[1.0, 2.0, 3.0, 4.0, 5.0, 6.0, 8.0]];
-    const MOST: usize = 5;
-    let inside = |steps: &[f64]| -> Vec<f64> {
-        let decades = (-4..=4).map(|power| 10f64.powi(power));
-        decades
-            .flat_map(|decade| steps.iter().map(move |step| step * decade))
-            .filter(|tau| axis.contains(tau.log10()))
-            .collect()
-    };
-    let found = STEPS
-        .into_iter()
-        .map(inside)
-        .find(|found| (2..=MOST).contains(&found.len()));
-    match found {
-        Some(depths) => depths
-            .into_iter()
-            .map(|tau| (tau.log10(), format!("{tau}")))
-            .collect(),
-        // a narrow range: round numbers within it
-        None => {
-            let linear = Axis {
-                low: 10f64.powf(axis.low),
-                high: 10f64.powf(axis.high),
-                ..*axis
-            };
-            let ticks = round_ticks(&linear, 4).into_iter();
-            ticks.map(|(tau, label)| (tau.log10(), label)).collect()
-        }
-    }
-}
-
-#[cfg(test)]
-mod tests {
-    use super::*;
-
-    #[test]
-    fn depths_have_round_labels_in_wide_and_narrow_ranges() {
-        for (low, high, expected) in [
-            (0.05f64, 200.0f64, vec!["0.1", "1", "10", "100"]),
-            (0.8, 40.0, vec!["1", "10"]),
-            (1.5, 5.5, vec!["2", "3", "4", "5"]),
-            (4.6, 5.4, vec!["4.6", "4.8", "5.0", "5.2", "5.4"]),
-        ] {
-            let axis = Axis {
-                low: low.log10() - 1e-9,
-                high: high.log10() + 1e-9,
-                start_mm: 10.0,
-                end_mm: 0.0,
-            };
-            let labels: Vec<String> = depth_ticks(&axis).into_iter().map(|tick| tick.1).collect();
-            assert_eq!(labels, expected, "{low} to {high}");
-        }
-    }
+    frame.draw(canvas, (Some(SPEED), Some("optical depth")))
 }

@@ -252,8 +252,12 @@ impl ScatterFigure {
             }
             let at = |x: f64| (across.place_mm(x), up.place_mm(x + shift));
             canvas.line(&[at(from), at(to)], solid(ZERO, 0.18))?;
+            // below the line where the words begin, which is where it is lowest
             let end = at(to);
-            let place = (end.0 - 1.0, end.1 + 4.0);
+            let width = text::span_width_mm(words, NOTE.size_pt, NOTE.weight);
+            let begin = (end.0 - 1.0 - width).max(across.start_mm);
+            let slope = (at(from).1 - end.1) / (end.0 - at(from).0);
+            let place = (end.0 - 1.0, end.1 + slope * (end.0 - begin) + 2.6);
             canvas.text(&text::plain(words), place, Align::End, NOTE)?;
         }
         Ok(())
@@ -302,8 +306,8 @@ impl RankFigure {
         const ROW_MM: f64 = 3.9;
         const NAMES_MM: f64 = 40.0;
         let rows = self.bars.len().max(1) as f64;
-        let key_mm = if self.groups.len() > 1 { 5.0 } else { 0.0 };
-        let top = 11.0 + key_mm;
+        let key_mm = if self.groups.len() > 1 { 3.2 } else { 0.0 };
+        let top = 7.0 + key_mm;
         let bottom = top + ROW_MM * rows;
         let height = bottom + 10.6;
         let middle = |index: usize| top + ROW_MM * (index as f64 + 0.5);
@@ -369,7 +373,7 @@ impl RankFigure {
             let half = chances.place(0.5, 0.0).0;
             canvas.line(&[(half, top), (half, bottom)], solid(GUIDE, 0.25))?;
             for (index, bar) in self.bars.iter().enumerate() {
-                self.bar(
+                draw_bar(
                     canvas,
                     bar,
                     middle(index),
@@ -377,7 +381,7 @@ impl RankFigure {
                     unit,
                 )?;
             }
-            places.draw(canvas, (Some("place by true value, 68 %"), None))?;
+            places.draw(canvas, (Some("place, and 68 % by true value"), None))?;
             chances.draw(canvas, (Some("probability of infall"), None))?;
             let name = match power {
                 0 => self.quantity.clone(),
@@ -390,43 +394,43 @@ impl RankFigure {
             amounts.draw(canvas, (Some(&name), None))
         })
     }
+}
 
-    fn bar(
-        &self,
-        canvas: &Canvas<'_>,
-        bar: &RankBar,
-        y: f64,
-        (places, chances, amounts): (&Frame, &Frame, &Frame),
-        unit: f64,
-    ) -> Drawn {
-        let color = GROUPS[bar.group % GROUPS.len()];
-        if let Some((low, high)) = bar.places {
-            let ends = [
-                (places.place(low - 0.4, 0.0).0, y),
-                (places.place(high + 0.4, 0.0).0, y),
-            ];
-            canvas.line(&ends, solid(color, 1.1))?;
-        }
-        mark(
-            canvas,
-            (places.place(bar.place as f64, 0.0).0, y),
-            bar.group,
-            false,
-        )?;
-        if let Some(p_infall) = bar.p_infall {
-            let ends = [
-                (chances.across.start_mm, y),
-                (chances.place(p_infall, 0.0).0, y),
-            ];
-            canvas.line(&ends, solid(color, 1.4))?;
-        }
-        if let Some(one) = bar.quantity {
-            let at = |value: f64| amounts.place(value / unit, 0.0).0;
-            canvas.line(&[(at(one.low), y), (at(one.high), y)], solid(color, 0.3))?;
-            mark(canvas, (at(one.value), y), bar.group, true)?;
-        }
-        Ok(())
+/// The three marks of a source.
+fn draw_bar(
+    canvas: &Canvas<'_>,
+    bar: &RankBar,
+    y: f64,
+    (places, chances, amounts): (&Frame, &Frame, &Frame),
+    unit: f64,
+) -> Drawn {
+    let color = GROUPS[bar.group % GROUPS.len()];
+    if let Some((low, high)) = bar.places {
+        let ends = [
+            (places.place(low - 0.4, 0.0).0, y),
+            (places.place(high + 0.4, 0.0).0, y),
+        ];
+        canvas.line(&ends, solid(color, 1.1))?;
     }
+    mark(
+        canvas,
+        (places.place(bar.place as f64, 0.0).0, y),
+        bar.group,
+        false,
+    )?;
+    if let Some(p_infall) = bar.p_infall {
+        let ends = [
+            (chances.across.start_mm, y),
+            (chances.place(p_infall, 0.0).0, y),
+        ];
+        canvas.line(&ends, solid(color, 1.4))?;
+    }
+    if let Some(one) = bar.quantity {
+        let at = |value: f64| amounts.place(value / unit, 0.0).0;
+        canvas.line(&[(at(one.low), y), (at(one.high), y)], solid(color, 0.3))?;
+        mark(canvas, (at(one.value), y), bar.group, true)?;
+    }
+    Ok(())
 }
 
 /// The power of ten that keeps an axis' numbers short; 0 where they are short already.
@@ -482,7 +486,7 @@ impl ProfileSheet {
             canvas.rectangle((0.0, 0.0), (PAGE_MM, height), PAPER)?;
             canvas.text(&text::plain(&self.title), (3.0, 4.6), Align::Start, TITLE)?;
             let note = text::markup(
-                "steps: thick line; shaded: thin line, scaled to 0.6 of its peak; V_{LSR} (km/s), T_{mb} (K)",
+                "steps: thick line (V_{LSR} in km/s, T_{mb} in K); shaded: thin line, to 0.6 of its peak; below names: probability of infall, inward speed",
             );
             canvas.text(&note, (PAGE_MM - 3.0, 4.6), Align::End, NOTE)?;
             for (index, panel) in self.panels.iter().enumerate() {

@@ -223,6 +223,7 @@ fn ranking(ordered: &Ordered<'_>, groups: &Groups) -> RankFigure {
         .zip(shown)
         .map(|(place, member)| {
             let finding = &member.source.finding;
+            let known = finding.grade() != Grade::Unknown;
             let quantity = match ordered.quantity {
                 Quantity::Rate => finding.rate_msun_yr.as_ref(),
                 Quantity::Speed => finding.v_in_km_s.as_ref(),
@@ -234,10 +235,8 @@ fn ranking(ordered: &Ordered<'_>, groups: &Groups) -> RankFigure {
                     let [low, high] = spread.interval68.map(f64::from);
                     (low, high)
                 }),
-                p_infall: finding
-                    .p_infall()
-                    .filter(|_| finding.grade() != Grade::Unknown),
-                quantity: quantity.and_then(interval),
+                p_infall: finding.p_infall().filter(|_| known),
+                quantity: quantity.filter(|_| known).and_then(interval),
                 group: groups.index(member.group.as_deref()),
             }
         })
@@ -276,7 +275,7 @@ fn profiles(
                 .collect()
         };
         let chance = match finding.p_infall() {
-            Some(p_infall) if finding.detected => format!("infall {p_infall:.2}"),
+            Some(p_infall) if finding.detected => format!("{p_infall:.2}"),
             _ => "not detected".to_owned(),
         };
         let speed = finding.v_in_km_s.as_ref().and_then(interval);
@@ -284,7 +283,7 @@ fn profiles(
             name: format!("{place}  {}", member.source.id),
             note: match speed {
                 Some(one) if finding.detected => format!(
-                    "{chance}, {} km/s",
+                    "{chance}; {} km/s",
                     rounded_interval(one.value, one.low, one.high)
                 ),
                 _ => chance,
