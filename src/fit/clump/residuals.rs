@@ -97,9 +97,17 @@ const STANDS_OUT: f64 = 4.0;
 /// Offsets from v_lsr in dispersions of the gas beyond which emission is of wings.
 const WINGS_FROM: f64 = 3.0;
 
-/// Offsets within which a line has its core, and beyond which gas is another cloud's.
-const CORE_TO: f64 = 0.7;
+/// Offsets from v_lsr in dispersions beyond which gas that the thin line shows is another cloud's.
 const CLOUD_FROM: f64 = 1.5;
+
+/// Windows in which the thin line's residuals are summed: width and distance of neighbours, and how far out
+/// they reach, in dispersions.
+const WINDOW: f64 = 0.7;
+const WINDOW_STEP: f64 = 0.35;
+const WINDOWS_TO: f64 = 4.0;
+
+/// Excesses on either side that are as alike as a rotating clump's: their ratio.
+const ALIKE: f64 = 2.0;
 
 pub(super) fn residuals(target: &mut Target<'_>, best: &Point) -> ClumpResiduals {
     let residuals = target.residuals(best);
@@ -119,14 +127,27 @@ pub(super) fn residuals(target: &mut Target<'_>, best: &Point) -> ClumpResiduals
         };
         let motion = best[place::V_IN].abs();
         let (wing, far) = (WINGS_FROM + motion, f64::INFINITY);
-        let sides = [sum(1, -far, -CLOUD_FROM), sum(1, CLOUD_FROM, far)];
-        let flanks = sum(1, -CLOUD_FROM, -CORE_TO).min(sum(1, CORE_TO, CLOUD_FROM));
-        if sides[0].max(sides[1]) > STANDS_OUT {
+        let windows: Vec<(f64, f64)> = (0..)
+            .map(|index| WINDOW_STEP * f64::from(index) - WINDOWS_TO)
+            .take_while(|x| *x <= WINDOWS_TO)
+            .map(|x| (x, sum(1, x - 0.5 * WINDOW, x + 0.5 * WINDOW)))
+            .collect();
+        let (dip, depth) = windows.iter().fold(
+            (0.0, 0.0),
+            |low, one| if one.1 < low.1 { *one } else { low },
+        );
+        let highest = |belongs: &dyn Fn(f64) -> bool| {
+            let sums = windows.iter().filter(|one| belongs(one.0));
+            sums.map(|one| one.1).fold(0.0, f64::max)
+        };
+        let (left, right) = (highest(&|x| x < dip), highest(&|x| x > dip));
+        let two_peaks = depth < -STANDS_OUT && left.min(right) > STANDS_OUT;
+        if two_peaks && left.max(right) < ALIKE * left.min(right) {
+            Misfit::Rotation
+        } else if two_peaks || highest(&|x| x.abs() > CLOUD_FROM) > STANDS_OUT {
             Misfit::SecondCloud
         } else if sum(0, -far, -wing).max(sum(0, wing, far)) > STANDS_OUT {
             Misfit::Wings
-        } else if sum(1, -CORE_TO, CORE_TO) < -0.5 * STANDS_OUT && flanks > 0.0 {
-            Misfit::Rotation
         } else {
             Misfit::Unknown
         }

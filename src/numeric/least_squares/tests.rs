@@ -316,14 +316,14 @@ fn a_corner_pressed_from_all_sides_has_converged() {
 
 #[test]
 fn steps_into_undefined_parameters_are_rejected() {
-    // r = ln p - 1 is undefined for p <= 0; from p = 20 the full step ends there. Minimum at e.
+    // r = ln(p - 1) - 1 is undefined for p <= 1; from p = 20 the longest step ends at 0. Minimum at e + 1.
     let mut undefined = 0;
     let mut logarithm = problem(1, 1, |p: &[f64], r: &mut [f64], j: &mut [f64]| {
-        (r[0], j[0]) = (p[0].ln() - 1.0, 1.0 / p[0]);
+        (r[0], j[0]) = ((p[0] - 1.0).ln() - 1.0, 1.0 / (p[0] - 1.0));
         undefined += usize::from(!r[0].is_finite());
     });
     let minimum = fit(&mut logarithm, &[20.0], &unbounded(1));
-    assert!((minimum.parameters[0] - std::f64::consts::E).abs() < 1e-9);
+    assert!((minimum.parameters[0] - 1.0 - std::f64::consts::E).abs() < 1e-9);
     assert!(undefined > 0);
     // A derivative that is missing counts as well.
     let mut cliff = problem(1, 1, |p: &[f64], r: &mut [f64], j: &mut [f64]| {
