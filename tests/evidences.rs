@@ -329,3 +329,176 @@ fn replaced_priors_change_the_evidence() {
     // the speed is far smaller than either width: five times wider, five times less dense
     assert!((lower - 5f64.ln()).abs() < 0.25, "{lower}");
 }
+
+/// What is given narrows the posterior, bounds end it, and held parameters stay.
+#[test]
+fn bounds_and_given_values_hold_in_draws() {
+    let pair = simulated(Model::Hill, &INFALL, 0.4, 9);
+    let estimate = |value, err| Estimate { value, err };
+    let of = |bounds: &[(&str, (f64, f64))], given: &[(&str, Estimate)]| {
+        let bounds = bounds
+            .iter()
+            .map(|(name, ends)| ((*name).to_owned(), *ends));
+        let given = given
+            .iter()
+            .map(|(name, value)| ((*name).to_owned(), *value));
+        let settings = PosteriorSettings {
+            bounds: bounds.collect(),
+            given: given.collect(),
+            ..settings()
+        };
+        posterior_of(&pair, 0.5, &settings)
+    };
+    let hill = Family::Moving(Model::Hill);
+    let column = |posterior: &PairPosterior, name: &str| -> Vec<f64> {
+        let family = posterior.of(hill).unwrap();
+        let index = family
+            .names
+            .iter()
+            .position(|known| *known == name)
+            .unwrap();
+        family.draws.iter().map(|draw| draw[index]).collect()
+    };
+    let free = of(&[], &[]);
+    let held = of(
+        &[("tau", (1.0, 4.0))],
+        &[
+            ("sigma_km_s", estimate(0.5, 0.0)),
+            ("v_lsr_km_s", estimate(0.02, 0.0)),
+        ],
+    );
+    assert!(
+        column(&held, "sigma_km_s")
+            .iter()
+            .all(|one| (one - 0.5).abs() < 1e-12)
+    );
+    assert!(column(&held, "v_lsr_km_s").iter().all(|one| *one == 0.02));
+    assert!(
+        column(&held, "tau")
+            .iter()
+            .all(|tau| (1.0..=4.0).contains(tau))
+    );
+    let wide = |posterior: &PairPosterior| {
+        let (low, high) = posterior.of(hill).unwrap().v_in_km_s().unwrap().interval68;
+        high - low
+    };
+    let known = of(&[], &[("v_in_km_s", estimate(0.25, 0.01))]);
+    assert!(wide(&known) < 0.5 * wide(&free));
+    // a speed that can only be outward leaves no evidence of infall
+    let outward = of(&[("v_in_km_s", (-1.0, -0.01))], &[]);
+    let verdict = verdict(&outward, &Odds::default()).unwrap();
+    assert_eq!(verdict.probability(Hypothesis::Infall), 0.0);
+    assert!(verdict.v_in_km_s.interval95.1 < 0.0);
+}
+
+/// The ratio's prior is what the pair leaves of it, and the thin line's excitation follows its depth.
+#[test]
+fn linked_depths_and_calibration_errors_reach_the_draws() {
+    let pair = simulated(Model::Hill, &INFALL, 0.2, 10);
+    let ratio = Estimate {
+        value: 40.0,
+        err: 4.0,
+    };
+    let linked = posterior_of(
+        &pair,
+        0.5,
+        &PosteriorSettings {
+            isotope_ratio: Some(ratio),
+            ..settings()
+        },
+    );
+    let hill = linked.of(Family::Moving(Model::Hill)).unwrap();
+    let found = hill.marginal("isotope_ratio").unwrap();
+    assert!((found.median - 40.0).abs() < 4.0, "{found:?}");
+    for draw in &hill.draws {
+        let value = |name: &str| draw[hill.names.iter().position(|known| *known == name).unwrap()];
+        let depth = 2.0 * value("tau") / value("isotope_ratio");
+        let radiation = LineShape::new(89.188_526, lines().1.components).radiation;
+        let excess = radiation.at(value("t_ex_thin_k")) - radiation.background();
+        let peak = excess * -(-depth).exp_m1();
+        assert!((peak / value("peak_thin_k") - 1.0).abs() < 1e-6);
+    }
+    let width = |calibration_error: (f64, f64), name: &str| {
+        let settings = PosteriorSettings {
+            calibration_error,
+            ..settings()
+        };
+        let posterior = posterior_of(&pair, 0.5, &settings);
+        let hill = posterior.of(Family::Moving(Model::Hill)).unwrap();
+        let (low, high) = hill.marginal(name).unwrap().interval68;
+        (high - low, hill.v_in.clone())
+    };
+    let (certain, speeds) = width((0.0, 0.0), "peak_thin_k");
+    let (uncertain, same_speeds) = width((0.1, 0.2), "peak_thin_k");
+    // the line's peak of 1 K becomes uncertain by a fifth either way
+    assert!(certain < 0.1 && uncertain > 0.3, "{certain} {uncertain}");
+    assert_eq!(speeds, same_speeds);
+}
+
+/// Draws of the average are those of the models by their shares, the same for the same seed.
+#[test]
+fn averaged_draws_come_from_the_models_by_their_evidence() {
+    let posterior = posterior_of(&simulated(Model::Hill, &INFALL, 0.4, 11), 0.5, &settings());
+    let draws = posterior.moving_draws(800, 5);
+    assert_eq!(draws.len(), 800);
+    assert_eq!(draws, posterior.moving_draws(800, 5));
+    assert_ne!(draws, posterior.moving_draws(800, 6));
+    for (model, share) in posterior.model_shares() {
+        let of = draws.iter().filter(|draw| draw.model == model).count();
+        // systematic: off by one at most
+        assert!((of as f64 - 800.0 * share).abs() <= 1.0);
+    }
+    let mean = draws
+        .iter()
+        .map(|draw| draw.value("v_in_km_s").unwrap())
+        .sum::<f64>()
+        / 800.0;
+    let average = verdict(&posterior, &Odds::default()).unwrap().v_in_km_s;
+    let (low, high) = average.interval68;
+    // 500 draws of each model: four standard errors
+    assert!((mean - average.mean).abs() < 4.0 * 0.5 * (high - low) / 500f64.sqrt());
+}
+
+#[test]
+fn impossible_options_are_refused() {
+    let pair = simulated(Model::Hill, &INFALL, 0.2, 12);
+    let lines = lines();
+    let refused = |settings: PosteriorSettings| {
+        let error = pair_posterior(&pair.0, &pair.1, (&lines.0, &lines.1), None, &settings);
+        let error = error.unwrap_err();
+        assert!(error.to_string().contains("expected") && error.hint().is_some());
+        error
+    };
+    let estimate = |value, err| Estimate { value, err };
+    assert!(matches!(
+        refused(PosteriorSettings {
+            isotope_ratio: Some(estimate(-50.0, 0.0)),
+            ..settings()
+        }),
+        PosteriorError::IsotopeRatio { .. }
+    ));
+    assert!(matches!(
+        refused(PosteriorSettings {
+            calibration_error: (0.1, 1.5),
+            ..settings()
+        }),
+        PosteriorError::NoShare { .. }
+    ));
+    let bounded = |name: &str, ends| PosteriorSettings {
+        bounds: [(name.to_owned(), ends)].into(),
+        ..settings()
+    };
+    assert!(matches!(
+        refused(bounded("t_peak_k", (5.0, 20.0))),
+        PosteriorError::NotConstrained { .. }
+    ));
+    assert!(matches!(
+        refused(bounded("tau", (5.0, 2.0))),
+        PosteriorError::Improper { .. }
+    ));
+    // beyond the fitted velocities
+    assert!(matches!(
+        refused(bounded("v_lsr_km_s", (20.0, 30.0))),
+        PosteriorError::NoPriorMass { .. }
+    ));
+}

@@ -20,7 +20,7 @@ const MAY_USE: &[(&str, &str)] = &[
     ("measure", "constants line numeric spectrum prepare"),
     (
         "fit",
-        "constants line numeric model spectrum prepare measure",
+        "constants line numeric model sphere spectrum prepare measure",
     ),
     (
         "derive",

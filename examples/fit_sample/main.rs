@@ -43,6 +43,7 @@ fn answer() -> Outcome<()> {
     let folder = PathBuf::from(std::env::args().nth(1).ok_or("expected a folder")?);
     let sample = Sample::read(&folder)?;
     let mut output = std::io::stdout().lock();
+    let mut workspace = Workspace::new();
     for names in std::io::stdin().lock().lines() {
         let pairs = names?
             .split_whitespace()
@@ -50,7 +51,7 @@ fn answer() -> Outcome<()> {
             .collect::<Outcome<Vec<(String, Pair)>>>()?;
         let fits = pairs
             .iter()
-            .map(|(_, pair)| pair.fit())
+            .map(|(_, pair)| pair.fit(&mut workspace))
             .collect::<Outcome<Vec<PairFits>>>()?;
         for ((id, _), fits) in pairs.iter().zip(&fits) {
             for (fit, seconds) in &fits.models {
@@ -141,15 +142,14 @@ struct PairFits {
 }
 
 impl Pair {
-    fn fit(&self) -> Outcome<PairFits> {
-        let mut workspace = Workspace::new();
+    fn fit(&self, workspace: &mut Workspace) -> Outcome<PairFits> {
         let start = seconds();
-        let thin_fit = fit_thin(&self.thin, &self.lines.1, &self.settings[0], &mut workspace)?;
+        let thin_fit = fit_thin(&self.thin, &self.lines.1, &self.settings[0], workspace)?;
         let thin_seconds = seconds() - start;
         let mut models = Vec::with_capacity(self.settings.len());
         for settings in &self.settings {
             let start = seconds();
-            let fit = self.fit_model(&thin_fit, settings, &mut workspace)?;
+            let fit = self.fit_model(&thin_fit, settings, workspace)?;
             models.push((fit, seconds() - start));
         }
         Ok(PairFits {

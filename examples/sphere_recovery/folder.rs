@@ -35,13 +35,7 @@ pub fn print(folder: &str, settings: &ClumpSettings) -> Result<(), Box<dyn Error
         let lines = (find(&truth["thick_line"])?, find(&truth["thin_line"])?);
         let snr = number(truth, "snr_thick");
         let speed = number(truth, "v_at_radius_km_s");
-        let [found, other] = SpeedLaw::ALL.map(|law| {
-            let settings = ClumpSettings {
-                law,
-                ..settings.clone()
-            };
-            infer(&thick, &thin, &lines, &settings)
-        });
+        let [found, other] = SpeedLaw::ALL.map(|law| infer(&thick, &thin, &lines, law, settings));
         let (found, other) = (found?, other?);
         let odds = other.posterior.ln_evidence - found.posterior.ln_evidence;
         let v = found.posterior.v_in_km_s.interval95;

@@ -63,39 +63,8 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
             Ok(())
         }
         "judge" => {
-            let mut priors = inrush::fit::clump::ClumpPriors::default();
-            let env = |name: &str, to: &mut inrush::fit::clump::Normal| {
-                if let Ok(text) = std::env::var(name) {
-                    let (a, b) = text.split_once(':').unwrap();
-                    *to = inrush::fit::clump::Normal::of(a.parse().unwrap(), b.parse().unwrap());
-                }
-            };
-            env("DEPTH", &mut priors.ln_depth);
-            env("SLOPE", &mut priors.opacity_slope);
-            env("COLL", &mut priors.ln_collision_ratio);
-            env("EXCESS", &mut priors.excess_slope);
-            env("TSLOPE", &mut priors.temperature_slope);
-            env("TKIN", &mut priors.ln_t_kin);
-            env("RATIO", &mut priors.ln_isotope_ratio);
-            env("BEAM", &mut priors.ln_beam_over_radius);
-            env("RESP", &mut priors.opacity_response);
-            env("THIN", &mut priors.thin_slope);
-            if let Ok(text) = std::env::var("SCALE") {
-                priors.thin_scale = text.parse().unwrap();
-            }
-            let mut sampling = ClumpSettings::default().sampling;
-            let count = |name: &str, to: &mut usize| {
-                if let Ok(t) = std::env::var(name) {
-                    *to = t.parse().unwrap()
-                }
-            };
-            count("ROUND", &mut sampling.round);
-            count("ROUNDS", &mut sampling.most_rounds);
-            count("SPREAD", &mut sampling.spread);
+            let law = law(arguments.get(3))?;
             let settings = ClumpSettings {
-                priors,
-                sampling,
-                law: law(arguments.get(3))?,
                 shape_error: number(4, inrush::fit::clump::SHAPE_ERROR)?,
                 ..ClumpSettings::default()
             };
@@ -112,7 +81,7 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
                 let snr = if snr > 0.0 { snr } else { drawn.snr };
                 let (thick, thin) = drawn.observed(snr, index as u64)?;
                 let lines = drawn.lines()?;
-                match infer(&thick, &thin, &lines, &settings) {
+                match infer(&thick, &thin, &lines, law, &settings) {
                     Ok(found) => {
                         let row = Row::new(&found, drawn.v_in_km_s, snr);
                         println!("{index} {} {}", drawn.text(), row.text());
@@ -139,6 +108,7 @@ fn infer(
     thick: &Spectrum,
     thin: &Spectrum,
     lines: &(Line, Line),
+    law: SpeedLaw,
     settings: &ClumpSettings,
 ) -> Result<Found, String> {
     let prepare = PrepareSettings::default();
@@ -164,6 +134,7 @@ fn infer(
         &thin,
         (&lines.0, &lines.1),
         thin_fit.line.as_ref(),
+        law,
         settings,
     )
     .map_err(|error| error.to_string())?;
@@ -200,12 +171,19 @@ impl Row {
             trusted: found.posterior.quality.holds(),
             z: (v.median - truth) / half * truth.signum(),
             text: format!(
-                "neff {:.0} k {:.2} h {:.2} lnZ {:.2} n {}",
+                "neff {:.0} k {:.2} h {:.2} n {} chi2 {:.0}/{} {:+.1} {:.0}/{} {:+.1} {:?} with {}",
                 found.posterior.quality.effective,
                 found.posterior.quality.tail_shape.unwrap_or(0.0),
                 found.posterior.quality.halves,
-                found.posterior.ln_evidence,
-                found.posterior.evaluations
+                found.posterior.evaluations,
+                found.posterior.residuals.thick.chi2,
+                found.posterior.residuals.thick.channels,
+                found.posterior.residuals.thick.correlation,
+                found.posterior.residuals.thin.chi2,
+                found.posterior.residuals.thin.channels,
+                found.posterior.residuals.thin.correlation,
+                found.posterior.residuals.misfit,
+                found.posterior.speed_depends_on()[1].0,
             ),
             milliseconds: found.milliseconds,
         }

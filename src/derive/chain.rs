@@ -802,8 +802,7 @@ fn of_results(
         let outward = rate.draws.iter().filter(|rate| **rate <= 0.0).count() as f64;
         if (0.025..=0.975).contains(&(outward / rate.draws.len() as f64)) {
             found.push(DeriveCaution::RateHoldsZero);
-        }
-        if v_in_km_s < 0.0 {
+        } else if v_in_km_s < 0.0 {
             found.push(DeriveCaution::OutwardSpeed { v_in_km_s });
         }
     }

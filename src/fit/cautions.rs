@@ -160,6 +160,24 @@ pub enum Unjudged {
     Failed(PosteriorError),
 }
 
+impl Unjudged {
+    fn text(&self) -> String {
+        match self {
+            Self::NoModel => {
+                "none of the fitted models has a posterior (two-layer, hill and hill-surface have)"
+                    .to_owned()
+            }
+            Self::Absorbed => "no posterior describes a line in absorption".to_owned(),
+            Self::Failed(error) => format!("no posterior: {error}"),
+        }
+    }
+}
+
+/// Each in words, with commas between.
+fn listed<T>(all: &[T], words: impl Fn(&T) -> String) -> String {
+    all.iter().map(words).collect::<Vec<String>>().join(", ")
+}
+
 fn word(line: PairLine) -> &'static str {
     match line {
         PairLine::Thick => "thick",
@@ -231,16 +249,10 @@ impl Caution {
                 other.0.name(),
                 other.1
             ),
-            Self::PoorFit { fits } => {
-                let each: Vec<String> = fits
-                    .iter()
-                    .map(|(model, chi2_reduced)| format!("{} {chi2_reduced:.2}", model.name()))
-                    .collect();
-                format!(
-                    "residuals exceed the noise, so formal errors are too small: reduced chi2 of {}",
-                    each.join(", ")
-                )
-            }
+            Self::PoorFit { fits } => format!(
+                "residuals exceed the noise, so formal errors are too small: reduced chi2 of {}",
+                listed(fits, |(model, chi2_reduced)| format!("{} {chi2_reduced:.2}", model.name()))
+            ),
             Self::ThickUndetected => "the thick line is not detected".to_owned(),
             Self::ThickAbsorbed { integral_k_km_s } => format!(
                 "the thick line is in absorption ({integral_k_km_s:.2} K km/s): only two-layer-continuum, with the continuum source given, describes that"
@@ -264,17 +276,11 @@ impl Caution {
             Self::WindowCutsLine { line } => {
                 format!("the {} line goes on beyond its window or the band", word(*line))
             }
-            Self::OtherSignal { line, windows } => {
-                let each: Vec<String> = windows
-                    .iter()
-                    .map(|one| format!("{:.2} to {:.2}", one.low_km_s, one.high_km_s))
-                    .collect();
-                format!(
-                    "the {} spectrum holds signal apart from the line, at {} km/s: left out of baseline, noise and fit",
-                    word(*line),
-                    each.join(", ")
-                )
-            }
+            Self::OtherSignal { line, windows } => format!(
+                "the {} spectrum holds signal apart from the line, at {} km/s: left out of baseline, noise and fit",
+                word(*line),
+                listed(windows, |one| format!("{:.2} to {:.2}", one.low_km_s, one.high_km_s))
+            ),
             Self::CorrelatedNoise { line, adjacent } => format!(
                 "{} line's noise is correlated from channel to channel ({adjacent:.2} between neighbours): taken into account",
                 word(*line)
@@ -282,43 +288,28 @@ impl Caution {
             Self::MaybeSwapped => {
                 "the thick line is fainter than the thin one: are the two files swapped?".to_owned()
             }
-            Self::NoPosterior { reason } => {
-                let reason = match reason {
-                    Unjudged::NoModel => {
-                        "none of the fitted models has a posterior (two-layer, hill and hill-surface have)".to_owned()
-                    }
-                    Unjudged::Absorbed => "no posterior describes a line in absorption".to_owned(),
-                    Unjudged::Failed(error) => format!("no posterior: {error}"),
-                };
-                format!("{reason}: there are no probabilities, and errors are formal")
-            }
+            Self::NoPosterior { reason } => format!(
+                "{}: there are no probabilities, and errors are formal",
+                reason.text()
+            ),
             Self::SettingsUnheard { settings } => format!(
                 "the posterior knows nothing of {}: the adopted speed is the least-squares one with its formal error, the probabilities are those without",
                 settings.join(", ")
             ),
-            Self::PosteriorUntrusted { families } => {
-                let names: Vec<String> = families.iter().map(|family| family.name()).collect();
-                format!(
-                    "the draws of {} do not describe the posterior well: intervals and probabilities may be off",
-                    names.join(", ")
-                )
-            }
+            Self::PosteriorUntrusted { families } => format!(
+                "the draws of {} do not describe the posterior well: intervals and probabilities may be off",
+                listed(families, |family| family.name())
+            ),
             Self::SpeedUnconstrained => {
                 "the data do not constrain the inward speed: they say hardly more than its prior".to_owned()
             }
             Self::SpeedLimit { limit_km_s } => format!(
                 "no motion is measured: the speed is below {limit_km_s:.3} km/s in either direction with 95 % probability"
             ),
-            Self::ModelsDiffer { speeds } => {
-                let each: Vec<String> = speeds
-                    .iter()
-                    .map(|(model, v_in_km_s)| format!("{} {v_in_km_s:+.3}", model.name()))
-                    .collect();
-                format!(
-                    "the models differ by more than their interval is wide ({} km/s): quote v_in_systematic_km_s beside it",
-                    each.join(", ")
-                )
-            }
+            Self::ModelsDiffer { speeds } => format!(
+                "the models differ by more than their interval is wide ({} km/s): quote v_in_systematic_km_s beside it",
+                listed(speeds, |(model, v_in_km_s)| format!("{} {v_in_km_s:+.3}", model.name()))
+            ),
             Self::TwoCloudsFavoured { probability } => format!(
                 "two clouds on one line of sight explain the pair best (probability {probability:.2}): the speed holds only if it is one clump"
             ),

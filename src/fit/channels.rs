@@ -27,6 +27,9 @@ const MOST_FOR_COARSE: usize = 2;
 /// Fewest channels that a search is content with.
 const FEWEST_NEAR: usize = 16;
 
+/// Most neighbours that a search averages.
+const MOST_TOGETHER: usize = 4;
+
 /// Numbers in a register of the widest instructions.
 const REGISTER: usize = 8;
 
@@ -108,21 +111,44 @@ impl Channels {
         }
     }
 
-    /// Those of the channels inside a window that are close enough to be all that a search needs; all
-    /// where few are inside.
+    /// What a search is content with: the channels inside a window, as many neighbours averaged as fit into
+    /// `merged_km_s`. All as they are where few are left; none averaged where the noise is correlated.
     #[must_use]
-    pub fn near(&self, window: Window) -> Self {
+    pub fn near(&self, window: Window, merged_km_s: f64) -> Self {
         let velocity = self.sampling.velocity_km_s();
         let offsets = || self.line.components.iter().map(|one| one.offset_km_s);
         let low_km_s = window.low_km_s + offsets().fold(0.0, f64::min);
         let high_km_s = window.high_km_s + offsets().fold(0.0, f64::max);
         let first = velocity.partition_point(|v| *v < low_km_s);
-        let inside = velocity.partition_point(|v| *v <= high_km_s) - first;
+        let last = velocity.partition_point(|v| *v <= high_km_s);
+        let together = self.together(last - first, merged_km_s);
         // loops over whole registers have no remainder
-        let end = (first + inside.next_multiple_of(REGISTER)).min(velocity.len());
-        if end - first < FEWEST_NEAR {
+        let whole = REGISTER * together;
+        let most = self.len() - self.len() % whole;
+        let count = (last - first).next_multiple_of(whole).min(most);
+        if count < FEWEST_NEAR {
             return self.clone();
         }
+        let first = usize::midpoint(first, last).saturating_sub(count / 2);
+        let first = first.min(self.len() - count);
+        self.part(first..first + count).merged(together)
+    }
+
+    /// How many of `channels` neighbours fit into a width.
+    fn together(&self, channels: usize, width_km_s: f64) -> usize {
+        let widest = self.sampling.width_km_s().iter().copied();
+        let ratio = width_km_s / widest.fold(0.0, f64::max);
+        let fitting = (1..=MOST_TOGETHER).take_while(|count| *count as f64 <= ratio);
+        let most = if self.whitener.is_some() {
+            1
+        } else {
+            channels / FEWEST_NEAR
+        };
+        fitting.last().unwrap_or(1).min(most.max(1))
+    }
+
+    fn part(&self, part: Range<usize>) -> Self {
+        let (first, end) = (part.start, part.end);
         let data = self.whitened_data[first..end].to_vec();
         let [data_chi2] = products(&data, [&data]);
         let segments = (self.segments.iter())
@@ -139,6 +165,43 @@ impl Channels {
             segments,
             whitener: self.whitener.clone(),
             noise_k: self.noise_k,
+        }
+    }
+
+    /// Means of so many neighbours of white noise; what is left over at the end of a run of channels is
+    /// dropped.
+    fn merged(self, together: usize) -> Self {
+        if together < 2 {
+            return self;
+        }
+        // a mean has less noise than a channel
+        let scale = 1.0 / (together as f64).sqrt();
+        let groups: Vec<Range<usize>> = (self.segments.iter())
+            .flat_map(|segment| {
+                let starts = segment.clone().step_by(together);
+                starts
+                    .map(|start| start..start + together)
+                    .take_while(|group| group.end <= segment.end)
+            })
+            .collect();
+        let sums = |values: &[f64], factor: f64| -> Vec<f64> {
+            let sum = |group: &Range<usize>| factor * values[group.clone()].iter().sum::<f64>();
+            groups.iter().map(sum).collect()
+        };
+        let data = sums(&self.whitened_data, scale);
+        let [data_chi2] = products(&data, [&data]);
+        let sampling = |of: &Sampling| {
+            let velocity = sums(of.velocity_km_s(), 1.0 / together as f64);
+            Sampling::new(velocity, sums(of.width_km_s(), 1.0), of.nodes().len())
+        };
+        Self {
+            sampling: sampling(&self.sampling),
+            coarse_sampling: sampling(&self.coarse_sampling),
+            segments: vec![0..data.len()],
+            whitened_data: data,
+            data_chi2,
+            noise_k: scale * self.noise_k,
+            ..self
         }
     }
 
@@ -202,9 +265,10 @@ impl Channels {
 
     /// Makes columns white as the data are, but leaves their unit.
     pub fn decorrelate(&self, columns: &mut [f64]) {
-        if let Some(whitener) = &self.whitener {
-            // a side of a line without a channel has no columns
-            for column in columns.chunks_exact_mut(self.len().max(1)) {
+        if let Some(whitener) = &self.whitener
+            && !self.is_empty()
+        {
+            for column in columns.chunks_exact_mut(self.len()) {
                 whitener.whiten(&self.segments, column);
             }
         }
@@ -224,6 +288,12 @@ impl Channels {
                 whitener.whiten(std::slice::from_ref(&part), column);
             }
         }
+    }
+
+    /// Runs of channels that follow each other.
+    #[must_use]
+    pub fn segments(&self) -> &[Range<usize>] {
+        &self.segments
     }
 
     /// Order of the noise's process.

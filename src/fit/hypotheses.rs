@@ -5,6 +5,7 @@
 
 use super::posterior::{Family, FamilyPosterior, Interval, PairPosterior, interval};
 use crate::model::Model;
+use crate::numeric::sampling::Doubt;
 
 /// What a clump does.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Hash)]
@@ -159,6 +160,8 @@ pub struct Verdict {
     pub speed: Speed,
     /// Whether every posterior that carries weight can be trusted.
     pub trusted: bool,
+    /// Why posteriors that carry weight cannot be.
+    pub doubts: Vec<(Family, Doubt)>,
 }
 
 impl Verdict {
@@ -186,11 +189,13 @@ const NEGLIGIBLE: f64 = 0.01;
 
 /// The verdict on a pair from its posteriors and prior odds.
 ///
-/// With Z_m the evidence of a slab model m with v_in of either sign and f_m the share of its
-/// posterior at v_in > 0, and means over models:
+/// With Z_m the evidence of a slab model m with v_in of either sign, f_m the share of its posterior at
+/// v_in > 0, and means over models:
 ///
 /// Z_infall = mean 2 Z_m f_m, Z_expansion = mean 2 Z_m (1 - f_m),
 /// Z_static = mean over slabs at rest and the unabsorbed Gaussian.
+///
+/// Where v_in is given or bounded, each sign's own share of its prior stands in the place of 1/2.
 ///
 /// # Errors
 ///
@@ -217,8 +222,8 @@ pub fn verdict(posterior: &PairPosterior, odds: &Odds) -> Result<Verdict, Hypoth
         }
         Ok(values.iter().sum::<f64>() / values.len() as f64)
     };
-    let inward = |one: &FamilyPosterior| 2.0 * relative(one) * one.share_inward();
-    let outward = |one: &FamilyPosterior| 2.0 * relative(one) * (1.0 - one.share_inward());
+    let inward = |one: &FamilyPosterior| relative(one) * one.inward;
+    let outward = |one: &FamilyPosterior| relative(one) * one.outward;
     let evidence = [
         mean(is_moving, "moving", &inward)?,
         mean(is_moving, "moving", &outward)?,
@@ -237,7 +242,8 @@ pub fn verdict(posterior: &PairPosterior, odds: &Odds) -> Result<Verdict, Hypoth
         .iter()
         .filter(|one| is_moving(one.family))
         .collect();
-    let average = average(&moving);
+    let shares = posterior.model_shares();
+    let average = average(&moving, &shares);
     let Some(v_in_km_s) = interval(&average) else {
         return Err(HypothesesError::Incomplete { missing: "moving" });
     };
@@ -248,17 +254,25 @@ pub fn verdict(posterior: &PairPosterior, odds: &Odds) -> Result<Verdict, Hypoth
         (low.min(median), high.max(median))
     });
     let all: f64 = posterior.families.iter().map(&relative).sum();
-    let trusted = posterior
+    let doubts: Vec<(Family, Doubt)> = posterior
         .families
         .iter()
-        .all(|one| one.quality.holds() || relative(one) < NEGLIGIBLE * all);
+        .filter(|one| relative(one) >= NEGLIGIBLE * all)
+        .flat_map(|one| {
+            one.quality
+                .doubts()
+                .into_iter()
+                .map(|doubt| (one.family, doubt))
+        })
+        .collect();
     Ok(Verdict {
         standings,
         v_in_km_s,
         between_models_km_s: 0.5 * (high - low),
-        shares: shares(&moving),
         speed: speed(&average, &v_in_km_s, &moving),
-        trusted,
+        shares,
+        trusted: doubts.is_empty(),
+        doubts,
     })
 }
 
@@ -270,26 +284,9 @@ fn is_static(family: Family) -> bool {
     matches!(family, Family::Still(_) | Family::Unabsorbed)
 }
 
-/// Share of each model's evidence in the sum over models.
-fn shares(moving: &[&FamilyPosterior]) -> Vec<(Model, f64)> {
-    let highest = moving
-        .iter()
-        .map(|one| one.ln_evidence)
-        .fold(f64::NEG_INFINITY, f64::max);
-    let relative = |one: &FamilyPosterior| (one.ln_evidence - highest).exp();
-    let total: f64 = moving.iter().map(|one| relative(one)).sum();
-    moving
-        .iter()
-        .filter_map(|one| match one.family {
-            Family::Moving(model) => Some((model, relative(one) / total)),
-            _ => None,
-        })
-        .collect()
-}
-
 /// Weighted speeds of all models, each model with its share.
-fn average(moving: &[&FamilyPosterior]) -> Vec<(f64, f64)> {
-    shares(moving)
+fn average(moving: &[&FamilyPosterior], shares: &[(Model, f64)]) -> Vec<(f64, f64)> {
+    shares
         .iter()
         .zip(moving)
         .flat_map(|((_, share), one)| one.v_in.iter().map(move |(v, weight)| (*v, share * weight)))

@@ -1,30 +1,25 @@
-//! One line's normal equations in one pass over its channels, with the amplitudes at their best.
+//! One line's normal equations, with the amplitudes at their best.
 //!
-//! Neither residuals nor a Jacobian are stored: J = a f' + b h' of the nonlinear parameters is formed a
-//! register of channels at a time, and its products with itself, with the functions f, h and with the
-//! residuals are summed. The part of J along the free functions is then taken out of the sums.
+//! Columns over the channels go in: the functions f, h with their best amplitudes a, b, and the slopes J of
+//! a f + b h by the nonlinear parameters. Every column is read a few times while it is in the first cache,
+//! each time with as many products as there are registers for. The part of J along the free functions is
+//! then taken out of the sums.
 #![allow(
     clippy::inline_always,
     reason = "has to be compiled inside each instruction-set copy"
 )]
 
-use super::amplitudes::{Amplitudes, Products};
+use super::amplitudes::{Amplitudes, Best, Products};
 use crate::model::MOST_AMPLITUDES;
 use crate::numeric::dispatch::{Arithmetic, Kernel, dispatch};
-use crate::numeric::products::products_with;
+use crate::numeric::products::{products, products_with};
 
 /// Most nonlinear parameters of a model.
 pub(super) const MOST_NONLINEAR: usize = 4;
 
-/// Numbers in a register of the widest instructions.
-const LANES: usize = 8;
-
-type Lanes = [f64; LANES];
-
 /// chi2 at the best amplitudes and its derivatives by a line's nonlinear parameters.
 #[derive(Clone, Copy, Debug)]
 pub(super) struct LineSums {
-    pub amplitudes: Amplitudes,
     pub chi2: f64,
     /// J^T r.
     pub gradient: [f64; MOST_NONLINEAR],
@@ -32,230 +27,169 @@ pub(super) struct LineSums {
     pub gram: [[f64; MOST_NONLINEAR]; MOST_NONLINEAR],
 }
 
-/// The sums of a line: `data` and the columns of `functions` and `slopes` as in
-/// [`Model::functions`](crate::model::Model::functions), amplitudes inside `ranges`.
-pub(super) fn line_sums(
-    data: &[f64],
-    functions: &[f64],
-    slopes: &[f64],
-    ranges: &[(f64, f64); MOST_AMPLITUDES],
-) -> LineSums {
-    let columns = (functions.len() / data.len(), slopes.len() / functions.len());
-    let line = Line {
-        data,
-        functions,
-        slopes,
-        ranges,
-    };
-    match columns {
-        (1, 2) => dispatch(Sums::<1, 2>(line)),
-        (1, 3) => dispatch(Sums::<1, 3>(line)),
-        (1, 4) => dispatch(Sums::<1, 4>(line)),
-        (2, 4) => dispatch(Sums::<2, 4>(line)),
-        (functions, parameters) => {
-            panic!("no sums of {functions} functions and {parameters} parameters")
-        }
-    }
-}
-
-#[derive(Clone, Copy)]
-struct Line<'a> {
+/// The functions of a line, one or two columns, and their products with each other and the data.
+pub(super) struct Solved<'a> {
     data: &'a [f64],
     functions: &'a [f64],
-    slopes: &'a [f64],
-    ranges: &'a [(f64, f64); MOST_AMPLITUDES],
+    products: Products,
+    best: Best,
 }
 
-/// Of `K` functions and `P` nonlinear parameters.
-struct Sums<'a, const K: usize, const P: usize>(Line<'a>);
-
-#[inline(always)]
-fn add_product<A: Arithmetic>(sum: &mut Lanes, a: &Lanes, b: &Lanes) {
-    for lane in 0..LANES {
-        sum[lane] = A::mul_add(a[lane], b[lane], sum[lane]);
+impl<'a> Solved<'a> {
+    /// The best amplitudes of the columns of `functions` inside `ranges`.
+    pub fn new(
+        data: &'a [f64],
+        functions: &'a [f64],
+        ranges: &[(f64, f64); MOST_AMPLITUDES],
+    ) -> Self {
+        let (f, h) = functions.split_at(data.len());
+        let products = if h.is_empty() {
+            let [ff, fd] = products(f, [f, data]);
+            Products {
+                squares: [ff, 0.0],
+                by_data: [fd, 0.0],
+                ..Products::default()
+            }
+        } else {
+            let [ff, fh, fd] = products(f, [f, h, data]);
+            let [hh, hd] = products(h, [h, data]);
+            Products {
+                squares: [ff, hh],
+                both: fh,
+                by_data: [fd, hd],
+                data: 0.0,
+            }
+        };
+        let best = products.best(ranges);
+        Self {
+            data,
+            functions,
+            products,
+            best,
+        }
     }
-}
 
-/// The first `count` registers of a column.
-#[inline(always)]
-fn registers(column: &[f64], count: usize) -> &[Lanes] {
-    &column.as_chunks::<LANES>().0[..count]
-}
+    pub fn amplitudes(&self) -> Amplitudes {
+        self.best.amplitudes
+    }
 
-/// Not inlined: the compiler would let the order of these few sums rule that of the loops before them.
-#[inline(never)]
-fn total(s: &Lanes) -> f64 {
-    ((s[0] + s[4]) + (s[1] + s[5])) + ((s[2] + s[6]) + (s[3] + s[7]))
+    /// The sums of the slopes at these amplitudes; `residuals` is scratch, a number a channel.
+    pub fn sums(&self, slopes: &[f64], residuals: &mut [f64]) -> LineSums {
+        let sums = match (
+            self.functions.len() / self.data.len(),
+            slopes.len() / self.data.len(),
+        ) {
+            (1, 2) => dispatch(Sums::<1, 2>(self, slopes, residuals)),
+            (1, 3) => dispatch(Sums::<1, 3>(self, slopes, residuals)),
+            (1, 4) => dispatch(Sums::<1, 4>(self, slopes, residuals)),
+            (2, 4) => dispatch(Sums::<2, 4>(self, slopes, residuals)),
+            (functions, parameters) => {
+                panic!("no sums of {functions} functions and {parameters} parameters")
+            }
+        };
+        self.without_explained(sums, slopes.len() / self.data.len())
+    }
+
+    /// Takes the part along the free functions out of the Gram matrix.
+    fn without_explained(&self, sums: Accumulated, parameters: usize) -> LineSums {
+        let mut gram = sums.gram;
+        for p in 0..parameters {
+            let along = Products {
+                by_data: sums.along[p],
+                ..self.products
+            };
+            let [by_f, by_h] = along.shares(self.best.free);
+            for q in p..parameters {
+                let [f, h] = sums.along[q];
+                gram[p][q] -= by_f * f + by_h * h;
+            }
+        }
+        LineSums {
+            chi2: sums.chi2,
+            gradient: sums.gradient,
+            gram,
+        }
+    }
 }
 
 /// Sums over channels of the products of residuals r, J and functions.
-struct Accumulated<const P: usize> {
+#[derive(Default)]
+struct Accumulated {
     chi2: f64,
-    gram: [[f64; P]; P],
-    gradient: [f64; P],
-    along_f: [f64; P],
-    along_h: [f64; P],
+    gram: [[f64; MOST_NONLINEAR]; MOST_NONLINEAR],
+    gradient: [f64; MOST_NONLINEAR],
+    along: [Amplitudes; MOST_NONLINEAR],
 }
+
+/// Of `K` functions and `P` nonlinear parameters.
+struct Sums<'a, const K: usize, const P: usize>(&'a Solved<'a>, &'a [f64], &'a mut [f64]);
 
 impl<const K: usize, const P: usize> Kernel for Sums<'_, K, P> {
-    type Output = LineSums;
+    type Output = Accumulated;
 
     #[inline(always)]
-    #[allow(
-        clippy::needless_range_loop,
-        reason = "loops over constants are unrolled, and sums stay in registers"
-    )]
-    fn run<A: Arithmetic>(self) -> LineSums {
-        let line = self.0;
-        let channels = line.data.len();
-        let data = line.data;
-        let f = &line.functions[..channels];
-        let h = if K == 2 {
-            &line.functions[channels..2 * channels]
-        } else {
-            f
-        };
-        let [ff, fh, fd] = products_with::<3, A>(f, [f, h, data]);
-        let [hh, hd] = products_with::<2, A>(h, [h, data]);
-        let products = Products {
-            squares: [ff, hh],
-            both: fh,
-            by_data: [fd, hd],
-            data: 0.0,
-        };
-        let products = if K == 2 {
-            products
-        } else {
-            products.of_first_alone()
-        };
-        let best = products.best(line.ranges);
-        let [a, b] = best.amplitudes;
-
-        let slope = |p: usize, k: usize| {
-            let first = (p * K + k) * channels;
-            &line.slopes[first..first + channels]
-        };
-        let mut by_f: [&[f64]; P] = [f; P];
-        let mut by_h: [&[f64]; P] = [f; P];
-        for p in 0..P {
-            by_f[p] = slope(p, 0);
-            if K == 2 {
-                by_h[p] = slope(p, 1);
-            }
-        }
-        let sums = accumulate::<K, P, A>((data, f, h), (by_f, by_h), (a, b));
-        let mut result = LineSums {
-            amplitudes: best.amplitudes,
-            chi2: sums.chi2,
-            gradient: [0.0; MOST_NONLINEAR],
-            gram: [[0.0; MOST_NONLINEAR]; MOST_NONLINEAR],
+    fn run<A: Arithmetic>(self) -> Accumulated {
+        let Self(solved, slopes, r) = self;
+        let channels = solved.data.len();
+        let [a, b] = solved.best.amplitudes;
+        let f = &solved.functions[..channels];
+        let h = &solved.functions[(K - 1) * channels..];
+        residuals::<K, A>((a, b), f, h, solved.data, r);
+        let r = &r[..channels];
+        let j: [&[f64]; P] = std::array::from_fn(|p| &slopes[p * channels..(p + 1) * channels]);
+        let mut sums = Accumulated {
+            chi2: products_with::<1, A>(r, [r])[0],
+            ..Accumulated::default()
         };
         for p in 0..P {
-            result.gradient[p] = sums.gradient[p];
-            let along = Products {
-                by_data: [sums.along_f[p], sums.along_h[p]],
-                ..products
+            let own = j[p];
+            let mut take = |[by_r, by_f, by_h]: [f64; 3]| {
+                sums.gradient[p] = by_r;
+                sums.along[p] = [by_f, by_h];
             };
-            let [by_f, by_h] = along.shares(best.free);
-            for q in p..P {
-                let explained = by_f * sums.along_f[q] + by_h * sums.along_h[q];
-                result.gram[p][q] = sums.gram[p][q] - explained;
+            // r, f and (of two functions) h, then the columns from this one on
+            let with = |q: usize| j[(p + q).min(P - 1)];
+            if K == 2 {
+                take(products_with::<3, A>(own, [r, f, h]));
+            } else {
+                let [by_r, by_f] = products_with::<2, A>(own, [r, f]);
+                take([by_r, by_f, 0.0]);
             }
+            let squares = match P - p {
+                4 => products_with::<4, A>(own, [with(0), with(1), with(2), with(3)]),
+                3 => padded(products_with::<3, A>(own, [with(0), with(1), with(2)])),
+                2 => padded(products_with::<2, A>(own, [with(0), with(1)])),
+                _ => padded(products_with::<1, A>(own, [with(0)])),
+            };
+            sums.gram[p][p..P].copy_from_slice(&squares[..P - p]);
         }
-        result
+        sums
     }
 }
 
-/// The sums with amplitudes a and b.
+fn padded<const N: usize>(values: [f64; N]) -> [f64; MOST_NONLINEAR] {
+    let mut padded = [0.0; MOST_NONLINEAR];
+    padded[..N].copy_from_slice(&values);
+    padded
+}
+
+/// a f + b h - d.
 #[inline(always)]
-#[allow(
-    clippy::needless_range_loop,
-    reason = "loops over constants are unrolled, and sums stay in registers"
-)]
-fn accumulate<const K: usize, const P: usize, A: Arithmetic>(
-    (data, f, h): (&[f64], &[f64], &[f64]),
-    (by_f, by_h): ([&[f64]; P], [&[f64]; P]),
+fn residuals<const K: usize, A: Arithmetic>(
     (a, b): (f64, f64),
-) -> Accumulated<P> {
-    let (d, rest) = data.as_chunks::<LANES>();
-    let whole = data.len() - rest.len();
-    let n = d.len();
-    let (f_lanes, h_lanes) = (registers(f, n), registers(h, n));
-    let (by_f_lanes, by_h_lanes) = (
-        by_f.map(|column| registers(column, n)),
-        by_h.map(|column| registers(column, n)),
-    );
-    let zero = [0.0; LANES];
-    let mut chi2 = zero;
-    let mut gram = [[zero; P]; P];
-    let [mut gradient, mut along_f, mut along_h] = [[zero; P]; 3];
+    f: &[f64],
+    h: &[f64],
+    data: &[f64],
+    r: &mut [f64],
+) {
+    let n = data.len();
+    let (f, h, r) = (&f[..n], &h[..n], &mut r[..n]);
     for i in 0..n {
-        let mut r = zero;
-        for lane in 0..LANES {
-            r[lane] = A::mul_add(a, f_lanes[i][lane], -d[i][lane]);
-        }
-        if K == 2 {
-            for lane in 0..LANES {
-                r[lane] = A::mul_add(b, h_lanes[i][lane], r[lane]);
-            }
-        }
-        let mut j = [zero; P];
-        for p in 0..P {
-            let mut column = zero;
-            for lane in 0..LANES {
-                column[lane] = a * by_f_lanes[p][i][lane];
-            }
-            if K == 2 {
-                for lane in 0..LANES {
-                    column[lane] = A::mul_add(b, by_h_lanes[p][i][lane], column[lane]);
-                }
-            }
-            j[p] = column;
-        }
-        add_product::<A>(&mut chi2, &r, &r);
-        for p in 0..P {
-            add_product::<A>(&mut gradient[p], &j[p], &r);
-            add_product::<A>(&mut along_f[p], &j[p], &f_lanes[i]);
-            if K == 2 {
-                add_product::<A>(&mut along_h[p], &j[p], &h_lanes[i]);
-            }
-            for q in p..P {
-                add_product::<A>(&mut gram[p][q], &j[p], &j[q]);
-            }
-        }
-    }
-    let totals = |sums: [Lanes; P]| sums.map(|lanes| total(&lanes));
-    let mut sums = Accumulated {
-        chi2: total(&chi2),
-        gram: gram.map(totals),
-        gradient: totals(gradient),
-        along_f: totals(along_f),
-        along_h: totals(along_h),
-    };
-    for i in whole..data.len() {
-        let both = |first: f64, second: f64| {
-            if K == 2 {
-                a * first + b * second
-            } else {
-                a * first
-            }
+        let first = A::mul_add(a, f[i], -data[i]);
+        r[i] = if K == 2 {
+            A::mul_add(b, h[i], first)
+        } else {
+            first
         };
-        let r = both(f[i], h[i]) - data[i];
-        sums.chi2 += r * r;
-        let mut j = [0.0; P];
-        for p in 0..P {
-            j[p] = both(by_f[p][i], by_h[p][i]);
-        }
-        for p in 0..P {
-            sums.gradient[p] += j[p] * r;
-            sums.along_f[p] += j[p] * f[i];
-            if K == 2 {
-                sums.along_h[p] += j[p] * h[i];
-            }
-            for q in p..P {
-                sums.gram[p][q] += j[p] * j[q];
-            }
-        }
     }
-    sums
 }

@@ -9,7 +9,7 @@
 use super::amplitudes::Amplitudes;
 use super::channels::Channels;
 use super::joint::Layout;
-use super::normal::{LineSums, line_sums};
+use super::normal::{LineSums, Solved};
 use super::workspace::LineBuffers;
 use crate::model::{MOST_AMPLITUDES, Model};
 use crate::numeric::Estimate;
@@ -34,6 +34,7 @@ pub(super) struct Projected<'a> {
     priors: Vec<(usize, Estimate)>,
     thick: Option<Line<'a>>,
     thin: Line<'a>,
+    sums: NormalEquations,
 }
 
 /// One line of the problem.
@@ -99,6 +100,7 @@ impl<'a> Projected<'a> {
             priors,
             thick,
             thin,
+            sums: NormalEquations::default(),
         }
     }
 
@@ -143,9 +145,10 @@ impl<'a> Projected<'a> {
     }
 
     /// chi2 and its derivatives with the amplitudes at their best.
-    fn normal_equations(&mut self, parameters: &[f64]) -> NormalEquations {
+    fn normal_equations(&mut self, parameters: &[f64]) -> &NormalEquations {
         self.place(parameters);
-        let mut all = NormalEquations::default();
+        let all = &mut self.sums;
+        all.clear(self.nonlinear.len());
         let mut local = [0.0; MAX_PARAMETERS];
         if let Some(line) = &mut self.thick {
             for (value, position) in local.iter_mut().zip(line.joint) {
@@ -236,9 +239,11 @@ impl<'a> Line<'a> {
             .collect();
         let numbers = model.linear().len() * channels.len();
         buffers.functions.resize(numbers, 0.0);
+        buffers.parts.resize(model.parts(channels.sampling()), 0.0);
         buffers
             .slopes
-            .resize(model.nonlinear().len() * numbers, 0.0);
+            .resize(model.nonlinear().len() * channels.len(), 0.0);
+        buffers.residuals.resize(channels.len(), 0.0);
         Self {
             channels,
             model,
@@ -252,17 +257,22 @@ impl<'a> Line<'a> {
 
     /// The sums at local parameters.
     fn sums(&mut self, local: &[f64]) -> LineSums {
-        let LineBuffers { functions, slopes } = &mut self.buffers;
-        let channels = self.channels;
+        let LineBuffers {
+            functions,
+            parts,
+            slopes,
+            residuals,
+        } = &mut self.buffers;
+        let (channels, model) = (self.channels, self.model);
         let (line, sampling) = (channels.line(), channels.sampling());
-        self.model
-            .functions(line, sampling, local, functions, Some(slopes));
+        model.functions(line, sampling, local, functions, Some(parts));
         // white as the data are
         channels.decorrelate(functions);
+        let solved = Solved::new(channels.whitened_data(), functions, &self.ranges);
+        self.amplitudes = solved.amplitudes();
+        model.slopes(local, self.amplitudes, parts, slopes);
         channels.decorrelate(slopes);
-        let sums = line_sums(channels.whitened_data(), functions, slopes, &self.ranges);
-        self.amplitudes = sums.amplitudes;
-        sums
+        solved.sums(slopes, residuals)
     }
 }
 
@@ -282,7 +292,7 @@ impl Linearise for Projected<'_> {
         parameters: &[f64],
         _: &mut [f64],
         _: &mut [f64],
-    ) -> Option<NormalEquations> {
+    ) -> Option<&NormalEquations> {
         Some(self.normal_equations(parameters))
     }
 }
@@ -373,7 +383,9 @@ mod tests {
     /// without the part along the free functions.
     fn residuals_and_slopes(line: &Line<'_>) -> (Vec<f64>, Vec<Vec<f64>>) {
         let channels = line.channels.len();
-        let LineBuffers { functions, slopes } = &line.buffers;
+        let LineBuffers {
+            functions, slopes, ..
+        } = &line.buffers;
         let functions: Vec<&[f64]> = functions.chunks_exact(channels).collect();
         let with_amplitudes = |columns: &[f64]| -> Vec<f64> {
             let mut sum = vec![0.0; channels];
@@ -402,9 +414,8 @@ mod tests {
             }
             basis.push(own);
         }
-        let by_parameter = slopes.chunks_exact(functions.len() * channels);
-        let slopes = by_parameter.map(|columns| {
-            let mut column = with_amplitudes(columns);
+        let slopes = slopes.chunks_exact(channels).map(|column| {
+            let mut column = column.to_vec();
             for other in &basis {
                 let along = dot(&column, other);
                 subtract(&mut column, along, other);
@@ -505,7 +516,7 @@ mod tests {
                     gradient,
                     gram,
                 } = explicit_sums(&mut problem, &at);
-                let sums = problem.normal_equations(&at);
+                let sums = *problem.normal_equations(&at);
                 assert!((sums.chi2 / chi2 - 1.0).abs() < 1e-12);
                 for i in 0..at.len() {
                     let scale = gram[i][i].sqrt();

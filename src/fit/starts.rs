@@ -64,9 +64,9 @@ pub(super) fn kinematics(thin_line: Option<&ThinLine>, thick: Kinematics) -> Vec
 }
 
 /// How far from its centre a line reaches, in the largest dispersion of the candidates.
-const REACH: f64 = 4.5;
+const REACH: f64 = 3.6;
 /// The same of the thick line, whose halves are at the fastest speed from the centre.
-const THICK_REACH: f64 = 6.0;
+const THICK_REACH: f64 = 4.5;
 
 /// Velocities about a thick and a thin line of these kinematics; outside, candidates are zero.
 pub(super) fn about(kinematics: &[Kinematics]) -> (Window, Window) {
@@ -109,6 +109,8 @@ struct Candidate {
     second: Kinematics,
     v_in_km_s: f64,
     tau: f64,
+    /// ln tau and ln sigma.
+    logarithms: [f64; 2],
     /// Which amplitudes are inside their ranges.
     free: [bool; MOST_AMPLITUDES],
 }
@@ -121,6 +123,7 @@ impl Candidate {
             second: kinematics,
             v_in_km_s: 0.0,
             tau: LAYER_TAU,
+            logarithms: [LAYER_TAU.ln(), kinematics.sigma_km_s.ln()],
             free: [true; MOST_AMPLITUDES],
         }
     }
@@ -131,11 +134,12 @@ impl Candidate {
 
     fn is_near(&self, other: &Self) -> bool {
         let (sigma, other_sigma) = (self.kinematics.sigma_km_s, other.kinematics.sigma_km_s);
+        let [tau, width] = [0, 1].map(|k| (self.logarithms[k] - other.logarithms[k]).abs());
         self.inward() == other.inward()
             && self.free == other.free
             && (self.v_in_km_s - other.v_in_km_s).abs() < NEAR_SPEED * sigma.max(other_sigma)
-            && (self.tau / other.tau).ln().abs() < NEAR_LOG
-            && (sigma / other_sigma).ln().abs() < NEAR_LOG_SIGMA
+            && tau < NEAR_LOG
+            && width < NEAR_LOG_SIGMA
     }
 }
 
@@ -148,19 +152,25 @@ pub(super) struct Scan<'a> {
     intensity: Kinematics,
     /// chi2 of the thin line at each of the kinematics.
     thin_chi2: Vec<f64>,
-    /// Both slab shapes at every speed and optical depth; empty where no slab is fitted.
-    slabs: Vec<SlabCandidate>,
+    /// The slab shapes that are fitted at every speed and optical depth.
+    slabs: Slabs,
     columns: Vec<f64>,
 }
 
-/// Inner products of the functions of both slab shapes at one candidate.
-#[derive(Debug)]
-struct SlabCandidate {
+#[derive(Clone, Copy, Debug)]
+struct Place {
     kinematics: usize,
     v_in_km_s: f64,
     tau: f64,
-    uniform: Products,
-    peaked: Products,
+    logarithms: [f64; 2],
+}
+
+/// Candidates of either shape of a slab, in one order; none of a shape that is not fitted.
+#[derive(Debug, Default)]
+struct Slabs {
+    places: Vec<Place>,
+    uniform: Vec<Products>,
+    peaked: Vec<Products>,
 }
 
 impl<'a> Scan<'a> {
@@ -172,16 +182,12 @@ impl<'a> Scan<'a> {
         models: &[Model],
         mut columns: Vec<f64>,
     ) -> Self {
-        columns.resize(5 * thick.len().max(thin.len()), 0.0);
+        columns.resize(3 * thick.len().max(thin.len()), 0.0);
         let thin_chi2 = kinematics
             .iter()
             .map(|kinematics| one_gaussian(thin, *kinematics, &mut columns).0)
             .collect();
-        let slabs = if models.iter().any(|model| model.has_infall()) {
-            slab_candidates(thick, kinematics, &mut columns)
-        } else {
-            Vec::new()
-        };
+        let slabs = Slabs::new(thick, kinematics, models, &mut columns);
         Self {
             thick,
             thin,
@@ -208,7 +214,7 @@ impl<'a> Scan<'a> {
                 self.slabs(model, layout)
             }
         };
-        distinct(candidates, model.has_infall())
+        distinct(&candidates, model.has_infall())
             .iter()
             .map(|candidate| joint_start(layout, candidate))
             .collect()
@@ -260,105 +266,127 @@ impl<'a> Scan<'a> {
         let (_, map) = layout.thick_line();
         let reference = joint_start(layout, &Candidate::at(0.0, self.intensity));
         let ranges = amplitude_ranges(layout, self.thick, (model, map), &reference);
-        self.slabs
-            .iter()
-            .map(|slab| {
-                let products = match model {
-                    Model::TwoLayer | Model::TwoLayerContinuum => slab.uniform,
-                    Model::Hill => slab.peaked.of_first_alone(),
-                    _ => slab.peaked,
+        let of_shape = if is_uniform(model) {
+            &self.slabs.uniform
+        } else {
+            &self.slabs.peaked
+        };
+        (self.slabs.places.iter())
+            .zip(of_shape)
+            .map(|(place, products)| {
+                let best = if model == Model::Hill {
+                    products.of_first_alone().best(&ranges)
+                } else {
+                    products.best(&ranges)
                 };
-                let best = products.best(&ranges);
-                let chi2 = best.chi2 + self.thin_chi2[slab.kinematics];
+                let kinematics = self.kinematics[place.kinematics];
                 Candidate {
+                    chi2: best.chi2 + self.thin_chi2[place.kinematics],
+                    kinematics,
+                    second: kinematics,
+                    v_in_km_s: place.v_in_km_s,
+                    tau: place.tau,
+                    logarithms: place.logarithms,
                     free: best.free,
-                    v_in_km_s: slab.v_in_km_s,
-                    tau: slab.tau,
-                    ..Candidate::at(chi2, self.kinematics[slab.kinematics])
                 }
             })
             .collect()
     }
 }
 
-/// Both slab shapes on the thick line's channels over kinematics, speeds and optical depths.
-fn slab_candidates(
-    thick: &Channels,
-    kinematics: &[Kinematics],
-    columns: &mut [f64],
-) -> Vec<SlabCandidate> {
-    let channels = thick.len();
-    let sampling = thick.coarse_sampling();
-    let mut candidates =
-        Vec::with_capacity(2 * kinematics.len() * SPEEDS.len() * OPTICAL_DEPTHS.len());
-    let mut ladder = Ladder::default();
-    for (index, at) in kinematics.iter().enumerate() {
-        for speed in SPEEDS {
-            let speed_km_s = speed * at.sigma_km_s;
-            ladder.place(
-                thick.line(),
-                sampling,
-                (at.v_km_s, at.sigma_km_s, speed_km_s),
-            );
-            for tau in OPTICAL_DEPTHS {
-                let columns = &mut columns[..5 * channels];
-                let [absorbed, inward, outward, peaked_inward, peaked_outward] =
-                    five_columns(columns);
-                ladder.functions(
-                    sampling,
-                    tau,
-                    BothSigns { inward, outward },
-                    BothSigns {
-                        inward: peaked_inward,
-                        outward: peaked_outward,
-                    },
-                    absorbed,
-                );
-                thick.decorrelate(columns);
-                let [absorbed, inward, outward, peaked_inward, peaked_outward] =
-                    five_columns(columns);
-                let data = thick.whitened_data();
-                let [square, by_data] = products(absorbed, [absorbed, data]);
-                let of = |shape: &[f64]| {
-                    let [ff, fg, fd] = products(shape, [shape, absorbed, data]);
-                    // the second function is the absorbed share less the first
-                    Products {
-                        squares: [ff, square - 2.0 * fg + ff],
-                        both: fg - ff,
-                        by_data: [fd, by_data - fd],
-                        data: thick.data_chi2(),
+/// Whether each half of a slab has one temperature.
+fn is_uniform(model: Model) -> bool {
+    matches!(model, Model::TwoLayer | Model::TwoLayerContinuum)
+}
+
+impl Slabs {
+    /// The slab shapes of these models on the thick line's channels over kinematics, speeds and optical
+    /// depths.
+    fn new(
+        thick: &Channels,
+        kinematics: &[Kinematics],
+        models: &[Model],
+        columns: &mut [f64],
+    ) -> Self {
+        let mut slabs = Self::default();
+        let fitted = |uniform: bool| {
+            let mut slab_models = models.iter().filter(|model| model.has_infall());
+            slab_models.any(|model| is_uniform(*model) == uniform)
+        };
+        let (uniform, peaked) = (fitted(true), fitted(false));
+        if !uniform && !peaked {
+            return slabs;
+        }
+        let count = 2 * kinematics.len() * SPEEDS.len() * OPTICAL_DEPTHS.len();
+        slabs.places.reserve_exact(count);
+        let sampling = thick.coarse_sampling();
+        let columns = &mut columns[..3 * thick.len()];
+        let mut ladder = Ladder::default();
+        for (index, at) in kinematics.iter().enumerate() {
+            for speed in SPEEDS {
+                let speed_km_s = speed * at.sigma_km_s;
+                let place = (at.v_km_s, at.sigma_km_s, speed_km_s);
+                ladder.place(thick.line(), sampling, place);
+                for tau in OPTICAL_DEPTHS {
+                    slabs
+                        .places
+                        .extend([speed_km_s, -speed_km_s].map(|v_in_km_s| Place {
+                            kinematics: index,
+                            v_in_km_s,
+                            tau,
+                            logarithms: [tau.ln(), at.sigma_km_s.ln()],
+                        }));
+                    if uniform {
+                        let (shape, absorbed) = three_columns(columns);
+                        ladder.uniform(sampling, tau, shape, absorbed);
+                        slabs.uniform.extend(products_of(thick, columns));
                     }
-                };
-                for (v_in_km_s, uniform, peaked) in [
-                    (speed_km_s, of(inward), of(peaked_inward)),
-                    (-speed_km_s, of(outward), of(peaked_outward)),
-                ] {
-                    candidates.push(SlabCandidate {
-                        kinematics: index,
-                        v_in_km_s,
-                        tau,
-                        uniform,
-                        peaked,
-                    });
+                    if peaked {
+                        let (shape, absorbed) = three_columns(columns);
+                        ladder.peaked(sampling, tau, shape, absorbed);
+                        slabs.peaked.extend(products_of(thick, columns));
+                    }
                 }
             }
         }
+        slabs
     }
-    candidates
 }
 
-fn five_columns(columns: &mut [f64]) -> [&mut [f64]; 5] {
-    let channels = columns.len() / 5;
-    let mut rest = columns.chunks_exact_mut(channels);
-    std::array::from_fn(|_| rest.next().unwrap_or_default())
+/// Products of a slab's two functions, for either sign of the inward speed; the columns as they were
+/// filled.
+fn products_of(thick: &Channels, columns: &mut [f64]) -> [Products; 2] {
+    thick.decorrelate(columns);
+    let (shape, absorbed) = three_columns(columns);
+    let data = thick.whitened_data();
+    let [square, by_data] = products(absorbed, [absorbed, data]);
+    [shape.inward, shape.outward].map(|shape| {
+        let [ff, fg, fd] = products(shape, [shape, absorbed, data]);
+        // the second function is the absorbed share less the first
+        Products {
+            squares: [ff, square - 2.0 * fg + ff],
+            both: fg - ff,
+            by_data: [fd, by_data - fd],
+            data: thick.data_chi2(),
+        }
+    })
+}
+
+/// F of either sign, and the absorbed share.
+fn three_columns(columns: &mut [f64]) -> (BothSigns<'_>, &mut [f64]) {
+    let channels = columns.len() / 3;
+    let (inward, rest) = columns.split_at_mut(channels);
+    let (outward, absorbed) = rest.split_at_mut(channels);
+    (BothSigns { inward, outward }, absorbed)
 }
 
 /// The best candidates that differ, the best first: neighbours of a better one would end in the same minimum. Both
 /// signs of the inward speed are kept.
-fn distinct(mut candidates: Vec<Candidate>, has_infall: bool) -> Vec<Candidate> {
-    candidates.sort_by(|one, other| one.chi2.total_cmp(&other.chi2));
+fn distinct(candidates: &[Candidate], has_infall: bool) -> Vec<Candidate> {
+    let mut order: Vec<usize> = (0..candidates.len()).collect();
+    order.sort_by(|one, other| candidates[*one].chi2.total_cmp(&candidates[*other].chi2));
     let mut kept: Vec<Candidate> = Vec::with_capacity(2 * STARTS);
-    for candidate in candidates {
+    for candidate in order.into_iter().map(|index| candidates[index]) {
         let of_its_sign = kept
             .iter()
             .filter(|other| candidate.inward() == other.inward())

@@ -3,7 +3,7 @@
 use super::channels::Channels;
 use super::joint::Layout;
 use super::starts::{self, Kinematics};
-use super::{Averaging, FitError, FitSettings, FittedParameter, Workspace, fitted, minima};
+use super::{Averaging, FitError, FitSettings, FittedParameter, MERGED, Workspace, fitted, minima};
 use crate::constants::FWHM_PER_SIGMA;
 use crate::line::Line;
 use crate::measure::ThinLine;
@@ -11,6 +11,7 @@ use crate::model::{LineShape, Model, Sampling};
 use crate::numeric::Estimate;
 use crate::numeric::least_squares::{Interval, Minimum, Termination};
 use crate::prepare::Prepared;
+use crate::spectrum::Window;
 
 /// Height over its formal error from which the thin line counts as detected.
 const DETECTION: f64 = 5.0;
@@ -83,9 +84,15 @@ pub fn fit_thin(
         });
     }
     let starts = thin_starts(&layout, &channels, intensity, thin);
+    let narrowest_start = (starts.iter().map(|start| start[1])).fold(f64::INFINITY, f64::min);
+    let everywhere = Window {
+        low_km_s: f64::NEG_INFINITY,
+        high_km_s: f64::INFINITY,
+    };
+    let near = channels.near(everywhere, MERGED * narrowest_start);
     let (minima, _) = minima(
         &layout,
-        (None, &channels),
+        (None, &near),
         (None, &channels),
         &starts,
         workspace,
@@ -136,11 +143,11 @@ fn thin_starts(
     let width = window.high_km_s - window.low_km_s;
     let mut candidates = Vec::new();
     let mut column = vec![0.0; channels.len()];
-    let centres = (0..=40)
-        .map(|step| window.low_km_s + width * f64::from(step) / 40.0)
+    let centres = (0..=20)
+        .map(|step| window.low_km_s + width * f64::from(step) / 20.0)
         .chain(std::iter::once(intensity.v_km_s));
     for v_km_s in centres {
-        for sigma_km_s in [0.05 * width, 0.1 * width, 0.2 * width, intensity.sigma_km_s] {
+        for sigma_km_s in [0.06 * width, 0.15 * width, intensity.sigma_km_s] {
             let at = Kinematics { v_km_s, sigma_km_s };
             let (chi2, peak) = starts::one_gaussian(channels, at, &mut column);
             if peak > 0.0 {

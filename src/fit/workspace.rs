@@ -25,9 +25,12 @@ impl Workspace {
     }
 }
 
-/// The functions of a line and their slopes, columns over the channels.
+/// Of one line, columns over the channels: its functions, what its slopes are made of, the slopes, and the
+/// residuals.
 #[derive(Clone, Debug, Default)]
 pub(super) struct LineBuffers {
     pub functions: Vec<f64>,
+    pub parts: Vec<f64>,
     pub slopes: Vec<f64>,
+    pub residuals: Vec<f64>,
 }

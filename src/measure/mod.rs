@@ -7,9 +7,14 @@
 //! (doi:10.3847/1538-4357/aaef84), Myers et al. 1996 (doi:10.1086/310146), eq. 9 from memory.
 
 mod about;
+mod moment;
 mod noise;
 mod peaks;
+mod sides;
 mod smooth;
+
+pub use moment::first_moment;
+pub use sides::{Sides, sides};
 
 use crate::line::Component;
 use crate::numeric::Estimate;

@@ -53,22 +53,37 @@ impl Ladder {
         }
     }
 
-    /// The functions at an optical depth: F of the two-layer shape, F of the hill's, and the absorbed
-    /// share 1 - `E_f` `E_r` (the same for both signs), averaged over each channel.
-    pub fn functions(
+    /// F of the two-layer shape at an optical depth, and the absorbed share 1 - `E_f` `E_r` (the same for
+    /// both signs), averaged over each channel.
+    pub fn uniform(
         &self,
         sampling: &Sampling,
         tau: f64,
-        uniform: BothSigns<'_>,
-        peaked: BothSigns<'_>,
+        shape: BothSigns<'_>,
         absorbed: &mut [f64],
     ) {
-        dispatch(RungKernel {
+        dispatch(RungKernel::<false> {
             ladder: self,
             sampling,
             tau,
-            uniform,
-            peaked,
+            shape,
+            absorbed,
+        });
+    }
+
+    /// The same of the hill's shape.
+    pub fn peaked(
+        &self,
+        sampling: &Sampling,
+        tau: f64,
+        shape: BothSigns<'_>,
+        absorbed: &mut [f64],
+    ) {
+        dispatch(RungKernel::<true> {
+            ladder: self,
+            sampling,
+            tau,
+            shape,
             absorbed,
         });
     }
@@ -106,28 +121,25 @@ impl Kernel for PhiKernel<'_> {
     }
 }
 
-struct RungKernel<'a> {
+struct RungKernel<'a, const PEAKED: bool> {
     ladder: &'a Ladder,
     sampling: &'a Sampling,
     tau: f64,
-    uniform: BothSigns<'a>,
-    peaked: BothSigns<'a>,
+    shape: BothSigns<'a>,
     absorbed: &'a mut [f64],
 }
 
 /// Below, (1 - e^-x)/x of a scan is its series, good to 1e-7.
 const SCAN_SERIES_BELOW: f64 = 1e-2;
 
-impl Kernel for RungKernel<'_> {
+impl<const PEAKED: bool> Kernel for RungKernel<'_, PEAKED> {
     type Output = ();
 
     #[inline(always)]
     fn run<A: Arithmetic>(self) {
         let channels = self.sampling.len();
-        let inward = &mut self.uniform.inward[..channels];
-        let outward = &mut self.uniform.outward[..channels];
-        let peaked_inward = &mut self.peaked.inward[..channels];
-        let peaked_outward = &mut self.peaked.outward[..channels];
+        let inward = &mut self.shape.inward[..channels];
+        let outward = &mut self.shape.outward[..channels];
         let absorbed = &mut self.absorbed[..channels];
         for (k, (_, weight)) in self.sampling.nodes().iter().enumerate() {
             let upper = &self.ladder.upper[k * channels..(k + 1) * channels];
@@ -136,13 +148,14 @@ impl Kernel for RungKernel<'_> {
             for i in 0..channels {
                 let (tau_u, tau_l) = (self.tau * upper[i], self.tau * lower[i]);
                 let (e_u, e_l) = (exp_negative::<A>(tau_u), exp_negative::<A>(tau_l));
-                let (g_u, g_l) = (scan_escape::<A>(tau_u, e_u), scan_escape::<A>(tau_l, e_l));
-                inward[i] = before(inward[i]) + weight * (1.0 - e_u);
-                outward[i] = before(outward[i]) + weight * (1.0 - e_l);
-                let rising = g_u - e_u * g_l;
-                let falling = g_l - e_l * g_u;
-                peaked_inward[i] = before(peaked_inward[i]) + weight * rising;
-                peaked_outward[i] = before(peaked_outward[i]) + weight * falling;
+                let (rising, falling) = if PEAKED {
+                    let (g_u, g_l) = (scan_escape::<A>(tau_u, e_u), scan_escape::<A>(tau_l, e_l));
+                    (g_u - e_u * g_l, g_l - e_l * g_u)
+                } else {
+                    (1.0 - e_u, 1.0 - e_l)
+                };
+                inward[i] = before(inward[i]) + weight * rising;
+                outward[i] = before(outward[i]) + weight * falling;
                 absorbed[i] = before(absorbed[i]) + weight * (1.0 - e_u * e_l);
             }
         }

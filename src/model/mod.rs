@@ -11,6 +11,7 @@ mod sampling;
 mod separable;
 mod slab;
 mod slabs;
+mod staged;
 mod temperature;
 
 pub use ladder::{BothSigns, Ladder};

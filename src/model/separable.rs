@@ -10,8 +10,13 @@
 //! | hill | the same | J(`T_p`) - J(`T_bg`) |
 //!
 //! The continuum source's filling and temperature are neither: they are held.
+#![allow(
+    clippy::inline_always,
+    reason = "has to be compiled inside each instruction-set copy"
+)]
 
-use super::{LineShape, Model, Sampling, gaussian, layer, slabs};
+use super::{LineShape, Model, Sampling, gaussian, layer, slabs, staged};
+use crate::numeric::dispatch::{Arithmetic, Kernel, dispatch};
 
 /// Most amplitudes of a model.
 pub const MOST_AMPLITUDES: usize = 2;
@@ -92,11 +97,11 @@ impl Model {
         }
     }
 
-    /// The functions `f_k` and, where wanted, their slopes.
+    /// The functions `f_k` and, where wanted, the parts of which [`Model::slopes`] makes the profile's.
     ///
     /// `parameters` as in [`Model::parameters`], of which the nonlinear ones count; `functions` one
-    /// column of [`Sampling::len`] numbers a function, no unit; `slopes` the derivative of `f_k` by the
-    /// `p`-th nonlinear parameter in column `p K + k` of `K` functions.
+    /// column of [`Sampling::len`] numbers a function, no unit; `parts` of the length
+    /// [`Model::parts`].
     ///
     /// # Panics
     ///
@@ -107,7 +112,7 @@ impl Model {
         sampling: &Sampling,
         parameters: &[f64],
         functions: &mut [f64],
-        slopes: Option<&mut [f64]>,
+        parts: Option<&mut [f64]>,
     ) {
         let columns = self.linear().len();
         assert_eq!(
@@ -115,23 +120,85 @@ impl Model {
             columns * sampling.len(),
             "a column for each function"
         );
-        if let Some(slopes) = &slopes {
-            assert_eq!(
-                slopes.len(),
-                self.nonlinear().len() * functions.len(),
-                "columns for each parameter"
-            );
+        if let Some(parts) = &parts {
+            assert_eq!(parts.len(), self.parts(sampling), "all parts");
         }
         match self {
             Self::Gaussian => {
-                gaussian::functions(line, sampling, &parameters[..2], functions, slopes);
+                gaussian::functions(line, sampling, &parameters[..2], functions, parts);
             }
             Self::TwoGaussians => {
-                gaussian::functions_of_two(line, sampling, parameters, functions, slopes);
+                gaussian::functions_of_two(line, sampling, parameters, functions, parts);
             }
-            Self::Layer => layer::functions(line, sampling, parameters, functions, slopes),
+            Self::Layer => layer::functions(line, sampling, parameters, functions, parts),
             Self::TwoLayer | Self::TwoLayerContinuum | Self::Hill | Self::HillSurface => {
-                slabs::functions(self, line, sampling, parameters, functions, slopes);
+                slabs::functions(self, line, sampling, parameters, functions, parts);
+            }
+        }
+    }
+
+    /// How many numbers the parts of the slopes are: of a slab a few columns a quadrature node, else the
+    /// derivative of each function by each nonlinear parameter.
+    #[must_use]
+    pub fn parts(self, sampling: &Sampling) -> usize {
+        let columns = if self.has_infall() {
+            staged::PARTS * sampling.nodes().len()
+        } else {
+            self.linear().len() * self.nonlinear().len()
+        };
+        columns * sampling.len()
+    }
+
+    /// The derivatives of `sum_k a_k f_k` by the nonlinear parameters, a column each, from the parts that
+    /// [`Model::functions`] left at the same `parameters`; `a_k` in any unit.
+    pub fn slopes(
+        self,
+        parameters: &[f64],
+        amplitudes: [f64; MOST_AMPLITUDES],
+        parts: &[f64],
+        slopes: &mut [f64],
+    ) {
+        if self.has_infall() {
+            staged::slopes(parameters[3], amplitudes, parts, slopes);
+        } else {
+            dispatch(Weighted {
+                functions: self.linear().len(),
+                parameters: self.nonlinear().len(),
+                amplitudes,
+                parts,
+                slopes,
+            });
+        }
+    }
+}
+
+/// Sums of the functions' derivatives with the amplitudes as weights.
+struct Weighted<'a> {
+    functions: usize,
+    parameters: usize,
+    amplitudes: [f64; MOST_AMPLITUDES],
+    parts: &'a [f64],
+    slopes: &'a mut [f64],
+}
+
+impl Kernel for Weighted<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<A: Arithmetic>(self) {
+        let channels = self.slopes.len() / self.parameters;
+        let of_parameters = self.parts.chunks_exact(self.functions * channels);
+        for (slope, parts) in self.slopes.chunks_exact_mut(channels).zip(of_parameters) {
+            let (first, second) = parts.split_at(channels);
+            let [a, b] = self.amplitudes;
+            if second.is_empty() {
+                for (slope, part) in slope.iter_mut().zip(first) {
+                    *slope = a * part;
+                }
+            } else {
+                for ((slope, one), other) in slope.iter_mut().zip(first).zip(second) {
+                    *slope = A::mul_add(a, *one, b * other);
+                }
             }
         }
     }

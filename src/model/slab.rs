@@ -91,14 +91,11 @@ pub(super) trait Sink {
 /// T only.
 pub(super) struct Value<'a>(pub &'a mut [f64]);
 
-/// The functions that T is linear in, F and (1 - `E_f` `E_r`) - F, and the slopes of each by `v_lsr`,
-/// sigma, `v_in` and tau.
+/// The functions that T is linear in, F and (1 - `E_f` `E_r`) - F.
 pub(super) struct Functions<'a> {
     pub shape: &'a mut [f64],
     /// The second function, where the model has it.
     pub rest: Option<&'a mut [f64]>,
-    pub shape_slopes: Option<[&'a mut [f64]; 4]>,
-    pub rest_slopes: Option<[&'a mut [f64]; 4]>,
 }
 
 /// T, and dT by `v_lsr`, sigma, `v_in`, tau, A and, where wanted, B: columns of one length.
@@ -371,36 +368,22 @@ impl Sink for Functions<'_> {
         let (phi_f, phi_r) = (&front.phi[..n], &rear.phi[..n]);
         let mut shape = [0.0; BLOCK];
         let shape = &mut shape[..n];
-        let mut by_front = [0.0; BLOCK];
-        let by_front = &mut by_front[..n];
-        let mut by_rear = [0.0; BLOCK];
-        let by_rear = &mut by_rear[..n];
         let mut through = [0.0; BLOCK];
         let through = &mut through[..n];
         let weight = block.weight;
         for i in 0..n {
             let (tau_f, tau_r) = (slab.tau * phi_f[i], slab.tau * phi_r[i]);
             let (e_f, e_r) = (exp_negative::<A>(tau_f), exp_negative::<A>(tau_r));
-            let (value, front, rear) = S::value_and_slopes::<A>(tau_f, tau_r, e_f, e_r);
+            let (value, ..) = S::value_and_slopes::<A>(tau_f, tau_r, e_f, e_r);
             shape[i] = weight * value;
-            by_front[i] = weight * front;
-            by_rear[i] = weight * rear;
             through[i] = weight * (e_f * e_r);
-        }
-        if let Some(columns) = &mut self.shape_slopes {
-            write_slopes::<A>(block, slab.tau, (by_front, by_rear), (front, rear), columns);
         }
         block.write(self.shape, shape);
         let Some(rest) = &mut self.rest else { return };
         for i in 0..n {
             shape[i] = (weight - through[i]) - shape[i];
-            by_front[i] = through[i] - by_front[i];
-            by_rear[i] = through[i] - by_rear[i];
         }
         block.write(rest, shape);
-        if let Some(columns) = &mut self.rest_slopes {
-            write_slopes::<A>(block, slab.tau, (by_front, by_rear), (front, rear), columns);
-        }
     }
 }
 

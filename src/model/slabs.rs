@@ -1,7 +1,7 @@
 //! The two-layer and hill models: their temperatures as the two amplitudes of a [`Slab`].
 
 use super::slab::{Functions, Peaked, Shape, Slab, Slopes, Uniform, Value, evaluate};
-use super::{LineShape, Model, Sampling, columns};
+use super::{LineShape, Model, Sampling, columns, staged};
 
 fn slab(parameters: &[f64], contrast_k: f64, excess_k: f64) -> Slab {
     Slab {
@@ -191,40 +191,31 @@ pub(super) fn hill_surface(
     own_temperatures::<Peaked>(line, sampling, parameters, value, jacobian);
 }
 
-/// The functions that a slab's profile is linear in, and their slopes by the first four parameters, laid
-/// out as in [`Model::functions`].
+/// The functions that a slab's profile is linear in, laid out as in [`Model::functions`], and the parts
+/// of its slopes where wanted.
 pub(super) fn functions(
     model: Model,
     line: &LineShape,
     sampling: &Sampling,
     parameters: &[f64],
     functions: &mut [f64],
-    slopes: Option<&mut [f64]>,
+    parts: Option<&mut [f64]>,
 ) {
+    let uniform = matches!(model, Model::TwoLayer | Model::TwoLayerContinuum);
+    let (shape, rest) = functions.split_at_mut(sampling.len());
+    if let Some(parts) = parts {
+        let functions = (shape, rest);
+        if uniform {
+            staged::functions::<Uniform>(line, sampling, parameters, functions, parts);
+        } else {
+            staged::functions::<Peaked>(line, sampling, parameters, functions, parts);
+        }
+        return;
+    }
     let slab = slab(parameters, 0.0, 0.0);
-    let channels = sampling.len();
-    let (shape, rest) = functions.split_at_mut(channels);
-    let output = if model == Model::Hill {
-        Functions {
-            shape,
-            rest: None,
-            shape_slopes: slopes.map(|slopes| columns(slopes, channels)),
-            rest_slopes: None,
-        }
-    } else {
-        let slopes = slopes.map(|slopes| columns::<8>(slopes, channels));
-        let (shape_slopes, rest_slopes) = match slopes {
-            Some([a, b, c, d, e, f, g, h]) => (Some([a, c, e, g]), Some([b, d, f, h])),
-            None => (None, None),
-        };
-        Functions {
-            shape,
-            rest: Some(rest),
-            shape_slopes,
-            rest_slopes,
-        }
-    };
-    if matches!(model, Model::TwoLayer | Model::TwoLayerContinuum) {
+    let rest = Some(rest).filter(|rest| !rest.is_empty());
+    let output = Functions { shape, rest };
+    if uniform {
         evaluate::<Uniform>(slab, &line.components, sampling, output);
     } else {
         evaluate::<Peaked>(slab, &line.components, sampling, output);

@@ -136,6 +136,7 @@ fn scaled(rate: &Drawn, own: &Drawn, other: &Drawn) -> Drawn {
 }
 
 #[cfg(test)]
+#[allow(clippy::cast_possible_truncation, clippy::unwrap_used)]
 mod tests {
     use super::*;
 

@@ -357,7 +357,7 @@ fn correlation(
 }
 
 #[cfg(test)]
-#[allow(clippy::unwrap_used)]
+#[allow(clippy::cast_possible_truncation, clippy::unwrap_used)]
 mod tests {
     use super::*;
 

@@ -159,14 +159,16 @@ impl PaperTable {
         let _ = writeln!(text, "\\footnotesize Notes. {}", self.errors);
         text.push_str("The rank is by the grade of the probability of infall, then by what is certain of the rate or speed.\n");
         if self.limits {
-            text.push_str("Values behind $<$ are limits at 95\\,\\%.\n");
+            text.push_str(
+                "Behind $<$ stand limits: of a speed at 95\\,\\%, of a rate the upper end of its central 95\\,\\% interval.\n",
+            );
         }
         for (index, note) in self.notes.iter().enumerate() {
             let _ = writeln!(
                 text,
                 "\\tablenotemark{{{}}}\\,{}.",
                 letter(index),
-                escaped(note)
+                escaped(&note.replace('-', " "))
             );
         }
         text.push_str("\\end{table*}\n");

@@ -124,6 +124,7 @@ mod tests {
             shares: Vec::new(),
             speed: Speed::Measured,
             trusted: true,
+            doubts: Vec::new(),
         }
     }
 

@@ -7,7 +7,7 @@ use crate::fit::posterior::{
     Family, PairPosterior, PosteriorError, PosteriorSettings, pair_posterior,
 };
 use crate::fit::priors::Priors;
-use crate::fit::{FitSettings, Unjudged, is_absorbed};
+use crate::fit::{FitSettings, Judgement, Unjudged, is_absorbed};
 use crate::line::Line;
 use crate::measure::{Measures, ThinLine};
 use crate::model::RadiationTemperature;
@@ -118,6 +118,20 @@ pub(super) fn judge(
         judged.speed = Speed::Unconstrained;
     }
     Ok(Ok(judged))
+}
+
+/// What cautions are drawn from.
+pub(super) fn judgement(judged: Option<&Result<Judged, Unjudged>>) -> Judgement<'_> {
+    match judged {
+        None => Judgement::NotAsked,
+        Some(Err(reason)) => Judgement::Missing(reason),
+        Some(Ok(judged)) => Judgement::Found(
+            &judged.posterior,
+            &judged.verdict,
+            judged.speed,
+            &judged.unheard,
+        ),
+    }
 }
 
 /// Why a pair cannot be judged.

@@ -1,13 +1,12 @@
 //! One pair through every stage.
 
 use super::journal::hexadecimal;
-use super::judge::{PreparedPair, judge};
+use super::judge::{PreparedPair, judge, judgement};
 use super::{Judged, LineSection, RunError, RunSheet, VerdictSettings};
 use crate::derive::{DeriveSettings, Derived, FitDraws, SourceProperties, Tracers};
 use crate::fit::hypotheses::Speed;
 use crate::fit::{
-    Caution, FitSettings, Judgement, ModelFit, PairFacts, PairFit, ThinFit, Workspace, cautions,
-    fit_thin,
+    Caution, FitSettings, ModelFit, PairFacts, PairFit, ThinFit, Workspace, cautions, fit_thin,
 };
 use crate::line::{Line, isotopologue_pair};
 use crate::measure::{MeasureSettings, Measures, measure};
@@ -262,16 +261,7 @@ pub(super) fn fit_prepared(
         thin_fit: &thin_fit,
         measures: &measures,
         fit: &fit,
-        judgement: match &judged {
-            None => Judgement::NotAsked,
-            Some(Err(reason)) => Judgement::Missing(reason),
-            Some(Ok(judged)) => Judgement::Found(
-                &judged.posterior,
-                &judged.verdict,
-                judged.speed,
-                &judged.unheard,
-            ),
-        },
+        judgement: judgement(judged.as_ref()),
     });
     let judged = judged.and_then(Result::ok);
     let averaged = judged.as_ref().and_then(Judged::adopted);

@@ -40,7 +40,7 @@ pub struct ReducedClump {
 /// The radius from which [`ReducedClump::depth`] counts, over the outer one.
 pub const DEPTH_FROM: f64 = 0.1;
 
-/// Radius over the outer one within which density and speed level off.
+/// Radius over the outer one within which density, and speed in free fall, level off.
 const CORE: f64 = 0.02;
 
 /// A line of a reduced clump.
@@ -349,13 +349,13 @@ impl ReducedPair {
             return;
         }
         let end = (1.0 / p).acosh();
-        // z = p sinh t, r = p cosh t: radius and line-of-sight speed
+        // z = p sinh t, r = p cosh t: radius, levelled off, and line-of-sight speed
         let at = |t: f64| {
             let e = t.exp();
             let (grows, falls) = (0.5 * e, 0.5 / e);
-            let radius = p * (grows + falls);
-            let tanh = (grows - falls) / (grows + falls);
-            (radius, clump.speed(radius) * tanh)
+            let (radius, z) = (p * (grows + falls), p * (grows - falls));
+            let share = z / (z * z + impact * impact).sqrt().max(f64::MIN_POSITIVE);
+            (radius, clump.speed(radius) * share)
         };
         let place = |radius: f64| place_of(radius.ln());
         let (mut t, (mut radius, mut here)) = (0.0, at(0.0));

@@ -2,22 +2,27 @@
 //! integrated out.
 //!
 //! The clump is that of [`crate::sphere::ReducedPair`]. Opacity, excitation, beam and isotope ratio have
-//! priors ([`ClumpPriors`]) that the known properties of a source narrow.
+//! priors ([`ClumpPriors`]) that the known properties of a source narrow. Brightness, baseline, noise
+//! level and smooth departures from any sphere are integrated out in closed form.
 
 mod priors;
+mod residuals;
 mod target;
 
 pub use priors::{ClumpPriors, Normal};
+pub use residuals::{ClumpResiduals, LineResiduals, Misfit};
 
 use super::Averaging;
 use super::posterior::{
     Interval, Kinematics, LineData, PosteriorError, distinct, interval, kinematics, shape_errors,
 };
+use crate::constants::photon_temperature_k;
 use crate::line::Line;
 use crate::measure::ThinLine;
 use crate::model::LineShape;
 use crate::numeric::sampling::{
-    Density, Draws, ImportanceSettings, MOST_DIMENSIONS, Peak, Point, Quality, ascend, sample,
+    Density, Draws, EnsembleSettings, ImportanceSettings, MOST_DIMENSIONS, Peak, Point, Quality,
+    ascend, sample, settle,
 };
 use crate::prepare::Prepared;
 use crate::spectrum::Window;
@@ -60,37 +65,55 @@ impl SpeedLaw {
 /// How a clump's posterior is found.
 #[derive(Clone, Debug, PartialEq)]
 pub struct ClumpSettings {
-    /// How the speed depends on the radius.
-    pub law: SpeedLaw,
-    /// Priors.
-    pub priors: ClumpPriors,
+    /// Priors; `None` takes [`ClumpPriors::of_line`].
+    pub priors: Option<ClumpPriors>,
     /// FWHM of the thin line's beam over the thick line's.
     pub beam_ratio: f64,
     /// Standard deviation of smooth departures from any sphere, over each line's peak.
     pub shape_error: f64,
     /// How the model's value in a channel is formed.
     pub averaging: Averaging,
+    /// How long walkers settle before draws.
+    pub ensemble: EnsembleSettings,
     /// How much is drawn.
     pub sampling: ImportanceSettings,
     /// Seed of all draws.
     pub seed: u64,
 }
 
-/// Departure of clumps from the reduced sphere, over the peak.
-pub const SHAPE_ERROR: f64 = 0.015;
+/// Departure of clumps from the reduced sphere, over the peak: what coverage on clumps in statistical
+/// equilibrium asks for.
+pub const SHAPE_ERROR: f64 = 0.025;
 
 impl Default for ClumpSettings {
     fn default() -> Self {
         Self {
-            law: SpeedLaw::Constant,
-            priors: ClumpPriors::default(),
+            priors: None,
             beam_ratio: 1.0,
             shape_error: SHAPE_ERROR,
             averaging: Averaging::Channel,
-            sampling: ImportanceSettings::default(),
+            ensemble: EnsembleSettings {
+                walkers: 48,
+                steps: 120,
+            },
+            sampling: ImportanceSettings {
+                round: 500,
+                most_rounds: 8,
+                wider: 1.6,
+                ..ImportanceSettings::default()
+            },
             seed: 1,
         }
     }
+}
+
+/// The best sphere's profile of a line.
+#[derive(Clone, Debug, PartialEq)]
+pub struct ClumpProfile {
+    /// Velocities of the channels, km/s.
+    pub velocity_km_s: Vec<f64>,
+    /// Brightness, K.
+    pub temperature_k: Vec<f64>,
 }
 
 /// Posterior of a clump's inward speed.
@@ -100,7 +123,7 @@ pub struct ClumpPosterior {
     pub law: SpeedLaw,
     /// Inward speed at the outer radius, km/s.
     pub v_in_km_s: Interval,
-    /// ln of the evidence.
+    /// ln of the evidence; comparable between laws for the same pair.
     pub ln_evidence: f64,
     /// Standard error of it.
     pub ln_evidence_err: f64,
@@ -108,89 +131,241 @@ pub struct ClumpPosterior {
     pub quality: Quality,
     /// Evaluations of the posterior density.
     pub evaluations: usize,
-    /// Weighted points.
+    /// Weighted points: v_lsr (km/s) and the coordinates of [`ClumpPosterior::COORDINATES`].
     pub draws: Draws,
-    /// Most probable point.
+    /// Highest point that was found.
     pub best: Point,
+    /// Its profiles of the thick and of the thin line.
+    pub profiles: [ClumpProfile; 2],
+    /// Whether it fits.
+    pub residuals: ClumpResiduals,
 }
 
-/// Posterior of the inward speed.
+impl ClumpPosterior {
+    /// Names of the coordinates of a draw, in their order.
+    pub const COORDINATES: [&'static str; DIMENSIONS] = [
+        "v_lsr_km_s",
+        "ln_sigma",
+        "v_in_over_sigma",
+        "ln_depth",
+        "opacity_slope",
+        "ln_collision_ratio",
+        "excess_slope",
+        "temperature_slope",
+        "ln_isotope_ratio",
+        "ln_beam_over_radius",
+        "opacity_response",
+        "thin_slope",
+    ];
+
+    /// Median and intervals of a coordinate; `None` for a name that is none.
+    #[must_use]
+    pub fn marginal(&self, name: &str) -> Option<Interval> {
+        let index = Self::COORDINATES.iter().position(|known| *known == name)?;
+        interval(&self.weighted(|point| point[index]))
+    }
+
+    fn weighted(&self, value: impl Fn(&Point) -> f64) -> Vec<(f64, f64)> {
+        let pairs = self.draws.points.iter().zip(&self.draws.weights);
+        pairs
+            .map(|(point, weight)| (value(point), *weight))
+            .collect()
+    }
+
+    /// Correlation of the inward speed with each coordinate that is not of the motion itself, the
+    /// strongest first: what the speed depends on and the pair cannot tell.
+    #[must_use]
+    pub fn speed_depends_on(&self) -> Vec<(&'static str, f64)> {
+        let (mean_v, deviation_v) = self.draws.moments(speed);
+        let mut found: Vec<(&'static str, f64)> = (0..DIMENSIONS)
+            .filter(|index| *index != place::V_IN)
+            .map(|index| {
+                let (mean, deviation) = self.draws.moments(|point| point[index]);
+                let product = |point: &Point| (point[index] - mean) * (speed(point) - mean_v);
+                let scale = (deviation * deviation_v).max(f64::MIN_POSITIVE);
+                (
+                    Self::COORDINATES[index],
+                    self.draws.moments(product).0 / scale,
+                )
+            })
+            .collect();
+        found.sort_by(|a, b| b.1.abs().total_cmp(&a.1.abs()));
+        found
+    }
+}
+
+fn speed(point: &Point) -> f64 {
+    point[place::V_IN] * point[place::LN_SIGMA].exp()
+}
+
+/// Posteriors of both speed laws.
+#[derive(Clone, Debug, PartialEq)]
+pub struct ClumpPosteriors {
+    /// One speed everywhere.
+    pub constant: ClumpPosterior,
+    /// Free fall.
+    pub free_fall: ClumpPosterior,
+}
+
+impl ClumpPosteriors {
+    /// ln of the odds of free fall against a constant speed, as likely before.
+    #[must_use]
+    pub fn ln_odds_of_free_fall(&self) -> f64 {
+        self.free_fall.ln_evidence - self.constant.ln_evidence
+    }
+
+    /// The law that the pair prefers. The constant speed, which has less to explain, unless free fall
+    /// is more probable by [`ClumpPosteriors::PREFERRED_AT`].
+    #[must_use]
+    pub fn preferred(&self) -> &ClumpPosterior {
+        if self.ln_odds_of_free_fall() > Self::PREFERRED_AT.ln() {
+            &self.free_fall
+        } else {
+            &self.constant
+        }
+    }
+
+    /// Odds from which free fall is preferred.
+    pub const PREFERRED_AT: f64 = 3.0;
+}
+
+/// Posteriors of the inward speed for both laws.
 ///
 /// # Errors
 ///
-/// [`PosteriorError`] for too few channels or priors without mass where the data are.
-pub fn clump_posterior(
+/// As of [`clump_posterior`].
+pub fn clump_posteriors(
     thick: &Prepared,
     thin: &Prepared,
     lines: (&Line, &Line),
     thin_line: Option<&ThinLine>,
     settings: &ClumpSettings,
+) -> Result<ClumpPosteriors, PosteriorError> {
+    let of = |law| clump_posterior(thick, thin, lines, thin_line, law, settings);
+    Ok(ClumpPosteriors {
+        constant: of(SpeedLaw::Constant)?,
+        free_fall: of(SpeedLaw::FreeFall)?,
+    })
+}
+
+/// Fewest channels of a line in the fitted range.
+const FEWEST_CHANNELS: usize = 10;
+
+/// Width of the sharpest feature of a profile, in dispersions.
+const NARROWEST: f64 = 0.6;
+
+/// Posterior of the inward speed for one law.
+///
+/// `thin_line` is the thin line's fit where it is detected: searches begin there. Velocities as far
+/// from the line windows as they are wide count.
+///
+/// # Errors
+///
+/// [`PosteriorError`] for too few channels or priors without mass where the data are. Draws that cannot
+/// be trusted are no error: see [`ClumpPosterior::quality`].
+pub fn clump_posterior(
+    thick: &Prepared,
+    thin: &Prepared,
+    lines: (&Line, &Line),
+    thin_line: Option<&ThinLine>,
+    law: SpeedLaw,
+    settings: &ClumpSettings,
 ) -> Result<ClumpPosterior, PosteriorError> {
-    let range = {
-        let low = thick.window.low_km_s.min(thin.window.low_km_s);
-        let high = thick.window.high_km_s.max(thin.window.high_km_s);
-        let margin = high - low;
-        Window {
-            low_km_s: low - margin,
-            high_km_s: high + margin,
-        }
+    let no_mass = || PosteriorError::NoMass {
+        family: "sphere".to_owned(),
+    };
+    let low = thick.window.low_km_s.min(thin.window.low_km_s);
+    let high = thick.window.high_km_s.max(thin.window.high_km_s);
+    let range = Window {
+        low_km_s: low - (high - low),
+        high_km_s: high + (high - low),
     };
     let kinematics = kinematics(thick, thin, thin_line);
     let about = kinematics[0];
     let line_data = |prepared: &Prepared, line: &Line| {
         let shape = LineShape::new(line.rest_frequency_ghz, line.components.clone());
         let errors = shape_errors(prepared, settings.shape_error, about);
+        let narrowest = NARROWEST * about.sigma_km_s;
         LineData::new(
             prepared,
             &shape,
             range,
             settings.averaging,
-            0.6 * about.sigma_km_s,
+            narrowest,
             &errors,
         )
     };
     let data = [line_data(thick, lines.0), line_data(thin, lines.1)];
-    let mut target = Target::new(
-        [&data[0], &data[1]],
-        range,
-        &settings.priors,
-        settings.law.slope(),
-        settings.beam_ratio,
-    );
+    for (name, data) in ["thick", "thin"].into_iter().zip(&data) {
+        let channels = data.channels().len();
+        if channels < FEWEST_CHANNELS {
+            return Err(PosteriorError::TooFewChannels {
+                line: name,
+                channels,
+                needed: FEWEST_CHANNELS,
+            });
+        }
+    }
+    let priors = settings
+        .priors
+        .unwrap_or_else(|| ClumpPriors::of_line(lines.0.rest_frequency_ghz, is_to_ground(lines.0)));
+    let both = [&data[0], &data[1]];
+    let mut target = Target::new(both, range, &priors, law.slope(), settings.beam_ratio);
     let mut generator = ChaCha8Rng::seed_from_u64(settings.seed);
     let scales = scales(about.sigma_km_s);
-    let starts = starts(&mut target, &kinematics);
-    let peaks: Vec<Peak> = starts
+    let peaks: Vec<Peak> = starts(&mut target, &kinematics)
         .iter()
-        .filter_map(|start| ascend(&mut target, start, &scales, 40))
+        .filter_map(|start| ascend(&mut target, start, &scales, MOST_STEPS))
         .collect();
     let peaks = distinct(peaks, DIMENSIONS);
-    let draws =
-        sample(&mut target, &peaks, &settings.sampling, &mut generator).ok_or_else(|| {
-            PosteriorError::NoMass {
-                family: "sphere".to_owned(),
-            }
-        })?;
-    let v_in: Vec<(f64, f64)> = draws
-        .points
-        .iter()
-        .zip(&draws.weights)
-        .map(|(point, weight)| (point[place::V_IN] * point[place::LN_SIGMA].exp(), *weight))
+    let settled = settle(&mut target, &peaks, &settings.ensemble, &mut generator);
+    let draws = sample(
+        &mut target,
+        &settled,
+        &[],
+        &settings.sampling,
+        &mut generator,
+    )
+    .ok_or_else(no_mass)?;
+    let best = peaks.first().map(|peak| peak.point).ok_or_else(no_mass)?;
+    let pairs = draws.points.iter().zip(&draws.weights);
+    let v_in: Vec<(f64, f64)> = pairs
+        .map(|(point, weight)| (speed(point), *weight))
         .collect();
+    let residuals = residuals::residuals(&mut target, &best);
+    let [thick_k, thin_k] = target.best_profiles_k(&best);
+    let profile = |line: usize, temperature_k: Vec<f64>| ClumpProfile {
+        velocity_km_s: target.velocities(line).to_vec(),
+        temperature_k,
+    };
     Ok(ClumpPosterior {
-        law: settings.law,
-        v_in_km_s: interval(&v_in).ok_or_else(|| PosteriorError::NoMass {
-            family: "sphere".to_owned(),
-        })?,
+        law,
+        v_in_km_s: interval(&v_in).ok_or_else(no_mass)?,
         ln_evidence: draws.ln_integral,
         ln_evidence_err: draws.ln_integral_err,
         quality: draws.quality,
         evaluations: target.evaluations,
-        best: peaks[0].point,
+        best,
+        profiles: [profile(0, thick_k), profile(1, thin_k)],
+        residuals,
         draws,
     })
 }
 
+/// Whether a line's lower state is known to be the ground state: its energy is below that of a photon by
+/// far.
+fn is_to_ground(line: &Line) -> bool {
+    const SHARE: f64 = 0.1;
+    let photon_k = photon_temperature_k(line.rest_frequency_ghz);
+    line.transition()
+        .and_then(|transition| transition.upper_energy_k)
+        .is_some_and(|upper_k| upper_k - photon_k < SHARE * photon_k)
+}
+
+/// Most steps toward a peak.
+const MOST_STEPS: usize = 40;
+
+/// Rough sizes of the coordinates.
 fn scales(sigma_km_s: f64) -> Point {
     [
         0.3 * sigma_km_s,
@@ -208,16 +383,14 @@ fn scales(sigma_km_s: f64) -> Point {
     ]
 }
 
-/// Candidates of each sign that are followed to a peak.
-const FOLLOWED: usize = 1;
-
+/// The most promising candidate of each sign of the speed.
 fn starts(target: &mut Target<'_>, kinematics: &[Kinematics]) -> Vec<Point> {
     let middle = target.densities().map(|density| density.mean);
-    let mut candidates: Vec<(f64, Point)> = Vec::new();
+    let mut best: [Option<(f64, Point)>; 2] = [None; 2];
     for about in kinematics {
         for speed in [-1.2, -0.6, -0.25, 0.25, 0.6, 1.2] {
             for depth in [3.0f64, 12.0, 40.0] {
-                for collisions in [0.005f64, 0.05, 0.4] {
+                for thermal in [-0.75, 0.0, 0.75] {
                     for factor in [0.85f64, 0.65] {
                         let mut point = [0.0; MOST_DIMENSIONS];
                         point[1..DIMENSIONS].copy_from_slice(&middle);
@@ -225,25 +398,17 @@ fn starts(target: &mut Target<'_>, kinematics: &[Kinematics]) -> Vec<Point> {
                         point[place::LN_SIGMA] = (factor * about.sigma_km_s).ln();
                         point[place::V_IN] = speed;
                         point[place::LN_DEPTH] = depth.ln();
-                        point[place::LN_COLLISIONS] = collisions.ln();
+                        let collisions = target.densities()[place::LN_COLLISIONS - 1];
+                        point[place::LN_COLLISIONS] += thermal * collisions.deviation;
                         let ln = target.ln(&point);
-                        if ln.is_finite() {
-                            candidates.push((ln, point));
+                        let kept = &mut best[usize::from(speed > 0.0)];
+                        if ln.is_finite() && kept.is_none_or(|(highest, _)| ln > highest) {
+                            *kept = Some((ln, point));
                         }
                     }
                 }
             }
         }
     }
-    candidates.sort_by(|a, b| b.0.total_cmp(&a.0));
-    let mut kept: Vec<Point> = Vec::new();
-    for (_, point) in candidates {
-        let of_sign = kept
-            .iter()
-            .filter(|other| other[place::V_IN] * point[place::V_IN] > 0.0);
-        if of_sign.count() < FOLLOWED {
-            kept.push(point);
-        }
-    }
-    kept
+    best.into_iter().flatten().map(|(_, point)| point).collect()
 }

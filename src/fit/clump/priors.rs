@@ -73,20 +73,27 @@ pub struct ClumpPriors {
     pub thin_scale: f64,
 }
 
-impl Default for ClumpPriors {
-    fn default() -> Self {
+impl ClumpPriors {
+    /// Priors for a thick line, nothing else known.
+    ///
+    /// Spontaneous emission outruns collisions the more, the higher the frequency: A ~ nu^3, and levels of
+    /// higher J have more ways to be reached. A line to the ground state loses opacity where upper levels
+    /// fill; of others that is open.
+    #[must_use]
+    pub fn of_line(frequency_ghz: f64, to_ground: bool) -> Self {
+        let ratio = 0.04 * (89.0 / frequency_ghz).powi(2);
         Self {
             ln_sigma: Normal::of_logarithm(0.6, 0.8),
             v_in_over_sigma: Normal::of(0.0, 1.0),
             ln_depth: Normal::of_logarithm(10.0, 1.2),
-            opacity_slope: Normal::of(1.7, 0.7),
-            ln_collision_ratio: Normal::of_logarithm(0.03, 1.5),
-            excess_slope: Normal::of(0.0, 0.5),
+            opacity_slope: Normal::of(1.7, 0.6),
+            ln_collision_ratio: Normal::of_logarithm(ratio, 2.0),
+            excess_slope: Normal::of(0.1, 0.5),
             temperature_slope: Normal::of(0.15, 0.25),
             ln_t_kin: Normal::of_logarithm(18.0, 0.5),
             ln_isotope_ratio: Normal::of_logarithm(50.0, 0.5),
             ln_beam_over_radius: Normal::of_logarithm(0.7, 0.7),
-            opacity_response: Normal::of(0.2, 0.7),
+            opacity_response: Normal::of(if to_ground { 0.4 } else { 0.0 }, 0.7),
             thin_slope: Normal::of(0.0, 0.5),
             thin_scale: 0.2,
         }

@@ -113,7 +113,7 @@ impl<'a> Target<'a> {
     }
 
     /// The clump and lines of a point.
-    pub fn clump(&self, point: &Point) -> (ReducedClump, [ReducedLine; 2]) {
+    fn clump(&self, point: &Point) -> (ReducedClump, [ReducedLine; 2]) {
         let sigma = point[place::LN_SIGMA].exp();
         let beam = point[place::LN_BEAM].exp();
         let components = |line: &LineData| -> Vec<Component> {
@@ -220,6 +220,30 @@ impl<'a> Target<'a> {
             + ln_prior;
         let thin_k = (thin.best * tie + both * thin.variance) / (tie + thin.variance);
         (ln, [both, thin_k])
+    }
+}
+
+impl Target<'_> {
+    /// Profiles of both lines, K, with the amplitudes that are best.
+    pub fn best_profiles_k(&mut self, point: &Point) -> [Vec<f64>; 2] {
+        let (_, amplitudes) = self.likelihood(point);
+        self.profiles(point);
+        [0, 1].map(|line| {
+            let column = self.columns[line].iter();
+            column.map(|value| amplitudes[line] * value).collect()
+        })
+    }
+
+    /// White residuals of both lines.
+    pub fn residuals(&mut self, point: &Point) -> [Vec<f64>; 2] {
+        let lines = self.lines;
+        let [thick, thin] = self.best_profiles_k(point);
+        [lines[0].residuals(thick), lines[1].residuals(thin)]
+    }
+
+    /// Velocities of a line's channels, km/s.
+    pub fn velocities(&self, line: usize) -> &[f64] {
+        self.lines[line].channels().sampling().velocity_km_s()
     }
 }
 

@@ -77,8 +77,10 @@ pub(in crate::fit) struct LineData {
     nuisances: Vec<Vec<f64>>,
     /// Sum of the data's squares over all channels, less the nuisances' part.
     squares: f64,
-    /// Channels less baseline terms, as many as count where the noise's correlation is uncertain.
+    /// Independent channels less baseline terms.
     values: f64,
+    /// Standard deviation of the noise, K, as likelihoods need it.
+    noise_k: f64,
 }
 
 impl LineData {
@@ -111,7 +113,7 @@ impl LineData {
         }
         let terms = prepared.baseline.order.map_or(0, |order| order + 1);
         let polynomials = polynomials(&parts, terms);
-        let bumps: Vec<Vec<f64>> = shape_errors
+        let mut bumps: Vec<Vec<f64>> = shape_errors
             .bumps(channels.sampling().velocity_km_s())
             .into_iter()
             .map(|mut bump| {
@@ -119,7 +121,17 @@ impl LineData {
                 bump
             })
             .collect();
-        let values = (data.len() - polynomials.len()) as f64 / inflation(prepared);
+        let whole = within(f64::NEG_INFINITY, f64::INFINITY);
+        let (independent, variance) = if prepared.noise.process.is_white() {
+            (1.0, 1.0)
+        } else {
+            independence(&whole, prepared.window, inflation(prepared))
+        };
+        let values = (data.len() - polynomials.len()) as f64 * independent;
+        let per_noise = 1.0 / variance.sqrt();
+        for value in data.iter_mut().chain(bumps.iter_mut().flatten()) {
+            *value *= per_noise;
+        }
         let nuisances = orthonormal(with_priors(polynomials, bumps, data.len()));
         data.resize(nuisances.first().map_or(data.len(), Vec::len), 0.0);
         let [mut squares] = products(&data, [&data]);
@@ -145,11 +157,27 @@ impl LineData {
             nuisances,
             squares,
             values,
+            noise_k: prepared.noise.rms_k / per_noise,
         }
     }
 
     pub fn channels(&self) -> &Channels {
         &self.channels
+    }
+
+    /// White residuals beside a profile (K), baseline and shape errors taken out.
+    pub fn residuals(&self, mut profile_k: Vec<f64>) -> Vec<f64> {
+        self.channels.whiten(&mut profile_k);
+        let channels = 0..profile_k.len();
+        let mut along = Vec::new();
+        self.along_nuisances(&profile_k, &channels, |_, one| along.push(one));
+        for (nuisance, along) in self.nuisances.iter().zip(along) {
+            for (value, nuisance) in profile_k.iter_mut().zip(nuisance) {
+                *value -= along * nuisance;
+            }
+        }
+        let pairs = self.data.iter().zip(profile_k);
+        pairs.map(|(datum, value)| datum - value).collect()
     }
 
     /// chi2 as a function of the amplitudes (K) of shapes in some channels, which become white; they
@@ -160,7 +188,7 @@ impl LineData {
         shapes: &mut [&mut [f64]],
         mean: f64,
     ) -> Quadratic {
-        let scale = 1.0 / self.channels.noise_k();
+        let scale = 1.0 / self.noise_k;
         let mut quadratic = Quadratic {
             count: shapes.len(),
             data: self.squares,
@@ -223,14 +251,65 @@ impl LineData {
     }
 }
 
-/// What an uncertain correlation of the noise does to variances: 1 + 10 p/N for a process of order p
+/// Lags over which white residuals are looked at for what correlation is left.
+const LAGS: usize = 10;
+
+/// Share of channels that are independent values where data of correlated noise were made white, and
+/// the variance of those values.
+///
+/// chi2 of n values whose power is P over frequency, 1 where they are white, has the mean n <P> and the
+/// variance 2 n <P^2>: that of n <P>^2/<P^2> independent values of variance <P^2>/<P> (Satterthwaite
+/// 1946, doi:10.2307/3002019). Noise that is oversampled keeps no power in part of the band, whatever
+/// process of finite order describes it: counted as independent, its empty part would lower the noise
+/// level of the rest. <P^2>/<P>^2 is the sum over lags of the squared autocorrelation in the line-free
+/// channels. `inflation` is what the process's uncertainty does: it raises the variance and lowers the
+/// number.
+fn independence(whole: &Channels, window: Window, inflation: f64) -> (f64, f64) {
+    let velocity = whole.sampling().velocity_km_s();
+    let data: Vec<f64> = whole
+        .whitened_data()
+        .iter()
+        .zip(velocity)
+        .map(|(value, v)| {
+            if window.contains(*v) {
+                0.0
+            } else {
+                value.clamp(-FARTHEST, FARTHEST)
+            }
+        })
+        .collect();
+    let free = velocity.iter().filter(|v| !window.contains(**v)).count();
+    let [square] = products(&data, [&data]);
+    if free == 0 || square <= 0.0 {
+        return (1.0 / inflation, inflation);
+    }
+    let mut sum = 1.0;
+    for lag in 1..=LAGS {
+        let mut product = 0.0;
+        for segment in whole.segments() {
+            let values = &data[segment.clone()];
+            if let Some(later) = values.get(lag..) {
+                let [along] = products(later, [values]);
+                product += along;
+            }
+        }
+        // less what noise alone gives
+        sum += 2.0 * ((product / square).powi(2) - 1.0 / free as f64);
+    }
+    let sum = sum.max(1.0);
+    let level = square / free as f64;
+    (1.0 / (sum * inflation), level * sum * inflation)
+}
+
+/// What an uncertain correlation of the noise does to variances: 1 + 6 p/N for a process of order p
 /// measured on N channels.
 ///
 /// White residuals of new channels have a variance 1 + 2 p/N of that of the channels that the process
 /// was fitted to, and the mean of true over measured power at one frequency is about as high: 4 p/N
-/// together. The rest is measured (docs/validation.md): smoothed noise is no process of finite order.
+/// together. The rest is measured, on amplitudes, shifts and widths of Gaussians in simulated smoothed
+/// noise: that is no process of finite order.
 fn inflation(prepared: &Prepared) -> f64 {
-    const PER_COEFFICIENT: f64 = 10.0;
+    const PER_COEFFICIENT: f64 = 6.0;
     let noise = &prepared.noise;
     1.0 + PER_COEFFICIENT * noise.process.order() as f64 / noise.channels.max(1) as f64
 }

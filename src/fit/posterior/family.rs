@@ -1,15 +1,8 @@
-//! Families of profiles of a pair: their coordinates, priors and shapes, and the physical parameters
-//! of a draw. Brightnesses are amplitudes of the shapes and no coordinates.
+//! Families of profiles of a pair: their coordinates, and the physical parameters of a draw.
+//! Brightnesses are amplitudes of the shapes and no coordinates.
 
-use super::data::LineData;
-use super::shapes::{
-    Combine, Hill, HillSurface, Part, TwoClouds, TwoLayers, absorbing, channels_of, emitting,
-};
-use crate::fit::priors::{Prior, Priors};
 use crate::model::{Model, RadiationTemperature};
-use crate::numeric::marginal::Quadratic;
-use crate::numeric::sampling::{Density, MOST_DIMENSIONS, Point};
-use crate::spectrum::Window;
+use crate::numeric::sampling::{Point, padded};
 
 /// A family of profiles.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Hash)]
@@ -59,8 +52,24 @@ impl Family {
     }
 
     /// The coordinate of the thin line's width: the last one.
-    fn thin_width(self) -> usize {
+    pub(super) fn thin_width(self) -> usize {
         self.dimensions() - 1
+    }
+
+    /// Coordinates of v_lsr, ln of the dispersion, inward speed over it and ln of the optical depth, as
+    /// far as there are such that can be given.
+    pub(super) fn constrained(self) -> [Option<usize>; 4] {
+        match self {
+            Self::Moving(_) => [Some(0), Some(1), Some(2), Some(3)],
+            Self::Still(_) => [Some(0), Some(1), None, Some(2)],
+            Self::Unabsorbed => [Some(0), Some(1), None, None],
+            Self::TwoClouds => [None; 4],
+        }
+    }
+
+    /// Whether its optical depth can be linked to the thin line's.
+    pub(super) fn has_depth(self) -> bool {
+        matches!(self, Self::Moving(_) | Self::Still(_))
     }
 
     /// Rough sizes of the coordinates, the first in units of `sigma_km_s`.
@@ -74,7 +83,30 @@ impl Family {
         }
     }
 
-    /// Names of the physical parameters.
+    /// Middle and deviations of the priors, with velocity and dispersion about given ones.
+    pub(super) fn broad(self, v_km_s: f64, sigma_km_s: f64) -> (Point, Point) {
+        let (v, sigma) = (0.5 * sigma_km_s, 0.35);
+        let ln_sigma = sigma_km_s.ln();
+        let thin = 1.08f64.ln();
+        match self {
+            Self::Moving(_) => (
+                padded(&[v_km_s, ln_sigma, 0.0, 4f64.ln(), thin]),
+                padded(&[v, sigma, 1.0, 1.0, 0.1]),
+            ),
+            Self::Still(_) => (
+                padded(&[v_km_s, ln_sigma, 4f64.ln(), thin]),
+                padded(&[v, sigma, 1.0, 0.1]),
+            ),
+            Self::Unabsorbed => (padded(&[v_km_s, ln_sigma, thin]), padded(&[v, sigma, 0.1])),
+            Self::TwoClouds => (
+                padded(&[v_km_s, ln_sigma, 0.0, 0.0, 4f64.ln(), 0.0, thin]),
+                padded(&[2.0 * v, sigma, 2.0, 0.4, 1.0, 0.7, 0.1]),
+            ),
+        }
+    }
+
+    /// Names of the physical parameters; where optical depths are linked, `isotope_ratio` and
+    /// `t_ex_thin_k` follow.
     #[must_use]
     pub fn parameters(self) -> Vec<&'static str> {
         let thin = ["peak_thin_k", "thin_width_ratio"];
@@ -145,216 +177,4 @@ impl Family {
         let ratio = point[self.thin_width()].exp();
         [kinematics, rest, vec![ratio]].concat()
     }
-}
-
-pub(super) fn padded(values: &[f64]) -> Point {
-    let mut point = [0.0; MOST_DIMENSIONS];
-    point[..values.len()].copy_from_slice(values);
-    point
-}
-
-/// Priors looked up once.
-#[derive(Clone, Copy, Debug)]
-struct Looked {
-    sigma: Prior,
-    v_in: Prior,
-    tau: Prior,
-    separation: Prior,
-    ratio: Prior,
-    tau_cloud: Prior,
-    brightness: Prior,
-    thin_width: Prior,
-    thick_k: f64,
-    thin_k: f64,
-}
-
-/// A family's posterior density, brightnesses, baselines and noise levels integrated out.
-pub(super) struct Target<'a> {
-    family: Family,
-    lines: [&'a LineData; 2],
-    range: Window,
-    priors: Looked,
-    /// Both shapes of the thick line, and that of the thin line.
-    shapes: [Vec<f64>; 3],
-}
-
-impl<'a> Target<'a> {
-    pub fn new(
-        family: Family,
-        (thick, thin): (&'a LineData, &'a LineData),
-        range: Window,
-        priors: &Priors,
-    ) -> Self {
-        let mean = |name: &str| match priors.of(name) {
-            Prior::Exponential { mean } => mean,
-            other => panic!("{}: brightnesses have exponential priors", other.text()),
-        };
-        let shapes = [thick, thick, thin].map(|line| vec![0.0; line.channels().len()]);
-        Self {
-            family,
-            lines: [thick, thin],
-            range,
-            priors: Looked {
-                sigma: priors.of("sigma_km_s"),
-                v_in: priors.of("v_in_over_sigma"),
-                tau: priors.of("tau"),
-                separation: priors.of("separation_over_sigma"),
-                ratio: priors.of("sigma_ratio"),
-                tau_cloud: priors.of("tau_cloud"),
-                brightness: priors.of("thin_brightness_ratio"),
-                thin_width: priors.of("thin_width_ratio"),
-                thick_k: mean("excess_thick_k"),
-                thin_k: mean("peak_thin_k"),
-            },
-            shapes,
-        }
-    }
-
-    fn ln_prior(&self, point: &Point) -> f64 {
-        if !(self.range.low_km_s..=self.range.high_km_s).contains(&point[0]) {
-            return f64::NEG_INFINITY;
-        }
-        let priors = &self.priors;
-        let velocity = -(self.range.high_km_s - self.range.low_km_s).ln();
-        let thin_width = point[self.family.thin_width()];
-        let shared = velocity
-            + priors.sigma.ln_density_of_logarithm(point[1])
-            + priors.thin_width.ln_density_of_logarithm(thin_width);
-        shared
-            + match self.family {
-                Family::Moving(_) => {
-                    priors.v_in.ln_density(point[2]) + priors.tau.ln_density_of_logarithm(point[3])
-                }
-                Family::Still(_) => priors.tau.ln_density_of_logarithm(point[2]),
-                Family::Unabsorbed => 0.0,
-                Family::TwoClouds => {
-                    priors.separation.ln_density(point[2])
-                        + priors.ratio.ln_density_of_logarithm(point[3])
-                        + priors.tau_cloud.ln_density_of_logarithm(point[4])
-                        + priors.brightness.ln_density_of_logarithm(point[5])
-                }
-            }
-    }
-
-    /// chi2 of the thick and of the thin line as functions of their amplitudes.
-    pub fn quadratics(&mut self, point: &Point) -> [Quadratic; 2] {
-        let (v_km_s, sigma_km_s) = (point[0], point[1].exp());
-        let part = |v_km_s: f64, sigma_km_s: f64, depth: f64| Part {
-            v_km_s,
-            sigma_km_s,
-            depth,
-        };
-        let halves = |v_in_km_s: f64, tau: f64| {
-            [v_in_km_s, -v_in_km_s].map(|along| part(v_km_s + along, sigma_km_s, tau))
-        };
-        let second_cloud = || (v_km_s + point[2] * sigma_km_s, sigma_km_s * point[3].exp());
-        let width = point[self.family.thin_width()].exp();
-        let front = part(v_km_s, width * sigma_km_s, 1.0);
-        let [thick, thin] = self.lines;
-        let (thick_k, thin_k) = (self.priors.thick_k, self.priors.thin_k);
-        let [both @ .., emitted] = &mut self.shapes;
-        let of_thick = match self.family {
-            Family::Moving(model) => {
-                let halves = halves(point[2] * sigma_km_s, point[3].exp());
-                slab(model, thick, halves, thick_k, both)
-            }
-            Family::Still(model) => slab(model, thick, halves(0.0, point[2].exp()), thick_k, both),
-            Family::Unabsorbed => emission(
-                thick,
-                &[part(v_km_s, sigma_km_s, 1.0)],
-                thick_k,
-                &mut both[0],
-            ),
-            Family::TwoClouds => {
-                let (v, sigma) = second_cloud();
-                let tau = point[4].exp();
-                let clouds = [part(v_km_s, sigma_km_s, tau), part(v, sigma, tau)];
-                absorption::<TwoClouds>(thick, clouds, 2, thick_k, both)
-            }
-        };
-        let of_thin = if self.family == Family::TwoClouds {
-            let (v, sigma) = second_cloud();
-            let rear = part(v, width * sigma, point[5].exp());
-            emission(thin, &[front, rear], thin_k, emitted)
-        } else {
-            emission(thin, &[front], thin_k, emitted)
-        };
-        [of_thick, of_thin]
-    }
-
-    /// Physical parameters of a point with brightnesses drawn given it.
-    pub fn physical(&mut self, point: &Point, generator: &mut impl rand::Rng) -> Vec<f64> {
-        let [thick, thin] = self.quadratics(point);
-        let (thick, [thin_k, _]) = (thick.draw(generator), thin.draw(generator));
-        let radiation = &self.lines[0].channels().line().radiation;
-        self.family.physical(point, radiation, thick, thin_k)
-    }
-}
-
-/// ln of dispersions and optical depths beyond these is taken as impossible, before shapes lose their
-/// digits.
-const LARGEST_LN: f64 = 12.0;
-
-impl Density for Target<'_> {
-    fn dimensions(&self) -> usize {
-        self.family.dimensions()
-    }
-
-    fn ln(&mut self, point: &Point) -> f64 {
-        if point[1..].iter().any(|value| value.abs() > LARGEST_LN) {
-            return f64::NEG_INFINITY;
-        }
-        let prior = self.ln_prior(point);
-        if prior == f64::NEG_INFINITY {
-            return prior;
-        }
-        let [thick, thin] = self.quadratics(point);
-        let ln = prior + thick.ln_marginal() + thin.ln_marginal();
-        if ln.is_finite() {
-            ln
-        } else {
-            f64::NEG_INFINITY
-        }
-    }
-}
-
-/// What a line's data say of Gaussian emission; `mean` is the prior mean of its brightness.
-fn emission(line: &LineData, parts: &[Part], mean: f64, shape: &mut [f64]) -> Quadratic {
-    let data = line.channels();
-    let channels = channels_of(parts, data.line(), data.sampling(), data.order());
-    let shape = &mut shape[..channels.len()];
-    let place = (data.sampling(), channels.clone());
-    emitting(data.line(), place, parts, shape);
-    line.quadratic(channels, &mut [shape], mean)
-}
-
-/// What they say of a slab's halves, front and rear.
-fn slab(
-    model: Model,
-    line: &LineData,
-    halves: [Part; 2],
-    mean: f64,
-    shapes: &mut [Vec<f64>; 2],
-) -> Quadratic {
-    match model {
-        Model::TwoLayer => absorption::<TwoLayers>(line, halves, 2, mean, shapes),
-        Model::HillSurface => absorption::<HillSurface>(line, halves, 2, mean, shapes),
-        _ => absorption::<Hill>(line, halves, 1, mean, shapes),
-    }
-}
-
-/// What they say of the first `count` shapes of a front and a rear part.
-fn absorption<C: Combine>(
-    line: &LineData,
-    parts: [Part; 2],
-    count: usize,
-    mean: f64,
-    [first, second]: &mut [Vec<f64>; 2],
-) -> Quadratic {
-    let data = line.channels();
-    let channels = channels_of(&parts, data.line(), data.sampling(), data.order());
-    let (first, second) = (&mut first[..channels.len()], &mut second[..channels.len()]);
-    let place = (data.sampling(), channels.clone());
-    absorbing::<C>(data.line(), place, parts, (first, second));
-    line.quadratic(channels, &mut [first, second][..count], mean)
 }

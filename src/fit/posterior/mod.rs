@@ -4,18 +4,23 @@
 //! six coordinates of kinematics and optical depth, is sampled. No least-squares fit is needed. The
 //! probabilities of hypotheses are made from these in `hypotheses`.
 
+mod constraints;
 mod data;
+mod draws;
 mod family;
+mod settings;
 mod shapes;
 mod starts;
+mod target;
 
 pub(in crate::fit) use data::LineData;
 pub use data::ShapeErrors;
+pub use draws::ModelDraw;
 pub use family::Family;
+pub use settings::{PosteriorError, PosteriorSettings, SHAPE_ERROR};
 pub(in crate::fit) use starts::{Kinematics, distinct, kinematics, shape_errors};
 
-use super::priors::Priors;
-use super::{Averaging, FitRange};
+use super::FitRange;
 use crate::constants::FWHM_PER_SIGMA;
 use crate::line::Line;
 use crate::measure::ThinLine;
@@ -23,119 +28,10 @@ use crate::model::{LineShape, Model};
 use crate::numeric::sampling::{Draws, ImportanceSettings, Quality, sample};
 use crate::prepare::Prepared;
 use crate::spectrum::Window;
-use family::Target;
+use constraints::Constraints;
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::SeedableRng;
-
-/// How posteriors are found.
-#[derive(Clone, Debug, PartialEq)]
-pub struct PosteriorSettings {
-    /// Slab models; each moving and at rest.
-    pub models: Vec<Model>,
-    /// Whether families that hypotheses need beside the moving models are sampled too.
-    pub hypotheses: bool,
-    /// Priors.
-    pub priors: Priors,
-    /// Velocities whose channels hold the line; `None` takes the line windows and as much again on
-    /// either side.
-    pub range: Option<FitRange>,
-    /// Standard deviation of the shape errors over the line's peak.
-    pub shape_error: f64,
-    /// How the model's value in a channel is formed.
-    pub averaging: Averaging,
-    /// How much is drawn.
-    pub sampling: ImportanceSettings,
-    /// Equal-weight draws that are kept of each family.
-    pub draws: usize,
-    /// Seed of all draws.
-    pub seed: u64,
-}
-
-/// Departure of clouds from every family's profile, over the peak.
-pub const SHAPE_ERROR: f64 = 0.03;
-
-impl Default for PosteriorSettings {
-    fn default() -> Self {
-        Self {
-            models: vec![Model::TwoLayer, Model::Hill],
-            hypotheses: true,
-            priors: Priors::default(),
-            range: None,
-            shape_error: SHAPE_ERROR,
-            averaging: Averaging::Channel,
-            sampling: ImportanceSettings::default(),
-            draws: 500,
-            seed: 1,
-        }
-    }
-}
-
-impl PosteriorSettings {
-    /// The same with as many effective draws, and as many that are kept.
-    #[must_use]
-    pub fn with_draws(mut self, draws: usize) -> Self {
-        let more = draws as f64 / self.draws as f64;
-        self.sampling.effective *= more;
-        self.sampling.round *= draws.div_ceil(self.draws);
-        self.draws = draws;
-        self
-    }
-}
-
-/// Why there is no posterior.
-#[derive(Clone, Debug, PartialEq, thiserror::Error)]
-pub enum PosteriorError {
-    /// No draws are asked for.
-    #[error("{draws} draws, expected at least {least}")]
-    TooFewDraws {
-        /// Draws asked for.
-        draws: usize,
-        /// Fewest that intervals need.
-        least: usize,
-    },
-    /// No slab model, or one without a posterior.
-    #[error("posterior of the {model} model, expected some of two-layer, hill, hill-surface")]
-    NoPosterior {
-        /// Name of the model; `no` where none was given.
-        model: &'static str,
-    },
-    /// Too few channels.
-    #[error("{channels} channels of the {line} line, expected at least {needed}")]
-    TooFewChannels {
-        /// Which line.
-        line: &'static str,
-        /// Channels in the range.
-        channels: usize,
-        /// Channels needed.
-        needed: usize,
-    },
-    /// The prior has no mass where the data are.
-    #[error("{family}: the priors have no mass where the data are, expected some")]
-    NoMass {
-        /// Name of the family.
-        family: String,
-    },
-}
-
-impl PosteriorError {
-    /// What to do about it.
-    #[must_use]
-    pub fn hint(&self) -> Option<String> {
-        Some(match self {
-            Self::TooFewDraws { .. } => "leave the number of draws out for the default".to_owned(),
-            Self::NoPosterior { .. } => {
-                "choose two-layer or hill beside it, or stop after least squares".to_owned()
-            }
-            Self::TooFewChannels { .. } => "widen the fitted range".to_owned(),
-            Self::NoMass { .. } => {
-                "check the priors that were replaced, and the range of velocities".to_owned()
-            }
-        })
-    }
-}
-
-/// Fewest draws for a 95 % interval.
-const FEWEST_DRAWS: usize = 100;
+use target::Target;
 
 /// Fewest channels of a line in the fitted range.
 const FEWEST_CHANNELS: usize = 10;
@@ -169,6 +65,11 @@ pub struct FamilyPosterior {
     pub quality: Quality,
     /// Evaluations of the posterior density, search for its peaks included.
     pub evaluations: usize,
+    /// Evidence of motion inward over that of motion of either sign; 0 without an inward speed.
+    pub inward: f64,
+    /// The same outward. Where nothing is given of v_in each sign has half of the prior, and these are
+    /// twice the shares of the posterior.
+    pub outward: f64,
     /// Weighted draws of v_in (km/s), of weights of sum 1; empty without an inward speed.
     pub v_in: Vec<(f64, f64)>,
     /// Names of the physical parameters.
@@ -285,8 +186,9 @@ pub fn pair_posterior(
     thin_line: Option<&ThinLine>,
     settings: &PosteriorSettings,
 ) -> Result<PairPosterior, PosteriorError> {
-    check(settings)?;
+    settings.check()?;
     let range = range(thick, thin, settings);
+    let constraints = Constraints::new(settings, range)?;
     let kinematics = starts::kinematics(thick, thin, thin_line);
     let narrowest = starts::NARROWEST * kinematics[0].sigma_km_s;
     let line_data = |prepared: &Prepared, line: &Line| {
@@ -307,8 +209,8 @@ pub fn pair_posterior(
         }
     }
     let mut found: Vec<FamilyPosterior> = Vec::new();
-    for (stream, family) in families(settings).into_iter().enumerate() {
-        let mut target = Target::new(family, (&data[0], &data[1]), range, &settings.priors);
+    for (stream, family) in settings.families().into_iter().enumerate() {
+        let mut target = Target::new(family, (&data[0], &data[1]), constraints, settings);
         let mut generator = ChaCha8Rng::seed_from_u64(settings.seed);
         generator.set_stream(stream as u64 + 1);
         let best = found.iter().map(|one| one.ln_evidence);
@@ -328,39 +230,6 @@ pub fn pair_posterior(
     }
     let families = found;
     Ok(PairPosterior { families, range })
-}
-
-/// The families of the settings.
-fn families(settings: &PosteriorSettings) -> Vec<Family> {
-    let moving = settings.models.iter().copied().map(Family::Moving);
-    if !settings.hypotheses {
-        return moving.collect();
-    }
-    let still = settings.models.iter().copied().map(Family::Still);
-    let others = [Family::Unabsorbed, Family::TwoClouds];
-    moving.chain(still).chain(others).collect()
-}
-
-fn check(settings: &PosteriorSettings) -> Result<(), PosteriorError> {
-    if settings.draws < FEWEST_DRAWS {
-        return Err(PosteriorError::TooFewDraws {
-            draws: settings.draws,
-            least: FEWEST_DRAWS,
-        });
-    }
-    if settings.models.is_empty() {
-        return Err(PosteriorError::NoPosterior { model: "no" });
-    }
-    match settings
-        .models
-        .iter()
-        .find(|model| !Family::Moving(**model).is_known())
-    {
-        Some(model) => Err(PosteriorError::NoPosterior {
-            model: model.name(),
-        }),
-        None => Ok(()),
-    }
 }
 
 fn range(thick: &Prepared, thin: &Prepared, settings: &PosteriorSettings) -> Window {
@@ -400,6 +269,7 @@ fn sampling(family: Family, settings: ImportanceSettings, highest: f64) -> Impor
     ImportanceSettings {
         round: settings.round * family.dimensions() / coordinates,
         effective: if moving { 1.0 } else { 0.5 } * settings.effective,
+        tails: if moving { settings.tails } else { 0.0 },
         negligible: if moving {
             f64::NEG_INFINITY
         } else {
@@ -416,28 +286,33 @@ fn family_posterior(
     (sampling, kept): (ImportanceSettings, usize),
     generator: &mut ChaCha8Rng,
 ) -> Result<FamilyPosterior, PosteriorError> {
-    let no_mass = || PosteriorError::NoMass {
-        family: family.name(),
-    };
-    let mut counted = Counted {
-        target,
-        evaluations: 0,
-    };
-    let peaks = starts::peaks(family, &mut counted, kinematics);
-    let draws: Draws = sample(&mut counted, &peaks, &sampling, generator).ok_or_else(no_mass)?;
-    let evaluations = counted.evaluations;
-    let v_in = match family {
-        Family::Moving(_) => draws
-            .points
-            .iter()
-            .zip(&draws.weights)
-            .filter(|(_, weight)| **weight > 0.0)
-            .map(|(point, weight)| (point[2] * point[1].exp(), *weight))
-            .collect(),
-        _ => Vec::new(),
-    };
-    let chosen = draws.equal(kept, generator);
-    let physical = chosen
+    let (peaks, searched) = starts::peaks(family, target, kinematics);
+    let broad = kinematics.iter().map(|about| target.broad(*about));
+    let broad: Vec<_> = broad.collect();
+    let draws: Draws = sample(target, &peaks, &broad, &sampling, generator).ok_or_else(|| {
+        PosteriorError::NoMass {
+            family: family.name(),
+        }
+    })?;
+    let (mut inward, mut outward) = (0.0, 0.0);
+    let mut v_in = Vec::new();
+    if matches!(family, Family::Moving(_)) {
+        for (point, weight) in draws.points.iter().zip(&draws.weights) {
+            if *weight <= 0.0 {
+                continue;
+            }
+            let full = target.full(point);
+            let before = target.inward_before(&full);
+            if full[2] > 0.0 {
+                inward += weight / before;
+            } else {
+                outward += weight / (1.0 - before);
+            }
+            v_in.push((full[2] * full[1].exp(), *weight));
+        }
+    }
+    let physical = draws
+        .equal(kept, generator)
         .iter()
         .map(|index| target.physical(&draws.points[*index], generator))
         .collect();
@@ -446,28 +321,13 @@ fn family_posterior(
         ln_evidence: draws.ln_integral,
         ln_evidence_err: draws.ln_integral_err,
         quality: draws.quality,
-        evaluations,
+        evaluations: searched + draws.evaluations,
+        inward,
+        outward,
         v_in,
-        names: family.parameters(),
+        names: target.names(),
         draws: physical,
     })
-}
-
-/// A density whose evaluations are counted.
-struct Counted<'t, 'a> {
-    target: &'t mut Target<'a>,
-    evaluations: usize,
-}
-
-impl crate::numeric::sampling::Density for Counted<'_, '_> {
-    fn dimensions(&self) -> usize {
-        self.target.dimensions()
-    }
-
-    fn ln(&mut self, point: &crate::numeric::sampling::Point) -> f64 {
-        self.evaluations += 1;
-        self.target.ln(point)
-    }
 }
 
 /// Dispersion of a thin line.

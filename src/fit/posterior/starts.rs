@@ -1,9 +1,10 @@
 //! Where the search for peaks of a posterior begins.
 
-use super::family::{Family, padded};
+use super::family::Family;
+use super::target::Target;
 use super::{ShapeErrors, sigma_km_s};
 use crate::measure::ThinLine;
-use crate::numeric::sampling::{Density, Peak, Point, climb};
+use crate::numeric::sampling::{Density, Peak, Point, climb, padded};
 use crate::prepare::Prepared;
 
 /// Width of the sharpest feature of a profile, in dispersions. Sharper ones, the edges of an opaque
@@ -103,21 +104,27 @@ const KNOWN: f64 = 0.2;
 /// Peaks lower than the highest by more than this hold nothing.
 const DEEPEST: f64 = 15.0;
 
-/// The peaks of a family that differ and matter.
+/// The peaks of a family that differ and matter, and evaluations of the density on the way.
 pub(super) fn peaks(
     family: Family,
-    target: &mut impl Density,
+    target: &mut Target<'_>,
     kinematics: &[Kinematics],
-) -> Vec<Peak> {
-    let scales = family.scales(kinematics[0].sigma_km_s);
+) -> (Vec<Peak>, usize) {
+    let scales = target.scales(kinematics[0].sigma_km_s);
+    let starts = starts(family, target, kinematics);
+    let dimensions = target.dimensions();
+    let mut counted = Counted {
+        target,
+        evaluations: starts.1,
+    };
     let mut tops: Vec<(Point, f64)> = Vec::new();
-    for start in starts(family, target, kinematics) {
+    for start in starts.0 {
         let known = |point: &Point| {
             tops.iter().any(|(top, _)| {
-                (0..family.dimensions()).all(|i| (point[i] - top[i]).abs() < KNOWN * scales[i])
+                (0..dimensions).all(|i| (point[i] - top[i]).abs() < KNOWN * scales[i])
             })
         };
-        tops.extend(climb(target, &start, &scales, STEPS, known));
+        tops.extend(climb(&mut counted, &start, &scales, STEPS, known));
     }
     let highest = tops
         .iter()
@@ -126,38 +133,62 @@ pub(super) fn peaks(
     let peaks = tops
         .into_iter()
         .filter(|(_, ln)| highest - ln < DEEPEST)
-        .map(|(point, ln)| Peak::measured(target, point, ln, &scales))
+        .map(|(point, ln)| Peak::measured(&mut counted, point, ln, &scales))
         .collect();
-    distinct(peaks, family.dimensions())
+    (distinct(peaks, dimensions), counted.evaluations)
 }
 
-/// The most promising candidates of a family.
-fn starts(family: Family, target: &mut impl Density, kinematics: &[Kinematics]) -> Vec<Point> {
-    let mut candidates: Vec<(f64, Point)> = kinematics
+/// A density whose evaluations are counted.
+struct Counted<'t, 'a> {
+    target: &'t mut Target<'a>,
+    evaluations: usize,
+}
+
+impl Density for Counted<'_, '_> {
+    fn dimensions(&self) -> usize {
+        self.target.dimensions()
+    }
+
+    fn ln(&mut self, point: &Point) -> f64 {
+        self.evaluations += 1;
+        self.target.ln(point)
+    }
+}
+
+/// The most promising candidates of a family, and how many there were.
+fn starts(
+    family: Family,
+    target: &mut Target<'_>,
+    kinematics: &[Kinematics],
+) -> (Vec<Point>, usize) {
+    let candidates = kinematics
         .iter()
-        .flat_map(|kinematics| candidates(family, *kinematics))
-        .map(|point| (target.ln(&point), point))
-        .filter(|(ln, _)| ln.is_finite())
+        .flat_map(|kinematics| candidates(family, *kinematics));
+    let mut ranked: Vec<(f64, Point, Point)> = candidates
+        .map(|point| {
+            let reduced = target.reduced(&point);
+            (target.ln(&reduced), target.full(&reduced), reduced)
+        })
         .collect();
-    candidates.sort_by(|a, b| b.0.total_cmp(&a.0));
-    let scales = family.scales(kinematics[0].sigma_km_s);
+    let count = ranked.len();
+    ranked.retain(|(ln, ..)| ln.is_finite());
+    ranked.sort_by(|a, b| b.0.total_cmp(&a.0));
+    let scales = target.scales(kinematics[0].sigma_km_s);
     let signed = matches!(family, Family::Moving(_) | Family::TwoClouds);
-    let mut kept: Vec<Point> = Vec::new();
-    for (_, point) in candidates {
-        let same_sign = |other: &&Point| !signed || (other[2] > 0.0) == (point[2] > 0.0);
+    let mut kept: Vec<(Point, Point)> = Vec::new();
+    for (_, full, reduced) in ranked {
+        let same_sign = |other: &&(Point, Point)| !signed || (other.0[2] > 0.0) == (full[2] > 0.0);
         let of_sign = kept.iter().filter(same_sign).count();
-        let near = |other: &Point| {
-            let mut apart = 0.0;
-            for i in 0..family.dimensions() {
-                apart += ((point[i] - other[i]) / scales[i]).powi(2);
-            }
-            apart < 4.0
+        let near = |other: &(Point, Point)| {
+            let apart = (0..target.dimensions()).map(|i| (reduced[i] - other.1[i]) / scales[i]);
+            apart.map(|along| along * along).sum::<f64>() < 4.0
         };
         if of_sign < FOLLOWED && !kept.iter().any(near) {
-            kept.push(point);
+            kept.push((full, reduced));
         }
     }
-    kept
+    let points = kept.into_iter().map(|(_, reduced)| reduced);
+    (points.collect(), count)
 }
 
 /// ln of the thin line's width over the thick line's dispersion in every candidate.

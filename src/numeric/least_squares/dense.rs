@@ -55,6 +55,26 @@ pub struct NormalEquations {
     pub gram: [[f64; MAX_PARAMETERS]; MAX_PARAMETERS],
 }
 
+impl NormalEquations {
+    /// Sets the sums of the first `parameters` to zero; nothing else is read of a smaller problem.
+    pub(crate) fn clear(&mut self, parameters: usize) {
+        self.chi2 = 0.0;
+        self.gradient[..parameters].fill(0.0);
+        for row in &mut self.gram[..parameters] {
+            row[..parameters].fill(0.0);
+        }
+    }
+
+    /// Takes over the sums of the first `parameters`.
+    pub(super) fn take(&mut self, other: &Self, parameters: usize) {
+        self.chi2 = other.chi2;
+        self.gradient[..parameters].copy_from_slice(&other.gradient[..parameters]);
+        for (row, other) in self.gram.iter_mut().zip(&other.gram).take(parameters) {
+            row[..parameters].copy_from_slice(&other[..parameters]);
+        }
+    }
+}
+
 impl Default for NormalEquations {
     fn default() -> Self {
         Self {
@@ -134,7 +154,7 @@ impl Kernel for Products<'_> {
 /// factor. Returns the smallest pivot relative to the diagonal element it came from: about the
 /// inverse condition number when the diagonal is near one; zero or less when the matrix is not
 /// positive definite, and the factor is then unfinished.
-pub(super) fn cholesky(matrix: &mut Matrix, size: usize) -> f64 {
+pub(super) fn cholesky<const N: usize>(matrix: &mut [[f64; N]; N], size: usize) -> f64 {
     let mut smallest = f64::INFINITY;
     for k in 0..size {
         let diagonal = matrix[k][k];
@@ -157,7 +177,11 @@ pub(super) fn cholesky(matrix: &mut Matrix, size: usize) -> f64 {
 }
 
 /// Solves L L^T x = b in place for the factor of [`cholesky`].
-pub(super) fn cholesky_solve(factor: &Matrix, size: usize, x: &mut Vector) {
+pub(super) fn cholesky_solve<const N: usize>(
+    factor: &[[f64; N]; N],
+    size: usize,
+    x: &mut [f64; N],
+) {
     for k in 0..size {
         x[k] = (0..k).fold(x[k], |rest, i| rest - factor[k][i] * x[i]) / factor[k][k];
     }
@@ -173,13 +197,14 @@ pub(super) fn triangularise(matrix: &mut [f64], rows: usize, columns: usize, rig
         let (head, tail) = matrix.split_at_mut((k + 1) * rows);
         let reflector = &mut head[k * rows + k..];
         let norm = sum_of_squares(reflector).sqrt();
-        if norm == 0.0 {
+        // Half the squared length of the reflector, without cancellation.
+        let half_square = norm * (norm + reflector[0].abs());
+        // Nothing, or so little that its square has no digits: dividing by it would give NaN.
+        if half_square < f64::MIN_POSITIVE {
             continue;
         }
         let diagonal = -norm.copysign(reflector[0]);
         reflector[0] -= diagonal;
-        // The squared length of the reflector, without cancellation.
-        let half_square = norm * reflector[0].abs();
         let reflect = |values: &mut [f64]| {
             let factor = -dot(reflector, values) / half_square;
             for (value, element) in values.iter_mut().zip(reflector.iter()) {
@@ -203,6 +228,17 @@ mod tests {
         (0..count)
             .map(|i| (phase + 1.7 * i as f64).sin() + 0.1 * phase)
             .collect()
+    }
+
+    /// Wings of a very narrow line: their squares underflow.
+    #[test]
+    fn columns_whose_squares_vanish_leave_no_nan() {
+        for tiny in [1e-155, 1e-160, 1e-162, 1e-200, 5e-324] {
+            let mut matrix = [tiny, -tiny, tiny, tiny, tiny, -2.0 * tiny];
+            let mut right = [1.0, 2.0, 3.0];
+            triangularise(&mut matrix, 3, 2, &mut right);
+            assert!(matrix.iter().chain(&right).all(|value| value.is_finite()));
+        }
     }
 
     #[test]

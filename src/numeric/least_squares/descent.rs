@@ -130,7 +130,7 @@ impl Descent {
         let residuals = &mut workspace.residuals[..structure.rows()];
         let jacobian = &mut workspace.jacobian[..structure.numbers()];
         let linear = if let Some(sums) = problem.linearise(start, residuals, jacobian) {
-            Linearisation::of_sums(&sums, columns)
+            Linearisation::of_sums(sums, columns)
         } else {
             check_values(residuals, jacobian, &structure)?;
             Linearisation::new(jacobian, residuals, &structure, columns)
@@ -272,7 +272,7 @@ impl Descent {
         let residuals = &mut workspace.trial_residuals[..self.structure.rows()];
         let jacobian = &mut workspace.trial_jacobian[..self.structure.numbers()];
         let sums = problem.linearise(parameters, residuals, jacobian);
-        let chi2 = match &sums {
+        let chi2 = match sums {
             Some(sums) => sums.chi2,
             None => dense::sum_of_squares(residuals),
         };
@@ -284,14 +284,17 @@ impl Descent {
         if self.gain.is_nan() || self.gain < LEAST_GAIN || step.decrease <= 0.0 {
             return false;
         }
-        let linear = match sums {
-            Some(sums) => Linearisation::of_sums(&sums, self.columns),
-            None => Linearisation::new(jacobian, residuals, &self.structure, self.columns),
-        };
-        if !linear.is_finite() {
-            return false;
+        match sums {
+            Some(sums) if is_finite(sums, self.columns) => self.linear.take(sums),
+            Some(_) => return false,
+            None => {
+                let linear = Linearisation::new(jacobian, residuals, &self.structure, self.columns);
+                if !is_finite(&linear.sums, self.columns) {
+                    return false;
+                }
+                self.linear = linear;
+            }
         }
-        self.linear = linear;
         self.parameters = trial;
         self.chi2 = chi2;
         workspace.keep_trial();
@@ -537,9 +540,10 @@ impl Linearisation {
         }
     }
 
-    fn is_finite(&self) -> bool {
-        (0..self.columns)
-            .all(|j| self.sums.gram[j][j].is_finite() && self.sums.gradient[j].is_finite())
+    /// Takes over sums that are given without a Jacobian.
+    fn take(&mut self, sums: &NormalEquations) {
+        self.sums.take(sums, self.columns);
+        self.known = Known::Sums;
     }
 
     /// 2 g.d + d.J^T J d with its sign turned.
@@ -613,22 +617,41 @@ impl Linearisation {
         free: &[usize],
         shift: &mut Vector,
     ) -> bool {
-        let mut matrix = [[0.0; MAX_PARAMETERS]; MAX_PARAMETERS];
-        let mut x = [0.0; MAX_PARAMETERS];
+        match free.len() {
+            ..=4 => self.solve_small::<4>(damping, scale, free, shift),
+            5..=8 => self.solve_small::<8>(damping, scale, free, shift),
+            _ => self.solve_small::<MAX_PARAMETERS>(damping, scale, free, shift),
+        }
+    }
+
+    /// The same of at most `N` free parameters.
+    fn solve_small<const N: usize>(
+        &self,
+        damping: f64,
+        scale: &Vector,
+        free: &[usize],
+        shift: &mut Vector,
+    ) -> bool {
+        let mut matrix = [[0.0; N]; N];
+        let mut x = [0.0; N];
+        let mut inverse = [0.0; N];
+        for (inverse, &i) in inverse.iter_mut().zip(free) {
+            *inverse = 1.0 / scale[i];
+        }
         for (row, &i) in free.iter().enumerate() {
             for (column, &j) in free[..=row].iter().enumerate() {
-                matrix[row][column] = self.sums.gram[i][j] / (scale[i] * scale[j]);
+                matrix[row][column] = self.sums.gram[i][j] * inverse[row] * inverse[column];
             }
             matrix[row][row] += damping;
             let moved = dense::dot(&self.sums.gram[i][..self.columns], &shift[..self.columns]);
-            x[row] = -(self.sums.gradient[i] + moved) / scale[i];
+            x[row] = -(self.sums.gradient[i] + moved) * inverse[row];
         }
         if dense::cholesky(&mut matrix, free.len()) < SMALLEST_PIVOT {
             return false;
         }
         dense::cholesky_solve(&matrix, free.len(), &mut x);
         for (row, &i) in free.iter().enumerate() {
-            shift[i] = x[row] / scale[i];
+            shift[i] = x[row] * inverse[row];
         }
         true
     }
@@ -677,6 +700,10 @@ impl Linearisation {
         }
         triangle
     }
+}
+
+fn is_finite(sums: &NormalEquations, columns: usize) -> bool {
+    (0..columns).all(|j| sums.gram[j][j].is_finite() && sums.gradient[j].is_finite())
 }
 
 impl Triangle {

@@ -94,7 +94,7 @@ pub trait Linearise {
         parameters: &[f64],
         residuals: &mut [f64],
         jacobian: &mut [f64],
-    ) -> Option<NormalEquations>;
+    ) -> Option<&NormalEquations>;
 }
 
 impl<P: LeastSquares + ?Sized> Linearise for P {
@@ -111,7 +111,7 @@ impl<P: LeastSquares + ?Sized> Linearise for P {
         parameters: &[f64],
         residuals: &mut [f64],
         jacobian: &mut [f64],
-    ) -> Option<NormalEquations> {
+    ) -> Option<&NormalEquations> {
         self.evaluate(parameters, residuals, Some(jacobian));
         None
     }
@@ -152,7 +152,7 @@ impl<P: LeastSquares + ?Sized> Linearise for P {
 /// assert_eq!(minimum.at_bound, [None, Some(Side::Upper)]);
 /// # Ok::<(), inrush::numeric::least_squares::LeastSquaresError>(())
 /// ```
-pub fn minimize<P: LeastSquares + ?Sized>(
+pub fn minimize<P: Linearise + ?Sized>(
     problem: &mut P,
     start: &[f64],
     bounds: &[Interval],

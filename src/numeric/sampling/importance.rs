@@ -18,8 +18,12 @@ pub struct ImportanceSettings {
     pub most_rounds: usize,
     /// Components of the first proposal about each peak, beside a narrow and a wide one.
     pub spread: usize,
+    /// How much wider than its peak the wide component is.
+    pub wider: f64,
     /// Effective sample size at which drawing ends.
     pub effective: f64,
+    /// Effective sample size in either tail (5 %) of every coordinate at which drawing ends.
+    pub tails: f64,
     /// Logarithm of an integral that does not matter: drawing ends after the second round where the
     /// integral is lower.
     pub negligible: f64,
@@ -28,11 +32,13 @@ pub struct ImportanceSettings {
 impl Default for ImportanceSettings {
     fn default() -> Self {
         Self {
-            round: 250,
+            round: 300,
             fewest_rounds: 3,
             most_rounds: 16,
             spread: 2,
-            effective: 500.0,
+            wider: 2.5,
+            effective: 600.0,
+            tails: 20.0,
             negligible: f64::NEG_INFINITY,
         }
     }
@@ -45,6 +51,8 @@ pub struct Quality {
     pub effective: f64,
     /// Shape of the largest weights' distribution; `None` where they are all alike.
     pub tail_shape: Option<f64>,
+    /// The same of the draws in the tails (lowest and highest 5 %) of the coordinate where it is least.
+    pub tails: f64,
     /// Largest difference of a coordinate's mean between the two halves of the draws (every other
     /// one), in units of the standard deviation.
     pub halves: f64,
@@ -59,11 +67,71 @@ impl Quality {
     /// Whether the draws can be trusted.
     #[must_use]
     pub fn holds(&self) -> bool {
-        let (effective, shape, halves) = Self::LIMITS;
-        self.effective >= effective
-            && self.tail_shape.is_none_or(|found| found <= shape)
-            && self.halves <= halves
+        self.doubts().is_empty()
     }
+
+    /// Why they cannot.
+    #[must_use]
+    pub fn doubts(&self) -> Vec<Doubt> {
+        let (effective, shape, halves) = Self::LIMITS;
+        let mut doubts = Vec::new();
+        if self.effective.is_nan() || self.effective < effective {
+            doubts.push(Doubt::FewEffective {
+                found: self.effective,
+                least: effective,
+            });
+        }
+        if let Some(found) = self.tail_shape
+            && found > shape
+        {
+            doubts.push(Doubt::HeavyTail { found, most: shape });
+        }
+        if self.halves.is_nan() || self.halves > halves {
+            doubts.push(Doubt::HalvesDiffer {
+                found: self.split_r_hat(),
+                most: r_hat(halves),
+            });
+        }
+        doubts
+    }
+
+    /// Split R-hat of the worst coordinate: the square root of the variance over that within halves
+    /// (Gelman & Rubin 1992, doi:10.1214/ss/1177011136), 1 where the halves of the draws agree.
+    #[must_use]
+    pub fn split_r_hat(&self) -> f64 {
+        r_hat(self.halves)
+    }
+}
+
+/// R-hat of two long sequences whose means differ by some deviations.
+fn r_hat(deviations: f64) -> f64 {
+    (1.0 + 0.5 * deviations * deviations).sqrt()
+}
+
+/// Why draws cannot be trusted.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub enum Doubt {
+    /// The weights are so uneven that few draws count.
+    FewEffective {
+        /// Effective sample size.
+        found: f64,
+        /// Fewest that can be trusted.
+        least: f64,
+    },
+    /// The largest weights fall off so slowly that averages over the draws need not converge.
+    HeavyTail {
+        /// Shape of the largest weights' distribution.
+        found: f64,
+        /// Largest that can be trusted.
+        most: f64,
+    },
+    /// Both halves of the draws have other means.
+    HalvesDiffer {
+        /// Split R-hat.
+        found: f64,
+        /// Largest that can be trusted.
+        most: f64,
+    },
 }
 
 /// Weighted draws of a density.
@@ -84,36 +152,39 @@ pub struct Draws {
 }
 
 /// Part of every proposal that keeps the first one: what adapting loses stays reachable.
-const KEPT_SHARE: f64 = 0.1;
+const KEPT_SHARE: f64 = 0.2;
 
-/// Powers of the weights that the proposals of the first rounds are fitted to: wider than the density.
-const POWERS: [f64; 3] = [0.3, 0.5, 0.7];
+/// Powers of the weights that the proposals of the rounds are fitted to, the last one for all that
+/// follow: wider than the density, in the first rounds much so.
+const POWERS: [f64; 4] = [0.3, 0.5, 0.7, 0.8];
 
-/// The wide component about each peak is this much wider.
-const WIDER: f64 = 2.5;
+/// Share of the broad components in the first, wide proposal.
+const BROAD_SHARE: f64 = 0.5;
 
-/// Weighted draws of a density about its peaks; `None` where no peak has a scatter or every draw has
-/// the density zero.
+/// Tails of a coordinate hold this share of the probability each.
+const TAIL: f64 = 0.05;
+
+/// Weighted draws of a density about its peaks; `broad` are centres and scatters of what may hold more
+/// than the peaks. `None` where no peak has a scatter or every draw has the density zero.
 pub fn sample(
     density: &mut impl Density,
     peaks: &[Peak],
+    broad: &[(Point, Matrix)],
     settings: &ImportanceSettings,
     generator: &mut impl Rng,
 ) -> Option<Draws> {
     let dimensions = density.dimensions();
     let chi_squared = Freedom::new()?;
-    let wide = |scatter: &Matrix| scatter.map(|row| row.map(|value| WIDER * WIDER * value));
-    let about = |scatter: fn(&Peak) -> Matrix| {
-        StudentMixture::new(
-            dimensions,
-            peaks.iter().map(move |peak| (peak.point, scatter(peak))),
-        )
+    let wider = settings.wider;
+    let wide = |scatter: &Matrix| scatter.map(|row| row.map(|value| wider * wider * value));
+    let about = |scatter: &dyn Fn(&Matrix) -> Matrix| {
+        let each = peaks
+            .iter()
+            .map(|peak| (peak.point, scatter(&peak.scatter)));
+        StudentMixture::new(dimensions, each)
     };
-    let narrow = about(|peak| peak.scatter);
-    let first = about(|peak| {
-        peak.scatter
-            .map(|row| row.map(|value| WIDER * WIDER * value))
-    });
+    let narrow = about(&|scatter| *scatter);
+    let first = about(&wide);
     let spread = StudentMixture::new(
         dimensions,
         (0..settings.spread * peaks.len()).map(|index| {
@@ -125,6 +196,12 @@ pub fn sample(
     if first.is_empty() {
         return None;
     }
+    let broad = StudentMixture::new(dimensions, broad.iter().copied());
+    let first = if broad.is_empty() {
+        first
+    } else {
+        first.with(&broad, BROAD_SHARE)
+    };
     let mut proposal = spread.with(&first, 0.3).with(&narrow, 0.3);
     let mut proposals: Vec<StudentMixture> = Vec::new();
     let mut points: Vec<Point> = Vec::new();
@@ -132,6 +209,7 @@ pub fn sample(
     // sum over rounds of the proposals' densities
     let mut proposed: Vec<f64> = Vec::new();
     let mut weights: Vec<f64> = Vec::new();
+    let mut ln_integral = f64::NEG_INFINITY;
     for round in 1..=settings.most_rounds {
         let before = points.len();
         for _ in 0..settings.round {
@@ -145,35 +223,32 @@ pub fn sample(
         }
         proposal.add_densities(&points, &mut proposed);
         proposals.push(proposal.clone());
-        let (ln_weights, found) = weights_of(&ln_density, &proposed)?;
+        let (ln_weights, found, ln_sum) = weights_of(&ln_density, &proposed)?;
         weights = found;
-        let enough = effective(&weights) >= settings.effective && round >= settings.fewest_rounds;
-        let negligible = round >= SURE_OF_NEGLIGIBLE
-            && ln_integral(&ln_density, &proposed, round) < settings.negligible;
+        // the mean over draws of density over mean proposal
+        ln_integral = ln_sum + (round as f64 / points.len() as f64).ln();
+        let enough = round >= settings.fewest_rounds
+            && effective(&weights) >= settings.effective
+            && (settings.tails <= 0.0 || tails(dimensions, &points, &weights) >= settings.tails);
+        let negligible = round >= SURE_OF_NEGLIGIBLE && ln_integral < settings.negligible;
         if enough || negligible || round == settings.most_rounds {
             break;
         }
-        let power = POWERS.get(round - 1).copied().unwrap_or(1.0);
+        let power = POWERS[(round - 1).min(POWERS.len() - 1)];
         let tempered = tempered(&ln_weights, power, (4 * dimensions * dimensions) as f64);
         let (kept, kept_weights) = worth_fitting(&points, &tempered);
         let refitted = proposal.refitted(&kept, &kept_weights);
         proposal = refitted.with(&first, KEPT_SHARE);
     }
-    Some(finish(
-        dimensions,
-        points,
-        &ln_density,
-        &proposed,
-        proposals.len(),
-        weights,
-    ))
+    Some(finish(dimensions, points, ln_integral, weights))
 }
 
 /// Rounds after which an integral can be called negligible.
 const SURE_OF_NEGLIGIBLE: usize = 2;
 
-/// Logarithms of weights, the largest 0, and normalised weights; `None` where all densities are zero.
-fn weights_of(ln_density: &[f64], proposed: &[f64]) -> Option<(Vec<f64>, Vec<f64>)> {
+/// Logarithms of weights, the largest 0, weights of sum 1, and the logarithm of the sum before; `None`
+/// where all densities are zero.
+fn weights_of(ln_density: &[f64], proposed: &[f64]) -> Option<(Vec<f64>, Vec<f64>, f64)> {
     let mut ln_weights: Vec<f64> = ln_density
         .iter()
         .zip(proposed)
@@ -188,18 +263,11 @@ fn weights_of(ln_density: &[f64], proposed: &[f64]) -> Option<(Vec<f64>, Vec<f64
     }
     let mut weights = ln_weights.clone();
     exp_in_place(&mut weights);
-    normalise(&mut weights);
-    Some((ln_weights, weights))
-}
-
-/// ln of the mean over draws of density over mean proposal.
-fn ln_integral(ln_density: &[f64], proposed: &[f64], rounds: usize) -> f64 {
-    let highest = ln_density.iter().copied().fold(f64::NEG_INFINITY, f64::max);
-    let ratios = ln_density
-        .iter()
-        .zip(proposed)
-        .map(|(ln, proposed)| (ln - highest).exp() * rounds as f64 / proposed);
-    highest + (ratios.sum::<f64>() / ln_density.len() as f64).ln()
+    let total: f64 = weights.iter().sum();
+    for weight in &mut weights {
+        *weight /= total;
+    }
+    Some((ln_weights, weights, highest + total.ln()))
 }
 
 fn normalise(weights: &mut [f64]) {
@@ -243,22 +311,15 @@ fn worth_fitting(points: &[Point], weights: &[f64]) -> (Vec<Point>, Vec<f64>) {
         .unzip()
 }
 
-fn finish(
-    dimensions: usize,
-    points: Vec<Point>,
-    ln_density: &[f64],
-    proposed: &[f64],
-    rounds: usize,
-    mut weights: Vec<f64>,
-) -> Draws {
+fn finish(dimensions: usize, points: Vec<Point>, ln_integral: f64, mut weights: Vec<f64>) -> Draws {
     let count = points.len() as f64;
-    let ln_integral = ln_integral(ln_density, proposed, rounds);
     let relative = (1.0 / effective(&weights) - 1.0 / count).max(0.0).sqrt();
     let shape = tail_shape(&mut weights);
     normalise(&mut weights);
     let quality = Quality {
         effective: effective(&weights),
         tail_shape: shape,
+        tails: tails(dimensions, &points, &weights),
         halves: halves(dimensions, &points, &weights),
     };
     Draws {
@@ -269,6 +330,34 @@ fn finish(
         points,
         weights,
     }
+}
+
+/// Smallest effective number of draws in a tail of a coordinate.
+fn tails(dimensions: usize, points: &[Point], weights: &[f64]) -> f64 {
+    let mut order: Vec<usize> = (0..points.len()).collect();
+    let mut least = f64::INFINITY;
+    for coordinate in 0..dimensions {
+        let value = |index: &usize| points[*index][coordinate];
+        order.sort_unstable_by(|a, b| value(a).total_cmp(&value(b)).then(a.cmp(b)));
+        let lowest = tail(&mut order.iter(), weights);
+        let highest = tail(&mut order.iter().rev(), weights);
+        least = least.min(lowest).min(highest);
+    }
+    least
+}
+
+/// Effective number of the first draws, up to the share of a tail.
+fn tail<'a>(order: &mut impl Iterator<Item = &'a usize>, weights: &[f64]) -> f64 {
+    let (mut sum, mut squares) = (0.0, 0.0);
+    for index in order {
+        let weight = weights[*index];
+        sum += weight;
+        squares += weight * weight;
+        if sum >= TAIL {
+            break;
+        }
+    }
+    sum * sum / squares
 }
 
 /// Largest difference of means between halves, in standard deviations.

@@ -6,6 +6,14 @@ pub const MOST_DIMENSIONS: usize = 12;
 /// Coordinates; those beyond a density's own are zero.
 pub type Point = [f64; MOST_DIMENSIONS];
 
+/// The point of these values; what it has more is 0.
+#[must_use]
+pub fn padded(values: &[f64]) -> Point {
+    let mut point = [0.0; MOST_DIMENSIONS];
+    point[..values.len()].copy_from_slice(values);
+    point
+}
+
 /// A square matrix by rows; rows and columns beyond a density's own are zero.
 pub type Matrix = [[f64; MOST_DIMENSIONS]; MOST_DIMENSIONS];
 
@@ -45,7 +53,7 @@ pub(super) fn inverse_lower(lower: &Matrix, dimensions: usize) -> Matrix {
 }
 
 /// Inverse of a positive definite matrix; `None` where it is not one.
-pub(super) fn inverse(matrix: &Matrix, dimensions: usize) -> Option<Matrix> {
+pub(crate) fn inverse(matrix: &Matrix, dimensions: usize) -> Option<Matrix> {
     let inverse = inverse_lower(&cholesky(matrix, dimensions)?, dimensions);
     let mut product = [[0.0; MOST_DIMENSIONS]; MOST_DIMENSIONS];
     for i in 0..dimensions {

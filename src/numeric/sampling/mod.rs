@@ -6,14 +6,16 @@
 //! rounds count, each under the mixture of all proposals (Cornuet et al. 2012,
 //! doi:10.1111/j.1467-9469.2011.00756.x). Everything follows from the generator handed in.
 
+mod ensemble;
 mod importance;
-mod matrix;
+pub(crate) mod matrix;
 mod mixture;
 mod pareto;
 mod peak;
 
-pub use importance::{Draws, ImportanceSettings, Quality, sample};
-pub use matrix::{MOST_DIMENSIONS, Matrix, Point};
+pub use ensemble::{EnsembleSettings, settle};
+pub use importance::{Doubt, Draws, ImportanceSettings, Quality, sample};
+pub use matrix::{MOST_DIMENSIONS, Matrix, Point, padded};
 pub use mixture::StudentMixture;
 pub(crate) use mixture::uniform;
 pub use pareto::tail_shape;

@@ -373,7 +373,7 @@ impl RankFigure {
             let half = chances.place(0.5, 0.0).0;
             canvas.line(&[(half, top), (half, bottom)], solid(GUIDE, 0.25))?;
             for (index, bar) in self.bars.iter().enumerate() {
-                self.bar(
+                draw_bar(
                     canvas,
                     bar,
                     middle(index),
@@ -394,43 +394,43 @@ impl RankFigure {
             amounts.draw(canvas, (Some(&name), None))
         })
     }
+}
 
-    fn bar(
-        &self,
-        canvas: &Canvas<'_>,
-        bar: &RankBar,
-        y: f64,
-        (places, chances, amounts): (&Frame, &Frame, &Frame),
-        unit: f64,
-    ) -> Drawn {
-        let color = GROUPS[bar.group % GROUPS.len()];
-        if let Some((low, high)) = bar.places {
-            let ends = [
-                (places.place(low - 0.4, 0.0).0, y),
-                (places.place(high + 0.4, 0.0).0, y),
-            ];
-            canvas.line(&ends, solid(color, 1.1))?;
-        }
-        mark(
-            canvas,
-            (places.place(bar.place as f64, 0.0).0, y),
-            bar.group,
-            false,
-        )?;
-        if let Some(p_infall) = bar.p_infall {
-            let ends = [
-                (chances.across.start_mm, y),
-                (chances.place(p_infall, 0.0).0, y),
-            ];
-            canvas.line(&ends, solid(color, 1.4))?;
-        }
-        if let Some(one) = bar.quantity {
-            let at = |value: f64| amounts.place(value / unit, 0.0).0;
-            canvas.line(&[(at(one.low), y), (at(one.high), y)], solid(color, 0.3))?;
-            mark(canvas, (at(one.value), y), bar.group, true)?;
-        }
-        Ok(())
+/// The three marks of a source.
+fn draw_bar(
+    canvas: &Canvas<'_>,
+    bar: &RankBar,
+    y: f64,
+    (places, chances, amounts): (&Frame, &Frame, &Frame),
+    unit: f64,
+) -> Drawn {
+    let color = GROUPS[bar.group % GROUPS.len()];
+    if let Some((low, high)) = bar.places {
+        let ends = [
+            (places.place(low - 0.4, 0.0).0, y),
+            (places.place(high + 0.4, 0.0).0, y),
+        ];
+        canvas.line(&ends, solid(color, 1.1))?;
     }
+    mark(
+        canvas,
+        (places.place(bar.place as f64, 0.0).0, y),
+        bar.group,
+        false,
+    )?;
+    if let Some(p_infall) = bar.p_infall {
+        let ends = [
+            (chances.across.start_mm, y),
+            (chances.place(p_infall, 0.0).0, y),
+        ];
+        canvas.line(&ends, solid(color, 1.4))?;
+    }
+    if let Some(one) = bar.quantity {
+        let at = |value: f64| amounts.place(value / unit, 0.0).0;
+        canvas.line(&[(at(one.low), y), (at(one.high), y)], solid(color, 0.3))?;
+        mark(canvas, (at(one.value), y), bar.group, true)?;
+    }
+    Ok(())
 }
 
 /// The power of ten that keeps an axis' numbers short; 0 where they are short already.

@@ -2,7 +2,7 @@
 
 use super::{Calibration, Injection, Level, NINE_IN_TEN, Needed, Share};
 use crate::report::{
-    self, Column, Kind, ReportError, Row, Schema, Table, Value, rounded, rounded_plain,
+    self, Column, Kind, Row, Schema, Table, TableFiles, Value, rounded, rounded_plain,
 };
 use crate::run::{PairOutcome, RunError, RunSheet};
 use std::fmt::Write as _;
@@ -29,6 +29,7 @@ fn schema(columns: Vec<Column>) -> Result<Schema, RunError> {
 
 const KM_S: Option<&str> = Some("km/s");
 
+#[rustfmt::skip]
 fn calibration_schema() -> Result<Schema, RunError> {
     use Kind::{Integer, Real, Text};
     let mut columns = vec![
@@ -36,30 +37,10 @@ fn calibration_schema() -> Result<Schema, RunError> {
         column("thick_line", None, Text, "The optically thick line"),
         column("thin_line", None, Text, "The optically thin line"),
         column("model", None, Text, "The injected model"),
-        column(
-            "errors",
-            None,
-            Text,
-            "Where speeds and errors come from: posterior, or formal",
-        ),
-        column(
-            "noise_factor",
-            None,
-            Real,
-            "Noise over the observation's own",
-        ),
-        column(
-            "signal_to_noise",
-            None,
-            Real,
-            "Peak of the injected thick line over the noise of a channel",
-        ),
-        column(
-            "true_v_in_km_s",
-            KM_S,
-            Real,
-            "Inward speed of the pairs that move",
-        ),
+        column("errors", None, Text, "Where speeds and errors come from: posterior, or formal"),
+        column("noise_factor", None, Real, "Noise over the observation's own"),
+        column("signal_to_noise", None, Real, "Peak of the injected thick line over the noise of a channel"),
+        column("true_v_in_km_s", KM_S, Real, "Inward speed of the pairs that move"),
     ];
     for (prefix, pairs) in [("", "pairs that move"), ("rest_", "pairs at rest")] {
         let mut add = |name: &str, unit, kind, text: &str| {
@@ -71,68 +52,18 @@ fn calibration_schema() -> Result<Schema, RunError> {
         add("with_speed", None, Integer, "Pairs with a speed");
         add("bias_km_s", KM_S, Real, "Median of found less true speed");
         add("bias_km_s_err", KM_S, Real, "Standard error of the bias");
-        add(
-            "scatter_km_s",
-            KM_S,
-            Real,
-            "Half the width of the central 68 % of the speeds",
-        );
-        add(
-            "stated_km_s",
-            KM_S,
-            Real,
-            "Median of half the width of the stated 68 % intervals",
-        );
-        add(
-            "in68",
-            None,
-            Real,
-            "Share of 68 % intervals that hold the truth",
-        );
-        add(
-            "in95",
-            None,
-            Real,
-            "Share of 95 % intervals that hold the truth",
-        );
+        add("scatter_km_s", KM_S, Real, "Half the width of the central 68 % of the speeds");
+        add("stated_km_s", KM_S, Real, "Median of half the width of the stated 68 % intervals");
+        add("in68", None, Real, "Share of 68 % intervals that hold the truth");
+        add("in95", None, Real, "Share of 95 % intervals that hold the truth");
     }
     columns.extend([
-        column(
-            "found",
-            None,
-            Real,
-            "Share of the pairs that move in which motion of that sign is found",
-        ),
-        column(
-            "found_lo95",
-            None,
-            Real,
-            "Lower end of the 95 % interval of found",
-        ),
-        column(
-            "found_hi95",
-            None,
-            Real,
-            "Upper end of the 95 % interval of found",
-        ),
-        column(
-            "false_alarms",
-            None,
-            Real,
-            "Share of the pairs at rest in which infall is found",
-        ),
-        column(
-            "false_alarms_lo95",
-            None,
-            Real,
-            "Lower end of the 95 % interval of false_alarms",
-        ),
-        column(
-            "false_alarms_hi95",
-            None,
-            Real,
-            "Upper end of the 95 % interval of false_alarms",
-        ),
+        column("found", None, Real, "Share of the pairs that move in which motion of that sign is found"),
+        column("found_lo95", None, Real, "Lower end of the 95 % interval of found"),
+        column("found_hi95", None, Real, "Upper end of the 95 % interval of found"),
+        column("false_alarms", None, Real, "Share of the pairs at rest in which infall is found"),
+        column("false_alarms_lo95", None, Real, "Lower end of the 95 % interval of false_alarms"),
+        column("false_alarms_hi95", None, Real, "Upper end of the 95 % interval of false_alarms"),
     ]);
     for (_, name, words) in ASKED {
         columns.push(column(
@@ -449,21 +380,12 @@ pub fn write_calibration(
         ("calibration", calibration_table(calibration)?),
         ("injections", injections_table(calibration)?),
     ];
-    for (stem, mut table) in tables {
-        table.meta.clone_from(&meta);
-        let formats: [(
-            &str,
-            fn(&Table, &mut dyn std::io::Write) -> Result<(), ReportError>,
-        ); 3] = [
-            ("csv", |table, writer| report::write_csv(table, writer)),
-            ("ecsv", |table, writer| report::write_ecsv(table, writer)),
-            ("fits", |table, writer| report::write_fits(table, writer)),
-        ];
-        for (kind, format) in formats {
-            let path = directory.join(format!("{stem}.{kind}"));
-            report::files::write_atomically(&path, |writer| format(&table, writer))?;
-            written.push(path);
+    for (stem, table) in tables {
+        let mut files = TableFiles::begin(directory, stem, table.schema(), meta.clone())?;
+        for row in table.rows() {
+            files.push(row)?;
         }
+        written.extend(files.finish()?);
     }
     let mut write = |name: &str, bytes: &[u8]| {
         let path = directory.join(name);

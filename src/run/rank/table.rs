@@ -83,23 +83,33 @@ impl SampleTable {
             .trim(csv::Trim::All)
             .flexible(true)
             .from_reader(text.as_bytes());
-        let mut records = reader.records().map(|record| {
-            record.map_err(|error| {
-                let line = error.position().map_or(1, csv::Position::line);
-                at(line).error(&error.to_string(), "a row of CSV", "")
+        let mut records = reader.records();
+        let mut lines = Lines {
+            text,
+            byte: 0,
+            line: 1,
+        };
+        let mut next = || -> Option<Result<(csv::StringRecord, u64), RunError>> {
+            Some(match records.next()? {
+                Ok(record) => {
+                    let line = lines.of(&record);
+                    Ok((record, line))
+                }
+                Err(error) => {
+                    let line = error.position().map_or(1, csv::Position::line);
+                    Err(at(line).error(&error.to_string(), "a row of CSV", ""))
+                }
             })
-        });
-        let header = records
-            .next()
-            .transpose()?
-            .ok_or_else(|| at(1).error("an empty table", "a line of column names", HEADER_HINT))?;
-        let header_line = header.position().map_or(1, csv::Position::line);
+        };
+        let (header, header_line) = next().ok_or_else(|| {
+            at(1).error("an empty table", "a line of column names", HEADER_HINT)
+        })??;
         let names: Vec<&str> = header.iter().collect();
         let roles = roles(&names, &at(header_line))?;
         let mut rows = Vec::new();
-        for record in records {
-            let record = record?;
-            let place = at(record.position().map_or(1, csv::Position::line));
+        while let Some(record) = next() {
+            let (record, line) = record?;
+            let place = at(line);
             if record.iter().all(str::is_empty) {
                 continue;
             }
@@ -111,11 +121,8 @@ impl SampleTable {
             rows.push(row(&record, &names, &roles, &place)?);
         }
         if rows.is_empty() {
-            return Err(at(header_line).error(
-                "no row below the column names",
-                "a row a source",
-                "",
-            ));
+            let found = "no row below the column names";
+            return Err(at(header_line).error(found, "a row a source", ""));
         }
         check_sources(&rows, path)?;
         let unused = names.iter().zip(&roles);
@@ -156,6 +163,31 @@ impl SampleRow {
 
 const HEADER_HINT: &str =
     "a sample table begins with `id,thick_file,thin_file,thick_line,thin_line`";
+
+/// Lines of records: the library's own begin with the comments and empty lines above them.
+struct Lines<'a> {
+    text: &'a str,
+    byte: usize,
+    line: u64,
+}
+
+impl Lines<'_> {
+    /// The line of a record, from 1; records come in their order.
+    fn of(&mut self, record: &csv::StringRecord) -> u64 {
+        let begin = record.position().map_or(0, csv::Position::byte);
+        let begin = usize::try_from(begin).unwrap_or(usize::MAX);
+        while let Some(end) = self.text[self.byte..].find('\n') {
+            let line = self.text[self.byte..self.byte + end].trim();
+            let passed_over = line.is_empty() || line.starts_with('#');
+            if self.byte >= begin && !passed_over {
+                break;
+            }
+            self.byte += end + 1;
+            self.line += 1;
+        }
+        self.line
+    }
+}
 
 /// Where something stands.
 struct Place<'a> {
