@@ -132,7 +132,10 @@ fn map(folder: &Path, name: &str) -> (String, Vec<u8>) {
 #[test]
 fn maps_of_cubes_hold_what_is_in_the_sky() {
     let folder = tempfile::tempdir().unwrap();
-    let clump = Clump::default();
+    let clump = Clump {
+        size_arcsec: 22.0,
+        ..Clump::default()
+    };
     write_cubes(folder.path(), &clump);
     let counts = made(&run_of(folder.path(), SHEET, "out", 2));
     assert_eq!(
@@ -145,7 +148,9 @@ fn maps_of_cubes_hold_what_is_in_the_sky() {
     assert_eq!(rows.len(), 56);
     let mut deviations = Vec::new();
     let mut bright = 0;
-    for row in rows.iter().filter(|row| row["v_thin_km_s"] != "") {
+    let with_v_thin = || rows.iter().filter(|row| row["v_thin_km_s"] != "");
+    // A mean over the beam has the velocity of a wider piece of sky.
+    for row in with_v_thin().filter(|row| !row["cautions"].contains("-mean")) {
         let truth = clump.velocity_km_s(number(row, "dx_arcsec"));
         let off = (number(row, "v_thin_km_s") - truth) / number(row, "v_thin_km_s_err");
         deviations.push(off);
@@ -157,7 +162,7 @@ fn maps_of_cubes_hold_what_is_in_the_sky() {
         }
     }
     assert!(
-        bright > 8 && deviations.len() > 30,
+        bright > 8 && deviations.len() > 20,
         "{bright} {}",
         deviations.len()
     );
@@ -186,10 +191,8 @@ fn maps_of_cubes_hold_what_is_in_the_sky() {
         .take(72)
         .map(|bytes| f32::from_be_bytes(*bytes))
         .collect();
-    assert_eq!(
-        values.iter().filter(|value| value.is_finite()).count(),
-        deviations.len()
-    );
+    let there = values.iter().filter(|value| value.is_finite()).count();
+    assert_eq!(there, with_v_thin().count());
     for row in &rows {
         let (x, y) = row["id"].split_once('-').unwrap();
         let cell = 9 * (y.parse::<usize>().unwrap() - 1) + x.parse::<usize>().unwrap() - 1;
@@ -238,7 +241,8 @@ fn maps_are_the_same_bytes_for_any_threads_and_after_any_stop() {
     made(&run_of(folder.path(), SHEET, "three", 3));
     assert!(files(&folder.path().join("three")) == expected);
 
-    for stop_at in [1, 2] {
+    // Eight blocks in each of two passes.
+    for stop_at in [1, 8, 11] {
         let name = format!("stopped-{stop_at}");
         let mut run = run_of(folder.path(), SHEET, &name, 2);
         let stop = AtomicBool::new(false);

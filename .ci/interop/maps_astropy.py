@@ -67,7 +67,8 @@ def check(out):
                 assert abs(data[y, x] - value) <= 1e-6 * abs(value), (path, x, y, data[y, x], value)
         if name == "cautions":
             legend = {bit: header[f"BIT{bit}"] for bit in range(63) if f"BIT{bit}" in header}
-            seen = {code for codes in table["cautions"] for code in str(codes).strip().split(";") if code}
+            cautions = ["" if np.ma.is_masked(codes) else str(codes) for codes in table["cautions"]]
+            seen = {code for codes in cautions for code in codes.strip().split(";") if code}
             assert set(legend.values()) == seen, (legend, seen)
         assert abs(header["BMAJ"] * 3600 - 24.0) < 1e-9
         assert any("program = Inrush" in line for line in header["HISTORY"])

@@ -363,14 +363,8 @@ impl<'a> Sheet<'a> {
             self.east.start_mm + half[0] + 1.4,
             self.north.start_mm - half[0] - 1.4,
         );
-        let box_half = half[0] + 0.7;
-        canvas.rectangle(
-            (middle.0 - box_half, middle.1 - box_half),
-            (middle.0 + box_half, middle.1 + box_half),
-            PAPER,
-        )?;
         let (sin, cos) = beam.angle_deg.to_radians().sin_cos();
-        let outline: Vec<(f64, f64)> = (0..48)
+        let outline: Vec<(f64, f64)> = (0..=48)
             .map(|step| {
                 let (s, c) = (std::f64::consts::TAU * f64::from(step) / 48.0).sin_cos();
                 let (along, across) = (half[0] * c, half[1] * s);
@@ -379,7 +373,8 @@ impl<'a> Sheet<'a> {
                 (middle.0 - east, middle.1 - north)
             })
             .collect();
-        canvas.polygon(&outline, INK)
+        canvas.polygon(&outline, PAPER)?;
+        canvas.line(&outline, solid(INK, 0.3))
     }
 
     fn scale_bar(&self, canvas: &Canvas<'_>) -> Drawn {

@@ -21,9 +21,9 @@ use crate::spectrum::{Origin, RawSpectrum, Spectrum};
 use std::ops::Range;
 use std::path::Path;
 
-/// Pointings that are worked on and kept together: large enough that reading a block costs little, small
-/// enough that little is lost when a run is stopped.
-const BLOCK_POINTINGS: usize = 64;
+/// Pointings that are worked on and kept together, or a row of a cube where that is more: little is lost when
+/// a run is stopped.
+const BLOCK_POINTINGS: usize = 8;
 
 /// Rows and columns of a raster may miss their places by this share of the step.
 const RASTER_TOLERANCE: f64 = 0.15;
@@ -316,7 +316,7 @@ impl Field {
     pub fn blocks(&self) -> Vec<Range<usize>> {
         let length = match &self.sites {
             Sites::Pixels { width, .. } => width * (BLOCK_POINTINGS.div_ceil(*width)),
-            Sites::List { .. } => BLOCK_POINTINGS / 8,
+            Sites::List { .. } => BLOCK_POINTINGS,
         };
         (0..self.len())
             .step_by(length)

@@ -7,6 +7,7 @@ use super::{MapRun, Second, final_outcome};
 use crate::fit::Workspace;
 use crate::grid::cubes::pixel_arcsec;
 use crate::model::Sampling;
+use crate::numeric::robust::median;
 use crate::read::sky::{SkyFrame, SkyPosition};
 use crate::report::figure::{
     ColourScale, MapCells, MapFigure, ScaleBar, SpectraSheet, SpectrumPanel, svg_to_pdf, svg_to_png,
@@ -92,11 +93,9 @@ pub(super) fn write(
         path: folder.clone(),
         source,
     })?;
-    let Some(plane) = Plane::of(work) else {
-        return Ok(());
-    };
+    let plane = Plane::of(work);
     let doubles = |values: &[f32]| values.iter().copied().map(f64::from).collect::<Vec<f64>>();
-    let contoured = maps.column("integral_thin_k_km_s").map(doubles);
+    let contoured = (maps.column("integral_thin_k_km_s").map(doubles)).filter(|_| plane.is_some());
     let peak = (contoured.iter().flatten().copied())
         .filter(|value| value.is_finite())
         .fold(0.0, f64::max);
@@ -104,16 +103,12 @@ pub(super) fn write(
         let Some(values) = maps.column(name) else {
             continue;
         };
-        let mut note = contour_note(peak);
-        if colours != ColourScale::Sequential {
-            note = format!("blue: as infall makes it; {note}");
-        }
-        let figure = MapFigure {
-            title: title(run, work),
-            label: label.to_owned(),
-            note,
-            axes: axis_names(work),
-            cells: MapCells::Raster {
+        let notes = [
+            (colours != ColourScale::Sequential).then_some("blue: as infall makes it"),
+            (peak > 0.0).then_some("contours: thin line, 20, 40, 60, 80 % of its peak"),
+        ];
+        let cells = match &plane {
+            Some(plane) => MapCells::Raster {
                 width: plane.size.0,
                 height: plane.size.1,
                 first_arcsec: plane.first_arcsec,
@@ -123,9 +118,24 @@ pub(super) fn write(
                 contoured: contoured.clone().unwrap_or_default(),
                 levels: LEVELS.map(|share| share * peak).to_vec(),
             },
+            None => MapCells::Points {
+                step_arcsec: work.field.step_arcsec(),
+                points: (values.iter().enumerate())
+                    .filter_map(|(site, value)| {
+                        Some((work.field.offsets_arcsec(site)?, f64::from(*value)))
+                    })
+                    .collect(),
+            },
+        };
+        let figure = MapFigure {
+            title: title(run, work),
+            label: label.to_owned(),
+            note: notes.into_iter().flatten().collect::<Vec<_>>().join("; "),
+            axes: axis_names(work),
+            cells,
             colours,
             beam: work.field.beam(),
-            scale_bar: scale_bar(run, &plane),
+            scale_bar: scale_bar(run, work),
         };
         write_figure(&folder, name, &figure.svg()?, MAP_PX, written)?;
     }
@@ -150,14 +160,6 @@ fn write_figure(
         written.push(path);
     }
     Ok(())
-}
-
-fn contour_note(peak: f64) -> String {
-    if peak > 0.0 {
-        "contours: thin line's integral, 20, 40, 60, 80 % of its peak".to_owned()
-    } else {
-        String::new()
-    }
 }
 
 /// The raster about the reference position, as a plane.
@@ -253,10 +255,14 @@ fn axis_names(work: &Work<'_>) -> [String; 2] {
     }
 }
 
-/// A round length of at most a third of the plane, where the distance is known.
-fn scale_bar(run: &MapRun, plane: &Plane) -> Option<ScaleBar> {
+/// A round length of at most a third of the field, where the distance is known.
+fn scale_bar(run: &MapRun, work: &Work<'_>) -> Option<ScaleBar> {
     let distance_pc = run.sheet.source.distance_kpc?.estimate().value * PC_PER_KPC;
-    let width = plane.size.0 as f64 * plane.column_arcsec[0].hypot(plane.column_arcsec[1]);
+    let east = (0..work.field.len()).filter_map(|site| Some(work.field.offsets_arcsec(site)?[0]));
+    let (low, high) = east.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), east| {
+        (low.min(east), high.max(east))
+    });
+    let width = high - low + work.field.step_arcsec();
     let pc_per_arcsec = distance_pc / ARCSEC_PER_RADIAN;
     let most = width / 3.0 * pc_per_arcsec;
     let power = 10_f64.powf(most.log10().floor());
@@ -303,7 +309,7 @@ pub(super) fn write_spectra(
         .map(|(site, (x, y))| (site, ((x - columns.0) / every, (rows.1 - y) / every)))
         .collect();
     let mut panels = Vec::new();
-    let mut windows: Option<(f64, f64)> = None;
+    let mut windows = Vec::new();
     let ended = run.batch.run(
         shown,
         Workspace::new,
@@ -312,10 +318,9 @@ pub(super) fn write_spectra(
             Ok::<_, RunError>(outcome.map(|outcome| (panel(&outcome, place), window(&outcome))))
         },
         |_, drawn| match drawn {
-            Ok(Some((panel, (low, high)))) => {
+            Ok(Some((panel, window))) => {
                 panels.push(panel);
-                let (a, b) = windows.unwrap_or((low, high));
-                windows = Some((a.min(low), b.max(high)));
+                windows.push(window);
                 ControlFlow::Continue(())
             }
             Ok(None) => ControlFlow::Continue(()),
@@ -325,10 +330,14 @@ pub(super) fn write_spectra(
     if let ControlFlow::Break(error) = ended {
         return Err(error);
     }
-    let Some((low, high)) = windows else {
+    if panels.is_empty() {
         return Ok(());
-    };
-    let margin = 0.3 * (high - low);
+    }
+    // Of one pointing a window may be far too wide.
+    let middle =
+        |end: fn(&(f64, f64)) -> f64| median(&windows.iter().map(end).collect::<Vec<f64>>());
+    let (low, high) = (middle(|window| window.0), middle(|window| window.1));
+    let margin = 0.5 * (high - low);
     let of = |spread: (usize, usize)| (spread.1 - spread.0) / every + 1;
     let sheet = SpectraSheet {
         title: title(run, work),

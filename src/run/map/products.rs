@@ -81,7 +81,7 @@ pub(super) fn write(
             }
         };
         let row = schema.row_of(values)?;
-        maps.take(site, &row);
+        maps.take(work.field.cell(site).unwrap_or(site), &row);
         Ok(tables.push(&row)?)
     })?;
     counts.blank = counts.pointings - counts.skipped - counts.fitted - counts.unusable;
@@ -221,17 +221,15 @@ fn meta(run: &MapRun, work: &Work<'_>) -> Vec<(String, Value)> {
     meta
 }
 
-/// Every numeric column over the raster.
+/// Every numeric column over the raster, or, where there is none, one pointing after the other.
 pub(super) struct Maps {
-    /// Columns and rows of the raster; without one there are no maps.
-    size: Option<(usize, usize)>,
+    /// Columns and rows.
+    size: (usize, usize),
     /// A column's values, from the first that is there.
     columns: Vec<Option<Vec<f32>>>,
     /// Bits of the cautions by the order in which they came, and which code each is.
     bits: Vec<u64>,
     codes: Vec<String>,
-    /// Cell of each pointing.
-    cells: Vec<Option<usize>>,
 }
 
 /// Columns that say where a pointing is are no maps.
@@ -242,33 +240,19 @@ const MOST_CODES: usize = 63;
 
 impl Maps {
     fn new(field: &Field) -> Self {
-        let size = field.raster();
-        let count = size.map_or(0, |(width, height)| width * height);
+        let size = field.raster().unwrap_or((field.len(), 1));
         Self {
             size,
             columns: vec![None; columns::results().columns().len()],
-            bits: vec![0; count],
+            bits: vec![0; size.0 * size.1],
             codes: Vec::new(),
-            cells: Vec::new(),
         }
-        .with_cells(field)
-    }
-
-    fn with_cells(mut self, field: &Field) -> Self {
-        if self.size.is_some() {
-            self.cells = (0..field.len()).map(|site| field.cell(site)).collect();
-        }
-        self
     }
 
     // Maps are single precision, as their data are.
     #[allow(clippy::cast_possible_truncation)]
-    fn take(&mut self, site: usize, row: &Row) {
-        let (Some((width, height)), Some(cell)) =
-            (self.size, self.cells.get(site).copied().flatten())
-        else {
-            return;
-        };
+    fn take(&mut self, cell: usize, row: &Row) {
+        let (width, height) = self.size;
         for (column, value) in self.columns.iter_mut().zip(row.values()) {
             if let Value::Real(number) = value {
                 let values = column.get_or_insert_with(|| vec![f32::NAN; width * height]);
@@ -292,7 +276,7 @@ impl Maps {
         }
     }
 
-    /// Values of a column over the raster.
+    /// Values of a column, cell by cell.
     #[cfg(feature = "figures")]
     pub fn column(&self, name: &str) -> Option<&[f32]> {
         let schema = columns::results();
@@ -307,7 +291,8 @@ impl Maps {
         meta: &[(String, Value)],
         written: &mut Vec<PathBuf>,
     ) -> Result<(), RunError> {
-        let (Some((width, height)), Some(axes)) = (self.size, field.axes()) else {
+        // Pointings off any raster have a table alone.
+        let (Some((width, height)), Some(axes)) = (field.raster(), field.axes()) else {
             return Ok(());
         };
         let folder = directory.join("maps");
