@@ -559,6 +559,7 @@ fn pages_and_help_state_the_ranges_and_columns() {
     let (_, stated) = formats.split_once("Columns of `truth.csv`").unwrap();
     let stated: Vec<&str> = stated
         .lines()
+        .take_while(|line| !line.starts_with('#'))
         .filter_map(|line| line.strip_prefix("| `")?.split('`').next())
         .collect();
     let columns: Vec<&str> = text.lines().next().unwrap().split(',').collect();
