@@ -1,4 +1,5 @@
 //! Inward speeds of spheres from their spectra, against the speeds that they were made with.
+#![allow(clippy::unwrap_used)] // What fails below a test fails the test.
 
 #[path = "../examples/sphere_recovery/drawn.rs"]
 #[allow(dead_code, reason = "the example prints its text")]

@@ -87,6 +87,7 @@ fn attempt(random: &mut ChaCha8Rng, velocity_slope: f64) -> Result<Option<Drawn>
     let v_lsr_km_s = random.random_range(-50.0..50.0);
     let (name, transition, thick_line, thin_line) = LINES[random.random_range(0..LINES.len())];
     let molecule = Molecule::built_in(name)?;
+    #[expect(clippy::cast_possible_truncation, reason = "a few hundred channels")]
     let count = (20.0 * sigma_km_s / step).ceil() as i32;
     let shift = random.random_range(-0.5..0.5);
     let velocity: Vec<f64> = (-count..=count)

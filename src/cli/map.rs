@@ -17,6 +17,10 @@ use std::path::{Path, PathBuf};
 /// The run sheet names both lines and their files, or in [grid] a table of pointings.
 #[derive(Debug, Args)]
 #[command(verbatim_doc_comment)]
+#[expect(
+    clippy::struct_excessive_bools,
+    reason = "each is a switch of the command line"
+)]
 pub struct MapArguments {
     /// Run sheet (TOML).
     sheet: PathBuf,
@@ -108,7 +112,7 @@ pub fn run(
                 counts.unusable
             ));
             for problem in &counts.problems {
-                output.warning(problem);
+                Output::warning(problem);
             }
             output.note(&format!(
                 "wrote {} files into {}",

@@ -51,7 +51,7 @@ impl Output {
     }
 
     /// What could not be used while the rest was done.
-    pub fn warning(&self, text: &str) {
+    pub fn warning(text: &str) {
         Self::message(&format!("warning: {text}\n"));
     }
 

@@ -2,6 +2,7 @@
 
 use super::output::Output;
 use inrush::run::Progress;
+use std::fmt::Write as _;
 use std::time::{Duration, Instant};
 
 /// Time between two states of the line.
@@ -54,7 +55,8 @@ fn state(progress: Progress, items: &str, elapsed: Duration) -> String {
     if rate > 0.0 && rate.is_finite() {
         let left = (progress.items - progress.done) as f64 / rate;
         let rate = inrush::report::rounded_plain(rate);
-        line.push_str(&format!(", {rate} a second, {} left", duration(left)));
+        // writing to a string cannot fail
+        let _ = write!(line, ", {rate} a second, {} left", duration(left));
     }
     line
 }

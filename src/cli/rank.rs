@@ -20,6 +20,10 @@ use std::path::PathBuf;
 /// properties of the sources (distance_kpc, distance_kpc_err, mass_msun, ...) and their group.
 #[derive(Debug, Args)]
 #[command(verbatim_doc_comment)]
+#[expect(
+    clippy::struct_excessive_bools,
+    reason = "each is a switch of the command line"
+)]
 pub struct RankArguments {
     /// Sample table (CSV).
     table: PathBuf,
@@ -122,7 +126,7 @@ fn tell(ranking: &Ranking, run: &RankRun, output: &Output) -> Result<Exit, RunEr
         output.note(&format!("{count} spectra: {note}"));
     }
     for (id, line_pair, failure) in &ranking.failures {
-        output.warning(&format!("{id}, {line_pair}: {}", failure.message));
+        Output::warning(&format!("{id}, {line_pair}: {}", failure.message));
     }
     Output::data(&ranking.text).map_err(inrush::report::ReportError::Stream)?;
     let names: Vec<String> = (ranking.files.paths.iter())

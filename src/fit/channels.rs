@@ -197,7 +197,7 @@ impl Channels {
         Self {
             sampling: sampling(&self.sampling),
             coarse_sampling: sampling(&self.coarse_sampling),
-            segments: vec![0..data.len()],
+            segments: std::iter::once(0..data.len()).collect(),
             whitened_data: data,
             data_chi2,
             noise_k: scale * self.noise_k,

@@ -87,11 +87,11 @@ impl<'a> Solved<'a> {
                 panic!("no sums of {functions} functions and {parameters} parameters")
             }
         };
-        self.without_explained(sums, slopes.len() / self.data.len())
+        self.without_explained(&sums, slopes.len() / self.data.len())
     }
 
     /// Takes the part along the free functions out of the Gram matrix.
-    fn without_explained(&self, sums: Accumulated, parameters: usize) -> LineSums {
+    fn without_explained(&self, sums: &Accumulated, parameters: usize) -> LineSums {
         let mut gram = sums.gram;
         for p in 0..parameters {
             let along = Products {

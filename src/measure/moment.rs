@@ -37,7 +37,8 @@ pub fn first_moment(prepared: &Prepared, range: Window, detection_sigma: f64) ->
         })
     };
     let integral: f64 = terms().map(|(_, term)| term).sum();
-    if !(integral > detection_sigma * noise.error(&weights)) {
+    let threshold = detection_sigma * noise.error(&weights);
+    if integral.is_nan() || integral <= threshold {
         return None;
     }
     let moment = terms()

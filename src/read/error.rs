@@ -612,12 +612,13 @@ impl ReadError {
             ReadError::FitsCellAxes { .. } => "write one spectrum a cell".into(),
             ReadError::FitsManyAxes { .. } => "cut out the spectrum of one position".into(),
             ReadError::FitsAxisType { .. } => "convert the axis to frequency or velocity".into(),
-            ReadError::FitsTileCompressed { .. } => "uncompress the image first".into(),
+            ReadError::FitsTileCompressed { .. } | ReadError::FitsTiles { .. } => {
+                "uncompress the image first".into()
+            }
             ReadError::RepeatedPointing { .. } => {
                 "average spectra of one position, or leave one out".into()
             }
             ReadError::FitsCubeAxes { .. } => "check that this is the cube that you meant".into(),
-            ReadError::FitsTiles { .. } => "uncompress the image first".into(),
             ReadError::NoScratch { .. } => "make room, or uncompress the file elsewhere".into(),
             ReadError::FitsVariableLength { .. } => "write the column with a fixed length".into(),
             ReadError::FitsManyRows { columns, .. } => {

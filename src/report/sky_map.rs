@@ -13,7 +13,7 @@ const BLOCK: usize = 2880;
 #[derive(Clone, Debug, PartialEq)]
 pub enum MapAxes {
     /// On the sky.
-    Sky(Sky),
+    Sky(Box<Sky>),
     /// At offsets east and north (arcsec) from a position that is not known: those of the first pixel, and
     /// the step from one to the next, toward the west and the north.
     Offsets {

@@ -98,11 +98,17 @@ impl Plan {
         let mut cards = vec![
             text("CTYPE1", "RA---TAN"),
             card("CRVAL1", self.centre_deg[0]),
-            card("CRPIX1", (self.width as f64 + 1.0) / 2.0 + self.shift[0]),
+            card(
+                "CRPIX1",
+                f64::midpoint(self.width as f64, 1.0) + self.shift[0],
+            ),
             card("CDELT1", -self.pixel_arcsec / 3600.0),
             text("CTYPE2", "DEC--TAN"),
             card("CRVAL2", self.centre_deg[1]),
-            card("CRPIX2", (self.height as f64 + 1.0) / 2.0 + self.shift[1]),
+            card(
+                "CRPIX2",
+                f64::midpoint(self.height as f64, 1.0) + self.shift[1],
+            ),
             card("CDELT2", self.pixel_arcsec / 3600.0),
             text("CTYPE3", "VRAD"),
             text("CUNIT3", "km/s"),

@@ -105,6 +105,8 @@ const CLOUD_FROM: f64 = 1.5;
 const WINDOW: f64 = 0.7;
 const WINDOW_STEP: f64 = 0.35;
 const WINDOWS_TO: f64 = 4.0;
+/// Windows up to there on the other side, beside the first.
+const WINDOWS: u8 = 22;
 
 /// Excesses on either side that are as alike as a rotating clump's: their ratio.
 const ALIKE: f64 = 2.0;
@@ -127,9 +129,8 @@ pub(super) fn residuals(target: &mut Target<'_>, best: &Point) -> ClumpResiduals
         };
         let motion = best[place::V_IN].abs();
         let (wing, far) = (WINGS_FROM + motion, f64::INFINITY);
-        let windows: Vec<(f64, f64)> = (0..)
+        let windows: Vec<(f64, f64)> = (0..=WINDOWS)
             .map(|index| WINDOW_STEP * f64::from(index) - WINDOWS_TO)
-            .take_while(|x| *x <= WINDOWS_TO)
             .map(|x| (x, sum(1, x - 0.5 * WINDOW, x + 0.5 * WINDOW)))
             .collect();
         let (dip, depth) = windows.iter().fold(

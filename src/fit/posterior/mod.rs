@@ -210,7 +210,7 @@ pub fn pair_posterior(
     }
     let mut found: Vec<FamilyPosterior> = Vec::new();
     for (stream, family) in settings.families().into_iter().enumerate() {
-        let mut target = Target::new(family, (&data[0], &data[1]), constraints, settings);
+        let mut target = Target::new(family, (&data[0], &data[1]), &constraints, settings);
         let mut generator = ChaCha8Rng::seed_from_u64(settings.seed);
         generator.set_stream(stream as u64 + 1);
         let best = found.iter().map(|one| one.ln_evidence);

@@ -150,7 +150,8 @@ fn transpose(from: &[Complex<f32>], to: &mut [Complex<f32>], columns: usize, row
 
 /// The next length without prime factors above 5, which transforms are fast for.
 fn transform_length(least: usize) -> usize {
-    (least.max(1)..)
+    // a power of two comes before twice the least
+    (least.max(1)..=2 * least.max(1))
         .find(|length| {
             let mut rest = *length;
             for factor in [2, 3, 5] {

@@ -215,18 +215,15 @@ pub fn pair(
         },
     };
     let mut notes = Vec::new();
-    let (thick, thin, beam) = match kernel(&thin_beam, &thick_beam) {
-        Ok(missing) => {
-            let beams = (thin_beam, thick_beam);
-            let thin = onto(thin, missing, beams, &thick, scratch, &mut notes)?;
-            (thick, thin, thick_beam)
-        }
-        Err(_) => {
-            let missing = kernel(&thick_beam, &thin_beam).map_err(crossed)?;
-            let beams = (thick_beam, thin_beam);
-            let thick = onto(thick, missing, beams, &thin, scratch, &mut notes)?;
-            (thick, thin, thin_beam)
-        }
+    let (thick, thin, beam) = if let Ok(missing) = kernel(&thin_beam, &thick_beam) {
+        let beams = (thin_beam, thick_beam);
+        let thin = onto(thin, missing, beams, &thick, scratch, &mut notes)?;
+        (thick, thin, thick_beam)
+    } else {
+        let missing = kernel(&thick_beam, &thin_beam).map_err(crossed)?;
+        let beams = (thick_beam, thin_beam);
+        let thick = onto(thick, missing, beams, &thin, scratch, &mut notes)?;
+        (thick, thin, thin_beam)
     };
     Ok(CubePair {
         thick,

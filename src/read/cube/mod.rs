@@ -191,7 +191,7 @@ impl Cube {
     /// [`ReadError::Unreadable`] where the file cannot be read.
     pub fn spectra(&self, rows: Range<usize>, into: &mut Vec<f32>) -> Result<(), ReadError> {
         let ranges = [0..self.counts[0], rows, 0..self.counts[2]];
-        (self.pixels.read(ranges, Order::Spectra, into)).map_err(|error| self.unreadable(&error))
+        (self.pixels.read(&ranges, Order::Spectra, into)).map_err(|error| self.unreadable(&error))
     }
 
     /// Reads the spectrum of one pixel.
@@ -201,7 +201,7 @@ impl Cube {
     /// [`ReadError::Unreadable`] where the file cannot be read.
     pub fn spectrum(&self, [x, y]: [usize; 2], into: &mut Vec<f32>) -> Result<(), ReadError> {
         let ranges = [x..x + 1, y..y + 1, 0..self.counts[2]];
-        (self.pixels.read(ranges, Order::Spectra, into)).map_err(|error| self.unreadable(&error))
+        (self.pixels.read(&ranges, Order::Spectra, into)).map_err(|error| self.unreadable(&error))
     }
 
     /// Reads the planes of some channels: channel by channel, row by row, columns fastest; `into` is resized.
@@ -211,7 +211,7 @@ impl Cube {
     /// [`ReadError::Unreadable`] where the file cannot be read.
     pub fn planes(&self, channels: Range<usize>, into: &mut Vec<f32>) -> Result<(), ReadError> {
         let ranges = [0..self.counts[0], 0..self.counts[1], channels];
-        (self.pixels.read(ranges, Order::Planes, into)).map_err(|error| self.unreadable(&error))
+        (self.pixels.read(&ranges, Order::Planes, into)).map_err(|error| self.unreadable(&error))
     }
 
     fn unreadable(&self, error: &io::Error) -> ReadError {

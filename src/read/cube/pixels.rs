@@ -98,7 +98,7 @@ impl Pixels {
     /// Reads a block of columns, rows and channels; `into` is resized. Blank pixels become `NaN`.
     pub(super) fn read(
         &self,
-        ranges: [Range<usize>; 3],
+        ranges: &[Range<usize>; 3],
         order: Order,
         into: &mut Vec<f32>,
     ) -> io::Result<()> {

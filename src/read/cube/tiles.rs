@@ -74,7 +74,7 @@ pub(super) fn unpacked(
     target
         .rewind()
         .map_err(|error| no_scratch(path, scratch, &error))?;
-    Ok((tiles.image()?, target))
+    Ok((tiles.image(), target))
 }
 
 impl<'u, 'a> Tiles<'u, 'a> {
@@ -259,7 +259,7 @@ impl<'u, 'a> Tiles<'u, 'a> {
     }
 
     /// The header of the image that the table stands for.
-    fn image(&self) -> Result<Unit<'static>, ReadError> {
+    fn image(&self) -> Unit<'static> {
         let mut header = self.unit.header.clone();
         let integer = |value: usize| HeaderValue::Integer(i64::try_from(value).unwrap_or(i64::MAX));
         header.set("NAXIS", integer(self.axes.len()), None);
@@ -274,13 +274,13 @@ impl<'u, 'a> Tiles<'u, 'a> {
         let length = self.axes.iter().fold(self.pixel_bytes, |bytes, length| {
             bytes.saturating_mul(*length as u64)
         });
-        Ok(Unit {
+        Unit {
             number: self.unit.number,
             header,
             axes: self.axes.clone(),
             data: &[],
             place: DataPlace { start: 0, length },
-        })
+        }
     }
 }
 

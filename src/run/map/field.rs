@@ -110,12 +110,12 @@ impl Field {
         let mut beam = None;
         let (sites, spectra) = if let Some(table) = &sheet.grid.pointings {
             let pointings = read_pointings(&base.join(table))?;
-            let places = pointings.iter().map(|pointing| pointing.place).collect();
+            let places: Vec<_> = pointings.iter().map(|pointing| pointing.place).collect();
             let ids = pointings
                 .iter()
                 .map(|pointing| pointing.id.clone())
                 .collect();
-            (list(ids, places, centre), Spectra::Files(pointings))
+            (list(ids, &places, centre), Spectra::Files(pointings))
         } else {
             let path = |section: &LineSection, which| {
                 let file = section.file.as_ref().ok_or(RunError::NoFile { which })?;
@@ -239,7 +239,7 @@ impl Field {
     /// Offsets (arcsec) of the raster's first cell, and its steps along columns and rows (rows: east, north).
     pub fn axes(&self) -> Option<MapAxes> {
         match &self.sites {
-            Sites::Pixels { sky, .. } => Some(MapAxes::Sky(sky.clone())),
+            Sites::Pixels { sky, .. } => Some(MapAxes::Sky(Box::new(sky.clone()))),
             Sites::List {
                 reference, raster, ..
             } => {
@@ -258,7 +258,7 @@ impl Field {
                         first_arcsec: raster.first_arcsec,
                         step_arcsec: step,
                     },
-                    MapAxes::Sky,
+                    |sky| MapAxes::Sky(Box::new(sky)),
                 ))
             }
         }
@@ -602,7 +602,7 @@ fn rows(
             thin: thin.to_owned(),
         });
     }
-    Ok((list(ids, places, centre), Spectra::Rows(spectra)))
+    Ok((list(ids, &places, centre), Spectra::Rows(spectra)))
 }
 
 /// Whether rows of both lines were taken at one position: to a second of arc.
@@ -625,7 +625,7 @@ fn icrs([longitude_deg, latitude_deg]: [f64; 2]) -> SkyPosition {
 }
 
 /// Pointings of a table; sky positions become offsets from the given centre, or from the middle of all.
-fn list(ids: Vec<String>, places: Vec<PointingPlace>, centre: Option<SkyPosition>) -> Sites {
+fn list(ids: Vec<String>, places: &[PointingPlace], centre: Option<SkyPosition>) -> Sites {
     let middle = || {
         let sky: Vec<[f64; 2]> = places
             .iter()
@@ -702,7 +702,8 @@ fn raster(offsets: &[[f64; 2]], step_arcsec: f64) -> Option<Raster> {
         ];
         if steps
             .iter()
-            .any(|step| !((step - step.round()).abs() <= RASTER_TOLERANCE))
+            .map(|step| (step - step.round()).abs())
+            .any(|off| off.is_nan() || off > RASTER_TOLERANCE)
         {
             return None;
         }

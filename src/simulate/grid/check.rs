@@ -28,7 +28,7 @@ impl GridTruth {
         if i64::try_from(self.seed).is_err() {
             return Err(SimulateError::Seed { found: self.seed });
         }
-        let pointings = self.columns.checked_mul(self.rows).unwrap_or(usize::MAX);
+        let pointings = self.columns.saturating_mul(self.rows);
         if !(1..=MOST_POINTINGS).contains(&pointings) {
             return refuse(
                 "columns and rows",
