@@ -4,6 +4,10 @@
 //! outer radius. What excites a line is two levels, as in `closure.rs`, with slopes of their own for
 //! opacity, collisions and temperature: what a molecule with many levels does to them a pair of
 //! lines cannot tell.
+#![allow(
+    clippy::inline_always,
+    reason = "has to be compiled inside each instruction-set copy"
+)]
 
 use super::emergent::density as beam_density;
 use super::power_integral;
@@ -633,7 +637,6 @@ mod tests {
                     .zip(&exact)
                     .map(|(v, exact)| (pair.at(index, *v) - exact / unit).abs() / peak)
                     .fold(0.0, f64::max);
-                println!("{speed} {slope} {q} line {index}: {worst:.4}");
                 assert!(worst < 0.03, "{speed} {slope} {q} line {index}: {worst}");
             }
         }
