@@ -637,7 +637,6 @@ mod tests {
                     .zip(&exact)
                     .map(|(v, exact)| (pair.at(index, *v) - exact / unit).abs() / peak)
                     .fold(0.0, f64::max);
-                println!("{speed} {slope} {q} line {index}: {worst:.4}");
                 assert!(worst < 0.03, "{speed} {slope} {q} line {index}: {worst}");
             }
         }

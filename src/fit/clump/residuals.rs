@@ -100,13 +100,11 @@ const WINGS_FROM: f64 = 3.0;
 /// Offsets from v_lsr in dispersions beyond which gas that the thin line shows is another cloud's.
 const CLOUD_FROM: f64 = 1.5;
 
-/// Windows in which the thin line's residuals are summed: width and distance of neighbours, and how far out
-/// they reach, in dispersions.
+/// Windows in which the thin line's residuals are summed: width and distance of neighbours in dispersions,
+/// and how many there are on either side of v_lsr.
 const WINDOW: f64 = 0.7;
 const WINDOW_STEP: f64 = 0.35;
-const WINDOWS_TO: f64 = 4.0;
-/// Windows up to there on the other side, beside the first.
-const WINDOWS: u8 = 22;
+const WINDOWS: i32 = 11;
 
 /// Excesses on either side that are as alike as a rotating clump's: their ratio.
 const ALIKE: f64 = 2.0;
@@ -129,8 +127,8 @@ pub(super) fn residuals(target: &mut Target<'_>, best: &Point) -> ClumpResiduals
         };
         let motion = best[place::V_IN].abs();
         let (wing, far) = (WINGS_FROM + motion, f64::INFINITY);
-        let windows: Vec<(f64, f64)> = (0..=WINDOWS)
-            .map(|index| WINDOW_STEP * f64::from(index) - WINDOWS_TO)
+        let windows: Vec<(f64, f64)> = (-WINDOWS..=WINDOWS)
+            .map(|index| WINDOW_STEP * f64::from(index))
             .map(|x| (x, sum(1, x - 0.5 * WINDOW, x + 0.5 * WINDOW)))
             .collect();
         let (dip, depth) = windows.iter().fold(
