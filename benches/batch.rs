@@ -69,7 +69,7 @@ fn main() {
 
 /// Seconds for a block by the clock and of processors, and its rows in order.
 fn timed(survey: &Survey, numbers: Range<u64>, threads: usize) -> ([f64; 2], Vec<Row>) {
-    let settings = Arc::new(PairSettings::default());
+    let settings = Arc::new(PairSettings::formal());
     let jobs: Vec<PairJob> = numbers
         .map(|number| PairJob::Spectra {
             pair: Box::new(survey.pair(number).unwrap()),

@@ -45,6 +45,7 @@ fn figure() -> PairFigure {
             value: 0.02,
             err: 0.05,
         }),
+        posterior: None,
         numbers: vec![
             (
                 "inward speed".to_owned(),

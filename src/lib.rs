@@ -19,6 +19,8 @@
 //! | [`measure`] | a prepared pair into asymmetry measures, without a model |
 //! | [`fit`] | models and a prepared pair into parameters, errors and cautions |
 //! | [`mod@derive`] | a fit and properties of the source into rates, time scales and support |
+//! | [`grid`] | pointings on the sky into maps |
+//! | [`rank`] | findings about many sources into an ordered list with reasons, and sample statistics |
 //! | [`simulate`] | a truth into spectra |
 //! | [`report`] | results into tables, FITS and figures |
 //! | [`run`] | a run sheet into all of the above |
@@ -26,11 +28,13 @@
 pub mod constants;
 pub mod derive;
 pub mod fit;
+pub mod grid;
 pub mod line;
 pub mod measure;
 pub mod model;
 pub mod numeric;
 pub mod prepare;
+pub mod rank;
 pub mod read;
 pub mod report;
 pub mod run;

@@ -83,13 +83,14 @@ fn the_table_names_source_lines_results_and_cautions() {
     };
     assert_eq!(row("profile"), "blue");
     assert_eq!(row("adopted from"), "hill");
-    // rounded to the error, with the unit behind
+    // rounded to the interval, with the unit behind
     let speed = row("adopted inward speed");
-    let (value, rest) = speed.split_once(" +- ").unwrap();
-    let (err, unit) = rest.split_once(' ').unwrap();
+    let (value, rest) = speed.split_once(" -").unwrap();
+    let (below, rest) = rest.split_once(" +").unwrap();
+    let (_, unit) = rest.split_once(' ').unwrap();
     assert_eq!(unit, "km/s");
     let decimals = |text: &str| text.split_once('.').unwrap().1.len();
-    assert_eq!(decimals(value), decimals(err), "{speed}");
+    assert_eq!(decimals(value), decimals(below), "{speed}");
     let half_step = 0.5 * 10f64.powi(-i32::try_from(decimals(value)).unwrap());
     let full = number(&results, "v_in_km_s");
     assert!(

@@ -8,7 +8,9 @@ use std::sync::Arc;
 
 use inrush::numeric::Estimate;
 use inrush::report::ReportError;
-use inrush::report::figure::{Curve, PairFigure, Panel, svg_to_pdf, svg_to_png};
+use inrush::report::figure::{
+    Curve, PairFigure, Panel, PosteriorPart, SpeedAndDepth, svg_to_pdf, svg_to_png,
+};
 use inrush::spectrum::Window;
 use rand::{RngExt, SeedableRng};
 use rand_chacha::ChaCha8Rng;
@@ -215,6 +217,56 @@ fn panel(case: &Case, thick: bool) -> Panel {
     }
 }
 
+/// A normal posterior of each model, each farther from zero than the one before, speed and depth
+/// correlated.
+fn posterior(case: &Case) -> PosteriorPart {
+    let (width, top) = (0.1 * case.sigma_km_s, case.models.len());
+    let centre = |index: usize| width * (1.0 + 3.0 * index as f64);
+    let range_km_s = (-3.0 * width, centre(top) + 4.0 * width);
+    let density = |index: usize| -> Vec<(f64, f64)> {
+        (0..=100)
+            .map(|step| {
+                let part = f64::from(step) / 100.0;
+                let v = range_km_s.0 + part * (range_km_s.1 - range_km_s.0);
+                let z = (v - centre(index)) / width;
+                (v, (-0.5 * z * z).exp() / width)
+            })
+            .collect()
+    };
+    let around = |deviations: f64| {
+        let middle = centre(0);
+        (middle - deviations * width, middle + deviations * width)
+    };
+    let mut random = ChaCha8Rng::seed_from_u64(3);
+    let draws = (0..200).map(|index| {
+        let model = index % top;
+        let (z, other) = (deviate(&mut random), deviate(&mut random));
+        SpeedAndDepth {
+            label: case.models[model].to_owned(),
+            v_in_km_s: centre(model) + width * z,
+            tau: (1.2 - 0.3 * z + 0.2 * other).exp(),
+        }
+    });
+    PosteriorPart {
+        range_km_s,
+        averaged: density(0),
+        interval68_km_s: around(1.0),
+        interval95_km_s: around(2.0),
+        models: case
+            .models
+            .iter()
+            .enumerate()
+            .map(|(index, label)| ((*label).to_owned(), density(index)))
+            .collect(),
+        draws: draws.collect(),
+        correlation: Some(-0.83),
+        sentences: vec![
+            "Most probable: infall (probability 0.934). The data exclude expansion (above 10000 to 1) and rest (260 to 1)."
+                .to_owned(),
+        ],
+    }
+}
+
 fn figure(case: &Case) -> PairFigure {
     let estimate = |value, err| Some(Estimate { value, err });
     PairFigure {
@@ -223,6 +275,7 @@ fn figure(case: &Case) -> PairFigure {
         thin: panel(case, false),
         v_lsr_km_s: estimate(case.v_km_s, 0.1 * case.sigma_km_s),
         v_thin_km_s: estimate(case.v_km_s + 0.05 * case.sigma_km_s, 0.1 * case.sigma_km_s),
+        posterior: (!case.models.is_empty()).then(|| posterior(case)),
         numbers: (0..case.numbers)
             .map(|i| NUMBERS[i % NUMBERS.len()])
             .map(|(label, value)| (label.to_owned(), value.to_owned()))

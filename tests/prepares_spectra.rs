@@ -4,7 +4,8 @@
 
 use inrush::fit::Workspace;
 use inrush::fit::{
-    Averaging, Caution, Channels, FitRange, FitSettings, PairFacts, cautions, fit_pair, fit_thin,
+    Averaging, Caution, Channels, FitRange, FitSettings, Judgement, PairFacts, cautions, fit_pair,
+    fit_thin,
 };
 use inrush::line::{Component, find};
 use inrush::measure::{MeasureSettings, measure};
@@ -631,6 +632,7 @@ fn other_signal_does_not_count_in_fits_and_is_said() {
             thin_fit: &thin_fit,
             measures: &measures,
             fit: &fit,
+            judgement: Judgement::NotAsked,
         });
         let said: Vec<String> = found
             .iter()

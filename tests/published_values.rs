@@ -14,8 +14,6 @@ use inrush::derive::{
     virial_parameter,
 };
 use inrush::line::{Line, find};
-use statrs::distribution::{Binomial, DiscreteCDF};
-use statrs::statistics::Distribution;
 
 /// Two roundings of a double.
 const ROUNDING: f64 = 4.5e-16;
@@ -101,27 +99,59 @@ fn a_published_gaussian_has_its_published_integral() {
     assert!((integral_k_km_s - 44.11).abs() < 0.005, "{integral_k_km_s}");
 }
 
-/// Wu & Evans 2003 (abstract, astro-ph/0306543): 12 blue and 6 red of 28, 11 blue and 3 red of 18
-/// two-peak lines. The chances of as many blue or more are scipy 1.17.1's `binomtest`.
+/// Wu & Evans 2003 (abstract, astro-ph/0306543): 12 blue and 6 red of 28 cores, an excess of 0.21; 11 blue and 3
+/// red of 18 two-peak lines, 0.44. The chances of as many blue or more are scipy 1.17.1's `binomtest`.
 #[test]
-fn chances_of_a_blue_majority_are_those_of_scipy() {
-    for (blue, red, expected) in [
-        (12, 6, 0.118_942_260_742_187_5),
-        (11, 3, 0.028_686_523_437_5),
+fn blue_excesses_and_chances_of_a_blue_majority_are_those_published() {
+    use inrush::rank::{Profile, SourceFacts, sample};
+    for (all, blue, red, excess, chance) in [
+        (28, 12, 6, 0.214, 0.118_942_260_742_187_5),
+        (18, 11, 3, 0.444, 0.028_686_523_437_5),
     ] {
-        let binomial = Binomial::new(0.5, blue + red).expect("a probability");
-        let found = binomial.sf(blue - 1);
-        assert!((found - expected).abs() < 1e-13, "{blue}, {red}: {found}");
+        let facts: Vec<SourceFacts> = (0..all)
+            .map(|index| SourceFacts {
+                line_pair: "thick / thin".to_owned(),
+                group: None,
+                profile: match index {
+                    _ if index < blue => Profile::Blue,
+                    _ if index < blue + red => Profile::Red,
+                    _ => Profile::Neither,
+                },
+                delta_v: None,
+                asymmetry: None,
+            })
+            .collect();
+        let found = &sample(&facts, &[], 1).line_pairs[0];
+        // three decimals are given
+        assert!((found.excess.expect("detected") - excess).abs() < 5e-4);
+        assert!((found.chance_blue - chance).abs() < 1e-13);
     }
 }
 
 /// Jackson et al. 2019 (abstract, arXiv:1811.05545): of 1093 clumps a fraction of 0.607 +- 0.015 has a
-/// positive asymmetry; sqrt(p(1-p)/N) is 0.01477.
+/// positive asymmetry; sqrt(p(1-p)/N) is 0.01477. Wilson's interval of 663 of 1093 is as wide.
 #[test]
 fn a_published_fraction_has_its_published_error() {
-    let binomial = Binomial::new(0.607, 1093).expect("a probability");
-    let error = binomial.std_dev().expect("finite") / 1093.0;
+    use inrush::numeric::samples::{ONE_SIGMA, wilson_interval};
+    let error = (0.607_f64 * 0.393 / 1093.0).sqrt();
     assert!((error - 0.014_77).abs() < 5e-6, "{error}");
+    let [low, high] = wilson_interval(663, 1093, ONE_SIGMA).expect("tries");
+    // of order 1/N narrower than the normal one
+    assert!(
+        (0.5 * (high - low) / error - 1.0).abs() < 1e-3,
+        "{low} {high}"
+    );
+    assert!(low < 0.607 && 0.607 < high);
+}
+
+/// Myers et al. 1996 (abstract, doi:10.1086/310146): mass infall rates within a factor of about 2 of sigma^3/G,
+/// which is plain arithmetic.
+#[test]
+fn a_published_rate_is_the_cube_of_a_dispersion_over_g() {
+    use inrush::derive::isothermal_rate_msun_yr;
+    // Shu's 0.975 a^3/G is one of them: 0.2 km/s cubed over G is 1.9023e-6 solar masses a year
+    let rate = isothermal_rate_msun_yr(0.2) / 0.975;
+    assert!((rate / 1.9023e-6 - 1.0).abs() < 5e-5, "{rate}");
 }
 
 /// Frequencies (MHz) as published and offsets from F = 2-1 worked out from them: LAMDA's

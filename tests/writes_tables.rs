@@ -369,8 +369,18 @@ fn pair() -> Row {
     row.set("v_in_km_s", 0.4812).unwrap();
     row.set("v_in_km_s_lo68", 0.441).unwrap();
     row.set("v_in_km_s_hi68", 0.532).unwrap();
-    row.set("v_in_model", "hill").unwrap();
+    row.set("v_in_systematic_km_s", 0.1234).unwrap();
+    row.set("v_in_model", "two-layer+hill").unwrap();
+    row.set("v_in_errors", "posterior").unwrap();
+    row.set("hill_v_in_km_s_lo68", 0.4397).unwrap();
+    row.set("hill_v_in_km_s_hi68", 0.5204).unwrap();
+    row.set("hill_share", 0.91234).unwrap();
     row.set("p_infall", 0.9871).unwrap();
+    row.set(
+        "verdict",
+        "Most probable: infall (probability 0.987). The data exclude none of the others.",
+    )
+    .unwrap();
     row.set("mass_rate_msun_yr", 1.234e-4).unwrap();
     row.set("mass_rate_msun_yr_lo68", 0.81e-4).unwrap();
     row.set("mass_rate_msun_yr_hi68", 2.04e-4).unwrap();
@@ -410,17 +420,23 @@ Asymmetry of the thick line, without a model
 
 Hill model, surface at the background (formal errors)
   inward speed                  0.48 +- 0.03 km/s
+  68 % of its posterior         0.44 to 0.52 km/s
   optical depth of a half       4.2 +- 0.6
   reduced chi2                  1.04
+  share of the evidence         0.912
 
-Inward speed (formal errors)
+Inward speed (68 % intervals)
   adopted inward speed          0.48 -0.04 +0.05 km/s
-  adopted from                  hill
+  systematic, between models    0.123 km/s
+  adopted from                  two-layer+hill
+  errors                        posterior
 
 Probabilities
   infall                        0.987
+  - Most probable: infall (probability 0.987)
+  - The data exclude none of the others
 
-Collapse (68 % intervals; formal errors of the fit)
+Collapse (68 % intervals)
   mass infall rate              (1.2 -0.4 +0.8)e-4 Msun/yr
   free-fall time                235000 yr
 

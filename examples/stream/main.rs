@@ -67,7 +67,7 @@ fn stream(
     batch: &BatchSettings,
     directory: &Path,
 ) -> Result<Vec<PathBuf>, Box<dyn Error + Send + Sync>> {
-    let settings = PairSettings::default();
+    let settings = PairSettings::formal();
     let meta = vec![("program".to_owned(), Value::from("Inrush"))];
     let mut table = TableFiles::begin(directory, "pairs", &columns::results(), meta)?;
     let mut progress = Progress::new(pairs);

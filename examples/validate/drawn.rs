@@ -3,7 +3,7 @@
 use super::spheres::TRANSPARENT;
 use super::statistics::{percent, rms, spread};
 use inrush::fit::Workspace;
-use inrush::fit::{Caution, FitSettings, PairFacts, cautions, fit_pair, fit_thin};
+use inrush::fit::{Caution, FitSettings, Judgement, PairFacts, cautions, fit_pair, fit_thin};
 use inrush::line::{Line, find};
 use inrush::measure::{MeasureSettings, measure};
 use inrush::model::Model;
@@ -134,6 +134,7 @@ fn fitted(
         thin_fit: &thin_fit,
         measures: &measures,
         fit: &fit,
+        judgement: Judgement::NotAsked,
     });
     let drawn = fit.models.iter().filter_map(|model| {
         let speed = model.parameter("v_in_km_s")?;

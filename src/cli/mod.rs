@@ -1,9 +1,16 @@
 //! Arguments in, messages out. Results go to stdout, everything else to stderr.
 
+mod calibrate;
 mod check;
+mod cite;
 mod fit;
+mod interrupt;
 mod lines;
+mod map;
 mod output;
+mod pair;
+mod progress;
+mod rank;
 mod simulate;
 mod source;
 mod values;
@@ -22,7 +29,12 @@ pub enum Exit {
     SomeUnusable,
     /// Bad usage, input or setting.
     Unusable,
+    /// Interrupted; what was done is kept.
+    Interrupted,
 }
+
+/// Exit code of an interrupted run: 128 and the number of SIGINT.
+const INTERRUPTED: u8 = 130;
 
 impl From<Exit> for ExitCode {
     fn from(exit: Exit) -> Self {
@@ -30,6 +42,7 @@ impl From<Exit> for ExitCode {
             Exit::Done => 0,
             Exit::SomeUnusable => 1,
             Exit::Unusable => 2,
+            Exit::Interrupted => INTERRUPTED,
         })
     }
 }
@@ -61,9 +74,13 @@ struct Arguments {
 
 #[derive(Debug, Subcommand)]
 enum Command {
+    Calibrate(Box<calibrate::CalibrateArguments>),
     Check(check::CheckArguments),
+    Cite(cite::CiteArguments),
     Fit(Box<fit::FitArguments>),
     Lines(lines::LinesArguments),
+    Map(map::MapArguments),
+    Rank(rank::RankArguments),
     Simulate(simulate::SimulateArgs),
 }
 
@@ -83,9 +100,13 @@ pub fn main() -> ExitCode {
     };
     let output = Output::new(arguments.quiet);
     let result = match &arguments.command {
+        Command::Calibrate(calibrate) => calibrate::run(calibrate, arguments.threads, &output),
         Command::Check(check) => check::run(check),
+        Command::Cite(cite) => cite::run(cite),
         Command::Fit(fit) => fit::run(fit, &output),
         Command::Lines(lines) => lines::run(lines),
+        Command::Map(map) => map::run(map, arguments.threads, &output),
+        Command::Rank(sample) => rank::run(sample, arguments.threads, &output),
         Command::Simulate(simulate) => simulate::run(simulate, arguments.threads, &output),
     };
     match result {

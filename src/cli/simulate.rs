@@ -1,11 +1,13 @@
 //! `inrush simulate`.
 
+mod grid;
 mod sample;
 
 use super::Exit;
 use super::output::Output;
 use super::values::{named, number, range};
 use clap::{Args, Subcommand, ValueEnum};
+use grid::GridArgs;
 use inrush::line::find;
 use inrush::report::spectra::FitsAxis;
 use inrush::run::RunError;
@@ -25,9 +27,10 @@ pub struct SimulateArgs {
 enum What {
     Pair(Box<PairArgs>),
     Sample(Box<SampleArgs>),
+    Grid(Box<GridArgs>),
 }
 
-/// What a pair and a sample both have.
+/// What pairs, samples and maps have.
 #[derive(Debug, Args)]
 struct SharedArgs {
     /// Seed of the random numbers; 1 where absent.
@@ -243,6 +246,7 @@ pub fn run(
     match &arguments.what {
         What::Pair(pair) => run_pair(pair, output),
         What::Sample(sample) => sample::run(sample, threads, output),
+        What::Grid(grid) => grid::run(grid, threads, output),
     }
 }
 
@@ -343,6 +347,13 @@ fn level(noise_k: Option<f64>, signal_to_noise: Option<f64>) -> Option<NoiseLeve
     noise_k
         .map(NoiseLevel::RmsK)
         .or(signal_to_noise.map(NoiseLevel::SignalToNoise))
+}
+
+/// A setting in place of another, where it is given.
+fn replace<T>(setting: &mut T, given: Option<T>) {
+    if let Some(given) = given {
+        *setting = given;
+    }
 }
 
 fn assignment(text: &str) -> Result<(String, f64), String> {

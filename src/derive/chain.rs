@@ -242,7 +242,7 @@ pub struct Tracers<'a> {
     pub thick: &'a Line,
     /// Thin line.
     pub thin: &'a Line,
-    /// Model of the thick line; `None` without a fit.
+    /// Model of the thick line; `None` without a fit, and for draws of several models.
     pub model: Option<Model>,
 }
 
@@ -500,7 +500,10 @@ impl<'a> ThickDepth<'a> {
                     .collect::<Option<_>>()?,
             })
         };
-        match tracers.model? {
+        let Some(model) = tracers.model else {
+            return layers("tau", &["t_front_k", "t_rear_k"]);
+        };
+        match model {
             Model::Layer => layers("tau_total", &["t_ex_k"]),
             Model::TwoLayer | Model::TwoLayerContinuum => layers("tau", &["t_front_k", "t_rear_k"]),
             Model::Hill | Model::HillSurface => Some(Self::Hill {
@@ -799,8 +802,7 @@ fn of_results(
         let outward = rate.draws.iter().filter(|rate| **rate <= 0.0).count() as f64;
         if (0.025..=0.975).contains(&(outward / rate.draws.len() as f64)) {
             found.push(DeriveCaution::RateHoldsZero);
-        }
-        if v_in_km_s < 0.0 {
+        } else if v_in_km_s < 0.0 {
             found.push(DeriveCaution::OutwardSpeed { v_in_km_s });
         }
     }

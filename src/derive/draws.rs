@@ -4,8 +4,12 @@ use super::DeriveError;
 use super::source::{Input, Law, SourceProperties};
 use crate::constants::FWHM_PER_SIGMA;
 use crate::fit::ModelFit;
+use crate::fit::averaged::{Averaged, Row};
+use crate::line::Line;
 use crate::measure::ThinLine;
+use crate::model::RadiationTemperature;
 use crate::numeric::Estimate;
+use crate::numeric::robust::median;
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::SeedableRng;
 use rand_distr::{Distribution, StandardNormal};
@@ -148,6 +152,51 @@ impl FitDraws {
                 err: parameter.err.unwrap_or(0.0),
             };
             made.push(parameter.name, estimate, settings.seed);
+        }
+        made
+    }
+
+    /// Joint draws of a posterior averaged over models, each parameter with its median as its value. The
+    /// speed is left out where `with_speed` is false.
+    ///
+    /// A model's halves become `t_front_k` and `t_rear_k`: of a hill, both at the mean of J over a half.
+    /// `sigma_thin_km_s` is that of the thin line.
+    #[must_use]
+    pub fn of_posterior(
+        averaged: &Averaged<'_>,
+        thick: &Line,
+        with_speed: bool,
+        settings: &DeriveSettings,
+    ) -> Self {
+        let radiation = RadiationTemperature::new(thick.rest_frequency_ghz);
+        let half_of_hill = |row: &Row<'_>| {
+            let surface = row.get("t_surface_k").map(|t| radiation.at(t));
+            let surface = surface.unwrap_or(radiation.background());
+            let mean = 0.5 * (radiation.at(row.get("t_peak_k")?) + surface);
+            Some(radiation.inverse(mean))
+        };
+        let rows: Vec<Row<'_>> = averaged.rows(settings.draws).collect();
+        let mut made = Self::new(rows.len());
+        let mut put = |name: &str, value: &dyn Fn(&Row<'_>) -> Option<f64>| {
+            let Some(draws) = rows.iter().map(value).collect::<Option<Vec<f64>>>() else {
+                return;
+            };
+            let value = match averaged.marginal(name) {
+                Some(marginal) => marginal.median,
+                None => median(&draws),
+            };
+            made.columns.push((name.to_owned(), Drawn { value, draws }));
+        };
+        for name in ["v_in_km_s", "sigma_km_s", "tau", "peak_thin_k"] {
+            if with_speed || name != "v_in_km_s" {
+                put(name, &|row| row.get(name));
+            }
+        }
+        put("sigma_thin_km_s", &|row| {
+            Some(row.get("sigma_km_s")? * row.get("thin_width_ratio")?)
+        });
+        for name in ["t_front_k", "t_rear_k"] {
+            put(name, &|row| row.get(name).or_else(|| half_of_hill(row)));
         }
         made
     }

@@ -1,5 +1,7 @@
 //! What a reader of a result has to know: typed, with a short code and a sentence.
 
+use super::hypotheses::{Hypothesis, Speed, Verdict};
+use super::posterior::{Family, PairPosterior, PosteriorError};
 use super::{PairFit, ThinFit};
 use crate::constants::FWHM_PER_SIGMA;
 use crate::measure::Measures;
@@ -113,6 +115,49 @@ pub enum Caution {
     },
     /// The thick line is narrower or fainter than the thin one: they may be swapped.
     MaybeSwapped,
+    /// There is neither posterior nor verdict, though they were asked for.
+    NoPosterior {
+        /// Why.
+        reason: Unjudged,
+    },
+    /// Posterior and probabilities know nothing of some settings of the fit.
+    SettingsUnheard {
+        /// The settings.
+        settings: Vec<String>,
+    },
+    /// Draws of families that carry weight do not describe their posterior.
+    PosteriorUntrusted {
+        /// The families.
+        families: Vec<Family>,
+    },
+    /// The data say hardly more of the speed than its prior does.
+    SpeedUnconstrained,
+    /// The speed is a limit in either direction.
+    SpeedLimit {
+        /// With 95 % probability the speed is below, km/s.
+        limit_km_s: f64,
+    },
+    /// The models' speeds are farther from each other than the interval is wide.
+    ModelsDiffer {
+        /// Median inward speed of each, km/s.
+        speeds: Vec<(Model, f64)>,
+    },
+    /// Two clouds are more probable than all else.
+    TwoCloudsFavoured {
+        /// Their probability.
+        probability: f64,
+    },
+}
+
+/// Why a pair has no posterior.
+#[derive(Clone, Debug, PartialEq)]
+pub enum Unjudged {
+    /// No fitted model has one.
+    NoModel,
+    /// The thick line is in absorption.
+    Absorbed,
+    /// It failed.
+    Failed(PosteriorError),
 }
 
 fn word(line: PairLine) -> &'static str {
@@ -145,6 +190,13 @@ impl Caution {
             Self::OtherSignal { .. } => "other-signal",
             Self::CorrelatedNoise { .. } => "correlated-noise",
             Self::MaybeSwapped => "maybe-swapped",
+            Self::NoPosterior { .. } => "no-posterior",
+            Self::SettingsUnheard { .. } => "settings-unheard",
+            Self::PosteriorUntrusted { .. } => "posterior-untrusted",
+            Self::SpeedUnconstrained => "speed-unconstrained",
+            Self::SpeedLimit { .. } => "speed-limit",
+            Self::ModelsDiffer { .. } => "models-differ",
+            Self::TwoCloudsFavoured { .. } => "two-clouds-favoured",
         }
     }
 
@@ -230,6 +282,46 @@ impl Caution {
             Self::MaybeSwapped => {
                 "the thick line is fainter than the thin one: are the two files swapped?".to_owned()
             }
+            Self::NoPosterior { reason } => {
+                let reason = match reason {
+                    Unjudged::NoModel => {
+                        "none of the fitted models has a posterior (two-layer, hill and hill-surface have)".to_owned()
+                    }
+                    Unjudged::Absorbed => "no posterior describes a line in absorption".to_owned(),
+                    Unjudged::Failed(error) => format!("no posterior: {error}"),
+                };
+                format!("{reason}: there are no probabilities, and errors are formal")
+            }
+            Self::SettingsUnheard { settings } => format!(
+                "the posterior knows nothing of {}: the adopted speed is the least-squares one with its formal error, the probabilities are those without",
+                settings.join(", ")
+            ),
+            Self::PosteriorUntrusted { families } => {
+                let names: Vec<String> = families.iter().map(|family| family.name()).collect();
+                format!(
+                    "the draws of {} do not describe the posterior well: intervals and probabilities may be off",
+                    names.join(", ")
+                )
+            }
+            Self::SpeedUnconstrained => {
+                "the data do not constrain the inward speed: they say hardly more than its prior".to_owned()
+            }
+            Self::SpeedLimit { limit_km_s } => format!(
+                "no motion is measured: the speed is below {limit_km_s:.3} km/s in either direction with 95 % probability"
+            ),
+            Self::ModelsDiffer { speeds } => {
+                let each: Vec<String> = speeds
+                    .iter()
+                    .map(|(model, v_in_km_s)| format!("{} {v_in_km_s:+.3}", model.name()))
+                    .collect();
+                format!(
+                    "the models differ by more than their interval is wide ({} km/s): quote v_in_systematic_km_s beside it",
+                    each.join(", ")
+                )
+            }
+            Self::TwoCloudsFavoured { probability } => format!(
+                "two clouds on one line of sight explain the pair best (probability {probability:.2}): the speed holds only if it is one clump"
+            ),
         }
     }
 }
@@ -253,6 +345,8 @@ const DIP_OFFSET: f64 = 0.5;
 const TRANSPARENT: f64 = 0.5;
 /// Speed over its formal error from which its sign counts.
 const SIGN: f64 = 3.0;
+/// Probability above which a hypothesis is more probable than all others together.
+const EVEN: f64 = 0.5;
 /// Probability of a chi2 as high by chance below which a caution is given.
 const POOR_FIT: f64 = 1e-3;
 
@@ -269,6 +363,20 @@ pub struct PairFacts<'a> {
     pub measures: &'a Measures,
     /// Joint fits.
     pub fit: &'a PairFit,
+    /// What posteriors say.
+    pub judgement: Judgement<'a>,
+}
+
+/// What posteriors say of a pair.
+#[derive(Clone, Copy, Debug)]
+pub enum Judgement<'a> {
+    /// They were not asked.
+    NotAsked,
+    /// There is none.
+    Missing(&'a Unjudged),
+    /// Posteriors, their verdict, what is known of the speed, and settings of the fit that they know
+    /// nothing of.
+    Found(&'a PairPosterior, &'a Verdict, Speed, &'a [String]),
 }
 
 /// All cautions of a pair, the gravest first.
@@ -276,19 +384,26 @@ pub struct PairFacts<'a> {
 pub fn cautions(facts: &PairFacts<'_>) -> Vec<Caution> {
     let mut found = Vec::new();
     of_detection(facts, &mut found);
+    of_judgement(facts, &mut found);
     of_fits(facts.fit, &mut found);
     of_spectra(facts, &mut found);
     found
+}
+
+/// Whether the thick line as a whole is in absorption.
+#[must_use]
+pub fn is_absorbed(measures: &Measures) -> bool {
+    let integral = measures.integral_thick_k_km_s;
+    measures.peak_thick_k.is_none() && integral.value < -DETECTION * integral.err
 }
 
 fn of_detection(facts: &PairFacts<'_>, found: &mut Vec<Caution>) {
     let measures = facts.measures;
     match measures.peak_thick_k {
         None => {
-            let integral = measures.integral_thick_k_km_s;
-            found.push(if integral.value < -DETECTION * integral.err {
+            found.push(if is_absorbed(measures) {
                 Caution::ThickAbsorbed {
-                    integral_k_km_s: integral.value,
+                    integral_k_km_s: measures.integral_thick_k_km_s.value,
                 }
             } else {
                 Caution::ThickUndetected
@@ -328,6 +443,53 @@ fn of_detection(facts: &PairFacts<'_>, found: &mut Vec<Caution>) {
     }
     if measures.thin_two_peaked {
         found.push(Caution::ThinTwoPeaked);
+    }
+}
+
+fn of_judgement(facts: &PairFacts<'_>, found: &mut Vec<Caution>) {
+    let (posterior, verdict, speed, unheard) = match facts.judgement {
+        Judgement::NotAsked => return,
+        Judgement::Missing(reason) => {
+            found.push(Caution::NoPosterior {
+                reason: reason.clone(),
+            });
+            return;
+        }
+        Judgement::Found(posterior, verdict, speed, unheard) => {
+            (posterior, verdict, speed, unheard)
+        }
+    };
+    let probability = verdict.probability(Hypothesis::TwoClouds);
+    if probability > EVEN {
+        found.push(Caution::TwoCloudsFavoured { probability });
+    }
+    if !verdict.trusted {
+        let families = posterior.families.iter();
+        let doubtful = families.filter(|one| !one.quality.holds());
+        found.push(Caution::PosteriorUntrusted {
+            families: doubtful.map(|one| one.family).collect(),
+        });
+    }
+    if !unheard.is_empty() {
+        found.push(Caution::SettingsUnheard {
+            settings: unheard.to_vec(),
+        });
+        return;
+    }
+    let (low, high) = verdict.v_in_km_s.interval68;
+    match speed {
+        Speed::Unconstrained => found.push(Caution::SpeedUnconstrained),
+        Speed::Below { limit_km_s } => found.push(Caution::SpeedLimit { limit_km_s }),
+        Speed::Measured if 2.0 * verdict.between_models_km_s > high - low => {
+            let of = |model| Some(posterior.of(Family::Moving(model))?.v_in_km_s()?.median);
+            let models = verdict.shares.iter();
+            found.push(Caution::ModelsDiffer {
+                speeds: models
+                    .filter_map(|(model, _)| Some((*model, of(*model)?)))
+                    .collect(),
+            });
+        }
+        Speed::Measured => {}
     }
 }
 

@@ -202,10 +202,9 @@ impl Channels {
 
     /// Makes columns white as the data are, but leaves their unit.
     pub fn decorrelate(&self, columns: &mut [f64]) {
-        if let Some(whitener) = &self.whitener
-            && !self.is_empty()
-        {
-            for column in columns.chunks_exact_mut(self.len()) {
+        if let Some(whitener) = &self.whitener {
+            // a side of a line without a channel has no columns
+            for column in columns.chunks_exact_mut(self.len().max(1)) {
                 whitener.whiten(&self.segments, column);
             }
         }

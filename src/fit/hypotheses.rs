@@ -46,6 +46,23 @@ impl Default for Odds {
     }
 }
 
+impl Odds {
+    /// Refuses odds that are no probabilities.
+    ///
+    /// # Errors
+    ///
+    /// [`HypothesesError::Odds`].
+    pub fn check(&self) -> Result<(), HypothesesError> {
+        let total: f64 = self.0.iter().sum();
+        let usable = self.0.iter().all(|one| *one >= 0.0) && total > 0.0 && total.is_finite();
+        if usable {
+            Ok(())
+        } else {
+            Err(HypothesesError::Odds { found: self.0 })
+        }
+    }
+}
+
 /// Why there are no probabilities.
 #[derive(Clone, Debug, PartialEq, thiserror::Error)]
 pub enum HypothesesError {
@@ -184,11 +201,7 @@ const NEGLIGIBLE: f64 = 0.01;
 ///
 /// [`HypothesesError`] for odds that are no probabilities, or posteriors without the families needed.
 pub fn verdict(posterior: &PairPosterior, odds: &Odds) -> Result<Verdict, HypothesesError> {
-    let total: f64 = odds.0.iter().sum();
-    let usable = odds.0.iter().all(|one| *one >= 0.0) && total > 0.0 && total.is_finite();
-    if !usable {
-        return Err(HypothesesError::Odds { found: odds.0 });
-    }
+    odds.check()?;
     let highest = posterior
         .families
         .iter()
@@ -229,7 +242,7 @@ pub fn verdict(posterior: &PairPosterior, odds: &Odds) -> Result<Verdict, Hypoth
         .iter()
         .filter(|one| is_moving(one.family))
         .collect();
-    let shares = posterior.model_shares();
+    let shares = shares(&moving);
     let average = average(&moving, &shares);
     let Some(v_in_km_s) = interval(&average) else {
         return Err(HypothesesError::Incomplete { missing: "moving" });
@@ -269,6 +282,23 @@ fn is_moving(family: Family) -> bool {
 
 fn is_static(family: Family) -> bool {
     matches!(family, Family::Still(_) | Family::Unabsorbed)
+}
+
+/// Share of each model's evidence in the sum over models.
+fn shares(moving: &[&FamilyPosterior]) -> Vec<(Model, f64)> {
+    let highest = moving
+        .iter()
+        .map(|one| one.ln_evidence)
+        .fold(f64::NEG_INFINITY, f64::max);
+    let relative = |one: &FamilyPosterior| (one.ln_evidence - highest).exp();
+    let total: f64 = moving.iter().map(|one| relative(one)).sum();
+    moving
+        .iter()
+        .filter_map(|one| match one.family {
+            Family::Moving(model) => Some((model, relative(one) / total)),
+            _ => None,
+        })
+        .collect()
 }
 
 /// Weighted speeds of all models, each model with its share.

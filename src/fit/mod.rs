@@ -5,8 +5,11 @@
 //! at its minimum, with the measured noise and its correlation between channels.
 
 mod amplitudes;
+pub mod averaged;
 mod cautions;
 mod channels;
+pub mod clump;
+pub mod conflict;
 pub mod hypotheses;
 mod joint;
 mod normal;
@@ -18,7 +21,7 @@ mod starts;
 mod thin;
 mod workspace;
 
-pub use cautions::{Caution, PairFacts, cautions};
+pub use cautions::{Caution, Judgement, PairFacts, Unjudged, cautions, is_absorbed};
 pub use channels::{Averaging, Channels};
 pub use joint::{JointParameter, JointProblem, Layout};
 pub use thin::{ThinFit, fit_thin};
@@ -58,6 +61,9 @@ pub struct FitSettings {
     pub bounds: BTreeMap<String, (f64, f64)>,
     /// Given parameters by name: held where the error is 0, else a Gaussian prior.
     pub given: BTreeMap<String, Estimate>,
+    /// Where searches begin beside the starts that the data suggest, such as a neighbour's solution: a model
+    /// with its parameters, in the order of [`ModelFit::parameters`]; those of no such model are passed over.
+    pub starts: Vec<(Model, Vec<f64>)>,
 }
 
 impl Default for FitSettings {
@@ -71,6 +77,7 @@ impl Default for FitSettings {
             averaging: Averaging::Channel,
             bounds: BTreeMap::new(),
             given: BTreeMap::new(),
+            starts: Vec::new(),
         }
     }
 }
@@ -432,7 +439,10 @@ pub fn fit_pair(
     );
     let models = layouts
         .into_iter()
-        .map(|layout| fit_model(layout, channels, near, &mut scan, workspace))
+        .map(|layout| {
+            let further = further_starts(&settings.starts, &layout);
+            fit_model(layout, channels, near, (&mut scan, further), workspace)
+        })
         .collect::<Result<Vec<ModelFit>, FitError>>()?;
     workspace.columns = scan.into_columns();
     let adopted = ADOPTION
@@ -669,17 +679,32 @@ impl From<LeastSquaresError> for FitError {
     }
 }
 
+/// Those of the settings' starts that are of a layout's model, inside its bounds.
+fn further_starts(starts: &[(Model, Vec<f64>)], layout: &Layout) -> Vec<Vec<f64>> {
+    let parameters = layout.parameters();
+    starts
+        .iter()
+        .filter(|(model, start)| *model == layout.thick_line().0 && start.len() == parameters.len())
+        .map(|(_, start)| {
+            (start.iter().zip(parameters))
+                .map(|(value, parameter)| parameter.interval.nearest(*value))
+                .collect()
+        })
+        .collect()
+}
+
 /// Follows the starts and keeps the best minimum.
 fn fit_model(
     layout: Layout,
     (thick, thin): (&Channels, &Channels),
     near: (&Channels, &Channels),
-    scan: &mut Scan<'_>,
+    (scan, further): (&mut Scan<'_>, Vec<Vec<f64>>),
     workspace: &mut Workspace,
 ) -> Result<ModelFit, FitError> {
     let channels = thick.len() + thin.len();
     let (model, _) = layout.thick_line();
-    let starts = scan.starts(&layout);
+    let mut starts = scan.starts(&layout);
+    starts.extend(further);
     let near = (Some(near.0), near.1);
     let (minima, evaluations) = minima(&layout, near, (Some(thick), thin), &starts, workspace)?;
     let best = &minima[0];

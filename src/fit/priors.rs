@@ -83,6 +83,49 @@ impl Prior {
         }
     }
 
+    /// Where all but about a millionth of the mass lies.
+    #[must_use]
+    pub fn reach(&self) -> (f64, f64) {
+        // of a normal density 4.9 deviations; of an exponential one ln of a million means
+        match *self {
+            Self::Normal { deviation } => (-4.9 * deviation, 4.9 * deviation),
+            Self::LogNormal {
+                median,
+                ln_deviation,
+            } => {
+                let factor = (4.9 * ln_deviation).exp();
+                (median / factor, median * factor)
+            }
+            Self::Exponential { mean } => (0.0, 13.8 * mean),
+        }
+    }
+
+    /// Names of the numbers that describe the density, in order.
+    #[must_use]
+    pub fn numbers(&self) -> &'static [&'static str] {
+        match self {
+            Self::Normal { .. } => &["deviation"],
+            Self::LogNormal { .. } => &["median", "deviation in ln"],
+            Self::Exponential { .. } => &["mean"],
+        }
+    }
+
+    /// The same density with other numbers, as many as [`Prior::numbers`]; `None` for more or fewer.
+    #[must_use]
+    pub fn with_numbers(&self, numbers: &[f64]) -> Option<Self> {
+        Some(match (self, numbers) {
+            (Self::Normal { .. }, [deviation]) => Self::Normal {
+                deviation: *deviation,
+            },
+            (Self::LogNormal { .. }, [median, ln_deviation]) => Self::LogNormal {
+                median: *median,
+                ln_deviation: *ln_deviation,
+            },
+            (Self::Exponential { .. }, [mean]) => Self::Exponential { mean: *mean },
+            _ => return None,
+        })
+    }
+
     /// The density in words, for tables.
     #[must_use]
     pub fn text(&self) -> String {

@@ -144,7 +144,7 @@ const THIN_DETECTED: f64 = 3.0;
 const THIN_DIP_SIGMA: f64 = 4.5;
 
 /// Normalised velocity difference beyond which a profile is blue or red (Mardones et al. 1997).
-const CLASS_LIMIT: f64 = 0.25;
+pub const CLASS_LIMIT: f64 = 0.25;
 
 /// All measures of a pair.
 ///

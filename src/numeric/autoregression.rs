@@ -5,6 +5,8 @@
 //! data. The same coefficients give the filters that make noise white.
 
 use super::dispatch::{Arithmetic, Kernel, dispatch};
+use rand::Rng;
+use rand_distr::{Distribution, StandardNormal};
 use std::ops::Range;
 
 /// `x_i` = `sum_k` `a_k` `x_(i-k)` + `e_i` with unit variance of x; order 0 is white noise.
@@ -154,6 +156,28 @@ impl Autoregression {
             .map(|value| (value * (1.0 - lost) + lost).min(LARGEST_REFLECTION))
             .collect();
         Self::from_autocorrelation(&correlation).unwrap_or_else(|| self.clone())
+    }
+
+    /// Values of the process with unit variance, from the stationary distribution on.
+    ///
+    /// The first ones are predicted by the processes of lower order that the reflection coefficients
+    /// describe.
+    pub fn unit_noise(&self, generator: &mut impl Rng, count: usize) -> Vec<f64> {
+        let reflections = self.reflections();
+        let mut predictor: Vec<f64> = Vec::with_capacity(reflections.len());
+        let mut variance: f64 = 1.0;
+        let mut noise: Vec<f64> = Vec::with_capacity(count);
+        for index in 0..count {
+            let before = noise.iter().rev();
+            let predicted: f64 = predictor.iter().zip(before).map(|(a, x)| a * x).sum();
+            let deviate: f64 = StandardNormal.sample(generator);
+            noise.push(predicted + variance.sqrt() * deviate);
+            if let Some(reflection) = reflections.get(index) {
+                step_up(&mut predictor, *reflection);
+                variance *= 1.0 - reflection * reflection;
+            }
+        }
+        noise
     }
 
     /// Power at frequency zero over that of white noise of the same variance: the sum of the
@@ -431,7 +455,6 @@ mod tests {
     use super::*;
     use rand::SeedableRng;
     use rand_chacha::ChaCha8Rng;
-    use rand_distr::{Distribution, StandardNormal};
 
     /// White noise convolved with a kernel, unit variance.
     fn filtered(kernel: &[f64], count: usize, generator: &mut ChaCha8Rng) -> Vec<f64> {
@@ -497,6 +520,26 @@ mod tests {
             assert!((back[lag + 1] - expected).abs() < 1e-12);
         }
         assert!(Autoregression::from_autocorrelation(&[0.9, -0.9]).is_none());
+    }
+
+    #[test]
+    fn drawn_values_have_the_autocorrelation_from_the_first_on() {
+        let process = Autoregression::from_reflections(&[0.6, -0.3, 0.2]);
+        let expected = process.autocorrelation(5);
+        let mut generator = ChaCha8Rng::seed_from_u64(5);
+        let trials = 40_000;
+        let mut sums = [0.0; 5];
+        for _ in 0..trials {
+            let noise = process.unit_noise(&mut generator, 5);
+            for (lag, sum) in sums.iter_mut().enumerate() {
+                *sum += noise[0] * noise[lag];
+            }
+        }
+        for (lag, sum) in sums.iter().enumerate() {
+            let found = sum / f64::from(trials);
+            // products of two unit normals scatter by at most sqrt(2): four standard errors
+            assert!((found - expected[lag]).abs() < 0.029, "lag {lag}: {found}");
+        }
     }
 
     #[test]

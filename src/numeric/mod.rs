@@ -9,6 +9,7 @@ pub mod marginal;
 pub mod polynomial;
 pub mod products;
 pub mod robust;
+pub mod samples;
 pub mod sampling;
 
 pub use autoregression::Autoregression;

@@ -320,39 +320,14 @@ impl ScaleError {
 /// # Ok::<(), Box<dyn std::error::Error>>(())
 /// ```
 pub fn to_spectrum(raw: &RawSpectrum, settings: &ScaleSettings) -> Result<Scaled, ScaleError> {
-    let mut notes = Vec::new();
-    check_settings(raw, settings)?;
-    let map = VelocityMap::new(raw, settings, &mut notes)?;
-    let brightness = BrightnessMap::new(raw, settings, &mut notes)?;
-    let velocity = map.velocities(raw)?;
-    check_band(raw, settings, &velocity)?;
-    let edges: Vec<f64> = edges(&raw.axis)
-        .iter()
-        .map(|&edge| map.velocity_km_s(edge))
-        .collect();
-    let width = edges.windows(2).map(|pair| (pair[1] - pair[0]).abs());
-    let temperature = raw.values.iter().zip(&velocity).map(|(&value, &velocity)| {
-        value * brightness.kelvin_per_unit(velocity, settings.rest_frequency_hz)
-    });
-    let mut channels: Vec<(f64, f64, f64)> = velocity
-        .iter()
-        .copied()
-        .zip(width)
-        .zip(temperature)
-        .map(|((velocity, width), temperature)| (velocity, width, temperature))
-        .collect();
-    if channels.first().map(|channel| channel.0) > channels.last().map(|channel| channel.0) {
-        channels.reverse();
-    }
-    let spectrum = Spectrum::new(
-        channels.iter().map(|channel| channel.0).collect(),
-        channels.iter().map(|channel| channel.1).collect(),
-        channels.iter().map(|channel| channel.2).collect(),
-    )
-    .map_err(|source| ScaleError::Spectrum {
-        file: file_of(raw),
-        source,
+    let conversion = Conversion::new(raw, settings)?;
+    let spectrum = (conversion.spectrum(raw.values.iter().copied())).map_err(|source| {
+        ScaleError::Spectrum {
+            file: file_of(raw),
+            source,
+        }
     })?;
+    let mut notes = conversion.notes;
     let masked = spectrum.len() - spectrum.usable_channels();
     if masked > 0 {
         notes.push(ScaleNote::Masked {
@@ -361,6 +336,81 @@ pub fn to_spectrum(raw: &RawSpectrum, settings: &ScaleSettings) -> Result<Scaled
         });
     }
     Ok(Scaled { spectrum, notes })
+}
+
+/// The way of many spectra of one axis and unit, such as those of a cube, onto the common scale.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Conversion {
+    velocity_km_s: Vec<f64>,
+    width_km_s: Vec<f64>,
+    kelvin_per_unit: Vec<f64>,
+    /// Whether velocities descend in the file's order of channels.
+    descending: bool,
+    notes: Vec<ScaleNote>,
+}
+
+impl Conversion {
+    /// For spectra that `raw` describes; its values are not looked at.
+    ///
+    /// # Errors
+    ///
+    /// As [`to_spectrum`].
+    pub fn new(raw: &RawSpectrum, settings: &ScaleSettings) -> Result<Self, ScaleError> {
+        let mut notes = Vec::new();
+        check_settings(raw, settings)?;
+        let map = VelocityMap::new(raw, settings, &mut notes)?;
+        let brightness = BrightnessMap::new(raw, settings, &mut notes)?;
+        let mut velocity_km_s = map.velocities(raw)?;
+        check_band(raw, settings, &velocity_km_s)?;
+        let edges: Vec<f64> = edges(&raw.axis)
+            .iter()
+            .map(|&edge| map.velocity_km_s(edge))
+            .collect();
+        let mut width_km_s: Vec<f64> = (edges.windows(2))
+            .map(|pair| (pair[1] - pair[0]).abs())
+            .collect();
+        let mut kelvin_per_unit: Vec<f64> = (velocity_km_s.iter())
+            .map(|&velocity| brightness.kelvin_per_unit(velocity, settings.rest_frequency_hz))
+            .collect();
+        let descending = velocity_km_s.first() > velocity_km_s.last();
+        if descending {
+            velocity_km_s.reverse();
+            width_km_s.reverse();
+            kelvin_per_unit.reverse();
+        }
+        Ok(Self {
+            velocity_km_s,
+            width_km_s,
+            kelvin_per_unit,
+            descending,
+            notes,
+        })
+    }
+
+    /// What was assumed or changed, but for blank channels.
+    #[must_use]
+    pub fn notes(&self) -> &[ScaleNote] {
+        &self.notes
+    }
+
+    /// The spectrum of values in the file's order and unit, `NaN` where blank.
+    ///
+    /// # Errors
+    ///
+    /// [`SpectrumError`] where the values are not as many as the channels, or all blank.
+    pub fn spectrum(
+        &self,
+        values: impl DoubleEndedIterator<Item = f64>,
+    ) -> Result<Spectrum, SpectrumError> {
+        let mut values: Vec<f64> = values.collect();
+        if self.descending {
+            values.reverse();
+        }
+        for (value, factor) in values.iter_mut().zip(&self.kelvin_per_unit) {
+            *value *= factor;
+        }
+        Spectrum::new(self.velocity_km_s.clone(), self.width_km_s.clone(), values)
+    }
 }
 
 fn file_of(raw: &RawSpectrum) -> String {

@@ -21,8 +21,17 @@ pub(super) const GZIP_MAGIC: [u8; 2] = [0x1f, 0x8b];
 ///
 /// The file is missing, unreadable or too large.
 pub fn load(path: &Path) -> Result<Vec<u8>, ReadError> {
-    let file = File::open(path).map_err(|error| unreadable(path, &error))?;
+    let file = open(path)?;
     take(path, file, LIMIT_BYTES).map_err(|error| unreadable(path, &error))?
+}
+
+/// Opens a file.
+///
+/// # Errors
+///
+/// The file is missing or unreadable.
+pub(super) fn open(path: &Path) -> Result<File, ReadError> {
+    File::open(path).map_err(|error| unreadable(path, &error))
 }
 
 /// Unpacks a gzip stream.

@@ -387,7 +387,7 @@ pub enum ReadError {
         /// Bytes promised.
         needed_bytes: u128,
         /// Bytes there.
-        found_bytes: usize,
+        found_bytes: u64,
     },
     /// No header-data unit holds a spectrum.
     #[error("{}: no spectrum among {units}, expected an image with one spectral axis or a binary table", path.display())]
@@ -449,6 +449,48 @@ pub enum ReadError {
         path: PathBuf,
         /// Header-data unit, from 0.
         unit: usize,
+    },
+    /// A pointing twice in a table.
+    #[error("{}:{line}: {what} stands in line {before} already, expected each once", path.display())]
+    RepeatedPointing {
+        /// The table.
+        path: PathBuf,
+        /// The line.
+        line: usize,
+        /// The name or the position.
+        what: String,
+        /// The line that has it too.
+        before: usize,
+    },
+    /// An image whose axes are none of a cube.
+    #[error("{}: HDU {unit}: axes {found}, expected RA and DEC or GLON and GLAT, a spectral one, and others of length 1", path.display())]
+    FitsCubeAxes {
+        /// The file.
+        path: PathBuf,
+        /// Header-data unit, from 0.
+        unit: usize,
+        /// Types and lengths of the axes, in words.
+        found: String,
+    },
+    /// A compressed image that cannot be decoded right.
+    #[error("{}: HDU {unit}: a tile-compressed image: {reason}", path.display())]
+    FitsTiles {
+        /// The file.
+        path: PathBuf,
+        /// Header-data unit, from 0.
+        unit: usize,
+        /// What is wrong, found and expected.
+        reason: String,
+    },
+    /// No room to unpack a file.
+    #[error("{}: cannot be unpacked in {}: {reason}", path.display(), scratch.display())]
+    NoScratch {
+        /// The file.
+        path: PathBuf,
+        /// The folder for temporary files.
+        scratch: PathBuf,
+        /// What the operating system says.
+        reason: String,
     },
     /// A variable-length column.
     #[error("{}: HDU {unit}, column `{column}`: variable-length arrays ({format}), expected fixed-length ones", path.display())]
@@ -571,6 +613,12 @@ impl ReadError {
             ReadError::FitsManyAxes { .. } => "cut out the spectrum of one position".into(),
             ReadError::FitsAxisType { .. } => "convert the axis to frequency or velocity".into(),
             ReadError::FitsTileCompressed { .. } => "uncompress the image first".into(),
+            ReadError::RepeatedPointing { .. } => {
+                "average spectra of one position, or leave one out".into()
+            }
+            ReadError::FitsCubeAxes { .. } => "check that this is the cube that you meant".into(),
+            ReadError::FitsTiles { .. } => "uncompress the image first".into(),
+            ReadError::NoScratch { .. } => "make room, or uncompress the file elsewhere".into(),
             ReadError::FitsVariableLength { .. } => "write the column with a fixed length".into(),
             ReadError::FitsManyRows { columns, .. } => {
                 format!("choose a row by number, or by COLUMN=VALUE with one of {columns}")

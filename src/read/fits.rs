@@ -1,11 +1,13 @@
 //! FITS files (standard 4.0): finds the header-data units, checks every size that a header states
 //! against the file before anything is allocated, and chooses the unit that holds the spectrum.
 
+use std::io::{self, Cursor, Read, Seek, SeekFrom};
 use std::path::Path;
 
 use fitskit::Header;
 
 use super::error::{Place, ReadError};
+use super::pointings::PointingSpectrum;
 use super::unit::{AxisUnit, ValueUnit};
 use super::{Draft, ReadOptions, fits_image, fits_table};
 use crate::spectrum::{AxisKind, BeamArcsec, Frame, RawSpectrum};
@@ -26,13 +28,22 @@ pub(super) struct Unit<'a> {
     pub header: Header,
     /// Lengths of the axes.
     pub axes: Vec<usize>,
-    /// The data, without padding.
+    /// The data, without padding; nothing where they stay in the file.
     pub data: &'a [u8],
+    /// Where the data begin in the file, and their length.
+    pub place: DataPlace,
+}
+
+/// A unit's data in its file, bytes, without padding.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub(super) struct DataPlace {
+    pub start: u64,
+    pub length: u64,
 }
 
 /// What a unit is.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
-enum Content {
+pub(super) enum Content {
     Empty,
     Image,
     Table,
@@ -67,11 +78,25 @@ pub(super) fn read(
     }
 }
 
+/// Reads every spectrum of a binary table with one a row.
+pub(super) fn read_pointings(
+    path: &Path,
+    bytes: &[u8],
+    options: &ReadOptions,
+) -> Result<Vec<PointingSpectrum>, ReadError> {
+    let units = units(path, bytes)?;
+    let unit = choose(path, &units, options)?;
+    match unit.content() {
+        Content::Table => fits_table::read_pointings(path, unit, options),
+        _ => Err(no_spectrum(path, &units)),
+    }
+}
+
 impl Unit<'_> {
-    fn content(&self) -> Content {
+    pub fn content(&self) -> Content {
         let extension = self.header.get_string("XTENSION").map(str::trim);
         match extension {
-            _ if self.data.is_empty() => Content::Empty,
+            _ if self.place.length == 0 => Content::Empty,
             None | Some("IMAGE") => Content::Image,
             Some("BINTABLE") if self.header.get_bool("ZIMAGE") == Some(true) => {
                 Content::TileCompressed
@@ -81,7 +106,7 @@ impl Unit<'_> {
         }
     }
 
-    fn describe(&self) -> String {
+    pub fn describe(&self) -> String {
         let what = match self.content() {
             Content::Empty => "no data".to_string(),
             Content::Image => {
@@ -242,7 +267,7 @@ fn choose<'u, 'a>(
     }
 }
 
-fn no_spectrum(path: &Path, units: &[Unit<'_>]) -> ReadError {
+pub(super) fn no_spectrum(path: &Path, units: &[Unit<'_>]) -> ReadError {
     ReadError::FitsNoSpectrum {
         path: path.to_path_buf(),
         units: units
@@ -255,22 +280,41 @@ fn no_spectrum(path: &Path, units: &[Unit<'_>]) -> ReadError {
 
 /// All header-data units, each checked against the length of the file.
 fn units<'a>(path: &Path, bytes: &'a [u8]) -> Result<Vec<Unit<'a>>, ReadError> {
+    let mut units = scan(path, &mut Cursor::new(bytes), bytes.len() as u64)?;
+    for unit in &mut units {
+        // The scan found both within `bytes`.
+        let [start, length] = [unit.place.start, unit.place.length]
+            .map(|place| usize::try_from(place).unwrap_or(usize::MAX));
+        unit.data = &bytes[start..start + length];
+    }
+    Ok(units)
+}
+
+/// All header-data units of a file of `file_bytes`, their data left where they are.
+pub(super) fn scan<'a>(
+    path: &Path,
+    file: &mut (impl Read + Seek),
+    file_bytes: u64,
+) -> Result<Vec<Unit<'a>>, ReadError> {
+    let failed = |error: io::Error| ReadError::Unreadable {
+        path: path.to_path_buf(),
+        reason: error.to_string(),
+    };
     let mut units = Vec::new();
     let mut start = 0;
-    // What follows the last unit without starting an extension is no part of the standard's files.
-    while start == 0
-        || bytes
-            .get(start..)
-            .is_some_and(|rest| rest.starts_with(b"XTENSION"))
-    {
+    loop {
         let number = units.len();
-        let data_start = start + header_bytes(path, number, &bytes[start..])?;
-        let header = Header::read_from(&mut &bytes[start..data_start])
-            .map_err(|_| damaged_card(path, number, &bytes[start..data_start]))?;
+        file.seek(SeekFrom::Start(start)).map_err(failed)?;
+        let Some(cards) = header_cards(path, number, file)? else {
+            return Ok(units);
+        };
+        let header = Header::read_from(&mut cards.as_slice())
+            .map_err(|_| damaged_card(path, number, &cards))?;
         let axes = axes(path, number, &header)?;
         let needed = data_bytes(path, number, &header, &axes)?;
-        let left = bytes.len() - data_start;
-        let length = usize::try_from(needed)
+        let data_start = start + cards.len() as u64;
+        let left = file_bytes.saturating_sub(data_start);
+        let length = u64::try_from(needed)
             .ok()
             .filter(|length| *length <= left)
             .ok_or_else(|| truncated(path, number, &header, needed, left))?;
@@ -278,17 +322,46 @@ fn units<'a>(path: &Path, bytes: &'a [u8]) -> Result<Vec<Unit<'a>>, ReadError> {
             number,
             header,
             axes,
-            data: &bytes[data_start..data_start + length],
+            data: &[],
+            place: DataPlace {
+                start: data_start,
+                length,
+            },
         });
-        start = data_start + length.div_ceil(BLOCK_BYTES) * BLOCK_BYTES;
+        start = data_start + length.div_ceil(BLOCK_BYTES as u64) * BLOCK_BYTES as u64;
     }
-    Ok(units)
 }
 
-/// Length of a header in whole blocks: up to END, printable ASCII throughout.
-fn header_bytes(path: &Path, unit: usize, bytes: &[u8]) -> Result<usize, ReadError> {
+/// The bytes of a header in whole blocks: up to END, printable ASCII throughout. None at the end of the
+/// file: what follows the last unit without starting an extension is no part of the standard's files.
+fn header_cards(
+    path: &Path,
+    unit: usize,
+    file: &mut impl Read,
+) -> Result<Option<Vec<u8>>, ReadError> {
+    let mut bytes = Vec::new();
     let mut cards = 0;
-    for block in bytes.chunks_exact(BLOCK_BYTES) {
+    loop {
+        let start = bytes.len();
+        (file
+            .by_ref()
+            .take(BLOCK_BYTES as u64)
+            .read_to_end(&mut bytes))
+        .map_err(|error| ReadError::Unreadable {
+            path: path.to_path_buf(),
+            reason: error.to_string(),
+        })?;
+        let block = &bytes[start..];
+        if start == 0 && unit > 0 && !block.starts_with(b"XTENSION") {
+            return Ok(None);
+        }
+        if block.len() < BLOCK_BYTES {
+            return Err(ReadError::FitsNoEnd {
+                path: path.to_path_buf(),
+                unit,
+                cards: bytes.len() / CARD_BYTES,
+            });
+        }
         for card in block.chunks_exact(CARD_BYTES) {
             cards += 1;
             if let Some(&found) = card.iter().find(|byte| !matches!(byte, b' '..=b'~')) {
@@ -300,15 +373,10 @@ fn header_bytes(path: &Path, unit: usize, bytes: &[u8]) -> Result<usize, ReadErr
                 });
             }
             if card.starts_with(b"END     ") {
-                return Ok(usize::div_ceil(cards * CARD_BYTES, BLOCK_BYTES) * BLOCK_BYTES);
+                return Ok(Some(bytes));
             }
         }
     }
-    Err(ReadError::FitsNoEnd {
-        path: path.to_path_buf(),
-        unit,
-        cards: bytes.len() / CARD_BYTES,
-    })
 }
 
 /// The first card that cannot be understood.
@@ -400,7 +468,7 @@ fn data_bytes(
         .saturating_mul(elements.saturating_add(parameters)))
 }
 
-fn truncated(path: &Path, unit: usize, header: &Header, needed: u128, left: usize) -> ReadError {
+fn truncated(path: &Path, unit: usize, header: &Header, needed: u128, left: u64) -> ReadError {
     let shape: Vec<String> = header
         .iter()
         .filter(|card| {

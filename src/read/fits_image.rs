@@ -62,7 +62,7 @@ fn spectral_axis_number(path: &Path, unit: &Unit<'_>) -> Result<usize, ReadError
 }
 
 /// The axis n from the keywords `CTYPEn`, `CRVALn`, `CDELTn` or `CDn_n`, `CRPIXn` and `CUNITn`.
-fn image_axis(
+pub(super) fn image_axis(
     path: &Path,
     unit: &Unit<'_>,
     number: usize,

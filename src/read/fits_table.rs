@@ -12,6 +12,7 @@ use super::columns::{self, Column, ColumnChoice, Part};
 use super::error::{Place, ReadError};
 use super::fits::{Unit, base_unit, value_unit, whole};
 use super::fits_image::{axis_factor, axis_problem, velocity_reference};
+use super::pointings::{PointingPlace, PointingSpectrum};
 use super::spectral_axis::{self, Keywords};
 use super::unit::{AxisUnit, ValueUnit, nearest};
 use super::{Draft, ReadOptions, RowChoice};
@@ -52,7 +53,106 @@ pub(super) fn read(
     table.one_channel_a_row(options)
 }
 
+/// Reads every spectrum of a table with one a row, and where each was taken.
+pub(super) fn read_pointings(
+    path: &Path,
+    unit: &Unit<'_>,
+    options: &ReadOptions,
+) -> Result<Vec<PointingSpectrum>, ReadError> {
+    let table = Table::open(path, unit)?;
+    if table.rows() == 0 {
+        return Err(ReadError::NoRows {
+            path: path.to_path_buf(),
+        });
+    }
+    let value = table.vector_column(options)?.ok_or_else(|| {
+        let place = unit.card("TFORM");
+        columns::no_column_for(path, &place, &table.columns, "spectrum")
+    })?;
+    let (on_sky, columns) = table.place_columns()?;
+    let id = table.column_named("id");
+    (0..table.rows())
+        .map(|row| {
+            let mut at = [0.0; 2];
+            for (value, (column, factor)) in at.iter_mut().zip(columns) {
+                let found = table.numbers(row, column)?.first().copied();
+                *value = factor
+                    * found.filter(|found| found.is_finite()).ok_or_else(|| {
+                        table.not_a_number(
+                            row,
+                            column,
+                            &found.map_or_else(String::new, |v| v.to_string()),
+                        )
+                    })?;
+            }
+            Ok(PointingSpectrum {
+                id: id
+                    .and_then(|column| table.cell_text(row, column))
+                    .unwrap_or_else(|| (row + 1).to_string()),
+                place: if on_sky {
+                    PointingPlace::Sky(at)
+                } else {
+                    PointingPlace::Offset(at)
+                },
+                row: row + 1,
+                spectrum: table.spectrum_of_row(row, value, options),
+            })
+        })
+        .collect()
+}
+
+/// Names of the two columns that say where a spectrum was taken, and whether they are sky coordinates; the last
+/// is how single-dish tables of one spectrum a row name the second and third axis.
+const PLACE_COLUMNS: [([&str; 2], bool); 5] = [
+    (["dx_arcsec", "dy_arcsec"], false),
+    (["dx", "dy"], false),
+    (["ra_deg", "dec_deg"], true),
+    (["ra", "dec"], true),
+    (["CRVAL2", "CRVAL3"], true),
+];
+
 impl<'u, 'a> Table<'u, 'a> {
+    /// Whether positions are on the sky (else offsets); and of both columns number and factor to degrees or
+    /// arcseconds.
+    fn place_columns(&self) -> Result<(bool, [(usize, f64); 2]), ReadError> {
+        for (names, on_sky) in PLACE_COLUMNS {
+            let [Some(x), Some(y)] = names.map(|name| self.column_named(name)) else {
+                continue;
+            };
+            let factor = |column: usize| {
+                let unit = self.columns[column]
+                    .unit
+                    .as_deref()
+                    .map(str::to_ascii_lowercase);
+                let degrees = match unit.as_deref() {
+                    Some("deg" | "degree" | "degrees") => 1.0,
+                    Some("arcmin") => 1.0 / 60.0,
+                    Some("arcsec") => 1.0 / 3600.0,
+                    Some(_) => {
+                        return Err(self.unit.wrong_card(
+                            self.path,
+                            &format!("TUNIT{}", column + 1),
+                            format!("`{}`", unit.unwrap_or_default()),
+                            "deg, arcmin or arcsec",
+                        ));
+                    }
+                    None if on_sky => 1.0,
+                    None => 1.0 / 3600.0,
+                };
+                Ok((column, if on_sky { degrees } else { degrees * 3600.0 }))
+            };
+            return Ok((on_sky, [factor(x)?, factor(y)?]));
+        }
+        Err(ReadError::NoColumnFor {
+            path: self.path.to_path_buf(),
+            place: self.unit.card("TTYPE"),
+            role: "position",
+            columns: columns::list(&self.columns),
+            expected: "dx_arcsec and dy_arcsec, or ra_deg and dec_deg",
+            nearest: None,
+        })
+    }
+
     /// Checks the header and takes the table.
     fn open(path: &'u Path, unit: &'u Unit<'a>) -> Result<Self, ReadError> {
         let header = &unit.header;
@@ -213,6 +313,15 @@ impl<'u, 'a> Table<'u, 'a> {
         options: &ReadOptions,
     ) -> Result<RawSpectrum, ReadError> {
         let row = self.choose_row(options)?;
+        self.spectrum_of_row(row, value, options)
+    }
+
+    fn spectrum_of_row(
+        &self,
+        row: usize,
+        value: usize,
+        options: &ReadOptions,
+    ) -> Result<RawSpectrum, ReadError> {
         self.check_cell_axes(value)?;
         let values = self.numbers(row, value)?;
         let value_unit = self.vector_unit(value, options)?;
@@ -576,7 +685,7 @@ fn is_data_name(name: &str) -> bool {
 
 /// Bytes that a column of this TFORM takes in a row; none where the text is no format. Repeat counts
 /// of variable-length arrays are 0 or 1; those of 0 take nothing and are not supported.
-fn format_bytes(text: &str) -> Option<usize> {
+pub(super) fn format_bytes(text: &str) -> Option<usize> {
     let digits = text.bytes().take_while(u8::is_ascii_digit).count();
     let repeat: usize = match digits {
         0 => 1,

@@ -7,12 +7,15 @@
 mod bytes;
 mod columns;
 mod csv;
+pub mod cube;
 mod ecsv;
 mod error;
 mod fits;
 mod fits_image;
 mod fits_table;
 mod plain;
+pub mod pointings;
+pub mod sky;
 mod spectral_axis;
 mod text;
 mod unit;
@@ -221,6 +224,15 @@ impl Draft {
         }
     }
 
+    /// What a cube's file states of every spectrum: the axis is checked, there are no values.
+    fn without_values(self, path: &Path, axis: Vec<f64>) -> Result<RawSpectrum, ReadError> {
+        check_axis(path, &axis, |channel| Place::Channel {
+            unit: 0,
+            channel: channel + 1,
+        })?;
+        Ok(self.raw(path, axis, Vec::new()))
+    }
+
     /// Checks the arrays (in the file's units) and applies the units.
     fn finish(
         self,
@@ -231,10 +243,15 @@ impl Draft {
     ) -> Result<RawSpectrum, ReadError> {
         check_axis(path, &axis, place_of)?;
         check_values(path, &values)?;
+        Ok(self.raw(path, axis, values))
+    }
+
+    /// Applies the units.
+    fn raw(self, path: &Path, axis: Vec<f64>, values: Vec<f64>) -> RawSpectrum {
         let scaled = |array: Vec<f64>, factor: f64| -> Vec<f64> {
             array.into_iter().map(|value| value * factor).collect()
         };
-        Ok(RawSpectrum {
+        RawSpectrum {
             axis_kind: self.axis_unit.kind,
             convention_stated: self.axis_unit.convention_stated,
             axis: scaled(axis, self.axis_unit.factor),
@@ -251,7 +268,7 @@ impl Draft {
                 path: path.to_path_buf(),
                 format: self.format,
             },
-        })
+        }
     }
 }
 

@@ -64,7 +64,6 @@ impl Group {
                 | Self::TwoLayerContinuum
                 | Self::Hill
                 | Self::HillSurface
-                | Self::Infall
         )
     }
 
@@ -238,11 +237,12 @@ pub const QUANTITIES: &[Quantity] = &[
     with(real(Layer, "layer_t_ex_k", KELVIN, "excitation", "Excitation temperature of the thick line's layer"), Error),
     real(Layer, "layer_chi2_red", None, "reduced chi2", "Reduced chi-squared of the thick line as one uniform layer"),
 
-    with(real(TwoLayer, "two_layer_v_in_km_s", KM_S, "inward speed", "Inward speed of the two-layer model"), Error),
+    with(real(TwoLayer, "two_layer_v_in_km_s", KM_S, "inward speed", "Inward speed of the two-layer model"), ErrorAndIntervals),
     with(real(TwoLayer, "two_layer_tau", None, "optical depth of a layer", "Peak optical depth of one layer"), Error),
     with(real(TwoLayer, "two_layer_t_front_k", KELVIN, "front layer", "Excitation temperature of the front layer"), Error),
     with(real(TwoLayer, "two_layer_t_rear_k", KELVIN, "rear layer", "Excitation temperature of the rear layer"), Error),
     real(TwoLayer, "two_layer_chi2_red", None, "reduced chi2", "Reduced chi-squared of the two-layer fit to the pair"),
+    real(TwoLayer, "two_layer_share", None, "share of the evidence", "Share of the model's evidence in the averaged speed"),
 
     with(real(TwoLayerContinuum, "two_layer_continuum_v_in_km_s", KM_S, "inward speed", "Inward speed, two layers and a continuum source"), Error),
     with(real(TwoLayerContinuum, "two_layer_continuum_tau", None, "optical depth of a layer", "Peak optical depth of one layer"), Error),
@@ -252,29 +252,35 @@ pub const QUANTITIES: &[Quantity] = &[
     with(real(TwoLayerContinuum, "two_layer_continuum_t_continuum_k", KELVIN, "continuum source", "Temperature of the continuum source"), Error),
     real(TwoLayerContinuum, "two_layer_continuum_chi2_red", None, "reduced chi2", "Reduced chi-squared of this fit to the pair"),
 
-    with(real(Hill, "hill_v_in_km_s", KM_S, "inward speed", "Inward speed of the hill model"), Error),
+    with(real(Hill, "hill_v_in_km_s", KM_S, "inward speed", "Inward speed of the hill model"), ErrorAndIntervals),
     with(real(Hill, "hill_tau", None, "optical depth of a half", "Peak optical depth of one half of the hill"), Error),
     with(real(Hill, "hill_t_peak_k", KELVIN, "peak of the hill", "Excitation temperature in the middle of the hill"), Error),
     real(Hill, "hill_chi2_red", None, "reduced chi2", "Reduced chi-squared of the hill fit to the pair"),
+    real(Hill, "hill_share", None, "share of the evidence", "Share of the model's evidence in the averaged speed"),
 
-    with(real(HillSurface, "hill_surface_v_in_km_s", KM_S, "inward speed", "Inward speed, hill with a free surface temperature"), Error),
+    with(real(HillSurface, "hill_surface_v_in_km_s", KM_S, "inward speed", "Inward speed, hill with a free surface temperature"), ErrorAndIntervals),
     with(real(HillSurface, "hill_surface_tau", None, "optical depth of a half", "Peak optical depth of one half of the hill"), Error),
     with(real(HillSurface, "hill_surface_t_peak_k", KELVIN, "peak of the hill", "Excitation temperature in the middle of the hill"), Error),
     with(real(HillSurface, "hill_surface_t_surface_k", KELVIN, "surface of the hill", "Excitation temperature at both surfaces of the hill"), Error),
     real(HillSurface, "hill_surface_chi2_red", None, "reduced chi2", "Reduced chi-squared of this fit to the pair"),
+    real(HillSurface, "hill_surface_share", None, "share of the evidence", "Share of the model's evidence in the averaged speed"),
 
     with(real(Sphere, "sphere_v_in_km_s", KM_S, "inward speed", "Inward speed of the collapsing sphere"), Error),
     real(Sphere, "sphere_chi2_red", None, "reduced chi2", "Reduced chi-squared of the sphere's fit to the pair"),
 
-    with(real(Infall, "v_lsr_km_s", KM_S, "systemic velocity", "Systemic velocity from the joint fit of the adopted model"), Error),
-    with(real(Infall, "sigma_km_s", KM_S, "velocity dispersion", "Velocity dispersion from the joint fit of the adopted model"), Error),
+    with(real(Infall, "v_lsr_km_s", KM_S, "systemic velocity", "Systemic velocity: of the posterior, or from the joint fit of v_in_model"), Error),
+    with(real(Infall, "sigma_km_s", KM_S, "velocity dispersion", "Velocity dispersion: of the posterior, or from the joint fit of v_in_model"), Error),
     with(real(Infall, "v_in_km_s", KM_S, "adopted inward speed", "Adopted inward speed; positive is infall"), ErrorAndIntervals),
-    text(Infall, "v_in_model", "adopted from", "Model that the adopted inward speed comes from"),
+    real(Infall, "v_in_systematic_km_s", KM_S, "systematic, between models", "Half the difference of the models' median speeds: a systematic beside the interval"),
+    real(Infall, "v_in_limit_km_s", KM_S, "limit in either direction", "Speed that |v_in| is below with 95 % probability, where the interval of v_in holds zero"),
+    text(Infall, "v_in_model", "adopted from", "Models that the adopted speed is averaged over, joined by +; the one model of a formal fit"),
+    text(Infall, "v_in_errors", "errors", "Where speed and errors come from: posterior, or formal (least squares)"),
 
     real(Hypotheses, "p_infall", None, "infall", "Probability of infall"),
     real(Hypotheses, "p_expansion", None, "expansion", "Probability of expansion"),
     real(Hypotheses, "p_static", None, "static", "Probability of neither infall nor expansion"),
     real(Hypotheses, "p_two_clouds", None, "two clouds", "Probability of two clouds on one line of sight"),
+    text(Hypotheses, "verdict", "verdict", "What the data exclude and at what odds, what they cannot, in sentences"),
 
     with(real(Collapse, "mass_dust_msun", MASS, "mass from dust", "Mass of gas from the dust's flux, S d^2/(kappa B(T_d))"), Intervals),
     with(real(Collapse, "mass_msun", MASS, "mass", "Mass within the source's radius"), Intervals),
@@ -321,12 +327,17 @@ impl Quantity {
             columns.push(self.column("_err", format!("{kind} of {}", self.name)));
         }
         if matches!(self.uncertainty, Intervals | ErrorAndIntervals) {
+            let of = if self.group.is_fitted() {
+                "the posterior's"
+            } else {
+                "the"
+            };
             for percent in [68, 95] {
                 for (suffix, end) in [("lo", "Lower"), ("hi", "Upper")] {
                     columns.push(self.column(
                         &format!("_{suffix}{percent}"),
                         format!(
-                            "{end} end of the central {percent} % interval of {}",
+                            "{end} end of {of} central {percent} % interval of {}",
                             self.name
                         ),
                     ));

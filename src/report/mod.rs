@@ -5,15 +5,22 @@
 //! and rounded to their errors where a person reads them. [`columns`] holds the name, unit and
 //! meaning of every result column; [`Row::set`] refuses a name that is not among them.
 
+pub mod citation;
 pub mod columns;
 mod csv;
+pub mod cube;
 mod ecsv;
 #[cfg(feature = "figures")]
 pub mod figure;
 pub mod files;
 mod fits_table;
 mod json;
+mod paper;
+pub mod ranking;
 mod rounding;
+pub mod sample_statistics;
+mod sentence;
+pub mod sky_map;
 pub mod spectra;
 mod summary;
 mod table;
@@ -23,7 +30,9 @@ pub use self::csv::{CsvRows, write_csv};
 pub use ecsv::write_ecsv;
 pub use fits_table::write_fits;
 pub use json::{write_json, write_json_rows};
-pub use rounding::{rounded, rounded_interval, rounded_plain};
+pub use paper::PaperTable;
+pub use rounding::{rounded, rounded_interval, rounded_plain, rounded_range};
+pub use sentence::verdict_sentences;
 pub use summary::summary;
 pub use table::{Column, Kind, Row, Schema, Table, Value};
 pub use table_files::TableFiles;

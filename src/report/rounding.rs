@@ -57,6 +57,26 @@ pub fn rounded_interval(value: f64, low: f64, high: f64) -> String {
     with_power(&text, power)
 }
 
+/// The ends of an interval, to the place that half its width warrants: `0.28 to 0.33`.
+///
+/// ```
+/// assert_eq!(inrush::report::rounded_range(0.2813, 0.3342), "0.281 to 0.334");
+/// ```
+pub fn rounded_range(low: f64, high: f64) -> String {
+    let width = 0.5 * (high - low);
+    if !(is_error(width) && low.is_finite() && high.is_finite()) {
+        return format!("{} to {}", rounded_plain(low), rounded_plain(high));
+    }
+    let power = shown_power(low.abs().max(high.abs()));
+    let place = last_place(width) - power;
+    let text = format!(
+        "{} to {}",
+        scaled(low, power, place),
+        scaled(high, power, place)
+    );
+    with_power(&text, power)
+}
+
 /// A value without an error, to three significant digits: `12.3`, `235000`, `1.23e-5`.
 pub fn rounded_plain(value: f64) -> String {
     if !value.is_finite() {

@@ -4,7 +4,7 @@ use std::fmt::Write as _;
 
 use super::columns::{Group, QUANTITIES, Quantity, Uncertainty};
 use super::csv::cell;
-use super::{Row, Value, rounded, rounded_interval, rounded_plain};
+use super::{Row, Value, rounded, rounded_interval, rounded_plain, rounded_range};
 
 /// Columns that the text is wrapped at.
 const WIDTH: usize = 78;
@@ -19,6 +19,8 @@ const LABEL: usize = 30;
 pub fn summary(row: &Row, cautions: &[String]) -> String {
     let mut text = title(row);
     let mut heading = None;
+    let of_posterior = row.get("v_in_errors").ok().and_then(Value::text) == Some("posterior");
+    let formal = !of_posterior;
     for quantity in QUANTITIES {
         if matches!(
             quantity.group,
@@ -31,16 +33,30 @@ pub fn summary(row: &Row, cautions: &[String]) -> String {
         };
         if heading != Some(quantity.group) {
             heading = Some(quantity.group);
-            let errors = if quantity.group.is_fitted() {
+            let errors = if quantity.group.is_fitted() || quantity.group == Group::Infall && formal
+            {
                 " (formal errors)"
-            } else if quantity.group.is_derived() {
+            } else if quantity.group.is_derived() && formal {
                 " (68 % intervals; formal errors of the fit)"
+            } else if quantity.group.is_derived() || quantity.group == Group::Infall {
+                " (68 % intervals)"
             } else {
                 ""
             };
             let _ = write!(text, "\n{}{errors}\n", quantity.group.heading());
         }
+        if quantity.name == "verdict" {
+            for sentence in shown.trim_end_matches('.').split(". ") {
+                text.push_str(&wrapped(sentence));
+            }
+            continue;
+        }
         let _ = writeln!(text, "  {:<LABEL$}{shown}", quantity.label);
+        if quantity.group.is_fitted()
+            && let Some(range) = posterior_range(quantity, row)
+        {
+            let _ = writeln!(text, "  {:<LABEL$}{range}", "68 % of its posterior");
+        }
     }
     if let Ok(Value::Text(missing)) = row.get("missing_inputs") {
         let _ = write!(text, "\n{}\n", Group::Missing.heading());
@@ -87,6 +103,8 @@ fn shown(quantity: &Quantity, row: &Row) -> Option<String> {
         cell.ok().and_then(Value::number)
     };
     let interval = match quantity.uncertainty {
+        // a least-squares value beside the posterior's interval: they stand on lines of their own
+        _ if quantity.group.is_fitted() => None,
         Uncertainty::Intervals | Uncertainty::ErrorAndIntervals => {
             further("_lo68").zip(further("_hi68"))
         }
@@ -99,11 +117,26 @@ fn shown(quantity: &Quantity, row: &Row) -> Option<String> {
     let value = match (interval, error) {
         (Some((low, high)), _) => rounded_interval(number, low, high),
         (None, Some(err)) => rounded(number, err),
-        (None, None) if quantity.group == Group::Hypotheses => format!("{number:.3}"),
+        (None, None)
+            if quantity.group == Group::Hypotheses || quantity.name.ends_with("_share") =>
+        {
+            format!("{number:.3}")
+        }
         (None, None) => rounded_plain(number),
     };
     let unit = quantity.unit.map(|unit| format!(" {}", spoken(unit)));
     Some(value + &unit.unwrap_or_default())
+}
+
+/// The posterior's 68 % interval of a model's parameter.
+fn posterior_range(quantity: &Quantity, row: &Row) -> Option<String> {
+    let end = |suffix: &str| {
+        let cell = row.get(&format!("{}{suffix}", quantity.name));
+        cell.ok().and_then(Value::number)
+    };
+    let range = rounded_range(end("_lo68")?, end("_hi68")?);
+    let unit = quantity.unit.map(|unit| format!(" {}", spoken(unit)));
+    Some(range + &unit.unwrap_or_default())
 }
 
 /// A unit as people write it.

@@ -5,6 +5,7 @@ use std::sync::Arc;
 
 use super::ReportError;
 use crate::numeric::Estimate;
+use serde::{Deserialize, Serialize};
 
 /// What a column holds.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -42,7 +43,7 @@ pub struct Column {
 }
 
 /// One cell.
-#[derive(Clone, Debug, PartialEq)]
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub enum Value {
     /// Text; not empty.
     Text(String),
@@ -163,6 +164,24 @@ impl Schema {
         }
     }
 
+    /// A row of these cells.
+    ///
+    /// # Errors
+    ///
+    /// [`ReportError::ForeignRow`] where they are not as many as the columns.
+    pub fn row_of(&self, values: Vec<Value>) -> Result<Row, ReportError> {
+        if values.len() != self.columns().len() {
+            return Err(ReportError::ForeignRow {
+                found: values.len(),
+                expected: self.columns().len(),
+            });
+        }
+        Ok(Row {
+            schema: self.clone(),
+            values,
+        })
+    }
+
     fn position(&self, name: &str) -> Result<usize, ReportError> {
         self.0
             .index
@@ -279,6 +298,12 @@ impl Row {
     /// The cells, in the order of the columns.
     pub fn values(&self) -> &[Value] {
         &self.values
+    }
+
+    /// The cells alone, in the order of the columns.
+    #[must_use]
+    pub fn into_values(self) -> Vec<Value> {
+        self.values
     }
 
     /// The columns it is for.

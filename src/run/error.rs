@@ -1,8 +1,9 @@
 //! Why a run cannot be done; rendered by the command line.
 
-use super::{BatchError, Panicked};
+use super::{BatchError, JournalError, JudgeError, Panicked};
 use crate::derive::DeriveError;
 use crate::fit::FitError;
+use crate::grid::cubes::CubeError;
 use crate::line::LineError;
 use crate::prepare::scale::ScaleError;
 use crate::prepare::{PairError, PrepareError};
@@ -47,6 +48,26 @@ pub enum RunError {
         path: PathBuf,
         /// Line, from 1.
         line: Option<usize>,
+        /// What was found and expected.
+        message: String,
+        /// What to do.
+        hint: Option<String>,
+    },
+    /// A directory without results.
+    #[error("{}: no table of results, expected one of {expected}", path.display())]
+    NoResults {
+        /// The directory.
+        path: PathBuf,
+        /// Names of tables.
+        expected: String,
+    },
+    /// A sample table that is none.
+    #[error("{}:{line}: {message}", path.display())]
+    Sample {
+        /// The table.
+        path: PathBuf,
+        /// Line, from 1.
+        line: u64,
         /// What was found and expected.
         message: String,
         /// What to do.
@@ -125,6 +146,9 @@ pub enum RunError {
     /// A pair that cannot be fitted.
     #[error(transparent)]
     Fit(#[from] FitError),
+    /// A pair that cannot be judged.
+    #[error(transparent)]
+    Judge(#[from] JudgeError),
     /// A property of the source that no source has, or a setting of what is derived from it.
     #[error(transparent)]
     Derive(#[from] DeriveError),
@@ -137,6 +161,28 @@ pub enum RunError {
     /// Many pairs that cannot be worked on.
     #[error(transparent)]
     Batch(#[from] BatchError),
+    /// A journal of finished items that cannot be used.
+    #[error(transparent)]
+    Journal(#[from] JournalError),
+    /// Two cubes that do not belong together.
+    #[error(transparent)]
+    Cubes(#[from] CubeError),
+    /// Two tables of pointings without a position that is in both.
+    #[error("{} and {}: no position in both, expected rows of the same positions", thick.display(), thin.display())]
+    NoCommonPositions {
+        /// The thick line's file.
+        thick: PathBuf,
+        /// The thin line's file.
+        thin: PathBuf,
+    },
+    /// No pointing of a map has a result.
+    #[error("none of {pointings} pointings can be used; the first: {first}")]
+    NoPointing {
+        /// Pointings with spectra.
+        pointings: usize,
+        /// Why the first cannot be used.
+        first: String,
+    },
     /// A defect of the program.
     #[error("internal error: {0}")]
     Internal(String),
@@ -160,6 +206,7 @@ impl RunError {
                 | Self::NoLine { .. }
                 | Self::Line { .. }
                 | Self::Setting { .. }
+                | Self::Judge(_)
                 | Self::Derive(_)),
             ) => Self::InSheet {
                 path: path.to_owned(),
@@ -230,6 +277,9 @@ impl RunError {
             Self::File { .. } | Self::NoSheet { .. } => {
                 Some("check the path and its permissions".to_owned())
             }
+            Self::NoResults { .. } => {
+                Some("give what was --out of a run, or columns with --for".to_owned())
+            }
             Self::NotADirectory { .. } => {
                 Some("give --out another name, or move the file away".to_owned())
             }
@@ -237,7 +287,9 @@ impl RunError {
                 Some("give --out another name: what is there is left as it is".to_owned())
             }
             Self::InSheet { error, .. } => error.hint(),
-            Self::Sheet { hint, .. } | Self::Setting { hint, .. } => hint.clone(),
+            Self::Sheet { hint, .. } | Self::Sample { hint, .. } | Self::Setting { hint, .. } => {
+                hint.clone()
+            }
             Self::NoFile { .. } => {
                 Some("inrush fit --help shows both ways to give a pair".to_owned())
             }
@@ -250,10 +302,17 @@ impl RunError {
             Self::Scale(error) => error.hint(),
             Self::Prepare { error, .. } => error.hint(),
             Self::Pair { error, .. } | Self::Fit(error) => error.hint(),
+            Self::Judge(error) => error.hint(),
             Self::Derive(error) => error.hint(),
             Self::Simulate(error) => error.hint(),
             Self::Report(error) => error.hint(),
             Self::Batch(error) => error.hint(),
+            Self::Journal(error) => Some(error.hint()),
+            Self::Cubes(error) => error.hint(),
+            Self::NoCommonPositions { .. } => {
+                Some("check that both tables are of one source".to_owned())
+            }
+            Self::NoPointing { .. } => Some("check files and lines of the run sheet".to_owned()),
             Self::Internal(_) => {
                 Some("please report this with the input that caused it".to_owned())
             }

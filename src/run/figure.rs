@@ -1,8 +1,12 @@
 //! The figure of a pair: what is drawn, handed to the report.
 
+use super::calibrate::{self, Calibration, Kind, Share};
 use super::products::profile_word;
-use super::{LineOutcome, PairOutcome};
+use super::{Judged, LineOutcome, PairOutcome};
 use crate::fit::ModelFit;
+use crate::fit::averaged::{Averaged, Row};
+use crate::fit::hypotheses::Speed;
+use crate::fit::posterior::{Family, FamilyPosterior, interval};
 use crate::model::Model;
 use crate::numeric::Estimate;
 use crate::report;
@@ -26,13 +30,16 @@ pub(super) fn pair_figure(outcome: &PairOutcome) -> report::figure::PairFigure {
             .map(|fit| curve(outcome, line, fit, thick))
             .collect(),
     };
-    let adopted = outcome.fit.adopted();
     PairFigure {
         source: outcome.name.clone(),
         thick: panel(&outcome.thick, true),
         thin: panel(&outcome.thin, false),
-        v_lsr_km_s: adopted.and_then(|fit| fit.estimate("v_lsr_km_s")),
+        v_lsr_km_s: systemic(outcome),
         v_thin_km_s: outcome.thin_fit.line.map(|line| line.v_km_s),
+        posterior: outcome
+            .judged
+            .as_ref()
+            .and_then(|judged| posterior_part(outcome, judged)),
         numbers: figure_numbers(outcome),
         cautions: outcome
             .all_cautions()
@@ -106,6 +113,117 @@ fn model_label(model: Model) -> &'static str {
     }
 }
 
+/// Systemic velocity of the posterior, or of the adopted least-squares fit.
+fn systemic(outcome: &PairOutcome) -> Option<Estimate> {
+    posterior_or_fit(outcome, "v_lsr_km_s")
+}
+
+/// A parameter of the adopted posterior, or of the adopted least-squares fit.
+fn posterior_or_fit(outcome: &PairOutcome, name: &str) -> Option<Estimate> {
+    match outcome.judged.as_ref().and_then(Judged::adopted) {
+        Some(averaged) => Some(Estimate {
+            value: averaged.marginal(name)?.median,
+            err: averaged.deviation(name)?,
+        }),
+        None => outcome.fit.adopted()?.estimate(name),
+    }
+}
+
+/// Points of a density, and draws that are shown.
+const POINTS: u32 = 240;
+const DOTS: usize = 400;
+
+fn posterior_part(outcome: &PairOutcome, judged: &Judged) -> Option<report::figure::PosteriorPart> {
+    let averaged = Averaged::new(&judged.posterior, &judged.verdict)?;
+    let speeds = averaged.weighted("v_in_km_s")?;
+    let v_in = interval(&speeds)?;
+    let models: Vec<(Model, &FamilyPosterior)> = judged
+        .verdict
+        .shares
+        .iter()
+        .filter_map(|(model, _)| Some((*model, judged.posterior.of(Family::Moving(*model))?)))
+        .collect();
+    // zero, what the models say, and a little more
+    let ends = models.iter().filter_map(|(_, own)| own.v_in_km_s());
+    let (low, high) = ends.fold((0.0f64, 0.0f64), |(low, high), own| {
+        (low.min(own.interval95.0), high.max(own.interval95.1))
+    });
+    let (low, high) = (low.min(v_in.interval95.0), high.max(v_in.interval95.1));
+    let margin = 0.12 * (high - low);
+    let range_km_s = (low - margin, high + margin);
+    let rows: Vec<Row<'_>> = averaged.rows(DOTS).collect();
+    let draws: Vec<report::figure::SpeedAndDepth> = rows
+        .iter()
+        .filter_map(|row| {
+            Some(report::figure::SpeedAndDepth {
+                label: model_label(row.model).to_owned(),
+                v_in_km_s: row.get("v_in_km_s")?,
+                tau: row.get("tau")?,
+            })
+        })
+        .collect();
+    let detected = outcome.measures.peak_thick_k.is_some();
+    let mut sentences = report::verdict_sentences(&judged.verdict, detected);
+    for sentence in &mut sentences {
+        sentence.push('.');
+    }
+    Some(report::figure::PosteriorPart {
+        range_km_s,
+        averaged: density(&speeds, range_km_s),
+        interval68_km_s: v_in.interval68,
+        interval95_km_s: v_in.interval95,
+        models: models
+            .iter()
+            .map(|(model, own)| {
+                let label = model_label(*model).to_owned();
+                (label, density(&own.v_in, range_km_s))
+            })
+            .collect(),
+        correlation: correlation(&draws),
+        draws,
+        sentences: vec![sentences.join(" ")],
+    })
+}
+
+/// A smooth density of weighted values: Gaussian kernels of Silverman's width (1986, eq. 3.31).
+fn density(values: &[(f64, f64)], (low, high): (f64, f64)) -> Vec<(f64, f64)> {
+    let Some(spread) = interval(values) else {
+        return Vec::new();
+    };
+    let total: f64 = values.iter().map(|(_, weight)| weight).sum();
+    let squares: f64 = values.iter().map(|(_, weight)| weight * weight).sum();
+    let half = 0.5 * (spread.interval68.1 - spread.interval68.0);
+    let width = (0.9 * half * (total * total / squares).powf(-0.2)).max(1e-6 * (high - low));
+    let scale = 1.0 / (total * width * std::f64::consts::TAU.sqrt());
+    (0..=POINTS)
+        .map(|step| {
+            let v = low + (high - low) * f64::from(step) / f64::from(POINTS);
+            let kernels = values.iter().map(|(value, weight)| {
+                let z = (v - value) / width;
+                weight * (-0.5 * z * z).exp()
+            });
+            (v, scale * kernels.sum::<f64>())
+        })
+        .collect()
+}
+
+/// Correlation of speed and logarithm of the optical depth.
+fn correlation(draws: &[report::figure::SpeedAndDepth]) -> Option<f64> {
+    let count = draws.len() as f64;
+    let pairs = || draws.iter().map(|draw| (draw.v_in_km_s, draw.tau.ln()));
+    let (v, tau) = pairs().fold((0.0, 0.0), |sum, one| (sum.0 + one.0, sum.1 + one.1));
+    let (mean_v, mean_tau) = (v / count, tau / count);
+    let mut sums = [0.0; 3];
+    for (v, tau) in pairs() {
+        let (v, tau) = (v - mean_v, tau - mean_tau);
+        sums[0] += v * v;
+        sums[1] += v * tau;
+        sums[2] += tau * tau;
+    }
+    let scale = (sums[0] * sums[2]).sqrt();
+    (scale > 0.0).then(|| sums[1] / scale)
+}
+
 fn figure_numbers(outcome: &PairOutcome) -> Vec<(String, String)> {
     let shown = |estimate: Estimate, unit: &str| {
         let number = report::rounded(estimate.value, estimate.err);
@@ -116,24 +234,62 @@ fn figure_numbers(outcome: &PairOutcome) -> Vec<(String, String)> {
         }
     };
     let mut numbers = Vec::new();
-    for fit in &outcome.fit.models {
-        if let Some(v_in) = fit.estimate("v_in_km_s") {
-            numbers.push((
-                format!("inward speed, {}", model_label(fit.model)),
-                shown(v_in, "km/s"),
-            ));
+    let judged = outcome.judged.as_ref();
+    let averaged = judged.and_then(Judged::adopted);
+    let detected = outcome.measures.peak_thick_k.is_some();
+    if let (Some(judged), Some(averaged)) = (judged, &averaged) {
+        let known = detected && judged.speed != Speed::Unconstrained;
+        let v_in = averaged.marginal("v_in_km_s").filter(|_| known);
+        let value = v_in.map_or_else(
+            || "unconstrained".to_owned(),
+            |v_in| {
+                let (low, high) = v_in.interval68;
+                format!("{} km/s", report::rounded_interval(v_in.median, low, high))
+            },
+        );
+        numbers.push(("inward speed".to_owned(), value));
+        match judged.speed {
+            Speed::Below { limit_km_s } => numbers.push((
+                "limit, either way".to_owned(),
+                format!("{} km/s", report::rounded_plain(limit_km_s)),
+            )),
+            _ if known && judged.verdict.shares.len() > 1 => numbers.push((
+                "between models".to_owned(),
+                format!(
+                    "+- {} km/s",
+                    report::rounded_plain(judged.verdict.between_models_km_s)
+                ),
+            )),
+            _ => {}
+        }
+        if judged.verdict.shares.len() > 1 {
+            let shares = judged.verdict.shares.iter();
+            let each: Vec<String> = shares
+                .map(|(model, share)| format!("{} {share:.2}", model_label(*model)))
+                .collect();
+            numbers.push(("evidence".to_owned(), each.join(", ")));
+        }
+    } else {
+        for fit in &outcome.fit.models {
+            if let Some(v_in) = fit.estimate("v_in_km_s") {
+                numbers.push((
+                    format!("inward speed, {}", model_label(fit.model)),
+                    shown(v_in, "km/s"),
+                ));
+            }
         }
     }
-    let adopted = outcome.fit.adopted();
     for (name, label) in [("v_lsr_km_s", "v_{LSR}"), ("sigma_km_s", "dispersion")] {
-        if let Some(estimate) = adopted.and_then(|fit| fit.estimate(name)) {
+        if let Some(estimate) = posterior_or_fit(outcome, name) {
             numbers.push((label.to_owned(), shown(estimate, "km/s")));
         }
     }
     if let Some(delta_v) = outcome.measures.delta_v {
         numbers.push(("velocity difference".to_owned(), shown(delta_v, "")));
     }
-    if adopted.is_some() {
+    if averaged.is_some() {
+        numbers.push(("errors".to_owned(), "68 % intervals".to_owned()));
+    } else if outcome.fit.adopted().is_some() {
         numbers.push((
             "errors".to_owned(),
             "formal, one standard deviation".to_owned(),
@@ -143,5 +299,82 @@ fn figure_numbers(outcome: &PairOutcome) -> Vec<(String, String)> {
         "profile".to_owned(),
         profile_word(outcome.measures.profile).to_owned(),
     ));
+    numbers
+}
+
+/// The figure of a calibration.
+pub(super) fn calibration_figure(calibration: &Calibration) -> report::figure::CalibrationFigure {
+    let speeds = |moving: bool| {
+        let own = calibration
+            .injections
+            .iter()
+            .filter(|one| one.noise_factor == 1.0 && (one.kind == Kind::Moving) == moving);
+        own.filter_map(|one| one.found.as_ref().ok()?.v_in_km_s)
+            .collect()
+    };
+    let share = |share: Share| {
+        let (low, high) = share.interval95();
+        (share.value().unwrap_or(0.0), low, high)
+    };
+    let points = calibration.levels.iter().map(|level| {
+        let moving = &level.moving;
+        let speed = moving.bias_km_s.zip(moving.scatter_km_s);
+        report::figure::CalibrationPoint {
+            signal_to_noise: level.signal_to_noise,
+            speed_km_s: speed.map(|(bias, scatter)| (calibration.v_in_km_s + bias, scatter)),
+            found: share(moving.found),
+            false_alarms: share(level.at_rest.found),
+        }
+    });
+    let errors = if calibration.formal {
+        "formal errors"
+    } else {
+        "posteriors"
+    };
+    let pairs = calibration.own().map_or(0, |own| own.moving.pairs);
+    report::figure::CalibrationFigure {
+        source: calibration.source.clone(),
+        injected: format!(
+            "{} and {}: {pairs} pairs of the {} model as fitted and {pairs} of it at rest, with this observation's noise and channels, fitted again ({errors})",
+            calibration.lines.0,
+            calibration.lines.1,
+            model_label(calibration.model)
+        ),
+        true_v_in_km_s: calibration.v_in_km_s,
+        moving_km_s: speeds(true),
+        at_rest_km_s: speeds(false),
+        signal_to_noise: calibration.signal_to_noise,
+        points: points.collect(),
+        found: calibrate::found_label(calibration),
+        numbers: calibration_numbers(calibration),
+    }
+}
+
+fn calibration_numbers(calibration: &Calibration) -> Vec<(String, String)> {
+    let Some(own) = calibration.own() else {
+        return Vec::new();
+    };
+    let moving = &own.moving;
+    let mut numbers = Vec::new();
+    let mut add = |label: &str, value: String| numbers.push((label.to_owned(), value));
+    if let (Some(bias), Some(err)) = (moving.bias_km_s, moving.bias_err_km_s) {
+        add("bias", format!("{} km/s", report::rounded(bias, err)));
+    }
+    for (label, value) in [
+        ("scatter", moving.scatter_km_s),
+        ("stated error", moving.stated_km_s),
+    ] {
+        if let Some(value) = value {
+            add(label, format!("{} km/s", report::rounded_plain(value)));
+        }
+    }
+    add("truth in 68 %", calibrate::percent(moving.in68));
+    add("truth in 95 %", calibrate::percent(moving.in95));
+    add("false alarms", calibrate::percent(own.at_rest.found));
+    add("half found from", calibrate::needed(calibration, 0.5));
+    add(
+        "nine in ten from",
+        calibrate::needed(calibration, calibrate::NINE_IN_TEN),
+    );
     numbers
 }

@@ -1,9 +1,13 @@
 //! One pair through every stage.
 
-use super::{LineSection, RunError, RunSheet};
+use super::journal::hexadecimal;
+use super::judge::{PreparedPair, judge};
+use super::{Judged, LineSection, RunError, RunSheet, VerdictSettings};
 use crate::derive::{DeriveSettings, Derived, FitDraws, SourceProperties, Tracers};
+use crate::fit::hypotheses::Speed;
 use crate::fit::{
-    Caution, FitSettings, ModelFit, PairFacts, PairFit, ThinFit, Workspace, cautions, fit_thin,
+    Caution, FitSettings, Judgement, ModelFit, PairFacts, PairFit, ThinFit, Workspace, cautions,
+    fit_thin,
 };
 use crate::line::{Line, isotopologue_pair};
 use crate::measure::{MeasureSettings, Measures, measure};
@@ -13,7 +17,6 @@ use crate::prepare::{Expected, PrepareSettings, Prepared, prepare_pair};
 use crate::read::{ReadOptions, load, spectrum_from_bytes};
 use crate::spectrum::{Origin, Spectrum};
 use sha2::{Digest, Sha256};
-use std::fmt::Write as _;
 use std::path::Path;
 
 /// One line of a pair before it is prepared.
@@ -49,12 +52,35 @@ pub struct PairInput {
 }
 
 /// How a pair is fitted, and how quantities are derived from the fit.
-#[derive(Clone, Debug, Default, PartialEq)]
+#[derive(Clone, Debug, PartialEq)]
 pub struct PairSettings {
     /// The fit.
     pub fit: FitSettings,
-    /// What follows from it.
+    /// Posteriors and verdict; `None` stops after least squares.
+    pub verdict: Option<VerdictSettings>,
+    /// What follows from them.
     pub derive: DeriveSettings,
+}
+
+impl Default for PairSettings {
+    fn default() -> Self {
+        Self {
+            verdict: Some(VerdictSettings::default()),
+            ..Self::formal()
+        }
+    }
+}
+
+impl PairSettings {
+    /// Default settings that stop after least squares.
+    #[must_use]
+    pub fn formal() -> Self {
+        Self {
+            fit: FitSettings::default(),
+            verdict: None,
+            derive: DeriveSettings::default(),
+        }
+    }
 }
 
 /// One line of a pair, read and prepared.
@@ -87,6 +113,8 @@ pub struct PairOutcome {
     pub measures: Measures,
     /// The joint fits.
     pub fit: PairFit,
+    /// Posteriors and verdict; `None` where they were not asked for, or a caution says why not.
+    pub judged: Option<Judged>,
     /// Cautions, the gravest first.
     pub cautions: Vec<Caution>,
     /// What follows from the fit and the source's properties, with cautions of its own.
@@ -151,6 +179,34 @@ pub fn fit_spectra(
     settings: &PairSettings,
     workspace: &mut Workspace,
 ) -> Result<PairOutcome, RunError> {
+    refuse_exchanged_lines(&pair.thick.line, &pair.thin.line)?;
+    let prepared = prepare_lines(&pair)?;
+    fit_prepared(pair, prepared, settings, workspace)
+}
+
+/// Prepares both lines of a pair, the thick one first.
+pub(super) fn prepare_lines(pair: &PairInput) -> Result<(Prepared, Prepared), RunError> {
+    let (thick, thin) = (&pair.thick, &pair.thin);
+    let expected = |line: &Line| Expected {
+        components: line.components.clone(),
+        window: None,
+    };
+    prepare_pair(
+        (&thick.spectrum, &thick.prepare, &expected(&thick.line)),
+        (&thin.spectrum, &thin.prepare, &expected(&thin.line)),
+    )
+    .map_err(|error| {
+        RunError::of_pair(error, (thick.origin.path.clone(), thin.origin.path.clone()))
+    })
+}
+
+/// Measures and fits a pair whose lines are prepared.
+pub(super) fn fit_prepared(
+    pair: PairInput,
+    (prepared_thick, prepared_thin): (Prepared, Prepared),
+    settings: &PairSettings,
+    workspace: &mut Workspace,
+) -> Result<PairOutcome, RunError> {
     let PairInput {
         name,
         source,
@@ -158,18 +214,6 @@ pub fn fit_spectra(
         thin,
     } = pair;
     let (thick_line, thin_line) = (&thick.line, &thin.line);
-    refuse_exchanged_lines(thick_line, thin_line)?;
-    let expected = |line: &Line| Expected {
-        components: line.components.clone(),
-        window: None,
-    };
-    let (prepared_thick, prepared_thin) = prepare_pair(
-        (&thick.spectrum, &thick.prepare, &expected(thick_line)),
-        (&thin.spectrum, &thin.prepare, &expected(thin_line)),
-    )
-    .map_err(|error| {
-        RunError::of_pair(error, (thick.origin.path.clone(), thin.origin.path.clone()))
-    })?;
     let thin_fit = fit_thin(&prepared_thin, thin_line, &settings.fit, workspace)?;
     let systematic_km_s = thick_line
         .velocity_systematic_km_s()
@@ -202,23 +246,51 @@ pub fn fit_spectra(
     .map_err(|error| {
         RunError::of_fit(error, (thick.origin.path.clone(), thin.origin.path.clone()))
     })?;
+    let prepared = PreparedPair {
+        thick: &prepared_thick,
+        thin: &prepared_thin,
+        lines: (thick_line, thin_line),
+        thin_line: thin_fit.line.as_ref(),
+        measures: &measures,
+    };
+    let judged = (settings.verdict.as_ref())
+        .map(|verdict| judge(&prepared, &settings.fit, verdict))
+        .transpose()?;
     let cautions = cautions(&PairFacts {
         thick: &prepared_thick,
         thin: &prepared_thin,
         thin_fit: &thin_fit,
         measures: &measures,
         fit: &fit,
+        judgement: match &judged {
+            None => Judgement::NotAsked,
+            Some(Err(reason)) => Judgement::Missing(reason),
+            Some(Ok(judged)) => Judgement::Found(
+                &judged.posterior,
+                &judged.verdict,
+                judged.speed,
+                &judged.unheard,
+            ),
+        },
     });
+    let judged = judged.and_then(Result::ok);
+    let averaged = judged.as_ref().and_then(Judged::adopted);
     let described = fit.adopted().or_else(|| layer(&fit));
-    let draws = match (described, &thin_fit.line) {
-        (Some(fit), _) => FitDraws::formal(fit, &settings.derive),
-        (None, Some(line)) => FitDraws::of_thin_line(line, &settings.derive),
-        (None, None) => FitDraws::new(settings.derive.draws),
+    let draws = match (&judged, &averaged, described, &thin_fit.line) {
+        (Some(judged), Some(averaged), ..) => {
+            let with_speed = judged.speed != Speed::Unconstrained;
+            FitDraws::of_posterior(averaged, thick_line, with_speed, &settings.derive)
+        }
+        (_, _, Some(fit), _) => FitDraws::formal(fit, &settings.derive),
+        (_, _, None, Some(line)) => FitDraws::of_thin_line(line, &settings.derive),
+        (_, _, None, None) => FitDraws::new(settings.derive.draws),
     };
     let tracers = Tracers {
         thick: thick_line,
         thin: thin_line,
-        model: described.map(|fit| fit.model),
+        model: described
+            .filter(|_| averaged.is_none())
+            .map(|fit| fit.model),
     };
     let derived = crate::derive::sample(&source, &draws, &tracers, settings.derive.seed)?.derived();
     let name = name
@@ -232,6 +304,7 @@ pub fn fit_spectra(
         thin_fit,
         measures,
         fit,
+        judged,
         cautions,
         derived,
         source_given: !source.is_empty(),
@@ -274,7 +347,7 @@ impl LineInput {
 }
 
 /// A line's file, read and on the common scale.
-fn open(
+pub(super) fn open(
     section: &LineSection,
     which: &'static str,
     line: Line,
@@ -291,21 +364,11 @@ fn open(
         line,
         spectrum: scaled.spectrum,
         prepare,
-        sha256: Some(sha256(&content)),
+        sha256: Some(hexadecimal(&Sha256::digest(&content))),
         object: raw.object.clone(),
         origin: raw.origin,
         notes: scaled.notes,
     })
-}
-
-/// SHA-256 of a file's content, in hexadecimal digits.
-fn sha256(content: &[u8]) -> String {
-    let mut digits = String::new();
-    for byte in Sha256::digest(content) {
-        // writing to a string cannot fail
-        let _ = write!(digits, "{byte:02x}");
-    }
-    digits
 }
 
 fn stem(path: &Path) -> String {
@@ -316,7 +379,7 @@ fn stem(path: &Path) -> String {
 }
 
 /// The rarer isotopologue as the thick line.
-fn refuse_exchanged_lines(thick: &Line, thin: &Line) -> Result<(), RunError> {
+pub(super) fn refuse_exchanged_lines(thick: &Line, thin: &Line) -> Result<(), RunError> {
     let exchanged =
         isotopologue_pair(thick, thin).is_none() && isotopologue_pair(thin, thick).is_some();
     if exchanged {

@@ -3,6 +3,8 @@
 use super::{LineOutcome, PairOutcome, Record, RunError, RunSheet};
 use crate::derive::{Derived, MassSource, Quantity, RateFormula};
 use crate::fit::ModelFit;
+use crate::fit::hypotheses::Speed;
+use crate::fit::posterior::{Family, FamilyPosterior, Interval};
 use crate::measure::ProfileClass;
 use crate::report::{self, ReportError, Row, Table, Value};
 use std::path::{Path, PathBuf};
@@ -41,11 +43,15 @@ pub fn pair_row(outcome: &PairOutcome) -> Result<Row, RunError> {
     for fit in &outcome.fit.models {
         set_model(&mut row, fit)?;
     }
-    if let Some(fit) = outcome.fit.adopted() {
-        for name in ["v_lsr_km_s", "sigma_km_s", "v_in_km_s"] {
-            set_parameter(&mut row, name, fit, name)?;
+    set_speed(&mut row, outcome)?;
+    if let Some(judged) = &outcome.judged {
+        for standing in &judged.verdict.standings {
+            let column = format!("p_{}", standing.hypothesis.name());
+            row.set(&column, standing.probability)?;
         }
-        row.set("v_in_model", fit.model.name())?;
+        let detected = outcome.measures.peak_thick_k.is_some();
+        let sentences = report::verdict_sentences(&judged.verdict, detected);
+        row.set("verdict", sentences.join(". ") + ".")?;
     }
     set_derived(&mut row, outcome)?;
     let mut codes: Vec<&str> = Vec::new();
@@ -56,6 +62,73 @@ pub fn pair_row(outcome: &PairOutcome) -> Result<Row, RunError> {
     }
     row.set("cautions", codes.join(";"))?;
     Ok(row)
+}
+
+/// The adopted speed, velocity and dispersion: of the posterior averaged over models, else of the
+/// adopted least-squares fit.
+fn set_speed(row: &mut Row, outcome: &PairOutcome) -> Result<(), RunError> {
+    let Some(judged) = &outcome.judged else {
+        return set_formal_speed(row, outcome);
+    };
+    let Some(averaged) = judged.adopted() else {
+        return set_formal_speed(row, outcome);
+    };
+    for (model, share) in &judged.verdict.shares {
+        let prefix = model.column_prefix();
+        row.set(&format!("{prefix}_share"), *share)?;
+        let own = judged.posterior.of(Family::Moving(*model));
+        if let Some(interval) = own.and_then(FamilyPosterior::v_in_km_s) {
+            set_intervals(row, &format!("{prefix}_v_in_km_s"), &interval)?;
+        }
+    }
+    let detected = outcome.measures.peak_thick_k.is_some();
+    if detected || outcome.thin_fit.line.is_some() {
+        for name in ["v_lsr_km_s", "sigma_km_s"] {
+            row.set(name, averaged.marginal(name).map(|one| one.median))?;
+            row.set(&format!("{name}_err"), averaged.deviation(name))?;
+        }
+    }
+    if let Speed::Below { limit_km_s } = judged.speed {
+        row.set("v_in_limit_km_s", limit_km_s)?;
+    }
+    if detected && judged.speed != Speed::Unconstrained {
+        if let Some(v_in) = averaged.marginal("v_in_km_s") {
+            row.set("v_in_km_s", v_in.median)?;
+            set_intervals(row, "v_in_km_s", &v_in)?;
+        }
+        row.set("v_in_km_s_err", averaged.deviation("v_in_km_s"))?;
+        if judged.verdict.shares.len() > 1 {
+            let systematic = judged.verdict.between_models_km_s;
+            row.set("v_in_systematic_km_s", systematic)?;
+        }
+    }
+    row.set("v_in_model", averaged.models())?;
+    row.set("v_in_errors", POSTERIOR)?;
+    Ok(())
+}
+
+fn set_formal_speed(row: &mut Row, outcome: &PairOutcome) -> Result<(), RunError> {
+    let Some(fit) = outcome.fit.adopted() else {
+        return Ok(());
+    };
+    for name in ["v_lsr_km_s", "sigma_km_s", "v_in_km_s"] {
+        set_parameter(row, name, fit, name)?;
+    }
+    row.set("v_in_model", fit.model.name())?;
+    row.set("v_in_errors", FORMAL)?;
+    Ok(())
+}
+
+/// What the column `v_in_errors` says.
+const POSTERIOR: &str = "posterior";
+const FORMAL: &str = "formal";
+
+fn set_intervals(row: &mut Row, column: &str, of: &Interval) -> Result<(), RunError> {
+    for (percent, (low, high)) in [("68", of.interval68), ("95", of.interval95)] {
+        row.set(&format!("{column}_lo{percent}"), low)?;
+        row.set(&format!("{column}_hi{percent}"), high)?;
+    }
+    Ok(())
 }
 
 /// Derived quantities, how they were found, and what is missing.
@@ -165,6 +238,18 @@ pub fn check_directory(directory: &Path) -> Result<(), RunError> {
     }
 }
 
+/// Whether a directory is there and not empty.
+pub(super) fn holds_something(directory: &Path) -> Result<bool, RunError> {
+    if !directory.exists() {
+        return Ok(false);
+    }
+    let mut entries = std::fs::read_dir(directory).map_err(|source| RunError::File {
+        path: directory.to_owned(),
+        source,
+    })?;
+    Ok(entries.next().is_some())
+}
+
 /// Writes every product of a pair into a directory and returns their paths, in order.
 ///
 /// `sheet` as it was run, `base` what its paths are relative to. Each file is whole or absent.
@@ -213,7 +298,7 @@ pub fn write_products(
     Ok(written)
 }
 
-fn meta(outcome: &PairOutcome, sheet: &RunSheet) -> Vec<(String, Value)> {
+pub(super) fn meta(outcome: &PairOutcome, sheet: &RunSheet) -> Vec<(String, Value)> {
     let text = |text: &str| Value::Text(text.to_owned());
     let line = |which: &str, line: &LineOutcome| {
         vec![
@@ -236,7 +321,11 @@ fn meta(outcome: &PairOutcome, sheet: &RunSheet) -> Vec<(String, Value)> {
         ),
         (
             "errors".to_owned(),
-            text("formal, from the curvature of chi2 at its minimum"),
+            text(if outcome.judged.is_some() {
+                "of models formal, from the curvature of chi2 at its minimum; v_in_errors says what those of the adopted speed are"
+            } else {
+                "formal, from the curvature of chi2 at its minimum"
+            }),
         ),
         (
             "draws".to_owned(),
@@ -249,8 +338,13 @@ fn meta(outcome: &PairOutcome, sheet: &RunSheet) -> Vec<(String, Value)> {
 }
 
 /// The sheet with every default written out, paths relative to the results, and the record.
-fn resolved(outcome: &PairOutcome, sheet: &RunSheet, base: &Path, directory: &Path) -> RunSheet {
-    let mut resolved = sheet.clone();
+pub(super) fn resolved(
+    outcome: &PairOutcome,
+    sheet: &RunSheet,
+    base: &Path,
+    directory: &Path,
+) -> RunSheet {
+    let mut resolved = sheet.clone().with_all_priors();
     resolved.source.name = Some(outcome.name.clone());
     for (section, line) in [
         (&mut resolved.thick, &outcome.thick),
@@ -276,7 +370,7 @@ fn resolved(outcome: &PairOutcome, sheet: &RunSheet, base: &Path, directory: &Pa
 }
 
 /// A path as seen from a directory; absolute where the two share no root.
-fn relative(path: &Path, from: &Path) -> PathBuf {
+pub(super) fn relative(path: &Path, from: &Path) -> PathBuf {
     let (Ok(path), Ok(from)) = (path.canonicalize(), from.canonicalize()) else {
         return path.to_owned();
     };

@@ -4,14 +4,19 @@
 //! written out, goes beside the results: running it again gives the same bytes.
 
 use super::error::line_at;
-use super::{PairSettings, RunError};
+use super::{PairSettings, RunError, VerdictSettings};
 use crate::derive::{DeriveSettings, Input, SourceProperties};
+use crate::fit::hypotheses::{Hypothesis, Odds};
+use crate::fit::posterior::PosteriorSettings;
+use crate::fit::priors::{PRIORS, Prior, Priors};
 use crate::fit::{FitRange, FitSettings};
 use crate::line::{Component, Line, LineError};
 use crate::model::Model;
 use crate::numeric::Estimate;
 use crate::prepare::PrepareSettings;
 use crate::prepare::scale::ScaleSettings;
+use crate::read::cube::SkyBeam;
+use crate::read::sky::{SkyFrame, SkyPosition};
 use crate::read::{ReadOptions, ValueUnit};
 use crate::spectrum::{BeamArcsec, Window};
 use serde::{Deserialize, Serialize};
@@ -94,9 +99,18 @@ pub struct RunSheet {
     /// Models.
     #[serde(default)]
     pub fit: FitSection,
+    /// Priors in place of the default ones, by name: the numbers of the density.
+    #[serde(default, skip_serializing_if = "BTreeMap::is_empty")]
+    pub priors: BTreeMap<String, Given>,
+    /// Prior odds of the hypotheses.
+    #[serde(default)]
+    pub odds: OddsSection,
     /// Derived quantities.
     #[serde(default)]
     pub derive: DeriveSection,
+    /// A map's pointings.
+    #[serde(default, skip_serializing_if = "GridSection::is_default")]
+    pub grid: GridSection,
     /// Products.
     #[serde(default)]
     pub output: OutputSection,
@@ -173,6 +187,26 @@ impl SourceSection {
         }
     }
 
+    /// Replaces what is given.
+    pub fn set(&mut self, input: Input, given: Given) {
+        let target = match input {
+            Input::Distance => &mut self.distance_kpc,
+            Input::Radius => &mut self.radius_pc,
+            Input::Mass => &mut self.mass_msun,
+            Input::Density => &mut self.n_h2_cm3,
+            Input::Slope => &mut self.density_slope,
+            Input::Kinetic => &mut self.t_kin_k,
+            Input::DustFlux => &mut self.dust_flux_jy,
+            Input::DustFrequency => &mut self.dust_freq_ghz,
+            Input::DustTemperature => &mut self.dust_temperature_k,
+            Input::DustOpacity => &mut self.dust_kappa_cm2_g,
+            Input::Field => &mut self.field_ug,
+            Input::AngleDispersion => &mut self.angle_dispersion_deg,
+            Input::ThinExcitation => &mut self.thin_t_ex_k,
+        };
+        *target = Some(given);
+    }
+
     /// What is given of the source, checked.
     ///
     /// # Errors
@@ -205,6 +239,60 @@ impl Default for DeriveSection {
     }
 }
 
+/// A map's pointings. Without a table, the lines' files are cubes, or tables of one spectrum a row.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields, default)]
+pub struct GridSection {
+    /// Table of pointings, relative to the run sheet.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub pointings: Option<PathBuf>,
+    /// Right ascension and declination (ICRS, degrees) of the position that offsets are from.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub centre_deg: Option<[f64; 2]>,
+    /// Peak of the thick line over the noise of a channel from which a pointing is fitted.
+    pub threshold_sigma: f64,
+}
+
+impl Default for GridSection {
+    fn default() -> Self {
+        Self {
+            pointings: None,
+            centre_deg: None,
+            threshold_sigma: 5.0,
+        }
+    }
+}
+
+impl GridSection {
+    fn is_default(&self) -> bool {
+        *self == Self::default()
+    }
+
+    /// The position that offsets are from, where it is given.
+    ///
+    /// # Errors
+    ///
+    /// [`RunError::Setting`] for one that is none.
+    pub fn centre(&self) -> Result<Option<SkyPosition>, RunError> {
+        let Some([longitude_deg, latitude_deg]) = self.centre_deg else {
+            return Ok(None);
+        };
+        if !((0.0..=360.0).contains(&longitude_deg) && latitude_deg.abs() <= 90.0) {
+            return Err(RunError::setting(
+                "grid.centre_deg",
+                &format!("[{longitude_deg}, {latitude_deg}]"),
+                "right ascension from 0 to 360 and declination from -90 to 90, degrees",
+            )
+            .hinted("both are decimal degrees, ICRS"));
+        }
+        Ok(Some(SkyPosition {
+            frame: SkyFrame::Icrs,
+            longitude_deg,
+            latitude_deg,
+        }))
+    }
+}
+
 /// One line of the pair.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 #[serde(deny_unknown_fields)]
@@ -224,6 +312,9 @@ pub struct LineSection {
     /// Beam, full width at half maximum, arcsec.
     #[serde(skip_serializing_if = "Option::is_none")]
     pub beam_arcsec: Option<Beam>,
+    /// Angle of an elliptical beam's major axis from north through east, degrees; for maps.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub beam_angle_deg: Option<f64>,
     /// Main-beam efficiency.
     #[serde(skip_serializing_if = "Option::is_none")]
     pub eta_mb: Option<f64>,
@@ -306,6 +397,10 @@ pub struct FitSection {
     /// Bounds of parameters, `[low, high]`.
     #[serde(skip_serializing_if = "BTreeMap::is_empty")]
     pub bounds: BTreeMap<String, [f64; 2]>,
+    /// Stops after least squares: no posterior, no probabilities.
+    pub formal: bool,
+    /// Effective draws at which the sampling of a posterior ends, and draws that are kept of it.
+    pub posterior_draws: usize,
 }
 
 impl Default for FitSection {
@@ -323,7 +418,62 @@ impl Default for FitSection {
             isotope_ratio: None,
             given: BTreeMap::new(),
             bounds: BTreeMap::new(),
+            formal: false,
+            posterior_draws: PosteriorSettings::default().draws,
         }
+    }
+}
+
+/// Prior odds of the hypotheses; only their ratios count.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields, default)]
+pub struct OddsSection {
+    /// Infall.
+    pub infall: f64,
+    /// Expansion.
+    pub expansion: f64,
+    /// Neither.
+    #[serde(rename = "static")]
+    pub at_rest: f64,
+    /// Two clouds on one line of sight.
+    pub two_clouds: f64,
+}
+
+impl Default for OddsSection {
+    fn default() -> Self {
+        let [infall, expansion, at_rest, two_clouds] = Odds::default().0;
+        Self {
+            infall,
+            expansion,
+            at_rest,
+            two_clouds,
+        }
+    }
+}
+
+impl OddsSection {
+    /// Replaces the odds of a hypothesis by its name.
+    ///
+    /// # Errors
+    ///
+    /// [`RunError::Setting`] with the nearest name for another one.
+    pub fn set(&mut self, name: &str, odds: f64) -> Result<(), RunError> {
+        let known = Hypothesis::ALL.map(Hypothesis::name);
+        let hypothesis = Hypothesis::ALL.into_iter().find(|one| one.name() == name);
+        *match hypothesis {
+            Some(Hypothesis::Infall) => &mut self.infall,
+            Some(Hypothesis::Expansion) => &mut self.expansion,
+            Some(Hypothesis::Static) => &mut self.at_rest,
+            Some(Hypothesis::TwoClouds) => &mut self.two_clouds,
+            None => {
+                return Err(unknown("odds", name, &known));
+            }
+        } = odds;
+        Ok(())
+    }
+
+    fn odds(self) -> Odds {
+        Odds([self.infall, self.expansion, self.at_rest, self.two_clouds])
     }
 }
 
@@ -410,16 +560,106 @@ impl RunSheet {
         toml::to_string(self).map_err(|error| RunError::Internal(error.to_string()))
     }
 
-    /// How the pair is fitted, and what is derived.
+    /// How the pair is fitted and judged, and what is derived.
     ///
     /// # Errors
     ///
-    /// As [`RunSheet::fit_settings`] and [`RunSheet::derive_settings`].
+    /// As [`RunSheet::fit_settings`], [`RunSheet::verdict_settings`] and
+    /// [`RunSheet::derive_settings`].
     pub fn pair_settings(&self) -> Result<PairSettings, RunError> {
         Ok(PairSettings {
             fit: self.fit_settings()?,
+            verdict: self.verdict_settings()?,
             derive: self.derive_settings()?,
         })
+    }
+
+    /// How the pair is judged; `None` where the run stops after least squares.
+    ///
+    /// # Errors
+    ///
+    /// [`RunError::Setting`] for too few or too many draws, and for priors and odds that are none.
+    pub fn verdict_settings(&self) -> Result<Option<VerdictSettings>, RunError> {
+        let draws = self.fit.posterior_draws;
+        let (least, most) = POSTERIOR_DRAWS;
+        if !(least..=most).contains(&draws) {
+            return Err(RunError::setting(
+                "fit.posterior_draws",
+                &draws.to_string(),
+                &format!("{least} to {most}"),
+            )
+            .hinted("leave it out for the default"));
+        }
+        let odds = self.odds.odds();
+        odds.check().map_err(|error| RunError::Setting {
+            key: "odds".to_owned(),
+            message: error.to_string(),
+            hint: error.hint(),
+        })?;
+        let priors = self.replaced_priors()?;
+        if self.fit.formal {
+            return Ok(None);
+        }
+        Ok(Some(VerdictSettings {
+            posterior: PosteriorSettings {
+                seed: self.seed,
+                priors,
+                ..PosteriorSettings::default().with_draws(draws)
+            },
+            odds,
+        }))
+    }
+
+    fn replaced_priors(&self) -> Result<Priors, RunError> {
+        let mut priors = Priors::default();
+        for (name, given) in &self.priors {
+            let row = PRIORS.iter().find(|row| row.name == name);
+            let Some(row) = row else {
+                return Err(unknown("priors", name, &PRIORS.map(|row| row.name)));
+            };
+            let numbers = match given {
+                Given::Value(one) => vec![*one],
+                Given::WithError(two) => two.to_vec(),
+            };
+            let prior = row.prior.with_numbers(&numbers).ok_or_else(|| {
+                RunError::setting(
+                    &format!("priors.{name}"),
+                    &format!("{numbers:?}"),
+                    &format!(
+                        "{}: the default is {}",
+                        row.prior.numbers().join(" and "),
+                        row.prior.text()
+                    ),
+                )
+                .hinted("the kind of density is part of the method")
+            })?;
+            priors = priors
+                .with(name, prior)
+                .map_err(|error| RunError::Setting {
+                    key: format!("priors.{name}"),
+                    message: error.to_string(),
+                    hint: error.hint(),
+                })?;
+        }
+        Ok(priors)
+    }
+
+    /// The same with every prior written out.
+    #[must_use]
+    pub(super) fn with_all_priors(mut self) -> Self {
+        for row in PRIORS {
+            let given = match row.prior {
+                Prior::Normal { deviation: one } | Prior::Exponential { mean: one } => {
+                    Given::Value(one)
+                }
+                Prior::LogNormal {
+                    median,
+                    ln_deviation,
+                } => Given::WithError([median, ln_deviation]),
+            };
+            self.priors.entry(row.name.to_owned()).or_insert(given);
+        }
+        self
     }
 
     /// How the pair is fitted.
@@ -628,6 +868,20 @@ impl LineSection {
         })
     }
 
+    /// The given beam on the sky.
+    #[must_use]
+    pub fn sky_beam(&self) -> Option<SkyBeam> {
+        let [major_arcsec, minor_arcsec] = match self.beam_arcsec? {
+            Beam::Round(width) => [width, width],
+            Beam::Elliptical(widths) => widths,
+        };
+        Some(SkyBeam {
+            major_arcsec,
+            minor_arcsec,
+            angle_deg: self.beam_angle_deg.unwrap_or(0.0),
+        })
+    }
+
     /// How the line's spectrum is brought onto the common scale.
     #[must_use]
     pub fn scale_settings(&self, line: &Line) -> ScaleSettings {
@@ -645,6 +899,9 @@ impl LineSection {
         }
     }
 }
+
+/// Fewest and most draws of a posterior.
+const POSTERIOR_DRAWS: (usize, usize) = (100, 100_000);
 
 /// A window of two velocities in order.
 fn window(key: &str, [low_km_s, high_km_s]: [f64; 2]) -> Result<Window, RunError> {
@@ -664,9 +921,13 @@ fn window(key: &str, [low_km_s, high_km_s]: [f64; 2]) -> Result<Window, RunError
 }
 
 fn unknown_model(name: &str) -> RunError {
-    let known: Vec<&str> = Model::ALL.iter().map(|model| model.name()).collect();
+    unknown("models", name, &Model::ALL.map(Model::name))
+}
+
+/// A name that is none of those known, with the nearest of them.
+fn unknown(key: &str, name: &str, known: &[&str]) -> RunError {
     RunError::Setting {
-        key: "models".to_owned(),
+        key: key.to_owned(),
         message: format!("`{name}`, expected one of {}", known.join(", ")),
         hint: super::nearest(name, known.iter().copied())
             .map(|name| format!("did you mean `{name}`?")),

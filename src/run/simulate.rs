@@ -3,10 +3,13 @@
 //! Everything is made before the first file is written, and each file is written under a temporary
 //! name and renamed. Nothing depends on the clock or on threads: the same truth gives the same bytes.
 
+mod folder;
+mod grid;
 mod sample;
 mod truth_file;
 mod truth_table;
 
+pub use grid::{GridFiles, GridProducts, GridRun, read_grid_settings, write_grid};
 pub use sample::{SampleFiles, SampleRun, read_sample_settings, write_sample};
 pub use truth_file::{parse_truth, read_truth};
 

@@ -130,7 +130,7 @@ pub enum SimulateError {
         /// What it needs.
         expected: &'static str,
     },
-    /// A setting of a sample that cannot be used.
+    /// A setting of a sample or a map that cannot be used.
     #[error("{quantity} {found}, expected {expected}")]
     Sample {
         /// The setting.

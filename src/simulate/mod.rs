@@ -1,4 +1,5 @@
-//! A truth into spectra: profile, baseline and correlated noise of a thick and a thin line.
+//! A truth into spectra: profile, baseline and correlated noise of a thick and a thin line. [`grid`]
+//! makes those of a map.
 //!
 //! Everything follows from the [`PairTruth`], its seed included: no files, no clock, no threads.
 //! Each line draws its noise from a stream of its own, so changing one line leaves the other as it is.
@@ -6,6 +7,7 @@
 mod correlation;
 mod defaults;
 mod error;
+pub mod grid;
 mod sample;
 mod truth;
 

@@ -160,7 +160,7 @@ impl Axis {
         0.5 * (self.low_km_s + self.high_km_s)
     }
 
-    fn check(&self, line: PairLine) -> Result<(), SimulateError> {
+    pub(super) fn check(&self, line: PairLine) -> Result<(), SimulateError> {
         require(line, "channel width", self.channel_km_s, " km/s", |width| {
             (width > 0.0).then_some(()).ok_or("a positive width")
         })?;
@@ -253,7 +253,7 @@ impl LineTruth {
         }
         self.axis.check(line)?;
         self.check_band(line, values)?;
-        self.check_noise(line)?;
+        check_noise(line, self.noise, self.correlation)?;
         self.check_baseline(line)
     }
 
@@ -274,37 +274,6 @@ impl LineTruth {
                 .then_some(())
                 .ok_or("a dispersion that is not negligible against the range")
         })
-    }
-
-    fn check_noise(&self, line: PairLine) -> Result<(), SimulateError> {
-        match self.noise {
-            NoiseLevel::RmsK(rms_k) => require(line, "noise", rms_k, " K", |rms| {
-                (rms >= 0.0).then_some(()).ok_or("0 or a positive noise")
-            }),
-            NoiseLevel::SignalToNoise(ratio) => {
-                require(line, "signal-to-noise ratio", ratio, "", |ratio| {
-                    (ratio > 0.0).then_some(()).ok_or("a positive ratio")
-                })
-            }
-        }?;
-        match self.correlation {
-            Correlation::Boxcar { channels } => {
-                require(line, "boxcar of", channels as f64, " channels", |_| {
-                    (1..=Correlation::WIDEST_BOXCAR)
-                        .contains(&channels)
-                        .then_some(())
-                        .ok_or("1 to 1000")
-                })
-            }
-            Correlation::Autoregressive { coefficient } => {
-                require(line, "autoregressive coefficient", coefficient, "", |a| {
-                    (a.abs() < 1.0)
-                        .then_some(())
-                        .ok_or("a number between -1 and 1")
-                })
-            }
-            _ => Ok(()),
-        }
     }
 
     fn check_baseline(&self, line: PairLine) -> Result<(), SimulateError> {
@@ -335,6 +304,42 @@ impl LineTruth {
                     .ok_or("a positive period")
             },
         )
+    }
+}
+
+/// Whether noise of a level and a correlation can be made.
+pub(super) fn check_noise(
+    line: PairLine,
+    noise: NoiseLevel,
+    correlation: Correlation,
+) -> Result<(), SimulateError> {
+    match noise {
+        NoiseLevel::RmsK(rms_k) => require(line, "noise", rms_k, " K", |rms| {
+            (rms >= 0.0).then_some(()).ok_or("0 or a positive noise")
+        }),
+        NoiseLevel::SignalToNoise(ratio) => {
+            require(line, "signal-to-noise ratio", ratio, "", |ratio| {
+                (ratio > 0.0).then_some(()).ok_or("a positive ratio")
+            })
+        }
+    }?;
+    match correlation {
+        Correlation::Boxcar { channels } => {
+            require(line, "boxcar of", channels as f64, " channels", |_| {
+                (1..=Correlation::WIDEST_BOXCAR)
+                    .contains(&channels)
+                    .then_some(())
+                    .ok_or("1 to 1000")
+            })
+        }
+        Correlation::Autoregressive { coefficient } => {
+            require(line, "autoregressive coefficient", coefficient, "", |a| {
+                (a.abs() < 1.0)
+                    .then_some(())
+                    .ok_or("a number between -1 and 1")
+            })
+        }
+        _ => Ok(()),
     }
 }
 

@@ -105,7 +105,7 @@ impl Beam {
 /// A beam's mean over the circle of radius p about the clump's centre, times pi.
 ///
 /// exp(-(p^2 + d^2)/(2 s^2)) I_0(p d/s^2)/(2 s^2), d the beam's distance from the centre.
-fn density(impact_pc: f64, offset_pc: f64, sigma_pc: f64) -> f64 {
+pub(super) fn density(impact_pc: f64, offset_pc: f64, sigma_pc: f64) -> f64 {
     let x = impact_pc * offset_pc / (sigma_pc * sigma_pc);
     let z = (impact_pc - offset_pc) / sigma_pc;
     (-0.5 * z * z).exp() * scaled_bessel(x) / (2.0 * sigma_pc * sigma_pc)

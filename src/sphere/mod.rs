@@ -15,6 +15,7 @@ mod excitation;
 mod molecule;
 mod pair;
 mod rays;
+mod reduced;
 mod shells;
 
 pub use closure::TwoLevel;
@@ -25,6 +26,7 @@ pub use error::SphereError;
 pub use excitation::{LineField, Populations};
 pub use molecule::{Collisions, Level, Molecule, Partner, Radiative, ortho_share};
 pub use pair::{LineView, Mode, PairSpectra, PairView, pair_spectra};
+pub use reduced::{DEPTH_FROM, ReducedClump, ReducedLine, ReducedPair};
 pub use shells::{ShellTable, Shells};
 
 use crate::constants::PARSEC;

@@ -1,6 +1,6 @@
 //! `inrush simulate sample`.
 
-use super::{Exit, Output, RunError, SharedArgs, THICK_LINE, THIN_LINE};
+use super::{Exit, Output, RunError, SharedArgs, THICK_LINE, THIN_LINE, replace};
 use crate::cli::values::{number, numbers};
 use clap::Args;
 use inrush::run::simulate::{SampleRun, read_sample_settings, write_sample};
@@ -191,12 +191,6 @@ impl SampleArgs {
             settings.channel_km_s = Some(given.with(Spacing::Even));
         }
         settings
-    }
-}
-
-fn replace<T>(setting: &mut T, given: Option<T>) {
-    if let Some(given) = given {
-        *setting = given;
     }
 }
 

@@ -6,6 +6,7 @@ use crate::fit::priors::Prior;
 use crate::numeric::Estimate;
 use crate::spectrum::Window;
 use statrs::function::erf::erfc;
+use std::collections::BTreeMap;
 use std::f64::consts::{FRAC_1_SQRT_2, TAU};
 
 /// Probability below which a density has no mass somewhere.
@@ -213,8 +214,8 @@ impl Constraints {
             bounds_km_s: bounds_km_s.unwrap_or((f64::NEG_INFINITY, f64::INFINITY)),
         };
         let nothing = PosteriorSettings {
-            bounds: Default::default(),
-            given: Default::default(),
+            bounds: BTreeMap::default(),
+            given: BTreeMap::default(),
             ..settings.clone()
         };
         Ok(Self {

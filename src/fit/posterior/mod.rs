@@ -6,17 +6,17 @@
 
 mod constraints;
 mod data;
-mod draws;
 mod family;
 mod settings;
 mod shapes;
 mod starts;
 mod target;
 
+pub(in crate::fit) use data::LineData;
 pub use data::ShapeErrors;
-pub use draws::ModelDraw;
 pub use family::Family;
 pub use settings::{PosteriorError, PosteriorSettings, SHAPE_ERROR};
+pub(in crate::fit) use starts::{Kinematics, distinct, kinematics, shape_errors};
 
 use super::FitRange;
 use crate::constants::FWHM_PER_SIGMA;
@@ -27,7 +27,6 @@ use crate::numeric::sampling::{Draws, ImportanceSettings, Quality, sample};
 use crate::prepare::Prepared;
 use crate::spectrum::Window;
 use constraints::Constraints;
-use data::LineData;
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::SeedableRng;
 use target::Target;
@@ -209,7 +208,7 @@ pub fn pair_posterior(
     }
     let mut found: Vec<FamilyPosterior> = Vec::new();
     for (stream, family) in settings.families().into_iter().enumerate() {
-        let mut target = Target::new(family, (&data[0], &data[1]), constraints, settings);
+        let mut target = Target::new(family, (&data[0], &data[1]), &constraints, settings);
         let mut generator = ChaCha8Rng::seed_from_u64(settings.seed);
         generator.set_stream(stream as u64 + 1);
         let best = found.iter().map(|one| one.ln_evidence);

@@ -13,7 +13,7 @@ pub(super) const NARROWEST: f64 = 0.6;
 
 /// Centre and dispersion, km/s.
 #[derive(Clone, Copy, Debug, PartialEq)]
-pub(super) struct Kinematics {
+pub(in crate::fit) struct Kinematics {
     pub v_km_s: f64,
     pub sigma_km_s: f64,
 }
@@ -22,7 +22,7 @@ pub(super) struct Kinematics {
 const SHARE_OF_INTENSITY: f64 = 0.6;
 
 /// The thin line where it is detected, and the thick line's intensity.
-pub(super) fn kinematics(
+pub(in crate::fit) fn kinematics(
     thick: &Prepared,
     thin: &Prepared,
     thin_line: Option<&ThinLine>,
@@ -41,7 +41,11 @@ pub(super) fn kinematics(
 }
 
 /// Shape errors of a prepared line: about its intensity, a share of its peak.
-pub(super) fn shape_errors(prepared: &Prepared, share: f64, gas: Kinematics) -> ShapeErrors {
+pub(in crate::fit) fn shape_errors(
+    prepared: &Prepared,
+    share: f64,
+    gas: Kinematics,
+) -> ShapeErrors {
     let about = intensity(prepared);
     let (spectrum, window) = (&prepared.spectrum, prepared.window);
     let inside = spectrum
@@ -249,7 +253,7 @@ fn candidates(family: Family, about: Kinematics) -> Vec<Point> {
 }
 
 /// The peaks that differ, the highest first.
-fn distinct(mut peaks: Vec<Peak>, dimensions: usize) -> Vec<Peak> {
+pub(in crate::fit) fn distinct(mut peaks: Vec<Peak>, dimensions: usize) -> Vec<Peak> {
     peaks.sort_by(|a, b| b.ln.total_cmp(&a.ln));
     let mut kept: Vec<Peak> = Vec::new();
     for peak in peaks {

@@ -90,7 +90,7 @@ impl<'a> Target<'a> {
     pub fn new(
         family: Family,
         (thick, thin): (&'a LineData, &'a LineData),
-        constraints: Constraints,
+        constraints: &Constraints,
         settings: &PosteriorSettings,
     ) -> Self {
         let priors = &settings.priors;
@@ -114,7 +114,7 @@ impl<'a> Target<'a> {
         Self {
             family,
             lines: [thick, thin],
-            constraints,
+            constraints: *constraints,
             priors: Looked {
                 separation: priors.of("separation_over_sigma"),
                 ratio: OfLogarithm::of(priors, "sigma_ratio"),

@@ -1,7 +1,7 @@
 //! Small symmetric matrices: Cholesky factors, their inverses, products.
 
 /// Most coordinates of a density.
-pub const MOST_DIMENSIONS: usize = 8;
+pub const MOST_DIMENSIONS: usize = 12;
 
 /// Coordinates; those beyond a density's own are zero.
 pub type Point = [f64; MOST_DIMENSIONS];

@@ -1,6 +1,7 @@
 //! Where the parts of a pair's figure stand on the page, before anything is drawn.
 
 use super::axis::{Axis, Ticks, extent};
+use super::posterior::PosteriorPlace;
 use super::style::{CAUTION_HEADING, LABEL, Look, NOTE, TICK, TITLE, VALUE, leading_mm};
 use super::text::{self, Spans};
 use super::{PairFigure, Panel};
@@ -55,6 +56,7 @@ pub(super) struct Layout {
     /// Names of the models in the order of their strokes.
     pub(super) models: Vec<String>,
     pub(super) notes: Vec<PlacedNote>,
+    pub(super) posterior: Option<PosteriorPlace>,
     /// Top of the block of numbers.
     pub(super) numbers_top: f64,
     pub(super) numbers: Numbers,
@@ -75,8 +77,10 @@ impl Layout {
         let notes = placed_notes(figure, axis_end + leading_mm(NOTE));
         let notes_end = notes.last().map_or(axis_end, |note| note.at.1) + 1.6;
 
+        let posterior = figure.posterior.as_ref();
+        let posterior = posterior.map(|part| PosteriorPlace::of(part, notes_end));
         let numbers = Numbers::of(&figure.numbers);
-        let numbers_top = notes_end;
+        let numbers_top = posterior.as_ref().map_or(notes_end, PosteriorPlace::end);
         let mut end = numbers_top;
         if numbers.lines() > 0 {
             end += 1.2 + leading_mm(LABEL) * numbers.lines() as f64 + 0.8;
@@ -95,6 +99,7 @@ impl Layout {
             thin,
             models: model_names(figure),
             notes,
+            posterior,
             numbers_top,
             numbers,
             cautions_top,

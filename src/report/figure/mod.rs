@@ -7,12 +7,28 @@
 //! Fonts are read only when a figure is drawn.
 
 mod axis;
+mod calibration;
 mod canvas;
+mod contour;
 mod export;
 mod layout;
+mod map;
 mod pair;
+mod plot;
+mod posterior;
+mod spectra_sheet;
 mod style;
+mod survey;
 mod text;
+
+pub use calibration::{CalibrationFigure, CalibrationPoint};
+pub use map::{ColourScale, MapCells, MapFigure, ScaleBar};
+pub use plot::Interval;
+pub use spectra_sheet::{SpectraSheet, SpectrumPanel};
+pub use survey::{
+    DistributionFigure, ProfilePanel, ProfileSheet, RankBar, RankFigure, ScatterFigure,
+    ScatterPoint,
+};
 
 use super::ReportError;
 use crate::numeric::Estimate;
@@ -50,6 +66,38 @@ pub struct Panel {
     pub curves: Vec<Curve>,
 }
 
+/// The posterior of the inward speed.
+#[derive(Clone, Debug, PartialEq)]
+pub struct PosteriorPart {
+    /// Speeds that are shown, km/s.
+    pub range_km_s: (f64, f64),
+    /// Speed (km/s, ascending) and density of the posterior averaged over models.
+    pub averaged: Vec<(f64, f64)>,
+    /// Ends of its 68 % interval, km/s.
+    pub interval68_km_s: (f64, f64),
+    /// Ends of its 95 % interval, km/s.
+    pub interval95_km_s: (f64, f64),
+    /// The same of each model, by the label of its curve.
+    pub models: Vec<(String, Vec<(f64, f64)>)>,
+    /// Draws of the averaged posterior; none leaves their plot out.
+    pub draws: Vec<SpeedAndDepth>,
+    /// Correlation of speed and optical depth.
+    pub correlation: Option<f64>,
+    /// The verdict.
+    pub sentences: Vec<String>,
+}
+
+/// A draw of speed and optical depth.
+#[derive(Clone, Debug, PartialEq)]
+pub struct SpeedAndDepth {
+    /// Label of its model's curve.
+    pub label: String,
+    /// Inward speed, km/s.
+    pub v_in_km_s: f64,
+    /// Optical depth of a half.
+    pub tau: f64,
+}
+
 /// Everything in the figure of one pair.
 ///
 /// Labels and values of `numbers` may hold `_{...}` and `^{...}` for sub- and superscripts; `+-`
@@ -66,6 +114,8 @@ pub struct PairFigure {
     pub v_lsr_km_s: Option<Estimate>,
     /// Velocity of the thin line by itself, km/s.
     pub v_thin_km_s: Option<Estimate>,
+    /// What posteriors say; `None` leaves their part out.
+    pub posterior: Option<PosteriorPart>,
     /// The main results: label and value.
     pub numbers: Vec<(String, String)>,
     /// Cautions as sentences.

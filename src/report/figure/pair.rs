@@ -5,6 +5,7 @@ use super::canvas::{Align, Canvas, page};
 use super::layout::{
     Layout, MARGIN_MM, Note, PAGE_MM, PLOT_LEFT_MM, PLOT_RIGHT_MM, PanelPlace, PlacedNote, TICK_MM,
 };
+use super::posterior;
 use super::style::{
     self, CAUTION, CAUTION_HEADING, DATA, GUIDE, INK, LABEL, NAME, NOTE, PAPER, POINT_MM, SOFT_INK,
     SOFT_LABEL, Stroke, TICK, TITLE, V_LSR, V_LSR_BAND, VALUE, WINDOW, ZERO, leading_mm, solid,
@@ -44,6 +45,7 @@ pub(super) fn draw(figure: &PairFigure) -> Result<String, ReportError> {
         sheet.panel(&figure.thin, &layout.thin, false)?;
         sheet.velocity_axis()?;
         sheet.notes()?;
+        sheet.posterior()?;
         sheet.numbers()?;
         sheet.cautions()
     })
@@ -282,19 +284,23 @@ impl Sheet<'_, '_> {
             }
         }
         for run in runs {
-            self.canvas.line(&run, self.stroke(curve))?;
+            self.canvas.line(&run, self.stroke(&curve.label))?;
         }
         Ok(())
     }
 
-    fn stroke(&self, curve: &Curve) -> Stroke {
+    fn stroke(&self, label: &str) -> Stroke {
         let names = &self.layout.models;
-        style::model(
-            names
-                .iter()
-                .position(|name| *name == curve.label)
-                .unwrap_or(0),
-        )
+        style::model(names.iter().position(|name| name == label).unwrap_or(0))
+    }
+
+    fn posterior(&self) -> Drawn {
+        match (&self.figure.posterior, &self.layout.posterior) {
+            (Some(part), Some(place)) => {
+                posterior::draw(self.canvas, part, place, &|label| self.stroke(label))
+            }
+            _ => Ok(()),
+        }
     }
 
     fn residuals(&self, panel: &Panel, top: f64, bottom: f64) -> Drawn {
@@ -320,7 +326,7 @@ impl Sheet<'_, '_> {
         self.systemic(top, bottom)?;
         for (index, curve) in panel.curves.iter().enumerate().rev() {
             let width_mm = if index == 0 { 0.24 } else { 0.16 };
-            let stroke = solid(self.stroke(curve).color, width_mm);
+            let stroke = solid(self.stroke(&curve.label).color, width_mm);
             self.draw_steps(&steps(panel, &curve.residuals), &axis, stroke)?;
         }
         let labels = [

@@ -18,8 +18,14 @@ pub(super) const ZERO: RGBColor = RGBColor(150, 156, 163);
 pub(super) const WINDOW: RGBColor = RGBColor(240, 243, 246);
 pub(super) const V_LSR: RGBColor = RGBColor(25, 110, 100);
 pub(super) const V_LSR_BAND: RGBColor = RGBColor(184, 221, 214);
+pub(super) const POSTERIOR_68: RGBColor = RGBColor(205, 186, 148);
+pub(super) const POSTERIOR_95: RGBColor = RGBColor(236, 228, 210);
 pub(super) const CAUTION: RGBColor = RGBColor(150, 50, 20);
 pub(super) const PAPER: RGBColor = RGBColor(255, 255, 255);
+
+pub(super) const CONTOUR: RGBColor = RGBColor(20, 20, 24);
+/// Cells of a map without a value.
+pub(super) const MISSING: RGBColor = RGBColor(238, 238, 236);
 
 pub(super) const TITLE_PT: f64 = 8.6;
 pub(super) const NAME_PT: f64 = 7.6;
@@ -77,6 +83,58 @@ pub(super) fn model(index: usize) -> Stroke {
     MODELS[index % MODELS.len()]
 }
 
+/// Colours of a scale from 0 to 1. One goes evenly from light to dark; the others are lightest in the
+/// middle and as dark at either end.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub(super) enum Colours {
+    Sequential,
+    BlueToRed,
+    RedToBlue,
+}
+
+const SEQUENTIAL: [(u8, u8, u8); 6] = [
+    (250, 246, 232),
+    (224, 205, 142),
+    (168, 172, 104),
+    (92, 136, 110),
+    (42, 90, 108),
+    (22, 38, 78),
+];
+const BLUE_TO_RED: [(u8, u8, u8); 7] = [
+    (16, 52, 112),
+    (58, 112, 176),
+    (160, 194, 222),
+    (248, 246, 242),
+    (232, 180, 148),
+    (190, 88, 58),
+    (112, 24, 22),
+];
+
+impl Colours {
+    pub(super) fn at(self, share: f64) -> RGBColor {
+        let anchors: &[(u8, u8, u8)] = match self {
+            Self::Sequential => &SEQUENTIAL,
+            Self::BlueToRed | Self::RedToBlue => &BLUE_TO_RED,
+        };
+        let share = if self == Self::RedToBlue {
+            1.0 - share
+        } else {
+            share
+        };
+        let place = share.clamp(0.0, 1.0) * (anchors.len() - 1) as f64;
+        // Below the number of anchors.
+        #[allow(clippy::cast_possible_truncation, clippy::cast_sign_loss)]
+        let below = (place as usize).min(anchors.len() - 2);
+        let part = place - below as f64;
+        let (a, b) = (anchors[below], anchors[below + 1]);
+        // Between two bytes.
+        #[allow(clippy::cast_possible_truncation, clippy::cast_sign_loss)]
+        let mix =
+            |a: u8, b: u8| (f64::from(a) + part * (f64::from(b) - f64::from(a))).round() as u8;
+        RGBColor(mix(a.0, b.0), mix(a.1, b.1), mix(a.2, b.2))
+    }
+}
+
 /// Size, weight and colour of a text.
 #[derive(Clone, Copy, Debug)]
 pub(super) struct Look {
@@ -126,6 +184,21 @@ mod tests {
         let RGBColor(red, green, blue) = color;
         let luminance = 0.2126 * linear(red) + 0.7152 * linear(green) + 0.0722 * linear(blue);
         116.0 * luminance.cbrt() - 16.0
+    }
+
+    #[test]
+    fn colour_scales_tell_values_in_grey() {
+        let grey = |colours: Colours, share: f64| lightness(colours.at(share));
+        for step in 0..20 {
+            let (here, next) = (f64::from(step) / 20.0, f64::from(step + 1) / 20.0);
+            assert!(grey(Colours::Sequential, here) > grey(Colours::Sequential, next) + 1.5);
+            let (a, b) = (0.5 + 0.5 * here, 0.5 + 0.5 * next);
+            for colours in [Colours::BlueToRed, Colours::RedToBlue] {
+                assert!(grey(colours, a) > grey(colours, b) + 1.0, "{colours:?} {b}");
+                let asymmetry = grey(colours, a) - grey(colours, 1.0 - a);
+                assert!(asymmetry.abs() < 12.0, "{colours:?} {a}: {asymmetry}");
+            }
+        }
     }
 
     #[test]

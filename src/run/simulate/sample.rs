@@ -3,11 +3,12 @@
 //! The folder is made under a temporary name and renamed when it is whole. Pairs are made in blocks,
 //! so memory does not grow with their number; which thread makes a pair does not matter to it.
 
+use super::folder::{file_error, fill_folder};
 use super::truth_table;
 use crate::line::{Line, find};
 use crate::report::spectra::{self, SpectrumHeader};
 use crate::report::{CsvRows, ReportError, Row, Schema};
-use crate::run::{RunError, check_directory};
+use crate::run::RunError;
 use crate::simulate::{SampleSettings, SampleTruth, SimulatedLine, simulate_pair};
 use serde::{Deserialize, Serialize};
 use std::fs::{self, File};
@@ -70,62 +71,15 @@ pub fn write_sample(run: &SampleRun) -> Result<SampleFiles, RunError> {
         line("thick", &run.thick_line)?,
         line("thin", &run.thin_line)?,
     );
-    check_directory(&run.directory)?;
-    if holds_something(&run.directory)? {
-        return Err(RunError::Occupied {
-            path: run.directory.clone(),
-        });
-    }
-    let unfinished = unfinished_beside(&run.directory)?;
-    write_into(unfinished.path(), run, (&lines.0, &lines.1))?;
-    let failed = |source| file_error(&run.directory, source);
-    if run.directory.exists() {
-        fs::remove_dir(&run.directory).map_err(failed)?;
-    }
-    fs::rename(unfinished.path(), &run.directory).map_err(failed)?;
-    // it has another name now: nothing is left to remove
-    let _ = unfinished.keep();
+    fill_folder(&run.directory, |folder| {
+        write_into(folder, run, (&lines.0, &lines.1))
+    })?;
     Ok(SampleFiles {
         table: run.directory.join(TABLE),
         truth: run.directory.join(TRUTH),
         settings: run.directory.join(SETTINGS),
         spectra: run.directory.join(SPECTRA),
     })
-}
-
-fn holds_something(directory: &Path) -> Result<bool, RunError> {
-    if !directory.exists() {
-        return Ok(false);
-    }
-    let mut entries = fs::read_dir(directory).map_err(|source| file_error(directory, source))?;
-    Ok(entries.next().is_some())
-}
-
-/// A folder under a temporary name, on the file system of its later place.
-fn unfinished_beside(directory: &Path) -> Result<tempfile::TempDir, RunError> {
-    let parent = match directory.parent() {
-        Some(parent) if !parent.as_os_str().is_empty() => parent,
-        _ => Path::new("."),
-    };
-    fs::create_dir_all(parent).map_err(|source| file_error(parent, source))?;
-    let mut builder = tempfile::Builder::new();
-    builder.prefix(".unfinished-");
-    #[cfg(unix)]
-    {
-        use std::os::unix::fs::PermissionsExt;
-        // as any new folder: open to all, less what the umask takes away
-        builder.permissions(fs::Permissions::from_mode(0o777));
-    }
-    builder
-        .tempdir_in(parent)
-        .map_err(|source| file_error(parent, source))
-}
-
-fn file_error(path: &Path, source: std::io::Error) -> RunError {
-    RunError::File {
-        path: path.to_owned(),
-        source,
-    }
 }
 
 fn write_into(folder: &Path, run: &SampleRun, lines: (&Line, &Line)) -> Result<(), RunError> {

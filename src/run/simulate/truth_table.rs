@@ -145,7 +145,8 @@ const SAMPLE: [(&str, &str, Kind, &str); 5] = [
     ("thin_line", "", Kind::Text, "Name of the thin line"),
 ];
 
-fn made(columns: &[(&str, &str, Kind, &str)]) -> Result<Schema, RunError> {
+/// Columns of names, units, kinds and meanings.
+pub(super) fn made(columns: &[(&str, &str, Kind, &str)]) -> Result<Schema, RunError> {
     let columns = columns
         .iter()
         .map(|(name, unit, kind, description)| Column {

@@ -1,0 +1,390 @@
+//! Figures of a map: what is drawn, handed to the report.
+
+use super::super::{PairOutcome, RunError};
+use super::pointing::Work;
+use super::products::Maps;
+use super::{MapRun, Second, final_outcome};
+use crate::fit::Workspace;
+use crate::grid::cubes::pixel_arcsec;
+use crate::model::Sampling;
+use crate::read::sky::{SkyFrame, SkyPosition};
+use crate::report::figure::{
+    ColourScale, MapCells, MapFigure, ScaleBar, SpectraSheet, SpectrumPanel, svg_to_pdf, svg_to_png,
+};
+use crate::report::files::write_atomically;
+use crate::report::sky_map::MapAxes;
+use crate::spectrum::Spectrum;
+use std::ops::ControlFlow;
+use std::path::PathBuf;
+
+/// Quantities that have a figure, with their label and colours.
+const DRAWN: [(&str, &str, ColourScale); 9] = [
+    (
+        "integral_thick_k_km_s",
+        "integrated intensity, thick line (K km/s)",
+        ColourScale::Sequential,
+    ),
+    (
+        "integral_thin_k_km_s",
+        "integrated intensity, thin line (K km/s)",
+        ColourScale::Sequential,
+    ),
+    (
+        "v_thin_km_s",
+        "velocity of the thin line (km/s)",
+        ColourScale::Sequential,
+    ),
+    (
+        "fwhm_thin_km_s",
+        "width of the thin line (km/s)",
+        ColourScale::Sequential,
+    ),
+    (
+        "delta_v",
+        "velocity difference \u{3b4}V",
+        ColourScale::CentredBlueBelow,
+    ),
+    (
+        "asymmetry",
+        "intensity asymmetry",
+        ColourScale::CentredBlueAbove,
+    ),
+    (
+        "two_layer_v_in_km_s",
+        "inward speed, two layers (km/s)",
+        ColourScale::CentredBlueAbove,
+    ),
+    (
+        "hill_v_in_km_s",
+        "inward speed, hill (km/s)",
+        ColourScale::CentredBlueAbove,
+    ),
+    (
+        "v_in_km_s",
+        "adopted inward speed (km/s)",
+        ColourScale::CentredBlueAbove,
+    ),
+];
+
+/// Shares of the peak at which contours lie.
+const LEVELS: [f64; 4] = [0.2, 0.4, 0.6, 0.8];
+
+/// Width of a map's PNG, pixels: 88 mm at 460 dots an inch.
+const MAP_PX: u32 = 1600;
+/// Of the sheet of spectra: 180 mm at 340 dots an inch.
+const SHEET_PX: u32 = 2400;
+
+/// Panels of the sheet of spectra along an axis; of larger maps every second, third, ... pointing is shown.
+const MOST_PANELS: usize = 11;
+
+const PC_PER_KPC: f64 = 1000.0;
+const ARCSEC_PER_RADIAN: f64 = 648_000.0 / std::f64::consts::PI;
+
+/// Draws every quantity that there is.
+pub(super) fn write(
+    run: &MapRun,
+    work: &Work<'_>,
+    maps: &Maps,
+    written: &mut Vec<PathBuf>,
+) -> Result<(), RunError> {
+    let folder = run.directory.join("figures");
+    std::fs::create_dir_all(&folder).map_err(|source| RunError::File {
+        path: folder.clone(),
+        source,
+    })?;
+    let Some(plane) = Plane::of(work) else {
+        return Ok(());
+    };
+    let doubles = |values: &[f32]| values.iter().copied().map(f64::from).collect::<Vec<f64>>();
+    let contoured = maps.column("integral_thin_k_km_s").map(doubles);
+    let peak = (contoured.iter().flatten().copied())
+        .filter(|value| value.is_finite())
+        .fold(0.0, f64::max);
+    for (name, label, colours) in DRAWN {
+        let Some(values) = maps.column(name) else {
+            continue;
+        };
+        let mut note = contour_note(peak);
+        if colours != ColourScale::Sequential {
+            note = format!("blue: as infall makes it; {note}");
+        }
+        let figure = MapFigure {
+            title: title(run, work),
+            label: label.to_owned(),
+            note,
+            axes: axis_names(work),
+            cells: MapCells::Raster {
+                width: plane.size.0,
+                height: plane.size.1,
+                first_arcsec: plane.first_arcsec,
+                column_arcsec: plane.column_arcsec,
+                row_arcsec: plane.row_arcsec,
+                values: doubles(values),
+                contoured: contoured.clone().unwrap_or_default(),
+                levels: LEVELS.map(|share| share * peak).to_vec(),
+            },
+            colours,
+            beam: work.field.beam(),
+            scale_bar: scale_bar(run, &plane),
+        };
+        write_figure(&folder, name, &figure.svg()?, MAP_PX, written)?;
+    }
+    Ok(())
+}
+
+fn write_figure(
+    folder: &std::path::Path,
+    name: &str,
+    svg: &str,
+    width_px: u32,
+    written: &mut Vec<PathBuf>,
+) -> Result<(), RunError> {
+    let contents = [
+        ("svg", svg.as_bytes().to_vec()),
+        ("png", svg_to_png(svg, width_px)?),
+        ("pdf", svg_to_pdf(svg)?),
+    ];
+    for (kind, bytes) in contents {
+        let path = folder.join(format!("{name}.{kind}"));
+        write_atomically(&path, |writer| Ok(writer.write_all(&bytes)?))?;
+        written.push(path);
+    }
+    Ok(())
+}
+
+fn contour_note(peak: f64) -> String {
+    if peak > 0.0 {
+        "contours: thin line's integral, 20, 40, 60, 80 % of its peak".to_owned()
+    } else {
+        String::new()
+    }
+}
+
+/// The raster about the reference position, as a plane.
+struct Plane {
+    size: (usize, usize),
+    first_arcsec: [f64; 2],
+    column_arcsec: [f64; 2],
+    row_arcsec: [f64; 2],
+}
+
+impl Plane {
+    fn of(work: &Work<'_>) -> Option<Self> {
+        let size = work.field.raster()?;
+        let (first_arcsec, column_arcsec, row_arcsec) = match work.field.axes()? {
+            MapAxes::Offsets {
+                first_arcsec,
+                step_arcsec,
+            } => (first_arcsec, [-step_arcsec, 0.0], [0.0, step_arcsec]),
+            MapAxes::Sky(sky) => {
+                let middle = [size.0, size.1].map(|count| (count as f64 - 1.0) / 2.0);
+                let [[a, b], [c, d]] = pixel_arcsec(&sky, middle)?;
+                let position = sky.position(middle)?;
+                let reference = work.field.reference()?.converted(position.frame).ok()?;
+                let at = position.offsets_arcsec(&reference)?;
+                let first = [
+                    at[0] - a * middle[0] - b * middle[1],
+                    at[1] - c * middle[0] - d * middle[1],
+                ];
+                (first, [a, c], [b, d])
+            }
+        };
+        Some(Self {
+            size,
+            first_arcsec,
+            column_arcsec,
+            row_arcsec,
+        })
+    }
+}
+
+fn title(run: &MapRun, work: &Work<'_>) -> String {
+    let name = run.sheet.source.name.clone().or_else(|| work.field.name());
+    match (name, work.field.reference()) {
+        (Some(name), Some(position)) => format!("{name}, {}", sexagesimal(&position)),
+        (None, Some(position)) => sexagesimal(&position),
+        (Some(name), None) => name,
+        (None, None) => "map".to_owned(),
+    }
+}
+
+/// A position as it is written on figures.
+fn sexagesimal(position: &SkyPosition) -> String {
+    if position.frame == SkyFrame::Galactic {
+        return format!(
+            "l {:.4}\u{b0} b {:+.4}\u{b0}",
+            position.longitude_deg, position.latitude_deg
+        );
+    }
+    // Tenths of a second of time, whole seconds of arc.
+    let parts = |value: f64, unit: f64| {
+        let whole = (value.abs() * 3600.0 * unit).round() / unit;
+        let (first, rest) = ((whole / 3600.0).floor(), whole % 3600.0);
+        (first, (rest / 60.0).floor(), rest % 60.0)
+    };
+    let (h, m, s) = parts(position.longitude_deg / 15.0, 10.0);
+    let (d, am, arcsec) = parts(position.latitude_deg, 1.0);
+    let sign = if position.latitude_deg < 0.0 {
+        '\u{2212}'
+    } else {
+        '+'
+    };
+    format!(
+        "{:02}:{m:02}:{s:04.1} {sign}{d:02}:{am:02}:{arcsec:02}",
+        h % 24.0
+    )
+}
+
+fn axis_names(work: &Work<'_>) -> [String; 2] {
+    let galactic = work
+        .field
+        .reference()
+        .is_some_and(|at| at.frame == SkyFrame::Galactic);
+    if galactic {
+        [
+            "offset in l (arcsec)".to_owned(),
+            "offset in b (arcsec)".to_owned(),
+        ]
+    } else {
+        [
+            "offset in right ascension (arcsec)".to_owned(),
+            "offset in declination (arcsec)".to_owned(),
+        ]
+    }
+}
+
+/// A round length of at most a third of the plane, where the distance is known.
+fn scale_bar(run: &MapRun, plane: &Plane) -> Option<ScaleBar> {
+    let distance_pc = run.sheet.source.distance_kpc?.estimate().value * PC_PER_KPC;
+    let width = plane.size.0 as f64 * plane.column_arcsec[0].hypot(plane.column_arcsec[1]);
+    let pc_per_arcsec = distance_pc / ARCSEC_PER_RADIAN;
+    let most = width / 3.0 * pc_per_arcsec;
+    let power = 10_f64.powf(most.log10().floor());
+    let pc = [5.0, 2.0, 1.0]
+        .into_iter()
+        .map(|factor| factor * power)
+        .find(|length| *length <= most)?;
+    Some(ScaleBar {
+        arcsec: pc / pc_per_arcsec,
+        label: format!("{pc} pc"),
+    })
+}
+
+/// The sheet of spectra with their fits.
+pub(super) fn write_spectra(
+    run: &MapRun,
+    work: &Work<'_>,
+    second: &Second,
+    fitted: &[usize],
+    written: &mut Vec<PathBuf>,
+) -> Result<(), RunError> {
+    let Some((width, height)) = work.field.raster() else {
+        return Ok(());
+    };
+    let cells: Vec<(usize, (usize, usize))> = (fitted.iter())
+        .filter_map(|site| {
+            work.field
+                .cell(*site)
+                .map(|cell| (*site, (cell % width, cell / width)))
+        })
+        .collect();
+    let range = |axis: fn(&(usize, usize)) -> usize| {
+        let all = || cells.iter().map(|(_, cell)| axis(cell));
+        Some((all().min()?, all().max()?))
+    };
+    let (Some(columns), Some(rows)) = (range(|cell| cell.0), range(|cell| cell.1)) else {
+        return Ok(());
+    };
+    debug_assert!(columns.1 < width && rows.1 < height);
+    let spread = (columns.1 - columns.0).max(rows.1 - rows.0) + 1;
+    let every = spread.div_ceil(MOST_PANELS);
+    let shown: Vec<(usize, (usize, usize))> = (cells.into_iter())
+        .filter(|(_, (x, y))| (x - columns.0) % every == 0 && (y - rows.0) % every == 0)
+        .map(|(site, (x, y))| (site, ((x - columns.0) / every, (rows.1 - y) / every)))
+        .collect();
+    let mut panels = Vec::new();
+    let mut windows: Option<(f64, f64)> = None;
+    let ended = run.batch.run(
+        shown,
+        Workspace::new,
+        |workspace, (site, place)| {
+            let outcome = final_outcome(work, second, site, workspace)?;
+            Ok::<_, RunError>(outcome.map(|outcome| (panel(&outcome, place), window(&outcome))))
+        },
+        |_, drawn| match drawn {
+            Ok(Some((panel, (low, high)))) => {
+                panels.push(panel);
+                let (a, b) = windows.unwrap_or((low, high));
+                windows = Some((a.min(low), b.max(high)));
+                ControlFlow::Continue(())
+            }
+            Ok(None) => ControlFlow::Continue(()),
+            Err(error) => ControlFlow::Break(error),
+        },
+    )?;
+    if let ControlFlow::Break(error) = ended {
+        return Err(error);
+    }
+    let Some((low, high)) = windows else {
+        return Ok(());
+    };
+    let margin = 0.3 * (high - low);
+    let of = |spread: (usize, usize)| (spread.1 - spread.0) / every + 1;
+    let sheet = SpectraSheet {
+        title: title(run, work),
+        note: note(work, every),
+        size: (of(columns), of(rows)),
+        velocity_km_s: (low - margin, high + margin),
+        panels,
+    };
+    let folder = run.directory.join("figures");
+    write_figure(&folder, "spectra", &sheet.svg()?, SHEET_PX, written)
+}
+
+fn note(work: &Work<'_>, every: usize) -> String {
+    let [thick, thin] = work.field.lines();
+    let step = work.field.step_arcsec() * every as f64;
+    format!(
+        "{} dark, {} light, adopted or first model over both; panels {step:.1} arcsec apart, north up, east left",
+        thick.name, thin.name
+    )
+}
+
+/// Velocities about the thick line.
+fn window(outcome: &PairOutcome) -> (f64, f64) {
+    let window = outcome.thick.prepared.window;
+    (window.low_km_s, window.high_km_s)
+}
+
+fn panel(outcome: &PairOutcome, place: (usize, usize)) -> SpectrumPanel {
+    let points = |spectrum: &Spectrum| {
+        let channels = spectrum
+            .velocity_km_s()
+            .iter()
+            .zip(spectrum.temperature_k());
+        channels.map(|(v, t)| (*v, *t)).collect::<Vec<_>>()
+    };
+    let model = outcome.fit.adopted().or(outcome.fit.models.first());
+    let curves = model.map(|fit| {
+        let steps = 160;
+        let (low, high) = window(outcome);
+        let margin = 0.3 * (high - low);
+        let fine: Vec<f64> = (0..=steps)
+            .map(|step| {
+                low - margin + (high - low + 2.0 * margin) * f64::from(step) / f64::from(steps)
+            })
+            .collect();
+        let sampling = Sampling::at(fine.clone());
+        [
+            fit.thick_profile_k(&sampling),
+            fit.thin_profile_k(&sampling),
+        ]
+        .map(|values| fine.iter().copied().zip(values).collect())
+    });
+    SpectrumPanel {
+        place,
+        thick: points(&outcome.thick.prepared.spectrum),
+        thin: points(&outcome.thin.prepared.spectrum),
+        models: curves.unwrap_or_default(),
+    }
+}
