@@ -145,12 +145,12 @@ mod tests {
             quality: Quality {
                 effective: 500.0,
                 tail_shape: None,
-                tails: 50.0,
+                tails: 25.0,
                 halves: 0.0,
             },
             evaluations: 0,
-            inward: 1.0,
-            outward: 1.0,
+            inward: 2.0,
+            outward: 0.0,
             v_in: (0..draws)
                 .map(|index| (drawn(index)[0], 1.0 / draws as f64))
                 .collect(),

@@ -242,7 +242,7 @@ pub fn verdict(posterior: &PairPosterior, odds: &Odds) -> Result<Verdict, Hypoth
         .iter()
         .filter(|one| is_moving(one.family))
         .collect();
-    let shares = posterior.model_shares();
+    let shares = shares(&moving);
     let average = average(&moving, &shares);
     let Some(v_in_km_s) = interval(&average) else {
         return Err(HypothesesError::Incomplete { missing: "moving" });
@@ -282,6 +282,23 @@ fn is_moving(family: Family) -> bool {
 
 fn is_static(family: Family) -> bool {
     matches!(family, Family::Still(_) | Family::Unabsorbed)
+}
+
+/// Share of each model's evidence in the sum over models.
+fn shares(moving: &[&FamilyPosterior]) -> Vec<(Model, f64)> {
+    let highest = moving
+        .iter()
+        .map(|one| one.ln_evidence)
+        .fold(f64::NEG_INFINITY, f64::max);
+    let relative = |one: &FamilyPosterior| (one.ln_evidence - highest).exp();
+    let total: f64 = moving.iter().map(|one| relative(one)).sum();
+    moving
+        .iter()
+        .filter_map(|one| match one.family {
+            Family::Moving(model) => Some((model, relative(one) / total)),
+            _ => None,
+        })
+        .collect()
 }
 
 /// Weighted speeds of all models, each model with its share.

@@ -121,10 +121,10 @@ impl LineData {
                 bump
             })
             .collect();
-        let whole = within(f64::NEG_INFINITY, f64::INFINITY);
         let (independent, variance) = if prepared.noise.process.is_white() {
             (1.0, 1.0)
         } else {
+            let whole = within(f64::NEG_INFINITY, f64::INFINITY);
             independence(&whole, prepared.window, inflation(prepared))
         };
         let values = (data.len() - polynomials.len()) as f64 * independent;

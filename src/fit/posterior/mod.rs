@@ -6,7 +6,6 @@
 
 mod constraints;
 mod data;
-mod draws;
 mod family;
 mod settings;
 mod shapes;
@@ -15,7 +14,6 @@ mod target;
 
 pub(in crate::fit) use data::LineData;
 pub use data::ShapeErrors;
-pub use draws::ModelDraw;
 pub use family::Family;
 pub use settings::{PosteriorError, PosteriorSettings, SHAPE_ERROR};
 pub(in crate::fit) use starts::{Kinematics, distinct, kinematics, shape_errors};

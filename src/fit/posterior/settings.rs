@@ -205,6 +205,17 @@ impl PosteriorSettings {
         moving.chain(still).chain(others).collect()
     }
 
+    /// The same with as many effective draws, and as many that are kept.
+    #[must_use]
+    pub fn with_draws(mut self, draws: usize) -> Self {
+        let more = draws as f64 / self.draws as f64;
+        self.sampling.effective *= more;
+        self.sampling.tails *= more;
+        self.sampling.round *= draws.div_ceil(self.draws);
+        self.draws = draws;
+        self
+    }
+
     /// Whether they make a posterior.
     ///
     /// # Errors

@@ -116,10 +116,14 @@ type Lanewise = [Lanes; MOST_DIMENSIONS];
 
 /// Up to [`LANES`] points, the first one repeated.
 #[inline(always)]
-fn lanewise(points: &[Point]) -> Lanewise {
-    std::array::from_fn(|i| {
-        std::array::from_fn(|lane| points[if lane < points.len() { lane } else { 0 }][i])
-    })
+fn lanewise(dimensions: usize, points: &[Point]) -> Lanewise {
+    let mut lanes = [[0.0; LANES]; MOST_DIMENSIONS];
+    for (i, values) in lanes.iter_mut().enumerate().take(dimensions) {
+        for (lane, value) in values.iter_mut().enumerate() {
+            *value = points[if lane < points.len() { lane } else { 0 }][i];
+        }
+    }
+    lanes
 }
 
 /// Adds a mixture's densities at points.
@@ -136,7 +140,7 @@ impl Kernel for AddDensities<'_> {
     fn run<A: Arithmetic>(self) {
         let d = self.mixture.dimensions;
         for (points, sums) in self.points.chunks(LANES).zip(self.sums.chunks_mut(LANES)) {
-            let lanes = lanewise(points);
+            let lanes = lanewise(d, points);
             let mut total = [0.0; LANES];
             for component in &self.mixture.components {
                 let distances = component.distances_squared::<A>(d, &lanes);
@@ -171,7 +175,7 @@ impl Kernel for Memberships<'_> {
         let mut sums = vec![Sums::default(); components.len()];
         let mut found = vec![([0.0; LANES], [0.0; LANES]); components.len()];
         for (points, weights) in self.points.chunks(LANES).zip(self.weights.chunks(LANES)) {
-            let lanes = lanewise(points);
+            let lanes = lanewise(d, points);
             let mut total = [0.0; LANES];
             for (slot, component) in found.iter_mut().zip(components) {
                 let distances = component.distances_squared::<A>(d, &lanes);
