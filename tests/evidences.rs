@@ -2,6 +2,7 @@
 
 #![allow(clippy::unwrap_used)]
 
+use inrush::fit::averaged::Averaged;
 use inrush::fit::hypotheses::{Hypothesis, Odds, Speed, verdict};
 use inrush::fit::posterior::{
     Family, FamilyPosterior, PairPosterior, PosteriorError, PosteriorSettings, pair_posterior,
@@ -433,6 +434,30 @@ fn linked_depths_and_calibration_errors_reach_the_draws() {
     // the line's peak of 1 K becomes uncertain by a fifth either way
     assert!(certain < 0.1 && uncertain > 0.3, "{certain} {uncertain}");
     assert_eq!(speeds, same_speeds);
+}
+
+/// Draws of the average are those of the models by their shares.
+#[test]
+fn averaged_draws_come_from_the_models_by_their_evidence() {
+    let posterior = posterior_of(&simulated(Model::Hill, &INFALL, 0.4, 11), 0.5, &settings());
+    let verdict = verdict(&posterior, &Odds::default()).unwrap();
+    let averaged = Averaged::new(&posterior, &verdict).unwrap();
+    let draws: Vec<_> = averaged.rows(800).collect();
+    assert_eq!(draws.len(), 800);
+    for (model, share) in posterior.model_shares() {
+        let of = draws.iter().filter(|draw| draw.model == model).count();
+        // blocks end at whole draws; a share below a thousandth has none
+        assert!((of as f64 - 800.0 * share).abs() <= 1.0);
+    }
+    let mean = draws
+        .iter()
+        .map(|draw| draw.get("v_in_km_s").unwrap())
+        .sum::<f64>()
+        / 800.0;
+    let average = verdict.v_in_km_s;
+    let (low, high) = average.interval68;
+    // 500 draws of each model: four standard errors
+    assert!((mean - average.mean).abs() < 4.0 * 0.5 * (high - low) / 500f64.sqrt());
 }
 
 #[test]

@@ -1,10 +1,11 @@
 //! `inrush check`.
 
 use super::output::Output;
+use super::values::given;
 use super::{Exit, report};
 use clap::Args;
 use inrush::prepare::PrepareSettings;
-use inrush::run::{FileCheck, LineSection, NumberOrWord, RunError, RunSheet, check_file};
+use inrush::run::{FileCheck, Given, LineSection, NumberOrWord, RunError, RunSheet, check_file};
 use inrush::spectrum::{AxisKind, BrightnessUnit, Frame, RawSpectrum};
 use std::fmt::Write;
 use std::path::{Path, PathBuf};
@@ -31,9 +32,9 @@ pub struct CheckArguments {
     /// Row of a table with one spectrum a row: a number, or COLUMN=VALUE.
     #[arg(long, value_name = "ROW")]
     row: Option<String>,
-    /// Main-beam efficiency, for T_A*.
-    #[arg(long, value_name = "ETA")]
-    eta_mb: Option<f64>,
+    /// Main-beam efficiency, for T_A*, optionally with its error.
+    #[arg(long, value_name = "ETA[,ERR]", value_parser = given, allow_hyphen_values = true)]
+    eta_mb: Option<Given>,
     /// Velocity that brings the file's frame to LSRK, km/s.
     #[arg(long, value_name = "KM_S", allow_negative_numbers = true)]
     frame_offset_km_s: Option<f64>,

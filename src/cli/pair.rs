@@ -46,22 +46,12 @@ pub struct PairArguments {
     /// Row of the thin line's table: a number, or COLUMN=VALUE.
     #[arg(long, value_name = "ROW", help_heading = "Reading")]
     thin_row: Option<String>,
-    /// Main-beam efficiency of the thick line, for T_A*.
-    #[arg(
-        long,
-        value_name = "ETA",
-        allow_negative_numbers = true,
-        help_heading = "Reading"
-    )]
-    thick_eta_mb: Option<f64>,
-    /// Main-beam efficiency of the thin line, for T_A*.
-    #[arg(
-        long,
-        value_name = "ETA",
-        allow_negative_numbers = true,
-        help_heading = "Reading"
-    )]
-    thin_eta_mb: Option<f64>,
+    /// Main-beam efficiency of the thick line, for T_A*, optionally with its error.
+    #[arg(long, value_name = "ETA[,ERR]", value_parser = given, allow_hyphen_values = true, help_heading = "Reading")]
+    thick_eta_mb: Option<Given>,
+    /// Main-beam efficiency of the thin line, for T_A*, optionally with its error.
+    #[arg(long, value_name = "ETA[,ERR]", value_parser = given, allow_hyphen_values = true, help_heading = "Reading")]
+    thin_eta_mb: Option<Given>,
     /// Beam of the thick line, full width at half maximum, for Jy/beam.
     #[arg(long, value_name = "ARCSEC[,ARCSEC]", value_parser = beam, allow_hyphen_values = true, help_heading = "Reading")]
     thick_beam_arcsec: Option<Beam>,

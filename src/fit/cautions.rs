@@ -7,6 +7,7 @@ use crate::constants::FWHM_PER_SIGMA;
 use crate::measure::Measures;
 use crate::model::Model;
 use crate::numeric::least_squares::Side;
+use crate::numeric::sampling::Doubt;
 use crate::prepare::{PairLine, Prepared};
 use crate::spectrum::Window;
 use statrs::distribution::{ChiSquared, ContinuousCDF};
@@ -127,8 +128,8 @@ pub enum Caution {
     },
     /// Draws of families that carry weight do not describe their posterior.
     PosteriorUntrusted {
-        /// The families.
-        families: Vec<Family>,
+        /// Each family with what speaks against its draws.
+        doubts: Vec<(Family, Doubt)>,
     },
     /// The data say hardly more of the speed than its prior does.
     SpeedUnconstrained,
@@ -296,9 +297,9 @@ impl Caution {
                 "the posterior knows nothing of {}: the adopted speed is the least-squares one with its formal error, the probabilities are those without",
                 settings.join(", ")
             ),
-            Self::PosteriorUntrusted { families } => format!(
-                "the draws of {} do not describe the posterior well: intervals and probabilities may be off",
-                listed(families, |family| family.name())
+            Self::PosteriorUntrusted { doubts } => format!(
+                "draws do not describe the posterior well ({}): intervals and probabilities may be off",
+                listed(doubts, |(family, doubt)| format!("{}: {}", family.name(), doubt.text()))
             ),
             Self::SpeedUnconstrained => {
                 "the data do not constrain the inward speed: they say hardly more than its prior".to_owned()
@@ -455,10 +456,8 @@ fn of_judgement(facts: &PairFacts<'_>, found: &mut Vec<Caution>) {
         found.push(Caution::TwoCloudsFavoured { probability });
     }
     if !verdict.trusted {
-        let families = posterior.families.iter();
-        let doubtful = families.filter(|one| !one.quality.holds());
         found.push(Caution::PosteriorUntrusted {
-            families: doubtful.map(|one| one.family).collect(),
+            doubts: verdict.doubts.clone(),
         });
     }
     if !unheard.is_empty() {

@@ -39,6 +39,8 @@ pub struct ScaleSettings {
     pub rest_frequency_hz: f64,
     /// Main-beam efficiency, (0, 1]; needed for `T_A`*.
     pub eta_mb: Option<f64>,
+    /// Its standard error; 0 where none is known.
+    pub eta_mb_err: f64,
     /// Beam for Jy/beam, arcsec; stands above the file's.
     pub beam: Option<BeamArcsec>,
     /// Velocity to add to get from the file's frame to LSRK, km/s; only for other frames.
@@ -51,6 +53,7 @@ impl ScaleSettings {
         Self {
             rest_frequency_hz,
             eta_mb: None,
+            eta_mb_err: 0.0,
             beam: None,
             frame_offset_km_s: None,
         }
@@ -64,6 +67,8 @@ pub struct Scaled {
     pub spectrum: Spectrum,
     /// What was assumed or changed, in the order in which it was.
     pub notes: Vec<ScaleNote>,
+    /// Relative error of the main-beam efficiency; 0 where none was used.
+    pub calibration_error: f64,
 }
 
 /// Something assumed or changed that a user should know; `Display` gives it in words.
@@ -154,6 +159,18 @@ pub enum ScaleError {
         file: String,
         /// The efficiency.
         found: f64,
+    },
+    /// The error of the efficiency is impossible.
+    #[error(
+        "{file}: eta_mb = {eta_mb} with error {err}, expected an error of at least 0 and below the value"
+    )]
+    EfficiencyError {
+        /// The file.
+        file: String,
+        /// The efficiency.
+        eta_mb: f64,
+        /// Its error.
+        err: f64,
     },
     /// Antenna temperatures without an efficiency.
     #[error("{file}: antenna temperature T_A* and no eta_mb, expected a main-beam efficiency")]
@@ -270,6 +287,7 @@ impl ScaleError {
         Some(
             match self {
                 ScaleError::Efficiency { .. } => "give the fraction, such as 0.81, not percent",
+                ScaleError::EfficiencyError { .. } => "the error is that of the fraction, such as [0.81, 0.04] or 0.81,0.04, not percent",
                 ScaleError::NoEfficiency { .. } => "give eta_mb in the run sheet, or --thick-eta-mb and --thin-eta-mb; 1 keeps the scale",
                 ScaleError::Beam { .. } => {
                     "BMAJ and BMIN are in degrees; a given beam is in arcsec"
@@ -327,6 +345,7 @@ pub fn to_spectrum(raw: &RawSpectrum, settings: &ScaleSettings) -> Result<Scaled
             source,
         }
     })?;
+    let calibration_error = conversion.calibration_error;
     let mut notes = conversion.notes;
     let masked = spectrum.len() - spectrum.usable_channels();
     if masked > 0 {
@@ -335,7 +354,11 @@ pub fn to_spectrum(raw: &RawSpectrum, settings: &ScaleSettings) -> Result<Scaled
             channels: spectrum.len(),
         });
     }
-    Ok(Scaled { spectrum, notes })
+    Ok(Scaled {
+        spectrum,
+        notes,
+        calibration_error,
+    })
 }
 
 /// The way of many spectra of one axis and unit, such as those of a cube, onto the common scale.
@@ -347,6 +370,7 @@ pub struct Conversion {
     /// Whether velocities descend in the file's order of channels.
     descending: bool,
     notes: Vec<ScaleNote>,
+    calibration_error: f64,
 }
 
 impl Conversion {
@@ -384,6 +408,7 @@ impl Conversion {
             kelvin_per_unit,
             descending,
             notes,
+            calibration_error: calibration_error(raw.unit, settings),
         })
     }
 
@@ -391,6 +416,12 @@ impl Conversion {
     #[must_use]
     pub fn notes(&self) -> &[ScaleNote] {
         &self.notes
+    }
+
+    /// Relative error of the main-beam efficiency; 0 where none was used.
+    #[must_use]
+    pub fn calibration_error(&self) -> f64 {
+        self.calibration_error
     }
 
     /// The spectrum of values in the file's order and unit, `NaN` where blank.
@@ -410,6 +441,16 @@ impl Conversion {
             *value *= factor;
         }
         Spectrum::new(self.velocity_km_s.clone(), self.width_km_s.clone(), values)
+    }
+}
+
+/// Relative error of the main-beam efficiency; 0 where values of the unit need none.
+fn calibration_error(unit: BrightnessUnit, settings: &ScaleSettings) -> f64 {
+    match (unit, settings.eta_mb) {
+        (BrightnessUnit::AntennaKelvin | BrightnessUnit::Kelvin, Some(eta_mb)) => {
+            settings.eta_mb_err / eta_mb
+        }
+        _ => 0.0,
     }
 }
 
@@ -436,6 +477,15 @@ fn check_settings(raw: &RawSpectrum, settings: &ScaleSettings) -> Result<(), Sca
         return Err(ScaleError::Efficiency {
             file: file_of(raw),
             found,
+        });
+    }
+    if let Some(eta_mb) = settings.eta_mb
+        && !(0.0..eta_mb).contains(&settings.eta_mb_err)
+    {
+        return Err(ScaleError::EfficiencyError {
+            file: file_of(raw),
+            eta_mb,
+            err: settings.eta_mb_err,
         });
     }
     if let Some(offset_km_s) = settings

@@ -4,7 +4,7 @@ use crate::fit::averaged::Averaged;
 use crate::fit::conflict::{PriorConflict, conflict, replaced};
 use crate::fit::hypotheses::{HypothesesError, Odds, Speed, Verdict, verdict};
 use crate::fit::posterior::{
-    Family, PairPosterior, PosteriorError, PosteriorSettings, pair_posterior,
+    CONSTRAINED, Family, PairPosterior, PosteriorError, PosteriorSettings, pair_posterior,
 };
 use crate::fit::priors::Priors;
 use crate::fit::{FitSettings, Judgement, Unjudged, is_absorbed};
@@ -12,11 +12,13 @@ use crate::line::Line;
 use crate::measure::{Measures, ThinLine};
 use crate::model::RadiationTemperature;
 use crate::prepare::Prepared;
+use std::collections::BTreeMap;
 
 /// How a pair is judged.
 #[derive(Clone, Debug, Default, PartialEq)]
 pub struct VerdictSettings {
-    /// Posteriors; models, range and averaging are those of the fit.
+    /// Posteriors; models, range, averaging, bounds, given values and the isotope ratio are those of the
+    /// fit, and the errors of the lines' efficiencies are added to those of the calibration.
     pub posterior: PosteriorSettings,
     /// Prior odds of the hypotheses.
     pub odds: Odds,
@@ -54,14 +56,16 @@ pub(super) struct PreparedPair<'a> {
     pub lines: (&'a Line, &'a Line),
     pub thin_line: Option<&'a ThinLine>,
     pub measures: &'a Measures,
+    /// Relative errors of both efficiencies.
+    pub calibration_error: (f64, f64),
 }
 
 /// Posteriors and verdict, or why there are none.
 ///
 /// # Errors
 ///
-/// [`JudgeError`] for odds that are no probabilities, settings that make no posterior, and replaced
-/// priors without mass where the data are. What lies in the data is no error, but an [`Unjudged`].
+/// [`JudgeError`] for odds that are no probabilities, settings that make no posterior, and bounds, given
+/// values or replaced priors without mass where the data are. What lies in the data is no error, but an [`Unjudged`].
 pub(super) fn judge(
     pair: &PreparedPair<'_>,
     fit: &FitSettings,
@@ -79,10 +83,18 @@ pub(super) fn judge(
     if is_absorbed(pair.measures) {
         return Ok(Err(Unjudged::Absorbed));
     }
+    let own_error = settings.posterior.calibration_error;
     let settings_of = |priors: &Priors, hypotheses: bool| PosteriorSettings {
         models: models.clone(),
         hypotheses,
         priors: priors.clone(),
+        bounds: heard(&fit.bounds),
+        given: heard(&fit.given),
+        isotope_ratio: fit.isotope_ratio,
+        calibration_error: (
+            own_error.0.hypot(pair.calibration_error.0),
+            own_error.1.hypot(pair.calibration_error.1),
+        ),
         range: fit.range,
         averaging: fit.averaging,
         ..settings.posterior.clone()
@@ -102,9 +114,7 @@ pub(super) fn judge(
     let posterior = sampled(&settings_of(priors, true));
     let posterior = match posterior {
         Ok(posterior) => posterior,
-        Err(error @ (PosteriorError::TooFewDraws { .. } | PosteriorError::NoPosterior { .. })) => {
-            return Err(error.into());
-        }
+        Err(error) if error.is_of_settings() => return Err(error.into()),
         Err(error) => return Ok(Err(Unjudged::Failed(error))),
     };
     let verdict = verdict(&posterior, &settings.odds)?;
@@ -160,18 +170,27 @@ impl JudgeError {
     }
 }
 
+/// Bounds or given values of what posteriors know.
+fn heard<T: Copy>(of_fit: &BTreeMap<String, T>) -> BTreeMap<String, T> {
+    let known = |(name, _): &(&String, &T)| CONSTRAINED.contains(&name.as_str());
+    let heard = of_fit.iter().filter(known);
+    heard.map(|(name, value)| (name.clone(), *value)).collect()
+}
+
 /// Settings of a fit that posteriors know nothing of, as run sheets name them.
 fn unheard(fit: &FitSettings) -> Vec<String> {
     let switches = [
         (fit.free_thin_velocity, "free_thin_velocity"),
         (fit.free_thin_sigma, "free_thin_sigma"),
-        (fit.isotope_ratio.is_some(), "isotope_ratio"),
     ];
     let switched = switches
         .into_iter()
         .filter(|(on, _)| *on)
         .map(|(_, name)| name.to_owned());
-    let given = fit.given.keys().map(|name| format!("given {name}"));
-    let bounds = fit.bounds.keys().map(|name| format!("bounds of {name}"));
+    let unknown = |name: &&String| !CONSTRAINED.contains(&name.as_str());
+    let given = fit.given.keys().filter(unknown);
+    let given = given.map(|name| format!("given {name}"));
+    let bounds = fit.bounds.keys().filter(unknown);
+    let bounds = bounds.map(|name| format!("bounds of {name}"));
     switched.chain(given).chain(bounds).collect()
 }

@@ -35,6 +35,8 @@ pub struct LineInput {
     pub object: Option<String>,
     /// What was assumed on the way to the common scale.
     pub notes: Vec<ScaleNote>,
+    /// Relative error of its main-beam efficiency; 0 where none is known.
+    pub calibration_error: f64,
 }
 
 /// A pair before it is prepared.
@@ -251,6 +253,7 @@ pub(super) fn fit_prepared(
         lines: (thick_line, thin_line),
         thin_line: thin_fit.line.as_ref(),
         measures: &measures,
+        calibration_error: (thick.calibration_error, thin.calibration_error),
     };
     let judged = (settings.verdict.as_ref())
         .map(|verdict| judge(&prepared, &settings.fit, verdict))
@@ -322,6 +325,7 @@ impl LineInput {
             sha256: None,
             object: None,
             notes: Vec::new(),
+            calibration_error: 0.0,
         }
     }
 
@@ -358,6 +362,7 @@ pub(super) fn open(
         object: raw.object.clone(),
         origin: raw.origin,
         notes: scaled.notes,
+        calibration_error: scaled.calibration_error,
     })
 }
 

@@ -6,6 +6,7 @@
 use super::error::line_at;
 use super::{PairSettings, RunError, VerdictSettings};
 use crate::derive::{DeriveSettings, Input, SourceProperties};
+use crate::fit::conflict::replaced;
 use crate::fit::hypotheses::{Hypothesis, Odds};
 use crate::fit::posterior::PosteriorSettings;
 use crate::fit::priors::{PRIORS, Prior, Priors};
@@ -315,9 +316,9 @@ pub struct LineSection {
     /// Angle of an elliptical beam's major axis from north through east, degrees; for maps.
     #[serde(skip_serializing_if = "Option::is_none")]
     pub beam_angle_deg: Option<f64>,
-    /// Main-beam efficiency.
+    /// Main-beam efficiency; its relative error is one of the line's scale.
     #[serde(skip_serializing_if = "Option::is_none")]
-    pub eta_mb: Option<f64>,
+    pub eta_mb: Option<Given>,
     /// Velocity that brings the file's frame to LSRK, km/s.
     #[serde(skip_serializing_if = "Option::is_none")]
     pub frame_offset_km_s: Option<f64>,
@@ -597,6 +598,7 @@ impl RunSheet {
             hint: error.hint(),
         })?;
         let priors = self.replaced_priors()?;
+        self.refuse_priors_of_given(&priors)?;
         if self.fit.formal {
             return Ok(None);
         }
@@ -642,6 +644,25 @@ impl RunSheet {
                 })?;
         }
         Ok(priors)
+    }
+
+    /// A given value stands in the place of its prior: with both, one would be left out.
+    fn refuse_priors_of_given(&self, priors: &Priors) -> Result<(), RunError> {
+        for (prior, _) in replaced(priors) {
+            let parameter = match prior {
+                "v_in_over_sigma" => "v_in_km_s",
+                other => other,
+            };
+            if self.fit.given.contains_key(parameter) {
+                return Err(RunError::setting(
+                    &format!("priors.{prior}"),
+                    &format!("a prior beside {parameter} as given"),
+                    "one of the two",
+                )
+                .hinted("a given value stands in the place of the prior"));
+            }
+        }
+        Ok(())
     }
 
     /// The same with every prior written out.
@@ -885,9 +906,11 @@ impl LineSection {
     /// How the line's spectrum is brought onto the common scale.
     #[must_use]
     pub fn scale_settings(&self, line: &Line) -> ScaleSettings {
+        let eta_mb = self.eta_mb.map(Given::estimate);
         ScaleSettings {
             rest_frequency_hz: line.rest_frequency_ghz * 1e9,
-            eta_mb: self.eta_mb,
+            eta_mb: eta_mb.map(|eta_mb| eta_mb.value),
+            eta_mb_err: eta_mb.map_or(0.0, |eta_mb| eta_mb.err),
             beam: self.beam_arcsec.map(|beam| match beam {
                 Beam::Round(width) => BeamArcsec {
                     major: width,

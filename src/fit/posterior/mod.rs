@@ -15,7 +15,7 @@ mod target;
 pub(in crate::fit) use data::LineData;
 pub use data::ShapeErrors;
 pub use family::Family;
-pub use settings::{PosteriorError, PosteriorSettings, SHAPE_ERROR};
+pub use settings::{CONSTRAINED, PosteriorError, PosteriorSettings, SHAPE_ERROR};
 pub(in crate::fit) use starts::{Kinematics, distinct, kinematics, shape_errors};
 
 use super::FitRange;
@@ -167,6 +167,22 @@ impl PairPosterior {
     pub fn of(&self, family: Family) -> Option<&FamilyPosterior> {
         self.families.iter().find(|one| one.family == family)
     }
+
+    /// Share of each moving model's evidence in their sum.
+    #[must_use]
+    pub fn model_shares(&self) -> Vec<(Model, f64)> {
+        let moving = || {
+            self.families.iter().filter_map(|one| match one.family {
+                Family::Moving(model) => Some((model, one.ln_evidence)),
+                _ => None,
+            })
+        };
+        let highest = moving().map(|(_, ln)| ln).fold(f64::NEG_INFINITY, f64::max);
+        let total: f64 = moving().map(|(_, ln)| (ln - highest).exp()).sum();
+        moving()
+            .map(|(model, ln)| (model, (ln - highest).exp() / total))
+            .collect()
+    }
 }
 
 /// Posteriors and evidences of every family for a pair.
@@ -303,7 +319,7 @@ fn family_posterior(
             let before = target.inward_before(&full);
             if full[2] > 0.0 {
                 inward += weight / before;
-            } else {
+            } else if full[2] < 0.0 {
                 outward += weight / (1.0 - before);
             }
             v_in.push((full[2] * full[1].exp(), *weight));

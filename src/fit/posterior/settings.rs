@@ -67,18 +67,6 @@ impl Default for PosteriorSettings {
     }
 }
 
-impl PosteriorSettings {
-    /// The same with as many effective draws, and as many that are kept.
-    #[must_use]
-    pub fn with_draws(mut self, draws: usize) -> Self {
-        let more = draws as f64 / self.draws as f64;
-        self.sampling.effective *= more;
-        self.sampling.round *= draws.div_ceil(self.draws);
-        self.draws = draws;
-        self
-    }
-}
-
 /// Why there is no posterior.
 #[derive(Clone, Debug, PartialEq, thiserror::Error)]
 pub enum PosteriorError {
@@ -161,6 +149,12 @@ pub enum PosteriorError {
 }
 
 impl PosteriorError {
+    /// Whether it is for the settings to change; else the data do not allow a posterior.
+    #[must_use]
+    pub fn is_of_settings(&self) -> bool {
+        !matches!(self, Self::TooFewChannels { .. } | Self::NoMass { .. })
+    }
+
     /// What to do about it.
     #[must_use]
     pub fn hint(&self) -> Option<String> {
@@ -191,7 +185,7 @@ impl PosteriorError {
 const FEWEST_DRAWS: usize = 100;
 
 /// Parameters that can be bounded or given.
-const CONSTRAINED: [&str; 4] = ["v_lsr_km_s", "sigma_km_s", "v_in_km_s", "tau"];
+pub const CONSTRAINED: [&str; 4] = ["v_lsr_km_s", "sigma_km_s", "v_in_km_s", "tau"];
 
 impl PosteriorSettings {
     /// The families that are sampled.

@@ -134,6 +134,26 @@ pub enum Doubt {
     },
 }
 
+impl Doubt {
+    /// What was found and what is expected, without commas.
+    #[must_use]
+    pub fn text(&self) -> String {
+        match self {
+            Self::FewEffective { found, least } => {
+                format!("{found:.0} effective draws where {least:.0} are needed")
+            }
+            Self::HeavyTail { found, most } => {
+                format!("weights of tail shape {found:.2} where {most} is the most")
+            }
+            Self::HalvesDiffer { found, most } => {
+                format!(
+                    "halves of the draws apart at a split R-hat of {found:.2} where {most:.2} is the most"
+                )
+            }
+        }
+    }
+}
+
 /// Weighted draws of a density.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Draws {

@@ -407,7 +407,10 @@ impl Field {
                     let raw = rows[site][line].as_ref().map_err(Clone::clone)?;
                     let settings = self.sections[line].scale_settings(&self.lines[line]);
                     let scaled = to_spectrum(raw, &settings)?;
-                    Ok::<_, RunError>(Some(self.input(line, scaled.spectrum, raw.origin.clone())))
+                    Ok::<_, RunError>(Some(LineInput {
+                        calibration_error: scaled.calibration_error,
+                        ..self.input(line, scaled.spectrum, raw.origin.clone())
+                    }))
                 };
                 [of(0)?, of(1)?]
             }
@@ -432,7 +435,10 @@ impl Field {
     ) -> Option<LineInput> {
         // All blank is outside of the coverage.
         let spectrum = (conversion.spectrum(values.iter().copied().map(f64::from))).ok()?;
-        Some(self.input(line, spectrum, cube.description().origin.clone()))
+        Some(LineInput {
+            calibration_error: conversion.calibration_error(),
+            ..self.input(line, spectrum, cube.description().origin.clone())
+        })
     }
 
     fn input(&self, line: usize, spectrum: Spectrum, origin: Origin) -> LineInput {
@@ -444,6 +450,7 @@ impl Field {
             sha256: None,
             object: None,
             notes: Vec::new(),
+            calibration_error: 0.0,
         }
     }
 
