@@ -18,6 +18,25 @@ fn codes(results: &Map<String, Value>) -> Vec<&str> {
 const PROBABILITIES: [&str; 4] = ["p_infall", "p_expansion", "p_static", "p_two_clouds"];
 const ENDS: [&str; 5] = ["_lo95", "_lo68", "", "_hi68", "_hi95"];
 
+/// Infall on the hill's own profile is infall of a sphere too; slabs' results stay as they are.
+#[test]
+fn a_sphere_stands_beside_the_slabs_on_request() {
+    let folder = Folder::with_pair();
+    let without = folder.fit_json(&[]);
+    let results = folder.fit_json(&["--sphere"]);
+    let ends = ENDS.map(|end| number(&results, &format!("sphere_v_in_km_s{end}")));
+    assert!(ends.is_sorted(), "{ends:?}");
+    assert!(ends[0] > 0.0, "{ends:?}");
+    assert!(["constant", "free fall"].contains(&results["sphere_law"].as_str().unwrap()));
+    assert!(number(&results, "sphere_chi2_red") < 2.0);
+    for name in ["v_in_km_s", "p_infall", "v_in_model"] {
+        assert_eq!(results[name], without[name], "{name}");
+    }
+    assert!(without["sphere_v_in_km_s"].is_null());
+    let both = folder.fit(&["--sphere", "--formal"]);
+    assert_eq!(both.code, 2, "{}", both.stderr);
+}
+
 #[test]
 fn infall_is_found_with_intervals_and_said_in_sentences() {
     let folder = Folder::with_pair();

@@ -118,6 +118,9 @@ pub struct PairArguments {
     /// Stop after least squares: no posterior, no probabilities.
     #[arg(long, help_heading = "Fitting")]
     formal: bool,
+    /// Also find the speed of a collapsing sphere: seconds a pair.
+    #[arg(long, conflicts_with = "formal", help_heading = "Fitting")]
+    sphere: bool,
     /// Replace a prior: the numbers of its density (docs/methods.md has the table).
     #[arg(long, value_name = "NAME=NUMBER[,NUMBER]", value_parser = named_given, help_heading = "Fitting")]
     prior: Vec<(String, Given)>,
@@ -219,6 +222,7 @@ impl PairArguments {
         sheet.fit.given.extend(self.given.iter().cloned());
         sheet.fit.bounds.extend(self.bounds.iter().cloned());
         sheet.fit.formal |= self.formal;
+        sheet.fit.sphere |= self.sphere;
         sheet.priors.extend(self.prior.iter().cloned());
         for (name, odds) in &self.odds {
             sheet.odds.set(name, *odds)?;

@@ -1,5 +1,6 @@
 //! What a reader of a result has to know: typed, with a short code and a sentence.
 
+use super::clump::{ClumpPosterior, Misfit};
 use super::hypotheses::{Hypothesis, Speed, Verdict};
 use super::posterior::{Family, PairPosterior, PosteriorError};
 use super::{PairFit, ThinFit};
@@ -148,6 +149,21 @@ pub enum Caution {
         /// Their probability.
         probability: f64,
     },
+    /// Noise does not explain what the best sphere leaves.
+    SphereMisfit {
+        /// The likely reason.
+        reason: Misfit,
+    },
+    /// Draws of the sphere do not describe its posterior.
+    SphereUntrusted {
+        /// What speaks against them.
+        doubts: Vec<Doubt>,
+    },
+    /// There is no posterior of a sphere.
+    NoSphere {
+        /// Why.
+        reason: PosteriorError,
+    },
 }
 
 /// Why a pair has no posterior.
@@ -213,6 +229,9 @@ impl Caution {
             Self::SettingsUnheard { .. } => "settings-unheard",
             Self::PosteriorUntrusted { .. } => "posterior-untrusted",
             Self::SpeedUnconstrained => "speed-unconstrained",
+            Self::SphereMisfit { .. } => "sphere-misfit",
+            Self::SphereUntrusted { .. } => "sphere-untrusted",
+            Self::NoSphere { .. } => "no-sphere",
             Self::SpeedLimit { .. } => "speed-limit",
             Self::ModelsDiffer { .. } => "models-differ",
             Self::TwoCloudsFavoured { .. } => "two-clouds-favoured",
@@ -314,6 +333,15 @@ impl Caution {
             Self::TwoCloudsFavoured { probability } => format!(
                 "two clouds on one line of sight explain the pair best (probability {probability:.2}): the speed holds only if it is one clump"
             ),
+            Self::SphereMisfit { reason } => format!(
+                "noise does not explain what the best sphere leaves ({}): its speed may be off",
+                reason.text()
+            ),
+            Self::SphereUntrusted { doubts } => format!(
+                "draws do not describe the sphere's posterior well ({}): its interval may be off",
+                listed(doubts, Doubt::text)
+            ),
+            Self::NoSphere { reason } => format!("no sphere: {reason}"),
         }
     }
 }
@@ -380,6 +408,24 @@ pub fn cautions(facts: &PairFacts<'_>) -> Vec<Caution> {
     of_fits(facts.fit, &mut found);
     of_spectra(facts, &mut found);
     found
+}
+
+/// What limits the speed of the sphere that a pair prefers.
+#[must_use]
+pub fn sphere_cautions(found: Result<&ClumpPosterior, &PosteriorError>) -> Vec<Caution> {
+    let sphere = match found {
+        Ok(sphere) => sphere,
+        Err(error) => {
+            return vec![Caution::NoSphere {
+                reason: error.clone(),
+            }];
+        }
+    };
+    let misfit = sphere.residuals.misfit;
+    let misfit = misfit.map(|reason| Caution::SphereMisfit { reason });
+    let doubts = sphere.quality.doubts();
+    let untrusted = (!doubts.is_empty()).then_some(Caution::SphereUntrusted { doubts });
+    misfit.into_iter().chain(untrusted).collect()
 }
 
 /// Whether the thick line as a whole is in absorption.

@@ -21,7 +21,9 @@ mod starts;
 mod thin;
 mod workspace;
 
-pub use cautions::{Caution, Judgement, PairFacts, Unjudged, cautions, is_absorbed};
+pub use cautions::{
+    Caution, Judgement, PairFacts, Unjudged, cautions, is_absorbed, sphere_cautions,
+};
 pub use channels::{Averaging, Channels};
 pub use joint::{JointParameter, JointProblem, Layout};
 pub use thin::{ThinFit, fit_thin};

@@ -265,8 +265,9 @@ pub const QUANTITIES: &[Quantity] = &[
     real(HillSurface, "hill_surface_chi2_red", None, "reduced chi2", "Reduced chi-squared of this fit to the pair"),
     real(HillSurface, "hill_surface_share", None, "share of the evidence", "Share of the model's evidence in the averaged speed"),
 
-    with(real(Sphere, "sphere_v_in_km_s", KM_S, "inward speed", "Inward speed of the collapsing sphere"), Error),
-    real(Sphere, "sphere_chi2_red", None, "reduced chi2", "Reduced chi-squared of the sphere's fit to the pair"),
+    with(real(Sphere, "sphere_v_in_km_s", KM_S, "inward speed", "Inward speed of the collapsing sphere at its outer radius"), ErrorAndIntervals),
+    text(Sphere, "sphere_law", "speed against radius", "How the sphere's speed depends on the radius: constant, or free fall (as r^-1/2)"),
+    real(Sphere, "sphere_chi2_red", None, "reduced chi2", "chi2 of the best sphere over the channels of both lines, baselines and shape errors taken out"),
 
     with(real(Infall, "v_lsr_km_s", KM_S, "systemic velocity", "Systemic velocity: of the posterior, or from the joint fit of v_in_model"), Error),
     with(real(Infall, "sigma_km_s", KM_S, "velocity dispersion", "Velocity dispersion: of the posterior, or from the joint fit of v_in_model"), Error),

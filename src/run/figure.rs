@@ -5,6 +5,7 @@ use super::products::profile_word;
 use super::{Judged, LineOutcome, PairOutcome};
 use crate::fit::ModelFit;
 use crate::fit::averaged::{Averaged, Row};
+use crate::fit::clump::ClumpProfile;
 use crate::fit::hypotheses::Speed;
 use crate::fit::posterior::{Family, FamilyPosterior, interval};
 use crate::model::Model;
@@ -28,6 +29,10 @@ pub(super) fn pair_figure(outcome: &PairOutcome) -> report::figure::PairFigure {
             .models
             .iter()
             .map(|fit| curve(outcome, line, fit, thick))
+            .chain(outcome.sphere.iter().map(|sphere| {
+                let [of_thick, of_thin] = &sphere.profiles;
+                sphere_curve(line, if thick { of_thick } else { of_thin })
+            }))
             .collect(),
     };
     PairFigure {
@@ -97,6 +102,26 @@ fn curve(
         label: model_label(fit.model).to_owned(),
         velocity_km_s: fine,
         temperature_k,
+        residuals,
+    }
+}
+
+/// The best sphere, which is known in the fitted channels.
+fn sphere_curve(line: &LineOutcome, profile: &ClumpProfile) -> report::figure::Curve {
+    let spectrum = &line.prepared.spectrum;
+    let mut residuals = vec![f64::NAN; spectrum.len()];
+    let mut channel = 0;
+    for (velocity, model) in profile.velocity_km_s.iter().zip(&profile.temperature_k) {
+        while spectrum.velocity_km_s()[channel] < *velocity {
+            channel += 1;
+        }
+        let datum = spectrum.temperature_k()[channel];
+        residuals[channel] = (datum - model) / line.prepared.noise.rms_k;
+    }
+    report::figure::Curve {
+        label: "sphere".to_owned(),
+        velocity_km_s: profile.velocity_km_s.clone(),
+        temperature_k: profile.temperature_k.clone(),
         residuals,
     }
 }
@@ -278,6 +303,15 @@ fn figure_numbers(outcome: &PairOutcome) -> Vec<(String, String)> {
                 ));
             }
         }
+    }
+    if let Some(sphere) = &outcome.sphere {
+        let v_in = &sphere.v_in_km_s;
+        let (low, high) = v_in.interval68;
+        let interval = report::rounded_interval(v_in.median, low, high);
+        numbers.push((
+            "inward speed, sphere".to_owned(),
+            format!("{interval} km/s"),
+        ));
     }
     for (name, label) in [("v_lsr_km_s", "v_{LSR}"), ("sigma_km_s", "dispersion")] {
         if let Some(estimate) = posterior_or_fit(outcome, name) {

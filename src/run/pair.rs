@@ -4,9 +4,11 @@ use super::journal::hexadecimal;
 use super::judge::{PreparedPair, judge, judgement};
 use super::{Judged, LineSection, RunError, RunSheet, VerdictSettings};
 use crate::derive::{DeriveSettings, Derived, FitDraws, SourceProperties, Tracers};
+use crate::fit::clump::{ClumpPosterior, ClumpPosteriors, ClumpSettings, clump_posteriors};
 use crate::fit::hypotheses::Speed;
 use crate::fit::{
     Caution, FitSettings, ModelFit, PairFacts, PairFit, ThinFit, Workspace, cautions, fit_thin,
+    sphere_cautions,
 };
 use crate::line::{Line, isotopologue_pair};
 use crate::measure::{MeasureSettings, Measures, measure};
@@ -59,6 +61,8 @@ pub struct PairSettings {
     pub fit: FitSettings,
     /// Posteriors and verdict; `None` stops after least squares.
     pub verdict: Option<VerdictSettings>,
+    /// The speed of a collapsing sphere; `None` leaves it out.
+    pub sphere: Option<ClumpSettings>,
     /// What follows from them.
     pub derive: DeriveSettings,
 }
@@ -79,6 +83,7 @@ impl PairSettings {
         Self {
             fit: FitSettings::default(),
             verdict: None,
+            sphere: None,
             derive: DeriveSettings::default(),
         }
     }
@@ -116,6 +121,9 @@ pub struct PairOutcome {
     pub fit: PairFit,
     /// Posteriors and verdict; `None` where they were not asked for, or a caution says why not.
     pub judged: Option<Judged>,
+    /// Posterior of the collapsing sphere, of the speed law that the pair prefers; `None` where it was not
+    /// asked for, or a caution says why not.
+    pub sphere: Option<ClumpPosterior>,
     /// Cautions, the gravest first.
     pub cautions: Vec<Caution>,
     /// What follows from the fit and the source's properties, with cautions of its own.
@@ -258,7 +266,17 @@ pub(super) fn fit_prepared(
     let judged = (settings.verdict.as_ref())
         .map(|verdict| judge(&prepared, &settings.fit, verdict))
         .transpose()?;
-    let cautions = cautions(&PairFacts {
+    let sphere = settings.sphere.as_ref().map(|sphere| {
+        clump_posteriors(
+            &prepared_thick,
+            &prepared_thin,
+            (thick_line, thin_line),
+            thin_fit.line.as_ref(),
+            sphere,
+        )
+        .map(ClumpPosteriors::into_preferred)
+    });
+    let mut cautions = cautions(&PairFacts {
         thick: &prepared_thick,
         thin: &prepared_thin,
         thin_fit: &thin_fit,
@@ -266,6 +284,10 @@ pub(super) fn fit_prepared(
         fit: &fit,
         judgement: judgement(judged.as_ref()),
     });
+    if let Some(sphere) = &sphere {
+        cautions.extend(sphere_cautions(sphere.as_ref()));
+    }
+    let sphere = sphere.and_then(Result::ok);
     let judged = judged.and_then(Result::ok);
     let averaged = judged.as_ref().and_then(Judged::adopted);
     let described = fit.adopted().or_else(|| layer(&fit));
@@ -298,6 +320,7 @@ pub(super) fn fit_prepared(
         measures,
         fit,
         judged,
+        sphere,
         cautions,
         derived,
         source_given: !source.is_empty(),

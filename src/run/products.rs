@@ -44,6 +44,13 @@ pub fn pair_row(outcome: &PairOutcome) -> Result<Row, RunError> {
         set_model(&mut row, fit)?;
     }
     set_speed(&mut row, outcome)?;
+    if let Some(sphere) = &outcome.sphere {
+        row.set("sphere_v_in_km_s", sphere.v_in_km_s.median)?;
+        row.set("sphere_v_in_km_s_err", sphere.v_in_deviation_km_s())?;
+        set_intervals(&mut row, "sphere_v_in_km_s", &sphere.v_in_km_s)?;
+        row.set("sphere_law", sphere.law.name())?;
+        row.set("sphere_chi2_red", sphere.residuals.chi2_reduced())?;
+    }
     if let Some(judged) = &outcome.judged {
         for standing in &judged.verdict.standings {
             let column = format!("p_{}", standing.hypothesis.name());

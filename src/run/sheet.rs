@@ -6,6 +6,7 @@
 use super::error::line_at;
 use super::{PairSettings, RunError, VerdictSettings};
 use crate::derive::{DeriveSettings, Input, SourceProperties};
+use crate::fit::clump::ClumpSettings;
 use crate::fit::conflict::replaced;
 use crate::fit::hypotheses::{Hypothesis, Odds};
 use crate::fit::posterior::PosteriorSettings;
@@ -400,6 +401,8 @@ pub struct FitSection {
     pub bounds: BTreeMap<String, [f64; 2]>,
     /// Stops after least squares: no posterior, no probabilities.
     pub formal: bool,
+    /// Also finds the speed of a collapsing sphere: seconds a pair.
+    pub sphere: bool,
     /// Effective draws at which the sampling of a posterior ends, and draws that are kept of it.
     pub posterior_draws: usize,
 }
@@ -420,6 +423,7 @@ impl Default for FitSection {
             given: BTreeMap::new(),
             bounds: BTreeMap::new(),
             formal: false,
+            sphere: false,
             posterior_draws: PosteriorSettings::default().draws,
         }
     }
@@ -571,6 +575,7 @@ impl RunSheet {
         Ok(PairSettings {
             fit: self.fit_settings()?,
             verdict: self.verdict_settings()?,
+            sphere: self.sphere_settings()?,
             derive: self.derive_settings()?,
         })
     }
@@ -609,6 +614,41 @@ impl RunSheet {
                 ..PosteriorSettings::default().with_draws(draws)
             },
             odds,
+        }))
+    }
+
+    /// How the speed of a sphere is found; `None` where it is not asked for. Beams that are not given are
+    /// those of one telescope.
+    fn sphere_settings(&self) -> Result<Option<ClumpSettings>, RunError> {
+        if !self.fit.sphere {
+            return Ok(None);
+        }
+        if self.fit.formal {
+            return Err(RunError::setting(
+                "fit.sphere",
+                "true beside fit.formal",
+                "one of them: a sphere has a posterior alone",
+            )
+            .hinted("leave one out"));
+        }
+        let width_arcsec = |section: &LineSection| {
+            section.beam_arcsec.map(|beam| match beam {
+                Beam::Round(width) => width,
+                Beam::Elliptical([major, minor]) => (major * minor).sqrt(),
+            })
+        };
+        let (thick, thin) = (width_arcsec(&self.thick), width_arcsec(&self.thin));
+        let beam_ratio = match (thick, thin) {
+            (Some(thick), Some(thin)) => thin / thick,
+            _ => {
+                let (thick, thin) = (self.thick.line("thick")?, self.thin.line("thin")?);
+                thick.rest_frequency_ghz / thin.rest_frequency_ghz
+            }
+        };
+        Ok(Some(ClumpSettings {
+            beam_ratio,
+            seed: self.seed,
+            ..ClumpSettings::default()
         }))
     }
 

@@ -142,6 +142,12 @@ pub struct ClumpPosterior {
 }
 
 impl ClumpPosterior {
+    /// Standard deviation of the inward speed, km/s.
+    #[must_use]
+    pub fn v_in_deviation_km_s(&self) -> f64 {
+        self.draws.moments(speed).1
+    }
+
     /// Names of the coordinates of a draw, in their order.
     pub const COORDINATES: [&'static str; DIMENSIONS] = [
         "v_lsr_km_s",
@@ -214,14 +220,28 @@ impl ClumpPosteriors {
         self.free_fall.ln_evidence - self.constant.ln_evidence
     }
 
+    fn prefer_free_fall(&self) -> bool {
+        self.ln_odds_of_free_fall() > Self::PREFERRED_AT.ln()
+    }
+
     /// The law that the pair prefers. The constant speed, which has less to explain, unless free fall
     /// is more probable by [`ClumpPosteriors::PREFERRED_AT`].
     #[must_use]
     pub fn preferred(&self) -> &ClumpPosterior {
-        if self.ln_odds_of_free_fall() > Self::PREFERRED_AT.ln() {
+        if self.prefer_free_fall() {
             &self.free_fall
         } else {
             &self.constant
+        }
+    }
+
+    /// The same, without the other.
+    #[must_use]
+    pub fn into_preferred(self) -> ClumpPosterior {
+        if self.prefer_free_fall() {
+            self.free_fall
+        } else {
+            self.constant
         }
     }
 

@@ -91,6 +91,15 @@ pub struct ClumpResiduals {
     pub misfit: Option<Misfit>,
 }
 
+impl ClumpResiduals {
+    /// chi2 of both lines over their channels, baselines and shape errors taken out.
+    #[must_use]
+    pub fn chi2_reduced(&self) -> f64 {
+        let channels = self.thick.channels + self.thin.channels;
+        (self.thick.chi2 + self.thin.chi2) / channels.max(1) as f64
+    }
+}
+
 /// Sums of residuals that stand out, in units of their noise.
 const STANDS_OUT: f64 = 4.0;
 
