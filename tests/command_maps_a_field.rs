@@ -58,7 +58,7 @@ fn a_table_becomes_products_and_a_summary() {
     assert!(files.iter().all(|file| !file.contains("unfinished")));
     let svg = String::from_utf8(folder.read("out/figures/v_thin_km_s.svg")).unwrap();
     assert!(
-        svg.contains("Lantern 7, 17:30:00.0") && svg.contains(" pc<"),
+        svg.contains("Lantern 7, 17:30:00.0") && svg.contains(" pc\n"),
         "{svg}"
     );
     // Done is done.

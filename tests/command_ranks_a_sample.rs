@@ -467,6 +467,7 @@ fn tables_that_are_none_are_refused_with_their_line() {
     }
     let run = folder.inrush(&["rank", "nothing.csv", "--out", "r"]);
     refused(&run, "nothing.csv", "check the path");
+    folder.write("t.csv", format!("{good}\n{row}\n").as_bytes());
     let run = folder.inrush(&["rank", "t.csv", "--out", "r", "--top", "0"]);
     refused(&run, "top: 0, expected at least 1", "");
 }

@@ -62,7 +62,7 @@ fn maps_have_axes_beam_bar_and_colours_about_zero() {
         "offset east",
         "offset north",
         "0.2 pc",
-        ">0.0<",
+        "\n0.0\n",
     ] {
         assert!(svg.contains(text), "{text}");
     }

@@ -131,11 +131,13 @@ fn sources_keep_flux_place_and_the_common_beams_widths() {
                 // A thousandth of the beam.
                 assert!((middle[axis] - at[axis]).abs() < 0.03, "{middle:?}");
             }
-            // Pixel by pixel what the other cube shows, to 0.3 % of the peak: what the kernel loses on
-            // pixels of a third of a beam.
+            // Pixel by pixel what the other cube shows, to 0.3 % of the peak: what the kernel loses on pixels
+            // of a third of a beam. Pixels of three quarters of the beam's minor axis do not hold all of it.
+            let coarse_pixels = pixel_arcsec > 0.5 * beam[1];
+            let limit = if coarse_pixels { 0.004 } else { 0.003 };
             let peak = theirs.iter().fold(0.0_f32, |a, b| a.max(*b));
             for (a, b) in ours.iter().zip(&theirs) {
-                assert!((a - b).abs() < 0.003 * peak, "{a} {b} {peak}");
+                assert!((a - b).abs() < limit * peak, "{a} {b} {peak}");
             }
         }
     }

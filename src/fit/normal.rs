@@ -104,13 +104,26 @@ impl<'a> Solved<'a> {
                 gram[p][q] -= by_f * f + by_h * h;
             }
         }
+        let mut gradient = sums.gradient;
+        for p in 0..parameters {
+            if gram[p][p] <= ALL_EXPLAINED * sums.gram[p][p] {
+                gradient[p] = 0.0;
+                for other in 0..parameters {
+                    gram[p.min(other)][p.max(other)] = 0.0;
+                }
+            }
+        }
         LineSums {
             chi2: sums.chi2,
-            gradient: sums.gradient,
+            gradient,
             gram,
         }
     }
 }
+
+/// A slope of which the functions explain all but this share, of squares, has nothing of its own but rounding:
+/// such as one of a line narrower than a channel.
+const ALL_EXPLAINED: f64 = 1e-12;
 
 /// Sums over channels of the products of residuals r, J and functions.
 #[derive(Default)]

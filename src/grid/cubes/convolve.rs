@@ -100,11 +100,15 @@ impl PlaneConvolution {
     /// Convolves a plane, row by row with columns fastest, in place.
     pub fn apply(&mut self, plane: &mut [f32]) {
         let (columns, rows) = self.padded;
+        // Rounding of the weights, which are 1, goes into the values: so these are about 1 as well.
+        let largest = (plane.iter().filter(|value| value.is_finite()))
+            .fold(0.0_f32, |largest, value| largest.max(value.abs()));
+        let unit = if largest > 0.0 { largest } else { 1.0 };
         self.rows.fill(Complex::new(0.0, 0.0));
         for (row, values) in plane.chunks_exact(self.width).enumerate() {
             for (target, &value) in self.rows[row * columns..].iter_mut().zip(values) {
                 if !value.is_nan() {
-                    *target = Complex::new(value, 1.0);
+                    *target = Complex::new(value / unit, 1.0);
                 }
             }
         }
@@ -123,7 +127,7 @@ impl PlaneConvolution {
             for (value, sum) in values.iter_mut().zip(&self.rows[row * columns..]) {
                 if !value.is_nan() {
                     *value = if sum.im >= LEAST_WEIGHT {
-                        sum.re / sum.im
+                        unit * (sum.re / sum.im)
                     } else {
                         f32::NAN
                     };
