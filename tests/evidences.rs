@@ -259,10 +259,10 @@ fn marginals_and_correlations_belong_to_named_parameters() {
             "{name}: {marginal:?}"
         );
     }
-    let correlation = hill.correlation("tau", "t_peak_k").unwrap();
+    let correlation = hill.correlation("tau", "sigma_km_s").unwrap();
     assert!(
         correlation < 0.0,
-        "a thicker line is as bright at a lower temperature: {correlation}"
+        "a thicker line is as wide at a lower dispersion: {correlation}"
     );
     assert!(hill.marginal("filling").is_none());
 }

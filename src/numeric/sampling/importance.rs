@@ -171,7 +171,10 @@ pub struct Draws {
     pub evaluations: usize,
 }
 
-/// Part of every proposal that keeps the first one: what adapting loses stays reachable.
+/// Part of the first proposal that is wide.
+const FIRST_SHARE: f64 = 0.4;
+
+/// Part of every later proposal that stays so: what adapting loses stays reachable.
 const KEPT_SHARE: f64 = 0.2;
 
 /// Powers of the weights that the proposals of the rounds are fitted to, the last one for all that
@@ -222,7 +225,8 @@ pub fn sample(
     } else {
         first.with(&broad, BROAD_SHARE)
     };
-    let mut proposal = spread.with(&first, 0.3).with(&narrow, 0.3);
+    let mut adapted = spread.with(&narrow, 0.5);
+    let mut proposal = adapted.with(&first, FIRST_SHARE);
     let mut proposals: Vec<StudentMixture> = Vec::new();
     let mut points: Vec<Point> = Vec::new();
     let mut ln_density: Vec<f64> = Vec::new();
@@ -257,8 +261,8 @@ pub fn sample(
         let power = POWERS[(round - 1).min(POWERS.len() - 1)];
         let tempered = tempered(&ln_weights, power, (4 * dimensions * dimensions) as f64);
         let (kept, kept_weights) = worth_fitting(&points, &tempered);
-        let refitted = proposal.refitted(&kept, &kept_weights);
-        proposal = refitted.with(&first, KEPT_SHARE);
+        adapted = adapted.refitted(&kept, &kept_weights);
+        proposal = adapted.with(&first, KEPT_SHARE);
     }
     Some(finish(dimensions, points, ln_integral, weights))
 }
