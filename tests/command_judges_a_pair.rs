@@ -221,23 +221,146 @@ fn two_clouds_do_not_pass_as_infall() {
 #[test]
 fn settings_that_posteriors_do_not_know_leave_the_formal_speed() {
     let folder = Folder::with_pair();
-    let results = folder.fit_json(&["--given", "tau=3"]);
+    let results = folder.fit_json(&["--free-thin-sigma"]);
     assert_eq!(results["v_in_errors"], "formal");
     assert_eq!(results["v_in_km_s"], results["hill_v_in_km_s"]);
     assert!(results["v_in_km_s_lo68"].is_null());
     assert!(number(&results, "p_infall") > 0.9);
     assert!(codes(&results).contains(&"settings-unheard"));
     let words = folder
-        .fit(&["--given", "tau=3", "--isotope-ratio", "68"])
+        .fit(&[
+            "--free-thin-velocity",
+            "--given",
+            "tau=3",
+            "--given",
+            "peak_thin_k=0.7",
+            "--bounds",
+            "v_in_km_s=0,2",
+        ])
         .stdout;
     let words = words.split_whitespace().collect::<Vec<_>>().join(" ");
     assert!(
-        words.contains("knows nothing of isotope_ratio, given tau:"),
+        words.contains("knows nothing of free_thin_velocity, given peak_thin_k:"),
         "{words}"
     );
     let none = folder.fit_json(&["--models", "gaussian"]);
     assert!(none["p_infall"].is_null());
     assert!(codes(&none).contains(&"no-posterior"));
+}
+
+#[test]
+fn given_values_and_bounds_reach_the_posterior() {
+    let folder = Folder::with_pair();
+    let free = folder.fit_json(&[]);
+    let ends = |results: &Map<String, Value>| {
+        ["_lo95", "_hi95"].map(|end| number(results, &format!("v_in_km_s{end}")))
+    };
+    let adopted = |options: &[&str]| {
+        let results = folder.fit_json(options);
+        assert_eq!(results["v_in_errors"], "posterior", "{options:?}");
+        let codes = codes(&results);
+        assert!(
+            !codes.contains(&"settings-unheard"),
+            "{options:?} {codes:?}"
+        );
+        results
+    };
+    let held = adopted(&["--given", "tau=2"]);
+    assert_ne!(held["v_in_km_s"], free["v_in_km_s"]);
+    let speed = adopted(&["--given", "v_in_km_s=0.3"]);
+    let [low, high] = ends(&speed);
+    // held: every draw is the value, up to the rounding of its scaling by the dispersion
+    assert!(
+        (low - 0.3).abs() < 1e-9 && (high - 0.3).abs() < 1e-9,
+        "{low} {high}"
+    );
+    assert_eq!(number(&speed, "p_expansion"), 0.0);
+    // held at rest: motion of neither sign has a part of the prior
+    let rest = adopted(&["--given", "v_in_km_s=0"]);
+    for name in ["p_infall", "p_expansion"] {
+        assert_eq!(number(&rest, name), 0.0, "{name}");
+    }
+    let bounded = adopted(&["--bounds", "v_in_km_s=0.1,0.4"]);
+    let [low, high] = ends(&bounded);
+    // bounds hold up to the rounding of that scaling
+    assert!(low >= 0.1 - 1e-9 && high <= 0.4 + 1e-9, "{low} {high}");
+    let pulled = adopted(&["--given", "sigma_km_s=0.9,0.02"]);
+    assert!(number(&pulled, "sigma_km_s") > number(&free, "sigma_km_s"));
+    let linked = adopted(&["--isotope-ratio", "20,2"]);
+    assert_ne!(linked["p_two_clouds"], free["p_two_clouds"]);
+}
+
+#[test]
+fn an_error_of_the_efficiency_widens_temperatures_and_leaves_the_speed() {
+    let folder = Folder::with_pair();
+    let text = String::from_utf8(folder.read("thin.csv")).unwrap();
+    folder.write("antenna.csv", text.replace("tmb_k", "ta_k").as_bytes());
+    let sheet = |eta_mb: &str, file: &str| {
+        format!(
+            "[source]\nthin_t_ex_k = 11.0\n\n[thick]\nline = \"HCO+ 1-0\"\nfile = \"thick.csv\"\n\n[thin]\nline = \"H13CO+ 1-0\"\nfile = \"{file}\"\neta_mb = {eta_mb}\n"
+        )
+    };
+    for (name, eta_mb, file) in [
+        ("certain.toml", "0.8", "antenna.csv"),
+        ("uncertain.toml", "[0.8, 0.16]", "antenna.csv"),
+        ("unused.toml", "[0.8, 0.16]", "thin.csv"),
+        ("none.toml", "0.8", "thin.csv"),
+    ] {
+        folder.write(name, sheet(eta_mb, file).as_bytes());
+    }
+    let fit = |arguments: &[&str]| {
+        let run = folder.inrush(&[&["fit"], arguments, &["--json"]].concat());
+        assert_eq!(run.code, 0, "{}", run.stderr);
+        command::object(&run.stdout)
+    };
+    let certain = fit(&["certain.toml"]);
+    let uncertain = fit(&["uncertain.toml"]);
+    for name in ["v_in_km_s", "v_in_km_s_lo95", "sigma_km_s", "p_infall"] {
+        assert_eq!(certain[name], uncertain[name], "{name}");
+    }
+    let width = |results: &Map<String, Value>| {
+        let [low, high] =
+            ["_lo68", "_hi68"].map(|end| number(results, &format!("column_thin_cm2{end}")));
+        (high / low).ln()
+    };
+    // a fifth either way adds 0.4 in quadrature; of 2000 draws the ends scatter by a few per cent
+    let expected = width(&certain).hypot(0.4);
+    let relative = width(&uncertain) / expected;
+    assert!(
+        (relative - 1.0).abs() < 0.15,
+        "{} {} {expected}",
+        width(&certain),
+        width(&uncertain)
+    );
+    let by_option = fit(&["certain.toml", "--thin-eta-mb", "0.8,0.16"]);
+    assert_eq!(by_option, uncertain);
+    // main-beam temperatures are not divided by the efficiency: its error is not theirs
+    assert_eq!(fit(&["unused.toml"]), fit(&["none.toml"]));
+    let run = folder.inrush(&[
+        "fit",
+        "uncertain.toml",
+        "--no-figures",
+        "--quiet",
+        "--out",
+        "out",
+    ]);
+    assert_eq!(run.code, 0, "{}", run.stderr);
+    let resolved = String::from_utf8(folder.read("out/run.toml")).unwrap();
+    assert!(resolved.contains("eta_mb = [0.8, 0.16]"), "{resolved}");
+    for (eta_mb, message) in [
+        ("0.8,-0.1", "eta_mb = 0.8 with error -0.1"),
+        ("0.8,0.9", "eta_mb = 0.8 with error 0.9"),
+    ] {
+        let run = folder.inrush(&["fit", "certain.toml", "--thin-eta-mb", eta_mb]);
+        assert_eq!(run.code, 2, "{}", run.stderr);
+        assert!(run.stderr.contains(message), "{}", run.stderr);
+        assert!(
+            run.stderr
+                .contains("expected an error of at least 0 and below the value"),
+            "{}",
+            run.stderr
+        );
+    }
 }
 
 #[test]
@@ -312,6 +435,11 @@ fn settings_that_cannot_be_are_refused_with_what_to_do() {
             &["--prior", "peak_thin_k=0.001"],
             "prior of peak_thin_k: all but a millionth of its mass from 0.000 to 0.014",
             "widen the prior of peak_thin_k",
+        ),
+        (
+            &["--prior", "tau=3,0.5", "--given", "tau=3"],
+            "priors.tau: a prior beside tau as given, expected one of the two",
+            "a given value stands in the place of the prior",
         ),
         (
             &["--odds", "rest=3"],

@@ -187,7 +187,14 @@ impl FitDraws {
             };
             made.columns.push((name.to_owned(), Drawn { value, draws }));
         };
-        for name in ["v_in_km_s", "sigma_km_s", "tau", "peak_thin_k"] {
+        for name in [
+            "v_in_km_s",
+            "sigma_km_s",
+            "tau",
+            "peak_thin_k",
+            "isotope_ratio",
+            "t_ex_thin_k",
+        ] {
             if with_speed || name != "v_in_km_s" {
                 put(name, &|row| row.get(name));
             }

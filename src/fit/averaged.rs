@@ -78,10 +78,15 @@ impl<'a> Averaged<'a> {
         interval(&self.weighted(name)?)
     }
 
-    /// Standard deviation of a parameter that every model has; `None` for another name.
+    /// Standard deviation of a parameter that every model has; `None` for another name, and for one that
+    /// is held.
     #[must_use]
     pub fn deviation(&self, name: &str) -> Option<f64> {
         let values = self.weighted(name)?;
+        let (first, _) = values.first()?;
+        if values.iter().all(|(value, _)| value == first) {
+            return None;
+        }
         let total: f64 = values.iter().map(|(_, weight)| weight).sum();
         let mean = values.iter().map(|(v, weight)| v * weight).sum::<f64>() / total;
         let squares = values.iter().map(|(v, weight)| weight * (v - mean).powi(2));

@@ -148,7 +148,7 @@ fn posterior_or_fit(outcome: &PairOutcome, name: &str) -> Option<Estimate> {
     match outcome.judged.as_ref().and_then(Judged::adopted) {
         Some(averaged) => Some(Estimate {
             value: averaged.marginal(name)?.median,
-            err: averaged.deviation(name)?,
+            err: averaged.deviation(name).unwrap_or(0.0),
         }),
         None => outcome.fit.adopted()?.estimate(name),
     }
@@ -162,6 +162,9 @@ fn posterior_part(outcome: &PairOutcome, judged: &Judged) -> Option<report::figu
     let averaged = Averaged::new(&judged.posterior, &judged.verdict)?;
     let speeds = averaged.weighted("v_in_km_s")?;
     let v_in = interval(&speeds)?;
+    // a held speed has no density, and a held depth no place beside it
+    averaged.deviation("v_in_km_s")?;
+    let dots = averaged.deviation("tau").map_or(0, |_| DOTS);
     let models: Vec<(Model, &FamilyPosterior)> = judged
         .verdict
         .shares
@@ -176,7 +179,7 @@ fn posterior_part(outcome: &PairOutcome, judged: &Judged) -> Option<report::figu
     let (low, high) = (low.min(v_in.interval95.0), high.max(v_in.interval95.1));
     let margin = 0.12 * (high - low);
     let range_km_s = (low - margin, high + margin);
-    let rows: Vec<Row<'_>> = averaged.rows(DOTS).collect();
+    let rows: Vec<Row<'_>> = averaged.rows(dots).collect();
     let draws: Vec<report::figure::SpeedAndDepth> = rows
         .iter()
         .filter_map(|row| {

@@ -322,7 +322,7 @@ fn family_posterior(
             } else if full[2] < 0.0 {
                 outward += weight / (1.0 - before);
             }
-            v_in.push((full[2] * full[1].exp(), *weight));
+            v_in.push((target.v_in_km_s(&full), *weight));
         }
     }
     let physical = draws

@@ -3,7 +3,7 @@
 use super::constraints::Constraints;
 use super::data::LineData;
 use super::family::Family;
-use super::settings::PosteriorSettings;
+use super::settings::{CONSTRAINED, PosteriorSettings};
 use super::shapes::{
     Combine, Hill, HillSurface, Part, TwoClouds, TwoLayers, absorbing, channels_of, emitting,
 };
@@ -311,6 +311,14 @@ impl<'a> Target<'a> {
         let thin_k = thin_k / factors[1];
         let radiation = &self.lines[0].channels().line().radiation;
         let mut physical = self.family.physical(&full, radiation, thick, thin_k);
+        // what is held comes back without the rounding of its coordinate
+        let names = self.family.parameters();
+        for (name, held) in CONSTRAINED.iter().zip(self.held) {
+            let place = names.iter().position(|known| known == name);
+            if let (Some(place), Some(held)) = (place, held) {
+                physical[place] = held;
+            }
+        }
         if let (Some(ratio), Some(depth)) = (self.isotope_ratio(&full), self.thin_depth(&full)) {
             let line = self.lines[1].channels().line();
             let excess = thin_k / -(-depth * strongest(self.lines[1])).exp_m1();
@@ -319,6 +327,11 @@ impl<'a> Target<'a> {
             physical.push(radiation.inverse(radiation.background() + excess));
         }
         physical
+    }
+
+    /// Inward speed at a point, km/s, of a family that has one.
+    pub fn v_in_km_s(&self, full: &Point) -> f64 {
+        self.held[2].unwrap_or(full[2] * full[1].exp())
     }
 
     /// Names of the physical parameters.
