@@ -137,7 +137,9 @@ fn sources_keep_flux_place_and_the_common_beams_widths() {
             let limit = if coarse_pixels { 0.004 } else { 0.003 };
             let peak = theirs.iter().fold(0.0_f32, |a, b| a.max(*b));
             for (a, b) in ours.iter().zip(&theirs) {
-                assert!((a - b).abs() < limit * peak, "{a} {b} {peak}");
+                // the other grid may end before this one
+                let outside = a.is_nan() && *b < 1e-3 * peak;
+                assert!(outside || (a - b).abs() < limit * peak, "{a} {b} {peak}");
             }
         }
     }

@@ -11,6 +11,10 @@ use std::path::{Path, PathBuf};
 
 /// A pair and how it is fitted.
 #[derive(Debug, Args)]
+#[expect(
+    clippy::struct_excessive_bools,
+    reason = "each is a switch of the command line"
+)]
 pub struct PairArguments {
     /// Run sheet (TOML).
     sheet: Option<PathBuf>,

@@ -240,6 +240,7 @@ impl Caution {
 
     /// The sentence for people.
     #[must_use]
+    #[expect(clippy::too_many_lines, reason = "a sentence a caution")]
     pub fn text(&self) -> String {
         match self {
             Self::NotConverged { model } => format!("the {} search did not converge", model.name()),

@@ -6,6 +6,7 @@ use super::{Judged, LineSection, RunError, RunSheet, VerdictSettings};
 use crate::derive::{DeriveSettings, Derived, FitDraws, SourceProperties, Tracers};
 use crate::fit::clump::{ClumpPosterior, ClumpPosteriors, ClumpSettings, clump_posteriors};
 use crate::fit::hypotheses::Speed;
+use crate::fit::posterior::PosteriorError;
 use crate::fit::{
     Caution, FitSettings, ModelFit, PairFacts, PairFit, ThinFit, Workspace, cautions, fit_thin,
     sphere_cautions,
@@ -266,16 +267,7 @@ pub(super) fn fit_prepared(
     let judged = (settings.verdict.as_ref())
         .map(|verdict| judge(&prepared, &settings.fit, verdict))
         .transpose()?;
-    let sphere = settings.sphere.as_ref().map(|sphere| {
-        clump_posteriors(
-            &prepared_thick,
-            &prepared_thin,
-            (thick_line, thin_line),
-            thin_fit.line.as_ref(),
-            sphere,
-        )
-        .map(ClumpPosteriors::into_preferred)
-    });
+    let sphere = (settings.sphere.as_ref()).map(|sphere| preferred_sphere(&prepared, sphere));
     let mut cautions = cautions(&PairFacts {
         thick: &prepared_thick,
         thin: &prepared_thin,
@@ -325,6 +317,15 @@ pub(super) fn fit_prepared(
         derived,
         source_given: !source.is_empty(),
     })
+}
+
+/// The sphere of the speed law that a pair prefers.
+fn preferred_sphere(
+    pair: &PreparedPair<'_>,
+    settings: &ClumpSettings,
+) -> Result<ClumpPosterior, PosteriorError> {
+    clump_posteriors(pair.thick, pair.thin, pair.lines, pair.thin_line, settings)
+        .map(ClumpPosteriors::into_preferred)
 }
 
 /// Without an inward speed, a uniform layer still has a depth and an excitation temperature.

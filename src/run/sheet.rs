@@ -380,6 +380,10 @@ impl Default for PrepareSection {
 /// Models.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 #[serde(deny_unknown_fields, default)]
+#[expect(
+    clippy::struct_excessive_bools,
+    reason = "each is a switch of the run sheet"
+)]
 pub struct FitSection {
     /// Models of the thick line.
     pub models: Vec<String>,
@@ -638,12 +642,11 @@ impl RunSheet {
             })
         };
         let (thick, thin) = (width_arcsec(&self.thick), width_arcsec(&self.thin));
-        let beam_ratio = match (thick, thin) {
-            (Some(thick), Some(thin)) => thin / thick,
-            _ => {
-                let (thick, thin) = (self.thick.line("thick")?, self.thin.line("thin")?);
-                thick.rest_frequency_ghz / thin.rest_frequency_ghz
-            }
+        let beam_ratio = if let (Some(thick), Some(thin)) = (thick, thin) {
+            thin / thick
+        } else {
+            let (thick, thin) = (self.thick.line("thick")?, self.thin.line("thin")?);
+            thick.rest_frequency_ghz / thin.rest_frequency_ghz
         };
         Ok(Some(ClumpSettings {
             beam_ratio,

@@ -82,7 +82,7 @@ struct Raster {
 enum Spectra {
     Cubes {
         pair: Box<CubePair>,
-        conversions: [Conversion; 2],
+        conversions: Box<[Conversion; 2]>,
     },
     Files(Vec<PointingFiles>),
     Rows(Vec<[Result<RawSpectrum, ReadError>; 2]>),
@@ -126,7 +126,7 @@ impl Field {
                 Ok(pair) => {
                     notes.extend(pair.notes.iter().map(ToString::to_string));
                     beam = Some(pair.beam);
-                    let conversions = conversions(sheet, &lines, &pair, &mut notes)?;
+                    let conversions = Box::new(conversions(sheet, &lines, &pair, &mut notes)?);
                     let sites = pixels(&pair, centre)?;
                     let pair = Box::new(pair);
                     (sites, Spectra::Cubes { pair, conversions })
