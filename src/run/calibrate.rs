@@ -9,6 +9,7 @@ mod products;
 mod statistics;
 
 pub use products::{calibration_summary, calibration_table, json_row, write_calibration};
+#[cfg(feature = "figures")]
 pub(super) use products::{found_label, needed, percent};
 pub use statistics::{Level, NINE_IN_TEN, Needed, Share, Statistics};
 

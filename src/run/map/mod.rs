@@ -358,6 +358,10 @@ fn shows_thin_line(work: &Work<'_>, mean: &Spectrum, workspace: &mut Workspace) 
 }
 
 /// Reads one pointing's block and fits it as it was fitted in the end.
+#[cfg_attr(
+    not(feature = "figures"),
+    allow(dead_code, reason = "figures alone ask for it")
+)]
 pub(super) fn final_outcome(
     work: &Work<'_>,
     second: &Second,

@@ -1,9 +1,14 @@
 //! Products of a map, from what is in its journal: tables, FITS maps, figures.
 
-use super::super::{Journal, PairOutcome, RunError};
+#[cfg(feature = "figures")]
+use super::super::PairOutcome;
+use super::super::{Journal, RunError};
 use super::field::Field;
+#[cfg(feature = "figures")]
+use super::final_outcome;
 use super::pointing::{Pointing, Work};
-use super::{Found, MapRun, Second, final_outcome};
+use super::{Found, MapRun, Second};
+#[cfg(feature = "figures")]
 use crate::fit::Workspace;
 use crate::report::files::write_atomically;
 use crate::report::sky_map::{MapFrame, write_caution_map, write_map};
@@ -46,6 +51,10 @@ pub(super) fn write(
     work: &Work<'_>,
     blocks: &[Range<usize>],
     journal: &Journal<Found>,
+    #[cfg_attr(
+        not(feature = "figures"),
+        allow(unused_variables, reason = "figures alone ask for it")
+    )]
     second: &Second,
 ) -> Result<Made, RunError> {
     let directory = &run.directory;

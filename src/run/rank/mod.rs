@@ -163,6 +163,10 @@ struct Ordered<'a> {
     /// Rows without a result, in the order of the table.
     failures: Vec<(usize, Failure)>,
     quantity: Quantity,
+    #[cfg_attr(
+        not(feature = "figures"),
+        allow(dead_code, reason = "figures alone ask for it")
+    )]
     facts: Vec<SourceFacts>,
     statistics: Sample,
     notes: Vec<(String, usize)>,
