@@ -33,7 +33,7 @@ GIVEN = {
 
 def fit(**given):
     options = [word for key, value in given.items() for word in (f"--{key.replace('_', '-')}", repr(value))]
-    command = ["cargo", "run", "--quiet", "--locked", "--", "fit", "demo-spectra/lantern7.toml", "--json", "--quiet"]
+    command = ["cargo", "run", "--quiet", "--locked", "--", "fit", "demo-spectra/lantern7.toml", "--formal", "--json", "--quiet"]
     return json.loads(subprocess.run([*command, *options], check=True, capture_output=True).stdout)
 
 

@@ -12,7 +12,7 @@ use std::path::{Path, PathBuf};
 ///
 /// Example:
 ///
-///   inrush map demo-spectra/lantern7-map.toml --out results
+///   inrush map demo-spectra/lantern7-map/map.toml --out results
 ///
 /// The run sheet names both lines and their files, or in [grid] a table of pointings.
 #[derive(Debug, Args)]
