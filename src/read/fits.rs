@@ -249,11 +249,17 @@ fn choose<'u, 'a>(
     if let Some(number) = options.hdu {
         return units.get(number).ok_or_else(|| no_spectrum(path, units));
     }
-    let with_data: Vec<&Unit> = units
-        .iter()
-        .filter(|unit| unit.content() != Content::Empty)
-        .collect();
-    match with_data.as_slice() {
+    only(path, units, |unit| unit.content() != Content::Empty)
+}
+
+/// The one unit that is `wanted`.
+pub(super) fn only<'a, 'b>(
+    path: &Path,
+    units: &'b [Unit<'a>],
+    wanted: impl Fn(&Unit<'a>) -> bool,
+) -> Result<&'b Unit<'a>, ReadError> {
+    let found: Vec<&Unit> = units.iter().filter(|unit| wanted(unit)).collect();
+    match found.as_slice() {
         [one] => Ok(one),
         [] => Err(no_spectrum(path, units)),
         several => Err(ReadError::FitsSeveralUnits {

@@ -271,10 +271,7 @@ impl<R: Serialize + DeserializeOwned> Journal<R> {
         resume: bool,
     ) -> Result<Opened<R>, RunError> {
         super::check_directory(directory)?;
-        std::fs::create_dir_all(directory).map_err(|source| RunError::File {
-            path: directory.to_owned(),
-            source,
-        })?;
+        super::products::make_directory(directory)?;
         let path = directory.join(JOURNAL);
         if path.exists() {
             let journal = Self::open_file(path, identity)?;

@@ -257,6 +257,44 @@ pub(super) fn holds_something(directory: &Path) -> Result<bool, RunError> {
     Ok(entries.next().is_some())
 }
 
+/// Makes a directory, and those above it, where it is not there.
+pub(super) fn make_directory(directory: &Path) -> Result<(), RunError> {
+    std::fs::create_dir_all(directory).map_err(|source| RunError::File {
+        path: directory.to_owned(),
+        source,
+    })
+}
+
+/// The directory that another one is in.
+pub(super) fn parent(directory: &Path) -> &Path {
+    match directory.parent() {
+        Some(parent) if !parent.as_os_str().is_empty() => parent,
+        _ => Path::new("."),
+    }
+}
+
+/// Writes a figure as SVG, PNG and PDF and returns their paths. Each file is whole or absent.
+#[cfg(feature = "figures")]
+pub(super) fn write_figure(
+    directory: &Path,
+    stem: &str,
+    svg: &str,
+    width_px: u32,
+) -> Result<Vec<PathBuf>, RunError> {
+    let contents = [
+        ("svg", svg.as_bytes().to_vec()),
+        ("png", report::figure::svg_to_png(svg, width_px)?),
+        ("pdf", report::figure::svg_to_pdf(svg)?),
+    ];
+    let mut written = Vec::with_capacity(contents.len());
+    for (kind, bytes) in contents {
+        let path = directory.join(format!("{stem}.{kind}"));
+        report::files::write_atomically(&path, |writer| Ok(writer.write_all(&bytes)?))?;
+        written.push(path);
+    }
+    Ok(written)
+}
+
 /// Writes every product of a pair into a directory and returns their paths, in order.
 ///
 /// `sheet` as it was run, `base` what its paths are relative to. Each file is whole or absent.
@@ -270,38 +308,31 @@ pub fn write_products(
     base: &Path,
     directory: &Path,
 ) -> Result<Vec<PathBuf>, RunError> {
-    std::fs::create_dir_all(directory).map_err(|source| RunError::File {
-        path: directory.to_owned(),
-        source,
-    })?;
+    make_directory(directory)?;
     let mut table = Table::new(report::columns::results());
     table.push(pair_row(outcome)?)?;
     table.meta = meta(outcome, sheet);
     let resolved = resolved(outcome, sheet, base, directory).to_toml()?;
-    let mut written = Vec::new();
-    let mut write =
+    let write =
         |name: &str, content: &dyn Fn(&mut dyn std::io::Write) -> Result<(), ReportError>| {
             let path = directory.join(name);
             report::files::write_atomically(&path, content)?;
-            written.push(path);
-            Ok::<(), RunError>(())
+            Ok::<PathBuf, RunError>(path)
         };
-    write("pair.csv", &|writer| report::write_csv(&table, writer))?;
-    write("pair.ecsv", &|writer| report::write_ecsv(&table, writer))?;
-    write("pair.fits", &|writer| report::write_fits(&table, writer))?;
+    let mut written = vec![
+        write("pair.csv", &|writer| report::write_csv(&table, writer))?,
+        write("pair.ecsv", &|writer| report::write_ecsv(&table, writer))?,
+        write("pair.fits", &|writer| report::write_fits(&table, writer))?,
+    ];
     #[cfg(feature = "figures")]
     if sheet.output.figures {
-        let figure = super::figure::pair_figure(outcome);
-        let svg = figure.svg()?;
-        write("pair.svg", &|writer| Ok(writer.write_all(svg.as_bytes())?))?;
-        let png = report::figure::svg_to_png(&svg, super::figure::WIDTH_PX)?;
-        write("pair.png", &|writer| Ok(writer.write_all(&png)?))?;
-        let pdf = report::figure::svg_to_pdf(&svg)?;
-        write("pair.pdf", &|writer| Ok(writer.write_all(&pdf)?))?;
+        let svg = super::figure::pair_figure(outcome).svg()?;
+        let figure = write_figure(directory, "pair", &svg, super::figure::WIDTH_PX)?;
+        written.extend(figure);
     }
-    write("run.toml", &|writer| {
+    written.push(write("run.toml", &|writer| {
         Ok(writer.write_all(resolved.as_bytes())?)
-    })?;
+    })?);
     Ok(written)
 }
 

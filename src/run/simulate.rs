@@ -6,6 +6,7 @@
 mod folder;
 mod grid;
 mod sample;
+mod settings_file;
 mod truth_file;
 mod truth_table;
 
@@ -75,10 +76,7 @@ pub fn write_pair(settings: &PairSettings) -> Result<PairFiles, RunError> {
     check_names(settings)?;
     let pair = simulate_pair(&settings.truth)?;
     let files = files(settings, &pair)?;
-    std::fs::create_dir_all(&settings.directory).map_err(|source| RunError::File {
-        path: settings.directory.clone(),
-        source,
-    })?;
+    super::products::make_directory(&settings.directory)?;
     let mut written = Vec::with_capacity(files.len());
     for (name, bytes) in &files {
         let path = settings.directory.join(name);

@@ -241,19 +241,7 @@ fn choose<'u, 'a>(
             .filter(is_image)
             .ok_or_else(|| fits::no_spectrum(path, units));
     }
-    let images: Vec<&Unit> = units.iter().filter(is_image).collect();
-    match images.as_slice() {
-        [one] => Ok(one),
-        [] => Err(fits::no_spectrum(path, units)),
-        several => Err(ReadError::FitsSeveralUnits {
-            path: path.to_path_buf(),
-            units: several
-                .iter()
-                .map(|unit| unit.describe())
-                .collect::<Vec<_>>()
-                .join("; "),
-        }),
-    }
+    fits::only(path, units, |unit| is_image(&unit))
 }
 
 /// Number from 1 of the one axis that is spectral; all but it and the sky's are of length 1.

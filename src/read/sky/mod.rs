@@ -231,21 +231,6 @@ impl Sky {
         let [[a, b], [c, d]] = self.keywords.matrix_deg;
         (a * d - b * c).abs().sqrt() * 3600.0
     }
-
-    /// The same plane with the pixel `origin` (from 0) as the first, and `step` of its pixels a pixel.
-    #[must_use]
-    pub fn resampled(&self, origin: [f64; 2], step: f64) -> Self {
-        let mut keywords = self.keywords;
-        keywords.matrix_deg = keywords.matrix_deg.map(|row| row.map(|value| value * step));
-        for (pixel, origin) in keywords.reference_pixel.iter_mut().zip(origin) {
-            *pixel = (*pixel - 1.0 - origin) / step + 1.0;
-        }
-        Self {
-            keywords,
-            inverse: self.inverse.map(|row| row.map(|value| value / step)),
-            rotation: self.rotation,
-        }
-    }
 }
 
 /// Celestial into native unit vectors (Paper II, equations 5 and 8 to 10).

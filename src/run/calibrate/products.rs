@@ -367,10 +367,7 @@ pub fn write_calibration(
     base: &Path,
     directory: &Path,
 ) -> Result<Vec<PathBuf>, RunError> {
-    std::fs::create_dir_all(directory).map_err(|source| RunError::File {
-        path: directory.to_owned(),
-        source,
-    })?;
+    crate::run::products::make_directory(directory)?;
     let mut meta = crate::run::products::meta(outcome, sheet);
     let pairs = calibration.own().map_or(0, |own| own.moving.pairs);
     let pairs = i64::try_from(pairs).unwrap_or(i64::MAX);
@@ -387,24 +384,16 @@ pub fn write_calibration(
         }
         written.extend(files.finish()?);
     }
-    let mut write = |name: &str, bytes: &[u8]| {
-        let path = directory.join(name);
-        report::files::write_atomically(&path, |writer| Ok(writer.write_all(bytes)?))?;
-        written.push(path);
-        Ok::<(), RunError>(())
-    };
     #[cfg(feature = "figures")]
     if sheet.output.figures {
         let svg = crate::run::figure::calibration_figure(calibration).svg()?;
         let width_px = crate::run::figure::WIDTH_PX;
-        write("calibration.svg", svg.as_bytes())?;
-        write(
-            "calibration.png",
-            &report::figure::svg_to_png(&svg, width_px)?,
-        )?;
-        write("calibration.pdf", &report::figure::svg_to_pdf(&svg)?)?;
+        let write_figure = crate::run::products::write_figure;
+        written.extend(write_figure(directory, "calibration", &svg, width_px)?);
     }
-    let resolved = crate::run::products::resolved(outcome, sheet, base, directory);
-    write("run.toml", resolved.to_toml()?.as_bytes())?;
+    let resolved = crate::run::products::resolved(outcome, sheet, base, directory).to_toml()?;
+    let path = directory.join("run.toml");
+    report::files::write_atomically(&path, |writer| Ok(writer.write_all(resolved.as_bytes())?))?;
+    written.push(path);
     Ok(written)
 }

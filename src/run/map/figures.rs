@@ -1,5 +1,6 @@
 //! Figures of a map: what is drawn, handed to the report.
 
+use super::super::products::{make_directory, write_figure};
 use super::super::{PairOutcome, RunError};
 use super::pointing::Work;
 use super::products::Maps;
@@ -10,9 +11,8 @@ use crate::model::Sampling;
 use crate::numeric::robust::median;
 use crate::read::sky::{SkyFrame, SkyPosition};
 use crate::report::figure::{
-    ColourScale, MapCells, MapFigure, ScaleBar, SpectraSheet, SpectrumPanel, svg_to_pdf, svg_to_png,
+    ColourScale, MapCells, MapFigure, ScaleBar, SpectraSheet, SpectrumPanel,
 };
-use crate::report::files::write_atomically;
 use crate::report::sky_map::MapAxes;
 use crate::spectrum::Spectrum;
 use std::ops::ControlFlow;
@@ -89,10 +89,7 @@ pub(super) fn write(
     written: &mut Vec<PathBuf>,
 ) -> Result<(), RunError> {
     let folder = run.directory.join("figures");
-    std::fs::create_dir_all(&folder).map_err(|source| RunError::File {
-        path: folder.clone(),
-        source,
-    })?;
+    make_directory(&folder)?;
     let plane = Plane::of(work);
     let doubles = |values: &[f32]| values.iter().copied().map(f64::from).collect::<Vec<f64>>();
     let contoured = (maps.column("integral_thin_k_km_s").map(doubles)).filter(|_| plane.is_some());
@@ -137,27 +134,7 @@ pub(super) fn write(
             beam: work.field.beam(),
             scale_bar: scale_bar(run, work),
         };
-        write_figure(&folder, name, &figure.svg()?, MAP_PX, written)?;
-    }
-    Ok(())
-}
-
-fn write_figure(
-    folder: &std::path::Path,
-    name: &str,
-    svg: &str,
-    width_px: u32,
-    written: &mut Vec<PathBuf>,
-) -> Result<(), RunError> {
-    let contents = [
-        ("svg", svg.as_bytes().to_vec()),
-        ("png", svg_to_png(svg, width_px)?),
-        ("pdf", svg_to_pdf(svg)?),
-    ];
-    for (kind, bytes) in contents {
-        let path = folder.join(format!("{name}.{kind}"));
-        write_atomically(&path, |writer| Ok(writer.write_all(&bytes)?))?;
-        written.push(path);
+        written.extend(write_figure(&folder, name, &figure.svg()?, MAP_PX)?);
     }
     Ok(())
 }
@@ -347,7 +324,8 @@ pub(super) fn write_spectra(
         panels,
     };
     let folder = run.directory.join("figures");
-    write_figure(&folder, "spectra", &sheet.svg()?, SHEET_PX, written)
+    written.extend(write_figure(&folder, "spectra", &sheet.svg()?, SHEET_PX)?);
+    Ok(())
 }
 
 fn note(work: &Work<'_>, every: usize) -> String {

@@ -147,14 +147,8 @@ struct Scratch(PathBuf);
 
 impl Scratch {
     fn beside(directory: &Path) -> Result<Self, RunError> {
-        let parent = match directory.parent() {
-            Some(parent) if !parent.as_os_str().is_empty() => parent,
-            _ => Path::new("."),
-        };
-        std::fs::create_dir_all(parent).map_err(|source| RunError::File {
-            path: parent.to_owned(),
-            source,
-        })?;
+        let parent = super::products::parent(directory);
+        super::products::make_directory(parent)?;
         Ok(Self(parent.to_owned()))
     }
 

@@ -2,6 +2,7 @@
 
 #[cfg(feature = "figures")]
 use super::super::PairOutcome;
+use super::super::products::make_directory;
 use super::super::{Journal, RunError};
 use super::field::Field;
 #[cfg(feature = "figures")]
@@ -305,10 +306,7 @@ impl Maps {
             return Ok(());
         };
         let folder = directory.join("maps");
-        std::fs::create_dir_all(&folder).map_err(|source| RunError::File {
-            path: folder.clone(),
-            source,
-        })?;
+        make_directory(&folder)?;
         let frame = MapFrame {
             width,
             height,
@@ -366,10 +364,7 @@ fn write_pages(
 ) -> Result<(), RunError> {
     use std::ops::ControlFlow;
     let folder = run.directory.join("pages");
-    std::fs::create_dir_all(&folder).map_err(|source| RunError::File {
-        path: folder.clone(),
-        source,
-    })?;
+    make_directory(&folder)?;
     let draw = |outcome: &PairOutcome| super::super::figure::pair_figure(outcome).pdf();
     let ended = run.batch.run(
         fitted.iter().copied(),

@@ -5,9 +5,10 @@ use crate::measure::CLASS_LIMIT;
 use crate::rank::{Drawn, Finding, Grade, Profile, Quantity};
 use crate::report::figure::{
     DistributionFigure, Interval, ProfilePanel, ProfileSheet, RankBar, RankFigure, ScatterFigure,
-    ScatterPoint, svg_to_pdf, svg_to_png,
+    ScatterPoint,
 };
-use crate::report::{files::write_atomically, rounded_interval};
+use crate::report::rounded_interval;
+use crate::run::products::{make_directory, write_figure};
 use crate::run::{BatchSettings, Journal, RunError};
 use std::ops::ControlFlow;
 use std::path::PathBuf;
@@ -30,10 +31,7 @@ pub(super) fn write(
     batch: &BatchSettings,
 ) -> Result<Vec<PathBuf>, RunError> {
     let folder = run.directory.join(FOLDER);
-    std::fs::create_dir_all(&folder).map_err(|source| RunError::File {
-        path: folder.clone(),
-        source,
-    })?;
+    make_directory(&folder)?;
     let groups = Groups::of(ordered);
     let mut drawn: Vec<(String, u32, String)> = Vec::new();
     let mut add = |name: &str, width_px: u32, svg: String| {
@@ -62,18 +60,7 @@ pub(super) fn write(
         drawn,
         || (),
         |(), (name, width_px, svg): (String, u32, String)| {
-            let products = [
-                ("svg", svg.as_bytes().to_vec()),
-                ("png", svg_to_png(&svg, width_px)?),
-                ("pdf", svg_to_pdf(&svg)?),
-            ];
-            let mut paths = Vec::new();
-            for (kind, bytes) in products {
-                let path = folder.join(format!("{name}.{kind}"));
-                write_atomically(&path, |writer| Ok(writer.write_all(&bytes)?))?;
-                paths.push(path);
-            }
-            Ok(paths)
+            write_figure(&folder, &name, &svg, width_px)
         },
         |_, paths: Result<Vec<PathBuf>, RunError>| match paths {
             Ok(paths) => {

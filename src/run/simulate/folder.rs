@@ -1,6 +1,6 @@
 //! A new folder that is whole or absent: made under a temporary name, then renamed.
 
-use crate::run::products::holds_something;
+use crate::run::products::{holds_something, make_directory, parent};
 use crate::run::{RunError, check_directory};
 use std::fs;
 use std::path::Path;
@@ -35,11 +35,8 @@ pub(super) fn fill_folder(
 
 /// A folder under a temporary name, on the file system of its later place.
 fn unfinished_beside(directory: &Path) -> Result<tempfile::TempDir, RunError> {
-    let parent = match directory.parent() {
-        Some(parent) if !parent.as_os_str().is_empty() => parent,
-        _ => Path::new("."),
-    };
-    fs::create_dir_all(parent).map_err(|source| file_error(parent, source))?;
+    let parent = parent(directory);
+    make_directory(parent)?;
     let mut builder = tempfile::Builder::new();
     builder.prefix(".unfinished-");
     #[cfg(unix)]

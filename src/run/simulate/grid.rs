@@ -4,6 +4,7 @@
 //! threads; which thread makes a ray does not matter to it.
 
 use super::folder::{file_error, fill_folder};
+use super::settings_file::{self, SETTINGS};
 use super::truth_table::made;
 use crate::line::{Line, find};
 use crate::report::cube::{CubeGrid, write_cube};
@@ -66,8 +67,6 @@ pub struct GridFiles {
 const TABLE: &str = "grid.csv";
 /// Name of the table of truths.
 const TRUTH: &str = "truth.csv";
-/// Name of the file of settings.
-const SETTINGS: &str = "settings.toml";
 /// Name of the folder of spectra.
 const SPECTRA: &str = "spectra";
 
@@ -426,10 +425,7 @@ fn settings_text(run: &GridRun) -> Result<String, RunError> {
         thin_line: Some(run.thin_line.clone()),
         grid: run.truth.clone(),
     };
-    let text = toml::to_string(&file).map_err(|error| RunError::Internal(error.to_string()))?;
-    Ok(format!(
-        "# Make this map again: inrush simulate grid --settings {SETTINGS} --out DIR\n\n{text}"
-    ))
+    settings_file::text(&file, "map", "grid")
 }
 
 /// Truth of a map from its file of settings, and the names of its thick and thin line where it has
@@ -441,8 +437,6 @@ fn settings_text(run: &GridRun) -> Result<String, RunError> {
 pub fn read_grid_settings(
     path: &Path,
 ) -> Result<(GridTruth, Option<String>, Option<String>), RunError> {
-    let text = fs::read_to_string(path).map_err(|source| file_error(path, source))?;
-    let file: SettingsFile =
-        toml::from_str(&text).map_err(|error| RunError::of_toml(&error, &text, path))?;
+    let file: SettingsFile = settings_file::read(path)?;
     Ok((file.grid, file.thick_line, file.thin_line))
 }

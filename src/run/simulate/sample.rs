@@ -4,11 +4,13 @@
 //! so memory does not grow with their number; which thread makes a pair does not matter to it.
 
 use super::folder::{file_error, fill_folder};
+use super::settings_file::{self, SETTINGS};
 use super::truth_table;
 use crate::line::{Line, find};
 use crate::report::spectra::{self, SpectrumHeader};
 use crate::report::{CsvRows, ReportError, Row, Schema};
 use crate::run::RunError;
+use crate::run::products::make_directory;
 use crate::simulate::{SampleSettings, SampleTruth, SimulatedLine, simulate_pair};
 use serde::{Deserialize, Serialize};
 use std::fs::{self, File};
@@ -49,8 +51,6 @@ pub struct SampleFiles {
 const TABLE: &str = "sample.csv";
 /// Name of the table of truths.
 const TRUTH: &str = "truth.csv";
-/// Name of the file of settings.
-const SETTINGS: &str = "settings.toml";
 /// Name of the folder of spectra.
 const SPECTRA: &str = "spectra";
 
@@ -100,7 +100,7 @@ fn write_into(folder: &Path, run: &SampleRun, lines: (&Line, &Line)) -> Result<(
     while first < run.settings.pairs {
         let block = first..run.settings.pairs.min(first + BLOCK);
         let spectra = folder.join(SPECTRA).join(block_name(first));
-        fs::create_dir_all(&spectra).map_err(|source| file_error(&spectra, source))?;
+        make_directory(&spectra)?;
         for (index, row) in
             block
                 .clone()
@@ -248,10 +248,7 @@ fn settings_text(run: &SampleRun) -> Result<String, RunError> {
         thin_line: Some(run.thin_line.clone()),
         sample: run.settings.clone(),
     };
-    let text = toml::to_string(&file).map_err(|error| RunError::Internal(error.to_string()))?;
-    Ok(format!(
-        "# Make this sample again: inrush simulate sample --settings {SETTINGS} --out DIR\n\n{text}"
-    ))
+    settings_file::text(&file, "sample", "sample")
 }
 
 /// Settings of a sample from its file, and the names of its thick and thin line where it has them.
@@ -262,8 +259,6 @@ fn settings_text(run: &SampleRun) -> Result<String, RunError> {
 pub fn read_sample_settings(
     path: &Path,
 ) -> Result<(SampleSettings, Option<String>, Option<String>), RunError> {
-    let text = fs::read_to_string(path).map_err(|source| file_error(path, source))?;
-    let file: SettingsFile =
-        toml::from_str(&text).map_err(|error| RunError::of_toml(&error, &text, path))?;
+    let file: SettingsFile = settings_file::read(path)?;
     Ok((file.sample, file.thick_line, file.thin_line))
 }
