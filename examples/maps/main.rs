@@ -41,15 +41,29 @@ fn main() -> Result<(), Box<dyn Error>> {
     let signal_to_noise = [thick.parse()?, thin.parse()?];
     if mode == "judge" {
         println!(
-            "| scene | infall | along an axis only | expansion | neither | rotation | outflow | both | neither | failed |"
+            "| scene | noise | infall | along an axis only | expansion | neither | rotation | outflow | outflow along the gradient | both | neither | failed |"
         );
-        println!("| --- | --- | --- | --- | --- | --- | --- | --- | --- | --- |");
+        println!("| --- | --- | --- | --- | --- | --- | --- | --- | --- | --- | --- | --- |");
+    }
+    if mode == "speeds" {
+        println!("| scene | true q | maps | found q: median (16 to 84 %) |");
+        println!("| --- | --- | --- | --- |");
     }
     for scene in SCENES {
         match mode.as_str() {
             "judge" => {
                 let outcomes = outcomes(scene, seeds.clone(), signal_to_noise, false)?;
-                println!("{}", judged(scene, &outcomes, seeds.clone().count()));
+                for (noise, smooth) in [("independent", false), ("over the beam", true)] {
+                    let maps = seeds
+                        .clone()
+                        .filter(|seed| (seed % 2 == 1) == smooth)
+                        .count();
+                    let alike: Vec<&Outcome> = outcomes
+                        .iter()
+                        .filter(|one| (one.truth.noise_fwhm_arcsec > 0.0) == smooth)
+                        .collect();
+                    println!("{}", judged(scene, noise, &alike, maps));
+                }
             }
             "speeds" if scene.infall => {
                 print_speeds(
@@ -102,7 +116,7 @@ fn outcomes(
     Ok(outcomes)
 }
 
-fn judged(scene: Scene, outcomes: &[Outcome], maps: usize) -> String {
+fn judged(scene: Scene, noise: &str, outcomes: &[&Outcome], maps: usize) -> String {
     let share = |holds: &dyn Fn(&Diagnosis) -> bool| {
         let found = outcomes.iter().filter(|one| holds(&one.diagnosis)).count();
         format!("{:.1}", 100.0 * found as f64 / maps as f64)
@@ -111,12 +125,14 @@ fn judged(scene: Scene, outcomes: &[Outcome], maps: usize) -> String {
     let odd = |one: &Diagnosis| one.verdict.odd;
     [
         scene.name.to_owned(),
+        noise.to_owned(),
         share(&|one| matches!(even(one), Even::Blue { .. })),
         share(&|one| matches!(even(one), Even::AlongAxisOnly { .. })),
         share(&|one| matches!(even(one), Even::Red { .. })),
         share(&|one| matches!(even(one), Even::Neither { .. })),
         share(&|one| matches!(odd(one), Odd::Rotation { .. })),
         share(&|one| matches!(odd(one), Odd::Outflow { .. })),
+        share(&|one| matches!(odd(one), Odd::OutflowAlongGradient { .. })),
         share(&|one| matches!(odd(one), Odd::Both { .. })),
         share(&|one| matches!(odd(one), Odd::Neither)),
         (maps - outcomes.len()).to_string(),
@@ -127,28 +143,21 @@ fn judged(scene: Scene, outcomes: &[Outcome], maps: usize) -> String {
 
 fn print_speeds(scene: Scene, outcomes: &[Outcome]) {
     for slope in [0.0, 0.5] {
-        let mut found: Vec<(f64, f64, f64)> = outcomes
+        let mut found: Vec<f64> = outcomes
             .iter()
             .filter(|one| one.truth.clump.infall.slope == slope)
             .filter_map(|one| one.diagnosis.speed.as_ref().ok())
-            .map(|speed| (speed.slope.value, speed.slope.err, speed.log_odds_rising))
+            .map(|speed| speed.slope.value)
             .collect();
-        found.sort_by(|a, b| a.0.total_cmp(&b.0));
+        found.sort_by(f64::total_cmp);
         let at = |share: f64| {
             let last = found.len().saturating_sub(1) as f64;
             #[expect(clippy::cast_possible_truncation, clippy::cast_sign_loss)]
-            found
-                .get((share * last).round() as usize)
-                .map_or(f64::NAN, |one| one.0)
+            let place = (share * last).round() as usize;
+            found.get(place).copied().unwrap_or(f64::NAN)
         };
-        let rising = found.iter().filter(|one| one.2 > 0.0).count();
-        let sure = found.iter().filter(|one| one.2.abs() > 3.0).count();
-        let right = found
-            .iter()
-            .filter(|one| one.2.abs() > 3.0 && (one.2 > 0.0) == (slope > 0.0))
-            .count();
         println!(
-            "{} q={slope}: {} maps, found q {:.2} ({:.2} to {:.2}), rising more likely in {rising}, odds above e^3 in {sure}, of these right {right}",
+            "| {} | {slope} | {} | {:.2} ({:.2} to {:.2}) |",
             scene.name,
             found.len(),
             at(0.5),
@@ -164,13 +173,12 @@ fn row(scene: Scene, outcome: &Outcome) -> String {
     let centre = found.centre.at_arcsec;
     let parity = |map: &Result<inrush::grid::Parity, inrush::grid::GridError>| {
         map.as_ref().map_or("-".to_owned(), |map| {
-            let part = |part: Option<inrush::grid::Part>| part.map_or(f64::NAN, |one| one.significance);
             format!(
                 "even {:.3} z {:.1} along {:.1} across {:.1} odd z {:.1} at {:.0}+-{:.0} chi2 {:.1} n {}",
-                map.even.mean.value,
-                map.even.significance,
-                part(map.along),
-                part(map.across),
+                map.even.value,
+                map.even_significance,
+                map.along.unwrap_or(f64::NAN),
+                map.across.unwrap_or(f64::NAN),
                 map.odd_significance,
                 map.odd_angle_deg.value,
                 map.odd_angle_deg.err,
@@ -191,7 +199,7 @@ fn row(scene: Scene, outcome: &Outcome) -> String {
         })
     };
     format!(
-        "{} {}: core [{}] wings [{}] thin [{}] thick [{}] spot {:.1} centre off {:.2},{:.2} (+-{:.2}) truth v_in/s {:.2} rot/s {:.2} axis {:.0} out/s {:.2} at {:.0} tilt {:.0} tau {:.1} r_lobe {:.0}: {:?} {:?}",
+        "{} {}: core [{}] wings [{}] thin [{}] thick [{}] spot {:.1} centre off {:.2},{:.2} (+-{:.2}) truth v_in/s {:.2} q {:.1} rot/s {:.2} axis {:.0} out/s {:.2} at {:.0} tilt {:.0} tau {:.1} r_lobe {:.0}: {:?} {:?}",
         scene.name,
         truth.seed,
         parity(&found.core),
@@ -206,6 +214,7 @@ fn row(scene: Scene, outcome: &Outcome) -> String {
         centre[1] - truth.centre_arcsec[1],
         found.centre.covariance[0][0].sqrt(),
         truth.clump.infall.speed_km_s / sigma,
+        truth.clump.infall.slope,
         truth.clump.rotation.speed_km_s / sigma,
         truth.clump.rotation.axis_deg,
         outflow.speed_km_s / sigma,

@@ -50,16 +50,15 @@ fn diagnosis(pointings: &[Measured], truth: &GridTruth) -> Result<Diagnosis, Gri
         });
         Field::new(readings.collect(), truth.noise_fwhm_arcsec)
     };
-    let systematics: Vec<f64> = pointings
-        .iter()
-        .filter_map(|one| Some(one.sides?.core_systematic))
-        .collect();
     let maps = ClumpMaps {
         thin_velocity: field(&|one| Some(one.thin?.v_km_s))?,
         thick_moment: field(&|one| one.thick_moment_km_s)?,
         core: field(&|one| Some(one.sides?.core))?,
         wings: field(&|one| Some(one.sides?.wings))?,
-        core_systematic: systematics.iter().sum::<f64>() / systematics.len().max(1) as f64,
+        core_systematic: pointings
+            .iter()
+            .filter_map(|one| Some(one.sides?.core_systematic))
+            .collect(),
         speed: field(&|one| one.v_in_km_s)?,
     };
     let integrals = field(&|one| Some(one.integral_thin_k_km_s))?;

@@ -36,6 +36,14 @@ pub enum GridError {
         /// Readings.
         found: usize,
     },
+    /// Other than one systematic a reading.
+    #[error("{found} systematics for {expected} readings, expected one each")]
+    Systematic {
+        /// Systematics.
+        found: usize,
+        /// Readings.
+        expected: usize,
+    },
     /// No brightness to find the centre from.
     #[error("no significant brightness in {found} readings, expected a source")]
     NoCentre {
@@ -54,6 +62,7 @@ impl GridError {
             Self::TooFewReadings { .. } | Self::OneLine { .. } => {
                 "a map needs detections around its source, not along a cut"
             }
+            Self::Systematic { .. } => "give none, or one for each reading in their order",
             Self::NoCentre { .. } => "give the centre",
         };
         Some(text.to_owned())

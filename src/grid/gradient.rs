@@ -3,7 +3,6 @@
 use super::linear::LinearFit;
 use super::{Field, GridError};
 use crate::numeric::Estimate;
-use crate::numeric::sampling::padded;
 use statrs::distribution::{ChiSquared, ContinuousCDF};
 
 /// A velocity gradient.
@@ -53,9 +52,7 @@ pub struct Gradient {
 /// [`GridError::TooFewReadings`] below four, [`GridError::OneLine`] where all lie on one line.
 pub fn gradient(velocities: &Field, centre_arcsec: [f64; 2]) -> Result<Gradient, GridError> {
     let [x_centre, y_centre] = centre_arcsec;
-    let fit = LinearFit::new(velocities, 3, |x, y| {
-        padded(&[1.0, x - x_centre, y - y_centre])
-    })?;
+    let fit = LinearFit::new(velocities, |x, y| [1.0, x - x_centre, y - y_centre])?;
     let estimate = |index: usize| Estimate {
         value: fit.parameters[index],
         err: fit.covariance[index][index].sqrt(),

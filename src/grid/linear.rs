@@ -1,7 +1,7 @@
 //! Weighted linear least squares over a field, with errors from the full covariance of its readings.
 
 use super::{Field, GridError};
-use crate::numeric::sampling::matrix::{MOST_DIMENSIONS, Matrix, Point, inverse};
+use crate::numeric::sampling::matrix::{MOST_DIMENSIONS, Matrix, Point, inverse, padded};
 
 /// Sums of functions of place, fitted to a field.
 ///
@@ -15,15 +15,17 @@ pub(super) struct LinearFit {
     pub covariance: Matrix,
     pub chi2: f64,
     pub degrees_of_freedom: usize,
+    /// (X^T W X)^-1.
+    inverse: Matrix,
 }
 
 impl LinearFit {
-    /// Fits `terms` functions, given their values at an offset.
-    pub fn new(
+    /// Fits functions, given their values at an offset.
+    pub fn new<const TERMS: usize>(
         field: &Field,
-        terms: usize,
-        functions: impl Fn(f64, f64) -> Point,
+        functions: impl Fn(f64, f64) -> [f64; TERMS],
     ) -> Result<Self, GridError> {
+        let terms = TERMS;
         let readings = field.readings();
         if readings.len() <= terms {
             return Err(GridError::TooFewReadings {
@@ -33,7 +35,7 @@ impl LinearFit {
         }
         let rows: Vec<Point> = readings
             .iter()
-            .map(|one| functions(one.dx_arcsec, one.dy_arcsec))
+            .map(|one| padded(&functions(one.dx_arcsec, one.dy_arcsec)))
             .collect();
         let mut normal = [[0.0; MOST_DIMENSIONS]; MOST_DIMENSIONS];
         let mut right = [0.0; MOST_DIMENSIONS];
@@ -69,7 +71,26 @@ impl LinearFit {
             covariance: sandwich(&inverse, &spread),
             chi2,
             degrees_of_freedom: readings.len() - terms,
+            inverse,
         })
+    }
+
+    /// What the same fit, of the same `functions`, makes of other values at the places of a field; of
+    /// nothing where there are none.
+    pub fn of_values<const TERMS: usize>(
+        &self,
+        field: &Field,
+        functions: impl Fn(f64, f64) -> [f64; TERMS],
+        values: &[f64],
+    ) -> Point {
+        let mut right = [0.0; MOST_DIMENSIONS];
+        for (one, value) in field.readings().iter().zip(values) {
+            let row = padded(&functions(one.dx_arcsec, one.dy_arcsec));
+            for (sum, function) in right.iter_mut().zip(row) {
+                *sum += one.err.powi(-2) * function * value;
+            }
+        }
+        product(&self.inverse, &right)
     }
 
     /// chi2 over the degrees of freedom.

@@ -22,7 +22,7 @@ pub use centre::{Centre, centre};
 pub use error::GridError;
 pub use field::{Field, Reading};
 pub use gradient::{Gradient, gradient};
-pub use parity::{Parity, Part, parity};
+pub use parity::{Parity, parity};
 pub use speed::{SpeedProfile, speed_profile};
 pub use spot::{CentralSpot, central_spot};
 pub use verdict::{ClumpMaps, Diagnosis, Even, Odd, SpatialVerdict, diagnose};

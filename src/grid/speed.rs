@@ -1,10 +1,9 @@
-//! Inward speed against radius: constant, or rising inward.
+//! Fitted inward speed against radius.
 
 use super::linear::LinearFit;
 use super::{Centre, Field, GridError};
 use crate::constants::FWHM_PER_SIGMA;
 use crate::numeric::Estimate;
-use crate::numeric::sampling::padded;
 
 /// How the inward speed goes with radius.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -16,9 +15,6 @@ pub struct SpeedProfile {
     pub speed_km_s: Estimate,
     /// The reference radius: the mean of the readings' radii, arcsec.
     pub reference_arcsec: f64,
-    /// Odds of free fall onto a point (q = 1/2) to one speed (q = 0), as a natural logarithm, for a normal
-    /// likelihood of q.
-    pub log_odds_rising: f64,
     /// chi2 over the degrees of freedom.
     pub chi2_reduced: f64,
 }
@@ -35,8 +31,9 @@ const SLOPES: u32 = 400;
 /// which is the rms distance from the centre of what a beam sees. For each q the best v_r is that of
 /// linear least squares; q is where chi2 is lowest, errors from the linear problem there.
 ///
-/// The speed of a pair fit is that along the line of sight, less than the radial one off the centre,
-/// by a factor that hardly changes with b in a power law of density: q is that of projected speeds.
+/// The slope is that of the fitted speeds, not of the gas: speeds along the line of sight fall outward by
+/// themselves, and slab fits have errors that change with radius. On simulated maps it does not tell one
+/// speed from free fall (docs/validation.md).
 ///
 /// # Errors
 ///
@@ -59,7 +56,7 @@ pub fn speed_profile(
         .sum();
     let reference_arcsec = sum / readings.len().max(1) as f64;
     let ratio = |x: f64, y: f64| radius(x, y) / reference_arcsec;
-    let with = |slope: f64| LinearFit::new(speeds, 1, |x, y| padded(&[ratio(x, y).powf(-slope)]));
+    let with = |slope: f64| LinearFit::new(speeds, |x, y| [ratio(x, y).powf(-slope)]);
     let mut best = (f64::INFINITY, 0.0, 0.0);
     for step in 0..=SLOPES {
         let slope =
@@ -71,10 +68,10 @@ pub fn speed_profile(
     }
     let (_, slope, speed) = best;
     // one Gauss-Newton step in both parameters, which refines the slope and gives the errors
-    let fit = LinearFit::new(speeds, 2, |x, y| {
+    let fit = LinearFit::new(speeds, |x, y| {
         let power = ratio(x, y).powf(-slope);
         let by_slope = -speed * power * ratio(x, y).ln();
-        padded(&[power, by_slope])
+        [power, by_slope]
     })?;
     let err = |index: usize| fit.covariance[index][index].sqrt() * fit.inflation();
     let slope = Estimate {
@@ -82,7 +79,6 @@ pub fn speed_profile(
         value: slope + fit.parameters[1],
         err: err(1),
     };
-    let square = |expected: f64| ((slope.value - expected) / slope.err).powi(2);
     Ok(SpeedProfile {
         slope,
         speed_km_s: Estimate {
@@ -90,7 +86,6 @@ pub fn speed_profile(
             err: err(0),
         },
         reference_arcsec,
-        log_odds_rising: 0.5 * (square(0.0) - square(0.5)),
         chi2_reduced: fit.chi2_reduced(),
     })
 }

@@ -3,7 +3,6 @@
 use super::linear::LinearFit;
 use super::{Centre, Field, GridError};
 use crate::numeric::Estimate;
-use crate::numeric::sampling::padded;
 
 /// How the thick line's mean velocity changes with distance from the centre.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -30,9 +29,9 @@ pub struct CentralSpot {
 /// [`GridError::TooFewReadings`] below five, [`GridError::OneLine`] where they do not spread.
 pub fn central_spot(moments: &Field, centre: &Centre) -> Result<CentralSpot, GridError> {
     let [x_centre, y_centre] = centre.at_arcsec;
-    let fit = LinearFit::new(moments, 4, |x, y| {
+    let fit = LinearFit::new(moments, |x, y| {
         let (x, y) = (x - x_centre, y - y_centre);
-        padded(&[1.0, x.hypot(y), x, y])
+        [1.0, x.hypot(y), x, y]
     })?;
     let estimate = |index: usize| Estimate {
         value: fit.parameters[index],

@@ -17,8 +17,8 @@ pub struct ClumpMaps {
     pub core: Field,
     /// Blue less red in its wings.
     pub wings: Field,
-    /// Change of `core` by the systematic of the rest frequencies, the same everywhere.
-    pub core_systematic: f64,
+    /// Change of each reading of `core` by the systematic of the rest frequencies; empty for none.
+    pub core_systematic: Vec<f64>,
     /// Inward speed of the pair fits, km/s.
     pub speed: Field,
 }
@@ -49,18 +49,18 @@ pub struct Diagnosis {
 pub enum Even {
     /// Blue on all sides: infall.
     Blue {
-        /// Of the mean over the map.
+        /// Of the even part, its mean and its change with radius together.
         significance: f64,
     },
     /// Red on all sides: expansion.
     Red {
-        /// Of the mean over the map.
+        /// Of the even part, its mean and its change with radius together.
         significance: f64,
     },
     /// Blue or red in the mean, but not beside the axis of what is odd: an outflow's lobes in front of and
     /// behind the clump can do that.
     AlongAxisOnly {
-        /// Of the mean over the map.
+        /// Of the even part, its mean and its change with radius together.
         significance: f64,
     },
     /// Neither blue nor red in the mean.
@@ -90,8 +90,15 @@ pub enum Odd {
         /// Of the odd part.
         significance: f64,
     },
-    /// The thick line is odd along another axis than the thin line's gradient, or moves by more than
-    /// twice of it: rotation and an outflow.
+    /// The thick line is odd along the thin line's gradient, and moves by more than twice of it: an
+    /// outflow, whose lobes the thin line may show; rotation is not told from that.
+    OutflowAlongGradient {
+        /// Position angle of the approaching lobe, deg.
+        angle_deg: f64,
+        /// Of the odd part.
+        significance: f64,
+    },
+    /// The thick line is odd along another axis than the thin line's gradient: rotation and an outflow.
     Both {
         /// Position angle in which the thin line recedes, deg.
         rotation_deg: f64,
@@ -116,6 +123,10 @@ pub struct SpatialVerdict {
 /// Significance from which anything counts as seen: chance makes one in 370.
 const SEEN: f64 = 3.0;
 
+/// Significance that what is even needs beside the axis of what is odd: once it is seen at all, nothing there
+/// would pass this in 2 % of maps.
+const BESIDE: f64 = 2.0;
+
 /// Angle within which axes count as one however small their errors: clumps are not that regular.
 const ALIGNED_DEG: f64 = 30.0;
 
@@ -132,8 +143,8 @@ pub fn diagnose(maps: &ClumpMaps, centre: &Centre, beam_fwhm_arcsec: f64) -> Dia
     let at = centre.at_arcsec;
     let thin = gradient(&maps.thin_velocity, at);
     let thick = gradient(&maps.thick_moment, at);
-    let core = parity(&maps.core, centre, maps.core_systematic, beam_fwhm_arcsec);
-    let wings = parity(&maps.wings, centre, 0.0, beam_fwhm_arcsec);
+    let core = parity(&maps.core, centre, &maps.core_systematic, beam_fwhm_arcsec);
+    let wings = parity(&maps.wings, centre, &[], beam_fwhm_arcsec);
     let verdict = SpatialVerdict {
         even: even(core.as_ref().ok(), wings.as_ref().ok()),
         odd: odd(&thin, &thick, core.as_ref().ok(), wings.as_ref().ok()),
@@ -154,9 +165,9 @@ fn even(core: Option<&Parity>, wings: Option<&Parity>) -> Even {
     let Some(core) = core else {
         return Even::Untold;
     };
-    let significance = core.even.significance;
+    let significance = core.even_significance;
     if significance.abs() < SEEN {
-        let mean = core.even.mean;
+        let mean = core.even;
         return Even::Neither {
             limit: mean.value.abs() + LIMIT * mean.err,
         };
@@ -166,10 +177,8 @@ fn even(core: Option<&Parity>, wings: Option<&Parity>) -> Even {
         .into_iter()
         .flatten()
         .any(|map| map.odd_significance >= SEEN);
-    let beside = core
-        .across
-        .map(|part| part.significance * significance.signum());
-    if has_axis && beside.is_none_or(|beside| beside < SEEN) {
+    let beside = core.across.map(|part| part * significance.signum());
+    if has_axis && beside.is_none_or(|beside| beside < BESIDE) {
         return Even::AlongAxisOnly { significance };
     }
     if significance > 0.0 {
@@ -211,10 +220,15 @@ fn odd(
             let apart = turned(map.odd_angle_deg.value, thin.angle_deg.value + 180.0);
             let error = map.odd_angle_deg.err.hypot(thin.angle_deg.err);
             let other_axis = apart > ALIGNED_DEG.max(SEEN * error);
-            if other_axis || exceeds(thick, thin) {
+            if other_axis {
                 Odd::Both {
                     rotation_deg: thin.angle_deg.value,
                     outflow_deg: map.odd_angle_deg.value,
+                }
+            } else if exceeds(thick, thin) {
+                Odd::OutflowAlongGradient {
+                    angle_deg: map.odd_angle_deg.value,
+                    significance: map.odd_significance,
                 }
             } else {
                 Odd::Rotation {
@@ -291,11 +305,17 @@ impl SpatialVerdict {
             } => format!(
                 "The thick line is blue toward {angle_deg:.0} deg and red opposite ({significance:.1} sigma), without a gradient of the thin line: an outflow, not rotation."
             ),
+            Odd::OutflowAlongGradient {
+                angle_deg,
+                significance,
+            } => format!(
+                "The thick line is blue toward {angle_deg:.0} deg and red opposite ({significance:.1} sigma), by more than twice what the thin line does: an outflow; rotation along the same axis is not excluded."
+            ),
             Odd::Both {
                 rotation_deg,
                 outflow_deg,
             } => format!(
-                "The thin line has a gradient toward {rotation_deg:.0} deg, and the thick line is blue toward {outflow_deg:.0} deg by more than that: rotation and an outflow."
+                "The thin line has a gradient toward {rotation_deg:.0} deg, and the thick line is blue toward {outflow_deg:.0} deg: rotation and an outflow."
             ),
             Odd::Neither => {
                 "No line changes along any axis: neither rotation nor an outflow is seen."

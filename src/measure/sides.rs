@@ -10,7 +10,8 @@ use crate::prepare::Prepared;
 pub struct Sides {
     /// Of the core, within a width of the thin line.
     pub core: Estimate,
-    /// Change of `core` by the systematic of the rest frequencies.
+    /// Change of `core` where the thin line is redder by the systematic of the rest frequencies: the same
+    /// error in all pointings of a map.
     pub core_systematic: f64,
     /// Of the wings, from one width to four.
     pub wings: Estimate,
@@ -50,8 +51,8 @@ pub fn sides(
     let half_change = |one: Option<Sums>, other: Option<Sums>| {
         let (one, other) = (one?, other?);
         Some([
-            0.5 * (one.core() - other.core()).abs(),
-            0.5 * (one.wings() - other.wings()).abs(),
+            0.5 * (one.core() - other.core()),
+            0.5 * (one.wings() - other.wings()),
         ])
     };
     let shifted = |by: f64| half_change(at(v.value + by, fwhm.value), at(v.value - by, fwhm.value));
