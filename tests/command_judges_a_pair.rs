@@ -448,7 +448,7 @@ fn settings_that_cannot_be_are_refused_with_what_to_do() {
         ),
         (
             &["--odds", "infall=-1"],
-            "odds: prior odds [-1.0, 1.0, 1.0, 1.0], expected four numbers of at least 0, not all 0",
+            "odds: prior odds of infall -1, expansion 1, static 1, two_clouds 1, expected four numbers of at least 0, not all 0",
             "leave the odds out",
         ),
         (
@@ -462,7 +462,12 @@ fn settings_that_cannot_be_are_refused_with_what_to_do() {
             "leave the number out for the default, 2000",
         ),
         (
-            &["--isotope-ratio=-68"],
+            &["--posterior-draws", "-3"],
+            "invalid value '-3' for '--posterior-draws <N>'",
+            "",
+        ),
+        (
+            &["--isotope-ratio", "-68"],
             "fit.isotope_ratio: -68 +- 0, expected thick over thin, at least 1",
             "such as 68 for 12C/13C",
         ),

@@ -29,7 +29,12 @@ pub struct CalibrateArguments {
 
     /// Pairs that move, and as many at rest, at the observation's own noise; a fifth of that at seven
     /// other noise levels.
-    #[arg(long, value_name = "N", help_heading = "Calibration")]
+    #[arg(
+        long,
+        value_name = "N",
+        allow_negative_numbers = true,
+        help_heading = "Calibration"
+    )]
     pairs: Option<usize>,
 
     /// Write tables, figures and the resolved run sheet into this directory.

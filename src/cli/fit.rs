@@ -25,7 +25,12 @@ pub struct FitArguments {
     pair: PairArguments,
 
     /// Draws behind each interval of derived quantities.
-    #[arg(long, value_name = "N", help_heading = "Source")]
+    #[arg(
+        long,
+        value_name = "N",
+        allow_negative_numbers = true,
+        help_heading = "Source"
+    )]
     draws: Option<usize>,
 
     /// Write tables, figures and the resolved run sheet into this directory.

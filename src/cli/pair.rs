@@ -36,10 +36,10 @@ pub struct PairArguments {
     name: Option<String>,
 
     /// Rest frequency of the thick line, GHz, optionally with its error.
-    #[arg(long, value_name = "GHZ[,ERR]", value_parser = given, help_heading = "Reading")]
+    #[arg(long, value_name = "GHZ[,ERR]", value_parser = given, allow_hyphen_values = true, help_heading = "Reading")]
     thick_rest_freq_ghz: Option<Given>,
     /// Rest frequency of the thin line, GHz, optionally with its error.
-    #[arg(long, value_name = "GHZ[,ERR]", value_parser = given, help_heading = "Reading")]
+    #[arg(long, value_name = "GHZ[,ERR]", value_parser = given, allow_hyphen_values = true, help_heading = "Reading")]
     thin_rest_freq_ghz: Option<Given>,
     /// Columns of both files, such as "1:km/s,2:K".
     #[arg(long, value_name = "AXIS,VALUE", help_heading = "Reading")]
@@ -111,7 +111,7 @@ pub struct PairArguments {
     #[arg(long, help_heading = "Fitting")]
     free_thin_sigma: bool,
     /// Link the optical depths: thick over thin, optionally with its error.
-    #[arg(long, value_name = "RATIO[,ERR]", value_parser = given, help_heading = "Fitting")]
+    #[arg(long, value_name = "RATIO[,ERR]", value_parser = given, allow_hyphen_values = true, help_heading = "Fitting")]
     isotope_ratio: Option<Given>,
     /// Hold a parameter at a value, or give it a Gaussian prior.
     #[arg(long, value_name = "NAME=VALUE[,ERR]", value_parser = named_given, help_heading = "Fitting")]
@@ -132,7 +132,12 @@ pub struct PairArguments {
     #[arg(long, value_name = "NAME=ODDS", value_parser = named_number, help_heading = "Fitting")]
     odds: Vec<(String, f64)>,
     /// Effective draws of a posterior.
-    #[arg(long, value_name = "N", help_heading = "Fitting")]
+    #[arg(
+        long,
+        value_name = "N",
+        allow_negative_numbers = true,
+        help_heading = "Fitting"
+    )]
     posterior_draws: Option<usize>,
 
     #[command(flatten)]

@@ -67,7 +67,7 @@ impl Odds {
 #[derive(Clone, Debug, PartialEq, thiserror::Error)]
 pub enum HypothesesError {
     /// Prior odds that are no probabilities.
-    #[error("prior odds {found:?}, expected four numbers of at least 0, not all 0")]
+    #[error("prior odds of {}, expected four numbers of at least 0, not all 0", named(*found))]
     Odds {
         /// The odds.
         found: [f64; 4],
@@ -78,6 +78,15 @@ pub enum HypothesesError {
         /// What is missing.
         missing: &'static str,
     },
+}
+
+/// Numbers with the hypotheses that they belong to.
+fn named(numbers: [f64; 4]) -> String {
+    let each = Hypothesis::ALL.iter().zip(numbers);
+    let each: Vec<String> = each
+        .map(|(hypothesis, number)| format!("{} {number}", hypothesis.name()))
+        .collect();
+    each.join(", ")
 }
 
 impl HypothesesError {

@@ -6,13 +6,15 @@ use crate::fit::hypotheses::{Hypothesis, Standing, UNSEEN, Unseen, Verdict};
 
 /// The sentences of a verdict, the first of which names the most probable hypothesis.
 ///
-/// `detected` says whether the thick line is.
+/// `detected` says whether the thick line is: one that is not excludes nothing, whatever its priors of
+/// brightness do to the odds.
 pub fn verdict_sentences(verdict: &Verdict, detected: bool) -> Vec<String> {
     let favoured = verdict.favoured();
     let others = |excluded: bool| -> Vec<&Standing> {
         let standings = verdict.standings.iter();
         standings
-            .filter(|one| one.hypothesis != favoured && one.is_excluded() == excluded)
+            .filter(|one| one.hypothesis != favoured)
+            .filter(|one| (detected && one.is_excluded()) == excluded)
             .collect()
     };
     let mut sentences = Vec::new();
@@ -141,11 +143,12 @@ mod tests {
                 "One pair of lines cannot exclude a cold cloud in front",
             ]
         );
-        let open = verdict([0.2, 0.2, 0.4, 0.2], [2.0, 2.0, 1.0, 2.0]);
-        let sentences = verdict_sentences(&open, false);
+        let unseen = verdict([0.29, 0.29, 0.415, 0.005], [1.4, 1.4, 1.0, 80.0]);
+        let sentences = verdict_sentences(&unseen, false);
         assert_eq!(sentences[0], "The thick line is not detected");
-        assert_eq!(sentences[1], "Most probable: rest (probability 0.400)");
+        assert_eq!(sentences[1], "Most probable: rest (probability 0.415)");
         assert_eq!(sentences[2], "The data exclude none of the others");
+        assert!(sentences[3].ends_with("or two clouds (probability 0.005)"));
         assert!(sentences.iter().all(|one| !one.contains(',')));
     }
 }
