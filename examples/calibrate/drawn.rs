@@ -38,7 +38,7 @@ pub fn lines() -> Result<(Line, Line), Box<dyn Error>> {
 
 /// A pair of a family with every parameter from its prior, v_lsr within a dispersion of the middle,
 /// signal-to-noise uniform in its logarithm: 5 to 100 in the thick line and 0.2 to 1 of that in the
-/// thin line, channels of 0.08 to 0.25 dispersions.
+/// thin line, channels of 0.08 to 0.25 dispersions, uniform in the logarithm too.
 pub fn draw(
     family: Family,
     inward: Option<bool>,
@@ -69,7 +69,8 @@ pub fn draw(
     };
     let signal_to_noise = log_uniform(5.0, 100.0, &mut generator);
     let share = log_uniform(0.2, 1.0, &mut generator);
-    let channel = sigma * (0.08 + 0.17 * generator.random::<f64>());
+    // uniform in the logarithm, or the width of a channel would tell of the dispersion, which no fit knows
+    let channel = sigma * log_uniform(0.08, 0.25, &mut generator);
     let shapes = [&lines.0, &lines.1]
         .map(|line| LineShape::new(line.rest_frequency_ghz, line.components.clone()));
     let radiation = &shapes[0].radiation;

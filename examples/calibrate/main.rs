@@ -1,7 +1,7 @@
 //! Whether intervals and probabilities mean what they say: pairs drawn from the priors, prepared with
 //! default settings, against their truth.
 //!
-//! `cargo run --example calibrate -- coverage | mixed | spheres | sampler | shapes [PAIRS] [white | hanning | band-limited] [SHAPE_ERROR] [exact]`
+//! `cargo run --example calibrate -- coverage | mixed | spheres | sampler | shapes [PAIRS] [white | hanning | band-limited] [SHAPE_ERROR] [found | exact] [FIRST_SEED]`
 #![allow(clippy::print_stdout, clippy::print_stderr)]
 
 mod drawn;
@@ -55,6 +55,7 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
             .get(3)
             .map_or(Ok(SHAPE_ERROR), |text| text.parse())?,
         exact: arguments.get(4).is_some_and(|text| text == "exact"),
+        first_seed: arguments.get(5).map_or(Ok(0), |text| text.parse())?,
     };
     match choice {
         "coverage" => coverage(pairs, setup),
@@ -77,6 +78,8 @@ pub struct Setup {
     pub shape_error: f64,
     /// Whether noise, window and thin line are given instead of found.
     pub exact: bool,
+    /// Seed of the first pair; each pair has its own.
+    pub first_seed: u64,
 }
 
 impl Setup {
@@ -224,8 +227,14 @@ fn coverage(pairs: usize, setup: Setup) -> Result<(), Box<dyn Error>> {
     let lines = lines()?;
     let results = parallel(pairs, |index| {
         let model = MODELS[index % 2];
-        let pair = draw(Family::Moving(model), None, &lines, setup, index as u64)
-            .map_err(|error| error.to_string())?;
+        let pair = draw(
+            Family::Moving(model),
+            None,
+            &lines,
+            setup,
+            setup.first_seed + index as u64,
+        )
+        .map_err(|error| error.to_string())?;
         let settings = PosteriorSettings {
             models: vec![model],
             hypotheses: false,
@@ -379,7 +388,7 @@ fn mixed(pairs: usize, setup: Setup) -> Result<(), Box<dyn Error>> {
             },
             _ => (Family::TwoClouds, None),
         };
-        let seed = 1_000_000 + index as u64;
+        let seed = 1_000_000 + setup.first_seed + index as u64;
         let pair = draw(family, inward, &lines, setup, seed).map_err(|error| error.to_string())?;
         let outcome = posterior(&pair.thick, &pair.thin, &lines, &setup.settings())?;
         let verdict =
@@ -507,6 +516,7 @@ fn shapes(pairs: usize) -> Result<(), Box<dyn Error>> {
         correlation: Correlation::White,
         shape_error: 0.0,
         exact: false,
+        first_seed: 0,
     };
     for made in MODELS {
         let fitted = MODELS
