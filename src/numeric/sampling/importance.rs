@@ -25,7 +25,7 @@ pub struct ImportanceSettings {
     /// Effective sample size in either tail (5 %) of every coordinate at which drawing ends.
     pub tails: f64,
     /// Logarithm of an integral that does not matter: drawing ends after the second round where the
-    /// integral is lower.
+    /// integral is lower, after the first where it is lower by 10 more.
     pub negligible: f64,
 }
 
@@ -254,7 +254,9 @@ pub fn sample(
         let enough = round >= settings.fewest_rounds
             && effective(&weights) >= settings.effective
             && (settings.tails <= 0.0 || tails(dimensions, &points, &weights) >= settings.tails);
-        let negligible = round >= SURE_OF_NEGLIGIBLE && ln_integral < settings.negligible;
+        let negligible = NEGLIGIBLE_BY
+            .iter()
+            .any(|(rounds, margin)| round >= *rounds && ln_integral < settings.negligible - margin);
         if enough || negligible || round == settings.most_rounds {
             break;
         }
@@ -267,8 +269,9 @@ pub fn sample(
     Some(finish(dimensions, points, ln_integral, weights))
 }
 
-/// Rounds after which an integral can be called negligible.
-const SURE_OF_NEGLIGIBLE: usize = 2;
+/// Rounds after which an integral is called negligible that is lower than the limit by a margin of its
+/// logarithm: the first round's is rough.
+const NEGLIGIBLE_BY: [(usize, f64); 2] = [(1, 10.0), (2, 0.0)];
 
 /// Logarithms of weights, the largest 0, weights of sum 1, and the logarithm of the sum before; `None`
 /// where all densities are zero.
@@ -356,9 +359,15 @@ fn finish(dimensions: usize, points: Vec<Point>, ln_integral: f64, mut weights: 
     }
 }
 
+/// Weights below this part of the mean weight are nothing in a tail: they need no place in its order.
+const LEAST_OF_MEAN: f64 = 1e-6;
+
 /// Smallest effective number of draws in a tail of a coordinate.
 fn tails(dimensions: usize, points: &[Point], weights: &[f64]) -> f64 {
-    let mut order: Vec<usize> = (0..points.len()).collect();
+    let least = LEAST_OF_MEAN / weights.len() as f64;
+    let mut order: Vec<usize> = (0..points.len())
+        .filter(|index| weights[*index] > least)
+        .collect();
     let mut least = f64::INFINITY;
     for coordinate in 0..dimensions {
         let value = |index: &usize| points[*index][coordinate];

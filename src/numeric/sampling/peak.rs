@@ -31,7 +31,7 @@ pub fn ascend(
     scales: &Point,
     iterations: usize,
 ) -> Option<Peak> {
-    let (point, ln) = climb(density, start, scales, iterations, |_| false)?;
+    let (point, ln) = climb(density, start, scales, iterations, |_, _, _| false)?;
     Some(Peak::measured(density, point, ln, scales))
 }
 
@@ -47,13 +47,14 @@ impl Peak {
 /// 1970) with slopes from differences: the highest point and the logarithm of the density there.
 ///
 /// `scales` are rough sizes of each coordinate; at most `iterations` steps are taken. `None` where the
-/// density is zero at the start, or where `known` says of a point on the way that its peak is known.
+/// density is zero at the start, or where `vain` says so of a point on the way, the logarithm of the
+/// density there and its rise in the last step: its peak is known, or too low.
 pub fn climb(
     density: &mut impl Density,
     start: &Point,
     scales: &Point,
     iterations: usize,
-    known: impl Fn(&Point) -> bool,
+    vain: impl Fn(&Point, f64, f64) -> bool,
 ) -> Option<(Point, f64)> {
     let dimensions = density.dimensions();
     let mut here = *start;
@@ -114,7 +115,7 @@ pub fn climb(
         update(&mut metric, &moved, &turned, dimensions);
         let rise = found - ln;
         (here, ln, slope) = (point, found, new_slope);
-        if known(&here) {
+        if vain(&here, ln, rise) {
             return None;
         }
         small = if rise < RISE { small + 1 } else { 0 };
