@@ -33,8 +33,11 @@ fn a_table_becomes_products_and_a_summary() {
     let folder = demo(45);
     let run = folder.inrush(&["map", "map.toml", "--out", "out", "--formal"]);
     assert!(
-        run.stdout.starts_with("Lantern 7: HCO+ 1-0 (thick) and H13CO+ 1-0 (thin)\n")
-            && run.stdout.contains("\nMotions\n  - The core of the thick line is "),
+        run.stdout
+            .starts_with("Lantern 7: HCO+ 1-0 (thick) and H13CO+ 1-0 (thin)\n")
+            && run
+                .stdout
+                .contains("\nMotions\n  - The core of the thick line is "),
         "{}",
         run.stdout
     );
@@ -98,12 +101,24 @@ fn a_map_that_cannot_be_read_for_motions_says_so() {
         run.stdout
     };
     let few = run("map.toml", "few");
-    assert!(few.contains("not read: ") && few.contains("expected at least"), "{few}");
-    assert!(few.contains("infall is neither shown nor excluded"), "{few}");
+    assert!(
+        few.contains("not read: ") && few.contains("expected at least"),
+        "{few}"
+    );
+    assert!(
+        few.contains("infall is neither shown nor excluded"),
+        "{few}"
+    );
     let sheet = String::from_utf8(folder.read("map.toml")).unwrap();
-    folder.write("bare.toml", sheet.replace("beam_arcsec = 24.0", "").as_bytes());
+    folder.write(
+        "bare.toml",
+        sheet.replace("beam_arcsec = 24.0", "").as_bytes(),
+    );
     let bare = run("bare.toml", "bare");
-    assert!(bare.contains("no beam is known; give beam_arcsec"), "{bare}");
+    assert!(
+        bare.contains("no beam is known; give beam_arcsec"),
+        "{bare}"
+    );
     // Nothing but noise: every pointing is below the threshold.
     let faint = sheet + "threshold_sigma = 1000.0\n";
     folder.write("faint.toml", faint.as_bytes());

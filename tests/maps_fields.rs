@@ -277,7 +277,12 @@ fn motions_of_a_map_are_those_of_its_clump() {
     made(&run);
     let mut reader = csv::Reader::from_path(run.directory.join("motions.csv")).unwrap();
     let table: Vec<BTreeMap<String, String>> = reader.deserialize().map(Result::unwrap).collect();
-    let of = |quantity: &str| table.iter().find(|row| row["quantity"] == quantity).unwrap();
+    let of = |quantity: &str| {
+        table
+            .iter()
+            .find(|row| row["quantity"] == quantity)
+            .unwrap()
+    };
     // The clump's velocity rises by as much to the east, and not to the north.
     let gradient = clump.velocity_km_s(1.0) - clump.velocity_km_s(0.0);
     let found = of("thin_gradient_km_s_arcsec");
@@ -293,8 +298,14 @@ fn motions_of_a_map_are_those_of_its_clump() {
     assert!(of("verdict_odd")["words"].starts_with("The thin line has a gradient"));
     // Headers hold what is read from their map, and the verdict.
     let (header, _) = map(&run.directory, "v_thin_km_s.fits");
-    assert!(header.contains("HISTORY thin_gradient_km_s_arcsec = "), "{header}");
-    assert!(header.contains("HISTORY verdict_even = The core of"), "{header}");
+    assert!(
+        header.contains("HISTORY thin_gradient_km_s_arcsec = "),
+        "{header}"
+    );
+    assert!(
+        header.contains("HISTORY verdict_even = The core of"),
+        "{header}"
+    );
     assert!(!header.contains("HISTORY speed_slope = "), "{header}");
 }
 
@@ -324,7 +335,10 @@ fn noise_that_goes_together_over_pixels_is_found() {
     made(&run);
     let mut reader = csv::Reader::from_path(run.directory.join("motions.csv")).unwrap();
     let rows: Vec<BTreeMap<String, String>> = reader.deserialize().map(Result::unwrap).collect();
-    let width = rows.iter().find(|row| row["quantity"] == "noise_width_arcsec").unwrap();
+    let width = rows
+        .iter()
+        .find(|row| row["quantity"] == "noise_width_arcsec")
+        .unwrap();
     // Some 48 pairs of some 60 line-free channels tell a correlation to 0.02, the width to a tenth; the
     // wider of both lines' is taken.
     let found = number(width, "value");

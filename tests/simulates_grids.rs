@@ -458,14 +458,33 @@ fn the_command_says_what_it_wrote_and_takes_its_settings_again() {
 fn a_simulated_map_is_mapped_as_it_is() {
     let folder = Folder::new();
     let run = folder.inrush(&[
-        "simulate", "grid", "--out", "sky", "--columns", "5", "--rows", "5", "--v-in-km-s", "0.5",
-        "--beam-arcsec", "26,22", "--write", "both", "--signal-to-noise", "60", "--quiet",
+        "simulate",
+        "grid",
+        "--out",
+        "sky",
+        "--columns",
+        "5",
+        "--rows",
+        "5",
+        "--v-in-km-s",
+        "0.5",
+        "--beam-arcsec",
+        "26,22",
+        "--write",
+        "both",
+        "--signal-to-noise",
+        "60",
+        "--quiet",
     ]);
     assert_eq!(run.code, 0, "{}", run.stderr);
     for (sheet, out) in [("sky/map.toml", "of-table"), ("sky/cubes.toml", "of-cubes")] {
         let run = folder.inrush(&["map", sheet, "--out", out, "--formal", "--no-figures"]);
         assert_eq!(run.code, 0, "{sheet}: {}", run.stderr);
-        assert!(run.stderr.contains("25 of 25 pointings fitted"), "{}", run.stderr);
+        assert!(
+            run.stderr.contains("25 of 25 pointings fitted"),
+            "{}",
+            run.stderr
+        );
     }
     // One map, two ways: the same beam and place, pixels in another order.
     let beam = |out: &str| {

@@ -75,9 +75,7 @@ impl SpeedProfile {
             SpeedTrend::Constant => "Fitted inward speeds do not change with radius",
             SpeedTrend::RisingInward => "Fitted inward speeds rise inward",
             SpeedTrend::FallingInward => "Fitted inward speeds fall inward",
-            SpeedTrend::Untold => {
-                "Fitted inward speeds do not tell one speed from free fall"
-            }
+            SpeedTrend::Untold => "Fitted inward speeds do not tell one speed from free fall",
         };
         format!(
             "{found} (chi2 higher by {:.1} at one speed and by {:.1} in free fall than at the best slope). On simulated maps of clumps of 2 to 3.5 beams radius such slopes are the same for gas at one speed and in free fall: they say nothing of the gas.",

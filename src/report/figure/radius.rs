@@ -62,16 +62,15 @@ impl RadiusFigure {
             leading_mm(NOTE) * lines as f64 + 1.0
         };
         let below = HEIGHT_BELOW_MM + GAP_MM;
-        let heights = self.panels.iter().map(|one| heading_mm(one) + FRAME_MM + below);
+        let heights = self
+            .panels
+            .iter()
+            .map(|one| heading_mm(one) + FRAME_MM + below);
         let height = TOP_MM + heights.sum::<f64>();
         page(WIDTH_MM, height, &self.title, |canvas| {
             canvas.rectangle((0.0, 0.0), (WIDTH_MM, height), PAPER)?;
-            let title = text::shortened(
-                &self.title,
-                RIGHT_MM - LEFT_MM,
-                TITLE.size_pt,
-                TITLE.weight,
-            );
+            let title =
+                text::shortened(&self.title, RIGHT_MM - LEFT_MM, TITLE.size_pt, TITLE.weight);
             canvas.text(&text::plain(&title), (LEFT_MM, 4.6), Align::Start, TITLE)?;
             let mut top = TOP_MM;
             for panel in &self.panels {

@@ -159,9 +159,7 @@ impl<'a> MapMaker<'a> {
             None => MapCells::Points {
                 step_arcsec: work.field.step_arcsec(),
                 points: (values.iter().enumerate())
-                    .filter_map(|(site, value)| {
-                        Some((work.field.offsets_arcsec(site)?, *value))
-                    })
+                    .filter_map(|(site, value)| Some((work.field.offsets_arcsec(site)?, *value)))
                     .collect(),
             },
         };

@@ -80,8 +80,7 @@ pub(super) fn write(
         }
     }
     let panels: Vec<RadiusPanel> = [
-        (diagnosis.spot.as_ref().ok())
-            .map(|spot| moment_panel(diagnosis, spot, &found.pointings)),
+        (diagnosis.spot.as_ref().ok()).map(|spot| moment_panel(diagnosis, spot, &found.pointings)),
         (diagnosis.speed.as_ref().ok())
             .map(|speed| speed_panel(work, diagnosis, speed, &found.pointings)),
     ]
@@ -115,7 +114,11 @@ fn against_radius<'a>(
     let [x, y] = diagnosis.centre.at_arcsec;
     pointings.iter().filter_map(move |one| {
         let from = [one.at_arcsec[0] - x, one.at_arcsec[1] - y];
-        Some((from, from[0].hypot(from[1]), of(one).filter(|one| one.err > 0.0)?))
+        Some((
+            from,
+            from[0].hypot(from[1]),
+            of(one).filter(|one| one.err > 0.0)?,
+        ))
     })
 }
 
@@ -148,7 +151,9 @@ fn moment_panel(
     let (centre, farthest) = (spot.v_centre_km_s.value, farthest(&points));
     RadiusPanel {
         label: "first moment (km/s)".to_owned(),
-        curves: vec![curve("fit", farthest, |radius| centre + slope.value * radius)],
+        curves: vec![curve("fit", farthest, |radius| {
+            centre + slope.value * radius
+        })],
         notes: vec![format!(
             "thick line, its plane taken off: rises outward by {} km/s/arcsec ({:.1}\u{3c3})",
             rounded(slope.value, slope.err),
@@ -170,15 +175,19 @@ fn speed_panel(
         .collect();
     let farthest = farthest(&points);
     let constant = speed.constant_km_s.value;
-    let beam_arcsec = (work.field.beam())
-        .map_or(0.0, |beam| (beam.major_arcsec * beam.minor_arcsec).sqrt());
+    let beam_arcsec =
+        (work.field.beam()).map_or(0.0, |beam| (beam.major_arcsec * beam.minor_arcsec).sqrt());
     let slope = format!("r^-q, q = {}", rounded(speed.slope.value, speed.slope.err));
     RadiusPanel {
         label: "adopted inward speed (km/s)".to_owned(),
         curves: vec![
-            curve(&slope.replace('-', "\u{2212}").replace("+\u{2212}", "\u{b1}"), farthest, |radius| {
-                speed.at(radius, beam_arcsec)
-            }),
+            curve(
+                &slope
+                    .replace('-', "\u{2212}")
+                    .replace("+\u{2212}", "\u{b1}"),
+                farthest,
+                |radius| speed.at(radius, beam_arcsec),
+            ),
             curve("one speed", farthest, |_| constant),
         ],
         notes: vec![

@@ -4,7 +4,7 @@
 use super::super::RunError;
 use super::pointing::{Motions, Work};
 use crate::grid::{
-    Centre, CentralSpot, Diagnosis, Gradient, GridError, Parity, PointingMotions, SpeedProfile,
+    CentralSpot, Centre, Diagnosis, Gradient, GridError, Parity, PointingMotions, SpeedProfile,
     centre, clump_maps, diagnose, noise_width_arcsec,
 };
 use crate::numeric::Estimate;
@@ -89,8 +89,9 @@ const NOISE_PAIRS: usize = 48;
 /// 0 for independent ones. The wider of both lines' counts.
 fn noise_width(work: &Work<'_>, fitted: &[usize]) -> Result<f64, RunError> {
     let step = work.field.step_arcsec();
-    let half_beam = (work.field.beam())
-        .map_or(step, |beam| 0.5 * (beam.major_arcsec * beam.minor_arcsec).sqrt());
+    let half_beam = (work.field.beam()).map_or(step, |beam| {
+        0.5 * (beam.major_arcsec * beam.minor_arcsec).sqrt()
+    });
     let apart = half_beam.max(step);
     let mut lines = [NoisePairs::default(), NoisePairs::default()];
     let every = fitted.len().div_ceil(NOISE_PAIRS).max(1);
@@ -107,7 +108,10 @@ fn noise_width(work: &Work<'_>, fitted: &[usize]) -> Result<f64, RunError> {
         lines[0].take(distance, &one.0, &two.0);
         lines[1].take(distance, &one.1, &two.1);
     }
-    Ok(lines.iter().map(NoisePairs::width_arcsec).fold(0.0, f64::max))
+    Ok(lines
+        .iter()
+        .map(NoisePairs::width_arcsec)
+        .fold(0.0, f64::max))
 }
 
 /// Sums over the line-free channels of pairs of pointings.

@@ -122,8 +122,8 @@ impl Motions {
         let (thick, thin) = (&outcome.thick, &outcome.thin);
         let window = thick.prepared.window;
         let components = thick.line.components.len();
-        let systematic = (thick.line.velocity_systematic_km_s())
-            .hypot(thin.line.velocity_systematic_km_s());
+        let systematic =
+            (thick.line.velocity_systematic_km_s()).hypot(thin.line.velocity_systematic_km_s());
         let of_line = |line| sides(&thick.prepared, line, components, systematic, DETECTION);
         let moment = |range| first_moment(&thick.prepared, range, DETECTION);
         Self {
@@ -208,14 +208,12 @@ impl Work<'_> {
         again: &Again,
         workspace: &mut Workspace,
     ) -> Pointing {
-        let pointing = self
-            .outcome(site, block, again, workspace)
-            .and_then(|outcome| {
-                match outcome {
+        let pointing =
+            self.outcome(site, block, again, workspace)
+                .and_then(|outcome| match outcome {
                     Some(outcome) => self.fitted(site, &outcome, again),
                     None => Ok(Pointing::Blank),
-                }
-            });
+                });
         pointing.unwrap_or_else(|error| self.unusable(site, &error))
     }
 

@@ -5,17 +5,17 @@ use super::super::PairOutcome;
 use super::super::products::make_directory;
 use super::super::{Given, Journal, RunError};
 use super::field::Field;
-use super::motions::{self, MapMotions};
 #[cfg(feature = "figures")]
 use super::final_outcome;
+use super::motions::{self, MapMotions};
 use super::pointing::{Pointing, Work};
 use super::{Found, MapRun, Second};
 #[cfg(feature = "figures")]
 use crate::fit::Workspace;
 use crate::report::files::write_atomically;
 use crate::report::motions as motions_table;
-use crate::report::sky_map::{MapFrame, write_caution_map, write_map};
 use crate::report::motions::{Entry, Part};
+use crate::report::sky_map::{MapFrame, write_caution_map, write_map};
 use crate::report::{Kind, ReportError, Row, TableFiles, Value, columns};
 use std::collections::BTreeMap;
 use std::fs::File;
@@ -91,7 +91,9 @@ pub(super) fn write(
                 values
             }
             Pointing::Fitted {
-                values, motions: of, ..
+                values,
+                motions: of,
+                ..
             } => {
                 counts.fitted += 1;
                 fitted.push(site);
@@ -350,7 +352,9 @@ impl Maps {
         let lines = |keep: &dyn Fn(&&Entry) -> bool| {
             let entries = found.entries.iter().filter(keep);
             let pairs = entries.map(motions_table::line);
-            pairs.map(|(name, text)| (name, Value::from(text))).collect::<Vec<_>>()
+            pairs
+                .map(|(name, text)| (name, Value::from(text)))
+                .collect::<Vec<_>>()
         };
         let mut frame = MapFrame {
             width,
