@@ -93,10 +93,7 @@ pub fn text(rows: &[Row], counts: (usize, usize), quantity: Quantity, top: usize
         Quantity::Rate => "mass infall rate",
         Quantity::Speed => "inward speed",
     };
-    let mut text = format!(
-        "Ranking of {} sources, by expected {by}\n\n",
-        counts.0
-    );
+    let mut text = format!("Ranking of {} sources, by expected {by}\n\n", counts.0);
     let head = [
         "rank",
         "68 %",
