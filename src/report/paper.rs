@@ -197,7 +197,7 @@ fn interval(row: &Row, name: &str) -> Result<String, ReportError> {
     Ok(match (at("")?, at("_lo68")?, at("_hi68")?) {
         (Some(value), Some(low), Some(high)) => mathematics(&rounded_interval(value, low, high)),
         (Some(value), ..) => {
-            let err = row.get(&format!("{name}_err")).ok().and_then(Value::number);
+            let err = row.find(&format!("{name}_err")).and_then(Value::number);
             mathematics(&rounded(value, err.unwrap_or(f64::NAN)))
         }
         _ => NO_DATA.to_owned(),

@@ -142,7 +142,7 @@ pub fn text(rows: &[Row], counts: (usize, usize), quantity: Quantity, top: usize
 }
 
 fn cells_of(row: &Row) -> [String; 7] {
-    let get = |name: &str| row.get(name).unwrap_or(&Value::Empty);
+    let get = |name: &str| row.find(name).unwrap_or(&Value::Empty);
     let integer = |name: &str| match get(name) {
         Value::Integer(number) => number.to_string(),
         _ => "-".to_owned(),
