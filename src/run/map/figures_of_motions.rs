@@ -62,19 +62,19 @@ pub(super) fn write(
             (
                 "even",
                 "less its odd part",
-                "what is left is even: of one sign all around for infall",
+                Some("blue: as infall makes it"),
                 less(&|at| parity.odd_at(at)),
             ),
             (
                 "odd",
                 "less its even part",
-                "what is left is odd: rotation or an outflow",
+                None,
                 less(&|[east, north]| parity.even_at(east.hypot(north))),
             ),
         ];
         for (part, taken_off, note, values) in parts {
             let label = format!("{words}, {taken_off}");
-            let figure = maker.figure(&label, Some(note), colours, values);
+            let figure = maker.figure(&label, note, colours, values);
             let name = format!("{name}_{part}");
             written.extend(write_figure(&folder, &name, &figure.svg()?, MAP_PX)?);
         }
