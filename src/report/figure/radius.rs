@@ -139,7 +139,7 @@ impl RadiusPanel {
                 low: *radius,
                 high: *radius,
             };
-            frame.point(canvas, (at, *value), 4, false)?;
+            frame.point(canvas, (at, *value), 0, true)?;
         }
         for (index, curve) in self.curves.iter().enumerate() {
             let points: Vec<(f64, f64)> = (curve.points.iter())

@@ -97,6 +97,13 @@ pub(super) fn write(
     Ok(())
 }
 
+/// As figures write it.
+fn shown(estimate: Estimate) -> String {
+    rounded(estimate.value, estimate.err)
+        .replace("+-", "\u{b1}")
+        .replace('-', "\u{2212}")
+}
+
 fn interval(estimate: Estimate) -> Interval {
     Interval {
         value: estimate.value,
@@ -155,8 +162,8 @@ fn moment_panel(
             centre + slope.value * radius
         })],
         notes: vec![format!(
-            "thick line, its plane taken off: rises outward by {} km/s/arcsec ({:.1}\u{3c3})",
-            rounded(slope.value, slope.err),
+            "its plane taken off; slope {} km/s/arcsec ({:.1}\u{3c3})",
+            shown(slope),
             spot.significance
         )],
         points,
@@ -177,14 +184,11 @@ fn speed_panel(
     let constant = speed.constant_km_s.value;
     let beam_arcsec =
         (work.field.beam()).map_or(0.0, |beam| (beam.major_arcsec * beam.minor_arcsec).sqrt());
-    let slope = format!("r^-q, q = {}", rounded(speed.slope.value, speed.slope.err));
     RadiusPanel {
         label: "adopted inward speed (km/s)".to_owned(),
         curves: vec![
             curve(
-                &slope
-                    .replace('-', "\u{2212}")
-                    .replace("+\u{2212}", "\u{b1}"),
+                &format!("slope q = {}", shown(speed.slope)),
                 farthest,
                 |radius| speed.at(radius, beam_arcsec),
             ),
