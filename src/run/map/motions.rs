@@ -201,14 +201,20 @@ fn entries(
 struct Entries(Vec<Entry>);
 
 impl Entries {
-    fn push(&mut self, part: Part, (quantity, column): (&str, &'static str)) -> &mut Entry {
+    fn push(
+        &mut self,
+        part: Part,
+        (quantity, column): (&str, &'static str),
+        (label, unit): (&str, &'static str),
+        estimate: Option<Estimate>,
+    ) -> &mut Entry {
         self.0.push(Entry {
             part,
             quantity: quantity.to_owned(),
             column,
-            label: String::new(),
-            unit: "",
-            estimate: None,
+            label: label.to_owned(),
+            unit,
+            estimate,
             significance: None,
             fit: None,
             words: String::new(),
@@ -218,13 +224,13 @@ impl Entries {
     }
 
     fn words(&mut self, part: Part, quantity: &str, words: &str) {
-        words.clone_into(&mut self.push(part, (quantity, "")).words);
+        let entry = self.push(part, (quantity, ""), ("", ""), None);
+        words.clone_into(&mut entry.words);
     }
 
     /// What could not be read, and why.
     fn none(&mut self, part: Part, names: (&str, &'static str), label: &str, error: &GridError) {
-        let entry = self.push(part, names);
-        label.clone_into(&mut entry.label);
+        let entry = self.push(part, names, (label, ""), None);
         entry.words = format!("not read: {error}");
     }
 
@@ -236,23 +242,29 @@ impl Entries {
         .into_iter()
         .enumerate()
         {
-            let entry = self.push(Part::Ground, (quantity, "integral_thin_k_km_s"));
-            entry.label = label.to_owned();
-            entry.unit = "arcsec";
-            entry.estimate = Some(Estimate {
+            let estimate = Some(Estimate {
                 value: centre.at_arcsec[axis],
                 err: centre.covariance[axis][axis].sqrt(),
             });
+            self.push(
+                Part::Ground,
+                (quantity, "integral_thin_k_km_s"),
+                (label, "arcsec"),
+                estimate,
+            );
         }
-        let entry = self.push(Part::Ground, ("noise_width_arcsec", ""));
-        entry.label = "noise goes together over".to_owned();
-        entry.unit = "arcsec";
-        entry.estimate = Some(Estimate {
+        let estimate = Some(Estimate {
             value: noise_fwhm_arcsec,
             err: 0.0,
         });
+        let entry = self.push(
+            Part::Ground,
+            ("noise_width_arcsec", ""),
+            ("noise goes together over", "arcsec"),
+            estimate,
+        );
         if noise_fwhm_arcsec == 0.0 {
-            entry.words = "the noise of neighbouring pointings is independent".to_owned();
+            "the noise of neighbouring pointings is independent".clone_into(&mut entry.words);
         }
     }
 
@@ -276,28 +288,35 @@ impl Entries {
         let size = found.size_km_s_arcsec;
         let fit = Some((found.chi2_reduced, found.readings));
         let quantity = format!("{name}_km_s_arcsec");
-        let entry = self.push(Part::Gradient, (&quantity, column));
-        entry.label = line.to_owned();
-        entry.unit = "km/s/arcsec";
-        entry.estimate = Some(size);
+        let entry = self.push(
+            Part::Gradient,
+            (&quantity, column),
+            (line, "km/s/arcsec"),
+            Some(size),
+        );
         entry.significance = Some(found.significance);
         entry.fit = fit;
         if let Some(distance) = distance_kpc {
             let per_pc = ARCSEC_PER_RADIAN / (distance.value * PC_PER_KPC);
             let relative = (size.err / size.value).hypot(distance.err / distance.value);
-            let entry = self.push(Part::Gradient, (&format!("{name}_km_s_pc"), column));
-            entry.label = "  at the distance".to_owned();
-            entry.unit = "km/s/pc";
-            entry.estimate = Some(Estimate {
+            let estimate = Estimate {
                 value: size.value * per_pc,
                 err: size.value * per_pc * relative,
-            });
+            };
+            let entry = self.push(
+                Part::Gradient,
+                (&format!("{name}_km_s_pc"), column),
+                ("  at the distance", "km/s/pc"),
+                Some(estimate),
+            );
             entry.fit = fit;
         }
-        let entry = self.push(Part::Gradient, (&format!("{name}_angle_deg"), column));
-        entry.label = "  recedes toward".to_owned();
-        entry.unit = "deg";
-        entry.estimate = Some(found.angle_deg);
+        let entry = self.push(
+            Part::Gradient,
+            (&format!("{name}_angle_deg"), column),
+            ("  recedes toward", "deg"),
+            Some(found.angle_deg),
+        );
         entry.fit = fit;
     }
 
@@ -342,10 +361,12 @@ impl Entries {
                 None,
             ),
         ] {
-            let entry = self.push(Part::Parity, (&format!("{name}_{part}"), column));
-            entry.label = label;
-            entry.unit = unit;
-            entry.estimate = Some(estimate);
+            let entry = self.push(
+                Part::Parity,
+                (&format!("{name}_{part}"), column),
+                (&label, unit),
+                Some(estimate),
+            );
             entry.significance = significance;
             entry.fit = Some((found.chi2_reduced, found.readings));
         }
@@ -372,10 +393,7 @@ impl Entries {
                 Some(found.significance),
             ),
         ] {
-            let entry = self.push(Part::Spot, (quantity, ""));
-            entry.label = label.to_owned();
-            entry.unit = unit;
-            entry.estimate = Some(estimate);
+            let entry = self.push(Part::Spot, (quantity, ""), (label, unit), Some(estimate));
             entry.significance = significance;
             entry.fit = Some((found.chi2_reduced, found.readings));
         }
@@ -423,10 +441,12 @@ impl Entries {
                 plain(found.chi2_over_free_fall),
             ),
         ] {
-            let entry = self.push(Part::Speed, (quantity, column));
-            entry.label = label.to_owned();
-            entry.unit = unit;
-            entry.estimate = Some(estimate);
+            let entry = self.push(
+                Part::Speed,
+                (quantity, column),
+                (label, unit),
+                Some(estimate),
+            );
             entry.fit = Some((found.chi2_reduced, found.readings));
         }
     }
