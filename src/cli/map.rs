@@ -115,7 +115,7 @@ pub fn run(
             for problem in &counts.problems {
                 Output::warning(problem);
             }
-            Output::data(&motions).map_err(inrush::report::ReportError::Stream)?;
+            Output::data(&motions)?;
             output.note(&format!(
                 "wrote {} files into {}",
                 written.len(),
