@@ -359,7 +359,8 @@ fn files_are_the_same_for_any_number_of_threads_and_from_their_settings() {
         .iter()
         .filter_map(|name| name.strip_prefix("one/").map(str::to_owned))
         .collect();
-    assert_eq!(names.len(), 5 + 50);
+    // tables, settings, run sheets and cubes, and the spectra
+    assert_eq!(names.len(), 7 + 50);
     for name in names {
         for other in ["three", "again"] {
             let one = folder.read(&format!("one/{name}"));
