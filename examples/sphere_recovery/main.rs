@@ -286,7 +286,8 @@ fn trial_settings(settings: &ClumpSettings, line: &Line) -> ClumpSettings {
     if let Some(v) = get("EXC_M") { p.excess_slope.mean = v; }
     if let Some(v) = get("RES_D") { p.opacity_response.deviation = v; }
     if let Some(v) = get("RES_M") { p.opacity_response.mean = v; }
-    if let Some(v) = get("THIN_D") { p.thin_slope.deviation = v; }
+    if let Some(v) = get("THIN_D") { p.shared_trapping.deviation = v; }
+    if let Some(v) = get("THIN_M") { p.shared_trapping.mean = v; }
     if let Some(v) = get("THIN_S") { p.thin_scale = v; }
     if let Some(v) = get("A_D") { p.opacity_slope.deviation = v; }
     if let Some(v) = get("A_M") { p.opacity_slope.mean = v; }
@@ -305,6 +306,7 @@ fn trial_settings(settings: &ClumpSettings, line: &Line) -> ClumpSettings {
     if let Some(v) = get("SPREAD") { s.sampling.spread = v as usize; }
     if let Some(v) = get("WIDER") { s.sampling.wider = v; }
     if let Some(v) = get("STEPS") { s.ensemble.steps = v as usize; }
+    if let Some(v) = get("PARTS") { s.ensemble.parts = v as usize; }
     if let Some(v) = get("WALK") { s.ensemble.walkers = v as usize; }
     if let Some(v) = get("SEED") { s.seed = v as u64; }
     s.priors = Some(p);

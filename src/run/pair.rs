@@ -3,8 +3,11 @@
 use super::journal::hexadecimal;
 use super::judge::{PreparedPair, judge, judgement};
 use super::{Judged, LineSection, RunError, RunSheet, VerdictSettings};
-use crate::derive::{DeriveSettings, Derived, FitDraws, SourceProperties, Tracers};
-use crate::fit::clump::{ClumpPosterior, ClumpPosteriors, ClumpSettings, clump_posteriors};
+use crate::derive::{DeriveSettings, Derived, FitDraws, Input, SourceProperties, Tracers};
+use crate::fit::clump::{
+    ClumpPosterior, ClumpPosteriors, ClumpSettings, KnownClump, clump_posteriors,
+};
+use crate::fit::conflict::replaced;
 use crate::fit::hypotheses::Speed;
 use crate::fit::posterior::PosteriorError;
 use crate::fit::{
@@ -125,6 +128,8 @@ pub struct PairOutcome {
     /// Posterior of the collapsing sphere, of the speed law that the pair prefers; `None` where it was not
     /// asked for, or a caution says why not.
     pub sphere: Option<ClumpPosterior>,
+    /// Whether its speed is the adopted one; where it is not, a caution says why.
+    pub sphere_stands: bool,
     /// Cautions, the gravest first.
     pub cautions: Vec<Caution>,
     /// What follows from the fit and the source's properties, with cautions of its own.
@@ -267,7 +272,12 @@ pub(super) fn fit_prepared(
     let judged = (settings.verdict.as_ref())
         .map(|verdict| judge(&prepared, &settings.fit, verdict))
         .transpose()?;
-    let sphere = (settings.sphere.as_ref()).map(|sphere| preferred_sphere(&prepared, sphere));
+    let sphere = (settings.sphere.as_ref()).map(|sphere| preferred_sphere(&prepared, &source, sphere));
+    let unheard = unheard_by_sphere(settings);
+    let standing = sphere.as_ref().and_then(|sphere| sphere.as_ref().ok());
+    let detected = measures.peak_thick_k.is_some();
+    let standing =
+        standing.filter(|sphere| sphere.stands() && detected && unheard.is_empty());
     let mut cautions = cautions(&PairFacts {
         thick: &prepared_thick,
         thin: &prepared_thin,
@@ -275,11 +285,11 @@ pub(super) fn fit_prepared(
         measures: &measures,
         fit: &fit,
         judgement: judgement(judged.as_ref()),
+        sphere: standing,
     });
     if let Some(sphere) = &sphere {
-        cautions.extend(sphere_cautions(sphere.as_ref()));
+        cautions.extend(sphere_cautions(sphere.as_ref(), &unheard));
     }
-    let sphere = sphere.and_then(Result::ok);
     let judged = judged.and_then(Result::ok);
     let averaged = judged.as_ref().and_then(Judged::adopted);
     let described = fit.adopted().or_else(|| layer(&fit));
@@ -292,6 +302,15 @@ pub(super) fn fit_prepared(
         (_, _, None, Some(line)) => FitDraws::of_thin_line(line, &settings.derive),
         (_, _, None, None) => FitDraws::new(settings.derive.draws),
     };
+    let draws = match standing {
+        Some(sphere) => {
+            let with_speed = sphere.speed() != Speed::Unconstrained;
+            draws.with_sphere(sphere, with_speed, &settings.derive)
+        }
+        None => draws,
+    };
+    let sphere_stands = standing.is_some();
+    let sphere = sphere.and_then(Result::ok);
     let tracers = Tracers {
         thick: thick_line,
         thin: thin_line,
@@ -313,6 +332,7 @@ pub(super) fn fit_prepared(
         fit,
         judged,
         sphere,
+        sphere_stands,
         cautions,
         derived,
         source_given: !source.is_empty(),
@@ -322,10 +342,44 @@ pub(super) fn fit_prepared(
 /// The sphere of the speed law that a pair prefers.
 fn preferred_sphere(
     pair: &PreparedPair<'_>,
+    source: &SourceProperties,
     settings: &ClumpSettings,
 ) -> Result<ClumpPosterior, PosteriorError> {
-    clump_posteriors(pair.thick, pair.thin, pair.lines, pair.thin_line, settings)
+    let settings = ClumpSettings {
+        known: known(source, settings.beam_arcsec),
+        ..settings.clone()
+    };
+    clump_posteriors(pair.thick, pair.thin, pair.lines, pair.thin_line, &settings)
         .map(ClumpPosteriors::into_preferred)
+}
+
+/// What a source's properties say of its sphere.
+fn known(source: &SourceProperties, beam_arcsec: Option<f64>) -> KnownClump {
+    let (distance, radius) = (source.get(Input::Distance), source.get(Input::Radius));
+    let beam = match (beam_arcsec, distance, radius) {
+        (Some(beam), Some(distance), Some(radius)) => {
+            Some(KnownClump::beam_over_radius(beam, distance, radius))
+        }
+        _ => None,
+    };
+    KnownClump {
+        t_kin_k: source.get(Input::Kinetic),
+        t_dust_k: source.get(Input::DustTemperature),
+        density_slope: source.get(Input::Slope),
+        beam_over_radius: beam,
+    }
+}
+
+/// Settings of a fit that the sphere knows nothing of, as run sheets name them: with any, its speed is not
+/// the adopted one.
+fn unheard_by_sphere(settings: &PairSettings) -> Vec<String> {
+    let fit = &settings.fit;
+    let given = fit.given.keys().map(|name| format!("given {name}"));
+    let bounds = fit.bounds.keys().map(|name| format!("bounds of {name}"));
+    let priors = (settings.verdict.iter())
+        .flat_map(|verdict| replaced(&verdict.posterior.priors))
+        .map(|(name, _)| format!("priors of {name}"));
+    given.chain(bounds).chain(priors).collect()
 }
 
 /// Without an inward speed, a uniform layer still has a depth and an excitation temperature.
