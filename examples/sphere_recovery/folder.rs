@@ -61,7 +61,11 @@ pub fn print(folder: &str, settings: &ClumpSettings) -> Result<(), Box<dyn Error
     }
     summary("constant", &constant);
     for line in ["HCO+ 1-0", "HCO+ 4-3"] {
-        let some: Vec<Row> = constant.iter().filter(|row| row.line == line).cloned().collect();
+        let some: Vec<Row> = constant
+            .iter()
+            .filter(|row| row.line == line)
+            .cloned()
+            .collect();
         summary(line, &some);
     }
     summary("free fall", &falling);

@@ -2,7 +2,7 @@
 //! noise, against their truth.
 //!
 //! `cargo run --release --example sphere_recovery -- draw FILE PAIRS SEED [constant | free-fall]` makes
-//! noiseless pairs, `... -- judge FILE [PAIRS] [constant | free-fall] [SHAPE_ERROR] [SNR]` adds noise and
+//! noiseless pairs, `... -- trapped` the same of lines that are excited by themselves, `... -- judge FILE [PAIRS] [constant | free-fall] [SHAPE_ERROR] [SNR]` adds noise and
 //! infers, `... -- folder [FOLDER]` takes pairs with a truth.csv such as tests/data/spheres.
 #![allow(
     clippy::print_stdout,
@@ -92,15 +92,6 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
                     Ok(found) => {
                         let row = Row::new(&drawn.thick_line, &found, drawn.v_in_km_s, snr);
                         println!("{index} {} {}", drawn.text(), row.text());
-                        if let Ok(path) = std::env::var("DUMP") {
-                            let mut file = std::fs::OpenOptions::new().create(true).append(true).open(path)?;
-                            let d = &found.posterior.draws;
-                            let mut of = Drawn { velocity_km_s: vec![], thick_k: vec![], thin_k: vec![], ..drawn.clone() };
-                            of.snr = snr;
-                            let kept: Vec<(Vec<f32>, f64)> = d.points.iter().zip(&d.weights).filter(|(_, w)| **w > 1e-7)
-                                .map(|(p, w)| (p[..12].iter().map(|x| *x as f32).collect(), *w)).collect();
-                            writeln!(file, "{}", serde_json::to_string(&(of, kept, found.posterior.ln_evidence, found.posterior.quality.effective))?)?;
-                        }
                         rows.push(row);
                     }
                     Err(error) => println!("{index} {}: {error}", drawn.text()),
@@ -108,7 +99,11 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
             }
             summary("all", &rows);
             for line in ["HCO+ 1-0", "HCO+ 3-2", "HCO+ 4-3", "CS 2-1"] {
-                let some: Vec<Row> = rows.iter().filter(|row| row.line == line).cloned().collect();
+                let some: Vec<Row> = rows
+                    .iter()
+                    .filter(|row| row.line == line)
+                    .cloned()
+                    .collect();
                 if !some.is_empty() {
                     summary(line, &some);
                 }
@@ -150,8 +145,6 @@ fn infer(
         &mut inrush::fit::Workspace::new(),
     )
     .map_err(|error| error.to_string())?;
-    let trial = trial_settings(settings, &lines.0);
-    let settings = &trial;
     let start = Instant::now();
     let posterior = clump_posterior(
         &thick,
@@ -274,41 +267,4 @@ fn summary(name: &str, rows: &[Row]) {
             quantile(&times, 0.5),
         );
     }
-}
-
-/// TRIAL: settings from the environment.
-fn trial_settings(settings: &ClumpSettings, line: &Line) -> ClumpSettings {
-    let mut s = settings.clone();
-    let get = |name: &str| std::env::var(name).ok().and_then(|t| t.parse::<f64>().ok());
-    let ground = line.transition().and_then(|t| t.upper_energy_k).is_some_and(|u| u < 0.06 * line.rest_frequency_ghz);
-    let mut p = inrush::fit::clump::ClumpPriors::of_line(line.rest_frequency_ghz, ground);
-    if let Some(v) = get("EXC_D") { p.excess_slope.deviation = v; }
-    if let Some(v) = get("EXC_M") { p.excess_slope.mean = v; }
-    if let Some(v) = get("RES_D") { p.opacity_response.deviation = v; }
-    if let Some(v) = get("RES_M") { p.opacity_response.mean = v; }
-    if let Some(v) = get("THIN_D") { p.shared_trapping.deviation = v; }
-    if let Some(v) = get("THIN_M") { p.shared_trapping.mean = v; }
-    if let Some(v) = get("THIN_S") { p.thin_scale = v; }
-    if let Some(v) = get("A_D") { p.opacity_slope.deviation = v; }
-    if let Some(v) = get("A_M") { p.opacity_slope.mean = v; }
-    if let Some(v) = get("M_D") { p.temperature_slope.deviation = v; }
-    if let Some(v) = get("M_M") { p.temperature_slope.mean = v; }
-    if let Some(v) = get("COL_D") { p.ln_collision_ratio.deviation = v; }
-    if let Some(v) = get("COL_F") { p.ln_collision_ratio.mean += v.ln(); }
-    if let Some(v) = get("DEP_D") { p.ln_depth.deviation = v; }
-    if let Some(v) = get("DEP_M") { p.ln_depth.mean = v.ln(); }
-    if let Some(v) = get("BEAM_D") { p.ln_beam_over_radius.deviation = v; }
-    if let Some(v) = get("RAT_D") { p.ln_isotope_ratio.deviation = v; }
-    if let Some(v) = get("V_D") { p.v_in_over_sigma.deviation = v; }
-    if let Some(v) = get("SHAPE") { s.shape_error = v; }
-    if let Some(v) = get("ROUNDS") { s.sampling.most_rounds = v as usize; }
-    if let Some(v) = get("ROUND") { s.sampling.round = v as usize; }
-    if let Some(v) = get("SPREAD") { s.sampling.spread = v as usize; }
-    if let Some(v) = get("WIDER") { s.sampling.wider = v; }
-    if let Some(v) = get("STEPS") { s.ensemble.steps = v as usize; }
-    if let Some(v) = get("PARTS") { s.ensemble.parts = v as usize; }
-    if let Some(v) = get("WALK") { s.ensemble.walkers = v as usize; }
-    if let Some(v) = get("SEED") { s.seed = v as u64; }
-    s.priors = Some(p);
-    s
 }

@@ -106,7 +106,15 @@ fn attempt(random: &mut ChaCha8Rng, velocity_slope: f64) -> Result<Option<Drawn>
         fwhm_pc: beam_over_radius * outer_radius_pc,
         offset_pc: 0.0,
     };
-    let thick_k = spectrum(&clump, &molecule, transition, (depth, &t_ex), recipe, beam, &near)?;
+    let thick_k = spectrum(
+        &clump,
+        &molecule,
+        transition,
+        (depth, &t_ex),
+        recipe,
+        beam,
+        &near,
+    )?;
     let thin = (depth / ratio, &thin_t_ex[..]);
     let thin_k = spectrum(&clump, &rare, transition, thin, recipe, beam, &near)?;
     let wanted = Wanted {

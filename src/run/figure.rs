@@ -289,10 +289,7 @@ fn figure_numbers(outcome: &PairOutcome) -> Vec<(String, String)> {
         }
         let slabs = slabs.as_ref().filter(|_| sphere);
         if let Some(v_in) = slabs.and_then(|slabs| slabs.marginal("v_in_km_s")) {
-            numbers.push((
-                "slabs, as in the literature".to_owned(),
-                interval(&v_in),
-            ));
+            numbers.push(("slabs, as in the literature".to_owned(), interval(&v_in)));
         }
     }
     if let Some(judged) = judged.filter(|_| slabs.is_some()) {

@@ -272,12 +272,12 @@ pub(super) fn fit_prepared(
     let judged = (settings.verdict.as_ref())
         .map(|verdict| judge(&prepared, &settings.fit, verdict))
         .transpose()?;
-    let sphere = (settings.sphere.as_ref()).map(|sphere| preferred_sphere(&prepared, &source, sphere));
+    let sphere =
+        (settings.sphere.as_ref()).map(|sphere| preferred_sphere(&prepared, &source, sphere));
     let unheard = unheard_by_sphere(settings);
     let standing = sphere.as_ref().and_then(|sphere| sphere.as_ref().ok());
     let detected = measures.peak_thick_k.is_some();
-    let standing =
-        standing.filter(|sphere| sphere.stands() && detected && unheard.is_empty());
+    let standing = standing.filter(|sphere| sphere.stands() && detected && unheard.is_empty());
     let mut cautions = cautions(&PairFacts {
         thick: &prepared_thick,
         thin: &prepared_thin,

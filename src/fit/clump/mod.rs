@@ -14,10 +14,10 @@ pub use known::KnownClump;
 pub use priors::{ClumpPriors, Normal};
 pub use residuals::{ClumpResiduals, LineResiduals, Misfit};
 
+use super::hypotheses::Speed;
 use super::posterior::{
     Choice, Interval, Kinematics, PairData, PosteriorError, distinct, interval,
 };
-use super::hypotheses::Speed;
 use super::{Averaging, FitRange};
 use crate::constants::photon_temperature_k;
 use crate::line::Line;
@@ -105,11 +105,10 @@ impl Default for ClumpSettings {
             ensemble: EnsembleSettings {
                 walkers: 48,
                 steps: 120,
-                parts: 4,
             },
             sampling: ImportanceSettings {
                 round: 500,
-                most_rounds: 8,
+                most_rounds: 12,
                 wider: 1.6,
                 ..ImportanceSettings::default()
             },

@@ -41,11 +41,7 @@ pub(super) fn kinematics(
 }
 
 /// Shape errors of a prepared line: about its intensity, a share of its peak.
-pub(super) fn shape_errors(
-    prepared: &Prepared,
-    share: f64,
-    gas: Kinematics,
-) -> ShapeErrors {
+pub(super) fn shape_errors(prepared: &Prepared, share: f64, gas: Kinematics) -> ShapeErrors {
     let about = intensity(prepared);
     let (spectrum, window) = (&prepared.spectrum, prepared.window);
     let inside = spectrum

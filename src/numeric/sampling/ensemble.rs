@@ -13,8 +13,6 @@ pub struct EnsembleSettings {
     pub walkers: usize,
     /// Steps of each; those of the second half count.
     pub steps: usize,
-    /// Components that the mass about a peak is described by, at most.
-    pub parts: usize,
 }
 
 /// Peaks lower than the highest by more than this get no walkers.
@@ -26,11 +24,7 @@ const JUMP: usize = 6;
 /// Fewest points that a scatter is measured from, a coordinate.
 const FEWEST: usize = 8;
 
-/// How often the components are fitted to where walkers were.
-const REFITS: usize = 6;
-
-/// Centres and scatters of the mass about each peak after walkers that started from its curvature have
-/// settled.
+/// Mean and scatter about each peak after walkers that started from its curvature have settled.
 ///
 /// Differential evolution (ter Braak 2006, doi:10.1007/s11222-006-8769-1): a walker tries to move along
 /// the difference of two others. `peaks` are distinct, the highest first; those that keep no walkers are
@@ -119,41 +113,12 @@ pub fn settle(
         }
     }
     (0..about.len())
-        .flat_map(|of| {
+        .filter_map(|of| {
             let points: Vec<&(Point, f64, usize)> =
                 visited.iter().filter(|point| point.2 == of).collect();
-            let enough = points.len() >= FEWEST * dimensions;
-            let whole = enough.then(|| measured(dimensions, &points));
-            whole.map_or_else(Vec::new, |whole| {
-                divided(dimensions, &whole, &points, settings.parts)
-            })
+            (points.len() >= FEWEST * dimensions).then(|| measured(dimensions, &points))
         })
         .collect()
-}
-
-/// A peak's mass in parts: it bends where opacity, excitation and speed can stand for each other.
-fn divided(
-    dimensions: usize,
-    whole: &Peak,
-    points: &[&(Point, f64, usize)],
-    parts: usize,
-) -> Vec<Peak> {
-    if parts < 2 {
-        return vec![*whole];
-    }
-    let seeds = (0..parts).map(|part| points[part * points.len() / parts].0);
-    let mut mixture = StudentMixture::new(dimensions, seeds.map(|point| (point, whole.scatter)));
-    let weights = vec![1.0 / points.len() as f64; points.len()];
-    let points: Vec<Point> = points.iter().map(|point| point.0).collect();
-    for _ in 0..REFITS {
-        mixture = mixture.refitted(&points, &weights);
-    }
-    let parts = mixture.parts().map(|(point, scatter)| Peak {
-        point,
-        scatter,
-        ..*whole
-    });
-    parts.collect()
 }
 
 /// The peak whose centre is nearest in units of its own widths.

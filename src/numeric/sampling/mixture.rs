@@ -239,12 +239,6 @@ impl StudentMixture {
         });
     }
 
-    /// Centre and scatter of each component.
-    pub fn parts(&self) -> impl Iterator<Item = (Point, Matrix)> {
-        let components = self.components.iter();
-        components.map(|component| (component.centre, component.scatter))
-    }
-
     /// Number of components.
     #[must_use]
     pub fn len(&self) -> usize {

@@ -120,7 +120,7 @@ fn marginal(
         (part.interval68_km_s, POSTERIOR_68),
     ] {
         let inside: Vec<(f64, f64)> = part
-            .averaged
+            .adopted
             .iter()
             .filter(|(v, _)| (from..=to).contains(v))
             .map(at)
