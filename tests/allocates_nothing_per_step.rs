@@ -6,7 +6,7 @@
     reason = "an allocator is unsafe by its trait; this one hands every call on to the system's"
 )]
 
-use inrush::fit::{Averaging, Channels, FitSettings, JointProblem, Layout};
+use inrush::fit::{self, Averaging, Channels, FitSettings, JointProblem, Layout};
 use inrush::line::{Line, find};
 use inrush::model::{LineShape, Model, Sampling};
 use inrush::numeric::least_squares::{Descent, Interval, Settings, Workspace};
@@ -200,4 +200,49 @@ fn no_step_of_any_model_allocates() {
         }
     }
     assert!(longest >= 10, "{longest} steps are no search");
+}
+
+/// The whole search of a pair, with a workspace that has served before: what it allocates is for the pair and its
+/// starts. The 200 candidates of each model alone are more than its calls, and more evaluations make no more of them.
+#[test]
+fn a_search_allocates_neither_by_candidate_nor_by_evaluation() {
+    let line = |name| find(name).expect("a built-in line");
+    let lines = (line("HCO+ 1-0"), line("H13CO+ 1-0"));
+    let settings = FitSettings::default();
+    let mut workspace = fit::Workspace::new();
+    let mut found = Vec::new();
+    for v_in in [0.02, 0.05, 0.1, 0.2, 0.3, 0.4, 0.6] {
+        for tau in [0.5, 1.0, 2.0, 4.0, 8.0] {
+            let thick = [0.1, 0.5, v_in, tau, 15.0];
+            let thick = prepared(Model::Hill, &lines.0, &thick, Autoregression::white());
+            let thin = [0.1, 0.5, 2.0];
+            let thin = prepared(Model::Gaussian, &lines.1, &thin, Autoregression::white());
+            let lines = (&lines.0, &lines.1);
+            let mut search = || {
+                fit::fit_pair(&thick, &thin, lines, None, &settings, &mut workspace).expect("a fit")
+            };
+            search();
+            let (calls, pair) = allocations(search);
+            assert!(calls < 2 * 200, "{calls}");
+            let evaluations = pair
+                .models
+                .iter()
+                .map(|model| model.evaluations)
+                .sum::<usize>();
+            found.push((evaluations as f64, calls as f64));
+        }
+    }
+    let count = found.len() as f64;
+    let mean = |of: fn(&(f64, f64)) -> f64| found.iter().map(of).sum::<f64>() / count;
+    let (evaluations, calls) = (mean(|pair| pair.0), mean(|pair| pair.1));
+    let moment = |of: fn(f64, f64) -> f64| -> f64 {
+        (found.iter())
+            .map(|pair| of(pair.0 - evaluations, pair.1 - calls))
+            .sum()
+    };
+    let scatter = (moment(|x, _| x * x) / count).sqrt();
+    assert!(scatter > 10.0, "{scatter} evaluations tell nothing");
+    // one call an evaluation would make it 1; with scatter / sqrt(35) that is many errors away
+    let slope = moment(|x, y| x * y) / moment(|x, _| x * x);
+    assert!(slope < 0.5, "{slope} calls an evaluation");
 }

@@ -116,13 +116,7 @@ fn a_sample_becomes_a_ranking_with_every_result_column_and_reasons() {
             .zip(expected)
             .all(|(a, b)| a == b)
     );
-    // grade by grade, within a grade by what is certain of the rate
-    let grade = |row: &Cells| match number(row, "p_infall") {
-        0.95.. => 0,
-        0.5.. => 1,
-        0.05.. => 2,
-        _ => 3,
-    };
+    let expected = |row: &Cells| number(row, "mass_rate_expected_msun_yr");
     assert_eq!(ranking.len(), 7);
     for (place, row) in (1..).zip(&ranking) {
         assert_eq!(row["rank"], place.to_string());
@@ -132,7 +126,7 @@ fn a_sample_becomes_a_ranking_with_every_result_column_and_reasons() {
         assert!(1.0 <= low && low <= high && high <= 7.0);
     }
     for pair in ranking.windows(2) {
-        assert!(grade(&pair[0]) <= grade(&pair[1]));
+        assert!(expected(&pair[0]) >= expected(&pair[1]));
     }
     // two of the sources are among the first two
     let all: f64 = ranking.iter().map(|row| number(row, "p_top")).sum();

@@ -11,15 +11,17 @@ mod sources;
 
 use sources::{Held, correlation, held, pool};
 
-/// Of these sources, 70 % fall in. The order puts grades of p_infall before rates: 0.83 was measured on these 100, 0.84 on
-/// 200, below the 0.9 that was wanted (docs/validation.md). This holds what is there.
+/// Samples of 200 that all fall in have a mean correlation of 0.94, those of which 70 % do one of 0.91; samples of 100
+/// scatter about it by some 0.03 (docs/validation.md).
 #[test]
 fn ranks_follow_true_rates() {
-    let (pool, failed) = pool(100, 0.7).unwrap();
-    assert!(failed <= 3, "{failed}");
-    let all: Vec<usize> = (0..pool.len()).collect();
-    let found = correlation(&pool, &all);
-    assert!(found > 0.8, "{found}");
+    for (infall, least) in [(1.0, 0.9), (0.7, 0.85)] {
+        let (pool, failed) = pool(100, infall).unwrap();
+        assert!(failed <= 3, "{failed}");
+        let all: Vec<usize> = (0..pool.len()).collect();
+        let found = correlation(&pool, &all);
+        assert!(found > least, "{found} where {infall} fall in");
+    }
 }
 
 #[test]

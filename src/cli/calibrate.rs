@@ -74,9 +74,7 @@ pub fn run(
         calibrated.map_err(|error| error.of_sheet(arguments.pair.sheet()))?;
     tell(&outcome, &sheet, output);
     let text = if arguments.json {
-        let mut bytes = Vec::new();
-        report::write_json(&json_row(&calibration)?, &mut bytes)?;
-        String::from_utf8(bytes).map_err(|error| RunError::Internal(error.to_string()))?
+        report::json(&json_row(&calibration)?)?
     } else {
         calibration_summary(&calibration)
     };
@@ -84,10 +82,7 @@ pub fn run(
         Some(directory) => write_calibration(&calibration, &outcome, &sheet, &base, directory)?,
         None => Vec::new(),
     };
-    Output::data(&text).map_err(|source| RunError::File {
-        path: PathBuf::from("stdout"),
-        source,
-    })?;
+    Output::data(&text)?;
     if let Some(directory) = &arguments.out {
         output.wrote(&written, directory);
     }

@@ -57,10 +57,7 @@ pub fn run(arguments: &CheckArguments) -> Result<Exit, RunError> {
         for (section, which, path, settings) in inputs {
             checked += 1;
             match check_file(&section, which, &path, &settings) {
-                Ok(check) => Output::data(&described(&check)).map_err(|source| RunError::File {
-                    path: PathBuf::from("stdout"),
-                    source,
-                })?,
+                Ok(check) => Output::data(&described(&check))?,
                 Err(error) => {
                     unusable += 1;
                     report(&error);

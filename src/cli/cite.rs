@@ -3,7 +3,6 @@
 use super::Exit;
 use super::output::Output;
 use clap::Args;
-use inrush::report::ReportError;
 use inrush::run::{RunError, cite_all, cite_columns, cite_results};
 use std::path::PathBuf;
 
@@ -44,7 +43,7 @@ pub fn run(arguments: &CiteArguments) -> Result<Exit, RunError> {
     } else {
         format!("{}\n{}", wrapped(&citation.paragraph), citation.bibtex)
     };
-    Output::data(&text).map_err(ReportError::Stream)?;
+    Output::data(&text)?;
     Ok(Exit::Done)
 }
 

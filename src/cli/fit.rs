@@ -53,9 +53,7 @@ pub fn run(arguments: &FitArguments, output: &Output) -> Result<Exit, RunError> 
         .map_err(|error| error.of_sheet(arguments.pair.sheet()))?;
     tell(&outcome, &sheet, output);
     let text = if arguments.json {
-        let mut bytes = Vec::new();
-        report::write_json(&pair_row(&outcome)?, &mut bytes)?;
-        String::from_utf8(bytes).map_err(|error| RunError::Internal(error.to_string()))?
+        report::json(&pair_row(&outcome)?)?
     } else {
         pair_summary(&outcome)?
     };
@@ -63,10 +61,7 @@ pub fn run(arguments: &FitArguments, output: &Output) -> Result<Exit, RunError> 
         Some(directory) => write_products(&outcome, &sheet, &base, directory)?,
         None => Vec::new(),
     };
-    Output::data(&text).map_err(|source| RunError::File {
-        path: PathBuf::from("stdout"),
-        source,
-    })?;
+    Output::data(&text)?;
     if let Some(directory) = &arguments.out {
         output.wrote(&written, directory);
     }

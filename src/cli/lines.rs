@@ -6,7 +6,6 @@ use clap::Args;
 use inrush::line::{SourceClass, Transition, search};
 use inrush::run::RunError;
 use std::fmt::Write;
-use std::path::PathBuf;
 
 /// List the built-in transitions.
 ///
@@ -35,10 +34,7 @@ pub fn run(arguments: &LinesArguments) -> Result<Exit, RunError> {
         );
         return Ok(Exit::Unusable);
     }
-    Output::data(&table(&found)).map_err(|source| RunError::File {
-        path: PathBuf::from("stdout"),
-        source,
-    })?;
+    Output::data(&table(&found))?;
     Ok(Exit::Done)
 }
 

@@ -1,6 +1,7 @@
 //! The two streams: data on stdout, messages on stderr. A reader that closes stdout early ends the
 //! program quietly.
 
+use inrush::run::RunError;
 use std::io::{ErrorKind, IsTerminal, Write};
 use std::path::{Path, PathBuf};
 
@@ -17,14 +18,17 @@ impl Output {
     }
 
     /// Data.
-    pub fn data(text: &str) -> std::io::Result<()> {
+    pub fn data(text: &str) -> Result<(), RunError> {
         let mut stdout = std::io::stdout().lock();
         match stdout
             .write_all(text.as_bytes())
             .and_then(|()| stdout.flush())
         {
             Err(error) if error.kind() == ErrorKind::BrokenPipe => Ok(()),
-            result => result,
+            result => result.map_err(|source| RunError::File {
+                path: PathBuf::from("stdout"),
+                source,
+            }),
         }
     }
 

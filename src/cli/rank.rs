@@ -128,12 +128,8 @@ fn tell(ranking: &Ranking, run: &RankRun, output: &Output) -> Result<Exit, RunEr
     for (id, line_pair, failure) in &ranking.failures {
         Output::warning(&format!("{id}, {line_pair}: {}", failure.message));
     }
-    Output::data(&ranking.text).map_err(inrush::report::ReportError::Stream)?;
-    let names: Vec<String> = (ranking.files.paths.iter())
-        .filter_map(|path| Some(path.file_name()?.to_string_lossy().into_owned()))
-        .collect();
-    let (names, directory) = (names.join(", "), run.directory.display());
-    output.note(&format!("wrote {names} into {directory}"));
+    Output::data(&ranking.text)?;
+    output.wrote(&ranking.files.paths, &run.directory);
     Ok(exit(ranking.failures.len() as u64))
 }
 

@@ -7,7 +7,7 @@ use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::{Rng, SeedableRng};
 use std::cmp::Ordering;
 
-/// What sources of one grade are ordered by.
+/// What sources are ordered by.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub enum Quantity {
     /// Mass infall rate.
@@ -26,7 +26,9 @@ impl Quantity {
         }
     }
 
-    pub(super) fn of(self, finding: &Finding) -> Option<&Drawn> {
+    /// Draws of it.
+    #[must_use]
+    pub fn of(self, finding: &Finding) -> Option<&Drawn> {
         match self {
             Self::Rate => finding.rate_msun_yr.as_ref(),
             Self::Speed => finding.v_in_km_s.as_ref(),
@@ -48,6 +50,20 @@ pub fn quantity<'a>(sources: impl IntoIterator<Item = &'a Source>) -> Quantity {
 /// Share of the draws below what counts as certain of a rate or speed: one standard deviation.
 const CERTAIN: f64 = 0.16;
 
+/// What infall into a source brings by expectation: the probability of infall times the mean of the inward draws, in the
+/// quantity's unit; `None` without draws, a detection or a model with an inward speed.
+#[must_use]
+pub fn expected(finding: &Finding, quantity: Quantity) -> Option<f64> {
+    let draws = &quantity.of(finding)?.draws;
+    if draws.is_empty() || finding.grade() == Grade::Unknown {
+        return None;
+    }
+    let inward = || draws.iter().filter(|draw| **draw > 0.0).copied();
+    let count = inward().count().max(1) as f64;
+    let mean = inward().map(f64::from).sum::<f64>() / count;
+    Some(finding.p_infall()? * mean).filter(|value| value.is_finite())
+}
+
 /// What a source surpasses with 84 % probability: the lower end of its 68 % interval.
 pub(super) fn certain(finding: &Finding, quantity: Quantity) -> Option<f64> {
     quantity.of(finding)?.quantile(CERTAIN)
@@ -55,16 +71,15 @@ pub(super) fn certain(finding: &Finding, quantity: Quantity) -> Option<f64> {
 
 /// The order of two sources, the first one first:
 ///
-/// 1. the grade of the probability of infall ([`Grade`]: from 0.95, from 0.5, from 0.05, below, unknown);
-/// 2. the certain part of the rate, the lower end of its 68 % interval, the larger first; one without a
-///    rate stands behind those with one, by the certain part of its speed;
+/// 1. the [`expected`] rate, the larger first;
+/// 2. one without a rate stands behind those with one, by its expected speed;
 /// 3. the name.
 #[must_use]
 pub fn compare(a: &Source, b: &Source, quantity: Quantity) -> Ordering {
     let key = |source: &Source| {
         (
-            certain(&source.finding, quantity),
-            certain(&source.finding, Quantity::Speed),
+            expected(&source.finding, quantity),
+            expected(&source.finding, Quantity::Speed),
         )
     };
     // without one is less than any
@@ -73,8 +88,7 @@ pub fn compare(a: &Source, b: &Source, quantity: Quantity) -> Ordering {
         (a, b) => b.is_some().cmp(&a.is_some()),
     };
     let ((first_a, second_a), (first_b, second_b)) = (key(a), key(b));
-    (a.finding.grade().cmp(&b.finding.grade()))
-        .then_with(|| descending(first_a, first_b))
+    descending(first_a, first_b)
         .then_with(|| descending(second_a, second_b))
         .then_with(|| a.id.cmp(&b.id))
 }

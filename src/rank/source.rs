@@ -113,7 +113,7 @@ impl Finding {
     }
 }
 
-/// How probable infall is, in steps that decide the order before anything else does.
+/// How probable infall is, in words.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord)]
 pub enum Grade {
     /// At least 0.95: 20 times as probable as all else together.

@@ -1,6 +1,6 @@
 //! One sentence a source: why it stands where it stands.
 
-use super::order::{Quantity, certain};
+use super::order::{Quantity, certain, expected};
 use super::source::{Finding, Grade};
 use crate::fit::hypotheses::Hypothesis;
 
@@ -52,23 +52,25 @@ fn graded(finding: &Finding) -> String {
 }
 
 fn surpassed(finding: &Finding, quantity: Quantity) -> String {
-    let rate = |rate: f64| match rate {
-        ..=0.0 => "no mass rate is certain".to_owned(),
-        _ => format!("mass rate above {rate:.1e} Msun/yr at 84 %"),
+    let both = |quantity| Some((expected(finding, quantity)?, certain(finding, quantity)?));
+    let rate = |(expected, certain): (f64, f64)| match certain {
+        ..=0.0 => format!("expected mass rate {expected:.1e} Msun/yr (not one surely inward)"),
+        _ => format!(
+            "expected mass rate {expected:.1e} Msun/yr (above {certain:.1e} at 84 % if it falls in)"
+        ),
     };
-    let speed = |speed: f64| match speed {
-        ..=0.0 => "no inward speed is certain".to_owned(),
-        _ => format!("inward speed above {speed:.2} km/s at 84 %"),
+    let speed = |(expected, certain): (f64, f64)| match certain {
+        ..=0.0 => format!("expected inward speed {expected:.2} km/s (not one surely inward)"),
+        _ => format!(
+            "expected inward speed {expected:.2} km/s (above {certain:.2} at 84 % if it falls in)"
+        ),
     };
-    match (
-        certain(finding, quantity),
-        certain(finding, Quantity::Speed),
-    ) {
-        (Some(value), _) if quantity == Quantity::Rate => rate(value),
-        (_, Some(value)) if quantity == Quantity::Rate => {
-            format!("no mass rate without mass and radius - {}", speed(value))
+    match (both(quantity), both(Quantity::Speed)) {
+        (Some(found), _) if quantity == Quantity::Rate => rate(found),
+        (_, Some(found)) if quantity == Quantity::Rate => {
+            format!("no mass rate without mass and radius - {}", speed(found))
         }
-        (_, Some(value)) => speed(value),
+        (_, Some(found)) => speed(found),
         _ => "the lines hardly constrain the speed".to_owned(),
     }
 }

@@ -29,7 +29,7 @@ mod table_files;
 pub use self::csv::{CsvRows, write_csv};
 pub use ecsv::write_ecsv;
 pub use fits_table::write_fits;
-pub use json::{write_json, write_json_rows};
+pub use json::{json, write_json_rows};
 pub use paper::PaperTable;
 pub use rounding::{rounded, rounded_interval, rounded_plain, rounded_range};
 pub use sentence::verdict_sentences;

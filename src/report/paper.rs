@@ -157,7 +157,7 @@ impl PaperTable {
         text.push_str(&self.lines);
         text.push_str("\\hline\n\\end{tabular}\n\n\\smallskip\n");
         let _ = writeln!(text, "\\footnotesize Notes. {}", self.errors);
-        text.push_str("The rank is by the grade of the probability of infall, then by what is certain of the rate or speed.\n");
+        text.push_str("The rank is by the expected rate or speed: the probability of infall times the mean of the inward draws.\n");
         if self.limits {
             text.push_str(
                 "Behind $<$ stand limits: of a speed at 95\\,\\%, of a rate the upper end of its central 95\\,\\% interval.\n",
@@ -197,7 +197,7 @@ fn interval(row: &Row, name: &str) -> Result<String, ReportError> {
     Ok(match (at("")?, at("_lo68")?, at("_hi68")?) {
         (Some(value), Some(low), Some(high)) => mathematics(&rounded_interval(value, low, high)),
         (Some(value), ..) => {
-            let err = row.get(&format!("{name}_err")).ok().and_then(Value::number);
+            let err = row.find(&format!("{name}_err")).and_then(Value::number);
             mathematics(&rounded(value, err.unwrap_or(f64::NAN)))
         }
         _ => NO_DATA.to_owned(),

@@ -28,6 +28,24 @@ pub fn schema(top: usize) -> Result<Schema, ReportError> {
     )];
     all.extend(columns::results().columns().iter().cloned());
     all.extend([
+        Column {
+            unit: Some("solMass/yr".to_owned()),
+            ..column(
+                "mass_rate_expected_msun_yr",
+                Kind::Real,
+                "Expected mass infall rate: probability of infall times the mean of the inward draws"
+                    .to_owned(),
+            )
+        },
+        Column {
+            unit: Some("km/s".to_owned()),
+            ..column(
+                "v_in_expected_km_s",
+                Kind::Real,
+                "Expected inward speed: probability of infall times the mean of the inward draws"
+                    .to_owned(),
+            )
+        },
         integer(
             "rank_lo68",
             "Lower end of the central 68 % interval of the place by the true rate or speed",
@@ -75,10 +93,7 @@ pub fn text(rows: &[Row], counts: (usize, usize), quantity: Quantity, top: usize
         Quantity::Rate => "mass infall rate",
         Quantity::Speed => "inward speed",
     };
-    let mut text = format!(
-        "Ranking of {} sources, by grade of infall and what is certain of the {by}\n\n",
-        counts.0
-    );
+    let mut text = format!("Ranking of {} sources, by expected {by}\n\n", counts.0);
     let head = [
         "rank",
         "68 %",
@@ -127,7 +142,7 @@ pub fn text(rows: &[Row], counts: (usize, usize), quantity: Quantity, top: usize
 }
 
 fn cells_of(row: &Row) -> [String; 7] {
-    let get = |name: &str| row.get(name).unwrap_or(&Value::Empty);
+    let get = |name: &str| row.find(name).unwrap_or(&Value::Empty);
     let integer = |name: &str| match get(name) {
         Value::Integer(number) => number.to_string(),
         _ => "-".to_owned(),

@@ -172,7 +172,7 @@ impl Rows {
             ("lo95", Value::from(one.interval95[0])),
             ("hi95", Value::from(one.interval95[1])),
             ("chance", Value::from(one.chance)),
-            ("method", Value::from("Spearman's rho of sources where infall is likely; interval from draws of both columns")),
+            ("method", Value::from("Spearman's rho of sources where infall is likely; interval of draws of both columns, which their errors weaken")),
         ])
     }
 }
@@ -260,14 +260,14 @@ pub fn text(sample: &Sample) -> String {
     }
     if !sample.correlations.is_empty() {
         text.push_str(
-            "\nRank correlations where infall is likely (Spearman; interval from draws)\n",
+            "\nRank correlations where infall is likely (Spearman), and 68 % of those of draws, which errors weaken\n",
         );
     }
     for one in &sample.correlations {
         let [low, high] = one.interval68;
         let _ = writeln!(
             text,
-            "  {} and {}: {:.2} ({low:.2} to {high:.2}) of {} sources; by chance: {}",
+            "  {} and {}: {:.2}, draws {low:.2} to {high:.2}, of {} sources; by chance: {}",
             one.first,
             one.second,
             one.rho,

@@ -19,7 +19,7 @@ const LABEL: usize = 30;
 pub fn summary(row: &Row, cautions: &[String]) -> String {
     let mut text = title(row);
     let mut heading = None;
-    let of_posterior = row.get("v_in_errors").ok().and_then(Value::text) == Some("posterior");
+    let of_posterior = row.find("v_in_errors").and_then(Value::text) == Some("posterior");
     let formal = !of_posterior;
     for quantity in QUANTITIES {
         if matches!(
@@ -75,9 +75,9 @@ pub fn summary(row: &Row, cautions: &[String]) -> String {
 
 /// `clump: HCO+ 1-0 (thick) and H13CO+ 1-0 (thin)`.
 fn title(row: &Row) -> String {
-    let name = |name| row.get(name).ok().and_then(Value::text).unwrap_or("?");
+    let name = |name| row.find(name).and_then(Value::text).unwrap_or("?");
     // Given, not measured: as precise as they are.
-    let offset = |name| row.get(name).ok().filter(|value| **value != Value::Empty);
+    let offset = |name| row.find(name).filter(|value| **value != Value::Empty);
     let place = match (offset("dx_arcsec"), offset("dy_arcsec")) {
         (Some(dx), Some(dy)) => format!(" at ({}, {}) arcsec", cell(dx), cell(dy)),
         _ => String::new(),
@@ -92,15 +92,15 @@ fn title(row: &Row) -> String {
 
 /// Value, error and unit; `None` where there is no value or the row has no such column.
 fn shown(quantity: &Quantity, row: &Row) -> Option<String> {
-    let number = match row.get(quantity.name) {
-        Err(_) | Ok(Value::Empty) => return None,
-        Ok(Value::Text(text)) => return Some(one_line(text)),
-        Ok(Value::Real(number)) => *number,
-        Ok(Value::Integer(number)) => return Some(number.to_string()),
+    let number = match row.find(quantity.name)? {
+        Value::Empty => return None,
+        Value::Text(text) => return Some(one_line(text)),
+        Value::Real(number) => *number,
+        Value::Integer(number) => return Some(number.to_string()),
     };
     let further = |suffix: &str| {
-        let cell = row.get(&format!("{}{suffix}", quantity.name));
-        cell.ok().and_then(Value::number)
+        row.find(&format!("{}{suffix}", quantity.name))
+            .and_then(Value::number)
     };
     let interval = match quantity.uncertainty {
         // a least-squares value beside the posterior's interval: they stand on lines of their own
@@ -131,8 +131,8 @@ fn shown(quantity: &Quantity, row: &Row) -> Option<String> {
 /// The posterior's 68 % interval of a model's parameter.
 fn posterior_range(quantity: &Quantity, row: &Row) -> Option<String> {
     let end = |suffix: &str| {
-        let cell = row.get(&format!("{}{suffix}", quantity.name));
-        cell.ok().and_then(Value::number)
+        row.find(&format!("{}{suffix}", quantity.name))
+            .and_then(Value::number)
     };
     let range = rounded_range(end("_lo68")?, end("_hi68")?);
     let unit = quantity.unit.map(|unit| format!(" {}", spoken(unit)));

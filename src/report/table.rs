@@ -286,6 +286,13 @@ impl Row {
         )
     }
 
+    /// The cell of a column that not every table has.
+    #[must_use]
+    pub fn find(&self, name: &str) -> Option<&Value> {
+        let position = self.schema.0.index.get(name)?;
+        Some(&self.values[*position])
+    }
+
     /// The cell of a column.
     ///
     /// # Errors

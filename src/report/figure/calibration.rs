@@ -7,7 +7,7 @@ use super::export;
 use super::layout::{MARGIN_MM, Numbers, PAGE_MM, PLOT_RIGHT_MM};
 use super::plot::{Frame, HEIGHT_BELOW_MM, Scale};
 use super::style::{
-    self, LABEL, NOTE, PAPER, SOFT_LABEL, Stroke, TITLE, V_LSR, VALUE, ZERO, leading_mm, solid,
+    self, LABEL, NOTE, PAPER, Stroke, TITLE, V_LSR, VALUE, ZERO, leading_mm, solid,
 };
 use super::text;
 use crate::report::ReportError;
@@ -124,22 +124,8 @@ fn draw(figure: &CalibrationFigure) -> Result<String, ReportError> {
         levels(canvas, figure, (levels_top, levels_bottom))?;
         let ends = [(left, numbers_top), (PAGE_MM - left, numbers_top)];
         canvas.line(&ends, solid(ZERO, 0.14))?;
-        draw_numbers(canvas, &numbers, numbers_top + 1.2)
+        numbers.draw(canvas, numbers_top + 1.2)
     })
-}
-
-fn draw_numbers(canvas: &Canvas<'_>, numbers: &Numbers, top: f64) -> Drawn {
-    let first = top + leading_mm(LABEL) * 0.8;
-    let lines_per_row = if numbers.values_below { 2.0 } else { 1.0 };
-    for (index, (label, value)) in numbers.entries.iter().enumerate() {
-        let (column, row) = (index / numbers.rows, index % numbers.rows);
-        let (label_x, value_x) = numbers.places[column];
-        let label_y = first + leading_mm(LABEL) * lines_per_row * row as f64;
-        let value_y = label_y + leading_mm(LABEL) * (lines_per_row - 1.0);
-        canvas.text(label, (label_x, label_y), Align::Start, SOFT_LABEL)?;
-        canvas.text(value, (value_x, value_y), Align::Start, VALUE)?;
-    }
-    Ok(())
 }
 
 /// The words of both strokes, at the right end of a heading.

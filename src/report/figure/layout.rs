@@ -1,10 +1,14 @@
 //! Where the parts of a pair's figure stand on the page, before anything is drawn.
 
 use super::axis::{Axis, Ticks, extent};
+use super::canvas::{Align, Canvas};
 use super::posterior::PosteriorPlace;
-use super::style::{CAUTION_HEADING, LABEL, Look, NOTE, TICK, TITLE, VALUE, leading_mm};
+use super::style::{
+    CAUTION_HEADING, LABEL, Look, NOTE, SOFT_LABEL, TICK, TITLE, VALUE, leading_mm,
+};
 use super::text::{self, Spans};
 use super::{PairFigure, Panel};
+use crate::report::ReportError;
 
 /// Width of the page: one column of a journal.
 pub(super) const PAGE_MM: f64 = 88.0;
@@ -259,6 +263,21 @@ pub(super) const NUMBERS_ROOM_MM: f64 = PAGE_MM - 2.0 * NUMBERS_LEFT_MM;
 pub(super) const ONE_COLUMN: usize = 3;
 
 impl Numbers {
+    /// Draws the block below `top_mm`.
+    pub(super) fn draw(&self, canvas: &Canvas<'_>, top_mm: f64) -> Result<(), ReportError> {
+        let first = top_mm + leading_mm(LABEL) * 0.8;
+        let lines_per_row = if self.values_below { 2.0 } else { 1.0 };
+        for (index, (label, value)) in self.entries.iter().enumerate() {
+            let (column, row) = (index / self.rows, index % self.rows);
+            let (label_x, value_x) = self.places[column];
+            let label_y = first + leading_mm(LABEL) * lines_per_row * row as f64;
+            let value_y = label_y + leading_mm(LABEL) * (lines_per_row - 1.0);
+            canvas.text(label, (label_x, label_y), Align::Start, SOFT_LABEL)?;
+            canvas.text(value, (value_x, value_y), Align::Start, VALUE)?;
+        }
+        Ok(())
+    }
+
     pub(super) fn of(numbers: &[(String, String)]) -> Self {
         let entries: Vec<_> = numbers
             .iter()

@@ -8,7 +8,7 @@ use super::layout::{
 use super::posterior;
 use super::style::{
     self, CAUTION, CAUTION_HEADING, DATA, GUIDE, INK, LABEL, NAME, NOTE, PAPER, POINT_MM, SOFT_INK,
-    SOFT_LABEL, Stroke, TICK, TITLE, V_LSR, V_LSR_BAND, VALUE, WINDOW, ZERO, leading_mm, solid,
+    Stroke, TICK, TITLE, V_LSR, V_LSR_BAND, WINDOW, ZERO, leading_mm, solid,
 };
 use super::text::{self, Spans};
 use super::{Curve, PairFigure, Panel};
@@ -449,19 +449,7 @@ impl Sheet<'_, '_> {
         if numbers.entries.is_empty() {
             return Ok(());
         }
-        let first = self.rule(self.layout.numbers_top)? + leading_mm(LABEL) * 0.8;
-        let lines_per_row = if numbers.values_below { 2.0 } else { 1.0 };
-        for (index, (label, value)) in numbers.entries.iter().enumerate() {
-            let (column, row) = (index / numbers.rows, index % numbers.rows);
-            let (label_x, value_x) = numbers.places[column];
-            let label_y = first + leading_mm(LABEL) * lines_per_row * row as f64;
-            let value_y = label_y + leading_mm(LABEL) * (lines_per_row - 1.0);
-            self.canvas
-                .text(label, (label_x, label_y), Align::Start, SOFT_LABEL)?;
-            self.canvas
-                .text(value, (value_x, value_y), Align::Start, VALUE)?;
-        }
-        Ok(())
+        numbers.draw(self.canvas, self.rule(self.layout.numbers_top)?)
     }
 
     fn cautions(&self) -> Drawn {

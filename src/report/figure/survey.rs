@@ -19,6 +19,18 @@ const RIGHT_MM: f64 = 85.5;
 
 type Drawn = Result<(), ReportError>;
 
+/// Paper, title and groups of a figure of one column; returns where they end.
+fn head(
+    canvas: &Canvas<'_>,
+    height_mm: f64,
+    title: &str,
+    groups: &[String],
+) -> Result<f64, ReportError> {
+    canvas.rectangle((0.0, 0.0), (COLUMN_MM, height_mm), PAPER)?;
+    canvas.text(&text::plain(title), (LEFT_MM, 4.6), Align::Start, TITLE)?;
+    Ok(key(canvas, groups, (LEFT_MM, RIGHT_MM), 6.2)? + 1.0)
+}
+
 /// Names of groups beside their marks, in one line or more below `top`; returns where it ends.
 fn key(
     canvas: &Canvas<'_>,
@@ -92,14 +104,7 @@ impl DistributionFigure {
             .max()
             .unwrap_or(0);
         page(COLUMN_MM, HEIGHT_MM, &self.title, |canvas| {
-            canvas.rectangle((0.0, 0.0), (COLUMN_MM, HEIGHT_MM), PAPER)?;
-            canvas.text(
-                &text::plain(&self.title),
-                (LEFT_MM, 4.6),
-                Align::Start,
-                TITLE,
-            )?;
-            let top = key(canvas, &self.groups, (LEFT_MM, RIGHT_MM), 6.2)? + 1.0;
+            let top = head(canvas, HEIGHT_MM, &self.title, &self.groups)?;
             let up = (0.0, (highest.max(1) as f64 * 1.12).ceil());
             let frame = Frame::new(
                 (LEFT_MM, RIGHT_MM, top, HEIGHT_MM - 9.6),
@@ -202,14 +207,7 @@ impl ScatterFigure {
             (low - margin, high + margin)
         };
         page(COLUMN_MM, HEIGHT_MM, &self.title, |canvas| {
-            canvas.rectangle((0.0, 0.0), (COLUMN_MM, HEIGHT_MM), PAPER)?;
-            canvas.text(
-                &text::plain(&self.title),
-                (LEFT_MM, 4.6),
-                Align::Start,
-                TITLE,
-            )?;
-            let top = key(canvas, &self.groups, (LEFT_MM, RIGHT_MM), 6.2)? + 1.0;
+            let top = head(canvas, HEIGHT_MM, &self.title, &self.groups)?;
             let notes = self.notes();
             let bottom = HEIGHT_MM - 9.6 - leading_mm(NOTE) * notes.len() as f64;
             let frame = Frame::new(

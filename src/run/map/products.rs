@@ -269,7 +269,7 @@ impl Maps {
                 values[cell] = *number as f32;
             }
         }
-        let codes = row.get("cautions").ok().and_then(Value::text);
+        let codes = row.find("cautions").and_then(Value::text);
         for code in codes
             .unwrap_or_default()
             .split(';')

@@ -2,7 +2,7 @@
 
 use super::record::set_combined;
 use super::{Member, Ordered, PairRecord, RankRun};
-use crate::rank::why;
+use crate::rank::{Quantity, expected, why};
 use crate::report::{
     self, PaperTable, ReportError, Row, Schema, TableFiles, Value, columns, ranking,
     sample_statistics,
@@ -116,6 +116,11 @@ impl Ordered<'_> {
         }
         let mut row = ranking::with_results(schema, &results)?;
         row.set("rank", i64::try_from(place).unwrap_or(i64::MAX))?;
+        row.set(
+            "mass_rate_expected_msun_yr",
+            expected(finding, Quantity::Rate),
+        )?;
+        row.set("v_in_expected_km_s", expected(finding, Quantity::Speed))?;
         if let Some(spread) = member.spread {
             row.set("rank_lo68", i64::from(spread.interval68[0]))?;
             row.set("rank_hi68", i64::from(spread.interval68[1]))?;
