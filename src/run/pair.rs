@@ -15,7 +15,7 @@ use crate::fit::{
     sphere_cautions,
 };
 use crate::line::{Line, isotopologue_pair};
-use crate::measure::{MeasureSettings, Measures, measure};
+use crate::measure::{MeasureSettings, Measures, ThinLine, measure};
 use crate::model::Model;
 use crate::prepare::scale::{ScaleNote, to_spectrum};
 use crate::prepare::{Expected, PrepareSettings, Prepared, prepare_pair};
@@ -291,34 +291,14 @@ pub(super) fn fit_prepared(
         cautions.extend(sphere_cautions(sphere.as_ref(), &unheard));
     }
     let judged = judged.and_then(Result::ok);
-    let averaged = judged.as_ref().and_then(Judged::adopted);
-    let described = fit.adopted().or_else(|| layer(&fit));
-    let draws = match (&judged, &averaged, described, &thin_fit.line) {
-        (Some(judged), Some(averaged), ..) => {
-            let with_speed = judged.speed != Speed::Unconstrained;
-            FitDraws::of_posterior(averaged, thick_line, with_speed, &settings.derive)
-        }
-        (_, _, Some(fit), _) => FitDraws::formal(fit, &settings.derive),
-        (_, _, None, Some(line)) => FitDraws::of_thin_line(line, &settings.derive),
-        (_, _, None, None) => FitDraws::new(settings.derive.draws),
+    let slabs = Slabs {
+        judged: judged.as_ref(),
+        described: fit.adopted().or_else(|| layer(&fit)),
+        thin_line: thin_fit.line.as_ref(),
     };
-    let draws = match standing {
-        Some(sphere) => {
-            let with_speed = sphere.speed() != Speed::Unconstrained;
-            draws.with_sphere(sphere, with_speed, &settings.derive)
-        }
-        None => draws,
-    };
+    let derived = slabs.derived((thick_line, thin_line), standing, &source, &settings.derive)?;
     let sphere_stands = standing.is_some();
     let sphere = sphere.and_then(Result::ok);
-    let tracers = Tracers {
-        thick: thick_line,
-        thin: thin_line,
-        model: described
-            .filter(|_| averaged.is_none())
-            .map(|fit| fit.model),
-    };
-    let derived = crate::derive::sample(&source, &draws, &tracers, settings.derive.seed)?.derived();
     let name = name
         .or_else(|| thick.object.clone())
         .or_else(|| thin.object.clone())
@@ -351,6 +331,61 @@ fn preferred_sphere(
     };
     clump_posteriors(pair.thick, pair.thin, pair.lines, pair.thin_line, &settings)
         .map(ClumpPosteriors::into_preferred)
+}
+
+/// What is known of a pair's slabs.
+struct Slabs<'a> {
+    judged: Option<&'a Judged>,
+    described: Option<&'a ModelFit>,
+    thin_line: Option<&'a ThinLine>,
+}
+
+impl Slabs<'_> {
+    /// What follows from the source and from draws of the slabs or of a sphere that stands.
+    fn derived(
+        &self,
+        (thick, thin): (&Line, &Line),
+        sphere: Option<&ClumpPosterior>,
+        source: &SourceProperties,
+        settings: &DeriveSettings,
+    ) -> Result<Derived, RunError> {
+        let draws = self.draws(thick, sphere, settings);
+        let averaged = self.judged.and_then(Judged::adopted);
+        let described = self.described.filter(|_| averaged.is_none());
+        let tracers = Tracers {
+            thick,
+            thin,
+            model: described.map(|fit| fit.model),
+        };
+        Ok(crate::derive::sample(source, &draws, &tracers, settings.seed)?.derived())
+    }
+
+    /// Draws of what is derived from: the slabs', and in the place of their speed that of a sphere that
+    /// stands.
+    fn draws(
+        &self,
+        thick_line: &Line,
+        sphere: Option<&ClumpPosterior>,
+        settings: &DeriveSettings,
+    ) -> FitDraws {
+        let averaged = self.judged.and_then(Judged::adopted);
+        let draws = match (self.judged, &averaged, self.described, self.thin_line) {
+            (Some(judged), Some(averaged), ..) => {
+                let with_speed = judged.speed != Speed::Unconstrained;
+                FitDraws::of_posterior(averaged, thick_line, with_speed, settings)
+            }
+            (_, _, Some(fit), _) => FitDraws::formal(fit, settings),
+            (_, _, None, Some(line)) => FitDraws::of_thin_line(line, settings),
+            (_, _, None, None) => FitDraws::new(settings.draws),
+        };
+        match sphere {
+            Some(sphere) => {
+                let with_speed = sphere.speed() != Speed::Unconstrained;
+                draws.with_sphere(sphere, with_speed, settings)
+            }
+            None => draws,
+        }
+    }
 }
 
 /// What a source's properties say of its sphere.
