@@ -121,17 +121,7 @@ fn panel(out: &mut String, index: usize, name: &str, groups: &[Group]) {
         PANEL.0,
         PANEL.1
     );
-    let ends = groups.iter().map(|group| group.low).chain([last]);
-    for end in ends {
-        let base = TOP + PANEL.1;
-        let _ = writeln!(
-            out,
-            "<line x1=\"{0:.2}\" x2=\"{0:.2}\" y1=\"{base}\" y2=\"{1}\" stroke=\"black\" stroke-width=\"0.2\"/>",
-            x(end),
-            base - 1.2
-        );
-        text(out, x(end), base + 4.0, "middle", &format!("{end}"));
-    }
+    ticks(out, groups, &x);
     text(
         out,
         left + 0.5 * PANEL.0,
@@ -145,5 +135,21 @@ fn panel(out: &mut String, index: usize, name: &str, groups: &[Group]) {
             out,
             "<text x=\"4\" y=\"{middle}\" text-anchor=\"middle\" transform=\"rotate(-90 4 {middle})\" {FONT}>fitted over true speed</text>"
         );
+    }
+}
+
+/// Marks and numbers at the ends of the groups.
+fn ticks(out: &mut String, groups: &[Group], x: &dyn Fn(f64) -> f64) {
+    let last = groups.last().map(|group| group.high);
+    let ends = groups.iter().map(|group| group.low).chain(last);
+    for end in ends {
+        let base = TOP + PANEL.1;
+        let _ = writeln!(
+            out,
+            "<line x1=\"{0:.2}\" x2=\"{0:.2}\" y1=\"{base}\" y2=\"{1}\" stroke=\"black\" stroke-width=\"0.2\"/>",
+            x(end),
+            base - 1.2
+        );
+        text(out, x(end), base + 4.0, "middle", &format!("{end}"));
     }
 }

@@ -189,7 +189,9 @@ fn balance(
             })
             .collect();
         let total: f64 = share.iter().sum();
-        share.iter_mut().for_each(|one| *one *= depth / total);
+        for one in &mut share {
+            *one *= depth / total;
+        }
         for i in 0..SHELLS {
             let out: f64 = 0.5 * share[i] + share[i + 1..].iter().sum::<f64>();
             let escape = |tau: f64| -(-tau).exp_m1() / tau;
