@@ -32,7 +32,15 @@ fn demo(rows: usize) -> Folder {
 fn a_table_becomes_products_and_a_summary() {
     let folder = demo(45);
     let run = folder.inrush(&["map", "map.toml", "--out", "out", "--formal"]);
-    assert_eq!(run.stdout, "");
+    assert!(
+        run.stdout
+            .starts_with("Lantern 7: HCO+ 1-0 (thick) and H13CO+ 1-0 (thin)\n")
+            && run
+                .stdout
+                .contains("\nMotions\n  - The core of the thick line is "),
+        "{}",
+        run.stdout
+    );
     assert!(
         run.stderr.contains(" of 45 pointings fitted; "),
         "{}",
@@ -43,6 +51,12 @@ fn a_table_becomes_products_and_a_summary() {
         "out/pointings.csv",
         "out/pointings.ecsv",
         "out/pointings.fits",
+        "out/motions.csv",
+        "out/motions.ecsv",
+        "out/motions.fits",
+        "out/figures/radius.png",
+        "out/figures/asymmetry_even.png",
+        "out/figures/delta_v_odd.svg",
         "out/maps/v_in_km_s.fits",
         "out/maps/v_in_km_s_err.fits",
         "out/maps/cautions.fits",
@@ -72,7 +86,48 @@ fn a_table_becomes_products_and_a_summary() {
     // The run sheet beside the products repeats the run.
     let sheet = folder.inrush(&["map", "out/run.toml", "--out", "again", "--no-figures"]);
     assert_eq!(sheet.code, run.code, "{}", sheet.stderr);
-    assert!(folder.read("out/pointings.csv") == folder.read("again/pointings.csv"));
+    for table in ["pointings.csv", "motions.csv"] {
+        assert!(folder.read(&format!("out/{table}")) == folder.read(&format!("again/{table}")));
+    }
+}
+
+#[test]
+fn a_map_that_cannot_be_read_for_motions_says_so() {
+    // Three pointings, and a table without a beam.
+    let folder = demo(3);
+    let run = |sheet: &str, out: &str| {
+        let run = folder.inrush(&["map", sheet, "--out", out, "--formal", "--no-figures"]);
+        assert_eq!(run.code, 0, "{}", run.stderr);
+        // sentences are wrapped
+        run.stdout.split_whitespace().collect::<Vec<_>>().join(" ")
+    };
+    let few = run("map.toml", "few");
+    assert!(
+        few.contains("not read: ") && few.contains("expected at least"),
+        "{few}"
+    );
+    assert!(
+        few.contains("infall is neither shown nor excluded"),
+        "{few}"
+    );
+    let sheet = String::from_utf8(folder.read("map.toml")).unwrap();
+    folder.write(
+        "bare.toml",
+        sheet.replace("beam_arcsec = 24.0", "").as_bytes(),
+    );
+    let bare = run("bare.toml", "bare");
+    assert!(
+        bare.contains("no beam is known; give beam_arcsec"),
+        "{bare}"
+    );
+    // Nothing but noise: every pointing is below the threshold.
+    let faint = sheet + "threshold_sigma = 1000.0\n";
+    folder.write("faint.toml", faint.as_bytes());
+    let faint = run("faint.toml", "faint");
+    assert!(
+        faint.contains("not read for motions: no significant brightness in 0 readings"),
+        "{faint}"
+    );
 }
 
 #[test]

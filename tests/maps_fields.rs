@@ -266,6 +266,140 @@ fn maps_are_the_same_bytes_for_any_threads_and_after_any_stop() {
 }
 
 #[test]
+fn motions_of_a_map_are_those_of_its_clump() {
+    let folder = tempfile::tempdir().unwrap();
+    let clump = Clump {
+        size_arcsec: 30.0,
+        ..Clump::default()
+    };
+    write_cubes(folder.path(), &clump);
+    let run = run_of(folder.path(), SHEET, "out", 2);
+    made(&run);
+    let mut reader = csv::Reader::from_path(run.directory.join("motions.csv")).unwrap();
+    let table: Vec<BTreeMap<String, String>> = reader.deserialize().map(Result::unwrap).collect();
+    let of = |quantity: &str| {
+        table
+            .iter()
+            .find(|row| row["quantity"] == quantity)
+            .unwrap()
+    };
+    // The clump's velocity rises by as much to the east, and not to the north.
+    let gradient = clump.velocity_km_s(1.0) - clump.velocity_km_s(0.0);
+    let found = of("thin_gradient_km_s_arcsec");
+    let off = (number(found, "value") - gradient.abs()) / number(found, "err");
+    assert!(off.abs() < 4.0, "{gradient} {found:?}");
+    // 2 kpc: 0.009696 pc an arcsec.
+    let per_pc = number(of("thin_gradient_km_s_pc"), "value") / number(found, "value");
+    assert!((per_pc * 0.009_696_27 - 1.0).abs() < 1e-5, "{per_pc}");
+    // Every pixel has noise of its own.
+    assert_eq!(number(of("noise_width_arcsec"), "value"), 0.0);
+    let verdict = &of("verdict_even")["words"];
+    assert!(verdict.contains("blue on all sides"), "{verdict}");
+    assert!(of("verdict_odd")["words"].starts_with("The thin line has a gradient"));
+    // Headers hold what is read from their map, and the verdict.
+    let (header, _) = map(&run.directory, "v_thin_km_s.fits");
+    assert!(
+        header.contains("HISTORY thin_gradient_km_s_arcsec = "),
+        "{header}"
+    );
+    assert!(
+        header.contains("HISTORY verdict_even = The core of"),
+        "{header}"
+    );
+    assert!(!header.contains("HISTORY speed_slope = "), "{header}");
+}
+
+#[test]
+fn noise_that_goes_together_over_pixels_is_found() {
+    use inrush::run::simulate::{GridProducts, GridRun, write_grid};
+    use inrush::simulate::grid::GridTruth;
+    let folder = tempfile::tempdir().unwrap();
+    let truth = GridTruth {
+        seed: 4,
+        noise_fwhm_arcsec: 20.0,
+        ..GridTruth::default()
+    };
+    let grid = GridRun {
+        truth,
+        name: "Lantern 7".to_owned(),
+        thick_line: "HCO+ 1-0".to_owned(),
+        thin_line: "H13CO+ 1-0".to_owned(),
+        directory: folder.path().join("sky"),
+        products: GridProducts::Cubes,
+        threads: BatchSettings::with_threads(2),
+    };
+    write_grid(&grid).unwrap();
+    let sheet = std::fs::read_to_string(grid.directory.join("cubes.toml")).unwrap()
+        + "\n[fit]\nformal = true\n[output]\nfigures = false\n";
+    let run = run_of(&grid.directory, &sheet, "out", 2);
+    made(&run);
+    let mut reader = csv::Reader::from_path(run.directory.join("motions.csv")).unwrap();
+    let rows: Vec<BTreeMap<String, String>> = reader.deserialize().map(Result::unwrap).collect();
+    let width = rows
+        .iter()
+        .find(|row| row["quantity"] == "noise_width_arcsec")
+        .unwrap();
+    // Some 48 pairs of some 60 line-free channels tell a correlation to 0.02, the width to a tenth; the
+    // wider of both lines' is taken.
+    let found = number(width, "value");
+    assert!((found / 20.0 - 1.0).abs() < 0.25, "{found}");
+}
+
+#[test]
+fn cubes_that_make_no_map_are_told() {
+    let folder = tempfile::tempdir().unwrap();
+    let thick = plan(true);
+    thick.write(folder.path(), "thick.fits", |_, _| 1.0);
+    let message = |sheet: &str, thin: &Plan, change: &dyn Fn(Vec<u8>) -> Vec<u8>| {
+        let path = folder.path().join("thin.fits");
+        thin.write(folder.path(), "thin.fits", |_, _| 1.0);
+        std::fs::write(&path, change(std::fs::read(&path).unwrap())).unwrap();
+        let run = run_of(folder.path(), sheet, "out", 1);
+        let error = make(&run).unwrap_err();
+        assert!(error.hint().is_some(), "{error}");
+        assert!(!run.directory.exists());
+        error.to_string()
+    };
+    let same = |bytes: Vec<u8>| bytes;
+    let away = Plan {
+        centre_deg: [210.5, -28.0],
+        ..plan(false)
+    };
+    assert!(message(SHEET, &away, &same).contains("have no pixel in common"));
+    let bare = Plan {
+        beam: None,
+        ..plan(false)
+    };
+    assert!(message(SHEET, &bare, &same).contains("thin.fits: no beam (BMAJ), expected one"));
+    // The sheet's name stands above the files'.
+    let nameless = SHEET.replace("name = \"Lantern 7\"\n", "");
+    let other = Plan {
+        object: Some("Lantern 9"),
+        ..plan(false)
+    };
+    Plan {
+        object: Some("Lantern 7"),
+        ..thick.clone()
+    }
+    .write(folder.path(), "thick.fits", |_, _| 1.0);
+    assert!(message(&nameless, &other, &same).contains("expected one source"));
+    let renamed = |from: &'static str, to: &'static str| {
+        move |bytes: Vec<u8>| {
+            let at = (bytes.windows(from.len())).position(|part| part == from.as_bytes());
+            let mut bytes = bytes;
+            bytes[at.unwrap()..][..to.len()].copy_from_slice(to.as_bytes());
+            bytes
+        }
+    };
+    let found = message(SHEET, &plan(false), &renamed("'VRAD    '", "'TIME    '"));
+    assert!(found.contains("TIME (80), expected RA and DEC"), "{found}");
+    // A line that is not built in, without its rest frequency.
+    let unknown = SHEET.replace("H13CO+ 1-0", "our line");
+    let found = message(&unknown, &plan(false), &same);
+    assert!(found.starts_with("thin line: "), "{found}");
+}
+
+#[test]
 fn weak_thin_lines_are_replaced_by_means_and_say_so() {
     let folder = tempfile::tempdir().unwrap();
     let clump = Clump {

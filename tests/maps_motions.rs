@@ -9,8 +9,8 @@ mod measured;
 use drawn::{Observation, SCENES, Scene, draw};
 use inrush::fit::Workspace;
 use inrush::grid::{
-    Centre, Diagnosis, Even, Field, Gradient, GridError, Odd, Reading, central_spot, centre,
-    gradient, parity, speed_profile,
+    Centre, Diagnosis, Even, Field, Gradient, GridError, Odd, Reading, SpeedTrend, central_spot,
+    centre, gradient, parity, speed_profile,
 };
 use inrush::line::{Line, find};
 use inrush::simulate::NoiseLevel;
@@ -293,6 +293,49 @@ fn slopes_of_the_inward_speed_come_back() {
         // errors are enlarged where chi2 is above its expectation, never made smaller: by 5 % in the mean
         assert!((0.6..1.25).contains(&squares), "{truth}: {squares}");
     }
+}
+
+/// Of independent readings the differences of chi2 are those of the residuals; a beam's correlation shrinks them.
+#[test]
+fn one_speed_and_free_fall_are_compared_by_chi2() {
+    let known = Centre::known([0.0, 0.0]);
+    let beam_square = 2.0 * (20.0 / (8.0 * std::f64::consts::LN_2).sqrt()).powi(2);
+    let found = |truth: f64, err: f64, width: f64| {
+        let speed =
+            |x: f64, y: f64| 0.3 * ((x * x + y * y + beam_square).sqrt() / 30.0).powf(-truth);
+        let map = Field::new(raster(4, 10.0, err, speed), width).unwrap();
+        speed_profile(&map, &known, 20.0).unwrap()
+    };
+    for (truth, err, trend) in [
+        (0.0, 0.01, SpeedTrend::Constant),
+        (0.5, 0.01, SpeedTrend::RisingInward),
+        (-0.5, 0.01, SpeedTrend::FallingInward),
+        (0.25, 0.3, SpeedTrend::Untold),
+    ] {
+        assert_eq!(found(truth, err, 0.0).trend(), trend, "{truth} {err}");
+    }
+    // Weighted mean of all: what one speed leaves of an exact power law.
+    let exact = found(0.5, 0.01, 0.0);
+    let values: Vec<f64> = raster(4, 10.0, 0.01, |x, y| {
+        0.3 * ((x * x + y * y + beam_square).sqrt() / 30.0).powf(-0.5)
+    })
+    .iter()
+    .map(|one| one.value)
+    .collect();
+    let mean = values.iter().sum::<f64>() / values.len() as f64;
+    let left: f64 = values.iter().map(|v| ((v - mean) / 0.01).powi(2)).sum();
+    assert!(
+        (exact.chi2_over_constant / left - 1.0).abs() < 1e-3,
+        "{exact:?} {left}"
+    );
+    assert!(exact.chi2_over_free_fall < 1e-3 * left);
+    assert!((exact.constant_km_s.value - mean).abs() < 1e-12);
+    let shared = found(0.5, 0.01, 20.0);
+    assert!(
+        shared.chi2_over_constant < 0.5 * exact.chi2_over_constant,
+        "{shared:?}"
+    );
+    assert!(shared.sentence().contains("they say nothing of the gas"));
 }
 
 #[test]

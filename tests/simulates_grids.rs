@@ -359,7 +359,8 @@ fn files_are_the_same_for_any_number_of_threads_and_from_their_settings() {
         .iter()
         .filter_map(|name| name.strip_prefix("one/").map(str::to_owned))
         .collect();
-    assert_eq!(names.len(), 5 + 50);
+    // tables, settings, run sheets and cubes, and the spectra
+    assert_eq!(names.len(), 7 + 50);
     for name in names {
         for other in ["three", "again"] {
             let one = folder.read(&format!("one/{name}"));
@@ -422,7 +423,8 @@ fn the_command_says_what_it_wrote_and_takes_its_settings_again() {
     assert_eq!(run.code, 0, "{}", run.stderr);
     assert_eq!(
         run.stderr,
-        "note: wrote map/grid.csv\nnote: wrote map/truth.csv\nnote: wrote map/settings.toml\n\
+        "note: wrote map/grid.csv\nnote: wrote map/truth.csv\nnote: wrote map/map.toml\n\
+         note: wrote map/settings.toml\n\
          note: wrote the spectra of 6 pointings into map/spectra\n"
     );
     assert_eq!(run.stdout, "");
@@ -449,8 +451,55 @@ fn the_command_says_what_it_wrote_and_takes_its_settings_again() {
     assert_eq!(
         run.stderr,
         "note: wrote cubes/thick-cube.fits\nnote: wrote cubes/thin-cube.fits\n\
-         note: wrote cubes/truth.csv\nnote: wrote cubes/settings.toml\n"
+         note: wrote cubes/truth.csv\nnote: wrote cubes/cubes.toml\nnote: wrote cubes/settings.toml\n"
     );
+}
+
+#[test]
+fn a_simulated_map_is_mapped_as_it_is() {
+    let folder = Folder::new();
+    let run = folder.inrush(&[
+        "simulate",
+        "grid",
+        "--out",
+        "sky",
+        "--columns",
+        "5",
+        "--rows",
+        "5",
+        "--v-in-km-s",
+        "0.5",
+        "--beam-arcsec",
+        "26,22",
+        "--write",
+        "both",
+        "--signal-to-noise",
+        "60",
+        "--quiet",
+    ]);
+    assert_eq!(run.code, 0, "{}", run.stderr);
+    for (sheet, out) in [("sky/map.toml", "of-table"), ("sky/cubes.toml", "of-cubes")] {
+        let run = folder.inrush(&["map", sheet, "--out", out, "--formal", "--no-figures"]);
+        assert_eq!(run.code, 0, "{sheet}: {}", run.stderr);
+        assert!(
+            run.stderr.contains("25 of 25 pointings fitted"),
+            "{}",
+            run.stderr
+        );
+    }
+    // One map, two ways: the same beam and place, pixels in another order.
+    let beam = |out: &str| {
+        let map = folder.read(&format!("{out}/maps/v_thin_km_s.fits"));
+        let header = String::from_utf8_lossy(&map[..2880]).into_owned();
+        ["BMAJ", "BMIN", "BPA", "CRVAL1", "CRVAL2"].map(|keyword| {
+            let at = header.find(&format!("{keyword:<8}=")).unwrap() + 10;
+            header[at..at + 20].trim().parse::<f64>().unwrap()
+        })
+    };
+    let (table, cubes) = (beam("of-table"), beam("of-cubes"));
+    for (one, other) in table.into_iter().zip(cubes) {
+        assert!((one - other).abs() < 1e-9, "{table:?} {cubes:?}");
+    }
 }
 
 #[test]

@@ -42,6 +42,12 @@ def check(out):
     ecsv = Table.read(out / "pointings.ecsv")
     assert len(table) == len(ecsv) > 60, len(table)
     assert table["dx_arcsec"].unit == u.arcsec and ecsv["v_in_km_s"].unit == u.km / u.s
+    motions = Table.read(out / "motions.ecsv")
+    assert len(motions) == len(Table.read(out / "motions.fits")) > 30, len(motions)
+    by_name = {row["quantity"]: row for row in motions}
+    # The clump rotates about an axis at 30 deg: the thin line recedes at a right angle to it.
+    off = (by_name["thin_gradient_angle_deg"]["value"] - 30.0) % 180.0 - 90.0
+    assert abs(off) < 15.0, off
     centre = SkyCoord(262.5, -34.2, unit="deg", frame="icrs")
     maps = [path for path in products if path.parent.name == "maps"]
     assert len(maps) > 40, len(maps)

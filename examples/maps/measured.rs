@@ -1,24 +1,16 @@
 //! A simulated map's pointings, prepared, measured and fitted as the pairs that they are.
 
 use inrush::fit::{FitSettings, Workspace, fit_pair, fit_thin};
-use inrush::grid::{ClumpMaps, Diagnosis, Field, GridError, Reading, centre, diagnose};
+use inrush::grid::{
+    Diagnosis, GridError, PointingMotions, centre, clump_maps, common_range, diagnose,
+};
 use inrush::line::Line;
-use inrush::measure::{MeasureSettings, Sides, ThinLine, first_moment, measure, sides};
+use inrush::measure::{MeasureSettings, ThinLine, first_moment, measure, sides};
 use inrush::model::Model;
 use inrush::numeric::Estimate;
 use inrush::prepare::{Expected, PrepareSettings, Prepared, prepare_pair};
 use inrush::simulate::grid::{GridTruth, SimulatedGrid, SimulatedPointing, simulate_grid};
 use inrush::spectrum::{Spectrum, Window};
-
-/// What a pointing brings.
-pub struct Measured {
-    pub at_arcsec: [f64; 2],
-    pub thin: Option<ThinLine>,
-    pub integral_thin_k_km_s: Estimate,
-    pub sides: Option<Sides>,
-    pub thick_moment_km_s: Option<Estimate>,
-    pub v_in_km_s: Option<Estimate>,
-}
 
 /// Significance from which a moment is taken.
 const DETECTION: f64 = 5.0;
@@ -35,39 +27,9 @@ pub fn diagnosed(
     Ok(diagnosis(&pointings, truth)?)
 }
 
-fn diagnosis(pointings: &[Measured], truth: &GridTruth) -> Result<Diagnosis, GridError> {
-    let beam_arcsec = truth.beam_arcsec[0];
-    let field = |of: &dyn Fn(&Measured) -> Option<Estimate>| {
-        let readings = pointings.iter().filter_map(|one| {
-            let Estimate { value, err } = of(one)?;
-            let [dx_arcsec, dy_arcsec] = one.at_arcsec;
-            (err > 0.0).then_some(Reading {
-                dx_arcsec,
-                dy_arcsec,
-                value,
-                err,
-            })
-        });
-        Field::new(readings.collect(), truth.noise_fwhm_arcsec)
-    };
-    let maps = ClumpMaps {
-        thin_velocity: field(&|one| Some(one.thin?.v_km_s))?,
-        thick_moment: field(&|one| one.thick_moment_km_s)?,
-        core: field(&|one| Some(one.sides?.core))?,
-        wings: field(&|one| Some(one.sides?.wings))?,
-        core_systematic: pointings
-            .iter()
-            .filter_map(|one| Some(one.sides?.core_systematic))
-            .collect(),
-        speed: field(&|one| one.v_in_km_s)?,
-    };
-    let integrals = field(&|one| Some(one.integral_thin_k_km_s))?;
-    Ok(diagnose(&maps, &centre(&integrals)?, beam_arcsec))
-}
-
-fn integral_thin(thick: &Prepared, thin: &Prepared, systematic_km_s: f64) -> Estimate {
-    let settings = MeasureSettings::default();
-    measure(thick, thin, None, systematic_km_s, &settings).integral_thin_k_km_s
+fn diagnosis(pointings: &[PointingMotions], truth: &GridTruth) -> Result<Diagnosis, GridError> {
+    let (maps, integrals) = clump_maps(pointings, truth.noise_fwhm_arcsec)?;
+    Ok(diagnose(&maps, &centre(&integrals)?, truth.beam_arcsec[0]))
 }
 
 /// All pointings whose spectra can be prepared.
@@ -76,7 +38,7 @@ fn measured(
     lines: &(Line, Line),
     with_fits: bool,
     workspace: &mut Workspace,
-) -> Vec<Measured> {
+) -> Vec<PointingMotions> {
     let prepared: Vec<(&SimulatedPointing, Prepared, Prepared)> = grid
         .pointings
         .iter()
@@ -85,7 +47,8 @@ fn measured(
             Some((pointing, thick, thin))
         })
         .collect();
-    let range = common_range(&prepared);
+    let windows: Vec<Window> = prepared.iter().map(|(_, thick, _)| thick.window).collect();
+    let range = common_range(&windows);
     prepared
         .iter()
         .map(|(pointing, thick, thin)| {
@@ -99,15 +62,18 @@ fn measured(
                 .as_ref()
                 .filter(|_| with_fits)
                 .and_then(|line| speed(thick, thin, lines, line, workspace));
-            Measured {
+            let settings = MeasureSettings::default();
+            let measures = measure(thick, thin, line.as_ref(), systematic, &settings);
+            PointingMotions {
                 at_arcsec: [pointing.dx_arcsec, pointing.dy_arcsec],
-                integral_thin_k_km_s: integral_thin(thick, thin, systematic),
-                thick_moment_km_s: first_moment(thick, range, DETECTION),
-                sides: line
-                    .as_ref()
+                integral_thin_k_km_s: Some(measures.integral_thin_k_km_s),
+                v_thin_km_s: line.map(|line| line.v_km_s),
+                thick_moment_km_s: range.and_then(|range| first_moment(thick, range, DETECTION)),
+                sides: (line.as_ref())
                     .and_then(|line| sides(thick, line, 1, systematic, DETECTION)),
+                asymmetry: measures.asymmetry.zip(measures.asymmetry_systematic),
+                delta_v: measures.delta_v.zip(measures.delta_v_systematic),
                 v_in_km_s,
-                thin: line,
             }
         })
         .collect()
@@ -134,18 +100,6 @@ fn prepared(
         (&thin, &settings, &expected(&lines.1)),
     )
     .ok()
-}
-
-/// The windows of all thick lines together.
-fn common_range(prepared: &[(&SimulatedPointing, Prepared, Prepared)]) -> Window {
-    let empty = Window {
-        low_km_s: f64::INFINITY,
-        high_km_s: f64::NEG_INFINITY,
-    };
-    prepared.iter().fold(empty, |range, (_, thick, _)| Window {
-        low_km_s: range.low_km_s.min(thick.window.low_km_s),
-        high_km_s: range.high_km_s.max(thick.window.high_km_s),
-    })
 }
 
 fn speed(

@@ -98,6 +98,7 @@ pub fn run(
             counts,
             written,
             notes,
+            motions,
         } => {
             for note in &notes {
                 output.note(note);
@@ -114,6 +115,7 @@ pub fn run(
             for problem in &counts.problems {
                 Output::warning(problem);
             }
+            Output::data(&motions)?;
             output.note(&format!(
                 "wrote {} files into {}",
                 written.len(),

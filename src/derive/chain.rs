@@ -750,10 +750,22 @@ pub fn sample(
             })
         })
         .collect();
-    for row in 0..rows {
-        for (quantity, drawn) in quantities.iter_mut().zip(plan.evaluate(Some(row))) {
-            if let (Ok(quantity), Ok(drawn)) = (quantity, drawn) {
-                quantity.draws.push(drawn);
+    let columns = [Quantity::ColumnThick, Quantity::ColumnThin];
+    let mut take = |quantity: Quantity, drawn: Step| {
+        if let (Ok(quantity), Ok(drawn)) = (&mut quantities[quantity as usize], drawn) {
+            quantity.draws.push(drawn);
+        }
+    };
+    // Of a source of which nothing is given there are columns alone: no draw asks for the rest.
+    let is_there = |quantity: &&Quantity| values[**quantity as usize].is_ok();
+    let only_columns = (Quantity::ALL.iter().filter(is_there)).all(|one| columns.contains(one));
+    for row in (0..rows).map(Some) {
+        if only_columns {
+            take(Quantity::ColumnThick, plan.column_thick(row));
+            take(Quantity::ColumnThin, plan.column_thin(row));
+        } else {
+            for (quantity, drawn) in Quantity::ALL.into_iter().zip(plan.evaluate(row)) {
+                take(quantity, drawn);
             }
         }
     }

@@ -25,6 +25,8 @@ pub struct Gradient {
     pub significance: f64,
     /// chi2 of the plane over the degrees of freedom: above 1 the velocities are no plane.
     pub chi2_reduced: f64,
+    /// Readings.
+    pub readings: usize,
 }
 
 /// Fits v = v_c + a (x - x_c) + b (y - y_c) by weighted least squares.
@@ -70,6 +72,7 @@ pub fn gradient(velocities: &Field, centre_arcsec: [f64; 2]) -> Result<Gradient,
         angle_deg,
         significance: vector.significance(fit.inflation()),
         chi2_reduced: fit.chi2_reduced(),
+        readings: velocities.readings().len(),
     })
 }
 

@@ -93,6 +93,13 @@ impl LinearFit {
         product(&self.inverse, &right)
     }
 
+    /// How much larger the variance of a parameter is by the readings' covariance, and by what the functions do
+    /// not follow, than it were of independent readings that follow them: differences of chi2 divided by it
+    /// count as those of independent readings.
+    pub fn variance_ratio(&self, index: usize) -> f64 {
+        self.covariance[index][index] / self.inverse[index][index] * self.inflation().powi(2)
+    }
+
     /// chi2 over the degrees of freedom.
     pub fn chi2_reduced(&self) -> f64 {
         self.chi2 / self.degrees_of_freedom as f64

@@ -32,6 +32,24 @@ pub struct Parity {
     pub chi2_reduced: f64,
     /// Readings.
     pub readings: usize,
+    /// Weighted mean of r^2, arcsec^2.
+    pub mean_square_arcsec2: f64,
+}
+
+impl Parity {
+    /// The fitted even part at a distance from the centre.
+    #[must_use]
+    pub fn even_at(&self, radius_arcsec: f64) -> f64 {
+        let change = self.even.value - self.even_at_centre.value;
+        self.even.value + change * (radius_arcsec * radius_arcsec / self.mean_square_arcsec2 - 1.0)
+    }
+
+    /// The fitted odd part at offsets (east, north) from the centre.
+    #[must_use]
+    pub fn odd_at(&self, [east, north]: [f64; 2]) -> f64 {
+        let (sin, cos) = self.odd_angle_deg.value.to_radians().sin_cos();
+        self.odd_per_arcsec.value * (east * sin + north * cos)
+    }
 }
 
 /// Fewest readings of a map's parity, and of that of two quarters.
@@ -116,6 +134,7 @@ pub fn parity(
         across: in_quarters(false),
         chi2_reduced: fit.chi2_reduced(),
         readings: readings.len(),
+        mean_square_arcsec2: mean_square,
     })
 }
 

@@ -13,8 +13,12 @@ pub struct CentralSpot {
     pub slope_km_s_arcsec: Estimate,
     /// Slope over its error, the error enlarged by the root of the reduced chi2 where that is above 1.
     pub significance: f64,
+    /// The plane that is taken up: change of the moment to the east and north, km/s per arcsec.
+    pub plane_km_s_arcsec: [f64; 2],
     /// chi2 over the degrees of freedom.
     pub chi2_reduced: f64,
+    /// Readings.
+    pub readings: usize,
 }
 
 /// Fits M = m + s b + g (p - c) by weighted least squares, b = |p - c| the projected radius.
@@ -42,6 +46,8 @@ pub fn central_spot(moments: &Field, centre: &Centre) -> Result<CentralSpot, Gri
         v_centre_km_s: estimate(0),
         slope_km_s_arcsec: slope,
         significance: slope.value / (slope.err * fit.inflation()),
+        plane_km_s_arcsec: [fit.parameters[2], fit.parameters[3]],
         chi2_reduced: fit.chi2_reduced(),
+        readings: moments.readings().len(),
     })
 }

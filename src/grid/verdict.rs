@@ -19,6 +19,14 @@ pub struct ClumpMaps {
     pub wings: Field,
     /// Change of each reading of `core` by the systematic of the rest frequencies; empty for none.
     pub core_systematic: Vec<f64>,
+    /// Intensity asymmetry of the thick line.
+    pub asymmetry: Field,
+    /// Change of each of its readings by the systematic of the rest frequencies; empty for none.
+    pub asymmetry_systematic: Vec<f64>,
+    /// Normalised velocity difference.
+    pub delta_v: Field,
+    /// The same of it.
+    pub delta_v_systematic: Vec<f64>,
     /// Inward speed of the pair fits, km/s.
     pub speed: Field,
 }
@@ -36,6 +44,10 @@ pub struct Diagnosis {
     pub core: Result<Parity, GridError>,
     /// Even and odd part of the wings.
     pub wings: Result<Parity, GridError>,
+    /// Even and odd part of the intensity asymmetry; not in the verdict.
+    pub asymmetry: Result<Parity, GridError>,
+    /// Even and odd part of the normalised velocity difference; not in the verdict.
+    pub delta_v: Result<Parity, GridError>,
     /// First moment of the thick line against radius.
     pub spot: Result<CentralSpot, GridError>,
     /// Inward speed against radius.
@@ -143,8 +155,9 @@ pub fn diagnose(maps: &ClumpMaps, centre: &Centre, beam_fwhm_arcsec: f64) -> Dia
     let at = centre.at_arcsec;
     let thin = gradient(&maps.thin_velocity, at);
     let thick = gradient(&maps.thick_moment, at);
-    let core = parity(&maps.core, centre, &maps.core_systematic, beam_fwhm_arcsec);
-    let wings = parity(&maps.wings, centre, &[], beam_fwhm_arcsec);
+    let split = |map, systematic: &[f64]| parity(map, centre, systematic, beam_fwhm_arcsec);
+    let core = split(&maps.core, &maps.core_systematic);
+    let wings = split(&maps.wings, &[]);
     let verdict = SpatialVerdict {
         even: even(core.as_ref().ok(), wings.as_ref().ok()),
         odd: odd(&thin, &thick, core.as_ref().ok(), wings.as_ref().ok()),
@@ -155,6 +168,8 @@ pub fn diagnose(maps: &ClumpMaps, centre: &Centre, beam_fwhm_arcsec: f64) -> Dia
         thick_gradient: thick,
         core,
         wings,
+        asymmetry: split(&maps.asymmetry, &maps.asymmetry_systematic),
+        delta_v: split(&maps.delta_v, &maps.delta_v_systematic),
         spot: central_spot(&maps.thick_moment, centre),
         speed: speed_profile(&maps.speed, centre, beam_fwhm_arcsec),
         verdict,
@@ -268,7 +283,9 @@ impl SpatialVerdict {
         format!("{} {}", self.even_sentence(), self.odd_sentence())
     }
 
-    fn even_sentence(&self) -> String {
+    /// What is even about the centre, in a sentence.
+    #[must_use]
+    pub fn even_sentence(&self) -> String {
         match self.even {
             Even::Blue { significance } => format!(
                 "The core of the thick line is blue on all sides of the centre ({significance:.1} sigma): infall, which neither rotation nor an outflow makes."
@@ -291,7 +308,9 @@ impl SpatialVerdict {
         }
     }
 
-    fn odd_sentence(&self) -> String {
+    /// What is odd along an axis, in a sentence.
+    #[must_use]
+    pub fn odd_sentence(&self) -> String {
         match self.odd {
             Odd::Rotation {
                 angle_deg,

@@ -97,6 +97,11 @@ impl<'a> About<'a> {
         err.is_finite().then_some(estimate(value, err))
     }
 
+    /// Change of A by `dA/dv` where v is redder by `systematic_km_s`.
+    pub fn asymmetry_systematic(&self, systematic_km_s: f64) -> f64 {
+        2.0 * self.at_centre_k / self.integral * systematic_km_s
+    }
+
     /// `m_3`/`m_2`^(3/2) with `m_k` = `sum_i` `T_i` `dv_i` (`v_i` - v)^k/`sum_i` `T_i` `dv_i`, v the thin line's velocity
     /// (not the mean): `None` where noise leaves no positive second moment.
     pub fn skewness(&self) -> Option<Estimate> {

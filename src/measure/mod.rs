@@ -94,6 +94,8 @@ pub struct Measures {
     pub thin_two_peaked: bool,
     /// (`I_blue` - `I_red`)/(`I_blue` + `I_red`) about the thin line's velocity.
     pub asymmetry: Option<Estimate>,
+    /// Change of `asymmetry` where the thin line is redder by the systematic of the rest frequencies.
+    pub asymmetry_systematic: Option<f64>,
     /// Skewness of the thick line about the thin line's velocity.
     pub skewness: Option<Estimate>,
     /// Sense of the asymmetry.
@@ -218,6 +220,8 @@ pub fn measure(
         two_peaks: two.as_ref().map(|two| two.estimates(&thick_noise)),
         thin_two_peaked,
         asymmetry: about.as_ref().and_then(About::asymmetry),
+        asymmetry_systematic: (about.as_ref())
+            .map(|about| about.asymmetry_systematic(rest_frequency_systematic_km_s)),
         skewness: about.as_ref().and_then(About::skewness),
         profile: class(delta_v, settings.class_sigma),
         v_closed_form_km_s: two

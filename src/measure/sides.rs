@@ -4,9 +4,10 @@ use super::noise::ChannelNoise;
 use super::{ThinLine, estimate};
 use crate::numeric::Estimate;
 use crate::prepare::Prepared;
+use serde::{Deserialize, Serialize};
 
 /// Blue less red about the thin line's velocity, over the integral of the core.
-#[derive(Clone, Copy, Debug, PartialEq)]
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Sides {
     /// Of the core, within a width of the thin line.
     pub core: Estimate,

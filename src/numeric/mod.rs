@@ -14,8 +14,10 @@ pub mod sampling;
 
 pub use autoregression::Autoregression;
 
+use serde::{Deserialize, Serialize};
+
 /// A value with its standard error, in the same unit.
-#[derive(Clone, Copy, Debug, PartialEq)]
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Estimate {
     /// The value.
     pub value: f64,

@@ -15,6 +15,7 @@ pub mod figure;
 pub mod files;
 mod fits_table;
 mod json;
+pub mod motions;
 mod paper;
 pub mod ranking;
 mod rounding;

@@ -9,7 +9,7 @@ use super::{Row, Value, rounded, rounded_interval, rounded_plain, rounded_range}
 /// Columns that the text is wrapped at.
 const WIDTH: usize = 78;
 /// Columns of the names on the left.
-const LABEL: usize = 30;
+pub(super) const LABEL: usize = 30;
 
 /// A readable summary of one pair: headings, one result a line, cautions in words.
 ///
@@ -158,7 +158,7 @@ fn one_line(text: &str) -> String {
 }
 
 /// A sentence behind a dash, wrapped and indented.
-fn wrapped(sentence: &str) -> String {
+pub(super) fn wrapped(sentence: &str) -> String {
     let mut text = String::new();
     let mut line = String::from("  -");
     for word in sentence.split_whitespace() {

@@ -16,6 +16,7 @@ mod map;
 mod pair;
 mod plot;
 mod posterior;
+mod radius;
 mod spectra_sheet;
 mod style;
 mod survey;
@@ -24,6 +25,7 @@ mod text;
 pub use calibration::{CalibrationFigure, CalibrationPoint};
 pub use map::{ColourScale, MapCells, MapFigure, ScaleBar};
 pub use plot::Interval;
+pub use radius::{RadiusCurve, RadiusFigure, RadiusPanel};
 pub use spectra_sheet::{SpectraSheet, SpectrumPanel};
 pub use survey::{
     DistributionFigure, ProfilePanel, ProfileSheet, RankBar, RankFigure, ScatterFigure,

@@ -349,10 +349,6 @@ impl Field {
     /// # Errors
     ///
     /// [`RunError::Read`] where a cube cannot be read.
-    #[cfg_attr(
-        not(feature = "figures"),
-        allow(dead_code, reason = "figures alone ask for it")
-    )]
     pub fn read_one(&self, site: usize) -> Result<Block, RunError> {
         let mut read = Block {
             first: site,

@@ -71,7 +71,7 @@ const DRAWN: [(&str, &str, ColourScale); 9] = [
 const LEVELS: [f64; 4] = [0.2, 0.4, 0.6, 0.8];
 
 /// Width of a map's PNG, pixels: 88 mm at 460 dots an inch.
-const MAP_PX: u32 = 1600;
+pub(super) const MAP_PX: u32 = 1600;
 /// Of the sheet of spectra: 180 mm at 340 dots an inch.
 const SHEET_PX: u32 = 2400;
 
@@ -90,41 +90,80 @@ pub(super) fn write(
 ) -> Result<(), RunError> {
     let folder = run.directory.join("figures");
     make_directory(&folder)?;
-    let plane = Plane::of(work);
-    let doubles = |values: &[f32]| values.iter().copied().map(f64::from).collect::<Vec<f64>>();
-    let contoured = (maps.column("integral_thin_k_km_s").map(doubles)).filter(|_| plane.is_some());
-    let peak = (contoured.iter().flatten().copied())
-        .filter(|value| value.is_finite())
-        .fold(0.0, f64::max);
+    let maker = MapMaker::of(run, work, maps);
     for (name, label, colours) in DRAWN {
         let Some(values) = maps.column(name) else {
             continue;
         };
+        let note = (colours != ColourScale::Sequential).then_some("blue: as infall makes it");
+        let values: Vec<f64> = values.iter().copied().map(f64::from).collect();
+        let figure = maker.figure(label, note, colours, values);
+        written.extend(write_figure(&folder, name, &figure.svg()?, MAP_PX)?);
+    }
+    Ok(())
+}
+
+/// Makes figures of maps that share all but their values.
+pub(super) struct MapMaker<'a> {
+    run: &'a MapRun,
+    work: &'a Work<'a>,
+    plane: Option<Plane>,
+    /// The thin line's integral, cell by cell; empty off a raster.
+    contoured: Vec<f64>,
+    peak: f64,
+}
+
+impl<'a> MapMaker<'a> {
+    pub fn of(run: &'a MapRun, work: &'a Work<'a>, maps: &Maps) -> Self {
+        let plane = Plane::of(work);
+        let contoured: Vec<f64> = (maps.column("integral_thin_k_km_s"))
+            .filter(|_| plane.is_some())
+            .map(|values| values.iter().copied().map(f64::from).collect())
+            .unwrap_or_default();
+        let peak = (contoured.iter().copied())
+            .filter(|value| value.is_finite())
+            .fold(0.0, f64::max);
+        Self {
+            run,
+            work,
+            plane,
+            contoured,
+            peak,
+        }
+    }
+
+    /// The figure of values, cell by cell.
+    pub fn figure(
+        &self,
+        label: &str,
+        note: Option<&str>,
+        colours: ColourScale,
+        values: Vec<f64>,
+    ) -> MapFigure {
+        let (run, work, peak) = (self.run, self.work, self.peak);
         let notes = [
-            (colours != ColourScale::Sequential).then_some("blue: as infall makes it"),
+            note,
             (peak > 0.0).then_some("contours: thin line, 20, 40, 60, 80 % of its peak"),
         ];
-        let cells = match &plane {
+        let cells = match &self.plane {
             Some(plane) => MapCells::Raster {
                 width: plane.size.0,
                 height: plane.size.1,
                 first_arcsec: plane.first_arcsec,
                 column_arcsec: plane.column_arcsec,
                 row_arcsec: plane.row_arcsec,
-                values: doubles(values),
-                contoured: contoured.clone().unwrap_or_default(),
+                values,
+                contoured: self.contoured.clone(),
                 levels: LEVELS.map(|share| share * peak).to_vec(),
             },
             None => MapCells::Points {
                 step_arcsec: work.field.step_arcsec(),
                 points: (values.iter().enumerate())
-                    .filter_map(|(site, value)| {
-                        Some((work.field.offsets_arcsec(site)?, f64::from(*value)))
-                    })
+                    .filter_map(|(site, value)| Some((work.field.offsets_arcsec(site)?, *value)))
                     .collect(),
             },
         };
-        let figure = MapFigure {
+        MapFigure {
             title: title(run, work),
             label: label.to_owned(),
             note: notes.into_iter().flatten().collect::<Vec<_>>().join("; "),
@@ -133,10 +172,8 @@ pub(super) fn write(
             colours,
             beam: work.field.beam(),
             scale_bar: scale_bar(run, work),
-        };
-        written.extend(write_figure(&folder, name, &figure.svg()?, MAP_PX)?);
+        }
     }
-    Ok(())
 }
 
 /// The raster about the reference position, as a plane.
@@ -177,7 +214,7 @@ impl Plane {
     }
 }
 
-fn title(run: &MapRun, work: &Work<'_>) -> String {
+pub(super) fn title(run: &MapRun, work: &Work<'_>) -> String {
     let name = run.sheet.source.name.clone().or_else(|| work.field.name());
     match (name, work.field.reference()) {
         (Some(name), Some(position)) => format!("{name}, {}", sexagesimal(&position)),

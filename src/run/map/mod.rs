@@ -1,14 +1,17 @@
 //! A map: every pointing of a field through the whole chain, on all cores.
 //!
 //! Two passes. In the first, each pointing is fitted by itself. In the second, those whose neighbours found
-//! another solution are fitted with these among the starts, and those whose thin line is not detected with
-//! its mean over the beam, or over the map, in its place. Each pass depends on what the one before found
+//! another solution are fitted with these among the starts, those whose thin line is not detected with
+//! its mean over the beam, or over the map, in its place, and all get a first moment over one range. Each pass depends on what the one before found
 //! alone, so that results are the same for any number of threads. What is done is in a journal (see
 //! `durable.rs`); products are made from it.
 
 mod field;
 #[cfg(feature = "figures")]
 mod figures;
+#[cfg(feature = "figures")]
+mod figures_of_motions;
+mod motions;
 mod pointing;
 mod products;
 
@@ -19,9 +22,9 @@ use super::{
     Watch, inputs_sha256,
 };
 use crate::fit::{Workspace, fit_thin};
-use crate::grid::ThinMean;
+use crate::grid::{ThinMean, common_range};
 use crate::prepare::{Expected, prepare};
-use crate::spectrum::Spectrum;
+use crate::spectrum::{Spectrum, Window};
 use field::{Block, Field};
 use pointing::{Again, Pointing, Solution, Work};
 use std::collections::HashMap;
@@ -59,6 +62,8 @@ pub enum MapEnd {
         written: Vec<PathBuf>,
         /// What was done or assumed on the way.
         notes: Vec<String>,
+        /// What the map says of motions, for people.
+        motions: String,
     },
     /// This run was finished before.
     Before(RunRecord),
@@ -106,6 +111,7 @@ pub fn make_map(run: &MapRun, watch: Watch<'_>) -> Result<MapEnd, RunError> {
         counts: made.counts,
         written: made.written,
         notes: field.notes().to_vec(),
+        motions: made.motions,
     })
 }
 
@@ -190,7 +196,7 @@ fn passes(
         Workspace::new,
         |workspace, sites: &Range<usize>| {
             let wanted: Vec<usize> = (sites.clone())
-                .filter(|site| second.concerns(*site))
+                .filter(|site| second.concerns(*site) || second.windows.contains_key(site))
                 .collect();
             if wanted.is_empty() {
                 return Ok(Found::new());
@@ -199,6 +205,13 @@ fn passes(
             wanted
                 .into_iter()
                 .map(|site| {
+                    if let (false, Some(window), Some(range)) = (
+                        second.concerns(site),
+                        second.windows.get(&site),
+                        second.range,
+                    ) {
+                        return Ok((site as u64, work.moment(site, &block, *window, range)));
+                    }
                     let again = second.again(work.field, site)?;
                     Ok((site as u64, work.again(site, &block, &again, workspace)))
                 })
@@ -213,6 +226,10 @@ fn passes(
 pub(super) struct Second {
     /// Solutions of the fitted pointings.
     solutions: HashMap<usize, Vec<Solution>>,
+    /// Windows of their thick lines.
+    windows: HashMap<usize, Window>,
+    /// Velocities of first moments.
+    range: Option<Window>,
     /// Pointings that are fitted with neighbours' solutions among their starts.
     flagged: HashMap<usize, Vec<usize>>,
     /// Pointings whose thin line is not detected, with the mean that takes its place.
@@ -223,7 +240,7 @@ pub(super) struct Second {
 
 impl Second {
     fn plan(work: &Work<'_>, journal: &Journal<Found>, blocks: usize) -> Result<Self, RunError> {
-        let mut solutions = HashMap::new();
+        let (mut solutions, mut windows) = (HashMap::new(), HashMap::new());
         let mut weak = Vec::new();
         let mut above = Vec::new();
         for found in journal.results()?.take(blocks) {
@@ -232,9 +249,12 @@ impl Second {
                 let site = usize::try_from(site).unwrap_or(usize::MAX);
                 match pointing {
                     Pointing::Fitted {
-                        solutions: found, ..
+                        solutions: found,
+                        motions,
+                        ..
                     } => {
                         solutions.insert(site, found);
+                        windows.insert(site, motions.window());
                         above.push(site);
                     }
                     Pointing::Weak => {
@@ -282,8 +302,11 @@ impl Second {
             };
             means.insert(site, mean);
         }
+        let all: Vec<Window> = windows.values().copied().collect();
         Ok(Self {
             solutions,
+            range: common_range(&all),
+            windows,
             flagged,
             weak: means,
             map_mean,
@@ -316,7 +339,11 @@ impl Second {
             Some(ThinMean::Map) => self.map_mean.clone().map(|mean| (ThinMean::Map, mean)),
             None => None,
         };
-        Ok(Again { starts, thin })
+        Ok(Again {
+            starts,
+            thin,
+            range: self.range,
+        })
     }
 }
 

@@ -5,10 +5,12 @@ use super::super::{PairInput, PairOutcome, PairSettings, RunError, pair_row};
 use super::field::{Block, Field};
 use crate::fit::{PairFit, Workspace, fit_thin};
 use crate::grid::{GridCaution, ThinMean};
+use crate::measure::{Sides, first_moment, sides};
 use crate::model::Model;
-use crate::prepare::{PrepareError, Prepared};
+use crate::numeric::Estimate;
+use crate::prepare::{Expected, PrepareError, PrepareSettings, Prepared, prepare};
 use crate::report::{Row, Value, columns};
-use crate::spectrum::Spectrum;
+use crate::spectrum::{Spectrum, Window};
 use serde::{Deserialize, Serialize};
 
 /// What became of a pointing.
@@ -36,8 +38,30 @@ pub enum Pointing {
         values: Vec<Value>,
         /// Solution of every model.
         solutions: Vec<Solution>,
+        /// What it says of motions beside its row.
+        motions: Box<Motions>,
     },
+    /// Fitted in the first pass for good: its first moment over the map's range of velocities.
+    Moment(Option<Estimate>),
 }
+
+/// What a fitted pointing says of motions beside its row.
+#[derive(Clone, Copy, Debug, Serialize, Deserialize)]
+pub struct Motions {
+    /// Window of its thick line, km/s.
+    pub window_km_s: [f64; 2],
+    /// Blue less red in core and wings.
+    pub sides: Option<Sides>,
+    /// Change of the asymmetry by the systematic of the rest frequencies.
+    pub asymmetry_systematic: Option<f64>,
+    /// First moment of the thick line, km/s.
+    pub thick_moment_km_s: Option<Estimate>,
+    /// Whether the thin line is its own.
+    pub own_thin: bool,
+}
+
+/// Significance from which core, wings and first moment are taken.
+const DETECTION: f64 = 5.0;
 
 /// A model's solution, to begin a neighbour's search with.
 #[derive(Clone, Debug, Serialize, Deserialize)]
@@ -93,6 +117,34 @@ impl Solution {
     }
 }
 
+impl Motions {
+    fn of(outcome: &PairOutcome, again: &Again) -> Self {
+        let (thick, thin) = (&outcome.thick, &outcome.thin);
+        let window = thick.prepared.window;
+        let components = thick.line.components.len();
+        let systematic =
+            (thick.line.velocity_systematic_km_s()).hypot(thin.line.velocity_systematic_km_s());
+        let of_line = |line| sides(&thick.prepared, line, components, systematic, DETECTION);
+        let moment = |range| first_moment(&thick.prepared, range, DETECTION);
+        Self {
+            window_km_s: [window.low_km_s, window.high_km_s],
+            sides: outcome.thin_fit.line.as_ref().and_then(of_line),
+            asymmetry_systematic: outcome.measures.asymmetry_systematic,
+            thick_moment_km_s: again.range.and_then(moment),
+            own_thin: again.thin.is_none(),
+        }
+    }
+
+    /// The window of the thick line.
+    pub fn window(&self) -> Window {
+        let [low_km_s, high_km_s] = self.window_km_s;
+        Window {
+            low_km_s,
+            high_km_s,
+        }
+    }
+}
+
 /// What all pointings of a run share.
 #[derive(Clone, Copy, Debug)]
 pub struct Work<'a> {
@@ -108,6 +160,8 @@ pub struct Again {
     pub starts: Vec<(Model, Vec<f64>)>,
     /// The thin line's mean in its place.
     pub thin: Option<(ThinMean, Spectrum)>,
+    /// Velocities of first moments.
+    pub range: Option<Window>,
 }
 
 /// A pair that is to be fitted, or why not.
@@ -141,7 +195,7 @@ impl Work<'_> {
                     return Ok(Pointing::Weak);
                 }
                 let outcome = fit_prepared(*pair, *prepared, self.settings, workspace)?;
-                self.fitted(site, &outcome, None)
+                self.fitted(site, &outcome, &Again::default())
             }
         }
     }
@@ -154,15 +208,12 @@ impl Work<'_> {
         again: &Again,
         workspace: &mut Workspace,
     ) -> Pointing {
-        let pointing = self
-            .outcome(site, block, again, workspace)
-            .and_then(|outcome| {
-                let thin = again.thin.as_ref().map(|(mean, _)| *mean);
-                match outcome {
-                    Some(outcome) => self.fitted(site, &outcome, thin),
+        let pointing =
+            self.outcome(site, block, again, workspace)
+                .and_then(|outcome| match outcome {
+                    Some(outcome) => self.fitted(site, &outcome, again),
                     None => Ok(Pointing::Blank),
-                }
-            });
+                });
         pointing.unwrap_or_else(|error| self.unusable(site, &error))
     }
 
@@ -181,6 +232,31 @@ impl Work<'_> {
         let mut settings = self.settings.clone();
         settings.fit.starts.extend(again.starts.iter().cloned());
         fit_prepared(*pair, *prepared, &settings, workspace).map(Some)
+    }
+
+    /// First moment of the thick line of a pointing that was fitted, its window known.
+    pub fn moment(&self, site: usize, block: &Block, window: Window, range: Window) -> Pointing {
+        // What cannot be read or prepared has been told of.
+        let pair = self.field.pair(site, block).ok().flatten();
+        let prepared = pair.and_then(|pair| {
+            let expected = Expected {
+                components: pair.thick.line.components.clone(),
+                window: None,
+            };
+            let settings = PrepareSettings {
+                window: Some(window),
+                ..pair.thick.prepare.clone()
+            };
+            prepare(&pair.thick.spectrum, &settings, &expected).ok()
+        });
+        Pointing::Moment(prepared.and_then(|thick| first_moment(&thick, range, DETECTION)))
+    }
+
+    /// Both lines of a pointing, where they can be prepared.
+    pub fn prepared(&self, site: usize) -> Result<Option<(Prepared, Prepared)>, RunError> {
+        let block = self.field.read_one(site)?;
+        let pair = self.field.pair(site, &block).ok().flatten();
+        Ok(pair.and_then(|pair| prepare_lines(&pair).ok()))
     }
 
     fn ready(
@@ -214,8 +290,9 @@ impl Work<'_> {
         &self,
         site: usize,
         outcome: &PairOutcome,
-        thin: Option<ThinMean>,
+        again: &Again,
     ) -> Result<Pointing, RunError> {
+        let thin = again.thin.as_ref().map(|(mean, _)| *mean);
         let mut row = pair_row(outcome)?;
         self.place(site, &mut row)?;
         if let Some(mean) = thin {
@@ -231,6 +308,7 @@ impl Work<'_> {
         Ok(Pointing::Fitted {
             values: row.into_values(),
             solutions: Solution::all(&outcome.fit),
+            motions: Box::new(Motions::of(outcome, again)),
         })
     }
 

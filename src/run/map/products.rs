@@ -3,15 +3,18 @@
 #[cfg(feature = "figures")]
 use super::super::PairOutcome;
 use super::super::products::make_directory;
-use super::super::{Journal, RunError};
+use super::super::{Given, Journal, RunError};
 use super::field::Field;
 #[cfg(feature = "figures")]
 use super::final_outcome;
+use super::motions::{self, MapMotions};
 use super::pointing::{Pointing, Work};
 use super::{Found, MapRun, Second};
 #[cfg(feature = "figures")]
 use crate::fit::Workspace;
 use crate::report::files::write_atomically;
+use crate::report::motions as motions_table;
+use crate::report::motions::{Entry, Part};
 use crate::report::sky_map::{MapFrame, write_caution_map, write_map};
 use crate::report::{Kind, ReportError, Row, TableFiles, Value, columns};
 use std::collections::BTreeMap;
@@ -44,6 +47,8 @@ const MOST_PROBLEMS: usize = 5;
 pub(super) struct Made {
     pub counts: MapCounts,
     pub written: Vec<PathBuf>,
+    /// What the map says of motions, for people.
+    pub motions: String,
 }
 
 /// Writes all products; each is whole or absent.
@@ -67,10 +72,11 @@ pub(super) fn write(
         pointings: work.field.len(),
         ..MapCounts::default()
     };
-    let mut fitted = Vec::new();
+    let (mut fitted, mut seen) = (Vec::new(), Vec::new());
     each_pointing(journal, blocks.len(), directory, |site, pointing| {
+        let mut motions = None;
         let values = match pointing {
-            Pointing::Blank | Pointing::Weak => return Ok(()),
+            Pointing::Blank | Pointing::Weak | Pointing::Moment(_) => return Ok(()),
             Pointing::Unusable { values, message } => {
                 counts.unusable += 1;
                 if counts.problems.len() < MOST_PROBLEMS {
@@ -84,13 +90,19 @@ pub(super) fn write(
                 counts.skipped += 1;
                 values
             }
-            Pointing::Fitted { values, .. } => {
+            Pointing::Fitted {
+                values,
+                motions: of,
+                ..
+            } => {
                 counts.fitted += 1;
                 fitted.push(site);
+                motions = Some(of);
                 values
             }
         };
         let row = schema.row_of(values)?;
+        seen.extend(motions.and_then(|motions| motions::of_row(&row, &motions)));
         maps.take(work.field.cell(site).unwrap_or(site), &row);
         Ok(tables.push(&row)?)
     })?;
@@ -102,10 +114,14 @@ pub(super) fn write(
         });
     }
     let mut written = tables.finish()?;
-    maps.write(work.field, directory, &meta, &mut written)?;
+    let distance_kpc = run.sheet.source.distance_kpc.map(Given::estimate);
+    let found = motions::read(work, &fitted, seen, distance_kpc)?;
+    written.extend(write_motions(&found, directory, &meta)?);
+    maps.write(work.field, directory, (&meta, &found), &mut written)?;
     #[cfg(feature = "figures")]
     if run.sheet.output.figures {
         super::figures::write(run, work, &maps, &mut written)?;
+        super::figures_of_motions::write(run, work, &maps, &found, &mut written)?;
         super::figures::write_spectra(run, work, second, &fitted, &mut written)?;
         if run.pages {
             write_pages(run, work, second, &fitted, &mut written)?;
@@ -116,7 +132,28 @@ pub(super) fn write(
     let text = sheet.to_toml()?;
     write_atomically(&path, |writer| Ok(writer.write_all(text.as_bytes())?))?;
     written.push(path);
-    Ok(Made { counts, written })
+    let [thick, thin] = work.field.lines();
+    let name = (work.field.name()).map_or_else(String::new, |name| format!("{name}: "));
+    let title = format!("{name}{} (thick) and {} (thin)", thick.name, thin.name);
+    Ok(Made {
+        counts,
+        written,
+        motions: motions_table::text(&title, &found.entries),
+    })
+}
+
+/// The table of what the map says of motions.
+fn write_motions(
+    found: &MapMotions,
+    directory: &Path,
+    meta: &[(String, Value)],
+) -> Result<Vec<PathBuf>, RunError> {
+    let schema = motions_table::schema()?;
+    let mut files = TableFiles::begin(directory, "motions", &schema, meta.to_vec())?;
+    for row in motions_table::table(&found.entries)?.rows() {
+        files.push(row)?;
+    }
+    Ok(files.finish()?)
 }
 
 /// Every pointing as it is in the end, in order: that of the second pass in place of that of the first.
@@ -149,7 +186,7 @@ fn each_pointing(
     let mut spool = BufReader::new(spool);
     let mut next = next_of(&mut spool).map_err(failed)?;
     for found in journal.results()?.take(blocks) {
-        for (number, pointing) in found?
+        for (number, mut pointing) in found?
             .1
             .map_err(|failure| RunError::Internal(failure.message))?
         {
@@ -157,10 +194,14 @@ fn each_pointing(
             let replaced = next.take_if(|(other, _)| *other == number);
             if let Some((_, replaced)) = replaced {
                 next = next_of(&mut spool).map_err(failed)?;
-                each(site, replaced)?;
-            } else {
-                each(site, pointing)?;
+                match (&mut pointing, replaced) {
+                    (Pointing::Fitted { motions, .. }, Pointing::Moment(moment)) => {
+                        motions.thick_moment_km_s = moment;
+                    }
+                    (_, replaced) => pointing = replaced,
+                }
             }
+            each(site, pointing)?;
         }
     }
     Ok(())
@@ -298,7 +339,7 @@ impl Maps {
         &self,
         field: &Field,
         directory: &Path,
-        meta: &[(String, Value)],
+        (meta, found): (&[(String, Value)], &MapMotions),
         written: &mut Vec<PathBuf>,
     ) -> Result<(), RunError> {
         // Pointings off any raster have a table alone.
@@ -307,13 +348,22 @@ impl Maps {
         };
         let folder = directory.join("maps");
         make_directory(&folder)?;
-        let frame = MapFrame {
+        let verdict = |entry: &&Entry| entry.part == Part::Verdict;
+        let lines = |keep: &dyn Fn(&&Entry) -> bool| {
+            let entries = found.entries.iter().filter(keep);
+            let pairs = entries.map(motions_table::line);
+            pairs
+                .map(|(name, text)| (name, Value::from(text)))
+                .collect::<Vec<_>>()
+        };
+        let mut frame = MapFrame {
             width,
             height,
             axes,
             beam: field.beam(),
-            meta: meta.to_vec(),
+            meta: [meta, &lines(&verdict)].concat(),
         };
+        let common = frame.meta.clone();
         let mut write =
             |name: &str, content: &dyn Fn(&mut dyn Write) -> Result<(), ReportError>| {
                 let path = folder.join(format!("{name}.fits"));
@@ -329,11 +379,13 @@ impl Maps {
             if column.kind != Kind::Real || PLACES.contains(&column.name.as_str()) {
                 continue;
             }
+            frame.meta = [&common[..], &lines(&|entry| entry.column == column.name)].concat();
             let words = (&*column.name, column.unit.as_deref(), &*column.description);
             write(&column.name, &|writer| {
                 write_map(&frame, words, values, writer)
             })?;
         }
+        frame.meta = common;
         // Bits in the order of the codes' names, whatever the order in which they came.
         let sorted: BTreeMap<&String, usize> = (self.codes.iter().take(MOST_CODES))
             .enumerate()

@@ -1,4 +1,5 @@
-//! A map's truth into a folder: a pointing table with its spectra, a pair of cubes, and the truth.
+//! A map's truth into a folder: a pointing table with its spectra, a pair of cubes, run sheets that `inrush map`
+//! takes, and the truth.
 //!
 //! The folder is made under a temporary name and renamed when it is whole. Rays are shared out to
 //! threads; which thread makes a ray does not matter to it.
@@ -10,7 +11,7 @@ use crate::line::{Line, find};
 use crate::report::cube::{CubeGrid, write_cube};
 use crate::report::spectra::{self, SpectrumHeader};
 use crate::report::{Kind, Row, Schema, Table, write_csv};
-use crate::run::{BatchSettings, RunError};
+use crate::run::{BatchSettings, Beam, LineSection, RunError, SourceSection};
 use crate::simulate::grid::{
     GridPlan, GridTruth, PointingLine, Ray, SimulatedGrid, SimulatedPointing,
 };
@@ -65,6 +66,9 @@ pub struct GridFiles {
 
 /// Name of the pointing table.
 const TABLE: &str = "grid.csv";
+/// Names of the run sheets.
+const SHEET: &str = "map.toml";
+const CUBES_SHEET: &str = "cubes.toml";
 /// Name of the table of truths.
 const TRUTH: &str = "truth.csv";
 /// Name of the folder of spectra.
@@ -237,10 +241,75 @@ fn write_into(
         truths.push(truth_row(&schema, index, run, plan, grid, pointing)?)?;
     }
     write_csv(&truths, create(folder, TRUTH)?)?;
-    let path = folder.join(SETTINGS);
-    fs::write(&path, settings_text(run)?).map_err(|source| file_error(&path, source))?;
-    written.extend([TRUTH, SETTINGS]);
+    written.push(TRUTH);
+    let mut text = |name: &'static str, text: String| {
+        let path = folder.join(name);
+        fs::write(&path, text).map_err(|source| file_error(&path, source))?;
+        written.push(name);
+        Ok::<(), RunError>(())
+    };
+    if run.products != GridProducts::Cubes {
+        text(SHEET, sheet(run, lines, true)?)?;
+    }
+    if run.products != GridProducts::Table {
+        text(CUBES_SHEET, sheet(run, lines, false)?)?;
+    }
+    text(SETTINGS, settings_text(run)?)?;
     Ok(written)
+}
+
+/// A run sheet without what it takes by default: of the pointing table, or of the cubes, which hold beam and
+/// place.
+#[derive(Serialize)]
+struct MapSheet {
+    source: SourceSection,
+    thick: LineSection,
+    thin: LineSection,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    grid: Option<MapGrid>,
+}
+
+#[derive(Serialize)]
+struct MapGrid {
+    pointings: &'static str,
+    centre_deg: [f64; 2],
+}
+
+fn sheet(run: &GridRun, lines: [&Line; 2], of_table: bool) -> Result<String, RunError> {
+    let truth = &run.truth;
+    let section = |which: &str, line: &Line| {
+        let mut section = LineSection {
+            line: Some(line.name.clone()),
+            ..LineSection::default()
+        };
+        if of_table {
+            let [major, minor] = truth.beam_arcsec;
+            section.beam_arcsec = Some(if major == minor {
+                Beam::Round(major)
+            } else {
+                Beam::Elliptical([major, minor])
+            });
+            section.beam_angle_deg = (major != minor).then_some(truth.beam_angle_deg);
+        } else {
+            section.file = Some(cube_name(which).into());
+        }
+        section
+    };
+    let sheet = MapSheet {
+        source: SourceSection {
+            name: Some(run.name.clone()),
+            ..SourceSection::default()
+        },
+        thick: section("thick", lines[0]),
+        thin: section("thin", lines[1]),
+        grid: of_table.then_some(MapGrid {
+            pointings: TABLE,
+            centre_deg: [truth.ra_deg, truth.dec_deg],
+        }),
+    };
+    let text = toml::to_string(&sheet).map_err(|error| RunError::Internal(error.to_string()))?;
+    let name = if of_table { SHEET } else { CUBES_SHEET };
+    Ok(format!("# Map it: inrush map {name} --out DIR\n\n{text}"))
 }
 
 fn create(folder: &Path, name: &str) -> Result<BufWriter<File>, RunError> {
