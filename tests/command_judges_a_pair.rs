@@ -20,7 +20,7 @@ const ENDS: [&str; 5] = ["_lo95", "_lo68", "", "_hi68", "_hi95"];
 
 /// Infall on the hill's own profile is infall of a sphere too; slabs' results stay as they are.
 #[test]
-fn a_sphere_stands_beside_the_slabs_on_request() {
+fn the_speed_of_a_sphere_that_fits_is_adopted() {
     let folder = Folder::with_pair();
     let without = folder.fit_json(&[]);
     let results = folder.fit_json(&["--sphere"]);
@@ -29,10 +29,21 @@ fn a_sphere_stands_beside_the_slabs_on_request() {
     assert!(ends[0] > 0.0, "{ends:?}");
     assert!(["constant", "free fall"].contains(&results["sphere_law"].as_str().unwrap()));
     assert!(number(&results, "sphere_chi2_red") < 2.0);
-    for name in ["v_in_km_s", "p_infall", "v_in_model"] {
+    assert_eq!(results["v_in_model"], "sphere");
+    for end in ENDS {
+        let (adopted, own) = (format!("v_in_km_s{end}"), format!("sphere_v_in_km_s{end}"));
+        assert_eq!(results[&adopted], results[&own], "{adopted}");
+    }
+    for name in ["p_infall", "hill_v_in_km_s", "hill_share", "hill_tau"] {
         assert_eq!(results[name], without[name], "{name}");
     }
+    assert!(results["v_in_systematic_km_s"].is_null());
     assert!(without["sphere_v_in_km_s"].is_null());
+    // what the sphere knows nothing of leaves the slabs' speed
+    let given = folder.fit_json(&["--sphere", "--prior", "tau=2,0.5"]);
+    assert_ne!(given["v_in_model"], "sphere");
+    assert_eq!(given["sphere_v_in_km_s"], results["sphere_v_in_km_s"]);
+    assert!(codes(&given).contains(&"sphere-unheard"), "{given:?}");
     let both = folder.fit(&["--sphere", "--formal"]);
     assert_eq!(both.code, 2, "{}", both.stderr);
 }

@@ -249,7 +249,7 @@ fn posterior(case: &Case) -> PosteriorPart {
     });
     PosteriorPart {
         range_km_s,
-        averaged: density(0),
+        adopted: density(0),
         interval68_km_s: around(1.0),
         interval95_km_s: around(2.0),
         models: case

@@ -633,6 +633,7 @@ fn other_signal_does_not_count_in_fits_and_is_said() {
             measures: &measures,
             fit: &fit,
             judgement: Judgement::NotAsked,
+            sphere: None,
         });
         let said: Vec<String> = found
             .iter()

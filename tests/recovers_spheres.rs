@@ -88,7 +88,7 @@ fn reduced(v_in_km_s: f64, velocity_slope: f64, seed: u64) -> Pair {
         collision_ratio: 0.05,
         collision_slope: 1.6,
         temperature_slope: 0.1,
-        thin_slope: 0.0,
+        shared_trapping: 0.0,
     };
     let line = |opacity_ratio: f64| ReducedLine {
         opacity_ratio,

@@ -29,6 +29,30 @@ pub struct Drawn {
     pub velocity_km_s: Vec<f64>,
     pub thick_k: Vec<f64>,
     pub thin_k: Vec<f64>,
+    /// What excites the lines, in words.
+    #[serde(default)]
+    pub excitation: String,
+}
+
+/// What a pair has to be to be of use.
+pub struct Wanted {
+    pub snr: f64,
+    pub thin_noise_ratio: f64,
+    pub depth: f64,
+}
+
+fn peak(values: &[f64]) -> f64 {
+    values.iter().copied().fold(0.0, f64::max)
+}
+
+impl Wanted {
+    /// Whether the thick line is thick and bright, and the thin one's peak above four times its noise.
+    pub fn holds(&self, thick_k: &[f64], thin_k: &[f64]) -> bool {
+        let noise = peak(thick_k) / self.snr;
+        (2.0..300.0).contains(&self.depth)
+            && peak(thick_k) > 0.3
+            && peak(thin_k) > 4.0 * noise * self.thin_noise_ratio
+    }
 }
 
 const LINES: [(&str, usize, &str, &str); 5] = [
@@ -87,18 +111,7 @@ fn attempt(random: &mut ChaCha8Rng, velocity_slope: f64) -> Result<Option<Drawn>
     let v_lsr_km_s = random.random_range(-50.0..50.0);
     let (name, transition, thick_line, thin_line) = LINES[random.random_range(0..LINES.len())];
     let molecule = Molecule::built_in(name)?;
-    #[expect(clippy::cast_possible_truncation, reason = "a few hundred channels")]
-    let count = (20.0 * sigma_km_s / step).ceil() as i32;
-    let shift = random.random_range(-0.5..0.5);
-    let velocity: Vec<f64> = (-count..=count)
-        .map(|index| (f64::from(index) + shift) * step)
-        .collect();
-    let reach = 5.0 * sigma_km_s + clump.v_in_km_s.abs() * (1.0 + 4.0 * velocity_slope);
-    let near: Vec<f64> = velocity
-        .iter()
-        .copied()
-        .filter(|v| v.abs() < reach)
-        .collect();
+    let (velocity, near) = Drawn::velocities(&clump, step, random.random_range(-0.5..0.5));
     let line = LineView {
         transition,
         components: vec![Component::SINGLE],
@@ -106,7 +119,7 @@ fn attempt(random: &mut ChaCha8Rng, velocity_slope: f64) -> Result<Option<Drawn>
             fwhm_pc: beam_over_radius * outer_radius_pc,
             offset_pc: 0.0,
         },
-        velocity_km_s: near,
+        velocity_km_s: near.clone(),
     };
     let view = PairView {
         thin_molecule: molecule.isotopologue(0.973),
@@ -116,23 +129,17 @@ fn attempt(random: &mut ChaCha8Rng, velocity_slope: f64) -> Result<Option<Drawn>
     };
     let mut mode = Mode::fast();
     let rough = pair_spectra(&clump, ratio, &view, &mode, None)?;
-    let peak = |values: &[f64]| values.iter().copied().fold(0.0, f64::max);
-    let (thick_peak, thin_peak) = (peak(&rough.thick_k), peak(&rough.thin_k));
-    let noise = thick_peak / snr;
-    let wanted = (2.0..100.0).contains(&rough.thick_depth)
-        && thick_peak > 0.3
-        && thin_peak > 4.0 * noise * thin_noise_ratio;
-    if !wanted {
+    let wanted = Wanted {
+        snr,
+        thin_noise_ratio,
+        depth: rough.thick_depth,
+    };
+    if rough.thick_depth > 100.0 || !wanted.holds(&rough.thick_k, &rough.thin_k) {
         return Ok(None);
     }
     mode = Mode::full();
     let exact = pair_spectra(&clump, ratio, &view, &mode, None)?;
-    let before = velocity.iter().filter(|v| **v <= -reach).count();
-    let whole = |values: &[f64]| {
-        let mut all = vec![0.0; velocity.len()];
-        all[before..before + values.len()].copy_from_slice(values);
-        all
-    };
+    let whole = |values: &[f64]| Drawn::whole(&velocity, &near, values);
     Ok(Some(Drawn {
         thick_line: thick_line.to_owned(),
         thin_line: thin_line.to_owned(),
@@ -151,10 +158,33 @@ fn attempt(random: &mut ChaCha8Rng, velocity_slope: f64) -> Result<Option<Drawn>
         thick_k: whole(&exact.thick_k),
         thin_k: whole(&exact.thin_k),
         velocity_km_s: velocity.iter().map(|v| v + v_lsr_km_s).collect(),
+        excitation: "equilibrium".to_owned(),
     }))
 }
 
 impl Drawn {
+    /// Velocities relative to the clump, and those that its lines reach.
+    pub fn velocities(clump: &Clump, step: f64, shift: f64) -> (Vec<f64>, Vec<f64>) {
+        #[expect(clippy::cast_possible_truncation, reason = "a few hundred channels")]
+        let count = (20.0 * clump.sigma_km_s / step).ceil() as i32;
+        let velocity: Vec<f64> = (-count..=count)
+            .map(|index| (f64::from(index) + shift) * step)
+            .collect();
+        let motion = clump.v_in_km_s.abs() * (1.0 + 4.0 * clump.velocity_slope);
+        let reach = 5.0 * clump.sigma_km_s + motion;
+        let near = velocity.iter().copied().filter(|v| v.abs() < reach);
+        let near = near.collect();
+        (velocity, near)
+    }
+
+    /// Values at some of the velocities, zeros at the others.
+    pub fn whole(velocity: &[f64], near: &[f64], values: &[f64]) -> Vec<f64> {
+        let before = velocity.iter().filter(|v| **v < near[0]).count();
+        let mut all = vec![0.0; velocity.len()];
+        all[before..before + values.len()].copy_from_slice(values);
+        all
+    }
+
     /// Both lines with white noise.
     pub fn observed(&self, snr: f64, seed: u64) -> Result<(Spectrum, Spectrum), Box<dyn Error>> {
         let mut random = ChaCha8Rng::seed_from_u64(1000 + seed);
@@ -184,8 +214,9 @@ impl Drawn {
 
     pub fn text(&self) -> String {
         format!(
-            "{} depth {:.1} v/sigma {:+.2} ratio {:.0} p {:.2} beam {:.2} T {:.0} m {:.2} n {:.0}",
+            "{} {} depth {:.1} v/sigma {:+.2} ratio {:.0} p {:.2} beam {:.2} T {:.0} m {:.2} n {:.0}",
             self.thick_line,
+            self.excitation,
             self.depth,
             self.v_in_km_s / self.sigma_km_s,
             self.ratio,

@@ -39,8 +39,8 @@ pub fn print(folder: &str, settings: &ClumpSettings) -> Result<(), Box<dyn Error
         let (found, other) = (found?, other?);
         let odds = other.posterior.ln_evidence - found.posterior.ln_evidence;
         let v = found.posterior.v_in_km_s.interval95;
-        let row = Row::new(&found, speed, snr);
-        let fall = Row::new(&other, speed, snr);
+        let row = Row::new(&truth["thick_line"], &found, speed, snr);
+        let fall = Row::new(&truth["thick_line"], &other, speed, snr);
         println!(
             "{} {} {} depth {} v/sigma {:+.2} | {} | free fall ratio {:.3} ln odds {odds:+.2} | 95 % {:.3} to {:.3} km/s",
             truth["id"],
@@ -60,6 +60,14 @@ pub fn print(folder: &str, settings: &ClumpSettings) -> Result<(), Box<dyn Error
         }
     }
     summary("constant", &constant);
+    for line in ["HCO+ 1-0", "HCO+ 4-3"] {
+        let some: Vec<Row> = constant
+            .iter()
+            .filter(|row| row.line == line)
+            .cloned()
+            .collect();
+        summary(line, &some);
+    }
     summary("free fall", &falling);
     Ok(())
 }

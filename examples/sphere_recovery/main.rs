@@ -2,7 +2,7 @@
 //! noise, against their truth.
 //!
 //! `cargo run --release --example sphere_recovery -- draw FILE PAIRS SEED [constant | free-fall]` makes
-//! noiseless pairs, `... -- judge FILE [PAIRS] [constant | free-fall] [SHAPE_ERROR] [SNR]` adds noise and
+//! noiseless pairs, `... -- trapped` the same of lines that are excited by themselves, `... -- judge FILE [PAIRS] [constant | free-fall] [SHAPE_ERROR] [SNR]` adds noise and
 //! infers, `... -- folder [FOLDER]` takes pairs with a truth.csv such as tests/data/spheres.
 #![allow(
     clippy::print_stdout,
@@ -13,8 +13,9 @@
 
 mod drawn;
 mod folder;
+mod trapped;
 
-use drawn::{Drawn, draw};
+use drawn::Drawn;
 use inrush::fit::clump::{ClumpPosterior, ClumpSettings, SpeedLaw, clump_posterior};
 use inrush::fit::{FitSettings, fit_thin};
 use inrush::line::Line;
@@ -52,11 +53,17 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
     };
     let name = arguments.get(1).cloned().unwrap_or_default();
     match arguments.first().map_or("", String::as_str) {
-        "draw" => {
+        "draw" | "trapped" => {
             let mut file = std::io::BufWriter::new(std::fs::File::create(&name)?);
             let pairs = number(2, 100.0)? as usize;
             let seed = number(3, 1.0)? as u64;
-            for drawn in draw(pairs, seed, law(arguments.get(4))?.slope()) {
+            let slope = law(arguments.get(4))?.slope();
+            let drawn: Box<dyn Iterator<Item = _>> = if arguments[0] == "draw" {
+                Box::new(drawn::draw(pairs, seed, slope))
+            } else {
+                Box::new(trapped::draw(pairs, seed, slope))
+            };
+            for drawn in drawn {
                 writeln!(file, "{}", serde_json::to_string(&drawn?)?)?;
             }
             file.flush()?;
@@ -83,7 +90,7 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
                 let lines = drawn.lines()?;
                 match infer(&thick, &thin, &lines, law, &settings) {
                     Ok(found) => {
-                        let row = Row::new(&found, drawn.v_in_km_s, snr);
+                        let row = Row::new(&drawn.thick_line, &found, drawn.v_in_km_s, snr);
                         println!("{index} {} {}", drawn.text(), row.text());
                         rows.push(row);
                     }
@@ -91,6 +98,16 @@ fn run(arguments: &[String]) -> Result<(), Box<dyn Error>> {
                 }
             }
             summary("all", &rows);
+            for line in ["HCO+ 1-0", "HCO+ 3-2", "HCO+ 4-3", "CS 2-1"] {
+                let some: Vec<Row> = rows
+                    .iter()
+                    .filter(|row| row.line == line)
+                    .cloned()
+                    .collect();
+                if !some.is_empty() {
+                    summary(line, &some);
+                }
+            }
             Ok(())
         }
         "folder" => folder::print(&name, &ClumpSettings::default()),
@@ -145,7 +162,9 @@ fn infer(
 }
 
 /// What a pair's posterior says against the truth.
+#[derive(Clone)]
 struct Row {
+    line: String,
     snr: f64,
     ratio: f64,
     width: f64,
@@ -158,11 +177,12 @@ struct Row {
 }
 
 impl Row {
-    fn new(found: &Found, truth: f64, snr: f64) -> Self {
+    fn new(line: &str, found: &Found, truth: f64, snr: f64) -> Self {
         let v = found.posterior.v_in_km_s;
         let inside = |(low, high): (f64, f64)| (low..=high).contains(&truth);
         let half = 0.5 * (v.interval68.1 - v.interval68.0);
         Self {
+            line: line.to_owned(),
             snr,
             ratio: v.median / truth,
             width: half / truth.abs(),

@@ -135,6 +135,7 @@ fn fitted(
         measures: &measures,
         fit: &fit,
         judgement: Judgement::NotAsked,
+        sphere: None,
     });
     let drawn = fit.models.iter().filter_map(|model| {
         let speed = model.parameter("v_in_km_s")?;

@@ -252,6 +252,8 @@ struct Plan<'a> {
     speed: Option<&'a Drawn>,
     sigma_thick: Option<&'a Drawn>,
     sigma_thin: Option<&'a Drawn>,
+    /// Of the gas: a sphere's, else the thin line's.
+    sigma_gas: Option<&'a Drawn>,
     molecule: Option<&'static Molecule>,
     thick: Option<Emitter>,
     thin: Option<Emitter>,
@@ -294,6 +296,9 @@ impl<'a> Plan<'a> {
             speed: fit.column("v_in_km_s"),
             sigma_thick: fit.column("sigma_km_s"),
             sigma_thin: fit.column("sigma_thin_km_s").or(fit.column("sigma_km_s")),
+            sigma_gas: ["sigma_gas_km_s", "sigma_thin_km_s", "sigma_km_s"]
+                .iter()
+                .find_map(|name| fit.column(name)),
             molecule: tracers
                 .thin
                 .transition()
@@ -398,6 +403,11 @@ impl<'a> Plan<'a> {
             .map_or(Err(Lack::DISPERSION), |sigma| Ok(sigma.at(row)))
     }
 
+    fn sigma_gas(&self, row: Option<usize>) -> Step {
+        self.sigma_gas
+            .map_or(Err(Lack::DISPERSION), |sigma| Ok(sigma.at(row)))
+    }
+
     fn column_thick(&self, row: Option<usize>) -> Step {
         let emitter = self.thick.ok_or(Lack::THICK_EMITTER);
         let depth = self.thick_depth.as_ref().ok_or(Lack::THICK_DEPTH);
@@ -451,7 +461,7 @@ impl<'a> Plan<'a> {
         let rate = self.mass_rate(row, mass);
         let free_fall = all([mass, radius]).map(|[m, r]| free_fall_speed_km_s(m, r));
         let sound = given(Input::Kinetic).map(sound_speed_km_s);
-        let non_thermal = all([self.sigma_thin(row), self.thermal(row)])
+        let non_thermal = all([self.sigma_gas(row), self.thermal(row)])
             .map(|[sigma, thermal]| non_thermal_dispersion_km_s(sigma, thermal));
         let total = all([non_thermal, sound]).map(|[n, c]| total_dispersion_km_s(n, c));
         let virial = |sigma| all([sigma, radius, mass]).map(|[s, r, m]| virial_parameter(s, r, m));
@@ -821,7 +831,7 @@ fn of_results(
     if let Some(ratio) = value(Quantity::SpeedRatio).filter(|ratio| *ratio > 1.0) {
         found.push(DeriveCaution::FasterThanFreeFall { ratio });
     }
-    if let (Ok(sigma_km_s), Ok(thermal_km_s)) = (plan.sigma_thin(None), plan.thermal(None))
+    if let (Ok(sigma_km_s), Ok(thermal_km_s)) = (plan.sigma_gas(None), plan.thermal(None))
         && sigma_km_s < thermal_km_s
     {
         found.push(DeriveCaution::NarrowerThanThermal {

@@ -5,6 +5,7 @@ use super::source::{Input, Law, SourceProperties};
 use crate::constants::FWHM_PER_SIGMA;
 use crate::fit::ModelFit;
 use crate::fit::averaged::{Averaged, Row};
+use crate::fit::clump::ClumpPosterior;
 use crate::line::Line;
 use crate::measure::ThinLine;
 use crate::model::RadiationTemperature;
@@ -206,6 +207,30 @@ impl FitDraws {
             put(name, &|row| row.get(name).or_else(|| half_of_hill(row)));
         }
         made
+    }
+
+    /// The same with speed and dispersion of a sphere: `v_in_km_s` in the place of the slabs', and
+    /// `sigma_gas_km_s`, that of the gas, beside theirs. Depths and temperatures stay those of the slabs.
+    /// The speed is left out where `with_speed` is false.
+    #[must_use]
+    pub fn with_sphere(
+        mut self,
+        sphere: &ClumpPosterior,
+        with_speed: bool,
+        settings: &DeriveSettings,
+    ) -> Self {
+        let draws = sphere.speeds_and_dispersions(self.rows, settings.seed);
+        let (speeds, dispersions): (Vec<f64>, Vec<f64>) = draws.into_iter().unzip();
+        self.columns.retain(|(name, _)| name != "v_in_km_s");
+        let mut put = |name: &str, of: &str, draws: Vec<f64>| {
+            let value = sphere.physical(of).map_or(f64::NAN, |one| one.median);
+            self.columns.push((name.to_owned(), Drawn { value, draws }));
+        };
+        if with_speed {
+            put("v_in_km_s", "v_in_km_s", speeds);
+        }
+        put("sigma_gas_km_s", "sigma_km_s", dispersions);
+        self
     }
 
     /// Dispersion and peak of the thin line's own fit alone, where no model describes the pair.

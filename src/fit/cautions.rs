@@ -159,6 +159,11 @@ pub enum Caution {
         /// What speaks against them.
         doubts: Vec<Doubt>,
     },
+    /// Settings of the fit that the sphere knows nothing of.
+    SphereUnheard {
+        /// As run sheets name them.
+        settings: Vec<String>,
+    },
     /// There is no posterior of a sphere.
     NoSphere {
         /// Why.
@@ -231,6 +236,7 @@ impl Caution {
             Self::SpeedUnconstrained => "speed-unconstrained",
             Self::SphereMisfit { .. } => "sphere-misfit",
             Self::SphereUntrusted { .. } => "sphere-untrusted",
+            Self::SphereUnheard { .. } => "sphere-unheard",
             Self::NoSphere { .. } => "no-sphere",
             Self::SpeedLimit { .. } => "speed-limit",
             Self::ModelsDiffer { .. } => "models-differ",
@@ -335,14 +341,20 @@ impl Caution {
                 "two clouds on one line of sight explain the pair best (probability {probability:.2}): the speed holds only if it is one clump"
             ),
             Self::SphereMisfit { reason } => format!(
-                "noise does not explain what the best sphere leaves ({}): its speed may be off",
+                "noise does not explain what the best sphere leaves ({}): the slabs' speed is adopted",
                 reason.text()
             ),
             Self::SphereUntrusted { doubts } => format!(
-                "draws do not describe the sphere's posterior well ({}): its interval may be off",
+                "draws do not describe the sphere's posterior well ({}): the slabs' speed is adopted",
                 listed(doubts, Doubt::text)
             ),
-            Self::NoSphere { reason } => format!("no sphere: {reason}"),
+            Self::SphereUnheard { settings } => format!(
+                "the sphere knows nothing of {}: the slabs' speed is adopted",
+                listed(settings, Clone::clone)
+            ),
+            Self::NoSphere { reason } => {
+                format!("no sphere: {reason}; the slabs' speed is adopted")
+            }
         }
     }
 }
@@ -386,6 +398,8 @@ pub struct PairFacts<'a> {
     pub fit: &'a PairFit,
     /// What posteriors say.
     pub judgement: Judgement<'a>,
+    /// The sphere whose speed is adopted.
+    pub sphere: Option<&'a ClumpPosterior>,
 }
 
 /// What posteriors say of a pair.
@@ -413,7 +427,10 @@ pub fn cautions(facts: &PairFacts<'_>) -> Vec<Caution> {
 
 /// What limits the speed of the sphere that a pair prefers.
 #[must_use]
-pub fn sphere_cautions(found: Result<&ClumpPosterior, &PosteriorError>) -> Vec<Caution> {
+pub fn sphere_cautions(
+    found: Result<&ClumpPosterior, &PosteriorError>,
+    unheard: &[String],
+) -> Vec<Caution> {
     let sphere = match found {
         Ok(sphere) => sphere,
         Err(error) => {
@@ -426,7 +443,10 @@ pub fn sphere_cautions(found: Result<&ClumpPosterior, &PosteriorError>) -> Vec<C
     let misfit = misfit.map(|reason| Caution::SphereMisfit { reason });
     let doubts = sphere.quality.doubts();
     let untrusted = (!doubts.is_empty()).then_some(Caution::SphereUntrusted { doubts });
-    misfit.into_iter().chain(untrusted).collect()
+    let unheard = (!unheard.is_empty()).then(|| Caution::SphereUnheard {
+        settings: unheard.to_vec(),
+    });
+    misfit.into_iter().chain(untrusted).chain(unheard).collect()
 }
 
 /// Whether the thick line as a whole is in absorption.
@@ -514,9 +534,10 @@ fn of_judgement(facts: &PairFacts<'_>, found: &mut Vec<Caution>) {
         return;
     }
     let (low, high) = verdict.v_in_km_s.interval68;
-    match speed {
+    match facts.sphere.map_or(speed, ClumpPosterior::speed) {
         Speed::Unconstrained => found.push(Caution::SpeedUnconstrained),
         Speed::Below { limit_km_s } => found.push(Caution::SpeedLimit { limit_km_s }),
+        Speed::Measured if facts.sphere.is_some() => {}
         Speed::Measured if 2.0 * verdict.between_models_km_s > high - low => {
             let of = |model| Some(posterior.of(Family::Moving(model))?.v_in_km_s()?.median);
             let models = verdict.shares.iter();

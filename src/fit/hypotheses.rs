@@ -322,26 +322,34 @@ fn average(moving: &[&FamilyPosterior], shares: &[(Model, f64)]) -> Vec<(f64, f6
 /// Part of the prior's width that a constrained speed's 68 % interval is narrower than.
 const CONSTRAINED: f64 = 0.7;
 
-/// What the averaged speeds say, against the prior whose deviation is about the dispersion.
+/// What the averaged speeds say.
 fn speed(average: &[(f64, f64)], interval: &Interval, moving: &[&FamilyPosterior]) -> Speed {
-    let (low, high) = interval.interval95;
-    if low > 0.0 || high < 0.0 {
-        return Speed::Measured;
-    }
     let dispersion = moving
         .iter()
         .filter_map(|one| Some(one.marginal("sigma_km_s")?.median))
         .fold(0.0, f64::max);
-    let (low, high) = interval.interval68;
-    if high - low > 2.0 * CONSTRAINED * dispersion {
-        return Speed::Unconstrained;
-    }
-    let sizes: Vec<(f64, f64)> = average
-        .iter()
-        .map(|(v, weight)| (v.abs(), *weight))
-        .collect();
-    Speed::Below {
-        limit_km_s: upper(sizes, 0.95),
+    Speed::of(average, interval, dispersion)
+}
+
+impl Speed {
+    /// What weighted speeds and their interval say, against a prior whose deviation is about the
+    /// dispersion.
+    pub(super) fn of(speeds: &[(f64, f64)], interval: &Interval, dispersion_km_s: f64) -> Self {
+        let (low, high) = interval.interval95;
+        if low > 0.0 || high < 0.0 {
+            return Self::Measured;
+        }
+        let (low, high) = interval.interval68;
+        if high - low > 2.0 * CONSTRAINED * dispersion_km_s {
+            return Self::Unconstrained;
+        }
+        let sizes: Vec<(f64, f64)> = speeds
+            .iter()
+            .map(|(v, weight)| (v.abs(), *weight))
+            .collect();
+        Self::Below {
+            limit_km_s: upper(sizes, 0.95),
+        }
     }
 }
 

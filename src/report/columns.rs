@@ -274,7 +274,7 @@ pub const QUANTITIES: &[Quantity] = &[
     with(real(Infall, "v_in_km_s", KM_S, "adopted inward speed", "Adopted inward speed; positive is infall"), ErrorAndIntervals),
     real(Infall, "v_in_systematic_km_s", KM_S, "systematic, between models", "Half the difference of the models' median speeds: a systematic beside the interval"),
     real(Infall, "v_in_limit_km_s", KM_S, "limit in either direction", "Speed that |v_in| is below with 95 % probability, where the interval of v_in holds zero"),
-    text(Infall, "v_in_model", "adopted from", "Models that the adopted speed is averaged over, joined by +; the one model of a formal fit"),
+    text(Infall, "v_in_model", "adopted from", "Where the adopted speed is from: sphere, or the slab models that it is averaged over, joined by +; the one model of a formal fit"),
     text(Infall, "v_in_errors", "errors", "Where speed and errors come from: posterior, or formal (least squares)"),
 
     real(Hypotheses, "p_infall", None, "infall", "Probability of infall"),

@@ -2,12 +2,12 @@
 
 use super::calibrate::{self, Calibration, Kind, Share};
 use super::products::profile_word;
-use super::{Judged, LineOutcome, PairOutcome};
+use super::{Adopted, Judged, LineOutcome, PairOutcome};
 use crate::fit::ModelFit;
 use crate::fit::averaged::{Averaged, Row};
 use crate::fit::clump::ClumpProfile;
 use crate::fit::hypotheses::Speed;
-use crate::fit::posterior::{Family, FamilyPosterior, interval};
+use crate::fit::posterior::{Family, FamilyPosterior, Interval, interval};
 use crate::model::Model;
 use crate::numeric::Estimate;
 use crate::report;
@@ -145,13 +145,7 @@ fn systemic(outcome: &PairOutcome) -> Option<Estimate> {
 
 /// A parameter of the adopted posterior, or of the adopted least-squares fit.
 fn posterior_or_fit(outcome: &PairOutcome, name: &str) -> Option<Estimate> {
-    match outcome.judged.as_ref().and_then(Judged::adopted) {
-        Some(averaged) => Some(Estimate {
-            value: averaged.marginal(name)?.median,
-            err: averaged.deviation(name).unwrap_or(0.0),
-        }),
-        None => outcome.fit.adopted()?.estimate(name),
-    }
+    outcome.adopted()?.estimate(name)
 }
 
 /// Points of a density, and draws that are shown.
@@ -160,7 +154,11 @@ const DOTS: usize = 400;
 
 fn posterior_part(outcome: &PairOutcome, judged: &Judged) -> Option<report::figure::PosteriorPart> {
     let averaged = Averaged::new(&judged.posterior, &judged.verdict)?;
-    let speeds = averaged.weighted("v_in_km_s")?;
+    let sphere = outcome.sphere.as_ref().filter(|_| outcome.sphere_stands);
+    let speeds = match sphere {
+        Some(sphere) => sphere.weighted_speeds(),
+        None => averaged.weighted("v_in_km_s")?,
+    };
     let v_in = interval(&speeds)?;
     // a held speed has no density, and a held depth no place beside it
     averaged.deviation("v_in_km_s")?;
@@ -197,7 +195,7 @@ fn posterior_part(outcome: &PairOutcome, judged: &Judged) -> Option<report::figu
     }
     Some(report::figure::PosteriorPart {
         range_km_s,
-        averaged: density(&speeds, range_km_s),
+        adopted: density(&speeds, range_km_s),
         interval68_km_s: v_in.interval68,
         interval95_km_s: v_in.interval95,
         models: models
@@ -263,36 +261,52 @@ fn figure_numbers(outcome: &PairOutcome) -> Vec<(String, String)> {
     };
     let mut numbers = Vec::new();
     let judged = outcome.judged.as_ref();
-    let averaged = judged.and_then(Judged::adopted);
     let detected = outcome.measures.peak_thick_k.is_some();
-    if let (Some(judged), Some(averaged)) = (judged, &averaged) {
-        let known = detected && judged.speed != Speed::Unconstrained;
-        let v_in = averaged.marginal("v_in_km_s").filter(|_| known);
-        let value = v_in.map_or_else(
-            || "unconstrained".to_owned(),
-            |v_in| {
-                let (low, high) = v_in.interval68;
-                format!("{} km/s", report::rounded_interval(v_in.median, low, high))
-            },
-        );
-        numbers.push(("inward speed".to_owned(), value));
-        match judged.speed {
-            Speed::Below { limit_km_s } => numbers.push((
+    let interval = |v_in: &Interval| {
+        let (low, high) = v_in.interval68;
+        format!("{} km/s", report::rounded_interval(v_in.median, low, high))
+    };
+    let adopted = outcome.adopted();
+    let slabs = judged.and_then(Judged::adopted);
+    let posterior = !matches!(adopted, None | Some(Adopted::Formal(_)));
+    if let Some(adopted) = adopted.as_ref().filter(|_| posterior) {
+        let speed = adopted.speed().filter(|_| detected);
+        let known = speed.filter(|speed| *speed != Speed::Unconstrained);
+        let v_in = adopted.marginal("v_in_km_s").filter(|_| known.is_some());
+        let value = v_in.map_or_else(|| "unconstrained".to_owned(), |v_in| interval(&v_in));
+        let sphere = matches!(adopted, Adopted::Sphere(_));
+        let label = if sphere {
+            "inward speed (sphere)"
+        } else {
+            "inward speed"
+        };
+        numbers.push((label.to_owned(), value));
+        if let Some(Speed::Below { limit_km_s }) = adopted.speed() {
+            numbers.push((
                 "limit, either way".to_owned(),
                 format!("{} km/s", report::rounded_plain(limit_km_s)),
-            )),
-            _ if known && judged.verdict.shares.len() > 1 => numbers.push((
+            ));
+        }
+        let slabs = slabs.as_ref().filter(|_| sphere);
+        if let Some(v_in) = slabs.and_then(|slabs| slabs.marginal("v_in_km_s")) {
+            numbers.push(("slabs, as in the literature".to_owned(), interval(&v_in)));
+        }
+    }
+    if let Some(judged) = judged.filter(|_| slabs.is_some()) {
+        let shares = &judged.verdict.shares;
+        let measured = judged.speed == Speed::Measured && detected;
+        if shares.len() > 1 && measured {
+            numbers.push((
                 "between models".to_owned(),
                 format!(
                     "+- {} km/s",
                     report::rounded_plain(judged.verdict.between_models_km_s)
                 ),
-            )),
-            _ => {}
+            ));
         }
-        if judged.verdict.shares.len() > 1 {
-            let shares = judged.verdict.shares.iter();
+        if shares.len() > 1 {
             let each: Vec<String> = shares
+                .iter()
                 .map(|(model, share)| format!("{} {share:.2}", model_label(*model)))
                 .collect();
             numbers.push(("evidence".to_owned(), each.join(", ")));
@@ -307,13 +321,10 @@ fn figure_numbers(outcome: &PairOutcome) -> Vec<(String, String)> {
             }
         }
     }
-    if let Some(sphere) = &outcome.sphere {
-        let v_in = &sphere.v_in_km_s;
-        let (low, high) = v_in.interval68;
-        let interval = report::rounded_interval(v_in.median, low, high);
+    if let Some(sphere) = outcome.sphere.as_ref().filter(|_| !outcome.sphere_stands) {
         numbers.push((
-            "inward speed, sphere".to_owned(),
-            format!("{interval} km/s"),
+            "inward speed, sphere (not adopted)".to_owned(),
+            interval(&sphere.v_in_km_s),
         ));
     }
     for (name, label) in [("v_lsr_km_s", "v_{LSR}"), ("sigma_km_s", "dispersion")] {
@@ -324,9 +335,9 @@ fn figure_numbers(outcome: &PairOutcome) -> Vec<(String, String)> {
     if let Some(delta_v) = outcome.measures.delta_v {
         numbers.push(("velocity difference".to_owned(), shown(delta_v, "")));
     }
-    if averaged.is_some() {
+    if posterior {
         numbers.push(("errors".to_owned(), "68 % intervals".to_owned()));
-    } else if outcome.fit.adopted().is_some() {
+    } else if adopted.is_some() {
         numbers.push((
             "errors".to_owned(),
             "formal, one standard deviation".to_owned(),

@@ -1,5 +1,6 @@
 //! The one place that joins the stages: a run sheet in, results and products out.
 
+mod adopted;
 mod batch;
 pub mod calibrate;
 mod check;
@@ -18,6 +19,7 @@ pub mod rank;
 mod sheet;
 pub mod simulate;
 
+pub use adopted::Adopted;
 pub use batch::{BatchError, BatchSettings, Panicked};
 pub use check::{FileCheck, check_file};
 pub use cite::{cite_all, cite_columns, cite_results};

@@ -3,8 +3,11 @@
 use super::journal::hexadecimal;
 use super::judge::{PreparedPair, judge, judgement};
 use super::{Judged, LineSection, RunError, RunSheet, VerdictSettings};
-use crate::derive::{DeriveSettings, Derived, FitDraws, SourceProperties, Tracers};
-use crate::fit::clump::{ClumpPosterior, ClumpPosteriors, ClumpSettings, clump_posteriors};
+use crate::derive::{DeriveSettings, Derived, FitDraws, Input, SourceProperties, Tracers};
+use crate::fit::clump::{
+    ClumpPosterior, ClumpPosteriors, ClumpSettings, KnownClump, clump_posteriors,
+};
+use crate::fit::conflict::replaced;
 use crate::fit::hypotheses::Speed;
 use crate::fit::posterior::PosteriorError;
 use crate::fit::{
@@ -12,7 +15,7 @@ use crate::fit::{
     sphere_cautions,
 };
 use crate::line::{Line, isotopologue_pair};
-use crate::measure::{MeasureSettings, Measures, measure};
+use crate::measure::{MeasureSettings, Measures, ThinLine, measure};
 use crate::model::Model;
 use crate::prepare::scale::{ScaleNote, to_spectrum};
 use crate::prepare::{Expected, PrepareSettings, Prepared, prepare_pair};
@@ -125,6 +128,8 @@ pub struct PairOutcome {
     /// Posterior of the collapsing sphere, of the speed law that the pair prefers; `None` where it was not
     /// asked for, or a caution says why not.
     pub sphere: Option<ClumpPosterior>,
+    /// Whether its speed is the adopted one; where it is not, a caution says why.
+    pub sphere_stands: bool,
     /// Cautions, the gravest first.
     pub cautions: Vec<Caution>,
     /// What follows from the fit and the source's properties, with cautions of its own.
@@ -267,7 +272,12 @@ pub(super) fn fit_prepared(
     let judged = (settings.verdict.as_ref())
         .map(|verdict| judge(&prepared, &settings.fit, verdict))
         .transpose()?;
-    let sphere = (settings.sphere.as_ref()).map(|sphere| preferred_sphere(&prepared, sphere));
+    let sphere =
+        (settings.sphere.as_ref()).map(|sphere| preferred_sphere(&prepared, &source, sphere));
+    let unheard = unheard_by_sphere(settings);
+    let standing = sphere.as_ref().and_then(|sphere| sphere.as_ref().ok());
+    let detected = measures.peak_thick_k.is_some();
+    let standing = standing.filter(|sphere| sphere.stands() && detected && unheard.is_empty());
     let mut cautions = cautions(&PairFacts {
         thick: &prepared_thick,
         thin: &prepared_thin,
@@ -275,31 +285,20 @@ pub(super) fn fit_prepared(
         measures: &measures,
         fit: &fit,
         judgement: judgement(judged.as_ref()),
+        sphere: standing,
     });
     if let Some(sphere) = &sphere {
-        cautions.extend(sphere_cautions(sphere.as_ref()));
+        cautions.extend(sphere_cautions(sphere.as_ref(), &unheard));
     }
-    let sphere = sphere.and_then(Result::ok);
     let judged = judged.and_then(Result::ok);
-    let averaged = judged.as_ref().and_then(Judged::adopted);
-    let described = fit.adopted().or_else(|| layer(&fit));
-    let draws = match (&judged, &averaged, described, &thin_fit.line) {
-        (Some(judged), Some(averaged), ..) => {
-            let with_speed = judged.speed != Speed::Unconstrained;
-            FitDraws::of_posterior(averaged, thick_line, with_speed, &settings.derive)
-        }
-        (_, _, Some(fit), _) => FitDraws::formal(fit, &settings.derive),
-        (_, _, None, Some(line)) => FitDraws::of_thin_line(line, &settings.derive),
-        (_, _, None, None) => FitDraws::new(settings.derive.draws),
+    let slabs = Slabs {
+        judged: judged.as_ref(),
+        described: fit.adopted().or_else(|| layer(&fit)),
+        thin_line: thin_fit.line.as_ref(),
     };
-    let tracers = Tracers {
-        thick: thick_line,
-        thin: thin_line,
-        model: described
-            .filter(|_| averaged.is_none())
-            .map(|fit| fit.model),
-    };
-    let derived = crate::derive::sample(&source, &draws, &tracers, settings.derive.seed)?.derived();
+    let derived = slabs.derived((thick_line, thin_line), standing, &source, &settings.derive)?;
+    let sphere_stands = standing.is_some();
+    let sphere = sphere.and_then(Result::ok);
     let name = name
         .or_else(|| thick.object.clone())
         .or_else(|| thin.object.clone())
@@ -313,6 +312,7 @@ pub(super) fn fit_prepared(
         fit,
         judged,
         sphere,
+        sphere_stands,
         cautions,
         derived,
         source_given: !source.is_empty(),
@@ -322,10 +322,99 @@ pub(super) fn fit_prepared(
 /// The sphere of the speed law that a pair prefers.
 fn preferred_sphere(
     pair: &PreparedPair<'_>,
+    source: &SourceProperties,
     settings: &ClumpSettings,
 ) -> Result<ClumpPosterior, PosteriorError> {
-    clump_posteriors(pair.thick, pair.thin, pair.lines, pair.thin_line, settings)
+    let settings = ClumpSettings {
+        known: known(source, settings.beam_arcsec),
+        ..settings.clone()
+    };
+    clump_posteriors(pair.thick, pair.thin, pair.lines, pair.thin_line, &settings)
         .map(ClumpPosteriors::into_preferred)
+}
+
+/// What is known of a pair's slabs.
+struct Slabs<'a> {
+    judged: Option<&'a Judged>,
+    described: Option<&'a ModelFit>,
+    thin_line: Option<&'a ThinLine>,
+}
+
+impl Slabs<'_> {
+    /// What follows from the source and from draws of the slabs or of a sphere that stands.
+    fn derived(
+        &self,
+        (thick, thin): (&Line, &Line),
+        sphere: Option<&ClumpPosterior>,
+        source: &SourceProperties,
+        settings: &DeriveSettings,
+    ) -> Result<Derived, RunError> {
+        let draws = self.draws(thick, sphere, settings);
+        let averaged = self.judged.and_then(Judged::adopted);
+        let described = self.described.filter(|_| averaged.is_none());
+        let tracers = Tracers {
+            thick,
+            thin,
+            model: described.map(|fit| fit.model),
+        };
+        Ok(crate::derive::sample(source, &draws, &tracers, settings.seed)?.derived())
+    }
+
+    /// Draws of what is derived from: the slabs', and in the place of their speed that of a sphere that
+    /// stands.
+    fn draws(
+        &self,
+        thick_line: &Line,
+        sphere: Option<&ClumpPosterior>,
+        settings: &DeriveSettings,
+    ) -> FitDraws {
+        let averaged = self.judged.and_then(Judged::adopted);
+        let draws = match (self.judged, &averaged, self.described, self.thin_line) {
+            (Some(judged), Some(averaged), ..) => {
+                let with_speed = judged.speed != Speed::Unconstrained;
+                FitDraws::of_posterior(averaged, thick_line, with_speed, settings)
+            }
+            (_, _, Some(fit), _) => FitDraws::formal(fit, settings),
+            (_, _, None, Some(line)) => FitDraws::of_thin_line(line, settings),
+            (_, _, None, None) => FitDraws::new(settings.draws),
+        };
+        match sphere {
+            Some(sphere) => {
+                let with_speed = sphere.speed() != Speed::Unconstrained;
+                draws.with_sphere(sphere, with_speed, settings)
+            }
+            None => draws,
+        }
+    }
+}
+
+/// What a source's properties say of its sphere.
+fn known(source: &SourceProperties, beam_arcsec: Option<f64>) -> KnownClump {
+    let (distance, radius) = (source.get(Input::Distance), source.get(Input::Radius));
+    let beam = match (beam_arcsec, distance, radius) {
+        (Some(beam), Some(distance), Some(radius)) => {
+            Some(KnownClump::beam_over_radius(beam, distance, radius))
+        }
+        _ => None,
+    };
+    KnownClump {
+        t_kin_k: source.get(Input::Kinetic),
+        t_dust_k: source.get(Input::DustTemperature),
+        density_slope: source.get(Input::Slope),
+        beam_over_radius: beam,
+    }
+}
+
+/// Settings of a fit that the sphere knows nothing of, as run sheets name them: with any, its speed is not
+/// the adopted one.
+fn unheard_by_sphere(settings: &PairSettings) -> Vec<String> {
+    let fit = &settings.fit;
+    let given = fit.given.keys().map(|name| format!("given {name}"));
+    let bounds = fit.bounds.keys().map(|name| format!("bounds of {name}"));
+    let priors = (settings.verdict.iter())
+        .flat_map(|verdict| replaced(&verdict.posterior.priors))
+        .map(|(name, _)| format!("priors of {name}"));
+    given.chain(bounds).chain(priors).collect()
 }
 
 /// Without an inward speed, a uniform layer still has a depth and an excitation temperature.

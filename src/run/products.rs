@@ -1,6 +1,6 @@
 //! Results into rows, text and files.
 
-use super::{LineOutcome, PairOutcome, Record, RunError, RunSheet};
+use super::{Adopted, LineOutcome, PairOutcome, Record, RunError, RunSheet};
 use crate::derive::{Derived, MassSource, Quantity, RateFormula};
 use crate::fit::ModelFit;
 use crate::fit::hypotheses::Speed;
@@ -46,7 +46,7 @@ pub fn pair_row(outcome: &PairOutcome) -> Result<Row, RunError> {
     set_speed(&mut row, outcome)?;
     if let Some(sphere) = &outcome.sphere {
         row.set("sphere_v_in_km_s", sphere.v_in_km_s.median)?;
-        row.set("sphere_v_in_km_s_err", sphere.v_in_deviation_km_s())?;
+        row.set("sphere_v_in_km_s_err", sphere.deviation("v_in_km_s"))?;
         set_intervals(&mut row, "sphere_v_in_km_s", &sphere.v_in_km_s)?;
         row.set("sphere_law", sphere.law.name())?;
         row.set("sphere_chi2_red", sphere.residuals.chi2_reduced())?;
@@ -71,14 +71,52 @@ pub fn pair_row(outcome: &PairOutcome) -> Result<Row, RunError> {
     Ok(row)
 }
 
-/// The adopted speed, velocity and dispersion: of the posterior averaged over models, else of the
-/// adopted least-squares fit.
+/// The adopted speed, velocity and dispersion: of the sphere, else of the posterior averaged over slab
+/// models, else of the adopted least-squares fit. Shares and intervals of slab models stand beside them.
 fn set_speed(row: &mut Row, outcome: &PairOutcome) -> Result<(), RunError> {
-    let Some(judged) = &outcome.judged else {
-        return set_formal_speed(row, outcome);
+    set_shares(row, outcome)?;
+    let Some(adopted) = outcome.adopted() else {
+        return Ok(());
     };
-    let Some(averaged) = judged.adopted() else {
-        return set_formal_speed(row, outcome);
+    row.set("v_in_model", adopted.models())?;
+    if let Adopted::Formal(fit) = adopted {
+        for name in ["v_lsr_km_s", "sigma_km_s", "v_in_km_s"] {
+            set_parameter(row, name, fit, name)?;
+        }
+        row.set("v_in_errors", FORMAL)?;
+        return Ok(());
+    }
+    row.set("v_in_errors", POSTERIOR)?;
+    let detected = outcome.measures.peak_thick_k.is_some();
+    if detected || outcome.thin_fit.line.is_some() {
+        for name in ["v_lsr_km_s", "sigma_km_s"] {
+            row.set(name, adopted.marginal(name).map(|one| one.median))?;
+            row.set(&format!("{name}_err"), adopted.deviation(name))?;
+        }
+    }
+    if let Some(Speed::Below { limit_km_s }) = adopted.speed() {
+        row.set("v_in_limit_km_s", limit_km_s)?;
+    }
+    if detected && adopted.speed() != Some(Speed::Unconstrained) {
+        if let Some(v_in) = adopted.marginal("v_in_km_s") {
+            row.set("v_in_km_s", v_in.median)?;
+            set_intervals(row, "v_in_km_s", &v_in)?;
+        }
+        row.set("v_in_km_s_err", adopted.deviation("v_in_km_s"))?;
+        let judged = outcome.judged.as_ref();
+        let shares = judged.map_or(0, |judged| judged.verdict.shares.len());
+        if shares > 1 && matches!(adopted, Adopted::Slabs(..)) {
+            let systematic = judged.map(|judged| judged.verdict.between_models_km_s);
+            row.set("v_in_systematic_km_s", systematic)?;
+        }
+    }
+    Ok(())
+}
+
+/// Shares of the slab models in the evidence, and each one's interval.
+fn set_shares(row: &mut Row, outcome: &PairOutcome) -> Result<(), RunError> {
+    let Some(judged) = (outcome.judged.as_ref()).filter(|judged| judged.adopted().is_some()) else {
+        return Ok(());
     };
     for (model, share) in &judged.verdict.shares {
         let prefix = model.column_prefix();
@@ -88,41 +126,6 @@ fn set_speed(row: &mut Row, outcome: &PairOutcome) -> Result<(), RunError> {
             set_intervals(row, &format!("{prefix}_v_in_km_s"), &interval)?;
         }
     }
-    let detected = outcome.measures.peak_thick_k.is_some();
-    if detected || outcome.thin_fit.line.is_some() {
-        for name in ["v_lsr_km_s", "sigma_km_s"] {
-            row.set(name, averaged.marginal(name).map(|one| one.median))?;
-            row.set(&format!("{name}_err"), averaged.deviation(name))?;
-        }
-    }
-    if let Speed::Below { limit_km_s } = judged.speed {
-        row.set("v_in_limit_km_s", limit_km_s)?;
-    }
-    if detected && judged.speed != Speed::Unconstrained {
-        if let Some(v_in) = averaged.marginal("v_in_km_s") {
-            row.set("v_in_km_s", v_in.median)?;
-            set_intervals(row, "v_in_km_s", &v_in)?;
-        }
-        row.set("v_in_km_s_err", averaged.deviation("v_in_km_s"))?;
-        if judged.verdict.shares.len() > 1 {
-            let systematic = judged.verdict.between_models_km_s;
-            row.set("v_in_systematic_km_s", systematic)?;
-        }
-    }
-    row.set("v_in_model", averaged.models())?;
-    row.set("v_in_errors", POSTERIOR)?;
-    Ok(())
-}
-
-fn set_formal_speed(row: &mut Row, outcome: &PairOutcome) -> Result<(), RunError> {
-    let Some(fit) = outcome.fit.adopted() else {
-        return Ok(());
-    };
-    for name in ["v_lsr_km_s", "sigma_km_s", "v_in_km_s"] {
-        set_parameter(row, name, fit, name)?;
-    }
-    row.set("v_in_model", fit.model.name())?;
-    row.set("v_in_errors", FORMAL)?;
     Ok(())
 }
 

@@ -648,8 +648,12 @@ impl RunSheet {
             let (thick, thin) = (self.thick.line("thick")?, self.thin.line("thin")?);
             thick.rest_frequency_ghz / thin.rest_frequency_ghz
         };
+        let fit = self.fit_settings()?;
         Ok(Some(ClumpSettings {
             beam_ratio,
+            beam_arcsec: thick,
+            range: fit.range,
+            averaging: fit.averaging,
             seed: self.seed,
             ..ClumpSettings::default()
         }))

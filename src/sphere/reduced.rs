@@ -37,8 +37,9 @@ pub struct ReducedClump {
     pub collision_slope: f64,
     /// m of J(T) - J(T_bg) ~ r^-m.
     pub temperature_slope: f64,
-    /// d of the thin line's source, ~ r^-d beside what the rest makes of it.
-    pub thin_slope: f64,
+    /// y of b_thin = b^(1 - y) b_thick^y, b the thin line's own share of escaping photons: at 0 it is excited
+    /// by itself, at 1 as the thick line.
+    pub shared_trapping: f64,
 }
 
 /// The radius from which [`ReducedClump::depth`] counts, over the outer one.
@@ -278,6 +279,12 @@ impl ReducedPair {
         let first = clump.depth / power_integral(DEPTH_FROM, 1.0, -clump.opacity_slope);
         for line in 0..LINES {
             self.set_escape(line, first * lines[line].opacity_ratio);
+            if line == 1 {
+                let [thick, thin] = &mut self.ln_escape;
+                for (thin, thick) in thin.iter_mut().zip(thick) {
+                    *thin += clump.shared_trapping * (*thick - *thin);
+                }
+            }
             let (source, opacity) = (&mut self.source[line], &mut self.opacity[line]);
             source.clear();
             opacity.clear();
@@ -288,8 +295,7 @@ impl ReducedPair {
                 let escape = between(&self.ln_escape[line], (coarse, fraction)).exp();
                 let collisions = clump.collision_ratio * (-clump.collision_slope * ln_r).exp();
                 let share = collisions / (collisions + escape);
-                let slope = clump.temperature_slope + [0.0, clump.thin_slope][line];
-                source.push(share * (-slope * ln_r).exp());
+                source.push(share * (-clump.temperature_slope * ln_r).exp());
                 let excitation = share + LEAST_EXCITATION;
                 let response = excitation.powf(-clump.opacity_response);
                 opacity.push(response * (-clump.opacity_slope * ln_r).exp());
@@ -600,7 +606,7 @@ mod tests {
                 collision_ratio: collisions,
                 collision_slope: slope,
                 temperature_slope: 0.0,
-                thin_slope: 0.0,
+                shared_trapping: 0.0,
             };
             let line = |ratio: f64| ReducedLine {
                 opacity_ratio: ratio,

@@ -5,27 +5,28 @@
 //! priors ([`ClumpPriors`]) that the known properties of a source narrow. Brightness, baseline, noise
 //! level and smooth departures from any sphere are integrated out in closed form.
 
+mod known;
 mod priors;
 mod residuals;
 mod target;
 
+pub use known::KnownClump;
 pub use priors::{ClumpPriors, Normal};
 pub use residuals::{ClumpResiduals, LineResiduals, Misfit};
 
-use super::Averaging;
+use super::hypotheses::Speed;
 use super::posterior::{
-    Interval, Kinematics, LineData, PosteriorError, distinct, interval, kinematics, shape_errors,
+    Choice, Interval, Kinematics, PairData, PosteriorError, distinct, interval,
 };
+use super::{Averaging, FitRange};
 use crate::constants::photon_temperature_k;
 use crate::line::Line;
 use crate::measure::ThinLine;
-use crate::model::LineShape;
 use crate::numeric::sampling::{
     Density, Draws, EnsembleSettings, ImportanceSettings, MOST_DIMENSIONS, Peak, Point, Quality,
     ascend, sample, settle,
 };
 use crate::prepare::Prepared;
-use crate::spectrum::Window;
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::SeedableRng;
 use target::{DIMENSIONS, Target, place};
@@ -67,10 +68,16 @@ impl SpeedLaw {
 pub struct ClumpSettings {
     /// Priors; `None` takes [`ClumpPriors::of_line`].
     pub priors: Option<ClumpPriors>,
+    /// What is known of the clump: narrows the priors.
+    pub known: KnownClump,
+    /// Full width at half maximum of the thick line's beam, arcsec, where it is known.
+    pub beam_arcsec: Option<f64>,
     /// FWHM of the thin line's beam over the thick line's.
     pub beam_ratio: f64,
     /// Standard deviation of smooth departures from any sphere, over each line's peak.
     pub shape_error: f64,
+    /// Velocities whose channels hold the lines; `None` takes the windows and as much on either side.
+    pub range: Option<FitRange>,
     /// How the model's value in a channel is formed.
     pub averaging: Averaging,
     /// How long walkers settle before draws.
@@ -89,8 +96,11 @@ impl Default for ClumpSettings {
     fn default() -> Self {
         Self {
             priors: None,
+            known: KnownClump::default(),
+            beam_arcsec: None,
             beam_ratio: 1.0,
             shape_error: SHAPE_ERROR,
+            range: None,
             averaging: Averaging::Channel,
             ensemble: EnsembleSettings {
                 walkers: 48,
@@ -98,7 +108,7 @@ impl Default for ClumpSettings {
             },
             sampling: ImportanceSettings {
                 round: 500,
-                most_rounds: 8,
+                most_rounds: 12,
                 wider: 1.6,
                 ..ImportanceSettings::default()
             },
@@ -142,10 +152,47 @@ pub struct ClumpPosterior {
 }
 
 impl ClumpPosterior {
-    /// Standard deviation of the inward speed, km/s.
+    /// Whether the sphere describes the pair and its draws describe the posterior.
     #[must_use]
-    pub fn v_in_deviation_km_s(&self) -> f64 {
-        self.draws.moments(speed).1
+    pub fn stands(&self) -> bool {
+        self.residuals.misfit.is_none() && self.quality.holds()
+    }
+
+    /// What is known of the speed.
+    #[must_use]
+    pub fn speed(&self) -> Speed {
+        let sigma = self.physical("sigma_km_s").map_or(0.0, |one| one.median);
+        Speed::of(&self.weighted_speeds(), &self.v_in_km_s, sigma)
+    }
+
+    /// Median and intervals of `v_lsr_km_s`, `sigma_km_s` or `v_in_km_s`; `None` for another name.
+    #[must_use]
+    pub fn physical(&self, name: &str) -> Option<Interval> {
+        interval(&self.weighted(physical(name)?))
+    }
+
+    /// Standard deviation of one of them.
+    #[must_use]
+    pub fn deviation(&self, name: &str) -> Option<f64> {
+        Some(self.draws.moments(physical(name)?).1)
+    }
+
+    /// All draws of the inward speed, km/s, with their weights.
+    #[must_use]
+    pub fn weighted_speeds(&self) -> Vec<(f64, f64)> {
+        self.weighted(speed)
+    }
+
+    /// As many draws of equal weight of inward speed and dispersion, km/s; deterministic for a seed.
+    #[must_use]
+    pub fn speeds_and_dispersions(&self, count: usize, seed: u64) -> Vec<(f64, f64)> {
+        let mut generator = ChaCha8Rng::seed_from_u64(seed);
+        generator.set_stream(DRAW_STREAM);
+        let chosen = self.draws.equal(count, &mut generator);
+        let points = chosen.iter().map(|index| &self.draws.points[*index]);
+        points
+            .map(|point| (speed(point), dispersion(point)))
+            .collect()
     }
 
     /// Names of the coordinates of a draw, in their order.
@@ -161,7 +208,7 @@ impl ClumpPosterior {
         "ln_isotope_ratio",
         "ln_beam_over_radius",
         "opacity_response",
-        "thin_slope",
+        "shared_trapping",
     ];
 
     /// Median and intervals of a coordinate; `None` for a name that is none.
@@ -201,8 +248,25 @@ impl ClumpPosterior {
 }
 
 fn speed(point: &Point) -> f64 {
-    point[place::V_IN] * point[place::LN_SIGMA].exp()
+    point[place::V_IN] * dispersion(point)
 }
+
+fn dispersion(point: &Point) -> f64 {
+    point[place::LN_SIGMA].exp()
+}
+
+/// How a quantity in km/s follows from a point.
+fn physical(name: &str) -> Option<fn(&Point) -> f64> {
+    match name {
+        "v_lsr_km_s" => Some(|point| point[place::V_LSR]),
+        "sigma_km_s" => Some(dispersion),
+        "v_in_km_s" => Some(speed),
+        _ => None,
+    }
+}
+
+/// Stream of the draws that others are handed: far from those of what is derived of a source.
+const DRAW_STREAM: u64 = 0x7370_6865_7265_0000;
 
 /// Posteriors of both speed laws.
 #[derive(Clone, Debug, PartialEq)]
@@ -268,16 +332,9 @@ pub fn clump_posteriors(
     })
 }
 
-/// Fewest channels of a line in the fitted range.
-const FEWEST_CHANNELS: usize = 10;
-
-/// Width of the sharpest feature of a profile, in dispersions.
-const NARROWEST: f64 = 0.6;
-
 /// Posterior of the inward speed for one law.
 ///
-/// `thin_line` is the thin line's fit where it is detected: searches begin there. Velocities as far
-/// from the line windows as they are wide count.
+/// `thin_line` is the thin line's fit where it is detected: searches begin there.
 ///
 /// # Errors
 ///
@@ -294,45 +351,24 @@ pub fn clump_posterior(
     let no_mass = || PosteriorError::NoMass {
         family: "sphere".to_owned(),
     };
-    let low = thick.window.low_km_s.min(thin.window.low_km_s);
-    let high = thick.window.high_km_s.max(thin.window.high_km_s);
-    let range = Window {
-        low_km_s: low - (high - low),
-        high_km_s: high + (high - low),
+    let choice = Choice {
+        range: settings.range,
+        averaging: settings.averaging,
+        shape_error: settings.shape_error,
     };
-    let kinematics = kinematics(thick, thin, thin_line);
-    let about = kinematics[0];
-    let line_data = |prepared: &Prepared, line: &Line| {
-        let shape = LineShape::new(line.rest_frequency_ghz, line.components.clone());
-        let errors = shape_errors(prepared, settings.shape_error, about);
-        let narrowest = NARROWEST * about.sigma_km_s;
-        LineData::new(
-            prepared,
-            &shape,
-            range,
-            settings.averaging,
-            narrowest,
-            &errors,
-        )
-    };
-    let data = [line_data(thick, lines.0), line_data(thin, lines.1)];
-    for (name, data) in ["thick", "thin"].into_iter().zip(&data) {
-        let channels = data.channels().len();
-        if channels < FEWEST_CHANNELS {
-            return Err(PosteriorError::TooFewChannels {
-                line: name,
-                channels,
-                needed: FEWEST_CHANNELS,
-            });
-        }
-    }
+    let PairData {
+        lines: data,
+        range,
+        kinematics,
+    } = PairData::new(thick, thin, lines, thin_line, &choice)?;
     let priors = settings
         .priors
-        .unwrap_or_else(|| ClumpPriors::of_line(lines.0.rest_frequency_ghz, is_to_ground(lines.0)));
+        .unwrap_or_else(|| ClumpPriors::of_line(lines.0.rest_frequency_ghz, is_to_ground(lines.0)))
+        .narrowed(&settings.known);
     let both = [&data[0], &data[1]];
     let mut target = Target::new(both, range, &priors, law.slope(), settings.beam_ratio);
     let mut generator = ChaCha8Rng::seed_from_u64(settings.seed);
-    let scales = scales(about.sigma_km_s);
+    let scales = scales(kinematics[0].sigma_km_s);
     let peaks: Vec<Peak> = starts(&mut target, &kinematics)
         .iter()
         .filter_map(|start| ascend(&mut target, start, &scales, MOST_STEPS))

@@ -67,8 +67,8 @@ pub struct ClumpPriors {
     pub ln_beam_over_radius: Normal,
     /// g of opacity ~ E^-g, E how near the excitation comes to that of the gas.
     pub opacity_response: Normal,
-    /// How much steeper the thin line's source is than the same gas's of the thick line.
-    pub thin_slope: Normal,
+    /// How much of the thick line's trapping the thin line's levels see: 0 by its own alone, 1 as much.
+    pub shared_trapping: Normal,
     /// Deviation of the thin line's brightness from that of the same gas: calibration and excitation.
     pub thin_scale: f64,
 }
@@ -94,7 +94,7 @@ impl ClumpPriors {
             ln_isotope_ratio: Normal::of_logarithm(50.0, 0.5),
             ln_beam_over_radius: Normal::of_logarithm(0.7, 0.7),
             opacity_response: Normal::of(if to_ground { 0.4 } else { 0.0 }, 0.7),
-            thin_slope: Normal::of(0.0, 0.5),
+            shared_trapping: Normal::of(0.4, 0.5),
             thin_scale: 0.2,
         }
     }

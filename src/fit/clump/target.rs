@@ -25,7 +25,7 @@ pub(super) mod place {
     pub const LN_RATIO: usize = 8;
     pub const LN_BEAM: usize = 9;
     pub const RESPONSE: usize = 10;
-    pub const THIN_SLOPE: usize = 11;
+    pub const SHARED: usize = 11;
 }
 
 /// Coordinates that only priors bound stay within this many standard deviations.
@@ -94,7 +94,7 @@ impl<'a> Target<'a> {
             p.ln_isotope_ratio,
             p.ln_beam_over_radius,
             p.opacity_response,
-            p.thin_slope,
+            p.shared_trapping,
         ]
     }
 
@@ -130,7 +130,7 @@ impl<'a> Target<'a> {
             velocity_slope: self.velocity_slope,
             depth: point[place::LN_DEPTH].exp(),
             opacity_slope: point[place::OPACITY_SLOPE],
-            thin_slope: point[place::THIN_SLOPE],
+            shared_trapping: point[place::SHARED],
             opacity_response: point[place::RESPONSE],
             collision_ratio: point[place::LN_COLLISIONS].exp(),
             collision_slope: point[place::OPACITY_SLOPE] + point[place::EXCESS_SLOPE],

@@ -7,6 +7,7 @@
 mod constraints;
 mod data;
 mod family;
+mod pair_data;
 mod settings;
 mod shapes;
 mod starts;
@@ -15,14 +16,14 @@ mod target;
 pub(in crate::fit) use data::LineData;
 pub use data::ShapeErrors;
 pub use family::Family;
+pub(in crate::fit) use pair_data::{Choice, PairData};
 pub use settings::{CONSTRAINED, PosteriorError, PosteriorSettings, SHAPE_ERROR};
-pub(in crate::fit) use starts::{Kinematics, distinct, kinematics, shape_errors};
+pub(in crate::fit) use starts::{Kinematics, distinct};
 
-use super::FitRange;
 use crate::constants::FWHM_PER_SIGMA;
 use crate::line::Line;
 use crate::measure::ThinLine;
-use crate::model::{LineShape, Model};
+use crate::model::Model;
 use crate::numeric::sampling::{Draws, ImportanceSettings, Quality, sample};
 use crate::prepare::Prepared;
 use crate::spectrum::Window;
@@ -30,9 +31,6 @@ use constraints::Constraints;
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::SeedableRng;
 use target::Target;
-
-/// Fewest channels of a line in the fitted range.
-const FEWEST_CHANNELS: usize = 10;
 
 /// A median with its intervals.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -201,27 +199,17 @@ pub fn pair_posterior(
     settings: &PosteriorSettings,
 ) -> Result<PairPosterior, PosteriorError> {
     settings.check()?;
-    let range = range(thick, thin, settings);
-    let constraints = Constraints::new(settings, range)?;
-    let kinematics = starts::kinematics(thick, thin, thin_line);
-    let narrowest = starts::NARROWEST * kinematics[0].sigma_km_s;
-    let line_data = |prepared: &Prepared, line: &Line| {
-        let shape = LineShape::new(line.rest_frequency_ghz, line.components.clone());
-        let errors = starts::shape_errors(prepared, settings.shape_error, kinematics[0]);
-        let averaging = settings.averaging;
-        LineData::new(prepared, &shape, range, averaging, narrowest, &errors)
+    let choice = Choice {
+        range: settings.range,
+        averaging: settings.averaging,
+        shape_error: settings.shape_error,
     };
-    let data = [line_data(thick, lines.0), line_data(thin, lines.1)];
-    for (name, data) in ["thick", "thin"].into_iter().zip(&data) {
-        let channels = data.channels().len();
-        if channels < FEWEST_CHANNELS {
-            return Err(PosteriorError::TooFewChannels {
-                line: name,
-                channels,
-                needed: FEWEST_CHANNELS,
-            });
-        }
-    }
+    let PairData {
+        lines: data,
+        range,
+        kinematics,
+    } = PairData::new(thick, thin, lines, thin_line, &choice)?;
+    let constraints = Constraints::new(settings, range)?;
     let mut found: Vec<FamilyPosterior> = Vec::new();
     for (stream, family) in settings.families().into_iter().enumerate() {
         let mut target = Target::new(family, (&data[0], &data[1]), &constraints, settings);
@@ -244,31 +232,6 @@ pub fn pair_posterior(
     }
     let families = found;
     Ok(PairPosterior { families, range })
-}
-
-fn range(thick: &Prepared, thin: &Prepared, settings: &PosteriorSettings) -> Window {
-    match settings.range {
-        Some(FitRange::Within(window)) => window,
-        Some(FitRange::All) => {
-            let ends = [thick, thin].map(|prepared| {
-                let velocity = prepared.spectrum.velocity_km_s();
-                (velocity[0], velocity[velocity.len() - 1])
-            });
-            Window {
-                low_km_s: ends[0].0.min(ends[1].0),
-                high_km_s: ends[0].1.max(ends[1].1),
-            }
-        }
-        None => {
-            let low_km_s = thick.window.low_km_s.min(thin.window.low_km_s);
-            let high_km_s = thick.window.high_km_s.max(thin.window.high_km_s);
-            let margin = high_km_s - low_km_s;
-            Window {
-                low_km_s: low_km_s - margin,
-                high_km_s: high_km_s + margin,
-            }
-        }
-    }
 }
 
 /// A family whose ln of the evidence is lower than another's by more than this has a probability below

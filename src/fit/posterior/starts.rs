@@ -22,7 +22,7 @@ pub(in crate::fit) struct Kinematics {
 const SHARE_OF_INTENSITY: f64 = 0.6;
 
 /// The thin line where it is detected, and the thick line's intensity.
-pub(in crate::fit) fn kinematics(
+pub(super) fn kinematics(
     thick: &Prepared,
     thin: &Prepared,
     thin_line: Option<&ThinLine>,
@@ -41,11 +41,7 @@ pub(in crate::fit) fn kinematics(
 }
 
 /// Shape errors of a prepared line: about its intensity, a share of its peak.
-pub(in crate::fit) fn shape_errors(
-    prepared: &Prepared,
-    share: f64,
-    gas: Kinematics,
-) -> ShapeErrors {
+pub(super) fn shape_errors(prepared: &Prepared, share: f64, gas: Kinematics) -> ShapeErrors {
     let about = intensity(prepared);
     let (spectrum, window) = (&prepared.spectrum, prepared.window);
     let inside = spectrum

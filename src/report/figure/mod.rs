@@ -73,15 +73,15 @@ pub struct Panel {
 pub struct PosteriorPart {
     /// Speeds that are shown, km/s.
     pub range_km_s: (f64, f64),
-    /// Speed (km/s, ascending) and density of the posterior averaged over models.
-    pub averaged: Vec<(f64, f64)>,
+    /// Speed (km/s, ascending) and density of the adopted posterior.
+    pub adopted: Vec<(f64, f64)>,
     /// Ends of its 68 % interval, km/s.
     pub interval68_km_s: (f64, f64),
     /// Ends of its 95 % interval, km/s.
     pub interval95_km_s: (f64, f64),
     /// The same of each model, by the label of its curve.
     pub models: Vec<(String, Vec<(f64, f64)>)>,
-    /// Draws of the averaged posterior; none leaves their plot out.
+    /// Draws of the slabs' averaged posterior; none leaves their plot out.
     pub draws: Vec<SpeedAndDepth>,
     /// Correlation of speed and optical depth.
     pub correlation: Option<f64>,

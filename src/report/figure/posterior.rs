@@ -105,7 +105,7 @@ fn marginal(
     stroke_of: &dyn Fn(&str) -> style::Stroke,
 ) -> Result<(), ReportError> {
     let curves = part.models.iter().map(|(_, density)| density);
-    let all = curves.chain([&part.averaged]).flatten();
+    let all = curves.chain([&part.adopted]).flatten();
     let tallest = all.map(|(_, density)| *density).fold(0.0, f64::max);
     let frame = Frame::new(
         (MARGINAL_LEFT_MM, MARGINAL_RIGHT_MM, top, bottom),
@@ -120,7 +120,7 @@ fn marginal(
         (part.interval68_km_s, POSTERIOR_68),
     ] {
         let inside: Vec<(f64, f64)> = part
-            .averaged
+            .adopted
             .iter()
             .filter(|(v, _)| (from..=to).contains(v))
             .map(at)
@@ -135,7 +135,7 @@ fn marginal(
     }
     let (zero, _) = frame.place(0.0, 0.0);
     canvas.line(&[(zero, top), (zero, bottom)], solid(ZERO, 0.16))?;
-    let outline: Vec<(f64, f64)> = part.averaged.iter().map(at).collect();
+    let outline: Vec<(f64, f64)> = part.adopted.iter().map(at).collect();
     canvas.line(&outline, solid(INK, 0.16))?;
     for (label, density) in part.models.iter().rev() {
         let points: Vec<(f64, f64)> = density.iter().map(at).collect();

@@ -2,14 +2,16 @@
 
 use super::sketch::Sketch;
 use crate::derive::{FitDraws, Quantity, Sampled, SourceProperties, Tracers};
+use crate::fit::ModelFit;
 use crate::fit::averaged::Averaged;
+use crate::fit::clump::ClumpPosterior;
 use crate::fit::hypotheses::{Hypothesis, Speed};
 use crate::measure::ProfileClass;
 use crate::numeric::Estimate;
 use crate::numeric::robust::median;
 use crate::rank::{Drawn, Finding, Profile};
 use crate::report::{Row, Value};
-use crate::run::{Judged, PairOutcome, RunError, pair_row};
+use crate::run::{Adopted, PairOutcome, RunError, pair_row};
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::SeedableRng;
 use rand_distr::{Distribution, StandardNormal};
@@ -71,12 +73,13 @@ fn finding(
     seed: u64,
 ) -> Result<Finding, RunError> {
     let judged = outcome.judged.as_ref();
-    let speeds = match judged.and_then(Judged::adopted) {
-        Some(averaged) => {
-            let constrained = judged.is_some_and(|judged| judged.speed != Speed::Unconstrained);
-            constrained.then(|| Speeds::of(&averaged)).flatten()
-        }
-        None => Speeds::formal(outcome, seed),
+    let adopted = outcome.adopted();
+    let speeds = match &adopted {
+        Some(one) if one.speed() == Some(Speed::Unconstrained) => None,
+        Some(Adopted::Sphere(sphere)) => Speeds::of_sphere(sphere, seed),
+        Some(Adopted::Slabs(averaged, _)) => Speeds::of(averaged),
+        Some(Adopted::Formal(fit)) => Speeds::formal(fit, seed),
+        None => None,
     };
     let sampled = speeds
         .as_ref()
@@ -120,9 +123,19 @@ impl Speeds {
         })
     }
 
+    /// Draws of the sphere.
+    fn of_sphere(sphere: &ClumpPosterior, seed: u64) -> Option<Self> {
+        let draws = sphere.speeds_and_dispersions(ROWS, seed);
+        let (speeds, dispersions): (Vec<f64>, Vec<f64>) = draws.into_iter().unzip();
+        let of = |name: &str, draws: &[f64]| Some(drawn(sphere.physical(name)?.median, draws));
+        Some(Self {
+            v_in: of("v_in_km_s", &speeds)?,
+            sigma: of("sigma_km_s", &dispersions)?,
+        })
+    }
+
     /// Normal draws about the adopted model's speed and dispersion.
-    fn formal(outcome: &PairOutcome, seed: u64) -> Option<Self> {
-        let fit = outcome.fit.adopted()?;
+    fn formal(fit: &ModelFit, seed: u64) -> Option<Self> {
         let normal = |estimate: Estimate, stream: u64| {
             let mut generator = ChaCha8Rng::seed_from_u64(seed);
             generator.set_stream(FORMAL_STREAMS + stream);
