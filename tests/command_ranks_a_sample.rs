@@ -342,37 +342,42 @@ fn several_line_pairs_of_a_source_are_combined_and_their_agreement_is_told() {
         table.push('\n');
     }
     folder.write("s/both.csv", table.as_bytes());
-    let run = folder.inrush(&["rank", "s/both.csv", "--out", "r", "--no-figures"]);
-    assert_eq!(run.code, 0, "{}", run.stderr);
-    let ranking = rows(&folder, "r/ranking.csv");
-    let pairs = rows(&folder, "r/pairs.csv");
-    assert_eq!((ranking.len(), pairs.len()), (3, 6));
-    let mut combined = 0;
-    for row in &ranking {
-        assert_eq!(row["line_pairs"], "2");
-        let own: Vec<&Cells> = pairs
-            .iter()
-            .filter(|pair| pair["id"] == row["id"])
-            .collect();
-        if own.iter().any(|pair| pair["v_in_km_s"].is_empty()) {
-            continue;
+    // with formal errors too, since draws of two pairs must not go together there either
+    for (out, formal) in [("r", None), ("f", Some("--formal"))] {
+        let mut command = vec!["rank", "s/both.csv", "--out", out, "--no-figures"];
+        command.extend(formal);
+        let run = folder.inrush(&command);
+        assert_eq!(run.code, 0, "{}", run.stderr);
+        let ranking = rows(&folder, &format!("{out}/ranking.csv"));
+        let pairs = rows(&folder, &format!("{out}/pairs.csv"));
+        assert_eq!((ranking.len(), pairs.len()), (3, 6));
+        let mut combined = 0;
+        for row in &ranking {
+            assert_eq!(row["line_pairs"], "2");
+            let own: Vec<&Cells> = pairs
+                .iter()
+                .filter(|pair| pair["id"] == row["id"])
+                .collect();
+            if own.iter().any(|pair| pair["v_in_km_s"].is_empty()) {
+                continue;
+            }
+            combined += 1;
+            assert_eq!(row["v_in_model"], "several line pairs");
+            let err = number(row, "v_in_km_s_err");
+            let apart = number(row, "pair_disagreement");
+            let errs = own.iter().map(|pair| number(pair, "v_in_km_s_err"));
+            let together = errs.map(|err| err.powi(-2)).sum::<f64>().powf(-0.5);
+            // 400 draws: a standard deviation to 4 %
+            let expected = together * apart.max(1.0);
+            assert!((err / expected - 1.0).abs() < 0.2, "{err} {expected}");
+            assert!(row["why"].contains("2 line pairs"), "{}", row["why"]);
+            let speeds: Vec<f64> = own.iter().map(|pair| number(pair, "v_in_km_s")).collect();
+            let (low, high) = (speeds[0].min(speeds[1]), speeds[0].max(speeds[1]));
+            assert!((low..=high).contains(&number(row, "v_in_km_s")));
         }
-        combined += 1;
-        assert_eq!(row["v_in_model"], "several line pairs");
-        let err = number(row, "v_in_km_s_err");
-        let apart = number(row, "pair_disagreement");
-        let errs = own.iter().map(|pair| number(pair, "v_in_km_s_err"));
-        let together = errs.map(|err| err.powi(-2)).sum::<f64>().powf(-0.5);
-        // 400 draws: a standard deviation to 4 %
-        let expected = together * apart.max(1.0);
-        assert!((err / expected - 1.0).abs() < 0.2, "{err} {expected}");
-        assert!(row["why"].contains("2 line pairs"), "{}", row["why"]);
-        let speeds: Vec<f64> = own.iter().map(|pair| number(pair, "v_in_km_s")).collect();
-        let (low, high) = (speeds[0].min(speeds[1]), speeds[0].max(speeds[1]));
-        assert!((low..=high).contains(&number(row, "v_in_km_s")));
+        assert!(combined >= 2);
+        assert!(run.stdout.contains("HCO+ 3-2 / H13CO+ 3-2"));
     }
-    assert!(combined >= 2);
-    assert!(run.stdout.contains("HCO+ 3-2 / H13CO+ 3-2"));
 }
 
 #[test]

@@ -122,7 +122,7 @@ pub struct PairArguments {
     /// Stop after least squares: no posterior, no probabilities.
     #[arg(long, help_heading = "Fitting")]
     formal: bool,
-    /// Also find the speed of a collapsing sphere: seconds a pair.
+    /// Find the speed of a collapsing sphere too, and adopt it where the sphere fits: seconds a pair.
     #[arg(long, conflicts_with = "formal", help_heading = "Fitting")]
     sphere: bool,
     /// Replace a prior: the numbers of its density (docs/methods.md has the table).

@@ -13,6 +13,10 @@ use crate::report::motions::{Entry, Part};
 use crate::report::{Row, Value};
 
 /// What a map says of motions.
+#[cfg_attr(
+    not(feature = "figures"),
+    expect(dead_code, reason = "figures alone show all of it")
+)]
 pub(super) struct MapMotions {
     /// Everything that was found; else why not.
     pub diagnosis: Result<Diagnosis, String>,

@@ -11,7 +11,8 @@ use crate::numeric::Estimate;
 use crate::numeric::robust::median;
 use crate::rank::{Drawn, Finding, Profile};
 use crate::report::{Row, Value};
-use crate::run::{Adopted, PairOutcome, RunError, pair_row};
+use crate::run::{Adopted, LineOutcome, PairOutcome, RunError, pair_row};
+use rand::seq::SliceRandom;
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::SeedableRng;
 use rand_distr::{Distribution, StandardNormal};
@@ -74,11 +75,12 @@ fn finding(
 ) -> Result<Finding, RunError> {
     let judged = outcome.judged.as_ref();
     let adopted = outcome.adopted();
+    let own = own_seed(outcome, seed);
     let speeds = match &adopted {
         Some(one) if one.speed() == Some(Speed::Unconstrained) => None,
-        Some(Adopted::Sphere(sphere)) => Speeds::of_sphere(sphere, seed),
-        Some(Adopted::Slabs(averaged, _)) => Speeds::of(averaged),
-        Some(Adopted::Formal(fit)) => Speeds::formal(fit, seed),
+        Some(Adopted::Sphere(sphere)) => Speeds::of_sphere(sphere, own),
+        Some(Adopted::Slabs(averaged, _)) => Speeds::of(averaged, own),
+        Some(Adopted::Formal(fit)) => Speeds::formal(fit, own),
         None => None,
     };
     let sampled = speeds
@@ -102,6 +104,13 @@ fn finding(
     })
 }
 
+/// Seed of a pair's own draws: two pairs of a source are independent, while what is given of the source is drawn
+/// alike for both. No two spectra have the same noise.
+fn own_seed(outcome: &PairOutcome, seed: u64) -> u64 {
+    let noise = |line: &LineOutcome| line.prepared.noise.rms_k.to_bits();
+    seed ^ noise(&outcome.thick) ^ noise(&outcome.thin).rotate_left(32)
+}
+
 /// Joint draws of inward speed and dispersion.
 struct Speeds {
     v_in: Drawn,
@@ -109,11 +118,16 @@ struct Speeds {
 }
 
 impl Speeds {
-    /// Draws of the posterior averaged over models.
-    fn of(averaged: &Averaged<'_>) -> Option<Self> {
+    /// Draws of the posterior averaged over models, in random order: row by row beside those of another pair, models
+    /// would else meet their like.
+    fn of(averaged: &Averaged<'_>, seed: u64) -> Option<Self> {
+        let mut rows: Vec<_> = averaged.rows(ROWS).collect();
+        rows.shuffle(&mut ChaCha8Rng::seed_from_u64(seed));
         let draws = |name: &str| -> Option<Drawn> {
-            let rows = averaged.rows(ROWS).map(|row| row.get(name));
-            let draws: Vec<f64> = rows.collect::<Option<_>>()?;
+            let draws: Vec<f64> = rows
+                .iter()
+                .map(|row| row.get(name))
+                .collect::<Option<_>>()?;
             let value = averaged.marginal(name).map(|one| one.median);
             Some(drawn(value.unwrap_or_else(|| median(&draws)), &draws))
         };
