@@ -69,10 +69,19 @@ pub fn draw(
     seed: u64,
     velocity_slope: f64,
 ) -> impl Iterator<Item = Result<Drawn, SphereError>> {
+    accepted(pairs, seed, move |random| attempt(random, velocity_slope))
+}
+
+/// Attempts until there are as many clumps as asked for; one whose excitation does not converge is left out.
+pub fn accepted(
+    pairs: usize,
+    seed: u64,
+    mut attempt: impl FnMut(&mut ChaCha8Rng) -> Result<Option<Drawn>, SphereError>,
+) -> impl Iterator<Item = Result<Drawn, SphereError>> {
     let mut random = ChaCha8Rng::seed_from_u64(seed);
     std::iter::from_fn(move || {
         loop {
-            match attempt(&mut random, velocity_slope) {
+            match attempt(&mut random) {
                 Ok(Some(drawn)) => return Some(Ok(drawn)),
                 Ok(None) | Err(SphereError::NotConverged { .. }) => {}
                 Err(error) => return Some(Err(error)),

@@ -4,13 +4,13 @@
 //! How photons are trapped, what opacity follows and whether the thin line shares the thick line's
 //! excitation is drawn too: nobody knows which recipe other simulated spheres follow.
 
-use crate::drawn::{Drawn, Wanted};
+use crate::drawn::{Drawn, Wanted, accepted};
 use inrush::line::Component;
 use inrush::sphere::{
     Beam, Clump, Fineness, LineField, Molecule, Populations, Radiative, Shells, SphereError,
     emergent,
 };
-use rand::{RngExt, SeedableRng};
+use rand::RngExt;
 use rand_chacha::ChaCha8Rng;
 
 /// Shells of a clump.
@@ -36,17 +36,7 @@ pub fn draw(
     seed: u64,
     velocity_slope: f64,
 ) -> impl Iterator<Item = Result<Drawn, SphereError>> {
-    let mut random = ChaCha8Rng::seed_from_u64(seed);
-    std::iter::from_fn(move || {
-        loop {
-            match attempt(&mut random, velocity_slope) {
-                Ok(Some(drawn)) => return Some(Ok(drawn)),
-                Ok(None) => {}
-                Err(error) => return Some(Err(error)),
-            }
-        }
-    })
-    .take(pairs)
+    accepted(pairs, seed, move |random| attempt(random, velocity_slope))
 }
 
 fn attempt(random: &mut ChaCha8Rng, velocity_slope: f64) -> Result<Option<Drawn>, SphereError> {

@@ -54,13 +54,13 @@ fn graded(finding: &Finding) -> String {
 fn surpassed(finding: &Finding, quantity: Quantity) -> String {
     let both = |quantity| Some((expected(finding, quantity)?, certain(finding, quantity)?));
     let rate = |(expected, certain): (f64, f64)| match certain {
-        ..=0.0 => format!("expected mass rate {expected:.1e} Msun/yr (not one surely inward)"),
+        ..=0.0 => format!("expected mass rate {expected:.1e} Msun/yr (inward or not is open)"),
         _ => format!(
             "expected mass rate {expected:.1e} Msun/yr (above {certain:.1e} at 84 % if it falls in)"
         ),
     };
     let speed = |(expected, certain): (f64, f64)| match certain {
-        ..=0.0 => format!("expected inward speed {expected:.2} km/s (not one surely inward)"),
+        ..=0.0 => format!("expected inward speed {expected:.2} km/s (inward or not is open)"),
         _ => format!(
             "expected inward speed {expected:.2} km/s (above {certain:.2} at 84 % if it falls in)"
         ),

@@ -90,7 +90,12 @@ impl PairOutcome {
     /// Where the adopted speed, velocity and dispersion come from.
     #[must_use]
     pub fn adopted(&self) -> Option<Adopted<'_>> {
-        let sphere = self.sphere.as_ref().filter(|_| self.sphere_stands);
-        Adopted::of(sphere, self.judged.as_ref(), &self.fit)
+        Adopted::of(self.standing_sphere(), self.judged.as_ref(), &self.fit)
+    }
+
+    /// Posterior of the sphere where its speed is the adopted one.
+    #[must_use]
+    pub fn standing_sphere(&self) -> Option<&ClumpPosterior> {
+        self.sphere.as_ref().filter(|_| self.sphere_stands)
     }
 }

@@ -154,8 +154,7 @@ const DOTS: usize = 400;
 
 fn posterior_part(outcome: &PairOutcome, judged: &Judged) -> Option<report::figure::PosteriorPart> {
     let averaged = Averaged::new(&judged.posterior, &judged.verdict)?;
-    let sphere = outcome.sphere.as_ref().filter(|_| outcome.sphere_stands);
-    let speeds = match sphere {
+    let speeds = match outcome.standing_sphere() {
         Some(sphere) => sphere.weighted_speeds(),
         None => averaged.weighted("v_in_km_s")?,
     };

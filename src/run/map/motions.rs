@@ -29,7 +29,7 @@ pub(super) struct MapMotions {
 /// What one fitted pointing says, from its row and beside it; what rests on a mean of the thin line is left
 /// out, since it is not of this place.
 pub(super) fn of_row(row: &Row, motions: &Motions) -> Option<PointingMotions> {
-    let number = |name: &str| row.get(name).ok().and_then(Value::number);
+    let number = |name: &str| row.find(name).and_then(Value::number);
     let estimate = |name: &str| {
         Some(Estimate {
             value: number(name)?,

@@ -211,10 +211,7 @@ fn ranking(ordered: &Ordered<'_>, groups: &Groups) -> RankFigure {
         .map(|(place, member)| {
             let finding = &member.source.finding;
             let known = finding.grade() != Grade::Unknown;
-            let quantity = match ordered.quantity {
-                Quantity::Rate => finding.rate_msun_yr.as_ref(),
-                Quantity::Speed => finding.v_in_km_s.as_ref(),
-            };
+            let quantity = ordered.quantity.of(finding);
             RankBar {
                 name: member.source.id.clone(),
                 place,
