@@ -6,7 +6,7 @@ use std::fmt::Write;
 /// Millimetres: a panel, what lies left of the first and between them, above and below.
 const PANEL: (f64, f64) = (48.0, 48.0);
 const LEFT: f64 = 14.0;
-const BETWEEN: f64 = 6.0;
+const BETWEEN: f64 = 10.0;
 const TOP: f64 = 8.0;
 const BOTTOM: f64 = 14.0;
 

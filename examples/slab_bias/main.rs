@@ -52,7 +52,7 @@ const DEPENDENCES: [Dependence; 3] = [
         ends: [3.0, 8.0, 20.0, 60.0, 200.0],
     },
     Dependence {
-        name: "|v_in| over dispersion",
+        name: "abs(v_in) over dispersion",
         of: |found| found.speed,
         ends: [0.1, 0.2, 0.4, 0.7, 1.3],
     },
